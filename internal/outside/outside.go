@@ -1,0 +1,76 @@
+// Package outside runs the programs that the tests check mirrorloom against:
+// Debian's Python with numpy, scipy and astropy, and the FITS tools of Debian.
+//
+// A check whose program is missing is skipped, so that a machine without apt
+// can still run the rest; under CI=true a skip is a failure, because there
+// `make test` installs everything.
+package outside
+
+import (
+	"os"
+	"os/exec"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"sync"
+	"testing"
+)
+
+// python is Debian's interpreter: another one on the path may lack astropy.
+const python = "/usr/bin/python3"
+
+var pythonReady = sync.OnceValue(func() error {
+	return exec.Command(python, "-c", "import numpy, scipy, astropy, PIL, yaml").Run()
+})
+
+// Python runs testdata/crosscheck/script with Debian's Python and returns its
+// standard output. A non-zero exit fails the test with what the script printed.
+func Python(t testing.TB, script string, args ...string) string {
+	t.Helper()
+	if err := pythonReady(); err != nil {
+		missing(t, python+" with numpy, scipy, astropy, PIL and yaml (make test installs them)")
+	}
+	return run(t, python, append([]string{filepath.Join(Root(t), "testdata", "crosscheck", script)}, args...)...)
+}
+
+// Program runs a program from the path, such as fitsverify, and returns its
+// standard output. A non-zero exit fails the test.
+func Program(t testing.TB, name string, args ...string) string {
+	t.Helper()
+	path, err := exec.LookPath(name)
+	if err != nil {
+		missing(t, name+" (make test installs it)")
+	}
+	return run(t, path, args...)
+}
+
+// Root is the top folder of the module.
+func Root(t testing.TB) string {
+	t.Helper()
+	_, file, _, ok := runtime.Caller(0)
+	if !ok {
+		t.Fatal("the test binary does not know where its source lies")
+	}
+	return filepath.Dir(filepath.Dir(filepath.Dir(file)))
+}
+
+func run(t testing.TB, path string, args ...string) string {
+	t.Helper()
+	cmd := exec.Command(path, args...)
+	// One thread: the suite shares two cores among packages.
+	cmd.Env = append(os.Environ(), "OPENBLAS_NUM_THREADS=1", "PYTHONDONTWRITEBYTECODE=1")
+	var stdout, stderr strings.Builder
+	cmd.Stdout, cmd.Stderr = &stdout, &stderr
+	if err := cmd.Run(); err != nil {
+		t.Fatalf("%s %s: %v\n%s%s", path, strings.Join(args, " "), err, stdout.String(), stderr.String())
+	}
+	return stdout.String()
+}
+
+func missing(t testing.TB, what string) {
+	t.Helper()
+	if os.Getenv("CI") == "true" {
+		t.Fatalf("missing %s, and under CI=true a check may not be skipped", what)
+	}
+	t.Skipf("missing %s", what)
+}
