@@ -1,0 +1,37 @@
+# Everything that is done to mirrorloom, by name. Go and Debian's apt are all
+# that a fresh machine needs: what else is used installs itself.
+
+GO ?= go
+STATICCHECK := honnef.co/go/tools/cmd/staticcheck@v0.8.2
+# Debian's packages that the cross-checks run.
+PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml fitsverify netpbm
+COMMANDS := fitsverify pngtopnm
+
+.PHONY: all build test lint bench packages
+
+all: build
+
+build:
+	$(GO) build -o bin/mirrorloom ./cmd/mirrorloom
+
+test: packages
+	$(GO) test -timeout 20m ./...
+
+lint:
+	@unformatted=$$(gofmt -l .); if [ -n "$$unformatted" ]; then echo "gofmt would change: $$unformatted"; exit 1; fi
+	$(GO) mod verify
+	$(GO) vet ./...
+	GOARCH=arm64 $(GO) vet ./...
+	$(GO) run $(STATICCHECK) ./...
+
+# Figures are compared as ratios within one run: the machine may be noisy.
+bench: build packages
+	$(GO) test -run '^$$' -bench . -benchtime 1s ./hadamard ./fitsutil ./calib
+
+# The cross-checks skip where neither the packages nor apt are there (and fail
+# under CI=true), so a machine without apt still runs everything else.
+packages:
+	@if /usr/bin/python3 -c 'import numpy, scipy, astropy, PIL, yaml' 2>/dev/null && which $(COMMANDS) >/dev/null; then :; \
+	elif ! command -v apt-get >/dev/null; then echo "no apt-get: external cross-checks will be skipped"; \
+	elif [ "$$(id -u)" != 0 ]; then echo "external cross-checks need, once: sudo apt-get install $(PACKAGES)"; \
+	else apt-get update -q && DEBIAN_FRONTEND=noninteractive apt-get install -y -q --no-install-recommends $(PACKAGES); fi

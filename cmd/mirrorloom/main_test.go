@@ -1,0 +1,74 @@
+package main
+
+import (
+	"bytes"
+	"context"
+	"encoding/json"
+	"os"
+	"os/signal"
+	"syscall"
+	"testing"
+
+	"github.com/rogpeppe/go-internal/testscript"
+	"github.com/spf13/cobra"
+	"github.com/stretchr/testify/require"
+)
+
+// TestMain lets testscript files run this test binary as mirrorloom.
+func TestMain(m *testing.M) {
+	testscript.Main(m, map[string]func(){
+		"mirrorloom": func() {
+			ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+			code := run(ctx, os.Args[1:], os.Stdout, os.Stderr)
+			stop()
+			os.Exit(code)
+		},
+	})
+}
+
+func TestScripts(t *testing.T) {
+	testscript.Run(t, testscript.Params{
+		Dir:                 "testdata",
+		RequireExplicitExec: true,
+		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
+			"exitcode": exitCodeIs,
+		},
+	})
+}
+
+// exitCodeIs runs `exitcode N COMMAND ARG...` and checks the code that a shell
+// would see; standard output and error stay there for `stdout` and `stderr`.
+func exitCodeIs(ts *testscript.TestScript, neg bool, args []string) {
+	if neg || len(args) < 2 {
+		ts.Fatalf("usage: exitcode N COMMAND [ARG...]")
+	}
+	want := args[0]
+	err := ts.Exec("sh", append([]string{"-c", `"$@"; code=$?; [ $code = ` + want + ` ] || { echo "exit code $code, want ` + want + `" >&2; exit 99; }`, "sh"}, args[1:]...)...)
+	if err != nil {
+		ts.Fatalf("%v: not exit code %s", args[1:], want)
+	}
+}
+
+// Every command parses its flags without a clash between its own and the
+// shared ones: pflag panics on a clash.
+func TestFlagsDoNotClash(t *testing.T) {
+	root, _ := newRootCommand(&app{stdout: &bytes.Buffer{}, stderr: &bytes.Buffer{}})
+	var walk func(c *cobra.Command)
+	walk = func(c *cobra.Command) {
+		require.NotPanics(t, func() { c.InitDefaultHelpFlag(); require.NoError(t, c.ParseFlags(nil)) }, c.Name())
+		require.NotEmpty(t, c.Short, c.Name())
+		for _, sub := range c.Commands() {
+			walk(sub)
+		}
+	}
+	walk(root)
+}
+
+func TestVersionAsJSON(t *testing.T) {
+	var stdout, stderr bytes.Buffer
+	require.Equal(t, exitWhole, run(context.Background(), []string{"version", "--json"}, &stdout, &stderr))
+	var got map[string]string
+	require.NoError(t, json.Unmarshal(stdout.Bytes(), &got))
+	require.NotEmpty(t, got["version"])
+	require.Empty(t, stderr.String())
+}
