@@ -1,0 +1,171 @@
+// Package outdir gives every command that writes a folder the same manners.
+//
+// Work goes to a folder `<path>.part` beside the one asked for, which appears
+// under its own name only when it is whole. A folder that is not empty is
+// refused unless it is to be replaced, and then the old one stays until the new
+// one is whole. An interrupted run leaves no `.part`; one left by a killed run
+// is cleared by the next, while a second run at the same time is refused.
+package outdir
+
+import (
+	"errors"
+	"fmt"
+	"io/fs"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"golang.org/x/sys/unix"
+)
+
+// ErrNotEmpty marks a folder that holds something and is not to be replaced.
+var ErrNotEmpty = errors.New("the output folder is not empty")
+
+// ErrBusy marks a folder that another run is writing just now.
+var ErrBusy = errors.New("another run is writing this output folder")
+
+// Dir is an output folder being made. Exactly one of Commit and Abort ends it;
+// Abort after Commit does nothing, so that it can be deferred.
+type Dir struct {
+	final, part string
+	lock        *os.File // the .part folder itself, locked while we live
+}
+
+// Begin makes `<path>.part`. It is an error (ErrNotEmpty) if path holds
+// anything and replace is false, or if path is a file; ErrBusy if another run
+// holds the same `.part`.
+func Begin(path string, replace bool) (*Dir, error) {
+	if path == "" {
+		return nil, errors.New("no output folder given; name one with -o")
+	}
+	final, err := filepath.Abs(path)
+	if err != nil {
+		return nil, fmt.Errorf("output folder %s: %w", path, err)
+	}
+	if err := refuseUnfit(final, replace); err != nil {
+		return nil, err
+	}
+	part := final + ".part"
+	if err := os.MkdirAll(filepath.Dir(final), 0o755); err != nil {
+		return nil, fmt.Errorf("output folder %s: %w; choose a place that can be written", final, plain(err))
+	}
+	d := &Dir{final: final, part: part}
+	if err := d.claim(); err != nil {
+		return nil, err
+	}
+	return d, nil
+}
+
+func refuseUnfit(final string, replace bool) error {
+	entries, err := os.ReadDir(final)
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return nil
+	case err != nil:
+		return fmt.Errorf("output folder %s: %w; choose another with -o", final, plain(err))
+	case len(entries) > 0 && !replace:
+		return fmt.Errorf("%w: %s; choose another with -o or pass --replace", ErrNotEmpty, final)
+	}
+	return nil
+}
+
+// claim makes the .part folder and locks it; what a killed run left is cleared.
+func (d *Dir) claim() error {
+	err := os.Mkdir(d.part, 0o755)
+	stale := errors.Is(err, fs.ErrExist)
+	if err != nil && !stale {
+		return fmt.Errorf("output folder %s: %w; choose a place that can be written", d.part, plain(err))
+	}
+	f, err := os.Open(d.part)
+	if err != nil {
+		return fmt.Errorf("output folder %s: %w", d.part, plain(err))
+	}
+	if err := unix.Flock(int(f.Fd()), unix.LOCK_EX|unix.LOCK_NB); err != nil {
+		f.Close()
+		if errors.Is(err, unix.EWOULDBLOCK) {
+			return fmt.Errorf("%w: %s; wait for it to end or choose another with -o", ErrBusy, d.final)
+		}
+		return fmt.Errorf("lock %s: %w", d.part, err)
+	}
+	d.lock = f
+	if !stale {
+		return nil
+	}
+	entries, err := os.ReadDir(d.part)
+	if err != nil {
+		return errors.Join(fmt.Errorf("clear %s: %w", d.part, plain(err)), d.Abort())
+	}
+	for _, e := range entries {
+		if err := os.RemoveAll(filepath.Join(d.part, e.Name())); err != nil {
+			return errors.Join(fmt.Errorf("clear %s: %w", d.part, plain(err)), d.Abort())
+		}
+	}
+	return nil
+}
+
+// Path is the folder to write into until Commit.
+func (d *Dir) Path() string { return d.part }
+
+// Final is the folder's name after Commit.
+func (d *Dir) Final() string { return d.final }
+
+// Commit gives the folder its own name, in one step where the file system can
+// exchange two folders, and then removes what it replaced.
+func (d *Dir) Commit() error {
+	if d.lock == nil {
+		return errors.New("internal error: output folder committed twice")
+	}
+	if err := d.lock.Sync(); err != nil && !errors.Is(err, unix.EINVAL) {
+		return errors.Join(fmt.Errorf("flush %s: %w", d.part, err), d.Abort())
+	}
+	if err := d.swap(); err != nil {
+		return errors.Join(fmt.Errorf("give %s its name: %w", d.final, err), d.Abort())
+	}
+	err := d.lock.Close()
+	d.lock = nil
+	return err
+}
+
+func (d *Dir) swap() error {
+	// An empty folder, or none, gives way at once.
+	if err := os.Remove(d.final); err == nil || errors.Is(err, fs.ErrNotExist) {
+		return os.Rename(d.part, d.final)
+	}
+	err := unix.Renameat2(unix.AT_FDCWD, d.part, unix.AT_FDCWD, d.final, unix.RENAME_EXCHANGE)
+	if err == nil {
+		return os.RemoveAll(d.part)
+	}
+	// Not every file system exchanges: move the old one aside instead.
+	aside := d.final + ".replaced"
+	if err := os.RemoveAll(aside); err != nil {
+		return err
+	}
+	if err := os.Rename(d.final, aside); err != nil {
+		return err
+	}
+	if err := os.Rename(d.part, d.final); err != nil {
+		return errors.Join(err, os.Rename(aside, d.final))
+	}
+	return os.RemoveAll(aside)
+}
+
+// Abort removes the unfinished folder. After Commit it does nothing.
+func (d *Dir) Abort() error {
+	if d.lock == nil {
+		return nil
+	}
+	err := os.RemoveAll(d.part)
+	err = errors.Join(err, d.lock.Close())
+	d.lock = nil
+	return err
+}
+
+// plain strips the call's name from an error of the file system: "open x: not a
+// directory" names the path a second time.
+func plain(err error) error {
+	var path *fs.PathError
+	if errors.As(err, &path) {
+		return errors.New(strings.ToLower(path.Err.Error()))
+	}
+	return err
+}
