@@ -1,0 +1,147 @@
+package sequence
+
+import (
+	"crypto/sha256"
+	"encoding/hex"
+	"time"
+
+	"mirrorloom/pipeline/config"
+)
+
+// Target is what the observer asks for: section by section the keys of a
+// target file. LoadTarget reads one; plan fills in what it leaves open, so that
+// a sequence's target.yaml is complete.
+type Target struct {
+	Name string `yaml:"name"`
+	// RADeg and DecDeg are the ICRS position of the field's centre, RotangDeg
+	// the position angle of the cube's second axis, north through east.
+	RADeg     float64 `yaml:"ra_deg"`
+	DecDeg    float64 `yaml:"dec_deg"`
+	RotangDeg float64 `yaml:"rotang_deg" config:"optional"`
+	// StartUTC is the start of the first exposure, such as
+	// 2031-03-14T02:30:00Z; Start gives it as a time.
+	StartUTC string     `yaml:"start_utc"`
+	Code     CodeChoice `yaml:"code"`
+	// DwellSeconds is the exposure time of a science step and of the all-off
+	// frames between them.
+	DwellSeconds float64 `yaml:"dwell_s"`
+	// AllOffEvery asks for an all-off frame before the first science step,
+	// after every so many of them, and after the last; 0 for none.
+	AllOffEvery  int           `yaml:"all_off_every" config:"optional"`
+	SentinelRows []SentinelRow `yaml:"sentinel_rows" config:"optional"`
+	Closed       []ClosedRow   `yaml:"closed" config:"optional"`
+	Calibration  Calibration   `yaml:"calibration" config:"optional"`
+}
+
+// CodeChoice says how the field is coded.
+type CodeChoice struct {
+	// Family is a name that hadamard.ParseFamily knows.
+	Family string `yaml:"family"`
+	// V is the code's size; nil leaves it to plan: the smallest code that holds
+	// as many elements as device and detector allow.
+	V *int `yaml:"v" config:"optional"`
+	// Dark is the number of dark columns; nil for the default rule.
+	Dark *int `yaml:"dark" config:"optional"`
+	// ElementMirrors is the width of an element in u.
+	ElementMirrors int `yaml:"element_mirrors"`
+	// Order is OrderNatural or OrderShuffled (the default).
+	Order string `yaml:"order" config:"optional"`
+	// Seed chooses the dark columns and the order of the science steps.
+	Seed int64 `yaml:"seed" config:"optional"`
+	// Cycles is the number of complete sets of coded steps, 1 by default.
+	Cycles int `yaml:"cycles" config:"optional"`
+}
+
+// SetDefaults sets what absent keys mean.
+func (c *CodeChoice) SetDefaults() {
+	c.Order, c.Cycles = OrderShuffled, 1
+}
+
+// The orders of the science steps within a cycle.
+const (
+	OrderNatural  = "natural"
+	OrderShuffled = "shuffled"
+)
+
+// SentinelRow keeps the mirror rows First..Last (w, inclusive) on Element
+// alone through all science steps.
+type SentinelRow struct {
+	First   int `yaml:"first"`
+	Last    int `yaml:"last"`
+	Element int `yaml:"element"`
+}
+
+// ClosedRow keeps the mirror rows First..Last (w, inclusive) off in every step,
+// for one element or, with Element nil, for all.
+type ClosedRow struct {
+	First   int  `yaml:"first"`
+	Last    int  `yaml:"last"`
+	Element *int `yaml:"element" config:"optional"`
+}
+
+// Calibration lists the frames that are not of the target. A section left out
+// asks for no frame.
+type Calibration struct {
+	Bias BiasFrames `yaml:"bias" config:"optional"`
+	Dark DarkFrames `yaml:"dark" config:"optional"`
+	Flat FlatFrames `yaml:"flat" config:"optional"`
+	Arc  ArcFrames  `yaml:"arc" config:"optional"`
+}
+
+// BiasFrames asks for Count frames of no exposure time.
+type BiasFrames struct {
+	Count int `yaml:"count"`
+}
+
+// DarkFrames asks for Count frames with the shutter closed.
+type DarkFrames struct {
+	Count        int     `yaml:"count"`
+	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
+}
+
+// FlatFrames asks for frames of a continuum lamp.
+type FlatFrames struct {
+	// Count is how often each of four lamp masks is taken: all elements on, the
+	// even ones, the odd ones, none.
+	Count        int     `yaml:"count"`
+	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
+	// Lamp is a name of at most eight characters.
+	Lamp string `yaml:"lamp" config:"optional"`
+	// CodedCycles is the number of complete cycles of code rows on the lamp.
+	CodedCycles int `yaml:"coded_cycles" config:"optional"`
+}
+
+// ArcFrames asks for frames of a line lamp through single elements.
+type ArcFrames struct {
+	// Count is how often each chosen element is taken.
+	Count        int     `yaml:"count"`
+	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
+	// Lamp is a name of at most eight characters.
+	Lamp string `yaml:"lamp" config:"optional"`
+	// Every chooses the elements 0, Every, 2 Every ... and the last one.
+	Every int `yaml:"every" config:"optional"`
+}
+
+// SetDefaults sets what absent keys mean.
+func (a *ArcFrames) SetDefaults() { a.Every = 1 }
+
+// YAML is the target as text, which depends on its values alone. The error
+// names a value that no text can hold.
+func (t *Target) YAML() ([]byte, error) { return config.Encode(t) }
+
+// SHA is the lower-case hex SHA-256 of the target's YAML.
+func (t *Target) SHA() (string, error) {
+	text, err := t.YAML()
+	if err != nil {
+		return "", err
+	}
+	return digest(text), nil
+}
+
+// Start is StartUTC as a time.
+func (t *Target) Start() (time.Time, error) { return parseUTC(t.StartUTC) }
+
+func digest(data []byte) string {
+	sum := sha256.Sum256(data)
+	return hex.EncodeToString(sum[:])
+}

@@ -1,0 +1,190 @@
+package sequence
+
+import (
+	"errors"
+	"fmt"
+	"strings"
+	"time"
+
+	"mirrorloom/configs"
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/config"
+)
+
+// Limits of a target's numbers: far beyond any use, and small enough that no
+// sum or product of them overflows.
+const (
+	maxDwellSeconds = 86400
+	maxFrames       = 10000  // of one kind of calibration
+	maxMirror       = 100000 // any mirror coordinate
+	maxCycles       = 1000
+	maxLampBytes    = 8  // the LAMP column
+	maxNameBytes    = 68 // one header card
+)
+
+// LoadTarget reads and checks a target by the name of an embedded one or by
+// path. Errors name file, line and key path, what is wrong and the cure.
+func LoadTarget(pathOrName string) (*Target, error) {
+	source, err := config.Find(configs.Targets, pathOrName)
+	if err != nil {
+		return nil, fmt.Errorf("target: %w", err)
+	}
+	return ParseTarget(source.Name, source.Data)
+}
+
+// ParseTarget reads and checks the text of a target; name is what errors call
+// the file.
+func ParseTarget(name string, data []byte) (*Target, error) {
+	doc, err := config.Parse(name, data)
+	if err != nil {
+		return nil, err
+	}
+	t := new(Target)
+	if err := doc.Decode(t); err != nil {
+		return nil, err
+	}
+	if err := t.check(doc); err != nil {
+		return nil, err
+	}
+	return t, nil
+}
+
+// Check tells what is wrong with a target that comes from no file.
+func (t *Target) Check() error { return t.check(nil) }
+
+func (t *Target) check(doc *config.Doc) error {
+	c := doc.Checks()
+	c.That(printable(t.Name, maxNameBytes), "name", "%q is no name; write 1 to %d printable ASCII characters", t.Name, maxNameBytes)
+	c.That(t.RADeg >= 0 && t.RADeg < 360, "ra_deg", "%v is outside 0 to below 360; give degrees", t.RADeg)
+	c.Within("dec_deg", t.DecDeg, -90, 90)
+	c.Within("rotang_deg", t.RotangDeg, -360, 360)
+	_, err := parseUTC(t.StartUTC)
+	c.That(err == nil, "start_utc", "%q is no time; write it like 2031-03-14T02:30:00Z", t.StartUTC)
+	t.checkCode(c)
+	c.Positive("dwell_s", t.DwellSeconds)
+	c.Within("dwell_s", t.DwellSeconds, 0, maxDwellSeconds)
+	c.Count("all_off_every", t.AllOffEvery, 0, maxFrames)
+	t.checkRows(c)
+	t.checkCalibration(c)
+	return c.Err()
+}
+
+func (t *Target) checkCode(c *config.Checks) {
+	f, err := hadamard.ParseFamily(t.Code.Family)
+	if !c.That(err == nil, "code.family", "%q is no code family; write one of %s", t.Code.Family, familyList()) {
+		return
+	}
+	dark := 0
+	if t.Code.Dark != nil {
+		dark = *t.Code.Dark
+		c.Count("code.dark", dark, 0, hadamard.MaxV-1)
+		c.That(f != hadamard.SlitScan || dark == 0, "code.dark", "a slit scan has no dark columns, not %d; write 0", dark)
+	}
+	if t.Code.V != nil {
+		_, err := hadamard.New(f, *t.Code.V)
+		c.That(err == nil, "code.v", "%s", sizeAdvice(f, *t.Code.V, err))
+		c.That(dark < *t.Code.V, "code.dark", "%d dark columns leave no element of the %d columns; give fewer", dark, *t.Code.V)
+	}
+	c.Count("code.element_mirrors", t.Code.ElementMirrors, 1, maxMirror)
+	c.OneOf("code.order", t.Code.Order, OrderNatural, OrderShuffled)
+	c.That(t.Code.Seed >= 0, "code.seed", "%d is below 0; give a whole number from 0", t.Code.Seed)
+	c.Count("code.cycles", t.Code.Cycles, 1, maxCycles)
+}
+
+// sizeAdvice says which sizes near v a family has.
+func sizeAdvice(f hadamard.Family, v int, err error) string {
+	var none *hadamard.NoCodeError
+	if !errors.As(err, &none) {
+		return fmt.Sprintf("%d is no size of a %s code; give another", v, f)
+	}
+	var near []string
+	for _, size := range []int{none.Below, none.Above} {
+		if size > 0 {
+			near = append(near, fmt.Sprint(size))
+		}
+	}
+	return fmt.Sprintf("there is no %s code of %d columns; the nearest have %s", f, v, strings.Join(near, " and "))
+}
+
+func familyList() string {
+	var names []string
+	for _, f := range hadamard.Families() {
+		names = append(names, string(f))
+	}
+	return strings.Join(names, ", ")
+}
+
+func (t *Target) checkRows(c *config.Checks) {
+	for i, r := range t.SentinelRows {
+		path := fmt.Sprintf("sentinel_rows[%d]", i)
+		checkRange(c, path, r.First, r.Last)
+		c.Count(path+".element", r.Element, 0, hadamard.MaxV-1)
+	}
+	for i, r := range t.Closed {
+		path := fmt.Sprintf("closed[%d]", i)
+		checkRange(c, path, r.First, r.Last)
+		if r.Element != nil {
+			c.Count(path+".element", *r.Element, 0, hadamard.MaxV-1)
+		}
+	}
+}
+
+func checkRange(c *config.Checks, path string, first, last int) {
+	c.Count(path+".first", first, -maxMirror, maxMirror)
+	c.Count(path+".last", last, -maxMirror, maxMirror)
+	c.That(first <= last, path+".last", "%d lies before first %d; exchange them", last, first)
+}
+
+func (t *Target) checkCalibration(c *config.Checks) {
+	k := t.Calibration
+	c.Count("calibration.bias.count", k.Bias.Count, 0, maxFrames)
+	checkLit(c, "calibration.dark", k.Dark.Count, k.Dark.DwellSeconds)
+	checkLit(c, "calibration.flat", k.Flat.Count, k.Flat.DwellSeconds)
+	c.Count("calibration.flat.coded_cycles", k.Flat.CodedCycles, 0, maxCycles)
+	if k.Flat.Count > 0 || k.Flat.CodedCycles > 0 {
+		c.Positive("calibration.flat.dwell_s", k.Flat.DwellSeconds)
+		checkLamp(c, "calibration.flat.lamp", k.Flat.Lamp)
+	}
+	checkLit(c, "calibration.arc", k.Arc.Count, k.Arc.DwellSeconds)
+	c.Count("calibration.arc.every", k.Arc.Every, 1, maxFrames)
+	if k.Arc.Count > 0 {
+		checkLamp(c, "calibration.arc.lamp", k.Arc.Lamp)
+	}
+}
+
+func checkLit(c *config.Checks, path string, count int, dwell float64) {
+	c.Count(path+".count", count, 0, maxFrames)
+	c.Within(path+".dwell_s", dwell, 0, maxDwellSeconds)
+	if count > 0 {
+		c.Positive(path+".dwell_s", dwell)
+	}
+}
+
+func checkLamp(c *config.Checks, path, lamp string) {
+	c.That(printable(lamp, maxLampBytes), path, "%q is no lamp; write a name of 1 to %d printable ASCII characters", lamp, maxLampBytes)
+}
+
+// printable tells whether text fits a header card or table field as it is: no
+// character is lost, neither at its ends nor by its length.
+func printable(text string, most int) bool {
+	if text == "" || len(text) > most || strings.TrimSpace(text) != text {
+		return false
+	}
+	for i := range len(text) {
+		if text[i] < ' ' || text[i] > '~' {
+			return false
+		}
+	}
+	return true
+}
+
+// parseUTC reads an ISO 8601 time of day in UTC, with a closing Z or, as FITS
+// headers have it (Standard 4.0, section 9.1.1), without.
+func parseUTC(text string) (time.Time, error) {
+	const layout = "2006-01-02T15:04:05"
+	at, err := time.Parse(layout, strings.TrimSuffix(text, "Z"))
+	if err != nil {
+		return time.Time{}, fmt.Errorf("%q is no time like 2031-03-14T02:30:00Z: %w", text, err)
+	}
+	return at, nil
+}
