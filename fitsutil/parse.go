@@ -13,7 +13,7 @@ type entry struct {
 }
 
 // hasValue tells whether the card is looked up by its keyword.
-func (e *entry) hasValue() bool { return e.bad != "" || !commentary(e.card.Key) }
+func (e *entry) hasValue() bool { return !commentary(e.card.Key) && e.card.Key != continueKey }
 
 // parseCard reads one record. It never fails: what it cannot understand is told in entry.bad,
 // to be reported when the card is asked for.
