@@ -1,0 +1,28 @@
+// Package calib turns detector frames into calibrated light: levels, bad pixels,
+// the mapping between pixels and wavelengths, and resampling that keeps the flux.
+// Plain slices in and out; no files, no sequence, no profile. It is for the
+// reduction only: a rehearsal has its own forward mapping, so that an error in
+// one cannot cancel itself in the other.
+//
+// # Nouns
+//
+//   - A row is nx values of one detector row, float32; a block is rows one after
+//     the other, width nx; a stack is [frame][pixel].
+//   - An amplifier's overscan is a block of pixels without light, one row for each
+//     row of its data.
+//   - A trace row y0 is the light that crosses detector row y0 at x = X_c: at column
+//     x it lies t(x) rows higher. ShiftRows straightens it.
+//   - A voxel lies between two edges along x, on one trace row; Resampler fills it.
+//   - A weight is the share of a pixel's value that goes into a voxel.
+//   - A Flag is a set of bits; it travels with weights: see reachLimit.
+//
+// # Invariants
+//
+//   - Pixel i covers i-0.5 to i+0.5. Rows and columns count from 0.
+//   - Resampling is linear in the values: signal = sum w v, variance = sum w^2
+//     var, with the same weights, exact for independent pixels.
+//   - Neighbouring voxels share the weights of their common edge: the light of
+//     voxels that tile a range adds up to the light of the range.
+//   - A voxel is NaN exactly where it is NoData.
+//   - Nothing here depends on which rows are processed together or by whom.
+package calib
