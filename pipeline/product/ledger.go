@@ -1,0 +1,246 @@
+package product
+
+import (
+	"encoding/csv"
+	"fmt"
+	"io"
+	"math"
+	"os"
+	"strconv"
+	"strings"
+
+	"mirrorloom/fitsutil"
+)
+
+// Verdict says what became of a step or a frame.
+type Verdict string
+
+// The verdicts. Only OK and Relabelled frames are used.
+const (
+	OK            Verdict = "ok"
+	Missing       Verdict = "missing"        // no frame for this step
+	Duplicate     Verdict = "duplicate"      // a second frame of a step that has one
+	WrongMask     Verdict = "wrong-mask"     // STEP and MASKID contradict each other
+	WrongExposure Verdict = "wrong-exposure" // exposed longer or shorter than commanded
+	WrongSize     Verdict = "wrong-size"     // not the detector's size
+	Unreadable    Verdict = "unreadable"     // not a whole FITS image
+	Extra         Verdict = "extra"          // of no step of the sequence
+	Relabelled    Verdict = "relabelled"     // used for another step than its header says
+)
+
+// Used tells whether frames of this verdict enter the reduction.
+func (v Verdict) Used() bool { return v == OK || v == Relabelled }
+
+// How a frame found its step.
+const (
+	ByKeyword = "keyword" // the STEP keyword
+	ByMaskID  = "maskid"  // the MASKID keyword alone
+	ByTime    = "time"    // the order of DATE-OBS
+	ByAudit   = "audit"   // the dark columns
+)
+
+// Entry is one line of the ledger. Every step has one; frames that serve no
+// step come behind them with Step 0.
+type Entry struct {
+	Step      int     `json:"step"`
+	File      string  `json:"file"` // in the night folder; empty for a missing frame
+	Kind      string  `json:"kind"`
+	MaskID    string  `json:"maskid"`
+	MatchedBy string  `json:"matched_by"`
+	DateObs   string  `json:"date_obs"`
+	ExptimeS  float64 `json:"exptime_s"`
+	Verdict   Verdict `json:"verdict"`
+	// SaturatedFraction is the part of the active pixels at or above
+	// saturation; NaN where it was not measured, as are the next three.
+	SaturatedFraction float64 `json:"saturated_fraction"`
+	Throughput        float64 `json:"throughput"`     // c_k, mean 1
+	ThroughputErr     float64 `json:"throughput_err"` // its standard error
+	OffsetE           float64 `json:"offset_e"`       // electrons taken off as this frame's own level
+	Note              string  `json:"note"`
+}
+
+// NewEntry gives an entry whose measured figures are still NaN.
+func NewEntry(step int) Entry {
+	nan := math.NaN()
+	return Entry{Step: step, ExptimeS: nan, SaturatedFraction: nan, Throughput: nan, ThroughputErr: nan, OffsetE: nan}
+}
+
+// Ledger is the table that pairs frames with steps.
+type Ledger []Entry
+
+// Count gives the number of entries of a verdict.
+func (l Ledger) Count(v Verdict) int {
+	n := 0
+	for _, e := range l {
+		if e.Verdict == v {
+			n++
+		}
+	}
+	return n
+}
+
+// field is one column of the ledger, in CSV and in FITS.
+type field struct {
+	name, unit string
+	get        func(*Entry) any // int, string or float64
+	set        func(*Entry, string) error
+}
+
+func text(name string, at func(*Entry) *string) field {
+	return field{name, "", func(e *Entry) any { return *at(e) },
+		func(e *Entry, s string) error { *at(e) = s; return nil }}
+}
+
+func number(name, unit string, at func(*Entry) *float64) field {
+	return field{name, unit, func(e *Entry) any { return *at(e) },
+		func(e *Entry, s string) (err error) {
+			if s == "" {
+				*at(e) = math.NaN()
+				return nil
+			}
+			*at(e), err = strconv.ParseFloat(s, 64)
+			return err
+		}}
+}
+
+func fields() []field {
+	return []field{
+		{"step", "", func(e *Entry) any { return e.Step },
+			func(e *Entry, s string) (err error) { e.Step, err = strconv.Atoi(s); return err }},
+		text("file", func(e *Entry) *string { return &e.File }),
+		text("kind", func(e *Entry) *string { return &e.Kind }),
+		text("maskid", func(e *Entry) *string { return &e.MaskID }),
+		text("matched_by", func(e *Entry) *string { return &e.MatchedBy }),
+		text("date_obs", func(e *Entry) *string { return &e.DateObs }),
+		number("exptime_s", "s", func(e *Entry) *float64 { return &e.ExptimeS }),
+		text("verdict", func(e *Entry) *string { return (*string)(&e.Verdict) }),
+		number("saturated_fraction", "", func(e *Entry) *float64 { return &e.SaturatedFraction }),
+		number("throughput", "", func(e *Entry) *float64 { return &e.Throughput }),
+		number("throughput_err", "", func(e *Entry) *float64 { return &e.ThroughputErr }),
+		number("offset_e", "ct", func(e *Entry) *float64 { return &e.OffsetE }),
+		text("note", func(e *Entry) *string { return &e.Note }),
+	}
+}
+
+// WriteCSV writes the ledger with a line of column names. A figure that was not
+// measured is an empty field; floats have the fewest digits that read back.
+func (l Ledger) WriteCSV(w io.Writer) error {
+	out := csv.NewWriter(w)
+	var names []string
+	for _, f := range fields() {
+		names = append(names, f.name)
+	}
+	if err := out.Write(names); err != nil {
+		return fmt.Errorf("write the ledger: %w", err)
+	}
+	for i := range l {
+		var record []string
+		for _, f := range fields() {
+			record = append(record, format(f.get(&l[i])))
+		}
+		if err := out.Write(record); err != nil {
+			return fmt.Errorf("write the ledger: %w", err)
+		}
+	}
+	out.Flush()
+	if err := out.Error(); err != nil {
+		return fmt.Errorf("write the ledger: %w", err)
+	}
+	return nil
+}
+
+func format(v any) string {
+	switch v := v.(type) {
+	case float64:
+		if math.IsNaN(v) {
+			return ""
+		}
+		return strconv.FormatFloat(v, 'g', -1, 64)
+	case int:
+		return strconv.Itoa(v)
+	case string:
+		return v
+	}
+	panic("internal error: a ledger field of an unknown type")
+}
+
+// ReadLedger reads a ledger.csv. Errors name the file and the line.
+func ReadLedger(path string) (Ledger, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, fmt.Errorf("open the ledger: %w", err)
+	}
+	defer f.Close()
+	l, err := parseLedger(f)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", path, err)
+	}
+	return l, nil
+}
+
+func parseLedger(r io.Reader) (Ledger, error) {
+	in := csv.NewReader(r)
+	names, err := in.Read()
+	if err != nil {
+		return nil, fmt.Errorf("no line of column names: %w", err)
+	}
+	all := fields()
+	if len(names) != len(all) {
+		return nil, fmt.Errorf("line 1: %d columns, want %d", len(names), len(all))
+	}
+	for i, f := range all {
+		if names[i] != f.name {
+			return nil, fmt.Errorf("line 1: column %d is %q, want %q", i+1, names[i], f.name)
+		}
+	}
+	l := Ledger{}
+	for {
+		record, err := in.Read()
+		if err == io.EOF {
+			return l, nil
+		}
+		if err != nil {
+			return nil, err
+		}
+		e := Entry{}
+		for i, f := range all {
+			if err := f.set(&e, record[i]); err != nil {
+				line, _ := in.FieldPos(i)
+				return nil, fmt.Errorf("line %d, column %s: %w", line, f.name, err)
+			}
+		}
+		l = append(l, e)
+	}
+}
+
+// Table gives the ledger as the FRAMES table of cube.fits: the same columns, their names
+// in capitals.
+func (l Ledger) Table() *fitsutil.Table {
+	t := &fitsutil.Table{Name: Frames}
+	for _, f := range fields() {
+		col := fitsutil.Column{Name: strings.ToUpper(f.name), Unit: f.unit}
+		switch f.get(&Entry{}).(type) {
+		case int:
+			col.Format, col.Data = "J", gather(l, func(e *Entry) int32 { return int32(f.get(e).(int)) })
+		case float64:
+			col.Format, col.Data = "D", gather(l, func(e *Entry) float64 { return f.get(e).(float64) })
+		case string:
+			data := gather(l, func(e *Entry) string { return f.get(e).(string) })
+			width := 1
+			for _, s := range data {
+				width = max(width, len(s))
+			}
+			col.Format, col.Data = strconv.Itoa(width)+"A", data
+		}
+		t.Columns = append(t.Columns, col)
+	}
+	return t
+}
+
+func gather[T any](l Ledger, get func(*Entry) T) []T {
+	all := make([]T, len(l))
+	for i := range l {
+		all[i] = get(&l[i])
+	}
+	return all
+}
