@@ -30,6 +30,12 @@ func (c *Checks) That(ok bool, path, format string, args ...any) bool {
 	return c.err == nil
 }
 
+// Finite demands a number that is neither NaN nor infinite. Documents hold no
+// others; structs built in Go may.
+func (c *Checks) Finite(path string, value float64) {
+	c.That(!math.IsNaN(value) && !math.IsInf(value, 0), path, "%v is no finite number; give one", value)
+}
+
 // Positive demands a finite number above 0.
 func (c *Checks) Positive(path string, value float64) {
 	c.That(value > 0 && !math.IsInf(value, 0), path, "%v is not above 0; give a positive number", value)

@@ -21,7 +21,7 @@ func Names() []string { return configs.Names(configs.Profiles) }
 func Load(pathOrName string) (*Profile, error) {
 	source, err := config.Find(configs.Profiles, pathOrName)
 	if err != nil {
-		return nil, fmt.Errorf("profile %w", err)
+		return nil, err
 	}
 	return Parse(source.Name, source.Data, source.Beside)
 }

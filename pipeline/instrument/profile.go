@@ -70,6 +70,9 @@ type DMD struct {
 	StuckCSV string `yaml:"stuck_csv" config:"optional"`
 }
 
+// SetDefaults gives the optional keys their defaults.
+func (d *DMD) SetDefaults() { d.Parity = 1 }
+
 // Spectrograph is what lies between the DMD and the detector; the package's
 // documentation has the equations of its geometry.
 type Spectrograph struct {
@@ -193,6 +196,3 @@ type Grid struct {
 	StepNM  float64 `yaml:"step_nm"`
 	Count   int     `yaml:"count"`
 }
-
-// SetDefaults gives the optional keys of the profile itself their defaults.
-func (d *DMD) SetDefaults() { d.Parity = 1 }
