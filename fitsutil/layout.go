@@ -105,11 +105,18 @@ func (l *layout) reserve(from int64) error {
 
 // addSumCards appends CHECKSUM and DATASUM with placeholders as long as their
 // values.
-func addSumCards(h *Header) error {
-	if err := h.Set("CHECKSUM", strings.Repeat("0", 16), "HDU checksum"); err != nil {
-		return err
+func addSumCards(h *Header) {
+	h.push(sumCard("CHECKSUM", strings.Repeat("0", 16), "HDU checksum"))
+	h.push(sumCard("DATASUM", "0", "data unit checksum"))
+}
+
+// sumCard is a card of a sum, its comment at column 32 whatever the value.
+func sumCard(key, value, comment string) entry {
+	quoted := fmt.Sprintf("'%-8s'", value)
+	return entry{
+		card: Card{Key: key, Value: value, Comment: comment},
+		raw:  fmt.Appendf(nil, "%-80.80s", fmt.Sprintf("%-8s= %-20s / %s", key, quoted, comment)),
 	}
-	return h.Set("DATASUM", "0", "data unit checksum")
 }
 
 // sealHeader gives the bytes of a header with the CHECKSUM and DATASUM that go
@@ -117,22 +124,17 @@ func addSumCards(h *Header) error {
 // keep their place and their comments, which hold no date: the same HDU has
 // the same bytes.
 func sealHeader(h *Header, dataSum uint32) ([]byte, error) {
-	set := func(key, value string) error {
-		return h.Set(key, value, h.entries[h.index[key]].card.Comment)
+	set := func(key, value string) {
+		at := &h.entries[h.index[key]]
+		*at = sumCard(key, value, at.card.Comment)
 	}
-	if err := set("DATASUM", strconv.FormatUint(uint64(dataSum), 10)); err != nil {
-		return nil, err
-	}
-	if err := set("CHECKSUM", strings.Repeat("0", 16)); err != nil {
-		return nil, err
-	}
+	set("DATASUM", strconv.FormatUint(uint64(dataSum), 10))
+	set("CHECKSUM", strings.Repeat("0", 16))
 	bytes, err := h.encode()
 	if err != nil {
 		return nil, err
 	}
-	if err := set("CHECKSUM", encodeChecksum(addSums(dataSum, sumRun(0, bytes)))); err != nil {
-		return nil, err
-	}
+	set("CHECKSUM", encodeChecksum(addSums(dataSum, sumRun(0, bytes))))
 	return h.encode()
 }
 

@@ -88,8 +88,8 @@ func (c *Column) check(rows int) (columnFormat, error) {
 	if n := dataLength(c.Data); n != rows*format.elements() {
 		return columnFormat{}, fmt.Errorf("format %s and %d rows need %d values, not %d", c.Format, rows, rows*format.elements(), n)
 	}
-	if c.Null != nil && !strings.Contains("BIJK", string(format.code)) {
-		return columnFormat{}, fmt.Errorf("format %s allows no Null", c.Format)
+	if c.Null != nil && !holds(format.code, *c.Null) {
+		return columnFormat{}, fmt.Errorf("format %s cannot hold Null = %d", c.Format, *c.Null)
 	}
 	texts, _ := c.Data.([]string)
 	for i, text := range texts {
@@ -159,7 +159,8 @@ func (t *Table) makeHeader(plan *tableLayout) (*Header, error) {
 	if err := addExtra(h, t.Header, keepsInTable); err != nil {
 		return nil, err
 	}
-	return h, addSumCards(h)
+	addSumCards(h)
+	return h, nil
 }
 
 // keepsInTable tells which cards of a header are those that Table.Header

@@ -200,7 +200,8 @@ func imageHeader(s imageShape, extra *Header) (*Header, int64, error) {
 	if err := addExtra(h, extra, s.keeps); err != nil {
 		return nil, 0, err
 	}
-	return h, samples, addSumCards(h)
+	addSumCards(h)
+	return h, samples, nil
 }
 
 // keeps tells which of the caller's cards an image takes over. BLANK belongs
