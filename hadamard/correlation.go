@@ -140,22 +140,41 @@ func (s *bitScorer) scoreS(limit float64) float64 {
 	if l := limit * float64(s.g); l <= float64(s.g) {
 		stop = int(math.Ceil(l))
 	}
-	for i := range s.code.v {
-		mine := s.step(i)
-		for other := range i {
-			differ := 0
-			theirs := s.step(other)[:len(mine)]
-			for w, x := range mine {
-				differ += bits.OnesCount64(x ^ theirs[w])
-			}
-			n := s.g - 2*differ
-			largest = max(largest, n, -n)
-		}
-		if largest >= stop {
-			break
-		}
+	for i := 1; i < s.code.v && largest < stop; i++ {
+		least, most := extremes(s.step(i), s.bits[:i*s.words])
+		largest = max(largest, s.g-2*least, 2*most-s.g)
 	}
 	return float64(largest) / float64(s.g)
+}
+
+// extremes gives the least and the most bits in which mine differs from any of
+// the strings of as many words in others. One and two words, up to 128 dark
+// columns, have loops of their own: this is where the search spends its time.
+func extremes(mine, others []uint64) (least, most int) {
+	least = 64 * len(mine)
+	switch len(mine) {
+	case 1:
+		x := mine[0]
+		for _, y := range others {
+			n := bits.OnesCount64(x ^ y)
+			least, most = min(least, n), max(most, n)
+		}
+	case 2:
+		x0, x1 := mine[0], mine[1]
+		for ; len(others) >= 2; others = others[2:] {
+			n := bits.OnesCount64(x0^others[0]) + bits.OnesCount64(x1^others[1])
+			least, most = min(least, n), max(most, n)
+		}
+	default:
+		for ; len(others) >= len(mine); others = others[len(mine):] {
+			n := 0
+			for w, x := range mine {
+				n += bits.OnesCount64(x ^ others[w])
+			}
+			least, most = min(least, n), max(most, n)
+		}
+	}
+	return least, most
 }
 
 func (s *bitScorer) scoreAny(limit float64) float64 {

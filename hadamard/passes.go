@@ -130,12 +130,17 @@ func last8(s *transformScratch, to []int32, dst []float32, stride int, scale flo
 
 func scatter8(in, out *[8]*row, base *row, scale float32) {
 	r0, r1, r2, r3, r4, r5, r6, r7 := in[0], in[1], in[2], in[3], in[4], in[5], in[6], in[7]
-	butterfly8(r0, r1, r2, r3, r4, r5, r6, r7)
-	for t, o := range out {
-		r := in[t]
-		for p := range o {
-			o[p] = base[p] + float32(scale*r[p])
-		}
+	o0, o1, o2, o3, o4, o5, o6, o7 := out[0], out[1], out[2], out[3], out[4], out[5], out[6], out[7]
+	for p := range lanes {
+		a0, a1, a2, a3 := r0[p]+r1[p], r0[p]-r1[p], r2[p]+r3[p], r2[p]-r3[p]
+		a4, a5, a6, a7 := r4[p]+r5[p], r4[p]-r5[p], r6[p]+r7[p], r6[p]-r7[p]
+		a0, a1, a2, a3 = a0+a2, a1+a3, a0-a2, a1-a3
+		a4, a5, a6, a7 = a4+a6, a5+a7, a4-a6, a5-a7
+		b := base[p]
+		o0[p], o4[p] = b+float32(scale*(a0+a4)), b+float32(scale*(a0-a4))
+		o1[p], o5[p] = b+float32(scale*(a1+a5)), b+float32(scale*(a1-a5))
+		o2[p], o6[p] = b+float32(scale*(a2+a6)), b+float32(scale*(a2-a6))
+		o3[p], o7[p] = b+float32(scale*(a3+a7)), b+float32(scale*(a3-a7))
 	}
 }
 
