@@ -1,0 +1,140 @@
+package calib
+
+import (
+	"fmt"
+	"math"
+)
+
+// Resampler takes rows of pixels to voxels along x. It interpolates the running
+// sum of the row between pixel edges (see points) and takes the difference over
+// each voxel: local weights on the 8 to 11 pixels around a voxel of 0.5 to 3 px.
+// Immutable: any number of goroutines may share it.
+//
+// Accuracy: for lines of FWHM 3 px and voxels of 1 px the error is below 0.15 %
+// of the line's peak at every phase, below 0.5 % where a stencil is one-sided
+// (edges within 3 px of an end of the row; the outermost pixel 1 %).
+type Resampler struct {
+	pixels stencil
+}
+
+// Voxels receives one element and trace row, voxel i at index i*Stride of each
+// slice; a Stride above 1 writes straight into a strip [voxel][...].
+type Voxels struct {
+	Signal, Variance []float32
+	Flags            []Flag
+	Stride           int
+}
+
+// NewResampler serves rows whose columns first..last (inclusive, from 0) take
+// light; no other column is ever read. The light beyond is not zero but unknown:
+// the running sum is flat there and Coverage falls. At least 8 columns.
+func NewResampler(first, last int) (*Resampler, error) {
+	if first < 0 || last-first+1 < points {
+		return nil, fmt.Errorf("resampling: columns %d to %d are fewer than the %d that interpolation needs; check the detector's size", first, last, points)
+	}
+	return &Resampler{stencil{first: first, size: last - first + 1, table: tails()}}, nil
+}
+
+// Resample fills len(edges)-1 voxels from one row. edges, in detector x, rise or
+// fall; voxels tile what lies between.
+//
+//	Signal   = sum w v         light between the edges; of the covered part only
+//	Variance = sum w^2 var     exact for independent pixels; neighbours correlate
+//	Flags    = the flags of pixels with |w| reach > 0.1, Partial below 99 % of
+//	           coverage, NoData below 50 %
+//
+// Signal and Variance are NaN where Flags holds NoData, whether the edges or a
+// pixel brought it. Flagged pixels take part with the value that stands in signal:
+// put a harmless one there first (Fill). signal and variance must be finite, flags
+// may be nil. dst is
+// overwritten, Flags too; nothing is allocated.
+func (r *Resampler) Resample(dst Voxels, signal, variance []float32, flags *RowFlags, edges []float64) {
+	if len(edges) < 2 {
+		return
+	}
+	one, other := newEdge(), newEdge()
+	last, next := &one, &other
+	r.pixels.set(last, edges[0])
+	at := 0
+	for i := 1; i < len(edges); i++ {
+		r.pixels.set(next, edges[i])
+		low, high := last, next
+		if low.place > high.place {
+			low, high = high, low
+		}
+		v := r.voxel(low, high, signal, variance, flags)
+		cover := (high.place - low.place) / math.Abs(edges[i]-edges[i-1])
+		if cover < fullCover {
+			v.flags |= Partial
+		}
+		if !(cover >= halfCover) {
+			v.flags |= NoData
+		}
+		if v.flags&NoData != 0 {
+			v.signal, v.variance = nan32, nan32
+		}
+		dst.Signal[at], dst.Variance[at], dst.Flags[at] = v.signal, v.variance, v.flags
+		at += dst.Stride
+		last, next = next, last
+	}
+}
+
+var nan32 = float32(math.NaN())
+
+// A voxel's result.
+type voxel struct {
+	signal, variance float32
+	flags            Flag
+}
+
+func (r *Resampler) voxel(low, high *edge, signal, variance []float32, flags *RowFlags) voxel {
+	apart := high.base - low.base
+	if apart > pad {
+		return r.wideVoxel(low, high, signal, variance, flags)
+	}
+	size := taps + apart
+	first := low.base
+	// The weight of pixel first+i is tail i-apart of the upper edge minus tail i of
+	// the lower one.
+	a := high.tails[pad-apart:][:size]
+	b := low.tails[pad:][:size]
+	v := signal[first:][:size]
+	q := variance[first:][:size]
+	var out voxel
+	for i, t := range a {
+		w := t - b[i]
+		out.signal += w * v[i]
+		out.variance += w * w * q[i]
+	}
+	if flags.touched(first, first+size) {
+		var w [taps + pad]float32
+		for i, t := range a {
+			w[i] = t - b[i]
+		}
+		out.flags = flags.gather(first, w[:size])
+	}
+	return out
+}
+
+// wideVoxel is voxel for edges so far apart that whole pixels lie between their
+// stencils.
+func (r *Resampler) wideVoxel(low, high *edge, signal, variance []float32, flags *RowFlags) voxel {
+	var out voxel
+	weigh := func(x int, w float32) {
+		out.signal += w * signal[x]
+		out.variance += w * w * variance[x]
+		if flags.touched(x, x+1) {
+			out.flags |= flags.gather(x, []float32{w})
+		}
+	}
+	for x := low.base; x < low.base+taps; x++ {
+		weigh(x, 1-low.tails[pad+x-low.base])
+	}
+	for x := low.base + taps; x < high.base; x++ {
+		weigh(x, 1)
+	}
+	for x := high.base; x < high.base+taps; x++ {
+		weigh(x, high.tails[pad+x-high.base])
+	}
+	return out
+}

@@ -1,0 +1,192 @@
+package calib
+
+import (
+	"fmt"
+	"math"
+)
+
+// RowShift straightens traces: for a trace row y0 it gathers, in each column x, the
+// light between y0 - 0.5 + t(x) and y0 + 0.5 + t(x). The running sum along the
+// column is interpolated as in Resampler; for a height of exactly one pixel the
+// weights are the interpolant's own, on eight rows. They are computed once for the
+// detector, so that a row costs eight multiply-adds a pixel. Immutable: any number
+// of goroutines may share it.
+//
+// Rows near the detector's lower and upper end use one-sided stencils. Nothing is
+// known beyond the ends: the running sum is flat there, the pixel's coverage
+// falls, and Flags says so.
+type RowShift struct {
+	columns, rows int
+	plans         []*rowPlan // by y0; all inner rows share one
+}
+
+// A rowPlan holds the weights of one trace row.
+type rowPlan struct {
+	weights     []float32 // [column][points]
+	runs        []run
+	cover       []Flag // per column: Partial, NoData; nil when all is covered
+	first, last int    // rows read, relative to y0, inclusive
+}
+
+// A run is a range of columns x0..x1-1 whose weights begin at the same row,
+// relative to y0.
+type run struct{ x0, x1, row int }
+
+// NewRowShift plans for shift[x] = t(x), in rows, on a detector of len(shift)
+// columns and at least 8 rows. shift is not kept.
+func NewRowShift(shift []float64, rows int) (*RowShift, error) {
+	if rows < points {
+		return nil, fmt.Errorf("resampling: %d rows are fewer than the %d that interpolation needs; check the detector's size", rows, points)
+	}
+	low, high := math.Inf(1), math.Inf(-1)
+	for x, t := range shift {
+		if math.IsNaN(t) || math.IsInf(t, 0) {
+			return nil, fmt.Errorf("resampling: the trace's shift at column %d is not a finite number; check the geometry", x)
+		}
+		low, high = min(low, t), max(high, t)
+	}
+	s := &RowShift{columns: len(shift), rows: rows, plans: make([]*rowPlan, rows)}
+	column := stencil{size: rows, table: tails()}
+	var inner *rowPlan
+	for y0 := range s.plans {
+		if y0+int(math.Floor(low)) >= middle && y0+int(math.Floor(high)) < rows-points+middle {
+			if inner == nil {
+				inner = column.plan(shift, y0)
+			}
+			s.plans[y0] = inner
+			continue
+		}
+		s.plans[y0] = column.plan(shift, y0)
+	}
+	return s, nil
+}
+
+// plan computes the weights of trace row y0.
+func (s *stencil) plan(shift []float64, y0 int) *rowPlan {
+	p := &rowPlan{weights: make([]float32, len(shift)*points), first: math.MaxInt, last: math.MinInt}
+	cover := make([]Flag, len(shift))
+	whole := true
+	low, high := newEdge(), newEdge()
+	for x, t := range shift {
+		s.set(&low, float64(y0)-0.5+t)
+		s.set(&high, float64(y0)+0.5+t)
+		start := min(low.base, s.size-points)
+		w := p.weights[x*points:][:points]
+		for i := range w {
+			w[i] = high.tails[pad+start-high.base+i] - low.tails[pad+start-low.base+i]
+		}
+		switch c := high.place - low.place; {
+		case c < halfCover:
+			cover[x] = NoData | Partial
+		case c < fullCover:
+			cover[x] = Partial
+		}
+		whole = whole && cover[x] == 0
+		p.add(x, start-y0)
+	}
+	if !whole {
+		p.cover = cover
+	}
+	return p
+}
+
+// add appends column x, whose weights begin at row, to the runs.
+func (p *rowPlan) add(x, row int) {
+	p.first, p.last = min(p.first, row), max(p.last, row+points-1)
+	if n := len(p.runs); n > 0 && p.runs[n-1].row == row {
+		p.runs[n-1].x1 = x + 1
+		return
+	}
+	p.runs = append(p.runs, run{x, x + 1, row})
+}
+
+// Span is the range of detector rows, inclusive, that trace row y0 reads.
+func (s *RowShift) Span(y0 int) (first, last int) {
+	p := s.plans[y0]
+	if len(p.runs) == 0 {
+		return y0, y0 - 1
+	}
+	return y0 + p.first, y0 + p.last
+}
+
+// Signal writes trace row y0 to dst, one value a column: sum w v. rows[i] is
+// detector row first+i; all of Span(y0) must be among them.
+func (s *RowShift) Signal(dst []float32, rows [][]float32, first, y0 int) {
+	p := s.plans[y0]
+	for _, r := range p.runs {
+		out := dst[r.x0:r.x1]
+		q := window(rows, y0+r.row-first, r)
+		w := p.weights[r.x0*points:]
+		for x := range out {
+			u := w[x*points:][:points]
+			out[x] = u[0]*q[0][x] + u[1]*q[1][x] + u[2]*q[2][x] + u[3]*q[3][x] +
+				u[4]*q[4][x] + u[5]*q[5][x] + u[6]*q[6][x] + u[7]*q[7][x]
+		}
+	}
+}
+
+// Variance is Signal for variances: sum w^2 var.
+func (s *RowShift) Variance(dst []float32, rows [][]float32, first, y0 int) {
+	p := s.plans[y0]
+	for _, r := range p.runs {
+		out := dst[r.x0:r.x1]
+		q := window(rows, y0+r.row-first, r)
+		w := p.weights[r.x0*points:]
+		for x := range out {
+			u := w[x*points:][:points]
+			out[x] = u[0]*u[0]*q[0][x] + u[1]*u[1]*q[1][x] + u[2]*u[2]*q[2][x] + u[3]*u[3]*q[3][x] +
+				u[4]*u[4]*q[4][x] + u[5]*u[5]*q[5][x] + u[6]*u[6]*q[6][x] + u[7]*u[7]*q[7][x]
+		}
+	}
+}
+
+// window cuts the eight rows of a run, the first of which is rows[at].
+func window(rows [][]float32, at int, r run) [points][]float32 {
+	var q [points][]float32
+	for i := range q {
+		q[i] = rows[at+i][r.x0:r.x1]
+	}
+	return q
+}
+
+// Flags gathers the flags of trace row y0: those of pixels that reach it with more
+// than 0.1, and Partial (below 99 %) and NoData (below 50 %) where the trace leaves
+// the detector. Where several flagged pixels of a column reach, their weights add
+// up: a column that is bad in every row reaches its trace rows whole.
+func (s *RowShift) Flags(dst *RowFlags, rows [][]Flag, first, y0 int) {
+	dst.resize(s.columns)
+	p := s.plans[y0]
+	for _, r := range p.runs {
+		for x := r.x0; x < r.x1; x++ {
+			w := p.weights[x*points:][:points]
+			dst.Bits[x], dst.Reach[x] = reach(w, rows[y0+r.row-first:], x)
+		}
+	}
+	for x, c := range p.cover {
+		if c != 0 {
+			dst.Bits[x] |= c
+			dst.Reach[x] = 1
+		}
+	}
+	dst.count()
+}
+
+func reach(w []float32, rows [][]Flag, x int) (bits Flag, reach float32) {
+	var sum, most float32
+	for i, u := range w {
+		b := rows[i][x]
+		if b == 0 {
+			continue
+		}
+		sum += u
+		size := max(u, -u)
+		if size > reachLimit {
+			bits |= b
+		}
+		most = max(most, size)
+	}
+	if bits == 0 {
+		return 0, 0
+	}
+	return bits, max(most, sum, -sum)
+}
