@@ -7,6 +7,7 @@ import (
 	"io"
 	"regexp"
 	"strings"
+	"unicode"
 	"unicode/utf8"
 
 	"go.yaml.in/yaml/v4"
@@ -35,8 +36,8 @@ func Parse(name string, data []byte) (*Doc, error) {
 	if len(data) > maxBytes {
 		return nil, &Error{File: name, What: fmt.Sprintf("the file has %d bytes, more than a configuration may have (%d); give a smaller file", len(data), maxBytes)}
 	}
-	if !utf8.Valid(data) {
-		return nil, &Error{File: name, Line: firstBadLine(data), What: "the text is not UTF-8; save the file as UTF-8"}
+	if err := checkText(name, data); err != nil {
+		return nil, err
 	}
 	root, err := load(name, data)
 	if err != nil {
@@ -57,19 +58,23 @@ func (d *Doc) Name() string {
 	return d.name
 }
 
-func firstBadLine(data []byte) int {
+// checkText demands UTF-8 without control characters but tab and line ends: the
+// library refuses most of them too, but does not say where.
+func checkText(name string, data []byte) error {
 	line := 1
 	for i := 0; i < len(data); {
 		r, size := utf8.DecodeRune(data[i:])
-		if r == utf8.RuneError && size <= 1 {
-			break
-		}
-		if r == '\n' {
+		switch {
+		case r == utf8.RuneError && size <= 1:
+			return &Error{File: name, Line: line, What: "the text is not UTF-8; save the file as UTF-8"}
+		case r == '\n':
 			line++
+		case unicode.IsControl(r) && r != '\t' && r != '\r':
+			return &Error{File: name, Line: line, What: fmt.Sprintf("the text holds the control character %U; delete it", r)}
 		}
 		i += size
 	}
-	return line
+	return nil
 }
 
 // load runs the library over the text and returns the mapping at its root.
@@ -128,7 +133,7 @@ func syntaxError(name string, err error) error {
 		}
 	}
 	// The library's text may be of several lines; a refusal is one sentence.
-	e.What = "not YAML (" + strings.Join(strings.Fields(text), " ") + "); mend the syntax of this line"
+	e.What = "not YAML (" + strings.Join(strings.Fields(text), " ") + "); mend the syntax there"
 	return e
 }
 
@@ -206,7 +211,8 @@ func describe(n *yaml.Node) string {
 	case yaml.SequenceNode:
 		return "a list"
 	case yaml.ScalarNode:
-		if n.Style&(yaml.SingleQuotedStyle|yaml.DoubleQuotedStyle|yaml.LiteralStyle|yaml.FoldedStyle) != 0 {
+		// Plain text of several lines may hold line ends.
+		if !plain(n) || strings.ContainsFunc(n.Value, unicode.IsControl) {
 			return fmt.Sprintf("the text %q", short(n.Value))
 		}
 		return short(n.Value)
