@@ -1,0 +1,121 @@
+package plan
+
+import (
+	"context"
+	"errors"
+	"fmt"
+
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/config"
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/sequence"
+)
+
+// Options of Run.
+type Options struct {
+	// Target and Profile are paths, or names of embedded files.
+	Target, Profile string
+	// Out is the folder to write into, made if there is none. It must hold no
+	// sequence; giving it its final name when it is whole is the caller's part.
+	Out string
+}
+
+// Run plans and writes a sequence. Errors are one sentence that names file or
+// key and the cure; a folder in which Run failed or was cancelled is to be
+// removed.
+func Run(ctx context.Context, o Options) (*Summary, error) {
+	profile, err := instrument.Load(o.Profile)
+	if err != nil {
+		return nil, err
+	}
+	target, err := sequence.LoadTarget(o.Target)
+	if err != nil {
+		return nil, err
+	}
+	s, summary, err := Build(ctx, target, profile)
+	if err != nil {
+		var c *config.Error
+		if errors.As(err, &c) && c.File == "" {
+			c.File = o.Target
+		}
+		return nil, err
+	}
+	if err := s.Write(ctx, o.Out); err != nil {
+		return nil, err
+	}
+	summary.SequenceSHA = s.SHA
+	summary.Masks = countMasks(s)
+	return summary, nil
+}
+
+// Build plans a sequence in memory: masks are named when it is written. The
+// target is left as it is; the sequence's own has code.v and code.dark filled
+// in. Errors about the target are a *config.Error with the key path.
+func Build(ctx context.Context, target *sequence.Target, profile *instrument.Profile) (*sequence.Sequence, *Summary, error) {
+	if err := profile.Validate(); err != nil {
+		return nil, nil, fmt.Errorf("profile: %w", err)
+	}
+	if err := target.Check(); err != nil {
+		return nil, nil, err
+	}
+	o := newOptics(profile, target)
+	if err := o.checkRowsSeen(); err != nil {
+		return nil, nil, err
+	}
+	if err := o.checkTrace(); err != nil {
+		return nil, nil, err
+	}
+	code, n, err := chooseCode(target.Code, o)
+	if err != nil {
+		return nil, nil, err
+	}
+	if err := o.checkField(n); err != nil {
+		return nil, nil, err
+	}
+	if err := checkRows(target, profile, n); err != nil {
+		return nil, nil, err
+	}
+	dark, err := hadamard.ChooseDark(ctx, code, code.V()-n, uint64(target.Code.Seed))
+	if err != nil {
+		return nil, nil, fmt.Errorf("choosing the dark columns: %w", err)
+	}
+	s := assemble(target, profile, code, dark.Columns)
+	if len(s.Steps) > maxSteps {
+		return nil, nil, refuse("code.cycles", "the target asks for %d exposures where a sequence has at most %d; ask for fewer cycles or calibration frames", len(s.Steps), maxSteps)
+	}
+	return s, summarize(s, code, dark, o), nil
+}
+
+// maxSteps bounds the memory of a plan: its code bits are maxSteps * v bytes.
+const maxSteps = 20000
+
+// assemble makes the sequence of a code whose dark columns are chosen.
+func assemble(target *sequence.Target, profile *instrument.Profile, code *hadamard.Code, dark []int) *sequence.Sequence {
+	resolved := *target
+	v, g := code.V(), len(dark)
+	resolved.Code.V, resolved.Code.Dark = &v, &g
+	wFirst, wLast := profile.WRange()
+	s := &sequence.Sequence{
+		Family: string(code.Family()), V: v, K: code.K(), L: code.L(), Poly: code.Poly(),
+		OrderSeed: uint64(target.Code.Seed),
+		Elements:  strips(profile, v, dark, target.Code.ElementMirrors),
+		Rows:      target.RowRanges(wFirst, wLast),
+		Profile:   profile,
+		Target:    &resolved,
+	}
+	newExposures(s, code).night()
+	return s
+}
+
+// refuse makes an error about a key of the target.
+func refuse(path, format string, args ...any) error {
+	return &config.Error{Path: path, What: fmt.Sprintf(format, args...)}
+}
+
+func countMasks(s *sequence.Sequence) int {
+	seen := map[string]bool{}
+	for _, st := range s.Steps {
+		seen[st.MaskID] = true
+	}
+	return len(seen)
+}
