@@ -85,7 +85,7 @@ func newPatch(flags []Flag, mask Flag, x int) patch {
 	}
 	gap := after[0] - before[0] - 1
 	for side := min(nBefore, nAfter); side > 1; side /= 2 {
-		if gap > side/2 && gap > 1 || after[side-1]-before[side-1] > 4*side {
+		if gap > 6-side || after[side-1]-before[side-1] > 4*side {
 			continue
 		}
 		if p.interpolate(before[:side], after[:side]) <= fillNoise {
