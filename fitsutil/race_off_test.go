@@ -1,0 +1,5 @@
+//go:build !race
+
+package fitsutil
+
+const raceEnabled = false
