@@ -46,7 +46,7 @@ type partFile struct {
 // not end as the target's does, so that nobody takes it for a product.
 func createPart(path string) (*partFile, error) {
 	if info, err := os.Stat(path); err == nil && info.IsDir() {
-		return nil, fileError(path, ErrNotFITS, "is a folder", "name a file to write")
+		return nil, fileError(path, syscall.EISDIR, "is a folder", "name a file to write")
 	}
 	folder, base := filepath.Split(path)
 	for {
