@@ -28,6 +28,11 @@ const (
 	Relabelled    Verdict = "relabelled"     // used for another step than its header says
 )
 
+// Verdicts lists the verdicts in the order in which tables count them.
+func Verdicts() []Verdict {
+	return []Verdict{OK, Relabelled, Missing, Duplicate, WrongMask, WrongExposure, WrongSize, Unreadable, Extra}
+}
+
 // Used tells whether frames of this verdict enter the reduction.
 func (v Verdict) Used() bool { return v == OK || v == Relabelled }
 
