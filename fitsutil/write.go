@@ -81,9 +81,13 @@ func sortHDUs(path string, hdus []any) (images []*ImageData, tables []*Table, er
 	for i, hdu := range hdus {
 		switch h := hdu.(type) {
 		case *ImageData:
-			images[i], names[i] = h, h.Name
+			if images[i] = h; h != nil {
+				names[i] = h.Name
+			}
 		case *Table:
-			tables[i], names[i] = h, h.Name
+			if tables[i] = h; h != nil {
+				names[i] = h.Name
+			}
 		}
 		if images[i] == nil && tables[i] == nil {
 			return nil, nil, fileError(path, ErrType, fmt.Sprintf("HDU %d of those to write is a %T", i, hdu), "give an *ImageData or a *Table")
