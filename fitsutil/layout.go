@@ -152,7 +152,9 @@ func createLayout(path string) (*layout, error) {
 func structural(key string) bool {
 	switch key {
 	case "SIMPLE", "XTENSION", "BITPIX", "NAXIS", "PCOUNT", "GCOUNT", "GROUPS", "EXTEND", "BSCALE", "BZERO",
-		"TFIELDS", "THEAP", "CHECKSUM", "DATASUM", "LONGSTRN", "END":
+		"TFIELDS", "THEAP", "CHECKSUM", "DATASUM", "LONGSTRN", "END",
+		// One that continues nothing would continue whatever comes to lie before it.
+		continueKey:
 		return true
 	}
 	return numbered(key, "NAXIS")
@@ -167,21 +169,20 @@ func numbered(key, stem string) bool {
 // addExtra appends the caller's cards that keep accepts, with the bytes they
 // were read with, and the LONGSTRN card that announces long strings.
 func addExtra(h, extra *Header, keep func(key string) bool) error {
-	if extra == nil {
-		return nil
-	}
-	if err := extra.Err(); err != nil {
-		return err
-	}
-	long := false
-	for _, e := range extra.entries {
-		if key := foldKey(e.card.Key); key == "" || keep(key) {
-			h.push(e)
-			long = long || len(e.raw) > cardSize && e.hasValue()
+	if extra != nil {
+		if err := extra.Err(); err != nil {
+			return err
+		}
+		for _, e := range extra.entries {
+			if keep(foldKey(e.card.Key)) {
+				h.push(e)
+			}
 		}
 	}
-	if long {
-		return h.Set("LONGSTRN", "OGIP 1.0", "long strings go on in CONTINUE cards")
+	for _, e := range h.entries {
+		if e.hasValue() && len(e.raw) > cardSize {
+			return h.Set("LONGSTRN", "OGIP 1.0", "long strings go on in CONTINUE cards")
+		}
 	}
 	return nil
 }
