@@ -16,8 +16,11 @@ type HotRule struct {
 }
 
 // DefaultHotRule: 8 neighbours on each side; 8 sigmas, which chance reaches in one
-// pixel of 1e15.
-func DefaultHotRule() HotRule { return HotRule{Window: 8, Sigmas: 8} }
+// pixel of 1e15. excess keeps a dark whose scatter is 0, as made by no detector,
+// from being hot all over: some electrons.
+func DefaultHotRule(excess float64) HotRule {
+	return HotRule{Window: 8, Sigmas: 8, Excess: excess}
+}
 
 // Flag sets BadPixel on the hot pixels of a master dark, rows of width one after the
 // other, and returns their number. A pixel that is not a number is bad too.

@@ -202,20 +202,34 @@ func newEdge() edge {
 // set computes the tails for the detector coordinate x. Beyond the ends of the
 // run, and at NaN, it is the nearer end, or the left one: no light lies there.
 func (s *stencil) set(e *edge, x float64) {
+	// Comparisons instead of min and max: those mind signed zeros and NaN, at a cost.
 	p := x + 0.5 - float64(s.first)
 	if !(p > 0) {
 		p = 0
 	}
-	p = min(p, float64(s.size))
-	m := min(int(p), s.size-1)
+	if p > float64(s.size) {
+		p = float64(s.size)
+	}
+	m := int(p)
+	if m == s.size {
+		m--
+	}
 	base := min(max(m-middle, 0), s.size-taps)
 	phase := (p - float64(m)) * phases
-	n := min(int(phase), phases-1)
-	t := float32(phase - float64(n))
-	c := &s.table[m-base]
-	low, high := &c[n], &c[n+1]
-	for i := range taps {
-		e.tails[pad+i] = low[i] + t*(high[i]-low[i])
+	n := int(phase)
+	if n == phases {
+		n--
 	}
+	t := float32(phase - float64(n))
+	both := s.table[m-base][n:][:2]
+	low, high := &both[0], &both[1]
+	out := (*[taps]float32)(e.tails[pad:])
+	out[0] = low[0] + t*(high[0]-low[0])
+	out[1] = low[1] + t*(high[1]-low[1])
+	out[2] = low[2] + t*(high[2]-low[2])
+	out[3] = low[3] + t*(high[3]-low[3])
+	out[4] = low[4] + t*(high[4]-low[4])
+	out[5] = low[5] + t*(high[5]-low[5])
+	out[6] = low[6] + t*(high[6]-low[6])
 	e.place, e.base = p, base+s.first
 }

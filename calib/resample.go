@@ -11,8 +11,8 @@ import (
 // Immutable: any number of goroutines may share it.
 //
 // Accuracy: for lines of FWHM 3 px and voxels of 1 px the error is below 0.15 %
-// of the line's peak at every phase, below 0.5 % where a stencil is one-sided
-// (edges within 3 px of an end of the row; the outermost pixel 1 %).
+// of the line's peak at every phase; below 0.7 % where stencils are one-sided, in
+// the last 3 px at an end of the row, and 1 % for a line centred beyond the end.
 type Resampler struct {
 	pixels stencil
 }
@@ -101,8 +101,13 @@ func (r *Resampler) voxel(low, high *edge, signal, variance []float32, flags *Ro
 	v := signal[first:][:size]
 	q := variance[first:][:size]
 	var out voxel
-	for i, t := range a {
-		w := t - b[i]
+	at := 0
+	if size >= points {
+		out.signal, out.variance = weighEight((*[points]float32)(a), (*[points]float32)(b), (*[points]float32)(v), (*[points]float32)(q))
+		at = points
+	}
+	for i := at; i < size; i++ {
+		w := a[i] - b[i]
 		out.signal += w * v[i]
 		out.variance += w * w * q[i]
 	}
@@ -114,6 +119,17 @@ func (r *Resampler) voxel(low, high *edge, signal, variance []float32, flags *Ro
 		out.flags = flags.gather(first, w[:size])
 	}
 	return out
+}
+
+// weighEight is the inner loop for the usual size, written out: sums in pairs are
+// shorter chains, and constant indices need no checks.
+func weighEight(a, b, v, q *[points]float32) (signal, variance float32) {
+	w0, w1, w2, w3 := a[0]-b[0], a[1]-b[1], a[2]-b[2], a[3]-b[3]
+	w4, w5, w6, w7 := a[4]-b[4], a[5]-b[5], a[6]-b[6], a[7]-b[7]
+	signal = (w0*v[0] + w1*v[1]) + (w2*v[2] + w3*v[3]) + ((w4*v[4] + w5*v[5]) + (w6*v[6] + w7*v[7]))
+	variance = (w0*w0*q[0] + w1*w1*q[1]) + (w2*w2*q[2] + w3*w3*q[3]) +
+		((w4*w4*q[4] + w5*w5*q[5]) + (w6*w6*q[6] + w7*w7*q[7]))
+	return signal, variance
 }
 
 // wideVoxel is voxel for edges so far apart that whole pixels lie between their
