@@ -92,14 +92,13 @@ func inverseOf(c *Code) *mat.Dense {
 
 // multiply is the naive m x, x as [row][pixel], in float64.
 func multiply(m *mat.Dense, x []float32, pixels, stride int) []float64 {
-	n, v := m.Dims()
+	n, _ := m.Dims()
 	out := make([]float64, n*pixels)
 	for i := range n {
 		o := out[i*pixels : (i+1)*pixels]
-		for j := range v {
-			a := m.At(i, j)
-			for p := range o {
-				o[p] += a * float64(x[j*stride+p])
+		for j, a := range m.RawRowView(i) {
+			for p, b := range x[j*stride : j*stride+pixels] {
+				o[p] += a * float64(b)
 			}
 		}
 	}

@@ -1,0 +1,165 @@
+package hadamard
+
+import (
+	"fmt"
+	"math/rand/v2"
+	"strconv"
+	"strings"
+	"testing"
+
+	"github.com/stretchr/testify/require"
+
+	"mirrorloom/internal/outside"
+)
+
+// naiveTransform does the stages h = 1, 2, 4, ... one by one.
+func naiveTransform(rows []row) {
+	for h := 1; h < len(rows); h *= 2 {
+		for i := range rows {
+			if i&h != 0 {
+				continue
+			}
+			for p := range lanes {
+				a, b := rows[i][p], rows[i+h][p]
+				rows[i][p], rows[i+h][p] = a+b, a-b
+			}
+		}
+	}
+}
+
+// TestPassesMeetStages: for every size the grouped passes give the bits of the
+// single stages, with the mean subtracted first and scale and base last. This
+// is the test that passes for another instruction set have to meet too.
+func TestPassesMeetStages(t *testing.T) {
+	for degree := minDegree; degree <= maxDegree; degree++ {
+		c := mustCode(t, MSequence, 1<<degree-1)
+		rng := rand.New(rand.NewPCG(uint64(degree), 3))
+		tr := newTransform(c)
+		s := tr.scratch.New().(*transformScratch)
+		for i := range s.rows {
+			for p := range lanes {
+				s.rows[i][p] = float32(rng.NormFloat64())
+			}
+		}
+		for p := range lanes {
+			s.mean[p], s.base[p] = float32(rng.NormFloat64()), float32(rng.NormFloat64())
+		}
+		want := append([]row(nil), s.rows...)
+		for i := range want {
+			for p := range lanes {
+				want[i][p] -= s.mean[p]
+			}
+		}
+		naiveTransform(want)
+		const scale = 0.37
+		dst := make([]float32, c.V()*lanes)
+		tr.run(s, &tr.columns, dst, lanes, scale)
+		for place := 1; place <= c.V(); place++ {
+			got := rowAt(dst, int(tr.columns.row[place])*lanes)
+			for p := range lanes {
+				require.Equal(t, s.base[p]+float32(scale*want[place][p]), got[p], "v = %d place %d", c.V(), place)
+			}
+		}
+	}
+}
+
+// TestSchedule: the passes cover each stage once, in order.
+func TestSchedule(t *testing.T) {
+	for degree := minDegree; degree <= maxDegree; degree++ {
+		first8, middle, last := schedule(degree)
+		h := 1
+		if first8 {
+			h = 8
+		}
+		for _, m := range middle {
+			require.Equal(t, h, m.h)
+			require.Contains(t, []int{4, 8}, m.radix)
+			h *= m.radix
+		}
+		require.Equal(t, h, last.h)
+		require.Contains(t, []int{4, 8}, last.radix)
+		require.Equal(t, 1<<degree, h*last.radix)
+	}
+}
+
+// TestGatherSums: rows go to their places, and the sum is taken in the fixed
+// order of groups of four.
+func TestGatherSums(t *testing.T) {
+	for _, v := range []int{3, 7, 31} {
+		src := randomBlock(uint64(v), v, lanes+1)
+		index := placesOf(stepIndex(degreeOf(v))).index
+		rows, sum := make([]row, v+1), row{}
+		gather(rows, &sum, src, index, lanes+1)
+		for p := range lanes {
+			at := func(i int) float32 { return src[i*(lanes+1)+p] }
+			want, i := float32(0), 0
+			for ; i+4 <= v; i += 4 {
+				want += (at(i) + at(i+1)) + (at(i+2) + at(i+3))
+			}
+			for ; i < v; i++ {
+				want += at(i)
+			}
+			require.Equal(t, want, sum[p])
+			for i := range v {
+				require.Equal(t, at(i), rows[index[i]][p])
+			}
+		}
+	}
+}
+
+// TestHadamardBetweenPermutations: 1-2W[i][j] is the Sylvester matrix's entry
+// (stepIndex[i], columnIndex[j]), the parity of their common bits.
+func TestHadamardBetweenPermutations(t *testing.T) {
+	for degree := minDegree; degree <= 9; degree++ {
+		c := mustCode(t, MSequence, 1<<degree-1)
+		steps, columns := stepIndex(degree), columnIndex(degree)
+		for i, u := range steps {
+			for j, w := range columns {
+				if c.Bit(i, j) != parity(u&w) {
+					t.Fatalf("v = %d: bit (%d, %d)", c.V(), i, j)
+				}
+			}
+		}
+	}
+}
+
+func parity(x int) uint8 {
+	p := uint8(0)
+	for ; x != 0; x &= x - 1 {
+		p ^= 1
+	}
+	return p
+}
+
+// TestCrosscheckSylvester: both transforms, applied to unit vectors, give
+// scipy.linalg.hadamard's matrix.
+func TestCrosscheckSylvester(t *testing.T) {
+	orders := []int{4, 8, 16, 128}
+	var args []string
+	for _, order := range orders {
+		args = append(args, strconv.Itoa(order))
+	}
+	lines := strings.Fields(outside.Python(t, "hadamard_sylvester.py", args...))
+	for _, order := range orders {
+		require.GreaterOrEqual(t, len(lines), order)
+		requireSylvester(t, lines[:order])
+		lines = lines[order:]
+	}
+	require.Empty(t, lines)
+}
+
+func requireSylvester(t *testing.T, lines []string) {
+	t.Helper()
+	for i, line := range lines {
+		require.Len(t, line, len(lines))
+		ints, rows := make([]int32, len(lines)), make([]row, len(lines))
+		ints[i], rows[i][5] = 1, 1
+		transformInts(ints)
+		naiveTransform(rows)
+		for j, sign := range []byte(line) {
+			want := int32(44 - int(sign)) // '+' is 43, '-' is 45
+			require.Equal(t, want, ints[j], fmt.Sprint(i, j))
+			require.Equal(t, float32(want), rows[j][5], fmt.Sprint(i, j))
+		}
+	}
+}
