@@ -1,0 +1,226 @@
+package reduce
+
+import (
+	"mirrorloom/calib"
+	"mirrorloom/hadamard"
+)
+
+// blockPixels is the number of pixels decoded together: a block of all slots
+// and its result stay in the second-level cache (2 x 127 x 256 floats are 260
+// kB; at v = 1023 still within 2 MB).
+const blockPixels = 256
+
+// decoder turns strips of science frames into decoded rows.
+type decoder struct {
+	code    *hadamard.Decoder
+	columns int
+	slots   int
+	// elementColumns and darkColumns are the code columns of the elements, in
+	// field order, and of the dark ones.
+	elementColumns, darkColumns []int
+	k                           float64
+	// weight[i] is 1/frames of slot i: the photon noise of a mean. A lost slot
+	// has 0 and is named in lost.
+	weight []float64
+	lost   []int
+	// slotWeight is the sum of weight: how many samples' noise a sum over the
+	// slots holds.
+	slotWeight float64
+}
+
+// decodeWorker is the scratch memory of one worker.
+type decodeWorker struct {
+	samples, decoded, variance, smooth []float32
+	sum, square                        []float64
+}
+
+func (d *decoder) newWorker() *decodeWorker {
+	n := d.block()
+	w := &decodeWorker{
+		samples: make([]float32, d.slots*n), decoded: make([]float32, d.slots*n),
+		sum: make([]float64, n), square: make([]float64, n),
+	}
+	if !d.code.VarianceUniform() {
+		w.variance, w.smooth = make([]float32, d.slots*n), make([]float32, d.slots*n)
+	}
+	return w
+}
+
+// block is the number of pixels of a block: a whole row where the variance is
+// smoothed along it.
+func (d *decoder) block() int {
+	if !d.code.VarianceUniform() {
+		return d.columns
+	}
+	return min(blockPixels, d.columns)
+}
+
+func (d *decoder) blocks() int { return (d.columns + d.block() - 1) / d.block() }
+
+// darkChi2 is the sum over dark columns and good pixels of the squared decode in
+// units of its variance, and the number of terms.
+type darkChi2 struct {
+	sum   float64
+	terms int
+}
+
+// run decodes block b of row y into out and into the element cube's planes, if
+// there are any.
+func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) darkChi2 {
+	x0 := b * d.block()
+	x1 := min(x0+d.block(), d.columns)
+	n := x1 - x0
+	at := (y-s.y0)*d.columns + x0
+	flags := s.flags[at : at+n]
+	quiet := s.quiet[y-s.y0][x0:x1]
+	d.load(w, s, at, n)
+	d.code.Decode(w.decoded, w.samples, n, n)
+	uniform := d.code.VarianceUniform()
+	if uniform {
+		d.uniformVariance(out.variance[0][x0:x1], w, s, at, quiet)
+	} else {
+		d.ownVariances(w, s, at, n, quiet)
+	}
+	for j, col := range d.elementColumns {
+		copy(out.signal[j][x0:x1], w.decoded[col*n:(col+1)*n])
+		if !uniform {
+			copy(out.variance[j][x0:x1], w.variance[col*n:(col+1)*n])
+		}
+	}
+	copy(out.flags[x0:x1], flags)
+	s.keep(w, at, n, out, x0, uniform)
+	return d.chi2(w, out, flags, x0, n)
+}
+
+// load copies a block of all slots, less its bias and level, into the worker's
+// memory, and sums over the slots what the variances need. The bias is taken
+// off before the sums are: the level's light has photon noise as well.
+func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
+	clear(w.sum[:n])
+	clear(w.square[:n])
+	base := s.base[at : at+n]
+	for i := range d.slots {
+		if d.weight[i] == 0 {
+			continue
+		}
+		row := w.samples[i*n : (i+1)*n]
+		raw := s.slot(i)[at : at+n]
+		weight := d.weight[i]
+		for p, v := range raw {
+			net := v - base[p]
+			row[p] = net
+			w.sum[p] += weight * float64(net)
+		}
+	}
+	if len(d.lost) > 0 {
+		d.fillLost(w, n)
+	}
+}
+
+// fillLost puts the mean over the other slots into a lost one. What it is off
+// by is as uncertain as one slot's light differs from another's: square keeps
+// that variance, which goes into the pixel's.
+func (d *decoder) fillLost(w *decodeWorker, n int) {
+	there := float64(d.slots - len(d.lost))
+	for p := range n {
+		var sum, square float64
+		for i := range d.slots {
+			if d.weight[i] != 0 {
+				v := float64(w.samples[i*n+p])
+				sum += v
+				square += v * v
+			}
+		}
+		mean := sum / max(1, there)
+		for _, i := range d.lost {
+			w.samples[i*n+p] = float32(mean)
+		}
+		w.square[p] = float64(len(d.lost)) * max(0, square/max(1, there)-mean*mean)
+	}
+}
+
+// uniformVariance is 4/(v+1)^2 sum(s^2) for every column, with s^2 of each
+// sample from its unclipped value, plus the variance of the level, which is
+// common to all slots and decodes to 1/k of itself.
+func (d *decoder) uniformVariance(dst []float32, w *decodeWorker, s *strip, at int, quiet []float64) {
+	_, closed := d.code.Code().InverseEntries()
+	for p := range dst {
+		dark := d.slotWeight * quiet[p]
+		light := w.sum[p] + d.slotWeight*float64(s.level[at+p])
+		sum := max(dark+light, dark*varianceFloor) + w.square[p]
+		dst[p] = float32(closed*closed*sum + float64(s.levelVariance[at+p])/(d.k*d.k))
+	}
+}
+
+// varianceFloor bounds the sum of variances from below, in units of that of
+// dark samples: it is there for sums that noise took to nothing, and low enough
+// that on a pixel without light, whose sum scatters around 1, it does not act.
+const varianceFloor = 0.5
+
+// ownVariances computes each column's variance where they differ: from the
+// light that the decoded, smoothed elements predict for each slot, since a
+// column of few samples would else weigh its own noise.
+func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []float64) {
+	for j := range d.slots {
+		smoothRow(w.smooth[j*n:(j+1)*n], w.decoded[j*n:(j+1)*n])
+	}
+	d.code.Predict(w.variance, w.smooth, n, n)
+	for i := range d.slots {
+		row := w.variance[i*n : (i+1)*n]
+		for p := range row {
+			v := quiet[p] + max(0, float64(row[p])+float64(s.level[at+p]))
+			row[p] = float32(d.weight[i] * v)
+		}
+	}
+	for _, i := range d.lost {
+		for p := range n {
+			w.variance[i*n+p] = float32(w.square[p] / float64(len(d.lost)))
+		}
+	}
+	copy(w.smooth, w.variance)
+	d.code.Variance(w.variance, w.smooth, n, n, 0)
+	for j := range d.slots {
+		row := w.variance[j*n : (j+1)*n]
+		for p := range row {
+			row[p] += float32(float64(s.levelVariance[at+p]) / (d.k * d.k))
+		}
+	}
+}
+
+// smoothRow averages over smoothPixels columns, fewer at the ends.
+func smoothRow(dst, src []float32) {
+	const reach = smoothPixels / 2
+	for x := range dst {
+		first, last := max(0, x-reach), min(len(src)-1, x+reach)
+		sum := float32(0)
+		for _, v := range src[first : last+1] {
+			sum += v
+		}
+		dst[x] = sum / float32(last-first+1)
+	}
+}
+
+// smoothPixels weighs two needs: narrow enough to follow a line, wide enough
+// that a sample's own noise is a small part of its variance.
+const smoothPixels = 7
+
+func (d *decoder) chi2(w *decodeWorker, out *decodedRow, flags []calib.Flag, x0, n int) darkChi2 {
+	var c darkChi2
+	if len(d.lost) > 0 {
+		return c
+	}
+	for _, col := range d.darkColumns {
+		row := w.decoded[col*n : (col+1)*n]
+		variance := out.variance[0][x0 : x0+n]
+		if !d.code.VarianceUniform() {
+			variance = w.variance[col*n : (col+1)*n]
+		}
+		for p, v := range row {
+			if flags[p] == 0 {
+				c.sum += float64(v) * float64(v) / float64(variance[p])
+				c.terms++
+			}
+		}
+	}
+	return c
+}

@@ -1,0 +1,24 @@
+package reduce
+
+import (
+	"mirrorloom/calib"
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/sequence"
+)
+
+// nominalGeometry is the profile's own mapping: section 3 of the design.
+func nominalGeometry(seq *sequence.Sequence) calib.Geometry {
+	s := seq.Profile.Spectrograph
+	return calib.Geometry{
+		X_c: s.XCenterPx, Y_c: s.YCenterPx,
+		X_e: seq.Profile.ElementStepPx(seq.ElementMirrors()), J_c: float64(seq.N()-1) / 2,
+		L_c: s.CenterNM, D: s.DispersionPxPerNM,
+		SlitTilt: s.SlitTilt, Smile: s.SmilePerPx,
+		TraceTilt: s.TraceTilt, TraceCurve: s.TraceCurvePerPx,
+	}
+}
+
+// voxelEdgesNM gives the wavelength of the lower edge of the first voxel.
+func voxelEdgesNM(g instrument.Grid) (first, step float64) {
+	return g.WavelengthNM(-0.5), g.StepNM
+}

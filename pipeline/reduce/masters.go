@@ -1,0 +1,290 @@
+package reduce
+
+import (
+	"context"
+	"fmt"
+	"path/filepath"
+
+	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
+)
+
+// The masters of the night lie in a scratch file while a reduction runs, one
+// image each over the active pixels, in the order of these constants.
+const (
+	masterBias     = iota // electrons above the overscan or the profile's level
+	masterDark            // electrons per second
+	masterOff             // light of all-off frames, electrons per second
+	masterVariance        // of what is taken off one science exposure, electrons squared
+	masterBad             // flags
+	masterCount
+)
+
+const mastersFile = "masters.fits"
+
+// calibration is the frames of each kind that prepare uses, and the exposure
+// times in seconds: of the science frames, of the darks, of the all-off frames.
+type calibration struct {
+	bias, dark, off, lamp                   []*frame
+	scienceSeconds, darkSeconds, offSeconds float64
+}
+
+// prepare makes the masters, strip by strip.
+type prepare struct {
+	camera  *camera
+	album   *album
+	frames  calibration
+	recipe  DetectorRecipe
+	workers int
+	memory  int64
+}
+
+// deadMargin are the rows beyond a strip that the search for dead pixels needs.
+var deadMargin = calib.DefaultDeadRule(0).Window
+
+// run writes the masters into dir and returns their number of bad pixels.
+func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) (bad int, err error) {
+	var specs []fitsutil.ImageSpec
+	for i, name := range []string{"BIAS", "DARK", "OFF", "TAKENVAR", "BAD"} {
+		bitpix := -32
+		if i == masterBad {
+			bitpix = 16
+		}
+		specs = append(specs, fitsutil.ImageSpec{Name: name, BITPIX: bitpix, Axes: []int{p.camera.columns, p.camera.rows}})
+	}
+	out, err := fitsutil.CreateCube(filepath.Join(dir, mastersFile), fitsutil.NewHeader(), specs)
+	if err != nil {
+		return 0, err
+	}
+	defer out.Abort()
+	h := p.height()
+	for y0 := 0; y0 < p.camera.rows; y0 += h {
+		y1 := min(y0+h, p.camera.rows)
+		s, err := p.strip(ctx, y0, y1)
+		if err != nil {
+			return 0, err
+		}
+		for i, data := range s.images {
+			if err := out.WriteStrip(i, y0, y1-y0, 0, 1, data); err != nil {
+				return 0, err
+			}
+		}
+		if err := out.WriteStrip(masterBad, y0, y1-y0, 0, 1, s.bad); err != nil {
+			return 0, err
+		}
+		for _, f := range s.bad {
+			if f != 0 {
+				bad++
+			}
+		}
+		progress(y1)
+	}
+	return bad, out.Commit()
+}
+
+// height is the rows of a strip that half of the memory holds, all frames of
+// the most numerous kind at once.
+func (p *prepare) height() int {
+	most := max(len(p.frames.bias), len(p.frames.dark), len(p.frames.off), len(p.frames.lamp), 1)
+	perRow := int64(most+8) * int64(p.camera.columns) * bytesFloat
+	return int(min(int64(p.camera.rows), max(1, (p.memory-runtimeBytes)/2/perRow-2*int64(deadMargin))))
+}
+
+// masterStrip is the masters of some rows.
+type masterStrip struct {
+	images [masterBad][]float32 // all but masterBad
+	bad    []calib.Flag
+}
+
+func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
+	n := (y1 - y0) * p.camera.columns
+	s := &masterStrip{bad: make([]calib.Flag, n)}
+	for i := range s.images {
+		s.images[i] = make([]float32, n)
+	}
+	if p.recipe.Use == useOff {
+		return s, nil
+	}
+	bias, err := p.stack(ctx, p.frames.bias, y0, y1, s.bad, y0)
+	if err != nil {
+		return nil, err
+	}
+	dark, err := p.stack(ctx, p.frames.dark, y0, y1, s.bad, y0)
+	if err != nil {
+		return nil, err
+	}
+	off, err := p.stack(ctx, p.frames.off, y0, y1, s.bad, y0)
+	if err != nil {
+		return nil, err
+	}
+	p.combine(s, y0, bias, dark, off)
+	if err := p.findHot(s, dark != nil); err != nil {
+		return nil, err
+	}
+	return s, p.findDead(ctx, s, y0, y1)
+}
+
+// stack takes the clipped mean of frames over rows y0..y1-1, in electrons
+// above the level; nil without frames. Pixels without a value are marked in
+// bad, whose first row is badY0.
+func (p *prepare) stack(ctx context.Context, frames []*frame, y0, y1 int, bad []calib.Flag, badY0 int) ([]float32, error) {
+	if len(frames) == 0 {
+		return nil, nil
+	}
+	n := (y1 - y0) * p.camera.columns
+	samples := make([][]float32, len(frames))
+	scratch := make([]readScratch, p.workers)
+	blank := make([][]calib.Flag, len(frames))
+	err := parallel(ctx, p.workers, len(frames), func(worker, i int) error {
+		samples[i] = make([]float32, n)
+		mark := func(flags []calib.Flag, x, y, w int) {
+			if blank[i] == nil {
+				blank[i] = make([]calib.Flag, n)
+			}
+			p.camera.merge(blank[i], y0, flags, x, y, w)
+		}
+		if _, err := p.camera.read(samples[i], frames[i].image, y0, y1, &scratch[worker], mark); err != nil {
+			return err
+		}
+		return p.album.done(frames[i])
+	})
+	if err != nil {
+		return nil, err
+	}
+	mean, variance := make([]float32, n), make([]float32, n)
+	clip := calib.Clip{Sigmas: p.recipe.ClipSigma, Floor: 0.5}
+	columns := p.camera.columns
+	err = parallel(ctx, p.workers, y1-y0, func(_, row int) error {
+		part := make([][]float32, len(samples))
+		for i := range samples {
+			part[i] = samples[i][row*columns : (row+1)*columns]
+		}
+		clip.Stack(mean[row*columns:(row+1)*columns], variance[row*columns:(row+1)*columns], part)
+		return nil
+	})
+	for _, b := range blank {
+		for i, f := range b {
+			if at := i + (y0-badY0)*columns; at >= 0 && at < len(bad) {
+				bad[at] |= f & calib.BadPixel
+			}
+		}
+	}
+	return mean, err
+}
+
+// merge adds the flags of a block to those of all columns from row y0 on.
+func (c *camera) merge(dst []calib.Flag, y0 int, flags []calib.Flag, x, y, w int) {
+	for i, f := range flags {
+		if f != 0 {
+			dst[(y+i/w-y0)*c.columns+x+i%w] |= f
+		}
+	}
+}
+
+// combine turns means into rates, and says how uncertain is what they take off
+// a science frame. With B the bias, d and o the means of dark and all-off frames
+// exposed for td and to, and t the science exposure,
+//
+//	taken = B + (t/to) (o - B)      with all-off frames: their dark current is in o
+//	taken = B + (t/td) (d - B)      without
+//
+// so that its variance is (1-t/to)^2 var(B) + (t/to)^2 var(o), and so on. The
+// variances are those of the noise model: a few frames' scatter says less.
+func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off []float32) {
+	f := p.frames
+	for i := range s.bad {
+		quiet := p.camera.variance[y0+i/p.camera.columns][i%p.camera.columns]
+		var biasE, darkRate, biasVariance float64
+		if bias != nil {
+			biasE, biasVariance = float64(bias[i]), quiet/float64(len(f.bias))
+		}
+		taken := biasVariance
+		if dark != nil {
+			charge := float64(dark[i]) - biasE
+			darkRate = charge / f.darkSeconds
+			taken = meanVariance(quiet, charge, len(f.dark), f.scienceSeconds/f.darkSeconds, biasVariance)
+		}
+		if off != nil {
+			charge := float64(off[i]) - biasE
+			s.images[masterOff][i] = float32(charge/f.offSeconds - darkRate)
+			taken = meanVariance(quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
+		}
+		s.images[masterBias][i], s.images[masterDark][i] = float32(biasE), float32(darkRate)
+		s.images[masterVariance][i] = float32(taken)
+	}
+}
+
+func meanVariance(quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
+	return ratio*ratio*(quiet+max(0, charge))/float64(frames) + (1-ratio)*(1-ratio)*biasVariance
+}
+
+// findHot marks pixels whose dark charge in a science exposure stands out of
+// its row by more than the noise it would be judged against: a smaller excess
+// is taken off with the dark and does no harm.
+func (p *prepare) findHot(s *masterStrip, known bool) error {
+	if !known {
+		return nil
+	}
+	charge := make([]float32, len(s.bad))
+	for i, rate := range s.images[masterDark] {
+		charge[i] = rate * float32(p.frames.scienceSeconds)
+	}
+	const readNoises = 10 // the excess, in read variances: as much noise again and more
+	rule := calib.DefaultHotRule(readNoises * p.camera.variance[0][0])
+	rule.Sigmas = p.recipe.HotSigma
+	_, err := rule.Flag(s.bad, charge, p.camera.columns)
+	return err
+}
+
+// findDead marks pixels that do not answer the lamp, in rows y0..y1-1; the rows
+// around them serve as neighbours.
+func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) error {
+	if len(p.frames.lamp) == 0 {
+		return nil
+	}
+	first, last := max(0, y0-deadMargin), min(p.camera.rows, y1+deadMargin)
+	lamp, err := p.stack(ctx, p.frames.lamp, first, last, s.bad, y0)
+	if err != nil {
+		return err
+	}
+	bias, err := p.stack(ctx, p.frames.bias, first, last, s.bad, y0)
+	if err != nil {
+		return err
+	}
+	if bias != nil {
+		calib.Subtract(lamp, bias, 1)
+	}
+	const noises = 30 // a fair response is then told from none beyond doubt
+	rule := calib.DefaultDeadRule(noises * noises * p.camera.variance[0][0])
+	rule.Fraction = p.recipe.DeadBelow
+	flags := make([]calib.Flag, len(lamp))
+	if _, err := rule.Flag(flags, lamp, p.camera.columns); err != nil {
+		return err
+	}
+	inner := flags[(y0-first)*p.camera.columns:][:len(s.bad)]
+	for i, f := range inner {
+		s.bad[i] |= f
+	}
+	return nil
+}
+
+// masters reads the scratch file.
+type masters struct {
+	file   *fitsutil.File
+	images [masterCount]*fitsutil.Image
+}
+
+func openMasters(dir string) (*masters, error) {
+	path := filepath.Join(dir, mastersFile)
+	file, err := fitsutil.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	m := &masters{file: file}
+	for i := range m.images {
+		if m.images[i], err = file.Image(i + 1); err != nil {
+			return nil, fmt.Errorf("scratch file: %w", err)
+		}
+	}
+	return m, nil
+}

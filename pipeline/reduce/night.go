@@ -1,0 +1,153 @@
+package reduce
+
+import (
+	"fmt"
+	"path/filepath"
+	"strings"
+
+	"mirrorloom/pipeline/pair"
+	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
+)
+
+// roles sorts a night's frames by what they are for.
+type roles struct {
+	calibration calibration
+	slots       [][]*frame // science frames by code row
+	science     int        // their number
+	lost        []int      // code rows without a frame
+	missing     []int      // science steps without a frame, from 1
+	degraded    []string   // calibrations that were planned and are missing
+	warnings    []string
+}
+
+// sources are the frames that a reduction opens, in the order of their steps:
+// science, bias, dark, all-off, and lamp frames with all mirrors on.
+func sources(seq *sequence.Sequence, night *pair.Night, useCalibration bool) []source {
+	var all []source
+	for _, f := range night.Frames {
+		calibrates := f.Kind == sequence.Bias || f.Kind == sequence.Dark || f.Kind == sequence.AllOff || isLampOn(seq, f.StepIndex)
+		if f.Kind != sequence.Science && (!useCalibration || !calibrates) {
+			continue
+		}
+		all = append(all, source{path: f.Path, name: filepath.Base(f.Path), hdu: f.HDU, step: f.StepIndex, entry: f.StepIndex})
+	}
+	return all
+}
+
+// isLampOn tells a lamp frame with every element open.
+func isLampOn(seq *sequence.Sequence, step int) bool {
+	if seq.Steps[step].Kind != sequence.Flat {
+		return false
+	}
+	for _, bit := range seq.Code[step] {
+		if bit == 0 {
+			return false
+		}
+	}
+	return true
+}
+
+// assign sorts the open frames and says what is missing.
+func assign(seq *sequence.Sequence, frames []*frame, useCalibration bool) (*roles, error) {
+	r := &roles{slots: make([][]*frame, seq.V)}
+	times := map[sequence.Kind]float64{}
+	for _, f := range frames {
+		step := seq.Steps[f.step]
+		switch step.Kind {
+		case sequence.Science:
+			r.slots[step.Row] = append(r.slots[step.Row], f)
+			r.science++
+		case sequence.Bias:
+			r.calibration.bias = append(r.calibration.bias, f)
+		case sequence.Dark:
+			r.calibration.dark = append(r.calibration.dark, f)
+		case sequence.AllOff:
+			r.calibration.off = append(r.calibration.off, f)
+		case sequence.Flat:
+			r.calibration.lamp = append(r.calibration.lamp, f)
+			continue // lamps of different times add up
+		}
+		if t, seen := times[step.Kind]; seen && t != step.ExptimeSeconds && step.Kind != sequence.Bias {
+			return nil, fmt.Errorf("the sequence has %s steps of %g s and of %g s; plan them all of one exposure time", step.Kind, t, step.ExptimeSeconds)
+		}
+		times[step.Kind] = step.ExptimeSeconds
+	}
+	c := &r.calibration
+	c.scienceSeconds, c.darkSeconds, c.offSeconds = times[sequence.Science], times[sequence.Dark], times[sequence.AllOff]
+	r.findLost(seq)
+	if useCalibration {
+		r.findMissing(seq)
+	}
+	return r, nil
+}
+
+// findLost lists the code rows that no frame shows.
+func (r *roles) findLost(seq *sequence.Sequence) {
+	for row, frames := range r.slots {
+		if len(frames) == 0 {
+			r.lost = append(r.lost, row)
+		}
+	}
+	if len(r.lost) == 0 {
+		return
+	}
+	var names []string
+	for _, i := range seq.StepsOf(sequence.Science) {
+		if len(r.slots[seq.Steps[i].Row]) == 0 {
+			r.missing = append(r.missing, seq.Steps[i].Step)
+			names = append(names, fmt.Sprint(seq.Steps[i].Step))
+		}
+	}
+	r.degraded = append(r.degraded, fmt.Sprintf("%d of %d code rows have no frame, so that every voxel is LOST; repeat step %s", len(r.lost), seq.V, strings.Join(names, ", ")))
+}
+
+// findMissing says which calibrations were planned and are not there at all.
+func (r *roles) findMissing(seq *sequence.Sequence) {
+	c := &r.calibration
+	for _, want := range []struct {
+		what    string
+		kind    sequence.Kind
+		have    []*frame
+		without string
+	}{
+		{"bias", sequence.Bias, c.bias, "the bias level is the overscan's or the profile's, without its structure"},
+		{"dark", sequence.Dark, c.dark, "no dark current is taken off but by the all-off frames, and hot pixels are not known"},
+		{"all-off", sequence.AllOff, c.off, "leaking light is not taken off"},
+	} {
+		planned := len(seq.StepsOf(want.kind))
+		switch {
+		case planned > 0 && len(want.have) == 0:
+			r.degraded = append(r.degraded, fmt.Sprintf("all %d %s frames are missing: %s", planned, want.what, want.without))
+		case len(want.have) < planned:
+			r.warnings = append(r.warnings, fmt.Sprintf("%d of %d %s frames are missing", planned-len(want.have), planned, want.what))
+		}
+	}
+	for i := range seq.Steps {
+		if isLampOn(seq, i) && len(c.lamp) == 0 {
+			r.degraded = append(r.degraded, "all lamp frames with every mirror on are missing: dead pixels are not known")
+			break
+		}
+	}
+}
+
+// weights is 1/frames for each slot, 0 for a lost one, and their sum.
+func (r *roles) weights() (weight []float64, sum float64) {
+	weight = make([]float64, len(r.slots))
+	for i, frames := range r.slots {
+		if n := len(frames); n > 0 {
+			weight[i] = 1 / float64(n)
+			sum += weight[i]
+		}
+	}
+	return weight, sum
+}
+
+// fillLedger puts what was measured into the ledger.
+func (r *roles) fillLedger(l product.Ledger, frames []*frame, seq *sequence.Sequence, pixels int) {
+	for _, f := range frames {
+		if seq.Steps[f.step].Kind == sequence.Science {
+			l[f.entry].SaturatedFraction = float64(f.saturated) / float64(pixels)
+		}
+	}
+}

@@ -1,0 +1,71 @@
+package reduce
+
+import (
+	"math"
+
+	"mirrorloom/pipeline/product"
+)
+
+// rowQuality is what a detector row adds to the figures of run.json. Rows are
+// kept apart and added in order, so that the figures do not depend on how rows
+// were grouped.
+type rowQuality struct {
+	dark                  darkChi2
+	good, covered, wanted int // voxels: good; good and wanted; in coded rows and on the detector
+	flags                 int16
+	saturated             int // pixels
+}
+
+// count looks at a row of a strip of the cube.
+func (q *rowQuality) count(out *outStrip, row, elements, voxels int, use []int16) {
+	for l := range voxels {
+		at := (l*out.h + row) * elements
+		for j, f := range out.flags[at : at+elements] {
+			good := f&product.FlagBad == 0
+			if good {
+				q.good++
+			}
+			// Coverage alone says whether the wavelength falls on the detector:
+			// a voxel half of which does not is NODATA or PARTIAL.
+			if use[j] == 0 && f&(product.FlagNoData|product.FlagPartial) == 0 {
+				q.wanted++
+				if good {
+					q.covered++
+				}
+			}
+			if use[j] == 0 {
+				q.flags |= f
+			}
+		}
+	}
+}
+
+// sum adds the rows in order.
+func sum(rows []rowQuality, total int) (product.Quality, int16) {
+	var all rowQuality
+	for _, r := range rows {
+		all.dark.sum += r.dark.sum
+		all.dark.terms += r.dark.terms
+		all.good += r.good
+		all.covered += r.covered
+		all.wanted += r.wanted
+		all.flags |= r.flags
+		all.saturated += r.saturated
+	}
+	q := product.Quality{Saturated: all.saturated}
+	if total > 0 {
+		q.GoodFraction = float64(all.good) / float64(total)
+	}
+	if all.wanted > 0 {
+		q.CoveredGoodFraction = float64(all.covered) / float64(all.wanted)
+	}
+	if all.dark.terms > 0 {
+		chi2 := all.dark.sum / float64(all.dark.terms)
+		if !math.IsNaN(chi2) && !math.IsInf(chi2, 0) {
+			q.DarkChi2Heldout = &chi2
+		}
+	}
+	return q, all.flags
+}
+
+var nan32 = float32(math.NaN())

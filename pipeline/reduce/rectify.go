@@ -1,0 +1,192 @@
+package reduce
+
+import (
+	"context"
+
+	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/product"
+)
+
+// rectifier takes decoded rows to voxels: along the trace by calib.RowShift,
+// then to the cube's wavelengths by calib.Resampler, once each.
+type rectifier struct {
+	geometry calib.Geometry
+	grid     instrument.Grid
+	shift    *calib.RowShift
+	columns  *calib.Resampler
+	usage    *usage
+	elements int
+	uniform  bool
+	workers  []rectifyWorker
+}
+
+// group is the number of elements that one worker takes to voxels before it
+// writes them to the strip together: 16 floats fill a cache line.
+const group = 16
+
+type rectifyWorker struct {
+	signal, variance  []float32 // a straightened row
+	flags             calib.RowFlags
+	edges             []float64
+	voxels, variances []float32 // [element of the group][voxel]
+	bits              []calib.Flag
+	signals, vars     [][]float32 // one element's rows in the window
+	bitRows           [][]calib.Flag
+}
+
+// outStrip is some rows of the cube: [voxel][row][element].
+type outStrip struct {
+	y0, h            int
+	signal, variance []float32
+	flags            []calib.Flag
+	scale            []float32
+}
+
+func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, workers int) (*rectifier, error) {
+	if err := g.Check(s.columns, s.rows, grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)); err != nil {
+		return nil, err
+	}
+	shift := make([]float64, s.columns)
+	for x := range shift {
+		shift[x] = g.TraceShift(float64(x))
+	}
+	rows, err := calib.NewRowShift(shift, s.rows)
+	if err != nil {
+		return nil, err
+	}
+	columns, err := calib.NewResampler(0, s.columns-1)
+	if err != nil {
+		return nil, err
+	}
+	r := &rectifier{geometry: g, grid: grid, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
+	for range workers {
+		r.workers = append(r.workers, rectifyWorker{
+			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
+			edges:  make([]float64, grid.Count+1),
+			voxels: make([]float32, group*grid.Count), variances: make([]float32, group*grid.Count),
+			bits: make([]calib.Flag, group*grid.Count),
+		})
+	}
+	return r, nil
+}
+
+// margin is the largest number of rows that a trace row reads beyond itself,
+// both sides together.
+func (r *rectifier) margin(rows int) int {
+	most := 0
+	for y := range rows {
+		first, last := r.shift.Span(y)
+		most = max(most, last-first)
+	}
+	return most
+}
+
+// ready is the number of trace rows from y on whose rows are all below next.
+func (r *rectifier) ready(y, next int) int {
+	n := 0
+	for ; y+n < r.usage.rows; n++ {
+		if _, last := r.shift.Span(y + n); last >= next {
+			break
+		}
+	}
+	return n
+}
+
+// needs is the first detector row that trace rows from y on read.
+func (r *rectifier) needs(y int) int {
+	least := y
+	for ; y < r.usage.rows; y++ {
+		first, _ := r.shift.Span(y)
+		least = min(least, first)
+	}
+	return max(0, least)
+}
+
+// run fills the strip from the window.
+func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
+	groups := (r.elements + group - 1) / group
+	return parallel(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
+		r.rectify(&r.workers[worker], out, w, i/groups, i%groups*group)
+		return nil
+	})
+}
+
+// rectify makes the voxels of elements j0..j0+group-1 of one row.
+func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 int) {
+	y := out.y0 + row
+	nl := r.grid.Count
+	j1 := min(j0+group, r.elements)
+	first := w.first()
+	k.bitRows = k.bitRows[:0]
+	for _, d := range w.rows {
+		k.bitRows = append(k.bitRows, d.flags)
+	}
+	r.shift.Flags(&k.flags, k.bitRows, first, y)
+	firstNM, stepNM := r.grid.WavelengthNM(-0.5), r.grid.StepNM
+	for j := j0; j < j1; j++ {
+		k.signals, k.vars = k.signals[:0], k.vars[:0]
+		for _, d := range w.rows {
+			k.signals = append(k.signals, d.signal[j])
+			k.vars = append(k.vars, d.variance[min(j, len(d.variance)-1)])
+		}
+		r.shift.Signal(k.signal, k.signals, first, y)
+		if !r.uniform || j == j0 {
+			r.shift.Variance(k.variance, k.vars, first, y)
+		}
+		r.geometry.EdgesX(k.edges, float64(j), float64(y), firstNM, stepNM)
+		at := (j - j0) * nl
+		r.columns.Resample(calib.Voxels{
+			Signal: k.voxels[at:], Variance: k.variances[at:], Flags: k.bits[at:], Stride: 1,
+		}, k.signal, k.variance, &k.flags, k.edges)
+	}
+	r.store(k, out, row, j0, j1)
+}
+
+// store writes a group's voxels into the strip, and voids those that no mirror
+// feeds.
+func (r *rectifier) store(k *rectifyWorker, out *outStrip, row, j0, j1 int) {
+	nl, n := r.grid.Count, j1-j0
+	use := r.usage.row(out.y0 + row)[j0:j1]
+	for l := range nl {
+		at := (l*out.h+row)*r.elements + j0
+		signal, variance := out.signal[at:at+n], out.variance[at:at+n]
+		flags, scale := out.flags[at:at+n], out.scale[at:at+n]
+		for i := range n {
+			from := i*nl + l
+			signal[i], variance[i], flags[i], scale[i] = k.voxels[from], k.variances[from], k.bits[from], 1
+			if use[i] != 0 {
+				signal[i], variance[i] = nan32, nan32
+				flags[i] |= use[i]
+			}
+		}
+	}
+}
+
+// newOut makes the memory of a strip of the cube of h rows.
+func (s shape) newOut(h int) *outStrip {
+	n := h * s.elements * s.voxels
+	return &outStrip{signal: make([]float32, n), variance: make([]float32, n), flags: make([]calib.Flag, n), scale: make([]float32, n)}
+}
+
+// begin makes the strip one of h rows from y0 on.
+func (o *outStrip) begin(s shape, y0, h int) {
+	o.y0, o.h = y0, h
+	n := h * s.elements * s.voxels
+	o.signal, o.variance, o.flags, o.scale = o.signal[:n], o.variance[:n], o.flags[:n], o.scale[:n]
+}
+
+// write hands the strip to the cube.
+func (o *outStrip) write(c *fitsutil.Cube, voxels int) error {
+	data := [...]any{
+		product.SignalImage: o.signal, product.VarianceImage: o.variance,
+		product.FlagsImageIndex: o.flags, product.ScaleImage: o.scale,
+	}
+	for i := range data {
+		if err := c.WriteStrip(i, o.y0, o.h, 0, voxels, data[i]); err != nil {
+			return err
+		}
+	}
+	return nil
+}

@@ -1,0 +1,381 @@
+package reduce
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"runtime"
+	"runtime/debug"
+	"strings"
+	"time"
+
+	"go.uber.org/zap"
+
+	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/pair"
+	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
+	"mirrorloom/pipeline/version"
+)
+
+// Options of Run.
+type Options struct {
+	// Night is the folder of frames, Sequence that of the sequence.
+	Night, Sequence string
+	// Recipe is what to do; nil for the default.
+	Recipe *Recipe
+	// Cube and Elements ask for cube.fits and elements.fits.
+	Cube, Elements bool
+	// MemoryBytes bounds the memory of the process; 0 for DefaultMemoryBytes.
+	MemoryBytes int64
+	// Workers compute at the same time; 0 for one a processor.
+	Workers int
+	// Out is a folder that exists and is empty. A folder in which Run failed is
+	// to be removed.
+	Out string
+	// Log receives what a user may want to know; nil for nothing.
+	Log *zap.Logger
+	// Progress, which may be nil, is called as a stage gets on, by one
+	// goroutine at a time.
+	Progress func(stage string, done, total int)
+}
+
+// DefaultMemoryBytes suits a laptop that does other things as well.
+const DefaultMemoryBytes = 1 << 30
+
+// Result says what was written.
+type Result struct {
+	Run    *product.Run
+	Ledger product.Ledger
+	Schema product.Schema
+	// Degraded says in plain sentences why the product is not whole; empty if
+	// it is (exit code 3 or 0).
+	Degraded []string
+}
+
+// ExitDegraded is run.json's exit for a product that is not whole.
+const ExitDegraded = 3
+
+// Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
+// ledger.csv and run.json. Errors are one sentence that names the file and the
+// cure.
+func Run(ctx context.Context, opts Options) (*Result, error) {
+	if err := opts.setDefaults(); err != nil {
+		return nil, err
+	}
+	// The garbage collector must know the bound, or the heap grows past it
+	// before it looks.
+	previous := debug.SetMemoryLimit(opts.MemoryBytes - opts.MemoryBytes/16)
+	defer debug.SetMemoryLimit(previous)
+
+	r := &reduction{opts: opts, log: opts.Log}
+	defer r.close()
+	for _, step := range []struct {
+		name string
+		run  func(context.Context) (bytes int64, err error)
+	}{
+		{"pair", r.pair},
+		{"prepare", r.prepare},
+		{"strips", r.strips},
+		{"finish", r.finish},
+	} {
+		start := time.Now()
+		bytes, err := step.run(ctx)
+		if err != nil {
+			return nil, err
+		}
+		seconds := time.Since(start).Seconds()
+		r.stages = append(r.stages, product.Stage{Name: step.name, Seconds: seconds, Bytes: bytes})
+		r.log.Info("stage done", zap.String("stage", step.name), zap.Float64("seconds", seconds), zap.Int64("bytes", bytes))
+	}
+	return r.result()
+}
+
+func (o *Options) setDefaults() error {
+	if !o.Cube && !o.Elements {
+		return errors.New("no product asked for; ask for cube, elements or both with --products")
+	}
+	if o.Workers <= 0 {
+		o.Workers = runtime.GOMAXPROCS(0)
+	}
+	if o.MemoryBytes == 0 {
+		o.MemoryBytes = DefaultMemoryBytes
+	}
+	if o.Log == nil {
+		o.Log = zap.NewNop()
+	}
+	if o.Progress == nil {
+		o.Progress = func(string, int, int) {}
+	}
+	if o.Recipe == nil {
+		recipe, err := LoadRecipe(DefaultRecipe)
+		if err != nil {
+			return err
+		}
+		o.Recipe = recipe
+	}
+	return nil
+}
+
+// reduction is a run in the making.
+type reduction struct {
+	opts    Options
+	log     *zap.Logger
+	seq     *sequence.Sequence
+	night   *pair.Night
+	camera  *camera
+	album   *album
+	roles   *roles
+	masters *masters
+	schema  product.Schema
+	usage   *usage
+	cube    *fitsutil.Cube
+	element *fitsutil.Cube
+
+	rectifier *rectifier
+	quality   product.Quality
+	badPixels int
+	stages    []product.Stage
+}
+
+// close gives back everything; what was committed stays.
+func (r *reduction) close() {
+	for _, c := range []*fitsutil.Cube{r.cube, r.element} {
+		if c != nil {
+			c.Abort()
+		}
+	}
+	if r.masters != nil {
+		r.masters.file.Close() // only read from
+	}
+	if r.album != nil {
+		r.album.close() // only read from
+	}
+	os.RemoveAll(r.scratch())
+}
+
+// scratch is the folder for unpacked frames and masters.
+func (r *reduction) scratch() string { return filepath.Join(r.opts.Out, "scratch") }
+
+// pair reads the sequence and pairs the night with it, and opens the frames.
+func (r *reduction) pair(ctx context.Context) (int64, error) {
+	var err error
+	if r.seq, err = sequence.Read(ctx, r.opts.Sequence); err != nil {
+		return 0, err
+	}
+	if err := os.MkdirAll(r.scratch(), 0o755); err != nil {
+		return 0, fmt.Errorf("make a scratch folder: %w", err)
+	}
+	r.night, err = pair.Run(ctx, r.seq, pair.Options{Night: r.opts.Night, ScratchDir: r.scratch(), Workers: r.opts.Workers},
+		func(done, total int) { r.opts.Progress("pair", done, total) })
+	if err != nil {
+		return 0, err
+	}
+	if r.camera, err = newCamera(&r.seq.Profile.Detector); err != nil {
+		return 0, err
+	}
+	calibrates := r.opts.Recipe.Detector.Use != useOff
+	if r.album, err = openAlbum(sources(r.seq, r.night, calibrates), r.scratch()); err != nil {
+		return 0, err
+	}
+	r.roles, err = assign(r.seq, r.album.frames, calibrates)
+	return 0, err
+}
+
+// prepare makes the masters.
+func (r *reduction) prepare(ctx context.Context) (int64, error) {
+	p := &prepare{
+		camera: r.camera, album: r.album, frames: r.roles.calibration, recipe: r.opts.Recipe.Detector,
+		workers: r.opts.Workers, memory: r.opts.MemoryBytes,
+	}
+	var err error
+	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.rows) })
+	if err != nil {
+		return 0, err
+	}
+	c := r.roles.calibration
+	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamp)
+	if r.masters, err = openMasters(r.scratch()); err != nil {
+		return 0, err
+	}
+	return r.frameBytes() * int64(frames), nil
+}
+
+// frameBytes is the size of a raw frame's pixels on disk, taken from the first.
+func (r *reduction) frameBytes() int64 {
+	if len(r.album.frames) == 0 {
+		return 0
+	}
+	im := r.album.frames[0].image
+	return int64(max(im.BITPIX, -im.BITPIX)/8) * int64(im.Width()) * int64(im.Height())
+}
+
+// strips decodes and rectifies.
+func (r *reduction) strips(ctx context.Context) (int64, error) {
+	code, err := hadamard.New(hadamard.Family(r.seq.Family), r.seq.V)
+	if err != nil {
+		return 0, fmt.Errorf("%s: %w", r.opts.Sequence, err)
+	}
+	s := shape{
+		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
+		elementCube: r.opts.Elements, cube: r.opts.Cube,
+	}
+	d := r.newDecoder(code)
+	s.uniform = d.code.VarianceUniform()
+	r.usage = newUsage(r.seq)
+	r.schema = product.NewSchema(r.seq)
+	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
+	s.voxels = r.schema.Grid.Count
+	if s.cube {
+		if r.rectifier, err = newRectifier(nominalGeometry(r.seq), r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
+			return 0, err
+		}
+		s.margin = r.rectifier.margin(s.rows)
+	}
+	h, err := s.heights(r.opts.MemoryBytes)
+	if err != nil {
+		return 0, err
+	}
+	r.log.Debug("strips", zap.Int("rows", h.strip), zap.Int("cube_rows", h.out))
+	if err := r.create(s); err != nil {
+		return 0, err
+	}
+	w := &sweep{
+		shape: s, heights: h, decoder: d, rectify: r.rectifier, cube: r.cube, elements: r.element, workers: r.opts.Workers,
+		reader:   r.newReader(),
+		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
+	}
+	if err := w.run(ctx); err != nil {
+		return 0, err
+	}
+	var flags int16
+	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.judge(flags)
+	return r.stripBytes(s), nil
+}
+
+func (r *reduction) newDecoder(code *hadamard.Code) *decoder {
+	d := &decoder{
+		code: hadamard.NewDecoder(code), columns: r.camera.columns, slots: r.seq.V,
+		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
+		k: float64(code.K()), lost: r.roles.lost,
+	}
+	d.weight, d.slotWeight = r.roles.weights()
+	return d
+}
+
+func (r *reduction) newReader() *stripReader {
+	return &stripReader{
+		camera: r.camera, album: r.album, slots: r.roles.slots, masters: r.masters,
+		scienceSeconds: r.roles.calibration.scienceSeconds,
+		workers:        r.opts.Workers, scratch: make([]readScratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+	}
+}
+
+// stripBytes is what the strips stage read and wrote.
+func (r *reduction) stripBytes(s shape) int64 {
+	pixels := int64(s.columns) * int64(s.rows)
+	bytes := r.frameBytes()*int64(r.roles.science) + pixels*masterCount*bytesFloat
+	if s.cube {
+		bytes += int64(s.elements) * int64(s.rows) * int64(s.voxels) * bytesVoxel
+	}
+	if s.elementCube {
+		bytes += int64(s.slots) * pixels * (4 + 4 + 2)
+	}
+	return bytes
+}
+
+// create lays out the products.
+func (r *reduction) create(s shape) error {
+	primary, err := product.Provenance{
+		ProfileName: r.seq.ProfileName, ProfileSHA: r.seq.ProfileSHA, SequenceSHA: r.seq.SHA, RecipeSHA: r.opts.Recipe.SHA,
+		FramesUsed: r.roles.science, FramesLost: len(r.roles.missing),
+	}.Primary(r.seq.Target.Name)
+	if err != nil {
+		return err
+	}
+	if s.cube {
+		images, err := r.schema.Images()
+		if err != nil {
+			return err
+		}
+		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
+			return err
+		}
+	}
+	if s.elementCube {
+		images, err := product.ElementImages(s.columns, s.rows, s.slots)
+		if err != nil {
+			return err
+		}
+		if r.element, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.ElementsFile), primary.Clone(), images); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// judge turns flags that were set into reasons why the product is not whole.
+func (r *reduction) judge(flags int16) {
+	if flags&product.FlagSaturated != 0 {
+		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in some science frame, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
+	}
+}
+
+// finish appends the tables and gives every product its name.
+func (r *reduction) finish(context.Context) (int64, error) {
+	r.roles.fillLedger(r.night.Ledger, r.album.frames, r.seq, r.camera.columns*r.camera.rows)
+	if r.cube != nil {
+		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {
+			return 0, err
+		}
+		table, err := dispersionTable(r.rectifier.geometry, r.usage, r.camera.columns)
+		if err != nil {
+			return 0, err
+		}
+		if err := r.cube.AppendTable(table); err != nil {
+			return 0, err
+		}
+		if err := r.cube.Commit(); err != nil {
+			return 0, err
+		}
+	}
+	if r.element != nil {
+		if err := r.element.Commit(); err != nil {
+			return 0, err
+		}
+	}
+	return 0, fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.LedgerFile), r.night.Ledger.WriteCSV)
+}
+
+// result writes run.json and sums up.
+func (r *reduction) result() (*Result, error) {
+	r.quality.BadPixels = r.badPixels
+	r.quality.Lost = len(r.roles.missing)
+	run := &product.Run{
+		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality,
+		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
+	}
+	if len(r.roles.degraded) > 0 {
+		run.Exit = ExitDegraded
+	}
+	if err := fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.RunFile), run.Write); err != nil {
+		return nil, err
+	}
+	return &Result{Run: run, Ledger: r.night.Ledger, Schema: r.schema, Degraded: r.roles.degraded}, nil
+}
+
+// warnings are the frames that could not be used, and what roles noticed.
+func (r *reduction) warnings() []string {
+	all := r.roles.warnings
+	for _, v := range []product.Verdict{product.Unreadable, product.WrongMask, product.WrongExposure, product.WrongSize, product.Duplicate, product.Extra} {
+		if n := r.night.Ledger.Count(v); n > 0 {
+			all = append(all, fmt.Sprintf("%d frames are %s and were not used: see the ledger", n, strings.ReplaceAll(string(v), "-", " ")))
+		}
+	}
+	return all
+}

@@ -1,0 +1,41 @@
+package reduce
+
+import "mirrorloom/pipeline/product"
+
+// settings are what the run was asked for, defaults filled in, as run.json
+// lists them.
+func (r *reduction) settings() map[string]any {
+	recipe := r.opts.Recipe
+	stage := func(s StageRecipe) map[string]any { return map[string]any{"use": s.Use} }
+	return map[string]any{
+		"night":        r.opts.Night,
+		"sequence":     r.opts.Sequence,
+		"cube":         r.opts.Cube,
+		"elements":     r.opts.Elements,
+		"memory_bytes": r.opts.MemoryBytes,
+		"workers":      r.opts.Workers,
+		"recipe": map[string]any{
+			"name": recipe.Name,
+			"detector": map[string]any{
+				"use": recipe.Detector.Use, "clip_sigma": recipe.Detector.ClipSigma,
+				"hot_sigma": recipe.Detector.HotSigma, "dead_below": recipe.Detector.DeadBelow,
+			},
+			"flat": stage(recipe.Flat), "arc": stage(recipe.Arc), "sky": stage(recipe.Sky), "flux": stage(recipe.Flux),
+			"grid": map[string]any{
+				"use": recipe.Grid.Use, "first_nm": r.schema.Grid.FirstNM, "step_nm": r.schema.Grid.StepNM, "count": r.schema.Grid.Count,
+			},
+			"throughput": stage(recipe.Throughput), "repair": stage(recipe.Repair),
+		},
+	}
+}
+
+// inputs are the files that rule the reduction, with their digests; the ledger
+// lists the frames.
+func (r *reduction) inputs() []product.Input {
+	return []product.Input{
+		{File: r.opts.Recipe.Name, SHA256: r.opts.Recipe.SHA},
+		{File: "sequence.fits", SHA256: r.seq.SHA},
+		{File: "profile.yaml", SHA256: r.seq.ProfileSHA},
+		{File: "target.yaml", SHA256: r.seq.TargetSHA},
+	}
+}

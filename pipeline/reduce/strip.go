@@ -1,0 +1,173 @@
+package reduce
+
+import (
+	"context"
+	"sync"
+
+	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
+)
+
+// strip is some detector rows of all science frames, in electrons above the
+// bias level, with what is to be taken off them.
+type strip struct {
+	y0, y1, columns int
+	raw             []float32    // [slot][row][column]
+	flags           []calib.Flag // [row][column]
+	base            []float32    // bias and level together
+	level           []float32    // dark current and all-off light of an exposure
+	levelVariance   []float32    // of base
+	quiet           [][]float64  // [row][column] variance without light
+	planes          *elementPlanes
+}
+
+// slot is the pixels of a code row.
+func (s *strip) slot(i int) []float32 {
+	n := (s.y1 - s.y0) * s.columns
+	return s.raw[i*n : (i+1)*n]
+}
+
+// elementPlanes collects a strip of the element cube.
+type elementPlanes struct {
+	signal, variance [][]float32 // [code column][row*columns+column]; one variance plane where all are equal
+}
+
+// keep copies a decoded block into the element cube's strip, if there is one.
+func (s *strip) keep(w *decodeWorker, at, n int, out *decodedRow, x0 int, uniform bool) {
+	if s.planes == nil {
+		return
+	}
+	for c, plane := range s.planes.signal {
+		copy(plane[at:at+n], w.decoded[c*n:(c+1)*n])
+	}
+	if uniform {
+		copy(s.planes.variance[0][at:at+n], out.variance[0][x0:x0+n])
+		return
+	}
+	for c, plane := range s.planes.variance {
+		copy(plane[at:at+n], w.variance[c*n:(c+1)*n])
+	}
+}
+
+// stripReader fills strips from the science frames and the masters.
+type stripReader struct {
+	camera         *camera
+	album          *album
+	slots          [][]*frame // by code row
+	masters        *masters
+	scienceSeconds float64
+	workers        int
+	scratch        []readScratch
+	sums           [][]float32 // by worker, for slots of several frames
+}
+
+// read fills s with rows y0..y1-1.
+func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
+	s.y0, s.y1, s.columns = y0, y1, r.camera.columns
+	n := (y1 - y0) * s.columns
+	s.raw = s.raw[:len(r.slots)*n]
+	s.quiet = r.camera.variance[y0:y1]
+	if err := r.readMasters(s, n); err != nil {
+		return err
+	}
+	var mu sync.Mutex
+	mark := func(flags []calib.Flag, x, y, w int) {
+		mu.Lock()
+		defer mu.Unlock()
+		r.camera.merge(s.flags, y0, flags, x, y, w)
+	}
+	return parallel(ctx, r.workers, len(r.slots), func(worker, i int) error {
+		return r.readSlot(s.slot(i), r.slots[i], y0, y1, worker, mark)
+	})
+}
+
+// readSlot puts the mean of a slot's frames into dst; nothing for a lost one.
+func (r *stripReader) readSlot(dst []float32, frames []*frame, y0, y1, worker int, mark marked) error {
+	for i, f := range frames {
+		into := dst
+		if i > 0 {
+			r.sums[worker] = grow(r.sums[worker], len(dst))
+			into = r.sums[worker]
+		}
+		saturated, err := r.camera.read(into, f.image, y0, y1, &r.scratch[worker], mark)
+		if err != nil {
+			return err
+		}
+		f.saturated += saturated
+		if err := r.album.done(f); err != nil {
+			return err
+		}
+		if i > 0 {
+			for p, v := range into {
+				dst[p] += v
+			}
+		}
+	}
+	if n := float32(len(frames)); n > 1 {
+		for p := range dst {
+			dst[p] /= n
+		}
+	}
+	return nil
+}
+
+func (r *stripReader) readMasters(s *strip, n int) error {
+	s.base, s.level, s.levelVariance = s.base[:n], s.level[:n], s.levelVariance[:n]
+	s.flags = s.flags[:n]
+	rows := func(i int, dst []float32) error { return r.masters.images[i].ReadRows(dst, s.y0, s.y1) }
+	if err := rows(masterBad, s.base); err != nil {
+		return err
+	}
+	for p, v := range s.base {
+		s.flags[p] = calib.Flag(v)
+	}
+	if err := rows(masterDark, s.base); err != nil {
+		return err
+	}
+	if err := rows(masterOff, s.level); err != nil {
+		return err
+	}
+	seconds := float32(r.scienceSeconds)
+	for p := range s.level {
+		s.level[p] = (s.level[p] + s.base[p]) * seconds
+	}
+	if err := rows(masterVariance, s.levelVariance); err != nil {
+		return err
+	}
+	if err := rows(masterBias, s.base); err != nil {
+		return err
+	}
+	for p := range s.base {
+		s.base[p] += s.level[p]
+	}
+	return nil
+}
+
+// newStrip makes the memory of a strip of h rows.
+func (s shape) newStrip(h int) *strip {
+	n := h * s.columns
+	st := &strip{
+		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n),
+		base: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
+	}
+	return st
+}
+
+// writePlanes writes a strip of the element cube.
+func (s *strip) writePlanes(c *fitsutil.Cube) error {
+	h := s.y1 - s.y0
+	n := h * s.columns
+	for i, plane := range s.planes.signal {
+		if err := c.WriteStrip(0, s.y0, h, i, 1, plane[:n]); err != nil {
+			return err
+		}
+		variance := s.planes.variance[min(i, len(s.planes.variance)-1)]
+		if err := c.WriteStrip(1, s.y0, h, i, 1, variance[:n]); err != nil {
+			return err
+		}
+		if err := c.WriteStrip(2, s.y0, h, i, 1, s.flags[:n]); err != nil {
+			return err
+		}
+	}
+	return nil
+}

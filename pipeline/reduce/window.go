@@ -1,0 +1,72 @@
+package reduce
+
+import "mirrorloom/calib"
+
+// decodedRow is one detector row after decoding.
+type decodedRow struct {
+	y      int
+	signal [][]float32 // [element][column], electrons
+	// variance is [element][column], or [0][column] where all elements of a
+	// pixel have the same.
+	variance [][]float32
+	flags    []calib.Flag // [column]
+}
+
+// window holds decoded rows in order until no trace needs them.
+type window struct {
+	rows []*decodedRow
+	free []*decodedRow
+	make func() *decodedRow
+}
+
+func newWindow(s shape) *window {
+	variances := 1
+	if !s.uniform {
+		variances = s.elements
+	}
+	return &window{make: func() *decodedRow {
+		return &decodedRow{signal: planes(s.elements, s.columns), variance: planes(variances, s.columns), flags: make([]calib.Flag, s.columns)}
+	}}
+}
+
+// planes makes n rows in one piece of memory.
+func planes(n, columns int) [][]float32 {
+	all := make([]float32, n*columns)
+	rows := make([][]float32, n)
+	for i := range rows {
+		rows[i] = all[i*columns : (i+1)*columns : (i+1)*columns]
+	}
+	return rows
+}
+
+// extend appends rows y0..y1-1, whose contents are yet to be filled in.
+func (w *window) extend(y0, y1 int) []*decodedRow {
+	from := len(w.rows)
+	for y := y0; y < y1; y++ {
+		var r *decodedRow
+		if n := len(w.free); n > 0 {
+			r, w.free = w.free[n-1], w.free[:n-1]
+		} else {
+			r = w.make()
+		}
+		r.y = y
+		w.rows = append(w.rows, r)
+	}
+	return w.rows[from:]
+}
+
+// dropBefore frees the rows below y.
+func (w *window) dropBefore(y int) {
+	n := 0
+	for n < len(w.rows) && w.rows[n].y < y {
+		n++
+	}
+	w.free = append(w.free, w.rows[:n]...)
+	w.rows = append(w.rows[:0], w.rows[n:]...)
+}
+
+// first is the detector row of rows[0].
+func (w *window) first() int { return w.rows[0].y }
+
+// next is the row that follows the last one.
+func (w *window) next() int { return w.rows[len(w.rows)-1].y + 1 }
