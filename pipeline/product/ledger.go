@@ -2,6 +2,7 @@ package product
 
 import (
 	"encoding/csv"
+	"encoding/json"
 	"fmt"
 	"io"
 	"math"
@@ -248,4 +249,24 @@ func gather[T any](l Ledger, get func(*Entry) T) []T {
 		all[i] = get(&l[i])
 	}
 	return all
+}
+
+// MarshalJSON writes a figure that was not measured as null.
+func (e Entry) MarshalJSON() ([]byte, error) {
+	type plain Entry // without this method
+	return json.Marshal(struct {
+		plain
+		ExptimeS          *float64 `json:"exptime_s"`
+		SaturatedFraction *float64 `json:"saturated_fraction"`
+		Throughput        *float64 `json:"throughput"`
+		ThroughputErr     *float64 `json:"throughput_err"`
+		OffsetE           *float64 `json:"offset_e"`
+	}{plain(e), measured(e.ExptimeS), measured(e.SaturatedFraction), measured(e.Throughput), measured(e.ThroughputErr), measured(e.OffsetE)})
+}
+
+func measured(x float64) *float64 {
+	if math.IsNaN(x) {
+		return nil
+	}
+	return &x
 }
