@@ -29,13 +29,13 @@ func (s *Sequence) checkCode() (*hadamard.Code, error) {
 	}
 	code, err := hadamard.New(f, s.V)
 	if err != nil {
-		return nil, fault("CODEV %d is no size of a %s code", s.V, f)
+		return nil, fault("CODEV %d is no size of the family %s", s.V, f)
 	}
 	if s.K != code.K() || s.L != code.L() {
-		return nil, fault("CODEK %d and CODEL %d are not those of a %s code of %d columns (%d and %d)", s.K, s.L, f, s.V, code.K(), code.L())
+		return nil, fault("CODEK %d and CODEL %d are not those of the %s code of %d columns (%d and %d)", s.K, s.L, f, s.V, code.K(), code.L())
 	}
 	if s.Poly != code.Poly() {
-		return nil, fault("CODEPOLY %d is not the polynomial %d of a %s code of %d columns", s.Poly, code.Poly(), f, s.V)
+		return nil, fault("CODEPOLY %d is not the polynomial %d of the %s code of %d columns", s.Poly, code.Poly(), f, s.V)
 	}
 	return code, nil
 }
@@ -129,13 +129,13 @@ func (s *Sequence) checkStep(i int) error {
 	lit := st.Kind == Flat || st.Kind == Arc
 	switch {
 	case lit && !printable(st.Lamp, maxLampBytes):
-		return fault("step %d is a %s without a LAMP", st.Step, st.Kind)
+		return fault("step %d of kind %s has no LAMP", st.Step, st.Kind)
 	case !lit && st.Lamp != "":
 		return fault("step %d is no lamp frame and has LAMP %q", st.Step, st.Lamp)
 	case math.IsNaN(st.ExptimeSeconds) || math.IsInf(st.ExptimeSeconds, 0):
 		return fault("step %d has no finite EXPTIME", st.Step)
 	case st.Kind == Bias && st.ExptimeSeconds != 0:
-		return fault("step %d is a bias with EXPTIME %v, not 0", st.Step, st.ExptimeSeconds)
+		return fault("step %d of kind bias has EXPTIME %v, not 0", st.Step, st.ExptimeSeconds)
 	case st.Kind != Bias && st.ExptimeSeconds <= 0:
 		return fault("step %d has EXPTIME %v, not above 0", st.Step, st.ExptimeSeconds)
 	case st.Row < -1 || st.Row >= s.V:
@@ -165,12 +165,12 @@ func (s *Sequence) checkBits(i int, rows [][]uint8) error {
 	}
 	switch {
 	case st.Row >= 0 && !slices.Equal(bits, rows[st.Row]):
-		return fault("CODE row %d is not row %d of a %s code of %d columns, as STEPS says", i+1, st.Row, s.Family, s.V)
+		return fault("CODE row %d is not row %d of the %s code of %d columns, as STEPS says", i+1, st.Row, s.Family, s.V)
 	case st.Row >= 0:
 	case st.Kind == AllOn && ones != s.V:
-		return fault("CODE row %d belongs to an all-on step and is not 1 throughout", i+1)
+		return fault("CODE row %d belongs to a step of kind all-on and is not 1 throughout", i+1)
 	case (st.Kind == Bias || st.Kind == Dark || st.Kind == AllOff) && ones != 0:
-		return fault("CODE row %d belongs to a %s step and is not 0 throughout", i+1, st.Kind)
+		return fault("CODE row %d belongs to a step of kind %s and is not 0 throughout", i+1, st.Kind)
 	default:
 		if p, _ := s.Pattern(i); p == PatternOther {
 			return fault("CODE row %d shows neither a code row nor all, no, every other or one element", i+1)

@@ -17,25 +17,6 @@ const pngHeaderBytes = 26
 
 var pngSignature = []byte("\x89PNG\r\n\x1a\n")
 
-// EncodePNG gives the mask as a PNG of one bit a mirror, white on and black
-// off. Equal masks give equal bytes.
-func (m *Mask) EncodePNG() ([]byte, error) {
-	img := &image.Paletted{
-		Pix:    m.On,
-		Stride: m.Columns,
-		Rect:   image.Rect(0, 0, m.Columns, m.Rows),
-		// Two colours make image/png write one bit a pixel.
-		Palette: color.Palette{color.Gray{Y: 0}, color.Gray{Y: 255}},
-	}
-	var out bytes.Buffer
-	// Rows repeat, so that the fastest compression is as small as any.
-	e := png.Encoder{CompressionLevel: png.BestSpeed}
-	if err := e.Encode(&out, img); err != nil {
-		return nil, fmt.Errorf("encoding a mask of %d x %d mirrors: %w", m.Columns, m.Rows, err)
-	}
-	return out.Bytes(), nil
-}
-
 // DecodePNG reads a mask of exactly columns x rows mirrors from a PNG of one
 // bit a pixel, white on. It refuses any other size or depth before it spends
 // memory on the pixels.
@@ -54,47 +35,45 @@ func DecodePNG(data []byte, columns, rows int) (*Mask, error) {
 	if err != nil {
 		return nil, fmt.Errorf("it cannot be decoded: %w", err)
 	}
-	m := &Mask{Columns: columns, Rows: rows, On: make([]uint8, columns*rows)}
-	if err := m.fromImage(img); err != nil {
+	on, err := statesOf(img)
+	if err != nil {
 		return nil, err
 	}
-	return m, nil
+	return &Mask{Columns: columns, Rows: rows, On: on}, nil
 }
 
-// fromImage takes white as on and black as off; any other colour is an error.
-func (m *Mask) fromImage(img image.Image) error {
+// statesOf takes white as on and black as off; any other colour is an error. A
+// decoded image has its pixels without gaps, and they are its own: they are
+// changed in place.
+func statesOf(img image.Image) ([]uint8, error) {
 	switch img := img.(type) {
 	case *image.Gray:
-		for y := range m.Rows {
-			for x, g := range img.Pix[y*img.Stride : y*img.Stride+m.Columns] {
-				m.On[y*m.Columns+x] = g & 1 // one bit deep: 0 or 255
-			}
+		for i, g := range img.Pix {
+			img.Pix[i] = g & 1 // one bit deep: 0 or 255
 		}
-		return nil
+		return img.Pix, nil
 	case *image.Paletted:
-		return m.fromPalette(img)
+		states, err := statesOfPalette(img.Palette)
+		if err != nil {
+			return nil, err
+		}
+		for i, p := range img.Pix {
+			img.Pix[i] = states[p]
+		}
+		return img.Pix, nil
 	}
-	return errors.New("it is neither grey nor a palette of black and white")
+	return nil, errors.New("it is neither grey nor a palette of black and white")
 }
 
-func (m *Mask) fromPalette(img *image.Paletted) error {
-	states := make([]uint8, len(img.Palette))
-	for i, c := range img.Palette {
+func statesOfPalette(palette color.Palette) (states [256]uint8, err error) {
+	for i, c := range palette {
 		switch r, g, b, a := c.RGBA(); {
 		case a == 0xffff && r == 0xffff && g == 0xffff && b == 0xffff:
 			states[i] = 1
 		case a == 0xffff && r == 0 && g == 0 && b == 0:
 		default:
-			return fmt.Errorf("its palette holds a colour that is neither black nor white")
+			return states, errors.New("its palette holds a colour that is neither black nor white")
 		}
 	}
-	for y := range m.Rows {
-		for x, p := range img.Pix[y*img.Stride : y*img.Stride+m.Columns] {
-			if int(p) >= len(states) {
-				return errors.New("a pixel lies outside its palette")
-			}
-			m.On[y*m.Columns+x] = states[p]
-		}
-	}
-	return nil
+	return states, nil
 }

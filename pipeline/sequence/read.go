@@ -12,6 +12,7 @@ import (
 	"runtime"
 	"strings"
 
+	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -61,11 +62,19 @@ func fileDigest(path string) (string, error) {
 	return digest(data), nil
 }
 
-// inFile names the file in a fault that does not.
+// inFile names the file in a fault that does not, and the cure in an error of
+// the FITS file that has none.
 func inFile(path string, err error) error {
-	var f *Error
-	if errors.As(err, &f) && f.File == "" {
-		f.File = path
+	var own *Error
+	if errors.As(err, &own) {
+		if own.File == "" {
+			own.File = path
+		}
+		return err
+	}
+	var f *fitsutil.Error
+	if errors.As(err, &f) && f.Cure == "" {
+		return &Error{What: err.Error(), Cure: planAgain, Err: err}
 	}
 	return err
 }
@@ -175,4 +184,3 @@ func (s *Sequence) refuseStrangers(dir string) error {
 	}
 	return nil
 }
-

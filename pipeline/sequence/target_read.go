@@ -95,7 +95,7 @@ func (t *Target) checkCode(c *config.Checks) {
 func sizeAdvice(f hadamard.Family, v int, err error) string {
 	var none *hadamard.NoCodeError
 	if !errors.As(err, &none) {
-		return fmt.Sprintf("%d is no size of a %s code; give another", v, f)
+		return fmt.Sprintf("%d is no size of the family %s; give another", v, f)
 	}
 	var near []string
 	for _, size := range []int{none.Below, none.Above} {
@@ -103,7 +103,7 @@ func sizeAdvice(f hadamard.Family, v int, err error) string {
 			near = append(near, fmt.Sprint(size))
 		}
 	}
-	return fmt.Sprintf("there is no %s code of %d columns; the nearest have %s", f, v, strings.Join(near, " and "))
+	return fmt.Sprintf("the family %s has no code of %d columns; the nearest sizes are %s", f, v, strings.Join(near, " and "))
 }
 
 func familyList() string {
