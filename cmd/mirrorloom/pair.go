@@ -1,0 +1,63 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"io"
+
+	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
+
+	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/pair"
+	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
+)
+
+type pairOptions struct {
+	sequence string
+	file     string
+	all      bool
+}
+
+func (o *pairOptions) addFlags(f *pflag.FlagSet) {
+	f.StringVar(&o.sequence, "sequence", "", "folder of the sequence, as plan wrote it")
+	f.StringVarP(&o.file, "output", "o", "", "write the ledger to this CSV file as well")
+	f.BoolVar(&o.all, "all", false, "list every frame, not only those with a fault")
+}
+
+func newPairCommand(a *app) *cobra.Command {
+	var o pairOptions
+	cmd := &cobra.Command{
+		Use:   "pair NIGHT --sequence SEQ [-o FILE.csv]",
+		Short: "Pair the frames of a night with the steps of a sequence",
+		Args:  cobra.ExactArgs(1),
+		RunE:  func(cmd *cobra.Command, args []string) error { return runPair(cmd.Context(), a, args[0], o) },
+	}
+	o.addFlags(cmd.Flags())
+	return cmd
+}
+
+func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
+	if o.sequence == "" {
+		return usageError{errors.New("pair needs --sequence; see 'mirrorloom pair --help'")}
+	}
+	seq, err := sequence.Read(ctx, o.sequence)
+	if err != nil {
+		return err
+	}
+	draw := a.progress()
+	paired, err := pair.Run(ctx, seq, pair.Options{Night: night}, func(done, total int) { draw("pair", done, total) })
+	if err != nil {
+		return err
+	}
+	if o.file != "" {
+		if err := fitsutil.WriteAtomic(o.file, paired.Ledger.WriteCSV); err != nil {
+			return err
+		}
+	}
+	answer := struct {
+		Ledger product.Ledger `json:"ledger"`
+	}{paired.Ledger}
+	return a.answer(answer, func(w io.Writer) error { return pair.Print(w, paired.Ledger, o.all) })
+}

@@ -1,0 +1,81 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+
+	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
+
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/plan"
+)
+
+type planOptions struct {
+	profile string
+	list    bool
+	output  outputOptions
+}
+
+func (o *planOptions) addFlags(f *pflag.FlagSet) {
+	f.StringVar(&o.profile, "profile", "", "instrument profile: a YAML file, or the name of a built-in one")
+	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
+	o.output.addFlags(f, "sequence")
+}
+
+func newPlanCommand(a *app) *cobra.Command {
+	var o planOptions
+	cmd := &cobra.Command{
+		Use:   "plan TARGET.yaml --profile P -o SEQ",
+		Short: "Plan the exposures and masks of a target",
+		Long: `plan writes a sequence: the exposures of a night with their masks, and copies of
+the profile and the target it was made from. Every later command needs only the
+sequence.`,
+		Args: func(cmd *cobra.Command, args []string) error {
+			if o.list {
+				return cobra.NoArgs(cmd, args)
+			}
+			return cobra.ExactArgs(1)(cmd, args)
+		},
+		RunE: func(cmd *cobra.Command, args []string) error {
+			if o.list {
+				return runListProfiles(a)
+			}
+			return runPlan(cmd.Context(), a, args[0], o)
+		},
+	}
+	o.addFlags(cmd.Flags())
+	return cmd
+}
+
+func runListProfiles(a *app) error {
+	names := instrument.Names()
+	return a.answer(names, func(w io.Writer) error {
+		for _, name := range names {
+			if _, err := fmt.Fprintln(w, name); err != nil {
+				return err
+			}
+		}
+		return nil
+	})
+}
+
+func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
+	if o.profile == "" || o.output.dir == "" {
+		return usageError{errors.New("plan needs --profile and -o; see 'mirrorloom plan --help'")}
+	}
+	var summary *plan.Summary
+	err := o.output.write(ctx, func(dir string) (err error) {
+		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Out: dir})
+		return err
+	})
+	if err != nil {
+		return err
+	}
+	return a.answer(summary, func(w io.Writer) error {
+		_, err := fmt.Fprint(w, summary)
+		return err
+	})
+}

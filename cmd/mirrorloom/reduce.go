@@ -1,0 +1,125 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"path/filepath"
+	"strings"
+
+	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
+
+	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/reduce"
+)
+
+type reduceOptions struct {
+	sequence string
+	recipe   string
+	products []string
+	memory   byteSize
+	workers  int
+	output   outputOptions
+}
+
+func (o *reduceOptions) addFlags(f *pflag.FlagSet) {
+	o.memory = reduce.DefaultMemoryBytes
+	f.StringVar(&o.sequence, "sequence", "", "folder of the sequence, as plan wrote it")
+	f.StringVar(&o.recipe, "recipe", reduce.DefaultRecipe, "recipe: a YAML file, or the name of a built-in one")
+	f.StringSliceVar(&o.products, "products", []string{"cube"}, "what to write: cube, elements or both")
+	f.Var(&o.memory, "memory", "memory that the program may take")
+	f.IntVar(&o.workers, "workers", 0, "computations at the same time; 0 for one a processor")
+	o.output.addFlags(f, "products")
+}
+
+func newReduceCommand(a *app) *cobra.Command {
+	var o reduceOptions
+	cmd := &cobra.Command{
+		Use:   "reduce NIGHT --sequence SEQ -o RUN",
+		Short: "Turn a night of frames into a spectral cube",
+		Args:  cobra.ExactArgs(1),
+		RunE:  func(cmd *cobra.Command, args []string) error { return runReduce(cmd.Context(), a, args[0], o) },
+	}
+	o.addFlags(cmd.Flags())
+	return cmd
+}
+
+// options turns flags into those of the pipeline.
+func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
+	if o.sequence == "" || o.output.dir == "" {
+		return reduce.Options{}, usageError{errors.New("reduce needs --sequence and -o; see 'mirrorloom reduce --help'")}
+	}
+	if o.workers < 0 {
+		return reduce.Options{}, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
+	}
+	opts := reduce.Options{
+		Night: night, Sequence: o.sequence, MemoryBytes: int64(o.memory), Workers: o.workers,
+		Log: a.log, Progress: a.progress(),
+	}
+	for _, p := range o.products {
+		switch p {
+		case "cube":
+			opts.Cube = true
+		case "elements":
+			opts.Elements = true
+		default:
+			return opts, usageError{fmt.Errorf("--products %q is unknown; use cube, elements or cube,elements", p)}
+		}
+	}
+	recipe, err := reduce.LoadRecipe(o.recipe)
+	opts.Recipe = recipe
+	return opts, err
+}
+
+func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error {
+	opts, err := o.options(a, night)
+	if err != nil {
+		return err
+	}
+	var result *reduce.Result
+	err = o.output.write(ctx, func(dir string) (err error) {
+		opts.Out = dir
+		result, err = reduce.Run(ctx, opts)
+		return err
+	})
+	if err != nil {
+		return err
+	}
+	if err := a.answer(result.Run, func(w io.Writer) error { return printReduction(w, o.output.dir, result) }); err != nil {
+		return err
+	}
+	if len(result.Degraded) > 0 {
+		return degradedError{"written, but not whole: " + strings.Join(result.Degraded, "; ")}
+	}
+	return nil
+}
+
+func printReduction(w io.Writer, dir string, r *reduce.Result) error {
+	q := r.Run.Quality
+	used := 0
+	for _, e := range r.Ledger {
+		if e.Verdict.Used() {
+			used++
+		}
+	}
+	var b strings.Builder
+	fmt.Fprintf(&b, "%s: %d frames used, %.2f %% of the voxels good", dir, used, 100*q.GoodFraction)
+	if q.CoveredGoodFraction > 0 {
+		fmt.Fprintf(&b, " (%.2f %% of those in coded rows on the detector)", 100*q.CoveredGoodFraction)
+	}
+	b.WriteString("\n")
+	if q.DarkChi2Heldout != nil {
+		fmt.Fprintf(&b, "dark columns: mean square %.4f in units of their variance\n", *q.DarkChi2Heldout)
+	}
+	for _, text := range r.Run.Warnings {
+		fmt.Fprintf(&b, "warning: %s\n", text)
+	}
+	for _, s := range r.Run.Stages {
+		fmt.Fprintf(&b, "%-8s %7.2f s  %7.3f GB\n", s.Name, s.Seconds, float64(s.Bytes)/1e9)
+	}
+	fmt.Fprintf(&b, "cube: %s\n", filepath.Join(dir, product.CubeFile))
+	_, err := io.WriteString(w, b.String())
+	return err
+}
