@@ -10,6 +10,8 @@ import (
 
 	"github.com/stretchr/testify/require"
 	"pgregory.net/rapid"
+
+	"mirrorloom/internal/outside"
 )
 
 // requireSums reads every HDU's bytes and checks both sums (section 4.4.2.7).
@@ -120,6 +122,31 @@ func TestCubeBytesDoNotDependOnOrder(t *testing.T) {
 		got := writeCube(t, filepath.Join(folder, "any.fits"), strips, rapid.IntRange(1, 4).Draw(t, "workers"))
 		require.Equal(t, want, got)
 	})
+}
+
+// TestCrosscheckCube: astropy and fitsverify read a cube written in disorder.
+func TestCrosscheckCube(t *testing.T) {
+	folder := t.TempDir()
+	var strips []strip
+	for hdu, planes := range []int{testPlanes, testPlanes, 1} {
+		for l := range planes {
+			for y := 0; y < testRows; y += 10 {
+				strips = append(strips, strip{hdu, y, min(10, testRows-y), l, 1})
+			}
+		}
+	}
+	rand.New(rand.NewPCG(13, 14)).Shuffle(len(strips), func(i, j int) { strips[i], strips[j] = strips[j], strips[i] })
+	writeCube(t, filepath.Join(folder, "cube.fits"), strips, 3)
+	var manifest []manifestEntry
+	for i, whole := range inOrder() {
+		name := fmt.Sprintf("image%d.bin", i)
+		dump(t, filepath.Join(folder, name), whole.data())
+		manifest = append(manifest, manifestEntry{File: "cube.fits", HDUs: 5, Index: i + 1, Name: testCube[i].Name,
+			Axes: testCube[i].Axes, Dtype: []string{"f4", "i2", "u1"}[i], Dump: name})
+	}
+	writeManifest(t, folder, manifest)
+	require.Equal(t, "3 images, 0 cards\n", outside.Python(t, "fitsutil_write_images.py", folder))
+	requireFitsverify(t, folder, []string{"cube.fits"})
 }
 
 // The file of a cube is that of WriteFile with the same content, over more

@@ -85,6 +85,13 @@ var hardCards = []Card{
 	{"NO", false, "logical"},
 }
 
+func writeManifest(t *testing.T, folder string, manifest []manifestEntry) {
+	t.Helper()
+	text, err := json.Marshal(manifest)
+	require.NoError(t, err)
+	require.NoError(t, os.WriteFile(filepath.Join(folder, "manifest.json"), text, 0o644))
+}
+
 func dump(t *testing.T, path string, data any) {
 	t.Helper()
 	var out bytes.Buffer
@@ -131,9 +138,7 @@ func TestCrosscheckWrittenImages(t *testing.T) {
 		manifest = append(manifest, manifestEntry{File: all, HDUs: 8, Index: 0, Name: "PRIMARY", Cards: manifestCards(hardCards), History: nil})
 		files = append(files, all)
 	}
-	text, err := json.Marshal(manifest)
-	require.NoError(t, err)
-	require.NoError(t, os.WriteFile(filepath.Join(folder, "manifest.json"), text, 0o644))
+	writeManifest(t, folder, manifest)
 	require.Equal(t, "70 images, 745 cards\n", outside.Python(t, "fitsutil_write_images.py", folder))
 	for _, file := range files {
 		requireSums(t, filepath.Join(folder, file))
