@@ -354,6 +354,9 @@ func TestWriteStripAllocatesNothing(t *testing.T) {
 		}
 		y += h
 	})
+	if raceEnabled {
+		return // the pool then drops buffers on purpose; the race is looked for above
+	}
 	// A collection may empty the pool of buffers once in between.
 	require.Less(t, allocations, 0.5)
 }

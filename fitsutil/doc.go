@@ -15,6 +15,9 @@
 //     Rows, columns and planes count from 0.
 //   - stored and physical value: physical = BZERO + BSCALE stored (Standard 4.4.2.5). Every
 //     reader gives physical values as float32; a stored BLANK reads as NaN.
+//   - table: a binary table (BINTABLE), held in memory whole; a column: its values of all rows.
+//   - cube: a file whose images are written strip by strip, a strip being rows of some planes.
+//   - lane: the offset of a byte modulo 4, all that its part in a checksum depends on.
 //
 // # Invariants
 //
@@ -31,6 +34,12 @@
 //     read by several as long as none changes it.
 //   - Readers hold no pixels between calls: their buffers come from a pool, and in steady state a
 //     call allocates nothing.
+//   - A written file appears under its name whole or not at all: it is made under a temporary
+//     name beside it (.NAME.xxxxxxxx.part), synced and renamed; its room is reserved first.
+//   - Every written HDU has CHECKSUM and DATASUM. Bytes depend on what is written alone: not on
+//     the clock, the order of strips or the number of goroutines.
+//   - A caller's header gives cards, never structure: the structural and scaling cards in it
+//     are left out and made anew. What was read can be given back to be written.
 //
 // Not read: tile-compressed images (a typed error says so) and random groups.
 package fitsutil
