@@ -42,8 +42,11 @@ func gather(rows []row, sum *row, src []float32, index []int32, stride int) {
 		r0, r1 := rowAt(src, at), rowAt(src, at+stride)
 		r2, r3 := rowAt(src, at+2*stride), rowAt(src, at+3*stride)
 		at += 4 * stride
-		rows[index[i]], rows[index[i+1]] = *r0, *r1
-		rows[index[i+2]], rows[index[i+3]] = *r2, *r3
+		// One by one: a joint assignment would copy by way of the stack.
+		rows[index[i]] = *r0
+		rows[index[i+1]] = *r1
+		rows[index[i+2]] = *r2
+		rows[index[i+3]] = *r3
 		for p := range sum {
 			sum[p] += (r0[p] + r1[p]) + (r2[p] + r3[p])
 		}

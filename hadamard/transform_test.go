@@ -2,6 +2,7 @@ package hadamard
 
 import (
 	"fmt"
+	"math"
 	"math/rand/v2"
 	"strconv"
 	"strings"
@@ -161,5 +162,39 @@ func requireSylvester(t *testing.T, lines []string) {
 			require.Equal(t, want, ints[j], fmt.Sprint(i, j))
 			require.Equal(t, float32(want), rows[j][5], fmt.Sprint(i, j))
 		}
+	}
+}
+
+// TestMeanMatters: without subtracting the pixel's mean the same readings err
+// ten times as much or more: the reason for the mean pass. (A shift of the
+// readings by an uneven offset spoils the exactness of round test data.)
+func TestMeanMatters(t *testing.T) {
+	for _, v := range []int{511, 4095} {
+		c := mustCode(t, MSequence, v)
+		y := decades(v)
+		for i := range y {
+			y[i] = y[i]/1e5 + 1234.5678
+		}
+		want := naiveDecode(c, y)
+		with, without := make([]float32, v*lanes), make([]float32, v*lanes)
+		src := make([]float32, v*lanes)
+		for i := range y {
+			src[i*lanes] = y[i]
+		}
+		tr := newTransform(c)
+		tr.decode(with, src, lanes)
+		s := tr.scratch.New().(*transformScratch)
+		tr.load(s, &tr.steps, src, lanes)
+		s.mean, s.base, s.rows[0] = row{}, row{}, row{}
+		tr.run(s, &tr.columns, without, lanes, -2/float32(v+1))
+		worst := func(x []float32) float64 {
+			e := 0.0
+			for j := range want {
+				e = max(e, math.Abs(float64(x[j*lanes])-want[j]))
+			}
+			return e
+		}
+		t.Logf("v = %d: worst error %.2g with, %.2g without the mean removed", v, worst(with), worst(without))
+		require.Greater(t, worst(without), 10*worst(with))
 	}
 }
