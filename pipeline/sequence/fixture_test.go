@@ -5,6 +5,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"slices"
 	"testing"
 
 	"github.com/stretchr/testify/require"
@@ -38,9 +39,9 @@ calibration:
   arc: {count: 1, dwell_s: 8, lamp: NeAr, every: 5}
 `
 
-// smallProfile is the embedded optical profile with a small device in one of
-// the mountings; of smallTarget's rows only those of the diagonal one may be
-// negative, so that the square one gets others.
+// small gives smallTarget and the embedded optical profile with a small device
+// in one of the mountings. Rows are negative in the diagonal mounting only: the
+// square one gets others.
 func small(t testing.TB, mounting string) (*sequence.Target, *instrument.Profile) {
 	t.Helper()
 	target, err := sequence.ParseTarget("small.yaml", []byte(smallTarget))
@@ -68,6 +69,14 @@ func write(t testing.TB, s *sequence.Sequence) string {
 	dir := filepath.Join(t.TempDir(), "sequence")
 	require.NoError(t, s.Write(context.Background(), dir))
 	return dir
+}
+
+// clone copies what tests edit.
+func clone(s *sequence.Sequence) *sequence.Sequence {
+	c := *s
+	c.Steps, c.Code = slices.Clone(s.Steps), slices.Clone(s.Code)
+	c.Elements, c.Rows = slices.Clone(s.Elements), slices.Clone(s.Rows)
+	return &c
 }
 
 // contents reads every file below a folder, by relative path.

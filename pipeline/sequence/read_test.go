@@ -177,11 +177,13 @@ func lastTile(s *sequence.Sequence) int {
 
 func TestReadRefusesEditedTables(t *testing.T) {
 	target, profile := small(t, instrument.Diagonal)
-	dir := write(t, build(t, target, profile))
+	whole := build(t, target, profile)
+	dir := write(t, whole)
+	_, err := sequence.Read(context.Background(), dir)
+	require.NoError(t, err, "the sequence before the edits")
 	for _, c := range edits {
 		t.Run(c.name, func(t *testing.T) {
-			s, err := sequence.Read(context.Background(), dir)
-			require.NoError(t, err, "the sequence before the edit")
+			s := clone(whole)
 			c.edit(s)
 			copied := filepath.Join(t.TempDir(), "copy")
 			require.NoError(t, os.CopyFS(copied, os.DirFS(dir)))
