@@ -62,15 +62,14 @@ func (g *Geometry) EdgesX(dst []float64, j, y0, firstNm, stepNm float64) []float
 	if len(dst) == 0 {
 		return dst
 	}
-	// The lean varies slowly: continued from the last two edges it is so good a
-	// start that one step is usually enough.
-	lean := g.lean(g.X(j, y0, firstNm), y0)
-	growth := 0.0
+	// The guess continues the lean of the first edge in a straight line. It does not
+	// look at the edge before, so that the processor solves several at once.
+	start := g.unbent(j, firstNm)
+	x := g.solveX(start, y0, start)
+	lean, slope := x-start, g.leanSlope(x, y0)
 	for i := range dst {
 		unbent := g.unbent(j, firstNm+float64(i)*stepNm)
-		dst[i] = g.solveX(unbent, y0, unbent+lean+growth)
-		growth = dst[i] - unbent - lean
-		lean += growth
+		dst[i] = g.solveX(unbent, y0, unbent+lean+slope*(unbent-start))
 	}
 	return dst
 }
@@ -132,6 +131,12 @@ func (g *Geometry) slope(l float64) float64 {
 func (g *Geometry) lean(x, y0 float64) float64 {
 	q := y0 - g.Y_c + g.TraceShift(x)
 	return q * (g.SlitTilt + g.Smile*q)
+}
+
+// leanSlope is d(lean)/dx.
+func (g *Geometry) leanSlope(x, y0 float64) float64 {
+	q := y0 - g.Y_c + g.TraceShift(x)
+	return (g.SlitTilt + 2*g.Smile*q) * g.traceSlope(x)
 }
 
 func (g *Geometry) traceSlope(x float64) float64 {

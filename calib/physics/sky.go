@@ -21,8 +21,8 @@ func Airmass(apparentZenithDeg float64) float64 {
 // ApparentZenithDistance adds the refraction of the atmosphere, at 10 degrees C
 // and 1010 hPa, to a geometric zenith distance, all in degrees: Saemundsson
 // 1986 (Sky & Telescope 72, 70) as in Meeus, Astronomical Algorithms, 2nd
-// edition, formula 16.4, good to 0.1 arcmin above the horizon. Below the horizon
-// (beyond 90) the distance is returned as it is.
+// edition, formula 16.4; within 0.5 arcmin of a full model above 5 degrees of
+// altitude. Below the horizon (beyond 90) the distance is returned as it is.
 func ApparentZenithDistance(geometricZenithDeg float64) float64 {
 	h := 90 - geometricZenithDeg
 	if h < 0 {
