@@ -65,7 +65,7 @@ func TestCrosscheckZenithDistance(t *testing.T) {
 		}
 	}
 	t.Logf("zenith distance off by %.4f deg at most, refraction above 5 deg of altitude by %.4f deg", worst, worstApparent)
-	require.Less(t, worst, 0.02) // as the docs say
+	require.Less(t, worst, 0.02)           // as the docs say
 	require.Less(t, worstApparent, 0.0083) // 0.5 arcmin
 }
 
