@@ -1,0 +1,125 @@
+package rehearse
+
+import "math"
+
+// waves is a smooth random field over (element, row) or (element, wavelength),
+// mean about 0 and rms 1: a sum of a few long waves. Both arguments run over
+// about 0..1.
+type waves struct {
+	a, b, phase [4]float64
+}
+
+// newWaves draws waves of up to `cycles` periods over the second argument.
+func newWaves(seed uint64, purpose string, cycles float64) *waves {
+	pcg := newStream(seed, purpose, 0, 0)
+	w := &waves{}
+	for k := range w.a {
+		w.a[k] = within(pcg, 2)
+		w.b[k] = cycles * (0.4 + 0.6*uniform(pcg))
+		w.phase[k] = uniform(pcg)
+	}
+	return w
+}
+
+func (w *waves) at(s, t float64) float64 {
+	sum := 0.0
+	for k := range w.a {
+		sum += math.Sin(2 * math.Pi * (w.a[k]*s + w.b[k]*t + w.phase[k]))
+	}
+	return sum / math.Sqrt2
+}
+
+// Sizes of what a real instrument adds to the light's way.
+const (
+	slitRMS    = 0.02  // slit function of element and row
+	wiggleRMS  = 0.015 // efficiency of element and wavelength
+	wiggleLong = 60.0  // shortest period of the efficiency's wiggles, px
+	leakRMS    = 0.2   // of the leak's structure
+)
+
+// efficiencyMap is the slit function and the efficiency wiggles of all
+// elements: factors of the light of an element.
+type efficiencyMap struct {
+	o    *optics
+	n    int
+	slit *waves
+	// wiggles[j][k] is the factor at dispersed distance pxFrom + k.
+	wiggles [][]float64
+}
+
+// newEfficiencyMap draws the factors.
+func (o *optics) newEfficiencyMap(seed uint64, n int) *efficiencyMap {
+	m := &efficiencyMap{o: o, n: n, slit: newWaves(seed, "slit function", 2)}
+	span := o.pxTo - o.pxFrom
+	w := newWaves(seed, "efficiency", span/wiggleLong)
+	for j := range n {
+		list := make([]float64, int(span)+3)
+		for k := range list {
+			list[k] = 1 + wiggleRMS*w.at(float64(j)/float64(n), float64(k)/span)
+		}
+		m.wiggles = append(m.wiggles, list)
+	}
+	return m
+}
+
+// apply multiplies the light of element j in a mirror row.
+func (m *efficiencyMap) apply(d *density, j int, row *mirrorRow, across float64) {
+	o := m.o
+	slit := 1 + slitRMS*m.slit.at(float64(j)/float64(m.n), row.row/float64(o.rows))
+	list := m.wiggles[j]
+	for i := d.from; i < d.to; i++ {
+		at := row.start[i] - across - o.pxFrom
+		k := min(max(int(at), 0), len(list)-2)
+		d.h[i] *= slit * (list[k] + (list[k+1]-list[k])*(at-float64(k)))
+	}
+}
+
+// weights are factors of the light by dispersed distance, every px from pxFrom:
+// those of a layer.
+type weights struct {
+	o    *optics
+	list []float64
+}
+
+// newWeights tabulates a function of the wavelength; where no wavelength is
+// dispersed so far it is 0.
+func (o *optics) newWeights(f func(nm float64) float64) *weights {
+	w := &weights{o: o, list: make([]float64, int(o.pxTo-o.pxFrom)+3)}
+	for k := range w.list {
+		if nm, ok := o.geometry.wavelength(o.pxFrom + float64(k)); ok {
+			w.list[k] = f(nm)
+		}
+	}
+	return w
+}
+
+// times writes src times the weights to dst.
+func (w *weights) times(dst, src *density, row *mirrorRow, across float64) {
+	dst.clear()
+	for i := src.from; i < src.to; i++ {
+		at := row.start[i] - across - w.o.pxFrom
+		k := min(max(int(at), 0), len(w.list)-2)
+		dst.h[i] = src.h[i] * (w.list[k] + (w.list[k+1]-w.list[k])*(at-float64(k)))
+	}
+	dst.touch(src.from, src.to)
+}
+
+// colourWeight is a wavelength's place in the grid, -1/2 at its first edge and
+// 1/2 at its last.
+func (o *optics) colourWeight(nm float64) float64 {
+	g := o.profile.Grid
+	return (nm-g.WavelengthNM(-0.5))/(float64(g.Count)*g.StepNM) - 0.5
+}
+
+// leaks is what shut beams leak, by beam, on a detector row: size times a
+// structure of 20 % rms over the field.
+func (b *beams) leaks(size float64, field *waves, y, rows int) []float64 {
+	list := make([]float64, len(b.list))
+	for i, m := range b.list {
+		list[i] = size
+		if m.element >= 0 {
+			list[i] = size * math.Max(1+leakRMS*field.at(float64(m.element)/float64(b.n), float64(y)/float64(rows)), 0)
+		}
+	}
+	return list
+}
