@@ -87,7 +87,7 @@ func badFiles() []badFile {
 		{"data cut by one byte", whole[:2880+23], ErrTruncated, 0, "", 2903, "1 bytes before"},
 		{"table cut", ext(table), ErrTruncated, 1, "", 5760, "8 bytes before"},
 		{"junk of a block behind the last HDU", join(whole, []byte("junk"), make([]byte, 2876)), ErrStructure, 0, "", 5760, "do not start with XTENSION"},
-		{"junk behind zeros", join(whole, make([]byte, 2*readChunk), []byte{1}), ErrStructure, 0, "", 5760, "do not start with XTENSION"},
+		{"junk behind zeros", join(whole, make([]byte, 2*chunkBytes), []byte{1}), ErrStructure, 0, "", 5760, "do not start with XTENSION"},
 	}
 }
 
@@ -160,7 +160,7 @@ func TestOpenToleratesTails(t *testing.T) {
 		"fill missing":              whole[:2880+24],
 		"fill of header missing":    headerBytes(primary(8)...)[:4*80],
 		"junk below a block":        join(whole, bytes.Repeat([]byte("x"), 2879)),
-		"zeros of many blocks":      join(whole, make([]byte, 3*readChunk+1)),
+		"zeros of many blocks":      join(whole, make([]byte, 3*chunkBytes+1)),
 		"zero axis behind huge":     headerBytes(primary(16, 1<<32, 1<<32, 0)...),
 		"NULs fill the header":      join(headerBytes(primary(8)...)[:4*80], make([]byte, blockSize-4*80)),
 		"random groups are skipped": join(headerBytes(append(primary(16, 0, 2), "GROUPS  = T", "PCOUNT  = 1", "GCOUNT  = 2")...), dataBytes(make([]int16, 6)), headerBytes(extension("IMAGE", 8)...)),

@@ -3,18 +3,11 @@ package fitsutil
 import (
 	"encoding/binary"
 	"math"
-	"sync"
 )
 
-// readChunk is how much is read and converted at once: it stays in a core's L2 cache (1 to 2
-// MiB on servers, 256 KiB at the least) between the copy from the system and the conversion.
-const readChunk = 128 << 10
-
-// buffers lends the chunks to all readers.
-var buffers = sync.Pool{New: func() any { b := make([]byte, readChunk); return &b }}
-
-func getBuffer() *[]byte  { return buffers.Get().(*[]byte) }
-func putBuffer(b *[]byte) { buffers.Put(b) }
+// getBuffer lends chunkBytes bytes, in which what is read is converted.
+func getBuffer() *[]byte  { return chunks.Get().(*[]byte) }
+func putBuffer(b *[]byte) { chunks.Put(b) }
 
 // scaling turns stored bytes into physical values.
 type scaling struct {

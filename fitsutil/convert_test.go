@@ -27,7 +27,11 @@ func naive(s scaling, raw []byte) float32 {
 		}
 		return float32(s.zero + float64(s.scale*float64(v)))
 	case -64:
-		return float32(s.zero + float64(s.scale*math.Float64frombits(binary.BigEndian.Uint64(raw))))
+		v := math.Float64frombits(binary.BigEndian.Uint64(raw))
+		if s.zero == 0 && s.scale == 1 {
+			return float32(v) // the sign of -0 kept
+		}
+		return float32(s.zero + float64(s.scale*v))
 	}
 	switch {
 	case s.hasBlank && stored == s.blank:

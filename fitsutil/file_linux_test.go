@@ -85,20 +85,8 @@ func TestReleaseUnderFewDescriptors(t *testing.T) {
 	}
 }
 
-// tinyDisk mounts a small file system, which takes root; the second result says whether it did.
-func tinyDisk(t *testing.T, size string) (string, bool) {
-	t.Helper()
-	dir := t.TempDir()
-	if err := unix.Mount("tmpfs", dir, "tmpfs", 0, "size="+size); err != nil {
-		t.Logf("no small disk can be mounted here (%v): only the seams are tested", err)
-		return "", false
-	}
-	t.Cleanup(func() { require.NoError(t, unix.Unmount(dir, 0)) })
-	return dir, true
-}
-
 func TestGzipWithoutRoom(t *testing.T) {
-	content := join(headerBytes(primary(8, 1<<20)...), make([]byte, 1<<20), make([]byte, padding(1<<20)))
+	content := join(headerBytes(primary(8, 2<<20)...), make([]byte, 2<<20), make([]byte, padding(2<<20)))
 	path := writeTemp(t, "zeros.fits.gz", packed(t, content))
 	check := func(u unpacker, text string) {
 		t.Helper()
@@ -123,10 +111,14 @@ func TestGzipWithoutRoom(t *testing.T) {
 	requireError(t, err, ErrNoRoom, path, "no room to unpack")
 	require.ErrorIs(t, err, syscall.ENOSPC)
 
-	if tiny, mounted := tinyDisk(t, "256k"); mounted {
-		check(unpacker{dir: tiny, free: freeBytes}, "has room for 262144")
-		requireEmpty(t, tiny)
-		check(unpacker{dir: tiny, free: func(string) (int64, bool) { return 0, false }}, "no room to unpack")
-		requireEmpty(t, tiny)
+	tiny := t.TempDir()
+	if err := mountSmallDisk(tiny); err != nil {
+		t.Logf("no small disk can be mounted here (%v): the seams above were tested", err)
+		return
 	}
+	t.Cleanup(func() { require.NoError(t, unix.Unmount(tiny, 0)) })
+	check(unpacker{dir: tiny, free: freeBytes}, "has room for 1048576")
+	requireEmpty(t, tiny)
+	check(unpacker{dir: tiny, free: func(string) (int64, bool) { return 0, false }}, "no room to unpack")
+	requireEmpty(t, tiny)
 }

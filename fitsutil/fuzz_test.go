@@ -9,8 +9,6 @@ import (
 	"testing"
 )
 
-// Beside the seeds below, testdata/fuzz holds what fuzzing has found.
-
 // FuzzHeader: a header that is read is written back byte for byte, and every card whose value
 // is understood reads back the same after it was written anew; or there is a typed error and no
 // header.

@@ -89,7 +89,7 @@ func (u unpacker) noRoom(path string, err error, what string) error {
 // inflate unpacks the file.
 func (u unpacker) inflate(into io.Writer, packed *File) error {
 	fail := func(err error) error { return packError(packed.path, err) }
-	reader, err := gzip.NewReader(bufio.NewReaderSize(io.NewSectionReader(fileReader{packed}, 0, packed.size), readChunk))
+	reader, err := gzip.NewReader(bufio.NewReaderSize(io.NewSectionReader(fileReader{packed}, 0, packed.size), chunkBytes))
 	if err != nil {
 		return fail(err)
 	}

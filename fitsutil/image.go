@@ -160,7 +160,7 @@ func (im *Image) rowsTogether(n int) int {
 	if rowBytes > mostlyGaps*bytes && rowBytes-bytes > 4096 {
 		return 1
 	}
-	return int(max(1, (readChunk-bytes)/rowBytes+1))
+	return int(max(1, (chunkBytes-bytes)/rowBytes+1))
 }
 
 // readStrided reads h rows of n pixels, each a row of the image behind the one before, which
@@ -183,7 +183,7 @@ func (im *Image) readStrided(dst []float32, first int64, n, h int) error {
 func (im *Image) readRun(dst []float32, first int64) error {
 	buffer := getBuffer()
 	defer putBuffer(buffer)
-	most := readChunk / int(im.sample)
+	most := chunkBytes / int(im.sample)
 	for len(dst) > 0 {
 		n := min(len(dst), most)
 		raw := (*buffer)[:n*int(im.sample)]

@@ -155,7 +155,7 @@ func rampImage(t testing.TB, bitpix int, axes ...int) (*Image, []float32) {
 // first row, to the last, and one at a time, with guards at both ends of the buffer.
 func TestReadRowsAtChunkBoundaries(t *testing.T) {
 	for _, bitpix := range []int{8, 16, 32, 64, -32, -64} {
-		chunk := readChunk / (max(bitpix, -bitpix) / 8)
+		chunk := chunkBytes / (max(bitpix, -bitpix) / 8)
 		for _, width := range []int{chunk - 1, chunk, chunk + 1, 2*chunk + 1, chunk / 7} {
 			const height, guard = 3, -12345
 			im, want := rampImage(t, bitpix, width, height)
@@ -175,7 +175,7 @@ func TestReadRowsAtChunkBoundaries(t *testing.T) {
 
 // Sections narrow and wide, so that rows are read one by one, several together, and by chunks.
 func TestReadSectionAtChunkBoundaries(t *testing.T) {
-	for _, width := range []int{64, 4000, readChunk/2 - 1, readChunk/2 + 1, readChunk + 1} {
+	for _, width := range []int{64, 4000, chunkBytes/2 - 1, chunkBytes/2 + 1, chunkBytes + 1} {
 		const height = 5
 		im, all := rampImage(t, 16, width, height)
 		for _, n := range []int{1, 2, width / 5, width / 3, width - 1, width} {

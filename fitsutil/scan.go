@@ -88,7 +88,7 @@ func (f *File) firstNonZero(at int64) (int64, error) {
 	buffer := getBuffer()
 	defer putBuffer(buffer)
 	for at < f.size {
-		part := (*buffer)[:min(f.size-at, readChunk)]
+		part := (*buffer)[:min(f.size-at, chunkBytes)]
 		if err := f.readAt(part, at); err != nil {
 			return 0, err
 		}
