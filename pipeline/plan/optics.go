@@ -3,14 +3,9 @@ package plan
 import (
 	"math"
 
-	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
-
-// maxTraceRows is how far a trace may leave its row, end to end: beyond it,
-// strips of rows would need too many neighbours.
-const maxTraceRows = 8
 
 // optics answers where light falls on the detector, as far as planning needs:
 // x along the dispersion in active pixels from 0, a pixel reaching half a pixel
@@ -95,20 +90,6 @@ func rangeOf(a, b, q0, q1 float64) extent {
 		e.take(vertex * (a + b*vertex))
 	}
 	return e
-}
-
-// checkTrace refuses a profile whose traces leave their row by too much.
-func (o *optics) checkTrace() error {
-	s := o.profile.Spectrograph
-	last := float64(o.profile.Detector.Columns - 1)
-	e := rangeOf(s.TraceTilt, s.TraceCurvePerPx, -s.XCenterPx, last-s.XCenterPx)
-	if e.high-e.low > maxTraceRows {
-		return &config.Error{
-			File: "profile " + o.profile.Name, Path: "spectrograph.trace_tilt",
-			What: "with trace_curve_per_px the trace leaves its row by " + number(e.high-e.low) + " rows end to end where 8 are allowed; turn the detector or correct the numbers",
-		}
-	}
-	return nil
 }
 
 // elementsWithWholeBand is the largest number of elements of which each has

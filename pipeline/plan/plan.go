@@ -62,9 +62,6 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if err := o.checkRowsSeen(); err != nil {
 		return nil, nil, err
 	}
-	if err := o.checkTrace(); err != nil {
-		return nil, nil, err
-	}
 	code, n, err := chooseCode(target.Code, o)
 	if err != nil {
 		return nil, nil, err
