@@ -7,8 +7,11 @@ import (
 	"io"
 	"math"
 	"os"
+	"slices"
 	"strconv"
 	"strings"
+	"unicode"
+	"unicode/utf8"
 
 	"mirrorloom/fitsutil"
 )
@@ -94,7 +97,31 @@ type field struct {
 
 func text(name string, at func(*Entry) *string) field {
 	return field{name, "", func(e *Entry) any { return *at(e) },
-		func(e *Entry, s string) error { *at(e) = s; return nil }}
+		func(e *Entry, s string) error { *at(e) = s; return checkText(s) }}
+}
+
+// checkText keeps a line a line: CSV cannot carry every sequence of carriage
+// returns, and FITS none.
+func checkText(s string) error {
+	if !utf8.ValidString(s) || strings.ContainsFunc(s, unicode.IsControl) {
+		return fmt.Errorf("%q holds control characters or is no UTF-8", s)
+	}
+	return nil
+}
+
+func setVerdict(e *Entry, s string) error {
+	e.Verdict = Verdict(s)
+	if !slices.Contains(Verdicts(), e.Verdict) {
+		return fmt.Errorf("%q is no verdict", s)
+	}
+	return nil
+}
+
+func setStep(e *Entry, s string) (err error) {
+	if e.Step, err = strconv.Atoi(s); err == nil && (e.Step < 0 || e.Step > math.MaxInt32) {
+		err = fmt.Errorf("%d is no step", e.Step)
+	}
+	return err
 }
 
 func number(name, unit string, at func(*Entry) *float64) field {
@@ -111,15 +138,14 @@ func number(name, unit string, at func(*Entry) *float64) field {
 
 func fields() []field {
 	return []field{
-		{"step", "", func(e *Entry) any { return e.Step },
-			func(e *Entry, s string) (err error) { e.Step, err = strconv.Atoi(s); return err }},
+		{"step", "", func(e *Entry) any { return e.Step }, setStep},
 		text("file", func(e *Entry) *string { return &e.File }),
 		text("kind", func(e *Entry) *string { return &e.Kind }),
 		text("maskid", func(e *Entry) *string { return &e.MaskID }),
 		text("matched_by", func(e *Entry) *string { return &e.MatchedBy }),
 		text("date_obs", func(e *Entry) *string { return &e.DateObs }),
 		number("exptime_s", "s", func(e *Entry) *float64 { return &e.ExptimeS }),
-		text("verdict", func(e *Entry) *string { return (*string)(&e.Verdict) }),
+		{"verdict", "", func(e *Entry) any { return string(e.Verdict) }, setVerdict},
 		number("saturated_fraction", "", func(e *Entry) *float64 { return &e.SaturatedFraction }),
 		number("throughput", "", func(e *Entry) *float64 { return &e.Throughput }),
 		number("throughput_err", "", func(e *Entry) *float64 { return &e.ThroughputErr }),
@@ -130,6 +156,7 @@ func fields() []field {
 
 // WriteCSV writes the ledger with a line of column names. A figure that was not
 // measured is an empty field; floats have the fewest digits that read back.
+// Texts with control characters are an error.
 func (l Ledger) WriteCSV(w io.Writer) error {
 	out := csv.NewWriter(w)
 	var names []string
@@ -142,7 +169,11 @@ func (l Ledger) WriteCSV(w io.Writer) error {
 	for i := range l {
 		var record []string
 		for _, f := range fields() {
-			record = append(record, format(f.get(&l[i])))
+			cell := format(f.get(&l[i]))
+			if err := checkText(cell); err != nil {
+				return fmt.Errorf("write the ledger, row %d, column %s: %w", i+1, f.name, err)
+			}
+			record = append(record, cell)
 		}
 		if err := out.Write(record); err != nil {
 			return fmt.Errorf("write the ledger: %w", err)
@@ -220,7 +251,8 @@ func parseLedger(r io.Reader) (Ledger, error) {
 }
 
 // Table gives the ledger as the FRAMES table of cube.fits: the same columns, their names
-// in capitals.
+// in capitals. FITS holds ASCII alone: other characters of a file's name or a
+// note are written as \u and their number.
 func (l Ledger) Table() *fitsutil.Table {
 	t := &fitsutil.Table{Name: Frames}
 	for _, f := range fields() {
@@ -231,7 +263,7 @@ func (l Ledger) Table() *fitsutil.Table {
 		case float64:
 			col.Format, col.Data = "D", gather(l, func(e *Entry) float64 { return f.get(e).(float64) })
 		case string:
-			data := gather(l, func(e *Entry) string { return f.get(e).(string) })
+			data := gather(l, func(e *Entry) string { return ascii(f.get(e).(string)) })
 			width := 1
 			for _, s := range data {
 				width = max(width, len(s))
@@ -241,6 +273,15 @@ func (l Ledger) Table() *fitsutil.Table {
 		t.Columns = append(t.Columns, col)
 	}
 	return t
+}
+
+// ascii escapes what no FITS table may hold, and nothing in a plain text.
+func ascii(s string) string {
+	if strings.ContainsFunc(s, func(r rune) bool { return r < ' ' || r > '~' }) {
+		quoted := strconv.QuoteToASCII(s)
+		return quoted[1 : len(quoted)-1]
+	}
+	return s
 }
 
 func gather[T any](l Ledger, get func(*Entry) T) []T {
