@@ -261,19 +261,31 @@ func TestConstantDecodesToItsKth(t *testing.T) {
 	}
 }
 
-// TestNothingIsAllocated once a decoder is warm.
-func TestNothingIsAllocated(t *testing.T) {
-	for _, c := range []*Code{mustCode(t, MSequence, 127), mustCode(t, Legendre, 103), planarCode(t, 21), mustCode(t, SlitScan, 40)} {
-		d := NewDecoder(c)
-		const pixels = 3*lanes + 5
-		src, dst := randomBlock(1, c.V(), pixels), make([]float32, c.V()*pixels)
-		allocated := testing.AllocsPerRun(50, func() {
-			d.Decode(dst, src, pixels, pixels)
-			d.Predict(dst, src, pixels, pixels)
-			d.Variance(dst, src, pixels, pixels, 0)
-		})
-		// A collection may empty the pool in the midst of the runs.
-		require.Less(t, allocated, 1.0, "%s %d", c.Family(), c.V())
+// TestPredictError: the forward model of the largest codes against float64, for
+// Predict's figure: 1e-6 of the sum of the elements.
+func TestPredictError(t *testing.T) {
+	for _, c := range []*Code{
+		mustCode(t, MSequence, 511), mustCode(t, MSequence, 4095), mustCode(t, Legendre, 1019), mustCode(t, TwinPrime, 899),
+	} {
+		for name, scene := range scenes(c.V()) {
+			f, got, total := make([]float32, c.V()), make([]float32, c.V()), 0.0
+			for j := range f {
+				f[j] = float32(scene[j])
+				scene[j] = float64(f[j])
+				total += scene[j]
+			}
+			NewDecoder(c).Predict(got, f, 1, 1)
+			worst := 0.0
+			for i := range got {
+				want := 0.0
+				for j, bit := range c.Row(i) {
+					want += float64(bit) * scene[j]
+				}
+				worst = max(worst, math.Abs(float64(got[i])-want))
+			}
+			t.Logf("%s %d %s: %.2g of the sum", c.Family(), c.V(), name, worst/total)
+			require.Less(t, worst, 1e-6*total)
+		}
 	}
 }
 

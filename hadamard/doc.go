@@ -36,5 +36,7 @@
 //   - Methods that take blocks check their lengths and panic with a text that
 //     starts "internal error" when a block is too short: sizes are the caller's
 //     invariant, never input. Everything that input can get wrong is an error.
+//   - Papers are cited from memory where testdata/README.md names no other origin;
+//     every formula is also checked by numbers.
 //   - Units: whatever the samples carry (electrons), variances its square.
 package hadamard
