@@ -7,12 +7,16 @@ STATICCHECK := honnef.co/go/tools/cmd/staticcheck@v0.8.2
 PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml fitsverify netpbm
 COMMANDS := fitsverify pngtopnm
 
-.PHONY: all build test lint bench packages
+.PHONY: all build demo test lint bench validate packages
 
 all: build
 
 build:
 	$(GO) build -o bin/mirrorloom ./cmd/mirrorloom
+
+# The main job, on an invented field.
+demo: build
+	bin/mirrorloom demo -o demo --replace
 
 test: packages
 	$(GO) test -timeout 20m ./...
@@ -24,9 +28,14 @@ lint:
 	GOARCH=arm64 $(GO) vet ./...
 	$(GO) run $(STATICCHECK) ./...
 
-# Figures are compared as ratios within one run: the machine may be noisy.
+# Long statistical checks: writes VALIDATION.md.
+validate: build packages
+	$(GO) run ./internal/validate
+
+# Figures are compared as ratios within one run, as machines are noisy: writes
+# BENCHMARKS.md.
 bench: build packages
-	$(GO) test -run '^$$' -bench . -benchtime 1s ./hadamard ./fitsutil ./calib
+	$(GO) run ./internal/bench
 
 # The cross-checks skip where neither the packages nor apt are there (and fail
 # under CI=true), so a machine without apt still runs everything else.
