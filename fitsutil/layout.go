@@ -12,7 +12,8 @@ import (
 // system costs little. A multiple of 8, the largest sample.
 const chunkBytes = 256 << 10
 
-// chunks lends the buffers, so that a strip allocates none.
+// chunks lends the buffers to writers and readers, so that a strip allocates
+// none.
 var chunks = sync.Pool{New: func() any {
 	buffer := make([]byte, chunkBytes)
 	return &buffer
@@ -65,8 +66,8 @@ func (l *layout) writeData(hdu *pending, offset int64, bytes []byte) error {
 // writeSamples writes data[from:from+count] from an offset, in samples, of the
 // HDU's data, through a borrowed buffer.
 func (l *layout) writeSamples(hdu *pending, kind sampleType, offset int64, data any, from, count int) error {
-	buffer := chunks.Get().(*[]byte)
-	defer chunks.Put(buffer)
+	buffer := getBuffer()
+	defer putBuffer(buffer)
 	size := kind.size()
 	for count > 0 {
 		n := min(count, chunkBytes/size)

@@ -308,21 +308,3 @@ func TestWriteFileRefuses(t *testing.T) {
 		})
 	}
 }
-
-func TestPutSamplesKeepsInput(t *testing.T) {
-	for dtype, data := range everyType(rand.New(rand.NewPCG(7, 8)), 33) {
-		kind, n, ok := sampleTypeOf(data)
-		require.True(t, ok)
-		var before, after, want bytes.Buffer
-		require.NoError(t, binary.Write(&before, binary.LittleEndian, data))
-		guarded := bytes.Repeat([]byte{0xA5}, n*kind.size()+8)
-		putSamples(guarded[:n*kind.size()], data, 0, n)
-		require.NoError(t, binary.Write(&after, binary.LittleEndian, data))
-		require.Equal(t, before.Bytes(), after.Bytes(), dtype)
-		require.Equal(t, bytes.Repeat([]byte{0xA5}, 8), guarded[n*kind.size():], dtype)
-		if !kind.unsigned {
-			require.NoError(t, binary.Write(&want, binary.BigEndian, data))
-			require.Equal(t, want.Bytes(), guarded[:n*kind.size()], dtype)
-		}
-	}
-}
