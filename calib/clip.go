@@ -9,6 +9,8 @@ const madPerSigma = 1.4826022185056018
 // Clip is a rule for the clipped mean of values that scatter normally but for
 // outliers: start from the median, keep what lies within Sigmas of the scatter from
 // the centre, move the centre to the mean of the kept, and repeat until they stay.
+// Of many values the start looks at some 64 to 130, evenly spaced: the repetition
+// forgets it.
 type Clip struct {
 	// Sigmas is the half width kept, c. At 4 the clipping itself costs 0.1 % of
 	// variance; at 3, 3 %.
@@ -59,8 +61,8 @@ func (c Clip) Mean(values, scratch []float32) Estimate {
 		return c.unclipped(kept)
 	}
 	r := clippedVariance(c.Sigmas)
-	centre, noise := median(kept), c.Noise
-	sample := kept
+	sample := thin(kept)
+	centre, noise := median(sample), c.Noise
 	if noise == 0 {
 		noise = max(c.Floor, madPerSigma*medianDeviation(sample, centre)*smallSample(len(sample)))
 	}
@@ -83,6 +85,22 @@ func (c Clip) Mean(values, scratch []float32) Estimate {
 		}
 	}
 	return Estimate{Mean: centre, Variance: noise * noise / (r * float64(n)), Noise: noise, Kept: n}
+}
+
+// thin moves every n-th of more than 128 values to the front and returns those. n is
+// odd, so that rows of an even width do not always give the same columns.
+func thin(v []float32) []float32 {
+	const enough = 64
+	step := len(v)/enough | 1
+	if len(v) <= 2*enough {
+		return v
+	}
+	n := 0
+	for i := 0; i < len(v); i += step {
+		v[n] = v[i]
+		n++
+	}
+	return v[:n]
 }
 
 // smallSample widens the first limits for n values: their median deviation has a
