@@ -153,7 +153,9 @@ func (r *Summary) String() string {
 	}
 	fmt.Fprintf(&b, "%-8s %6d %9.1f\n\n", "all", r.Steps, r.Minutes)
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
-	fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	if r.Airmass[2] > 0 {
+		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	}
 	fmt.Fprintf(&b, "frames   %.2f GB, %d distinct masks\n", r.Gigabytes, r.Masks)
 	for _, w := range r.Warnings {
 		fmt.Fprintf(&b, "warning  %s\n", w)
