@@ -40,6 +40,7 @@ const (
 	patternPixelADU  = 0.4   // rms of its pixels
 	driftADU         = 1.2   // amplitude of an amplifier's drift along a frame
 	driftLongRows    = 250.0 // its shortest period, rows
+	unknownCurve     = 0.004 // loss at saturation that the profile's linearity leaves
 	// overflow is where a pixel stops to collect, against the level that the
 	// profile calls saturated: above it, so that a full pixel reads as such.
 	overflow = 1.02
@@ -225,10 +226,14 @@ func (r *reader) collect(row *rawRow, mean []float64, in *reading) {
 }
 
 // measured is the reading m, ADU above bias, of a charge: the profile's
-// correction m (1 + c1 m + c2 m^2 ...) of it gives the charge. Solved by
+// correction m (1 + c1 m + c2 m^2 ...) of it gives the charge, but for a little
+// that the profile does not know of unless the instrument is perfect. Solved by
 // iteration, which gains the size of the correction a pass.
 func (t *detector) measured(linear float64) float64 {
-	if t.perfect || len(t.Linearity) == 0 {
+	if !t.perfect {
+		linear *= 1 - unknownCurve*linear/t.SaturationADU
+	}
+	if len(t.Linearity) == 0 {
 		return linear
 	}
 	m := linear

@@ -11,8 +11,8 @@ type Options struct {
 	// Seed is where all random numbers come from.
 	Seed uint64
 	// Perfect makes the true geometry the profile's, the pixels' response and
-	// the slit function 1, the efficiency smooth, the detector linear and the
-	// lamps those of the list.
+	// the slit function 1, the efficiency smooth, the detector as linear as the
+	// profile says and the lamps those of the list.
 	Perfect bool
 	// Noiseless leaves out photon, read and rounding noise and the bias' drift;
 	// frames then hold float32 ADU.
