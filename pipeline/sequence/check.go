@@ -3,8 +3,6 @@ package sequence
 import (
 	"math"
 	"slices"
-
-	"mirrorloom/hadamard"
 )
 
 // check finds the first inconsistency of a sequence, masks and digests aside.
@@ -22,20 +20,19 @@ func (s *Sequence) check() error {
 	return s.checkSteps(code)
 }
 
-func (s *Sequence) checkCode() (*hadamard.Code, error) {
-	f, err := hadamard.ParseFamily(s.Family)
-	if err != nil {
+func (s *Sequence) checkCode() (*codeRows, error) {
+	if !isFamily(s.Family) {
 		return nil, fault("FAMILY %q is no code family (%s)", s.Family, familyList())
 	}
-	code, err := hadamard.New(f, s.V)
+	if !hasSize(s.Family, s.V) {
+		return nil, fault("CODEV %d is no size of the family %s", s.V, s.Family)
+	}
+	code, err := newCodeRows(s.Family, s.V, s.Poly)
 	if err != nil {
-		return nil, fault("CODEV %d is no size of the family %s", s.V, f)
+		return nil, err
 	}
-	if s.K != code.K() || s.L != code.L() {
-		return nil, fault("CODEK %d and CODEL %d are not those of the %s code of %d columns (%d and %d)", s.K, s.L, f, s.V, code.K(), code.L())
-	}
-	if s.Poly != code.Poly() {
-		return nil, fault("CODEPOLY %d is not the polynomial %d of the %s code of %d columns", s.Poly, code.Poly(), f, s.V)
+	if s.K != code.k || s.L != code.l {
+		return nil, fault("CODEK %d and CODEL %d are not those of the %s code of %d columns (%d and %d)", s.K, s.L, s.Family, s.V, code.k, code.l)
 	}
 	return code, nil
 }
@@ -95,16 +92,12 @@ func (s *Sequence) checkElements() error {
 	return nil
 }
 
-func (s *Sequence) checkSteps(code *hadamard.Code) error {
+func (s *Sequence) checkSteps(code *codeRows) error {
 	if len(s.Steps) == 0 {
 		return fault("STEPS has no row")
 	}
 	if len(s.Code) != len(s.Steps) {
 		return fault("CODE has %d rows where STEPS has %d", len(s.Code), len(s.Steps))
-	}
-	rows := make([][]uint8, s.V)
-	for i := range rows {
-		rows[i] = code.Row(i)
 	}
 	for i, st := range s.Steps {
 		if st.Step != i+1 {
@@ -113,7 +106,7 @@ func (s *Sequence) checkSteps(code *hadamard.Code) error {
 		if err := s.checkStep(i); err != nil {
 			return err
 		}
-		if err := s.checkBits(i, rows); err != nil {
+		if err := s.checkBits(i, code); err != nil {
 			return err
 		}
 	}
@@ -151,7 +144,7 @@ func (s *Sequence) checkStep(i int) error {
 }
 
 // checkBits compares a step's bits with its code row or lamp pattern.
-func (s *Sequence) checkBits(i int, rows [][]uint8) error {
+func (s *Sequence) checkBits(i int, code *codeRows) error {
 	st, bits := s.Steps[i], s.Code[i]
 	if len(bits) != s.V {
 		return fault("CODE row %d has %d bits where the code has %d columns", i+1, len(bits), s.V)
@@ -164,7 +157,7 @@ func (s *Sequence) checkBits(i int, rows [][]uint8) error {
 		ones += int(b)
 	}
 	switch {
-	case st.Row >= 0 && !slices.Equal(bits, rows[st.Row]):
+	case st.Row >= 0 && !code.shows(bits, st.Row):
 		return fault("CODE row %d is not row %d of the %s code of %d columns, as STEPS says", i+1, st.Row, s.Family, s.V)
 	case st.Row >= 0:
 	case st.Kind == AllOn && ones != s.V:

@@ -42,6 +42,7 @@
 //   - PROFSHA and TARGSHA are the SHA-256 of profile.yaml and target.yaml, and
 //     the SHA of a sequence is that of sequence.fits.
 //
-// sequence reaches hadamard for one purpose: to check the bits of a file
-// against the family, size and polynomial its header names.
+// The bits of a file are checked against the family, size and polynomial that
+// its header names by rows made here: the rehearsal reads sequences, and must
+// not reach the algebra of package hadamard even through this package.
 package sequence

@@ -5,7 +5,6 @@ import (
 	"math"
 
 	"mirrorloom/fitsutil"
-	"mirrorloom/hadamard"
 )
 
 // readFITS fills a sequence from sequence.fits without looking at what it
@@ -57,9 +56,9 @@ func (c *cards) number(key string, least, most int64) int64 {
 func (s *Sequence) readPrimary(h *fitsutil.Header) error {
 	c := &cards{header: h}
 	s.Family = c.text("FAMILY")
-	s.V = int(c.number("CODEV", 1, hadamard.MaxV))
-	s.K = int(c.number("CODEK", 1, hadamard.MaxV))
-	s.L = int(c.number("CODEL", 0, hadamard.MaxV))
+	s.V = int(c.number("CODEV", 1, maxV))
+	s.K = int(c.number("CODEK", 1, maxV))
+	s.L = int(c.number("CODEL", 0, maxV))
 	s.Poly = uint32(c.number("CODEPOLY", 0, math.MaxUint32))
 	s.OrderSeed = uint64(c.number("ORDSEED", 0, math.MaxInt64))
 	s.ProfileName = c.text("PROFNAME")

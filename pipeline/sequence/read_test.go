@@ -45,7 +45,9 @@ var edits = []struct {
 	{"unknown family", func(s *sequence.Sequence) { s.Family = "walsh" }, "FAMILY \"walsh\" is no code family"},
 	{"size", func(s *sequence.Sequence) { s.K++ }, "CODEK 17 and CODEL 8 are not those"},
 	{"overlap", func(s *sequence.Sequence) { s.L-- }, "CODEK 16 and CODEL 7 are not those"},
-	{"polynomial", func(s *sequence.Sequence) { s.Poly = 61 }, "CODEPOLY 61 is not the polynomial"},
+	{"polynomial", func(s *sequence.Sequence) { s.Poly = 61 }, "CODE row"}, // primitive, of other rows
+	{"polynomial not primitive", func(s *sequence.Sequence) { s.Poly = 33 }, "CODEPOLY 33 is no primitive polynomial"},
+	{"polynomial of another degree", func(s *sequence.Sequence) { s.Poly = 11 }, "CODEPOLY 11 is no primitive polynomial"},
 	{"seed", func(s *sequence.Sequence) { s.OrderSeed = 6 }, "ORDSEED is 6 where target.yaml has code.seed 5"},
 	{"profile name", func(s *sequence.Sequence) { s.ProfileName = "other" }, "PROFNAME \"other\""},
 	{"profile digest", func(s *sequence.Sequence) { s.ProfileSHA = strings.Repeat("0", 64) }, "profile.yaml: the profile is not the one"},

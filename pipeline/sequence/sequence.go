@@ -78,7 +78,7 @@ type RowRange struct {
 // Sequence is a planned night. The fields that Write fills in are said so; a
 // Sequence that Read returned is complete and consistent.
 type Sequence struct {
-	// Family is the name of the code's family in package hadamard.
+	// Family is the name of the code's family.
 	Family string
 	// V, K, L are the code's size, the open columns of a row and the columns
 	// two rows share.
