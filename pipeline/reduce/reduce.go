@@ -8,6 +8,7 @@ import (
 	"path/filepath"
 	"runtime"
 	"runtime/debug"
+	"slices"
 	"strings"
 	"time"
 
@@ -41,6 +42,11 @@ type Options struct {
 	// Progress, which may be nil, is called as a stage gets on, by one
 	// goroutine at a time.
 	Progress func(stage string, done, total int)
+
+	// programBytes is what the process takes besides the buffers of the
+	// reduction; 0 for runtimeBytes. Tests lower it, so that a small detector
+	// makes many strips.
+	programBytes int64
 }
 
 // DefaultMemoryBytes suits a laptop that does other things as well.
@@ -103,6 +109,9 @@ func (o *Options) setDefaults() error {
 	}
 	if o.MemoryBytes == 0 {
 		o.MemoryBytes = DefaultMemoryBytes
+	}
+	if o.programBytes == 0 {
+		o.programBytes = runtimeBytes
 	}
 	if o.Log == nil {
 		o.Log = zap.NewNop()
@@ -189,7 +198,7 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 func (r *reduction) prepare(ctx context.Context) (int64, error) {
 	p := &prepare{
 		camera: r.camera, album: r.album, frames: r.roles.calibration, recipe: r.opts.Recipe.Detector,
-		workers: r.opts.Workers, memory: r.opts.MemoryBytes,
+		workers: r.opts.Workers, memory: r.opts.MemoryBytes - r.opts.programBytes,
 	}
 	var err error
 	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.rows) })
@@ -215,9 +224,9 @@ func (r *reduction) frameBytes() int64 {
 
 // strips decodes and rectifies.
 func (r *reduction) strips(ctx context.Context) (int64, error) {
-	code, err := hadamard.New(hadamard.Family(r.seq.Family), r.seq.V)
+	code, err := r.code()
 	if err != nil {
-		return 0, fmt.Errorf("%s: %w", r.opts.Sequence, err)
+		return 0, err
 	}
 	s := shape{
 		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
@@ -235,7 +244,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		}
 		s.margin = r.rectifier.margin(s.rows)
 	}
-	h, err := s.heights(r.opts.MemoryBytes)
+	h, err := s.heights(r.opts.MemoryBytes, r.opts.programBytes)
 	if err != nil {
 		return 0, err
 	}
@@ -255,6 +264,22 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
 	r.judge(flags)
 	return r.stripBytes(s), nil
+}
+
+// code gives the sequence's code, and refuses one whose rows are not those that
+// decoding inverts: an m-sequence of another polynomial is as good a code, but
+// not the one of this version.
+func (r *reduction) code() (*hadamard.Code, error) {
+	code, err := hadamard.New(hadamard.Family(r.seq.Family), r.seq.V)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", r.opts.Sequence, err)
+	}
+	for _, i := range r.seq.StepsOf(sequence.Science) {
+		if !slices.Equal(r.seq.Code[i], code.Row(r.seq.Steps[i].Row)) {
+			return nil, fmt.Errorf("%s: step %d does not show row %d of the %s code of %d columns (CODEPOLY %d, here %d); plan the sequence again with this version", r.opts.Sequence, r.seq.Steps[i].Step, r.seq.Steps[i].Row, r.seq.Family, r.seq.V, r.seq.Poly, code.Poly())
+		}
+	}
+	return code, nil
 }
 
 func (r *reduction) newDecoder(code *hadamard.Code) *decoder {
