@@ -167,9 +167,41 @@ func realLamp(list []emission, pcg interface{ Uint64() uint64 }, grid instrument
 }
 
 // lampScale is the factor that brings a lamp to lampLevel in the brightest of
-// its steps: the middle row's brightest column decides.
+// its steps, judged by the middle rows of each range of rows that open; 0 where
+// no light reaches them.
 func (o *optics) lampScale(l *light, b *beams, steps []int) float64 {
-	s := o.newStrip(o.rows/2, o.rows/2+1)
+	brightest := 0.0
+	for _, y := range b.middleRows(o) {
+		brightest = math.Max(brightest, o.brightest(l, b, steps, y))
+	}
+	if brightest == 0 {
+		return 0
+	}
+	return lampLevel * fullWellE(o.profile.Detector) / brightest
+}
+
+// middleRows are the detector rows in the middle of each run of mirror rows of
+// one class that open, as far as they lie on the detector.
+func (b *beams) middleRows(o *optics) []int {
+	lowest, highest := o.mirrorRows(0, float64(o.rows-1))
+	var rows []int
+	first := lowest
+	for w := lowest; w <= highest; w++ {
+		if w < highest && b.class[w+1-b.wFirst] == b.class[w-b.wFirst] {
+			continue
+		}
+		if b.class[w-b.wFirst] >= 0 {
+			y := int(math.Round((o.geometry.row(first) + o.geometry.row(w)) / 2))
+			rows = append(rows, min(max(y, 0), o.rows-1))
+		}
+		first = w + 1
+	}
+	return rows
+}
+
+// brightest is the most that a pixel of row y gets in any of the steps.
+func (o *optics) brightest(l *light, b *beams, steps []int, y int) float64 {
+	s := o.newStrip(y, y+1)
 	for k := range s.mirrors {
 		o.prepareMirror(s, k)
 	}
@@ -189,17 +221,14 @@ func (o *optics) lampScale(l *light, b *beams, steps []int) float64 {
 		rows[layerMain][i] = make([]float32, o.columns)
 		o.drawRow(rows[layerMain][i], &s.rows[0], lights, o.spread.pixel, scratch)
 	}
-	brightest := 0.0
+	most := 0.0
 	sum := make([]float64, o.columns)
 	for _, k := range steps {
 		m := b.newMixture(b.open(o.seq, shown{step: k}), false, false)
 		mix(sum, m, &rows, nil)
-		brightest = math.Max(brightest, slices.Max(sum)*o.seq.Steps[k].ExptimeSeconds)
+		most = math.Max(most, slices.Max(sum)*o.seq.Steps[k].ExptimeSeconds)
 	}
-	if brightest == 0 {
-		return 0
-	}
-	return lampLevel * fullWellE(o.profile.Detector) / brightest
+	return most
 }
 
 // fullWellE is the charge at which the first amplifier's pixels count as
