@@ -36,7 +36,7 @@ type prepare struct {
 	frames  calibration
 	recipe  DetectorRecipe
 	workers int
-	memory  int64
+	memory  int64 // for buffers
 }
 
 // deadMargin are the rows beyond a strip that the search for dead pixels needs.
@@ -87,7 +87,7 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 func (p *prepare) height() int {
 	most := max(len(p.frames.bias), len(p.frames.dark), len(p.frames.off), len(p.frames.lamp), 1)
 	perRow := int64(most+8) * int64(p.camera.columns) * bytesFloat
-	return int(min(int64(p.camera.rows), max(1, (p.memory-runtimeBytes)/2/perRow-2*int64(deadMargin))))
+	return int(min(int64(p.camera.rows), max(1, p.memory/2/perRow-2*int64(deadMargin))))
 }
 
 // masterStrip is the masters of some rows.

@@ -42,11 +42,6 @@ type Options struct {
 	// Progress, which may be nil, is called as a stage gets on, by one
 	// goroutine at a time.
 	Progress func(stage string, done, total int)
-
-	// programBytes is what the process takes besides the buffers of the
-	// reduction; 0 for runtimeBytes. Tests lower it, so that a small detector
-	// makes many strips.
-	programBytes int64
 }
 
 // DefaultMemoryBytes suits a laptop that does other things as well.
@@ -109,9 +104,6 @@ func (o *Options) setDefaults() error {
 	}
 	if o.MemoryBytes == 0 {
 		o.MemoryBytes = DefaultMemoryBytes
-	}
-	if o.programBytes == 0 {
-		o.programBytes = runtimeBytes
 	}
 	if o.Log == nil {
 		o.Log = zap.NewNop()
@@ -198,7 +190,7 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 func (r *reduction) prepare(ctx context.Context) (int64, error) {
 	p := &prepare{
 		camera: r.camera, album: r.album, frames: r.roles.calibration, recipe: r.opts.Recipe.Detector,
-		workers: r.opts.Workers, memory: r.opts.MemoryBytes - r.opts.programBytes,
+		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes,
 	}
 	var err error
 	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.rows) })
@@ -244,7 +236,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		}
 		s.margin = r.rectifier.margin(s.rows)
 	}
-	h, err := s.heights(r.opts.MemoryBytes, r.opts.programBytes)
+	h, err := s.heights(r.opts.MemoryBytes)
 	if err != nil {
 		return 0, err
 	}
