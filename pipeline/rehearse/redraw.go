@@ -139,8 +139,7 @@ func (r *rehearsal) drawStep(ctx context.Context, c *canvas, s *strip, step *ste
 				}
 			}
 		}
-		row := int(s.mirrors[k].row + 0.5)
-		mix(mixed[k].h, step.mixture, &rows, r.leaksOn(row))
+		mix(mixed[k].h, step.mixture, &rows, r.leaksOn(s.mirrors[k].row))
 		mixed[k].from, mixed[k].to = 0, o.axis.n
 		return nil
 	})

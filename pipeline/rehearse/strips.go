@@ -136,7 +136,7 @@ func (s *stepReader) row(ctx context.Context, raw int, light *drawn, dst func(st
 	y := r.detector.rows[raw].active
 	var response, pattern, leaks []float64
 	if y >= 0 {
-		response, pattern, leaks = r.detector.response(y), r.detector.pattern(y), r.leaksOn(y)
+		response, pattern, leaks = r.detector.response(y), r.detector.pattern(y), r.leaksOn(float64(y))
 	}
 	clear(s.before)
 	full := 0
@@ -179,8 +179,8 @@ func (s *stepReader) expect(k, y int, light *drawn, response, leaks []float64) {
 	}
 }
 
-// leaksOn is what shut beams leak on a row, nil where they do not.
-func (r *rehearsal) leaksOn(y int) []float64 {
+// leaksOn is what shut beams leak at row y, nil where they do not.
+func (r *rehearsal) leaksOn(y float64) []float64 {
 	if r.leakSize == 0 {
 		return nil
 	}

@@ -111,14 +111,14 @@ func (o *optics) colourWeight(nm float64) float64 {
 	return (nm-g.WavelengthNM(-0.5))/(float64(g.Count)*g.StepNM) - 0.5
 }
 
-// leaks is what shut beams leak, by beam, on a detector row: size times a
+// leaks is what shut beams leak, by beam, at detector row y: size times a
 // structure of 20 % rms over the field.
-func (b *beams) leaks(size float64, field *waves, y, rows int) []float64 {
+func (b *beams) leaks(size float64, field *waves, y float64, rows int) []float64 {
 	list := make([]float64, len(b.list))
 	for i, m := range b.list {
 		list[i] = size
 		if m.element >= 0 {
-			list[i] = size * math.Max(1+leakRMS*field.at(float64(m.element)/float64(b.n), float64(y)/float64(rows)), 0)
+			list[i] = size * math.Max(1+leakRMS*field.at(float64(m.element)/float64(b.n), y/float64(rows)), 0)
 		}
 	}
 	return list
