@@ -1,0 +1,123 @@
+package report
+
+import (
+	"cmp"
+	"fmt"
+	"math"
+	"slices"
+)
+
+// place is an element and a row whose spectrum is shown.
+type place struct {
+	label        string // A, B, C: as in the picture
+	what         string
+	element, row int
+}
+
+const (
+	// A place is worth a spectrum if it has at least this part of the good voxels
+	// of the best one.
+	coveredPart = 0.5
+	// The second source lies at least this part of the field's diagonal from the
+	// first, so as not to be its wing.
+	apartPart = 0.1
+	// Blank sky is the place whose surroundings (a square of this half width) are
+	// at the lower quartile of the field: the very faintest are edges.
+	surroundings  = 2
+	blankQuantile = 0.25
+)
+
+// choosePlaces picks the brightest place, the brightest one apart from it, and
+// one of blank sky, as far as the field has them.
+func choosePlaces(w *whiteLight, sky skyPlane) []place {
+	usable := w.usable()
+	slices.SortStableFunc(usable, func(a, b int) int { return cmp.Compare(w.mean[b], w.mean[a]) })
+	if len(usable) == 0 {
+		return nil
+	}
+	first := usable[0]
+	chosen := []place{w.place(first, "the brightest place")}
+	diagonal := math.Hypot(float64(w.elements)*sky.stepX, float64(w.rows)*sky.stepY)
+	second := slices.IndexFunc(usable, func(i int) bool { return w.distance(first, i, sky) > apartPart*diagonal })
+	if second >= 0 {
+		chosen = append(chosen, w.place(usable[second], "the brightest place apart from A"))
+	}
+	blank := w.blank(usable)
+	if !slices.ContainsFunc(chosen, func(p place) bool { return p.row*w.elements+p.element == blank }) {
+		chosen = append(chosen, w.place(blank, "blank sky"))
+	}
+	for i := range chosen {
+		chosen[i].label = string(rune('A' + i))
+	}
+	return chosen
+}
+
+// usable gives the places with enough good voxels.
+func (w *whiteLight) usable() []int {
+	least := max(1, int32(math.Ceil(coveredPart*float64(slices.Max(w.good)))))
+	var usable []int
+	for i, n := range w.good {
+		if n >= least {
+			usable = append(usable, i)
+		}
+	}
+	return usable
+}
+
+func (w *whiteLight) place(i int, what string) place {
+	return place{what: what, element: i % w.elements, row: i / w.elements}
+}
+
+func (w *whiteLight) distance(a, b int, sky skyPlane) float64 {
+	return math.Hypot(float64(a%w.elements-b%w.elements)*sky.stepX, float64(a/w.elements-b/w.elements)*sky.stepY)
+}
+
+// blank gives the place whose surroundings are at the lower quartile, one with
+// all its surroundings in the field if there is any.
+func (w *whiteLight) blank(usable []int) int {
+	inner := slices.DeleteFunc(slices.Clone(usable), func(i int) bool {
+		x, y := i%w.elements, i/w.elements
+		return min(x, w.elements-1-x, y, w.rows-1-y) < surroundings
+	})
+	if len(inner) > 0 {
+		usable = inner
+	}
+	type around struct {
+		at   int
+		mean float64
+	}
+	all := make([]around, len(usable))
+	for n, i := range usable {
+		all[n] = around{i, w.around(i)}
+	}
+	slices.SortFunc(all, func(a, b around) int { return cmp.Or(cmp.Compare(a.mean, b.mean), cmp.Compare(a.at, b.at)) })
+	return all[int(blankQuantile*float64(len(all)-1))].at
+}
+
+// around is the mean white light of a place's surroundings.
+func (w *whiteLight) around(i int) float64 {
+	sum, n := 0.0, 0
+	for y := max(0, i/w.elements-surroundings); y <= min(w.rows-1, i/w.elements+surroundings); y++ {
+		for x := max(0, i%w.elements-surroundings); x <= min(w.elements-1, i%w.elements+surroundings); x++ {
+			if v := w.mean[y*w.elements+x]; !math.IsNaN(v) {
+				sum += v
+				n++
+			}
+		}
+	}
+	return sum / float64(n)
+}
+
+// describe says where a place lies.
+func (p place) describe(w *whiteLight, sky skyPlane) string {
+	east, north := sky.offset(float64(p.element), float64(p.row))
+	return fmt.Sprintf("%s: element %d, row %d; %s and %s of the field's centre; mean %s", p.what, p.element, p.row,
+		toward(east, "east", "west"), toward(north, "north", "south"), figure(w.mean[p.row*w.elements+p.element]))
+}
+
+func toward(arcsec float64, positive, negative string) string {
+	if arcsec < 0 {
+		arcsec, positive = -arcsec, negative
+	}
+	return fmt.Sprintf("%.1f″ %s", arcsec, positive)
+}
