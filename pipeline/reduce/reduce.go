@@ -18,6 +18,7 @@ import (
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/sequence"
 	"mirrorloom/pipeline/version"
 )
@@ -61,7 +62,7 @@ type Result struct {
 const ExitDegraded = 3
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
-// ledger.csv and run.json. Errors are one sentence that names the file and the
+// ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
 // cure.
 func Run(ctx context.Context, opts Options) (*Result, error) {
 	if err := opts.setDefaults(); err != nil {
@@ -92,7 +93,7 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		r.stages = append(r.stages, product.Stage{Name: step.name, Seconds: seconds, Bytes: bytes})
 		r.log.Info("stage done", zap.String("stage", step.name), zap.Float64("seconds", seconds), zap.Int64("bytes", bytes))
 	}
-	return r.result()
+	return r.result(ctx)
 }
 
 func (o *Options) setDefaults() error {
@@ -281,6 +282,9 @@ func (r *reduction) newDecoder(code *hadamard.Code) *decoder {
 		k: float64(code.K()), lost: r.roles.lost,
 	}
 	d.weight, d.slotWeight = r.roles.weights()
+	if !d.code.VarianceUniform() {
+		d.sumQuiet()
+	}
 	return d
 }
 
@@ -368,8 +372,8 @@ func (r *reduction) finish(context.Context) (int64, error) {
 	return 0, fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.LedgerFile), r.night.Ledger.WriteCSV)
 }
 
-// result writes run.json and sums up.
-func (r *reduction) result() (*Result, error) {
+// result writes run.json and the report, and sums up.
+func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.quality.BadPixels = r.badPixels
 	r.quality.Lost = len(r.roles.missing)
 	run := &product.Run{
@@ -381,6 +385,12 @@ func (r *reduction) result() (*Result, error) {
 		run.Exit = ExitDegraded
 	}
 	if err := fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.RunFile), run.Write); err != nil {
+		return nil, err
+	}
+	err := report.Write(ctx, r.opts.Out, report.Input{
+		Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
+	})
+	if err != nil {
 		return nil, err
 	}
 	return &Result{Run: run, Ledger: r.night.Ledger, Schema: r.schema, Degraded: r.roles.degraded}, nil
