@@ -26,6 +26,25 @@ type decoder struct {
 	// slotWeight is the sum of weight: how many samples' noise a sum over the
 	// slots holds.
 	slotWeight float64
+	// quietSum is, by code column, the variance of a decode of dark samples in
+	// units of one's; nil where all columns have the same.
+	quietSum []float64
+}
+
+// sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w.
+func (d *decoder) sumQuiet() {
+	code := d.code.Code()
+	open, closed := code.InverseEntries()
+	d.quietSum = make([]float64, d.slots)
+	for j := range d.quietSum {
+		for i, weight := range d.weight {
+			entry := closed
+			if code.Bit(i, j) == 1 {
+				entry = open
+			}
+			d.quietSum[j] += entry * entry * weight
+		}
+	}
 }
 
 // decodeWorker is the scratch memory of one worker.
@@ -159,7 +178,8 @@ const varianceFloor = 0.5
 
 // ownVariances computes each column's variance where they differ: from the
 // light that the decoded, smoothed elements predict for each slot, since a
-// column of few samples would else weigh its own noise.
+// column of few samples would else weigh its own noise. As with equal variances
+// only the sum is floored.
 func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []float64) {
 	for j := range d.slots {
 		smoothRow(w.smooth[j*n:(j+1)*n], w.decoded[j*n:(j+1)*n])
@@ -168,7 +188,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	for i := range d.slots {
 		row := w.variance[i*n : (i+1)*n]
 		for p := range row {
-			v := quiet[p] + max(0, float64(row[p])+float64(s.level[at+p]))
+			v := quiet[p] + float64(row[p]) + float64(s.level[at+p])
 			row[p] = float32(d.weight[i] * v)
 		}
 	}
@@ -181,8 +201,9 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	d.code.Variance(w.variance, w.smooth, n, n, 0)
 	for j := range d.slots {
 		row := w.variance[j*n : (j+1)*n]
-		for p := range row {
-			row[p] += float32(float64(s.levelVariance[at+p]) / (d.k * d.k))
+		for p, v := range row {
+			floor := varianceFloor * quiet[p] * d.quietSum[j]
+			row[p] = float32(max(float64(v), floor) + float64(s.levelVariance[at+p])/(d.k*d.k))
 		}
 	}
 }
