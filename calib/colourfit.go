@@ -1,0 +1,149 @@
+package calib
+
+import (
+	"errors"
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+)
+
+// ErrNoLight is returned, wrapped, when the frames of a fit hold too little light to
+// fix what is asked for.
+var ErrNoLight = errors.New("too little light")
+
+// ColourRule says what a ColourFit fits. With l = L - L_c in nm, f_j the light of
+// element j, L_j(x,y) its wavelength at a pixel and c_j Weights,
+//
+//	T(x,y) = sum_j c_j f_j(x,y) (p_0 + p_1 l + ... + p_Degree l^Degree) + pedestal,  l = L_j(x,y) - L_c.
+type ColourRule struct {
+	Degree   int
+	Pedestal bool // a constant is fitted as well: needs rows without light
+	// Weights of the elements; nil for all 1.
+	Weights []float64
+	// Before and After are the widths, in elements, of mirrors outside the coded
+	// field that send light as well, below element 0 and above the last. Theirs is
+	// taken to be the end element's, shifted along x.
+	Before, After float64
+	// Clip, in sigmas, leaves pixels out that deviate from the robust level of their
+	// row: cosmic rays.
+	Clip float64
+}
+
+// NeighbourRule is that of the neighbour term d(L) = p_0 + p_1 l: T is all-on -
+// all-even - all-odd + all-off of the lamp, which holds, for every pair of
+// neighbours, d(L_j) f_j/2 + d(L_j+1) f_j+1/2: inner elements count 1, the ends 1/2.
+// What closed mirrors leak cancels in T, from outside the field too.
+func NeighbourRule(elements int) ColourRule {
+	weights := make([]float64, elements)
+	for j := range weights {
+		weights[j] = 1
+		if j == 0 || j == elements-1 {
+			weights[j] = 0.5
+		}
+	}
+	return ColourRule{Degree: 1, Weights: weights, Clip: 6}
+}
+
+// LeakRule is that of the leak e(L) = 1/contrast, p_0 + p_1 l + p_2 l^2: T is an
+// all-off frame of the lamp with bias and dark taken off, and its pedestal is fitted
+// too. Mirrors outside the coded field leak as well, before elements' widths below it
+// and after above; rows outside the slit, and light that never met the device, are
+// not in the model.
+func LeakRule(before, after float64) ColourRule {
+	return ColourRule{Degree: 2, Pedestal: true, Before: before, After: after, Clip: 6}
+}
+
+// ColourFit gathers normal equations row by row. The sums of a row can be gathered
+// apart and merged: give each row its own and Merge them in order, and the result
+// does not depend on who did which.
+type ColourFit struct {
+	rule     ColourRule
+	geometry Geometry
+	elements int
+	columns  int
+	// wavelengths by the distance that they are dispersed, from -reach px on.
+	table *dispersed
+
+	normal        [maxTerms][maxTerms]float64
+	right         [maxTerms]float64
+	square        float64 // sum of w T^2
+	pixels, clips int
+	light         float64
+}
+
+// maxTerms: a cubic and a pedestal.
+const maxTerms = 5
+
+// ColourTerm is the result of a ColourFit: d(L) or e(L) with its errors.
+type ColourTerm struct {
+	CenterNM   float64
+	Coef       []float64     // p_0 .. p_Degree, per nm^k
+	Covariance *mat.SymDense // of Coef
+	Pedestal   float64       // 0 where none was fitted
+	// Chi2 per degree of freedom; errors are widened by its root where it is above 1.
+	Chi2            float64
+	Pixels, Clipped int
+}
+
+// At is the value at a wavelength and its standard error.
+func (c *ColourTerm) At(vacuumNm float64) (value, err float64) {
+	l := vacuumNm - c.CenterNM
+	power := make([]float64, len(c.Coef))
+	for k := range power {
+		power[k] = math.Pow(l, float64(k))
+		value += c.Coef[k] * power[k]
+	}
+	p := mat.NewVecDense(len(power), power)
+	return value, math.Sqrt(max(0, mat.Inner(p, c.Covariance, p)))
+}
+
+// Significance is the value at a wavelength in units of its error.
+func (c *ColourTerm) Significance(vacuumNm float64) float64 {
+	value, err := c.At(vacuumNm)
+	return value / err
+}
+
+// Contrast is 1/e at a wavelength with its standard error; +Inf, +Inf where e is
+// not positive.
+func (c *ColourTerm) Contrast(vacuumNm float64) (ratio, err float64) {
+	e, sigma := c.At(vacuumNm)
+	if !(e > 0) {
+		return math.Inf(1), math.Inf(1)
+	}
+	return 1 / e, sigma / (e * e)
+}
+
+// NewColourFit begins a fit; g must have been checked.
+func NewColourFit(rule ColourRule, g Geometry, elements, columns int) (*ColourFit, error) {
+	switch {
+	case elements < 1 || columns < 1:
+		return nil, fmt.Errorf("colour fit: %d elements on %d columns", elements, columns)
+	case rule.Degree < 0 || rule.Degree > maxTerms-2:
+		return nil, fmt.Errorf("colour fit: degree %d; use 0 to %d", rule.Degree, maxTerms-2)
+	case rule.Weights != nil && len(rule.Weights) != elements:
+		return nil, fmt.Errorf("colour fit: %d weights for %d elements", len(rule.Weights), elements)
+	}
+	f := &ColourFit{rule: rule, geometry: g, elements: elements, columns: columns}
+	f.table = newDispersed(&f.geometry, elements, columns)
+	return f, nil
+}
+
+// Merge adds the sums of another fit of the same rule.
+func (f *ColourFit) Merge(other *ColourFit) {
+	for a := range f.normal {
+		for b := range f.normal[a] {
+			f.normal[a][b] += other.normal[a][b]
+		}
+		f.right[a] += other.right[a]
+	}
+	f.square += other.square
+	f.light += other.light
+	f.pixels += other.pixels
+	f.clips += other.clips
+}
+
+// Fork is an empty fit that shares rule and tables, for another worker or row.
+func (f *ColourFit) Fork() *ColourFit {
+	return &ColourFit{rule: f.rule, geometry: f.geometry, elements: f.elements, columns: f.columns, table: f.table}
+}

@@ -1,0 +1,215 @@
+package hadamard
+
+import (
+	"fmt"
+	"sync"
+)
+
+// Neighbours takes out of decoded pixels, to first order, the light that an open
+// element gains from open neighbours. With the elements' code columns c_0..c_n-1 in
+// field order, step i holds besides sum_j W_ij f_j
+//
+//	sum over pairs (a,b) = (c_j, c_j+1) of W_ia W_ib g_j,   g_j = (d_j f_a + d_j+1 f_b)/2
+//
+// where d_j is the term's size at the wavelength that element j has in the pixel.
+// Decoded, a pair is A (W_a * W_b) g_j. In an m-sequence the product of two columns is
+// half of (W_a + W_b - W_c) with c the column whose +-1 form is the product of
+// theirs, so that the decode is (e_a + e_b - e_c) g_j/2: a ghost of -g_j/2 in column c
+// and half of g_j in both elements. A star of flux f alone in its element leaves
+// ghosts of -d f/4 in two columns and +d f/4 in its neighbours. In other codes the
+// ghost is spread over all columns: the products are summed over the pairs and
+// decoded.
+//
+// Safe for concurrent use.
+type Neighbours struct {
+	decoder *Decoder
+	columns []int32
+	// ghost[j] is c of pair j; nil where the code is no m-sequence.
+	ghost []int32
+	// open[i][group] tells which of eight pairs step i opens; nil for m-sequences.
+	open    [][]uint8
+	scratch sync.Pool // *neighbourScratch
+}
+
+// neighbourScratch holds the pairs' terms of one row of pixels and, for codes that
+// need it, their sums by step and what those decode to.
+type neighbourScratch struct {
+	half           []row // g_j/2
+	sums           []wideRow
+	table          [subsets]wideRow
+	steps, decoded []float32
+}
+
+// NewNeighbours prepares for elements whose code columns, in field order, are given:
+// element j and j+1 are neighbours. An error names a column that is no column of
+// the code, or is given twice.
+func NewNeighbours(d *Decoder, columns []int) (*Neighbours, error) {
+	v := d.code.v
+	seen := make([]bool, v)
+	n := &Neighbours{decoder: d}
+	for j, c := range columns {
+		switch {
+		case c < 0 || c >= v:
+			return nil, fmt.Errorf("neighbours: element %d has code column %d; the code has 0 to %d", j, c, v-1)
+		case seen[c]:
+			return nil, fmt.Errorf("neighbours: code column %d is given twice, last for element %d", c, j)
+		}
+		seen[c] = true
+		n.columns = append(n.columns, int32(c))
+	}
+	pairs := max(0, len(columns)-1)
+	switch {
+	case d.code.family == SlitScan:
+		// No two columns are open together.
+	case d.CovarianceByColumn():
+		for j := range pairs {
+			n.ghost = append(n.ghost, int32(d.CovarianceColumn(columns[j], columns[j+1])))
+		}
+	default:
+		n.open = openPairs(d.code, columns)
+	}
+	n.scratch.New = func() any {
+		s := &neighbourScratch{half: make([]row, pairs)}
+		if n.open != nil {
+			s.sums = make([]wideRow, v)
+			s.steps, s.decoded = make([]float32, v*lanes), make([]float32, v*lanes)
+		}
+		return s
+	}
+	return n, nil
+}
+
+func openPairs(c *Code, columns []int) [][]uint8 {
+	pairs := len(columns) - 1
+	open := make([][]uint8, c.v)
+	for i := range open {
+		open[i] = make([]uint8, (pairs+groupRows-1)/groupRows)
+		for j := range pairs {
+			open[i][j/groupRows] |= c.Bit(i, columns[j]) * c.Bit(i, columns[j+1]) << (j % groupRows)
+		}
+	}
+	return open
+}
+
+// Pairs is the number of pairs of neighbours.
+func (n *Neighbours) Pairs() int { return max(0, len(n.columns)-1) }
+
+// Ghost is the code column in which pair j of an m-sequence leaves its ghost; -1 for
+// other codes.
+func (n *Neighbours) Ghost(j int) int {
+	if n.ghost == nil {
+		return -1
+	}
+	return int(n.ghost[j])
+}
+
+// Correct subtracts the term from a decoded block [code column][pixel], in place; the
+// sizes are those of Decode. In pixel p, element j has
+//
+//	d_j = d[p] + slope[p] (j - (n-1)/2);
+//
+// slope may be nil. The term is computed from the decoded light, which holds the
+// term itself: what is left is of second order, d^2/8 of a star in its ghosts. The
+// variance changes by less than d of itself and is left as it is.
+func (n *Neighbours) Correct(block, d, slope []float32, pixels, stride int) {
+	n.decoder.check("Correct", len(block), len(block), pixels, stride)
+	if len(d) < pixels || (slope != nil && len(slope) < pixels) {
+		panic(fmt.Sprintf("internal error: hadamard: Correct of %d pixels has %d sizes and %d slopes", pixels, len(d), len(slope)))
+	}
+	if n.Pairs() == 0 || n.decoder.code.family == SlitScan {
+		return
+	}
+	s := n.scratch.Get().(*neighbourScratch)
+	defer n.scratch.Put(s)
+	for p := 0; p < pixels; p += lanes {
+		q := min(lanes, pixels-p)
+		var size, step row
+		copy(size[:q], d[p:])
+		if slope != nil {
+			copy(step[:q], slope[p:p+q])
+		}
+		n.halves(s, block[p:], &size, &step, q, stride)
+		if n.ghost != nil {
+			n.takeGhosts(s, block[p:], q, stride)
+		} else {
+			n.takeProducts(s, block[p:], q, stride)
+		}
+	}
+}
+
+// halves fills s.half with g_j/2 of up to lanes pixels.
+func (n *Neighbours) halves(s *neighbourScratch, block []float32, size, step *row, pixels, stride int) {
+	middle := float32(len(n.columns)-1) / 2
+	var before row // d_j f_j/4 of the element before
+	for j, c := range n.columns {
+		at := float32(j) - middle
+		f := block[int(c)*stride:][:pixels]
+		var own row
+		for p, v := range f {
+			own[p] = float32((size[p] + float32(step[p]*at)) * v * 0.25)
+		}
+		if j > 0 {
+			half := &s.half[j-1]
+			for p := range half {
+				half[p] = before[p] + own[p]
+			}
+		}
+		before = own
+	}
+}
+
+// takeGhosts is for m-sequences.
+func (n *Neighbours) takeGhosts(s *neighbourScratch, block []float32, pixels, stride int) {
+	for j := range s.half {
+		half := s.half[j][:pixels]
+		a := block[int(n.columns[j])*stride:][:pixels]
+		b := block[int(n.columns[j+1])*stride:][:pixels]
+		c := block[int(n.ghost[j])*stride:][:pixels]
+		for p, h := range half {
+			a[p] -= h
+			b[p] -= h
+			c[p] += h
+		}
+	}
+}
+
+// takeProducts is for other codes: sums over subsets of eight pairs, as in dense.
+func (n *Neighbours) takeProducts(s *neighbourScratch, block []float32, pixels, stride int) {
+	clear(s.sums)
+	for group := range n.open[0] {
+		first := group * groupRows
+		tabulatePairs(&s.table, s.half[first:min(first+groupRows, len(s.half))])
+		for i := range s.sums {
+			sum, add := &s.sums[i], &s.table[n.open[i][group]]
+			for p := range sum {
+				sum[p] += add[p]
+			}
+		}
+	}
+	for i := range s.sums {
+		out := rowAt(s.steps, i*lanes)
+		for p, v := range &s.sums[i] {
+			out[p] = float32(2 * v)
+		}
+	}
+	n.decoder.engine.decode(s.decoded, s.steps, lanes)
+	for c := range n.decoder.code.v {
+		term := s.decoded[c*lanes:][:pixels]
+		f := block[c*stride:][:pixels]
+		for p, v := range term {
+			f[p] -= v
+		}
+	}
+}
+
+// tabulatePairs sets the sums of all subsets of up to eight rows.
+func tabulatePairs(table *[subsets]wideRow, half []row) {
+	for t := range half {
+		with := table[1<<t : 2<<t]
+		for i := range with {
+			for p := range with[i] {
+				with[i][p] = table[i][p] + float64(half[t][p])
+			}
+		}
+	}
+}
