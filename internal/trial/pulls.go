@@ -1,0 +1,154 @@
+package trial
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"mirrorloom/pipeline/sequence"
+)
+
+// Moments add up samples.
+type Moments struct {
+	N           int
+	sum, square float64
+}
+
+// Add takes a sample.
+func (m *Moments) Add(x float64) {
+	m.N++
+	m.sum += x
+	m.square += x * x
+}
+
+// Mean is that of the samples.
+func (m *Moments) Mean() float64 { return m.sum / float64(m.N) }
+
+// Std is their standard deviation.
+func (m *Moments) Std() float64 {
+	mean := m.Mean()
+	return math.Sqrt(max(0, m.square/float64(m.N)-mean*mean))
+}
+
+// Pulls are (cube - truth)/sigma of the good voxels, sigma the root of VARIANCE.
+type Pulls struct {
+	All Moments
+	// ByCounts are those in each decile of the counts of the detector pixels that
+	// a voxel comes from.
+	ByCounts [10]Moments
+}
+
+// NewPulls compares a cube with its truth. counts rises with the expected counts
+// of a voxel's pixels: VARIANCE of the twin. That of the cube itself would not
+// do on a faint night: it has noise, and a decile of voxels that by chance have
+// a small one has large pulls.
+//
+// scale multiplies VARIANCE: a test of the test.
+func NewPulls(c *Cube, truth, counts []float32, scale float64) (*Pulls, error) {
+	edges, err := decileEdges(c, truth, counts)
+	if err != nil {
+		return nil, err
+	}
+	p := new(Pulls)
+	for i, t := range truth {
+		if !usable(c, truth, counts, i) {
+			continue
+		}
+		pull := float64(c.Signal[i]-t) / math.Sqrt(scale*float64(c.Variance[i]))
+		p.All.Add(pull)
+		at, _ := slices.BinarySearch(edges, counts[i])
+		p.ByCounts[min(at, 9)].Add(pull)
+	}
+	return p, nil
+}
+
+// usable leaves out voxels without a truth or counts, which are not numbers where
+// the twin has no data.
+func usable(c *Cube, truth, counts []float32, i int) bool {
+	return c.Good(i) && truth[i] == truth[i] && counts[i] == counts[i]
+}
+
+// decileEdges are the nine inner edges of counts over the good voxels.
+func decileEdges(c *Cube, truth, counts []float32) ([]float32, error) {
+	var all []float32
+	for i := range truth {
+		if usable(c, truth, counts, i) {
+			all = append(all, counts[i])
+		}
+	}
+	if len(all) < 1000 {
+		return nil, fmt.Errorf("%d good voxels are too few to compare", len(all))
+	}
+	slices.Sort(all)
+	edges := make([]float32, 9)
+	for k := range edges {
+		edges[k] = all[(k+1)*len(all)/10]
+	}
+	return edges, nil
+}
+
+// The figures of section 11 of the design.
+const (
+	pullMean = 0.02
+	pullStd  = 0.03
+)
+
+// Findings judge the pulls: mean within 0.02 of 0 and standard deviation within
+// 0.03 of 1, over all good voxels and in each decile.
+func (p *Pulls) Findings(name string) []Finding {
+	list := judgePulls(name+", all good voxels", &p.All)
+	for i := range p.ByCounts {
+		list = append(list, judgePulls(fmt.Sprintf("%s, decile %d of the counts", name, i+1), &p.ByCounts[i])...)
+	}
+	return list
+}
+
+func judgePulls(what string, m *Moments) []Finding {
+	n := m.N / 2 // resampled neighbours count half
+	root := math.Sqrt(float64(n))
+	return []Finding{
+		Near(what+": mean pull", m.Mean(), 0, pullMean, 1/root, n),
+		// The standard error of a standard deviation is 1/sqrt(2 n).
+		Near(what+": standard deviation", m.Std(), 1, pullStd, 1/(root*math.Sqrt2), n),
+	}
+}
+
+// PullsOf compares the noisy night of a Pair with its truth.
+func (n *Night) PullsOf(scale float64) (*Pulls, *Cube, error) {
+	c, err := ReadCube(n.CubePath(Noisy))
+	if err != nil {
+		return nil, nil, err
+	}
+	truth, err := c.ReadTruth(n.TruthPath(Noisy))
+	if err != nil {
+		return nil, nil, err
+	}
+	twin, err := ReadCube(n.CubePath(Twin))
+	if err != nil {
+		return nil, nil, err
+	}
+	p, err := NewPulls(c, truth, twin.Variance, scale)
+	return p, c, err
+}
+
+// GoodFindings judge how many voxels are good: 99 % of those in coded rows whose
+// wavelength falls on the detector, and `all` of all.
+func GoodFindings(name string, c *Cube, seq *sequence.Sequence, all float64) []Finding {
+	covered := Covered(seq)
+	var good, wanted, both int
+	for i := range c.Flags {
+		if c.Good(i) {
+			good++
+		}
+		if covered(i) {
+			wanted++
+			if c.Good(i) {
+				both++
+			}
+		}
+	}
+	return []Finding{
+		AtLeast(name+": good part of the covered voxels", float64(both)/float64(wanted), 0.99, wanted),
+		AtLeast(name+": good part of all voxels", float64(good)/float64(len(c.Flags)), all, len(c.Flags)),
+	}
+}
