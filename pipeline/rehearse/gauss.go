@@ -25,8 +25,8 @@ func share(from, to, sigma float64) float64 {
 	return normal(b) - normal(a)
 }
 
-// besselI0Scaled is exp(-x) I0(x), x >= 0, to 2e-7 (Abramowitz & Stegun 9.8.1
-// and 9.8.2).
+// besselI0Scaled is exp(-x) I0(x), x >= 0, to 5e-7 of itself (Abramowitz &
+// Stegun 9.8.1 and 9.8.2).
 func besselI0Scaled(x float64) float64 {
 	if x < 3.75 {
 		t := x / 3.75

@@ -21,7 +21,6 @@ type painter struct {
 	objects, sky, other []density
 	line                []float64
 	voxels              *voxelizer
-	signal, skyRows     [][]float64
 }
 
 // newPainters makes the scratch for strips of so many mirror and detector rows.
