@@ -2,17 +2,18 @@ package calib
 
 // Arcs, in the order of work:
 //
+//	fwhm := LineFWHM(lsf, X_e)
 //	peaks, err := DefaultPeakRule(fwhm).Find(exposure, first, last)  // each frame
-//	solution, err := SolveArcs(nominal, []ArcFrame{...}, DefaultArcRule())
+//	solution, err := SolveArcs(nominal, []ArcFrame{...}, DefaultArcRule(firstNM, lastNM, fwhm))
 //	g := solution.Geometry                                           // x of every line
 //
-// The trace of section "Trace" (FitTrace) is independent of it: arcs are measured on
-// detector rows, where the model of x needs no trace.
+// The trace (FitTrace) and the arcs are independent of each other: arcs are measured
+// on detector rows, where the model of x needs no trace.
 
 // LampLine is a listed line of a lamp.
 type LampLine struct {
 	VacuumNM float64
-	// Intensity is relative; it is believed within a factor of ten or so.
+	// Intensity is relative; it is used only to judge blends, where three either way is allowed for.
 	Intensity float64
 }
 
