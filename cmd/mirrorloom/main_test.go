@@ -12,6 +12,8 @@ import (
 	"github.com/rogpeppe/go-internal/testscript"
 	"github.com/spf13/cobra"
 	"github.com/stretchr/testify/require"
+
+	"mirrorloom/internal/outside"
 )
 
 // TestMain lets testscript files run this test binary as mirrorloom.
@@ -30,23 +32,9 @@ func TestScripts(t *testing.T) {
 	testscript.Run(t, testscript.Params{
 		Dir:                 "testdata",
 		RequireExplicitExec: true,
-		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
-			"exitcode": exitCodeIs,
-		},
+		Cmds:                scriptCommands(outside.Root(t)),
+		Condition:           condition,
 	})
-}
-
-// exitCodeIs runs `exitcode N COMMAND ARG...` and checks the code that a shell
-// would see; standard output and error stay there for `stdout` and `stderr`.
-func exitCodeIs(ts *testscript.TestScript, neg bool, args []string) {
-	if neg || len(args) < 2 {
-		ts.Fatalf("usage: exitcode N COMMAND [ARG...]")
-	}
-	want := args[0]
-	err := ts.Exec("sh", append([]string{"-c", `"$@"; code=$?; [ $code = ` + want + ` ] || { echo "exit code $code, want ` + want + `" >&2; exit 99; }`, "sh"}, args[1:]...)...)
-	if err != nil {
-		ts.Fatalf("%v: not exit code %s", args[1:], want)
-	}
 }
 
 // Every command parses its flags without a clash between its own and the

@@ -20,9 +20,9 @@ func (o *outputOptions) addFlags(f *pflag.FlagSet, what string) {
 }
 
 // write gives work a folder that appears under its name only when work has
-// succeeded and ctx still lives.
-func (o *outputOptions) write(ctx context.Context, work func(dir string) error) error {
-	d, err := outdir.Begin(o.dir, o.replace)
+// succeeded and ctx still lives. The inputs are what work reads.
+func (o *outputOptions) write(ctx context.Context, work func(dir string) error, inputs ...string) error {
+	d, err := outdir.Begin(o.dir, o.replace, inputs...)
 	if err != nil {
 		return err
 	}

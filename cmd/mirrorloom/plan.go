@@ -52,7 +52,10 @@ sequence.`,
 
 func runListProfiles(a *app) error {
 	names := instrument.Names()
-	return a.answer(names, func(w io.Writer) error {
+	answer := struct {
+		Profiles []string `json:"profiles"`
+	}{names}
+	return a.answer(answer, func(w io.Writer) error {
 		for _, name := range names {
 			if _, err := fmt.Fprintln(w, name); err != nil {
 				return err
@@ -70,7 +73,7 @@ func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
 	err := o.output.write(ctx, func(dir string) (err error) {
 		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Out: dir})
 		return err
-	})
+	}, target, o.profile)
 	if err != nil {
 		return err
 	}

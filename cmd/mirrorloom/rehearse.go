@@ -66,6 +66,9 @@ func (o *rehearseOptions) options() (rehearse.Options, error) {
 	if o.scene == "" || o.output.dir == "" {
 		return opts, usageError{errors.New("rehearse needs --scene and -o; see 'mirrorloom rehearse --help'")}
 	}
+	if o.workers < 0 {
+		return opts, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
+	}
 	for _, text := range o.faults {
 		fault, err := rehearse.ParseFault(text)
 		if err != nil {
@@ -94,7 +97,7 @@ func runRehearse(ctx context.Context, a *app, dir string, o rehearseOptions) err
 	err = o.output.write(ctx, func(dir string) (err error) {
 		summary, err = rehearse.Run(ctx, seq, scene, opts, dir, func(done, total int) { draw("rehearse", done, total) })
 		return err
-	})
+	}, dir, o.scene)
 	if err != nil {
 		return err
 	}

@@ -3,8 +3,9 @@
 // Work goes to a folder `<path>.part` beside the one asked for, which appears
 // under its own name only when it is whole. A folder that is not empty is
 // refused unless it is to be replaced, and then the old one stays until the new
-// one is whole. An interrupted run leaves no `.part`; one left by a killed run
-// is cleared by the next, while a second run at the same time is refused.
+// one is whole. What a run reads is never replaced by what it writes. An
+// interrupted run leaves no `.part`; one left by a killed run is cleared by the
+// next, while a second run at the same time is refused.
 package outdir
 
 import (
@@ -21,6 +22,9 @@ import (
 // ErrNotEmpty marks a folder that holds something and is not to be replaced.
 var ErrNotEmpty = errors.New("the output folder is not empty")
 
+// ErrInput marks a folder that holds what the run is to read.
+var ErrInput = errors.New("the output folder would replace an input")
+
 // ErrBusy marks a folder that another run is writing just now.
 var ErrBusy = errors.New("another run is writing this output folder")
 
@@ -29,12 +33,14 @@ var ErrBusy = errors.New("another run is writing this output folder")
 type Dir struct {
 	final, part string
 	lock        *os.File // the .part folder itself, locked while we live
+	parents     []string // folders made on the way to it, the deepest first
 }
 
 // Begin makes `<path>.part`. It is an error (ErrNotEmpty) if path holds
-// anything and replace is false, or if path is a file; ErrBusy if another run
-// holds the same `.part`.
-func Begin(path string, replace bool) (*Dir, error) {
+// anything and replace is false, or if path is a file; ErrInput if one of the
+// inputs, files or folders that the run reads, is path or lies in it; ErrBusy if
+// another run holds the same `.part`.
+func Begin(path string, replace bool, inputs ...string) (*Dir, error) {
 	if path == "" {
 		return nil, errors.New("no output folder given; name one with -o")
 	}
@@ -45,15 +51,67 @@ func Begin(path string, replace bool) (*Dir, error) {
 	if err := refuseUnfit(final, replace); err != nil {
 		return nil, err
 	}
-	part := final + ".part"
-	if err := os.MkdirAll(filepath.Dir(final), 0o755); err != nil {
-		return nil, fmt.Errorf("output folder %s: %w; choose a place that can be written", final, plain(err))
+	if err := refuseInputs(final, inputs); err != nil {
+		return nil, err
 	}
-	d := &Dir{final: final, part: part}
+	d := &Dir{final: final, part: final + ".part"}
+	if err := d.makeParents(); err != nil {
+		return nil, err
+	}
 	if err := d.claim(); err != nil {
+		d.removeParents()
 		return nil, err
 	}
 	return d, nil
+}
+
+// makeParents makes the folders on the way to the output, and remembers them:
+// a failed run takes them away again.
+func (d *Dir) makeParents() error {
+	parent := filepath.Dir(d.final)
+	for at := parent; ; at = filepath.Dir(at) {
+		if _, err := os.Lstat(at); !errors.Is(err, fs.ErrNotExist) {
+			break // it is there, or MkdirAll will say what is wrong
+		}
+		d.parents = append(d.parents, at)
+	}
+	if err := os.MkdirAll(parent, 0o755); err != nil {
+		d.removeParents()
+		return fmt.Errorf("output folder %s: %w; choose a place that can be written", d.final, plain(err))
+	}
+	return nil
+}
+
+// removeParents takes away what makeParents made, where nothing else came to
+// lie in it.
+func (d *Dir) removeParents() {
+	for _, p := range d.parents {
+		if os.Remove(p) != nil {
+			return
+		}
+	}
+}
+
+// refuseInputs compares places rather than names: two names may lead to one
+// folder.
+func refuseInputs(final string, inputs []string) error {
+	out, err := filepath.EvalSymlinks(final)
+	if err != nil {
+		return nil // nothing is there to be replaced
+	}
+	for _, input := range inputs {
+		at, err := filepath.Abs(input)
+		if err == nil {
+			at, err = filepath.EvalSymlinks(at)
+		}
+		if err != nil {
+			continue // the name of a built-in, or what its reader will refuse
+		}
+		if rel, err := filepath.Rel(out, at); err == nil && rel != ".." && !strings.HasPrefix(rel, "../") {
+			return fmt.Errorf("%w: %s holds %s; choose another with -o", ErrInput, final, input)
+		}
+	}
+	return nil
 }
 
 func refuseUnfit(final string, replace bool) error {
@@ -157,6 +215,7 @@ func (d *Dir) Abort() error {
 	err := os.RemoveAll(d.part)
 	err = errors.Join(err, d.lock.Close())
 	d.lock = nil
+	d.removeParents()
 	return err
 }
 

@@ -94,3 +94,51 @@ func TestSecondRunIsRefusedAndAStaleOneCleared(t *testing.T) {
 	require.NoError(t, next.Commit())
 	require.Equal(t, []string{"run"}, names(t, top))
 }
+
+func TestAFailedRunTakesItsFoldersAway(t *testing.T) {
+	top := t.TempDir()
+	out := filepath.Join(top, "deep", "deeper", "run")
+	d, err := Begin(out, false)
+	require.NoError(t, err)
+	require.NoError(t, d.Abort())
+	require.Empty(t, names(t, top))
+
+	// Not those that were there, or that something else was put into.
+	put(t, filepath.Join(top, "deep"), "mine", "mine")
+	d, err = Begin(out, false)
+	require.NoError(t, err)
+	require.NoError(t, d.Abort())
+	require.Equal(t, []string{"mine"}, names(t, filepath.Join(top, "deep")))
+	d, err = Begin(out, false)
+	require.NoError(t, err)
+	put(t, filepath.Dir(out), "mine", "mine")
+	require.NoError(t, d.Abort())
+	require.Equal(t, []string{"mine"}, names(t, filepath.Dir(out)))
+}
+
+func TestInputsAreNotReplaced(t *testing.T) {
+	top := t.TempDir()
+	night := filepath.Join(top, "night")
+	put(t, night, "f.fits", "frame")
+	require.NoError(t, os.Symlink(night, filepath.Join(top, "link")))
+	for _, c := range []struct{ out, input string }{
+		{night, night},
+		{night, filepath.Join(top, "link")},
+		{filepath.Join(top, "link"), night},
+		{top, night},
+		{night, filepath.Join(night, "f.fits")},
+		{night, filepath.Join(top, "other", "..", "night")},
+	} {
+		_, err := Begin(c.out, true, "optical", c.input)
+		require.ErrorIs(t, err, ErrInput, "%v", c)
+		require.ErrorContains(t, err, "choose another with -o")
+	}
+	require.Equal(t, []string{"link", "night"}, names(t, top))
+
+	// Beside and below an input is fair, and so are names alike.
+	for _, out := range []string{filepath.Join(top, "run"), filepath.Join(night, "run"), night + "2", filepath.Join(top, "..night")} {
+		d, err := Begin(out, true, night)
+		require.NoError(t, err, out)
+		require.NoError(t, d.Abort())
+	}
+}

@@ -233,7 +233,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.voxels = r.schema.Grid.Count
 	if s.cube {
 		if r.rectifier, err = newRectifier(nominalGeometry(r.seq), r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
-			return 0, err
+			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
 		s.margin = r.rectifier.margin(s.rows)
 	}
@@ -273,6 +273,14 @@ func (r *reduction) code() (*hadamard.Code, error) {
 		}
 	}
 	return code, nil
+}
+
+// gridSource is the file to mend if the grid does not suit the instrument.
+func (r *reduction) gridSource() string {
+	if r.opts.Recipe.ownGrid() {
+		return r.opts.Recipe.Name
+	}
+	return filepath.Join(r.opts.Sequence, "profile.yaml")
 }
 
 func (r *reduction) newDecoder(code *hadamard.Code) *decoder {
