@@ -35,7 +35,8 @@ func TestBytesText(t *testing.T) {
 }
 
 func TestRate(t *testing.T) {
-	require.Equal(t, "6.50 GB/s", rate(13e9, 2))
+	require.Equal(t, "6.5 GB/s", rate(13e9, 2))
+	require.Equal(t, "0.00416 GB/s", rate(9031680, 2.17))
 	require.Empty(t, rate(0, 2))
 	require.Empty(t, rate(1, 0))
 }

@@ -154,5 +154,5 @@ func rate(bytes int64, seconds float64) string {
 	if bytes == 0 || math.IsInf(gigabytes, 0) || math.IsNaN(gigabytes) {
 		return ""
 	}
-	return fmt.Sprintf("%.2f GB/s", gigabytes)
+	return strconv.FormatFloat(gigabytes, 'g', 3, 64) + " GB/s"
 }

@@ -37,7 +37,7 @@ type stretch struct{ low, high, soft float64 }
 const (
 	lowQuantile  = 0.02
 	highQuantile = 0.9995
-	softSpreads  = 2
+	softSpreads  = 4
 	softLeast    = 1e-3
 )
 
@@ -130,7 +130,7 @@ func (f frame) axes(s *svg) {
 
 // mark rings a place and writes its label beside it.
 func (f frame) mark(s *svg, p place) {
-	const radius = 8
+	const radius = 10
 	x, y := f.at(float64(p.element), float64(p.row))
 	for _, class := range []string{"halo", "ring"} {
 		fmt.Fprintf(s, `<circle class="%s" cx="%s" cy="%s" r="%d"/>`, class, coord(x), coord(y), radius)
