@@ -109,7 +109,7 @@ func (n *Neighbours) Ghost(j int) int {
 //	d_j = d[p] + slope[p] (j - (n-1)/2);
 //
 // slope may be nil. The term is computed from the decoded light, which holds the
-// term itself: what is left is of second order, d^2/8 of a star in its ghosts. The
+// term itself: what is left is of second order, a third of d^2 of a star at most. The
 // variance changes by less than d of itself and is left as it is.
 func (n *Neighbours) Correct(block, d, slope []float32, pixels, stride int) {
 	n.decoder.check("Correct", len(block), len(block), pixels, stride)
@@ -121,56 +121,23 @@ func (n *Neighbours) Correct(block, d, slope []float32, pixels, stride int) {
 	}
 	s := n.scratch.Get().(*neighbourScratch)
 	defer n.scratch.Put(s)
+	own := n.ghost != nil
 	for p := 0; p < pixels; p += lanes {
-		q := min(lanes, pixels-p)
-		var size, step row
-		copy(size[:q], d[p:])
-		if slope != nil {
-			copy(step[:q], slope[p:p+q])
-		}
-		n.halves(s, block[p:], &size, &step, q, stride)
-		if n.ghost != nil {
-			n.takeGhosts(s, block[p:], q, stride)
+		count := min(lanes, pixels-p)
+		n.terms(s, block[p:], d[p:], slopeFrom(slope, p), count, stride, own)
+		if own {
+			n.takeGhosts(s, block[p:], count, stride)
 		} else {
-			n.takeProducts(s, block[p:], q, stride)
+			n.takeProducts(s, block[p:], count, stride)
 		}
 	}
 }
 
-// halves fills s.half with g_j/2 of up to lanes pixels.
-func (n *Neighbours) halves(s *neighbourScratch, block []float32, size, step *row, pixels, stride int) {
-	middle := float32(len(n.columns)-1) / 2
-	var before row // d_j f_j/4 of the element before
-	for j, c := range n.columns {
-		at := float32(j) - middle
-		f := block[int(c)*stride:][:pixels]
-		var own row
-		for p, v := range f {
-			own[p] = float32((size[p] + float32(step[p]*at)) * v * 0.25)
-		}
-		if j > 0 {
-			half := &s.half[j-1]
-			for p := range half {
-				half[p] = before[p] + own[p]
-			}
-		}
-		before = own
+func slopeFrom(slope []float32, p int) []float32 {
+	if slope == nil {
+		return nil
 	}
-}
-
-// takeGhosts is for m-sequences.
-func (n *Neighbours) takeGhosts(s *neighbourScratch, block []float32, pixels, stride int) {
-	for j := range s.half {
-		half := s.half[j][:pixels]
-		a := block[int(n.columns[j])*stride:][:pixels]
-		b := block[int(n.columns[j+1])*stride:][:pixels]
-		c := block[int(n.ghost[j])*stride:][:pixels]
-		for p, h := range half {
-			a[p] -= h
-			b[p] -= h
-			c[p] += h
-		}
-	}
+	return slope[p:]
 }
 
 // takeProducts is for other codes: sums over subsets of eight pairs, as in dense.
