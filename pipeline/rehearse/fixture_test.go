@@ -17,20 +17,27 @@ import (
 // smallProfile cuts an embedded profile down to a small detector, device and
 // band around the same centre.
 func smallProfile(t testing.TB, name string) *instrument.Profile {
+	return cutProfile(t, name, 160, 56, 90)
+}
+
+// cutProfile cuts a profile to so many detector columns and rows and voxels, and
+// the device to what lights most of the rows.
+func cutProfile(t testing.TB, name string, columns, rows, voxels int) *instrument.Profile {
 	p, err := instrument.Load(name)
 	require.NoError(t, err)
 	d, s := &p.Detector, &p.Spectrograph
-	d.Columns, d.Rows = 160, 56
-	s.XCenterPx, s.YCenterPx = 79.5, 27.5
+	d.Columns, d.Rows = columns, rows
+	s.XCenterPx, s.YCenterPx = float64(columns-1)/2, float64(rows-1)/2
 	if p.DMD.Mounting == instrument.Diagonal {
-		d.Amplifiers[0].Data = instrument.Section{1, 160, 1, 56}
-		p.DMD.Columns, p.DMD.Rows = 44, 44
+		d.Amplifiers[0].Data = instrument.Section{1, columns, 1, rows}
+		p.DMD.Columns, p.DMD.Rows = rows-12, rows-12
 	} else {
-		d.Amplifiers[0].Data, d.Amplifiers[0].Overscan = instrument.Section{1, 80, 1, 56}, instrument.Overscan{161, 176, 1, 56}
-		d.Amplifiers[1].Data, d.Amplifiers[1].Overscan = instrument.Section{81, 160, 1, 56}, instrument.Overscan{177, 192, 1, 56}
-		p.DMD.Columns, p.DMD.Rows = 48, 40
+		half := columns / 2
+		d.Amplifiers[0].Data, d.Amplifiers[0].Overscan = instrument.Section{1, half, 1, rows}, instrument.Overscan{columns + 1, columns + 16, 1, rows}
+		d.Amplifiers[1].Data, d.Amplifiers[1].Overscan = instrument.Section{half + 1, columns, 1, rows}, instrument.Overscan{columns + 17, columns + 32, 1, rows}
+		p.DMD.Columns, p.DMD.Rows = 48, rows-16
 	}
-	p.Grid.Count = 90
+	p.Grid.Count = voxels
 	p.Grid.FirstNM = s.CenterNM - p.Grid.StepNM*float64(p.Grid.Count-1)/2
 	edge := p.Grid.StepNM * float64(p.Grid.Count) / 2
 	s.Throughput = instrument.Curve{
