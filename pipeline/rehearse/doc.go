@@ -29,7 +29,8 @@
 //
 //	f(x, y) = sum_w int dX h_w(X) G(x - X) G(y - Y_w(X)),
 //
-// h_w(X) the electrons per pixel along the trace of mirror row w. A frame holds
+// h_w(X) the electrons per pixel along the trace of mirror row w. A line is a
+// Gaussian in X of its own width, or a point without one. A frame holds
 // the integrals of f over pixels, the truth those over voxels: wavelengths
 // between the edges of the grid, rows between y0 - 1/2 and y0 + 1/2 following the
 // trace, both from the same h_w, so that nothing but a reduction can make them

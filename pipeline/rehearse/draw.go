@@ -4,7 +4,8 @@ package rehearse
 // reaches them. What it holds of a row does not depend on where strips begin.
 type strip struct {
 	y0, y1 int
-	// mirrors are the mirror rows, w ascending without gap.
+	// mirrors are the mirror rows w = first, first+1, ...
+	first   int
 	mirrors []*mirrorRow
 	// rows draw the detector rows y0, y0+1, ...
 	rows []rowDrawing
@@ -22,22 +23,19 @@ type rowDrawing struct {
 	weights [][]float64
 }
 
-// newStrip prepares rows y0 <= y < y1. Voxels need mirror rows a little farther
-// out than pixels do.
+// newStrip lays out rows y0 <= y < y1; prepareMirror and prepareRow fill it, in
+// any order, mirrors first. Voxels need mirror rows a little farther out than
+// pixels do.
 func (o *optics) newStrip(y0, y1 int) *strip {
 	s := &strip{y0: y0, y1: y1, rows: make([]rowDrawing, y1-y0)}
 	first, last := o.mirrorRows(float64(y0)-voxelReach, float64(y1-1)+voxelReach)
-	for w := first; w <= last; w++ {
-		s.mirrors = append(s.mirrors, nil)
-	}
+	s.first = first
+	s.mirrors = make([]*mirrorRow, max(last-first+1, 0))
 	return s
 }
 
 // prepareMirror fills in mirrors[k].
-func (o *optics) prepareMirror(s *strip, k int) {
-	first, _ := o.mirrorRows(float64(s.y0)-voxelReach, float64(s.y1-1)+voxelReach)
-	s.mirrors[k] = o.newMirrorRow(first + k)
-}
+func (o *optics) prepareMirror(s *strip, k int) { s.mirrors[k] = o.newMirrorRow(s.first + k) }
 
 // prepareRow fills in rows[k].
 func (o *optics) prepareRow(s *strip, k int) { s.rows[k] = o.rowDrawing(s, k, 0) }
@@ -48,7 +46,7 @@ func (o *optics) rowDrawing(s *strip, k int, dy float64) rowDrawing {
 	var r rowDrawing
 	first, last := o.mirrorRows(y, y)
 	for w := first; w <= last; w++ {
-		at := w - s.mirrors[0].w
+		at := w - s.first
 		if at < 0 || at >= len(s.mirrors) {
 			continue
 		}

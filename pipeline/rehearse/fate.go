@@ -78,20 +78,12 @@ const leastThroughput = 0.05
 func (n *night) throughputs() {
 	drift, _ := sizeOf(n.faults, Drift)
 	trend, _ := sizeOf(n.faults, Trend)
-	first, last := math.MaxInt, -1
-	for i, st := range n.seq.Steps {
-		if seesSky(st.Kind) {
-			first, last = min(first, i), i
-		}
-	}
+	place := n.places()
 	for i, st := range n.seq.Steps {
 		if !seesSky(st.Kind) {
 			continue
 		}
-		c := 1 + drift*n.gauss(Drift, i, 0)
-		if last > first {
-			c *= 1 + trend*(float64(i-first)/float64(last-first)-0.5)
-		}
+		c := (1 + drift*n.gauss(Drift, i, 0)) * (1 + trend*place[i])
 		n.fates[i].throughput = math.Max(c, leastThroughput)
 	}
 	mean := n.mean(func(f *fate) float64 { return f.throughput })
@@ -103,6 +95,28 @@ func (n *night) throughputs() {
 			n.fates[i].throughput /= mean
 		}
 	}
+}
+
+// places gives the middle of each step in time, -1/2 in the first of the sky's
+// frames and 1/2 in the last.
+func (n *night) places() []float64 {
+	place := make([]float64, len(n.seq.Steps))
+	at, first, last := 0.0, math.Inf(1), math.Inf(-1)
+	for i, st := range n.seq.Steps {
+		place[i] = at + st.ExptimeSeconds/2
+		at += st.ExptimeSeconds + n.seq.Profile.Detector.ReadS
+		if seesSky(st.Kind) {
+			first, last = math.Min(first, place[i]), math.Max(last, place[i])
+		}
+	}
+	for i := range place {
+		if last > first {
+			place[i] = (place[i]-first)/(last-first) - 0.5
+		} else {
+			place[i] = 0
+		}
+	}
+	return place
 }
 
 func (n *night) slopes() {

@@ -61,15 +61,14 @@ func Run(ctx context.Context, seq *sequence.Sequence, scene *Scene, opts Options
 	}
 	r.dir, r.progress = dir, progress
 	if err := os.MkdirAll(filepath.Join(dir, TruthFolder), 0o777); err != nil {
-		return nil, err
+		return nil, fmt.Errorf("night: %w; choose a folder that can be written", err)
 	}
 	if err := r.writeTexts(); err != nil {
 		return nil, err
 	}
-	if err := r.openOutputs(); err != nil {
-		return nil, err
+	if err = r.openOutputs(); err == nil {
+		err = r.strips(ctx)
 	}
-	err = r.strips(ctx)
 	if err == nil {
 		err = r.writeFrames(ctx)
 	}
