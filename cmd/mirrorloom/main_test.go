@@ -18,7 +18,7 @@ import (
 
 // TestMain lets testscript files run this test binary as mirrorloom.
 func TestMain(m *testing.M) {
-	testscript.Main(m, map[string]func(){
+	testscript.Main(tidy{m}, map[string]func(){
 		"mirrorloom": func() {
 			ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 			code := run(ctx, os.Args[1:], os.Stdout, os.Stderr)
@@ -26,6 +26,17 @@ func TestMain(m *testing.M) {
 			os.Exit(code)
 		},
 	})
+}
+
+// tidy removes what the tests shared.
+type tidy struct{ *testing.M }
+
+func (m tidy) Run() int {
+	code := m.M.Run()
+	if tinyDir != "" {
+		_ = os.RemoveAll(tinyDir) // in the system's folder for such files
+	}
+	return code
 }
 
 func TestScripts(t *testing.T) {
