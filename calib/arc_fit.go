@@ -35,7 +35,8 @@ type measurement struct {
 type arcFit struct {
 	data     []measurement
 	lines    int
-	dropped  []bool // lines that stand out
+	u        []float64 // of each line
+	dropped  []bool    // lines that stray
 	extraVar float64
 	lineVar  float64
 	prior    prior
@@ -65,10 +66,10 @@ const (
 
 // lineFloor is the least error of a line, px: centroids of perfect lines on a grid
 // and the lists' digits.
-const lineFloor = 0.002
+const lineFloor = 0.003
 
-// Outliers: a centroid beyond rejectSigmas of its error has no say (biweight), a line
-// beyond them is dropped.
+// rejectSigmas: a centroid beyond so many of its errors has no say (biweight), nor has
+// a line (strayLines).
 const rejectSigmas = 6
 
 func newPrior(g *Geometry, half float64) prior {
@@ -169,23 +170,31 @@ func (f *arcFit) errors() {
 		}
 	}
 	f.extraVar = excess(own, err2)
-	var lines, lineErr2 []float64
-	for k, m := range mean {
-		if variance[k] > 0 && !f.dropped[k] {
-			lines, lineErr2 = append(lines, math.Abs(m)), append(lineErr2, variance[k])
-		}
-	}
-	// Four parameters of the dispersion are fitted to the lines: their residuals are
-	// that much too small.
-	n := float64(len(lines))
-	f.lineVar = max(lineFloor*lineFloor, excess(lines, lineErr2)*n/max(1, n-4))
-	for k, m := range mean {
-		f.dropped[k] = variance[k] > 0 && math.Abs(m) > rejectSigmas*math.Sqrt(variance[k]+f.lineVar)
-	}
+	f.judgeLines(mean, variance)
 	for i := range f.data {
 		d := &f.data[i]
 		d.weight = biweight(d.ResidualPx-mean[d.line], math.Sqrt(d.err2+f.extraVar)*rejectSigmas/6)
 	}
+}
+
+// judgeLines drops the lines that stray and measures the scatter of the others. It is
+// about the fit that they agree on, of lineTerms parameters: too small by as much.
+func (f *arcFit) judgeLines(mean, variance []float64) {
+	var places []linePlace
+	for k, m := range mean {
+		if variance[k] > 0 {
+			places = append(places, linePlace{line: k, u: f.u[k], mean: m, variance: variance[k]})
+		}
+	}
+	stray, corrected := strayLines(places)
+	var off, err2 []float64
+	for i, p := range places {
+		if f.dropped[p.line] = stray[i]; !stray[i] {
+			off, err2 = append(off, math.Abs(corrected[i])), append(err2, p.variance)
+		}
+	}
+	n := float64(len(off))
+	f.lineVar = max(lineFloor*lineFloor, excess(off, err2)*n/max(1, n-lineTerms))
 }
 
 // lineMeans fills in the residuals and returns their weighted mean for each line,

@@ -206,6 +206,7 @@ func (s *solver) newFit(assigned []int, h float64) *arcFit {
 			number = f.lines
 			numbers[line.nm] = number
 			f.lines++
+			f.u = append(f.u, (line.nm-s.nominal.L_c)/h)
 		}
 		for k := range t.peaks {
 			p := &t.peaks[k]

@@ -1,66 +1,103 @@
 package calib
 
 import (
-	"errors"
-
-	"gonum.org/v1/gonum/mat"
+	"fmt"
+	"math"
 )
 
-// RowEnd is where lit mirror rows end, seen on the detector: half the light.
+// RowEnd is where lit mirror rows end, as seen on the detector.
 type RowEnd struct {
-	// Row is nominal, at x = X_c: Y_c + w_step (w -+ 1/2 - r_c).
+	// Row is the nominal place of half the light at x = X_c:
+	// Y_c + w_step (w - 1/2 - r_c) below the first lit row w, or w + 1/2 above the last.
 	Row float64
 	// Above: the light lies at higher rows (the lower end of the device).
 	Above bool
 }
 
-// EdgePoint is a measured RowEnd at a column.
+// EdgePoint is a RowEnd measured at a column.
 type EdgePoint struct {
-	Group   int     // points of one group share their own constant: an end of an element
+	// Group: points of a group share their own constant, an end of the device or of an
+	// element.
+	Group   int
 	Nominal float64 // RowEnd.Row
-	X       float64
-	Y, YErr float64
+	X       float64 // px from 0, the mean of the light
+	Y, YErr float64 // detector row of half the light, and its standard error
 }
 
-// TraceRule says how ends are measured.
+// TraceRule says how ends are measured. Zero values of fields other than FWHMPx take
+// the default.
 type TraceRule struct {
-	FWHMPx float64 // of the spot
-	// Columns are averaged to one point.
+	// FWHMPx is that of a mirror's spot, px.
+	FWHMPx float64
+	// Columns are averaged to one point (8).
 	Columns int
-	// ReachPx is how far an end may be from nominal.
+	// ReachPx is how far an end may be from nominal (6: traces off by 5 px from end to
+	// end about the middle, and a margin).
 	ReachPx float64
+	// Sigmas is the least significance of the light inside an end (30: the place is
+	// then known to a tenth of a pixel).
+	Sigmas float64
 }
 
-// DefaultTraceRule averages 8 columns.
-func DefaultTraceRule(fwhmPx float64) TraceRule { return TraceRule{FWHMPx: fwhmPx} }
+// DefaultTraceRule is the rule for a spot.
+func DefaultTraceRule(fwhmPx float64) TraceRule {
+	return TraceRule{FWHMPx: fwhmPx, Columns: 8, ReachPx: 6, Sigmas: 30}
+}
 
-// Find measures ends in light whose rows end at the same device rows for all
-// elements that shine at once: an all-on lamp frame where the lit rows make a
-// rectangle; one element's decoded light or arc exposure in any case. firstGroup
-// numbers the first end; ends off the detector give no point.
+// Find measures the ends of rows in light whose rows end at the same device rows for
+// all elements that shine at once: an all-on lamp frame where the lit rows make a
+// rectangle (square mounting; diagonal with its corners closed), one element's decoded
+// light or arc exposure in any case. firstGroup numbers the first end, the others
+// follow. Ends off the detector, and columns with too little light, give no point.
+//
+// The profile along y of each bin of columns is fitted by
+//
+//	s(y) = background + (level + slope (y - end)) Phi(+-(y - end)/sigma),
+//
+// the edge of many spots side by side, with sigma that of the spot, by Gauss-Newton
+// from where the light crosses half its height.
 func (r TraceRule) Find(e Exposure, ends []RowEnd, firstGroup int) ([]EdgePoint, error) {
-	return nil, errors.New("being built")
+	if err := e.check(); err != nil {
+		return nil, err
+	}
+	d := DefaultTraceRule(r.FWHMPx)
+	if r.Columns > 0 {
+		d.Columns = r.Columns
+	}
+	if r.ReachPx > 0 {
+		d.ReachPx = r.ReachPx
+	}
+	if r.Sigmas > 0 {
+		d.Sigmas = r.Sigmas
+	}
+	if !(d.FWHMPx >= 1) || math.IsInf(d.FWHMPx, 0) {
+		return nil, fmt.Errorf("trace: a spot's width of %g px is none; give its FWHM, 1 px or more", d.FWHMPx)
+	}
+	var points []EdgePoint
+	for k, end := range ends {
+		for x := 0; x < e.Columns; x += d.Columns {
+			if p, ok := d.point(&e, end, x, min(x+d.Columns, e.Columns)); ok {
+				p.Group, p.Nominal = firstGroup+k, end.Row
+				points = append(points, p)
+			}
+		}
+	}
+	return points, nil
 }
 
-// TraceSolution is the trace common to all.
-type TraceSolution struct {
-	TraceTilt, TraceCurve float64
-	Covariance            *mat.SymDense // of the two
-	RMSPx                 float64
-	Used, Rejected        int
-	// OffsetPx is the mean of (measured - nominal) row of the ends at X_c, PlateScale
-	// the measured w step over nominal (from ends at different rows; NaN with one),
-	// with standard errors: checks, not applied.
-	OffsetPx, OffsetErr         float64
-	PlateScale, PlateScaleError float64
-}
-
-// TraceError is returned where no end is on the detector or none is clear.
-type TraceError struct{ What string }
-
-func (e *TraceError) Error() string { return "trace: " + e.What }
-
-// FitTrace fits y = const(group) + TraceTilt (x-X_c) + TraceCurve (x-X_c)^2.
-func FitTrace(nominal Geometry, points []EdgePoint) (*TraceSolution, error) {
-	return nil, errors.New("being built")
+// point measures one end in columns x0..x1-1.
+func (r TraceRule) point(e *Exposure, end RowEnd, x0, x1 int) (EdgePoint, bool) {
+	// Inside, the level is read over a spot's width or two; outside, as much dark.
+	margin := r.ReachPx + 2.5*r.FWHMPx
+	first, last := int(math.Floor(end.Row-margin)), int(math.Ceil(end.Row+margin))
+	first, last = max(first, 0), min(last, e.Rows()-1)
+	f := newEdgeFit(e, end, r.FWHMPx, x0, x1, first, last)
+	// The whole edge must be seen wherever it lies: a spot's width on both sides.
+	if !f.start(r.ReachPx) || f.end-float64(first) < r.FWHMPx || float64(last)-f.end < r.FWHMPx {
+		return EdgePoint{}, false
+	}
+	if !f.solve(r.ReachPx) || f.level < r.Sigmas*f.levelErr {
+		return EdgePoint{}, false
+	}
+	return EdgePoint{X: f.meanX(), Y: f.end, YErr: f.endErr}, true
 }
