@@ -3,6 +3,7 @@ package reduce
 import (
 	"context"
 	"fmt"
+	"math"
 	"path/filepath"
 
 	"mirrorloom/calib"
@@ -236,6 +237,14 @@ func (p *prepare) findHot(s *masterStrip, known bool) error {
 	return err
 }
 
+// levelAbove is the light in electrons that is 30 times its own noise on top of a
+// variance without light, L/sqrt(L + variance) = 30: a fair response is then told
+// from none beyond doubt.
+func levelAbove(variance float64) float64 {
+	const noises = 30
+	return noises*noises/2 + noises*math.Sqrt(noises*noises/4+variance)
+}
+
 // findDead marks pixels that do not answer the lamp, in rows y0..y1-1; the rows
 // around them serve as neighbours.
 func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) error {
@@ -254,8 +263,7 @@ func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) erro
 	if bias != nil {
 		calib.Subtract(lamp, bias, 1)
 	}
-	const noises = 30 // a fair response is then told from none beyond doubt
-	rule := calib.DefaultDeadRule(noises * noises * p.camera.variance[0][0])
+	rule := calib.DefaultDeadRule(levelAbove(p.camera.variance[0][0]))
 	rule.Fraction = p.recipe.DeadBelow
 	flags := make([]calib.Flag, len(lamp))
 	if _, err := rule.Flag(flags, lamp, p.camera.columns); err != nil {

@@ -1,0 +1,95 @@
+package reduce
+
+import (
+	"os"
+	"path/filepath"
+	"testing"
+
+	"github.com/stretchr/testify/require"
+
+	"mirrorloom/configs"
+	"mirrorloom/pipeline/config"
+	"mirrorloom/pipeline/instrument"
+)
+
+// The embedded recipe says what an empty one means.
+func TestDefaultRecipe(t *testing.T) {
+	r, err := LoadRecipe(DefaultRecipe)
+	require.NoError(t, err)
+	empty, err := parseRecipe("empty", []byte("detector: {use: auto}\n"))
+	require.NoError(t, err)
+	require.Len(t, r.SHA, 64)
+	require.NotEqual(t, r.SHA, empty.SHA)
+	empty.SHA, empty.Name = r.SHA, r.Name
+	require.Equal(t, r, empty)
+	require.Equal(t, DetectorRecipe{Use: "auto", ClipSigma: 4, HotSigma: 8, DeadBelow: 0.5}, r.Detector)
+	grid := instrument.Grid{FirstNM: 500, StepNM: 0.5, Count: 10}
+	require.Equal(t, grid, r.grid(&instrument.Profile{Grid: grid}))
+}
+
+func TestRecipeGrid(t *testing.T) {
+	path := filepath.Join(t.TempDir(), "r.yaml")
+	require.NoError(t, os.WriteFile(path, []byte("grid: {use: auto, first_nm: 510, step_nm: 0.4, count: 20}\n"), 0o644))
+	r, err := LoadRecipe(path)
+	require.NoError(t, err)
+	require.Equal(t, path, r.Name)
+	require.Equal(t, instrument.Grid{FirstNM: 510, StepNM: 0.4, Count: 20}, r.grid(&instrument.Profile{}))
+}
+
+func TestRecipeRefusals(t *testing.T) {
+	for _, c := range []struct{ text, want string }{
+		{"flats: {use: off}", "r.yaml:1: flats"},
+		{"flat: {use: off, x: 1}", "flat.x"},
+		{"flat: {use: auto}", `flat.use: "auto" is not available in this version; use off`},
+		{"\narc: {use: arcs.csv}", "r.yaml:2: arc.use"},
+		{"sky: {use: auto}", "sky.use"},
+		{"flux: {use: auto}", "flux.use"},
+		{"throughput: {use: auto}", "throughput.use"},
+		{"repair: {use: auto}", "repair.use"},
+		{"detector: {use: maybe}", "detector.use"},
+		{"detector: {use: auto, clip_sigma: 1}", "detector.clip_sigma"},
+		{"detector: {use: auto, hot_sigma: 2}", "detector.hot_sigma"},
+		{"detector: {use: auto, dead_below: 1.5}", "detector.dead_below"},
+		{"detector: {use: auto, clip_sigma: .nan}", "detector.clip_sigma"},
+		{"grid: {use: auto, first_nm: 500}", "grid.step_nm"},
+		{"grid: {use: auto, first_nm: 500, step_nm: -1, count: 3}", "grid.step_nm"},
+		{"grid: {use: auto, first_nm: 500, step_nm: 1, count: 1}", "grid.count"},
+		{"grid: {use: off, first_nm: 500, step_nm: 1, count: 10}", "grid.use"},
+		{"grid: {use: off}\n---\ngrid: {use: off}", "r.yaml"},
+		{"- 1", "r.yaml"},
+	} {
+		r, err := parseRecipe("r.yaml", []byte(c.text))
+		require.Nil(t, r, c.text)
+		require.ErrorContains(t, err, c.want, c.text)
+		var e *config.Error
+		require.ErrorAs(t, err, &e)
+	}
+	_, err := LoadRecipe("no-such-recipe")
+	require.ErrorIs(t, err, os.ErrNotExist)
+}
+
+// No text makes the reader panic; what is read has sound values; what is refused
+// gives no recipe and names the file.
+func FuzzRecipe(f *testing.F) {
+	text, err := configs.Read(configs.Recipes, DefaultRecipe)
+	require.NoError(f, err)
+	f.Add(text)
+	for _, s := range []string{
+		"", "detector: {use: off}", "grid: {use: auto, first_nm: 500, step_nm: 0.5, count: 3}", "flat: {use: auto}",
+		"detector: {use: auto, clip_sigma: 1e400}", "a: &a [*a]", "grid: {use: auto, count: 99999999999999999999}", "detector:\n\tuse: auto",
+	} {
+		f.Add([]byte(s))
+	}
+	f.Fuzz(func(t *testing.T, data []byte) {
+		r, err := parseRecipe("r.yaml", data)
+		if err != nil {
+			require.Nil(t, r)
+			require.Contains(t, err.Error(), "r.yaml")
+			return
+		}
+		d := r.Detector
+		require.True(t, d.ClipSigma >= 2 && d.HotSigma >= 4 && d.DeadBelow >= 0 && d.DeadBelow <= 1)
+		g := r.grid(&instrument.Profile{Grid: instrument.Grid{FirstNM: 1, StepNM: 1, Count: 2}})
+		require.True(t, g.FirstNM > 0 && g.StepNM > 0 && g.Count >= 2)
+	})
+}
