@@ -16,7 +16,7 @@ type Depth struct {
 type depthLevel struct {
 	side           int
 	sum, expected  []float64 // [element][cell]: sum of weighted deviations and their variance
-	weight         []float64
+	weight, voxels []float64
 	square, noise  float64
 	cells, lastRow int
 }
@@ -27,8 +27,8 @@ type DepthPoint struct {
 	Cells int     // whole cells
 	SN    float64 // expected: 1/rms of the photon noise of a cell
 	RMS   float64 // of the cells' deviations
-	// Excess is the rms beyond the noise, sqrt(RMS^2 - 1/SN^2), 0 where it is none,
-	// and ExcessError the standard error of RMS.
+	RMSError float64 // standard error of RMS
+	// Excess is the rms beyond the noise, sqrt(RMS^2 - 1/SN^2), 0 where it is none.
 	Excess, ExcessError float64
 }
 
@@ -38,15 +38,14 @@ func NewDepth(elements, voxels, levels int) *Depth {
 	for k := range levels {
 		side := 1 << k
 		n := elements * (voxels / side)
-		d.levels = append(d.levels, depthLevel{side: side, lastRow: -1, sum: make([]float64, n), expected: make([]float64, n), weight: make([]float64, n)})
+		d.levels = append(d.levels, depthLevel{side: side, lastRow: -1, sum: make([]float64, n), expected: make([]float64, n), weight: make([]float64, n), voxels: make([]float64, n)})
 	}
 	return d
 }
 
 // AddRow adds a row of all elements, [voxel][element]: signal and variance of the
-// corrected flat, expected the light it should have. Rows come in order, without
-// gaps in a cell's rows; flagged voxels are left out of their cells, and cells that
-// have lost half are.
+// corrected flat, expected the light it should have, and what Correlation says. Rows come in order; flagged
+// voxels are left out of their cells, and cells that have lost half of theirs are.
 func (d *Depth) AddRow(signal, variance, expected []float32, flags []Flag, alongWavelength, alongSlit float64) {
 	for k := range d.levels {
 		level := &d.levels[k]
@@ -63,6 +62,7 @@ func (d *Depth) AddRow(signal, variance, expected []float32, flags []Flag, along
 					level.sum[cell] += float64(signal[i]) - e
 					level.expected[cell] += inflation * float64(variance[i])
 					level.weight[cell] += e
+					level.voxels[cell]++
 				}
 			}
 		}
@@ -74,12 +74,12 @@ func (d *Depth) AddRow(signal, variance, expected []float32, flags []Flag, along
 
 func (d *depthLevel) close() {
 	for i, w := range d.weight {
-		if w > 0 {
+		if 2*d.voxels[i] > float64(d.side*d.side) {
 			d.square += d.sum[i] * d.sum[i] / (w * w)
 			d.noise += d.expected[i] / (w * w)
 			d.cells++
 		}
-		d.sum[i], d.expected[i], d.weight[i] = 0, 0, 0
+		d.sum[i], d.expected[i], d.weight[i], d.voxels[i] = 0, 0, 0, 0
 	}
 }
 
@@ -92,8 +92,11 @@ func (d *Depth) Points() []DepthPoint {
 		}
 		n := float64(l.cells)
 		p := DepthPoint{Side: l.side, Cells: l.cells, SN: math.Sqrt(n / l.noise), RMS: math.Sqrt(l.square / n)}
+		p.RMSError = p.RMS / math.Sqrt(2*n)
+		// The error of the excess' square is that of RMS^2; near 0 its root is taken.
 		p.Excess = math.Sqrt(max(0, (l.square-l.noise)/n))
-		p.ExcessError = p.RMS / math.Sqrt(2*n)
+		squareError := p.RMS * p.RMS * math.Sqrt(2/n)
+		p.ExcessError = squareError / (2 * max(p.Excess, math.Sqrt(squareError)/2))
 		out = append(out, p)
 	}
 	return out

@@ -11,10 +11,11 @@ import (
 //
 //	P = A / S.
 //
-// S is taken from A: straightened along the trace by RowShift, divided by the level
-// of each trace row (the slit's ends are steep across the trace and straight along
-// it), averaged over rows of like level, smoothed along the trace by Smoother, and
-// taken back to the detector. So P has a local mean of 1 over Period columns.
+// S is taken from A: divided by what is expected of the lamp along x (LampShape: the
+// ends of band and field are not smooth), straightened along the trace by RowShift,
+// divided by the level of each trace row (the slit's ends are steep across the trace
+// and straight along it), averaged over rows of like level, smoothed along the trace
+// by Smoother, and taken back. So P has a local mean of 1 over Period columns.
 type PixelRule struct {
 	// Period, in columns, of Smoother: at least 30.
 	Period float64
@@ -28,10 +29,10 @@ type PixelRule struct {
 	Clip float64
 }
 
-// DefaultPixelRule smooths over 60 columns and 17 rows whose light is within 10 %,
+// DefaultPixelRule smooths over 40 columns and 17 rows whose light is within 10 %,
 // leaves out 5 sigmas and demands 10 sigmas of light.
 func DefaultPixelRule() PixelRule {
-	return PixelRule{Period: 60, Rows: 8, Like: 0.1, Floor: 10, Clip: 5}
+	return PixelRule{Period: 40, Rows: 8, Like: 0.1, Floor: 10, Clip: 5}
 }
 
 // PixelResponse is the response of each pixel, rows one after the other.
@@ -79,18 +80,20 @@ func (p *PixelResponse) Divide(values, variances []float32, first int) {
 
 // Measure works on a whole frame in memory, with eight copies of it at most: light
 // and variance of A in electrons, rows one after the other, flags (pixels with any
-// are left out of S and get P = 1, variance Scatter^2; nil for none) and shift[x],
-// the rows by which traces have left their own at column x (Geometry.TraceShift); the
-// width is len(shift).
-func (r PixelRule) Measure(ctx context.Context, light, variance []float32, flags []Flag, shift []float64) (*PixelResponse, error) {
+// are left out of S and get P = 1, variance Scatter^2; nil for none), expected, in any
+// unit (nil for 1 everywhere: wherever the light along a trace has corners, P will
+// have bumps), and shift[x], the rows by which traces have left their own at column x
+// (Geometry.TraceShift); the width is len(shift).
+func (r PixelRule) Measure(ctx context.Context, light, variance []float32, flags []Flag, expected []float32, shift []float64) (*PixelResponse, error) {
 	width := len(shift)
-	if width == 0 || len(light)%width != 0 || len(variance) != len(light) || (flags != nil && len(flags) != len(light)) {
+	if width == 0 || len(light)%width != 0 || len(variance) != len(light) || (flags != nil && len(flags) != len(light)) || (expected != nil && len(expected) != len(light)) {
 		return nil, fmt.Errorf("pixel response: %d values and %d variances are not the same whole rows of %d", len(light), len(variance), width)
 	}
 	m, err := newPixelMeasure(r, light, variance, flags, shift)
 	if err != nil {
 		return nil, err
 	}
+	m.expect(expected)
 	// The second round leaves out what the first found to deviate.
 	for range 2 {
 		if err := m.round(ctx); err != nil {

@@ -56,7 +56,7 @@ func (m *pixelMeasure) response() *PixelResponse {
 		case m.flags[i] != 0 || m.light[i] != m.light[i]:
 		default:
 			deviation := float64(m.light[i])/float64(s) - 1
-			noise := e * e
+			noise := e*e + prior*float64(m.averaged[i])
 			share := 1.0
 			// A pixel that is out of the ordinary tells nothing about the others, nor
 			// they about it.

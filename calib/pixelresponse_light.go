@@ -3,7 +3,6 @@ package calib
 import (
 	"context"
 	"math"
-	"slices"
 )
 
 // pixelMeasure is the work of PixelRule.Measure.
@@ -11,11 +10,15 @@ type pixelMeasure struct {
 	rule            PixelRule
 	width, height   int
 	light, variance []float32
-	bad             []bool // left out of S
+	expected        []float32 // shape along x, 0 where too little to divide by
+	bad             []bool    // left out of S
 	flags           []Flag
 	straight, back  *RowShift
 	smooth          []float32 // S, on the detector
-	scatter         float64
+	// averaged is, by trace row and column, the part of one pixel's variance that is
+	// left in S.
+	averaged []float32
+	scatter  float64
 }
 
 func newPixelMeasure(r PixelRule, light, variance []float32, flags []Flag, shift []float64) (*pixelMeasure, error) {
@@ -30,7 +33,7 @@ func newPixelMeasure(r PixelRule, light, variance []float32, flags []Flag, shift
 	for x, t := range shift {
 		opposite[x] = -t
 	}
-	m.smooth = make([]float32, len(light))
+	m.smooth, m.averaged = make([]float32, len(light)), make([]float32, len(light))
 	var err error
 	if m.straight, err = NewRowShift(shift, m.height); err != nil {
 		return nil, err
@@ -41,44 +44,68 @@ func newPixelMeasure(r PixelRule, light, variance []float32, flags []Flag, shift
 	return m, nil
 }
 
+// leastExpected is the part of the brightest that can be divided by: below it, what a
+// small error of the geometry does is no longer small.
+const leastExpected = 1e-3
+
+// expect keeps the shape, with 1 for its brightest.
+func (m *pixelMeasure) expect(expected []float32) {
+	m.expected = make([]float32, len(m.light))
+	brightest := float32(0)
+	for _, v := range expected {
+		brightest = max(brightest, v)
+	}
+	for i := range m.expected {
+		switch {
+		case expected == nil:
+			m.expected[i] = 1
+		case expected[i] > leastExpected*brightest:
+			m.expected[i] = expected[i] / brightest
+		}
+	}
+}
+
 // round computes S from the pixels that are not bad, and adds those that deviate.
 func (m *pixelMeasure) round(ctx context.Context) error {
-	filled := slices.Clone(m.light)
-	m.fill(filled)
-	trace := make([]float32, len(filled))
-	m.shift(trace, filled, m.straight)
-	level := m.levels(trace)
-	shape := filled // reused
-	m.average(shape, trace, level)
+	ratio := make([]float32, len(m.light))
+	for i, e := range m.expected {
+		if e > 0 && !m.bad[i] {
+			ratio[i] = m.light[i] / e
+		}
+	}
+	m.fill(ratio)
+	trace := make([]float32, len(ratio))
+	m.shift(trace, ratio, m.straight)
+	level, columns := m.levels(trace)
+	shape := ratio // reused
+	rows := m.average(shape, trace, level)
 	for y := range m.height {
 		if err := ctx.Err(); err != nil {
 			return err
 		}
-		m.smoothRow(shape[y*m.width:(y+1)*m.width], y, level)
+		m.smoothRow(shape[y*m.width:(y+1)*m.width], y, level[y], rows[y], columns[y])
 	}
 	m.shift(m.smooth, shape, m.back)
+	for i, e := range m.expected {
+		m.smooth[i] *= e
+	}
 	m.judge()
 	return nil
 }
 
-// fill interpolates bad pixels along their row, and from the rows around where a
-// whole row is bad.
+// fill interpolates along their row the pixels that are bad or have nothing to be
+// divided by.
 func (m *pixelMeasure) fill(values []float32) {
 	var fill Fill
 	marks := make([]Flag, m.width)
 	for y := range m.height {
 		for x := range marks {
 			marks[x] = 0
-			if m.bad[y*m.width+x] {
+			if i := y*m.width + x; m.bad[i] || m.expected[i] == 0 {
 				marks[x] = BadPixel
 			}
 		}
 		row := values[y*m.width : (y+1)*m.width]
-		for x, v := range row {
-			if v != v {
-				row[x] = 0
-			}
-		}
 		fill.Plan(marks, BadPixel)
 		fill.Signal(row)
 	}
@@ -96,29 +123,41 @@ func (m *pixelMeasure) shift(dst, src []float32, shift *RowShift) {
 	}
 }
 
-// levels is the mean of each straightened row.
-func (m *pixelMeasure) levels(trace []float32) []float64 {
-	level := make([]float64, m.height)
+// levels is the mean of each straightened row, weighted by the light expected, and how
+// many columns of equal weight it is worth.
+func (m *pixelMeasure) levels(trace []float32) (level, columns []float64) {
+	level, columns = make([]float64, m.height), make([]float64, m.height)
 	for y := range level {
-		for _, v := range trace[y*m.width : (y+1)*m.width] {
-			level[y] += float64(v) / float64(m.width)
+		var weight, square float64
+		for x, v := range trace[y*m.width : (y+1)*m.width] {
+			w := float64(m.expected[y*m.width+x])
+			level[y] += w * float64(v)
+			weight += w
+			square += w * w
+		}
+		if weight > 0 {
+			level[y] /= weight
+			columns[y] = weight * weight / square
 		}
 	}
-	return level
+	return level, columns
 }
 
 // average divides each row by its level and averages over the rows around that have
-// about the same; dst is in units of the level.
-func (m *pixelMeasure) average(dst, trace []float32, level []float64) {
+// about the same; dst is in units of the level. It returns how many rows of equal
+// weight each average is worth.
+func (m *pixelMeasure) average(dst, trace []float32, level []float64) (rows []float64) {
 	sum := make([]float64, m.width)
+	rows = make([]float64, len(level))
 	for y := range level {
 		clear(sum)
-		total := 0.0
+		total, square := 0.0, 0.0
 		for near := max(0, y-m.rule.Rows); near <= min(m.height-1, y+m.rule.Rows); near++ {
 			if near != y && !(math.Abs(level[near]-level[y]) <= m.rule.Like*math.Abs(level[y])) {
 				continue
 			}
 			total += level[near]
+			square += level[near] * level[near]
 			for x, v := range trace[near*m.width : (near+1)*m.width] {
 				sum[x] += float64(v)
 			}
@@ -129,14 +168,19 @@ func (m *pixelMeasure) average(dst, trace []float32, level []float64) {
 				dst[y*m.width+x] = float32(v / total)
 			}
 		}
+		if square > 0 {
+			rows[y] = total * total / square
+		}
 	}
+	return rows
 }
 
 // smoothRow smooths the shape of a row along the trace and gives it its level back.
 // The curve follows the noise of the shape, which is the pixels' own responses more
-// than photons: alike for all pixels, in units of the light.
-func (m *pixelMeasure) smoothRow(shape []float32, y int, level []float64) {
-	if !(level[y] > 0) {
+// than photons: alike for all pixels, in units of the light, but where the field
+// ends and light is faint, whose pixels must not rule the others.
+func (m *pixelMeasure) smoothRow(shape []float32, y int, level, rows, columns float64) {
+	if !(level > 0) {
 		clear(shape)
 		return
 	}
@@ -144,12 +188,16 @@ func (m *pixelMeasure) smoothRow(shape []float32, y int, level []float64) {
 	const floor = 0.3 // of the row's mean
 	for x, v := range shape {
 		value[x] = float64(v)
-		variance[x] = math.Pow(max(float64(v), floor), 2)
+		if m.expected[y*m.width+x] > 0 {
+			variance[x] = math.Pow(max(float64(v), floor), 2)
+		}
 	}
 	if _, err := (Smoother{m.rule.Period}).Smooth(value, variance, value, variance); err != nil {
-		return // fewer columns than a curve needs: the row stands for itself
+		clear(shape) // no columns: there is no light here
+		return
 	}
 	for x := range shape {
-		shape[x] = float32(value[x] * level[y])
+		shape[x] = float32(value[x] * level)
+		m.averaged[y*m.width+x] = float32(variance[x]/(value[x]*value[x]*rows) + 1/columns)
 	}
 }

@@ -44,9 +44,9 @@ func DefaultFlatRule() FlatRule {
 // sums that strips add to, so that the flat cube is never held.
 //
 // One pass over the flat is exact but for voxels that are missing in some rows of an
-// element and not in others: their share times the deviation of b (and of colour)
-// from 1 stays in s: 1e-4 for 1 % of them. A second pass after Solve takes the
-// solution as its template and leaves 1e-6. The first may be made on every tenth row.
+// element and not in others: what b and colour deviate there from their mean stays in
+// s, 1e-3 at worst for 2 % of them. A second pass after Solve takes the solution as
+// its template and leaves 1e-5. The first may be made on every tenth row.
 type FlatFit struct {
 	rule                   FlatRule
 	elements, rows, voxels int

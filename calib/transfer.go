@@ -12,6 +12,9 @@ type Pair struct {
 	A, B  []float32
 	Flags []Flag
 	Width int
+	// Dark marks biases: m is 0 in them, whatever their levels, which a tenth of an ADU
+	// off would look like light.
+	Dark bool
 }
 
 // Transfer is an amplifier's gain and read noise with their standard errors.
@@ -43,9 +46,9 @@ func DefaultTransferRule() TransferRule { return TransferRule{Clip: 4} }
 const minPixels = 1000
 
 // Measure fits the pairs of one amplifier: flats, and biases, without which the read
-// noise is an extrapolation. Each row's difference is freed of its mean, and each
-// pair's of what is in proportion to the light: levels and lamps drift. An error
-// wraps ErrNoLight where the pairs do not fix a gain.
+// noise is an extrapolation. What the frames of a pair differ by in level (biases) or in
+// proportion to the light (flats) is taken out, and struck pixels are left out. An
+// error wraps ErrNoLight where the pairs do not fix a gain.
 func (r TransferRule) Measure(pairs []Pair) (Transfer, error) {
 	var samples []transferSample
 	for i, p := range pairs {
@@ -63,7 +66,7 @@ func (r TransferRule) Measure(pairs []Pair) (Transfer, error) {
 		sums = r.sums(samples, line)
 		next, ok := sums.solve()
 		if !ok {
-			return Transfer{}, fmt.Errorf("photon transfer: %w: the pairs hold one level of light only; add pairs of biases, or of another exposure", ErrNoLight)
+			return Transfer{}, fmt.Errorf("photon transfer: %w: the pairs hold one level of light only; add pairs of biases and of flats", ErrNoLight)
 		}
 		settled := math.Abs(next.slope-line.slope) <= 1e-6*math.Abs(next.slope) && math.Abs(next.level-line.level) <= 1e-6*math.Abs(next.level)
 		line = next
@@ -71,8 +74,8 @@ func (r TransferRule) Measure(pairs []Pair) (Transfer, error) {
 			break
 		}
 	}
-	if !(line.slope > 0) {
-		return Transfer{}, fmt.Errorf("photon transfer: %w: the variance does not grow with the light", ErrNoLight)
+	if slopeError := math.Sqrt(sums.w / sums.determinant()); !(line.slope > 5*slopeError) {
+		return Transfer{}, fmt.Errorf("photon transfer: %w: the variance does not grow with the light; add pairs of flats", ErrNoLight)
 	}
 	return line.transfer(sums, samples), nil
 }

@@ -5,9 +5,16 @@ import (
 	"slices"
 )
 
-// transferSample is a pixel of a pair: its mean m, in ADU, and half the squared
+// transferSample is a pixel of a pair: the light m around it, in ADU, half the squared
 // difference, whose expectation is the variance.
 type transferSample struct{ m, half float64 }
+
+// transferReach is the number of pixels of a row on each side that are averaged for a
+// pixel's light, so that its own read noise does not decide what variance is expected
+// of it: a straight line through points with errors in both directions is too flat.
+// Its photon noise would do no harm: half the squared difference of two Poisson numbers
+// is expected to be their mean, whatever that came out as.
+const transferReach = 15
 
 // transferLine is v(m) = level + slope m in ADU^2. floor keeps it positive.
 type transferLine struct{ level, slope float64 }
@@ -17,49 +24,76 @@ const leastVariance = 1.0 / 12
 
 func (l transferLine) at(m float64) float64 { return max(l.level+l.slope*m, leastVariance) }
 
-// samples appends the pair's good pixels.
+// struckSigmas: a difference beyond so many sigmas is a struck pixel. Those left below
+// it are for the clip of the fit.
+const struckSigmas = 6
+
+// samples appends the pair's good pixels. Differences are freed of what the two frames'
+// levels (biases) or lamps (flats) differ by; rows keep what is left of their own
+// levels, since a row's mean would bring the noise of its bright pixels to the dim.
 func (p *Pair) samples(dst []transferSample) []transferSample {
-	type pixel struct{ m, d, correction float64 }
-	var pixels []pixel
-	row := make([]float32, 0, p.Width)
-	scratch := make([]float32, p.Width)
-	for y := 0; y < len(p.A); y += p.Width {
-		row = row[:0]
-		start := len(pixels)
-		for i := y; i < y+p.Width; i++ {
-			a, b := float64(p.A[i]), float64(p.B[i])
-			if (p.Flags == nil || p.Flags[i] == 0) && a-b == a-b {
-				pixels = append(pixels, pixel{m: (a + b) / 2, d: a - b})
-				row = append(row, float32(a-b))
-			}
-		}
-		n := float64(len(row))
-		if n < 5 {
-			pixels = pixels[:start]
-			continue
-		}
-		mean := Clip{Sigmas: 4}.Mean(row, scratch).Mean
-		for i := range pixels[start:] {
-			pixels[start+i].d -= mean
-			pixels[start+i].correction = n / (n - 1)
+	scaled := make([]float32, len(p.A)) // differences in about equal units
+	for i := range scaled {
+		a, b := float64(p.A[i]), float64(p.B[i])
+		scaled[i] = float32(math.NaN())
+		if p.Flags == nil || p.Flags[i] == 0 {
+			scaled[i] = float32((a - b) / p.unit(a+b))
 		}
 	}
-	// What the lamp's drift leaves within rows.
-	var top, bottom, mean float64
-	for _, q := range pixels {
-		mean += q.m / float64(len(pixels))
+	level, scatter := RobustLevel(scaled, make([]float32, len(scaled)))
+	kept := make([]bool, len(scaled))
+	var differences, weights float64
+	for i, v := range scaled {
+		kept[i] = math.Abs(float64(v)-level) <= struckSigmas*max(scatter, 0.5)
+		if kept[i] {
+			differences += float64(p.A[i] - p.B[i])
+			weights += p.part(i)
+		}
 	}
-	for _, q := range pixels {
-		top += q.d * (q.m - mean)
-		bottom += (q.m - mean) * (q.m - mean)
+	if !(weights > 0) {
+		return dst
 	}
-	drift := 0.0
-	if bottom > 0 {
-		drift = top / bottom
+	drift := differences / weights
+	for start := 0; start < len(p.A); start += p.Width {
+		dst = p.row(dst, kept[start:start+p.Width], start, drift)
 	}
-	for _, q := range pixels {
-		d := q.d - drift*(q.m-mean)
-		dst = append(dst, transferSample{q.m, d * d / 2 * q.correction})
+	return dst
+}
+
+// unit is what the noise of a difference grows with.
+func (p *Pair) unit(sum float64) float64 {
+	if p.Dark {
+		return 1
+	}
+	return math.Sqrt(max(sum/2, 1))
+}
+
+// part is what a pixel's difference is in proportion to.
+func (p *Pair) part(i int) float64 {
+	if p.Dark {
+		return 1
+	}
+	return float64(p.A[i]+p.B[i]) / 2
+}
+
+// row appends the kept pixels of the row that begins at pixel start.
+func (p *Pair) row(dst []transferSample, kept []bool, start int, drift float64) []transferSample {
+	var places []int
+	sum := []float64{0}
+	for i, ok := range kept {
+		if ok {
+			places = append(places, start+i)
+			sum = append(sum, sum[len(sum)-1]+float64(p.A[start+i]+p.B[start+i])/2)
+		}
+	}
+	for k, i := range places {
+		d := float64(p.A[i]-p.B[i]) - drift*p.part(i)
+		m := 0.0
+		if !p.Dark {
+			reach := min(transferReach, k, len(places)-1-k) // symmetric: a slope does no harm
+			m = (sum[k+reach+1] - sum[k-reach]) / float64(2*reach+1)
+		}
+		dst = append(dst, transferSample{m, d * d / 2})
 	}
 	return dst
 }
@@ -144,7 +178,7 @@ func (r TransferRule) sums(samples []transferSample, line transferLine) transfer
 		if 2*x.half > r.Clip*r.Clip*2*v {
 			continue
 		}
-		s.add(x.m, x.half/kept*1, 1/(2*v*v))
+		s.add(x.m, x.half/kept, 1/(2*v*v))
 		s.kept++
 	}
 	return s
