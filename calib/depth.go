@@ -23,10 +23,10 @@ type depthLevel struct {
 
 // DepthPoint is one size of cells.
 type DepthPoint struct {
-	Side  int     // rows and voxels of a cell
-	Cells int     // whole cells
-	SN    float64 // expected: 1/rms of the photon noise of a cell
-	RMS   float64 // of the cells' deviations
+	Side     int     // rows and voxels of a cell
+	Cells    int     // whole cells
+	SN       float64 // expected: 1/rms of the photon noise of a cell
+	RMS      float64 // of the cells' deviations
 	RMSError float64 // standard error of RMS
 	// Excess is the rms beyond the noise, sqrt(RMS^2 - 1/SN^2), 0 where it is none.
 	Excess, ExcessError float64
