@@ -118,6 +118,16 @@ func (f *Field) Faint(skyMag float64) {
 	f.Scene = &rehearse.Scene{SeeingFWHMArcsec: 1, Sky: rehearse.Sky{ContinuumABArcsec2: &skyMag}}
 }
 
+// Embedded is the field of an embedded profile, target and scene as they are.
+func Embedded(profile, target, scene string) (*Field, error) {
+	f, err := load(profile, target)
+	if err != nil {
+		return nil, err
+	}
+	f.Scene, err = rehearse.LoadScene(scene)
+	return f, err
+}
+
 func load(profile, target string) (*Field, error) {
 	p, err := instrument.Load(profile)
 	if err != nil {

@@ -67,3 +67,22 @@ func AtLeast(what string, measured, limit float64, n int) Finding {
 		OK: n > 0 && measured >= limit,
 	}
 }
+
+// MustFail demands that a check's findings do not all hold: a test of the test.
+func MustFail(what string, list []Finding) Finding {
+	failed := 0
+	for _, f := range list {
+		if !f.OK {
+			failed++
+		}
+	}
+	return Finding{
+		What: what, Required: "fails", Measured: fmt.Sprintf("%d of %d figures fail", failed, len(list)), N: len(list),
+		OK: failed > 0,
+	}
+}
+
+// Stated is a measurement of which no figure is required.
+func Stated(what string, measured float64, n int) Finding {
+	return Finding{What: what, Required: "stated", Measured: fmt.Sprintf("%.5g", measured), N: n, OK: n > 0}
+}

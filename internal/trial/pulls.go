@@ -30,6 +30,13 @@ func (m *Moments) Std() float64 {
 	return math.Sqrt(max(0, m.square/float64(m.N)-mean*mean))
 }
 
+// Merge takes the samples of another set.
+func (m *Moments) Merge(o Moments) {
+	m.N += o.N
+	m.sum += o.sum
+	m.square += o.square
+}
+
 // Pulls are (cube - truth)/sigma of the good voxels, sigma the root of VARIANCE.
 type Pulls struct {
 	All Moments
@@ -60,6 +67,14 @@ func NewPulls(c *Cube, truth, counts []float32, scale float64) (*Pulls, error) {
 		p.ByCounts[min(at, 9)].Add(pull)
 	}
 	return p, nil
+}
+
+// Merge takes the pulls of another night of the same field.
+func (p *Pulls) Merge(o *Pulls) {
+	p.All.Merge(o.All)
+	for i := range p.ByCounts {
+		p.ByCounts[i].Merge(o.ByCounts[i])
+	}
 }
 
 // usable leaves out voxels without a truth or counts, which are not numbers where
@@ -114,8 +129,12 @@ func judgePulls(what string, m *Moments) []Finding {
 }
 
 // PullsOf compares the noisy night of a Pair with its truth.
-func (n *Night) PullsOf(scale float64) (*Pulls, *Cube, error) {
-	c, err := ReadCube(n.CubePath(Noisy))
+func (n *Night) PullsOf(scale float64) (*Pulls, *Cube, error) { return n.PullsOfNight(Noisy, scale) }
+
+// PullsOfNight compares the night named name with the truth of the noisy one, from
+// which it differs in its seed.
+func (n *Night) PullsOfNight(name string, scale float64) (*Pulls, *Cube, error) {
+	c, err := ReadCube(n.CubePath(name))
 	if err != nil {
 		return nil, nil, err
 	}
@@ -132,7 +151,7 @@ func (n *Night) PullsOf(scale float64) (*Pulls, *Cube, error) {
 }
 
 // GoodFindings judge how many voxels are good: 99 % of those in coded rows whose
-// wavelength falls on the detector, and `all` of all.
+// wavelength falls on the detector, and `all` of all; 0 to state that part only.
 func GoodFindings(name string, c *Cube, seq *sequence.Sequence, all float64) []Finding {
 	covered := Covered(seq)
 	var good, wanted, both int
@@ -147,8 +166,10 @@ func GoodFindings(name string, c *Cube, seq *sequence.Sequence, all float64) []F
 			}
 		}
 	}
-	return []Finding{
-		AtLeast(name+": good part of the covered voxels", float64(both)/float64(wanted), 0.99, wanted),
-		AtLeast(name+": good part of all voxels", float64(good)/float64(len(c.Flags)), all, len(c.Flags)),
+	ofAll, what := float64(good)/float64(len(c.Flags)), name+": good part of all voxels"
+	total := Stated(what, ofAll, len(c.Flags))
+	if all > 0 {
+		total = AtLeast(what, ofAll, all, len(c.Flags))
 	}
+	return []Finding{AtLeast(name+": good part of the covered voxels", float64(both)/float64(wanted), 0.99, wanted), total}
 }

@@ -82,6 +82,18 @@ func TestPullsOfAFaintNight(t *testing.T) {
 	require.False(t, trial.AllHold(small.Findings("faint night")), "VARIANCE a tenth too small passes")
 }
 
+// The slit scan's variances come from smoothed light: its pulls are normal as well.
+func TestPullsOfASlitScan(t *testing.T) {
+	f, err := trial.Square()
+	require.NoError(t, err)
+	f.SetCode("slit-scan", 47, 0)
+	night, _, err := f.Pair(context.Background(), t.TempDir(), 5)
+	require.NoError(t, err)
+	pulls, _, err := night.PullsOf(1)
+	require.NoError(t, err)
+	hold(t, pulls.Findings("slit scan"))
+}
+
 // The scatter over seeds is what VARIANCE says, element voxel by element voxel. In
 // the tests with 20 seeds, `make validate` takes 200.
 func TestScatterOverSeeds(t *testing.T) {

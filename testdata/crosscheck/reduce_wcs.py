@@ -21,9 +21,10 @@ edge counts with what is left of it.
 Lines. Every line is a Gaussian integrated over the voxel, at the predicted
 wavelength of each place plus one shift for all places, which is what is fitted:
 amplitudes and a sloping continuum are free at each place, the width is common.
-Lines whose windows overlap are fitted together; of blends closer than 0.8 FWHM
-no fit can part the shifts, and they get one in common. Lines of the sky are
-fitted in the mean of all good places, lines of a source where it is bright.
+Lines whose windows overlap are fitted together; no fit can part blends closer than
+0.8 FWHM: they get one shift in common, and the scene's ratio of fluxes. Lines of a source are
+fitted where it is bright, with the sky's lines beside them held at their
+wavelengths; lines of the sky in the mean of all places where no such source is.
 """
 
 import json
@@ -122,34 +123,53 @@ def star_distance(cube, case, star):
     return float(fit.x[0]), float(fit.x[1])
 
 
+def distance(cube, source):
+    return np.hypot(cube.east - source["east_arcsec"], cube.north - source["north_arcsec"])
+
+
+def bright(cube, case, source):
+    """The places where a source of lines is bright."""
+    r, seeing = distance(cube, source), case["seeing"]
+    if source["kind"] == "ring":
+        return abs(r - source["radius_arcsec"]) < 0.4 * np.hypot(source["width_arcsec"], seeing)
+    return r < source.get("radius_arcsec", 0) + 0.5 * seeing
+
+
+def clear(cube, case, source):
+    """The places out of its light."""
+    size = source.get("radius_arcsec", 0) * (4 if source["kind"] == "galaxy" else 1)
+    return distance(cube, source) > size + 1.5 * np.hypot(source.get("width_arcsec", 0), case["seeing"])
+
+
 class Emission:
     """The lines of a source, or of the sky (source None)."""
 
     def __init__(self, cube, case, scene, source):
-        self.lines = [l["wavelength_nm"] for l in (source or scene["sky"]).get("lines", [])]
+        of_sky = scene.get("sky", {}).get("lines", [])
+        sky = [l["wavelength_nm"] for l in of_sky]
+        # PyYAML reads 3e-19, without a dot, as text.
+        self.flux = {l["wavelength_nm"]: float(l.get("flux_w_m2", l.get("flux_w_m2_arcsec2"))) for l in (source["lines"] if source else of_sky)}
         places = np.isfinite(cube.white)
         if source is None:
-            weight = cube.weight * places
-            with np.errstate(invalid="ignore", divide="ignore"):
-                # One spectrum: the plain mean, so that no line is weighed down.
-                n = (weight > 0).sum(axis=(1, 2))
-                self.spectra = (np.nansum(np.where(weight > 0, cube.signal, 0), axis=(1, 2)) / n)[None, :]
-            self.factor = np.ones(1)
+            self.lines, self.beside, self.factor = sky, [], np.ones(1)
+            for other in scene.get("sources", []):
+                if other.get("lines"):
+                    places &= clear(cube, case, other)
+            assert places.sum() > 100, "too few places without a nebula"
+            at = np.where(places, cube.signal, np.nan)
+            # One spectrum: the plain mean, so that no line is weighed down.
+            self.spectra = np.nanmean(at.reshape(len(at), -1), axis=1)[None, :]
             return
-        dx, dy = cube.east - source["east_arcsec"], cube.north - source["north_arcsec"]
-        r, seeing = np.hypot(dx, dy), case["seeing"]
-        if source["kind"] == "ring":
-            places &= abs(r - source["radius_arcsec"]) < 0.4 * np.hypot(source["width_arcsec"], seeing)
-        else:
-            places &= r < source.get("radius_arcsec", 0) + 0.5 * seeing
-        at = np.flatnonzero(places)
-        at = at[:: max(1, at.size // case.get("places", 150))]
-        spectra = cube.signal.reshape(cube.signal.shape[0], -1)[:, at].T
+        self.lines, self.beside = [l["wavelength_nm"] for l in source["lines"]], sky
+        at = np.flatnonzero(places & bright(cube, case, source))
+        at = at[:: max(1, at.size // 1500)]
+        self.spectra = cube.signal.reshape(cube.signal.shape[0], -1)[:, at].T
         velocity = source.get("velocity", {})
         pa = np.radians(velocity.get("pa_deg", 0))
+        dx, dy = cube.east - source["east_arcsec"], cube.north - source["north_arcsec"]
         along = (dx * np.sin(pa) + dy * np.cos(pa)).ravel()[at]
         b = (velocity.get("systemic_km_s", 0) + velocity.get("gradient_km_s_arcsec", 0) * along) / LIGHT_KM_S
-        self.spectra, self.factor = spectra, np.sqrt((1 + b) / (1 - b))
+        self.factor = np.sqrt((1 + b) / (1 - b))
 
     def groups(self, cube):
         """Lines whose windows overlap, and which shift each of them has."""
@@ -157,7 +177,7 @@ class Emission:
         groups = []
         for line in inside:
             at = cube.voxel(line * self.factor.mean())
-            if groups and at - groups[-1][-1][1] < WINDOW:
+            if groups and at - groups[-1][-1][1] < 2 * WINDOW:
                 groups[-1].append((line, at))
             else:
                 groups.append([(line, at)])
@@ -182,15 +202,21 @@ def line_shifts(cube, case, emission, group):
         return None
     # A place counts by its light: the noise grows with it.
     spectra = spectra / np.sqrt(np.maximum(spectra.mean(axis=1), 1e-3 * spectra.mean()))[:, None]
-    predicted = [cube.voxel(line * factor) for line, _ in group]
+    predicted = [(emission.flux[line], k, cube.voxel(line * factor)) for (line, _), k in zip(group, which)]
+    held = [np.full(len(spectra), at) for at in map(cube.voxel, emission.beside) if low - 3 < at < high + 2]
+    strongest = max(flux for flux, _, _ in predicted)
+
+    def profile(at, sigma):
+        d = l[None, :] - at[:, None]
+        return ndtr((d + 0.5) / sigma) - ndtr((d - 0.5) / sigma)
 
     def design(p):
         sigma = p[-1]
         columns = [np.ones((len(spectra), l.size)), np.broadcast_to((l - l.mean()) / l.size, (len(spectra), l.size))]
-        for k, at in zip(which, predicted):
-            d = l[None, :] - at[:, None] - p[k]
-            columns.append(ndtr((d + 0.5) / sigma) - ndtr((d - 0.5) / sigma))
-        return np.stack(columns, axis=2)
+        templates = np.zeros((shifts, len(spectra), l.size))
+        for flux, k, at in predicted:
+            templates[k] += flux / strongest * profile(at + p[k], sigma)
+        return np.stack(columns + list(templates) + [profile(at, sigma) for at in held], axis=2)
 
     def residual(p):
         a = design(p)
