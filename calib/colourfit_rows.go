@@ -14,19 +14,27 @@ const colourScaleNM = 100
 // of mirrors beyond it.
 const endElements = 4
 
+// curveScaleE keeps Q near the size of the light.
+const curveScaleE = 1e5
+
 // AddRow adds detector row y: the term T with its variance, flags (pixels with any
 // are left out; nil for none), and light[j], the light of element j in that row, of
 // the same exposure time as T: the decoded coded flat. A row without light fixes the
 // pedestal, if there is one, and else nothing.
+//
+// Weights are 1/variance averaged over the pixels around: a variance taken from T
+// itself is small where noise made T small, and would draw the fit down (0.4 e of 3 e
+// rms in a dark frame).
 func (f *ColourFit) AddRow(y int, term, variance []float32, flags []Flag, light [][]float32) {
 	r := f.regressors(y, light)
 	use := f.usable(term, variance, flags, r[0])
+	weights := smoothWeights(variance, use)
 	terms := f.terms()
 	for x, ok := range use {
 		if !ok {
 			continue
 		}
-		w := 1 / float64(variance[x])
+		w := weights[x]
 		t := float64(term[x])
 		f.square += w * t * t
 		f.light += r[0][x] * r[0][x] * w
@@ -41,10 +49,33 @@ func (f *ColourFit) AddRow(y int, term, variance []float32, flags []Flag, light 
 	}
 }
 
-// terms is the number of unknowns.
+// smoothWeights are 1/variance, averaged over the pixels in use within weightReach.
+func smoothWeights(variance []float32, use []bool) []float64 {
+	const weightReach = 15
+	sum, count := make([]float64, len(use)+1), make([]float64, len(use)+1)
+	for x, ok := range use {
+		sum[x+1], count[x+1] = sum[x], count[x]
+		if ok {
+			sum[x+1] += float64(variance[x])
+			count[x+1]++
+		}
+	}
+	weights := make([]float64, len(use))
+	for x, ok := range use {
+		if first, last := max(0, x-weightReach), min(len(use), x+weightReach+1); ok {
+			weights[x] = (count[last] - count[first]) / (sum[last] - sum[first])
+		}
+	}
+	return weights
+}
+
+// terms is the number of unknowns: the colour's, the pedestal, the curve.
 func (f *ColourFit) terms() int {
 	n := f.rule.Degree + 1
 	if f.rule.Pedestal {
+		n++
+	}
+	if f.rule.Curve {
 		n++
 	}
 	return n
@@ -70,7 +101,24 @@ func (f *ColourFit) regressors(y int, light [][]float32) [][]float64 {
 	}
 	f.addBeyond(r, y, light, f.rule.Before, -1)
 	f.addBeyond(r, y, light, f.rule.After, +1)
+	if f.rule.Curve {
+		addCurve(r[f.terms()-1], light)
+	}
 	return r
+}
+
+// addCurve is -Q.
+func addCurve(dst []float64, light [][]float32) {
+	parity := [2][]float64{make([]float64, len(dst)), make([]float64, len(dst))}
+	for j, row := range light {
+		sum := parity[j%2]
+		for x, v := range row {
+			sum[x] += float64(v)
+		}
+	}
+	for x, even := range parity[0] {
+		dst[x] = -2 * even * parity[1][x] / curveScaleE
+	}
 }
 
 // addElement adds weight f l^k of an element at place j in the field.
@@ -212,6 +260,10 @@ func (f *ColourFit) term(solution *mat.VecDense, inverse *mat.SymDense) *ColourT
 	}
 	if f.rule.Pedestal {
 		out.Pedestal = solution.AtVec(powers)
+	}
+	if f.rule.Curve {
+		out.Curve = solution.AtVec(n-1) / curveScaleE
+		out.CurveError = math.Sqrt(inverse.At(n-1, n-1)*widen) / curveScaleE
 	}
 	return out
 }

@@ -29,7 +29,8 @@ type Persistence struct {
 }
 
 // Add adds pixels of one frame: residual with its variance, and before; pixels with
-// flags, of either frame, are left out (flags may be nil).
+// flags, of either frame, are left out (flags may be nil). Variances are averaged over
+// neighbours, as in ColourFit.
 func (p *PersistenceFit) Add(residual, variance, before []float32, flags []Flag) {
 	clip := p.Clip
 	if clip == 0 {
@@ -40,26 +41,31 @@ func (p *PersistenceFit) Add(residual, variance, before []float32, flags []Flag)
 	if math.IsNaN(level) {
 		return
 	}
+	use := make([]bool, len(residual))
 	for i, r := range residual {
 		if flags != nil && flags[i] != 0 || !(variance[i] > 0) {
 			continue
 		}
-		x, d := float64(before[i]), float64(r)
 		// What the frame before explains must not be clipped: a bright pixel lags.
-		noise := math.Sqrt(max(float64(variance[i]), scatter*scatter))
-		if !(d-level > -clip*noise && d-level < clip*noise+mostPersistence*math.Abs(x)) {
-			continue
-		}
-		w := 1 / float64(variance[i])
-		f := &p.frame
-		f.w += w
-		f.x += w * x
-		f.r += w * d
-		f.xx += w * x * x
-		f.xr += w * x * d
-		f.rr += w * d * d
-		p.pixels++
+		d := float64(r) - level
+		limit := clip * math.Sqrt(max(float64(variance[i]), scatter*scatter))
+		use[i] = d > -limit && d < limit+mostPersistence*math.Abs(float64(before[i]))
 	}
+	for i, w := range smoothWeights(variance, use) {
+		if use[i] {
+			p.frame.add(w, float64(before[i]), float64(residual[i]))
+			p.pixels++
+		}
+	}
+}
+
+func (s *regressionSums) add(w, x, r float64) {
+	s.w += w
+	s.x += w * x
+	s.r += w * r
+	s.xx += w * x * x
+	s.xr += w * x * r
+	s.rr += w * r * r
 }
 
 // mostPersistence is the largest share that is believed possible.
