@@ -70,7 +70,7 @@ const lineFloor = 0.003
 
 // rejectSigmas: a centroid beyond so many of its errors has no say (biweight), nor has
 // a line (strayLines).
-const rejectSigmas = 6
+const rejectSigmas = 6.0
 
 func newPrior(g *Geometry, half float64) prior {
 	e1 := g.D[0] * half
@@ -187,14 +187,13 @@ func (f *arcFit) judgeLines(mean, variance []float64) {
 		}
 	}
 	stray, corrected := strayLines(places)
-	var off, err2 []float64
+	var sum, own, n float64
 	for i, p := range places {
 		if f.dropped[p.line] = stray[i]; !stray[i] {
-			off, err2 = append(off, math.Abs(corrected[i])), append(err2, p.variance)
+			sum, own, n = sum+corrected[i]*corrected[i], own+p.variance, n+1
 		}
 	}
-	n := float64(len(off))
-	f.lineVar = max(lineFloor*lineFloor, excess(off, err2)*n/max(1, n-lineTerms))
+	f.lineVar = max(lineFloor*lineFloor, (sum-own)/max(1, n-lineTerms))
 }
 
 // lineMeans fills in the residuals and returns their weighted mean for each line,

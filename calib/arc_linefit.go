@@ -9,9 +9,9 @@ import (
 
 // lineFit is the least-squares fit of a group of lines:
 //
-//	s(x) = a + b (x - first x) + sum_k flux_k int_{x-1/2}^{x+1/2} N(centre_k, sigma_k).
+//	s(x) = background + sum_k flux_k int_{x-1/2}^{x+1/2} N(centre_k, sigma_k).
 //
-// Parameters: a, b, then flux, centre, sigma of each line.
+// Parameters: background, then flux, centre, sigma of each line.
 type lineFit struct {
 	x, value, weight []float64
 	start, p         []float64
@@ -22,9 +22,9 @@ type lineFit struct {
 	row              []float64     // scratch: their derivatives
 }
 
-func (f *lineFit) flux(k int) float64   { return f.p[2+3*k] }
-func (f *lineFit) centre(k int) float64 { return f.p[3+3*k] }
-func (f *lineFit) sigma(k int) float64  { return f.p[4+3*k] }
+func (f *lineFit) flux(k int) float64   { return f.p[1+3*k] }
+func (f *lineFit) centre(k int) float64 { return f.p[2+3*k] }
+func (f *lineFit) sigma(k int) float64  { return f.p[3+3*k] }
 
 // feltSigmas is how far a line is felt: 2e-5 of its peak.
 const feltSigmas = 4.7
@@ -43,7 +43,7 @@ func (r PeakRule) newLineFit(s *blockSpectrum, at []float64) *lineFit {
 			f.x, f.value, f.weight = append(f.x, float64(x)), append(f.value, s.signal[x]), append(f.weight, 1/s.variance[x])
 		}
 	}
-	f.start = append(f.start, 0, 0)
+	f.start = append(f.start, 0)
 	signal := s.bridged()
 	for _, c := range at {
 		height := max(signal[int(c)], 0)
@@ -94,7 +94,7 @@ func (f *lineFit) solve() bool {
 func (f *lineFit) withoutWeakest(at []float64) []float64 {
 	weakest := 0
 	for k := range f.lines {
-		if f.p[2+3*k] < f.p[2+3*weakest] {
+		if f.p[1+3*k] < f.p[1+3*weakest] {
 			weakest = k
 		}
 	}
@@ -115,7 +115,7 @@ func (f *lineFit) invert() bool {
 // settled: centres and widths move by less than 1e-4 px.
 func (f *lineFit) settled(next []float64) bool {
 	for k := range f.lines {
-		if math.Abs(next[3+3*k]-f.p[3+3*k]) > 1e-4 || math.Abs(next[4+3*k]-f.p[4+3*k]) > 1e-4 {
+		if math.Abs(next[2+3*k]-f.p[2+3*k]) > 1e-4 || math.Abs(next[3+3*k]-f.p[3+3*k]) > 1e-4 {
 			return false
 		}
 	}
@@ -126,8 +126,8 @@ func (f *lineFit) settled(next []float64) bool {
 // isLine, whose limits are closer.
 func (f *lineFit) confine(p []float64) {
 	for k := range f.lines {
-		c, s := &p[3+3*k], &p[4+3*k]
-		*c = min(max(*c, f.start[3+3*k]-2*f.expected), f.start[3+3*k]+2*f.expected)
+		c, s := &p[2+3*k], &p[3+3*k]
+		*c = min(max(*c, f.start[2+3*k]-2*f.expected), f.start[2+3*k]+2*f.expected)
 		*s = min(max(*s, 0.4*f.expected), 2*f.expected)
 	}
 }
@@ -142,9 +142,9 @@ func (f *lineFit) misfit(p []float64) float64 {
 }
 
 func (f *lineFit) model(p []float64, x float64) float64 {
-	model := p[0] + p[1]*(x-f.x[0])
+	model := p[0]
 	for k := range f.lines {
-		if flux, c, s := p[2+3*k], p[3+3*k], p[4+3*k]; math.Abs(x-c) < feltSigmas*s+0.5 {
+		if flux, c, s := p[1+3*k], p[2+3*k], p[3+3*k]; math.Abs(x-c) < feltSigmas*s+0.5 {
 			model += flux * (phi((x+0.5-c)/s) - phi((x-0.5-c)/s))
 		}
 	}
@@ -169,17 +169,17 @@ func (f *lineFit) normal() (*mat.SymDense, *mat.VecDense) {
 
 // derive sets active and row at x and returns the model.
 func (f *lineFit) derive(x float64) float64 {
-	f.active, f.row = append(f.active[:0], 0, 1), append(f.row[:0], 1, x-f.x[0])
-	model := f.p[0] + f.p[1]*(x-f.x[0])
+	f.active, f.row = append(f.active[:0], 0), append(f.row[:0], 1)
+	model := f.p[0]
 	for k := range f.lines {
-		flux, c, s := f.p[2+3*k], f.p[3+3*k], f.p[4+3*k]
+		flux, c, s := f.p[1+3*k], f.p[2+3*k], f.p[3+3*k]
 		if math.Abs(x-c) >= feltSigmas*s+0.5 {
 			continue
 		}
 		a, b := (x-0.5-c)/s, (x+0.5-c)/s
 		share, na, nb := phi(b)-phi(a), normalDensity(a), normalDensity(b)
 		model += flux * share
-		f.active = append(f.active, 2+3*k, 3+3*k, 4+3*k)
+		f.active = append(f.active, 1+3*k, 2+3*k, 3+3*k)
 		f.row = append(f.row, share, flux*(na-nb)/s, flux*(a*na-b*nb)/s)
 	}
 	return model
@@ -204,7 +204,7 @@ func dampedStep(m *mat.SymDense, right *mat.VecDense, damping float64) (*mat.Vec
 // peak reports line k. Errors grow with the misfit around the line: bright lines show
 // the pixels' unequal response, which the variances do not know.
 func (f *lineFit) peak(k int) Peak {
-	c := f.p[3+3*k]
+	c := f.p[2+3*k]
 	chi2, n := 0.0, 0.0
 	for i, x := range f.x {
 		if math.Abs(x-c) <= f.expected*sigmasPerFWHM {
@@ -215,8 +215,8 @@ func (f *lineFit) peak(k int) Peak {
 	// Of n samples, some 3 parameters' worth are spent.
 	scale := math.Sqrt(max(1, chi2/max(1, n-3)))
 	err := func(i int) float64 { return scale * math.Sqrt(f.inverse.At(i, i)) }
-	return Peak{X: c, XErr: err(3 + 3*k), Flux: f.flux(k), FluxErr: err(2 + 3*k),
-		FWHM: sigmasPerFWHM * f.p[4+3*k], FWHMErr: sigmasPerFWHM * err(4+3*k)}
+	return Peak{X: c, XErr: err(2 + 3*k), Flux: f.flux(k), FluxErr: err(1 + 3*k),
+		FWHM: sigmasPerFWHM * f.p[3+3*k], FWHMErr: sigmasPerFWHM * err(3+3*k)}
 }
 
 // phi is the normal distribution.

@@ -21,12 +21,14 @@ type ArcMatch struct {
 	Found, Listed float64
 }
 
-// What makes a match certain. Any two lines can be matched by shift and scale, so
-// the least number is well above 2. Chance matches one line in six (a dense lamp has
-// a line each 8 px, within +-matchPx): a wrong pair rarely explains half of them.
+// What makes a match certain. Any two lines can be matched by shift and scale, and
+// four by the dispersion's four parameters: the fifth is the first to prove anything.
+// Chance matches one line in eight (a dense lamp has a line each 10 px, within
+// +-matchPx): a wrong pair rarely explains half of them (none of 500 drawn lamps in
+// TestWrongLamps).
 const (
-	leastLines    = 4
-	leastFraction = 0.5  // Score over min(Found, Listed)
+	leastLines    = 5
+	leastFraction = 0.55 // Score over min(Found, Listed)
 	mostRivalry   = 0.75 // Second over Score
 )
 
@@ -34,8 +36,8 @@ const (
 // what the pair does not know (an element's width off by 0.1 % is 0.1 px at the end
 // of the field).
 const (
-	shiftStep = 0.25 // px
-	matchPx   = 0.75
+	shiftStep = 0.2 // px
+	matchPx   = 0.6
 	apartPx   = 3.0
 )
 
@@ -45,49 +47,60 @@ type feature struct {
 	clean bool // one line, whose neighbours cannot move it by more than blendPx
 }
 
-// blendPx is the largest shift by an unresolved neighbour that a line may have and
-// enter the fit.
-const blendPx = 0.01
+const (
+	// mergeFWHM: nearer lines, in FWHM, make one peak.
+	mergeFWHM = 1.2
+	// disturbFWHM: nearer ones make two peaks, but may move each other where one is
+	// too weak to be seen.
+	disturbFWHM = 1.5
+	// blendPx is the largest shift by a neighbour that a line may have and enter the
+	// fit.
+	blendPx = 0.01
+	// intensityTrust is the factor by which the ratio of two listed intensities may be
+	// off: three each way for both.
+	intensityTrust = 9
+)
 
-// intensityTrust is the factor by which the ratio of two listed intensities may be
-// off: three each way for both.
-const intensityTrust = 9
-
-// features merges lines closer than 1.5 FWHM.
+// features merges lines that make one peak.
 func features(lines []LampLine, pxPerNM, fwhmPx float64) []feature {
 	lines = slices.Clone(lines)
 	slices.SortFunc(lines, func(a, b LampLine) int { return cmp.Compare(a.VacuumNM, b.VacuumNM) })
 	var list []feature
 	for i := 0; i < len(lines); {
 		n := 1
-		for i+n < len(lines) && (lines[i+n].VacuumNM-lines[i+n-1].VacuumNM)*pxPerNM < 1.5*fwhmPx {
+		for i+n < len(lines) && (lines[i+n].VacuumNM-lines[i+n-1].VacuumNM)*pxPerNM < mergeFWHM*fwhmPx {
 			n++
 		}
-		list = append(list, merge(lines[i:i+n], pxPerNM))
+		brightest := slices.MaxFunc(lines[i:i+n], func(a, b LampLine) int { return cmp.Compare(a.Intensity, b.Intensity) })
+		f := feature{nm: brightest.VacuumNM, clean: disturbance(brightest, lines, pxPerNM, fwhmPx) <= blendPx}
+		if !f.clean {
+			f.nm = centre(lines[i : i+n])
+		}
+		list = append(list, f)
 		i += n
 	}
 	return list
 }
 
-// merge makes a feature at the brightest of some lines.
-func merge(lines []LampLine, pxPerNM float64) feature {
-	brightest := slices.MaxFunc(lines, func(a, b LampLine) int { return cmp.Compare(a.Intensity, b.Intensity) })
-	f := feature{nm: brightest.VacuumNM, clean: true}
-	moved, total := 0.0, 0.0
+// disturbance bounds the shift of a line by the listed lines about it, px.
+func disturbance(line LampLine, lines []LampLine, pxPerNM, fwhmPx float64) float64 {
+	moved := 0.0
 	for _, l := range lines {
-		ratio := intensityTrust * l.Intensity / brightest.Intensity
-		if l != brightest {
-			moved += math.Abs(l.VacuumNM-f.nm) * pxPerNM * ratio / (1 + ratio)
-		}
-		total += l.Intensity
-	}
-	if f.clean = moved <= blendPx; !f.clean {
-		f.nm = 0
-		for _, l := range lines {
-			f.nm += l.VacuumNM * l.Intensity / total
+		if d := math.Abs(l.VacuumNM-line.VacuumNM) * pxPerNM; d < disturbFWHM*fwhmPx {
+			ratio := intensityTrust * l.Intensity / line.Intensity
+			moved += d * ratio / (1 + ratio)
 		}
 	}
-	return f
+	return moved
+}
+
+// centre is the mean wavelength, weighted by intensity.
+func centre(lines []LampLine) float64 {
+	sum, total := 0.0, 0.0
+	for _, l := range lines {
+		sum, total = sum+l.VacuumNM*l.Intensity, total+l.Intensity
+	}
+	return sum / total
 }
 
 // matcher looks for the shift and scale that explain the tracks of all frames, by
@@ -170,7 +183,7 @@ func (m *matcher) match() (ArcMatch, error) {
 			best = i
 		}
 	}
-	shift, scale := v.plateau(best)
+	shift, scale := m.sharpen(v.shift(best%v.shifts), v.scale(best/v.shifts))
 	result := ArcMatch{ShiftPx: shift, Scale: scale,
 		Score: v.count[best] / float64(m.frames), Found: float64(len(m.tracks)) / float64(m.frames)}
 	for i, n := range v.count {
@@ -182,19 +195,30 @@ func (m *matcher) match() (ArcMatch, error) {
 	return result, m.judge(result)
 }
 
-// plateau is the middle of the cells around the best one with at least 98 % of its
-// votes: a maximum is flat.
-func (v *votes) plateau(best int) (shift, scale float64) {
-	var n float64
-	for dk := -3; dk <= 3; dk++ {
-		for ds := -3; ds <= 3; ds++ {
-			k, s := best/v.shifts+dk, best%v.shifts+ds
-			if k >= 0 && k < v.scales && s >= 0 && s < v.shifts && v.count[k*v.shifts+s] >= 0.98*v.count[best] {
-				shift, scale, n = shift+v.shift(s), scale+v.scale(k), n+1
+// sharpen fits shift and scale to the pairs within matchPx of a cell, by least
+// squares, three times: many cells around the true pair have as many votes.
+func (m *matcher) sharpen(shift, scale float64) (float64, float64) {
+	for range 3 {
+		var n, sd, sdd, sx, sdx float64
+		for i := range m.tracks {
+			t := &m.tracks[i]
+			miss, at := math.Inf(1), 0.0
+			for _, f := range m.features[t.frame] {
+				if d := t.x - m.place(t.element, f.nm, scale) - shift; math.Abs(d) < math.Abs(miss) {
+					miss, at = d, m.nominal.disperse(f.nm-m.nominal.L_c)
+				}
+			}
+			if math.Abs(miss) <= matchPx {
+				n, sd, sdd, sx, sdx = n+1, sd+at, sdd+at*at, sx+miss, sdx+at*miss
 			}
 		}
+		det := n*sdd - sd*sd
+		if !(det > 1e-9*n*sdd) {
+			return shift, scale
+		}
+		shift, scale = shift+(sdd*sx-sd*sdx)/det, scale+(n*sdx-sd*sx)/det
 	}
-	return shift / n, scale / n
+	return shift, scale
 }
 
 // differs tells whether a change of the pair moves half of the lines by more than
@@ -247,7 +271,7 @@ func (m *matcher) judge(r ArcMatch) error {
 		return fail("at best %.1f of the %.1f lines seen in a frame fit the %.1f listed: is this the lamp, and this the instrument?", r.Score, r.Found, r.Listed)
 	case r.Second > mostRivalry*r.Score:
 		return fail("the lines are ambiguous: one match explains %.1f of them in a frame, another %.1f", r.Score, r.Second)
-	case math.Abs(r.ShiftPx) > m.rule.ShiftPx-matchPx || math.Abs(r.Scale) > m.rule.Scale:
+	case math.Abs(r.ShiftPx) > m.rule.ShiftPx || math.Abs(r.Scale) > m.rule.Scale:
 		return fail("the best match lies at the end of the search, %.1f px and %.2f %% off nominal", r.ShiftPx, 100*r.Scale)
 	}
 	return nil

@@ -26,45 +26,101 @@ const (
 	leastForMedian = lineTerms + 3
 )
 
-// strayLines tells which lines lie off the dispersion that most of them agree on: by
-// least median of squares (Rousseeuw 1984, J. Am. Stat. Assoc. 79, 871), which up to
-// half of the lines cannot mislead, wherever they lie. A line with an unlisted one
-// close to it is off by tenths of a pixel in all its thousand centroids alike; least
-// squares would bend the dispersion to it. scatter is that of the others, free of
-// their own errors as far as a median tells. With few lines none stray.
+// strayLines tells which lines lie off the dispersion that most of them agree on. A
+// line with an unlisted one close to it is off by tenths of a pixel in all its
+// thousand centroids alike; least squares would bend the dispersion to it.
+//
+// The half that agrees best is found by least median of squares (Rousseeuw 1984, J.
+// Am. Stat. Assoc. 79, 871), which up to half of the lines cannot mislead, wherever
+// they lie. The others then join one by one, the one that the joined predict best
+// first, while it lies within rejectSigmas of the prediction's error (forward search:
+// Hadi and Simonoff 1993, J. Am. Stat. Assoc. 88, 1264): a line far from the others is
+// predicted badly and is heard. corrected are the residuals of the joined lines' fit.
+// With few lines none stray.
 func strayLines(places []linePlace) (stray []bool, corrected []float64) {
-	stray, corrected = make([]bool, len(places)), make([]float64, len(places))
-	for i, p := range places {
-		corrected[i] = p.mean
-	}
+	stray = make([]bool, len(places))
 	if len(places) < leastForMedian {
+		corrected, _ = predictLines(places, stray)
 		return stray, corrected
 	}
+	half, scale := agreeingHalf(places)
+	for i := range stray {
+		stray[i] = !half[i]
+	}
+	for {
+		var leverage []float64
+		corrected, leverage = predictLines(places, stray)
+		next, least := -1, rejectSigmas
+		for i, p := range places {
+			own := max(scale*scale, p.variance+lineFloor*lineFloor)
+			if t := math.Abs(corrected[i]) / math.Sqrt(own*(1+leverage[i])); stray[i] && t < least {
+				next, least = i, t
+			}
+		}
+		if next < 0 {
+			return stray, corrected
+		}
+		stray[next] = false
+	}
+}
+
+// agreeingHalf is the set of lines within the least median of squares, with
+// Rousseeuw's scale, corrected for few lines.
+func agreeingHalf(places []linePlace) (half []bool, scale float64) {
 	best, order := math.Inf(1), (len(places)+lineTerms+1)/2
-	var bestFit [lineTerms]float64
-	squares := make([]float64, len(places))
+	half = make([]bool, len(places))
+	squares, sorted := make([]float64, len(places)), make([]float64, len(places))
 	eachSet(len(places), func(set [lineTerms]int) {
 		c, ok := cubicThrough(places, set)
 		if !ok {
 			return
 		}
 		for i, p := range places {
-			r := p.mean - cubicAt(c, p.u)
+			r := p.mean - c.at(p.u)
 			squares[i] = r * r
 		}
-		slices.Sort(squares)
-		if m := squares[order-1]; m < best {
-			best, bestFit = m, c
+		copy(sorted, squares)
+		slices.Sort(sorted)
+		if m := sorted[order-1]; m < best {
+			best = m
+			for i, s := range squares {
+				half[i] = s <= m
+			}
 		}
 	})
-	// Rousseeuw's scale with its correction for few lines.
-	scale := madPerSigma * (1 + 5/float64(len(places)-lineTerms)) * math.Sqrt(best)
+	return half, madPerSigma * (1 + 5/float64(len(places)-lineTerms)) * math.Sqrt(best)
+}
+
+// predictLines fits a cubic to the lines that do not stray, all alike, and returns the
+// residuals of all and the variance of their prediction over that of a line.
+func predictLines(places []linePlace, stray []bool) (residuals, leverage []float64) {
+	residuals, leverage = make([]float64, len(places)), make([]float64, len(places))
+	normal, right := mat.NewSymDense(lineTerms, nil), mat.NewVecDense(lineTerms, nil)
+	rows := make([]*mat.VecDense, len(places))
 	for i, p := range places {
-		corrected[i] = p.mean - cubicAt(bestFit, p.u)
-		limit := max(3*scale, rejectSigmas*math.Sqrt(p.variance+lineFloor*lineFloor))
-		stray[i] = math.Abs(corrected[i]) > limit
+		rows[i] = mat.NewVecDense(lineTerms, []float64{1, p.u, p.u * p.u, p.u * p.u * p.u})
+		if !stray[i] {
+			normal.SymRankOne(normal, 1, rows[i])
+			right.AddScaledVec(right, p.mean, rows[i])
+		}
 	}
-	return stray, corrected
+	var chol mat.Cholesky
+	c := mat.NewVecDense(lineTerms, nil)
+	if !chol.Factorize(normal) || chol.SolveVecTo(c, right) != nil {
+		// Fewer than four lines: what they are off by is all there is.
+		for i, p := range places {
+			residuals[i] = p.mean
+		}
+		return residuals, leverage
+	}
+	solved := mat.NewVecDense(lineTerms, nil)
+	for i, p := range places {
+		residuals[i] = p.mean - mat.Dot(rows[i], c)
+		if chol.SolveVecTo(solved, rows[i]) == nil {
+			leverage[i] = mat.Dot(rows[i], solved)
+		}
+	}
+	return residuals, leverage
 }
 
 // eachSet visits all sets of lineTerms of n, or mostSets drawn from a fixed seed.
@@ -88,28 +144,31 @@ func eachSet(n int, visit func([lineTerms]int)) {
 	}
 }
 
-// cubicThrough passes a cubic through four lines; ok is false where two of them are
-// so close that it would be wild.
-func cubicThrough(places []linePlace, set [lineTerms]int) (c [lineTerms]float64, ok bool) {
-	m, right := mat.NewDense(lineTerms, lineTerms, nil), mat.NewVecDense(lineTerms, nil)
+// cubic is Newton's form of the cubic through four points.
+type cubic struct{ u, c [lineTerms]float64 }
+
+// cubicThrough passes a cubic through four lines by divided differences; ok is false
+// where two of them lie together.
+func cubicThrough(places []linePlace, set [lineTerms]int) (f cubic, ok bool) {
 	for i, k := range set {
-		power := 1.0
-		for a := range lineTerms {
-			m.Set(i, a, power)
-			power *= places[k].u
+		f.u[i], f.c[i] = places[k].u, places[k].mean
+	}
+	for order := 1; order < lineTerms; order++ {
+		for i := lineTerms - 1; i >= order; i-- {
+			d := f.u[i] - f.u[i-order]
+			if d == 0 {
+				return f, false
+			}
+			f.c[i] = (f.c[i] - f.c[i-1]) / d
 		}
-		right.SetVec(i, places[k].mean)
 	}
-	var solved mat.VecDense
-	if solved.SolveVec(m, right) != nil {
-		return c, false
-	}
-	for a := range c {
-		c[a] = solved.AtVec(a)
-	}
-	return c, true
+	return f, true
 }
 
-func cubicAt(c [lineTerms]float64, u float64) float64 {
-	return c[0] + u*(c[1]+u*(c[2]+u*c[3]))
+func (f *cubic) at(u float64) float64 {
+	v := f.c[lineTerms-1]
+	for i := lineTerms - 2; i >= 0; i-- {
+		v = f.c[i] + (u-f.u[i])*v
+	}
+	return v
 }

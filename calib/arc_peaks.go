@@ -106,6 +106,7 @@ func (r PeakRule) complete() PeakRule {
 // findIn lists the lines of a block in order of x.
 func (r PeakRule) findIn(s *blockSpectrum) []Peak {
 	candidates := r.candidates(s)
+	s.takePedestal(candidates, 3*r.FWHMPx)
 	var peaks []Peak
 	for i := 0; i < len(candidates); {
 		// A group: neighbours whose wings touch are fitted together.

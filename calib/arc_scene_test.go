@@ -35,15 +35,16 @@ func (s *lampScene) spot(dst []float64, dx, row, dispersed, electrons float64) {
 	}
 	sigma := s.fwhm / 2.354820045
 	share := func(edge, at float64) float64 { return 0.5 * math.Erfc((at-edge)/(math.Sqrt2*sigma)) }
-	for py := int(y - 5*sigma - 1); py <= int(y+5*sigma+1); py++ {
-		if py < 0 || py >= s.rows {
-			continue
-		}
-		down := share(float64(py)+0.5, y) - share(float64(py)-0.5, y)
-		for px := int(x - 5*sigma - 1); px <= int(x+5*sigma+1); px++ {
-			if px >= 0 && px < s.columns {
-				dst[py*s.columns+px] += electrons * down * (share(float64(px)+0.5, x) - share(float64(px)-0.5, x))
-			}
+	x0, y0 := int(x-5*sigma-1), int(y-5*sigma-1)
+	var across [30]float64
+	for i := range across {
+		px := float64(x0 + i)
+		across[i] = share(px+0.5, x) - share(px-0.5, x)
+	}
+	for py := max(y0, 0); py <= min(int(y+5*sigma+1), s.rows-1); py++ {
+		down := electrons * (share(float64(py)+0.5, y) - share(float64(py)-0.5, y))
+		for px := max(x0, 0); px <= min(int(x+5*sigma+1), s.columns-1); px++ {
+			dst[py*s.columns+px] += down * across[px-x0]
 		}
 	}
 }

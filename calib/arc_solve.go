@@ -126,6 +126,9 @@ func (s *solver) refine() error {
 		if !s.fit.solve() {
 			return &ArcError{What: "the lines do not fix the model", Match: s.match}
 		}
+		if err := s.judgeFit(); err != nil {
+			return err
+		}
 		p := s.fit.p
 		predict = func(t *track, nm float64) float64 {
 			row := s.designRow(t.element, 0, 0, nm, h)
@@ -135,6 +138,25 @@ func (s *solver) refine() error {
 			s.tracks[i].x = s.tracks[i].crossing(s.nominal.Y_c, p.AtVec(5), p.AtVec(6))
 		}
 		tolerance = max(assignLast, tolerance/1.5)
+	}
+	return nil
+}
+
+// mostLineError is the largest error of lines, px, of a true identification: by
+// chance they scatter by half of assignLast.
+const mostLineError = 0.1
+
+// judgeFit refuses a fit that too few lines agree on.
+func (s *solver) judgeFit() error {
+	kept := 0
+	for _, dropped := range s.fit.dropped {
+		if !dropped {
+			kept++
+		}
+	}
+	lineError := math.Sqrt(s.fit.lineVar)
+	if kept < leastLines || 2*kept < s.fit.lines || lineError > mostLineError {
+		return &ArcError{What: fmt.Sprintf("%d of %d identified lines agree on a dispersion, to %.3f px: is this the lamp?", kept, s.fit.lines, lineError), Match: s.match}
 	}
 	return nil
 }

@@ -58,10 +58,12 @@ func followTracks(frame int, f *ArcFrame, slant func(y float64) float64) []track
 }
 
 // linkBlock appends a block's peaks to the tracks that end nearest, the closest pairs
-// first; the others begin tracks.
+// first, but those of single peaks last: they may be cosmic rays. Peaks without a track
+// begin one.
 func linkBlock(tracks *[]track, frame, element int, block []Peak, straight func(*Peak) float64) {
 	type pair struct {
 		track, peak int
+		single      int // 1 for a track of one peak
 		distance    float64
 	}
 	var pairs []pair
@@ -72,11 +74,13 @@ func linkBlock(tracks *[]track, frame, element int, block []Peak, straight func(
 			rows := block[k].middleRow() - end.middleRow()
 			d := math.Abs(straight(&block[k]) - straight(end) - t.lean(straight)*rows)
 			if d <= min(linkSlope*rows+0.3, linkReach) {
-				pairs = append(pairs, pair{i, k, d})
+				pairs = append(pairs, pair{i, k, 1 / len(t.peaks), d})
 			}
 		}
 	}
-	slices.SortStableFunc(pairs, func(a, b pair) int { return cmp.Compare(a.distance, b.distance) })
+	slices.SortStableFunc(pairs, func(a, b pair) int {
+		return cmp.Or(cmp.Compare(a.single, b.single), cmp.Compare(a.distance, b.distance))
+	})
 	used := make([]bool, len(block))
 	grown := make([]bool, len(*tracks))
 	for _, p := range pairs {

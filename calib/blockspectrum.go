@@ -1,6 +1,10 @@
 package calib
 
-import "math"
+import (
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+)
 
 // blockSpectrum is the sum of a block of detector rows, [column]: electrons, their
 // variance (0 where the block has no value) and whether a sample was saturated.
@@ -82,4 +86,66 @@ func blockMedians(e *Exposure, firstRow, lastRow int) []float64 {
 		}
 	}
 	return m
+}
+
+// leastPedestal is the part of the columns that must be free of lines for a pedestal
+// to be taken off.
+const leastPedestal = 0.1
+
+// takePedestal subtracts a parabola along x through the columns farther than reach
+// from every line (least squares, repeated with the biweight): dark, stray and leaked
+// light, which is smooth. A group of lines then needs a constant only; a slope of its
+// own would take a weak line beside a bright one.
+func (b *blockSpectrum) takePedestal(lines []float64, reach float64) {
+	free := b.freeColumns(lines, reach)
+	if float64(len(free)) < leastPedestal*float64(len(b.signal)) || len(free) < 10 {
+		return
+	}
+	half := float64(len(b.signal)) / 2
+	var c [3]float64
+	at := func(x int) float64 {
+		u := (float64(x) - half) / half
+		return c[0] + u*(c[1]+u*c[2])
+	}
+	for pass := range 6 {
+		normal, right := mat.NewSymDense(3, nil), mat.NewVecDense(3, nil)
+		for _, x := range free {
+			w := 1 / b.variance[x]
+			if pass > 0 {
+				w *= biweight((b.signal[x]-at(x))*math.Sqrt(w), 1)
+			}
+			u := (float64(x) - half) / half
+			row := [3]float64{1, u, u * u}
+			for i := range row {
+				right.SetVec(i, right.AtVec(i)+w*row[i]*b.signal[x])
+				for k := i; k < len(row); k++ {
+					normal.SetSym(i, k, normal.At(i, k)+w*row[i]*row[k])
+				}
+			}
+		}
+		var chol mat.Cholesky
+		var solved mat.VecDense
+		if !chol.Factorize(normal) || chol.SolveVecTo(&solved, right) != nil {
+			return
+		}
+		copy(c[:], solved.RawVector().Data)
+	}
+	for x := range b.signal {
+		b.signal[x] -= at(x)
+	}
+}
+
+// freeColumns are those with a value, farther than reach from every line.
+func (b *blockSpectrum) freeColumns(lines []float64, reach float64) []int {
+	var free []int
+	next := 0
+	for x := range b.signal {
+		for next < len(lines) && float64(x)-lines[next] > reach {
+			next++
+		}
+		if b.variance[x] > 0 && (next == len(lines) || lines[next]-float64(x) > reach) {
+			free = append(free, x)
+		}
+	}
+	return free
 }
