@@ -8,8 +8,8 @@ import (
 	"github.com/stretchr/testify/require"
 )
 
-// flatScene is a coded lamp flat on the cube's grid with all that it is made of.
-type flatScene struct {
+// codedFlat is a coded lamp flat on the cube's grid with all that it is made of.
+type codedFlat struct {
 	elements, rows, voxels int
 	lamp                   []float64 // known
 	colour                 []float64 // what the lamp really has besides
@@ -19,10 +19,10 @@ type flatScene struct {
 	level, noise           float64
 }
 
-// newFlatScene: slit function 2 % rms and smooth, efficiency 1.5 % rms in waves of 60
+// newCodedFlat: slit function 2 % rms and smooth, efficiency 1.5 % rms in waves of 60
 // to 150 voxels, a lamp that is 8 % bluer at one end than known, and ends of the slit.
-func newFlatScene(seed uint64) *flatScene {
-	s := &flatScene{elements: 41, rows: 60, voxels: 300, level: 800, noise: 37}
+func newCodedFlat(seed uint64) *codedFlat {
+	s := &codedFlat{elements: 41, rows: 60, voxels: 300, level: 800, noise: 37}
 	rng := rand.New(rand.NewPCG(seed, 6))
 	wave := func() func(a, b float64) float64 {
 		var p [4][3]float64
@@ -59,7 +59,7 @@ func newFlatScene(seed uint64) *flatScene {
 }
 
 // strip makes rows y0..y0+h-1; a voxel is missing with probability missing.
-func (s *flatScene) strip(rng *rand.Rand, y0, h int, missing float64) (signal, variance []float32, flags []Flag) {
+func (s *codedFlat) strip(rng *rand.Rand, y0, h int, missing float64) (signal, variance []float32, flags []Flag) {
 	n := s.voxels * h * s.elements
 	signal, variance, flags = make([]float32, n), make([]float32, n), make([]Flag, n)
 	for l := range s.voxels {
@@ -78,7 +78,7 @@ func (s *flatScene) strip(rng *rand.Rand, y0, h int, missing float64) (signal, v
 	return signal, variance, flags
 }
 
-func (s *flatScene) fit(t testing.TB, rng *rand.Rand, passes, h int, missing float64) *Response {
+func (s *codedFlat) fit(t testing.TB, rng *rand.Rand, passes, h int, missing float64) *Response {
 	t.Helper()
 	f, err := NewFlatFit(DefaultFlatRule(), s.elements, s.rows, s.voxels, s.lamp, s.lit)
 	require.NoError(t, err)
@@ -100,7 +100,7 @@ func (s *flatScene) fit(t testing.TB, rng *rand.Rand, passes, h int, missing flo
 // truth is the response less what the mean and the common colour cannot tell: its
 // mean over the fully lit field is 1, and so is the mean over elements and rows at
 // each voxel but for what a parabola over the band leaves.
-func (s *flatScene) truth() []float64 {
+func (s *codedFlat) truth() []float64 {
 	out := make([]float64, s.rows*s.elements*s.voxels)
 	sum, n := 0.0, 0.0
 	for y := range s.rows {
@@ -124,7 +124,7 @@ func (s *flatScene) truth() []float64 {
 type flatMiss struct{ n, mean, square, stated, factor float64 }
 
 // compare the response with the truth in fully lit rows.
-func (s *flatScene) compare(r *Response, lit bool) flatMiss {
+func (s *codedFlat) compare(r *Response, lit bool) flatMiss {
 	var m flatMiss
 	truth := s.truth()
 	for y := range s.rows {
@@ -158,7 +158,7 @@ func (s *flatScene) compare(r *Response, lit bool) flatMiss {
 // parts in 1000, as stated; the flux is conserved; what the variance gains is far
 // below a tenth of a voxel's photon variance of S/N 60.
 func TestFlatFit(t *testing.T) {
-	s := newFlatScene(3)
+	s := newCodedFlat(3)
 	r := s.fit(t, rand.New(rand.NewPCG(1, 2)), 2, 7, 0.01)
 	m := s.compare(r, true)
 	t.Logf("period %.0f, chi2 %.3f; %.0f voxels: rms error %.5f, stated %.5f, mean response %.7f", r.Period, r.Chi2, m.n, math.Sqrt(m.square), math.Sqrt(m.stated), m.factor)
@@ -188,7 +188,7 @@ func TestFlatFitVarianceMonteCarlo(t *testing.T) {
 	rng := rand.New(rand.NewPCG(4, 4))
 	var square, stated float64
 	for trial := range uint64(trials) {
-		s := newFlatScene(20 + trial)
+		s := newCodedFlat(20 + trial)
 		m := s.compare(s.fit(t, rng, 1, s.rows, 0), true)
 		square += m.square
 		stated += m.stated
@@ -200,7 +200,7 @@ func TestFlatFitVarianceMonteCarlo(t *testing.T) {
 // A second pass takes out what voxels missing in some rows leave in the first, and
 // how strips are cut changes nothing, bit for bit.
 func TestFlatFitPassesAndStrips(t *testing.T) {
-	s := newFlatScene(5)
+	s := newCodedFlat(5)
 	s.noise = 0.01 // the fit alone
 	worst := map[int]float64{}
 	for _, passes := range []int{1, 2} {
@@ -241,7 +241,7 @@ func TestFlatFitRefusesAndFlags(t *testing.T) {
 	require.ErrorContains(t, err, "voxel 3")
 
 	// A lamp that stayed dark.
-	s := newFlatScene(1)
+	s := newCodedFlat(1)
 	s.level = 0
 	f, err := NewFlatFit(rule, s.elements, s.rows, s.voxels, s.lamp, s.lit)
 	require.NoError(t, err)
@@ -250,7 +250,7 @@ func TestFlatFitRefusesAndFlags(t *testing.T) {
 
 	// An element of which nothing was seen, voxels without lamp, and a blocked piece
 	// of the slit are LowFlat; the others are not.
-	s = newFlatScene(1)
+	s = newCodedFlat(1)
 	for l := range 20 {
 		s.lamp[l] = 0
 	}
