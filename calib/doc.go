@@ -15,6 +15,12 @@
 //   - A voxel lies between two edges along x, on one trace row; Resampler fills it.
 //   - A weight is the share of a pixel's value that goes into a voxel.
 //   - A Flag is a set of bits; it travels with weights: see reachLimit.
+//   - A PixelResponse belongs to the detector's pixels and is taken out of frames, or
+//     of decoded pixels; a Response belongs to elements, trace rows and voxels and is
+//     taken out of the cube. Both have a mean of 1: what is common to all is the
+//     lamp's.
+//   - A ColourTerm is a small part of the light that grows smoothly with wavelength:
+//     what open neighbours lend each other, or what closed mirrors leak.
 //
 // # Invariants
 //
