@@ -50,6 +50,11 @@ func (d *density) touch(from, to int) {
 	}
 }
 
+// leastFraction of a source's light is what a mirror must get to be drawn: what
+// is left out of the tails of an exponential disc of ten mirrors' scale is 3e-5 of
+// it, in frames and truth alike.
+const leastFraction = 3e-9
+
 // collect puts on d the light of emitters that the mirrors first..last of a row
 // send on. keep, where not nil, chooses among them.
 func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64) float64, m *mirrorRow, first, last int, keep func(u int) bool) {
@@ -64,7 +69,7 @@ func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64
 			if emitters[e].band == nil {
 				continue
 			}
-			if p := emitters[e].image.fraction(column, row); p > 0 {
+			if p := emitters[e].image.fraction(column, row); p > leastFraction {
 				d.touch(emitters[e].band.add(d.h, p, m.start, across))
 			}
 		}
@@ -81,7 +86,7 @@ func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64
 			if len(emitters[e].lines) == 0 {
 				continue
 			}
-			if p := emitters[e].image.fraction(column, row); p > 0 {
+			if p := emitters[e].image.fraction(column, row); p > leastFraction {
 				o.addLines(d, &emitters[e], efficiency, p, m, u)
 			}
 		}

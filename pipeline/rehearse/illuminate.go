@@ -93,12 +93,15 @@ func (r *rehearsal) paintSource(ctx context.Context, s *strip, at int, d *drawn,
 		if d.signal != nil && r.sources[at].sky && b < r.beams.n {
 			r.paintVoxels(p, s, b, d)
 		}
-		r.finish(p.objects, p.sky, s, b)
+		for k := range p.objects {
+			p.objects[k].add(&p.sky[k])
+		}
+		r.dim(p.objects, s, b)
 		for layer := range layers {
 			if rows[0][layer] == nil {
 				continue
 			}
-			light := r.layer(p, layer, s, &r.sources[at], b)
+			light := r.layer(p, layer, p.objects, r.sources[at].light.skyLines, s, &r.sources[at], b)
 			slab := make([]float32, height*r.optics.columns)
 			for k := range rows {
 				row := slab[k*r.optics.columns : (k+1)*r.optics.columns]
@@ -135,14 +138,6 @@ func (r *rehearsal) gather(p *painter, s *strip, from *source, b int) {
 	}
 }
 
-// finish adds the sky to the objects and applies the instrument's efficiency.
-func (r *rehearsal) finish(objects, sky []density, s *strip, b int) {
-	for k := range objects {
-		objects[k].add(&sky[k])
-	}
-	r.dim(objects, s, b)
-}
-
 // dim applies the instrument's efficiency to a beam's light.
 func (r *rehearsal) dim(light []density, s *strip, b int) {
 	if r.maps == nil || r.beams.list[b].element < 0 {
@@ -160,8 +155,9 @@ func (r *rehearsal) across(b int) float64 {
 	return r.optics.geometry.across(float64(m.first+m.last) / 2)
 }
 
-// layer gives a layer of the beam whose finished light is in p.objects.
-func (r *rehearsal) layer(p *painter, layer int, s *strip, from *source, b int) []density {
+// layer gives a layer of a beam's light; lines are the sky's lines in it. The
+// result may lie in p.other.
+func (r *rehearsal) layer(p *painter, layer int, light []density, lines []emitter, s *strip, from *source, b int) []density {
 	across := r.across(b)
 	switch layer {
 	case layerColour, layerNeighbour:
@@ -170,18 +166,18 @@ func (r *rehearsal) layer(p *painter, layer int, s *strip, from *source, b int) 
 			w = r.beside
 		}
 		for k, m := range s.mirrors {
-			w.times(&p.other[k], &p.objects[k], m, across)
+			w.times(&p.other[k], &light[k], m, across)
 		}
 		return p.other
 	case layerLines:
 		for k, m := range s.mirrors {
 			first, last, keep := r.beams.mirrors(b, m.w)
-			r.optics.collect(&p.other[k], from.light.skyLines, from.light.efficiency, m, first, last, keep)
+			r.optics.collect(&p.other[k], lines, from.light.efficiency, m, first, last, keep)
 		}
 		r.dim(p.other, s, b)
 		return p.other
 	}
-	return p.objects
+	return light
 }
 
 // paintVoxels draws the truth of element j from what gather left.

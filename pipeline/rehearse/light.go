@@ -59,6 +59,20 @@ type viewing struct {
 	seeing, du, dw float64
 }
 
+// viewed is the sky's light as another step sees it: sources fall on other
+// mirrors, their spectra are the same.
+func (o *optics) viewed(l *light, s *Scene, v viewing) *light {
+	other := *l
+	other.objects = make([]emitter, len(l.objects))
+	for i := range l.objects {
+		source := &s.Sources[i]
+		other.objects[i] = l.objects[i]
+		other.objects[i].image = o.field.imageOf(source, v.seeing, v.du, v.dw)
+		other.objects[i].motion = o.newMotion(source, v)
+	}
+	return &other
+}
+
 // newSkyLight builds the scene's light through a geometry.
 func (o *optics) newSkyLight(s *Scene, v viewing) *light {
 	l := &light{efficiency: skyEfficiency(o.profile)}
@@ -91,17 +105,23 @@ func (o *optics) newObject(s *Scene, source *Source, v viewing, efficiency func(
 		seen := line.WavelengthNM * physics.DopplerFactor(source.Velocity.SystemicKmS)
 		e.lines = append(e.lines, emission{nm: line.WavelengthNM, photons: physics.LinePhotons(line.FluxWM2, seen), fwhmKmS: line.FWHMKmS})
 	}
-	if source.Velocity != (Velocity{}) {
-		sin, cos := math.Sincos(source.Velocity.PADeg * math.Pi / 180)
-		gradient := source.Velocity.GradientKmSArcsec
-		// A mirror looks at the field minus what guiding moved it.
-		east, north := o.field.sky(v.du, v.dw)
-		e.motion = &motion{
-			east: source.EastArcsec + east, north: source.NorthArcsec + north,
-			systemic: source.Velocity.SystemicKmS, towardsEast: gradient * sin, towardsNorth: gradient * cos,
-		}
-	}
+	e.motion = o.newMotion(source, v)
 	return e
+}
+
+// newMotion is a source's velocity field on the mirrors; nil for none. A mirror
+// looks at the field minus what guiding moved it.
+func (o *optics) newMotion(source *Source, v viewing) *motion {
+	if source.Velocity == (Velocity{}) {
+		return nil
+	}
+	sin, cos := math.Sincos(source.Velocity.PADeg * math.Pi / 180)
+	gradient := source.Velocity.GradientKmSArcsec
+	east, north := o.field.sky(v.du, v.dw)
+	return &motion{
+		east: source.EastArcsec + east, north: source.NorthArcsec + north,
+		systemic: source.Velocity.SystemicKmS, towardsEast: gradient * sin, towardsNorth: gradient * cos,
+	}
 }
 
 // photons is the source's continuum in photons per s, m^2 and nm, by vacuum nm.

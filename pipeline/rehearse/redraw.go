@@ -18,18 +18,33 @@ func (r *rehearsal) redraw(ctx context.Context, s *strip, d *drawn, painters []*
 	return nil
 }
 
-// canvas holds the light of all beams in the mirror rows of a strip.
-type canvas struct {
-	// sky is the sky's part before the instrument's efficiency; it never
-	// changes.
-	sky [][]density // [beam][mirror row]
-	// light is all of a beam by layer, ready to be mixed.
-	light [layers][][]density
+// prepareViews works out how each step sees the sources.
+func (r *rehearsal) prepareViews(ctx context.Context) error {
+	if !r.redraws {
+		return nil
+	}
+	return parallel(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
+		if step := &r.steps[k]; step.source == 0 {
+			step.light = r.optics.viewed(r.sources[0].light, r.scene, step.view)
+		}
+		return nil
+	})
 }
+
+// canvas holds the light of all beams in the mirror rows of a strip, ready to be
+// mixed.
+type canvas struct {
+	// sky never changes; objects may look different in each step.
+	sky, objects layered
+}
+
+// layered is light by layer, beam and mirror row; a beam that no step uses is
+// nil.
+type layered [layers][][]density
 
 func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn, painters []*painter) error {
 	from := &r.sources[at]
-	c := r.newCanvas(s, at)
+	c := &canvas{sky: r.newLayered(s, at), objects: r.newLayered(s, at)}
 	err := parallel(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
 		if !from.used[b] {
 			return nil
@@ -39,10 +54,8 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 		if d.signal != nil && from.sky && b < r.beams.n {
 			r.paintVoxels(p, s, b, d)
 		}
-		for k := range p.sky {
-			c.sky[b][k].copy(&p.sky[k])
-		}
-		r.fill(p, c, s, from, b)
+		r.fill(p, &c.objects, p.objects, nil, s, from, b)
+		r.fill(p, &c.sky, p.sky, from.light.skyLines, s, from, b)
 		return nil
 	})
 	if err != nil {
@@ -56,7 +69,7 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 		}
 		f := &r.fates[k]
 		if from.sky && (fresh || f.seeing != 1 || f.guideU != 0 || f.guideW != 0) {
-			if err := r.refill(ctx, c, s, from, step.view, painters); err != nil {
+			if err := r.refill(ctx, c, s, from, step.light, painters); err != nil {
 				return err
 			}
 			fresh = true
@@ -70,43 +83,38 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 	return nil
 }
 
-func (r *rehearsal) newCanvas(s *strip, at int) *canvas {
-	c := &canvas{sky: make([][]density, len(r.beams.list))}
+func (r *rehearsal) newLayered(s *strip, at int) layered {
+	var l layered
 	for layer := range layers {
-		if r.hasLayer(layer, at) {
-			c.light[layer] = make([][]density, len(r.beams.list))
-		}
-	}
-	for b, used := range r.sources[at].used {
-		if !used {
+		if !r.hasLayer(layer, at) {
 			continue
 		}
-		c.sky[b] = r.optics.newDensities(len(s.mirrors))
-		for layer := range c.light {
-			if c.light[layer] != nil {
-				c.light[layer][b] = r.optics.newDensities(len(s.mirrors))
+		l[layer] = make([][]density, len(r.beams.list))
+		for b, used := range r.sources[at].used {
+			if used {
+				l[layer][b] = make([]density, len(s.mirrors))
 			}
 		}
 	}
-	return c
+	return l
 }
 
-// fill puts the light gathered in p, sky still apart, into a beam's layers.
-func (r *rehearsal) fill(p *painter, c *canvas, s *strip, from *source, b int) {
-	r.finish(p.objects, c.sky[b], s, b)
-	for layer := range c.light {
-		if c.light[layer] == nil {
+// fill puts light gathered for a beam, before the instrument's efficiency, into
+// its layers; lines are the sky's lines in it. The light is used up.
+func (r *rehearsal) fill(p *painter, to *layered, light []density, lines []emitter, s *strip, from *source, b int) {
+	r.dim(light, s, b)
+	for layer := range to {
+		if to[layer] == nil {
 			continue
 		}
-		for k, d := range r.layer(p, layer, s, from, b) {
-			c.light[layer][b][k].copy(&d)
+		for k, d := range r.layer(p, layer, light, lines, s, from, b) {
+			to[layer][b][k].copy(&d)
 		}
 	}
 }
 
 // refill collects the sources anew for another view of the sky.
-func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *source, v viewing, painters []*painter) error {
-	light := r.optics.newSkyLight(r.scene, v)
+func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *source, light *light, painters []*painter) error {
 	return parallel(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
 		if !from.used[b] {
 			return nil
@@ -116,7 +124,7 @@ func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *sourc
 			first, last, keep := r.beams.mirrors(b, m.w)
 			r.optics.collect(&p.objects[k], light.objects, light.efficiency, m, first, last, keep)
 		}
-		r.fill(p, c, s, from, b)
+		r.fill(p, &c.objects, p.objects, nil, s, from, b)
 		return nil
 	})
 }
@@ -127,19 +135,15 @@ func (r *rehearsal) drawStep(ctx context.Context, c *canvas, s *strip, step *ste
 	o := r.optics
 	mixed := o.newDensities(len(s.mirrors))
 	err := parallel(ctx, r.opts.Workers, len(s.mirrors), func(_, k int) error {
-		var rows rowsOf[float64]
-		for layer := range c.light {
-			if c.light[layer] == nil {
-				continue
-			}
-			rows[layer] = make([][]float64, len(r.beams.list))
-			for b := range c.light[layer] {
-				if c.light[layer][b] != nil && c.light[layer][b][k].from < c.light[layer][b][k].to {
-					rows[layer][b] = c.light[layer][b][k].h
-				}
-			}
+		leaks := r.leaksOn(s.mirrors[k].row)
+		rows := c.sky.row(k)
+		mix(mixed[k].h, step.mixture, &rows, leaks)
+		rows = c.objects.row(k)
+		objects := make([]float64, o.axis.n)
+		mix(objects, step.mixture, &rows, leaks)
+		for i, h := range objects {
+			mixed[k].h[i] += h
 		}
-		mix(mixed[k].h, step.mixture, &rows, r.leaksOn(s.mirrors[k].row))
 		mixed[k].from, mixed[k].to = 0, o.axis.n
 		return nil
 	})
@@ -156,8 +160,29 @@ func (r *rehearsal) drawStep(ctx context.Context, c *canvas, s *strip, step *ste
 	return sums, err
 }
 
-// copy makes d the same light as other.
+// row lists a mirror row's light of all beams; dark ones are nil.
+func (l *layered) row(k int) rowsOf[float64] {
+	var rows rowsOf[float64]
+	for layer := range l {
+		if l[layer] == nil {
+			continue
+		}
+		rows[layer] = make([][]float64, len(l[layer]))
+		for b, light := range l[layer] {
+			if light != nil && light[k].from < light[k].to {
+				rows[layer][b] = light[k].h
+			}
+		}
+	}
+	return rows
+}
+
+// copy makes d the same light as other; it takes its memory when there is light
+// for the first time.
 func (d *density) copy(other *density) {
+	if other.from < other.to && d.h == nil {
+		d.h = make([]float64, len(other.h))
+	}
 	d.clear()
 	if other.from < other.to {
 		copy(d.h[other.from:other.to], other.h[other.from:other.to])

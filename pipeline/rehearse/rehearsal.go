@@ -61,6 +61,8 @@ type stepPlan struct {
 	factor float64
 	// view is how the step sees the sky.
 	view viewing
+	// light is the sky's in that view, where frames are drawn one by one.
+	light *light
 }
 
 func newRehearsal(seq *sequence.Sequence, scene *Scene, opts Options) (*rehearsal, error) {

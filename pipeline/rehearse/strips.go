@@ -11,6 +11,9 @@ import (
 // strips makes the samples of all frames, strip by strip of raw rows, into the
 // scratch file, and the truth's voxels.
 func (r *rehearsal) strips(ctx context.Context) error {
+	if err := r.prepareViews(ctx); err != nil {
+		return err
+	}
 	height := r.stripHeight()
 	for raw0 := 0; raw0 < len(r.detector.rows); raw0 += height {
 		raw1 := min(raw0+height, len(r.detector.rows))
@@ -26,15 +29,12 @@ func (r *rehearsal) strips(ctx context.Context) error {
 const (
 	lowestStrip  = 8
 	highestStrip = 96
-	// redrawStrip keeps the light of all beams in memory.
-	redrawStrip = 24
+	// mirrorRowsBeside is how many mirror rows reach a detector row, roughly.
+	mirrorRowsBeside = 20
 )
 
 // stripHeight is how many raw rows fit into the memory.
 func (r *rehearsal) stripHeight() int {
-	if r.redraws {
-		return redrawStrip
-	}
 	perRow := int64(len(r.steps)) * int64(r.detector.rawColumns) * r.sampleBytes()
 	drawnRows := int64(0)
 	for i := range r.sources {
@@ -49,8 +49,13 @@ func (r *rehearsal) stripHeight() int {
 		perRow += 8 * int64(r.optics.profile.Grid.Count) * int64(r.beams.n)
 	}
 	// The weights of the mirror rows (some 20 reach a row) and the workers' scratch.
-	perRow += int64(20+4*r.opts.Workers) * int64(r.optics.axis.n) * 8
+	perRow += int64(mirrorRowsBeside+4*r.opts.Workers) * int64(r.optics.axis.n) * 8
 	height := int(r.opts.MemoryBytes / 2 / perRow)
+	if r.redraws {
+		// The light of all beams, objects and sky apart, in all mirror rows.
+		perRow = 2 * drawnRows / int64(len(r.sources)) * int64(r.optics.axis.n) * 8
+		height = int(r.opts.MemoryBytes/2/perRow) - mirrorRowsBeside
+	}
 	return min(max(height, lowestStrip), highestStrip)
 }
 
