@@ -31,9 +31,11 @@ type Neighbours struct {
 	scratch sync.Pool // *neighbourScratch
 }
 
-// neighbourScratch holds the pairs' terms of one row of pixels and, for codes that
-// need it, their sums by step and what those decode to.
+// neighbourScratch holds the columns of one row of pixels, copied together so that
+// each is fetched and written once, the pairs' terms and, for codes that need it,
+// their sums by step and what those decode to.
 type neighbourScratch struct {
+	light          []row // by code column
 	half           []row // g_j/2
 	sums           []wideRow
 	table          [subsets]wideRow
@@ -69,7 +71,7 @@ func NewNeighbours(d *Decoder, columns []int) (*Neighbours, error) {
 		n.open = openPairs(d.code, columns)
 	}
 	n.scratch.New = func() any {
-		s := &neighbourScratch{half: make([]row, pairs)}
+		s := &neighbourScratch{light: make([]row, v), half: make([]row, pairs)}
 		if n.open != nil {
 			s.sums = make([]wideRow, v)
 			s.steps, s.decoded = make([]float32, v*lanes), make([]float32, v*lanes)
@@ -121,27 +123,50 @@ func (n *Neighbours) Correct(block, d, slope []float32, pixels, stride int) {
 	}
 	s := n.scratch.Get().(*neighbourScratch)
 	defer n.scratch.Put(s)
-	own := n.ghost != nil
 	for p := 0; p < pixels; p += lanes {
 		count := min(lanes, pixels-p)
-		n.terms(s, block[p:], d[p:], slopeFrom(slope, p), count, stride, own)
-		if own {
-			n.takeGhosts(s, block[p:], count, stride)
+		var size, step row
+		copy(size[:count], d[p:])
+		if slope != nil {
+			copy(step[:count], slope[p:])
+		}
+		s.fetch(block[p:], count, stride)
+		for at := 0; at < lanes; at += quad {
+			n.terms(s, &size, &step, at)
+		}
+		if n.ghost != nil {
+			n.takeGhosts(s)
 		} else {
-			n.takeProducts(s, block[p:], count, stride)
+			n.takeProducts(s)
+		}
+		s.write(block[p:], count, stride)
+	}
+}
+
+// fetch copies up to lanes pixels of all columns; lanes past count keep what an
+// earlier row left, and are not written back.
+func (s *neighbourScratch) fetch(block []float32, count, stride int) {
+	for c := range s.light {
+		if count == lanes {
+			s.light[c] = *rowAt(block, c*stride)
+		} else {
+			copy(s.light[c][:count], block[c*stride:])
 		}
 	}
 }
 
-func slopeFrom(slope []float32, p int) []float32 {
-	if slope == nil {
-		return nil
+func (s *neighbourScratch) write(block []float32, count, stride int) {
+	for c := range s.light {
+		if count == lanes {
+			*rowAt(block, c*stride) = s.light[c]
+		} else {
+			copy(block[c*stride:][:count], s.light[c][:])
+		}
 	}
-	return slope[p:]
 }
 
 // takeProducts is for other codes: sums over subsets of eight pairs, as in dense.
-func (n *Neighbours) takeProducts(s *neighbourScratch, block []float32, pixels, stride int) {
+func (n *Neighbours) takeProducts(s *neighbourScratch) {
 	clear(s.sums)
 	for group := range n.open[0] {
 		first := group * groupRows
@@ -160,11 +185,10 @@ func (n *Neighbours) takeProducts(s *neighbourScratch, block []float32, pixels, 
 		}
 	}
 	n.decoder.engine.decode(s.decoded, s.steps, lanes)
-	for c := range n.decoder.code.v {
-		term := s.decoded[c*lanes:][:pixels]
-		f := block[c*stride:][:pixels]
+	for c := range s.light {
+		term := rowAt(s.decoded, c*lanes)
 		for p, v := range term {
-			f[p] -= v
+			s.light[c][p] -= v
 		}
 	}
 }
