@@ -111,4 +111,3 @@ func TestMatchRefuses(t *testing.T) {
 		})
 	}
 }
-

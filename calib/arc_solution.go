@@ -1,6 +1,7 @@
 package calib
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 
@@ -48,6 +49,8 @@ type ArcSolution struct {
 	Residuals []ArcResidual
 	// Width is FWHM against wavelength.
 	Width LineWidth
+
+	blocks []blockCount
 }
 
 // ArcResidual is one identified centroid.
@@ -101,6 +104,7 @@ func (r *ArcSolution) collect(f *arcFit) {
 		}
 	}
 	r.RMSPx = math.Sqrt(sum / float64(r.Used))
+	r.countBlocks()
 }
 
 // ErrorPx is the standard error of the model's x for element j on detector row y at
@@ -112,45 +116,55 @@ func (r *ArcSolution) ErrorPx(j, y, vacuumNM float64) float64 {
 	return math.Sqrt(max(0, mat.Inner(v, r.Covariance, v)))
 }
 
+// blockCount sums up the centroids of an element's block of rows.
+type blockCount struct {
+	element, firstRow, lastRow int
+	used, rejected             int
+	squares                    float64
+}
+
+// countBlocks fills in blocks from Residuals.
+func (r *ArcSolution) countBlocks() {
+	at := map[[2]int]int{}
+	for i := range r.Residuals {
+		d := &r.Residuals[i]
+		key := [2]int{d.Element, d.FirstRow}
+		k, ok := at[key]
+		if !ok {
+			k = len(r.blocks)
+			at[key] = k
+			r.blocks = append(r.blocks, blockCount{element: d.Element, firstRow: d.FirstRow, lastRow: d.LastRow})
+		}
+		if b := &r.blocks[k]; d.Kept {
+			b.used++
+			b.squares += d.ResidualPx * d.ResidualPx
+		} else {
+			b.rejected++
+		}
+	}
+}
+
 // LinesAt counts the centroids that speak for element j on detector row y: those of the
 // nearest element with an arc and, of its blocks, the nearest; rms is around the
 // model, NaN for none.
 func (r *ArcSolution) LinesAt(j, y int) (used, rejected int, rmsPx float64) {
-	element, row := r.nearest(j, y)
-	sum := 0.0
-	for i := range r.Residuals {
-		d := &r.Residuals[i]
-		if d.Element != element || d.FirstRow != row {
-			continue
-		}
-		if !d.Kept {
-			rejected++
-			continue
-		}
-		used++
-		sum += d.ResidualPx * d.ResidualPx
-	}
-	if used == 0 {
-		return used, rejected, math.NaN()
-	}
-	return used, rejected, math.Sqrt(sum / float64(used))
-}
-
-// nearest is the element and the first row of the block nearest to (j, y).
-func (r *ArcSolution) nearest(j, y int) (element, firstRow int) {
-	bestElement, bestRow := math.Inf(1), math.Inf(1)
-	for i := range r.Residuals {
-		d := &r.Residuals[i]
-		across := math.Abs(float64(d.Element - j))
-		along := math.Abs(float64(d.FirstRow+d.LastRow)/2 - float64(y))
-		if across < bestElement || across == bestElement && d.Element == element && along < bestRow {
-			if across < bestElement {
-				bestRow = math.Inf(1)
-			}
-			bestElement, bestRow, element, firstRow = across, along, d.Element, d.FirstRow
+	best, rmsPx := -1, math.NaN()
+	across := func(b *blockCount) int { return max(b.element-j, j-b.element) }
+	along := func(b *blockCount) int { return max(b.firstRow+b.lastRow-2*y, 2*y-b.firstRow-b.lastRow) }
+	for i := range r.blocks {
+		b := &r.blocks[i]
+		if best < 0 || cmp.Or(cmp.Compare(across(b), across(&r.blocks[best])), cmp.Compare(along(b), along(&r.blocks[best]))) < 0 {
+			best = i
 		}
 	}
-	return element, firstRow
+	if best < 0 {
+		return 0, 0, rmsPx
+	}
+	b := &r.blocks[best]
+	if b.used > 0 {
+		rmsPx = math.Sqrt(b.squares / float64(b.used))
+	}
+	return b.used, b.rejected, rmsPx
 }
 
 // String is the solution in a sentence, for logs.
