@@ -168,3 +168,36 @@ func TestSolveArcsUnderCosmicRays(t *testing.T) {
 	t.Logf("%v; worst %.4f px", r, worst)
 	require.Less(t, worst, 0.05)
 }
+
+// Wavelengths that fall along x, elements that fall along x, and a single element:
+// the model where it was measured, and an honest error where it was not.
+func TestSolveArcsTurned(t *testing.T) {
+	random := rand.New(rand.NewPCG(21, 21))
+	for _, c := range []struct {
+		name       string
+		wave, step float64
+		frames     int
+	}{{"as is", 1, 1, 3}, {"wavelength falls", -1, 1, 3}, {"elements fall", 1, -1, 3}, {"one element", 1, 1, 1}} {
+		t.Run(c.name, func(t *testing.T) {
+			nominal, s := smallArc(1)
+			turn := func(g *Geometry) {
+				for i := range g.D {
+					g.D[i] *= c.wave
+				}
+				g.X_e *= c.step
+				g.TraceTilt, g.TraceCurve = 0, 0
+			}
+			turn(&nominal)
+			turn(&s.g)
+			frames := drawnFrames(s.g, neon(), neon(), random)[:c.frames]
+			r, err := SolveArcs(nominal, frames, DefaultArcRule(540, 680, 3.4))
+			require.NoError(t, err)
+			require.Less(t, worstMiss(r.Geometry, s.g, 1, 96, 545, 672), 0.05) // element 0
+			require.Less(t, r.ErrorPx(0, 50, 610), 0.02)
+			require.Less(t, worstMiss(r.Geometry, s.g, 21, 96, 545, 672), 0.05+5*r.ErrorPx(20, 50, 610))
+			if c.frames == 1 {
+				require.Greater(t, r.ErrorPx(20, 50, 610), 0.2) // 1 % of 20 elements of 2 px
+			}
+		})
+	}
+}

@@ -19,6 +19,9 @@
 //     of decoded pixels; a Response belongs to elements, trace rows and voxels and is
 //     taken out of the cube. Both have a mean of 1: what is common to all is the
 //     lamp's.
+//   - A Peak is a line of a lamp seen in the sum of a block of detector rows; a track is
+//     a line followed over the blocks of a frame. SolveArcs names them and fits the
+//     Geometry's x; FitTrace fits its y to RowEnds, where lit mirror rows end.
 //   - A ColourTerm is a small part of the light that grows smoothly with wavelength:
 //     what open neighbours lend each other, or what closed mirrors leak.
 //
