@@ -162,20 +162,29 @@ func (g *Geometry) solveX(unbent, y0, guess float64) float64 {
 	return x
 }
 
+// farNM is beyond any wavelength: a dispersion that turns so far away does not turn,
+// and its turn cannot be computed.
+const farNM = 1e9
+
 // branch is the open interval of l around 0 on which the dispersion is
 // monotonic.
 func (g *Geometry) branch() (low, high float64) {
 	low, high = math.Inf(-1), math.Inf(1)
 	// Roots of D1 + 2 D2 l + 3 D3 l^2, in the form that does not cancel.
 	a, halfB, c := 3*g.D[2], g.D[1], g.D[0]
-	disc := halfB*halfB - a*c
+	// In units of the larger term, so that no square underflows.
+	unit := max(math.Abs(halfB), math.Sqrt(math.Abs(a))*math.Sqrt(math.Abs(c)))
+	if unit == 0 {
+		return low, high
+	}
+	disc := (halfB/unit)*(halfB/unit) - (a/unit)*(c/unit)
 	if disc < 0 {
 		return low, high
 	}
-	w := -(halfB + math.Copysign(math.Sqrt(disc), halfB))
+	w := -(halfB + math.Copysign(unit*math.Sqrt(disc), halfB))
 	for _, root := range []float64{w / a, c / w} {
 		switch {
-		case math.IsNaN(root) || math.IsInf(root, 0):
+		case math.IsNaN(root) || math.Abs(root) > farNM:
 		case root < 0:
 			low = max(low, root)
 		default:

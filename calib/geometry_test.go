@@ -93,6 +93,10 @@ func TestGeometryBeyondTheBranch(t *testing.T) {
 	require.True(t, math.IsNaN(g.Wavelength(math.Inf(1), 0, 0)))
 	require.NoError(t, g.Check(100, 100, 400, 599))
 	require.ErrorContains(t, g.Check(100, 100, 400, 601), "monotonic from -Inf to 600 nm")
+	// A curvature so small that its square is 0 in float64.
+	g.D = [3]float64{1, 1.1e-162, 0}
+	require.InDelta(t, 560, g.Wavelength(60, 0, 0), 1e-9)
+	require.NoError(t, g.Check(100, 100, 400, 700))
 	// A cubic that turns on both sides, at l = -10 and 10.
 	g.D = [3]float64{3, 0, -0.01}
 	require.NoError(t, g.Check(100, 100, 490.1, 509.9))
