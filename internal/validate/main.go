@@ -31,6 +31,7 @@ type check struct {
 // checks are all of them, in the order of the table.
 func checks() []check {
 	return []check{
+		peakMemory(),
 		demoNight("optical", "demo", "demo", 0.6),
 		// The figure of 60 % is that of `mirrorloom demo`; this target closes almost
 		// half of the rows, where its strips end.

@@ -4,7 +4,7 @@
 usage: numpy_reduce.py NIGHT SEQUENCE OUT.fits
 
 The same steps as `mirrorloom reduce` takes, each in the plainest array form: overscan, master bias and dark, all-off
-light, saturation and dead pixels, gain, decoding by the inverse matrix, variances, the trace and the wavelengths by
+light, saturation, hot and dead pixels, gain, decoding by the inverse matrix, variances, the trace and the wavelengths by
 interpolating running sums with quintic splines, world coordinates, SIGNAL, VARIANCE, FLAGS. A yardstick for time and
 memory; its splines and clipping are scipy's and numpy's, so its voxels agree only within the errors.
 """
@@ -13,11 +13,11 @@ import sys
 import time
 
 import numpy as np
-import yaml
 from astropy.io import fits
-from scipy.ndimage import map_coordinates, uniform_filter1d
+from scipy.interpolate import BSpline, make_interp_spline
+from scipy.ndimage import uniform_filter1d
 
-from numpy_elements import amplifiers, read_night
+from numpy_elements import amplifiers, read_night, read_yaml
 
 
 def to_electrons(stack, profile):
@@ -43,36 +43,44 @@ def clipped_mean(stack, sigmas=4):
     return np.ma.masked_where(np.abs(stack - centre) > sigmas * scatter, stack).mean(axis=0).filled(0).astype("f4")
 
 
-def edges_px(spec, grid, width, n, j, rows, columns):
-    """Detector columns, counted from the left edge, of the voxel edges of element j: [trace row, edge]."""
+def edges_px(spec, grid, width, n, y, columns):
+    """Detector columns, counted from the left edge, of the voxel edges of trace row y: [element, edge]."""
     wave = grid["first_nm"] + grid["step_nm"] * (np.arange(grid["count"] + 1) - 0.5) - spec["center_nm"]
     d1, d2, d3 = spec["dispersion_px_per_nm"]
-    base = spec["x_center_px"] + width * (j - (n - 1) / 2) + wave * (d1 + wave * (d2 + wave * d3))
-    x = base + np.zeros((rows, 1))
+    base = spec["x_center_px"] + wave * (d1 + wave * (d2 + wave * d3)) \
+        + width * (np.arange(n)[:, None] - (n - 1) / 2)
+    x = base
     for _ in range(4):
         s = x - spec["x_center_px"]
-        q = np.arange(rows)[:, None] + s * (spec["trace_tilt"] + spec["trace_curve_per_px"] * s) - spec["y_center_px"]
+        q = y + s * (spec["trace_tilt"] + spec["trace_curve_per_px"] * s) - spec["y_center_px"]
         x = base + q * (spec["slit_tilt"] + spec["smile_per_px"] * q)
     return np.clip(x + 0.5, 0, columns)
 
 
-def running_sum(values, axis):
-    """Running sum along an axis, 0 first."""
-    return np.insert(np.cumsum(values, axis=axis, dtype="f8"), 0, 0, axis=axis)
+def running_sum(values):
+    """Quintic spline through the running sum along the first axis, from 0 before the first pixel; many at once."""
+    total = np.zeros((len(values) + 1,) + values.shape[1:])
+    np.cumsum(values, axis=0, out=total[1:])
+    return make_interp_spline(np.arange(len(total)), total, k=5, check_finite=False)
 
 
-def straighten(image, shift):
-    """Follow the trace: the light between y - 1/2 + shift(x) and y + 1/2 + shift(x)."""
-    rows, columns = image.shape
-    at = np.clip(np.arange(rows + 1)[:, None] + shift, 0, rows)
-    across = np.broadcast_to(np.arange(columns), at.shape)
-    return np.diff(map_coordinates(running_sum(image, 0), [at, across], order=5, mode="nearest"), axis=0)
+def straighten(stack, shift, block=64):
+    """Follow the trace, in place: the light between y - 1/2 + shift(x) and y + 1/2 + shift(x), of [plane, y, x]."""
+    planes, rows, columns = stack.shape
+    edges = np.arange(rows + 1.0)
+    for x0 in range(0, columns, block):
+        part = np.moveaxis(stack[:, :, x0:x0 + block], 1, 0)
+        spline = running_sum(part)
+        for i in range(part.shape[2]):
+            one = BSpline.construct_fast(spline.t, np.ascontiguousarray(spline.c[:, :, i]), 5)
+            stack[:, :, x0 + i] = np.diff(one(np.clip(edges + shift[x0 + i], 0, rows)), axis=0).T
 
 
-def rebin(image, at):
-    """The light of each row between the edges at[row]."""
-    along = np.broadcast_to(np.arange(len(image))[:, None], at.shape)
-    return np.diff(map_coordinates(running_sum(image, 1), [along, at], order=5, mode="nearest"), axis=1)
+def rebin(lines, at):
+    """The light of each line [x] of [line, x] between the edges at[line]."""
+    spline = running_sum(lines.T)
+    c = np.ascontiguousarray(spline.c.T)
+    return np.stack([np.diff(BSpline.construct_fast(spline.t, c[j], 5)(at[j])) for j in range(len(at))])
 
 
 def main(night, sequence, out):
@@ -82,10 +90,8 @@ def main(night, sequence, out):
         steps = {int(s): k.strip() for s, k in zip(table["STEP"], table["KIND"])}
         index = {int(s): i for i, s in enumerate(table["STEP"])}
         seconds = {int(s): float(t) for s, t in zip(table["STEP"], table["EXPTIME"])}
-    with open(os.path.join(sequence, "profile.yaml")) as f:
-        profile = yaml.safe_load(f)
-    with open(os.path.join(sequence, "target.yaml")) as f:
-        target = yaml.safe_load(f)
+    profile = read_yaml(os.path.join(sequence, "profile.yaml"))
+    target = read_yaml(os.path.join(sequence, "target.yaml"))
     frames = read_night(night, steps, ("bias", "dark", "all-off", "flat", "science"))
     lamps = {s: f for s, f in frames["flat"].items() if code[index[s]].all()}
 
@@ -107,10 +113,12 @@ def main(night, sequence, out):
     saturated = np.empty(bias.shape, bool)
     for raw_y, raw_x, x, _ in amplifiers(profile):
         saturated[:, x] = saturated_raw[raw_y, raw_x]
-    bad = np.zeros(bias.shape, bool)
+    charge = dark * seconds[order[0]]
+    excess = charge - np.median(charge, axis=1, keepdims=True)
+    bad = (excess > 10 * noise) & (excess > 8 * np.sqrt((noise + np.maximum(charge, 0)) / max(1, len(frames["dark"]))))
     if lamp is not None:
         near = np.median(np.stack([np.roll(lamp, k, axis=1) for k in range(-8, 9) if k]), axis=0)
-        bad = (lamp < 0.5 * near) & (near > 900 * noise)
+        bad |= (lamp < 0.5 * near) & (near > 900 * noise)
 
     w = code[[index[s] for s in order]].astype("f8")
     v, k = w.shape[1], int(w[0].sum())
@@ -128,18 +136,22 @@ def main(night, sequence, out):
     n, rows, width = len(columns), shape[0], shape[1]
     s = np.arange(width) - spec["x_center_px"]
     shift = s * (spec["trace_tilt"] + spec["trace_curve_per_px"] * s)
-    flag = np.where(bad, 4, 0) | np.where(saturated, 2, 0)
+    flag = bad | saturated
     step_px = spec["u_step_px"] * target["code"]["element_mirrors"]
     nl = grid["count"]
     signal, var, flags = (np.empty((nl, rows, n), t) for t in ("f4", "f4", "i2"))
-    straight_variance = straighten(variance, shift)
-    any_bad = (flag > 0).astype("f8")
-    for j in range(n):
-        at = edges_px(spec, grid, step_px, n, j, rows, width)
-        signal[:, :, j] = rebin(straighten(x[j], shift), at).T
-        var[:, :, j] = rebin(straight_variance, at).T
-        reach = np.abs(rebin(any_bad, at)) > 0.1
-        flags[:, :, j] = (np.where(reach, 4, 0) | np.where(np.diff(at, axis=1) <= 0, 1, 0)).T
+    variance = variance[None]
+    straighten(x, shift)
+    straighten(variance, shift)
+    pixel_edges = np.arange(width + 1)
+    for y in range(rows):
+        at = edges_px(spec, grid, step_px, n, y, width)
+        signal[:, y] = rebin(x[:, y], at).T
+        spread = running_sum(variance[0, y])
+        var[:, y] = np.diff(spread(at), axis=1).T
+        hit = np.concatenate([[0], np.cumsum(flag[y])])
+        reach = np.diff(np.interp(at, pixel_edges, hit), axis=1) > 0.1
+        flags[:, y] = (np.where(reach, 4, 0) | np.where(np.diff(at, axis=1) <= 0, 1, 0)).T
 
     header = fits.Header()
     arcsec = profile["dmd"]["arcsec_per_mirror"] / (2 ** 0.5 if profile["dmd"]["mounting"] == "diagonal" else 1)

@@ -1,0 +1,8 @@
+// Command bench measures speed and memory and writes BENCHMARKS.md. It runs at
+// the module's top folder after the build: `make bench`.
+//
+// Machines are noisy and differ, so that figures are ratios of what ran in turn
+// within one run of bench: kernels beside a plain copy, and whole reductions
+// beside numpy scripts that make the same products (testdata/bench). Both sides
+// end with their product synced to the disk.
+package main

@@ -1,0 +1,71 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"os"
+	"os/exec"
+	"runtime"
+	"strings"
+
+	"golang.org/x/sys/cpu"
+
+	"mirrorloom/pipeline/version"
+)
+
+// machine is what figures depend on.
+type machine struct {
+	model, level, memory, libraries string
+}
+
+// python is Debian's interpreter with numpy, scipy and astropy.
+const python = "/usr/bin/python3"
+
+// libraryVersions prints what the scripts compute with.
+const libraryVersions = `
+import sys, numpy, scipy, astropy
+print("Python", sys.version.split()[0] + ", numpy", numpy.__version__ + ", scipy", scipy.__version__ + ", astropy", astropy.__version__)
+`
+
+func thisMachine(ctx context.Context) (machine, error) {
+	out, err := exec.CommandContext(ctx, python, "-c", libraryVersions).Output()
+	if err != nil {
+		return machine{}, fmt.Errorf("the scripts need Debian's python3-numpy, -scipy, -astropy and -yaml (make packages installs them): %w", err)
+	}
+	return machine{
+		model: procField("/proc/cpuinfo", "model name"), level: cpuLevel(),
+		memory: procField("/proc/meminfo", "MemTotal"), libraries: strings.TrimSpace(string(out)),
+	}, nil
+}
+
+// procField is the value of the first line "key : value".
+func procField(path, key string) string {
+	text, err := os.ReadFile(path)
+	if err != nil {
+		return "unknown"
+	}
+	for line := range strings.Lines(string(text)) {
+		if k, v, ok := strings.Cut(line, ":"); ok && strings.TrimSpace(k) == key {
+			return strings.TrimSpace(v)
+		}
+	}
+	return "unknown"
+}
+
+func cpuLevel() string {
+	switch {
+	case cpu.X86.HasAVX512F && cpu.X86.HasAVX512VL && cpu.X86.HasAVX512DQ && cpu.X86.HasAVX512BW:
+		return "AVX-512"
+	case cpu.X86.HasAVX2 && cpu.X86.HasFMA:
+		return "AVX2"
+	}
+	return "baseline"
+}
+
+func (m machine) write(b *strings.Builder) {
+	fmt.Fprintf(b, "| machine | |\n| --- | --- |\n")
+	fmt.Fprintf(b, "| processor | %s, %d cores, %s of %s |\n", m.model, runtime.NumCPU(), m.level, runtime.GOARCH)
+	fmt.Fprintf(b, "| memory | %s |\n", m.memory)
+	fmt.Fprintf(b, "| mirrorloom | %s, %s, kernels in pure Go |\n", version.Version, runtime.Version())
+	fmt.Fprintf(b, "| scripts | %s, BLAS with its default of %d threads |\n\n", m.libraries, runtime.NumCPU())
+}
