@@ -12,9 +12,9 @@ import (
 
 // Where read noise is all, a code gains (v+1)/(2 sqrt v) over a slit scan in the
 // same time, n/v of it with dark columns: both nights are rehearsed and reduced by
-// the same code.
+// the same code. `make validate` does v = 127, g = 0 as well.
 func TestReadNoiseGain(t *testing.T) {
-	for _, c := range []struct{ v, dark int }{{31, 0}, {31, 8}, {127, 0}, {127, 16}} {
+	for _, c := range []struct{ v, dark int }{{31, 0}, {31, 8}, {127, 16}} {
 		t.Run(fmt.Sprintf("v=%d,g=%d", c.v, c.dark), func(t *testing.T) {
 			g, err := trial.MeasureGain(context.Background(), t.TempDir(), c.v, c.dark, uint64(100*c.v+c.dark))
 			require.NoError(t, err)
