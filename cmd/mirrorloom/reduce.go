@@ -87,7 +87,7 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	if err != nil {
 		return err
 	}
-	if err := a.answer(result.Run, func(w io.Writer) error { return printReduction(w, o.output.dir, result) }); err != nil {
+	if err := a.answer(result.Run, func(w io.Writer) error { return printReduction(w, o.output.dir, opts, result) }); err != nil {
 		return err
 	}
 	if len(result.Degraded) > 0 {
@@ -96,7 +96,7 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	return nil
 }
 
-func printReduction(w io.Writer, dir string, r *reduce.Result) error {
+func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Result) error {
 	q := r.Run.Quality
 	used := 0
 	for _, e := range r.Ledger {
@@ -105,7 +105,10 @@ func printReduction(w io.Writer, dir string, r *reduce.Result) error {
 		}
 	}
 	var b strings.Builder
-	fmt.Fprintf(&b, "%s: %d frames used, %.2f %% of the voxels good", dir, used, 100*q.GoodFraction)
+	fmt.Fprintf(&b, "%s: %d frames used", dir, used)
+	if opts.Cube {
+		fmt.Fprintf(&b, ", %.2f %% of the voxels good", 100*q.GoodFraction)
+	}
 	if q.CoveredGoodFraction > 0 {
 		fmt.Fprintf(&b, " (%.2f %% of those in coded rows on the detector)", 100*q.CoveredGoodFraction)
 	}
@@ -119,7 +122,14 @@ func printReduction(w io.Writer, dir string, r *reduce.Result) error {
 	for _, s := range r.Run.Stages {
 		fmt.Fprintf(&b, "%-8s %7.2f s  %7.3f GB\n", s.Name, s.Seconds, float64(s.Bytes)/1e9)
 	}
-	fmt.Fprintf(&b, "cube: %s\n", filepath.Join(dir, product.CubeFile))
+	for _, p := range []struct {
+		written    bool
+		name, file string
+	}{{opts.Cube, "cube", product.CubeFile}, {opts.Elements, "elements", product.ElementsFile}} {
+		if p.written {
+			fmt.Fprintf(&b, "%s: %s\n", p.name, filepath.Join(dir, p.file))
+		}
+	}
 	_, err := io.WriteString(w, b.String())
 	return err
 }
