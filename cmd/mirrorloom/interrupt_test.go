@@ -167,7 +167,7 @@ func TestInterruptedRunsLeaveNothing(t *testing.T) {
 	}{
 		{"plan", []string{"plan", "demo", "--profile", "optical"}},
 		{"rehearse", []string{"rehearse", seq, "--scene", in("scene.yaml"), "--seed", "1", "--perfect"}},
-		{"reduce", []string{"reduce", in("rehearse"), "--sequence", seq, "--products", "cube,elements", "--memory", "57MiB"}},
+		{"reduce", []string{"reduce", in("rehearse"), "--sequence", seq, "--recipe", "nominal", "--products", "cube,elements", "--memory", "57MiB"}},
 	}
 	for _, c := range commands {
 		whole := timed(t, in(c.name), c.args...)
@@ -189,7 +189,7 @@ func TestKilledRunsLeaveTheirPartAlone(t *testing.T) {
 		args          []string
 	}{
 		{"rehearse", "f00050.fits", []string{"rehearse", seq, "--scene", in("scene.yaml"), "--seed", "1", "--perfect"}},
-		{"reduce", "cube.fits", []string{"reduce", in("rehearse"), "--sequence", seq, "--memory", "57MiB"}},
+		{"reduce", "cube.fits", []string{"reduce", in("rehearse"), "--recipe", "nominal", "--sequence", seq, "--memory", "57MiB"}},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			whole := timed(t, in(c.name), c.args...)

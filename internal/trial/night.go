@@ -67,11 +67,19 @@ func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options
 	return err
 }
 
-// Reduce reduces the night named name with the default recipe, or that of opts.
+// Reduce reduces the night named name with the recipe of opts or, as the
+// instrument is perfect, the nominal one.
 func (n *Night) Reduce(ctx context.Context, name string, opts reduce.Options) (*reduce.Result, error) {
 	opts.Night, opts.Sequence, opts.Out = n.Frames(name), n.sequence(), n.Run(name)
 	if err := os.MkdirAll(opts.Out, 0o755); err != nil {
 		return nil, err
+	}
+	if opts.Recipe == nil {
+		recipe, err := reduce.LoadRecipe("nominal")
+		if err != nil {
+			return nil, err
+		}
+		opts.Recipe = recipe
 	}
 	return reduce.Run(ctx, opts)
 }

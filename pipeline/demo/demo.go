@@ -52,8 +52,8 @@ type Result struct {
 	Stages    []product.Stage   `json:"stages"`
 }
 
-// Run makes the demo. The rehearsal is of a perfect instrument (the profile's
-// own geometry, even pixels): the reduction does not calibrate those yet.
+// Run makes the demo. The rehearsed instrument is not quite the profile's, and
+// the reduction calibrates it by its lamps.
 func Run(ctx context.Context, opts Options) (*Result, error) {
 	if opts.Progress == nil {
 		opts.Progress = func(string, int, int) {}
@@ -117,7 +117,7 @@ func (r *Result) rehearse(ctx context.Context, o Options) error {
 	if err != nil {
 		return err
 	}
-	r.Rehearsal, err = rehearse.Run(ctx, seq, scene, rehearse.Options{Seed: seed, Perfect: true}, dir,
+	r.Rehearsal, err = rehearse.Run(ctx, seq, scene, rehearse.Options{Seed: seed}, dir,
 		func(done, total int) { o.Progress("rehearse", done, total) })
 	return err
 }

@@ -49,15 +49,15 @@ func TestRunDemo(t *testing.T) {
 	require.Equal(t, []plan.KindTotal{
 		{Kind: sequence.Bias, Steps: 20, Minutes: 20 * 4. / 60},
 		{Kind: sequence.Dark, Steps: 5, Minutes: 5 * 94. / 60},
-		{Kind: sequence.Flat, Steps: 131, Minutes: 131 * 9. / 60},
+		{Kind: sequence.Flat, Steps: 139, Minutes: 139 * 9. / 60},
 		{Kind: sequence.Arc, Steps: 23, Minutes: 23 * 12. / 60},
 		{Kind: sequence.AllOff, Steps: 9, Minutes: 9 * 94. / 60},
 		{Kind: sequence.Science, Steps: 127, Minutes: 127 * 94. / 60},
 	}, summary.Kinds)
-	require.Equal(t, 315, summary.Steps)
-	require.InDelta(t, (80+470+131*9+23*12+136*94)/60., summary.Minutes, 1e-9)
+	require.Equal(t, 323, summary.Steps)
+	require.InDelta(t, (80+470+139*9+23*12+136*94)/60., summary.Minutes, 1e-9)
 	// 672 x 192 pixels of two bytes fill 90 blocks of 2880; one more is header.
-	require.InDelta(t, 315*91*2880/1e9, summary.Gigabytes, 1e-12)
+	require.InDelta(t, 323*91*2880/1e9, summary.Gigabytes, 1e-12)
 	require.Equal(t, 154, summary.Masks)
 	require.Empty(t, summary.Warnings)
 	// The flats' four, seven of every code row's, arcs: one mask a distinct step.
@@ -92,7 +92,7 @@ func TestSummaryPrints(t *testing.T) {
 	text := summary.String()
 	for _, want := range []string{
 		"demo field with optical", "m-sequence, v = 127, k = 64, l = 32, shuffled order", "111 elements of 2 mirrors",
-		"science     127     199.0", "all         306", "warning  no all-off frame",
+		"science     127     199.0", "all         314", "warning  no all-off frame",
 	} {
 		require.Contains(t, text, want)
 	}

@@ -19,9 +19,11 @@ type Run struct {
 	Inputs   []Input        `json:"inputs"`
 	Settings map[string]any `json:"settings"`
 	Quality  Quality        `json:"quality"`
-	Warnings []string       `json:"warnings"`
-	Stages   []Stage        `json:"stages"`
-	Exit     int            `json:"exit"`
+	// Calibration is what was measured of the instrument; nil if nothing was.
+	Calibration *Calibration `json:"calibration,omitempty"`
+	Warnings    []string     `json:"warnings"`
+	Stages      []Stage      `json:"stages"`
+	Exit        int          `json:"exit"`
 }
 
 // Input is a file that went in, with the lower-case hex SHA-256 of its bytes.

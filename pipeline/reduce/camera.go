@@ -14,6 +14,7 @@ import (
 type camera struct {
 	columns, rows int
 	saturationADU float64
+	linearity     []float64 // see calib.Linearise
 	amplifiers    []amplifier
 	// variance gives, by detector row, the variance of a sample without light
 	// in every column, electrons squared; rows of the same amplifiers share it.
@@ -32,7 +33,7 @@ type amplifier struct {
 }
 
 func newCamera(d *instrument.Detector) (*camera, error) {
-	c := &camera{columns: d.Columns, rows: d.Rows, saturationADU: d.SaturationADU}
+	c := &camera{columns: d.Columns, rows: d.Rows, saturationADU: d.SaturationADU, linearity: d.Linearity}
 	for i, place := range d.Active() {
 		a := d.Amplifiers[i]
 		amp := amplifier{place: place, gain: a.GainEPerADU, biasADU: a.BiasADU, variance: calib.ReadVariance(a.ReadNoiseE, a.GainEPerADU)}
@@ -136,7 +137,13 @@ func (c *camera) readAmplifier(dst []float32, im *fitsutil.Image, a *amplifier, 
 	found := saturated > 0
 	for y := range h {
 		row := s.raw[y*w : (y+1)*w]
-		calib.ToElectrons(row, s.level[y], a.gain)
+		level := s.level[y]
+		if len(c.linearity) > 0 {
+			calib.ToElectrons(row, level, 1)
+			calib.Linearise(row, c.linearity)
+			level = 0
+		}
+		calib.ToElectrons(row, level, a.gain)
 		for x, v := range row {
 			if v != v {
 				row[x], found = 0, true

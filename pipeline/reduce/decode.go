@@ -29,6 +29,8 @@ type decoder struct {
 	// quietSum is, by code column, the variance of a decode of dark samples in
 	// units of one's; nil where all columns have the same.
 	quietSum []float64
+	// neighbours takes out what open neighbours lend each other; nil for nothing.
+	neighbours *neighbourTerm
 }
 
 // sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w.
@@ -51,6 +53,7 @@ func (d *decoder) sumQuiet() {
 type decodeWorker struct {
 	samples, decoded, variance, smooth []float32
 	sum, square                        []float64
+	size, slope                        []float32 // of the neighbour term
 }
 
 func (d *decoder) newWorker() *decodeWorker {
@@ -58,6 +61,7 @@ func (d *decoder) newWorker() *decodeWorker {
 	w := &decodeWorker{
 		samples: make([]float32, d.slots*n), decoded: make([]float32, d.slots*n),
 		sum: make([]float64, n), square: make([]float64, n),
+		size: make([]float32, n), slope: make([]float32, n),
 	}
 	if !d.code.VarianceUniform() {
 		w.variance, w.smooth = make([]float32, d.slots*n), make([]float32, d.slots*n)
@@ -94,6 +98,9 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) dark
 	quiet := s.quiet[y-s.y0][x0:x1]
 	d.load(w, s, at, n)
 	d.code.Decode(w.decoded, w.samples, n, n)
+	if d.neighbours != nil {
+		d.neighbours.correct(w, x0, y, n)
+	}
 	uniform := d.code.VarianceUniform()
 	if uniform {
 		d.uniformVariance(out.variance[0][x0:x1], w, s, at, quiet)

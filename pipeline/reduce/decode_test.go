@@ -34,14 +34,11 @@ func newDecodeCase(t *testing.T, family hadamard.Family, v, columns int, frames 
 			d.elementColumns = append(d.elementColumns, j)
 		}
 	}
-	roles := &roles{slots: make([][]*frame, v)}
+	slots := make([][]*frame, v)
 	for i, n := range frames {
-		roles.slots[i] = make([]*frame, n)
-		if n == 0 {
-			d.lost = append(d.lost, i)
-		}
+		slots[i] = make([]*frame, n)
 	}
-	d.weight, d.slotWeight = roles.weights()
+	d.weight, d.slotWeight, d.lost = weights(slots)
 	d.sumQuiet()
 	s := shape{columns: columns, slots: v}.newStrip(1)
 	s.y1, s.columns, s.quiet = 1, columns, [][]float64{make([]float64, columns)}

@@ -23,8 +23,8 @@ const dispersionTerms = 8
 // any dispersion of a sound instrument. RMS_PX is the rms of the arc lines
 // around the solution and NLINES their number: not a number and 0 for the
 // profile's own dispersion.
-func dispersionTable(g calib.Geometry, u *usage, columns int) (*fitsutil.Table, error) {
-	fit := newPolynomial(columns)
+func dispersionTable(g calib.Geometry, arcs *calib.ArcSolution, u *usage, columns int) (*fitsutil.Table, error) {
+	fit, tally := newPolynomial(columns), newLineTally(arcs)
 	var element, row, lines []int32
 	var rms, coef []float64
 	for y := range u.rows {
@@ -32,8 +32,9 @@ func dispersionTable(g calib.Geometry, u *usage, columns int) (*fitsutil.Table, 
 			if f&product.FlagNoData != 0 && f&product.FlagSentinel == 0 {
 				continue
 			}
-			element, row, lines = append(element, int32(j)), append(row, int32(y)), append(lines, 0)
-			rms = append(rms, math.NaN())
+			used, scatter := tally.at(j, y)
+			element, row, lines = append(element, int32(j)), append(row, int32(y)), append(lines, int32(used))
+			rms = append(rms, scatter)
 			coef = fit.append(coef, func(x float64) float64 { return g.Wavelength(x, float64(j), float64(y)) })
 		}
 	}
@@ -49,6 +50,11 @@ func dispersionTable(g calib.Geometry, u *usage, columns int) (*fitsutil.Table, 
 		{Key: "XSCALE", Value: fit.half, Comment: "COEF[i] multiplies t^i"},
 	} {
 		if err := t.Header.Set(c.Key, c.Value, c.Comment); err != nil {
+			return nil, err
+		}
+	}
+	for _, c := range geometryCards(&g) {
+		if err := t.Header.Set(c.key, *c.value, c.comment); err != nil {
 			return nil, err
 		}
 	}

@@ -21,7 +21,7 @@ func TestDispersionTable(t *testing.T) {
 		p.Spectrograph.DispersionPxPerNM = [3]float64{2, 3e-3, -2e-5} // bent more than any of the profiles
 	})
 	g, u := nominalGeometry(seq), newUsage(seq)
-	table, err := dispersionTable(g, u, testColumns)
+	table, err := dispersionTable(g, nil, u, testColumns)
 	require.NoError(t, err)
 	elements, err := table.Int32s("ELEMENT")
 	require.NoError(t, err)

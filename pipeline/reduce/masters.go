@@ -16,6 +16,7 @@ const (
 	masterBias     = iota // electrons above the overscan or the profile's level
 	masterDark            // electrons per second
 	masterOff             // light of all-off frames, electrons per second
+	masterLampOff         // light of the lamp's all-off frames, electrons per second
 	masterVariance        // of what is taken off one science exposure, electrons squared
 	masterBad             // flags
 	masterCount
@@ -25,8 +26,10 @@ const mastersFile = "masters.fits"
 
 // calibration is the frames of each kind that prepare uses, and the exposure
 // times in seconds: of the science frames, of the darks, of the all-off frames.
+// lamps are those of the flats.
 type calibration struct {
-	bias, dark, off, lamp                   []*frame
+	bias, dark, off                         []*frame
+	lamps                                   lamps
 	scienceSeconds, darkSeconds, offSeconds float64
 }
 
@@ -46,7 +49,7 @@ var deadMargin = calib.DefaultDeadRule(0).Window
 // run writes the masters into dir and returns their number of bad pixels.
 func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) (bad int, err error) {
 	var specs []fitsutil.ImageSpec
-	for i, name := range []string{"BIAS", "DARK", "OFF", "TAKENVAR", "BAD"} {
+	for i, name := range []string{"BIAS", "DARK", "OFF", "LAMPOFF", "TAKENVAR", "BAD"} {
 		bitpix := -32
 		if i == masterBad {
 			bitpix = 16
@@ -86,7 +89,7 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 // height is the rows of a strip that half of the memory holds, all frames of
 // the most numerous kind at once.
 func (p *prepare) height() int {
-	most := max(len(p.frames.bias), len(p.frames.dark), len(p.frames.off), len(p.frames.lamp), 1)
+	most := max(len(p.frames.bias), len(p.frames.dark), len(p.frames.off), len(p.frames.lamps.on), len(p.frames.lamps.off), 1)
 	perRow := int64(most+8) * int64(p.camera.columns) * bytesFloat
 	return int(min(int64(p.camera.rows), max(1, p.memory/2/perRow-2*int64(deadMargin))))
 }
@@ -118,7 +121,11 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 	if err != nil {
 		return nil, err
 	}
-	p.combine(s, y0, bias, dark, off)
+	lampOff, err := p.stack(ctx, p.frames.lamps.off, y0, y1, s.bad, y0)
+	if err != nil {
+		return nil, err
+	}
+	p.combine(s, y0, bias, dark, off, lampOff)
 	if err := p.findHot(s, dark != nil); err != nil {
 		return nil, err
 	}
@@ -191,7 +198,7 @@ func (c *camera) merge(dst []calib.Flag, y0 int, flags []calib.Flag, x, y, w int
 //
 // so that its variance is (1-t/to)^2 var(B) + (t/to)^2 var(o), and so on. The
 // variances are those of the noise model: a few frames' scatter says less.
-func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off []float32) {
+func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []float32) {
 	f := p.frames
 	for i := range s.bad {
 		quiet := p.camera.variance[y0+i/p.camera.columns][i%p.camera.columns]
@@ -209,6 +216,9 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off []float32) {
 			charge := float64(off[i]) - biasE
 			s.images[masterOff][i] = float32(charge/f.offSeconds - darkRate)
 			taken = meanVariance(quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
+		}
+		if lampOff != nil {
+			s.images[masterLampOff][i] = float32((float64(lampOff[i])-biasE)/f.lamps.seconds - darkRate)
 		}
 		s.images[masterBias][i], s.images[masterDark][i] = float32(biasE), float32(darkRate)
 		s.images[masterVariance][i] = float32(taken)
@@ -248,11 +258,11 @@ func levelAbove(variance float64) float64 {
 // findDead marks pixels that do not answer the lamp, in rows y0..y1-1; the rows
 // around them serve as neighbours.
 func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) error {
-	if len(p.frames.lamp) == 0 {
+	if len(p.frames.lamps.on) == 0 {
 		return nil
 	}
 	first, last := max(0, y0-deadMargin), min(p.camera.rows, y1+deadMargin)
-	lamp, err := p.stack(ctx, p.frames.lamp, first, last, s.bad, y0)
+	lamp, err := p.stack(ctx, p.frames.lamps.on, first, last, s.bad, y0)
 	if err != nil {
 		return err
 	}

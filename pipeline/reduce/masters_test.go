@@ -58,12 +58,12 @@ func newMasterNight(t *testing.T) *masterNight {
 		bias: take("bias", 7, func(int, int) float64 { return 0 }),
 		dark: take("dark", 5, func(x, y int) float64 { return testDarkSeconds * dark(x, y) }),
 		off:  take("off", 4, func(x, y int) float64 { return testOffSeconds * (dark(x, y) + offOf(x, y)) }),
-		lamp: take("lamp", 1, func(x, y int) float64 {
+		lamps: lamps{on: take("lamp", 1, func(x, y int) float64 {
 			if y*16+x == deadAt {
 				return 0
 			}
 			return 4000
-		}),
+		})},
 		scienceSeconds: testScienceSeconds, darkSeconds: testDarkSeconds, offSeconds: testOffSeconds,
 	}
 	return &masterNight{p}

@@ -13,6 +13,7 @@ import (
 // roles sorts a night's frames by what they are for.
 type roles struct {
 	calibration calibration
+	arcs        []*frame
 	slots       [][]*frame // science frames by code row
 	science     int        // their number
 	lost        []int      // code rows without a frame
@@ -22,12 +23,25 @@ type roles struct {
 }
 
 // sources are the frames that a reduction opens, in the order of their steps:
-// science, bias, dark, all-off, and lamp frames with all mirrors on.
-func sources(seq *sequence.Sequence, night *pair.Night, useCalibration bool) []source {
+// those of science, and what the recipe asks for. Lamp frames with all mirrors on
+// tell dead pixels, so that the detector asks for them as well as the flat.
+func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []source {
+	detector := recipe.Detector.Use != useOff
+	flat, arc := recipe.Flat.Use != useOff, recipe.Arc.Use == useAuto
 	var all []source
 	for _, f := range night.Frames {
-		calibrates := f.Kind == sequence.Bias || f.Kind == sequence.Dark || f.Kind == sequence.AllOff || isLampOn(seq, f.StepIndex)
-		if f.Kind != sequence.Science && (!useCalibration || !calibrates) {
+		wanted := false
+		switch f.Kind {
+		case sequence.Science:
+			wanted = true
+		case sequence.Bias, sequence.Dark, sequence.AllOff:
+			wanted = detector
+		case sequence.Flat:
+			wanted = flat || detector && isLampOn(seq, f.StepIndex)
+		case sequence.Arc:
+			wanted = arc
+		}
+		if !wanted {
 			continue
 		}
 		all = append(all, source{path: f.Path, name: filepath.Base(f.Path), hdu: f.HDU, step: f.StepIndex, entry: f.StepIndex})
@@ -37,15 +51,8 @@ func sources(seq *sequence.Sequence, night *pair.Night, useCalibration bool) []s
 
 // isLampOn tells a lamp frame with every element open.
 func isLampOn(seq *sequence.Sequence, step int) bool {
-	if seq.Steps[step].Kind != sequence.Flat {
-		return false
-	}
-	for _, bit := range seq.Code[step] {
-		if bit == 0 {
-			return false
-		}
-	}
-	return true
+	pattern, _ := seq.Pattern(step)
+	return seq.Steps[step].Kind == sequence.Flat && pattern == sequence.PatternOn
 }
 
 // assign sorts the open frames and says what is missing.
@@ -65,8 +72,13 @@ func assign(seq *sequence.Sequence, frames []*frame, useCalibration bool) (*role
 		case sequence.AllOff:
 			r.calibration.off = append(r.calibration.off, f)
 		case sequence.Flat:
-			r.calibration.lamp = append(r.calibration.lamp, f)
-			continue // lamps of different times add up
+			if err := r.calibration.lamps.add(seq, f); err != nil {
+				return nil, err
+			}
+			continue
+		case sequence.Arc:
+			r.arcs = append(r.arcs, f)
+			continue // of as many times as there are lamps
 		}
 		if t, seen := times[step.Kind]; seen && t != step.ExptimeSeconds && step.Kind != sequence.Bias {
 			return nil, fmt.Errorf("the sequence has %s steps of %g s and of %g s; plan them all of one exposure time", step.Kind, t, step.ExptimeSeconds)
@@ -124,23 +136,26 @@ func (r *roles) findMissing(seq *sequence.Sequence) {
 		}
 	}
 	for i := range seq.Steps {
-		if isLampOn(seq, i) && len(c.lamp) == 0 {
+		if isLampOn(seq, i) && len(c.lamps.on) == 0 {
 			r.degraded = append(r.degraded, "all lamp frames with every mirror on are missing: dead pixels are not known")
 			break
 		}
 	}
 }
 
-// weights is 1/frames for each slot, 0 for a lost one, and their sum.
-func (r *roles) weights() (weight []float64, sum float64) {
-	weight = make([]float64, len(r.slots))
-	for i, frames := range r.slots {
+// weights is 1/frames for each slot, 0 for a lost one, their sum, and which slots
+// are lost.
+func weights(slots [][]*frame) (weight []float64, sum float64, lost []int) {
+	weight = make([]float64, len(slots))
+	for i, frames := range slots {
 		if n := len(frames); n > 0 {
 			weight[i] = 1 / float64(n)
 			sum += weight[i]
+		} else {
+			lost = append(lost, i)
 		}
 	}
-	return weight, sum
+	return weight, sum, lost
 }
 
 // fillLedger puts what was measured into the ledger.

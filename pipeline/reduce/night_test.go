@@ -25,7 +25,7 @@ func flatsAndCycles(target *sequence.Target, _ *instrument.Profile) {
 }
 
 // A whole night: every slot has a frame a cycle, calibrations are sorted by kind,
-// and of the lamp frames only those with all mirrors open serve.
+// lamp frames by what the mirrors show.
 func TestAssignWhole(t *testing.T) {
 	seq := smallSequence(t, instrument.Square, flatsAndCycles)
 	all := func(sequence.Step) bool { return true }
@@ -41,13 +41,14 @@ func TestAssignWhole(t *testing.T) {
 	require.Len(t, c.bias, 20)
 	require.Len(t, c.dark, 5)
 	require.Len(t, c.off, 3)
-	require.Len(t, c.lamp, 2)
+	require.Len(t, c.lamps.on, 2)
 	require.Equal(t, []float64{90, 90, 90}, []float64{c.scienceSeconds, c.darkSeconds, c.offSeconds})
 	require.Equal(t, 30, r.science)
 	require.Empty(t, r.lost)
 	require.Empty(t, r.degraded)
 	require.Empty(t, r.warnings)
-	weight, sum := r.weights()
+	weight, sum, lost := weights(r.slots)
+	require.Empty(t, lost)
 	require.Equal(t, 0.5, weight[3])
 	require.InDelta(t, 7.5, sum, 1e-12)
 }
@@ -76,7 +77,8 @@ func TestAssignMissing(t *testing.T) {
 	require.Contains(t, r.degraded[1], "all 5 dark frames are missing")
 	require.Contains(t, r.degraded[2], "dead pixels are not known")
 	require.Equal(t, []string{"1 of 20 bias frames are missing"}, r.warnings)
-	weight, _ := r.weights()
+	weight, _, lost := weights(r.slots)
+	require.Equal(t, []int{gone}, lost)
 	require.Zero(t, weight[gone])
 	require.Equal(t, 1.0, weight[single.Row])
 	// Who asks for no calibration misses none.

@@ -3,6 +3,7 @@ package reduce
 import (
 	"crypto/sha256"
 	"encoding/hex"
+	"strings"
 
 	"mirrorloom/configs"
 	"mirrorloom/pipeline/config"
@@ -37,7 +38,8 @@ type Recipe struct {
 	Name string `yaml:"-" config:"-"`
 }
 
-// StageRecipe is a stage without options.
+// StageRecipe is a stage without options. The arc's `use` may also name the
+// cube.fits of another run, whose geometry is then taken.
 type StageRecipe struct {
 	Use string `yaml:"use"`
 }
@@ -67,8 +69,9 @@ type GridRecipe struct {
 
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
-	off := StageRecipe{Use: useOff}
-	r.Flat, r.Arc, r.Sky, r.Flux, r.Throughput, r.Repair = off, off, off, off, off, off
+	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
+	r.Flat, r.Arc = auto, auto
+	r.Sky, r.Flux, r.Throughput, r.Repair = off, off, off, off
 	r.Detector.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto}
 }
@@ -117,11 +120,14 @@ func (r *Recipe) check(doc *config.Doc) error {
 		key string
 		use string
 	}{
-		{"flat", r.Flat.Use}, {"arc", r.Arc.Use}, {"sky", r.Sky.Use}, {"flux", r.Flux.Use},
+		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
 		{"throughput", r.Throughput.Use}, {"repair", r.Repair.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
+	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
+	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
+		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
 	r.checkGrid(c)
 	return c.Err()
 }

@@ -40,9 +40,9 @@ func TestRecipeRefusals(t *testing.T) {
 	for _, c := range []struct{ text, want string }{
 		{"flats: {use: off}", "r.yaml:1: flats"},
 		{"flat: {use: off, x: 1}", "flat.x"},
-		{"flat: {use: auto}", `flat.use: "auto" is not available in this version; use off`},
+		{"flat: {use: flat.fits}", "flat.use"},
 		{"\narc: {use: arcs.csv}", "r.yaml:2: arc.use"},
-		{"sky: {use: auto}", "sky.use"},
+		{"sky: {use: auto}", `sky.use: "auto" is not available in this version; use off`},
 		{"flux: {use: auto}", "flux.use"},
 		{"throughput: {use: auto}", "throughput.use"},
 		{"repair: {use: auto}", "repair.use"},

@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"context"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
@@ -19,7 +20,12 @@ type rectifier struct {
 	usage    *usage
 	elements int
 	uniform  bool
-	workers  []rectifyWorker
+	// response, where not nil, is divided out of the voxels; pixelVariance is the
+	// relative variance of the pixels' own response, 0 without one.
+	response      *calib.Response
+	pixelVariance float64
+	added         []float32 // [row][element], see addedShare
+	workers       []rectifyWorker
 }
 
 // group is the number of elements that one worker takes to voxels before it
@@ -30,6 +36,7 @@ type rectifyWorker struct {
 	signal, variance  []float32 // a straightened row
 	flags             calib.RowFlags
 	edges             []float64
+	before            []float32
 	voxels, variances []float32 // [element of the group][voxel]
 	bits              []calib.Flag
 	signals, vars     [][]float32 // one element's rows in the window
@@ -61,10 +68,12 @@ func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, wor
 		return nil, err
 	}
 	r := &rectifier{geometry: g, grid: grid, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
+	r.added = make([]float32, s.rows*s.elements)
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
 			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
 			edges:  make([]float64, grid.Count+1),
+			before: make([]float32, grid.Count),
 			voxels: make([]float32, group*grid.Count), variances: make([]float32, group*grid.Count),
 			bits: make([]calib.Flag, group*grid.Count),
 		})
@@ -140,8 +149,68 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		r.columns.Resample(calib.Voxels{
 			Signal: k.voxels[at:], Variance: k.variances[at:], Flags: k.bits[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
+		r.flatten(k, at, j, y)
 	}
 	r.store(k, out, row, j0, j1)
+}
+
+// flatten divides the voxels of an element and row by the response of slit and
+// light path, and adds the variance of both responses.
+func (r *rectifier) flatten(k *rectifyWorker, at, j, y int) {
+	if r.response == nil {
+		return
+	}
+	nl := r.grid.Count
+	signal, variance, flags := k.voxels[at:at+nl], k.variances[at:at+nl], k.bits[at:at+nl]
+	sampled := j%addedEvery == 0
+	if sampled {
+		copy(k.before, variance)
+	}
+	p := float32(r.pixelVariance)
+	for i, v := range signal {
+		variance[i] += p * v * v
+	}
+	r.response.Divide(signal, variance, flags, j, y)
+	if sampled {
+		r.added[y*r.elements+j] = r.addedShare(k, variance, j, y)
+	}
+}
+
+// addedEvery: of every so many elements the added variance is looked at.
+const addedEvery = 8
+
+// addedShare is the median over the voxels of an element and row of the variance
+// that the responses add, over what was there before; 0 without voxels.
+func (r *rectifier) addedShare(k *rectifyWorker, variance []float32, j, y int) float32 {
+	n := 0
+	for l, after := range variance {
+		if factor, _, _ := r.response.At(j, y, l); after > 0 {
+			k.before[n] = after*factor*factor/k.before[l] - 1
+			n++
+		}
+	}
+	if n == 0 {
+		return 0
+	}
+	slices.Sort(k.before[:n])
+	return k.before[n/2]
+}
+
+// addedVariance is the median of addedShare over the rows that mirrors feed.
+func (r *rectifier) addedVariance() float64 {
+	var all []float32
+	for y := range r.usage.rows {
+		for j, f := range r.usage.row(y) {
+			if j%addedEvery == 0 && f == 0 {
+				all = append(all, r.added[y*r.elements+j])
+			}
+		}
+	}
+	if len(all) == 0 {
+		return 0
+	}
+	slices.Sort(all)
+	return float64(all[len(all)/2])
 }
 
 // store writes a group's voxels into the strip, and voids those that no mirror

@@ -81,6 +81,7 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 	}{
 		{"pair", r.pair},
 		{"prepare", r.prepare},
+		{"calibrate", r.calibrate},
 		{"strips", r.strips},
 		{"finish", r.finish},
 	} {
@@ -137,6 +138,8 @@ type reduction struct {
 	cube    *fitsutil.Cube
 	element *fitsutil.Cube
 
+	optics    optics
+	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
 	badPixels int
@@ -180,7 +183,7 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	calibrates := r.opts.Recipe.Detector.Use != useOff
-	if r.album, err = openAlbum(sources(r.seq, r.night, calibrates), r.scratch()); err != nil {
+	if r.album, err = openAlbum(sources(r.seq, r.night, r.opts.Recipe), r.scratch()); err != nil {
 		return 0, err
 	}
 	r.roles, err = assign(r.seq, r.album.frames, calibrates)
@@ -199,7 +202,7 @@ func (r *reduction) prepare(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	c := r.roles.calibration
-	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamp)
+	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamps.on) + len(c.lamps.off)
 	if r.masters, err = openMasters(r.scratch()); err != nil {
 		return 0, err
 	}
@@ -225,16 +228,17 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
 		elementCube: r.opts.Elements, cube: r.opts.Cube,
 	}
-	d := r.newDecoder(code)
+	d := r.newDecoder(code, r.roles.slots)
+	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
+		return 0, err
+	}
 	s.uniform = d.code.VarianceUniform()
-	r.usage = newUsage(r.seq)
-	r.schema = product.NewSchema(r.seq)
-	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
 	s.voxels = r.schema.Grid.Count
 	if s.cube {
-		if r.rectifier, err = newRectifier(nominalGeometry(r.seq), r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
+		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
+		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
 	}
 	h, err := s.heights(r.opts.MemoryBytes)
@@ -246,10 +250,12 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	w := &sweep{
-		shape: s, heights: h, decoder: d, rectify: r.rectifier, cube: r.cube, elements: r.element, workers: r.opts.Workers,
-		reader:   r.newReader(),
+		shape: s, heights: h, decoder: d, rectify: r.rectifier, elements: r.element, workers: r.opts.Workers,
+		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff),
+		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
+	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
@@ -283,24 +289,39 @@ func (r *reduction) gridSource() string {
 	return filepath.Join(r.opts.Sequence, "profile.yaml")
 }
 
-func (r *reduction) newDecoder(code *hadamard.Code) *decoder {
+func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
 	d := &decoder{
 		code: hadamard.NewDecoder(code), columns: r.camera.columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
-		k: float64(code.K()), lost: r.roles.lost,
+		k: float64(code.K()),
 	}
-	d.weight, d.slotWeight = r.roles.weights()
+	d.weight, d.slotWeight, d.lost = weights(slots)
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()
 	}
 	return d
 }
 
-func (r *reduction) newReader() *stripReader {
+// write takes a strip of the cube to the file and counts its voxels.
+func (r *reduction) write(w *sweep, out *outStrip) error {
+	if r.optics.nominalWave {
+		for i := range out.flags {
+			out.flags[i] |= product.FlagNominalWave
+		}
+	}
+	for row := range out.h {
+		y := out.y0 + row
+		w.quality[y].count(out, row, w.shape.elements, w.shape.voxels, r.usage.row(y))
+	}
+	return out.write(r.cube, w.shape.voxels)
+}
+
+// newReader reads the frames of slots, exposed so long, whose light without any
+// open mirror is in master dim.
+func (r *reduction) newReader(slots [][]*frame, seconds float64, dim int) *stripReader {
 	return &stripReader{
-		camera: r.camera, album: r.album, slots: r.roles.slots, masters: r.masters,
-		scienceSeconds: r.roles.calibration.scienceSeconds,
-		workers:        r.opts.Workers, scratch: make([]readScratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+		camera: r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
+		workers: r.opts.Workers, scratch: make([]readScratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
 	}
 }
 
@@ -361,7 +382,7 @@ func (r *reduction) finish(context.Context) (int64, error) {
 		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {
 			return 0, err
 		}
-		table, err := dispersionTable(r.rectifier.geometry, r.usage, r.camera.columns)
+		table, err := dispersionTable(r.rectifier.geometry, r.optics.arcs, r.usage, r.camera.columns)
 		if err != nil {
 			return 0, err
 		}
@@ -383,10 +404,13 @@ func (r *reduction) finish(context.Context) (int64, error) {
 // result writes run.json and the report, and sums up.
 func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.quality.BadPixels = r.badPixels
+	if a := r.optics.arcs; a != nil {
+		r.quality.WavelengthRMSPx = &a.RMSPx
+	}
 	r.quality.Lost = len(r.roles.missing)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality,
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if len(r.roles.degraded) > 0 {

@@ -51,14 +51,17 @@ func (s *strip) keep(w *decodeWorker, at, n int, out *decodedRow, x0 int, unifor
 
 // stripReader fills strips from the science frames and the masters.
 type stripReader struct {
-	camera         *camera
-	album          *album
-	slots          [][]*frame // by code row
-	masters        *masters
-	scienceSeconds float64
-	workers        int
-	scratch        []readScratch
-	sums           [][]float32 // by worker, for slots of several frames
+	camera  *camera
+	album   *album
+	slots   [][]*frame // by code row
+	masters *masters
+	// seconds is the exposure time of the frames, and dim the master of the light
+	// that comes without any open mirror: masterOff or masterLampOff.
+	seconds float64
+	dim     int
+	workers int
+	scratch []readScratch
+	sums    [][]float32 // by worker, for slots of several frames
 }
 
 // read fills s with rows y0..y1-1.
@@ -124,10 +127,10 @@ func (r *stripReader) readMasters(s *strip, n int) error {
 	if err := rows(masterDark, s.base); err != nil {
 		return err
 	}
-	if err := rows(masterOff, s.level); err != nil {
+	if err := rows(r.dim, s.level); err != nil {
 		return err
 	}
-	seconds := float32(r.scienceSeconds)
+	seconds := float32(r.seconds)
 	for p := range s.level {
 		s.level[p] = (s.level[p] + s.base[p]) * seconds
 	}

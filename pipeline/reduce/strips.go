@@ -11,13 +11,18 @@ import (
 
 // sweep is the second stage: once through the detector, from frames to cube.
 type sweep struct {
-	shape    shape
-	heights  heights
-	reader   *stripReader
-	decoder  *decoder
-	rectify  *rectifier     // nil without a cube
-	cube     *fitsutil.Cube // nil without a cube
+	shape   shape
+	heights heights
+	reader  *stripReader
+	decoder *decoder
+	rectify *rectifier // nil without a cube
+	// sink takes each strip of the cube; the strip is used again afterwards.
+	sink     func(ctx context.Context, out *outStrip) error
 	elements *fitsutil.Cube // nil without an element cube
+	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
+	// decoded row, in order, before bad pixels are filled.
+	pixel    *calib.PixelResponse
+	light    func(row *decodedRow)
 	workers  int
 	progress func(rows int)
 
@@ -27,7 +32,9 @@ type sweep struct {
 	planes  *elementPlanes // nil without an element cube
 	out     *outStrip
 	nextOut int // the next trace row to write
-	quality []rowQuality
+	// finished is the first row that is not yet fit for rectifying.
+	finished int
+	quality  []rowQuality
 }
 
 // loaded is a strip that was read, or why it was not.
@@ -74,7 +81,7 @@ func (w *sweep) begin() {
 	for range w.workers {
 		w.scratch = append(w.scratch, w.decoder.newWorker())
 	}
-	if w.cube != nil {
+	if w.rectify != nil {
 		w.out = w.shape.newOut(w.heights.out)
 	}
 	if w.elements != nil {
@@ -116,12 +123,12 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 			return err
 		}
 	}
-	if w.cube == nil {
+	if w.rectify == nil {
 		w.window.dropBefore(s.y1)
 		return nil
 	}
 	for {
-		n := min(w.rectify.ready(w.nextOut, s.y1), w.heights.out)
+		n := min(w.rectify.ready(w.nextOut, w.finished), w.heights.out)
 		// Short strips are written only at the end: see planeRun.
 		if n == 0 || n < w.heights.out && s.y1 < w.shape.rows {
 			break
@@ -130,7 +137,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 			return err
 		}
 	}
-	w.window.dropBefore(w.rectify.needs(w.nextOut))
+	w.window.dropBefore(min(w.rectify.needs(w.nextOut), w.finished-1))
 	return nil
 }
 
@@ -161,19 +168,87 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		q.dark.sum += d.sum
 		q.dark.terms += d.terms
 	}
-	return parallel(ctx, w.workers, len(rows), func(worker, i int) error {
-		w.fill(&w.fills[worker], rows[i])
+	err = parallel(ctx, w.workers, len(rows), func(_, i int) error {
+		w.flatten(rows[i])
 		return nil
 	})
+	if err != nil {
+		return err
+	}
+	if w.light != nil {
+		for _, row := range rows {
+			w.light(row)
+		}
+	}
+	return w.finish(ctx, s.y1)
 }
 
-func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
+// finish makes rows fit for rectifying, up to row next: flags of saturated pixels
+// spread to the neighbours in their column, into which a full pixel's charge
+// bleeds, and bad pixels get harmless values. The last row of a strip waits for
+// the next one.
+func (w *sweep) finish(ctx context.Context, next int) error {
+	if w.rectify == nil {
+		return nil
+	}
+	if next < w.shape.rows {
+		next--
+	}
+	first, n := w.window.first(), next-w.finished
+	err := parallel(ctx, w.workers, n, func(worker, i int) error {
+		at := w.finished + i - first
+		row := w.window.rows[at]
+		for _, near := range []int{at - 1, at + 1} {
+			if near >= 0 && near < len(w.window.rows) {
+				spread(row.flags, w.window.rows[near].own)
+			}
+		}
+		w.fill(&w.fills[worker], row)
+		return nil
+	})
+	w.finished = max(w.finished, next)
+	return err
+}
+
+// spread takes over the saturation of a neighbouring row.
+func spread(flags, neighbour []calib.Flag) {
+	for x, f := range neighbour {
+		flags[x] |= f & calib.Saturated
+	}
+}
+
+// flatten divides a row by the response of its pixels. What the response's own
+// error adds depends on each element's light: the rectifier adds it. It also takes
+// stock of the row's flags.
+func (w *sweep) flatten(row *decodedRow) {
+	if w.pixel != nil {
+		w.dividePixels(row)
+	}
 	q := &w.quality[row.y]
 	for _, b := range row.flags {
 		if b&calib.Saturated != 0 {
 			q.saturated++
 		}
 	}
+	copy(row.own, row.flags)
+}
+
+func (w *sweep) dividePixels(row *decodedRow) {
+	for _, r := range row.signal {
+		w.pixel.Divide(r, nil, row.y*w.shape.columns)
+	}
+	factor, _, flags := w.pixel.Row(row.y)
+	for _, r := range row.variance {
+		for x, f := range factor {
+			r[x] /= f * f
+		}
+	}
+	for x, f := range flags {
+		row.flags[x] |= f
+	}
+}
+
+func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	f.Plan(row.flags, calib.BadPixel|calib.Saturated)
 	for _, r := range row.signal {
 		f.Signal(r)
@@ -196,11 +271,7 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 			}
 		}
 	}
-	for row := range n {
-		y := w.nextOut + row
-		w.quality[y].count(w.out, row, w.shape.elements, w.shape.voxels, w.rectify.usage.row(y))
-	}
-	if err := w.out.write(w.cube, w.shape.voxels); err != nil {
+	if err := w.sink(ctx, w.out); err != nil {
 		return err
 	}
 	w.nextOut += n

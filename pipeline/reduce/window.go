@@ -10,6 +10,8 @@ type decodedRow struct {
 	// pixel have the same.
 	variance [][]float32
 	flags    []calib.Flag // [column]
+	// own are the flags before those of neighbouring rows spread to this one.
+	own []calib.Flag
 }
 
 // window holds decoded rows in order until no trace needs them.
@@ -25,7 +27,7 @@ func newWindow(s shape) *window {
 		variances = s.elements
 	}
 	return &window{make: func() *decodedRow {
-		return &decodedRow{signal: planes(s.elements, s.columns), variance: planes(variances, s.columns), flags: make([]calib.Flag, s.columns)}
+		return &decodedRow{signal: planes(s.elements, s.columns), variance: planes(variances, s.columns), flags: make([]calib.Flag, s.columns), own: make([]calib.Flag, s.columns)}
 	}}
 }
 

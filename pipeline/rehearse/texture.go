@@ -43,6 +43,8 @@ type efficiencyMap struct {
 	o    *optics
 	n    int
 	slit *waves
+	// slitMean is that of the slit function before it is divided out.
+	slitMean float64
 	// wiggles[j][k] is the factor at dispersed distance pxFrom + k.
 	wiggles [][]float64
 }
@@ -59,13 +61,46 @@ func (o *optics) newEfficiencyMap(seed uint64, n int) *efficiencyMap {
 		}
 		m.wiggles = append(m.wiggles, list)
 	}
+	m.normalise()
 	return m
+}
+
+// normalise gives both factors a mean of 1 over the field and the grid's band: the
+// profile's throughput is that of the whole.
+func (m *efficiencyMap) normalise() {
+	o := m.o
+	g := o.profile.Grid
+	from := o.geometry.dispersed(g.WavelengthNM(-0.5)) - o.pxFrom
+	to := o.geometry.dispersed(g.WavelengthNM(float64(g.Count)-0.5)) - o.pxFrom
+	if from > to {
+		from, to = to, from
+	}
+	sum, count := 0.0, 0
+	for _, list := range m.wiggles {
+		for k := max(0, int(from)); k <= min(len(list)-1, int(to)); k++ {
+			sum += list[k]
+			count++
+		}
+	}
+	for _, list := range m.wiggles {
+		for k := range list {
+			list[k] *= float64(count) / sum
+		}
+	}
+	sum, count = 0, 0
+	for j := range m.n {
+		for y := range o.rows {
+			sum += 1 + slitRMS*m.slit.at(float64(j)/float64(m.n), float64(y)/float64(o.rows))
+			count++
+		}
+	}
+	m.slitMean = sum / float64(count)
 }
 
 // apply multiplies the light of element j in a mirror row.
 func (m *efficiencyMap) apply(d *density, j int, row *mirrorRow, across float64) {
 	o := m.o
-	slit := 1 + slitRMS*m.slit.at(float64(j)/float64(m.n), row.row/float64(o.rows))
+	slit := (1 + slitRMS*m.slit.at(float64(j)/float64(m.n), row.row/float64(o.rows))) / m.slitMean
 	list := m.wiggles[j]
 	for i := d.from; i < d.to; i++ {
 		at := row.start[i] - across - o.pxFrom

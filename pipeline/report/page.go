@@ -35,6 +35,7 @@ type page struct {
 	Flags            []flagShare
 	Ledger           ledgerView
 	Quality          []fact
+	Calibration      []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
@@ -57,7 +58,7 @@ func newPage(in Input) *page {
 	p := &page{
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
-		Ledger: viewLedger(in.Ledger), Quality: qualityFacts(in.Run.Quality),
+		Ledger: viewLedger(in.Ledger), Quality: qualityFacts(in.Run.Quality), Calibration: calibrationFacts(in.Run.Calibration),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")

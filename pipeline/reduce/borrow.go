@@ -1,0 +1,63 @@
+package reduce
+
+import (
+	"fmt"
+
+	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/product"
+)
+
+// geometryCard is a parameter of the geometry on a card of DISPERSION.
+type geometryCard struct {
+	key, comment string
+	value        *float64
+}
+
+func geometryCards(g *calib.Geometry) []geometryCard {
+	return []geometryCard{
+		{"GEOMXC", "x = XC + XE (j - JC) + D1 l + D2 l^2 + D3 l^3", &g.X_c},
+		{"GEOMYC", "    + SLIT q + SMIL q^2, q = y - YC, px from 0", &g.Y_c},
+		{"GEOMXE", "px per element", &g.X_e},
+		{"GEOMJC", "element at XC, from 0", &g.J_c},
+		{"GEOMLC", "l = vacuum nm - LC", &g.L_c},
+		{"GEOMD1", "px/nm", &g.D[0]},
+		{"GEOMD2", "px/nm2", &g.D[1]},
+		{"GEOMD3", "px/nm3", &g.D[2]},
+		{"GEOMSLIT", "slit tilt, px/px", &g.SlitTilt},
+		{"GEOMSMIL", "smile, 1/px", &g.Smile},
+		{"GEOMTILT", "trace: y = row + TILT (x-XC) + CURV (x-XC)^2", &g.TraceTilt},
+		{"GEOMCURV", "1/px", &g.TraceCurve},
+	}
+}
+
+// borrowGeometry takes the geometry of another run's cube.fits.
+func (r *reduction) borrowGeometry(path string) error {
+	f, err := fitsutil.Open(path)
+	if err != nil {
+		return err
+	}
+	defer f.Close()
+	table, err := f.Table(product.Dispersion)
+	if err != nil {
+		return err
+	}
+	if name, err := f.HDUs()[0].Header.Str("PROFNAME"); err != nil || name != r.seq.ProfileName {
+		return fmt.Errorf("%s is of the instrument %q, not %q", path, name, r.seq.ProfileName)
+	}
+	var g calib.Geometry
+	for _, c := range geometryCards(&g) {
+		if *c.value, err = table.Header.Float(c.key); err != nil {
+			return err
+		}
+	}
+	if elements, err := f.HDUs()[1].Header.Int("NAXIS1"); err != nil || int(elements) != r.seq.N() {
+		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())
+	}
+	grid := r.schema.Grid
+	if err := g.Check(r.camera.columns, r.camera.rows, grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)); err != nil {
+		return fmt.Errorf("%s: %w", path, err)
+	}
+	r.optics.geometry = g
+	return nil
+}

@@ -1,0 +1,103 @@
+package reduce
+
+import (
+	"math"
+
+	"mirrorloom/calib"
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/sequence"
+)
+
+// maxEnds bounds the ends of one element: more closed ranges than this are not
+// looked at.
+const maxEnds = 64
+
+// litMirrorRows tells for each mirror row w, from the first on, whether the
+// element is lit there in a lamp frame: it has mirrors and they are not closed.
+func litMirrorRows(seq *sequence.Sequence, strip sequence.Element) (lit []bool, first int) {
+	first, last := seq.Profile.WRange()
+	lit = make([]bool, last-first+1)
+	for i := range lit {
+		lit[i] = rowFlags(seq, seq.Profile, first+i, strip) == 0
+	}
+	return lit, first
+}
+
+// ends lists where the light of an element ends along the slit.
+func (r *reduction) ends(element int) []calib.RowEnd {
+	p := r.seq.Profile
+	lit, first := litMirrorRows(r.seq, r.seq.Elements[r.seq.ElementColumns()[element]])
+	var ends []calib.RowEnd
+	at := func(w float64) float64 { return mirrorCenter(p, w) }
+	for i := range len(lit) + 1 {
+		before, here := i > 0 && lit[i-1], i < len(lit) && lit[i]
+		if before != here && len(ends) < maxEnds {
+			ends = append(ends, calib.RowEnd{Row: at(float64(first+i) - 0.5), Above: here == (p.Spectrograph.WStepPx > 0)})
+		}
+	}
+	return ends
+}
+
+// mirrorCenter is the detector row of mirror row w at x = x_c.
+func mirrorCenter(p *instrument.Profile, w float64) float64 {
+	return p.Spectrograph.YCenterPx + p.Spectrograph.WStepPx*(w-p.WCenter())
+}
+
+// commonEnds are the ends of all elements, if they are the same.
+func (r *reduction) commonEnds() (ends []calib.RowEnd, same bool) {
+	for j := range r.seq.N() {
+		own := r.ends(j)
+		if j == 0 {
+			ends = own
+			continue
+		}
+		if len(own) != len(ends) {
+			return nil, false
+		}
+		for i := range own {
+			if own[i] != ends[i] {
+				return nil, false
+			}
+		}
+	}
+	return ends, len(ends) > 0
+}
+
+// litRows are the detector rows, inclusive, between the outermost ends of an
+// element's light, whatever the column: the trace's excursion is left out.
+func (r *reduction) litRows(element int) (first, last int) {
+	low, high := math.Inf(1), math.Inf(-1)
+	for _, e := range r.ends(element) {
+		low, high = min(low, e.Row), max(high, e.Row)
+	}
+	down, up := 0.0, 0.0
+	for x := range r.camera.columns {
+		t := r.optics.geometry.TraceShift(float64(x))
+		down, up = min(down, t), max(up, t)
+	}
+	first = max(0, int(math.Ceil(low+up)))
+	last = min(r.camera.rows-1, int(math.Floor(high+down)))
+	return first, last
+}
+
+// lit is the share of full light that reaches each detector row of each element,
+// [row][element].
+func (r *reduction) lit() []float32 {
+	p, n := r.seq.Profile, r.seq.N()
+	all := make([]float32, r.camera.rows*n)
+	share := make([]float64, r.camera.rows)
+	for j, column := range r.seq.ElementColumns() {
+		mirrors, first := litMirrorRows(r.seq, r.seq.Elements[column])
+		var centers []float64
+		for i, on := range mirrors {
+			if on {
+				centers = append(centers, mirrorCenter(p, float64(first+i)))
+			}
+		}
+		calib.Illumination(share, centers, math.Abs(p.Spectrograph.WStepPx), p.Spectrograph.LSFFWHMPx)
+		for y, v := range share {
+			all[y*n+j] = float32(v)
+		}
+	}
+	return all
+}

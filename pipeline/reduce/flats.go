@@ -1,0 +1,170 @@
+package reduce
+
+import (
+	"context"
+	"errors"
+	"fmt"
+
+	"mirrorloom/calib"
+	"mirrorloom/calib/physics"
+	"mirrorloom/hadamard"
+)
+
+// lampKelvin is the colour that a continuum lamp is taken to have before its
+// own colour is fitted: tungsten halogen lamps burn near 3000 K (common practice,
+// no source).
+const lampKelvin = 3000
+
+// flatPasses over the coded lamp flat: the second takes the first's solution as
+// its template (see calib.FlatFit).
+const flatPasses = 2
+
+// flats measures the response of pixels, slit and light path, the neighbour term
+// and the leak.
+func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
+	l := &r.roles.calibration.lamps
+	lost := len(l.lost())
+	if l.coded == nil || lost*20 > r.seq.V {
+		r.degrade("the flat field is not corrected: %d of %d coded lamp frames are there; plan or repeat a coded flat cycle, or say `flat: {use: off}` in the recipe", r.seq.V*min(1, len(l.coded))-lost, r.seq.V)
+		return nil
+	}
+	err := r.pixelFlat(ctx, m)
+	if err == nil {
+		err = r.slitFlat(ctx, m)
+	}
+	if errors.Is(err, calib.ErrNoLight) {
+		r.optics.pixel, r.optics.response = nil, nil
+		r.degrade("the flat field is not corrected: %v", err)
+		return nil
+	}
+	return err
+}
+
+// pixelFlat measures the response of the pixels from all lamp frames together: a
+// coded cycle adds up to k all-on frames.
+func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
+	l := &r.roles.calibration.lamps
+	frames := append([]*frame{}, l.on...)
+	if len(l.lost()) == 0 { // else the sum is not that of evenly lit elements
+		for _, list := range l.coded {
+			frames = append(frames, list...)
+		}
+	}
+	sum, err := r.sumExposures(ctx, frames, m, true)
+	if err != nil {
+		return err
+	}
+	expected := make([]float32, len(sum.Signal))
+	p := r.seq.Profile
+	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.columns, p.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
+		return err
+	}
+	shift := make([]float64, r.camera.columns)
+	for x := range shift {
+		shift[x] = r.optics.geometry.TraceShift(float64(x))
+	}
+	r.optics.pixel, err = calib.DefaultPixelRule().Measure(ctx, sum.Signal, sum.Variance, sum.Flags, expected, shift)
+	return err
+}
+
+// slitFlat decodes the coded lamp frames and fits slit function and efficiency. In
+// the first pass the decoded light serves the neighbour term and the leak as well;
+// the second is freed of the neighbour term, whose ghosts would else be taken for a
+// slit function.
+func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
+	code, err := r.code()
+	if err != nil {
+		return err
+	}
+	s := shape{
+		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
+		voxels: r.schema.Grid.Count, cube: true, uniform: code.Design().IsS(),
+	}
+	rectify, err := newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers)
+	if err != nil {
+		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
+	}
+	s.margin = rectify.margin(s.rows)
+	fit, err := calib.NewFlatFit(r.flatRule(rectify), s.elements, s.rows, s.voxels, r.lampLight(), r.lit())
+	if err != nil {
+		return err
+	}
+	terms, err := r.newLampTerms(ctx, m)
+	if err != nil {
+		return err
+	}
+	for pass := range flatPasses {
+		w, err := r.flatSweep(code, s, rectify, fit)
+		if err != nil {
+			return err
+		}
+		if pass == 0 {
+			w.light = terms.addRow
+		}
+		if err := w.run(ctx); err != nil {
+			return err
+		}
+		if r.optics.response, err = fit.Solve(); err != nil {
+			return err
+		}
+		if pass == 0 {
+			if err := terms.solve(&r.optics); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
+// flatSweep goes once through the coded lamp frames.
+func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, fit *calib.FlatFit) (*sweep, error) {
+	l := &r.roles.calibration.lamps
+	h, err := s.heights(r.opts.MemoryBytes)
+	if err != nil {
+		return nil, err
+	}
+	d := r.newDecoder(code, l.coded)
+	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
+		return nil, err
+	}
+	return &sweep{
+		shape: s, heights: h, decoder: d, rectify: rectify, workers: r.opts.Workers,
+		reader:   r.newReader(l.coded, l.seconds, masterLampOff),
+		pixel:    r.optics.pixel,
+		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
+		sink: func(ctx context.Context, out *outStrip) error {
+			groups := (s.elements + group - 1) / group
+			return parallel(ctx, r.opts.Workers, groups, func(_, i int) error {
+				fit.AddStrip(out.y0, out.h, out.signal, out.variance, out.flags, i*group, min((i+1)*group, s.elements))
+				return nil
+			})
+		},
+	}, nil
+}
+
+// flatRule knows how resampling correlates voxels in the middle of the field.
+func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
+	rule := calib.DefaultFlatRule()
+	edges := make([]float64, r.schema.Grid.Count+1)
+	y := r.camera.rows / 2
+	r.optics.geometry.EdgesX(edges, r.optics.geometry.J_c, float64(y), r.schema.Grid.WavelengthNM(-0.5), r.schema.Grid.StepNM)
+	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
+	return rule
+}
+
+// lampLight is what is known of the lamp's light in each voxel: a black body
+// through the profile's throughput.
+func (r *reduction) lampLight() []float64 {
+	g := r.schema.Grid
+	light := make([]float64, g.Count)
+	for l := range light {
+		light[l] = r.lampAt(g.WavelengthNM(float64(l)))
+	}
+	return light
+}
+
+// lampAt is that light per nm, 1 at the centre of the band before the throughput.
+func (r *reduction) lampAt(vacuumNM float64) float64 {
+	s := &r.seq.Profile.Spectrograph
+	return physics.PlanckPhotons(vacuumNM, lampKelvin) / physics.PlanckPhotons(s.CenterNM, lampKelvin) * s.Throughput.At(vacuumNM)
+}

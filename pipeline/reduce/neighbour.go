@@ -1,0 +1,45 @@
+package reduce
+
+import (
+	"mirrorloom/calib"
+	"mirrorloom/hadamard"
+)
+
+// neighbourTerm takes out of decoded pixels the light that open neighbours lend
+// each other.
+type neighbourTerm struct {
+	pairs    *hadamard.Neighbours
+	geometry calib.Geometry
+	term     *calib.ColourTerm
+}
+
+// neighbourSigmas is the significance from which the term is corrected: a term
+// that the lamp does not show would only add its noise.
+const neighbourSigmas = 3
+
+// neighbourTerm gives the correction for a decoder, nil where there is nothing to
+// correct.
+func (o *optics) neighbourTerm(d *decoder) (*neighbourTerm, error) {
+	if o.neighbour == nil || o.neighbour.Significance(o.geometry.L_c) < neighbourSigmas {
+		return nil, nil
+	}
+	pairs, err := hadamard.NewNeighbours(d.code, d.elementColumns)
+	if err != nil {
+		return nil, err
+	}
+	return &neighbourTerm{pairs: pairs, geometry: o.geometry, term: o.neighbour}, nil
+}
+
+// correct works on the n pixels of row y from column x0 on. The size of the term
+// is linear in the wavelength, and so nearly linear over the elements of a pixel.
+func (t *neighbourTerm) correct(w *decodeWorker, x0, y, n int) {
+	middle := t.geometry.J_c
+	for p := range n {
+		x := float64(x0 + p)
+		row := float64(y) - t.geometry.TraceShift(x)
+		below, _ := t.term.At(t.geometry.Wavelength(x, middle-0.5, row))
+		above, _ := t.term.At(t.geometry.Wavelength(x, middle+0.5, row))
+		w.size[p], w.slope[p] = float32((below+above)/2), float32(above-below)
+	}
+	t.pairs.Correct(w.decoded, w.size, w.slope, n, n)
+}

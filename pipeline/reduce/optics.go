@@ -1,0 +1,216 @@
+package reduce
+
+import (
+	"context"
+	"errors"
+	"fmt"
+
+	"go.uber.org/zap"
+
+	"mirrorloom/calib"
+	"mirrorloom/pipeline/product"
+)
+
+// optics is what the lamps tell of the instrument, and what is taken from the
+// profile where they do not.
+type optics struct {
+	geometry calib.Geometry
+	// nominalWave: wavelengths were asked of the arcs and are the profile's.
+	nominalWave bool
+	arcs        *calib.ArcSolution
+	trace       *calib.TraceSolution
+	pixel       *calib.PixelResponse
+	response    *calib.Response
+	neighbour   *calib.ColourTerm
+	leak        *calib.ColourTerm
+}
+
+// pixelVariance is the mean relative variance of the response of a lit pixel.
+func (o *optics) pixelVariance() float64 {
+	if o.pixel == nil {
+		return 0
+	}
+	sum, n := 0.0, 0
+	for i, f := range o.pixel.Flags {
+		if f == 0 {
+			sum += float64(o.pixel.Variance[i])
+			n++
+		}
+	}
+	return sum / float64(max(n, 1))
+}
+
+// calibrate measures the optics: wavelengths by the arcs, the trace by the ends of
+// the slit, the responses by the flats. What cannot be measured stays as the
+// profile says and is a reason why the product is not whole.
+func (r *reduction) calibrate(ctx context.Context) (int64, error) {
+	r.usage = newUsage(r.seq)
+	r.schema = product.NewSchema(r.seq)
+	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
+	r.optics.geometry = nominalGeometry(r.seq)
+	arc, flat := r.opts.Recipe.Arc.Use, r.opts.Recipe.Flat.Use
+	if arc != useOff && arc != useAuto {
+		if err := r.borrowGeometry(arc); err != nil {
+			r.nominal(err)
+		}
+		arc = useOff
+	}
+	if arc == useOff && flat == useOff {
+		return 0, nil
+	}
+	m, err := r.masters.whole(r.camera.rows, r.camera.columns)
+	if err != nil {
+		return 0, err
+	}
+	c := &r.roles.calibration
+	read := 0
+	if err := r.checkDetector(ctx, m); err != nil {
+		return 0, err
+	}
+	if arc == useAuto {
+		if err := r.solveArcs(ctx, m); err != nil {
+			return 0, err
+		}
+		if err := r.solveTrace(ctx, m); err != nil {
+			return 0, err
+		}
+		read += len(r.roles.arcs) + len(c.lamps.on)
+	}
+	if flat == useAuto {
+		if err := r.flats(ctx, m); err != nil {
+			return 0, err
+		}
+		read += 3 * len(c.lamps.all())
+	}
+	return r.frameBytes() * int64(read), ctx.Err()
+}
+
+// nominal keeps the profile's wavelengths, flags them and says why.
+func (r *reduction) nominal(why error) {
+	r.optics.nominalWave = true
+	r.degrade("wavelengths are the profile's, flagged NOMINALWAVE: %v", why)
+}
+
+// degrade adds a reason why the product is not whole.
+func (r *reduction) degrade(format string, args ...any) {
+	text := fmt.Sprintf(format, args...)
+	r.roles.degraded = append(r.roles.degraded, text)
+	r.log.Warn(text)
+}
+
+// warn adds something that the user should know of a whole product.
+func (r *reduction) warn(format string, args ...any) {
+	text := fmt.Sprintf(format, args...)
+	r.roles.warnings = append(r.roles.warnings, text)
+	r.log.Warn(text)
+}
+
+// The wavelength solution is to be good to figurePx everywhere (one standard
+// error); beyond hopelessPx the profile's is as good a guess.
+const (
+	figurePx   = 0.05
+	hopelessPx = 1.0
+)
+
+// solveArcs finds and identifies the lines of the arc frames and fits the
+// geometry to them.
+func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
+	if len(r.roles.arcs) == 0 {
+		r.nominal(errors.New("there is no arc frame; plan arcs, or say `arc: {use: off}` in the recipe"))
+		return nil
+	}
+	frames := make([]calib.ArcFrame, len(r.roles.arcs))
+	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
+	err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+		step := r.roles.arcs[i].step
+		_, element := r.seq.Pattern(step)
+		first, last := r.litRows(element)
+		frames[i].Element = element
+		if frames[i].Lines, err = r.lampLines(r.seq.Steps[step].Lamp); err != nil {
+			return err
+		}
+		frames[i].Peaks, err = rule.Find(*e, first, last)
+		return err
+	})
+	if err != nil {
+		return err
+	}
+	solution, err := calib.SolveArcs(r.optics.geometry, frames, r.arcRule())
+	var unknown *calib.ArcError
+	if errors.As(err, &unknown) {
+		r.nominal(err)
+		return nil
+	}
+	if err != nil {
+		return err
+	}
+	switch worst := r.worstError(solution); {
+	case !(worst < hopelessPx):
+		r.nominal(fmt.Errorf("the %d arc lines leave an error of %.2g px somewhere in the cube; use a lamp with lines all over the band", solution.Lines, worst))
+		return nil
+	case worst > figurePx:
+		r.warn("wavelengths are uncertain by %.2g px somewhere in the cube; use a lamp with lines all over the band", worst)
+	}
+	r.optics.arcs, r.optics.geometry = solution, solution.Geometry
+	if err := r.persistence(m, frames); err != nil {
+		return err
+	}
+	r.log.Info("arcs", zap.Float64("rms_px", solution.RMSPx), zap.Int("lines", solution.Used), zap.Int("rejected", solution.Rejected))
+	return nil
+}
+
+// lampLines lists what a lamp may show in the band and a tenth of it beyond.
+func (r *reduction) lampLines(lamp string) ([]calib.LampLine, error) {
+	g := r.schema.Grid
+	first, last := g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5)
+	beyond := (last - first) / 10
+	return lampLines(lamp, first-beyond, last+beyond)
+}
+
+// arcRule bounds the search for the band of the cube's grid.
+func (r *reduction) arcRule() calib.ArcRule {
+	g := r.schema.Grid
+	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.seq.Profile.Spectrograph.LSFFWHMPx)
+}
+
+// solveTrace measures the trace at the ends of the slit: in the lamp's all-on
+// frames where all elements end at the same rows, else in the arcs.
+func (r *reduction) solveTrace(ctx context.Context, m *wholeMasters) error {
+	rule := calib.DefaultTraceRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
+	var points []calib.EdgePoint
+	frames := r.roles.calibration.lamps.on
+	if ends, same := r.commonEnds(); same && len(frames) > 0 {
+		e, err := r.sumExposures(ctx, frames, m, true)
+		if err != nil {
+			return err
+		}
+		if points, err = rule.Find(*e, ends, 0); err != nil {
+			return err
+		}
+	} else {
+		found := make([][]calib.EdgePoint, len(r.roles.arcs))
+		err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+			_, element := r.seq.Pattern(r.roles.arcs[i].step)
+			found[i], err = rule.Find(*e, r.ends(element), i*maxEnds)
+			return err
+		})
+		if err != nil {
+			return err
+		}
+		for _, p := range found {
+			points = append(points, p...)
+		}
+	}
+	solution, err := calib.FitTrace(r.optics.geometry, points, r.camera.columns)
+	var unknown *calib.TraceError
+	if errors.As(err, &unknown) {
+		r.degrade("the trace is the profile's: %v", err)
+		return nil
+	}
+	if err != nil {
+		return err
+	}
+	r.optics.trace = solution
+	r.optics.geometry.TraceTilt, r.optics.geometry.TraceCurve = solution.TraceTilt, solution.TraceCurve
+	return nil
+}

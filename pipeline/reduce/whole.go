@@ -1,0 +1,110 @@
+package reduce
+
+import (
+	"context"
+	"sync"
+
+	"mirrorloom/calib"
+)
+
+// wholeMasters are the masters over the whole detector, for frames that are
+// looked at as a whole: lamps.
+type wholeMasters struct {
+	bias, dark, lampOff []float32
+	bad                 []calib.Flag
+}
+
+func (m *masters) whole(rows, columns int) (*wholeMasters, error) {
+	n := rows * columns
+	w := &wholeMasters{bias: make([]float32, n), dark: make([]float32, n), lampOff: make([]float32, n), bad: make([]calib.Flag, n)}
+	bad := make([]float32, n)
+	for i, dst := range map[int][]float32{masterBias: w.bias, masterDark: w.dark, masterLampOff: w.lampOff, masterBad: bad} {
+		if err := m.images[i].ReadRows(dst, 0, rows); err != nil {
+			return nil, err
+		}
+	}
+	for i, f := range bad {
+		w.bad[i] = calib.Flag(f)
+	}
+	return w, nil
+}
+
+// lampExposure reads a frame whole, less bias and dark current, and less what the
+// lamp gives without any open mirror if dim is set.
+func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScratch) (*calib.Exposure, error) {
+	columns, rows := r.camera.columns, r.camera.rows
+	e := &calib.Exposure{Columns: columns, Signal: make([]float32, rows*columns), Variance: make([]float32, rows*columns), Flags: make([]calib.Flag, rows*columns)}
+	copy(e.Flags, m.bad)
+	var mu sync.Mutex
+	mark := func(flags []calib.Flag, x, y, w int) {
+		mu.Lock()
+		defer mu.Unlock()
+		r.camera.merge(e.Flags, 0, flags, x, y, w)
+	}
+	if _, err := r.camera.read(e.Signal, f.image, 0, rows, s, mark); err != nil {
+		return nil, err
+	}
+	if err := r.album.done(f); err != nil {
+		return nil, err
+	}
+	seconds := float32(r.seq.Steps[f.step].ExptimeSeconds)
+	for y := range rows {
+		quiet := r.camera.variance[y]
+		for x := range columns {
+			i := y*columns + x
+			v := e.Signal[i] - m.bias[i]
+			e.Variance[i] = float32(quiet[x]) + max(0, v)
+			v -= seconds * m.dark[i]
+			if dim {
+				v -= seconds * m.lampOff[i]
+			}
+			e.Signal[i] = v
+		}
+	}
+	return e, nil
+}
+
+// wholeWorkers is how many whole exposures the memory holds at the same time,
+// with the masters and what a search in them takes.
+func (r *reduction) wholeWorkers() int {
+	const planes = 16 // of float32, for one exposure with its spectra
+	bytes := int64(planes) * bytesFloat * int64(r.camera.columns) * int64(r.camera.rows)
+	return max(1, min(r.opts.Workers, int((r.opts.MemoryBytes-runtimeBytes)/2/bytes)))
+}
+
+// eachExposure reads frames whole and hands them to look, several at a time.
+func (r *reduction) eachExposure(ctx context.Context, frames []*frame, m *wholeMasters, dim bool, look func(i int, e *calib.Exposure) error) error {
+	workers := r.wholeWorkers()
+	scratch := make([]readScratch, workers)
+	return parallel(ctx, workers, len(frames), func(worker, i int) error {
+		e, err := r.lampExposure(frames[i], m, dim, &scratch[worker])
+		if err != nil {
+			return err
+		}
+		return look(i, e)
+	})
+}
+
+// sumExposures adds frames up, in their order, whatever the number of workers:
+// each takes rows of its own. dim as in lampExposure.
+func (r *reduction) sumExposures(ctx context.Context, frames []*frame, m *wholeMasters, dim bool) (*calib.Exposure, error) {
+	columns, rows := r.camera.columns, r.camera.rows
+	n := columns * rows
+	sum := &calib.Exposure{Columns: columns, Signal: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
+	copy(sum.Flags, m.bad)
+	for _, f := range frames {
+		e, err := r.lampExposure(f, m, dim, new(readScratch))
+		if err != nil {
+			return nil, err
+		}
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		for i, v := range e.Signal {
+			sum.Signal[i] += v
+			sum.Variance[i] += e.Variance[i]
+			sum.Flags[i] |= e.Flags[i]
+		}
+	}
+	return sum, nil
+}
