@@ -61,16 +61,17 @@ func folderBytes(t *testing.T, dir string) int64 {
 	return total
 }
 
-// checkAgreement holds the figures of section 11 of the design for a clean
-// night.
+// checkAgreement holds the figures for an instrument that the night itself
+// calibrates: pulls' mean within 0.03 of 0 and standard deviation within 0.05 of 1, in
+// each decile too, and white light within 0.5 % of the truth's.
 func checkAgreement(t *testing.T, a *demo.Agreement) {
 	t.Helper()
 	require.GreaterOrEqual(t, float64(a.Good), 0.6*float64(a.Voxels))
 	for _, p := range append(a.ByCounts[:], a.Pulls) {
-		require.InDelta(t, 0, p.Mean, 0.02)
-		require.InDelta(t, 1, p.Std, 0.03)
+		require.InDelta(t, 0, p.Mean, 0.03)
+		require.InDelta(t, 1, p.Std, 0.05)
 	}
-	require.InDelta(t, 1, a.Flux, 0.001)
+	require.InDelta(t, 1, a.Flux, 0.005)
 }
 
 // checkWords demands that every path that the words name is there.

@@ -57,9 +57,9 @@ func (f *Field) Plan(ctx context.Context, dir string) (*Night, error) {
 	return n, err
 }
 
-// Rehearse draws a night. The instrument is perfect.
+// Rehearse draws a night. The instrument is perfect, unless the field's is not.
 func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options) error {
-	opts.Perfect = true
+	opts.Perfect = !n.Field.Imperfect
 	if err := os.MkdirAll(n.Frames(name), 0o755); err != nil {
 		return err
 	}
@@ -67,15 +67,19 @@ func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options
 	return err
 }
 
-// Reduce reduces the night named name with the recipe of opts or, as the
-// instrument is perfect, the nominal one.
+// Reduce reduces the night named name with the recipe of opts or, without one,
+// the nominal one for a perfect instrument and the default one for another.
 func (n *Night) Reduce(ctx context.Context, name string, opts reduce.Options) (*reduce.Result, error) {
 	opts.Night, opts.Sequence, opts.Out = n.Frames(name), n.sequence(), n.Run(name)
 	if err := os.MkdirAll(opts.Out, 0o755); err != nil {
 		return nil, err
 	}
 	if opts.Recipe == nil {
-		recipe, err := reduce.LoadRecipe("nominal")
+		name := "nominal"
+		if n.Field.Imperfect {
+			name = reduce.DefaultRecipe
+		}
+		recipe, err := reduce.LoadRecipe(name)
 		if err != nil {
 			return nil, err
 		}
