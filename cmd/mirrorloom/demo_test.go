@@ -61,16 +61,16 @@ func folderBytes(t *testing.T, dir string) int64 {
 	return total
 }
 
-// checkAgreement holds the figures of section 11 of the design for a clean
-// night.
+// checkAgreement holds the figures of a night whose instrument was calibrated by
+// its own lamps: pulls within 0.03 and 0.05, flux within 0.5 %.
 func checkAgreement(t *testing.T, a *demo.Agreement) {
 	t.Helper()
 	require.GreaterOrEqual(t, float64(a.Good), 0.6*float64(a.Voxels))
 	for _, p := range append(a.ByCounts[:], a.Pulls) {
-		require.InDelta(t, 0, p.Mean, 0.02)
-		require.InDelta(t, 1, p.Std, 0.03)
+		require.InDelta(t, 0, p.Mean, 0.03)
+		require.InDelta(t, 1, p.Std, 0.05)
 	}
-	require.InDelta(t, 1, a.Flux, 0.001)
+	require.InDelta(t, 1, a.Flux, 0.005)
 }
 
 // checkWords demands that every path that the words name is there.
