@@ -104,6 +104,10 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		if err := w.run(ctx); err != nil {
 			return err
 		}
+		for _, frames := range r.roles.calibration.lamps.coded {
+			r.lookAt(len(frames))
+		}
+		r.looked.Add(r.masterBytes())
 		if r.optics.response, err = fit.Solve(); err != nil {
 			return err
 		}

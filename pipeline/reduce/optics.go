@@ -65,8 +65,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	if err != nil {
 		return 0, err
 	}
-	c := &r.roles.calibration
-	read := 0
+	r.looked.Add(r.masterBytes())
 	if err := r.checkDetector(ctx, m); err != nil {
 		return 0, err
 	}
@@ -77,15 +76,13 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 		if err := r.solveTrace(ctx, m); err != nil {
 			return 0, err
 		}
-		read += len(r.roles.arcs) + len(c.lamps.on)
 	}
 	if flat == useAuto {
 		if err := r.flats(ctx, m); err != nil {
 			return 0, err
 		}
-		read += 3 * len(c.lamps.all())
 	}
-	return r.frameBytes() * int64(read), ctx.Err()
+	return r.looked.Load(), ctx.Err()
 }
 
 // checkGrid refuses a grid that the geometry cannot serve.

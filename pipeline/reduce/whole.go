@@ -47,6 +47,7 @@ func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScr
 	if err := r.album.done(f); err != nil {
 		return nil, err
 	}
+	r.lookAt(1)
 	seconds := float32(r.seq.Steps[f.step].ExptimeSeconds)
 	for y := range rows {
 		quiet := r.camera.variance[y]
