@@ -57,6 +57,10 @@ const (
 	widest    = 1.45
 )
 
+// uncertain is the largest error of a line's centre, in FWHM: that of a line of 7 sigma.
+// A bright line beyond it has bad pixels in its core.
+const uncertain = 0.06
+
 // Find measures the lines of one arc exposure over rows firstRow..lastRow, which the
 // element lights all along x; where closed rows part them, call it for each part. It
 // may be called from several goroutines.
@@ -252,7 +256,7 @@ func (r PeakRule) leftOver(s *blockSpectrum, fit *lineFit, at []float64) []float
 // isLine judges a fitted peak that started at column `start`.
 func (r PeakRule) isLine(s *blockSpectrum, p Peak, start float64) bool {
 	if p.FWHM < narrowest*r.FWHMPx || p.FWHM > widest*r.FWHMPx || math.Abs(p.X-start) > 0.6*r.FWHMPx ||
-		p.Flux < r.Sigmas*p.FluxErr || p.XErr > 0.25*r.FWHMPx {
+		p.Flux < r.Sigmas*p.FluxErr || p.XErr > uncertain*r.FWHMPx {
 		return false
 	}
 	last := float64(len(s.signal) - 1)

@@ -4,6 +4,7 @@ import (
 	"cmp"
 	"fmt"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mat"
 )
@@ -123,7 +124,7 @@ type blockCount struct {
 	squares                    float64
 }
 
-// countBlocks fills in blocks from Residuals.
+// countBlocks fills in blocks from Residuals, in order of element and row.
 func (r *ArcSolution) countBlocks() {
 	at := map[[2]int]int{}
 	for i := range r.Residuals {
@@ -142,29 +143,48 @@ func (r *ArcSolution) countBlocks() {
 			b.rejected++
 		}
 	}
+	slices.SortFunc(r.blocks, func(a, b blockCount) int {
+		return cmp.Or(cmp.Compare(a.element, b.element), cmp.Compare(a.firstRow, b.firstRow))
+	})
 }
 
 // LinesAt counts the centroids that speak for element j on detector row y: those of the
 // nearest element with an arc and, of its blocks, the nearest; rms is around the
 // model, NaN for none.
 func (r *ArcSolution) LinesAt(j, y int) (used, rejected int, rmsPx float64) {
-	best, rmsPx := -1, math.NaN()
-	across := func(b *blockCount) int { return max(b.element-j, j-b.element) }
+	blocks := r.nearestBlocks(j)
+	if len(blocks) == 0 {
+		return 0, 0, math.NaN()
+	}
 	along := func(b *blockCount) int { return max(b.firstRow+b.lastRow-2*y, 2*y-b.firstRow-b.lastRow) }
-	for i := range r.blocks {
-		b := &r.blocks[i]
-		if best < 0 || cmp.Or(cmp.Compare(across(b), across(&r.blocks[best])), cmp.Compare(along(b), along(&r.blocks[best]))) < 0 {
-			best = i
+	b := &blocks[0]
+	for i := range blocks {
+		if along(&blocks[i]) < along(b) {
+			b = &blocks[i]
 		}
 	}
-	if best < 0 {
-		return 0, 0, rmsPx
-	}
-	b := &r.blocks[best]
+	rmsPx = math.NaN()
 	if b.used > 0 {
 		rmsPx = math.Sqrt(b.squares / float64(b.used))
 	}
 	return b.used, b.rejected, rmsPx
+}
+
+// nearestBlocks are those of the element with an arc that is nearest to j.
+func (r *ArcSolution) nearestBlocks(j int) []blockCount {
+	from := func(element int) int {
+		i, _ := slices.BinarySearchFunc(r.blocks, element, func(b blockCount, e int) int { return cmp.Compare(b.element, e) })
+		return i
+	}
+	at := from(j)
+	if at == len(r.blocks) || at > 0 && j-r.blocks[at-1].element <= r.blocks[at].element-j {
+		at--
+	}
+	if at < 0 {
+		return nil
+	}
+	element := r.blocks[at].element
+	return r.blocks[from(element):from(element+1)]
 }
 
 // String is the solution in a sentence, for logs.

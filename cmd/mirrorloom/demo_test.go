@@ -61,9 +61,8 @@ func folderBytes(t *testing.T, dir string) int64 {
 	return total
 }
 
-// checkAgreement holds the figures for an instrument that the night itself
-// calibrates: pulls' mean within 0.03 of 0 and standard deviation within 0.05 of 1, in
-// each decile too, and white light within 0.5 % of the truth's.
+// checkAgreement holds the figures of a night whose instrument was calibrated by
+// its own lamps: pulls within 0.03 and 0.05, flux within 0.5 %.
 func checkAgreement(t *testing.T, a *demo.Agreement) {
 	t.Helper()
 	require.GreaterOrEqual(t, float64(a.Good), 0.6*float64(a.Voxels))

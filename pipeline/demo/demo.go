@@ -129,6 +129,7 @@ func (r *Result) reduce(ctx context.Context, o Options) error {
 	}
 	result, err := reduce.Run(ctx, reduce.Options{
 		Night: filepath.Join(o.Out, NightFolder), Sequence: filepath.Join(o.Out, SequenceFolder),
+		NightName: NightFolder, SequenceName: SequenceFolder, // o.Out gets another name in the end
 		Cube: true, Out: dir, Log: o.Log, Progress: o.Progress,
 	})
 	if err != nil {

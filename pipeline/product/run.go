@@ -40,8 +40,9 @@ type Quality struct {
 	// that of the voxels in coded rows whose wavelength falls on the detector.
 	GoodFraction        float64 `json:"good_fraction"`
 	CoveredGoodFraction float64 `json:"covered_good_fraction"`
-	// DarkChi2Heldout is the mean square of the dark columns' decodes in units
-	// of their variance, from columns that no fit has seen: 1 if all is well.
+	// DarkChi2Heldout is the mean over detector rows, by their number of good
+	// pixels, of sum(x^2)/sum(V) over the good pixels' dark decodes x and their
+	// variances V, from columns that no fit has seen: 1 if all is well.
 	DarkChi2Heldout *float64 `json:"dark_chi2_heldout"`
 	ThroughputRMS   *float64 `json:"throughput_rms"`
 	ThroughputErr   *float64 `json:"throughput_err"`
@@ -54,8 +55,9 @@ type Quality struct {
 	BadPixels int `json:"bad_pixels"`
 }
 
-// Stage is one stage of a run: its wall-clock time and the bytes it read and
-// wrote.
+// Stage is one stage of a run: its wall-clock time and the bytes of pixels and tables
+// that it read and wrote. The headers of frames are not counted: a stage that reads
+// nothing else, such as pair, has 0.
 type Stage struct {
 	Name    string  `json:"name"`
 	Seconds float64 `json:"seconds"`

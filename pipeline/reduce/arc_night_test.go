@@ -170,7 +170,7 @@ func (n *arcNight) requireWavelengths(t *testing.T, s *calib.ArcSolution) {
 	require.Less(t, pull, 6.0)
 	for _, r := range s.Residuals {
 		if r.Kept {
-			require.InDelta(t, n.trueX(float64(r.Element), float64(r.FirstRow+r.LastRow)/2, r.VacuumNM), r.X, 0.5, "%+v", r)
+			require.InDelta(t, n.trueX(float64(r.Element), float64(r.FirstRow+r.LastRow)/2, r.VacuumNM), r.X, 0.3+6*r.XErr, "%+v", r)
 		}
 	}
 }

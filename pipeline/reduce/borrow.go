@@ -54,10 +54,11 @@ func (r *reduction) borrowGeometry(path string) error {
 	if elements, err := f.HDUs()[1].Header.Int("NAXIS1"); err != nil || int(elements) != r.seq.N() {
 		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())
 	}
-	grid := r.schema.Grid
-	if err := g.Check(r.camera.columns, r.camera.rows, grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)); err != nil {
+	nominal := r.optics.geometry
+	r.optics.geometry = g
+	if err := r.checkGrid(); err != nil {
+		r.optics.geometry = nominal
 		return fmt.Errorf("%s: %w", path, err)
 	}
-	r.optics.geometry = g
 	return nil
 }

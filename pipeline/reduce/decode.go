@@ -80,11 +80,19 @@ func (d *decoder) block() int {
 
 func (d *decoder) blocks() int { return (d.columns + d.block() - 1) / d.block() }
 
-// darkChi2 is the sum over dark columns and good pixels of the squared decode in
-// units of its variance, and the number of terms.
+// darkChi2 sums, over dark columns and good pixels, squared decodes and their
+// variances, and counts them. The sums are kept apart because a variance that was
+// estimated from few electrons scatters: the mean of squares over such variances is
+// above 1 though all is well, the ratio of the sums is not.
 type darkChi2 struct {
-	sum   float64
-	terms int
+	square, variance float64
+	terms            int
+}
+
+func (c *darkChi2) add(o darkChi2) {
+	c.square += o.square
+	c.variance += o.variance
+	c.terms += o.terms
 }
 
 // run decodes block b of row y into out and into the element cube's planes, if
@@ -245,7 +253,8 @@ func (d *decoder) chi2(w *decodeWorker, out *decodedRow, flags []calib.Flag, x0,
 		}
 		for p, v := range row {
 			if flags[p] == 0 {
-				c.sum += float64(v) * float64(v) / float64(variance[p])
+				c.square += float64(v) * float64(v)
+				c.variance += float64(variance[p])
 				c.terms++
 			}
 		}

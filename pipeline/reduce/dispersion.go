@@ -24,7 +24,7 @@ const dispersionTerms = 8
 // around the solution and NLINES their number: not a number and 0 for the
 // profile's own dispersion.
 func dispersionTable(g calib.Geometry, arcs *calib.ArcSolution, u *usage, columns int) (*fitsutil.Table, error) {
-	fit, tally := newPolynomial(columns), newLineTally(arcs)
+	fit := newPolynomial(columns)
 	var element, row, lines []int32
 	var rms, coef []float64
 	for y := range u.rows {
@@ -32,7 +32,12 @@ func dispersionTable(g calib.Geometry, arcs *calib.ArcSolution, u *usage, column
 			if f&product.FlagNoData != 0 && f&product.FlagSentinel == 0 {
 				continue
 			}
-			used, scatter := tally.at(j, y)
+			used, scatter := 0, math.NaN()
+			if arcs != nil {
+				if n, _, r := arcs.LinesAt(j, y); n > 0 {
+					used, scatter = n, r
+				}
+			}
 			element, row, lines = append(element, int32(j)), append(row, int32(y)), append(lines, int32(used))
 			rms = append(rms, scatter)
 			coef = fit.append(coef, func(x float64) float64 { return g.Wavelength(x, float64(j), float64(y)) })

@@ -2,7 +2,6 @@ package reduce
 
 import (
 	"mirrorloom/calib"
-	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -16,9 +15,4 @@ func nominalGeometry(seq *sequence.Sequence) calib.Geometry {
 		SlitTilt: s.SlitTilt, Smile: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurve: s.TraceCurvePerPx,
 	}
-}
-
-// voxelEdgesNM gives the wavelength of the lower edge of the first voxel.
-func voxelEdgesNM(g instrument.Grid) (first, step float64) {
-	return g.WavelengthNM(-0.5), g.StepNM
 }

@@ -33,10 +33,3 @@ func TestNominalGeometry(t *testing.T) {
 		}
 	}
 }
-
-// Voxel i reaches from half a step below its centre to half a step above.
-func TestVoxelEdges(t *testing.T) {
-	first, step := voxelEdgesNM(instrument.Grid{FirstNM: 500, StepNM: 0.4, Count: 7})
-	require.InDelta(t, 499.8, first, 1e-12)
-	require.Equal(t, 0.4, step)
-}

@@ -48,6 +48,9 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	r.schema = product.NewSchema(r.seq)
 	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
 	r.optics.geometry = nominalGeometry(r.seq)
+	if err := r.checkGrid(); err != nil {
+		return 0, err
+	}
 	arc, flat := r.opts.Recipe.Arc.Use, r.opts.Recipe.Flat.Use
 	if arc != useOff && arc != useAuto {
 		if err := r.borrowGeometry(arc); err != nil {
@@ -62,8 +65,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	if err != nil {
 		return 0, err
 	}
-	c := &r.roles.calibration
-	read := 0
+	r.looked.Add(r.masterBytes())
 	if err := r.checkDetector(ctx, m); err != nil {
 		return 0, err
 	}
@@ -74,15 +76,23 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 		if err := r.solveTrace(ctx, m); err != nil {
 			return 0, err
 		}
-		read += len(r.roles.arcs) + len(c.lamps.on)
 	}
 	if flat == useAuto {
 		if err := r.flats(ctx, m); err != nil {
 			return 0, err
 		}
-		read += 3 * len(c.lamps.all())
 	}
-	return r.frameBytes() * int64(read), ctx.Err()
+	return r.looked.Load(), ctx.Err()
+}
+
+// checkGrid refuses a grid that the geometry cannot serve.
+func (r *reduction) checkGrid() error {
+	g := r.schema.Grid
+	err := r.optics.geometry.Check(r.camera.columns, r.camera.rows, g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5))
+	if err != nil {
+		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
+	}
+	return nil
 }
 
 // nominal keeps the profile's wavelengths, flags them and says why.
@@ -95,14 +105,14 @@ func (r *reduction) nominal(why error) {
 func (r *reduction) degrade(format string, args ...any) {
 	text := fmt.Sprintf(format, args...)
 	r.roles.degraded = append(r.roles.degraded, text)
-	r.log.Warn(text)
+	r.log.Info(text) // the command says it in the end
 }
 
 // warn adds something that the user should know of a whole product.
 func (r *reduction) warn(format string, args ...any) {
 	text := fmt.Sprintf(format, args...)
 	r.roles.warnings = append(r.roles.warnings, text)
-	r.log.Warn(text)
+	r.log.Info(text) // the command says it in the end
 }
 
 // The wavelength solution is to be good to figurePx everywhere (one standard
@@ -120,7 +130,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 		return nil
 	}
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
-	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
+	rule := calib.DefaultPeakRule(r.lineFWHM())
 	err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
 		step := r.roles.arcs[i].step
 		_, element := r.seq.Pattern(step)
@@ -170,7 +180,14 @@ func (r *reduction) lampLines(lamp string) ([]calib.LampLine, error) {
 // arcRule bounds the search for the band of the cube's grid.
 func (r *reduction) arcRule() calib.ArcRule {
 	g := r.schema.Grid
-	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.seq.Profile.Spectrograph.LSFFWHMPx)
+	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.lineFWHM())
+}
+
+// lineFWHM is the expected width of an arc line: the spot's, widened by the
+// element's own.
+func (r *reduction) lineFWHM() float64 {
+	p := r.seq.Profile
+	return calib.LineFWHM(p.Spectrograph.LSFFWHMPx, p.ElementStepPx(r.seq.ElementMirrors()))
 }
 
 // solveTrace measures the trace at the ends of the slit: in the lamp's all-on

@@ -2,11 +2,13 @@ package reduce_test
 
 import (
 	"context"
+	"path/filepath"
 	"testing"
 
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/internal/trial"
+	"mirrorloom/pipeline/product"
 )
 
 // fields are the small instruments: square with two amplifiers and overscan, and
@@ -77,6 +79,12 @@ func TestPullsOfAFaintNight(t *testing.T) {
 	pulls, _, err := night.PullsOf(1)
 	require.NoError(t, err)
 	hold(t, pulls.Findings("faint night"))
+	run, err := product.ReadRun(filepath.Join(night.Run(trial.Noisy), product.RunFile))
+	require.NoError(t, err)
+	require.NotNil(t, run.Quality.DarkChi2Heldout)
+	// As above, but each pixel's variance scatters by a sixth or so: its inverse is
+	// 1.03 and more in the mean, which the figure must not show.
+	require.InDelta(t, 1, *run.Quality.DarkChi2Heldout, 0.02, "dark columns")
 	small, _, err := night.PullsOf(0.9)
 	require.NoError(t, err)
 	require.False(t, trial.AllHold(small.Findings("faint night")), "VARIANCE a tenth too small passes")

@@ -43,9 +43,12 @@ func (q *rowQuality) count(out *outStrip, row, elements, voxels int, use []int16
 // sum adds the rows in order.
 func sum(rows []rowQuality, total int) (product.Quality, int16) {
 	var all rowQuality
+	var chi2 float64 // of each row, as often as it has terms
 	for _, r := range rows {
-		all.dark.sum += r.dark.sum
-		all.dark.terms += r.dark.terms
+		if r.dark.variance > 0 {
+			chi2 += float64(r.dark.terms) * r.dark.square / r.dark.variance
+			all.dark.terms += r.dark.terms
+		}
 		all.good += r.good
 		all.covered += r.covered
 		all.wanted += r.wanted
@@ -60,7 +63,7 @@ func sum(rows []rowQuality, total int) (product.Quality, int16) {
 		q.CoveredGoodFraction = float64(all.covered) / float64(all.wanted)
 	}
 	if all.dark.terms > 0 {
-		chi2 := all.dark.sum / float64(all.dark.terms)
+		chi2 /= float64(all.dark.terms)
 		if !math.IsNaN(chi2) && !math.IsInf(chi2, 0) {
 			q.DarkChi2Heldout = &chi2
 		}

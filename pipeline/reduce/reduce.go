@@ -10,6 +10,7 @@ import (
 	"runtime/debug"
 	"slices"
 	"strings"
+	"sync/atomic"
 	"time"
 
 	"go.uber.org/zap"
@@ -27,6 +28,8 @@ import (
 type Options struct {
 	// Night is the folder of frames, Sequence that of the sequence.
 	Night, Sequence string
+	// NightName and SequenceName are what run.json calls them; empty for their paths.
+	NightName, SequenceName string
 	// Recipe is what to do; nil for the default.
 	Recipe *Recipe
 	// Cube and Elements ask for cube.fits and elements.fits.
@@ -113,6 +116,12 @@ func (o *Options) setDefaults() error {
 	if o.Progress == nil {
 		o.Progress = func(string, int, int) {}
 	}
+	if o.NightName == "" {
+		o.NightName = o.Night
+	}
+	if o.SequenceName == "" {
+		o.SequenceName = o.Sequence
+	}
 	if o.Recipe == nil {
 		recipe, err := LoadRecipe(DefaultRecipe)
 		if err != nil {
@@ -136,6 +145,7 @@ type reduction struct {
 	schema  product.Schema
 	usage   *usage
 	cube    *fitsutil.Cube
+	shape   shape // of the products, once strips has begun
 	element *fitsutil.Cube
 
 	optics    optics
@@ -144,6 +154,8 @@ type reduction struct {
 	quality   product.Quality
 	badPixels int
 	stages    []product.Stage
+	// looked counts the bytes that calibrate reads: see traffic.go.
+	looked atomic.Int64
 }
 
 // close gives back everything; what was committed stays.
@@ -206,16 +218,7 @@ func (r *reduction) prepare(ctx context.Context) (int64, error) {
 	if r.masters, err = openMasters(r.scratch()); err != nil {
 		return 0, err
 	}
-	return r.frameBytes() * int64(frames), nil
-}
-
-// frameBytes is the size of a raw frame's pixels on disk, taken from the first.
-func (r *reduction) frameBytes() int64 {
-	if len(r.album.frames) == 0 {
-		return 0
-	}
-	im := r.album.frames[0].image
-	return int64(max(im.BITPIX, -im.BITPIX)/8) * int64(im.Width()) * int64(im.Height())
+	return r.frameBytes()*int64(frames) + r.masterBytes(), nil
 }
 
 // strips decodes and rectifies.
@@ -234,6 +237,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	}
 	s.uniform = d.code.VarianceUniform()
 	s.voxels = r.schema.Grid.Count
+	r.shape = s
 	if s.cube {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
@@ -241,7 +245,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
 	}
-	h, err := s.heights(r.opts.MemoryBytes)
+	h, err := s.heights(r.opts.MemoryBytes - r.heldBytes())
 	if err != nil {
 		return 0, err
 	}
@@ -289,6 +293,14 @@ func (r *reduction) gridSource() string {
 	return filepath.Join(r.opts.Sequence, "profile.yaml")
 }
 
+// heldBytes is the memory of what calibrate keeps for the strips.
+func (r *reduction) heldBytes() int64 {
+	if r.optics.pixel == nil {
+		return 0
+	}
+	return exposureBytes * int64(len(r.optics.pixel.Factor))
+}
+
 func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
 	d := &decoder{
 		code: hadamard.NewDecoder(code), columns: r.camera.columns, slots: r.seq.V,
@@ -323,82 +335,6 @@ func (r *reduction) newReader(slots [][]*frame, seconds float64, dim int) *strip
 		camera: r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
 		workers: r.opts.Workers, scratch: make([]readScratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
 	}
-}
-
-// stripBytes is what the strips stage read and wrote.
-func (r *reduction) stripBytes(s shape) int64 {
-	pixels := int64(s.columns) * int64(s.rows)
-	bytes := r.frameBytes()*int64(r.roles.science) + pixels*masterCount*bytesFloat
-	if s.cube {
-		bytes += int64(s.elements) * int64(s.rows) * int64(s.voxels) * bytesVoxel
-	}
-	if s.elementCube {
-		bytes += int64(s.slots) * pixels * (4 + 4 + 2)
-	}
-	return bytes
-}
-
-// create lays out the products.
-func (r *reduction) create(s shape) error {
-	primary, err := product.Provenance{
-		ProfileName: r.seq.ProfileName, ProfileSHA: r.seq.ProfileSHA, SequenceSHA: r.seq.SHA, RecipeSHA: r.opts.Recipe.SHA,
-		FramesUsed: r.roles.science, FramesLost: len(r.roles.missing),
-	}.Primary(r.seq.Target.Name)
-	if err != nil {
-		return err
-	}
-	if s.cube {
-		images, err := r.schema.Images()
-		if err != nil {
-			return err
-		}
-		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
-			return err
-		}
-	}
-	if s.elementCube {
-		images, err := product.ElementImages(s.columns, s.rows, s.slots)
-		if err != nil {
-			return err
-		}
-		if r.element, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.ElementsFile), primary.Clone(), images); err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
-// judge turns flags that were set into reasons why the product is not whole.
-func (r *reduction) judge(flags int16) {
-	if flags&product.FlagSaturated != 0 {
-		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in some science frame, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
-	}
-}
-
-// finish appends the tables and gives every product its name.
-func (r *reduction) finish(context.Context) (int64, error) {
-	r.roles.fillLedger(r.night.Ledger, r.album.frames, r.seq, r.camera.columns*r.camera.rows)
-	if r.cube != nil {
-		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {
-			return 0, err
-		}
-		table, err := dispersionTable(r.rectifier.geometry, r.optics.arcs, r.usage, r.camera.columns)
-		if err != nil {
-			return 0, err
-		}
-		if err := r.cube.AppendTable(table); err != nil {
-			return 0, err
-		}
-		if err := r.cube.Commit(); err != nil {
-			return 0, err
-		}
-	}
-	if r.element != nil {
-		if err := r.element.Commit(); err != nil {
-			return 0, err
-		}
-	}
-	return 0, fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.LedgerFile), r.night.Ledger.WriteCSV)
 }
 
 // result writes run.json and the report, and sums up.

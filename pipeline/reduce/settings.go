@@ -8,8 +8,8 @@ func (r *reduction) settings() map[string]any {
 	recipe := r.opts.Recipe
 	stage := func(s StageRecipe) map[string]any { return map[string]any{"use": s.Use} }
 	return map[string]any{
-		"night":        r.opts.Night,
-		"sequence":     r.opts.Sequence,
+		"night":        r.opts.NightName,
+		"sequence":     r.opts.SequenceName,
 		"cube":         r.opts.Cube,
 		"elements":     r.opts.Elements,
 		"memory_bytes": r.opts.MemoryBytes,

@@ -164,9 +164,7 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		return err
 	}
 	for i, d := range dark {
-		q := &w.quality[rows[i/blocks].y]
-		q.dark.sum += d.sum
-		q.dark.terms += d.terms
+		w.quality[rows[i/blocks].y].dark.add(d)
 	}
 	err = parallel(ctx, w.workers, len(rows), func(_, i int) error {
 		w.flatten(rows[i])

@@ -7,6 +7,10 @@ import (
 	"mirrorloom/calib"
 )
 
+// exposureBytes is the memory of a pixel of a calib.Exposure, or of a
+// calib.PixelResponse: two floats and flags.
+const exposureBytes = 2*bytesFloat + 2
+
 // wholeMasters are the masters over the whole detector, for frames that are
 // looked at as a whole: lamps.
 type wholeMasters struct {
@@ -47,6 +51,7 @@ func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScr
 	if err := r.album.done(f); err != nil {
 		return nil, err
 	}
+	r.lookAt(1)
 	seconds := float32(r.seq.Steps[f.step].ExptimeSeconds)
 	for y := range rows {
 		quiet := r.camera.variance[y]

@@ -1,0 +1,76 @@
+package reduce
+
+import (
+	"context"
+	"fmt"
+	"path/filepath"
+
+	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/product"
+)
+
+// create lays out the products.
+func (r *reduction) create(s shape) error {
+	primary, err := product.Provenance{
+		ProfileName: r.seq.ProfileName, ProfileSHA: r.seq.ProfileSHA, SequenceSHA: r.seq.SHA, RecipeSHA: r.opts.Recipe.SHA,
+		FramesUsed: r.roles.science, FramesLost: len(r.roles.missing),
+	}.Primary(r.seq.Target.Name)
+	if err != nil {
+		return err
+	}
+	if s.cube {
+		images, err := r.schema.Images()
+		if err != nil {
+			return err
+		}
+		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
+			return err
+		}
+	}
+	if s.elementCube {
+		images, err := product.ElementImages(s.columns, s.rows, s.slots)
+		if err != nil {
+			return err
+		}
+		if r.element, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.ElementsFile), primary.Clone(), images); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// judge turns flags that were set into reasons why the product is not whole.
+func (r *reduction) judge(flags int16) {
+	if flags&product.FlagSaturated != 0 {
+		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in some science frame, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
+	}
+}
+
+// finish appends the tables and gives every product its name.
+func (r *reduction) finish(context.Context) (int64, error) {
+	r.roles.fillLedger(r.night.Ledger, r.album.frames, r.seq, r.camera.columns*r.camera.rows)
+	if r.cube != nil {
+		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {
+			return 0, err
+		}
+		table, err := dispersionTable(r.rectifier.geometry, r.optics.arcs, r.usage, r.camera.columns)
+		if err != nil {
+			return 0, err
+		}
+		if err := r.cube.AppendTable(table); err != nil {
+			return 0, err
+		}
+		if err := r.cube.Commit(); err != nil {
+			return 0, err
+		}
+	}
+	if r.element != nil {
+		if err := r.element.Commit(); err != nil {
+			return 0, err
+		}
+	}
+	if err := fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.LedgerFile), r.night.Ledger.WriteCSV); err != nil {
+		return 0, err
+	}
+	return r.finishBytes()
+}

@@ -1,0 +1,71 @@
+package reduce
+
+import (
+	"os"
+	"path/filepath"
+
+	"mirrorloom/pipeline/product"
+)
+
+// frameBytes is the size of a raw frame's pixels on disk, taken from the first.
+func (r *reduction) frameBytes() int64 {
+	if len(r.album.frames) == 0 {
+		return 0
+	}
+	im := r.album.frames[0].image
+	return int64(max(im.BITPIX, -im.BITPIX)/8) * int64(im.Width()) * int64(im.Height())
+}
+
+// masterBytes is the size of the masters.
+func (r *reduction) masterBytes() int64 {
+	return int64(r.camera.columns) * int64(r.camera.rows) * masterCount * bytesFloat
+}
+
+// lookAt counts frames, read whole by calibrate.
+func (r *reduction) lookAt(frames int) { r.looked.Add(r.frameBytes() * int64(frames)) }
+
+// stripBytes is what the strips stage read and wrote.
+func (r *reduction) stripBytes(s shape) int64 {
+	bytes := r.frameBytes()*int64(r.roles.science) + r.masterBytes()
+	if s.cube {
+		bytes += s.cubeBytes()
+	}
+	if s.elementCube {
+		bytes += s.elementBytes()
+	}
+	return bytes
+}
+
+// cubeBytes are those of the cube's images, elementBytes of the element cube's.
+func (s shape) cubeBytes() int64 {
+	return int64(s.elements) * int64(s.rows) * int64(s.voxels) * bytesVoxel
+}
+
+func (s shape) elementBytes() int64 {
+	return int64(s.slots) * int64(s.columns) * int64(s.rows) * (4 + 4 + 2)
+}
+
+// finishBytes is what the finish stage wrote: the ledger, and of the cubes all but
+// the images, which the strips stage wrote.
+func (r *reduction) finishBytes() (int64, error) {
+	var bytes int64
+	for _, f := range []struct {
+		name   string
+		exists bool
+		images int64
+	}{
+		{product.LedgerFile, true, 0},
+		{product.CubeFile, r.cube != nil, r.shape.cubeBytes()},
+		{product.ElementsFile, r.element != nil, r.shape.elementBytes()},
+	} {
+		if !f.exists {
+			continue
+		}
+		info, err := os.Stat(filepath.Join(r.opts.Out, f.name))
+		if err != nil {
+			return 0, err
+		}
+		bytes += info.Size() - f.images
+	}
+	return bytes, nil
+}
