@@ -19,19 +19,16 @@ const given = "testdata/bench"
 // night is a rehearsed night of 255 science frames of 1024 x 1024.
 type night struct{ sequence, frames string }
 
-// edit cuts lines that hold a text, or takes a piece out of a line.
-type edit struct {
-	file     string
-	old, new string
-}
+// edit cuts a text out of a file.
+type edit struct{ file, cut string }
 
 // biasOnly leaves a night with bias frames as its only calibration and without
 // overscan: all that the simple script knows.
 var biasOnly = []edit{
-	{"target.yaml", "all_off_every: 64\n", ""},
-	{"target.yaml", "  dark: {count: 3, dwell_s: 90}\n", ""},
-	{"target.yaml", "  flat: {count: 1, dwell_s: 5, lamp: halogen}\n", ""},
-	{"profile.yaml", "overscan: [1025, 1056, 1, 1024], ", ""},
+	{"target.yaml", "all_off_every: 64\n"},
+	{"target.yaml", "  dark: {count: 3, dwell_s: 90}\n"},
+	{"target.yaml", "  flat: {count: 1, dwell_s: 5, lamp: halogen}\n"},
+	{"profile.yaml", "overscan: [1025, 1056, 1, 1024], "},
 }
 
 func makeNight(ctx context.Context, dir string, edits []edit) (night, error) {
@@ -49,12 +46,12 @@ func makeNight(ctx context.Context, dir string, edits []edit) (night, error) {
 			if e.file != name {
 				continue
 			}
-			if !strings.Contains(edited, e.old) {
-				return n, fmt.Errorf("%s/%s no longer holds %q", given, name, e.old)
+			if !strings.Contains(edited, e.cut) {
+				return n, fmt.Errorf("%s/%s no longer holds %q", given, name, e.cut)
 			}
-			edited = strings.Replace(edited, e.old, e.new, 1)
+			edited = strings.Replace(edited, e.cut, "", 1)
 		}
-		if err := child.Write(dir, map[string]string{name: edited}); err != nil {
+		if err := os.WriteFile(filepath.Join(dir, name), []byte(edited), 0o644); err != nil {
 			return n, err
 		}
 	}

@@ -51,13 +51,3 @@ func Run(ctx context.Context, name string, args ...string) (Usage, error) {
 		PeakBytes: s.SysUsage().(*syscall.Rusage).Maxrss * bytesPerUnit,
 	}, nil
 }
-
-// Write puts small files into a folder.
-func Write(dir string, files map[string]string) error {
-	for name, text := range files {
-		if err := os.WriteFile(filepath.Join(dir, name), []byte(text), 0o644); err != nil {
-			return err
-		}
-	}
-	return nil
-}

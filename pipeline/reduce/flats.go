@@ -120,10 +120,13 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 	return nil
 }
 
+// lampTermBytes is what lampTerms and the whole masters before them hold a pixel.
+const lampTermBytes = 2*exposureBytes + 3*bytesFloat + 2
+
 // flatSweep goes once through the coded lamp frames.
 func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, fit *calib.FlatFit) (*sweep, error) {
 	l := &r.roles.calibration.lamps
-	h, err := s.heights(r.opts.MemoryBytes)
+	h, err := s.heights(r.opts.MemoryBytes - r.heldBytes() - lampTermBytes*int64(s.columns)*int64(s.rows))
 	if err != nil {
 		return nil, err
 	}

@@ -245,7 +245,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
 	}
-	h, err := s.heights(r.opts.MemoryBytes)
+	h, err := s.heights(r.opts.MemoryBytes - r.heldBytes())
 	if err != nil {
 		return 0, err
 	}
@@ -291,6 +291,14 @@ func (r *reduction) gridSource() string {
 		return r.opts.Recipe.Name
 	}
 	return filepath.Join(r.opts.Sequence, "profile.yaml")
+}
+
+// heldBytes is the memory of what calibrate keeps for the strips.
+func (r *reduction) heldBytes() int64 {
+	if r.optics.pixel == nil {
+		return 0
+	}
+	return exposureBytes * int64(len(r.optics.pixel.Factor))
 }
 
 func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {

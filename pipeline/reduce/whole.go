@@ -7,6 +7,10 @@ import (
 	"mirrorloom/calib"
 )
 
+// exposureBytes is the memory of a pixel of a calib.Exposure, or of a
+// calib.PixelResponse: two floats and flags.
+const exposureBytes = 2*bytesFloat + 2
+
 // wholeMasters are the masters over the whole detector, for frames that are
 // looked at as a whole: lamps.
 type wholeMasters struct {
