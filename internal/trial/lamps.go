@@ -7,7 +7,8 @@ import (
 
 // Lamps is a small field of the embedded profile "optical" whose nights hold all
 // that calibrates the instrument, which is not quite the profile's: 47 elements of
-// two mirrors, 128 voxels in the red, where neon has lines enough, and a detector
+// two mirrors, 128 voxels in the red, where neon has lines enough, rows for four blocks
+// of a line, which a smile takes, and a detector
 // wide enough for light that lands up to 15 px from where the profile has it.
 func Lamps() (*Field, error) {
 	f, err := load("optical", "demo")
@@ -15,12 +16,12 @@ func Lamps() (*Field, error) {
 		return nil, err
 	}
 	p := f.Profile
-	p.DMD.Columns, p.DMD.Rows = 100, 40
+	p.DMD.Columns, p.DMD.Rows = 100, 56
 	p.Spectrograph.TraceTilt = 0.009 // 2.6 rows end to end
-	p.Spectrograph.XCenterPx, p.Spectrograph.YCenterPx = 143.7, 27.2
+	p.Spectrograph.XCenterPx, p.Spectrograph.YCenterPx = 143.7, 35.2
 	p.Spectrograph.CenterNM = 613
 	p.Grid = instrument.Grid{FirstNM: 581, StepNM: 0.5, Count: 128}
-	TwoAmplifiers(&p.Detector, 288, 56)
+	TwoAmplifiers(&p.Detector, 288, 72)
 	f.small()
 	c := &f.Target.Calibration
 	c.Flat = sequence.FlatFrames{Count: 4, DwellSeconds: 5, Lamp: "halogen", CodedCycles: 1}

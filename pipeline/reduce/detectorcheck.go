@@ -129,6 +129,9 @@ func (r *reduction) persistence(m *wholeMasters, arcs []calib.ArcFrame) error {
 		if !ok || r.seq.Steps[f.step-1].Kind != sequence.Flat {
 			continue
 		}
+		if pattern, _ := r.seq.Pattern(f.step - 1); pattern == sequence.PatternOff {
+			continue // nothing that could stay
+		}
 		left, err := r.lampExposure(f, m, false, new(readScratch))
 		if err != nil {
 			return err

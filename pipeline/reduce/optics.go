@@ -102,6 +102,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 			return 0, err
 		}
 	}
+	r.flagDarkAmplifiers()
 	return r.looked.Load(), ctx.Err()
 }
 

@@ -93,3 +93,18 @@ func FuzzRecipe(f *testing.F) {
 		require.True(t, g.FirstNM > 0 && g.StepNM > 0 && g.Count >= 2)
 	})
 }
+
+// The recipe "nominal" takes the profile's word for wavelengths, trace and response, and
+// nothing else.
+func TestNominalRecipe(t *testing.T) {
+	r, err := LoadRecipe("nominal")
+	require.NoError(t, err)
+	want, err := LoadRecipe(DefaultRecipe)
+	require.NoError(t, err)
+	require.Equal(t, StageRecipe{Use: "auto"}, want.Arc)
+	require.Equal(t, StageRecipe{Use: "auto"}, want.Flat)
+	require.NotEqual(t, want.SHA, r.SHA)
+	want.Arc.Use, want.Flat.Use = "off", "off"
+	want.SHA, want.Name = r.SHA, r.Name
+	require.Equal(t, want, r)
+}
