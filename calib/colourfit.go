@@ -156,3 +156,11 @@ func (f *ColourFit) Merge(other *ColourFit) {
 func (f *ColourFit) Fork() *ColourFit {
 	return &ColourFit{rule: f.rule, geometry: f.geometry, elements: f.elements, columns: f.columns, table: f.table}
 }
+
+// ForkBeyond is a Fork with mirrors beyond the field of other widths: those of a row
+// where the device ends elsewhere.
+func (f *ColourFit) ForkBeyond(before, after float64) *ColourFit {
+	row := f.Fork()
+	row.rule.Before, row.rule.After = before, after
+	return row
+}

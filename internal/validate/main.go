@@ -39,6 +39,7 @@ func checks() []check {
 		demoNight("infrared", "demo-infrared", "demo-infrared", 0),
 		calibratedNight("optical", "demo", "demo", 500.824),
 		calibratedNight("infrared", "demo-infrared", "demo-infrared", 1644.0),
+		lampTerms(),
 		faintNight(),
 		enclosedFlux(),
 		seeds(),

@@ -15,6 +15,7 @@ type lampTerms struct {
 	// their frames with variances; nil where a kind of frame is missing.
 	neighbour, leak       *calib.Exposure
 	neighbourFit, leakFit *calib.ColourFit
+	beyond                []leakRow // by detector row
 }
 
 func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTerms, error) {
@@ -26,12 +27,8 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 		if t.leak, err = r.meanExposure(ctx, l.off, m); err != nil {
 			return nil, err
 		}
-		first, last := r.seq.Profile.URange()
-		columns := r.seq.ElementColumns()
-		width := float64(r.seq.ElementMirrors())
-		before := float64(r.seq.Elements[columns[0]].First-first) / width
-		after := float64(last-r.seq.Elements[columns[n-1]].Last) / width
-		if t.leakFit, err = calib.NewColourFit(calib.LeakRule(before, after), g, n, t.columns); err != nil {
+		t.beyond = r.leakRows()
+		if t.leakFit, err = calib.NewColourFit(calib.LeakRule(0, 0), g, n, t.columns); err != nil {
 			return nil, err
 		}
 	}
@@ -81,13 +78,14 @@ func combine(sum, e *calib.Exposure, sign float32) {
 // addRow adds a row of decoded lamp light.
 func (t *lampTerms) addRow(row *decodedRow) {
 	a, b := row.y*t.columns, (row.y+1)*t.columns
-	add := func(fit *calib.ColourFit, e *calib.Exposure) {
-		if fit != nil {
-			fit.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
-		}
+	if e := t.neighbour; t.neighbourFit != nil {
+		t.neighbourFit.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
 	}
-	add(t.neighbourFit, t.neighbour)
-	add(t.leakFit, t.leak)
+	if e := t.leak; t.leakFit != nil && t.beyond[row.y].use {
+		own := t.leakFit.ForkBeyond(t.beyond[row.y].before, t.beyond[row.y].after)
+		own.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
+		t.leakFit.Merge(own)
+	}
 }
 
 // solve puts the terms into o; a term that the lamp does not fix stays nil.

@@ -41,8 +41,8 @@ func columnSums(t *testing.T, path string) []float64 {
 
 // A star under a neighbour term of 1 % leaves ghosts of 0.25 % of it in two columns of
 // an m-sequence and in its neighbours. Measured by the lamp and taken out, they are below
-// 0.02 %, on nights without noise and, where the term is known as well as noise lets
-// it, with noise in the lamp frames: there the ghost is d's error over 4.
+// 0.02 %, on nights without noise; what noise in the lamp frames adds, a quarter of
+// the error of d, is measured by make validate.
 func TestNeighbourGhosts(t *testing.T) {
 	ghosts := func(faults []rehearse.Fault, recipe string) (worst float64, r *reduce.Result) {
 		f, err := trial.Lamps()
@@ -76,25 +76,6 @@ func TestNeighbourGhosts(t *testing.T) {
 	require.Less(t, after, 2e-4)
 	for _, d := range r.Run.Calibration.Neighbour {
 		require.InEpsilon(t, 0.01*d.WavelengthNM/613, d.Value, 0.02)
-	}
-}
-
-// From noisy lamp frames d = 1 % is found within 5 of its errors, which leave ghosts of
-// a quarter of them: below 0.02 % of the star.
-func TestNeighbourTermMeasured(t *testing.T) {
-	f, err := trial.Lamps()
-	require.NoError(t, err)
-	n, err := f.Plan(context.Background(), t.TempDir())
-	require.NoError(t, err)
-	require.NoError(t, n.Rehearse(context.Background(), trial.Noisy, rehearse.Options{Seed: 4, NoTruth: true, Faults: []rehearse.Fault{{Name: rehearse.Neighbour, Size: 0.01}}}))
-	r, err := n.Reduce(context.Background(), trial.Noisy, reduce.Options{Cube: true})
-	require.NoError(t, err)
-	require.NotEmpty(t, r.Run.Calibration.Neighbour)
-	for _, d := range r.Run.Calibration.Neighbour {
-		want := 0.01 * d.WavelengthNM / 613
-		t.Logf("%.0f nm: d = %.5f +- %.5f, truth %.5f", d.WavelengthNM, d.Value, d.Error, want)
-		require.InDelta(t, want, d.Value, max(5*d.Error, 2e-4))
-		require.Less(t, d.Error/4, 2e-4)
 	}
 }
 
