@@ -316,9 +316,9 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
 
 // write takes a strip of the cube to the file and counts its voxels.
 func (r *reduction) write(w *sweep, out *outStrip) error {
-	if r.optics.nominalWave {
+	if unknown := r.optics.unknown(); unknown != 0 {
 		for i := range out.flags {
-			out.flags[i] |= product.FlagNominalWave
+			out.flags[i] |= unknown
 		}
 	}
 	for row := range out.h {
