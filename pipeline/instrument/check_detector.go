@@ -40,7 +40,7 @@ func (p *Profile) checkDetector(c *config.Checks) {
 		c.That(a.BiasADU < d.SaturationADU, amplifierPath(i)+".bias_adu", "%v lies not below saturation_adu, %v; correct one of them", a.BiasADU, d.SaturationADU)
 	}
 	d.checkLinearity(c)
-	d.ReadMode.check(c)
+	d.Mode().check(c)
 	c.NotNegative("detector.read_s", d.ReadS)
 }
 

@@ -120,8 +120,8 @@ type Detector struct {
 	Amplifiers []Amplifier `yaml:"amplifiers"`
 	// DarkEPerS is the dark current, electrons per second and pixel.
 	DarkEPerS float64 `yaml:"dark_e_per_s"`
-	// ReadMode is how an exposure is read. Optional; a single read.
-	ReadMode ReadMode `yaml:"read_mode,flow" config:"optional"`
+	// ReadMode is how an exposure is read; see Mode. Optional; a single read.
+	ReadMode *ReadMode `yaml:"read_mode,flow" config:"optional"`
 	// SaturationADU is the lowest raw value that is not to be trusted, ADU,
 	// bias included.
 	SaturationADU float64 `yaml:"saturation_adu"`
@@ -157,8 +157,13 @@ type ReadMode struct {
 	Spacing float64 `yaml:"spacing" config:"optional"`
 }
 
-// SetDefaults makes it a single read.
-func (m *ReadMode) SetDefaults() { m.Kind = SingleRead }
+// Mode is ReadMode, filled in.
+func (d *Detector) Mode() ReadMode {
+	if d.ReadMode == nil {
+		return ReadMode{Kind: SingleRead}
+	}
+	return *d.ReadMode
+}
 
 // Amplifier is one readout chain.
 type Amplifier struct {

@@ -80,4 +80,8 @@ type DepthAtSN struct {
 	Side int     `json:"side"` // rows and columns of a cell
 	SN   float64 `json:"sn"`
 	RMS  float64 `json:"rms"`
+	// Excess is the rms beyond the photons' noise, 0 where there is none, and its
+	// standard error.
+	Excess      float64 `json:"excess"`
+	ExcessError float64 `json:"excess_error"`
 }

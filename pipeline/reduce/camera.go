@@ -39,8 +39,9 @@ type amplifier struct {
 
 func newCamera(d *instrument.Detector) (*camera, error) {
 	c := &camera{columns: d.Columns, rows: d.Rows, saturationADU: d.SaturationADU, linearity: d.Linearity}
+	mode := d.Mode()
 	var err error
-	if c.noise, err = (physics.ReadMode{Kind: physics.ReadKind(d.ReadMode.Kind), Reads: d.ReadMode.Reads, Spacing: d.ReadMode.Spacing}).Noise(); err != nil {
+	if c.noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
 		return nil, fmt.Errorf("detector.read_mode of the profile: %w", err)
 	}
 	c.photonExcess = c.noise.Photon - 1

@@ -33,6 +33,9 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 	if err == nil {
 		err = r.slitFlat(ctx, m)
 	}
+	if err == nil {
+		err = r.flatDepth(ctx, m)
+	}
 	if errors.Is(err, calib.ErrNoLight) {
 		r.optics.pixel, r.optics.response = nil, nil
 		r.noFlat(err)
@@ -80,12 +83,12 @@ func (r *reduction) lampSteps(rows []int) []string {
 	return steps
 }
 
-// pixelFlat measures the response of the pixels from all lamp frames together: a
-// coded cycle adds up to k all-on frames.
+// pixelFlat measures the response of the pixels from the coded cycle, which adds up to
+// k all-on frames. The all-on frames themselves are few beside it, and kept for
+// flatDepth.
 func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
-	l := &r.roles.calibration.lamps
-	frames := append([]*frame{}, l.on...)
-	for _, list := range l.coded {
+	var frames []*frame
+	for _, list := range r.roles.calibration.lamps.coded {
 		frames = append(frames, list...)
 	}
 	sum, err := r.sumExposures(ctx, frames, m, true)

@@ -21,10 +21,10 @@ func TestPullsOfReadModes(t *testing.T) {
 		t.Run(mode.Kind, func(t *testing.T) {
 			f, err := trial.Diagonal()
 			require.NoError(t, err)
-			f.Profile.Detector.ReadMode = mode
+			f.Profile.Detector.ReadMode = &mode
 			night, _, err := f.Pair(context.Background(), t.TempDir(), uint64(31+i))
 			require.NoError(t, err)
-			require.Equal(t, mode, night.Seq.Profile.Detector.ReadMode)
+			require.Equal(t, mode, night.Seq.Profile.Detector.Mode())
 			pulls, _, err := night.PullsOf(1)
 			require.NoError(t, err)
 			hold(t, pulls.Findings(mode.Kind))

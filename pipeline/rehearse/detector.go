@@ -52,8 +52,9 @@ const (
 
 func newDetector(d instrument.Detector, seed uint64, perfect, noiseless bool) *detector {
 	t := &detector{Detector: d, seed: seed, perfect: perfect, noiseless: noiseless, rawColumns: d.RawColumns()}
+	mode := d.Mode()
 	var err error
-	if t.noise, err = (physics.ReadMode{Kind: physics.ReadKind(d.ReadMode.Kind), Reads: d.ReadMode.Reads, Spacing: d.ReadMode.Spacing}).Noise(); err != nil {
+	if t.noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
 		panic("internal error: a checked profile's read mode: " + err.Error())
 	}
 	t.rows = make([]rawRow, d.RawRows())

@@ -15,14 +15,14 @@ import (
 func TestReadModeNoise(t *testing.T) {
 	const columns, rows, light, noise, gain = 1000, 20, 300.0, 10.0, 2.0
 	for _, c := range []struct {
-		mode         instrument.ReadMode
+		mode         *instrument.ReadMode
 		read, photon float64
 	}{
-		{instrument.ReadMode{}, 1, 1},
-		{instrument.ReadMode{Kind: instrument.SingleRead}, 1, 1},
-		{instrument.ReadMode{Kind: instrument.DoubleRead}, 2, 1},
-		{instrument.ReadMode{Kind: instrument.FowlerRead, Reads: 8, Spacing: 0.1}, 0.25, 1 - 0.1*63/24},
-		{instrument.ReadMode{Kind: instrument.RampRead, Reads: 16}, 12 * 15.0 / (16 * 17), 6 * 257.0 / (5 * 16 * 17)},
+		{nil, 1, 1},
+		{&instrument.ReadMode{Kind: instrument.SingleRead}, 1, 1},
+		{&instrument.ReadMode{Kind: instrument.DoubleRead}, 2, 1},
+		{&instrument.ReadMode{Kind: instrument.FowlerRead, Reads: 8, Spacing: 0.1}, 0.25, 1 - 0.1*63/24},
+		{&instrument.ReadMode{Kind: instrument.RampRead, Reads: 16}, 12 * 15.0 / (16 * 17), 6 * 257.0 / (5 * 16 * 17)},
 	} {
 		d := instrument.Detector{Columns: columns, Rows: rows, SaturationADU: 60000, ReadMode: c.mode, Amplifiers: []instrument.Amplifier{
 			{Data: instrument.Section{1, columns, 1, rows}, GainEPerADU: gain, ReadNoiseE: noise, BiasADU: 1000},
@@ -44,7 +44,7 @@ func TestReadModeNoise(t *testing.T) {
 			}
 		}
 		want := c.read*noise*noise + c.photon*light
-		require.InDelta(t, light, sum, 5*math.Sqrt(want/(columns*rows)), "%+v", c.mode)
-		require.InEpsilon(t, want, square-sum*sum, 5*math.Sqrt(2.0/(columns*rows)), "%+v", c.mode)
+		require.InDelta(t, light, sum, 5*math.Sqrt(want/(columns*rows)), "%+v", d.Mode())
+		require.InEpsilon(t, want, square-sum*sum, 5*math.Sqrt(2.0/(columns*rows)), "%+v", d.Mode())
 	}
 }

@@ -37,7 +37,7 @@ func calibrationFacts(c *product.Calibration) []fact {
 	}
 	if len(c.FlatDepth) > 0 {
 		add("How deep the flat field goes", "%s", list(c.FlatDepth, func(d product.DepthAtSN) string {
-			return fmt.Sprintf("%.3f %% where photons allow %.3f %% (%d × %d pixels)", 100*d.RMS, 100/d.SN, d.Side, d.Side)
+			return fmt.Sprintf("%.3f %% where photons allow %.3f %% (%d × %d pixels), %.3f ± %.3f %% beyond", 100*d.RMS, 100/d.SN, d.Side, d.Side, 100*d.Excess, 100*d.ExcessError)
 		}))
 	}
 	if len(c.Neighbour) > 0 {
