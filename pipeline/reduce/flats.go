@@ -8,6 +8,7 @@ import (
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/sequence"
 )
 
 // lampKelvin is the colour that a continuum lamp is taken to have before its
@@ -19,15 +20,21 @@ const lampKelvin = 3000
 // its template (see calib.FlatFit).
 const flatPasses = 2
 
+// flatsLost is the part of a coded lamp cycle that may be lost: the lamp's frames
+// are so alike that the mean of the others stands for a lost one.
+const flatsLost = 0.05
+
 // flats measures the response of pixels, slit and light path, the neighbour term
 // and the leak.
 func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 	l := &r.roles.calibration.lamps
 	lost := len(l.lost())
-	if l.coded == nil || lost*20 > r.seq.V {
+	if l.coded == nil || float64(lost) > flatsLost*float64(r.seq.V) {
 		r.degrade("the flat field is not corrected: %d of %d coded lamp frames are there; plan or repeat a coded flat cycle, or say `flat: {use: off}` in the recipe", r.seq.V*min(1, len(l.coded))-lost, r.seq.V)
 		return nil
 	}
+	r.warnMissing(sequence.Flat, len(l.all()))
+	r.degradeMissing()
 	err := r.pixelFlat(ctx, m)
 	if err == nil {
 		err = r.slitFlat(ctx, m)
@@ -38,6 +45,22 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		return nil
 	}
 	return err
+}
+
+// degradeMissing tells that the neighbour term was to be measured and cannot be.
+func (r *reduction) degradeMissing() {
+	l := &r.roles.calibration.lamps
+	have := map[sequence.Pattern]int{
+		sequence.PatternOn: len(l.on), sequence.PatternEven: len(l.even),
+		sequence.PatternOdd: len(l.odd), sequence.PatternOff: len(l.off),
+	}
+	for i, s := range r.seq.Steps {
+		pattern, _ := r.seq.Pattern(i)
+		if n, wanted := have[pattern]; s.Kind == sequence.Flat && wanted && n == 0 {
+			r.degrade("the light of open neighbours is not measured: all lamp frames with the mask of step %d are missing", s.Step)
+			return
+		}
+	}
 }
 
 // pixelFlat measures the response of the pixels from all lamp frames together: a

@@ -321,6 +321,13 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 			out.flags[i] |= product.FlagNominalWave
 		}
 	}
+	if len(w.decoder.lost) > 0 {
+		for i, f := range out.flags {
+			if f&product.FlagNoData == 0 {
+				out.flags[i] |= product.FlagLost
+			}
+		}
+	}
 	for row := range out.h {
 		y := out.y0 + row
 		w.quality[y].count(out, row, w.shape.elements, w.shape.voxels, r.usage.row(y))

@@ -119,6 +119,11 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		return err
 	}
 	if w.elements != nil {
+		if len(w.decoder.lost) > 0 {
+			for i := range s.flags {
+				s.flags[i] |= product.FlagLost
+			}
+		}
 		if err := s.writePlanes(w.elements); err != nil {
 			return err
 		}
@@ -261,13 +266,6 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 	w.out.begin(w.shape, w.nextOut, n)
 	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
 		return err
-	}
-	if len(w.decoder.lost) > 0 {
-		for i, f := range w.out.flags {
-			if f&product.FlagNoData == 0 {
-				w.out.flags[i] |= product.FlagLost
-			}
-		}
 	}
 	if err := w.sink(ctx, w.out); err != nil {
 		return err
