@@ -1,6 +1,7 @@
 package calib
 
 import (
+	"cmp"
 	"math"
 	"slices"
 )
@@ -9,12 +10,15 @@ import (
 // difference, whose expectation is the variance.
 type transferSample struct{ m, half float64 }
 
-// transferReach is the number of pixels of a row on each side that are averaged for a
-// pixel's light, so that its own read noise does not decide what variance is expected
-// of it: a straight line through points with errors in both directions is too flat.
-// Its photon noise would do no harm: half the squared difference of two Poisson numbers
-// is expected to be their mean, whatever that came out as.
-const transferReach = 15
+// transferSmooth are the weights of a pixel and its neighbours along the row, on one
+// side, in its light m: a parabola through five pixels (Savitzky and Golay 1964,
+// Analytical Chemistry 36, 1627). A straight line through points with errors in both
+// directions is too flat, and these halve the variance of the read noise in m, while an
+// edge as wide as the lines keeps its shape: with a mean over many pixels the dim ones
+// at the foot of an edge, which weigh most, would be taken for brighter than they are.
+// The photons' noise in m does no harm: half the squared difference of two Poisson
+// numbers is expected to be their mean, whatever that came out as.
+var transferSmooth = [...]float64{17.0 / 35, 12.0 / 35, -3.0 / 35}
 
 // transferLine is v(m) = level + slope m in ADU^2. floor keeps it positive.
 type transferLine struct{ level, slope float64 }
@@ -32,20 +36,10 @@ const struckSigmas = 6
 // levels (biases) or lamps (flats) differ by; rows keep what is left of their own
 // levels, since a row's mean would bring the noise of its bright pixels to the dim.
 func (p *Pair) samples(dst []transferSample) []transferSample {
-	scaled := make([]float32, len(p.A)) // differences in about equal units
-	for i := range scaled {
-		a, b := float64(p.A[i]), float64(p.B[i])
-		scaled[i] = float32(math.NaN())
-		if p.Flags == nil || p.Flags[i] == 0 {
-			scaled[i] = float32((a - b) / p.unit(a+b))
-		}
-	}
-	level, scatter := RobustLevel(scaled, make([]float32, len(scaled)))
-	kept := make([]bool, len(scaled))
+	kept := p.unstruck()
 	var differences, weights float64
-	for i, v := range scaled {
-		kept[i] = math.Abs(float64(v)-level) <= struckSigmas*max(scatter, 0.5)
-		if kept[i] {
+	for i, ok := range kept {
+		if ok {
 			differences += float64(p.A[i] - p.B[i])
 			weights += p.part(i)
 		}
@@ -60,12 +54,33 @@ func (p *Pair) samples(dst []transferSample) []transferSample {
 	return dst
 }
 
-// unit is what the noise of a difference grows with.
-func (p *Pair) unit(sum float64) float64 {
-	if p.Dark {
-		return 1
+// unstruck marks the good pixels whose difference is within struckSigmas of those of
+// pixels of like light. A common scale would not do: in a flat the dim pixels, with
+// read noise alone, scatter otherwise than the bright ones.
+func (p *Pair) unstruck() []bool {
+	var places []int
+	for i := range p.A {
+		if (p.Flags == nil || p.Flags[i] == 0) && p.A[i] == p.A[i] && p.B[i] == p.B[i] {
+			places = append(places, i)
+		}
 	}
-	return math.Sqrt(max(sum/2, 1))
+	groups := 1
+	if !p.Dark {
+		groups = transferGroups
+		slices.SortStableFunc(places, func(i, k int) int { return cmp.Compare(p.A[i]+p.B[i], p.A[k]+p.B[k]) })
+	}
+	kept := make([]bool, len(p.A))
+	for group := range slices.Chunk(places, max(1, (len(places)+groups-1)/groups)) {
+		differences := make([]float32, len(group))
+		for k, i := range group {
+			differences[k] = p.A[i] - p.B[i]
+		}
+		level, scatter := RobustLevel(differences, make([]float32, len(group)))
+		for k, i := range group {
+			kept[i] = math.Abs(float64(differences[k])-level) <= struckSigmas*max(scatter, 0.5)
+		}
+	}
+	return kept
 }
 
 // part is what a pixel's difference is in proportion to.
@@ -78,24 +93,30 @@ func (p *Pair) part(i int) float64 {
 
 // row appends the kept pixels of the row that begins at pixel start.
 func (p *Pair) row(dst []transferSample, kept []bool, start int, drift float64) []transferSample {
-	var places []int
-	sum := []float64{0}
 	for i, ok := range kept {
 		if ok {
-			places = append(places, start+i)
-			sum = append(sum, sum[len(sum)-1]+float64(p.A[start+i]+p.B[start+i])/2)
+			d := float64(p.A[start+i]-p.B[start+i]) - drift*p.part(start+i)
+			dst = append(dst, transferSample{p.lightAt(kept, start, i), d * d / 2})
 		}
-	}
-	for k, i := range places {
-		d := float64(p.A[i]-p.B[i]) - drift*p.part(i)
-		m := 0.0
-		if !p.Dark {
-			reach := min(transferReach, k, len(places)-1-k) // symmetric: a slope does no harm
-			m = (sum[k+reach+1] - sum[k-reach]) / float64(2*reach+1)
-		}
-		dst = append(dst, transferSample{m, d * d / 2})
 	}
 	return dst
+}
+
+// lightAt is m of pixel i of the row that begins at pixel start: from the pixel alone
+// where a neighbour is not kept.
+func (p *Pair) lightAt(kept []bool, start, i int) float64 {
+	if p.Dark {
+		return 0
+	}
+	const reach = len(transferSmooth) - 1
+	m := 0.0
+	for k := -reach; k <= reach; k++ {
+		if i+k < 0 || i+k >= len(kept) || !kept[i+k] {
+			return p.part(start + i)
+		}
+		m += transferSmooth[max(k, -k)] * p.part(start+i+k)
+	}
+	return m
 }
 
 // transferGroups is the number of groups of like light.

@@ -33,8 +33,10 @@ type tidy struct{ *testing.M }
 
 func (m tidy) Run() int {
 	code := m.M.Run()
-	if tinyDir != "" {
-		_ = os.RemoveAll(tinyDir) // in the system's folder for such files
+	for _, dir := range []string{tinyDir, lampsDir} {
+		if dir != "" {
+			_ = os.RemoveAll(dir) // in the system's folder for such files
+		}
 	}
 	return code
 }

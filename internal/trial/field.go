@@ -14,6 +14,9 @@ type Field struct {
 	Profile *instrument.Profile
 	Target  *sequence.Target
 	Scene   *rehearse.Scene
+	// Imperfect has the nights' instrument differ from the profile, within what
+	// rehearse draws, and the reduction calibrate it by its lamps.
+	Imperfect bool
 
 	// scenery makes Scene for the profile and target as they stand.
 	scenery func()

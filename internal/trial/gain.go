@@ -73,8 +73,8 @@ func (g *Gain) Finding() Finding {
 // elements does not average it.
 func (g *Gain) PullFindings() []Finding {
 	name := fmt.Sprintf("lightless field, v = %d, g = %d", g.V, g.Dark)
-	slit := judgePulls(name+", slit scan", &g.SlitPulls)
-	return append(judgePulls(name+", code", &g.CodePulls), slit[1])
+	slit := clean.judge(name+", slit scan", &g.SlitPulls)
+	return append(clean.judge(name+", code", &g.CodePulls), slit[1])
 }
 
 // MeasureGain rehearses and reduces a coded night and a slit scan of equal total

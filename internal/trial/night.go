@@ -20,8 +20,8 @@ type Night struct {
 	Seq   *sequence.Sequence
 }
 
-// The folders of a trial.
-func (n *Night) sequence() string { return filepath.Join(n.Dir, "sequence") }
+// SequencePath is the folder of the sequence.
+func (n *Night) SequencePath() string { return filepath.Join(n.Dir, "sequence") }
 
 // Frames is the folder of the night named name.
 func (n *Night) Frames(name string) string { return filepath.Join(n.Dir, "night-"+name) }
@@ -50,16 +50,16 @@ func (f *Field) Plan(ctx context.Context, dir string) (*Night, error) {
 	if err != nil {
 		return nil, err
 	}
-	if err := seq.Write(ctx, n.sequence()); err != nil {
+	if err := seq.Write(ctx, n.SequencePath()); err != nil {
 		return nil, err
 	}
-	n.Seq, err = sequence.Read(ctx, n.sequence())
+	n.Seq, err = sequence.Read(ctx, n.SequencePath())
 	return n, err
 }
 
-// Rehearse draws a night. The instrument is perfect.
+// Rehearse draws a night. The instrument is perfect, unless the field's is not.
 func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options) error {
-	opts.Perfect = true
+	opts.Perfect = !n.Field.Imperfect
 	if err := os.MkdirAll(n.Frames(name), 0o755); err != nil {
 		return err
 	}
@@ -67,15 +67,19 @@ func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options
 	return err
 }
 
-// Reduce reduces the night named name with the recipe of opts or, as the
-// instrument is perfect, the nominal one.
+// Reduce reduces the night named name with the recipe of opts or, without one,
+// the nominal one for a perfect instrument and the default one for another.
 func (n *Night) Reduce(ctx context.Context, name string, opts reduce.Options) (*reduce.Result, error) {
-	opts.Night, opts.Sequence, opts.Out = n.Frames(name), n.sequence(), n.Run(name)
+	opts.Night, opts.Sequence, opts.Out = n.Frames(name), n.SequencePath(), n.Run(name)
 	if err := os.MkdirAll(opts.Out, 0o755); err != nil {
 		return nil, err
 	}
 	if opts.Recipe == nil {
-		recipe, err := reduce.LoadRecipe("nominal")
+		name := "nominal"
+		if n.Field.Imperfect {
+			name = reduce.DefaultRecipe
+		}
+		recipe, err := reduce.LoadRecipe(name)
 		if err != nil {
 			return nil, err
 		}

@@ -37,6 +37,8 @@ func checks() []check {
 		// The figure of 60 % is that of `mirrorloom demo`; this target closes almost
 		// half of the rows, where its strips end.
 		demoNight("infrared", "demo-infrared", "demo-infrared", 0),
+		calibratedNight("optical", "demo", "demo", 500.824),
+		calibratedNight("infrared", "demo-infrared", "demo-infrared", 1644.0),
 		faintNight(),
 		enclosedFlux(),
 		seeds(),

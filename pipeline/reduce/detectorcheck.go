@@ -10,15 +10,24 @@ import (
 	"mirrorloom/pipeline/sequence"
 )
 
-// Of each kind so many pairs are compared: the error of a gain from one pair of
-// 1e5 pixels is 0.5 %, and pairs are whole frames in memory.
-const transferPairs = 3
+// Of biases and of lamp frames at most so many pairs are compared, and of each at most
+// so many pixels an amplifier, whole rows spread over it: the error of a gain from one
+// pair of 1e5 pixels is 0.5 %, and all pairs are in memory at the same time.
+const (
+	transferPairs  = 4
+	transferPixels = 1 << 17
+)
 
 // checkDetector measures gain and read noise and compares them with the profile:
 // the profile's values stay in use, but the user is told.
 func (r *reduction) checkDetector(ctx context.Context, m *wholeMasters) error {
 	biases := firstPairs(r.roles.calibration.bias, true)
-	flats := firstPairs(r.roles.calibration.lamps.on, false)
+	l := &r.roles.calibration.lamps
+	var flats []framePair
+	for _, frames := range [][]*frame{l.on, l.even, l.odd} {
+		flats = append(flats, firstPairs(frames, false)...)
+	}
+	flats = flats[:min(len(flats), transferPairs)]
 	if len(flats) == 0 || len(biases) == 0 {
 		return nil
 	}
@@ -87,15 +96,18 @@ func (r *reduction) compare(amplifier int, what string, value, err, profile floa
 	}
 }
 
-// amplifierPair cuts an amplifier's pixels out of two exposures, in ADU.
+// amplifierPair cuts an amplifier's pixels out of two exposures, in ADU: every row, or
+// as few of them as transferPixels allow.
 func (r *reduction) amplifierPair(a int, e [2]*calib.Exposure) calib.Pair {
 	amp := &r.camera.amplifiers[a]
 	w, h := amp.place.Raw.Width(), amp.place.Raw.Height()
+	every := (w*h + transferPixels - 1) / transferPixels
+	h /= every
 	pair := calib.Pair{A: make([]float32, w*h), B: make([]float32, w*h), Flags: make([]calib.Flag, w*h), Width: w}
 	gain := float32(amp.gain)
 	for y := range h {
 		for x := range w {
-			from, to := (amp.place.Y0+y)*r.camera.columns+amp.place.X0+x, y*w+x
+			from, to := (amp.place.Y0+y*every)*r.camera.columns+amp.place.X0+x, y*w+x
 			pair.A[to], pair.B[to] = e[0].Signal[from]/gain, e[1].Signal[from]/gain
 			pair.Flags[to] = e[0].Flags[from] | e[1].Flags[from]
 		}

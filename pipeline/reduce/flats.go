@@ -4,6 +4,8 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
+	"strings"
 
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
@@ -20,20 +22,14 @@ const lampKelvin = 3000
 // its template (see calib.FlatFit).
 const flatPasses = 2
 
-// flatsLost is the part of a coded lamp cycle that may be lost: the lamp's frames
-// are so alike that the mean of the others stands for a lost one.
-const flatsLost = 0.05
-
 // flats measures the response of pixels, slit and light path, the neighbour term
 // and the leak.
 func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
-	l := &r.roles.calibration.lamps
-	lost := len(l.lost())
-	if l.coded == nil || float64(lost) > flatsLost*float64(r.seq.V) {
-		r.degrade("the flat field is not corrected: %d of %d coded lamp frames are there; plan or repeat a coded flat cycle, or say `flat: {use: off}` in the recipe", r.seq.V*min(1, len(l.coded))-lost, r.seq.V)
+	if why := r.flatLacks(); why != "" {
+		r.noFlat(errors.New(why))
 		return nil
 	}
-	r.warnMissing(sequence.Flat, len(l.all()))
+	r.warnMissing(sequence.Flat, len(r.roles.calibration.lamps.all()))
 	r.degradeMissing()
 	err := r.pixelFlat(ctx, m)
 	if err == nil {
@@ -41,7 +37,7 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 	}
 	if errors.Is(err, calib.ErrNoLight) {
 		r.optics.pixel, r.optics.response = nil, nil
-		r.degrade("the flat field is not corrected: %v", err)
+		r.noFlat(err)
 		return nil
 	}
 	return err
@@ -54,13 +50,52 @@ func (r *reduction) degradeMissing() {
 		sequence.PatternOn: len(l.on), sequence.PatternEven: len(l.even),
 		sequence.PatternOdd: len(l.odd), sequence.PatternOff: len(l.off),
 	}
-	for i, s := range r.seq.Steps {
+	for _, i := range r.seq.StepsOf(sequence.Flat) {
 		pattern, _ := r.seq.Pattern(i)
-		if n, wanted := have[pattern]; s.Kind == sequence.Flat && wanted && n == 0 {
-			r.degrade("the light of open neighbours is not measured: all lamp frames with the mask of step %d are missing", s.Step)
+		if n, wanted := have[pattern]; wanted && n == 0 {
+			r.degrade("the light of open neighbours is not measured: all lamp frames with the mask of step %d are missing", r.seq.Steps[i].Step)
 			return
 		}
 	}
+}
+
+// noFlat leaves the response uncorrected, flags it and says why.
+func (r *reduction) noFlat(why error) {
+	r.optics.noFlat = true
+	r.degrade("the flat field is not corrected, and every voxel is flagged LOWFLAT: %v", why)
+}
+
+// flatLacks says what the coded cycle lacks; empty if nothing. A cycle without one of
+// its rows cannot be decoded: the lamp's light of all elements would be missing from
+// each.
+func (r *reduction) flatLacks() string {
+	const off = "or say `flat: {use: off}` in the recipe"
+	l := &r.roles.calibration.lamps
+	lost := l.lost()
+	switch {
+	case l.coded == nil:
+		return "there is no coded lamp frame; plan or repeat a coded flat cycle, " + off
+	case len(lost) == 0:
+		return ""
+	}
+	have := r.seq.V - len(lost)
+	steps := r.lampSteps(lost)
+	const named = 8
+	if len(steps) > named {
+		return fmt.Sprintf("%d of %d coded lamp frames are there; repeat the cycle, %s", have, r.seq.V, off)
+	}
+	return fmt.Sprintf("%d of %d coded lamp frames are there; repeat step %s, %s", have, r.seq.V, strings.Join(steps, ", "), off)
+}
+
+// lampSteps names the flat steps that show rows of the code.
+func (r *reduction) lampSteps(rows []int) []string {
+	var steps []string
+	for _, i := range r.seq.StepsOf(sequence.Flat) {
+		if pattern, row := r.seq.Pattern(i); pattern == sequence.PatternRow && slices.Contains(rows, row) {
+			steps = append(steps, fmt.Sprint(r.seq.Steps[i].Step))
+		}
+	}
+	return steps
 }
 
 // pixelFlat measures the response of the pixels from all lamp frames together: a
@@ -68,10 +103,8 @@ func (r *reduction) degradeMissing() {
 func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
 	l := &r.roles.calibration.lamps
 	frames := append([]*frame{}, l.on...)
-	if len(l.lost()) == 0 { // else the sum is not that of evenly lit elements
-		for _, list := range l.coded {
-			frames = append(frames, list...)
-		}
+	for _, list := range l.coded {
+		frames = append(frames, list...)
 	}
 	sum, err := r.sumExposures(ctx, frames, m, true)
 	if err != nil {
@@ -87,6 +120,9 @@ func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
 		shift[x] = r.optics.geometry.TraceShift(float64(x))
 	}
 	r.optics.pixel, err = calib.DefaultPixelRule().Measure(ctx, sum.Signal, sum.Variance, sum.Flags, expected, shift)
+	if err == nil {
+		r.flagDarkAmplifiers()
+	}
 	return err
 }
 

@@ -4,11 +4,11 @@ import (
 	"context"
 	"os"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"github.com/stretchr/testify/require"
 
-	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/rehearse"
@@ -55,35 +55,27 @@ func readFlags(t *testing.T, path string) []int16 {
 	return all
 }
 
-// A coded lamp frame that is lost is filled in: the voxels of the decoded flat take
-// part in the fit all the same.
-func TestLostLampFrameLeavesAFlat(t *testing.T) {
+// Lamps are looked at without a cube as well, and a lamp's mask of which no frame is
+// left is a reason why the product is not whole.
+func TestFlatsForElementsAlone(t *testing.T) {
 	p, target, scene := tiny(t)
-	v := 31 // of which one is less than flatsLost
-	target.Code.V, target.Code.Dark = &v, nil
 	target.Calibration.Flat.Count, target.Calibration.Flat.CodedCycles = 1, 1
 	night, seqDir := robustNight(t, p, target, scene)
 	seq, err := sequence.Read(context.Background(), seqDir)
 	require.NoError(t, err)
-	for i, s := range seq.Steps {
-		if pattern, _ := seq.Pattern(i); s.Kind == sequence.Flat && pattern == sequence.PatternRow {
-			require.NoError(t, os.Remove(filepath.Join(night, rehearse.FrameFile(s.Step))))
-			break
-		}
-	}
-	for _, products := range []Options{{Cube: true}, {Elements: true}} {
-		products.Night, products.Sequence, products.Out = night, seqDir, t.TempDir()
-		result, err := Run(context.Background(), products)
+	run := func() []string {
+		result, err := Run(context.Background(), Options{Night: night, Sequence: seqDir, Elements: true, Out: t.TempDir()})
 		require.NoError(t, err)
-		for _, why := range result.Degraded {
-			require.NotContains(t, why, "flat field")
-		}
 		require.NotNil(t, result.Run.Calibration.Flat)
+		require.Zero(t, result.Run.Calibration.Flat.AddedVariance)
+		return result.Degraded
 	}
-}
-
-// Without a cube no voxel tells what variance the responses add.
-func TestFlatSummaryWithoutCube(t *testing.T) {
-	r := &reduction{optics: optics{pixel: &calib.PixelResponse{Scatter: 0.01}, response: &calib.Response{}}}
-	require.Zero(t, r.flatSummary().AddedVariance)
+	const neighbours = "the light of open neighbours is not measured"
+	require.NotContains(t, strings.Join(run(), "; "), neighbours)
+	for _, i := range seq.StepsOf(sequence.Flat) {
+		if pattern, _ := seq.Pattern(i); pattern == sequence.PatternEven {
+			require.NoError(t, os.Remove(filepath.Join(night, rehearse.FrameFile(seq.Steps[i].Step))))
+		}
+	}
+	require.Contains(t, strings.Join(run(), "; "), neighbours)
 }

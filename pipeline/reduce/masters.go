@@ -225,8 +225,11 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []flo
 	}
 }
 
+// meanVariance takes the charge as it is, below 0 as well: clipped, noise alone would
+// look like light.
 func meanVariance(quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
-	return ratio*ratio*(quiet+max(0, charge))/float64(frames) + (1-ratio)*(1-ratio)*biasVariance
+	own := max(quiet+charge, quiet*varianceFloor)
+	return ratio*ratio*own/float64(frames) + (1-ratio)*(1-ratio)*biasVariance
 }
 
 // findHot marks pixels whose dark charge in a science exposure stands out of

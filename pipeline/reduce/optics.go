@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
 
 	"go.uber.org/zap"
 
@@ -18,12 +19,28 @@ type optics struct {
 	geometry calib.Geometry
 	// nominalWave: wavelengths were asked of the arcs and are the profile's.
 	nominalWave bool
-	arcs        *calib.ArcSolution
-	trace       *calib.TraceSolution
-	pixel       *calib.PixelResponse
-	response    *calib.Response
-	neighbour   *calib.ColourTerm
-	leak        *calib.ColourTerm
+	// noFlat: the response was asked of the flats and is taken as even.
+	noFlat bool
+	// darkAmplifiers show no light of the lamp.
+	darkAmplifiers []int
+	arcs           *calib.ArcSolution
+	trace          *calib.TraceSolution
+	pixel          *calib.PixelResponse
+	response       *calib.Response
+	neighbour      *calib.ColourTerm
+	leak           *calib.ColourTerm
+}
+
+// unknown is the flags of every voxel for what was asked of the lamps in vain.
+func (o *optics) unknown() int16 {
+	var flags int16
+	if o.nominalWave {
+		flags |= product.FlagNominalWave
+	}
+	if o.noFlat {
+		flags |= product.FlagLowFlat
+	}
+	return flags
 }
 
 // pixelVariance is the mean relative variance of the response of a lit pixel.
@@ -67,6 +84,9 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	r.looked.Add(r.masterBytes())
+	if err := r.findDarkAmplifiers(ctx, m); err != nil {
+		return 0, err
+	}
 	if err := r.checkDetector(ctx, m); err != nil {
 		return 0, err
 	}
@@ -137,17 +157,18 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 		r.nominal(errors.New("there is no arc frame; plan arcs, or say `arc: {use: off}` in the recipe"))
 		return nil
 	}
+	lines, err := r.arcLines()
+	if err != nil {
+		r.nominal(err)
+		return nil
+	}
 	r.warnMissing(sequence.Arc, len(r.roles.arcs))
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
 	rule := calib.DefaultPeakRule(r.lineFWHM())
-	err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
-		step := r.roles.arcs[i].step
-		_, element := r.seq.Pattern(step)
+	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+		_, element := r.seq.Pattern(r.roles.arcs[i].step)
 		first, last := r.litRows(element)
-		frames[i].Element = element
-		if frames[i].Lines, err = r.lampLines(r.seq.Steps[step].Lamp); err != nil {
-			return err
-		}
+		frames[i].Element, frames[i].Lines = element, lines[i]
 		if first > last { // a closed element shows no line
 			return nil
 		}
@@ -181,12 +202,20 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	return nil
 }
 
-// lampLines lists what a lamp may show in the band and a tenth of it beyond.
-func (r *reduction) lampLines(lamp string) ([]calib.LampLine, error) {
+// arcLines lists what the lamp of each arc frame may show in the band and a tenth of
+// it beyond. The error names a lamp of which there is no list.
+func (r *reduction) arcLines() ([][]calib.LampLine, error) {
 	g := r.schema.Grid
 	first, last := g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5)
 	beyond := (last - first) / 10
-	return lampLines(lamp, first-beyond, last+beyond)
+	all := make([][]calib.LampLine, len(r.roles.arcs))
+	for i, f := range r.roles.arcs {
+		var err error
+		if all[i], err = lampLines(r.seq.Steps[f.step].Lamp, first-beyond, last+beyond); err != nil {
+			return nil, err
+		}
+	}
+	return all, nil
 }
 
 // arcRule bounds the search for the band of the cube's grid.
@@ -203,43 +232,58 @@ func (r *reduction) lineFWHM() float64 {
 }
 
 // solveTrace measures the trace at the ends of the slit: in the lamp's all-on
-// frames where all elements end at the same rows, else in the arcs.
+// frames where all elements end at the same rows, or else in the arcs.
 func (r *reduction) solveTrace(ctx context.Context, m *wholeMasters) error {
 	rule := calib.DefaultTraceRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
-	var points []calib.EdgePoint
-	frames := r.roles.calibration.lamps.on
-	if ends, same := r.commonEnds(); same && len(frames) > 0 {
-		e, err := r.sumExposures(ctx, frames, m, true)
+	why := errors.New("trace: no end of the lit rows lies on the detector of a lamp frame")
+	for _, find := range []func(context.Context, *wholeMasters, calib.TraceRule) ([]calib.EdgePoint, error){r.lampEnds, r.arcEnds} {
+		points, err := find(ctx, m, rule)
 		if err != nil {
 			return err
 		}
-		if points, err = rule.Find(*e, ends, 0); err != nil {
-			return err
+		if points == nil {
+			continue
 		}
-	} else {
-		found := make([][]calib.EdgePoint, len(r.roles.arcs))
-		err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
-			_, element := r.seq.Pattern(r.roles.arcs[i].step)
-			found[i], err = rule.Find(*e, r.ends(element), i*maxEnds)
-			return err
-		})
+		solution, err := calib.FitTrace(r.optics.geometry, points, r.camera.columns)
+		var unknown *calib.TraceError
+		if errors.As(err, &unknown) {
+			why = err
+			continue
+		}
 		if err != nil {
 			return err
 		}
-		for _, p := range found {
-			points = append(points, p...)
-		}
-	}
-	solution, err := calib.FitTrace(r.optics.geometry, points, r.camera.columns)
-	var unknown *calib.TraceError
-	if errors.As(err, &unknown) {
-		r.degrade("the trace is the profile's: %v", err)
+		r.optics.trace = solution
+		r.optics.geometry.TraceTilt, r.optics.geometry.TraceCurve = solution.TraceTilt, solution.TraceCurve
 		return nil
 	}
-	if err != nil {
-		return err
-	}
-	r.optics.trace = solution
-	r.optics.geometry.TraceTilt, r.optics.geometry.TraceCurve = solution.TraceTilt, solution.TraceCurve
+	r.optics.nominalWave = true
+	r.degrade("the trace is the profile's, and every voxel is flagged NOMINALWAVE: %v", why)
 	return nil
+}
+
+// lampEnds finds the ends of the slit in the lamp's all-on frames; nil where they
+// cannot tell.
+func (r *reduction) lampEnds(ctx context.Context, m *wholeMasters, rule calib.TraceRule) ([]calib.EdgePoint, error) {
+	frames := r.roles.calibration.lamps.on
+	ends, same := r.commonEnds()
+	if !same || len(frames) == 0 {
+		return nil, nil
+	}
+	e, err := r.sumExposures(ctx, frames, m, true)
+	if err != nil {
+		return nil, err
+	}
+	return rule.Find(*e, ends, 0)
+}
+
+// arcEnds finds the ends of each element that the arcs light.
+func (r *reduction) arcEnds(ctx context.Context, m *wholeMasters, rule calib.TraceRule) ([]calib.EdgePoint, error) {
+	found := make([][]calib.EdgePoint, len(r.roles.arcs))
+	err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+		_, element := r.seq.Pattern(r.roles.arcs[i].step)
+		found[i], err = rule.Find(*e, r.ends(element), i*maxEnds)
+		return err
+	})
+	return slices.Concat(found...), err
 }

@@ -316,16 +316,9 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
 
 // write takes a strip of the cube to the file and counts its voxels.
 func (r *reduction) write(w *sweep, out *outStrip) error {
-	if r.optics.nominalWave {
+	if unknown := r.optics.unknown(); unknown != 0 {
 		for i := range out.flags {
-			out.flags[i] |= product.FlagNominalWave
-		}
-	}
-	if len(w.decoder.lost) > 0 {
-		for i, f := range out.flags {
-			if f&product.FlagNoData == 0 {
-				out.flags[i] |= product.FlagLost
-			}
+			out.flags[i] |= unknown
 		}
 	}
 	for row := range out.h {

@@ -267,6 +267,13 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
 		return err
 	}
+	if len(w.decoder.lost) > 0 {
+		for i, f := range w.out.flags {
+			if f&product.FlagNoData == 0 {
+				w.out.flags[i] |= product.FlagLost
+			}
+		}
+	}
 	if err := w.sink(ctx, w.out); err != nil {
 		return err
 	}

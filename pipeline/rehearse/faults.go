@@ -31,8 +31,8 @@ const (
 	// Offset: rms, in electrons, of a pedestal of a whole frame, overscan
 	// included; every frame of the night has one.
 	Offset = "offset"
-	// Leak: part of the light that every off mirror sends on, with 20 % rms of
-	// structure over the field, mirrors outside the field included.
+	// Leak: part of the light that off mirrors send on, in the mean of the field,
+	// with 20 % rms of structure over it, mirrors outside the field included.
 	Leak = "leak"
 	// Cosmic: struck samples (pixel x frame) per 1000, in all frames that are
 	// exposed, in tracks of 1 to 10 pixels.

@@ -27,7 +27,7 @@ type rehearsal struct {
 	colour   *weights       // of layerColour; nil without that fault
 	beside   *weights       // of layerNeighbour; nil without that fault
 	leakSize float64
-	leakMap  *waves
+	leakMap  *leakMap
 	persist  float64
 	redraws  bool // whether some fault draws each frame anew
 	dwell    float64
@@ -100,7 +100,7 @@ func (r *rehearsal) prepareFaults() {
 	r.leakSize, r.persist = size(Leak), size(Persist)
 	r.beams = newBeams(r.optics, r.leakSize > 0)
 	if r.leakSize > 0 {
-		r.leakMap = newWaves(r.opts.Seed, "leak", 2)
+		r.leakMap = r.optics.newLeakMap(r.opts.Seed, r.beams)
 	}
 	if size(Colour) > 0 {
 		r.colour = r.optics.newWeights(r.optics.colourWeight)
@@ -110,7 +110,7 @@ func (r *rehearsal) prepareFaults() {
 		r.beside = r.optics.newWeights(func(nm float64) float64 { return d * nm / center })
 	}
 	if !r.opts.Perfect {
-		r.maps = r.optics.newEfficiencyMap(r.opts.Seed, r.beams.n)
+		r.maps = r.optics.newEfficiencyMap(r.opts.Seed, r.beams)
 	}
 	r.redraws = size(Seeing) > 0 || size(Guide) > 0 || size(Shift) > 0
 }

@@ -50,7 +50,8 @@ type efficiencyMap struct {
 }
 
 // newEfficiencyMap draws the factors.
-func (o *optics) newEfficiencyMap(seed uint64, n int) *efficiencyMap {
+func (o *optics) newEfficiencyMap(seed uint64, b *beams) *efficiencyMap {
+	n := b.n
 	m := &efficiencyMap{o: o, n: n, slit: newWaves(seed, "slit function", 2)}
 	span := o.pxTo - o.pxFrom
 	w := newWaves(seed, "efficiency", span/wiggleLong)
@@ -61,13 +62,14 @@ func (o *optics) newEfficiencyMap(seed uint64, n int) *efficiencyMap {
 		}
 		m.wiggles = append(m.wiggles, list)
 	}
-	m.normalise()
+	m.normalise(b)
 	return m
 }
 
-// normalise gives both factors a mean of 1 over the field and the grid's band: the
-// profile's throughput is that of the whole.
-func (m *efficiencyMap) normalise() {
+// normalise gives both factors a mean of 1 over the field - the mirrors that follow
+// the code - and the grid's band: the profile's throughput is that of the whole, and
+// no lamp can tell how dark mirrors would have done.
+func (m *efficiencyMap) normalise(b *beams) {
 	o := m.o
 	g := o.profile.Grid
 	from := o.geometry.dispersed(g.WavelengthNM(-0.5)) - o.pxFrom
@@ -87,14 +89,22 @@ func (m *efficiencyMap) normalise() {
 			list[k] *= float64(count) / sum
 		}
 	}
-	sum, count = 0, 0
-	for j := range m.n {
-		for y := range o.rows {
-			sum += 1 + slitRMS*m.slit.at(float64(j)/float64(m.n), float64(y)/float64(o.rows))
-			count++
+	m.slitMean = o.fieldMean(b, func(s, t float64) float64 { return 1 + slitRMS*m.slit.at(s, t) })
+}
+
+// fieldMean is the mean over the mirrors that follow the code of a function of the
+// element and the detector row, in parts of all elements and all rows.
+func (o *optics) fieldMean(b *beams, f func(s, t float64) float64) float64 {
+	sum, count := 0.0, 0
+	for j := range b.n {
+		for w := o.wFirst; w <= o.wLast; w++ {
+			if b.follows(j, 0, w) {
+				sum += f(float64(j)/float64(b.n), o.geometry.row(w)/float64(o.rows))
+				count++
+			}
 		}
 	}
-	m.slitMean = sum / float64(count)
+	return sum / float64(max(count, 1))
 }
 
 // apply multiplies the light of element j in a mirror row.
@@ -146,14 +156,29 @@ func (o *optics) colourWeight(nm float64) float64 {
 	return (nm-g.WavelengthNM(-0.5))/(float64(g.Count)*g.StepNM) - 0.5
 }
 
-// leaks is what shut beams leak, by beam, at detector row y: size times a
-// structure of 20 % rms over the field.
-func (b *beams) leaks(size float64, field *waves, y float64, rows int) []float64 {
+// leakMap is the structure of what shut mirrors leak: a factor of 20 % rms over the
+// field and mean 1 over the mirrors that follow the code.
+type leakMap struct {
+	field *waves
+	mean  float64
+}
+
+func (o *optics) newLeakMap(seed uint64, b *beams) *leakMap {
+	m := &leakMap{field: newWaves(seed, "leak", 2), mean: 1}
+	m.mean = o.fieldMean(b, m.at)
+	return m
+}
+
+func (m *leakMap) at(s, t float64) float64 { return max(1+leakRMS*m.field.at(s, t), 0) / m.mean }
+
+// leaks is what shut beams leak, by beam, at detector row y of so many: size times
+// the structure.
+func (b *beams) leaks(size float64, m *leakMap, y float64, rows int) []float64 {
 	list := make([]float64, len(b.list))
-	for i, m := range b.list {
+	for i, beam := range b.list {
 		list[i] = size
-		if m.element >= 0 {
-			list[i] = size * math.Max(1+leakRMS*field.at(float64(m.element)/float64(b.n), y/float64(rows)), 0)
+		if beam.element >= 0 {
+			list[i] *= m.at(float64(beam.element)/float64(b.n), y/float64(rows))
 		}
 	}
 	return list
