@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"fmt"
+	"math"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
@@ -31,6 +32,10 @@ func geometryCards(g *calib.Geometry) []geometryCard {
 	}
 }
 
+// sameWidth bounds how far a measured element's width is from the profile's: scales
+// drift by some per cent, while the next element is wider by a mirror.
+const sameWidth = 0.1
+
 // borrowGeometry takes the geometry of another run's cube.fits.
 func (r *reduction) borrowGeometry(path string) error {
 	f, err := fitsutil.Open(path)
@@ -55,6 +60,9 @@ func (r *reduction) borrowGeometry(path string) error {
 		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())
 	}
 	nominal := r.optics.geometry
+	if width := g.X_e / nominal.X_e; !(math.Abs(width-1) < sameWidth) {
+		return fmt.Errorf("%s has elements of %.3g px, not %.3g: use the run of a sequence with elements as wide", path, g.X_e, nominal.X_e)
+	}
 	r.optics.geometry = g
 	if err := r.checkGrid(); err != nil {
 		r.optics.geometry = nominal

@@ -64,10 +64,15 @@ func (r *reduction) commonEnds() (ends []calib.RowEnd, same bool) {
 }
 
 // litRows are the detector rows, inclusive, between the outermost ends of an
-// element's light, whatever the column: the trace's excursion is left out.
+// element's light, whatever the column: the trace's excursion is left out. None
+// (first > last) for an element that is closed.
 func (r *reduction) litRows(element int) (first, last int) {
+	ends := r.ends(element)
+	if len(ends) == 0 {
+		return 0, -1
+	}
 	low, high := math.Inf(1), math.Inf(-1)
-	for _, e := range r.ends(element) {
+	for _, e := range ends {
 		low, high = min(low, e.Row), max(high, e.Row)
 	}
 	down, up := 0.0, 0.0

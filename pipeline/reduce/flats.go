@@ -29,6 +29,8 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		r.noFlat(errors.New(why))
 		return nil
 	}
+	r.warnMissing(sequence.Flat, len(r.roles.calibration.lamps.all()))
+	r.degradeMissing()
 	err := r.pixelFlat(ctx, m)
 	if err == nil {
 		err = r.slitFlat(ctx, m)
@@ -42,6 +44,22 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		return nil
 	}
 	return err
+}
+
+// degradeMissing tells that the neighbour term was to be measured and cannot be.
+func (r *reduction) degradeMissing() {
+	l := &r.roles.calibration.lamps
+	have := map[sequence.Pattern]int{
+		sequence.PatternOn: len(l.on), sequence.PatternEven: len(l.even),
+		sequence.PatternOdd: len(l.odd), sequence.PatternOff: len(l.off),
+	}
+	for _, i := range r.seq.StepsOf(sequence.Flat) {
+		pattern, _ := r.seq.Pattern(i)
+		if n, wanted := have[pattern]; wanted && n == 0 {
+			r.degrade("the light of open neighbours is not measured: all lamp frames with the mask of step %d are missing", r.seq.Steps[i].Step)
+			return
+		}
+	}
 }
 
 // noFlat leaves the response uncorrected, flags it and says why.

@@ -10,6 +10,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
 )
 
 // optics is what the lamps tell of the instrument, and what is taken from the
@@ -135,6 +136,13 @@ func (r *reduction) warn(format string, args ...any) {
 	r.log.Info(text) // the command says it in the end
 }
 
+// warnMissing tells of lamp frames that were planned and are not all there.
+func (r *reduction) warnMissing(kind sequence.Kind, have int) {
+	if planned := len(r.seq.StepsOf(kind)); have < planned {
+		r.warn("%d of %d %s frames are missing", planned-have, planned, kind)
+	}
+}
+
 // The wavelength solution is to be good to figurePx everywhere (one standard
 // error); beyond hopelessPx the profile's is as good a guess.
 const (
@@ -154,12 +162,16 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 		r.nominal(err)
 		return nil
 	}
+	r.warnMissing(sequence.Arc, len(r.roles.arcs))
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
 	rule := calib.DefaultPeakRule(r.lineFWHM())
 	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
 		_, element := r.seq.Pattern(r.roles.arcs[i].step)
 		first, last := r.litRows(element)
 		frames[i].Element, frames[i].Lines = element, lines[i]
+		if first > last { // a closed element shows no line
+			return nil
+		}
 		frames[i].Peaks, err = rule.Find(*e, first, last)
 		return err
 	})
