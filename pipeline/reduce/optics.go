@@ -164,7 +164,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	}
 	r.warnMissing(sequence.Arc, len(r.roles.arcs))
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
-	rule := calib.DefaultPeakRule(r.lineFWHM())
+	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
 	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
 		_, element := r.seq.Pattern(r.roles.arcs[i].step)
 		first, last := r.litRows(element)
@@ -221,14 +221,7 @@ func (r *reduction) arcLines() ([][]calib.LampLine, error) {
 // arcRule bounds the search for the band of the cube's grid.
 func (r *reduction) arcRule() calib.ArcRule {
 	g := r.schema.Grid
-	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.lineFWHM())
-}
-
-// lineFWHM is the expected width of an arc line: the spot's, widened by the
-// element's own.
-func (r *reduction) lineFWHM() float64 {
-	p := r.seq.Profile
-	return calib.LineFWHM(p.Spectrograph.LSFFWHMPx, p.ElementStepPx(r.seq.ElementMirrors()))
+	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.seq.Profile.Spectrograph.LSFFWHMPx)
 }
 
 // solveTrace measures the trace at the ends of the slit: in the lamp's all-on
