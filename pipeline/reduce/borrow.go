@@ -3,6 +3,7 @@ package reduce
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
@@ -58,6 +59,13 @@ func (r *reduction) borrowGeometry(path string) error {
 	}
 	if elements, err := f.HDUs()[1].Header.Int("NAXIS1"); err != nil || int(elements) != r.seq.N() {
 		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())
+	}
+	lines, err := table.Int32s("NLINES")
+	if err != nil {
+		return err
+	}
+	if !slices.ContainsFunc(lines, func(n int32) bool { return n > 0 }) {
+		return fmt.Errorf("%s has the profile's own wavelengths, which no arc line backs; use a run whose arcs were fitted", path)
 	}
 	nominal := r.optics.geometry
 	if width := g.X_e / nominal.X_e; !(math.Abs(width-1) < sameWidth) {

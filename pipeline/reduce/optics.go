@@ -165,15 +165,17 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	r.warnMissing(sequence.Arc, len(r.roles.arcs))
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
 	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
-	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) error {
 		_, element := r.seq.Pattern(r.roles.arcs[i].step)
-		first, last := r.litRows(element)
 		frames[i].Element, frames[i].Lines = element, lines[i]
-		if first > last { // a closed element shows no line
-			return nil
+		for _, rows := range r.litStretches(element) {
+			peaks, err := rule.Find(*e, rows[0], rows[1])
+			if err != nil {
+				return err
+			}
+			frames[i].Peaks = append(frames[i].Peaks, peaks...)
 		}
-		frames[i].Peaks, err = rule.Find(*e, first, last)
-		return err
+		return nil
 	})
 	if err != nil {
 		return err
