@@ -44,7 +44,8 @@ type PixelResponse struct {
 	Factor, Variance []float32
 	// Flags holds LowFlat where the lamp is too faint to tell whether the pixel
 	// answers at all; P is 1 there. Rows that the lamp does not light are LowFlat
-	// from end to end: they carry no voxels.
+	// from end to end: they carry no voxels. BadPixel where it hardly answers; P is 1
+	// there too.
 	Flags   []Flag
 	Scatter float64 // rms of the responses of well lit pixels, noise taken off
 	Low     int     // pixels with LowFlat

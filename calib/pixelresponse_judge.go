@@ -6,6 +6,10 @@ import "math"
 // scatter.
 const trusted = 0.005
 
+// leastResponse: a pixel that answers less than this is dead. Divided by its
+// response, it would be all noise, or infinite.
+const leastResponse = 0.2
+
 // judge finds the scatter of the responses of well lit pixels and leaves those out of
 // the next S that deviate by more than Clip sigmas.
 func (m *pixelMeasure) judge() {
@@ -63,8 +67,11 @@ func (m *pixelMeasure) response() *PixelResponse {
 			if prior+noise > 0 && math.Abs(deviation) <= m.rule.Clip*math.Sqrt(prior+noise) {
 				share = prior / (prior + noise)
 			}
-			p.Factor[i] = float32(1 + share*deviation)
-			p.Variance[i] = float32(share * noise)
+			if factor := 1 + share*deviation; factor > leastResponse {
+				p.Factor[i], p.Variance[i] = float32(factor), float32(share*noise)
+			} else {
+				p.Flags[i] = BadPixel
+			}
 		}
 	}
 	return p

@@ -1,6 +1,7 @@
 // Package physics holds the closed formulas that the rehearsal and the
 // reduction share: black bodies, AB magnitudes and photon counts, the index of
-// air, airmass, refraction, the place of a target in the sky, Doppler factors.
+// air, airmass, refraction, the place of a target in the sky, Doppler factors, the noise
+// of read modes.
 //
 // It imports the standard library only and keeps no state. Units are in every
 // name: wavelengths are nanometres in vacuum unless the name says air, fluxes

@@ -173,9 +173,9 @@ func TestInterruptedRunsLeaveNothing(t *testing.T) {
 		whole := timed(t, in(c.name), c.args...)
 		t.Run(c.name, func(t *testing.T) { interrupted(t, whole, c.args...) })
 	}
-	// The demo is all of these in turn. Its first two seconds have its plan and the
+	// The demo is all of these in turn. Its first second has its plan and the
 	// start of its rehearsal; `make validate` goes on to its end.
-	t.Run("demo", func(t *testing.T) { interrupted(t, 2*time.Second, "demo") })
+	t.Run("demo", func(t *testing.T) { interrupted(t, 1200*time.Millisecond, "demo") })
 }
 
 // A killed run can tidy nothing. It leaves no more than its .part, from which

@@ -3,7 +3,9 @@ package main
 import (
 	"context"
 	"errors"
+	"fmt"
 	"io"
+	"os"
 
 	"github.com/spf13/cobra"
 	"github.com/spf13/pflag"
@@ -17,12 +19,14 @@ import (
 type pairOptions struct {
 	sequence string
 	file     string
+	replace  bool
 	all      bool
 }
 
 func (o *pairOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.sequence, "sequence", "", "folder of the sequence, as plan wrote it")
 	f.StringVarP(&o.file, "output", "o", "", "write the ledger to this CSV file as well")
+	f.BoolVar(&o.replace, "replace", false, "replace the file if it holds something")
 	f.BoolVar(&o.all, "all", false, "list every frame, not only those with a fault")
 }
 
@@ -41,6 +45,9 @@ func newPairCommand(a *app) *cobra.Command {
 func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
 	if o.sequence == "" {
 		return usageError{errors.New("pair needs --sequence; see 'mirrorloom pair --help'")}
+	}
+	if info, err := os.Stat(o.file); err == nil && info.Mode().IsRegular() && info.Size() > 0 && !o.replace {
+		return fmt.Errorf("the output file is not empty: %s; choose another with -o or pass --replace", o.file)
 	}
 	seq, err := sequence.Read(ctx, o.sequence)
 	if err != nil {

@@ -83,7 +83,7 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 		opts.Out = dir
 		result, err = reduce.Run(ctx, opts)
 		return err
-	}, night, o.sequence, o.recipe)
+	}, night, o.sequence, o.recipe, opts.Recipe.Arc.Use)
 	if err != nil {
 		return err
 	}

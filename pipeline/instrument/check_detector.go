@@ -17,6 +17,8 @@ const (
 	// maxADU is the largest value of a 16-bit frame; a saturation level there
 	// could not be told from clipped values.
 	maxADU = 65535
+	// maxReads of an exposure, far beyond what arrays are read.
+	maxReads = 10000
 )
 
 func (p *Profile) checkDetector(c *config.Checks) {
@@ -38,7 +40,24 @@ func (p *Profile) checkDetector(c *config.Checks) {
 		c.That(a.BiasADU < d.SaturationADU, amplifierPath(i)+".bias_adu", "%v lies not below saturation_adu, %v; correct one of them", a.BiasADU, d.SaturationADU)
 	}
 	d.checkLinearity(c)
+	d.Mode().check(c)
 	c.NotNegative("detector.read_s", d.ReadS)
+}
+
+// check demands numbers that the mode has, so that a forgotten kind shows.
+func (m ReadMode) check(c *config.Checks) {
+	const path = "detector.read_mode"
+	c.OneOf(path+".kind", m.Kind, SingleRead, DoubleRead, FowlerRead, RampRead)
+	switch m.Kind {
+	case FowlerRead:
+		c.Count(path+".reads", m.Reads, 1, maxReads)
+		c.That(m.Spacing >= 0 && m.Spacing*float64(m.Reads) <= 1, path+".spacing", "%v times %d reads is not between 0 and 1; give a spacing with which the first group ends before the second begins", m.Spacing, m.Reads)
+	case RampRead:
+		c.Count(path+".reads", m.Reads, 2, maxReads)
+		c.That(m.Spacing == 0, path+".spacing", "%v has no effect on a ramp, whose reads fill the exposure; leave it out", m.Spacing)
+	default:
+		c.That(m.Reads == 0 && m.Spacing == 0, path, "reads and spacing have no effect on %s; leave them out, or give kind fowler or ramp", m.Kind)
+	}
 }
 
 func amplifierPath(i int) string { return fmt.Sprintf("detector.amplifiers[%d]", i) }

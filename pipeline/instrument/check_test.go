@@ -72,6 +72,7 @@ detector:
   saturation_adu: 50000
   linearity: [-1.0e-6, 0]
   read_s: 0
+  read_mode: {kind: fowler, reads: 8, spacing: 0.01}
 keywords:
   step: SEQSTEP
   maskid: PATTERN
@@ -150,8 +151,8 @@ func TestWrongProfiles(t *testing.T) {
 		{"[2, 0.001, 0]", "[-1, 0, 0.03]", "p.yaml:28: spectrograph.dispersion_px_per_nm: the dispersion runs from -1 to 8.456 px/nm over the grid and must not change its sign; correct the coefficients or the grid"},
 		{"  u_step_px: 1\n", "  u_step_px: -1\n", "p.yaml:29: spectrograph.u_step_px: -1 is not above 0; give a positive number"},
 		{"  w_step_px: 1.1", "  w_step_px: 0", "p.yaml:30: spectrograph.w_step_px: 0 is not above 0; give a positive number"},
-		{"  x_center_px: 49.5", "  x_center_px: 149.5", "p.yaml:79: grid: its wavelengths fall on columns 129.6 to 169.6 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
-		{"  x_center_px: 49.5", "  x_center_px: -20.7", "p.yaml:79: grid: its wavelengths fall on columns -40.6 to -0.6 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
+		{"  x_center_px: 49.5", "  x_center_px: 149.5", "p.yaml:80: grid: its wavelengths fall on columns 129.6 to 169.6 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
+		{"  x_center_px: 49.5", "  x_center_px: -20.7", "p.yaml:80: grid: its wavelengths fall on columns -40.6 to -0.6 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
 		{"  y_center_px: 19.5", "  y_center_px: 40", "p.yaml:32: spectrograph.y_center_px: 40 is outside -0.5 to 39.5; give a number in this range"},
 		{"  slit_tilt: 0.01", "  slit_tilt: 2", "p.yaml:33: spectrograph.slit_tilt: 2 is outside -1 to 1; give a number in this range"},
 		{"  smile_per_px: 0.0001", "  smile_per_px: small", "p.yaml:34: spectrograph.smile_per_px: a number is wanted, not small; write a plain decimal number without unit or quotes"},
@@ -181,29 +182,36 @@ func TestWrongProfiles(t *testing.T) {
 		{"linearity: [-1.0e-6, 0]", "linearity: [-1.0e-5]", "p.yaml:57: detector.linearity: the corrected level does not rise at 50000 ADU above bias; give coefficients that hold up to saturation"},
 		{"linearity: [-1.0e-6, 0]", "linearity: [0, 0, 0, 0, 0, 0, 0, 0, 0]", "p.yaml:57: detector.linearity: there are 9 coefficients; give at most 8"},
 		{"  read_s: 0", "  read_s: -1", "p.yaml:58: detector.read_s: -1 is below 0; give a number not below 0"},
-		{"step: SEQSTEP", "step: seqstep", `p.yaml:60: keywords.step: "seqstep" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"maskid: PATTERN", "maskid: PATTERNID", `p.yaml:61: keywords.maskid: "PATTERNID" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"kind: OBSTYPE", "kind: ''", `p.yaml:62: keywords.kind: "" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"exptime: TEXP", "exptime: T EXP", `p.yaml:63: keywords.exptime: "T EXP" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"date_obs: DATE-BEG", "date_obs: 2031-04-05", `p.yaml:64: keywords.date_obs: "2031-04-05" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"airmass: SECZ", "airmass: TEXP", `p.yaml:65: keywords.airmass: "TEXP" is keywords.exptime as well; give each its own`},
-		{"ra: TELRA", "ra: TELESC.RA", `p.yaml:66: keywords.ra: "TELESC.RA" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
-		{"dec: TELDEC", "dec: TELRA", `p.yaml:67: keywords.dec: "TELRA" is keywords.ra as well; give each its own`},
-		{"rotang: POSANG", "rotang: [POSANG]", "p.yaml:68: keywords.rotang: text is wanted, not a list; write one word or quoted text"},
-		{"instrume: CAMERA", "instrument: CAMERA", "p.yaml:69: keywords.instrument: unknown key; write instrume"},
-		{"bias: ZERO", "bias: 0", "p.yaml:71: kinds.bias: text is wanted, not 0; put it in quotes if it is meant as text"},
-		{"dark: DARK", "dark: ' DARK'", `p.yaml:72: kinds.dark: " DARK" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
-		{"flat: LAMPFLAT", "flat: DARK", `p.yaml:73: kinds.flat: "DARK" is kinds.dark as well; give each its own`},
-		{"arc: LAMPARC", "arc: ''", `p.yaml:74: kinds.arc: "" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
-		{"all-on: OPEN", "all-on: ÖFFEN", `p.yaml:75: kinds.all-on: "ÖFFEN" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
-		{"all-off: SHUT", "all-off: OPEN", `p.yaml:76: kinds.all-off: "OPEN" is kinds.all-on as well; give each its own`},
-		{"science: OBJECT", "object: science", "p.yaml:77: kinds.object: unknown key; the keys here are bias, dark, flat, arc, all-on, all-off, science, refstar"},
-		{"refstar: STANDARD", "refstar: ZERO", `p.yaml:78: kinds.refstar: "ZERO" is kinds.bias as well; give each its own`},
-		{"  first_nm: 490", "  first_nm: -490", "p.yaml:80: grid.first_nm: -490 is not above 0; give a positive number"},
-		{"  first_nm: 490", "  first_nm: 440", "p.yaml:79: grid: its wavelengths fall on columns -66.9 to -28.9 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
-		{"  step_nm: 0.5", "  step_nm: 0.39", "p.yaml:81: grid.step_nm: voxels are 0.772 to 0.785 px wide where 0.8 to 1.25 are wanted; give a step of about 0.5011 nm"},
-		{"  count: 41", "  count: 0", "p.yaml:82: grid.count: 0 is outside 1 to 65536; give a whole number in this range"},
-		{"    - {wavelength_nm: 450, fraction: 0}\n    - {wavelength_nm: 550, fraction: 1}\n", "    - {wavelength_nm: 350, fraction: 1}\n    - {wavelength_nm: 450, fraction: 1}\n", "p.yaml:79: grid: no light of 490 to 510 nm passes the throughput tables; correct the grid or the tables"},
+		{"kind: fowler", "kind: slow", `p.yaml:59: detector.read_mode.kind: "slow" is unknown; write single, double, fowler or ramp`},
+		{"kind: fowler, ", "", "p.yaml:59: detector.read_mode.kind: the key is missing; add it"},
+		{"reads: 8, ", "", "p.yaml:59: detector.read_mode.reads: 0 is outside 1 to 10000; give a whole number in this range"},
+		{"reads: 8", "reads: 101", "p.yaml:59: detector.read_mode.spacing: 0.01 times 101 reads is not between 0 and 1; give a spacing with which the first group ends before the second begins"},
+		{"kind: fowler, reads: 8", "kind: ramp, reads: 1", "p.yaml:59: detector.read_mode.reads: 1 is outside 2 to 10000; give a whole number in this range"},
+		{"kind: fowler", "kind: ramp", "p.yaml:59: detector.read_mode.spacing: 0.01 has no effect on a ramp, whose reads fill the exposure; leave it out"},
+		{"kind: fowler", "kind: double", "p.yaml:59: detector.read_mode: reads and spacing have no effect on double; leave them out, or give kind fowler or ramp"},
+		{"step: SEQSTEP", "step: seqstep", `p.yaml:61: keywords.step: "seqstep" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"maskid: PATTERN", "maskid: PATTERNID", `p.yaml:62: keywords.maskid: "PATTERNID" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"kind: OBSTYPE", "kind: ''", `p.yaml:63: keywords.kind: "" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"exptime: TEXP", "exptime: T EXP", `p.yaml:64: keywords.exptime: "T EXP" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"date_obs: DATE-BEG", "date_obs: 2031-04-05", `p.yaml:65: keywords.date_obs: "2031-04-05" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"airmass: SECZ", "airmass: TEXP", `p.yaml:66: keywords.airmass: "TEXP" is keywords.exptime as well; give each its own`},
+		{"ra: TELRA", "ra: TELESC.RA", `p.yaml:67: keywords.ra: "TELESC.RA" is no FITS keyword; write 1 to 8 capital letters, digits, hyphens or underscores`},
+		{"dec: TELDEC", "dec: TELRA", `p.yaml:68: keywords.dec: "TELRA" is keywords.ra as well; give each its own`},
+		{"rotang: POSANG", "rotang: [POSANG]", "p.yaml:69: keywords.rotang: text is wanted, not a list; write one word or quoted text"},
+		{"instrume: CAMERA", "instrument: CAMERA", "p.yaml:70: keywords.instrument: unknown key; write instrume"},
+		{"bias: ZERO", "bias: 0", "p.yaml:72: kinds.bias: text is wanted, not 0; put it in quotes if it is meant as text"},
+		{"dark: DARK", "dark: ' DARK'", `p.yaml:73: kinds.dark: " DARK" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
+		{"flat: LAMPFLAT", "flat: DARK", `p.yaml:74: kinds.flat: "DARK" is kinds.dark as well; give each its own`},
+		{"arc: LAMPARC", "arc: ''", `p.yaml:75: kinds.arc: "" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
+		{"all-on: OPEN", "all-on: ÖFFEN", `p.yaml:76: kinds.all-on: "ÖFFEN" is no word of a FITS header; write 1 to 68 printable ASCII characters without spaces at the ends`},
+		{"all-off: SHUT", "all-off: OPEN", `p.yaml:77: kinds.all-off: "OPEN" is kinds.all-on as well; give each its own`},
+		{"science: OBJECT", "object: science", "p.yaml:78: kinds.object: unknown key; the keys here are bias, dark, flat, arc, all-on, all-off, science, refstar"},
+		{"refstar: STANDARD", "refstar: ZERO", `p.yaml:79: kinds.refstar: "ZERO" is kinds.bias as well; give each its own`},
+		{"  first_nm: 490", "  first_nm: -490", "p.yaml:81: grid.first_nm: -490 is not above 0; give a positive number"},
+		{"  first_nm: 490", "  first_nm: 440", "p.yaml:80: grid: its wavelengths fall on columns -66.9 to -28.9 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
+		{"  step_nm: 0.5", "  step_nm: 0.39", "p.yaml:82: grid.step_nm: voxels are 0.772 to 0.785 px wide where 0.8 to 1.25 are wanted; give a step of about 0.5011 nm"},
+		{"  count: 41", "  count: 0", "p.yaml:83: grid.count: 0 is outside 1 to 65536; give a whole number in this range"},
+		{"    - {wavelength_nm: 450, fraction: 0}\n    - {wavelength_nm: 550, fraction: 1}\n", "    - {wavelength_nm: 350, fraction: 1}\n    - {wavelength_nm: 450, fraction: 1}\n", "p.yaml:80: grid: no light of 490 to 510 nm passes the throughput tables; correct the grid or the tables"},
 	} {
 		require.Equal(t, 1, strings.Count(plain, c.old), "%q must stand once in plain", c.old)
 		p, err := parsePlain(strings.Replace(plain, c.old, c.replacement, 1))
@@ -243,7 +251,7 @@ func pairedLine(line string) bool {
 // sentence names its path, or the key is optional and the default takes over.
 func TestMissingKeys(t *testing.T) {
 	optional := map[string]bool{
-		"dmd.parity": true, "dmd.stuck_csv": true, "detector.linearity": true, "keywords": true, "kinds": true,
+		"dmd.parity": true, "dmd.stuck_csv": true, "detector.linearity": true, "detector.read_mode": true, "keywords": true, "kinds": true,
 		"detector.amplifiers[0].overscan": true, "detector.amplifiers[1].overscan": true,
 	}
 	lines := strings.Split(strings.TrimSpace(plain), "\n")

@@ -120,6 +120,8 @@ type Detector struct {
 	Amplifiers []Amplifier `yaml:"amplifiers"`
 	// DarkEPerS is the dark current, electrons per second and pixel.
 	DarkEPerS float64 `yaml:"dark_e_per_s"`
+	// ReadMode is how an exposure is read; see Mode. Optional; a single read.
+	ReadMode *ReadMode `yaml:"read_mode,flow" config:"optional"`
 	// SaturationADU is the lowest raw value that is not to be trusted, ADU,
 	// bias included.
 	SaturationADU float64 `yaml:"saturation_adu"`
@@ -132,6 +134,37 @@ type Detector struct {
 	ReadS float64 `yaml:"read_s"`
 }
 
+// Kinds of ReadMode.
+const (
+	SingleRead = "single"
+	DoubleRead = "double"
+	FowlerRead = "fowler"
+	RampRead   = "ramp"
+)
+
+// ReadMode is how an exposure of an infrared array is made of reads that leave the
+// charge in place.
+type ReadMode struct {
+	// Kind is SingleRead; DoubleRead, the difference of two reads; FowlerRead, that
+	// of the means of two groups of reads; or RampRead, a straight line through reads
+	// equally spaced over the exposure.
+	Kind string `yaml:"kind"`
+	// Reads are those of each group, at least 1, or of the ramp, at least 2. Optional;
+	// single and double have none.
+	Reads int `yaml:"reads" config:"optional"`
+	// Spacing is the time between the reads of a group, in units of that between the
+	// first reads of the two groups: at most 1/reads. Optional; 0. fowler only.
+	Spacing float64 `yaml:"spacing" config:"optional"`
+}
+
+// Mode is ReadMode, filled in.
+func (d *Detector) Mode() ReadMode {
+	if d.ReadMode == nil {
+		return ReadMode{Kind: SingleRead}
+	}
+	return *d.ReadMode
+}
+
 // Amplifier is one readout chain.
 type Amplifier struct {
 	// Data and Overscan are sections of the raw frame; Overscan is optional.
@@ -139,7 +172,8 @@ type Amplifier struct {
 	Overscan Overscan `yaml:"overscan,flow" config:"optional"`
 	// GainEPerADU is electrons per ADU.
 	GainEPerADU float64 `yaml:"gain_e_per_adu"`
-	// ReadNoiseE is the standard deviation of a read, electrons.
+	// ReadNoiseE is the standard deviation of one read, electrons; that of the whole
+	// exposure depends on Detector.ReadMode.
 	ReadNoiseE float64 `yaml:"read_noise_e"`
 	// BiasADU is the level without light, ADU.
 	BiasADU float64 `yaml:"bias_adu"`

@@ -70,8 +70,8 @@ type Flat struct {
 	PeriodVoxels float64 `json:"period_voxels"`
 	LowPixels    int     `json:"low_pixels"`
 	// AddedVariance is the median of the variance that the response adds to a
-	// voxel, over the voxel's photon and read variance.
-	AddedVariance float64 `json:"added_variance"`
+	// voxel, over the voxel's photon and read variance; absent without a cube.
+	AddedVariance float64 `json:"added_variance,omitempty"`
 }
 
 // DepthAtSN is how flat the corrected flat is in cells of a size: the rms of their
@@ -80,4 +80,8 @@ type DepthAtSN struct {
 	Side int     `json:"side"` // rows and columns of a cell
 	SN   float64 `json:"sn"`
 	RMS  float64 `json:"rms"`
+	// Excess is the rms beyond the photons' noise, 0 where there is none, and its
+	// standard error.
+	Excess      float64 `json:"excess"`
+	ExcessError float64 `json:"excess_error"`
 }

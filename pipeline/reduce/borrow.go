@@ -2,6 +2,8 @@ package reduce
 
 import (
 	"fmt"
+	"math"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
@@ -31,6 +33,10 @@ func geometryCards(g *calib.Geometry) []geometryCard {
 	}
 }
 
+// sameWidth bounds how far a measured element's width is from the profile's: scales
+// drift by some per cent, while the next element is wider by a mirror.
+const sameWidth = 0.1
+
 // borrowGeometry takes the geometry of another run's cube.fits.
 func (r *reduction) borrowGeometry(path string) error {
 	f, err := fitsutil.Open(path)
@@ -54,7 +60,17 @@ func (r *reduction) borrowGeometry(path string) error {
 	if elements, err := f.HDUs()[1].Header.Int("NAXIS1"); err != nil || int(elements) != r.seq.N() {
 		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())
 	}
+	lines, err := table.Int32s("NLINES")
+	if err != nil {
+		return err
+	}
+	if !slices.ContainsFunc(lines, func(n int32) bool { return n > 0 }) {
+		return fmt.Errorf("%s has the profile's own wavelengths, which no arc line backs; use a run whose arcs were fitted", path)
+	}
 	nominal := r.optics.geometry
+	if width := g.X_e / nominal.X_e; !(math.Abs(width-1) < sameWidth) {
+		return fmt.Errorf("%s has elements of %.3g px, not %.3g: use the run of a sequence with elements as wide", path, g.X_e, nominal.X_e)
+	}
 	r.optics.geometry = g
 	if err := r.checkGrid(); err != nil {
 		r.optics.geometry = nominal

@@ -68,6 +68,9 @@ func (r *reduction) worstError(a *calib.ArcSolution) float64 {
 	worst := 0.0
 	for _, j := range []int{0, n / 2, n - 1} {
 		first, last := r.litRows(j)
+		if first > last {
+			continue
+		}
 		for _, y := range []int{first, (first + last) / 2, last} {
 			for l := 0; l <= 8; l++ {
 				nm := g.WavelengthNM(float64(g.Count-1) * float64(l) / 8)
@@ -80,10 +83,11 @@ func (r *reduction) worstError(a *calib.ArcSolution) float64 {
 
 func (r *reduction) flatSummary() *product.Flat {
 	p, s := r.optics.pixel, r.optics.response
-	return &product.Flat{
-		PixelRMS: p.Scatter, SlitRMS: rms(s.Slit), EfficiencyRMS: rms(s.Band), PeriodVoxels: s.Period, LowPixels: p.Low,
-		AddedVariance: r.rectifier.addedVariance(),
+	f := &product.Flat{PixelRMS: p.Scatter, SlitRMS: rms(s.Slit), EfficiencyRMS: rms(s.Band), PeriodVoxels: s.Period, LowPixels: p.Low}
+	if r.rectifier != nil { // voxels were made
+		f.AddedVariance = r.rectifier.addedVariance()
 	}
+	return f
 }
 
 // rms is the scatter of factors around their mean.

@@ -29,6 +29,7 @@ func TestCalibratedNight(t *testing.T) {
 	hold(t, findings)
 	require.GreaterOrEqual(t, result.Run.Quality.CoveredGoodFraction, 0.99)
 	checkGeometry(t, night, result.Run.Calibration)
+	checkFlatDepth(t, result.Run.Calibration.FlatDepth)
 
 	// run.json and the report hold what was measured.
 	text, err := os.ReadFile(filepath.Join(night.Run(trial.Noisy), product.RunFile))
@@ -38,8 +39,23 @@ func TestCalibratedNight(t *testing.T) {
 	require.Equal(t, result.Run.Calibration.Arcs.Lines, run.Calibration.Arcs.Lines)
 	page, err := os.ReadFile(filepath.Join(night.Run(trial.Noisy), product.ReportFile))
 	require.NoError(t, err)
-	for _, word := range []string{"Trace", "Flat field", "read noise"} {
+	for _, word := range []string{"Trace", "Flat field", "read noise", "How deep the flat field goes"} {
 		require.Contains(t, string(page), word)
+	}
+}
+
+// checkFlatDepth holds the corrected flat against all-on frames that no fit has seen:
+// of the 1 % of the pixels and 2 % of slit and light path, 0.2 % is left at most, and
+// less in cells of 8 x 8 pixels.
+func checkFlatDepth(t *testing.T, depth []product.DepthAtSN) {
+	t.Helper()
+	require.GreaterOrEqual(t, len(depth), 4)
+	for _, d := range depth {
+		t.Logf("flat: cells of %d pixels: rms %.5f where photons allow %.5f, excess %.5f +- %.5f", d.Side, d.RMS, 1/d.SN, d.Excess, d.ExcessError)
+		require.Less(t, d.Excess, 0.002+5*d.ExcessError)
+		if d.Side == 8 {
+			require.Less(t, d.Excess, 0.001+5*d.ExcessError)
+		}
 	}
 }
 

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"mirrorloom/calib"
+	"mirrorloom/calib/physics"
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 )
@@ -19,6 +20,10 @@ type camera struct {
 	// variance gives, by detector row, the variance of a sample without light
 	// in every column, electrons squared; rows of the same amplifiers share it.
 	variance [][]float64
+	// photonExcess: the variance of light is (1 + photonExcess) times the light, as
+	// the read mode makes it; 0 for single reads.
+	photonExcess float64
+	noise        physics.EffectiveNoise // of the read mode
 }
 
 // amplifier is one readout chain with the place of its pixels.
@@ -34,9 +39,15 @@ type amplifier struct {
 
 func newCamera(d *instrument.Detector) (*camera, error) {
 	c := &camera{columns: d.Columns, rows: d.Rows, saturationADU: d.SaturationADU, linearity: d.Linearity}
+	mode := d.Mode()
+	var err error
+	if c.noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
+		return nil, fmt.Errorf("detector.read_mode of the profile: %w", err)
+	}
+	c.photonExcess = c.noise.Photon - 1
 	for i, place := range d.Active() {
 		a := d.Amplifiers[i]
-		amp := amplifier{place: place, gain: a.GainEPerADU, biasADU: a.BiasADU, variance: calib.ReadVariance(a.ReadNoiseE, a.GainEPerADU)}
+		amp := amplifier{place: place, gain: a.GainEPerADU, biasADU: a.BiasADU, variance: calib.ReadVariance(a.ReadNoiseE*math.Sqrt(c.noise.Read), a.GainEPerADU)}
 		if amp.overscan, amp.hasOverscan = a.Overscan.Section(); amp.hasOverscan {
 			if amp.overscan[2] > a.Data[2] || amp.overscan[3] < a.Data[3] {
 				return nil, fmt.Errorf("the overscan of amplifier %d spans rows %d to %d, not all of its data's rows %d to %d; mend detector.amplifiers of the profile", i+1, amp.overscan[2], amp.overscan[3], a.Data[2], a.Data[3])

@@ -29,6 +29,8 @@ type decoder struct {
 	// quietSum is, by code column, the variance of a decode of dark samples in
 	// units of one's; nil where all columns have the same.
 	quietSum []float64
+	// photonExcess as in camera.
+	photonExcess float64
 	// neighbours takes out what open neighbours lend each other; nil for nothing.
 	neighbours *neighbourTerm
 }
@@ -180,7 +182,7 @@ func (d *decoder) uniformVariance(dst []float32, w *decodeWorker, s *strip, at i
 	_, closed := d.code.Code().InverseEntries()
 	for p := range dst {
 		dark := d.slotWeight * quiet[p]
-		light := w.sum[p] + d.slotWeight*float64(s.level[at+p])
+		light := (1 + d.photonExcess) * (w.sum[p] + d.slotWeight*float64(s.level[at+p]))
 		sum := max(dark+light, dark*varianceFloor) + w.square[p]
 		dst[p] = float32(closed*closed*sum + float64(s.levelVariance[at+p])/(d.k*d.k))
 	}
@@ -203,7 +205,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	for i := range d.slots {
 		row := w.variance[i*n : (i+1)*n]
 		for p := range row {
-			v := quiet[p] + float64(row[p]) + float64(s.level[at+p])
+			v := quiet[p] + (1+d.photonExcess)*(float64(row[p])+float64(s.level[at+p]))
 			row[p] = float32(d.weight[i] * v)
 		}
 	}

@@ -76,6 +76,7 @@ func (r *reduction) transfer(ctx context.Context, m *wholeMasters, pairs []frame
 		if err != nil {
 			return err
 		}
+		r.perRead(&measured)
 		p := r.seq.Profile.Detector.Amplifiers[a]
 		r.report.Amplifiers = append(r.report.Amplifiers, product.Amplifier{
 			GainEPerADU: measured.Gain, GainError: measured.GainError,
@@ -85,6 +86,15 @@ func (r *reduction) transfer(ctx context.Context, m *wholeMasters, pairs []frame
 		r.compare(a, "read noise", measured.ReadNoise, measured.ReadNoiseError, p.ReadNoiseE, "e")
 	}
 	return nil
+}
+
+// perRead turns what the pairs show into what the profile gives: the pairs' variance
+// is Photon times that of the electrons, and Read times that of one read.
+func (r *reduction) perRead(t *calib.Transfer) {
+	n := r.camera.noise
+	one := n.Photon / math.Sqrt(n.Read)
+	t.Gain, t.GainError = t.Gain*n.Photon, t.GainError*n.Photon
+	t.ReadNoise, t.ReadNoiseError = t.ReadNoise*one, t.ReadNoiseError*one
 }
 
 // compare warns of a value that differs from the profile's beyond doubt and by

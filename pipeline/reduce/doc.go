@@ -4,10 +4,11 @@
 //
 // prepare reads the calibration frames strip by strip and writes their masters
 // to a scratch file (bias, dark rate, all-off rate, the variance of what is
-// taken off, bad pixels). strips then goes once through the detector, one strip
-// of rows of all science frames in flight and the next being read: to electrons,
-// decoding, a window of decoded rows, resampling along the trace and in
-// wavelength, and out to the cube.
+// taken off, bad pixels). calibrate measures the optics by the lamp frames:
+// wavelengths, trace, responses, neighbour term and leak. strips then goes once
+// through the detector, one strip of rows of all science frames in flight and the
+// next being read: to electrons, decoding, a window of decoded rows, resampling
+// along the trace and in wavelength, and out to the cube.
 //
 // # Words
 //
@@ -24,5 +25,6 @@
 //     and sums over pixels are kept by detector row and added in row order.
 //   - Poisson variances come from values that were not clipped at zero; only
 //     their sum over the steps is floored.
-//   - Nothing is held whole: neither a frame, nor the cube.
+//   - Nothing is held whole, neither a frame nor the cube, but what calibrate
+//     looks at: one sum of lamp frames at a time, and the pixels' response.
 package reduce

@@ -63,21 +63,34 @@ func (r *reduction) commonEnds() (ends []calib.RowEnd, same bool) {
 	return ends, len(ends) > 0
 }
 
-// litRows are the detector rows, inclusive, between the outermost ends of an
-// element's light, whatever the column: the trace's excursion is left out.
+// litRows are the detector rows, inclusive, from an element's first lit stretch to
+// its last. None (first > last) for an element that is closed.
 func (r *reduction) litRows(element int) (first, last int) {
-	low, high := math.Inf(1), math.Inf(-1)
-	for _, e := range r.ends(element) {
-		low, high = min(low, e.Row), max(high, e.Row)
+	stretches := r.litStretches(element)
+	if len(stretches) == 0 {
+		return 0, -1
 	}
+	return stretches[0][0], stretches[len(stretches)-1][1]
+}
+
+// litStretches are the ranges of detector rows, inclusive, that an element lights
+// whatever the column: the trace's excursion is left out. Closed rows part them.
+func (r *reduction) litStretches(element int) [][2]int {
 	down, up := 0.0, 0.0
 	for x := range r.camera.columns {
 		t := r.optics.geometry.TraceShift(float64(x))
 		down, up = min(down, t), max(up, t)
 	}
-	first = max(0, int(math.Ceil(low+up)))
-	last = min(r.camera.rows-1, int(math.Floor(high+down)))
-	return first, last
+	ends := r.ends(element) // they come in pairs, in order of w
+	var all [][2]int
+	for i := 0; i+1 < len(ends); i += 2 {
+		low, high := min(ends[i].Row, ends[i+1].Row), max(ends[i].Row, ends[i+1].Row)
+		first, last := max(0, int(math.Ceil(low+up))), min(r.camera.rows-1, int(math.Floor(high+down)))
+		if first <= last {
+			all = append(all, [2]int{first, last})
+		}
+	}
+	return all
 }
 
 // lit is the share of full light that reaches each detector row of each element,

@@ -29,9 +29,14 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		r.noFlat(errors.New(why))
 		return nil
 	}
+	r.warnMissing(sequence.Flat, len(r.roles.calibration.lamps.all()))
+	r.degradeMissing()
 	err := r.pixelFlat(ctx, m)
 	if err == nil {
 		err = r.slitFlat(ctx, m)
+	}
+	if err == nil {
+		err = r.flatDepth(ctx, m)
 	}
 	if errors.Is(err, calib.ErrNoLight) {
 		r.optics.pixel, r.optics.response = nil, nil
@@ -39,6 +44,22 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		return nil
 	}
 	return err
+}
+
+// degradeMissing tells that the neighbour term was to be measured and cannot be.
+func (r *reduction) degradeMissing() {
+	l := &r.roles.calibration.lamps
+	have := map[sequence.Pattern]int{
+		sequence.PatternOn: len(l.on), sequence.PatternEven: len(l.even),
+		sequence.PatternOdd: len(l.odd), sequence.PatternOff: len(l.off),
+	}
+	for _, i := range r.seq.StepsOf(sequence.Flat) {
+		pattern, _ := r.seq.Pattern(i)
+		if n, wanted := have[pattern]; wanted && n == 0 {
+			r.degrade("the light of open neighbours is not measured: all lamp frames with the mask of step %d are missing", r.seq.Steps[i].Step)
+			return
+		}
+	}
 }
 
 // noFlat leaves the response uncorrected, flags it and says why.
@@ -80,12 +101,12 @@ func (r *reduction) lampSteps(rows []int) []string {
 	return steps
 }
 
-// pixelFlat measures the response of the pixels from all lamp frames together: a
-// coded cycle adds up to k all-on frames.
+// pixelFlat measures the response of the pixels from the coded cycle, which adds up to
+// k all-on frames. The all-on frames themselves are few beside it, and kept for
+// flatDepth.
 func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
-	l := &r.roles.calibration.lamps
-	frames := append([]*frame{}, l.on...)
-	for _, list := range l.coded {
+	var frames []*frame
+	for _, list := range r.roles.calibration.lamps.coded {
 		frames = append(frames, list...)
 	}
 	sum, err := r.sumExposures(ctx, frames, m, true)

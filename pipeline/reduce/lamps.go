@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"bytes"
+	"cmp"
 	"encoding/csv"
 	"fmt"
 	"math"
@@ -54,7 +55,7 @@ func lampLines(lamp string, firstNM, lastNM float64) ([]calib.LampLine, error) {
 		}
 	}
 	slices.SortStableFunc(lines, func(a, b calib.LampLine) int {
-		return int(math.Copysign(1, a.VacuumNM-b.VacuumNM))
+		return cmp.Compare(a.VacuumNM, b.VacuumNM)
 	})
 	return lines, nil
 }

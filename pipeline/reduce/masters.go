@@ -210,12 +210,12 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []flo
 		if dark != nil {
 			charge := float64(dark[i]) - biasE
 			darkRate = charge / f.darkSeconds
-			taken = meanVariance(quiet, charge, len(f.dark), f.scienceSeconds/f.darkSeconds, biasVariance)
+			taken = p.camera.meanVariance(quiet, charge, len(f.dark), f.scienceSeconds/f.darkSeconds, biasVariance)
 		}
 		if off != nil {
 			charge := float64(off[i]) - biasE
 			s.images[masterOff][i] = float32(charge/f.offSeconds - darkRate)
-			taken = meanVariance(quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
+			taken = p.camera.meanVariance(quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
 		}
 		if lampOff != nil {
 			s.images[masterLampOff][i] = float32((float64(lampOff[i])-biasE)/f.lamps.seconds - darkRate)
@@ -227,8 +227,8 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []flo
 
 // meanVariance takes the charge as it is, below 0 as well: clipped, noise alone would
 // look like light.
-func meanVariance(quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
-	own := max(quiet+charge, quiet*varianceFloor)
+func (c *camera) meanVariance(quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
+	own := max(quiet+(1+c.photonExcess)*charge, quiet*varianceFloor)
 	return ratio*ratio*own/float64(frames) + (1-ratio)*(1-ratio)*biasVariance
 }
 

@@ -10,6 +10,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
 )
 
 // optics is what the lamps tell of the instrument, and what is taken from the
@@ -136,6 +137,13 @@ func (r *reduction) warn(format string, args ...any) {
 	r.log.Info(text) // the command says it in the end
 }
 
+// warnMissing tells of lamp frames that were planned and are not all there.
+func (r *reduction) warnMissing(kind sequence.Kind, have int) {
+	if planned := len(r.seq.StepsOf(kind)); have < planned {
+		r.warn("%d of %d %s frames are missing", planned-have, planned, kind)
+	}
+}
+
 // The wavelength solution is to be good to figurePx everywhere (one standard
 // error); beyond hopelessPx the profile's is as good a guess.
 const (
@@ -155,14 +163,20 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 		r.nominal(err)
 		return nil
 	}
+	r.warnMissing(sequence.Arc, len(r.roles.arcs))
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
-	rule := calib.DefaultPeakRule(r.lineFWHM())
-	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
+	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
+	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) error {
 		_, element := r.seq.Pattern(r.roles.arcs[i].step)
-		first, last := r.litRows(element)
 		frames[i].Element, frames[i].Lines = element, lines[i]
-		frames[i].Peaks, err = rule.Find(*e, first, last)
-		return err
+		for _, rows := range r.litStretches(element) {
+			peaks, err := rule.Find(*e, rows[0], rows[1])
+			if err != nil {
+				return err
+			}
+			frames[i].Peaks = append(frames[i].Peaks, peaks...)
+		}
+		return nil
 	})
 	if err != nil {
 		return err
@@ -210,14 +224,7 @@ func (r *reduction) arcLines() ([][]calib.LampLine, error) {
 // arcRule bounds the search for the band of the cube's grid.
 func (r *reduction) arcRule() calib.ArcRule {
 	g := r.schema.Grid
-	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.lineFWHM())
-}
-
-// lineFWHM is the expected width of an arc line: the spot's, widened by the
-// element's own.
-func (r *reduction) lineFWHM() float64 {
-	p := r.seq.Profile
-	return calib.LineFWHM(p.Spectrograph.LSFFWHMPx, p.ElementStepPx(r.seq.ElementMirrors()))
+	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.seq.Profile.Spectrograph.LSFFWHMPx)
 }
 
 // solveTrace measures the trace at the ends of the slit: in the lamp's all-on

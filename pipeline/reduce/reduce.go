@@ -305,7 +305,7 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
 	d := &decoder{
 		code: hadamard.NewDecoder(code), columns: r.camera.columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
-		k: float64(code.K()),
+		k: float64(code.K()), photonExcess: r.camera.photonExcess,
 	}
 	d.weight, d.slotWeight, d.lost = weights(slots)
 	if !d.code.VarianceUniform() {

@@ -119,6 +119,11 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		return err
 	}
 	if w.elements != nil {
+		if len(w.decoder.lost) > 0 {
+			for i := range s.flags {
+				s.flags[i] |= product.FlagLost
+			}
+		}
 		if err := s.writePlanes(w.elements); err != nil {
 			return err
 		}

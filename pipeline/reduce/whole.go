@@ -53,12 +53,13 @@ func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScr
 	}
 	r.lookAt(1)
 	seconds := float32(r.seq.Steps[f.step].ExptimeSeconds)
+	photon := float32(1 + r.camera.photonExcess)
 	for y := range rows {
 		quiet := r.camera.variance[y]
 		for x := range columns {
 			i := y*columns + x
 			v := e.Signal[i] - m.bias[i]
-			e.Variance[i] = float32(quiet[x]) + max(0, v)
+			e.Variance[i] = float32(quiet[x]) + photon*max(0, v)
 			v -= seconds * m.dark[i]
 			if dim {
 				v -= seconds * m.lampOff[i]

@@ -4,6 +4,7 @@ import (
 	"math"
 	"math/rand/v2"
 
+	"mirrorloom/calib/physics"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -29,6 +30,9 @@ type detector struct {
 	rawColumns         int
 	rows               []rawRow
 	dead               []bool // active columns that see no light
+	// noise is the read mode's. Its photons count as Photon of the square of their
+	// deviation from the mean: of the right variance, though no sum of single reads.
+	noise physics.EffectiveNoise
 }
 
 // Fixed properties of the sensor, all invented and mild.
@@ -48,6 +52,11 @@ const (
 
 func newDetector(d instrument.Detector, seed uint64, perfect, noiseless bool) *detector {
 	t := &detector{Detector: d, seed: seed, perfect: perfect, noiseless: noiseless, rawColumns: d.RawColumns()}
+	mode := d.Mode()
+	var err error
+	if t.noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
+		panic("internal error: a checked profile's read mode: " + err.Error())
+	}
 	t.rows = make([]rawRow, d.RawRows())
 	for r := range t.rows {
 		t.rows[r].active = -1
@@ -177,7 +186,7 @@ func (r *reader) read(dst []float64, raw int, mean []float64, in *reading) {
 				value += in.pattern[x] + r.charge[x]
 			}
 			if !r.t.noiseless {
-				value += a.ReadNoiseE / a.GainEPerADU * r.normal.NormFloat64()
+				value += math.Sqrt(r.t.noise.Read) * a.ReadNoiseE / a.GainEPerADU * r.normal.NormFloat64()
 			}
 			dst[s.raw+i] = value
 		}
@@ -198,6 +207,9 @@ func (r *reader) collect(row *rawRow, mean []float64, in *reading) {
 		reseed(&r.pcg, t.seed, "photons", in.step, row.active)
 		for x, m := range mean {
 			mean[x] = poisson(&r.pcg, m)
+			if t.noise.Photon != 1 {
+				mean[x] = m + math.Sqrt(t.noise.Photon)*(mean[x]-m)
+			}
 		}
 	}
 	for _, h := range in.hits {

@@ -32,12 +32,15 @@ func calibrationFacts(c *product.Calibration) []fact {
 		add("Trace", "tilt %.3e px/px, curve %.2e px⁻¹, from %d places of the slit's ends; rms %.3f px", t.Tilt, t.Curve, t.Ends, t.RMSPx)
 	}
 	if f := c.Flat; f != nil {
-		add("Flat field", "pixels %.2f %% rms, slit %.2f %%, efficiency %.2f %% (waves down to %.0f voxels); it adds %.3f %% to the median variance",
-			100*f.PixelRMS, 100*f.SlitRMS, 100*f.EfficiencyRMS, f.PeriodVoxels, 100*f.AddedVariance)
+		add("Flat field", "pixels %.2f %% rms, slit %.2f %%, efficiency %.2f %% (waves down to %.0f voxels)",
+			100*f.PixelRMS, 100*f.SlitRMS, 100*f.EfficiencyRMS, f.PeriodVoxels)
+		if f.AddedVariance > 0 {
+			add("Variance that the flat field adds", "%.3f %% of a voxel's, in the median", 100*f.AddedVariance)
+		}
 	}
 	if len(c.FlatDepth) > 0 {
 		add("How deep the flat field goes", "%s", list(c.FlatDepth, func(d product.DepthAtSN) string {
-			return fmt.Sprintf("%.3f %% where photons allow %.3f %% (%d × %d pixels)", 100*d.RMS, 100/d.SN, d.Side, d.Side)
+			return fmt.Sprintf("%.3f %% where photons allow %.3f %% (%d × %d pixels), %.3f ± %.3f %% beyond", 100*d.RMS, 100/d.SN, d.Side, d.Side, 100*d.Excess, 100*d.ExcessError)
 		}))
 	}
 	if len(c.Neighbour) > 0 {

@@ -1,4 +1,4 @@
-package calib
+package physics
 
 import (
 	"math"
@@ -28,6 +28,9 @@ func TestReadModeLimits(t *testing.T) {
 	r, err := ReadMode{Kind: FowlerRead, Reads: 8}.EffectiveReadNoise(16)
 	require.NoError(t, err)
 	require.InDelta(t, 8, r, 1e-12)
+	none, err := ReadMode{}.Noise()
+	require.NoError(t, err)
+	require.Equal(t, EffectiveNoise{1, 1}, none)
 	r, err = ReadMode{Kind: SingleRead}.EffectiveReadNoise(16)
 	require.NoError(t, err)
 	require.Equal(t, 16.0, r)

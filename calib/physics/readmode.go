@@ -1,11 +1,12 @@
-package calib
+package physics
 
 import (
 	"fmt"
 	"math"
 )
 
-// ReadMode is how an infrared array is read without destroying the charge.
+// ReadMode is how an infrared array is read without destroying the charge. An empty
+// Kind is a single read.
 type ReadMode struct {
 	Kind ReadKind
 	// Reads is: for Fowler, the reads averaged at each end; for Ramp, all reads,
@@ -46,7 +47,7 @@ type EffectiveNoise struct{ Read, Photon float64 }
 func (m ReadMode) Noise() (EffectiveNoise, error) {
 	n := float64(m.Reads)
 	switch m.Kind {
-	case SingleRead:
+	case SingleRead, "":
 		return EffectiveNoise{Read: 1, Photon: 1}, nil
 	case DoubleRead:
 		return EffectiveNoise{Read: 2, Photon: 1}, nil
