@@ -31,6 +31,7 @@ lint:
 # Long statistical checks: writes VALIDATION.md.
 validate: build packages
 	$(GO) run ./internal/validate
+	MIRRORLOOM_VALIDATE=1 $(GO) test -count=1 -timeout 60m -run 'TestArcNights|TestSpeedOfLargestDevice' ./pipeline/reduce ./pipeline/sequence
 
 # Figures are compared as ratios within one run, as machines are noisy: writes
 # BENCHMARKS.md.
