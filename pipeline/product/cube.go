@@ -93,19 +93,26 @@ func (s Schema) Header(unit string, more ...fitsutil.Card) (*fitsutil.Header, er
 	return h, nil
 }
 
-// Images gives the four images of cube.fits in their order.
-func (s Schema) Images() ([]fitsutil.ImageSpec, error) {
-	var specs []fitsutil.ImageSpec
-	for _, im := range []struct {
-		name, unit string
-		bitpix     int
-		cards      []card
-	}{
+// layer is an image of a product: its name, unit, sample type and further cards.
+type layer struct {
+	name, unit string
+	bitpix     int
+	cards      []card
+}
+
+// decodedLayers are the images that cube and element cube share, in their order.
+func decodedLayers() []layer {
+	return []layer{
 		{Signal, UnitSignal, -32, nil},
 		{Variance, UnitVariance, -32, nil},
 		{FlagsImage, "", 16, flagCards()},
-		{Scale, "", -32, nil},
-	} {
+	}
+}
+
+// Images gives the four images of cube.fits in their order.
+func (s Schema) Images() ([]fitsutil.ImageSpec, error) {
+	var specs []fitsutil.ImageSpec
+	for _, im := range append(decodedLayers(), layer{Scale, "", -32, nil}) {
 		h, err := s.Header(im.unit)
 		if err != nil {
 			return nil, err
@@ -145,15 +152,7 @@ func (p Provenance) Primary(object string) (*fitsutil.Header, error) {
 // detector coordinates, dark columns too.
 func ElementImages(columns, rows, v int) ([]fitsutil.ImageSpec, error) {
 	var specs []fitsutil.ImageSpec
-	for _, im := range []struct {
-		name, unit string
-		bitpix     int
-		cards      []card
-	}{
-		{Signal, UnitSignal, -32, nil},
-		{Variance, UnitVariance, -32, nil},
-		{FlagsImage, "", 16, flagCards()},
-	} {
+	for _, im := range decodedLayers() {
 		h := fitsutil.NewHeader()
 		cards := im.cards
 		if im.unit != "" {
