@@ -260,6 +260,9 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
 	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
+	if s.cube {
+		w.pixelVariance = r.writePixelVariance
+	}
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
