@@ -10,6 +10,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
 )
 
 // decodeCase is a block of samples with everything that decoding looks at.
@@ -34,9 +35,9 @@ func newDecodeCase(t *testing.T, family hadamard.Family, v, columns int, frames 
 			d.elementColumns = append(d.elementColumns, j)
 		}
 	}
-	slots := make([][]*frame, v)
+	slots := make([][]*exposure.Frame, v)
 	for i, n := range frames {
-		slots[i] = make([]*frame, n)
+		slots[i] = make([]*exposure.Frame, n)
 	}
 	d.weight, d.slotWeight, d.lost = weights(slots)
 	d.sumQuiet()

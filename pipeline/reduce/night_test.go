@@ -5,15 +5,16 @@ import (
 
 	"github.com/stretchr/testify/require"
 
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
 // framesOf makes a frame for every step that keep chooses, none of them on disk.
-func framesOf(seq *sequence.Sequence, keep func(sequence.Step) bool) (list []*frame) {
+func framesOf(seq *sequence.Sequence, keep func(sequence.Step) bool) (list []*exposure.Frame) {
 	for i, st := range seq.Steps {
 		if keep(st) && (st.Kind != sequence.Flat || isLampOn(seq, i)) {
-			list = append(list, &frame{step: i, entry: i})
+			list = append(list, &exposure.Frame{Step: i, Entry: i})
 		}
 	}
 	return list
@@ -34,7 +35,7 @@ func TestAssignWhole(t *testing.T) {
 	for row, frames := range r.slots {
 		require.Len(t, frames, 2, "slot %d", row)
 		for _, f := range frames {
-			require.Equal(t, row, seq.Steps[f.step].Row)
+			require.Equal(t, row, seq.Steps[f.Step].Row)
 		}
 	}
 	c := r.calibration

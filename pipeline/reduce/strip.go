@@ -2,10 +2,13 @@ package reduce
 
 import (
 	"context"
+	"slices"
 	"sync"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
 )
 
 // strip is some detector rows of all science frames, in electrons above the
@@ -51,25 +54,25 @@ func (s *strip) keep(w *decodeWorker, at, n int, out *decodedRow, x0 int, unifor
 
 // stripReader fills strips from the science frames and the masters.
 type stripReader struct {
-	camera  *camera
-	album   *album
-	slots   [][]*frame // by code row
+	camera  *exposure.Camera
+	album   *exposure.Album
+	slots   [][]*exposure.Frame // by code row
 	masters *masters
 	// seconds is the exposure time of the frames, and dim the master of the light
 	// that comes without any open mirror: masterOff or masterLampOff.
 	seconds float64
 	dim     int
 	workers int
-	scratch []readScratch
+	scratch []exposure.Scratch
 	sums    [][]float32 // by worker, for slots of several frames
 }
 
 // read fills s with rows y0..y1-1.
 func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
-	s.y0, s.y1, s.columns = y0, y1, r.camera.columns
+	s.y0, s.y1, s.columns = y0, y1, r.camera.Columns
 	n := (y1 - y0) * s.columns
 	s.raw = s.raw[:len(r.slots)*n]
-	s.quiet = r.camera.variance[y0:y1]
+	s.quiet = r.camera.Variance[y0:y1]
 	if err := r.readMasters(s, n); err != nil {
 		return err
 	}
@@ -77,27 +80,27 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 	mark := func(flags []calib.Flag, x, y, w int) {
 		mu.Lock()
 		defer mu.Unlock()
-		r.camera.merge(s.flags, y0, flags, x, y, w)
+		r.camera.Merge(s.flags, y0, flags, x, y, w)
 	}
-	return parallel(ctx, r.workers, len(r.slots), func(worker, i int) error {
+	return parallel.Do(ctx, r.workers, len(r.slots), func(worker, i int) error {
 		return r.readSlot(s.slot(i), r.slots[i], y0, y1, worker, mark)
 	})
 }
 
 // readSlot puts the mean of a slot's frames into dst; nothing for a lost one.
-func (r *stripReader) readSlot(dst []float32, frames []*frame, y0, y1, worker int, mark marked) error {
+func (r *stripReader) readSlot(dst []float32, frames []*exposure.Frame, y0, y1, worker int, mark exposure.Marked) error {
 	for i, f := range frames {
 		into := dst
 		if i > 0 {
-			r.sums[worker] = grow(r.sums[worker], len(dst))
+			r.sums[worker] = slices.Grow(r.sums[worker][:0], len(dst))[:len(dst)]
 			into = r.sums[worker]
 		}
-		saturated, err := r.camera.read(into, f.image, y0, y1, &r.scratch[worker], mark)
+		saturated, err := r.camera.Read(into, f.Image, y0, y1, &r.scratch[worker], mark)
 		if err != nil {
 			return err
 		}
-		f.saturated += saturated
-		if err := r.album.done(f); err != nil {
+		f.Saturated += saturated
+		if err := r.album.Done(f); err != nil {
 			return err
 		}
 		if i > 0 {

@@ -6,6 +6,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -163,7 +164,7 @@ func (w *sweep) newPlanes() *elementPlanes {
 func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error {
 	blocks := w.decoder.blocks()
 	dark := make([]darkChi2, len(rows)*blocks)
-	err := parallel(ctx, w.workers, len(dark), func(worker, i int) error {
+	err := parallel.Do(ctx, w.workers, len(dark), func(worker, i int) error {
 		row := rows[i/blocks]
 		dark[i] = w.decoder.run(w.scratch[worker], s, row.y, i%blocks, row)
 		return nil
@@ -174,7 +175,7 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 	for i, d := range dark {
 		w.quality[rows[i/blocks].y].dark.add(d)
 	}
-	err = parallel(ctx, w.workers, len(rows), func(_, i int) error {
+	err = parallel.Do(ctx, w.workers, len(rows), func(_, i int) error {
 		w.flatten(rows[i])
 		return nil
 	})
@@ -201,7 +202,7 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		next--
 	}
 	first, n := w.window.first(), next-w.finished
-	err := parallel(ctx, w.workers, n, func(worker, i int) error {
+	err := parallel.Do(ctx, w.workers, n, func(worker, i int) error {
 		at := w.finished + i - first
 		row := w.window.rows[at]
 		for _, near := range []int{at - 1, at + 1} {
