@@ -11,8 +11,8 @@ import (
 func (r *reduction) noise() product.Noise {
 	n := product.Noise{
 		Family: r.seq.Family, V: r.seq.V, K: r.seq.K, Poly: r.seq.Poly,
-		PhotonVariance: 1 + r.camera.photonExcess,
-		Columns:        r.camera.columns, Rows: r.camera.rows, Uniform: r.shape.uniform,
+		PhotonVariance: 1 + r.camera.PhotonExcess,
+		Columns:        r.camera.Columns, Rows: r.camera.Rows, Uniform: r.shape.uniform,
 		ResponseVariance: r.optics.pixelVariance(), Response: r.optics.response != nil,
 		Element: make([]int32, r.seq.V), Frames: make([]int32, r.seq.V), ThroughputErr: make([]float64, r.seq.V),
 	}
@@ -26,7 +26,7 @@ func (r *reduction) noise() product.Noise {
 	for row, frames := range r.roles.slots {
 		square := 0.0
 		for _, f := range frames {
-			if e := r.night.Ledger[f.entry].ThroughputErr; e > 0 { // not NaN: measured
+			if e := r.night.Ledger[f.Entry].ThroughputErr; e > 0 { // not NaN: measured
 				square += e * e
 			}
 		}
