@@ -373,7 +373,11 @@ func (r *reduction) warnings() []string {
 	all := r.roles.warnings
 	for _, v := range []product.Verdict{product.Unreadable, product.WrongMask, product.WrongExposure, product.WrongSize, product.Duplicate, product.Extra} {
 		if n := r.night.Ledger.Count(v); n > 0 {
-			all = append(all, fmt.Sprintf("%d frames are %s and were not used: see the ledger", n, strings.ReplaceAll(string(v), "-", " ")))
+			frames, was := "frames are", "were"
+			if n == 1 {
+				frames, was = "frame is", "was"
+			}
+			all = append(all, fmt.Sprintf("%d %s %s and %s not used: see the ledger", n, frames, strings.ReplaceAll(string(v), "-", " "), was))
 		}
 	}
 	return all
