@@ -28,13 +28,16 @@ func (s *Shape) cells(k *sky, elements, rows int) ([]cell, error) {
 	if s.Form == Voxels {
 		return s.listed(elements, rows)
 	}
+	if s.Form == Annulus {
+		return s.ring(k, elements, rows)
+	}
 	outline, err := s.outline(k)
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", s.Text, err)
 	}
 	all := cover(outline, elements, rows)
 	if len(all) == 0 {
-		return nil, fmt.Errorf("%s: no voxel of the cube lies in it: it is around element %.1f, row %.1f, of %d elements and %d rows", s.Text, outline[0][0], outline[0][1], elements, rows)
+		return nil, fmt.Errorf("%s: no voxel of the cube lies in it: it reaches element %.1f, row %.1f, where the cube has %d elements and %d rows", s.Text, outline[0][0], outline[0][1], elements, rows)
 	}
 	return all, nil
 }

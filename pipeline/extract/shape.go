@@ -15,6 +15,7 @@ const (
 	Circle  Form = "circle"
 	Ellipse Form = "ellipse"
 	Polygon Form = "polygon"
+	Annulus Form = "annulus" // from MinorArcsec to MajorArcsec
 	Voxels  Form = "voxels"
 )
 

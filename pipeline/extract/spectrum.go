@@ -17,6 +17,8 @@ type SpectrumOptions struct {
 	Optimal bool
 	// Bands are added up with the errors of their channels' covariance.
 	Bands []Band
+	// Lines are fitted, if there are any.
+	Lines *LineOptions
 }
 
 // Spectrum is an aperture's light by wavelength, in the cube's unit.
@@ -33,6 +35,8 @@ type Spectrum struct {
 	// Covariance is [channel][lag]: that of channel l with l + lag.
 	Covariance [][]float64
 	Bands      []BandLight
+	Lines      []Line
+	LineStatus Status
 	// Area is the aperture's in voxels, BackgroundArea that of the background.
 	Area, BackgroundArea float64
 	Cells                int
@@ -89,7 +93,10 @@ func (c *Cube) Spectrum(ctx context.Context, o SpectrumOptions) (*Spectrum, erro
 	for i := range s.Bands {
 		s.Bands[i].Error = math.Sqrt(v.sums[i])
 	}
-	return s, nil
+	if o.Lines != nil {
+		s.Lines, s.LineStatus, err = c.fitSpectrum(s, *o.Lines)
+	}
+	return s, err
 }
 
 // aperture loads the cells of both shapes.
