@@ -64,6 +64,16 @@ func NewCamera(d *instrument.Detector) (*Camera, error) {
 	return c, nil
 }
 
+// NoisiestVariance is the largest variance of a sample without light among the
+// amplifiers, electrons squared.
+func (c *Camera) NoisiestVariance() float64 {
+	most := 0.0
+	for i := range c.Amplifiers {
+		most = max(most, c.Amplifiers[i].variance)
+	}
+	return most
+}
+
 // variances fills in Camera.Variance.
 func (c *Camera) variances() [][]float64 {
 	all := make([][]float64, c.Rows)

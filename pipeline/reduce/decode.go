@@ -121,6 +121,10 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) dark
 		}
 	}
 	copy(out.flags[x0:x1], flags)
+	for p, v := range s.levelVariance[at : at+n] {
+		out.common[x0+p] = float32(float64(v) / (d.k * d.k))
+		out.unlit[x0+p] = float32(quiet[p] + (1+d.photonExcess)*float64(s.level[at+p]))
+	}
 	s.keep(w, at, n, out, x0, uniform)
 	return d.chi2(w, out, flags, x0, n)
 }

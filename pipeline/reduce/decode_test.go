@@ -74,7 +74,7 @@ func (c *decodeCase) run() (*decodedRow, darkChi2) {
 		variances = 1
 	}
 	n := c.decoder.columns
-	out := &decodedRow{signal: planes(len(c.decoder.elementColumns), n), variance: planes(variances, n), flags: make([]calib.Flag, n)}
+	out := newDecodedRow(len(c.decoder.elementColumns), variances, n)
 	var chi2 darkChi2
 	w := c.decoder.newWorker()
 	for b := range c.decoder.blocks() {

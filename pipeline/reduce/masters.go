@@ -237,7 +237,7 @@ func (p *prepare) findHot(s *masterStrip, known bool) error {
 		charge[i] = rate * float32(p.frames.scienceSeconds)
 	}
 	const readNoises = 10 // the excess, in read variances: as much noise again and more
-	rule := calib.DefaultHotRule(readNoises * p.camera.Variance[0][0])
+	rule := calib.DefaultHotRule(readNoises * p.camera.NoisiestVariance())
 	rule.Sigmas = p.recipe.HotSigma
 	_, err := rule.Flag(s.bad, charge, p.camera.Columns)
 	return err
@@ -269,7 +269,7 @@ func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) erro
 	if bias != nil {
 		calib.Subtract(lamp, bias, 1)
 	}
-	rule := calib.DefaultDeadRule(levelAbove(p.camera.Variance[0][0]))
+	rule := calib.DefaultDeadRule(levelAbove(p.camera.NoisiestVariance()))
 	rule.Fraction = p.recipe.DeadBelow
 	flags := make([]calib.Flag, len(lamp))
 	if _, err := rule.Flag(flags, lamp, p.camera.Columns); err != nil {

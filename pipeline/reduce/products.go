@@ -23,6 +23,11 @@ func (r *reduction) create(s shape) error {
 		if err != nil {
 			return err
 		}
+		more, err := r.noiseImages()
+		if err != nil {
+			return err
+		}
+		images = append(images, more...)
 		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
 			return err
 		}
@@ -58,6 +63,9 @@ func (r *reduction) finish(context.Context) (int64, error) {
 			return 0, err
 		}
 		if err := r.cube.AppendTable(table); err != nil {
+			return 0, err
+		}
+		if err := r.finishNoise(); err != nil {
 			return 0, err
 		}
 		if err := r.cube.Commit(); err != nil {

@@ -264,6 +264,9 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
 	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
+	if s.cube {
+		w.pixelVariance = r.writePixelVariance
+	}
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
@@ -374,7 +377,11 @@ func (r *reduction) warnings() []string {
 	all := r.roles.warnings
 	for _, v := range []product.Verdict{product.Unreadable, product.WrongMask, product.WrongExposure, product.WrongSize, product.Duplicate, product.Extra} {
 		if n := r.night.Ledger.Count(v); n > 0 {
-			all = append(all, fmt.Sprintf("%d frames are %s and were not used: see the ledger", n, strings.ReplaceAll(string(v), "-", " ")))
+			frames, was := "frames are", "were"
+			if n == 1 {
+				frames, was = "frame is", "was"
+			}
+			all = append(all, fmt.Sprintf("%d %s %s and %s not used: see the ledger", n, frames, strings.ReplaceAll(string(v), "-", " "), was))
 		}
 	}
 	return all

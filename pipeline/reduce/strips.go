@@ -22,10 +22,13 @@ type sweep struct {
 	elements *fitsutil.Cube // nil without an element cube
 	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
 	// decoded row, in order, before bad pixels are filled.
-	pixel    *calib.PixelResponse
-	light    func(row *decodedRow)
-	workers  int
-	progress func(rows int)
+	pixel *calib.PixelResponse
+	light func(row *decodedRow)
+	// pixelVariance, where not nil, takes each row's variances, in order, when they
+	// are what voxels are made of.
+	pixelVariance func(row *decodedRow) error
+	workers       int
+	progress      func(rows int)
 
 	window  *window
 	scratch []*decodeWorker
@@ -210,8 +213,18 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		w.fill(&w.fills[worker], row)
 		return nil
 	})
-	w.finished = max(w.finished, next)
-	return err
+	if err != nil || n <= 0 {
+		return err
+	}
+	if w.pixelVariance != nil {
+		for _, row := range w.window.rows[w.finished-first:][:n] {
+			if err := w.pixelVariance(row); err != nil {
+				return err
+			}
+		}
+	}
+	w.finished = next
+	return nil
 }
 
 // spread takes over the saturation of a neighbouring row.
@@ -247,6 +260,10 @@ func (w *sweep) dividePixels(row *decodedRow) {
 			r[x] /= f * f
 		}
 	}
+	for x, f := range factor {
+		row.common[x] /= f * f
+		row.unlit[x] /= f * f
+	}
 	for x, f := range flags {
 		row.flags[x] |= f
 	}
@@ -260,6 +277,8 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	for _, r := range row.variance {
 		f.Variance(r)
 	}
+	f.Variance(row.common)
+	f.Variance(row.unlit)
 }
 
 // emit makes and writes the next n trace rows of the cube.
