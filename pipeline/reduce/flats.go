@@ -10,6 +10,8 @@ import (
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -105,7 +107,7 @@ func (r *reduction) lampSteps(rows []int) []string {
 // k all-on frames. The all-on frames themselves are few beside it, and kept for
 // flatDepth.
 func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
-	var frames []*frame
+	var frames []*exposure.Frame
 	for _, list := range r.roles.calibration.lamps.coded {
 		frames = append(frames, list...)
 	}
@@ -115,10 +117,10 @@ func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
 	}
 	expected := make([]float32, len(sum.Signal))
 	p := r.seq.Profile
-	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.columns, p.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
+	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.Columns, p.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
 		return err
 	}
-	shift := make([]float64, r.camera.columns)
+	shift := make([]float64, r.camera.Columns)
 	for x := range shift {
 		shift[x] = r.optics.geometry.TraceShift(float64(x))
 	}
@@ -139,7 +141,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		return err
 	}
 	s := shape{
-		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
+		columns: r.camera.Columns, rows: r.camera.Rows, slots: r.seq.V, elements: r.seq.N(),
 		voxels: r.schema.Grid.Count, cube: true, uniform: code.Design().IsS(),
 	}
 	rectify, err := newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers)
@@ -192,18 +194,18 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 	if err != nil {
 		return nil, err
 	}
-	d := r.newDecoder(code, l.coded)
+	d := r.newDecoder(code, l.coded, nil)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return nil, err
 	}
 	return &sweep{
 		shape: s, heights: h, decoder: d, rectify: rectify, workers: r.opts.Workers,
-		reader:   r.newReader(l.coded, l.seconds, masterLampOff),
+		reader:   r.newReader(l.coded, l.seconds, masterLampOff, nil),
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
 		sink: func(ctx context.Context, out *outStrip) error {
 			groups := (s.elements + group - 1) / group
-			return parallel(ctx, r.opts.Workers, groups, func(_, i int) error {
+			return parallel.Do(ctx, r.opts.Workers, groups, func(_, i int) error {
 				fit.AddStrip(out.y0, out.h, out.signal, out.variance, out.flags, i*group, min((i+1)*group, s.elements))
 				return nil
 			})
@@ -215,7 +217,7 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 	rule := calib.DefaultFlatRule()
 	edges := make([]float64, r.schema.Grid.Count+1)
-	y := r.camera.rows / 2
+	y := r.camera.Rows / 2
 	r.optics.geometry.EdgesX(edges, r.optics.geometry.J_c, float64(y), r.schema.Grid.WavelengthNM(-0.5), r.schema.Grid.StepNM)
 	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
 	return rule

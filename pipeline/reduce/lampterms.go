@@ -5,6 +5,7 @@ import (
 	"errors"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 )
 
 // lampTerms fits the neighbour term and the leak to lamp frames, row by row of the
@@ -20,7 +21,7 @@ type lampTerms struct {
 
 func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTerms, error) {
 	l := &r.roles.calibration.lamps
-	t := &lampTerms{columns: r.camera.columns}
+	t := &lampTerms{columns: r.camera.Columns}
 	g, n := r.optics.geometry, r.seq.N()
 	var err error
 	if len(l.off) > 0 {
@@ -39,7 +40,7 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 	if err != nil {
 		return nil, err
 	}
-	for _, part := range [][]*frame{l.even, l.odd} {
+	for _, part := range [][]*exposure.Frame{l.even, l.odd} {
 		e, err := r.meanExposure(ctx, part, m)
 		if err != nil {
 			return nil, err
@@ -53,7 +54,7 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 }
 
 // meanExposure is the mean of frames, less bias and dark current.
-func (r *reduction) meanExposure(ctx context.Context, frames []*frame, m *wholeMasters) (*calib.Exposure, error) {
+func (r *reduction) meanExposure(ctx context.Context, frames []*exposure.Frame, m *wholeMasters) (*calib.Exposure, error) {
 	e, err := r.sumExposures(ctx, frames, m, false)
 	if err != nil {
 		return nil, err

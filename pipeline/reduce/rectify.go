@@ -7,6 +7,7 @@ import (
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -116,7 +117,7 @@ func (r *rectifier) needs(y int) int {
 // run fills the strip from the window.
 func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
 	groups := (r.elements + group - 1) / group
-	return parallel(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
+	return parallel.Do(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
 		r.rectify(&r.workers[worker], out, w, i/groups, i%groups*group)
 		return nil
 	})

@@ -12,6 +12,7 @@ import (
 	"go.uber.org/zap/zaptest/observer"
 
 	"mirrorloom/internal/outside"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/plan"
 	"mirrorloom/pipeline/product"
@@ -95,7 +96,7 @@ func TestProductsDoNotDependOnWorkersOrMemory(t *testing.T) {
 			compareRuns(t, night, seq)
 		})
 	}
-	few := prepare{camera: &camera{columns: 96, rows: 40}, memory: robustBudgets[2]}
+	few := prepare{camera: &exposure.Camera{Columns: 96, Rows: 40}, memory: robustBudgets[2]}
 	require.Less(t, few.height(), 40, "the masters are made in several strips as well")
 }
 

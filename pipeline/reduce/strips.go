@@ -6,6 +6,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -21,10 +22,13 @@ type sweep struct {
 	elements *fitsutil.Cube // nil without an element cube
 	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
 	// decoded row, in order, before bad pixels are filled.
-	pixel    *calib.PixelResponse
-	light    func(row *decodedRow)
-	workers  int
-	progress func(rows int)
+	pixel *calib.PixelResponse
+	light func(row *decodedRow)
+	// pixelVariance, where not nil, takes each row's variances, in order, when they
+	// are what voxels are made of.
+	pixelVariance func(row *decodedRow) error
+	workers       int
+	progress      func(rows int)
 
 	window  *window
 	scratch []*decodeWorker
@@ -119,7 +123,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		return err
 	}
 	if w.elements != nil {
-		if len(w.decoder.lost) > 0 {
+		if len(w.decoder.scale.lost) > 0 {
 			for i := range s.flags {
 				s.flags[i] |= product.FlagLost
 			}
@@ -160,7 +164,7 @@ func (w *sweep) newPlanes() *elementPlanes {
 func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error {
 	blocks := w.decoder.blocks()
 	dark := make([]darkChi2, len(rows)*blocks)
-	err := parallel(ctx, w.workers, len(dark), func(worker, i int) error {
+	err := parallel.Do(ctx, w.workers, len(dark), func(worker, i int) error {
 		row := rows[i/blocks]
 		dark[i] = w.decoder.run(w.scratch[worker], s, row.y, i%blocks, row)
 		return nil
@@ -171,7 +175,7 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 	for i, d := range dark {
 		w.quality[rows[i/blocks].y].dark.add(d)
 	}
-	err = parallel(ctx, w.workers, len(rows), func(_, i int) error {
+	err = parallel.Do(ctx, w.workers, len(rows), func(_, i int) error {
 		w.flatten(rows[i])
 		return nil
 	})
@@ -198,7 +202,7 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		next--
 	}
 	first, n := w.window.first(), next-w.finished
-	err := parallel(ctx, w.workers, n, func(worker, i int) error {
+	err := parallel.Do(ctx, w.workers, n, func(worker, i int) error {
 		at := w.finished + i - first
 		row := w.window.rows[at]
 		for _, near := range []int{at - 1, at + 1} {
@@ -209,8 +213,18 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		w.fill(&w.fills[worker], row)
 		return nil
 	})
-	w.finished = max(w.finished, next)
-	return err
+	if err != nil || n <= 0 {
+		return err
+	}
+	if w.pixelVariance != nil {
+		for _, row := range w.window.rows[w.finished-first:][:n] {
+			if err := w.pixelVariance(row); err != nil {
+				return err
+			}
+		}
+	}
+	w.finished = next
+	return nil
 }
 
 // spread takes over the saturation of a neighbouring row.
@@ -246,6 +260,10 @@ func (w *sweep) dividePixels(row *decodedRow) {
 			r[x] /= f * f
 		}
 	}
+	for x, f := range factor {
+		row.common[x] /= f * f
+		row.unlit[x] /= f * f
+	}
 	for x, f := range flags {
 		row.flags[x] |= f
 	}
@@ -259,6 +277,8 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	for _, r := range row.variance {
 		f.Variance(r)
 	}
+	f.Variance(row.common)
+	f.Variance(row.unlit)
 }
 
 // emit makes and writes the next n trace rows of the cube.
@@ -267,7 +287,7 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
 		return err
 	}
-	if len(w.decoder.lost) > 0 {
+	if len(w.decoder.scale.lost) > 0 {
 		for i, f := range w.out.flags {
 			if f&product.FlagNoData == 0 {
 				w.out.flags[i] |= product.FlagLost

@@ -12,6 +12,26 @@ type decodedRow struct {
 	flags    []calib.Flag // [column]
 	// own are the flags before those of neighbouring rows spread to this one.
 	own []calib.Flag
+	// common is the part of variance that all elements of a pixel share: that of what
+	// was taken off all frames. unlit is the variance of a sample that no open mirror
+	// lights; it is filled in where variance differs between the elements.
+	common, unlit []float32
+}
+
+func newDecodedRow(elements, variances, columns int) *decodedRow {
+	return &decodedRow{
+		signal: planes(elements, columns), variance: planes(variances, columns),
+		flags: make([]calib.Flag, columns), own: make([]calib.Flag, columns),
+		common: make([]float32, columns), unlit: make([]float32, columns),
+	}
+}
+
+// pixelVariance is what PIXELVAR holds of the row.
+func (r *decodedRow) pixelVariance(uniform bool) (own, common []float32) {
+	if uniform {
+		return r.variance[0], r.common
+	}
+	return r.unlit, r.common
 }
 
 // window holds decoded rows in order until no trace needs them.
@@ -27,7 +47,7 @@ func newWindow(s shape) *window {
 		variances = s.elements
 	}
 	return &window{make: func() *decodedRow {
-		return &decodedRow{signal: planes(s.elements, s.columns), variance: planes(variances, s.columns), flags: make([]calib.Flag, s.columns), own: make([]calib.Flag, s.columns)}
+		return newDecodedRow(s.elements, variances, s.columns)
 	}}
 }
 
