@@ -45,6 +45,7 @@ func checks() []check {
 		enclosedFlux(),
 		seeds(),
 		apertures(),
+		lineMaps(),
 		readNoiseGain(),
 		falseAlarms(),
 	}
