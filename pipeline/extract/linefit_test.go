@@ -7,9 +7,15 @@ import (
 
 	"github.com/stretchr/testify/require"
 
-	"mirrorloom/internal/trial"
 	"mirrorloom/pipeline/instrument"
 )
+
+// moments add up samples.
+type moments struct{ n, sum, square float64 }
+
+func (m *moments) Add(x float64) { m.n, m.sum, m.square = m.n+1, m.sum+x, m.square+x*x }
+func (m moments) Mean() float64  { return m.sum / m.n }
+func (m moments) Std() float64   { return math.Sqrt(m.square/m.n - m.Mean()*m.Mean()) }
 
 // noisySpectrum draws voxels of a model under the noise of resampled pixels: each
 // voxel is a weighted sum of its neighbours' pixels, which gives covariance as known.
@@ -61,7 +67,7 @@ func TestLinePulls(t *testing.T) {
 		t.Run(name, func(t *testing.T) {
 			m := modelOf(c.o)
 			pcg := rand.New(rand.NewPCG(1, 2))
-			var flux, velocity, width, naive trial.Moments
+			var flux, velocity, width, naive moments
 			for range spectra {
 				values, variance, covariance := noisySpectrum(m, c.p, 9, pcg)
 				f := m.fit(values, variance, covariance)
@@ -75,7 +81,7 @@ func TestLinePulls(t *testing.T) {
 				width.Add((lines[0].Width - c.p[m.shapes()]*toKmS) / lines[0].WidthErr)
 			}
 			// Five standard errors of 2000 are 0.08.
-			for what, pulls := range map[string]trial.Moments{"flux": flux, "velocity": velocity, "width": width} {
+			for what, pulls := range map[string]moments{"flux": flux, "velocity": velocity, "width": width} {
 				require.InDelta(t, 1, pulls.Std(), 0.08, what)
 				require.InDelta(t, 0, pulls.Mean(), 0.15, what)
 			}
