@@ -6,10 +6,12 @@ func (p *propagator) block(w *part, y int, traces []*traceRow, light [][]float32
 		return
 	}
 	p.c.samples(&w.b, light, pixels)
-	w.k.prepare(&w.b)
-	for x := range w.n {
-		if p.touched(w, x) {
-			p.pixel(w, x, light, pixels)
+	if !p.sumsOnly {
+		w.k.prepare(&w.b)
+		for x := range w.n {
+			if p.touched(w, x) {
+				p.pixel(w, x, light, pixels)
+			}
 		}
 	}
 	p.addSums(w, light, pixels)

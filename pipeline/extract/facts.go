@@ -19,11 +19,13 @@ const (
 	factVoxels = 10
 	// factChannels around the middle of the good ones are looked at.
 	factChannels = 60
+	// factCoverage of the cells is good in a channel that counts.
+	factCoverage = 0.9
 )
 
 // SumFacts computes them for sums around an element and row: of rows, of elements, of
-// both, and of wavelengths. None where the surroundings are not good, or the place is
-// too near to the field's edge.
+// both, of wavelengths, and of a whole row. A Ratio is not a number where too little is
+// good; there are none where the place is too near to the field's edge.
 func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error) {
 	half := factSide / 2
 	if element < half || element >= c.Elements-half || row < half || row >= c.Rows-half {
@@ -31,18 +33,18 @@ func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error
 	}
 	var facts []SumFact
 	for _, sum := range []struct {
-		what                 string
-		elements, rows, band int
+		what                                  string
+		firstElement, lastElement, rows, band int
 	}{
-		{fmt.Sprintf("%d neighbouring rows", factSide), 0, half, 0},
-		{fmt.Sprintf("%d neighbouring elements", factSide), half, 0, 0},
-		{fmt.Sprintf("%d × %d elements and rows", factSide, factSide), half, half, 0},
-		{fmt.Sprintf("%d neighbouring wavelengths of one voxel", factVoxels), 0, 0, factVoxels},
-		{fmt.Sprintf("%d × %d elements and rows, %d wavelengths", factSide, factSide, factVoxels), half, half, factVoxels},
+		{fmt.Sprintf("%d neighbouring rows", factSide), element, element, half, 0},
+		{fmt.Sprintf("%d neighbouring elements", factSide), element - half, element + half, 0, 0},
+		{fmt.Sprintf("%d neighbouring wavelengths of one voxel", factVoxels), element, element, 0, factVoxels},
+		{fmt.Sprintf("%d × %d elements and rows, %d wavelengths", factSide, factSide, factVoxels), element - half, element + half, half, factVoxels},
+		{fmt.Sprintf("all elements of a row, %d wavelengths", factChannels), 0, c.Elements - 1, 0, factChannels},
 	} {
 		var cells []cell
 		for y := row - sum.rows; y <= row+sum.rows; y++ {
-			for j := element - sum.elements; j <= element+sum.elements; j++ {
+			for j := sum.firstElement; j <= sum.lastElement; j++ {
 				cells = append(cells, cell{element: j, row: y, area: 1})
 			}
 		}
@@ -50,16 +52,14 @@ func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error
 		if err != nil {
 			return nil, err
 		}
-		if ratio == 0 {
-			return nil, nil
-		}
 		facts = append(facts, SumFact{sum.what, ratio})
 	}
 	return facts, nil
 }
 
 // errorRatio is error over naive error of a sum over cells: the median of the
-// channels in the middle, or that of a band of so many; 0 without good channels.
+// channels in the middle, or that of a band of so many; not a number without good
+// channels.
 func (c *Cube) errorRatio(ctx context.Context, cells []cell, band int) (float64, error) {
 	a, err := c.load(ctx, cells)
 	if err != nil {
@@ -67,12 +67,12 @@ func (c *Cube) errorRatio(ctx context.Context, cells []cell, band int) (float64,
 	}
 	var good []int
 	for l, part := range a.plain() {
-		if part == 1 {
+		if part >= factCoverage {
 			good = append(good, l)
 		}
 	}
-	if len(good) < factVoxels {
-		return 0, nil
+	if len(good) < max(band, factVoxels) {
+		return math.NaN(), nil
 	}
 	middle := good[len(good)/2]
 	from, to := max(0, middle-factChannels/2), min(c.Grid.Count, middle+factChannels/2)
@@ -87,18 +87,22 @@ func (c *Cube) errorRatio(ctx context.Context, cells []cell, band int) (float64,
 		if l >= middle-band/2 && l < middle+band-band/2 {
 			_, own := a.sum(l)
 			if own != own {
-				return 0, nil
+				return own, nil // some channel of the band is not good
 			}
 			weights[l] = 1
 			naive += own
 		}
 	}
-	v, err := c.propagate(ctx, a, [][]float64{weights})
+	if band > 0 {
+		v, err := c.variancesOf(ctx, a, [][]float64{weights})
+		if err != nil {
+			return 0, err
+		}
+		return math.Sqrt(v[0] / naive), nil
+	}
+	v, err := c.propagate(ctx, a, nil)
 	if err != nil {
 		return 0, err
-	}
-	if band > 0 {
-		return math.Sqrt(v.sums[0] / naive), nil
 	}
 	var ratios []float64
 	for l := from; l < to; l++ {

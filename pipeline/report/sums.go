@@ -50,11 +50,15 @@ func (p *page) addSums(ctx context.Context, cubePath string, places []place) err
 			if i == len(p.Sums) {
 				p.Sums = append(p.Sums, sumView{What: f.What})
 			}
+			if math.IsNaN(f.Ratio) {
+				p.Sums[i].Ratios = append(p.Sums[i].Ratios, "too few good voxels")
+				continue
+			}
 			p.Sums[i].Ratios = append(p.Sums[i].Ratios, fmt.Sprintf("%+.1f %%", 100*(f.Ratio-1)))
 			least, most = min(least, f.Ratio), max(most, f.Ratio)
 		}
 	}
-	if len(p.Sums) > 0 {
+	if most >= least {
 		p.SumsNote = sumsNote(least, most)
 	}
 	return nil
@@ -63,10 +67,13 @@ func (p *page) addSums(ctx context.Context, cubePath string, places []place) err
 // sumsNote says it in words.
 func sumsNote(least, most float64) string {
 	text := "Voxels share pixels, and decoding couples the elements of a pixel. The root of the sum of VARIANCE, which takes voxels for independent, is therefore not the error of a sum over voxels. "
+	const slight = 0.005 // what the table would round to 0 or nearly
 	switch {
-	case least >= 1:
+	case most <= 1+slight && least >= 1-slight:
+		text += "In the sums below it happens to be right."
+	case least >= 1-slight:
 		text += fmt.Sprintf("In the sums below it is too small, by up to %.0f %% of itself.", 100*(most-1))
-	case most <= 1:
+	case most <= 1+slight:
 		text += fmt.Sprintf("In the sums below it is too large, by up to %.0f %% of itself.", 100*(1-least))
 	default:
 		text += fmt.Sprintf("In the sums below it is too small by up to %.0f %% of itself, or too large by up to %.0f %%.", 100*(most-1), 100*(1-least))
