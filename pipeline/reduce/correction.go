@@ -25,3 +25,19 @@ func noCorrection(steps int) *correction {
 	}
 	return c
 }
+
+// of is what is done to the frame of a step; nothing if c is nil.
+func (c *correction) of(step int) (factor, offset, variance float64) {
+	if c == nil {
+		return 1, 0, 0
+	}
+	return c.factor[step], c.offset[step], c.variance[step]
+}
+
+// leakFactor is leak; 1 if c is nil.
+func (c *correction) leakFactor() float64 {
+	if c == nil {
+		return 1
+	}
+	return c.leak
+}

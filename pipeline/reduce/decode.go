@@ -19,13 +19,8 @@ type decoder struct {
 	// field order, and of the dark ones.
 	elementColumns, darkColumns []int
 	k                           float64
-	// weight[i] is 1/frames of slot i: the photon noise of a mean. A lost slot
-	// has 0 and is named in lost.
-	weight []float64
-	lost   []int
-	// slotWeight is the sum of weight: how many samples' noise a sum over the
-	// slots holds.
-	slotWeight float64
+	// slots says how the frames of a code row make its sample.
+	scale slotScale
 	// quietSum is, by code column, the variance of a decode of dark samples in
 	// units of one's; nil where all columns have the same.
 	quietSum []float64
@@ -35,13 +30,14 @@ type decoder struct {
 	neighbours *neighbourTerm
 }
 
-// sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w.
+// sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w,
+// those of noise without light.
 func (d *decoder) sumQuiet() {
 	code := d.code.Code()
 	open, closed := code.InverseEntries()
 	d.quietSum = make([]float64, d.slots)
 	for j := range d.quietSum {
-		for i, weight := range d.weight {
+		for i, weight := range d.scale.quiet {
 			entry := closed
 			if code.Bit(i, j) == 1 {
 				entry = open
@@ -54,7 +50,8 @@ func (d *decoder) sumQuiet() {
 // decodeWorker is the scratch memory of one worker.
 type decodeWorker struct {
 	samples, decoded, variance, smooth []float32
-	sum, square                        []float64
+	base                               []float32
+	sum, square, drift                 []float64
 	size, slope                        []float32 // of the neighbour term
 }
 
@@ -62,7 +59,7 @@ func (d *decoder) newWorker() *decodeWorker {
 	n := d.block()
 	w := &decodeWorker{
 		samples: make([]float32, d.slots*n), decoded: make([]float32, d.slots*n),
-		sum: make([]float64, n), square: make([]float64, n),
+		base: make([]float32, n), sum: make([]float64, n), square: make([]float64, n), drift: make([]float64, n),
 		size: make([]float32, n), slope: make([]float32, n),
 	}
 	if !d.code.VarianceUniform() {
@@ -132,27 +129,50 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) dark
 	return d.chi2(w, out, flags, x0, n)
 }
 
-// load copies a block of all slots, less its bias and level, into the worker's
-// memory, and sums over the slots what the variances need. The bias is taken
-// off before the sums are: the level's light has photon noise as well.
+// load copies a block of all slots, less its bias, dark current, level and all-off
+// light, into the worker's memory, and sums over the slots what the variances need.
+// The bias is taken off before the sums are: the level's light has photon noise as
+// well. Bias, dark and offset were in the frames before their factors were applied and
+// the all-off light is that of a corrected frame, so that
+//
+//	sample = mean(factor raw) - gain base - shift - off
 func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 	clear(w.sum[:n])
 	clear(w.square[:n])
-	base := s.base[at : at+n]
+	clear(w.drift[:n])
+	base, off := s.base[at:at+n], s.off[at:at+n]
+	both := w.base[:n]
+	for p, v := range base {
+		both[p] = v + off[p]
+	}
 	for i := range d.slots {
-		if d.weight[i] == 0 {
+		if d.scale.isLost(i) {
 			continue
 		}
 		row := w.samples[i*n : (i+1)*n]
 		raw := s.slot(i)[at : at+n]
-		weight := d.weight[i]
-		for p, v := range raw {
-			net := v - base[p]
-			row[p] = net
-			w.sum[p] += weight * float64(net)
+		weight := d.scale.light[i]
+		if gain, shift := float32(d.scale.gain[i]), float32(d.scale.shift[i]); gain == 1 && shift == 0 {
+			for p, v := range raw {
+				net := v - both[p]
+				row[p] = net
+				w.sum[p] += weight * float64(net)
+			}
+		} else {
+			for p, v := range raw {
+				net := v - gain*base[p] - shift - off[p]
+				row[p] = net
+				w.sum[p] += weight * float64(net)
+			}
+		}
+		if u := d.scale.uncertain[i]; u > 0 {
+			for p, net := range row {
+				light := float64(net + off[p])
+				w.drift[p] += u * light * light
+			}
 		}
 	}
-	if len(d.lost) > 0 {
+	if len(d.scale.lost) > 0 {
 		d.fillLost(w, n)
 	}
 }
@@ -161,33 +181,35 @@ func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 // by is as uncertain as one slot's light differs from another's: square keeps
 // that variance, which goes into the pixel's.
 func (d *decoder) fillLost(w *decodeWorker, n int) {
-	there := float64(d.slots - len(d.lost))
+	there := float64(d.slots - len(d.scale.lost))
 	for p := range n {
 		var sum, square float64
 		for i := range d.slots {
-			if d.weight[i] != 0 {
+			if !d.scale.isLost(i) {
 				v := float64(w.samples[i*n+p])
 				sum += v
 				square += v * v
 			}
 		}
 		mean := sum / max(1, there)
-		for _, i := range d.lost {
+		for _, i := range d.scale.lost {
 			w.samples[i*n+p] = float32(mean)
 		}
-		w.square[p] = float64(len(d.lost)) * max(0, square/max(1, there)-mean*mean)
+		w.square[p] = float64(len(d.scale.lost)) * max(0, square/max(1, there)-mean*mean)
 	}
 }
 
 // uniformVariance is 4/(v+1)^2 sum(s^2) for every column, with s^2 of each
-// sample from its unclipped value, plus the variance of the level, which is
-// common to all slots and decodes to 1/k of itself.
+// sample from its unclipped value, plus what the frames' factors are uncertain by, and
+// the variance of the level, which is common to all slots and decodes to 1/k of itself.
+// An error of a step's factor goes as its row of the inverse, +-2/(v+1), into the
+// columns.
 func (d *decoder) uniformVariance(dst []float32, w *decodeWorker, s *strip, at int, quiet []float64) {
 	_, closed := d.code.Code().InverseEntries()
 	for p := range dst {
-		dark := d.slotWeight * quiet[p]
-		light := (1 + d.photonExcess) * (w.sum[p] + d.slotWeight*float64(s.level[at+p]))
-		sum := max(dark+light, dark*varianceFloor) + w.square[p]
+		dark := d.scale.quietSum * quiet[p]
+		light := (1 + d.photonExcess) * (w.sum[p] + d.scale.lightSum*float64(s.level[at+p]))
+		sum := max(dark+light, dark*varianceFloor) + w.square[p] + w.drift[p]
 		dst[p] = float32(closed*closed*sum + float64(s.levelVariance[at+p])/(d.k*d.k))
 	}
 }
@@ -209,13 +231,14 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	for i := range d.slots {
 		row := w.variance[i*n : (i+1)*n]
 		for p := range row {
-			v := quiet[p] + (1+d.photonExcess)*(float64(row[p])+float64(s.level[at+p]))
-			row[p] = float32(d.weight[i] * v)
+			light := float64(row[p]) + float64(s.level[at+p])
+			v := d.scale.quiet[i]*quiet[p] + (1+d.photonExcess)*d.scale.light[i]*light
+			row[p] = float32(v + d.scale.uncertain[i]*light*light)
 		}
 	}
-	for _, i := range d.lost {
+	for _, i := range d.scale.lost {
 		for p := range n {
-			w.variance[i*n+p] = float32(w.square[p] / float64(len(d.lost)))
+			w.variance[i*n+p] = float32(w.square[p] / float64(len(d.scale.lost)))
 		}
 	}
 	copy(w.smooth, w.variance)
@@ -248,7 +271,7 @@ const smoothPixels = 7
 
 func (d *decoder) chi2(w *decodeWorker, out *decodedRow, flags []calib.Flag, x0, n int) darkChi2 {
 	var c darkChi2
-	if len(d.lost) > 0 {
+	if len(d.scale.lost) > 0 {
 		return c
 	}
 	for _, col := range d.darkColumns {

@@ -37,9 +37,11 @@ func newDecodeCase(t *testing.T, family hadamard.Family, v, columns int, frames 
 	}
 	slots := make([][]*exposure.Frame, v)
 	for i, n := range frames {
-		slots[i] = make([]*exposure.Frame, n)
+		for range n {
+			slots[i] = append(slots[i], new(exposure.Frame))
+		}
 	}
-	d.weight, d.slotWeight, d.lost = weights(slots)
+	d.scale = newSlotScale(slots, nil)
 	d.sumQuiet()
 	s := shape{columns: columns, slots: v}.newStrip(1)
 	s.y1, s.columns, s.quiet = 1, columns, [][]float64{make([]float64, columns)}
@@ -135,7 +137,7 @@ func (c *decodeCase) naive(p int) (decoded, variance []float64) {
 		for i := range v {
 			a, y := c.inverse.At(j, i), c.sample(i, p)
 			decoded[j] += a * y
-			variance[j] += a * a * c.decoder.weight[i] * (c.strip.quiet[0][p] + y + float64(c.strip.level[p]))
+			variance[j] += a * a * c.decoder.scale.quiet[i] * (c.strip.quiet[0][p] + y + float64(c.strip.level[p]))
 		}
 		variance[j] += float64(c.strip.levelVariance[p]) / (c.decoder.k * c.decoder.k)
 	}

@@ -194,13 +194,13 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 	if err != nil {
 		return nil, err
 	}
-	d := r.newDecoder(code, l.coded)
+	d := r.newDecoder(code, l.coded, nil)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return nil, err
 	}
 	return &sweep{
 		shape: s, heights: h, decoder: d, rectify: rectify, workers: r.opts.Workers,
-		reader:   r.newReader(l.coded, l.seconds, masterLampOff),
+		reader:   r.newReader(l.coded, l.seconds, masterLampOff, nil),
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
 		sink: func(ctx context.Context, out *outStrip) error {

@@ -144,21 +144,6 @@ func (r *roles) findMissing(seq *sequence.Sequence) {
 	}
 }
 
-// weights is 1/frames for each slot, 0 for a lost one, their sum, and which slots
-// are lost.
-func weights(slots [][]*exposure.Frame) (weight []float64, sum float64, lost []int) {
-	weight = make([]float64, len(slots))
-	for i, frames := range slots {
-		if n := len(frames); n > 0 {
-			weight[i] = 1 / float64(n)
-			sum += weight[i]
-		} else {
-			lost = append(lost, i)
-		}
-	}
-	return weight, sum, lost
-}
-
 // fillLedger puts what was measured into the ledger.
 func (r *roles) fillLedger(l product.Ledger, frames []*exposure.Frame, seq *sequence.Sequence, pixels int) {
 	for _, f := range frames {

@@ -48,10 +48,10 @@ func TestAssignWhole(t *testing.T) {
 	require.Empty(t, r.lost)
 	require.Empty(t, r.degraded)
 	require.Empty(t, r.warnings)
-	weight, sum, lost := weights(r.slots)
-	require.Empty(t, lost)
-	require.Equal(t, 0.5, weight[3])
-	require.InDelta(t, 7.5, sum, 1e-12)
+	scale := newSlotScale(r.slots, nil)
+	require.Empty(t, scale.lost)
+	require.Equal(t, 0.5, scale.quiet[3])
+	require.InDelta(t, 7.5, scale.quietSum, 1e-12)
 }
 
 // What is missing is said once, and graver where a whole kind is gone or a code row
@@ -78,10 +78,10 @@ func TestAssignMissing(t *testing.T) {
 	require.Contains(t, r.degraded[1], "all 5 dark frames are missing")
 	require.Contains(t, r.degraded[2], "dead pixels are not known")
 	require.Equal(t, []string{"1 of 20 bias frames are missing"}, r.warnings)
-	weight, _, lost := weights(r.slots)
-	require.Equal(t, []int{gone}, lost)
-	require.Zero(t, weight[gone])
-	require.Equal(t, 1.0, weight[single.Row])
+	scale := newSlotScale(r.slots, nil)
+	require.Equal(t, []int{gone}, scale.lost)
+	require.True(t, scale.isLost(gone))
+	require.Equal(t, 1.0, scale.quiet[single.Row])
 	// Who asks for no calibration misses none.
 	r, err = assign(seq, framesOf(seq, func(st sequence.Step) bool { return st.Kind == sequence.Science }), false)
 	require.NoError(t, err)

@@ -143,11 +143,14 @@ type reduction struct {
 	album   *exposure.Album
 	roles   *roles
 	masters *masters
-	schema  product.Schema
-	usage   *usage
-	cube    *fitsutil.Cube
-	shape   shape // of the products, once strips has begun
-	element *fitsutil.Cube
+	// correction is what is done to the science frames before they are decoded;
+	// nil for nothing.
+	correction *correction
+	schema     product.Schema
+	usage      *usage
+	cube       *fitsutil.Cube
+	shape      shape // of the products, once strips has begun
+	element    *fitsutil.Cube
 
 	optics    optics
 	report    product.Calibration
@@ -232,7 +235,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		columns: r.camera.Columns, rows: r.camera.Rows, slots: r.seq.V, elements: r.seq.N(),
 		elementCube: r.opts.Elements, cube: r.opts.Cube,
 	}
-	d := r.newDecoder(code, r.roles.slots)
+	d := r.newDecoder(code, r.roles.slots, r.correction)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return 0, err
 	}
@@ -256,7 +259,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	}
 	w := &sweep{
 		shape: s, heights: h, decoder: d, rectify: r.rectifier, elements: r.element, workers: r.opts.Workers,
-		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff),
+		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff, r.correction),
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
@@ -305,13 +308,13 @@ func (r *reduction) heldBytes() int64 {
 	return exposureBytes * int64(len(r.optics.pixel.Factor))
 }
 
-func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame) *decoder {
+// newDecoder decodes the frames of slots, corrected so; nil for uncorrected ones.
+func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame, c *correction) *decoder {
 	d := &decoder{
 		code: hadamard.NewDecoder(code), columns: r.camera.Columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
-		k: float64(code.K()), photonExcess: r.camera.PhotonExcess,
+		k: float64(code.K()), photonExcess: r.camera.PhotonExcess, scale: newSlotScale(slots, c),
 	}
-	d.weight, d.slotWeight, d.lost = weights(slots)
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()
 	}
@@ -333,10 +336,11 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 }
 
 // newReader reads the frames of slots, exposed so long, whose light without any
-// open mirror is in master dim.
-func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim int) *stripReader {
+// open mirror is in master dim, and corrects them so.
+func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim int, c *correction) *stripReader {
 	return &stripReader{
-		camera: r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
+		correction: c,
+		camera:     r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
 		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
 	}
 }

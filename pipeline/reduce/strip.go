@@ -17,9 +17,10 @@ type strip struct {
 	y0, y1, columns int
 	raw             []float32    // [slot][row][column]
 	flags           []calib.Flag // [row][column]
-	base            []float32    // bias and level together
+	base            []float32    // bias and dark current of an exposure
+	off             []float32    // all-off light to be taken off it
 	level           []float32    // dark current and all-off light of an exposure
-	levelVariance   []float32    // of base
+	levelVariance   []float32    // of base and off
 	quiet           [][]float64  // [row][column] variance without light
 	planes          *elementPlanes
 }
@@ -62,6 +63,9 @@ type stripReader struct {
 	// that comes without any open mirror: masterOff or masterLampOff.
 	seconds float64
 	dim     int
+	// correction is what is done to the frames; nil for nothing.
+	correction *correction
+
 	workers int
 	scratch []exposure.Scratch
 	sums    [][]float32 // by worker, for slots of several frames
@@ -87,7 +91,8 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 	})
 }
 
-// readSlot puts the mean of a slot's frames into dst; nothing for a lost one.
+// readSlot puts the mean of a slot's frames, each times its factor, into dst; nothing
+// for a lost one.
 func (r *stripReader) readSlot(dst []float32, frames []*exposure.Frame, y0, y1, worker int, mark exposure.Marked) error {
 	for i, f := range frames {
 		into := dst
@@ -103,11 +108,8 @@ func (r *stripReader) readSlot(dst []float32, frames []*exposure.Frame, y0, y1, 
 		if err := r.album.Done(f); err != nil {
 			return err
 		}
-		if i > 0 {
-			for p, v := range into {
-				dst[p] += v
-			}
-		}
+		factor, _, _ := r.correction.of(f.Step)
+		accumulate(dst, into, float32(factor), i == 0)
 	}
 	if n := float32(len(frames)); n > 1 {
 		for p := range dst {
@@ -117,34 +119,43 @@ func (r *stripReader) readSlot(dst []float32, frames []*exposure.Frame, y0, y1, 
 	return nil
 }
 
-func (r *stripReader) readMasters(s *strip, n int) error {
-	s.base, s.level, s.levelVariance = s.base[:n], s.level[:n], s.levelVariance[:n]
-	s.flags = s.flags[:n]
-	rows := func(i int, dst []float32) error { return r.masters.images[i].ReadRows(dst, s.y0, s.y1) }
-	if err := rows(masterBad, s.base); err != nil {
-		return err
+// accumulate adds factor times src to dst; first it is all of dst. The two may be the
+// same memory.
+func accumulate(dst, src []float32, factor float32, first bool) {
+	switch {
+	case !first:
+		for p, v := range src {
+			dst[p] += factor * v
+		}
+	case factor != 1 || &dst[0] != &src[0]:
+		for p, v := range src {
+			dst[p] = factor * v
+		}
 	}
-	for p, v := range s.base {
+}
+
+func (r *stripReader) readMasters(s *strip, n int) error {
+	s.base, s.off, s.level, s.levelVariance = s.base[:n], s.off[:n], s.level[:n], s.levelVariance[:n]
+	s.flags = s.flags[:n]
+	for _, m := range []struct {
+		master int
+		dst    []float32
+	}{{masterBad, s.off}, {masterDark, s.level}, {masterBias, s.base}, {masterVariance, s.levelVariance}} {
+		if err := r.masters.images[m.master].ReadRows(m.dst, s.y0, s.y1); err != nil {
+			return err
+		}
+	}
+	for p, v := range s.off {
 		s.flags[p] = calib.Flag(v)
 	}
-	if err := rows(masterDark, s.base); err != nil {
+	if err := r.masters.images[r.dim].ReadRows(s.off, s.y0, s.y1); err != nil {
 		return err
 	}
-	if err := rows(r.dim, s.level); err != nil {
-		return err
-	}
-	seconds := float32(r.seconds)
-	for p := range s.level {
-		s.level[p] = (s.level[p] + s.base[p]) * seconds
-	}
-	if err := rows(masterVariance, s.levelVariance); err != nil {
-		return err
-	}
-	if err := rows(masterBias, s.base); err != nil {
-		return err
-	}
-	for p := range s.base {
-		s.base[p] += s.level[p]
+	seconds, leak := float32(r.seconds), float32(r.correction.leakFactor())
+	for p, rate := range s.level {
+		dark, off := rate*seconds, s.off[p]*seconds*leak
+		s.base[p] += dark
+		s.off[p], s.level[p] = off, off+dark
 	}
 	return nil
 }
@@ -154,7 +165,7 @@ func (s shape) newStrip(h int) *strip {
 	n := h * s.columns
 	st := &strip{
 		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n),
-		base: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
+		base: make([]float32, n), off: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
 	}
 	return st
 }

@@ -123,7 +123,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		return err
 	}
 	if w.elements != nil {
-		if len(w.decoder.lost) > 0 {
+		if len(w.decoder.scale.lost) > 0 {
 			for i := range s.flags {
 				s.flags[i] |= product.FlagLost
 			}
@@ -287,7 +287,7 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
 		return err
 	}
-	if len(w.decoder.lost) > 0 {
+	if len(w.decoder.scale.lost) > 0 {
 		for i, f := range w.out.flags {
 			if f&product.FlagNoData == 0 {
 				w.out.flags[i] |= product.FlagLost
