@@ -96,7 +96,8 @@ func (r *reduction) plannedTimes() []float64 {
 }
 
 // freeScale is the standard deviation of a measurement's unknown scale: so large that
-// nothing of it is believed, so small that rounding does no harm.
+// nothing of it is believed, so small that rounding does no harm. Another scale of c
+// moves e by multiples of 1+e.
 const freeScale = 10.0
 
 // relative is an independent measurement of c by frame, on any scale; error is its
@@ -139,7 +140,7 @@ func (b *belief) learn(m *relative) error {
 			gain.Set(i, a, b.covariance.At(i, k))
 		}
 		for c := a; c < len(frames); c++ {
-			system.SetSym(a, c, b.covariance.At(k, frames[c])+freeScale*freeScale)
+			system.SetSym(a, c, b.covariance.At(k, frames[c])+freeScale*freeScale*(1+e[a])*(1+e[c]))
 		}
 		system.SetSym(a, a, system.At(a, a)+err[a]*err[a])
 	}
@@ -176,7 +177,7 @@ func (b *belief) compare(m *relative) (chi2 float64, dof int, err error) {
 	for a, k := range frames {
 		off.SetVec(a, e[a]-b.mean[k])
 		for c := a; c < len(frames); c++ {
-			system.SetSym(a, c, b.covariance.At(k, frames[c])+freeScale*freeScale)
+			system.SetSym(a, c, b.covariance.At(k, frames[c])+freeScale*freeScale*(1+e[a])*(1+e[c]))
 		}
 		system.SetSym(a, a, system.At(a, a)+sigma[a]*sigma[a])
 	}

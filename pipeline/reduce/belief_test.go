@@ -59,9 +59,8 @@ func TestBeliefLearns(t *testing.T) {
 	require.NoError(t, once.learn(m))
 	once.normalise()
 	twice.normalise()
-	// To first order in e: the scale is free, and the prior draws it to another place.
-	require.InDeltaSlice(t, once.mean, twice.mean, 2e-4)
-	require.InDeltaSlice(t, once.errors(), twice.errors(), 2e-5)
+	require.InDeltaSlice(t, once.mean, twice.mean, 1e-6)
+	require.InDeltaSlice(t, once.errors(), twice.errors(), 1e-6)
 }
 
 // A frame that was not measured follows the trend that the others show.
