@@ -30,21 +30,20 @@ func (o *optics) neighbourTerm(d *decoder) (*neighbourTerm, error) {
 	return &neighbourTerm{pairs: pairs, geometry: o.geometry, term: o.neighbour}, nil
 }
 
-// correct works on the n pixels of row y from column x0 on. The size of the term
-// is linear in the wavelength, and so nearly linear over the elements of a pixel.
-func (t *neighbourTerm) correct(w *decodeWorker, x0, y, n int) {
+// sizes fills in the term of the n pixels of row y from column x0 on.
+func (t *neighbourTerm) sizes(size, slope []float32, x0, y, n int) {
 	for p := range n {
-		w.size[p], w.slope[p] = t.local(x0+p, y)
+		size[p], slope[p] = t.at(x0+p, y)
 	}
-	t.pairs.Correct(w.decoded, w.size, w.slope, n, n)
 }
 
-// local is the size of the term at a pixel, in the middle of the field, and its slope
-// by element.
-func (t *neighbourTerm) local(x, y int) (size, slope float32) {
-	middle := t.geometry.J_c
-	row := float64(y) - t.geometry.TraceShift(float64(x))
-	below, _ := t.term.At(t.geometry.Wavelength(float64(x), middle-0.5, row))
-	above, _ := t.term.At(t.geometry.Wavelength(float64(x), middle+0.5, row))
+// at is the term in the middle of a pixel's elements, and its slope from one to the
+// next. The size of the term is linear in the wavelength, and so nearly linear over the
+// elements of a pixel.
+func (t *neighbourTerm) at(column, y int) (size, slope float32) {
+	middle, x := t.geometry.J_c, float64(column)
+	row := float64(y) - t.geometry.TraceShift(x)
+	below, _ := t.term.At(t.geometry.Wavelength(x, middle-0.5, row))
+	above, _ := t.term.At(t.geometry.Wavelength(x, middle+0.5, row))
 	return float32((below + above) / 2), float32(above - below)
 }

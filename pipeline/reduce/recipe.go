@@ -124,11 +124,11 @@ func (r *Recipe) check(doc *config.Doc) error {
 		use string
 	}{
 		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
-		{"repair", r.Repair.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
-	c.That(r.Throughput.Use == useAuto || r.Throughput.Use == useOff, "throughput.use", "%q is unknown; use auto or off", r.Throughput.Use)
+	c.OneOf("throughput.use", r.Throughput.Use, useAuto, useOff)
+	c.OneOf("repair.use", r.Repair.Use, useAuto, useOff)
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)

@@ -145,7 +145,7 @@ func (r *reduction) sampleNeighbour(code *hadamard.Code) (func(y []float32, pixe
 			fillMean(samples, lost, v, n)
 			d.code.Decode(decoded, samples, n, n)
 			for p, at := range pixels[p0 : p0+n] {
-				size[p], slope[p] = term.local(at.x, at.y)
+				size[p], slope[p] = term.at(at.x, at.y)
 			}
 			term.pairs.Correct(decoded, size, slope, n, n)
 			d.code.Predict(samples, decoded, n, n)
