@@ -236,6 +236,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		elementCube: r.opts.Elements, cube: r.opts.Cube,
 	}
 	d := r.newDecoder(code, r.roles.slots, r.correction)
+	r.scienceRepair(d)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return 0, err
 	}
@@ -267,11 +268,13 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	if s.cube {
 		w.pixelVariance = r.writePixelVariance
 	}
+	w.reader.restore = d.repair != nil
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
 	var flags int16
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
 }
@@ -342,6 +345,7 @@ func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim in
 		correction: c,
 		camera:     r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
 		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+		struck: make([][]struckSample, r.opts.Workers),
 	}
 }
 
