@@ -47,6 +47,7 @@ func checks() []check {
 		apertures(),
 		lineMaps(),
 		readNoiseGain(),
+		cosmicSingle(),
 		falseAlarms(),
 	}
 }
