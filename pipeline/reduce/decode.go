@@ -1,9 +1,6 @@
 package reduce
 
-import (
-	"mirrorloom/calib"
-	"mirrorloom/hadamard"
-)
+import "mirrorloom/hadamard"
 
 // blockPixels is the number of pixels decoded together: a block of all slots
 // and its result stay in the second-level cache (2 x 127 x 256 floats are 260
@@ -28,6 +25,8 @@ type decoder struct {
 	photonExcess float64
 	// neighbours takes out what open neighbours lend each other; nil for nothing.
 	neighbours *neighbourTerm
+	// repair restores samples from the dark columns; nil for nothing.
+	repair *repair
 }
 
 // sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w,
@@ -53,6 +52,12 @@ type decodeWorker struct {
 	base                               []float32
 	sum, square, drift                 []float64
 	size, slope                        []float32 // of the neighbour term
+	free                               []float32 // a block freed of that term
+	missing                            []float32 // what lost rows lack, [row][pixel]
+	growth                             []float64 // of variance by restored samples
+	hits                               hits
+	darkSum, darkSquare, darkVariance  []float64 // of each pixel's dark decodes
+	residual, projected                []float64 // of one pixel: dark decodes, by step
 }
 
 func (d *decoder) newWorker() *decodeWorker {
@@ -60,7 +65,14 @@ func (d *decoder) newWorker() *decodeWorker {
 	w := &decodeWorker{
 		samples: make([]float32, d.slots*n), decoded: make([]float32, d.slots*n),
 		base: make([]float32, n), sum: make([]float64, n), square: make([]float64, n), drift: make([]float64, n),
-		size: make([]float32, n), slope: make([]float32, n),
+		size: make([]float32, n), slope: make([]float32, n), growth: make([]float64, n),
+		darkSum: make([]float64, n), darkSquare: make([]float64, n), darkVariance: make([]float64, n), projected: make([]float64, d.slots),
+	}
+	if d.repair.restores() {
+		w.missing = make([]float32, len(d.scale.lost)*n)
+		if d.neighbours != nil {
+			w.free = make([]float32, d.slots*n)
+		}
 	}
 	if !d.code.VarianceUniform() {
 		w.variance, w.smooth = make([]float32, d.slots*n), make([]float32, d.slots*n)
@@ -79,35 +91,16 @@ func (d *decoder) block() int {
 
 func (d *decoder) blocks() int { return (d.columns + d.block() - 1) / d.block() }
 
-// darkChi2 sums, over dark columns and good pixels, squared decodes and their
-// variances, and counts them. The sums are kept apart because a variance that was
-// estimated from few electrons scatters: the mean of squares over such variances is
-// above 1 though all is well, the ratio of the sums is not.
-type darkChi2 struct {
-	square, variance float64
-	terms            int
-}
-
-func (c *darkChi2) add(o darkChi2) {
-	c.square += o.square
-	c.variance += o.variance
-	c.terms += o.terms
-}
-
 // run decodes block b of row y into out and into the element cube's planes, if
-// there are any.
-func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) darkChi2 {
+// there are any, and adds to the figures of the row.
+func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *blockQuality) {
 	x0 := b * d.block()
 	x1 := min(x0+d.block(), d.columns)
 	n := x1 - x0
 	at := (y-s.y0)*d.columns + x0
-	flags := s.flags[at : at+n]
 	quiet := s.quiet[y-s.y0][x0:x1]
 	d.load(w, s, at, n)
-	d.code.Decode(w.decoded, w.samples, n, n)
-	if d.neighbours != nil {
-		d.neighbours.correct(w, x0, y, n)
-	}
+	q.restored = d.decode(w, s, at, n, x0, y)
 	uniform := d.code.VarianceUniform()
 	if uniform {
 		d.uniformVariance(out.variance[0][x0:x1], w, s, at, quiet)
@@ -120,13 +113,39 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) dark
 			copy(out.variance[j][x0:x1], w.variance[col*n:(col+1)*n])
 		}
 	}
-	copy(out.flags[x0:x1], flags)
+	copy(out.flags[x0:x1], s.flags[at:at+n])
 	for p, v := range s.levelVariance[at : at+n] {
 		out.common[x0+p] = float32(float64(v) / (d.k * d.k))
 		out.unlit[x0+p] = float32(quiet[p] + (1+d.photonExcess)*float64(s.level[at+p]))
 	}
 	s.keep(w, at, n, out, x0, uniform)
-	return d.chi2(w, out, flags, x0, n)
+	d.judge(w, out, x0, n, q)
+}
+
+// decode turns the loaded block into columns, restores what is missing and takes out
+// the neighbour term. It gives the number of restored samples.
+func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int) (restored int) {
+	d.code.Decode(w.decoded, w.samples, n, n)
+	if d.repair != nil {
+		d.gatherHits(w, n)
+		for p := range w.growth {
+			w.growth[p] = 1
+		}
+	}
+	if d.neighbours != nil {
+		d.neighbours.sizes(w.size, w.slope, x0, y, n)
+	}
+	switch {
+	case d.repair.restores():
+		d.restoreLost(w, n)
+		restored = len(d.scale.lost) * n
+	case d.neighbours != nil:
+		d.neighbours.pairs.Correct(w.decoded, w.size, w.slope, n, n)
+	}
+	if d.repair != nil {
+		restored += d.restoreHits(w, s, at, n, x0, y)
+	}
+	return restored
 }
 
 // load copies a block of all slots, less its bias, dark current, level and all-off
@@ -172,6 +191,9 @@ func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 			}
 		}
 	}
+	if d.repair != nil {
+		d.collectHits(w, s, at, n)
+	}
 	if len(d.scale.lost) > 0 {
 		d.fillLost(w, n)
 	}
@@ -195,6 +217,9 @@ func (d *decoder) fillLost(w *decodeWorker, n int) {
 		for _, i := range d.scale.lost {
 			w.samples[i*n+p] = float32(mean)
 		}
+		if d.repair.restores() {
+			continue // the variance grows by what is known of the restoration
+		}
 		w.square[p] = float64(len(d.scale.lost)) * max(0, square/max(1, there)-mean*mean)
 	}
 }
@@ -210,8 +235,22 @@ func (d *decoder) uniformVariance(dst []float32, w *decodeWorker, s *strip, at i
 		dark := d.scale.quietSum * quiet[p]
 		light := (1 + d.photonExcess) * (w.sum[p] + d.scale.lightSum*float64(s.level[at+p]))
 		sum := max(dark+light, dark*varianceFloor) + w.square[p] + w.drift[p]
-		dst[p] = float32(closed*closed*sum + float64(s.levelVariance[at+p])/(d.k*d.k))
+		dst[p] = float32(closed*closed*sum*d.grown(w, p) + float64(s.levelVariance[at+p])/(d.k*d.k))
 	}
+}
+
+// grown is what restoration multiplies the mean variance of a pixel's elements by: that
+// of its own samples and of those of lost rows together, or of the latter alone. The
+// variance of a plain decode counts no noise of lost rows; that by which a pixel's own
+// growth is reckoned does.
+func (d *decoder) grown(w *decodeWorker, p int) float64 {
+	switch {
+	case d.repair == nil:
+		return 1
+	case w.growth[p] == 1:
+		return d.repair.meanRatio
+	}
+	return w.growth[p] * float64(d.slots) / float64(d.slots-len(d.scale.lost))
 }
 
 // varianceFloor bounds the sum of variances from below, in units of that of
@@ -236,9 +275,11 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 			row[p] = float32(v + d.scale.uncertain[i]*light*light)
 		}
 	}
-	for _, i := range d.scale.lost {
-		for p := range n {
-			w.variance[i*n+p] = float32(w.square[p] / float64(len(d.scale.lost)))
+	if !d.repair.restores() {
+		for _, i := range d.scale.lost {
+			for p := range n {
+				w.variance[i*n+p] = float32(w.square[p] / float64(len(d.scale.lost)))
+			}
 		}
 	}
 	copy(w.smooth, w.variance)
@@ -247,7 +288,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 		row := w.variance[j*n : (j+1)*n]
 		for p, v := range row {
 			floor := varianceFloor * quiet[p] * d.quietSum[j]
-			row[p] = float32(max(float64(v), floor) + float64(s.levelVariance[at+p])/(d.k*d.k))
+			row[p] = float32(max(float64(v), floor)*d.grown(w, p) + float64(s.levelVariance[at+p])/(d.k*d.k))
 		}
 	}
 }
@@ -268,25 +309,3 @@ func smoothRow(dst, src []float32) {
 // smoothPixels weighs two needs: narrow enough to follow a line, wide enough
 // that a sample's own noise is a small part of its variance.
 const smoothPixels = 7
-
-func (d *decoder) chi2(w *decodeWorker, out *decodedRow, flags []calib.Flag, x0, n int) darkChi2 {
-	var c darkChi2
-	if len(d.scale.lost) > 0 {
-		return c
-	}
-	for _, col := range d.darkColumns {
-		row := w.decoded[col*n : (col+1)*n]
-		variance := out.variance[0][x0 : x0+n]
-		if !d.code.VarianceUniform() {
-			variance = w.variance[col*n : (col+1)*n]
-		}
-		for p, v := range row {
-			if flags[p] == 0 {
-				c.square += float64(v) * float64(v)
-				c.variance += float64(variance[p])
-				c.terms++
-			}
-		}
-	}
-	return c
-}

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math"
 	"slices"
 	"strings"
 
@@ -12,6 +13,7 @@ import (
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/parallel"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -71,8 +73,8 @@ func (r *reduction) noFlat(why error) {
 }
 
 // flatLacks says what the coded cycle lacks; empty if nothing. A cycle without one of
-// its rows cannot be decoded: the lamp's light of all elements would be missing from
-// each.
+// its rows cannot be decoded unless the dark columns restore it: the lamp's light of all
+// elements would be missing from each.
 func (r *reduction) flatLacks() string {
 	const off = "or say `flat: {use: off}` in the recipe"
 	l := &r.roles.calibration.lamps
@@ -80,7 +82,7 @@ func (r *reduction) flatLacks() string {
 	switch {
 	case l.coded == nil:
 		return "there is no coded lamp frame; plan or repeat a coded flat cycle, " + off
-	case len(lost) == 0:
+	case len(lost) == 0 || r.lampRestores(lost):
 		return ""
 	}
 	have := r.seq.V - len(lost)
@@ -90,6 +92,22 @@ func (r *reduction) flatLacks() string {
 		return fmt.Sprintf("%d of %d coded lamp frames are there; repeat the cycle, %s", have, r.seq.V, off)
 	}
 	return fmt.Sprintf("%d of %d coded lamp frames are there; repeat step %s, %s", have, r.seq.V, strings.Join(steps, ", "), off)
+}
+
+// lampRestores tells whether lost rows of the coded cycle can be restored without more
+// noise than is tolerable, and says so.
+func (r *reduction) lampRestores(lost []int) bool {
+	code, err := r.code()
+	if err != nil {
+		return false // said when the cycle is decoded
+	}
+	l := &r.roles.calibration.lamps
+	p, lack := r.newRepair(r.newDecoder(code, l.coded, nil), l.off)
+	if lack != nil || math.Sqrt(p.lost.Growth) > troubledGrowth {
+		return false
+	}
+	r.warn("%d of %d coded lamp frames are missing: they are restored from the dark columns", len(lost), r.seq.V)
+	return true
 }
 
 // lampSteps names the flat steps that show rows of the code.
@@ -195,15 +213,21 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 		return nil, err
 	}
 	d := r.newDecoder(code, l.coded, nil)
+	d.repair, _ = r.newRepair(d, l.off)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return nil, err
 	}
+	reader := r.newReader(l.coded, l.seconds, masterLampOff, nil)
+	reader.restore = d.repair != nil
 	return &sweep{
 		shape: s, heights: h, decoder: d, rectify: rectify, workers: r.opts.Workers,
-		reader:   r.newReader(l.coded, l.seconds, masterLampOff, nil),
+		reader:   reader,
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
 		sink: func(ctx context.Context, out *outStrip) error {
+			for i := range out.flags { // restored light is as good as any
+				out.flags[i] &^= product.FlagRestored
+			}
 			groups := (s.elements + group - 1) / group
 			return parallel.Do(ctx, r.opts.Workers, groups, func(_, i int) error {
 				fit.AddStrip(out.y0, out.h, out.signal, out.variance, out.flags, i*group, min((i+1)*group, s.elements))

@@ -3,7 +3,6 @@ package reduce
 import (
 	"fmt"
 	"path/filepath"
-	"strings"
 
 	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/pair"
@@ -93,26 +92,6 @@ func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration boo
 		r.findMissing(seq)
 	}
 	return r, nil
-}
-
-// findLost lists the code rows that no frame shows.
-func (r *roles) findLost(seq *sequence.Sequence) {
-	for row, frames := range r.slots {
-		if len(frames) == 0 {
-			r.lost = append(r.lost, row)
-		}
-	}
-	if len(r.lost) == 0 {
-		return
-	}
-	var names []string
-	for _, i := range seq.StepsOf(sequence.Science) {
-		if len(r.slots[seq.Steps[i].Row]) == 0 {
-			r.missing = append(r.missing, seq.Steps[i].Step)
-			names = append(names, fmt.Sprint(seq.Steps[i].Step))
-		}
-	}
-	r.degraded = append(r.degraded, fmt.Sprintf("%d of %d code rows have no frame, so that every voxel is LOST; repeat step %s", len(r.lost), seq.V, strings.Join(names, ", ")))
 }
 
 // findMissing says which calibrations were planned and are not there at all.

@@ -86,6 +86,7 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"pair", r.pair},
 		{"prepare", r.prepare},
 		{"calibrate", r.calibrate},
+		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
 		{"finish", r.finish},
 	} {
@@ -152,7 +153,9 @@ type reduction struct {
 	shape      shape // of the products, once strips has begun
 	element    *fitsutil.Cube
 
-	optics    optics
+	optics optics
+	// through is what was found of the throughput; nil if it was not asked for.
+	through   *throughput
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
@@ -236,6 +239,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		elementCube: r.opts.Elements, cube: r.opts.Cube,
 	}
 	d := r.newDecoder(code, r.roles.slots, r.correction)
+	r.scienceRepair(d)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return 0, err
 	}
@@ -267,11 +271,13 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	if s.cube {
 		w.pixelVariance = r.writePixelVariance
 	}
+	w.reader.restore = d.repair != nil
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
 	var flags int16
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
 }
@@ -342,6 +348,7 @@ func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim in
 		correction: c,
 		camera:     r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
 		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+		struck: make([][]struckSample, r.opts.Workers),
 	}
 }
 
@@ -352,9 +359,10 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 		r.quality.WavelengthRMSPx = &a.RMSPx
 	}
 	r.quality.Lost = len(r.roles.missing)
+	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if len(r.roles.degraded) > 0 {

@@ -17,6 +17,7 @@ type strip struct {
 	y0, y1, columns int
 	raw             []float32    // [slot][row][column]
 	flags           []calib.Flag // [row][column]
+	struck          []calib.Flag // what is wrong with the pixel's struck samples, 0 without any
 	base            []float32    // bias and dark current of an exposure
 	off             []float32    // all-off light to be taken off it
 	level           []float32    // dark current and all-off light of an exposure
@@ -69,6 +70,9 @@ type stripReader struct {
 	workers int
 	scratch []exposure.Scratch
 	sums    [][]float32 // by worker, for slots of several frames
+	// restore: struck samples are marked one by one, rather than their pixel flagged.
+	restore bool
+	struck  [][]struckSample // by worker
 }
 
 // read fills s with rows y0..y1-1.
@@ -81,42 +85,57 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 		return err
 	}
 	var mu sync.Mutex
-	mark := func(flags []calib.Flag, x, y, w int) {
+	merge := func(flags []calib.Flag, x, y, w int) {
 		mu.Lock()
 		defer mu.Unlock()
 		r.camera.Merge(s.flags, y0, flags, x, y, w)
 	}
 	return parallel.Do(ctx, r.workers, len(r.slots), func(worker, i int) error {
-		return r.readSlot(s.slot(i), r.slots[i], y0, y1, worker, mark)
+		for n, f := range r.slots[i] {
+			if err := r.readFrame(s, i, n, f, worker, merge); err != nil {
+				return err
+			}
+			r.strike(s, i, worker, &mu)
+		}
+		divide(s.slot(i), len(r.slots[i]))
+		return nil
 	})
 }
 
-// readSlot puts the mean of a slot's frames, each times its factor, into dst; nothing
-// for a lost one.
-func (r *stripReader) readSlot(dst []float32, frames []*exposure.Frame, y0, y1, worker int, mark exposure.Marked) error {
-	for i, f := range frames {
-		into := dst
-		if i > 0 {
-			r.sums[worker] = slices.Grow(r.sums[worker][:0], len(dst))[:len(dst)]
-			into = r.sums[worker]
-		}
-		saturated, err := r.camera.Read(into, f.Image, y0, y1, &r.scratch[worker], mark)
-		if err != nil {
-			return err
-		}
-		f.Saturated += saturated
-		if err := r.album.Done(f); err != nil {
-			return err
-		}
-		factor, _, _ := r.correction.of(f.Step)
-		accumulate(dst, into, float32(factor), i == 0)
+// readFrame adds frame n of slot i, times its factor, to the slot.
+func (r *stripReader) readFrame(s *strip, i, n int, f *exposure.Frame, worker int, merge exposure.Marked) error {
+	dst := s.slot(i)
+	into := dst
+	if n > 0 {
+		r.sums[worker] = slices.Grow(r.sums[worker][:0], len(dst))[:len(dst)]
+		into = r.sums[worker]
 	}
-	if n := float32(len(frames)); n > 1 {
+	mark := merge
+	if r.restore {
+		mark = r.collectStruck(s, worker)
+	}
+	saturated, err := r.camera.Read(into, f.Image, s.y0, s.y1, &r.scratch[worker], mark)
+	if err != nil {
+		return err
+	}
+	f.Saturated += saturated
+	if r.restore {
+		if err := r.nearby(s, f, worker, mark); err != nil {
+			return err
+		}
+	}
+	factor, _, _ := r.correction.of(f.Step)
+	accumulate(dst, into, float32(factor), n == 0)
+	return r.album.Done(f)
+}
+
+// divide makes a sum of so many frames their mean.
+func divide(dst []float32, frames int) {
+	if n := float32(frames); n > 1 {
 		for p := range dst {
 			dst[p] /= n
 		}
 	}
-	return nil
 }
 
 // accumulate adds factor times src to dst; first it is all of dst. The two may be the
@@ -136,7 +155,8 @@ func accumulate(dst, src []float32, factor float32, first bool) {
 
 func (r *stripReader) readMasters(s *strip, n int) error {
 	s.base, s.off, s.level, s.levelVariance = s.base[:n], s.off[:n], s.level[:n], s.levelVariance[:n]
-	s.flags = s.flags[:n]
+	s.flags, s.struck = s.flags[:n], s.struck[:n]
+	clear(s.struck)
 	for _, m := range []struct {
 		master int
 		dst    []float32
@@ -164,7 +184,7 @@ func (r *stripReader) readMasters(s *strip, n int) error {
 func (s shape) newStrip(h int) *strip {
 	n := h * s.columns
 	st := &strip{
-		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n),
+		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n), struck: make([]calib.Flag, n),
 		base: make([]float32, n), off: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
 	}
 	return st

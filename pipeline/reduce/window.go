@@ -16,6 +16,16 @@ type decodedRow struct {
 	// was taken off all frames. unlit is the variance of a sample that no open mirror
 	// lights; it is filled in where variance differs between the elements.
 	common, unlit []float32
+	// measured is, by column, the mean square of the dark decodes in units of the
+	// variance of elements, unmeasured where flags forbid it; expected is that variance
+	// as the noise model has it, before the response is divided out.
+	measured, expected []float32
+	// pedestal is the mean of the dark decodes, where it is to be taken off, and level
+	// what was taken off.
+	pedestal, level []float32
+	// scale is the error scale, and applied that by which the variance is to be
+	// multiplied.
+	scale, applied []float32
 }
 
 func newDecodedRow(elements, variances, columns int) *decodedRow {
@@ -23,6 +33,9 @@ func newDecodedRow(elements, variances, columns int) *decodedRow {
 		signal: planes(elements, columns), variance: planes(variances, columns),
 		flags: make([]calib.Flag, columns), own: make([]calib.Flag, columns),
 		common: make([]float32, columns), unlit: make([]float32, columns),
+		measured: make([]float32, columns), expected: make([]float32, columns),
+		pedestal: make([]float32, columns), level: make([]float32, columns),
+		scale: make([]float32, columns), applied: make([]float32, columns),
 	}
 }
 
