@@ -44,6 +44,7 @@ func checks() []check {
 		enclosedFlux(),
 		seeds(),
 		readNoiseGain(),
+		falseAlarms(),
 	}
 }
 
