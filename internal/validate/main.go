@@ -43,6 +43,7 @@ func checks() []check {
 		faintNight(),
 		enclosedFlux(),
 		seeds(),
+		apertures(),
 		readNoiseGain(),
 		falseAlarms(),
 	}

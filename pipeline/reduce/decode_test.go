@@ -78,8 +78,10 @@ func (c *decodeCase) run() (*decodedRow, darkChi2) {
 	var chi2 darkChi2
 	w := c.decoder.newWorker()
 	for b := range c.decoder.blocks() {
-		got := c.decoder.run(w, c.strip, 0, b, out)
-		chi2.add(got)
+		var q blockQuality
+		q.steps = make([]float64, c.decoder.slots)
+		c.decoder.run(w, c.strip, 0, b, out, &q)
+		chi2.add(q.dark)
 	}
 	return out, chi2
 }

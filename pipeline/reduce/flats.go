@@ -13,6 +13,7 @@ import (
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/parallel"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -224,6 +225,9 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
 		sink: func(ctx context.Context, out *outStrip) error {
+			for i := range out.flags { // restored light is as good as any
+				out.flags[i] &^= product.FlagRestored
+			}
 			groups := (s.elements + group - 1) / group
 			return parallel.Do(ctx, r.opts.Workers, groups, func(_, i int) error {
 				fit.AddStrip(out.y0, out.h, out.signal, out.variance, out.flags, i*group, min((i+1)*group, s.elements))

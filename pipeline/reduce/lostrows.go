@@ -7,6 +7,7 @@ import (
 
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -89,4 +90,39 @@ func (r *roles) findLost(seq *sequence.Sequence) {
 			r.missing = append(r.missing, seq.Steps[i].Step)
 		}
 	}
+}
+
+// repairQuality puts what the dark columns told of a sweep into the figures.
+func (r *reduction) repairQuality(w *sweep) {
+	q := &r.quality
+	q.ResidualLight = r.residualLight(w.decoder)
+	if w.decoder.repair == nil {
+		return
+	}
+	if w.decoder.repair.restores() {
+		growth := math.Sqrt(w.decoder.repair.lost.Growth)
+		q.RestoredGrowth = &growth
+	}
+	if !w.decoder.scales() {
+		return
+	}
+	q.ErrorScale = errorScale(w.quality)
+	ratios := w.steps.ratios(w.decoder.repair.share, w.decoder.scale.quiet, w.decoder.scale.meanQuiet())
+	for _, i := range r.seq.StepsOf(sequence.Science) {
+		one := product.StepChi2{Step: r.seq.Steps[i].Step}
+		if v := ratios[r.seq.Steps[i].Row]; !math.IsNaN(v) {
+			one.Chi2 = &v
+		}
+		q.DarkChi2Steps = append(q.DarkChi2Steps, one)
+	}
+}
+
+func (r *reduction) residualLight(d *decoder) product.ResidualLight {
+	switch {
+	case len(r.roles.calibration.off) > 0:
+		return product.ByAllOff
+	case d.repair != nil && d.repair.pedestal && d.lostFlag() != product.FlagLost:
+		return product.ByDark
+	}
+	return product.NotTaken
 }

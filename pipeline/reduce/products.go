@@ -47,7 +47,7 @@ func (r *reduction) create(s shape) error {
 // judge turns flags that were set into reasons why the product is not whole.
 func (r *reduction) judge(flags int16) {
 	if flags&product.FlagSaturated != 0 {
-		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in some science frame, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
+		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in more science frames than can be restored, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
 	}
 }
 

@@ -45,7 +45,7 @@ func TestRecipeRefusals(t *testing.T) {
 		{"sky: {use: auto}", `sky.use: "auto" is not available in this version; use off`},
 		{"flux: {use: auto}", "flux.use"},
 		{"throughput: {use: auto}", "throughput.use"},
-		{"repair: {use: auto}", "repair.use"},
+		{"repair: {use: yes}", "repair.use"},
 		{"detector: {use: maybe}", "detector.use"},
 		{"detector: {use: auto, clip_sigma: 1}", "detector.clip_sigma"},
 		{"detector: {use: auto, hot_sigma: 2}", "detector.hot_sigma"},

@@ -274,6 +274,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	}
 	var flags int16
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
 }

@@ -21,6 +21,9 @@ type repair struct {
 	lost *hadamard.LostRows
 	// most is how many struck samples of a pixel are restored.
 	most int
+	// share is, by code row, the variance of its part in the dark decodes in units of a
+	// sample's; 0 for lost rows.
+	share []float64
 	// pedestal: there are no frames of the light without any open mirror, so that the
 	// mean of the dark decodes stands for it.
 	pedestal bool
@@ -38,6 +41,14 @@ func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedest
 	}
 	// Beyond a quarter, noise grows and singular sets are no longer rare.
 	p = &repair{restorer: checks.NewRestorer(), most: len(checks.Columns()) / 4, pedestal: pedestal, meanRatio: 1}
+	left, err := checks.WithoutRows(scale.lost)
+	if err != nil {
+		return nil, err
+	}
+	seen := left.Projector()
+	for i := range scale.quiet {
+		p.share = append(p.share, seen.At(i, i))
+	}
 	if p.lost, lack = p.restorer.Lost(scale.lost, scale.quiet); lack != nil || len(scale.lost) == 0 {
 		return p, lack
 	}
