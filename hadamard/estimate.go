@@ -2,175 +2,96 @@ package hadamard
 
 import (
 	"errors"
-	"math"
-	"sort"
 
 	"gonum.org/v1/gonum/mat"
 )
 
-// normalEquations are d = -H e + noise of covariance V, the checks' summed equations
-// for the unknowns e. H is measured: it holds noise whose eigenvalues reach to edge.
-type normalEquations struct {
-	h, v *mat.SymDense
-	d    []float64
-	edge float64
-}
-
-// normalEquations are those of the throughput: see Throughput.
-func (c *Checks) normalEquations(g *Gram) normalEquations {
-	v := c.code.v
-	light := g.light()
-	n := make([]float64, v)
-	for k := range n {
-		n[k] = g.noise[k] / float64(g.Pixels)
-	}
-	pnp := c.noiseOfChecks(n)
-	eq := normalEquations{h: mat.NewSymDense(v, nil), v: mat.NewSymDense(v, nil), d: make([]float64, v)}
-	pixels := float64(g.Pixels)
-	for i := range v {
-		for j := i; j < v; j++ {
-			p := c.projector.At(i, j)
-			eq.h.SetSym(i, j, p*light.At(i, j))
-			eq.v.SetSym(i, j, pnp.At(i, j)*light.At(i, j)+pixels*p*p*n[i]*n[j])
-		}
-		noise := pixels * n[i] * pnp.At(i, i) // of H's row i, squares summed
-		eq.v.SetSym(i, i, eq.v.At(i, i)+noise)
-		eq.edge = max(eq.edge, 2*math.Sqrt(noise))
-	}
-	for i := range v {
-		for j := range v {
-			eq.d[i] += eq.h.At(i, j)
-		}
-	}
-	return eq
-}
-
-// noiseOfChecks is P diag(n) P.
-func (c *Checks) noiseOfChecks(n []float64) *mat.SymDense {
-	out := mat.NewSymDense(len(n), nil)
-	if c.basis == nil {
-		return out
-	}
-	var weighted, inner mat.Dense
-	weighted.Apply(func(_, k int, x float64) float64 { return x * n[k] }, c.basis)
-	inner.Mul(&weighted, c.basis.T())
-	return congruent(c.basis.T(), symmetric(&inner))
-}
-
 var errNoCovariance = errors.New("the prior is no covariance matrix")
 
-// estimated is what the equations say of the unknowns.
+// estimated is what equations say of their unknowns.
 type estimated struct {
 	e         []float64
 	posterior *mat.SymDense
-	// directions is the trace of what the equations add to the prior's knowledge,
-	// tr((H S H + V)^-1 H S H): how many independent patterns of e they measure.
-	directions float64
+	// directions is, by kind of light, how many independent patterns of e are measured:
+	// its part of the trace of (H S H + V)^-1 H S H, what the equations add to the
+	// prior's knowledge.
+	directions []float64
 }
 
 // estimate solves the equations under the prior covariance s of e: the estimate
-// -S H (H S H + V)^-1 d and its error's covariance. Unknowns on which no equation
-// bears (their V is zero) follow the others by the prior alone.
-//
-// H holds the noise of its own measurement. Directions in which it is no more than
-// that, eigenvalues below the edge of a noise matrix's (twice the root of the squares
-// of a row: Wigner 1958, Ann. Math. 67, 325; negative ones among them), are taken as not
-// measured: with a wide prior they would be answered with noise.
-// V can have eigenvalues below zero where there are too few pixels: clipped too.
-func estimate(eq normalEquations, s *mat.SymDense) (*estimated, error) {
+// -S H (H S H + V)^-1 d and its error's covariance, H as measured says. Unknowns on
+// which no equation bears (their V is zero) follow the others by the prior alone.
+func estimate(eq *normalEquations, s *mat.SymDense) (*estimated, error) {
 	n := len(eq.d)
-	posterior := mat.NewSymDense(n, nil)
-	posterior.CopySym(s)
-	var active []int
-	for i := range n {
-		if eq.v.At(i, i) > 0 {
-			active = append(active, i)
-		}
-	}
-	e := make([]float64, n)
+	out := &estimated{e: make([]float64, n), posterior: mat.NewSymDense(n, nil), directions: make([]float64, n/eq.size)}
+	out.posterior.CopySym(s)
+	active := eq.active()
 	if len(active) == 0 {
-		return &estimated{e: e, posterior: posterior}, nil
+		return out, nil
 	}
-	m := len(active)
-	h, noise, d := mat.NewSymDense(m, nil), mat.NewSymDense(m, nil), mat.NewVecDense(m, nil)
-	prior := mat.NewDense(n, m, nil) // S between all unknowns and the active ones
-	for a, i := range active {
-		d.SetVec(a, -eq.d[i])
-		for b := a; b < m; b++ {
-			h.SetSym(a, b, eq.h.At(i, active[b]))
-			noise.SetSym(a, b, eq.v.At(i, active[b]))
-		}
-		for j := range n {
-			prior.Set(j, a, s.At(j, i))
-		}
+	h, noise := selected(eq.measured(), active, active), selected(eq.v, active, active)
+	var gain, total mat.Dense // S H of all unknowns, H S H
+	gain.Mul(selected(s, all(n), active), h)
+	total.Mul(h, selected(&gain, active, all(len(active))))
+	total.Add(&total, noise)
+	var factor mat.Cholesky
+	if !factor.Factorize(symmetric(&total)) {
+		return nil, errNoCovariance
 	}
-	h = clipped(h, eq.edge)
-	factor, gain, ok := factorize(prior, active, h, noise)
-	if !ok {
-		noise = clipped(noise, 0)
-		for a := range m {
-			noise.SetSym(a, a, noise.At(a, a)*(1+1e-6))
-		}
-		if factor, gain, ok = factorize(prior, active, h, noise); !ok {
-			return nil, errNoCovariance
-		}
-	}
-	var weights, change mat.Dense
+	var weights, change, share mat.Dense
 	if err := factor.SolveTo(&weights, gain.T()); err != nil && !isCondition(err) {
 		return nil, err
 	}
-	mat.NewVecDense(n, e).MulVec(weights.T(), d)
-	change.Mul(gain, &weights)
-	for i := range n {
-		for j := i; j < n; j++ {
-			posterior.SetSym(i, j, posterior.At(i, j)-(change.At(i, j)+change.At(j, i))/2)
-		}
-		if posterior.At(i, i) < 0 { // by rounding
-			posterior.SetSym(i, i, 0)
-		}
-	}
-	var share mat.Dense
 	if err := factor.SolveTo(&share, noise); err != nil && !isCondition(err) {
 		return nil, err
 	}
-	return &estimated{e: e, posterior: posterior, directions: float64(m) - mat.Trace(&share)}, nil
-}
-
-// factorize forms and factorises H S H + V; gain is S H of all unknowns.
-func factorize(prior *mat.Dense, active []int, h, noise *mat.SymDense) (*mat.Cholesky, *mat.Dense, bool) {
-	var gain, total mat.Dense
-	full := mat.DenseCopyOf(h) // products with a SymDense are ten times as slow
-	gain.Mul(prior, full)
-	rows := mat.NewDense(len(active), len(active), nil)
+	d := mat.NewVecDense(len(active), nil)
 	for a, i := range active {
-		rows.SetRow(a, gain.RawRowView(i))
+		d.SetVec(a, -eq.d[i])
+		out.directions[i/eq.size] += 1 - share.At(a, a)
 	}
-	total.Mul(full, rows)
-	system := symmetric(&total)
-	system.AddSym(system, noise)
-	var factor mat.Cholesky
-	ok := factor.Factorize(system)
-	return &factor, &gain, ok
+	mat.NewVecDense(n, out.e).MulVec(weights.T(), d)
+	change.Mul(&gain, &weights)
+	for i := range n {
+		for j := i; j < n; j++ {
+			x := s.At(i, j) - (change.At(i, j)+change.At(j, i))/2
+			if i == j {
+				x = max(0, x) // below by rounding
+			}
+			out.posterior.SetSym(i, j, x)
+		}
+	}
+	return out, nil
 }
 
-// clipped is a symmetric matrix with the eigenvalues up to an edge set to zero.
-func clipped(s *mat.SymDense, edge float64) *mat.SymDense {
-	n := s.SymmetricDim()
-	var eigen mat.EigenSym
-	if !eigen.Factorize(s, true) {
-		return mat.NewSymDense(n, nil) // nothing is measured
+// active are the unknowns on which the equations bear.
+func (eq *normalEquations) active() []int {
+	var list []int
+	for i := range eq.d {
+		if eq.v.At(i, i) > 0 {
+			list = append(list, i)
+		}
 	}
-	values := eigen.Values(nil)
-	first := sort.Search(n, func(i int) bool { return values[i] > edge })
-	if first == n {
-		return mat.NewSymDense(n, nil)
+	return list
+}
+
+// selected is the submatrix of some rows and columns.
+func selected(m mat.Matrix, rows, columns []int) *mat.Dense {
+	out := mat.NewDense(len(rows), len(columns), nil)
+	for a, i := range rows {
+		for b, j := range columns {
+			out.Set(a, b, m.At(i, j))
+		}
 	}
-	var vectors, scaled, full mat.Dense
-	eigen.VectorsTo(&vectors)
-	kept := vectors.Slice(0, n, first, n)
-	scaled.Apply(func(_, j int, x float64) float64 { return x * values[first+j] }, kept)
-	full.Mul(&scaled, kept.T())
-	return symmetric(&full)
+	return out
+}
+
+func all(n int) []int {
+	list := make([]int, n)
+	for i := range list {
+		list[i] = i
+	}
+	return list
 }
 
 // isCondition tells a warning of an ill-conditioned matrix from an error.

@@ -59,13 +59,14 @@ func (g *Gram) Add(y, s2 []float32, pixels, stride int, floor float32) {
 	buffer := make([]float64, v*min(pixels, gramPixels))
 	for p := 0; p < pixels; p += gramPixels {
 		n := min(gramPixels, pixels-p)
-		g.addBlock(buffer, y[p:], s2[p:], n, stride, floor)
+		g.addBlock(buffer, y[p:], s2[p:], pixelWeights(v, y[p:], s2[p:], n, stride, floor), stride)
 	}
 }
 
-func (g *Gram) addBlock(buffer []float64, y, s2 []float32, pixels, stride int, floor float32) {
-	v := g.V()
-	weights := pixelWeights(v, y, s2, pixels, stride, floor)
+// addBlock adds pixels of given weights; buffer is left with the readings times the roots
+// of the weights.
+func (g *Gram) addBlock(buffer []float64, y, s2 []float32, weights []float64, stride int) {
+	v, pixels := g.V(), len(weights)
 	for i := range v {
 		row, variances := y[i*stride:i*stride+pixels], s2[i*stride:i*stride+pixels]
 		out := buffer[i*pixels : (i+1)*pixels]

@@ -47,8 +47,8 @@ type Repair struct {
 	factor []float64
 }
 
-// smallestPivot: where a pivot of P_KK falls so far below its diagonal entry, which is
-// near g/v, the marks of the rows are dependent but for rounding.
+// smallestPivot: where a pivot of P_KK, whose entries are at most 1 and the diagonal ones
+// near g/v, falls so low, the marks of the rows are dependent but for rounding.
 const smallestPivot = 1e-9
 
 // Solve fills in the repair for the given rows of a pixel with residual r, dark decodes
@@ -101,7 +101,7 @@ func (r *Restorer) factorise(l []float64, rows []int) bool {
 				l[a*n+b] = sum / l[b*n+b]
 				continue
 			}
-			if !(sum > smallestPivot*r.p.At(rows[a], rows[a])) {
+			if !(sum > smallestPivot) {
 				return false
 			}
 			l[a*n+a] = math.Sqrt(sum)

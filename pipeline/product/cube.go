@@ -54,6 +54,8 @@ type Schema struct {
 	// Elements, Rows and Grid are the axes in FITS order.
 	Elements, Rows int
 	Grid           instrument.Grid
+	// Frame is the standard of rest of the grid's wavelengths.
+	Frame SpectralFrame
 	// RADeg and DecDeg (ICRS) lie at element (n-1)/2 and detector row
 	// RowCenter, both counted from 0.
 	RADeg, DecDeg float64

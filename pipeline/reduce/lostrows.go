@@ -57,7 +57,7 @@ func (r *reduction) scienceRepair(d *decoder) {
 	}
 	names := strings.Join(r.missingSteps(), ", ")
 	if lack != nil {
-		r.degrade("%d of %d code rows have no frame, so that every voxel is LOST: %v; repeat step %s", lost, d.slots, lack, names)
+		r.degrade("%d of %d code rows have no frame and are not restored (%v), so that every voxel is LOST; repeat step %s", lost, d.slots, lack, names)
 		return
 	}
 	growth := math.Sqrt(d.repair.lost.Growth)

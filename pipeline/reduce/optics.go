@@ -110,6 +110,9 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 // checkGrid refuses a grid that the geometry cannot serve.
 func (r *reduction) checkGrid() error {
 	g := r.schema.Grid
+	if !g.Even() {
+		return fmt.Errorf("the wavelength grid of %s: axis %s with spacing %s cannot be reduced to yet; use wave and linear", r.gridSource(), g.Axis, g.Spacing)
+	}
 	err := r.optics.geometry.Check(r.camera.Columns, r.camera.Rows, g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5))
 	if err != nil {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)

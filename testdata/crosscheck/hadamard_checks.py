@@ -41,11 +41,11 @@ for case in json.load(open(sys.argv[1])):
     s = np.array(case["Prior"])
     n = np.array(case["GramNoise"]) / case["Pixels"]
     pnp = p @ np.diag(n) @ p
-    cov = pnp * (np.array(case["Gram"]) - np.diag(case["GramNoise"]))
-    cov += case["Pixels"] * (np.diag(n * np.diag(pnp)) + p * p * np.outer(n, n))
-    values, vectors = np.linalg.eigh(h)
-    edge = 2 * np.sqrt(case["Pixels"] * (n * np.diag(pnp)).max())
-    clipped = (vectors * np.where(values > edge, values, 0)) @ vectors.T
+    cov = pnp * np.array(case["Gram"]) + case["Pixels"] * p * p * np.outer(n, n)
+    unit = np.sqrt(np.outer(n, n))
+    values, vectors = np.linalg.eigh(h / unit)
+    edge = 2 * np.sqrt(case["Pixels"] * np.diag(p).max())
+    clipped = (vectors * np.where(values > edge, values, 0)) @ vectors.T * unit
     gain = s @ clipped @ np.linalg.inv(clipped @ s @ clipped + cov)
     out.append({
         "Projector": p.tolist(),
