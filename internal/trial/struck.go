@@ -1,216 +1,118 @@
 package trial
 
 import (
+	"context"
 	"encoding/json"
 	"fmt"
-	"math"
-	"math/rand/v2"
 	"os"
 	"path/filepath"
-	"slices"
 
+	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
-	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/rehearse"
 	"mirrorloom/pipeline/sequence"
 )
 
-// Strike is a sample that a cosmic ray struck: detector pixel, code row, electrons.
-type Strike struct {
-	X, Y, CodeRow int
-	Charge        float64
-}
-
-// Struck says what became of strikes.
+// Struck is the science frames of a night with cosmic rays, and which of their
+// samples they struck. Rays are drawn apart from all other noise, so that the same
+// night without them has the same samples elsewhere.
 type Struck struct {
-	// Samples are those of the science frames.
-	Samples int
-	// Strong strikes are above eight standard errors of the charge that the dark columns
-	// measure in their pixel; Restored and Flagged are those of them whose sample was
-	// restored, or whose pixel is bad.
-	Strong, Restored, Flagged int
-	// Needless counts samples of good pixels that were restored and had not been struck.
-	Needless int
+	Width, Rows int
+	// Frames are in electrons above the bias level, [frame][pixel]; Noise is that of
+	// each.
+	Frames [][]float32
+	Noise  calib.FrameNoise
+	// Height is how far a ray lifts a sample, in sigmas of what it would have
+	// without: 0 where none struck.
+	Height [][]float64
 }
 
-// Add takes the counts of another night.
-func (s *Struck) Add(o Struck) {
-	s.Samples += o.Samples
-	s.Strong += o.Strong
-	s.Restored += o.Restored
-	s.Flagged += o.Flagged
-	s.Needless += o.Needless
+// MakeStruck rehearses the night twice, with perThousand struck samples per 1000 and
+// without, and reads the science frames of both.
+func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perThousand float64) (*Struck, error) {
+	clean := name + "-clean"
+	opts := rehearse.Options{Seed: seed, NoTruth: true}
+	if err := n.Rehearse(ctx, clean, opts); err != nil {
+		return nil, err
+	}
+	opts.Faults = []rehearse.Fault{{Name: rehearse.Cosmic, Size: perThousand}}
+	if err := n.Rehearse(ctx, name, opts); err != nil {
+		return nil, err
+	}
+	truth, err := n.faults(name)
+	if err != nil {
+		return nil, err
+	}
+	camera, err := exposure.NewCamera(&n.Seq.Profile.Detector)
+	if err != nil {
+		return nil, err
+	}
+	s := &Struck{Width: camera.Columns, Rows: camera.Rows}
+	s.Noise.Photon = 1 + camera.PhotonExcess
+	for _, row := range camera.Variance {
+		for _, v := range row {
+			s.Noise.Read = append(s.Noise.Read, float32(v))
+		}
+	}
+	for i, step := range n.Seq.Steps {
+		if step.Kind == sequence.Science {
+			if err := s.add(camera, n.Frames(name), n.Frames(clean), truth.Frames[i]); err != nil {
+				return nil, err
+			}
+		}
+	}
+	return s, nil
 }
 
-// TrueStrikes are those that rehearse drew for the night named name.
-func (n *Night) TrueStrikes(name string) ([]Strike, error) {
-	text, err := os.ReadFile(filepath.Join(n.Frames(name), rehearse.TruthFolder, rehearse.FaultsFile))
+// faults reads what went wrong in the night named name.
+func (n *Night) faults(name string) (*rehearse.FaultsTruth, error) {
+	path := filepath.Join(n.Frames(name), rehearse.TruthFolder, rehearse.FaultsFile)
+	text, err := os.ReadFile(path)
 	if err != nil {
 		return nil, err
 	}
 	var truth rehearse.FaultsTruth
 	if err := json.Unmarshal(text, &truth); err != nil {
-		return nil, err
+		return nil, fmt.Errorf("%s: %w", path, err)
 	}
-	var all []Strike
-	for i, f := range truth.Frames {
-		if f.Kind != sequence.Science {
-			continue
-		}
-		for h := range f.HitX {
-			all = append(all, Strike{f.HitX[h], f.HitY[h], n.Seq.Steps[i].Row, f.HitE[h]})
-		}
+	if len(truth.Frames) != len(n.Seq.Steps) {
+		return nil, fmt.Errorf("%s: %d frames, not the sequence's %d", path, len(truth.Frames), len(n.Seq.Steps))
 	}
-	return all, nil
+	return &truth, nil
 }
 
-// Strike adds charges to the frames of the night named name: each sample of a science
-// frame is struck with probability share, on its own, by a charge of the law.
-func (n *Night) Strike(name string, share float64, law func(*rand.Rand) float64, seed uint64) ([]Strike, error) {
-	var all []Strike
-	for _, i := range n.Seq.StepsOf(sequence.Science) {
-		random := rand.New(rand.NewPCG(seed, uint64(i)))
-		path := filepath.Join(n.Frames(name), rehearse.FrameFile(n.Seq.Steps[i].Step))
-		strikes, err := n.strikeFrame(path, share, law, random)
-		if err != nil {
-			return nil, err
-		}
-		for _, s := range strikes {
-			s.CodeRow = n.Seq.Steps[i].Row
-			all = append(all, s)
-		}
+// add reads a science frame with and without rays.
+func (s *Struck) add(camera *exposure.Camera, dir, cleanDir string, truth rehearse.FrameTruth) error {
+	frame, err := readWhole(camera, filepath.Join(dir, truth.File))
+	if err != nil {
+		return err
 	}
-	return all, nil
+	clean, err := readWhole(camera, filepath.Join(cleanDir, truth.File))
+	if err != nil {
+		return err
+	}
+	heights := make([]float64, len(frame))
+	for k, x := range truth.HitX {
+		i := truth.HitY[k]*s.Width + x
+		heights[i] = truth.HitE[k] / s.sigma(i, clean[i])
+	}
+	s.Frames, s.Height = append(s.Frames, frame), append(s.Height, heights)
+	return nil
 }
 
-func (n *Night) strikeFrame(path string, share float64, law func(*rand.Rand) float64, random *rand.Rand) ([]Strike, error) {
+// readWhole reads a frame in electrons; a saturated sample stays as it is.
+func readWhole(camera *exposure.Camera, path string) ([]float32, error) {
 	file, err := fitsutil.Open(path)
 	if err != nil {
 		return nil, err
 	}
-	defer file.Close()
-	im, err := file.FirstImage()
+	defer file.Close() // only read from
+	image, err := file.FirstImage()
 	if err != nil {
 		return nil, err
 	}
-	width, height := im.Width(), im.Height()
-	data := make([]float32, width*height)
-	if err := im.ReadRows(data, 0, height); err != nil {
-		return nil, err
-	}
-	d := &n.Seq.Profile.Detector
-	var all []Strike
-	for a, place := range d.Active() {
-		x0, x1, y0, y1 := place.Raw.Bounds0()
-		for y := y0; y < y1; y++ {
-			for x := x0; x < x1; x++ {
-				if random.Float64() >= share {
-					continue
-				}
-				s := Strike{X: place.X0 + x - x0, Y: place.Y0 + y - y0, Charge: law(random)}
-				at := &data[y*width+x]
-				*at = float32(min(math.Round(float64(*at)+s.Charge/d.Amplifiers[a].GainEPerADU), d.SaturationADU-1))
-				all = append(all, s)
-			}
-		}
-	}
-	image := &fitsutil.ImageData{Header: im.Header, Axes: []int{width, height}, Data: data}
-	if err := fitsutil.WriteFile(path, nil, image); err != nil {
-		return nil, fmt.Errorf("strike %s: %w", path, err)
-	}
-	return all, nil
-}
-
-// CountStruck compares the cube's table of restored samples and the element cube's flags
-// with the strikes. Pixels of which keep is false, given the element cube's variances and
-// their median, do not count; nil counts all.
-func (n *Night) CountStruck(name string, strikes []Strike, keep func(variance, median float64) bool) (Struck, error) {
-	cube, err := fitsutil.Open(n.CubePath(name))
-	if err != nil {
-		return Struck{}, err
-	}
-	defer cube.Close()
-	table, err := product.ReadRestored(cube)
-	if err != nil {
-		return Struck{}, err
-	}
-	variance, flags, err := n.elementPlane(name)
-	if err != nil {
-		return Struck{}, err
-	}
-	sorted := slices.Clone(variance)
-	slices.Sort(sorted)
-	median := float64(sorted[len(sorted)/2])
-	columns := n.Seq.Profile.Detector.Columns
-	kept := func(x, y int) bool { return keep == nil || keep(float64(variance[y*columns+x]), median) }
-	bad := func(x, y int) bool { return int(flags[y*columns+x])&product.FlagBad != 0 }
-	var c Struck
-	for y := range len(variance) / columns {
-		for x := range columns {
-			if kept(x, y) {
-				c.Samples += n.Seq.V
-			}
-		}
-	}
-	type sample struct{ x, y, row int }
-	restored, struck := map[sample]bool{}, map[sample]bool{}
-	for i := range table.X {
-		restored[sample{int(table.X[i]), int(table.Y[i]), int(table.CodeRow[i])}] = true
-	}
-	v, g := float64(n.Seq.V), float64(len(n.Seq.DarkColumns()))
-	for _, s := range strikes {
-		at := sample{s.X, s.Y, s.CodeRow}
-		struck[at] = true
-		// An element's variance is 4v/(v+1)^2 of a sample's, a charge's (v+1)/g.
-		sigma := math.Sqrt(float64(variance[s.Y*columns+s.X]) * (v + 1) * (v + 1) / (4 * v) * (v + 1) / g)
-		if !kept(s.X, s.Y) || s.Charge < 8*sigma {
-			continue
-		}
-		c.Strong++
-		switch {
-		case bad(s.X, s.Y):
-			c.Flagged++
-		case restored[at]:
-			c.Restored++
-		}
-	}
-	for at := range restored {
-		if kept(at.x, at.y) && !struck[at] && !bad(at.x, at.y) {
-			c.Needless++
-		}
-	}
-	return c, nil
-}
-
-// elementPlane is VARIANCE and FLAGS of the element cube's first column.
-func (n *Night) elementPlane(name string) (variance, flags []float32, err error) {
-	file, err := fitsutil.Open(n.ElementsPath(name))
-	if err != nil {
-		return nil, nil, err
-	}
-	defer file.Close()
-	d := &n.Seq.Profile.Detector
-	for image, to := range map[string]*[]float32{"VARIANCE": &variance, "FLAGS": &flags} {
-		im, err := file.ImageNamed(image)
-		if err != nil {
-			return nil, nil, err
-		}
-		*to = make([]float32, d.Columns*d.Rows)
-		if err := im.ReadPlaneRows(*to, 0, 0, d.Rows); err != nil {
-			return nil, nil, err
-		}
-	}
-	return variance, flags, nil
-}
-
-// StruckFindings judge the counts: 99 % of strong strikes restored or flagged, fewer than
-// 3 in a million samples restored without need. State says how many were flagged.
-func (s Struck) StruckFindings(name string) []Finding {
-	strong := float64(max(1, s.Strong))
-	needless := float64(s.Needless) / float64(max(1, s.Samples))
-	return []Finding{
-		AtLeast(name+": strong hits restored or flagged", float64(s.Restored+s.Flagged)/strong, 0.99, s.Strong),
-		Stated(name+": strong hits flagged", float64(s.Flagged)/strong, s.Strong),
-		Below(name+": samples restored without need", needless, 3e-6, s.Samples),
-	}
+	pixels := make([]float32, camera.Columns*camera.Rows)
+	_, err = camera.Read(pixels, image, 0, camera.Rows, new(exposure.Scratch), func([]calib.Flag, int, int, int) {})
+	return pixels, err
 }

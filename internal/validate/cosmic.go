@@ -80,7 +80,7 @@ func cosmicNights(ctx context.Context, dir, name string, v, dark int, tracks, si
 	if _, err := n.Reduce(ctx, trial.Twin, opts); err != nil {
 		return nil, err
 	}
-	var plain, bright trial.Struck
+	var plain, bright trial.StrikeCount
 	var pulls *trial.Pulls
 	var kurtosis trial.Kurtosis
 	for seed := uint64(1); seed <= cosmicSeeds; seed++ {
@@ -108,7 +108,7 @@ func cosmicNights(ctx context.Context, dir, name string, v, dark int, tracks, si
 			return nil, err
 		}
 		for _, part := range []struct {
-			to     *trial.Struck
+			to     *trial.StrikeCount
 			bright bool
 		}{{&plain, false}, {&bright, true}} {
 			c, err := n.CountStruck(night, strikes, func(variance, median float64) bool { return (variance > 4*median) == part.bright })

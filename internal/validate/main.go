@@ -46,6 +46,7 @@ func checks() []check {
 		seeds(),
 		apertures(),
 		readNoiseGain(),
+		cosmicSingle(),
 		falseAlarms(),
 	}
 }
