@@ -51,7 +51,10 @@ type Quality struct {
 	DarkChi2Heldout *float64 `json:"dark_chi2_heldout"`
 	ThroughputRMS   *float64 `json:"throughput_rms"`
 	ThroughputErr   *float64 `json:"throughput_err"`
+	// Hits counts the samples that cosmic rays struck and that were restored,
+	// DoubtfulPixels the pixels voided because it cannot be told which were struck.
 	Hits            *int     `json:"hits"`
+	DoubtfulPixels  int      `json:"doubtful_pixels"`
 	Restored        int      `json:"restored"`
 	Lost            int      `json:"lost"`
 	WavelengthRMSPx *float64 `json:"wavelength_rms_px"`

@@ -161,6 +161,7 @@ type reduction struct {
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
+	samples   restoredSamples
 	badPixels int
 	stages    []product.Stage
 	// looked counts the bytes that calibrate reads: see traffic.go.
@@ -298,7 +299,8 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	var flags int16
-	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels, d.repair != nil && d.repair.pursuit != nil)
+	r.samples = w.samples
 	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
