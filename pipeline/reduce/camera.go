@@ -3,6 +3,7 @@ package reduce
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
@@ -54,13 +55,42 @@ func newCamera(d *instrument.Detector) (*camera, error) {
 			}
 			amp.levels = calib.DefaultOverscan(amp.overscan.Width())
 			// The level's own noise: read noise over the pixels it averages.
-			averaged := min(amp.overscan.Height(), 2*amp.levels.HalfWindow+1) * amp.overscan.Width()
-			amp.variance *= 1 + 1/float64(averaged)
+			amp.variance *= 1 + 1/float64(amp.averaged())
 		}
 		c.amplifiers = append(c.amplifiers, amp)
 	}
 	c.variance = c.variances()
 	return c, nil
+}
+
+// averaged is how many overscan pixels a level is the mean of, 0 without overscan.
+func (a *amplifier) averaged() int {
+	if !a.hasOverscan {
+		return 0
+	}
+	return min(a.overscan.Height(), 2*a.levels.HalfWindow+1) * a.overscan.Width()
+}
+
+// amplifierOf gives the amplifier of each column, by detector row; rows of the same
+// amplifiers share it.
+func (c *camera) amplifierOf() [][]uint8 {
+	all := make([][]uint8, c.rows)
+	for y := range all {
+		row := make([]uint8, c.columns)
+		for i := range c.amplifiers {
+			p := &c.amplifiers[i].place
+			if y >= p.Y0 && y < p.Y0+p.Raw.Height() {
+				for x := p.X0; x < p.X0+p.Raw.Width(); x++ {
+					row[x] = uint8(i)
+				}
+			}
+		}
+		if y > 0 && slices.Equal(row, all[y-1]) {
+			row = all[y-1]
+		}
+		all[y] = row
+	}
+	return all
 }
 
 // variances fills in camera.variance.
