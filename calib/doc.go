@@ -22,6 +22,8 @@
 //   - A Peak is a line of a lamp seen in the sum of a block of detector rows; a track is
 //     a line followed over the blocks of a frame. SolveArcs names them and fits the
 //     Geometry's x; FitTrace fits its y to RowEnds, where lit mirror rows end.
+//   - A Strike is a pixel of one frame that a cosmic ray hit, as its sharp edges tell
+//     (EdgeRule), with the value of the light around it.
 //   - A ColourTerm is a small part of the light that grows smoothly with wavelength:
 //     what open neighbours lend each other, or what closed mirrors leak.
 //

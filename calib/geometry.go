@@ -27,6 +27,13 @@ type Geometry struct {
 	TraceCurve float64    // px per px^2
 }
 
+// Parameters points to the numbers of g in the order X_c, Y_c, X_e, J_c, L_c, D1, D2,
+// D3, SlitTilt, Smile, TraceTilt, TraceCurve: for what writes and reads them.
+func (g *Geometry) Parameters() []*float64 {
+	return []*float64{&g.X_c, &g.Y_c, &g.X_e, &g.J_c, &g.L_c, &g.D[0], &g.D[1], &g.D[2],
+		&g.SlitTilt, &g.Smile, &g.TraceTilt, &g.TraceCurve}
+}
+
 // couplingStep, in px, ends the solution of the coupling: each step leaves less than
 // a hundredth of itself (see solveX), so that 1e-9 px are met.
 const couplingStep = 1e-8
@@ -79,9 +86,8 @@ func (g *Geometry) EdgesX(dst []float64, j, y0, firstNm, stepNm float64) []float
 // coupling of x and y, over columns 0..columns-1 and trace rows 0..rows-1, so
 // strong that x does not grow along the unbent x.
 func (g *Geometry) Check(columns, rows int, firstNm, lastNm float64) error {
-	for _, v := range []float64{g.X_c, g.Y_c, g.X_e, g.J_c, g.L_c, g.D[0], g.D[1], g.D[2],
-		g.SlitTilt, g.Smile, g.TraceTilt, g.TraceCurve, firstNm, lastNm} {
-		if math.IsNaN(v) || math.IsInf(v, 0) {
+	for _, p := range append(g.Parameters(), &firstNm, &lastNm) {
+		if v := *p; math.IsNaN(v) || math.IsInf(v, 0) {
 			return fmt.Errorf("geometry: a parameter is not a finite number: %+v", *g)
 		}
 	}

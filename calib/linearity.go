@@ -2,7 +2,8 @@ package calib
 
 // Linearise replaces measured values m, in ADU above the bias level, by the charge
 // they stand for, in place: m (1 + c1 m + c2 m^2 + ...). No coefficients: nothing
-// changes.
+// changes. Photon noise comes out as that of the true charge; read noise, which is
+// added behind the curve, is stretched by its slope, but only where photon noise rules.
 func Linearise(values []float32, coef []float64) {
 	if len(coef) == 0 {
 		return
@@ -14,15 +15,4 @@ func Linearise(values []float32, coef []float64) {
 		}
 		values[i] = float32(m * (1 + sum))
 	}
-}
-
-// LinearityVariance is the factor by which Linearise multiplies the variance of a
-// value m: the square of its derivative.
-func LinearityVariance(m float64, coef []float64) float64 {
-	slope, power := 1.0, 1.0
-	for k, c := range coef {
-		power *= m
-		slope += float64(k+2) * c * power
-	}
-	return slope * slope
 }

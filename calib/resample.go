@@ -79,6 +79,30 @@ func (r *Resampler) Resample(dst Voxels, signal, variance []float32, flags *RowF
 	}
 }
 
+// Weights gives the weights w of the voxel between two edges, in detector x, as
+// Resample applies them: w[i] is that of column first+i. They are appended to dst.
+func (r *Resampler) Weights(dst []float32, from, to float64) (first int, w []float32) {
+	low, high := newEdge(), newEdge()
+	r.pixels.set(&low, from)
+	r.pixels.set(&high, to)
+	if low.place > high.place {
+		low, high = high, low
+	}
+	tail := func(e *edge, x int) float32 {
+		switch {
+		case x < e.base:
+			return 1
+		case x >= e.base+taps:
+			return 0
+		}
+		return e.tails[pad+x-e.base]
+	}
+	for x := low.base; x < high.base+taps; x++ {
+		dst = append(dst, tail(&high, x)-tail(&low, x))
+	}
+	return low.base, dst
+}
+
 var nan32 = float32(math.NaN())
 
 // A voxel's result.

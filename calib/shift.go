@@ -3,6 +3,7 @@ package calib
 import (
 	"fmt"
 	"math"
+	"sort"
 )
 
 // RowShift straightens traces: for a trace row y0 it gathers, in each column x, the
@@ -107,6 +108,14 @@ func (s *RowShift) Span(y0 int) (first, last int) {
 		return y0, y0 - 1
 	}
 	return y0 + p.first, y0 + p.last
+}
+
+// Weights gives the weights with which column x of trace row y0 gathers the detector
+// rows first, first+1, ... The slice is not to be changed.
+func (s *RowShift) Weights(y0, x int) (first int, w []float32) {
+	p := s.plans[y0]
+	at := sort.Search(len(p.runs), func(i int) bool { return p.runs[i].x1 > x })
+	return y0 + p.runs[at].row, p.weights[x*points:][:points]
 }
 
 // Signal writes trace row y0 to dst, one value a column: sum w v. rows[i] is

@@ -26,3 +26,10 @@ func TestNothingIsAllocated(t *testing.T) {
 		require.Less(t, allocated, 1.0, "%s %d", c.Family(), c.V())
 	}
 }
+
+func TestApplyAllocatesNothing(t *testing.T) {
+	r, err := mustChecks(t, mustCode(t, MSequence, 31), []int{1, 4, 5, 9}).Reweight(lostNoise(31, []int{3, 8}))
+	require.NoError(t, err)
+	block := randomBlock(1, 31, 40)
+	require.Less(t, testing.AllocsPerRun(50, func() { r.Apply(block, 37, 40) }), 1.0)
+}

@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"math"
 	"math/bits"
-	"slices"
 )
 
 // ErrNoRedundancy is returned, wrapped, when dark columns are asked of a slit
@@ -29,15 +28,9 @@ func DarkCorrelation(c *Code, columns []int) (float64, error) {
 	if c.family == SlitScan {
 		return 0, fmt.Errorf("%w: leave the dark set empty", ErrNoRedundancy)
 	}
-	sorted := slices.Clone(columns)
-	slices.Sort(sorted)
-	for i, j := range sorted {
-		if j < 0 || j >= c.v {
-			return 0, fmt.Errorf("dark column %d is outside 0..%d", j, c.v-1)
-		}
-		if i > 0 && sorted[i-1] == j {
-			return 0, fmt.Errorf("dark column %d is named twice", j)
-		}
+	sorted, err := sortedIndices("dark column", columns, c.v)
+	if err != nil {
+		return 0, err
 	}
 	if len(sorted) < 2 {
 		return 1, nil

@@ -17,6 +17,11 @@
 //   - dark column: a code column that no mirror is assigned to. Its decode must
 //     be zero, so it checks the others. A dark set has g of them, and Ag is
 //     A's g x v submatrix of the dark rows; Ag's columns stand for steps.
+//   - check: a vector u of Ag's row space. u'y holds no light, so that it shows what
+//     went wrong in the readings y. P projects on the checks (Checks).
+//   - Gram: the sum of y y'/s^2 over sampled pixels, all that is kept of the data to
+//     judge frames by (Gram).
+//   - hold-out: what is fitted on one half of the dark columns is judged on the other.
 //   - block: measurements as [row][pixel] of float32, row i at
 //     block[i*stride : i*stride+pixels]. Rows are code rows (steps in the
 //     order of the code, not of the night) or code columns, as said.

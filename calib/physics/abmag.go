@@ -21,6 +21,28 @@ func ABEnergy(mag, vacuumNm float64) float64 {
 	return abFlux_W_m2_Hz(mag) * LightSpeed_m_s / (metres * metres) * metresPerNm
 }
 
+// AttowattsPerWatt turns W m-2 nm-1 into the unit of calibrated cubes, aW m-2 nm-1:
+// AB 20 at 500 nm is 0.4354 of them.
+const AttowattsPerWatt = 1e18
+
+// ABFlux is ABEnergy in aW m-2 nm-1, the unit of a calibrated cube.
+func ABFlux(mag, vacuumNm float64) float64 { return ABEnergy(mag, vacuumNm) * AttowattsPerWatt }
+
+// ABFromFlux inverts ABFlux. It is +Inf at flux 0 and NaN below.
+func ABFromFlux(flux_aW_m2_nm, vacuumNm float64) float64 {
+	return ABFromEnergy(flux_aW_m2_nm/AttowattsPerWatt, vacuumNm)
+}
+
+// PhotonsFromFlux turns a flux density in aW m-2 nm-1 into photons s-1 m-2 nm-1.
+func PhotonsFromFlux(flux_aW_m2_nm, vacuumNm float64) float64 {
+	return flux_aW_m2_nm / AttowattsPerWatt / PhotonEnergy(vacuumNm)
+}
+
+// FluxFromPhotons inverts PhotonsFromFlux.
+func FluxFromPhotons(photons_s_m2_nm, vacuumNm float64) float64 {
+	return photons_s_m2_nm * PhotonEnergy(vacuumNm) * AttowattsPerWatt
+}
+
 // ABFromPhotons inverts ABPhotons. It is +Inf at flux 0 and NaN below.
 func ABFromPhotons(photons_s_m2_nm, vacuumNm float64) float64 {
 	return abMagnitude(photons_s_m2_nm * Planck_J_s * vacuumNm)

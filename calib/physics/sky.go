@@ -71,15 +71,20 @@ func TargetAirmass(raDeg, decDeg float64, utc time.Time, latitudeDeg, longitudeE
 // the date, by the angles zeta, z, theta of Lieske et al. 1977 (A&A 58, 1) as in
 // Meeus, formulas 21.3 and 21.4.
 func precess(raDeg, decDeg float64, utc time.Time) (ra, dec float64) {
-	t := daysSinceJ2000(utc) / 36525
-	zeta := t * (2306.2181 + t*(0.30188+t*0.017998)) / 3600
-	z := t * (2306.2181 + t*(1.09468+t*0.018203)) / 3600
-	theta := t * (2004.3109 - t*(0.42665+t*0.041833)) / 3600
+	zeta, z, theta := precession(daysSinceJ2000(utc) / 36525)
 	a := cosDeg(decDeg) * sinDeg(raDeg+zeta)
 	b := cosDeg(theta)*cosDeg(decDeg)*cosDeg(raDeg+zeta) - sinDeg(theta)*sinDeg(decDeg)
 	c := sinDeg(theta)*cosDeg(decDeg)*cosDeg(raDeg+zeta) + cosDeg(theta)*sinDeg(decDeg)
 	ra = wrap360(math.Atan2(a, b)*degreesPerRadian + z)
 	return ra, math.Atan2(c, math.Hypot(a, b)) * degreesPerRadian
+}
+
+// precession gives the angles of precess in degrees for t Julian centuries from J2000.
+func precession(t float64) (zeta, z, theta float64) {
+	zeta = t * (2306.2181 + t*(0.30188+t*0.017998)) / 3600
+	z = t * (2306.2181 + t*(1.09468+t*0.018203)) / 3600
+	theta = t * (2004.3109 - t*(0.42665+t*0.041833)) / 3600
+	return zeta, z, theta
 }
 
 // daysSinceJ2000 counts days from 2000-01-01 12:00.

@@ -27,9 +27,12 @@ var rules = []rule{
 	{"pipeline/instrument", []string{"mirrorloom/hadamard", "mirrorloom/calib", "mirrorloom/pipeline/sequence", "mirrorloom/pipeline/product", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "instrument holds parameters"},
 	{"pipeline/sequence", []string{"mirrorloom/hadamard", "mirrorloom/calib", "mirrorloom/pipeline/product", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "sequence is below product"},
 	{"pipeline/product", []string{"mirrorloom/hadamard", "mirrorloom/calib", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "product has no algorithm"},
+	{"pipeline/exposure", []string{"mirrorloom/hadamard", "mirrorloom/pipeline/sequence", "mirrorloom/pipeline/product", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "exposure knows the detector alone"},
+	{"pipeline/parallel", []string{"mirrorloom"}, "parallel knows nothing"},
 	{"pipeline/plan", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "plan is beside the others"},
 	{"pipeline/rehearse", []string{"mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "rehearse shares no code with the reduction"},
 	{"pipeline/pair", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "pair is beside the others"},
+	{"pipeline/extract", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "extract reads cubes and is below report"},
 	{"pipeline/report", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "report is below reduce"},
 	{"pipeline/reduce", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/demo"}, "reduce must not know what rehearse drew"},
 }

@@ -43,7 +43,9 @@ func checks() []check {
 		faintNight(),
 		enclosedFlux(),
 		seeds(),
+		apertures(),
 		readNoiseGain(),
+		falseAlarms(),
 	}
 }
 

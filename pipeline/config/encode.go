@@ -88,6 +88,10 @@ func encodeFloat(v reflect.Value, path string) (*yaml.Node, error) {
 	if integer.MatchString(text) && text != "-0" { // the tag has to be what a reader resolves
 		return scalar("!!int", text), nil
 	}
+	// YAML 1.1 reads 4e-07 as text: it wants a point.
+	if mantissa, exponent, found := strings.Cut(text, "e"); found && !strings.Contains(mantissa, ".") {
+		text = mantissa + ".0e" + exponent
+	}
 	return scalar("!!float", text), nil
 }
 

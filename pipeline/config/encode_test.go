@@ -113,7 +113,7 @@ func TestCrosscheckYAML(t *testing.T) {
 		Texts   []string  `yaml:"texts"`
 		Numbers []float64 `yaml:"numbers,flow"`
 	}
-	d := document{Texts: tempting, Numbers: []float64{0, 1, -1, 0.1, 123456789, 640.5, -2.5e-3}}
+	d := document{Texts: tempting, Numbers: []float64{0, 1, -1, 0.1, 123456789, 640.5, -2.5e-3, 4e-7, 1e21}}
 	text, err := Encode(d)
 	require.NoError(t, err)
 	path := filepath.Join(t.TempDir(), "d.yaml")
@@ -125,7 +125,7 @@ func TestCrosscheckYAML(t *testing.T) {
 		}
 		want.WriteString("\n")
 	}
-	want.WriteString("0.0\n1.0\n-1.0\n0.1\n123456789.0\n640.5\n-0.0025\n")
+	want.WriteString("0.0\n1.0\n-1.0\n0.1\n123456789.0\n640.5\n-0.0025\n4e-07\n1e+21\n")
 	require.Equal(t, want.String(), outside.Python(t, "config_read.py", path))
 }
 

@@ -209,7 +209,8 @@ func TestWrongProfiles(t *testing.T) {
 		{"refstar: STANDARD", "refstar: ZERO", `p.yaml:79: kinds.refstar: "ZERO" is kinds.bias as well; give each its own`},
 		{"  first_nm: 490", "  first_nm: -490", "p.yaml:81: grid.first_nm: -490 is not above 0; give a positive number"},
 		{"  first_nm: 490", "  first_nm: 440", "p.yaml:80: grid: its wavelengths fall on columns -66.9 to -28.9 of a detector of 100 for the middle of the field; correct the grid or the spectrograph"},
-		{"  step_nm: 0.5", "  step_nm: 0.39", "p.yaml:82: grid.step_nm: voxels are 0.772 to 0.785 px wide where 0.8 to 1.25 are wanted; give a step of about 0.5011 nm"},
+		{"  step_nm: 0.5", "  step_nm: 0.39", "p.yaml:82: grid.step_nm: voxels are 0.772 to 0.784 px wide where 0.8 to 1.25 are wanted; give a step of about 0.5011 nm"},
+		{"  count: 41", "  count: 41\n  axis: air", `p.yaml:84: grid.axis: "air" is unknown; use wave (vacuum) or awav (air)`},
 		{"  count: 41", "  count: 0", "p.yaml:83: grid.count: 0 is outside 1 to 65536; give a whole number in this range"},
 		{"    - {wavelength_nm: 450, fraction: 0}\n    - {wavelength_nm: 550, fraction: 1}\n", "    - {wavelength_nm: 350, fraction: 1}\n    - {wavelength_nm: 450, fraction: 1}\n", "p.yaml:80: grid: no light of 490 to 510 nm passes the throughput tables; correct the grid or the tables"},
 	} {

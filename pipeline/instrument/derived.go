@@ -70,10 +70,3 @@ func (p *Profile) CollectingAreaM2() float64 {
 func (p *Profile) Throughput(wavelengthNM float64) float64 {
 	return p.Telescope.Throughput.At(wavelengthNM) * p.Spectrograph.Throughput.At(wavelengthNM)
 }
-
-// WavelengthNM is the centre of voxel i of the grid, vacuum nm. i need not be
-// whole: voxel i reaches from i - 1/2 to i + 1/2.
-func (g Grid) WavelengthNM(i float64) float64 { return g.FirstNM + i*g.StepNM }
-
-// LastNM is the centre of the grid's last voxel, vacuum nm.
-func (g Grid) LastNM() float64 { return g.WavelengthNM(float64(g.Count - 1)) }

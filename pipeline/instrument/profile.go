@@ -222,11 +222,3 @@ func (k *Kinds) SetDefaults() {
 		AllOn: "all-on", AllOff: "all-off", Science: "science", RefStar: "refstar",
 	}
 }
-
-// Grid is the wavelength axis of the cube, vacuum nm: voxel i is centred on
-// FirstNM + i StepNM.
-type Grid struct {
-	FirstNM float64 `yaml:"first_nm"`
-	StepNM  float64 `yaml:"step_nm"`
-	Count   int     `yaml:"count"`
-}

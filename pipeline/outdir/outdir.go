@@ -164,9 +164,6 @@ func (d *Dir) claim() error {
 // Path is the folder to write into until Commit.
 func (d *Dir) Path() string { return d.part }
 
-// Final is the folder's name after Commit.
-func (d *Dir) Final() string { return d.final }
-
 // Commit gives the folder its own name, in one step where the file system can
 // exchange two folders, and then removes what it replaced.
 func (d *Dir) Commit() error {

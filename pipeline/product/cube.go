@@ -24,6 +24,11 @@ const (
 	Sky        = "SKY"        // truth only: the sky's part of SIGNAL
 	Frames     = "FRAMES"     // the ledger as a table
 	Dispersion = "DISPERSION" // wavelength solution by element and row
+	Code       = "CODE"       // which element has which code column, see CodeTable
+	// The images that errors of sums over voxels need, see NoiseImages.
+	PixelVariance = "PIXELVAR"
+	SlitResponse  = "SLITRESP"
+	BandResponse  = "BANDRESP"
 )
 
 // The images of cube.fits by their place in the file, counted from 0.
@@ -32,6 +37,9 @@ const (
 	VarianceImage
 	FlagsImageIndex
 	ScaleImage
+	PixelVarianceImage
+	SlitResponseImage // where there is a response
+	BandResponseImage
 )
 
 // Units of SIGNAL and VARIANCE before flux calibration. FITS knows no unit
@@ -46,6 +54,8 @@ type Schema struct {
 	// Elements, Rows and Grid are the axes in FITS order.
 	Elements, Rows int
 	Grid           instrument.Grid
+	// Frame is the standard of rest of the grid's wavelengths.
+	Frame SpectralFrame
 	// RADeg and DecDeg (ICRS) lie at element (n-1)/2 and detector row
 	// RowCenter, both counted from 0.
 	RADeg, DecDeg float64

@@ -50,10 +50,52 @@ type Quality struct {
 	Restored        int      `json:"restored"`
 	Lost            int      `json:"lost"`
 	WavelengthRMSPx *float64 `json:"wavelength_rms_px"`
+	// Restored counts the samples, pixel by code row, whose reading was restored from
+	// the dark columns: those of code rows without a frame on the whole detector, and
+	// struck ones pixel by pixel. RestoredGrowth is by what restoring lost rows
+	// multiplied the noise, null where none is lost.
+	RestoredGrowth *float64 `json:"restored_growth"`
+	// ErrorScale is the scatter of the dark decodes over what VARIANCE says.
+	ErrorScale *ErrorScale `json:"error_scale"`
+	// ResidualLight says how light that comes without open mirrors was taken off.
+	ResidualLight ResidualLight `json:"residual_light"`
+	// DarkChi2Steps is the chi-square of each science step's part in the dark decodes,
+	// in the order of the steps; null where nothing is restored. Steps that show the
+	// same mask share theirs.
+	DarkChi2Steps []StepChi2 `json:"dark_chi2_steps"`
 	// Saturated and BadPixels count detector pixels.
 	Saturated int `json:"saturated"`
 	BadPixels int `json:"bad_pixels"`
 }
+
+// ErrorScale sums up the measured error scale q over the detector's pixels.
+type ErrorScale struct {
+	Mean float64 `json:"mean"`
+	Max  float64 `json:"max"`
+	// Applied is the part of the pixels where it is above 1 beyond chance, so that
+	// VARIANCE was multiplied by it.
+	Applied float64 `json:"applied"`
+	// Map holds its mean in stretches of equal size, [row][column] from the detector's
+	// first pixel; null where nothing was measured.
+	Map [][]*float64 `json:"map"`
+}
+
+// StepChi2 is how much of a step's frame the dark columns do not explain: 1 is noise.
+// It is null where they do not see the step.
+type StepChi2 struct {
+	Step int      `json:"step"`
+	Chi2 *float64 `json:"chi2"`
+}
+
+// ResidualLight is a way of taking off light that comes without open mirrors.
+type ResidualLight string
+
+// The ways.
+const (
+	ByAllOff ResidualLight = "all-off frames"
+	ByDark   ResidualLight = "dark columns"
+	NotTaken ResidualLight = "none"
+)
 
 // Stage is one stage of a run: its wall-clock time and the bytes of pixels and tables
 // that it read and wrote. The headers of frames are not counted: a stage that reads

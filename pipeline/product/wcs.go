@@ -1,9 +1,16 @@
 package product
 
-import "math"
+import (
+	"math"
 
-// wcs gives the world coordinates of the cube: gnomonic sky coordinates and a
-// linear axis of vacuum wavelength (FITS Standard 4.0, sections 8.3 and 8.4).
+	"mirrorloom/pipeline/instrument"
+)
+
+// wcs gives the world coordinates of the cube: gnomonic sky coordinates and an
+// axis of wavelengths (FITS Standard 4.0, sections 8.3 and 8.4; Greisen et al. 2006,
+// A&A 446, 747), WAVE in vacuum or AWAV in air, linear or logarithmic (-LOG):
+//
+//	wavelength = CRVAL3 + CD3_3 (p - 1)   or   CRVAL3 exp(CD3_3 (p - 1) / CRVAL3).
 //
 //	CD = | -p c1 cos t   c2 sin t   0    |     p = parity (+1 or -1)
 //	     |  p c1 sin t   c2 cos t   0    |     t = ROTANG, the position angle of +axis 2
@@ -16,11 +23,11 @@ func (s Schema) wcs() []card {
 	if s.Parity < 0 {
 		parity = -1
 	}
-	return []card{
+	cards := []card{
 		{"WCSAXES", 3, "world coordinate axes"},
 		{"CTYPE1", "RA---TAN", "right ascension, gnomonic"},
 		{"CTYPE2", "DEC--TAN", "declination, gnomonic"},
-		{"CTYPE3", "WAVE", "wavelength in vacuum"},
+		{"CTYPE3", spectralType(s.Grid), spectralWords(s.Grid)},
 		{"CUNIT1", "deg", ""},
 		{"CUNIT2", "deg", ""},
 		{"CUNIT3", "nm", ""},
@@ -29,15 +36,38 @@ func (s Schema) wcs() []card {
 		{"CRPIX3", 1.0, ""},
 		{"CRVAL1", s.RADeg, "RA of the field's centre"},
 		{"CRVAL2", s.DecDeg, "Dec of the field's centre"},
-		{"CRVAL3", s.Grid.FirstNM, "vacuum wavelength of the first voxel"},
+		{"CRVAL3", s.Grid.FirstNM, "wavelength of the first voxel"},
 		{"CD1_1", plus(-parity * s.C1Deg * cos), ""},
 		{"CD1_2", plus(s.C2Deg * sin), ""},
 		{"CD2_1", plus(parity * s.C1Deg * sin), ""},
 		{"CD2_2", plus(s.C2Deg * cos), ""},
-		{"CD3_3", s.Grid.StepNM, "wavelength step"},
+		{"CD3_3", s.Grid.StepNM, "wavelength step at the first voxel"},
 		{"RADESYS", "ICRS", ""},
-		{"SPECSYS", "TOPOCENT", "wavelengths as observed"},
 	}
+	return append(cards, s.Frame.cards()...)
+}
+
+// spectralType is CTYPE3 of a grid.
+func spectralType(g instrument.Grid) string {
+	name := "WAVE"
+	if g.Axis == instrument.Air {
+		name = "AWAV"
+	}
+	if g.Spacing == instrument.Logarithmic {
+		name += "-LOG"
+	}
+	return name
+}
+
+func spectralWords(g instrument.Grid) string {
+	words := "wavelength in vacuum"
+	if g.Axis == instrument.Air {
+		words = "wavelength in standard air"
+	}
+	if g.Spacing == instrument.Logarithmic {
+		words += ", logarithmic"
+	}
+	return words
 }
 
 // plus turns a negative zero into zero, which a header should not show.

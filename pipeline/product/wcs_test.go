@@ -44,25 +44,58 @@ func smallSchema(t testing.TB, profile string, rotang float64, parity int) Schem
 func TestCrosscheckWCS(t *testing.T) {
 	dir := t.TempDir()
 	var cases []map[string]any
+	add := func(profile string, parity int, rotang float64, grid func(*instrument.Grid), frame SpectralFrame) {
+		name := filepath.Join(dir, fmt.Sprint(len(cases)))
+		s := wcsSequence(t, profile, rotang, parity)
+		grid(&s.Profile.Grid)
+		text, err := s.Profile.YAML()
+		require.NoError(t, err)
+		require.NoError(t, os.WriteFile(name+".yaml", text, 0o644))
+		schema := NewSchema(s)
+		schema.Frame = frame
+		writeEmpty(t, name+".fits", schema)
+		word := frame.Name
+		if word == "" {
+			word = Topocentric
+		}
+		vacuum := []float64{}
+		for i := range s.Profile.Grid.Count {
+			vacuum = append(vacuum, s.Profile.Grid.WavelengthNM(float64(i)))
+		}
+		cases = append(cases, map[string]any{
+			"cube": name + ".fits", "profile": name + ".yaml", "element_mirrors": testElementMirrors,
+			"n": testN, "ra": testRA, "dec": testDec, "rotang": rotang,
+			"frame": word, "factor": frame.Factor, "vacuum_nm": vacuum,
+		})
+	}
 	for _, profile := range []string{"optical", "infrared"} { // square, diagonal
 		for _, parity := range []int{1, -1} {
 			for _, rotang := range []float64{0, 37, -90, 200.5} {
-				name := filepath.Join(dir, fmt.Sprintf("%s%+d%+g", profile, parity, rotang))
-				s := wcsSequence(t, profile, rotang, parity)
-				text, err := s.Profile.YAML()
-				require.NoError(t, err)
-				require.NoError(t, os.WriteFile(name+".yaml", text, 0o644))
-				writeEmpty(t, name+".fits", NewSchema(s))
-				cases = append(cases, map[string]any{
-					"cube": name + ".fits", "profile": name + ".yaml", "element_mirrors": testElementMirrors,
-					"n": testN, "ra": testRA, "dec": testDec, "rotang": rotang,
-				})
+				for _, axis := range []instrument.Axis{instrument.Vacuum, instrument.Air} {
+					for _, spacing := range []instrument.Spacing{instrument.Linear, instrument.Logarithmic} {
+						add(profile, parity, rotang, func(g *instrument.Grid) { g.Axis, g.Spacing = axis, spacing }, SpectralFrame{})
+					}
+				}
 			}
 		}
 	}
+	add("optical", 1, 12, func(*instrument.Grid) {}, SpectralFrame{Name: Barycentric, Factor: 1 - 26.4e-6})
+	add("optical", 1, 12, func(g *instrument.Grid) { g.Axis, g.Spacing = instrument.Air, instrument.Logarithmic }, SpectralFrame{Name: Heliocentric, Factor: 1 + 98e-6})
 	text, err := json.Marshal(cases)
 	require.NoError(t, err)
 	list := filepath.Join(dir, "cases.json")
 	require.NoError(t, os.WriteFile(list, text, 0o644))
 	require.Equal(t, fmt.Sprintf("%d cubes\n", len(cases)), outside.Python(t, "product_wcs.py", list))
+}
+
+// An observer who approaches the target (Factor above 1) has a negative VELOSYS, and
+// sees wavelengths shorter by the factor.
+func TestSpectralFrame(t *testing.T) {
+	f := SpectralFrame{Name: Barycentric, Factor: 1.0001}
+	require.InDelta(t, -29979.2458, f.VelocityMS(), 2)
+	require.InDelta(t, 500, f.ObservedNM(500.05), 1e-12)
+	for _, none := range []SpectralFrame{{}, {Name: Topocentric, Factor: 1}} {
+		require.Zero(t, none.VelocityMS())
+		require.Equal(t, 500.0, none.ObservedNM(500))
+	}
 }

@@ -12,6 +12,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/plan"
 	"mirrorloom/pipeline/rehearse"
@@ -22,7 +23,7 @@ import (
 type arcNight struct {
 	seq     *sequence.Sequence
 	dir     string
-	camera  *camera
+	camera  *exposure.Camera
 	nominal calib.Geometry
 	truth   *rehearse.Geometry
 	// first and last detector rows that every element lights, nominally, and ends of
@@ -79,7 +80,7 @@ func rehearseArcs(t *testing.T, seq *sequence.Sequence, seed uint64) *arcNight {
 	require.NoError(t, err)
 	n.truth, err = rehearse.ReadGeometry("geometry.yaml", text)
 	require.NoError(t, err)
-	n.camera, err = newCamera(&seq.Profile.Detector)
+	n.camera, err = exposure.NewCamera(&seq.Profile.Detector)
 	require.NoError(t, err)
 	low, high := math.Inf(1), math.Inf(-1)
 	for _, r := range seq.Rows {
@@ -104,12 +105,12 @@ func (n *arcNight) exposure(t *testing.T, step int) calib.Exposure {
 	im, err := f.FirstImage()
 	require.NoError(t, err)
 	c := n.camera
-	size := c.columns * c.rows
-	e := calib.Exposure{Columns: c.columns, Signal: make([]float32, size), Variance: make([]float32, size), Flags: make([]calib.Flag, size)}
-	_, err = c.read(e.Signal, im, 0, c.rows, &readScratch{}, func(flags []calib.Flag, x, y, w int) { c.merge(e.Flags, 0, flags, x, y, w) })
+	size := c.Columns * c.Rows
+	e := calib.Exposure{Columns: c.Columns, Signal: make([]float32, size), Variance: make([]float32, size), Flags: make([]calib.Flag, size)}
+	_, err = c.Read(e.Signal, im, 0, c.Rows, &exposure.Scratch{}, func(flags []calib.Flag, x, y, w int) { c.Merge(e.Flags, 0, flags, x, y, w) })
 	require.NoError(t, err)
 	for i, v := range e.Signal {
-		e.Variance[i] = max(v, 0) + float32(c.variance[i/c.columns][i%c.columns])
+		e.Variance[i] = max(v, 0) + float32(c.Variance[i/c.Columns][i%c.Columns])
 	}
 	return e
 }
@@ -196,10 +197,10 @@ func (n *arcNight) requireTrace(t *testing.T) {
 		name   string
 		points []calib.EdgePoint
 	}{{"all-on", on}, {"arcs", arcs}} {
-		s, err := calib.FitTrace(n.nominal, c.points, n.camera.columns)
+		s, err := calib.FitTrace(n.nominal, c.points, n.camera.Columns)
 		require.NoError(t, err)
 		worst := 0.0
-		for x := range n.camera.columns {
+		for x := range n.camera.Columns {
 			worst = max(worst, math.Abs(n.traceMiss(s, float64(x))))
 		}
 		t.Logf("trace by %s: %d points, rms %.3f px, worst %.4f px; offset %.4f px, plate scale %.5f", c.name, s.Used, s.RMSPx, worst, s.OffsetPx, s.PlateScale)

@@ -10,29 +10,6 @@ import (
 	"mirrorloom/pipeline/product"
 )
 
-// geometryCard is a parameter of the geometry on a card of DISPERSION.
-type geometryCard struct {
-	key, comment string
-	value        *float64
-}
-
-func geometryCards(g *calib.Geometry) []geometryCard {
-	return []geometryCard{
-		{"GEOMXC", "x = XC + XE (j - JC) + D1 l + D2 l^2 + D3 l^3", &g.X_c},
-		{"GEOMYC", "    + SLIT q + SMIL q^2, q = y - YC, px from 0", &g.Y_c},
-		{"GEOMXE", "px per element", &g.X_e},
-		{"GEOMJC", "element at XC, from 0", &g.J_c},
-		{"GEOMLC", "l = vacuum nm - LC", &g.L_c},
-		{"GEOMD1", "px/nm", &g.D[0]},
-		{"GEOMD2", "px/nm2", &g.D[1]},
-		{"GEOMD3", "px/nm3", &g.D[2]},
-		{"GEOMSLIT", "slit tilt, px/px", &g.SlitTilt},
-		{"GEOMSMIL", "smile, 1/px", &g.Smile},
-		{"GEOMTILT", "trace: y = row + TILT (x-XC) + CURV (x-XC)^2", &g.TraceTilt},
-		{"GEOMCURV", "1/px", &g.TraceCurve},
-	}
-}
-
 // sameWidth bounds how far a measured element's width is from the profile's: scales
 // drift by some per cent, while the next element is wider by a mirror.
 const sameWidth = 0.1
@@ -52,10 +29,8 @@ func (r *reduction) borrowGeometry(path string) error {
 		return fmt.Errorf("%s is of the instrument %q, not %q", path, name, r.seq.ProfileName)
 	}
 	var g calib.Geometry
-	for _, c := range geometryCards(&g) {
-		if *c.value, err = table.Header.Float(c.key); err != nil {
-			return err
-		}
+	if err := product.ReadGeometry(table.Header, g.Parameters()); err != nil {
+		return err
 	}
 	if elements, err := f.HDUs()[1].Header.Int("NAXIS1"); err != nil || int(elements) != r.seq.N() {
 		return fmt.Errorf("%s has %d elements, not %d: the geometry counts in elements", path, elements, r.seq.N())

@@ -57,7 +57,7 @@ func buffers(s shape, h heights) int64 {
 	if !s.uniform {
 		variances = int64(s.elements)
 	}
-	decoded := row*(int64(s.elements)+variances) + row/2 // flags of two bytes
+	decoded := row*(int64(s.elements)+variances+2) + row // two kinds of flags of two bytes
 	total := 2 * int64(h.strip) * int64(s.slots) * row   // one read, one worked on
 	if s.elementCube {
 		planes := int64(s.slots) + 1

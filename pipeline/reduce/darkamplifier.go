@@ -22,7 +22,7 @@ const (
 // does not see them: it compares a pixel with its neighbours, and they are as dark.
 func (r *reduction) findDarkAmplifiers(ctx context.Context, m *wholeMasters) error {
 	frames := r.roles.calibration.lamps.on
-	if len(r.camera.amplifiers) < 2 || len(frames) == 0 {
+	if len(r.camera.Amplifiers) < 2 || len(frames) == 0 {
 		return nil
 	}
 	e, err := r.sumExposures(ctx, frames, m, false)
@@ -30,12 +30,12 @@ func (r *reduction) findDarkAmplifiers(ctx context.Context, m *wholeMasters) err
 		return err
 	}
 	expected := make([]float32, len(e.Signal))
-	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.columns, r.seq.Profile.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
+	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.Columns, r.seq.Profile.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
 		return err
 	}
 	var dark []int
 	lit := 0
-	for a := range r.camera.amplifiers {
+	for a := range r.camera.Amplifiers {
 		switch share := r.litShare(a, e, expected); {
 		case math.IsNaN(share):
 		case share < fewLit:
@@ -63,7 +63,7 @@ func (r *reduction) litShare(a int, e *calib.Exposure, expected []float32) float
 	first, last := r.litRows(r.seq.N() / 2)
 	wanted, lit := 0, 0
 	r.eachPixel(a, func(i int) {
-		if y := i / r.camera.columns; y < first || y > last || !(expected[i] > limit) || e.Flags[i] != 0 {
+		if y := i / r.camera.Columns; y < first || y > last || !(expected[i] > limit) || e.Flags[i] != 0 {
 			return
 		}
 		wanted++
@@ -79,10 +79,10 @@ func (r *reduction) litShare(a int, e *calib.Exposure, expected []float32) float
 
 // eachPixel visits the pixels of an amplifier.
 func (r *reduction) eachPixel(a int, visit func(i int)) {
-	p := &r.camera.amplifiers[a].place
+	p := &r.camera.Amplifiers[a].Place
 	for y := p.Y0; y < p.Y0+p.Raw.Height(); y++ {
 		for x := p.X0; x < p.X0+p.Raw.Width(); x++ {
-			visit(y*r.camera.columns + x)
+			visit(y*r.camera.Columns + x)
 		}
 	}
 }
@@ -94,8 +94,8 @@ func (r *reduction) flagDarkAmplifiers() {
 		return
 	}
 	if r.optics.pixel == nil {
-		n := r.camera.columns * r.camera.rows
-		p := &calib.PixelResponse{Width: r.camera.columns, Factor: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
+		n := r.camera.Columns * r.camera.Rows
+		p := &calib.PixelResponse{Width: r.camera.Columns, Factor: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
 		for i := range p.Factor {
 			p.Factor[i] = 1
 		}

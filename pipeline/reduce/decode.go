@@ -1,9 +1,6 @@
 package reduce
 
-import (
-	"mirrorloom/calib"
-	"mirrorloom/hadamard"
-)
+import "mirrorloom/hadamard"
 
 // blockPixels is the number of pixels decoded together: a block of all slots
 // and its result stay in the second-level cache (2 x 127 x 256 floats are 260
@@ -19,13 +16,8 @@ type decoder struct {
 	// field order, and of the dark ones.
 	elementColumns, darkColumns []int
 	k                           float64
-	// weight[i] is 1/frames of slot i: the photon noise of a mean. A lost slot
-	// has 0 and is named in lost.
-	weight []float64
-	lost   []int
-	// slotWeight is the sum of weight: how many samples' noise a sum over the
-	// slots holds.
-	slotWeight float64
+	// slots says how the frames of a code row make its sample.
+	scale slotScale
 	// quietSum is, by code column, the variance of a decode of dark samples in
 	// units of one's; nil where all columns have the same.
 	quietSum []float64
@@ -33,15 +25,18 @@ type decoder struct {
 	photonExcess float64
 	// neighbours takes out what open neighbours lend each other; nil for nothing.
 	neighbours *neighbourTerm
+	// repair restores samples from the dark columns; nil for nothing.
+	repair *repair
 }
 
-// sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w.
+// sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w,
+// those of noise without light.
 func (d *decoder) sumQuiet() {
 	code := d.code.Code()
 	open, closed := code.InverseEntries()
 	d.quietSum = make([]float64, d.slots)
 	for j := range d.quietSum {
-		for i, weight := range d.weight {
+		for i, weight := range d.scale.quiet {
 			entry := closed
 			if code.Bit(i, j) == 1 {
 				entry = open
@@ -54,16 +49,30 @@ func (d *decoder) sumQuiet() {
 // decodeWorker is the scratch memory of one worker.
 type decodeWorker struct {
 	samples, decoded, variance, smooth []float32
-	sum, square                        []float64
+	base                               []float32
+	sum, square, drift                 []float64
 	size, slope                        []float32 // of the neighbour term
+	free                               []float32 // a block freed of that term
+	missing                            []float32 // what lost rows lack, [row][pixel]
+	growth                             []float64 // of variance by restored samples
+	hits                               hits
+	darkSum, darkSquare, darkVariance  []float64 // of each pixel's dark decodes
+	residual, projected                []float64 // of one pixel: dark decodes, by step
 }
 
 func (d *decoder) newWorker() *decodeWorker {
 	n := d.block()
 	w := &decodeWorker{
 		samples: make([]float32, d.slots*n), decoded: make([]float32, d.slots*n),
-		sum: make([]float64, n), square: make([]float64, n),
-		size: make([]float32, n), slope: make([]float32, n),
+		base: make([]float32, n), sum: make([]float64, n), square: make([]float64, n), drift: make([]float64, n),
+		size: make([]float32, n), slope: make([]float32, n), growth: make([]float64, n),
+		darkSum: make([]float64, n), darkSquare: make([]float64, n), darkVariance: make([]float64, n), projected: make([]float64, d.slots),
+	}
+	if d.repair.restores() {
+		w.missing = make([]float32, len(d.scale.lost)*n)
+		if d.neighbours != nil {
+			w.free = make([]float32, d.slots*n)
+		}
 	}
 	if !d.code.VarianceUniform() {
 		w.variance, w.smooth = make([]float32, d.slots*n), make([]float32, d.slots*n)
@@ -82,35 +91,16 @@ func (d *decoder) block() int {
 
 func (d *decoder) blocks() int { return (d.columns + d.block() - 1) / d.block() }
 
-// darkChi2 sums, over dark columns and good pixels, squared decodes and their
-// variances, and counts them. The sums are kept apart because a variance that was
-// estimated from few electrons scatters: the mean of squares over such variances is
-// above 1 though all is well, the ratio of the sums is not.
-type darkChi2 struct {
-	square, variance float64
-	terms            int
-}
-
-func (c *darkChi2) add(o darkChi2) {
-	c.square += o.square
-	c.variance += o.variance
-	c.terms += o.terms
-}
-
 // run decodes block b of row y into out and into the element cube's planes, if
-// there are any.
-func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) darkChi2 {
+// there are any, and adds to the figures of the row.
+func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *blockQuality) {
 	x0 := b * d.block()
 	x1 := min(x0+d.block(), d.columns)
 	n := x1 - x0
 	at := (y-s.y0)*d.columns + x0
-	flags := s.flags[at : at+n]
 	quiet := s.quiet[y-s.y0][x0:x1]
 	d.load(w, s, at, n)
-	d.code.Decode(w.decoded, w.samples, n, n)
-	if d.neighbours != nil {
-		d.neighbours.correct(w, x0, y, n)
-	}
+	q.restored = d.decode(w, s, at, n, x0, y)
 	uniform := d.code.VarianceUniform()
 	if uniform {
 		d.uniformVariance(out.variance[0][x0:x1], w, s, at, quiet)
@@ -123,32 +113,88 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow) dark
 			copy(out.variance[j][x0:x1], w.variance[col*n:(col+1)*n])
 		}
 	}
-	copy(out.flags[x0:x1], flags)
+	copy(out.flags[x0:x1], s.flags[at:at+n])
+	for p, v := range s.levelVariance[at : at+n] {
+		out.common[x0+p] = float32(float64(v) / (d.k * d.k))
+		out.unlit[x0+p] = float32(quiet[p] + (1+d.photonExcess)*float64(s.level[at+p]))
+	}
 	s.keep(w, at, n, out, x0, uniform)
-	return d.chi2(w, out, flags, x0, n)
+	d.judge(w, out, x0, n, q)
 }
 
-// load copies a block of all slots, less its bias and level, into the worker's
-// memory, and sums over the slots what the variances need. The bias is taken
-// off before the sums are: the level's light has photon noise as well.
+// decode turns the loaded block into columns, restores what is missing and takes out
+// the neighbour term. It gives the number of restored samples.
+func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int) (restored int) {
+	d.code.Decode(w.decoded, w.samples, n, n)
+	if d.repair != nil {
+		d.gatherHits(w, n)
+		for p := range w.growth {
+			w.growth[p] = 1
+		}
+	}
+	if d.neighbours != nil {
+		d.neighbours.sizes(w.size, w.slope, x0, y, n)
+	}
+	switch {
+	case d.repair.restores():
+		d.restoreLost(w, n)
+		restored = len(d.scale.lost) * n
+	case d.neighbours != nil:
+		d.neighbours.pairs.Correct(w.decoded, w.size, w.slope, n, n)
+	}
+	if d.repair != nil {
+		restored += d.restoreHits(w, s, at, n, x0, y)
+	}
+	return restored
+}
+
+// load copies a block of all slots, less its bias, dark current, level and all-off
+// light, into the worker's memory, and sums over the slots what the variances need.
+// The bias is taken off before the sums are: the level's light has photon noise as
+// well. Bias, dark and offset were in the frames before their factors were applied and
+// the all-off light is that of a corrected frame, so that
+//
+//	sample = mean(factor raw) - gain base - shift - off
 func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 	clear(w.sum[:n])
 	clear(w.square[:n])
-	base := s.base[at : at+n]
+	clear(w.drift[:n])
+	base, off := s.base[at:at+n], s.off[at:at+n]
+	both := w.base[:n]
+	for p, v := range base {
+		both[p] = v + off[p]
+	}
 	for i := range d.slots {
-		if d.weight[i] == 0 {
+		if d.scale.isLost(i) {
 			continue
 		}
 		row := w.samples[i*n : (i+1)*n]
 		raw := s.slot(i)[at : at+n]
-		weight := d.weight[i]
-		for p, v := range raw {
-			net := v - base[p]
-			row[p] = net
-			w.sum[p] += weight * float64(net)
+		weight := d.scale.light[i]
+		if gain, shift := float32(d.scale.gain[i]), float32(d.scale.shift[i]); gain == 1 && shift == 0 {
+			for p, v := range raw {
+				net := v - both[p]
+				row[p] = net
+				w.sum[p] += weight * float64(net)
+			}
+		} else {
+			for p, v := range raw {
+				net := v - gain*base[p] - shift - off[p]
+				row[p] = net
+				w.sum[p] += weight * float64(net)
+			}
+		}
+		if u := d.scale.uncertain[i]; u > 0 {
+			for p, net := range row {
+				light := float64(net + off[p])
+				w.drift[p] += u * light * light
+			}
 		}
 	}
-	if len(d.lost) > 0 {
+	if d.repair != nil {
+		d.collectHits(w, s, at, n)
+	}
+	if len(d.scale.lost) > 0 {
 		d.fillLost(w, n)
 	}
 }
@@ -157,35 +203,54 @@ func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 // by is as uncertain as one slot's light differs from another's: square keeps
 // that variance, which goes into the pixel's.
 func (d *decoder) fillLost(w *decodeWorker, n int) {
-	there := float64(d.slots - len(d.lost))
+	there := float64(d.slots - len(d.scale.lost))
 	for p := range n {
 		var sum, square float64
 		for i := range d.slots {
-			if d.weight[i] != 0 {
+			if !d.scale.isLost(i) {
 				v := float64(w.samples[i*n+p])
 				sum += v
 				square += v * v
 			}
 		}
 		mean := sum / max(1, there)
-		for _, i := range d.lost {
+		for _, i := range d.scale.lost {
 			w.samples[i*n+p] = float32(mean)
 		}
-		w.square[p] = float64(len(d.lost)) * max(0, square/max(1, there)-mean*mean)
+		if d.repair.restores() {
+			continue // the variance grows by what is known of the restoration
+		}
+		w.square[p] = float64(len(d.scale.lost)) * max(0, square/max(1, there)-mean*mean)
 	}
 }
 
 // uniformVariance is 4/(v+1)^2 sum(s^2) for every column, with s^2 of each
-// sample from its unclipped value, plus the variance of the level, which is
-// common to all slots and decodes to 1/k of itself.
+// sample from its unclipped value, plus what the frames' factors are uncertain by, and
+// the variance of the level, which is common to all slots and decodes to 1/k of itself.
+// An error of a step's factor goes as its row of the inverse, +-2/(v+1), into the
+// columns.
 func (d *decoder) uniformVariance(dst []float32, w *decodeWorker, s *strip, at int, quiet []float64) {
 	_, closed := d.code.Code().InverseEntries()
 	for p := range dst {
-		dark := d.slotWeight * quiet[p]
-		light := (1 + d.photonExcess) * (w.sum[p] + d.slotWeight*float64(s.level[at+p]))
-		sum := max(dark+light, dark*varianceFloor) + w.square[p]
-		dst[p] = float32(closed*closed*sum + float64(s.levelVariance[at+p])/(d.k*d.k))
+		dark := d.scale.quietSum * quiet[p]
+		light := (1 + d.photonExcess) * (w.sum[p] + d.scale.lightSum*float64(s.level[at+p]))
+		sum := max(dark+light, dark*varianceFloor) + w.square[p] + w.drift[p]
+		dst[p] = float32(closed*closed*sum*d.grown(w, p) + float64(s.levelVariance[at+p])/(d.k*d.k))
 	}
+}
+
+// grown is what restoration multiplies the mean variance of a pixel's elements by: that
+// of its own samples and of those of lost rows together, or of the latter alone. The
+// variance of a plain decode counts no noise of lost rows; that by which a pixel's own
+// growth is reckoned does.
+func (d *decoder) grown(w *decodeWorker, p int) float64 {
+	switch {
+	case d.repair == nil:
+		return 1
+	case w.growth[p] == 1:
+		return d.repair.meanRatio
+	}
+	return w.growth[p] * float64(d.slots) / float64(d.slots-len(d.scale.lost))
 }
 
 // varianceFloor bounds the sum of variances from below, in units of that of
@@ -205,13 +270,16 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	for i := range d.slots {
 		row := w.variance[i*n : (i+1)*n]
 		for p := range row {
-			v := quiet[p] + (1+d.photonExcess)*(float64(row[p])+float64(s.level[at+p]))
-			row[p] = float32(d.weight[i] * v)
+			light := float64(row[p]) + float64(s.level[at+p])
+			v := d.scale.quiet[i]*quiet[p] + (1+d.photonExcess)*d.scale.light[i]*light
+			row[p] = float32(v + d.scale.uncertain[i]*light*light)
 		}
 	}
-	for _, i := range d.lost {
-		for p := range n {
-			w.variance[i*n+p] = float32(w.square[p] / float64(len(d.lost)))
+	if !d.repair.restores() {
+		for _, i := range d.scale.lost {
+			for p := range n {
+				w.variance[i*n+p] = float32(w.square[p] / float64(len(d.scale.lost)))
+			}
 		}
 	}
 	copy(w.smooth, w.variance)
@@ -220,7 +288,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 		row := w.variance[j*n : (j+1)*n]
 		for p, v := range row {
 			floor := varianceFloor * quiet[p] * d.quietSum[j]
-			row[p] = float32(max(float64(v), floor) + float64(s.levelVariance[at+p])/(d.k*d.k))
+			row[p] = float32(max(float64(v), floor)*d.grown(w, p) + float64(s.levelVariance[at+p])/(d.k*d.k))
 		}
 	}
 }
@@ -241,25 +309,3 @@ func smoothRow(dst, src []float32) {
 // smoothPixels weighs two needs: narrow enough to follow a line, wide enough
 // that a sample's own noise is a small part of its variance.
 const smoothPixels = 7
-
-func (d *decoder) chi2(w *decodeWorker, out *decodedRow, flags []calib.Flag, x0, n int) darkChi2 {
-	var c darkChi2
-	if len(d.lost) > 0 {
-		return c
-	}
-	for _, col := range d.darkColumns {
-		row := w.decoded[col*n : (col+1)*n]
-		variance := out.variance[0][x0 : x0+n]
-		if !d.code.VarianceUniform() {
-			variance = w.variance[col*n : (col+1)*n]
-		}
-		for p, v := range row {
-			if flags[p] == 0 {
-				c.square += float64(v) * float64(v)
-				c.variance += float64(variance[p])
-				c.terms++
-			}
-		}
-	}
-	return c
-}

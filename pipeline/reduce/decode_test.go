@@ -10,6 +10,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
 )
 
 // decodeCase is a block of samples with everything that decoding looks at.
@@ -34,11 +35,13 @@ func newDecodeCase(t *testing.T, family hadamard.Family, v, columns int, frames 
 			d.elementColumns = append(d.elementColumns, j)
 		}
 	}
-	slots := make([][]*frame, v)
+	slots := make([][]*exposure.Frame, v)
 	for i, n := range frames {
-		slots[i] = make([]*frame, n)
+		for range n {
+			slots[i] = append(slots[i], new(exposure.Frame))
+		}
 	}
-	d.weight, d.slotWeight, d.lost = weights(slots)
+	d.scale = newSlotScale(slots, nil)
 	d.sumQuiet()
 	s := shape{columns: columns, slots: v}.newStrip(1)
 	s.y1, s.columns, s.quiet = 1, columns, [][]float64{make([]float64, columns)}
@@ -71,12 +74,14 @@ func (c *decodeCase) run() (*decodedRow, darkChi2) {
 		variances = 1
 	}
 	n := c.decoder.columns
-	out := &decodedRow{signal: planes(len(c.decoder.elementColumns), n), variance: planes(variances, n), flags: make([]calib.Flag, n)}
+	out := newDecodedRow(len(c.decoder.elementColumns), variances, n)
 	var chi2 darkChi2
 	w := c.decoder.newWorker()
 	for b := range c.decoder.blocks() {
-		got := c.decoder.run(w, c.strip, 0, b, out)
-		chi2.add(got)
+		var q blockQuality
+		q.steps = make([]float64, c.decoder.slots)
+		c.decoder.run(w, c.strip, 0, b, out, &q)
+		chi2.add(q.dark)
 	}
 	return out, chi2
 }
@@ -134,7 +139,7 @@ func (c *decodeCase) naive(p int) (decoded, variance []float64) {
 		for i := range v {
 			a, y := c.inverse.At(j, i), c.sample(i, p)
 			decoded[j] += a * y
-			variance[j] += a * a * c.decoder.weight[i] * (c.strip.quiet[0][p] + y + float64(c.strip.level[p]))
+			variance[j] += a * a * c.decoder.scale.quiet[i] * (c.strip.quiet[0][p] + y + float64(c.strip.level[p]))
 		}
 		variance[j] += float64(c.strip.levelVariance[p]) / (c.decoder.k * c.decoder.k)
 	}

@@ -6,6 +6,7 @@ import (
 	"math"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
 )
@@ -24,7 +25,7 @@ func (r *reduction) checkDetector(ctx context.Context, m *wholeMasters) error {
 	biases := firstPairs(r.roles.calibration.bias, true)
 	l := &r.roles.calibration.lamps
 	var flats []framePair
-	for _, frames := range [][]*frame{l.on, l.even, l.odd} {
+	for _, frames := range [][]*exposure.Frame{l.on, l.even, l.odd} {
 		flats = append(flats, firstPairs(frames, false)...)
 	}
 	flats = flats[:min(len(flats), transferPairs)]
@@ -36,26 +37,26 @@ func (r *reduction) checkDetector(ctx context.Context, m *wholeMasters) error {
 
 // framePair is two frames of the same light, or of none.
 type framePair struct {
-	frames [2]*frame
+	frames [2]*exposure.Frame
 	dark   bool
 }
 
-func firstPairs(frames []*frame, dark bool) []framePair {
+func firstPairs(frames []*exposure.Frame, dark bool) []framePair {
 	var pairs []framePair
 	for i := 0; i+1 < len(frames) && len(pairs) < transferPairs; i += 2 {
-		pairs = append(pairs, framePair{[2]*frame{frames[i], frames[i+1]}, dark})
+		pairs = append(pairs, framePair{[2]*exposure.Frame{frames[i], frames[i+1]}, dark})
 	}
 	return pairs
 }
 
 // transfer measures gain and read noise of every amplifier.
 func (r *reduction) transfer(ctx context.Context, m *wholeMasters, pairs []framePair) error {
-	blocks := make([][]calib.Pair, len(r.camera.amplifiers))
+	blocks := make([][]calib.Pair, len(r.camera.Amplifiers))
 	for _, pair := range pairs {
 		var e [2]*calib.Exposure
 		for i, f := range pair.frames {
 			var err error
-			if e[i], err = r.lampExposure(f, m, false, new(readScratch)); err != nil {
+			if e[i], err = r.lampExposure(f, m, false, new(exposure.Scratch)); err != nil {
 				return err
 			}
 		}
@@ -91,7 +92,7 @@ func (r *reduction) transfer(ctx context.Context, m *wholeMasters, pairs []frame
 // perRead turns what the pairs show into what the profile gives: the pairs' variance
 // is Photon times that of the electrons, and Read times that of one read.
 func (r *reduction) perRead(t *calib.Transfer) {
-	n := r.camera.noise
+	n := r.camera.Noise
 	one := n.Photon / math.Sqrt(n.Read)
 	t.Gain, t.GainError = t.Gain*n.Photon, t.GainError*n.Photon
 	t.ReadNoise, t.ReadNoiseError = t.ReadNoise*one, t.ReadNoiseError*one
@@ -109,15 +110,15 @@ func (r *reduction) compare(amplifier int, what string, value, err, profile floa
 // amplifierPair cuts an amplifier's pixels out of two exposures, in ADU: every row, or
 // as few of them as transferPixels allow.
 func (r *reduction) amplifierPair(a int, e [2]*calib.Exposure) calib.Pair {
-	amp := &r.camera.amplifiers[a]
-	w, h := amp.place.Raw.Width(), amp.place.Raw.Height()
+	amp := &r.camera.Amplifiers[a]
+	w, h := amp.Place.Raw.Width(), amp.Place.Raw.Height()
 	every := (w*h + transferPixels - 1) / transferPixels
 	h /= every
 	pair := calib.Pair{A: make([]float32, w*h), B: make([]float32, w*h), Flags: make([]calib.Flag, w*h), Width: w}
-	gain := float32(amp.gain)
+	gain := float32(amp.Gain)
 	for y := range h {
 		for x := range w {
-			from, to := (amp.place.Y0+y*every)*r.camera.columns+amp.place.X0+x, y*w+x
+			from, to := (amp.Place.Y0+y*every)*r.camera.Columns+amp.Place.X0+x, y*w+x
 			pair.A[to], pair.B[to] = e[0].Signal[from]/gain, e[1].Signal[from]/gain
 			pair.Flags[to] = e[0].Flags[from] | e[1].Flags[from]
 		}
@@ -128,30 +129,30 @@ func (r *reduction) amplifierPair(a int, e [2]*calib.Exposure) calib.Pair {
 // persistence compares each arc frame that directly follows a flat with that flat:
 // what it left behind shows between the arc's lines, those found and those listed.
 func (r *reduction) persistence(m *wholeMasters, arcs []calib.ArcFrame) error {
-	byStep := map[int]*frame{}
+	byStep := map[int]*exposure.Frame{}
 	for _, f := range r.roles.calibration.lamps.all() {
-		byStep[f.step] = f
+		byStep[f.Step] = f
 	}
 	var fit calib.PersistenceFit
 	found := false
 	for i, f := range r.roles.arcs {
-		before, ok := byStep[f.step-1]
-		if !ok || r.seq.Steps[f.step-1].Kind != sequence.Flat {
+		before, ok := byStep[f.Step-1]
+		if !ok || r.seq.Steps[f.Step-1].Kind != sequence.Flat {
 			continue
 		}
-		if pattern, _ := r.seq.Pattern(f.step - 1); pattern == sequence.PatternOff {
+		if pattern, _ := r.seq.Pattern(f.Step - 1); pattern == sequence.PatternOff {
 			continue // nothing that could stay
 		}
-		left, err := r.lampExposure(f, m, false, new(readScratch))
+		left, err := r.lampExposure(f, m, false, new(exposure.Scratch))
 		if err != nil {
 			return err
 		}
-		lit, err := r.lampExposure(before, m, false, new(readScratch))
+		lit, err := r.lampExposure(before, m, false, new(exposure.Scratch))
 		if err != nil {
 			return err
 		}
-		for y := range r.camera.rows {
-			a, b := y*r.camera.columns, (y+1)*r.camera.columns
+		for y := range r.camera.Rows {
+			a, b := y*r.camera.Columns, (y+1)*r.camera.Columns
 			r.hideLines(left.Flags[a:b], arcs[i], y)
 			fit.Add(left.Signal[a:b], left.Variance[a:b], lit.Signal[a:b], left.Flags[a:b])
 		}

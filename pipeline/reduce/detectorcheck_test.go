@@ -7,19 +7,20 @@ import (
 	"go.uber.org/zap"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 )
 
 func TestFirstPairs(t *testing.T) {
-	frames := make([]*frame, 9)
+	frames := make([]*exposure.Frame, 9)
 	for i := range frames {
-		frames[i] = &frame{step: i}
+		frames[i] = &exposure.Frame{Step: i}
 	}
 	require.Empty(t, firstPairs(frames[:1], true))
 	require.Len(t, firstPairs(frames[:3], true), 1)
 	pairs := firstPairs(frames, false)
 	require.Len(t, pairs, transferPairs)
-	require.Equal(t, [2]*frame{frames[4], frames[5]}, pairs[2].frames)
+	require.Equal(t, [2]*exposure.Frame{frames[4], frames[5]}, pairs[2].frames)
 	require.False(t, pairs[2].dark)
 }
 

@@ -58,12 +58,7 @@ func dispersionTable(g calib.Geometry, arcs *calib.ArcSolution, u *usage, column
 			return nil, err
 		}
 	}
-	for _, c := range geometryCards(&g) {
-		if err := t.Header.Set(c.key, *c.value, c.comment); err != nil {
-			return nil, err
-		}
-	}
-	return t, nil
+	return t, product.SetGeometry(t.Header, g.Parameters())
 }
 
 // polynomial passes a polynomial through a function's values at Chebyshev

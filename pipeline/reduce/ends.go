@@ -77,7 +77,7 @@ func (r *reduction) litRows(element int) (first, last int) {
 // whatever the column: the trace's excursion is left out. Closed rows part them.
 func (r *reduction) litStretches(element int) [][2]int {
 	down, up := 0.0, 0.0
-	for x := range r.camera.columns {
+	for x := range r.camera.Columns {
 		t := r.optics.geometry.TraceShift(float64(x))
 		down, up = min(down, t), max(up, t)
 	}
@@ -85,7 +85,7 @@ func (r *reduction) litStretches(element int) [][2]int {
 	var all [][2]int
 	for i := 0; i+1 < len(ends); i += 2 {
 		low, high := min(ends[i].Row, ends[i+1].Row), max(ends[i].Row, ends[i+1].Row)
-		first, last := max(0, int(math.Ceil(low+up))), min(r.camera.rows-1, int(math.Floor(high+down)))
+		first, last := max(0, int(math.Ceil(low+up))), min(r.camera.Rows-1, int(math.Floor(high+down)))
 		if first <= last {
 			all = append(all, [2]int{first, last})
 		}
@@ -97,8 +97,8 @@ func (r *reduction) litStretches(element int) [][2]int {
 // [row][element].
 func (r *reduction) lit() []float32 {
 	p, n := r.seq.Profile, r.seq.N()
-	all := make([]float32, r.camera.rows*n)
-	share := make([]float64, r.camera.rows)
+	all := make([]float32, r.camera.Rows*n)
+	share := make([]float64, r.camera.Rows)
 	for j, column := range r.seq.ElementColumns() {
 		mirrors, first := litMirrorRows(r.seq, r.seq.Elements[column])
 		var centers []float64

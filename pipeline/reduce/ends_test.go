@@ -7,13 +7,14 @@ import (
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
 // endsOf is a reduction that knows a sequence and its nominal geometry.
 func endsOf(seq *sequence.Sequence) *reduction {
-	r := &reduction{seq: seq, camera: &camera{columns: testColumns, rows: testRows}}
+	r := &reduction{seq: seq, camera: &exposure.Camera{Columns: testColumns, Rows: testRows}}
 	r.optics.geometry = nominalGeometry(seq)
 	return r
 }

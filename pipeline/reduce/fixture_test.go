@@ -8,6 +8,7 @@ import (
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/plan"
 	"mirrorloom/pipeline/sequence"
@@ -46,7 +47,7 @@ func smallSequence(t testing.TB, mounting string, change func(*sequence.Target, 
 }
 
 // writeFrame writes a raw frame, its pixels given by x and y from 0, and opens it.
-func writeFrame(t testing.TB, name string, columns, rows int, value func(x, y int) float32) *frame {
+func writeFrame(t testing.TB, name string, columns, rows int, value func(x, y int) float32) *exposure.Frame {
 	t.Helper()
 	data := make([]float32, columns*rows)
 	for i := range data {
@@ -59,5 +60,5 @@ func writeFrame(t testing.TB, name string, columns, rows int, value func(x, y in
 	t.Cleanup(func() { require.NoError(t, file.Close()) })
 	image, err := file.FirstImage()
 	require.NoError(t, err)
-	return &frame{name: name, file: file, image: image}
+	return &exposure.Frame{Name: name, Image: image}
 }

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -34,9 +35,9 @@ func (r *reduction) flatDepth(ctx context.Context, m *wholeMasters) error {
 	if err != nil {
 		return err
 	}
-	columns := r.camera.columns
+	columns := r.camera.Columns
 	light := make([]float32, (p.last-p.first)*columns)
-	err = parallel(ctx, r.opts.Workers, p.last-p.first, func(_, i int) error {
+	err = parallel.Do(ctx, r.opts.Workers, p.last-p.first, func(_, i int) error {
 		p.row(light[i*columns:(i+1)*columns], p.first+i)
 		return nil
 	})
@@ -97,7 +98,7 @@ func (r *reduction) newFlatPrediction() *flatPrediction {
 	p := &flatPrediction{
 		geometry: r.optics.geometry, pixel: r.optics.pixel, response: r.optics.response,
 		firstNM: r.schema.Grid.FirstNM, stepNM: r.schema.Grid.StepNM,
-		lamp: r.lampLight(), lit: make([]bool, r.camera.rows), last: r.camera.rows,
+		lamp: r.lampLight(), lit: make([]bool, r.camera.Rows), last: r.camera.Rows,
 	}
 	for l, c := range p.response.Colour {
 		p.lamp[l] *= c
@@ -117,9 +118,9 @@ func (r *reduction) newFlatPrediction() *flatPrediction {
 			count++
 		}
 	}
-	rows := max(1<<(depthLevels-1), int(depthLookups/float64(n*r.camera.columns)))
+	rows := max(1<<(depthLevels-1), int(depthLookups/float64(n*r.camera.Columns)))
 	middle /= max(1, count)
-	p.first, p.last = max(0, middle-rows/2), min(r.camera.rows, middle+(rows+1)/2)
+	p.first, p.last = max(0, middle-rows/2), min(r.camera.Rows, middle+(rows+1)/2)
 	if count == 0 {
 		p.last = p.first
 	}

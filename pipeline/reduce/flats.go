@@ -4,12 +4,16 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math"
 	"slices"
 	"strings"
 
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -69,8 +73,8 @@ func (r *reduction) noFlat(why error) {
 }
 
 // flatLacks says what the coded cycle lacks; empty if nothing. A cycle without one of
-// its rows cannot be decoded: the lamp's light of all elements would be missing from
-// each.
+// its rows cannot be decoded unless the dark columns restore it: the lamp's light of all
+// elements would be missing from each.
 func (r *reduction) flatLacks() string {
 	const off = "or say `flat: {use: off}` in the recipe"
 	l := &r.roles.calibration.lamps
@@ -78,7 +82,7 @@ func (r *reduction) flatLacks() string {
 	switch {
 	case l.coded == nil:
 		return "there is no coded lamp frame; plan or repeat a coded flat cycle, " + off
-	case len(lost) == 0:
+	case len(lost) == 0 || r.lampRestores(lost):
 		return ""
 	}
 	have := r.seq.V - len(lost)
@@ -88,6 +92,22 @@ func (r *reduction) flatLacks() string {
 		return fmt.Sprintf("%d of %d coded lamp frames are there; repeat the cycle, %s", have, r.seq.V, off)
 	}
 	return fmt.Sprintf("%d of %d coded lamp frames are there; repeat step %s, %s", have, r.seq.V, strings.Join(steps, ", "), off)
+}
+
+// lampRestores tells whether lost rows of the coded cycle can be restored without more
+// noise than is tolerable, and says so.
+func (r *reduction) lampRestores(lost []int) bool {
+	code, err := r.code()
+	if err != nil {
+		return false // said when the cycle is decoded
+	}
+	l := &r.roles.calibration.lamps
+	p, lack := r.newRepair(r.newDecoder(code, l.coded, nil), l.off)
+	if lack != nil || math.Sqrt(p.lost.Growth) > troubledGrowth {
+		return false
+	}
+	r.warn("%d of %d coded lamp frames are missing: they are restored from the dark columns", len(lost), r.seq.V)
+	return true
 }
 
 // lampSteps names the flat steps that show rows of the code.
@@ -105,7 +125,7 @@ func (r *reduction) lampSteps(rows []int) []string {
 // k all-on frames. The all-on frames themselves are few beside it, and kept for
 // flatDepth.
 func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
-	var frames []*frame
+	var frames []*exposure.Frame
 	for _, list := range r.roles.calibration.lamps.coded {
 		frames = append(frames, list...)
 	}
@@ -115,10 +135,10 @@ func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
 	}
 	expected := make([]float32, len(sum.Signal))
 	p := r.seq.Profile
-	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.columns, p.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
+	if err := calib.LampShape(expected, r.optics.geometry, r.seq.N(), r.camera.Columns, p.Spectrograph.LSFFWHMPx, r.lampAt); err != nil {
 		return err
 	}
-	shift := make([]float64, r.camera.columns)
+	shift := make([]float64, r.camera.Columns)
 	for x := range shift {
 		shift[x] = r.optics.geometry.TraceShift(float64(x))
 	}
@@ -138,7 +158,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		return err
 	}
 	s := shape{
-		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
+		columns: r.camera.Columns, rows: r.camera.Rows, slots: r.seq.V, elements: r.seq.N(),
 		voxels: r.schema.Grid.Count, cube: true, uniform: code.Design().IsS(),
 	}
 	rectify, err := newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers)
@@ -190,18 +210,24 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 	if err != nil {
 		return nil, err
 	}
-	d := r.newDecoder(code, l.coded)
+	d := r.newDecoder(code, l.coded, nil)
+	d.repair, _ = r.newRepair(d, l.off)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return nil, err
 	}
+	reader := r.newReader(l.coded, l.seconds, masterLampOff, nil)
+	reader.restore = d.repair != nil
 	return &sweep{
 		shape: s, heights: h, decoder: d, rectify: rectify, workers: r.opts.Workers,
-		reader:   r.newReader(l.coded, l.seconds, masterLampOff),
+		reader:   reader,
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("flats", rows, s.rows) },
 		sink: func(ctx context.Context, out *outStrip) error {
+			for i := range out.flags { // restored light is as good as any
+				out.flags[i] &^= product.FlagRestored
+			}
 			groups := (s.elements + group - 1) / group
-			return parallel(ctx, r.opts.Workers, groups, func(_, i int) error {
+			return parallel.Do(ctx, r.opts.Workers, groups, func(_, i int) error {
 				fit.AddStrip(out.y0, out.h, out.signal, out.variance, out.flags, i*group, min((i+1)*group, s.elements))
 				return nil
 			})
@@ -213,7 +239,7 @@ func (r *reduction) flatSweep(code *hadamard.Code, s shape, rectify *rectifier, 
 func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 	rule := calib.DefaultFlatRule()
 	edges := make([]float64, r.schema.Grid.Count+1)
-	y := r.camera.rows / 2
+	y := r.camera.Rows / 2
 	r.optics.geometry.EdgesX(edges, r.optics.geometry.J_c, float64(y), r.schema.Grid.WavelengthNM(-0.5), r.schema.Grid.StepNM)
 	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
 	return rule

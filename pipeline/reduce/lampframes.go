@@ -3,21 +3,22 @@ package reduce
 import (
 	"fmt"
 
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/sequence"
 )
 
 // lamps are the frames of the flats' lamp by what the mirrors show, and their
 // exposure time in seconds.
 type lamps struct {
-	on, even, odd, off []*frame
-	coded              [][]*frame // by code row; nil without a coded cycle
+	on, even, odd, off []*exposure.Frame
+	coded              [][]*exposure.Frame // by code row; nil without a coded cycle
 	seconds            float64
 }
 
 // add sorts in a frame of a lamp; one that shows anything else is left out.
-func (l *lamps) add(seq *sequence.Sequence, f *frame) error {
-	step := seq.Steps[f.step]
-	pattern, row := seq.Pattern(f.step)
+func (l *lamps) add(seq *sequence.Sequence, f *exposure.Frame) error {
+	step := seq.Steps[f.Step]
+	pattern, row := seq.Pattern(f.Step)
 	switch pattern {
 	case sequence.PatternOn:
 		l.on = append(l.on, f)
@@ -29,7 +30,7 @@ func (l *lamps) add(seq *sequence.Sequence, f *frame) error {
 		l.off = append(l.off, f)
 	case sequence.PatternRow:
 		if l.coded == nil {
-			l.coded = make([][]*frame, seq.V)
+			l.coded = make([][]*exposure.Frame, seq.V)
 		}
 		l.coded[row] = append(l.coded[row], f)
 	default:
@@ -54,9 +55,9 @@ func (l *lamps) lost() []int {
 }
 
 // all lists every frame, coded ones in the order of their rows.
-func (l *lamps) all() []*frame {
-	var all []*frame
-	for _, list := range [][]*frame{l.on, l.even, l.odd, l.off} {
+func (l *lamps) all() []*exposure.Frame {
+	var all []*exposure.Frame
+	for _, list := range [][]*exposure.Frame{l.on, l.even, l.odd, l.off} {
 		all = append(all, list...)
 	}
 	for _, list := range l.coded {

@@ -5,6 +5,7 @@ import (
 
 	"github.com/stretchr/testify/require"
 
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
@@ -20,22 +21,22 @@ func TestLampFrames(t *testing.T) {
 	require.Len(t, flats, 4*2+15)
 	var l lamps
 	for k := range flats {
-		require.NoError(t, l.add(seq, &frame{step: flats[len(flats)-1-k]}))
+		require.NoError(t, l.add(seq, &exposure.Frame{Step: flats[len(flats)-1-k]}))
 	}
-	for _, list := range [][]*frame{l.on, l.even, l.odd, l.off} {
+	for _, list := range [][]*exposure.Frame{l.on, l.even, l.odd, l.off} {
 		require.Len(t, list, 2)
 	}
 	require.Len(t, l.coded, 15)
 	for row, list := range l.coded {
 		require.Len(t, list, 1)
-		require.Equal(t, row, seq.Steps[list[0].step].Row)
+		require.Equal(t, row, seq.Steps[list[0].Step].Row)
 	}
 	require.Empty(t, l.lost())
 	require.Len(t, l.all(), len(flats))
 	require.Equal(t, 5.0, l.seconds)
 	for _, f := range l.even { // the design's all-even has 1 at even j
 		for j, column := range seq.ElementColumns() {
-			require.Equal(t, uint8(1-j%2), seq.Code[f.step][column])
+			require.Equal(t, uint8(1-j%2), seq.Code[f.Step][column])
 		}
 	}
 
@@ -48,9 +49,9 @@ func TestLampFrames(t *testing.T) {
 	before := len(l.all())
 	arc := seq.StepsOf(sequence.Arc)[1]
 	seq.Steps[arc].ExptimeSeconds = 5
-	require.NoError(t, l.add(seq, &frame{step: arc}))
+	require.NoError(t, l.add(seq, &exposure.Frame{Step: arc}))
 	require.Len(t, l.all(), before)
 
 	seq.Steps[flats[0]].ExptimeSeconds = 7
-	require.ErrorContains(t, l.add(seq, &frame{step: flats[0]}), "flat steps of 5 s and of 7 s")
+	require.ErrorContains(t, l.add(seq, &exposure.Frame{Step: flats[0]}), "flat steps of 5 s and of 7 s")
 }

@@ -6,6 +6,7 @@ import (
 	"math"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 )
 
 // lampTerms fits the neighbour term and the leak to lamp frames, row by row of the
@@ -26,7 +27,7 @@ type lampTerms struct {
 
 func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTerms, error) {
 	l := &r.roles.calibration.lamps
-	t := &lampTerms{columns: r.camera.columns, elements: r.seq.N()}
+	t := &lampTerms{columns: r.camera.Columns, elements: r.seq.N()}
 	var err error
 	if len(l.off) > 0 {
 		if t.leak, err = r.meanExposure(ctx, l.off, m); err != nil {
@@ -34,7 +35,7 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 		}
 		t.leakRows = r.leakRows()
 		t.leakFrame = r.leakFrame(len(l.off))
-		t.amplifier = r.camera.amplifierOf()
+		t.amplifier = r.camera.AmplifierOf()
 	}
 	if len(l.on) == 0 || len(l.even) == 0 || len(l.odd) == 0 || len(l.off) == 0 {
 		return t, nil
@@ -43,7 +44,7 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 	if err != nil {
 		return nil, err
 	}
-	for _, part := range [][]*frame{l.even, l.odd} {
+	for _, part := range [][]*exposure.Frame{l.even, l.odd} {
 		e, err := r.meanExposure(ctx, part, m)
 		if err != nil {
 			return nil, err
@@ -58,10 +59,10 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 // leakFrame describes the mean of so many all-off frames of the lamp.
 func (r *reduction) leakFrame(frames int) calib.LeakFrame {
 	c := &r.roles.calibration
-	f := calib.LeakFrame{Geometry: r.optics.geometry, Elements: r.seq.N(), Columns: r.camera.columns, LevelRows: 1}
+	f := calib.LeakFrame{Geometry: r.optics.geometry, Elements: r.seq.N(), Columns: r.camera.Columns, LevelRows: 1}
 	p, columns := r.seq.Profile, r.seq.ElementColumns()
 	middle := r.seq.Elements[columns[len(columns)/2]]
-	for y := range r.camera.rows {
+	for y := range r.camera.Rows {
 		f.Coded = append(f.Coded, rowFlags(r.seq, p, mirrorRow(p, float64(y)), middle) == 0)
 	}
 	// A level is that of each frame and of each that was taken off.
@@ -72,14 +73,10 @@ func (r *reduction) leakFrame(frames int) calib.LeakFrame {
 	if n := len(c.dark); n > 0 {
 		part += math.Pow(c.lamps.seconds/c.darkSeconds, 2) / float64(n)
 	}
-	for i := range r.camera.amplifiers {
-		a := &r.camera.amplifiers[i]
-		variance := 0.0
-		if n := a.averaged(); n > 0 {
-			variance = part * a.variance / float64(n+1)
-			f.LevelRows = max(f.LevelRows, 2*a.levels.HalfWindow+1)
-		}
-		f.LevelSigma = append(f.LevelSigma, math.Sqrt(variance))
+	for i := range r.camera.Amplifiers {
+		variance, rows := r.camera.Amplifiers[i].LevelVariance()
+		f.LevelRows = max(f.LevelRows, rows)
+		f.LevelSigma = append(f.LevelSigma, math.Sqrt(part*variance))
 	}
 	return f
 }
@@ -99,7 +96,7 @@ func (t *lampTerms) begin(o *optics) (err error) {
 }
 
 // meanExposure is the mean of frames, less bias and dark current.
-func (r *reduction) meanExposure(ctx context.Context, frames []*frame, m *wholeMasters) (*calib.Exposure, error) {
+func (r *reduction) meanExposure(ctx context.Context, frames []*exposure.Frame, m *wholeMasters) (*calib.Exposure, error) {
 	e, err := r.sumExposures(ctx, frames, m, false)
 	if err != nil {
 		return nil, err

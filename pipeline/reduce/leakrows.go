@@ -25,10 +25,10 @@ func (r *reduction) leakRows() []leakRow {
 	first, last := seq.Elements[columns[0]], seq.Elements[columns[len(columns)-1]]
 	middle := seq.Elements[columns[len(columns)/2]]
 	reach := p.Spectrograph.LSFFWHMPx
-	for x := range r.camera.columns {
+	for x := range r.camera.Columns {
 		reach = max(reach, p.Spectrograph.LSFFWHMPx+math.Abs(g.TraceShift(float64(x))))
 	}
-	rows := make([]leakRow, r.camera.rows)
+	rows := make([]leakRow, r.camera.Rows)
 	wFirst, wLast := p.WRange()
 	for y := range rows {
 		low, high := mirrorRow(p, float64(y)-reach), mirrorRow(p, float64(y)+reach)

@@ -8,6 +8,8 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
 )
 
 // The masters of the night lie in a scratch file while a reduction runs, one
@@ -28,15 +30,15 @@ const mastersFile = "masters.fits"
 // times in seconds: of the science frames, of the darks, of the all-off frames.
 // lamps are those of the flats.
 type calibration struct {
-	bias, dark, off                         []*frame
+	bias, dark, off                         []*exposure.Frame
 	lamps                                   lamps
 	scienceSeconds, darkSeconds, offSeconds float64
 }
 
 // prepare makes the masters, strip by strip.
 type prepare struct {
-	camera  *camera
-	album   *album
+	camera  *exposure.Camera
+	album   *exposure.Album
 	frames  calibration
 	recipe  DetectorRecipe
 	workers int
@@ -54,7 +56,7 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 		if i == masterBad {
 			bitpix = 16
 		}
-		specs = append(specs, fitsutil.ImageSpec{Name: name, BITPIX: bitpix, Axes: []int{p.camera.columns, p.camera.rows}})
+		specs = append(specs, fitsutil.ImageSpec{Name: name, BITPIX: bitpix, Axes: []int{p.camera.Columns, p.camera.Rows}})
 	}
 	out, err := fitsutil.CreateCube(filepath.Join(dir, mastersFile), fitsutil.NewHeader(), specs)
 	if err != nil {
@@ -62,8 +64,8 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 	}
 	defer out.Abort()
 	h := p.height()
-	for y0 := 0; y0 < p.camera.rows; y0 += h {
-		y1 := min(y0+h, p.camera.rows)
+	for y0 := 0; y0 < p.camera.Rows; y0 += h {
+		y1 := min(y0+h, p.camera.Rows)
 		s, err := p.strip(ctx, y0, y1)
 		if err != nil {
 			return 0, err
@@ -90,8 +92,8 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 // the most numerous kind at once.
 func (p *prepare) height() int {
 	most := max(len(p.frames.bias), len(p.frames.dark), len(p.frames.off), len(p.frames.lamps.on), len(p.frames.lamps.off), 1)
-	perRow := int64(most+8) * int64(p.camera.columns) * bytesFloat
-	return int(min(int64(p.camera.rows), max(1, p.memory/2/perRow-2*int64(deadMargin))))
+	perRow := int64(most+8) * int64(p.camera.Columns) * bytesFloat
+	return int(min(int64(p.camera.Rows), max(1, p.memory/2/perRow-2*int64(deadMargin))))
 }
 
 // masterStrip is the masters of some rows.
@@ -101,7 +103,7 @@ type masterStrip struct {
 }
 
 func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
-	n := (y1 - y0) * p.camera.columns
+	n := (y1 - y0) * p.camera.Columns
 	s := &masterStrip{bad: make([]calib.Flag, n)}
 	for i := range s.images {
 		s.images[i] = make([]float32, n)
@@ -135,34 +137,34 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 // stack takes the clipped mean of frames over rows y0..y1-1, in electrons
 // above the level; nil without frames. Pixels without a value are marked in
 // bad, whose first row is badY0.
-func (p *prepare) stack(ctx context.Context, frames []*frame, y0, y1 int, bad []calib.Flag, badY0 int) ([]float32, error) {
+func (p *prepare) stack(ctx context.Context, frames []*exposure.Frame, y0, y1 int, bad []calib.Flag, badY0 int) ([]float32, error) {
 	if len(frames) == 0 {
 		return nil, nil
 	}
-	n := (y1 - y0) * p.camera.columns
+	n := (y1 - y0) * p.camera.Columns
 	samples := make([][]float32, len(frames))
-	scratch := make([]readScratch, p.workers)
+	scratch := make([]exposure.Scratch, p.workers)
 	blank := make([][]calib.Flag, len(frames))
-	err := parallel(ctx, p.workers, len(frames), func(worker, i int) error {
+	err := parallel.Do(ctx, p.workers, len(frames), func(worker, i int) error {
 		samples[i] = make([]float32, n)
 		mark := func(flags []calib.Flag, x, y, w int) {
 			if blank[i] == nil {
 				blank[i] = make([]calib.Flag, n)
 			}
-			p.camera.merge(blank[i], y0, flags, x, y, w)
+			p.camera.Merge(blank[i], y0, flags, x, y, w)
 		}
-		if _, err := p.camera.read(samples[i], frames[i].image, y0, y1, &scratch[worker], mark); err != nil {
+		if _, err := p.camera.Read(samples[i], frames[i].Image, y0, y1, &scratch[worker], mark); err != nil {
 			return err
 		}
-		return p.album.done(frames[i])
+		return p.album.Done(frames[i])
 	})
 	if err != nil {
 		return nil, err
 	}
 	mean, variance := make([]float32, n), make([]float32, n)
 	clip := calib.Clip{Sigmas: p.recipe.ClipSigma, Floor: 0.5}
-	columns := p.camera.columns
-	err = parallel(ctx, p.workers, y1-y0, func(_, row int) error {
+	columns := p.camera.Columns
+	err = parallel.Do(ctx, p.workers, y1-y0, func(_, row int) error {
 		part := make([][]float32, len(samples))
 		for i := range samples {
 			part[i] = samples[i][row*columns : (row+1)*columns]
@@ -180,15 +182,6 @@ func (p *prepare) stack(ctx context.Context, frames []*frame, y0, y1 int, bad []
 	return mean, err
 }
 
-// merge adds the flags of a block to those of all columns from row y0 on.
-func (c *camera) merge(dst []calib.Flag, y0 int, flags []calib.Flag, x, y, w int) {
-	for i, f := range flags {
-		if f != 0 {
-			dst[(y+i/w-y0)*c.columns+x+i%w] |= f
-		}
-	}
-}
-
 // combine turns means into rates, and says how uncertain is what they take off
 // a science frame. With B the bias, d and o the means of dark and all-off frames
 // exposed for td and to, and t the science exposure,
@@ -201,7 +194,7 @@ func (c *camera) merge(dst []calib.Flag, y0 int, flags []calib.Flag, x, y, w int
 func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []float32) {
 	f := p.frames
 	for i := range s.bad {
-		quiet := p.camera.variance[y0+i/p.camera.columns][i%p.camera.columns]
+		quiet := p.camera.Variance[y0+i/p.camera.Columns][i%p.camera.Columns]
 		var biasE, darkRate, biasVariance float64
 		if bias != nil {
 			biasE, biasVariance = float64(bias[i]), quiet/float64(len(f.bias))
@@ -210,12 +203,12 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []flo
 		if dark != nil {
 			charge := float64(dark[i]) - biasE
 			darkRate = charge / f.darkSeconds
-			taken = p.camera.meanVariance(quiet, charge, len(f.dark), f.scienceSeconds/f.darkSeconds, biasVariance)
+			taken = meanVariance(p.camera, quiet, charge, len(f.dark), f.scienceSeconds/f.darkSeconds, biasVariance)
 		}
 		if off != nil {
 			charge := float64(off[i]) - biasE
 			s.images[masterOff][i] = float32(charge/f.offSeconds - darkRate)
-			taken = p.camera.meanVariance(quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
+			taken = meanVariance(p.camera, quiet, charge, len(f.off), f.scienceSeconds/f.offSeconds, biasVariance)
 		}
 		if lampOff != nil {
 			s.images[masterLampOff][i] = float32((float64(lampOff[i])-biasE)/f.lamps.seconds - darkRate)
@@ -227,8 +220,8 @@ func (p *prepare) combine(s *masterStrip, y0 int, bias, dark, off, lampOff []flo
 
 // meanVariance takes the charge as it is, below 0 as well: clipped, noise alone would
 // look like light.
-func (c *camera) meanVariance(quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
-	own := max(quiet+(1+c.photonExcess)*charge, quiet*varianceFloor)
+func meanVariance(c *exposure.Camera, quiet, charge float64, frames int, ratio, biasVariance float64) float64 {
+	own := max(quiet+(1+c.PhotonExcess)*charge, quiet*varianceFloor)
 	return ratio*ratio*own/float64(frames) + (1-ratio)*(1-ratio)*biasVariance
 }
 
@@ -244,9 +237,9 @@ func (p *prepare) findHot(s *masterStrip, known bool) error {
 		charge[i] = rate * float32(p.frames.scienceSeconds)
 	}
 	const readNoises = 10 // the excess, in read variances: as much noise again and more
-	rule := calib.DefaultHotRule(readNoises * p.camera.variance[0][0])
+	rule := calib.DefaultHotRule(readNoises * p.camera.NoisiestVariance())
 	rule.Sigmas = p.recipe.HotSigma
-	_, err := rule.Flag(s.bad, charge, p.camera.columns)
+	_, err := rule.Flag(s.bad, charge, p.camera.Columns)
 	return err
 }
 
@@ -264,7 +257,7 @@ func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) erro
 	if len(p.frames.lamps.on) == 0 {
 		return nil
 	}
-	first, last := max(0, y0-deadMargin), min(p.camera.rows, y1+deadMargin)
+	first, last := max(0, y0-deadMargin), min(p.camera.Rows, y1+deadMargin)
 	lamp, err := p.stack(ctx, p.frames.lamps.on, first, last, s.bad, y0)
 	if err != nil {
 		return err
@@ -276,13 +269,13 @@ func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) erro
 	if bias != nil {
 		calib.Subtract(lamp, bias, 1)
 	}
-	rule := calib.DefaultDeadRule(levelAbove(p.camera.variance[0][0]))
+	rule := calib.DefaultDeadRule(levelAbove(p.camera.NoisiestVariance()))
 	rule.Fraction = p.recipe.DeadBelow
 	flags := make([]calib.Flag, len(lamp))
-	if _, err := rule.Flag(flags, lamp, p.camera.columns); err != nil {
+	if _, err := rule.Flag(flags, lamp, p.camera.Columns); err != nil {
 		return err
 	}
-	inner := flags[(y0-first)*p.camera.columns:][:len(s.bad)]
+	inner := flags[(y0-first)*p.camera.Columns:][:len(s.bad)]
 	for i, f := range inner {
 		s.bad[i] |= f
 	}

@@ -8,6 +8,7 @@ import (
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -35,12 +36,12 @@ func offOf(x, _ int) float64 { return 0.2 + 0.01*float64(x) }
 
 func newMasterNight(t *testing.T) *masterNight {
 	t.Helper()
-	c, err := newCamera(&instrument.Detector{
+	c, err := exposure.NewCamera(&instrument.Detector{
 		Columns: 16, Rows: 20, SaturationADU: 60000,
 		Amplifiers: []instrument.Amplifier{{Data: instrument.Section{1, 16, 1, 20}, GainEPerADU: 2, ReadNoiseE: 3, BiasADU: 100}},
 	})
 	require.NoError(t, err)
-	take := func(name string, n int, light func(x, y int) float64) (list []*frame) {
+	take := func(name string, n int, light func(x, y int) float64) (list []*exposure.Frame) {
 		for k := range n {
 			list = append(list, writeFrame(t, name, 16, 20, func(x, y int) float32 {
 				if y*16+x == blankAt && name == "dark" && k == 1 {
@@ -52,7 +53,7 @@ func newMasterNight(t *testing.T) *masterNight {
 		return list
 	}
 	dark := func(x, y int) float64 { return darkOf(y*16 + x) }
-	p := &prepare{camera: c, album: &album{}, workers: 2, memory: 1 << 20}
+	p := &prepare{camera: c, album: &exposure.Album{}, workers: 2, memory: 1 << 20}
 	p.recipe.SetDefaults()
 	p.frames = calibration{
 		bias: take("bias", 7, func(int, int) float64 { return 0 }),

@@ -30,16 +30,20 @@ func (o *optics) neighbourTerm(d *decoder) (*neighbourTerm, error) {
 	return &neighbourTerm{pairs: pairs, geometry: o.geometry, term: o.neighbour}, nil
 }
 
-// correct works on the n pixels of row y from column x0 on. The size of the term
-// is linear in the wavelength, and so nearly linear over the elements of a pixel.
-func (t *neighbourTerm) correct(w *decodeWorker, x0, y, n int) {
-	middle := t.geometry.J_c
+// sizes fills in the term of the n pixels of row y from column x0 on.
+func (t *neighbourTerm) sizes(size, slope []float32, x0, y, n int) {
 	for p := range n {
-		x := float64(x0 + p)
-		row := float64(y) - t.geometry.TraceShift(x)
-		below, _ := t.term.At(t.geometry.Wavelength(x, middle-0.5, row))
-		above, _ := t.term.At(t.geometry.Wavelength(x, middle+0.5, row))
-		w.size[p], w.slope[p] = float32((below+above)/2), float32(above-below)
+		size[p], slope[p] = t.at(x0+p, y)
 	}
-	t.pairs.Correct(w.decoded, w.size, w.slope, n, n)
+}
+
+// at is the term in the middle of a pixel's elements, and its slope from one to the
+// next. The size of the term is linear in the wavelength, and so nearly linear over the
+// elements of a pixel.
+func (t *neighbourTerm) at(column, y int) (size, slope float32) {
+	middle, x := t.geometry.J_c, float64(column)
+	row := float64(y) - t.geometry.TraceShift(x)
+	below, _ := t.term.At(t.geometry.Wavelength(x, middle-0.5, row))
+	above, _ := t.term.At(t.geometry.Wavelength(x, middle+0.5, row))
+	return float32((below + above) / 2), float32(above - below)
 }

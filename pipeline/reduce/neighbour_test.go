@@ -80,7 +80,8 @@ func TestNeighbourCorrection(t *testing.T) {
 	}
 	before := worst()
 	require.Greater(t, before, 0.2*size*1000, "the term is there")
-	term.correct(w, x, y, 1)
+	term.sizes(w.size, w.slope, x, y, 1)
+	term.pairs.Correct(w.decoded, w.size, w.slope, 1, 1)
 	require.Less(t, worst(), 2*size*size*1000*2)
 	require.Less(t, worst(), before/10)
 }

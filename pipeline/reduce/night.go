@@ -3,8 +3,8 @@ package reduce
 import (
 	"fmt"
 	"path/filepath"
-	"strings"
 
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/sequence"
@@ -13,22 +13,22 @@ import (
 // roles sorts a night's frames by what they are for.
 type roles struct {
 	calibration calibration
-	arcs        []*frame
-	slots       [][]*frame // science frames by code row
-	science     int        // their number
-	lost        []int      // code rows without a frame
-	missing     []int      // science steps without a frame, from 1
-	degraded    []string   // calibrations that were planned and are missing
+	arcs        []*exposure.Frame
+	slots       [][]*exposure.Frame // science frames by code row
+	science     int                 // their number
+	lost        []int               // code rows without a frame
+	missing     []int               // science steps without a frame, from 1
+	degraded    []string            // calibrations that were planned and are missing
 	warnings    []string
 }
 
 // sources are the frames that a reduction opens, in the order of their steps:
 // those of science, and what the recipe asks for. Lamp frames with all mirrors on
 // tell dead pixels, so that the detector asks for them as well as the flat.
-func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []source {
+func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []exposure.Source {
 	detector := recipe.Detector.Use != useOff
 	flat, arc := recipe.Flat.Use != useOff, recipe.Arc.Use == useAuto
-	var all []source
+	var all []exposure.Source
 	for _, f := range night.Frames {
 		wanted := false
 		switch f.Kind {
@@ -44,7 +44,7 @@ func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []source
 		if !wanted {
 			continue
 		}
-		all = append(all, source{path: f.Path, name: filepath.Base(f.Path), hdu: f.HDU, step: f.StepIndex, entry: f.StepIndex})
+		all = append(all, exposure.Source{Path: f.Path, Name: filepath.Base(f.Path), HDU: f.HDU, Step: f.StepIndex, Entry: f.StepIndex})
 	}
 	return all
 }
@@ -56,11 +56,11 @@ func isLampOn(seq *sequence.Sequence, step int) bool {
 }
 
 // assign sorts the open frames and says what is missing.
-func assign(seq *sequence.Sequence, frames []*frame, useCalibration bool) (*roles, error) {
-	r := &roles{slots: make([][]*frame, seq.V)}
+func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration bool) (*roles, error) {
+	r := &roles{slots: make([][]*exposure.Frame, seq.V)}
 	times := map[sequence.Kind]float64{}
 	for _, f := range frames {
-		step := seq.Steps[f.step]
+		step := seq.Steps[f.Step]
 		switch step.Kind {
 		case sequence.Science:
 			r.slots[step.Row] = append(r.slots[step.Row], f)
@@ -94,33 +94,13 @@ func assign(seq *sequence.Sequence, frames []*frame, useCalibration bool) (*role
 	return r, nil
 }
 
-// findLost lists the code rows that no frame shows.
-func (r *roles) findLost(seq *sequence.Sequence) {
-	for row, frames := range r.slots {
-		if len(frames) == 0 {
-			r.lost = append(r.lost, row)
-		}
-	}
-	if len(r.lost) == 0 {
-		return
-	}
-	var names []string
-	for _, i := range seq.StepsOf(sequence.Science) {
-		if len(r.slots[seq.Steps[i].Row]) == 0 {
-			r.missing = append(r.missing, seq.Steps[i].Step)
-			names = append(names, fmt.Sprint(seq.Steps[i].Step))
-		}
-	}
-	r.degraded = append(r.degraded, fmt.Sprintf("%d of %d code rows have no frame, so that every voxel is LOST; repeat step %s", len(r.lost), seq.V, strings.Join(names, ", ")))
-}
-
 // findMissing says which calibrations were planned and are not there at all.
 func (r *roles) findMissing(seq *sequence.Sequence) {
 	c := &r.calibration
 	for _, want := range []struct {
 		what    string
 		kind    sequence.Kind
-		have    []*frame
+		have    []*exposure.Frame
 		without string
 	}{
 		{"bias", sequence.Bias, c.bias, "the bias level is the overscan's or the profile's, without its structure"},
@@ -143,26 +123,11 @@ func (r *roles) findMissing(seq *sequence.Sequence) {
 	}
 }
 
-// weights is 1/frames for each slot, 0 for a lost one, their sum, and which slots
-// are lost.
-func weights(slots [][]*frame) (weight []float64, sum float64, lost []int) {
-	weight = make([]float64, len(slots))
-	for i, frames := range slots {
-		if n := len(frames); n > 0 {
-			weight[i] = 1 / float64(n)
-			sum += weight[i]
-		} else {
-			lost = append(lost, i)
-		}
-	}
-	return weight, sum, lost
-}
-
 // fillLedger puts what was measured into the ledger.
-func (r *roles) fillLedger(l product.Ledger, frames []*frame, seq *sequence.Sequence, pixels int) {
+func (r *roles) fillLedger(l product.Ledger, frames []*exposure.Frame, seq *sequence.Sequence, pixels int) {
 	for _, f := range frames {
-		if seq.Steps[f.step].Kind == sequence.Science {
-			l[f.entry].SaturatedFraction = float64(f.saturated) / float64(pixels)
+		if seq.Steps[f.Step].Kind == sequence.Science {
+			l[f.Entry].SaturatedFraction = float64(f.Saturated) / float64(pixels)
 		}
 	}
 }

@@ -5,15 +5,16 @@ import (
 
 	"github.com/stretchr/testify/require"
 
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
 // framesOf makes a frame for every step that keep chooses, none of them on disk.
-func framesOf(seq *sequence.Sequence, keep func(sequence.Step) bool) (list []*frame) {
+func framesOf(seq *sequence.Sequence, keep func(sequence.Step) bool) (list []*exposure.Frame) {
 	for i, st := range seq.Steps {
 		if keep(st) && (st.Kind != sequence.Flat || isLampOn(seq, i)) {
-			list = append(list, &frame{step: i, entry: i})
+			list = append(list, &exposure.Frame{Step: i, Entry: i})
 		}
 	}
 	return list
@@ -34,7 +35,7 @@ func TestAssignWhole(t *testing.T) {
 	for row, frames := range r.slots {
 		require.Len(t, frames, 2, "slot %d", row)
 		for _, f := range frames {
-			require.Equal(t, row, seq.Steps[f.step].Row)
+			require.Equal(t, row, seq.Steps[f.Step].Row)
 		}
 	}
 	c := r.calibration
@@ -47,10 +48,10 @@ func TestAssignWhole(t *testing.T) {
 	require.Empty(t, r.lost)
 	require.Empty(t, r.degraded)
 	require.Empty(t, r.warnings)
-	weight, sum, lost := weights(r.slots)
-	require.Empty(t, lost)
-	require.Equal(t, 0.5, weight[3])
-	require.InDelta(t, 7.5, sum, 1e-12)
+	scale := newSlotScale(r.slots, nil)
+	require.Empty(t, scale.lost)
+	require.Equal(t, 0.5, scale.quiet[3])
+	require.InDelta(t, 7.5, scale.quietSum, 1e-12)
 }
 
 // What is missing is said once, and graver where a whole kind is gone or a code row
@@ -72,15 +73,14 @@ func TestAssignMissing(t *testing.T) {
 	require.NoError(t, err)
 	require.Equal(t, []int{gone}, r.lost)
 	require.Equal(t, repeat, r.missing)
-	require.Len(t, r.degraded, 3)
-	require.Contains(t, r.degraded[0], "1 of 15 code rows have no frame")
-	require.Contains(t, r.degraded[1], "all 5 dark frames are missing")
-	require.Contains(t, r.degraded[2], "dead pixels are not known")
+	require.Len(t, r.degraded, 2)
+	require.Contains(t, r.degraded[0], "all 5 dark frames are missing")
+	require.Contains(t, r.degraded[1], "dead pixels are not known")
 	require.Equal(t, []string{"1 of 20 bias frames are missing"}, r.warnings)
-	weight, _, lost := weights(r.slots)
-	require.Equal(t, []int{gone}, lost)
-	require.Zero(t, weight[gone])
-	require.Equal(t, 1.0, weight[single.Row])
+	scale := newSlotScale(r.slots, nil)
+	require.Equal(t, []int{gone}, scale.lost)
+	require.True(t, scale.isLost(gone))
+	require.Equal(t, 1.0, scale.quiet[single.Row])
 	// Who asks for no calibration misses none.
 	r, err = assign(seq, framesOf(seq, func(st sequence.Step) bool { return st.Kind == sequence.Science }), false)
 	require.NoError(t, err)

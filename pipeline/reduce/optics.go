@@ -79,7 +79,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	if arc == useOff && flat == useOff {
 		return 0, nil
 	}
-	m, err := r.masters.whole(r.camera.rows, r.camera.columns)
+	m, err := r.masters.whole(r.camera.Rows, r.camera.Columns)
 	if err != nil {
 		return 0, err
 	}
@@ -110,7 +110,10 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 // checkGrid refuses a grid that the geometry cannot serve.
 func (r *reduction) checkGrid() error {
 	g := r.schema.Grid
-	err := r.optics.geometry.Check(r.camera.columns, r.camera.rows, g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5))
+	if !g.Even() {
+		return fmt.Errorf("the wavelength grid of %s: axis %s with spacing %s cannot be reduced to yet; use wave and linear", r.gridSource(), g.Axis, g.Spacing)
+	}
+	err := r.optics.geometry.Check(r.camera.Columns, r.camera.Rows, g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5))
 	if err != nil {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 	}
@@ -167,7 +170,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	frames := make([]calib.ArcFrame, len(r.roles.arcs))
 	rule := calib.DefaultPeakRule(r.seq.Profile.Spectrograph.LSFFWHMPx)
 	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) error {
-		_, element := r.seq.Pattern(r.roles.arcs[i].step)
+		_, element := r.seq.Pattern(r.roles.arcs[i].Step)
 		frames[i].Element, frames[i].Lines = element, lines[i]
 		for _, rows := range r.litStretches(element) {
 			peaks, err := rule.Find(*e, rows[0], rows[1])
@@ -214,7 +217,7 @@ func (r *reduction) arcLines() ([][]calib.LampLine, error) {
 	all := make([][]calib.LampLine, len(r.roles.arcs))
 	for i, f := range r.roles.arcs {
 		var err error
-		if all[i], err = lampLines(r.seq.Steps[f.step].Lamp, first-beyond, last+beyond); err != nil {
+		if all[i], err = lampLines(r.seq.Steps[f.Step].Lamp, first-beyond, last+beyond); err != nil {
 			return nil, err
 		}
 	}
@@ -240,7 +243,7 @@ func (r *reduction) solveTrace(ctx context.Context, m *wholeMasters) error {
 		if points == nil {
 			continue
 		}
-		solution, err := calib.FitTrace(r.optics.geometry, points, r.camera.columns)
+		solution, err := calib.FitTrace(r.optics.geometry, points, r.camera.Columns)
 		var unknown *calib.TraceError
 		if errors.As(err, &unknown) {
 			why = err
@@ -277,7 +280,7 @@ func (r *reduction) lampEnds(ctx context.Context, m *wholeMasters, rule calib.Tr
 func (r *reduction) arcEnds(ctx context.Context, m *wholeMasters, rule calib.TraceRule) ([]calib.EdgePoint, error) {
 	found := make([][]calib.EdgePoint, len(r.roles.arcs))
 	err := r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) (err error) {
-		_, element := r.seq.Pattern(r.roles.arcs[i].step)
+		_, element := r.seq.Pattern(r.roles.arcs[i].Step)
 		found[i], err = rule.Find(*e, r.ends(element), i*maxEnds)
 		return err
 	})

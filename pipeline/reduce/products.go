@@ -23,6 +23,11 @@ func (r *reduction) create(s shape) error {
 		if err != nil {
 			return err
 		}
+		more, err := r.noiseImages()
+		if err != nil {
+			return err
+		}
+		images = append(images, more...)
 		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
 			return err
 		}
@@ -42,22 +47,25 @@ func (r *reduction) create(s shape) error {
 // judge turns flags that were set into reasons why the product is not whole.
 func (r *reduction) judge(flags int16) {
 	if flags&product.FlagSaturated != 0 {
-		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in some science frame, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
+		r.roles.degraded = append(r.roles.degraded, fmt.Sprintf("%d pixels are saturated in more science frames than can be restored, and the voxels they reach are flagged SATURATED; shorten the dwell", r.quality.Saturated))
 	}
 }
 
 // finish appends the tables and gives every product its name.
 func (r *reduction) finish(context.Context) (int64, error) {
-	r.roles.fillLedger(r.night.Ledger, r.album.frames, r.seq, r.camera.columns*r.camera.rows)
+	r.roles.fillLedger(r.night.Ledger, r.album.Frames, r.seq, r.camera.Columns*r.camera.Rows)
 	if r.cube != nil {
 		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {
 			return 0, err
 		}
-		table, err := dispersionTable(r.rectifier.geometry, r.optics.arcs, r.usage, r.camera.columns)
+		table, err := dispersionTable(r.rectifier.geometry, r.optics.arcs, r.usage, r.camera.Columns)
 		if err != nil {
 			return 0, err
 		}
 		if err := r.cube.AppendTable(table); err != nil {
+			return 0, err
+		}
+		if err := r.finishNoise(); err != nil {
 			return 0, err
 		}
 		if err := r.cube.Commit(); err != nil {

@@ -14,6 +14,8 @@ type rowQuality struct {
 	good, covered, wanted int // voxels: good; good and wanted; in coded rows and on the detector
 	flags                 int16
 	saturated             int // pixels
+	restored              int // samples
+	scale                 rowScale
 }
 
 // count looks at a row of a strip of the cube.
@@ -54,8 +56,9 @@ func sum(rows []rowQuality, total int) (product.Quality, int16) {
 		all.wanted += r.wanted
 		all.flags |= r.flags
 		all.saturated += r.saturated
+		all.restored += r.restored
 	}
-	q := product.Quality{Saturated: all.saturated}
+	q := product.Quality{Saturated: all.saturated, Restored: all.restored}
 	if total > 0 {
 		q.GoodFraction = float64(all.good) / float64(total)
 	}

@@ -65,6 +65,9 @@ type GridRecipe struct {
 	FirstNM float64 `yaml:"first_nm" config:"optional"`
 	StepNM  float64 `yaml:"step_nm" config:"optional"`
 	Count   int     `yaml:"count" config:"optional"`
+	// Axis and Spacing are those of instrument.Grid; they need a grid of the recipe's own.
+	Axis    instrument.Axis    `yaml:"axis" config:"optional"`
+	Spacing instrument.Spacing `yaml:"spacing" config:"optional"`
 }
 
 // SetDefaults gives every stage its default.
@@ -121,10 +124,11 @@ func (r *Recipe) check(doc *config.Doc) error {
 		use string
 	}{
 		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
-		{"throughput", r.Throughput.Use}, {"repair", r.Repair.Use},
+		{"throughput", r.Throughput.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
+	c.OneOf("repair.use", r.Repair.Use, useAuto, useOff)
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
@@ -139,6 +143,13 @@ func (r *Recipe) checkGrid(c *config.Checks) {
 		c.Positive("grid.first_nm", r.Grid.FirstNM)
 		c.Positive("grid.step_nm", r.Grid.StepNM)
 		c.Count("grid.count", r.Grid.Count, 2, 1<<20)
+		return
+	}
+	for _, k := range []struct {
+		key   string
+		other bool
+	}{{"grid.axis", r.Grid.Axis != instrument.Vacuum}, {"grid.spacing", r.Grid.Spacing != instrument.Linear}} {
+		c.That(!k.other, k.key, "the profile's grid has its own; give first_nm, step_nm and count as well")
 	}
 }
 
@@ -152,5 +163,6 @@ func (r *Recipe) grid(p *instrument.Profile) instrument.Grid {
 	if !r.ownGrid() {
 		return p.Grid
 	}
-	return instrument.Grid{FirstNM: r.Grid.FirstNM, StepNM: r.Grid.StepNM, Count: r.Grid.Count}
+	g := r.Grid
+	return instrument.Grid{FirstNM: g.FirstNM, StepNM: g.StepNM, Count: g.Count, Axis: g.Axis, Spacing: g.Spacing}
 }

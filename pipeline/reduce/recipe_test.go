@@ -34,6 +34,8 @@ func TestRecipeGrid(t *testing.T) {
 	require.NoError(t, err)
 	require.Equal(t, path, r.Name)
 	require.Equal(t, instrument.Grid{FirstNM: 510, StepNM: 0.4, Count: 20}, r.grid(&instrument.Profile{}))
+	r.Grid.Axis, r.Grid.Spacing = instrument.Air, instrument.Logarithmic
+	require.Equal(t, instrument.Grid{FirstNM: 510, StepNM: 0.4, Count: 20, Axis: instrument.Air, Spacing: instrument.Logarithmic}, r.grid(&instrument.Profile{}))
 }
 
 func TestRecipeRefusals(t *testing.T) {
@@ -45,13 +47,16 @@ func TestRecipeRefusals(t *testing.T) {
 		{"sky: {use: auto}", `sky.use: "auto" is not available in this version; use off`},
 		{"flux: {use: auto}", "flux.use"},
 		{"throughput: {use: auto}", "throughput.use"},
-		{"repair: {use: auto}", "repair.use"},
+		{"repair: {use: yes}", "repair.use"},
 		{"detector: {use: maybe}", "detector.use"},
 		{"detector: {use: auto, clip_sigma: 1}", "detector.clip_sigma"},
 		{"detector: {use: auto, hot_sigma: 2}", "detector.hot_sigma"},
 		{"detector: {use: auto, dead_below: 1.5}", "detector.dead_below"},
 		{"detector: {use: auto, clip_sigma: .nan}", "detector.clip_sigma"},
 		{"grid: {use: auto, first_nm: 500}", "grid.step_nm"},
+		{"grid: {use: auto, axis: awav}", "grid.axis"},
+		{"grid: {use: auto, spacing: log}", "grid.spacing"},
+		{"grid: {use: auto, first_nm: 500, step_nm: 1, count: 10, axis: air}", "grid.axis"},
 		{"grid: {use: auto, first_nm: 500, step_nm: -1, count: 3}", "grid.step_nm"},
 		{"grid: {use: auto, first_nm: 500, step_nm: 1, count: 1}", "grid.count"},
 		{"grid: {use: off, first_nm: 500, step_nm: 1, count: 10}", "grid.use"},

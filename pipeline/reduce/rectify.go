@@ -7,6 +7,7 @@ import (
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -25,7 +26,11 @@ type rectifier struct {
 	response      *calib.Response
 	pixelVariance float64
 	added         []float32 // [row][element], see addedShare
-	workers       []rectifyWorker
+	// scaled: rows bring the error scale. byElement, where not nil, multiplies the
+	// variance of each element.
+	scaled    bool
+	byElement []float32
+	workers   []rectifyWorker
 }
 
 // group is the number of elements that one worker takes to voxels before it
@@ -34,12 +39,15 @@ const group = 16
 
 type rectifyWorker struct {
 	signal, variance  []float32 // a straightened row
+	scale, applied    []float32 // times variance, straightened
 	flags             calib.RowFlags
 	edges             []float64
 	before            []float32
 	voxels, variances []float32 // [element of the group][voxel]
+	scales            []float32
 	bits              []calib.Flag
 	signals, vars     [][]float32 // one element's rows in the window
+	scaleRows         [2][][]float32
 	bitRows           [][]calib.Flag
 }
 
@@ -72,10 +80,11 @@ func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, wor
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
 			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
+			scale: make([]float32, s.columns), applied: make([]float32, s.columns),
 			edges:  make([]float64, grid.Count+1),
 			before: make([]float32, grid.Count),
 			voxels: make([]float32, group*grid.Count), variances: make([]float32, group*grid.Count),
-			bits: make([]calib.Flag, group*grid.Count),
+			bits: make([]calib.Flag, group*grid.Count), scales: make([]float32, group*grid.Count),
 		})
 	}
 	return r, nil
@@ -116,7 +125,7 @@ func (r *rectifier) needs(y int) int {
 // run fills the strip from the window.
 func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
 	groups := (r.elements + group - 1) / group
-	return parallel(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
+	return parallel.Do(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
 		r.rectify(&r.workers[worker], out, w, i/groups, i%groups*group)
 		return nil
 	})
@@ -133,6 +142,7 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		k.bitRows = append(k.bitRows, d.flags)
 	}
 	r.shift.Flags(&k.flags, k.bitRows, first, y)
+	r.straightenScale(k, w, first, y)
 	firstNM, stepNM := r.grid.WavelengthNM(-0.5), r.grid.StepNM
 	for j := j0; j < j1; j++ {
 		k.signals, k.vars = k.signals[:0], k.vars[:0]
@@ -149,6 +159,7 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		r.columns.Resample(calib.Voxels{
 			Signal: k.voxels[at:], Variance: k.variances[at:], Flags: k.bits[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
+		r.scaleVoxels(k, at, j)
 		r.flatten(k, at, j, y)
 	}
 	r.store(k, out, row, j0, j1)
@@ -224,7 +235,7 @@ func (r *rectifier) store(k *rectifyWorker, out *outStrip, row, j0, j1 int) {
 		flags, scale := out.flags[at:at+n], out.scale[at:at+n]
 		for i := range n {
 			from := i*nl + l
-			signal[i], variance[i], flags[i], scale[i] = k.voxels[from], k.variances[from], k.bits[from], 1
+			signal[i], variance[i], flags[i], scale[i] = k.voxels[from], k.variances[from], k.bits[from], k.scales[from]
 			if use[i] != 0 {
 				signal[i], variance[i] = nan32, nan32
 				flags[i] |= use[i]

@@ -17,6 +17,7 @@ import (
 
 	"mirrorloom/fitsutil"
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/report"
@@ -138,15 +139,18 @@ type reduction struct {
 	log     *zap.Logger
 	seq     *sequence.Sequence
 	night   *pair.Night
-	camera  *camera
-	album   *album
+	camera  *exposure.Camera
+	album   *exposure.Album
 	roles   *roles
 	masters *masters
-	schema  product.Schema
-	usage   *usage
-	cube    *fitsutil.Cube
-	shape   shape // of the products, once strips has begun
-	element *fitsutil.Cube
+	// correction is what is done to the science frames before they are decoded;
+	// nil for nothing.
+	correction *correction
+	schema     product.Schema
+	usage      *usage
+	cube       *fitsutil.Cube
+	shape      shape // of the products, once strips has begun
+	element    *fitsutil.Cube
 
 	optics    optics
 	report    product.Calibration
@@ -169,7 +173,7 @@ func (r *reduction) close() {
 		r.masters.file.Close() // only read from
 	}
 	if r.album != nil {
-		r.album.close() // only read from
+		r.album.Close() // only read from
 	}
 	os.RemoveAll(r.scratch())
 }
@@ -191,14 +195,14 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if err != nil {
 		return 0, err
 	}
-	if r.camera, err = newCamera(&r.seq.Profile.Detector); err != nil {
+	if r.camera, err = exposure.NewCamera(&r.seq.Profile.Detector); err != nil {
 		return 0, err
 	}
 	calibrates := r.opts.Recipe.Detector.Use != useOff
-	if r.album, err = openAlbum(sources(r.seq, r.night, r.opts.Recipe), r.scratch()); err != nil {
+	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe), r.scratch()); err != nil {
 		return 0, err
 	}
-	r.roles, err = assign(r.seq, r.album.frames, calibrates)
+	r.roles, err = assign(r.seq, r.album.Frames, calibrates)
 	return 0, err
 }
 
@@ -209,7 +213,7 @@ func (r *reduction) prepare(ctx context.Context) (int64, error) {
 		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes,
 	}
 	var err error
-	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.rows) })
+	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.Rows) })
 	if err != nil {
 		return 0, err
 	}
@@ -228,10 +232,11 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	s := shape{
-		columns: r.camera.columns, rows: r.camera.rows, slots: r.seq.V, elements: r.seq.N(),
+		columns: r.camera.Columns, rows: r.camera.Rows, slots: r.seq.V, elements: r.seq.N(),
 		elementCube: r.opts.Elements, cube: r.opts.Cube,
 	}
-	d := r.newDecoder(code, r.roles.slots)
+	d := r.newDecoder(code, r.roles.slots, r.correction)
+	r.scienceRepair(d)
 	if d.neighbours, err = r.optics.neighbourTerm(d); err != nil {
 		return 0, err
 	}
@@ -255,16 +260,21 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	}
 	w := &sweep{
 		shape: s, heights: h, decoder: d, rectify: r.rectifier, elements: r.element, workers: r.opts.Workers,
-		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff),
+		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff, r.correction),
 		pixel:    r.optics.pixel,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
 	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
+	if s.cube {
+		w.pixelVariance = r.writePixelVariance
+	}
+	w.reader.restore = d.repair != nil
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
 	var flags int16
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
 }
@@ -301,13 +311,13 @@ func (r *reduction) heldBytes() int64 {
 	return exposureBytes * int64(len(r.optics.pixel.Factor))
 }
 
-func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*frame) *decoder {
+// newDecoder decodes the frames of slots, corrected so; nil for uncorrected ones.
+func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame, c *correction) *decoder {
 	d := &decoder{
-		code: hadamard.NewDecoder(code), columns: r.camera.columns, slots: r.seq.V,
+		code: hadamard.NewDecoder(code), columns: r.camera.Columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
-		k: float64(code.K()), photonExcess: r.camera.photonExcess,
+		k: float64(code.K()), photonExcess: r.camera.PhotonExcess, scale: newSlotScale(slots, c),
 	}
-	d.weight, d.slotWeight, d.lost = weights(slots)
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()
 	}
@@ -329,11 +339,13 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 }
 
 // newReader reads the frames of slots, exposed so long, whose light without any
-// open mirror is in master dim.
-func (r *reduction) newReader(slots [][]*frame, seconds float64, dim int) *stripReader {
+// open mirror is in master dim, and corrects them so.
+func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim int, c *correction) *stripReader {
 	return &stripReader{
-		camera: r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
-		workers: r.opts.Workers, scratch: make([]readScratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+		correction: c,
+		camera:     r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
+		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
+		struck: make([][]struckSample, r.opts.Workers),
 	}
 }
 
@@ -369,7 +381,11 @@ func (r *reduction) warnings() []string {
 	all := r.roles.warnings
 	for _, v := range []product.Verdict{product.Unreadable, product.WrongMask, product.WrongExposure, product.WrongSize, product.Duplicate, product.Extra} {
 		if n := r.night.Ledger.Count(v); n > 0 {
-			all = append(all, fmt.Sprintf("%d frames are %s and were not used: see the ledger", n, strings.ReplaceAll(string(v), "-", " ")))
+			frames, was := "frames are", "were"
+			if n == 1 {
+				frames, was = "frame is", "was"
+			}
+			all = append(all, fmt.Sprintf("%d %s %s and %s not used: see the ledger", n, frames, strings.ReplaceAll(string(v), "-", " "), was))
 		}
 	}
 	return all

@@ -12,6 +12,7 @@ import (
 	"go.uber.org/zap/zaptest/observer"
 
 	"mirrorloom/internal/outside"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/plan"
 	"mirrorloom/pipeline/product"
@@ -95,12 +96,12 @@ func TestProductsDoNotDependOnWorkersOrMemory(t *testing.T) {
 			compareRuns(t, night, seq)
 		})
 	}
-	few := prepare{camera: &camera{columns: 96, rows: 40}, memory: robustBudgets[2]}
+	few := prepare{camera: &exposure.Camera{Columns: 96, Rows: 40}, memory: robustBudgets[2]}
 	require.Less(t, few.height(), 40, "the masters are made in several strips as well")
 }
 
 // robustBudgets are memories for buffers, besides that of the program itself. Their strips must differ.
-var robustBudgets = []int64{64 << 20, 650 << 10, 200 << 10}
+var robustBudgets = []int64{64 << 20, 700 << 10, 230 << 10}
 
 func compareRuns(t *testing.T, night, seq string) {
 	var first map[string][]byte

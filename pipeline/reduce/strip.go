@@ -2,10 +2,13 @@ package reduce
 
 import (
 	"context"
+	"slices"
 	"sync"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
 )
 
 // strip is some detector rows of all science frames, in electrons above the
@@ -14,9 +17,11 @@ type strip struct {
 	y0, y1, columns int
 	raw             []float32    // [slot][row][column]
 	flags           []calib.Flag // [row][column]
-	base            []float32    // bias and level together
+	struck          []calib.Flag // what is wrong with the pixel's struck samples, 0 without any
+	base            []float32    // bias and dark current of an exposure
+	off             []float32    // all-off light to be taken off it
 	level           []float32    // dark current and all-off light of an exposure
-	levelVariance   []float32    // of base
+	levelVariance   []float32    // of base and off
 	quiet           [][]float64  // [row][column] variance without light
 	planes          *elementPlanes
 }
@@ -51,97 +56,126 @@ func (s *strip) keep(w *decodeWorker, at, n int, out *decodedRow, x0 int, unifor
 
 // stripReader fills strips from the science frames and the masters.
 type stripReader struct {
-	camera  *camera
-	album   *album
-	slots   [][]*frame // by code row
+	camera  *exposure.Camera
+	album   *exposure.Album
+	slots   [][]*exposure.Frame // by code row
 	masters *masters
 	// seconds is the exposure time of the frames, and dim the master of the light
 	// that comes without any open mirror: masterOff or masterLampOff.
 	seconds float64
 	dim     int
+	// correction is what is done to the frames; nil for nothing.
+	correction *correction
+
 	workers int
-	scratch []readScratch
+	scratch []exposure.Scratch
 	sums    [][]float32 // by worker, for slots of several frames
+	// restore: struck samples are marked one by one, rather than their pixel flagged.
+	restore bool
+	struck  [][]struckSample // by worker
 }
 
 // read fills s with rows y0..y1-1.
 func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
-	s.y0, s.y1, s.columns = y0, y1, r.camera.columns
+	s.y0, s.y1, s.columns = y0, y1, r.camera.Columns
 	n := (y1 - y0) * s.columns
 	s.raw = s.raw[:len(r.slots)*n]
-	s.quiet = r.camera.variance[y0:y1]
+	s.quiet = r.camera.Variance[y0:y1]
 	if err := r.readMasters(s, n); err != nil {
 		return err
 	}
 	var mu sync.Mutex
-	mark := func(flags []calib.Flag, x, y, w int) {
+	merge := func(flags []calib.Flag, x, y, w int) {
 		mu.Lock()
 		defer mu.Unlock()
-		r.camera.merge(s.flags, y0, flags, x, y, w)
+		r.camera.Merge(s.flags, y0, flags, x, y, w)
 	}
-	return parallel(ctx, r.workers, len(r.slots), func(worker, i int) error {
-		return r.readSlot(s.slot(i), r.slots[i], y0, y1, worker, mark)
+	return parallel.Do(ctx, r.workers, len(r.slots), func(worker, i int) error {
+		for n, f := range r.slots[i] {
+			if err := r.readFrame(s, i, n, f, worker, merge); err != nil {
+				return err
+			}
+			r.strike(s, i, worker, &mu)
+		}
+		divide(s.slot(i), len(r.slots[i]))
+		return nil
 	})
 }
 
-// readSlot puts the mean of a slot's frames into dst; nothing for a lost one.
-func (r *stripReader) readSlot(dst []float32, frames []*frame, y0, y1, worker int, mark marked) error {
-	for i, f := range frames {
-		into := dst
-		if i > 0 {
-			r.sums[worker] = grow(r.sums[worker], len(dst))
-			into = r.sums[worker]
-		}
-		saturated, err := r.camera.read(into, f.image, y0, y1, &r.scratch[worker], mark)
-		if err != nil {
+// readFrame adds frame n of slot i, times its factor, to the slot.
+func (r *stripReader) readFrame(s *strip, i, n int, f *exposure.Frame, worker int, merge exposure.Marked) error {
+	dst := s.slot(i)
+	into := dst
+	if n > 0 {
+		r.sums[worker] = slices.Grow(r.sums[worker][:0], len(dst))[:len(dst)]
+		into = r.sums[worker]
+	}
+	mark := merge
+	if r.restore {
+		mark = r.collectStruck(s, worker)
+	}
+	saturated, err := r.camera.Read(into, f.Image, s.y0, s.y1, &r.scratch[worker], mark)
+	if err != nil {
+		return err
+	}
+	f.Saturated += saturated
+	if r.restore {
+		if err := r.nearby(s, f, worker, mark); err != nil {
 			return err
-		}
-		f.saturated += saturated
-		if err := r.album.done(f); err != nil {
-			return err
-		}
-		if i > 0 {
-			for p, v := range into {
-				dst[p] += v
-			}
 		}
 	}
-	if n := float32(len(frames)); n > 1 {
+	factor, _, _ := r.correction.of(f.Step)
+	accumulate(dst, into, float32(factor), n == 0)
+	return r.album.Done(f)
+}
+
+// divide makes a sum of so many frames their mean.
+func divide(dst []float32, frames int) {
+	if n := float32(frames); n > 1 {
 		for p := range dst {
 			dst[p] /= n
 		}
 	}
-	return nil
+}
+
+// accumulate adds factor times src to dst; first it is all of dst. The two may be the
+// same memory.
+func accumulate(dst, src []float32, factor float32, first bool) {
+	switch {
+	case !first:
+		for p, v := range src {
+			dst[p] += factor * v
+		}
+	case factor != 1 || &dst[0] != &src[0]:
+		for p, v := range src {
+			dst[p] = factor * v
+		}
+	}
 }
 
 func (r *stripReader) readMasters(s *strip, n int) error {
-	s.base, s.level, s.levelVariance = s.base[:n], s.level[:n], s.levelVariance[:n]
-	s.flags = s.flags[:n]
-	rows := func(i int, dst []float32) error { return r.masters.images[i].ReadRows(dst, s.y0, s.y1) }
-	if err := rows(masterBad, s.base); err != nil {
-		return err
+	s.base, s.off, s.level, s.levelVariance = s.base[:n], s.off[:n], s.level[:n], s.levelVariance[:n]
+	s.flags, s.struck = s.flags[:n], s.struck[:n]
+	clear(s.struck)
+	for _, m := range []struct {
+		master int
+		dst    []float32
+	}{{masterBad, s.off}, {masterDark, s.level}, {masterBias, s.base}, {masterVariance, s.levelVariance}} {
+		if err := r.masters.images[m.master].ReadRows(m.dst, s.y0, s.y1); err != nil {
+			return err
+		}
 	}
-	for p, v := range s.base {
+	for p, v := range s.off {
 		s.flags[p] = calib.Flag(v)
 	}
-	if err := rows(masterDark, s.base); err != nil {
+	if err := r.masters.images[r.dim].ReadRows(s.off, s.y0, s.y1); err != nil {
 		return err
 	}
-	if err := rows(r.dim, s.level); err != nil {
-		return err
-	}
-	seconds := float32(r.seconds)
-	for p := range s.level {
-		s.level[p] = (s.level[p] + s.base[p]) * seconds
-	}
-	if err := rows(masterVariance, s.levelVariance); err != nil {
-		return err
-	}
-	if err := rows(masterBias, s.base); err != nil {
-		return err
-	}
-	for p := range s.base {
-		s.base[p] += s.level[p]
+	seconds, leak := float32(r.seconds), float32(r.correction.leakFactor())
+	for p, rate := range s.level {
+		dark, off := rate*seconds, s.off[p]*seconds*leak
+		s.base[p] += dark
+		s.off[p], s.level[p] = off, off+dark
 	}
 	return nil
 }
@@ -150,8 +184,8 @@ func (r *stripReader) readMasters(s *strip, n int) error {
 func (s shape) newStrip(h int) *strip {
 	n := h * s.columns
 	st := &strip{
-		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n),
-		base: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
+		raw: make([]float32, s.slots*n), flags: make([]calib.Flag, n), struck: make([]calib.Flag, n),
+		base: make([]float32, n), off: make([]float32, n), level: make([]float32, n), levelVariance: make([]float32, n),
 	}
 	return st
 }

@@ -6,6 +6,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -21,10 +22,13 @@ type sweep struct {
 	elements *fitsutil.Cube // nil without an element cube
 	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
 	// decoded row, in order, before bad pixels are filled.
-	pixel    *calib.PixelResponse
-	light    func(row *decodedRow)
-	workers  int
-	progress func(rows int)
+	pixel *calib.PixelResponse
+	light func(row *decodedRow)
+	// pixelVariance, where not nil, takes each row's variances, in order, when they
+	// are what voxels are made of.
+	pixelVariance func(row *decodedRow) error
+	workers       int
+	progress      func(rows int)
 
 	window  *window
 	scratch []*decodeWorker
@@ -35,6 +39,7 @@ type sweep struct {
 	// finished is the first row that is not yet fit for rectifying.
 	finished int
 	quality  []rowQuality
+	steps    stepChi2
 }
 
 // loaded is a strip that was read, or why it was not.
@@ -75,6 +80,7 @@ func (w *sweep) run(ctx context.Context) error {
 }
 
 func (w *sweep) begin() {
+	w.steps = newStepChi2(w.shape.slots)
 	w.window = newWindow(w.shape)
 	w.quality = make([]rowQuality, w.shape.rows)
 	w.fills = make([]calib.Fill, w.workers)
@@ -82,6 +88,7 @@ func (w *sweep) begin() {
 		w.scratch = append(w.scratch, w.decoder.newWorker())
 	}
 	if w.rectify != nil {
+		w.rectify.scaled, w.rectify.byElement = w.decoder.scales(), w.decoder.repair.elementRatios()
 		w.out = w.shape.newOut(w.heights.out)
 	}
 	if w.elements != nil {
@@ -119,9 +126,9 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		return err
 	}
 	if w.elements != nil {
-		if len(w.decoder.lost) > 0 {
+		if f := w.decoder.lostFlag(); f != 0 {
 			for i := range s.flags {
-				s.flags[i] |= product.FlagLost
+				s.flags[i] |= f
 			}
 		}
 		if err := s.writePlanes(w.elements); err != nil {
@@ -158,21 +165,11 @@ func (w *sweep) newPlanes() *elementPlanes {
 // decode fills the rows of the window from the strip, block by block, and then
 // puts harmless values into flagged pixels.
 func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error {
-	blocks := w.decoder.blocks()
-	dark := make([]darkChi2, len(rows)*blocks)
-	err := parallel(ctx, w.workers, len(dark), func(worker, i int) error {
-		row := rows[i/blocks]
-		dark[i] = w.decoder.run(w.scratch[worker], s, row.y, i%blocks, row)
-		return nil
-	})
-	if err != nil {
+	if err := w.decodeBlocks(ctx, s, rows); err != nil {
 		return err
 	}
-	for i, d := range dark {
-		w.quality[rows[i/blocks].y].dark.add(d)
-	}
-	err = parallel(ctx, w.workers, len(rows), func(_, i int) error {
-		w.flatten(rows[i])
+	err := parallel.Do(ctx, w.workers, len(rows), func(_, i int) error {
+		w.flatten(rows[i], s)
 		return nil
 	})
 	if err != nil {
@@ -184,6 +181,33 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		}
 	}
 	return w.finish(ctx, s.y1)
+}
+
+// decodeBlocks is decode up to the rows' figures, which it adds up in their order.
+func (w *sweep) decodeBlocks(ctx context.Context, s *strip, rows []*decodedRow) error {
+	blocks := w.decoder.blocks()
+	all := make([]blockQuality, len(rows)*blocks)
+	if w.decoder.repair != nil {
+		steps := make([]float64, len(all)*w.shape.slots)
+		for i := range all {
+			all[i].steps = steps[i*w.shape.slots : (i+1)*w.shape.slots]
+		}
+	}
+	err := parallel.Do(ctx, w.workers, len(all), func(worker, i int) error {
+		row := rows[i/blocks]
+		w.decoder.run(w.scratch[worker], s, row.y, i%blocks, row, &all[i])
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	for i, b := range all {
+		q := &w.quality[rows[i/blocks].y]
+		q.dark.add(b.dark)
+		q.restored += b.restored
+		w.steps.add(b)
+	}
+	return nil
 }
 
 // finish makes rows fit for rectifying, up to row next: flags of saturated pixels
@@ -198,19 +222,30 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		next--
 	}
 	first, n := w.window.first(), next-w.finished
-	err := parallel(ctx, w.workers, n, func(worker, i int) error {
+	err := parallel.Do(ctx, w.workers, n, func(worker, i int) error {
 		at := w.finished + i - first
 		row := w.window.rows[at]
 		for _, near := range []int{at - 1, at + 1} {
-			if near >= 0 && near < len(w.window.rows) {
+			// Where samples are restored, bled ones count among the struck.
+			if near >= 0 && near < len(w.window.rows) && w.decoder.repair == nil {
 				spread(row.flags, w.window.rows[near].own)
 			}
 		}
 		w.fill(&w.fills[worker], row)
 		return nil
 	})
-	w.finished = max(w.finished, next)
-	return err
+	if err != nil || n <= 0 {
+		return err
+	}
+	if w.pixelVariance != nil {
+		for _, row := range w.window.rows[w.finished-first:][:n] {
+			if err := w.pixelVariance(row); err != nil {
+				return err
+			}
+		}
+	}
+	w.finished = next
+	return nil
 }
 
 // spread takes over the saturation of a neighbouring row.
@@ -222,8 +257,12 @@ func spread(flags, neighbour []calib.Flag) {
 
 // flatten divides a row by the response of its pixels. What the response's own
 // error adds depends on each element's light: the rectifier adds it. It also takes
-// stock of the row's flags.
-func (w *sweep) flatten(row *decodedRow) {
+// stock of the row's flags. Before, it takes off the pedestal and measures the error
+// scale.
+func (w *sweep) flatten(row *decodedRow, s *strip) {
+	w.decoder.takePedestal(row, s)
+	w.decoder.scaleErrors(row)
+	w.quality[row.y].scale = newRowScale(row)
 	if w.pixel != nil {
 		w.dividePixels(row)
 	}
@@ -246,6 +285,10 @@ func (w *sweep) dividePixels(row *decodedRow) {
 			r[x] /= f * f
 		}
 	}
+	for x, f := range factor {
+		row.common[x] /= f * f
+		row.unlit[x] /= f * f
+	}
 	for x, f := range flags {
 		row.flags[x] |= f
 	}
@@ -259,6 +302,13 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	for _, r := range row.variance {
 		f.Variance(r)
 	}
+	f.Variance(row.common)
+	f.Variance(row.unlit)
+	// From here on the scales are those of variances, as the rectifier takes them.
+	for x, v := range row.variance[0] {
+		row.scale[x] *= v
+		row.applied[x] *= v
+	}
 }
 
 // emit makes and writes the next n trace rows of the cube.
@@ -267,10 +317,10 @@ func (w *sweep) emit(ctx context.Context, n int) error {
 	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
 		return err
 	}
-	if len(w.decoder.lost) > 0 {
+	if lost := w.decoder.lostFlag(); lost != 0 {
 		for i, f := range w.out.flags {
 			if f&product.FlagNoData == 0 {
-				w.out.flags[i] |= product.FlagLost
+				w.out.flags[i] |= lost
 			}
 		}
 	}

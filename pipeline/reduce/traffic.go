@@ -9,16 +9,16 @@ import (
 
 // frameBytes is the size of a raw frame's pixels on disk, taken from the first.
 func (r *reduction) frameBytes() int64 {
-	if len(r.album.frames) == 0 {
+	if len(r.album.Frames) == 0 {
 		return 0
 	}
-	im := r.album.frames[0].image
+	im := r.album.Frames[0].Image
 	return int64(max(im.BITPIX, -im.BITPIX)/8) * int64(im.Width()) * int64(im.Height())
 }
 
 // masterBytes is the size of the masters.
 func (r *reduction) masterBytes() int64 {
-	return int64(r.camera.columns) * int64(r.camera.rows) * masterCount * bytesFloat
+	return int64(r.camera.Columns) * int64(r.camera.Rows) * masterCount * bytesFloat
 }
 
 // lookAt counts frames, read whole by calibrate.

@@ -5,6 +5,8 @@ import (
 	"sync"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
 )
 
 // exposureBytes is the memory of a pixel of a calib.Exposure, or of a
@@ -35,27 +37,27 @@ func (m *masters) whole(rows, columns int) (*wholeMasters, error) {
 
 // lampExposure reads a frame whole, less bias and dark current, and less what the
 // lamp gives without any open mirror if dim is set.
-func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScratch) (*calib.Exposure, error) {
-	columns, rows := r.camera.columns, r.camera.rows
+func (r *reduction) lampExposure(f *exposure.Frame, m *wholeMasters, dim bool, s *exposure.Scratch) (*calib.Exposure, error) {
+	columns, rows := r.camera.Columns, r.camera.Rows
 	e := &calib.Exposure{Columns: columns, Signal: make([]float32, rows*columns), Variance: make([]float32, rows*columns), Flags: make([]calib.Flag, rows*columns)}
 	copy(e.Flags, m.bad)
 	var mu sync.Mutex
 	mark := func(flags []calib.Flag, x, y, w int) {
 		mu.Lock()
 		defer mu.Unlock()
-		r.camera.merge(e.Flags, 0, flags, x, y, w)
+		r.camera.Merge(e.Flags, 0, flags, x, y, w)
 	}
-	if _, err := r.camera.read(e.Signal, f.image, 0, rows, s, mark); err != nil {
+	if _, err := r.camera.Read(e.Signal, f.Image, 0, rows, s, mark); err != nil {
 		return nil, err
 	}
-	if err := r.album.done(f); err != nil {
+	if err := r.album.Done(f); err != nil {
 		return nil, err
 	}
 	r.lookAt(1)
-	seconds := float32(r.seq.Steps[f.step].ExptimeSeconds)
-	photon := float32(1 + r.camera.photonExcess)
+	seconds := float32(r.seq.Steps[f.Step].ExptimeSeconds)
+	photon := float32(1 + r.camera.PhotonExcess)
 	for y := range rows {
-		quiet := r.camera.variance[y]
+		quiet := r.camera.Variance[y]
 		for x := range columns {
 			i := y*columns + x
 			v := e.Signal[i] - m.bias[i]
@@ -74,15 +76,15 @@ func (r *reduction) lampExposure(f *frame, m *wholeMasters, dim bool, s *readScr
 // with the masters and what a search in them takes.
 func (r *reduction) wholeWorkers() int {
 	const planes = 16 // of float32, for one exposure with its spectra
-	bytes := int64(planes) * bytesFloat * int64(r.camera.columns) * int64(r.camera.rows)
+	bytes := int64(planes) * bytesFloat * int64(r.camera.Columns) * int64(r.camera.Rows)
 	return max(1, min(r.opts.Workers, int((r.opts.MemoryBytes-runtimeBytes)/2/bytes)))
 }
 
 // eachExposure reads frames whole and hands them to look, several at a time.
-func (r *reduction) eachExposure(ctx context.Context, frames []*frame, m *wholeMasters, dim bool, look func(i int, e *calib.Exposure) error) error {
+func (r *reduction) eachExposure(ctx context.Context, frames []*exposure.Frame, m *wholeMasters, dim bool, look func(i int, e *calib.Exposure) error) error {
 	workers := r.wholeWorkers()
-	scratch := make([]readScratch, workers)
-	return parallel(ctx, workers, len(frames), func(worker, i int) error {
+	scratch := make([]exposure.Scratch, workers)
+	return parallel.Do(ctx, workers, len(frames), func(worker, i int) error {
 		e, err := r.lampExposure(frames[i], m, dim, &scratch[worker])
 		if err != nil {
 			return err
@@ -93,13 +95,13 @@ func (r *reduction) eachExposure(ctx context.Context, frames []*frame, m *wholeM
 
 // sumExposures adds frames up, in their order, whatever the number of workers:
 // each takes rows of its own. dim as in lampExposure.
-func (r *reduction) sumExposures(ctx context.Context, frames []*frame, m *wholeMasters, dim bool) (*calib.Exposure, error) {
-	columns, rows := r.camera.columns, r.camera.rows
+func (r *reduction) sumExposures(ctx context.Context, frames []*exposure.Frame, m *wholeMasters, dim bool) (*calib.Exposure, error) {
+	columns, rows := r.camera.Columns, r.camera.Rows
 	n := columns * rows
 	sum := &calib.Exposure{Columns: columns, Signal: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
 	copy(sum.Flags, m.bad)
 	for _, f := range frames {
-		e, err := r.lampExposure(f, m, dim, new(readScratch))
+		e, err := r.lampExposure(f, m, dim, new(exposure.Scratch))
 		if err != nil {
 			return nil, err
 		}

@@ -12,6 +12,39 @@ type decodedRow struct {
 	flags    []calib.Flag // [column]
 	// own are the flags before those of neighbouring rows spread to this one.
 	own []calib.Flag
+	// common is the part of variance that all elements of a pixel share: that of what
+	// was taken off all frames. unlit is the variance of a sample that no open mirror
+	// lights; it is filled in where variance differs between the elements.
+	common, unlit []float32
+	// measured is, by column, the mean square of the dark decodes in units of the
+	// variance of elements, unmeasured where flags forbid it; expected is that variance
+	// as the noise model has it, before the response is divided out.
+	measured, expected []float32
+	// pedestal is the mean of the dark decodes, where it is to be taken off, and level
+	// what was taken off.
+	pedestal, level []float32
+	// scale is the error scale, and applied that by which the variance is to be
+	// multiplied.
+	scale, applied []float32
+}
+
+func newDecodedRow(elements, variances, columns int) *decodedRow {
+	return &decodedRow{
+		signal: planes(elements, columns), variance: planes(variances, columns),
+		flags: make([]calib.Flag, columns), own: make([]calib.Flag, columns),
+		common: make([]float32, columns), unlit: make([]float32, columns),
+		measured: make([]float32, columns), expected: make([]float32, columns),
+		pedestal: make([]float32, columns), level: make([]float32, columns),
+		scale: make([]float32, columns), applied: make([]float32, columns),
+	}
+}
+
+// pixelVariance is what PIXELVAR holds of the row.
+func (r *decodedRow) pixelVariance(uniform bool) (own, common []float32) {
+	if uniform {
+		return r.variance[0], r.common
+	}
+	return r.unlit, r.common
 }
 
 // window holds decoded rows in order until no trace needs them.
@@ -27,7 +60,7 @@ func newWindow(s shape) *window {
 		variances = s.elements
 	}
 	return &window{make: func() *decodedRow {
-		return &decodedRow{signal: planes(s.elements, s.columns), variance: planes(variances, s.columns), flags: make([]calib.Flag, s.columns), own: make([]calib.Flag, s.columns)}
+		return newDecodedRow(s.elements, variances, s.columns)
 	}}
 }
 

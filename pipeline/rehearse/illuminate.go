@@ -3,6 +3,8 @@ package rehearse
 import (
 	"context"
 	"math"
+
+	"mirrorloom/pipeline/parallel"
 )
 
 // drawn is the light of a strip: either the rows of every beam of every source,
@@ -45,10 +47,10 @@ func (r *rehearsal) newPainter(mirrors, rows int) *painter {
 func (r *rehearsal) illuminate(ctx context.Context, y0, y1 int) (*drawn, error) {
 	o := r.optics
 	s := o.newStrip(y0, y1)
-	if err := parallel(ctx, r.opts.Workers, len(s.mirrors), func(_, k int) error { o.prepareMirror(s, k); return nil }); err != nil {
+	if err := parallel.Do(ctx, r.opts.Workers, len(s.mirrors), func(_, k int) error { o.prepareMirror(s, k); return nil }); err != nil {
 		return nil, err
 	}
-	if err := parallel(ctx, r.opts.Workers, y1-y0, func(_, k int) error { o.prepareRow(s, k); return nil }); err != nil {
+	if err := parallel.Do(ctx, r.opts.Workers, y1-y0, func(_, k int) error { o.prepareRow(s, k); return nil }); err != nil {
 		return nil, err
 	}
 	d := &drawn{y0: y0, y1: y1}
@@ -84,7 +86,7 @@ func (r *rehearsal) paintSource(ctx context.Context, s *strip, at int, d *drawn,
 			}
 		}
 	}
-	err := parallel(ctx, r.opts.Workers, count, func(worker, b int) error {
+	err := parallel.Do(ctx, r.opts.Workers, count, func(worker, b int) error {
 		if !r.sources[at].used[b] {
 			return nil
 		}

@@ -160,7 +160,7 @@ func realLamp(list []emission, pcg interface{ Uint64() uint64 }, grid instrument
 		kept = list[:1]
 	}
 	for range unknown {
-		nm := grid.FirstNM + random()*(grid.LastNM()-grid.FirstNM)
+		nm := grid.WavelengthNM(0) + random()*(grid.LastNM()-grid.WavelengthNM(0))
 		kept = append(kept, emission{nm: nm, photons: 0.5 * random()})
 	}
 	return kept

@@ -13,6 +13,7 @@ import (
 
 	"mirrorloom/calib/physics"
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
 
@@ -121,7 +122,7 @@ func (r *rehearsal) writeFrames(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	return parallel(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
+	return parallel.Do(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
 		defer r.advance(1)
 		if r.fates[k].lost {
 			return nil

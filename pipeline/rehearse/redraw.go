@@ -2,6 +2,8 @@ package rehearse
 
 import (
 	"context"
+
+	"mirrorloom/pipeline/parallel"
 )
 
 // redraw draws each step of a strip by itself, where seeing, guiding or flexure
@@ -23,7 +25,7 @@ func (r *rehearsal) prepareViews(ctx context.Context) error {
 	if !r.redraws {
 		return nil
 	}
-	return parallel(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
+	return parallel.Do(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
 		if step := &r.steps[k]; step.source == 0 {
 			step.light = r.optics.viewed(r.sources[0].light, r.scene, step.view)
 		}
@@ -45,7 +47,7 @@ type layered [layers][][]density
 func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn, painters []*painter) error {
 	from := &r.sources[at]
 	c := &canvas{sky: r.newLayered(s, at), objects: r.newLayered(s, at)}
-	err := parallel(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
+	err := parallel.Do(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
 		if !from.used[b] {
 			return nil
 		}
@@ -115,7 +117,7 @@ func (r *rehearsal) fill(p *painter, to *layered, light []density, lines []emitt
 
 // refill collects the sources anew for another view of the sky.
 func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *source, light *light, painters []*painter) error {
-	return parallel(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
+	return parallel.Do(ctx, r.opts.Workers, len(r.beams.list), func(worker, b int) error {
 		if !from.used[b] {
 			return nil
 		}
@@ -134,7 +136,7 @@ func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *sourc
 func (r *rehearsal) drawStep(ctx context.Context, c *canvas, s *strip, step *stepPlan, f *fate) ([]float32, error) {
 	o := r.optics
 	mixed := o.newDensities(len(s.mirrors))
-	err := parallel(ctx, r.opts.Workers, len(s.mirrors), func(_, k int) error {
+	err := parallel.Do(ctx, r.opts.Workers, len(s.mirrors), func(_, k int) error {
 		leaks := r.leaksOn(s.mirrors[k].row)
 		rows := c.sky.row(k)
 		mix(mixed[k].h, step.mixture, &rows, leaks)
@@ -152,7 +154,7 @@ func (r *rehearsal) drawStep(ctx context.Context, c *canvas, s *strip, step *ste
 	}
 	sums := make([]float32, (s.y1-s.y0)*o.columns)
 	kernel := o.spread.shifted(f.shiftX)
-	err = parallel(ctx, r.opts.Workers, s.y1-s.y0, func(_, k int) error {
+	err = parallel.Do(ctx, r.opts.Workers, s.y1-s.y0, func(_, k int) error {
 		row := o.rowDrawing(s, k, f.shiftY)
 		o.drawRow(sums[k*o.columns:(k+1)*o.columns], &row, mixed, kernel, make([]float64, o.axis.n))
 		return nil

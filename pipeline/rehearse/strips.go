@@ -5,6 +5,7 @@ import (
 	"encoding/binary"
 	"math"
 
+	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -84,7 +85,7 @@ func (r *rehearsal) strip(ctx context.Context, raw0, raw1 int) error {
 	height := raw1 - raw0
 	samples := make([]byte, len(r.steps)*height*rowBytes)
 	readers := make([]*stepReader, r.opts.Workers)
-	err := parallel(ctx, r.opts.Workers, height, func(worker, k int) error {
+	err := parallel.Do(ctx, r.opts.Workers, height, func(worker, k int) error {
 		if readers[worker] == nil {
 			readers[worker] = r.newStepReader()
 		}

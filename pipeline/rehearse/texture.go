@@ -153,7 +153,7 @@ func (w *weights) times(dst, src *density, row *mirrorRow, across float64) {
 // 1/2 at its last.
 func (o *optics) colourWeight(nm float64) float64 {
 	g := o.profile.Grid
-	return (nm-g.WavelengthNM(-0.5))/(float64(g.Count)*g.StepNM) - 0.5
+	return (nm-g.WavelengthNM(-0.5))/g.SpanNM() - 0.5
 }
 
 // leakMap is the structure of what shut mirrors leak: a factor of 20 % rms over the

@@ -86,7 +86,7 @@ func plotSpectrum(s *spectrum, grid instrument.Grid, unit string) (*plot.Plot, e
 			return nil, err
 		}
 	}
-	p.X.Min, p.X.Max = grid.FirstNM, grid.LastNM()
+	p.X.Min, p.X.Max = grid.WavelengthNM(0), grid.LastNM()
 	p.Y.Min, p.Y.Max = s.yRange()
 	return p, nil
 }
@@ -105,7 +105,7 @@ func newChart(grid instrument.Grid, unit string) *plot.Plot {
 	p.Y.Tick.Marker = plot.TickerFunc(roundTicks)
 	zero := plotter.NewFunction(func(float64) float64 { return 0 })
 	zero.Color, zero.Width, zero.Samples = rule, vg.Points(0.6), 2
-	zero.XMin, zero.XMax = grid.FirstNM, grid.LastNM()
+	zero.XMin, zero.XMax = grid.WavelengthNM(0), grid.LastNM()
 	p.Add(zero)
 	return p
 }

@@ -10,6 +10,7 @@ import (
 	"slices"
 	"strconv"
 
+	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 )
 
@@ -67,6 +68,18 @@ func newPage(in Input) *page {
 }
 
 // addCube says that there is a cube and what it spans.
+// gridWords describe a wavelength axis.
+func gridWords(g instrument.Grid) string {
+	text := fmt.Sprintf("%g to %g nm in vacuum, %g nm a voxel", g.WavelengthNM(0), g.LastNM(), g.StepNM)
+	if g.Axis == instrument.Air {
+		text = fmt.Sprintf("%g to %g nm in air, %g nm a voxel", g.AxisNM(0), g.AxisNM(float64(g.Count-1)), g.StepNM)
+	}
+	if g.Spacing == instrument.Logarithmic {
+		text += " at the first, growing in proportion"
+	}
+	return text
+}
+
 func (p *page) addCube(in Input) {
 	p.HasCube, p.Verdict = true, judge(in, "cube")
 	s := in.Schema
@@ -76,7 +89,7 @@ func (p *page) addCube(in Input) {
 	}
 	p.Facts = []fact{
 		{"Voxels", fmt.Sprintf("%d elements × %d detector rows × %d wavelengths", s.Elements, s.Rows, s.Grid.Count)},
-		{"Wavelengths", fmt.Sprintf("%g to %g nm in vacuum, %g nm a voxel", s.Grid.FirstNM, s.Grid.LastNM(), s.Grid.StepNM)},
+		{"Wavelengths", gridWords(s.Grid)},
 		{"Field", fmt.Sprintf("%.1f″ × %.1f″, voxels of %.3f″ × %.3f″", s.C1Deg*arcsecPerDeg*float64(s.Elements), s.C2Deg*arcsecPerDeg*float64(s.Rows), s.C1Deg*arcsecPerDeg, s.C2Deg*arcsecPerDeg)},
 		{"Centre", fmt.Sprintf("RA %.6f°, Dec %+.6f° (ICRS)", s.RADeg, s.DecDeg)},
 		{"Orientation", fmt.Sprintf("rows run to position angle %g°; east lies %s", s.RotangDeg, east)},

@@ -2,13 +2,15 @@
 words of the contract, which numpy alone turns into numbers here.
 
 usage: product_wcs.py CASES.json; each case: cube (FITS), profile (YAML),
-element_mirrors, n, ra, dec, rotang.
+element_mirrors, n, ra, dec, rotang; frame (FITS word) and factor (wavelength in the
+frame over wavelength observed); vacuum_nm, where mirrorloom puts the first voxels.
 
 The words: RA, Dec of the field's centre at pixel ((n+1)/2, y_c+1); axis 1 steps
 by c1 = a element_mirrors, axis 2 by c2 = a / w_step_px, where a is
 arcsec_per_mirror, over sqrt 2 if the device is mounted diagonally; +axis 2 has
 the position angle ROTANG, north through east; east is towards -axis 1 at
-ROTANG 0 unless parity is -1; axis 3 is the vacuum wavelength of the grid.
+ROTANG 0 unless parity is -1; axis 3 is the wavelength of the grid in vacuum (wave) or
+air (awav), spaced linearly or logarithmically (first exp(i step/first)).
 Positions and angles on the sphere are the textbook formulas of spherical
 trigonometry; the projection of far pixels is the inverse gnomonic one
 (FITS WCS paper II, Calabretta & Greisen 2002, A&A 395, 1077, eqs. 14, 15, 55).
@@ -17,6 +19,7 @@ trigonometry; the projection of far pixels is the inverse gnomonic one
 import json
 import sys
 
+import astropy.units as u
 import numpy as np
 import yaml
 from astropy.io import fits
@@ -42,6 +45,12 @@ def unproject(ra0, dec0, east, north):
     return ra % 360, dec
 
 
+def air(nm):
+    """Standard air of Peck & Reeder 1972, equation 2."""
+    s2 = (1000 / nm) ** 2
+    return nm / (1 + 1e-8 * (8060.51 + 2480990 / (132.274 - s2) + 17455.7 / (39.32957 - s2)))
+
+
 def near(got, want, tolerance, what):
     off = abs(got - want)
     if "angle" in what:
@@ -63,8 +72,16 @@ def check(case):
         assert names == ["SIGNAL", "VARIANCE", "FLAGS", "SCALE"], names
         for h in images:
             w = WCS(h.header)
-            assert list(w.wcs.ctype) == ["RA---TAN", "DEC--TAN", "WAVE"], list(w.wcs.ctype)
-            assert w.wcs.radesys == "ICRS" and w.wcs.specsys == "TOPOCENT"
+            kind = {"wave": "WAVE", "awav": "AWAV"}[grid["axis"]] + {"linear": "", "log": "-LOG"}[grid["spacing"]]
+            assert list(w.wcs.ctype) == ["RA---TAN", "DEC--TAN", kind], list(w.wcs.ctype)
+            assert w.wcs.radesys == "ICRS" and w.wcs.specsys == case["frame"]
+            if case["frame"] == "TOPOCENT":
+                assert "VELOSYS" not in h.header
+            else:
+                assert w.wcs.ssysobs == "TOPOCENT"
+                # A source at rest in the frame, seen by an observer who recedes from it.
+                shift = (w.wcs.velosys * u.m / u.s).to(u.nm, u.doppler_relativistic(500 * u.nm)).value / 500
+                near(shift, 1 / case["factor"], 1e-13, "Doppler shift of the observer")
 
             def sky(x, y):
                 return w.wcs_pix2world([[x, y, 1]], 1)[0][:2]
@@ -92,8 +109,18 @@ def check(case):
             near(got[1], want[1], 1e-9, "Dec of a far pixel")
             # wcslib converts the axis to metres.
             for i in (0, 1, grid["count"] - 1):
+                first, step = grid["first_nm"], grid["step_nm"]
+                want = first + i * step if grid["spacing"] == "linear" else first * np.exp(i * step / first)
                 nm = w.wcs_pix2world([[x0, y0, i + 1]], 1)[0][2] * 1e9
-                near(nm, grid["first_nm"] + i * grid["step_nm"], 1e-7, f"wavelength of voxel {i}")
+                near(nm, want, 1e-9 * want, f"wavelength of voxel {i}")
+            # Where mirrorloom puts a voxel in vacuum, from wcslib's wavelength: another
+            # formula, so within 2.2e-5 nm.
+            for i, vacuum in enumerate(case["vacuum_nm"]):
+                nm = w.wcs_pix2world([[x0, y0, i + 1]], 1)[0][2] * 1e9
+                if grid["axis"] == "awav":
+                    near(air(vacuum), nm, 3e-5, f"wavelength in air of voxel {i}")
+                else:
+                    near(vacuum, nm, 1e-9 * nm, f"wavelength in vacuum of voxel {i}")
         units = [Unit(h.header["BUNIT"], format="fits") for h in images[:2]]
         assert units[0] == Unit("ct") and units[1] == Unit("ct") ** 2, units
         assert "BUNIT" not in hdus["FLAGS"].header and "BUNIT" not in hdus["SCALE"].header

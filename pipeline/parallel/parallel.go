@@ -1,4 +1,5 @@
-package reduce
+// Package parallel shares work among goroutines.
+package parallel
 
 import (
 	"context"
@@ -6,10 +7,10 @@ import (
 	"sync/atomic"
 )
 
-// parallel runs work(worker, i) for every i below n, by so many workers at
+// Do runs work(worker, i) for every i below n, by so many workers at
 // once, and gives the error of the lowest i that failed, so that the same fault
 // gives the same sentence. After an error or the end of ctx no new work begins.
-func parallel(ctx context.Context, workers, n int, work func(worker, i int) error) error {
+func Do(ctx context.Context, workers, n int, work func(worker, i int) error) error {
 	workers = max(1, min(workers, n))
 	var (
 		next   atomic.Int64

@@ -1,4 +1,4 @@
-package reduce
+package parallel
 
 import (
 	"context"
@@ -15,7 +15,7 @@ func TestParallel(t *testing.T) {
 		for _, n := range []int{0, 1, 7, 64} {
 			seen := make([]atomic.Int32, n)
 			busy := make([]atomic.Bool, workers)
-			err := parallel(context.Background(), workers, n, func(worker, i int) error {
+			err := Do(context.Background(), workers, n, func(worker, i int) error {
 				if busy[worker].Swap(true) {
 					return errors.New("a worker does two things at once")
 				}
@@ -35,12 +35,12 @@ func TestParallel(t *testing.T) {
 // the first where all fail.
 func TestParallelErrors(t *testing.T) {
 	for range 50 {
-		err := parallel(context.Background(), 4, 100, func(_, i int) error { return fmt.Errorf("item %d", i) })
+		err := Do(context.Background(), 4, 100, func(_, i int) error { return fmt.Errorf("item %d", i) })
 		require.EqualError(t, err, "item 0")
 	}
 	ctx, cancel := context.WithCancel(context.Background())
 	var done atomic.Int32
-	err := parallel(ctx, 2, 1000, func(int, int) error {
+	err := Do(ctx, 2, 1000, func(int, int) error {
 		if done.Add(1) == 10 {
 			cancel()
 		}

@@ -1,4 +1,4 @@
-package reduce
+package exposure
 
 import (
 	"fmt"
@@ -11,44 +11,45 @@ import (
 	"mirrorloom/pipeline/instrument"
 )
 
-// camera turns rows of raw frames into electrons above the bias level, in
+// Camera turns rows of raw frames into electrons above the bias level, in
 // active pixels.
-type camera struct {
-	columns, rows int
+type Camera struct {
+	Columns, Rows int
+	Amplifiers    []Amplifier
 	saturationADU float64
 	linearity     []float64 // see calib.Linearise
-	amplifiers    []amplifier
-	// variance gives, by detector row, the variance of a sample without light
+	// Variance gives, by detector row, the variance of a sample without light
 	// in every column, electrons squared; rows of the same amplifiers share it.
-	variance [][]float64
-	// photonExcess: the variance of light is (1 + photonExcess) times the light, as
+	Variance [][]float64
+	// PhotonExcess: the variance of light is (1 + PhotonExcess) times the light, as
 	// the read mode makes it; 0 for single reads.
-	photonExcess float64
-	noise        physics.EffectiveNoise // of the read mode
+	PhotonExcess float64
+	Noise        physics.EffectiveNoise // of the read mode
 }
 
-// amplifier is one readout chain with the place of its pixels.
-type amplifier struct {
-	place       instrument.Placement
+// Amplifier is one readout chain with the place of its pixels.
+type Amplifier struct {
+	Place       instrument.Placement
 	overscan    instrument.Section
 	hasOverscan bool
 	levels      calib.Overscan
-	gain        float64 // electrons per ADU
+	Gain        float64 // electrons per ADU
 	biasADU     float64 // where there is no overscan
 	variance    float64 // of a sample without light, electrons squared
 }
 
-func newCamera(d *instrument.Detector) (*camera, error) {
-	c := &camera{columns: d.Columns, rows: d.Rows, saturationADU: d.SaturationADU, linearity: d.Linearity}
+// NewCamera makes the camera of a detector. Errors name the key of the profile.
+func NewCamera(d *instrument.Detector) (*Camera, error) {
+	c := &Camera{Columns: d.Columns, Rows: d.Rows, saturationADU: d.SaturationADU, linearity: d.Linearity}
 	mode := d.Mode()
 	var err error
-	if c.noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
+	if c.Noise, err = (physics.ReadMode{Kind: physics.ReadKind(mode.Kind), Reads: mode.Reads, Spacing: mode.Spacing}).Noise(); err != nil {
 		return nil, fmt.Errorf("detector.read_mode of the profile: %w", err)
 	}
-	c.photonExcess = c.noise.Photon - 1
+	c.PhotonExcess = c.Noise.Photon - 1
 	for i, place := range d.Active() {
 		a := d.Amplifiers[i]
-		amp := amplifier{place: place, gain: a.GainEPerADU, biasADU: a.BiasADU, variance: calib.ReadVariance(a.ReadNoiseE*math.Sqrt(c.noise.Read), a.GainEPerADU)}
+		amp := Amplifier{Place: place, Gain: a.GainEPerADU, biasADU: a.BiasADU, variance: calib.ReadVariance(a.ReadNoiseE*math.Sqrt(c.Noise.Read), a.GainEPerADU)}
 		if amp.overscan, amp.hasOverscan = a.Overscan.Section(); amp.hasOverscan {
 			if amp.overscan[2] > a.Data[2] || amp.overscan[3] < a.Data[3] {
 				return nil, fmt.Errorf("the overscan of amplifier %d spans rows %d to %d, not all of its data's rows %d to %d; mend detector.amplifiers of the profile", i+1, amp.overscan[2], amp.overscan[3], a.Data[2], a.Data[3])
@@ -57,28 +58,38 @@ func newCamera(d *instrument.Detector) (*camera, error) {
 			// The level's own noise: read noise over the pixels it averages.
 			amp.variance *= 1 + 1/float64(amp.averaged())
 		}
-		c.amplifiers = append(c.amplifiers, amp)
+		c.Amplifiers = append(c.Amplifiers, amp)
 	}
-	c.variance = c.variances()
+	c.Variance = c.variances()
 	return c, nil
 }
 
 // averaged is how many overscan pixels a level is the mean of, 0 without overscan.
-func (a *amplifier) averaged() int {
+func (a *Amplifier) averaged() int {
 	if !a.hasOverscan {
 		return 0
 	}
 	return min(a.overscan.Height(), 2*a.levels.HalfWindow+1) * a.overscan.Width()
 }
 
-// amplifierOf gives the amplifier of each column, by detector row; rows of the same
+// LevelVariance is that of a row's bias level, electrons squared, and how many rows
+// share overscan pixels; 0 and 1 without overscan.
+func (a *Amplifier) LevelVariance() (variance float64, rows int) {
+	n := a.averaged()
+	if n == 0 {
+		return 0, 1
+	}
+	return a.variance / float64(n+1), 2*a.levels.HalfWindow + 1
+}
+
+// AmplifierOf gives the amplifier of each column, by detector row; rows of the same
 // amplifiers share it.
-func (c *camera) amplifierOf() [][]uint8 {
-	all := make([][]uint8, c.rows)
+func (c *Camera) AmplifierOf() [][]uint8 {
+	all := make([][]uint8, c.Rows)
 	for y := range all {
-		row := make([]uint8, c.columns)
-		for i := range c.amplifiers {
-			p := &c.amplifiers[i].place
+		row := make([]uint8, c.Columns)
+		for i := range c.Amplifiers {
+			p := &c.Amplifiers[i].Place
 			if y >= p.Y0 && y < p.Y0+p.Raw.Height() {
 				for x := p.X0; x < p.X0+p.Raw.Width(); x++ {
 					row[x] = uint8(i)
@@ -93,15 +104,25 @@ func (c *camera) amplifierOf() [][]uint8 {
 	return all
 }
 
-// variances fills in camera.variance.
-func (c *camera) variances() [][]float64 {
-	all := make([][]float64, c.rows)
+// NoisiestVariance is the largest variance of a sample without light among the
+// amplifiers, electrons squared.
+func (c *Camera) NoisiestVariance() float64 {
+	most := 0.0
+	for i := range c.Amplifiers {
+		most = max(most, c.Amplifiers[i].variance)
+	}
+	return most
+}
+
+// variances fills in Camera.Variance.
+func (c *Camera) variances() [][]float64 {
+	all := make([][]float64, c.Rows)
 	for y := range all {
-		row := make([]float64, c.columns)
-		for i := range c.amplifiers {
-			a := &c.amplifiers[i]
-			if y >= a.place.Y0 && y < a.place.Y0+a.place.Raw.Height() {
-				for x := a.place.X0; x < a.place.X0+a.place.Raw.Width(); x++ {
+		row := make([]float64, c.Columns)
+		for i := range c.Amplifiers {
+			a := &c.Amplifiers[i]
+			if y >= a.Place.Y0 && y < a.Place.Y0+a.Place.Raw.Height() {
+				for x := a.Place.X0; x < a.Place.X0+a.Place.Raw.Width(); x++ {
 					row[x] = a.variance
 				}
 			}
@@ -123,8 +144,8 @@ func equal(a, b []float64) bool {
 	return true
 }
 
-// readScratch is the memory of one reader. Reuse it.
-type readScratch struct {
+// Scratch is the memory of one reader. Reuse it.
+type Scratch struct {
 	raw, overscan   []float32
 	flags           []calib.Flag
 	level, variance []float64
@@ -137,18 +158,18 @@ func grow[T any](s []T, n int) []T {
 	return s[:n]
 }
 
-// marked is called with the flags found in a block of pixels: rows of width w
+// Marked is called with the flags found in a block of pixels: rows of width w
 // that begin at active pixel (x, y).
-type marked func(flags []calib.Flag, x, y, w int)
+type Marked func(flags []calib.Flag, x, y, w int)
 
-// read fills dst, [row][column], with rows y0..y1-1 of a frame in electrons
+// Read fills dst, [row][column], with rows y0..y1-1 of a frame in electrons
 // above the bias level, and returns how many pixels are saturated. Saturated
 // pixels, and those without a value, which read as 0 and count as bad, are
 // reported to mark.
-func (c *camera) read(dst []float32, im *fitsutil.Image, y0, y1 int, s *readScratch, mark marked) (saturated int, err error) {
-	for i := range c.amplifiers {
-		a := &c.amplifiers[i]
-		first, last := max(y0, a.place.Y0), min(y1, a.place.Y0+a.place.Raw.Height())
+func (c *Camera) Read(dst []float32, im *fitsutil.Image, y0, y1 int, s *Scratch, mark Marked) (saturated int, err error) {
+	for i := range c.Amplifiers {
+		a := &c.Amplifiers[i]
+		first, last := max(y0, a.Place.Y0), min(y1, a.Place.Y0+a.Place.Raw.Height())
 		if first >= last {
 			continue
 		}
@@ -161,9 +182,9 @@ func (c *camera) read(dst []float32, im *fitsutil.Image, y0, y1 int, s *readScra
 	return saturated, nil
 }
 
-func (c *camera) readAmplifier(dst []float32, im *fitsutil.Image, a *amplifier, y0, first, last int, s *readScratch, mark marked) (saturated int, err error) {
-	x0, x1, rawY0, _ := a.place.Raw.Bounds0()
-	rawFirst := rawY0 + first - a.place.Y0
+func (c *Camera) readAmplifier(dst []float32, im *fitsutil.Image, a *Amplifier, y0, first, last int, s *Scratch, mark Marked) (saturated int, err error) {
+	x0, x1, rawY0, _ := a.Place.Raw.Bounds0()
+	rawFirst := rawY0 + first - a.Place.Y0
 	w, h := x1-x0, last-first
 	s.raw = grow(s.raw, w*h)
 	if err := im.ReadSection(s.raw, x0, x1, rawFirst, rawFirst+h); err != nil {
@@ -184,17 +205,17 @@ func (c *camera) readAmplifier(dst []float32, im *fitsutil.Image, a *amplifier, 
 			calib.Linearise(row, c.linearity)
 			level = 0
 		}
-		calib.ToElectrons(row, level, a.gain)
+		calib.ToElectrons(row, level, a.Gain)
 		for x, v := range row {
 			if v != v {
 				row[x], found = 0, true
 				s.flags[y*w+x] |= calib.BadPixel
 			}
 		}
-		copy(dst[(first+y-y0)*c.columns+a.place.X0:], row)
+		copy(dst[(first+y-y0)*c.Columns+a.Place.X0:], row)
 	}
 	if found {
-		mark(s.flags, a.place.X0, first, w)
+		mark(s.flags, a.Place.X0, first, w)
 	}
 	return saturated, nil
 }
@@ -202,7 +223,7 @@ func (c *camera) readAmplifier(dst []float32, im *fitsutil.Image, a *amplifier, 
 // rowLevels puts the bias levels in ADU of h rows into s.level: of the
 // overscan, read with the rows that its smoothing needs on both sides, so that
 // a level does not depend on where a strip ends.
-func (a *amplifier) rowLevels(im *fitsutil.Image, rawFirst, h int, s *readScratch) error {
+func (a *Amplifier) rowLevels(im *fitsutil.Image, rawFirst, h int, s *Scratch) error {
 	s.level, s.variance = grow(s.level, h), grow(s.variance, h)
 	if !a.hasOverscan {
 		for y := range s.level {
@@ -226,4 +247,13 @@ func (a *amplifier) rowLevels(im *fitsutil.Image, rawFirst, h int, s *readScratc
 		}
 	}
 	return nil
+}
+
+// Merge adds the flags of a block to those of all columns from row y0 on.
+func (c *Camera) Merge(dst []calib.Flag, y0 int, flags []calib.Flag, x, y, w int) {
+	for i, f := range flags {
+		if f != 0 {
+			dst[(y+i/w-y0)*c.Columns+x+i%w] |= f
+		}
+	}
 }

@@ -1,12 +1,14 @@
-package reduce
+package exposure
 
 import (
 	"math"
+	"path/filepath"
 	"testing"
 
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -26,7 +28,7 @@ func twoAmplifiers() *instrument.Detector {
 // come out in their active places, whole or in strips.
 func TestCameraRead(t *testing.T) {
 	d := twoAmplifiers()
-	c, err := newCamera(d)
+	c, err := NewCamera(d)
 	require.NoError(t, err)
 	level := func(amplifier, y int) float64 { return 100*float64(1+amplifier) + 0.25*float64(y) }
 	electrons := func(x, y int) float64 { return float64(10*x + y) }
@@ -42,8 +44,8 @@ func TestCameraRead(t *testing.T) {
 		return float32(level(1, y))
 	})
 	whole := make([]float32, 12*30)
-	var s readScratch
-	saturated, err := c.read(whole, f.image, 0, 30, &s, func([]calib.Flag, int, int, int) { t.Error("a flag") })
+	var s Scratch
+	saturated, err := c.Read(whole, f.Image, 0, 30, &s, func([]calib.Flag, int, int, int) { t.Error("a flag") })
 	require.NoError(t, err)
 	require.Zero(t, saturated)
 	for i, got := range whole {
@@ -61,7 +63,7 @@ func TestCameraRead(t *testing.T) {
 	for y0 := 0; y0 < 30; y0 += 7 {
 		y1 := min(y0+7, 30)
 		part := make([]float32, 12*(y1-y0))
-		_, err := c.read(part, f.image, y0, y1, &s, nil)
+		_, err := c.Read(part, f.Image, y0, y1, &s, nil)
 		require.NoError(t, err)
 		require.Equal(t, whole[12*y0:12*y1], part, "a strip from row %d", y0)
 	}
@@ -70,23 +72,23 @@ func TestCameraRead(t *testing.T) {
 // The variance of a sample without light: read noise, rounding, and the level's own
 // over the 17 rows of 4 overscan pixels that it averages.
 func TestCameraVariance(t *testing.T) {
-	c, err := newCamera(twoAmplifiers())
+	c, err := NewCamera(twoAmplifiers())
 	require.NoError(t, err)
-	require.InDelta(t, (9+4.0/12)*(1+1.0/68), c.variance[3][0], 1e-12)
-	require.InDelta(t, (16+0.25/12)*(1+1.0/68), c.variance[29][11], 1e-12)
-	require.Len(t, c.variance, 30)
+	require.InDelta(t, (9+4.0/12)*(1+1.0/68), c.Variance[3][0], 1e-12)
+	require.InDelta(t, (16+0.25/12)*(1+1.0/68), c.Variance[29][11], 1e-12)
+	require.Len(t, c.Variance, 30)
 
 	d := twoAmplifiers()
 	d.Amplifiers[0].Overscan = nil
-	c, err = newCamera(d)
+	c, err = NewCamera(d)
 	require.NoError(t, err)
-	require.InDelta(t, 9+4.0/12, c.variance[0][0], 1e-12)
+	require.InDelta(t, 9+4.0/12, c.Variance[0][0], 1e-12)
 }
 
-// Saturated pixels are counted and marked, and so are those without a value, which
+// Saturated pixels are counted and Marked, and so are those without a value, which
 // read as 0.
 func TestCameraMarks(t *testing.T) {
-	c, err := newCamera(twoAmplifiers())
+	c, err := NewCamera(twoAmplifiers())
 	require.NoError(t, err)
 	f := writeFrame(t, "f.fits", 20, 30, func(raw, y int) float32 {
 		switch {
@@ -98,8 +100,8 @@ func TestCameraMarks(t *testing.T) {
 		return 100
 	})
 	dst, flags := make([]float32, 12*3), make([]calib.Flag, 12*3)
-	var s readScratch
-	saturated, err := c.read(dst, f.image, 19, 22, &s, func(found []calib.Flag, x, y, w int) { c.merge(flags, 19, found, x, y, w) })
+	var s Scratch
+	saturated, err := c.Read(dst, f.Image, 19, 22, &s, func(found []calib.Flag, x, y, w int) { c.Merge(flags, 19, found, x, y, w) })
 	require.NoError(t, err)
 	require.Equal(t, 1, saturated)
 	for i, got := range flags {
@@ -119,9 +121,9 @@ func TestCameraMarks(t *testing.T) {
 func TestCameraRefusals(t *testing.T) {
 	d := twoAmplifiers()
 	d.Amplifiers[1].Overscan = instrument.Overscan{17, 20, 2, 30}
-	_, err := newCamera(d)
+	_, err := NewCamera(d)
 	require.ErrorContains(t, err, "amplifier 2 spans rows 2 to 30")
-	c, err := newCamera(twoAmplifiers())
+	c, err := NewCamera(twoAmplifiers())
 	require.NoError(t, err)
 	f := writeFrame(t, "f.fits", 20, 30, func(raw, _ int) float32 {
 		if raw >= 16 {
@@ -129,7 +131,24 @@ func TestCameraRefusals(t *testing.T) {
 		}
 		return 100
 	})
-	var s readScratch
-	_, err = c.read(make([]float32, 12*30), f.image, 0, 30, &s, func([]calib.Flag, int, int, int) {})
+	var s Scratch
+	_, err = c.Read(make([]float32, 12*30), f.Image, 0, 30, &s, func([]calib.Flag, int, int, int) {})
 	require.ErrorContains(t, err, "no value in the overscan of raw row 1")
+}
+
+// writeFrame writes a raw frame, its pixels given by x and y from 0, and opens it.
+func writeFrame(t testing.TB, name string, columns, rows int, value func(x, y int) float32) *Frame {
+	t.Helper()
+	data := make([]float32, columns*rows)
+	for i := range data {
+		data[i] = value(i%columns, i/columns)
+	}
+	path := filepath.Join(t.TempDir(), name)
+	require.NoError(t, fitsutil.WriteFile(path, nil, &fitsutil.ImageData{Axes: []int{columns, rows}, Data: data}))
+	file, err := fitsutil.Open(path)
+	require.NoError(t, err)
+	t.Cleanup(func() { require.NoError(t, file.Close()) })
+	image, err := file.FirstImage()
+	require.NoError(t, err)
+	return &Frame{Name: name, Image: image, file: file}
 }

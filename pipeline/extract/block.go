@@ -1,0 +1,198 @@
+package extract
+
+// block adds what pixels x0..x0+n-1 of detector row y contribute.
+func (p *propagator) block(w *part, y int, traces []*traceRow, light [][]float32, pixels *pixelRow) {
+	if !p.gather(w, y, traces) {
+		return
+	}
+	p.c.samples(&w.b, light, pixels)
+	w.k.prepare(&w.b)
+	for x := range w.n {
+		if p.touched(w, x) {
+			p.pixel(w, x, light, pixels)
+		}
+	}
+	p.addSums(w, light, pixels)
+}
+
+// gather collects the weights of all channels on the block's pixels, by the slots
+// of the aperture's elements; false if there are none.
+func (p *propagator) gather(w *part, y int, traces []*traceRow) bool {
+	channels := p.c.Grid.Count
+	for i := range w.lo {
+		w.lo[i], w.hi[i] = int32(channels), 0
+	}
+	any := false
+	p.visit(w, traces, func(slot, l, from int, weights []float32) {
+		any = true
+		for k := range weights {
+			at := slot*w.n + from + k
+			w.lo[at], w.hi[at] = min(w.lo[at], int32(l)), max(w.hi[at], int32(l+1))
+		}
+	})
+	if !any {
+		return false
+	}
+	size := int32(0)
+	for i := range w.lo {
+		w.at[i] = size
+		size += max(0, w.hi[i]-w.lo[i])
+	}
+	if cap(w.values) < int(size) {
+		w.values = make([]float64, size)
+	}
+	w.values = w.values[:size]
+	clear(w.values)
+	for _, t := range traces {
+		rows := make([]float64, w.n)
+		for x := range rows {
+			first, weights := p.c.shift.Weights(t.y0, w.x0+x)
+			if k := y - first; k >= 0 && k < len(weights) {
+				rows[x] = float64(weights[k])
+			}
+		}
+		p.visit(w, []*traceRow{t}, func(slot, l, from int, weights []float32) {
+			for k, v := range weights {
+				at := slot*w.n + from + k
+				w.values[w.at[at]+int32(l)-w.lo[at]] += rows[from+k] * float64(v)
+			}
+		})
+	}
+	return true
+}
+
+// visit calls f with the weights of every voxel that reaches the block, from column
+// from of the block on.
+func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int, weights []float32)) {
+	channels := p.c.Grid.Count
+	for _, t := range traces {
+		for i := t.from; i < t.to; i++ {
+			for l := range channels {
+				first, weights := t.voxel(i, l, channels)
+				from := first - w.x0
+				if from >= w.n || from+len(weights) <= 0 || len(weights) == 0 {
+					continue
+				}
+				if from < 0 {
+					weights, from = weights[-from:], 0
+				}
+				f(p.a.slot[i], l, from, weights[:min(len(weights), w.n-from)])
+			}
+		}
+	}
+}
+
+// touched tells whether any weight lies on pixel x of the block.
+func (p *propagator) touched(w *part, x int) bool {
+	for slot := range p.a.elements {
+		if at := slot*w.n + x; w.hi[at] > w.lo[at] {
+			return true
+		}
+	}
+	return false
+}
+
+// weights gives the weights of element slot on pixel x, of the channels from lo on.
+func (w *part) weights(slot, x int) (lo int, values []float64) {
+	at := slot*w.n + x
+	if w.hi[at] <= w.lo[at] {
+		return 0, nil
+	}
+	return int(w.lo[at]), w.values[w.at[at] : w.at[at]+w.hi[at]-w.lo[at]]
+}
+
+// pixel adds the covariances of channels in pixel x of the block:
+// sum_jj' g_jl C_jj' g_j'l', what the elements have in common included.
+func (p *propagator) pixel(w *part, x int, light [][]float32, pixels *pixelRow) {
+	common := float64(pixels.common[w.x0+x])
+	w.k.at(w.pairs, &w.b, x, func(slot int) float64 {
+		return float64(pixels.of(slot)[w.x0+x]) - common
+	})
+	for j := range p.a.elements {
+		lo, g := w.weights(j, x)
+		if g == nil {
+			continue
+		}
+		row := w.row[:len(g)+Lags]
+		clear(row)
+		for other := range p.a.elements {
+			low, h := w.weights(other, x)
+			c := w.pairs[j][other] + common
+			c += p.c.noise.ResponseVariance * float64(light[p.a.elements[j]][w.x0+x]) * float64(light[p.a.elements[other]][w.x0+x])
+			from, to := max(lo, low), min(lo+len(row), low+len(h))
+			for l := from; l < to; l++ {
+				row[l-lo] += c * h[l-low]
+			}
+		}
+		for l, v := range g {
+			band := w.channels[lo+l]
+			for lag, sum := range row[l : l+Lags+1][:len(band)] {
+				band[lag] += v * sum
+			}
+		}
+	}
+	if w.perChannel != nil {
+		p.pixelThroughput(w, x)
+	}
+}
+
+// pixelThroughput adds what a relative error of each step does to the channels.
+func (p *propagator) pixelThroughput(w *part, x int) {
+	code := p.c.decoder.Code()
+	open, closed := code.InverseEntries()
+	for slot, j := range p.a.elements {
+		lo, g := w.weights(slot, x)
+		for k := range p.c.noise.V {
+			if p.c.noise.ThroughputErr[k] == 0 || g == nil {
+				continue
+			}
+			entry := closed
+			if code.Bit(k, p.c.columns[j]) == 1 {
+				entry = open
+			}
+			entry *= float64(w.b.predicted[k*w.n+x])
+			for i, v := range g {
+				w.perChannel[k][lo+i] += float32(entry * v)
+			}
+		}
+	}
+}
+
+// addSums adds the variances of sums over channels: sum_k s_k^2 (A'g)_k^2 with the
+// summed weights g. A is symmetric, so that A'g is the decode of g.
+func (p *propagator) addSums(w *part, light [][]float32, pixels *pixelRow) {
+	if len(p.sums) == 0 {
+		return
+	}
+	if w.sumWeights == nil {
+		w.sumWeights, w.sumSamples = make([]float32, p.c.noise.V*w.n), make([]float32, p.c.noise.V*w.n)
+	}
+	for s, sum := range p.sums {
+		clear(w.sumWeights)
+		total, ofResponse := make([]float64, w.n), make([]float64, w.n)
+		for slot, j := range p.a.elements {
+			for x := range w.n {
+				lo, g := w.weights(slot, x)
+				all := 0.0
+				for i, v := range g {
+					all += sum[lo+i] * v
+				}
+				w.sumWeights[p.c.columns[j]*w.n+x] = float32(all)
+				total[x] += all
+				ofResponse[x] += all * float64(light[j][w.x0+x])
+			}
+		}
+		p.c.decoder.Decode(w.sumSamples, w.sumWeights, w.n, w.n)
+		for k := range p.c.noise.V {
+			for x, h := range w.sumSamples[k*w.n : (k+1)*w.n] {
+				w.sums[s] += float64(w.b.variances[k*w.n+x]) * float64(h) * float64(h)
+				if w.throughput != nil {
+					w.throughput[s][k] += float64(h) * float64(w.b.predicted[k*w.n+x])
+				}
+			}
+		}
+		for x := range w.n {
+			w.sums[s] += float64(pixels.common[w.x0+x])*total[x]*total[x] + p.c.noise.ResponseVariance*ofResponse[x]*ofResponse[x]
+		}
+	}
+}

@@ -1,0 +1,250 @@
+package extract
+
+import (
+	"crypto/sha256"
+	"fmt"
+	"path/filepath"
+
+	"mirrorloom/calib"
+	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/product"
+)
+
+// Cube is an open cube.fits. Its methods read what they need by offset; the cube is
+// never held.
+type Cube struct {
+	file *fitsutil.File
+	// SHA identifies the cube: the SHA-256 of all its headers, whose DATASUM cards
+	// stand for the data.
+	SHA                        string
+	Elements, Rows             int
+	Grid                       instrument.Grid
+	Unit                       string // BUNIT of SIGNAL
+	signal, variance, flags    *fitsutil.Image
+	pixelVariance              *fitsutil.Image
+	slitResponse, bandResponse *fitsutil.Image // nil without a response
+	sky                        *sky
+	geometry                   calib.Geometry
+	noise                      *product.Noise
+	decoder                    *hadamard.Decoder
+	columns                    []int     // code column of each element
+	weight                     []float64 // 1/frames of each code row
+	sumWeight                  float64
+	shift                      *calib.RowShift
+	resampler                  *calib.Resampler
+	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
+}
+
+// Open opens the cube of a run: a folder that reduce wrote, or its cube.fits. The
+// errors name the file and the cure.
+func Open(run string) (*Cube, error) {
+	path := run
+	if filepath.Ext(run) != ".fits" {
+		path = filepath.Join(run, product.CubeFile)
+	}
+	file, err := fitsutil.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	c := &Cube{file: file}
+	if err := c.read(); err != nil {
+		file.Close() // only read from
+		return nil, err
+	}
+	return c, nil
+}
+
+// Close ends the use of the cube.
+func (c *Cube) Close() error { return c.file.Close() }
+
+// Path is the name of the cube's file.
+func (c *Cube) Path() string { return c.file.Path() }
+
+// Position is the place on the sky of an element and row, from 0.
+func (c *Cube) Position(element, row float64) Position { return c.sky.position(element, row) }
+
+func (c *Cube) read() (err error) {
+	for _, im := range []struct {
+		name string
+		to   **fitsutil.Image
+	}{
+		{product.Signal, &c.signal}, {product.Variance, &c.variance}, {product.FlagsImage, &c.flags},
+	} {
+		if *im.to, err = c.file.ImageNamed(im.name); err != nil {
+			return err
+		}
+		if len((*im.to).Axes) != 3 || fmt.Sprint((*im.to).Axes) != fmt.Sprint(c.signal.Axes) {
+			return c.fault("image %s has the axes %v", im.name, (*im.to).Axes)
+		}
+	}
+	c.Elements, c.Rows = c.signal.Width(), c.signal.Height()
+	if c.Unit, err = c.signal.Header.Str("BUNIT"); err != nil {
+		return err
+	}
+	if c.sky, err = readSky(c.signal.Header); err != nil {
+		return fmt.Errorf("%s: %w", c.Path(), err)
+	}
+	if err := c.readGrid(); err != nil {
+		return err
+	}
+	if c.noise, err = product.ReadNoise(c.file); err != nil {
+		return err
+	}
+	if c.pixelVariance, err = c.file.ImageNamed(product.PixelVariance); err != nil {
+		return err
+	}
+	if err := c.readResponse(); err != nil {
+		return err
+	}
+	if err := c.readCode(); err != nil {
+		return err
+	}
+	c.SHA = c.identify()
+	return c.readGeometry()
+}
+
+// fault is an error of a file that reduce did not write as it does now.
+func (c *Cube) fault(format string, args ...any) error {
+	return fmt.Errorf("%s: %s; make the cube again with reduce", c.Path(), fmt.Sprintf(format, args...))
+}
+
+func (c *Cube) readGrid() error {
+	kind, err := c.signal.Header.Str("CTYPE3")
+	if err != nil {
+		return err
+	}
+	unit, err := c.signal.Header.Str("CUNIT3")
+	if err != nil {
+		return err
+	}
+	if kind != "WAVE" || unit != "nm" {
+		return fmt.Errorf("%s: the wavelength axis is %s in %s; extract reads linear grids of vacuum wavelength in nm: reduce without the recipe's other grid", c.Path(), kind, unit)
+	}
+	c.Grid.Count = c.signal.Planes()
+	if c.Grid.FirstNM, err = c.signal.Header.Float("CRVAL3"); err != nil {
+		return err
+	}
+	if c.Grid.StepNM, err = c.signal.Header.Float("CD3_3"); err != nil {
+		return err
+	}
+	reference, err := c.signal.Header.Float("CRPIX3")
+	if err != nil {
+		return err
+	}
+	c.Grid.FirstNM += (1 - reference) * c.Grid.StepNM
+	return nil
+}
+
+// readResponse reads BANDRESP whole: it is as large as a row of the cube.
+func (c *Cube) readResponse() (err error) {
+	if !c.noise.Response {
+		return nil
+	}
+	if c.slitResponse, err = c.file.ImageNamed(product.SlitResponse); err != nil {
+		return err
+	}
+	if c.bandResponse, err = c.file.ImageNamed(product.BandResponse); err != nil {
+		return err
+	}
+	n := c.Elements * c.Grid.Count
+	if s, b := c.slitResponse, c.bandResponse; s.Width() != c.Elements || s.Height() != c.Rows || s.Planes() != 2 ||
+		b.Width() != c.Elements || b.Height() != c.Grid.Count || b.Planes() != 2 {
+		return c.fault("the responses have the axes %v and %v", s.Axes, b.Axes)
+	}
+	c.bandFactor, c.bandVariance = make([]float32, n), make([]float32, n)
+	if err := c.bandResponse.ReadPlaneRows(c.bandFactor, 0, 0, c.Grid.Count); err != nil {
+		return err
+	}
+	return c.bandResponse.ReadPlaneRows(c.bandVariance, 1, 0, c.Grid.Count)
+}
+
+func (c *Cube) readCode() error {
+	code, err := hadamard.New(hadamard.Family(c.noise.Family), c.noise.V)
+	if err != nil {
+		return fmt.Errorf("%s: %w", c.Path(), err)
+	}
+	if code.Poly() != c.noise.Poly {
+		return c.fault("the code's polynomial is %d, here %d", c.noise.Poly, code.Poly())
+	}
+	c.decoder = hadamard.NewDecoder(code)
+	c.columns = make([]int, c.Elements)
+	found := 0
+	for column, j := range c.noise.Element {
+		if int(j) >= c.Elements {
+			return c.fault("table %s names element %d of %d", product.Code, j, c.Elements)
+		}
+		if j >= 0 {
+			c.columns[j] = column
+			found++
+		}
+	}
+	if found != c.Elements {
+		return c.fault("table %s names %d elements of %d", product.Code, found, c.Elements)
+	}
+	c.weight = make([]float64, c.noise.V)
+	for i, n := range c.noise.Frames {
+		c.weight[i] = 1 / float64(max(n, 1)) // a lost row was given the others' mean
+		c.sumWeight += c.weight[i]
+	}
+	return nil
+}
+
+func (c *Cube) readGeometry() error {
+	var header *fitsutil.Header
+	for _, u := range c.file.HDUs() {
+		if u.Name == product.Dispersion {
+			header = u.Header
+		}
+	}
+	if header == nil {
+		return c.fault("it has no table %s", product.Dispersion)
+	}
+	if err := product.ReadGeometry(header, c.geometry.Parameters()); err != nil {
+		return err
+	}
+	if err := c.geometry.Check(c.noise.Columns, c.noise.Rows, c.Grid.WavelengthNM(-0.5), c.Grid.WavelengthNM(float64(c.Grid.Count)-0.5)); err != nil {
+		return fmt.Errorf("%s: %w", c.Path(), err)
+	}
+	if c.noise.Rows != c.Rows || c.pixelVariance.Planes() != 2 {
+		return c.fault("image %s has the axes %v", product.PixelVariance, c.pixelVariance.Axes)
+	}
+	shift := make([]float64, c.noise.Columns)
+	for x := range shift {
+		shift[x] = c.geometry.TraceShift(float64(x))
+	}
+	var err error
+	if c.shift, err = calib.NewRowShift(shift, c.Rows); err != nil {
+		return err
+	}
+	c.resampler, err = calib.NewResampler(0, c.noise.Columns-1)
+	return err
+}
+
+func (c *Cube) identify() string {
+	sum := sha256.New()
+	for _, u := range c.file.HDUs() {
+		for _, card := range u.Header.Cards() {
+			fmt.Fprintf(sum, "%s=%v/%s\n", card.Key, card.Value, card.Comment) // a hash takes everything
+		}
+	}
+	return fmt.Sprintf("%x", sum.Sum(nil))
+}
+
+// response of an element, row and wavelength; slit is the row's of SLITRESP.
+func (c *Cube) response(slit []float32, element, voxel int) float64 {
+	if slit == nil {
+		return 1
+	}
+	return float64(slit[element]) * float64(c.bandFactor[voxel*c.Elements+element])
+}
+
+// slitRow reads a row of SLITRESP, factor or variance; nil without a response.
+func (c *Cube) slitRow(plane, y int) ([]float32, error) {
+	if c.slitResponse == nil {
+		return nil, nil
+	}
+	row := make([]float32, c.Elements)
+	return row, c.slitResponse.ReadPlaneRows(row, plane, y, y+1)
+}

@@ -1,0 +1,237 @@
+package extract
+
+import (
+	"context"
+	"math"
+
+	"mirrorloom/pipeline/product"
+)
+
+// Image is the light in a band of every element and row, [row][element].
+type Image struct {
+	Elements, Rows int
+	Band           Band
+	// Signal is not a number where less than leastCoverage of the band, or of its side
+	// bands, is good; else it is scaled to the whole band. Error is the standard error,
+	// Naive the root of the sum of VARIANCE.
+	Signal, Error, Naive []float32
+	// Coverage is the good part of the band.
+	Coverage []float32
+	Flags    []int16
+	Unit     string
+}
+
+// pieceRows of an image are worked on together.
+const pieceRows = 32
+
+// Image makes a narrow-band image.
+func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Image, error) {
+	weights, err := b.weights(c.Grid)
+	if err != nil {
+		return nil, err
+	}
+	n := c.Elements * c.Rows
+	im := &Image{
+		Elements: c.Elements, Rows: c.Rows, Band: b, Unit: bandUnit(c.Unit),
+		Signal: make([]float32, n), Error: make([]float32, n), Naive: make([]float32, n), Coverage: make([]float32, n), Flags: make([]int16, n),
+	}
+	inside := overlap(c.Grid, b.FromNM, b.ToNM)
+	step := 1.0
+	if perNM(c.Unit) {
+		step = math.Abs(c.Grid.StepNM)
+	}
+	from, to := span(weights)
+	noise := c.newSpectrumNoise()
+	for y0 := 0; y0 < c.Rows; y0 += pieceRows {
+		y1 := min(y0+pieceRows, c.Rows)
+		v, err := c.readVoxels(ctx, from, to, y0, y1)
+		if err != nil {
+			return nil, err
+		}
+		for y := y0; y < y1; y++ {
+			if err := noise.setRow(y); err != nil {
+				return nil, err
+			}
+			slit, err := c.slitRow(1, y)
+			if err != nil {
+				return nil, err
+			}
+			for j := range c.Elements {
+				s := v.spectrum((y-y0)*c.Elements + j)
+				noise.setElement(j, from, to)
+				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], step, noise, c.sharedBy(slit, j, from))
+			}
+		}
+		progress(y1)
+	}
+	return im, nil
+}
+
+// span is the range of channels with a weight.
+func span(weights []float64) (from, to int) {
+	from = len(weights)
+	for l, w := range weights {
+		if w != 0 {
+			from, to = min(from, l), l+1
+		}
+	}
+	return from, to
+}
+
+// set computes pixel i from the voxels of its spectrum.
+func (im *Image) set(i int, s spectrumVoxels, weights, inside []float64, step float64, noise *spectrumNoise, r responseNoise) {
+	var goodBand, allBand, goodSide, allSide float64
+	for l, w := range weights {
+		side := inside[l] - w // what the continuum takes
+		allBand, allSide = allBand+inside[l], allSide+side
+		if s.good(l) {
+			goodBand, goodSide = goodBand+inside[l], goodSide+side
+		}
+		if w != 0 {
+			im.Flags[i] |= s.flags[l]
+		}
+	}
+	im.Coverage[i] = float32(goodBand / allBand)
+	if goodBand < leastCoverage*allBand || goodSide < leastCoverage*allSide {
+		nan := float32(math.NaN())
+		im.Signal[i], im.Error[i], im.Naive[i] = nan, nan, nan
+		return
+	}
+	own := make([]float64, len(weights))
+	var signal, naive float64
+	for l, w := range weights {
+		if !s.good(l) {
+			continue
+		}
+		own[l] = step * inside[l] * allBand / goodBand
+		if allSide > 0 {
+			own[l] -= step * (inside[l] - w) * allSide / goodSide
+		}
+		signal += own[l] * float64(s.signal[l])
+		naive += own[l] * own[l] * float64(s.variance[l])
+	}
+	im.Signal[i], im.Naive[i] = float32(signal), float32(math.Sqrt(naive))
+	im.Error[i] = float32(math.Sqrt(r.variance(own, s) + noise.variance(r.onPixels(own, s, noise))))
+}
+
+// responseNoise is the relative variances of the responses in one spectrum.
+type responseNoise struct {
+	pixel, slit float64
+	band        func(l int) float64
+}
+
+// sharedBy gives those of element j, whose channels begin at from; slit is the row's
+// of SLITRESP.
+func (c *Cube) sharedBy(slit []float32, j, from int) responseNoise {
+	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 { return c.bandVarianceAt(j, from+l) }}
+	if slit != nil {
+		r.slit = float64(slit[j])
+	}
+	return r
+}
+
+// variance of a sum over channels by the responses: that of the slit is common to
+// all channels, that of the efficiency is taken for it.
+func (r responseNoise) variance(weights []float64, s spectrumVoxels) float64 {
+	var all, band, pixels float64
+	for l, w := range weights {
+		if w == 0 {
+			continue
+		}
+		v := w * float64(s.signal[l])
+		all += v
+		band += v * math.Sqrt(r.band(l))
+		pixels += v * v
+	}
+	return r.slit*all*all + band*band + r.pixel*pixels
+}
+
+// onPixels turns weights of channels into such that give each channel the part of
+// its VARIANCE that is not the responses'.
+func (r responseNoise) onPixels(weights []float64, s spectrumVoxels, noise *spectrumNoise) []float64 {
+	out := make([]float64, len(weights))
+	for l, w := range weights {
+		own := noise.product(l, l)
+		if w == 0 || !(own > 0) {
+			continue
+		}
+		out[l] = w * math.Sqrt(max(0, r.rest(s, l))/own)
+	}
+	return out
+}
+
+// rest is VARIANCE without what the responses add.
+func (r responseNoise) rest(s spectrumVoxels, l int) float64 {
+	v := float64(s.signal[l])
+	return float64(s.variance[l]) - v*v*(r.pixel+r.slit+r.band(l))
+}
+
+// variance of a sum over channels with the given weights.
+func (s *spectrumNoise) variance(weights []float64) float64 {
+	first, last := math.MaxInt, 0
+	for l := range weights {
+		first, last = min(first, int(s.first[l])), max(last, int(s.first[l]+s.start[l+1]-s.start[l]))
+	}
+	onPixels := make([]float64, max(0, last-first))
+	for l, weight := range weights {
+		for k, w := range s.w[s.start[l]:s.start[l+1]] {
+			onPixels[int(s.first[l])+k-first] += weight * float64(w)
+		}
+	}
+	sum := 0.0
+	for x, w := range onPixels {
+		sum += w * w * float64(s.straight[first+x])
+	}
+	return sum
+}
+
+// voxelBlock is channels from.. of rows of the cube, [row*elements+element][channel].
+type voxelBlock struct {
+	signal, variance [][]float32
+	flags            [][]int16
+}
+
+// spectrumVoxels are those of one element and row.
+type spectrumVoxels struct {
+	signal, variance []float32
+	flags            []int16
+}
+
+func (b *voxelBlock) spectrum(i int) spectrumVoxels {
+	return spectrumVoxels{b.signal[i], b.variance[i], b.flags[i]}
+}
+
+func (s spectrumVoxels) good(l int) bool {
+	return s.flags[l]&product.FlagBad == 0 && !isNaN(s.signal[l]) && s.variance[l] > 0
+}
+
+// readVoxels reads channels from..to-1 of rows y0..y1-1.
+func (c *Cube) readVoxels(ctx context.Context, from, to, y0, y1 int) (*voxelBlock, error) {
+	n := (y1 - y0) * c.Elements
+	b := &voxelBlock{signal: table[float32](n, to-from), variance: table[float32](n, to-from), flags: table[int16](n, to-from)}
+	plane := make([]float32, n)
+	for l := from; l < to; l++ {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		if err := c.signal.ReadPlaneRows(plane, l, y0, y1); err != nil {
+			return nil, err
+		}
+		for i, v := range plane {
+			b.signal[i][l-from] = v
+		}
+		if err := c.variance.ReadPlaneRows(plane, l, y0, y1); err != nil {
+			return nil, err
+		}
+		for i, v := range plane {
+			b.variance[i][l-from] = v
+		}
+		if err := c.flags.ReadPlaneRows(plane, l, y0, y1); err != nil {
+			return nil, err
+		}
+		for i, v := range plane {
+			b.flags[i][l-from] = int16(v)
+		}
+	}
+	return b, nil
+}

@@ -1,0 +1,148 @@
+package extract
+
+import (
+	"math"
+)
+
+// lightReader rebuilds from the cube the light of all elements at the detector's
+// pixels. It is for variances: it interpolates linearly between voxels and rows.
+type lightReader struct {
+	c *Cube
+	// electrons turns the cube's unit into detected electrons, [wavelength]; nil for 1.
+	electrons []float64
+	chunk     []float32 // [wavelength][row][element] of rows chunkRow...
+	chunkRow  int
+	chunkRows int
+	traces    map[int][][]float32 // by trace row: [element][column]
+}
+
+// chunkBytes of SIGNAL are read at a time.
+const chunkBytes = 24 << 20
+
+// mostChunkRows: more would read rows that an aperture of a few does not need.
+const mostChunkRows = 16
+
+func (c *Cube) newLightReader(electrons []float64) *lightReader {
+	rows := min(max(chunkBytes/(4*c.Elements*c.Grid.Count), 1), mostChunkRows)
+	return &lightReader{c: c, electrons: electrons, chunkRow: -1, chunkRows: rows, traces: map[int][][]float32{}}
+}
+
+// row is the light of detector row y, [element][column], electrons of a science
+// exposure. Rows are to be asked for in ascending order.
+func (r *lightReader) row(y int) ([][]float32, error) {
+	c := r.c
+	first, last := c.Rows, -1
+	below := make([]int, c.noise.Columns)
+	part := make([]float32, c.noise.Columns)
+	for x := range below {
+		at := float64(y) - c.geometry.TraceShift(float64(x))
+		at = min(max(at, 0), float64(c.Rows-1))
+		below[x] = min(int(at), max(c.Rows-2, 0))
+		part[x] = float32(at - float64(below[x]))
+		first, last = min(first, below[x]), max(last, below[x]+1)
+	}
+	for y0 := range r.traces {
+		if y0 < first {
+			delete(r.traces, y0)
+		}
+	}
+	for y0 := first; y0 <= last; y0++ {
+		if err := r.trace(y0); err != nil {
+			return nil, err
+		}
+	}
+	light := table[float32](c.Elements, c.noise.Columns)
+	for j, row := range light {
+		for x := range row {
+			row[x] = (1-part[x])*r.traces[below[x]][j][x] + part[x]*r.traces[below[x]+1][j][x]
+		}
+	}
+	return light, nil
+}
+
+// trace fills in the light of a trace row.
+func (r *lightReader) trace(y0 int) error {
+	if r.traces[y0] != nil {
+		return nil
+	}
+	if err := r.load(y0); err != nil {
+		return err
+	}
+	c := r.c
+	slit, err := c.slitRow(0, y0)
+	if err != nil {
+		return err
+	}
+	light := table[float32](c.Elements, c.noise.Columns)
+	values, places := make([]float64, c.Grid.Count), make([]float64, c.Grid.Count)
+	for j := range light {
+		for l := range values {
+			v := float64(r.chunk[(l*r.chunkRows+y0-r.chunkRow)*c.Elements+j])
+			if r.electrons != nil {
+				v *= r.electrons[l]
+			}
+			values[l] = v * c.response(slit, j, l)
+			if math.IsNaN(values[l]) {
+				values[l] = 0 // no data: as good as no light
+			}
+		}
+		c.geometry.EdgesX(places, float64(j), float64(y0), c.Grid.FirstNM, c.Grid.StepNM)
+		spread(light[j], values, places)
+	}
+	r.traces[y0] = light
+	return nil
+}
+
+// beyond the first and last voxel their light is taken to go on for so many columns:
+// as many as the voxels' own weights reach.
+const beyond = 8
+
+// spread turns voxels, whose centres lie at places in detector columns, rising or
+// falling, into light per column.
+func spread(dst []float32, values, places []float64) {
+	n := len(places)
+	if n < 2 {
+		return
+	}
+	for l := 0; l+1 < n; l++ {
+		a, b, va, vb := places[l], places[l+1], values[l], values[l+1]
+		if a > b {
+			a, b, va, vb = b, a, vb, va
+		}
+		wide := b - a
+		for x := max(0, int(math.Ceil(a))); x < len(dst) && float64(x) < b; x++ {
+			t := (float64(x) - a) / wide
+			dst[x] = float32(((1-t)*va + t*vb) / wide)
+		}
+	}
+	for _, end := range [][2]int{{0, 1}, {n - 1, n - 2}} {
+		place, inner := places[end[0]], places[end[1]]
+		low, high := place, place+beyond
+		if place < inner {
+			low, high = place-beyond, place
+		}
+		for x := max(0, int(math.Ceil(low))); x < len(dst) && float64(x) <= high; x++ {
+			dst[x] = float32(values[end[0]] / math.Abs(place-inner))
+		}
+	}
+}
+
+// load reads the chunk of rows from y0 on.
+func (r *lightReader) load(y0 int) error {
+	c := r.c
+	if r.chunkRow >= 0 && y0 >= r.chunkRow && y0 < r.chunkRow+r.chunkRows {
+		return nil
+	}
+	r.chunkRows = min(r.chunkRows, c.Rows)
+	r.chunkRow = min(y0, c.Rows-r.chunkRows)
+	n := r.chunkRows * c.Elements
+	if r.chunk == nil {
+		r.chunk = make([]float32, n*c.Grid.Count)
+	}
+	for l := range c.Grid.Count {
+		if err := c.signal.ReadPlaneRows(r.chunk[l*n:(l+1)*n], l, r.chunkRow, r.chunkRow+r.chunkRows); err != nil {
+			return err
+		}
+	}
+	return nil
+}

@@ -1,0 +1,330 @@
+package extract
+
+import (
+	"context"
+	"math"
+	"runtime"
+	"sync"
+	"sync/atomic"
+)
+
+// Lags is the number of neighbouring channels, on each side, with which a channel's
+// covariance is given. Beyond it channels share no pixel; only the coupling of
+// elements is left, a v-th of the variance.
+const Lags = 16
+
+// covariances of the channels of an aperture and of sums over them.
+type covariances struct {
+	// channels is [channel][lag]: the covariance of channel l with l + lag.
+	channels [][]float64
+	// sums are the variances of the sums asked for.
+	sums []float64
+}
+
+// propagator carries the weights of an aperture back to the detector.
+type propagator struct {
+	c     *Cube
+	a     *aperture
+	sums  [][]float64 // [sum][channel]
+	light *lightReader
+	// rowAt is the first cell of each row, from a.firstRow on, one more than rows.
+	rowAt  []int
+	pixels map[int]*pixelRow
+	traces map[int]*traceRow
+	fork   *coupling
+	parts  []*part // by block of columns
+}
+
+// part is what a block of columns has added so far. Blocks are added in order, so
+// that the result does not depend on the number of workers.
+type part struct {
+	x0, n      int
+	channels   [][]float64 // [channel][lag]
+	sums       []float64
+	throughput [][]float64 // [sum][code row]: the weight of a relative error of the step
+	perChannel [][]float32 // [code row][channel]: the same of each channel
+	b          block
+	k          *coupling
+	pairs      [][]float64
+	// Of the elements' slots and the block's columns: the channels lo..hi-1 that
+	// reach a pixel, and where in values their weights stand.
+	lo, hi, at []int32
+	values     []float64
+	row        []float64 // scratch, a channel each
+	column     []float64 // scratch, a code row each
+	sumWeights []float32 // [code column][pixel]
+	sumSamples []float32
+}
+
+// propagate computes the covariances of the weighted sums over the aperture and of
+// sums of channels with the weights sums, [sum][channel].
+func (c *Cube) propagate(ctx context.Context, a *aperture, sums [][]float64) (*covariances, error) {
+	p := &propagator{c: c, a: a, sums: sums, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, fork: c.newCoupling(a.elements)}
+	p.rowAt = make([]int, a.endRow-a.firstRow+1)
+	for _, k := range a.cells {
+		p.rowAt[k.row-a.firstRow+1]++
+	}
+	for i := range len(p.rowAt) - 1 {
+		p.rowAt[i+1] += p.rowAt[i]
+	}
+	electrons, err := p.electrons()
+	if err != nil {
+		return nil, err
+	}
+	p.light = c.newLightReader(electrons)
+	for x0 := 0; x0 < c.noise.Columns; x0 += blockPixels {
+		p.parts = append(p.parts, p.newPart(x0))
+	}
+	first, last := c.Rows, -1
+	for y0 := a.firstRow; y0 < a.endRow; y0++ {
+		if p.rowAt[y0-a.firstRow] < p.rowAt[y0-a.firstRow+1] {
+			f, l := c.shift.Span(y0)
+			first, last = min(first, f), max(last, l)
+		}
+	}
+	for y := first; y <= last; y++ {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		if err := p.row(y); err != nil {
+			return nil, err
+		}
+	}
+	return p.result(), nil
+}
+
+func (p *propagator) newPart(x0 int) *part {
+	c := p.c
+	w := &part{x0: x0, n: min(blockPixels, c.noise.Columns-x0), k: p.fork.fork()}
+	channels := c.Grid.Count
+	w.channels = table[float64](channels, Lags+1)
+	w.sums = make([]float64, len(p.sums))
+	w.b.x0, w.b.n = x0, w.n
+	w.pairs = table[float64](len(p.a.elements), len(p.a.elements))
+	m := len(p.a.elements) * w.n
+	w.lo, w.hi, w.at = make([]int32, m), make([]int32, m), make([]int32, m)
+	w.row, w.column = make([]float64, channels+Lags+1), make([]float64, c.noise.V)
+	if p.hasThroughput() {
+		w.throughput = table[float64](len(p.sums), c.noise.V)
+		w.perChannel = table[float32](c.noise.V, channels)
+	}
+	return w
+}
+
+func (p *propagator) hasThroughput() bool {
+	for _, e := range p.c.noise.ThroughputErr {
+		if e > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// row adds what the pixels of detector row y contribute.
+func (p *propagator) row(y int) error {
+	traces, err := p.tracesOf(y)
+	if err != nil {
+		return err
+	}
+	if len(traces) == 0 {
+		return nil
+	}
+	light, err := p.light.row(y)
+	if err != nil {
+		return err
+	}
+	pixels, err := p.pixelsOf(y)
+	if err != nil {
+		return err
+	}
+	var next atomic.Int64
+	var workers sync.WaitGroup
+	for range min(runtime.GOMAXPROCS(0), len(p.parts)) {
+		workers.Go(func() {
+			for i := int(next.Add(1)) - 1; i < len(p.parts); i = int(next.Add(1)) - 1 {
+				p.block(p.parts[i], y, traces, light, pixels)
+			}
+		})
+	}
+	workers.Wait()
+	return nil
+}
+
+// tracesOf gives the trace rows of the aperture that read detector row y, in order.
+func (p *propagator) tracesOf(y int) ([]*traceRow, error) {
+	var all []*traceRow
+	for y0 := p.a.firstRow; y0 < p.a.endRow; y0++ {
+		from, to := p.rowAt[y0-p.a.firstRow], p.rowAt[y0-p.a.firstRow+1]
+		first, last := p.c.shift.Span(y0)
+		if last < y {
+			delete(p.traces, y0)
+		}
+		if from == to || y < first || y > last {
+			continue
+		}
+		if p.traces[y0] == nil {
+			t, err := p.newTrace(y0, from, to)
+			if err != nil {
+				return nil, err
+			}
+			p.traces[y0] = t
+		}
+		all = append(all, p.traces[y0])
+	}
+	for old := range p.pixels {
+		if old < y {
+			delete(p.pixels, old)
+		}
+	}
+	return all, nil
+}
+
+func (p *propagator) newTrace(y0, from, to int) (*traceRow, error) {
+	first, last := p.c.shift.Span(y0)
+	var rows []*pixelRow
+	for y := first; y <= last; y++ {
+		r, err := p.pixelsOf(y)
+		if err != nil {
+			return nil, err
+		}
+		rows = append(rows, r)
+	}
+	straight := make([][]float32, len(rows[0].own))
+	return p.c.newTraceRow(p.a, y0, from, to, func(slot int) []float32 {
+		slot = min(slot, len(straight)-1)
+		if straight[slot] == nil {
+			straight[slot] = make([]float32, p.c.noise.Columns)
+			variances := make([][]float32, len(rows))
+			for i, r := range rows {
+				variances[i] = r.own[slot]
+			}
+			p.c.shift.Variance(straight[slot], variances, first, y0)
+		}
+		return straight[slot]
+	})
+}
+
+func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
+	if r := p.pixels[y]; r != nil {
+		return r, nil
+	}
+	r, err := p.c.readPixels(y)
+	if err != nil {
+		return nil, err
+	}
+	if r.own == nil {
+		// A reader of its own: this one goes ahead of the rows that are added.
+		light, err := p.c.newLightReader(p.light.electrons).row(y)
+		if err != nil {
+			return nil, err
+		}
+		p.c.ownVariances(r, light, p.a.elements)
+	}
+	p.pixels[y] = r
+	return r, nil
+}
+
+// result adds the blocks, and the errors that pixels do not tell.
+func (p *propagator) result() *covariances {
+	out := &covariances{channels: table[float64](p.c.Grid.Count, Lags+1), sums: make([]float64, len(p.sums))}
+	for _, w := range p.parts {
+		for l, row := range w.channels {
+			for lag, v := range row {
+				out.channels[l][lag] += v
+			}
+		}
+		for i, v := range w.sums {
+			out.sums[i] += v
+		}
+	}
+	p.addThroughput(out)
+	p.addResponse(out)
+	return out
+}
+
+// addThroughput adds the errors of the steps' throughput, which all pixels share.
+func (p *propagator) addThroughput(out *covariances) {
+	for k, e := range p.c.noise.ThroughputErr {
+		if !(e > 0) {
+			continue
+		}
+		row := make([]float64, p.c.Grid.Count)
+		for _, w := range p.parts {
+			for l, v := range w.perChannel[k] {
+				row[l] += float64(v)
+			}
+		}
+		addOuter(out.channels, row, e*e)
+		for i := range p.sums {
+			total := 0.0
+			for _, w := range p.parts {
+				total += w.throughput[i][k]
+			}
+			out.sums[i] += e * e * total * total
+		}
+	}
+}
+
+// addOuter adds scale x x' to a band of a matrix.
+func addOuter(band [][]float64, x []float64, scale float64) {
+	for l, v := range x {
+		if v == 0 {
+			continue
+		}
+		for lag := range band[l] {
+			if l+lag < len(x) {
+				band[l][lag] += scale * v * x[l+lag]
+			}
+		}
+	}
+}
+
+// addResponse adds the errors of slit function and efficiency. That of the slit is
+// one number for the voxels of a cell. That of the efficiency is shared by the rows
+// of an element and by neighbouring wavelengths, here by all, which is a bound.
+func (p *propagator) addResponse(out *covariances) {
+	if !p.c.noise.Response {
+		return
+	}
+	channels := p.c.Grid.Count
+	light := make([]float64, channels)
+	add := func() {
+		addOuter(out.channels, light, 1)
+		for i, sum := range p.sums {
+			total := 0.0
+			for l, v := range light {
+				total += sum[l] * v
+			}
+			out.sums[i] += total * total
+		}
+	}
+	for i := range p.a.cells {
+		root := math.Sqrt(p.a.slitVariance[i])
+		for l := range light {
+			light[l] = root * p.a.weighted(i, l)
+		}
+		add()
+	}
+	for slot, j := range p.a.elements {
+		clear(light)
+		for i := range p.a.cells {
+			if p.a.slot[i] == slot {
+				for l := range light {
+					light[l] += p.a.weighted(i, l)
+				}
+			}
+		}
+		for l := range light {
+			light[l] *= math.Sqrt(p.c.bandVarianceAt(j, l))
+		}
+		add()
+	}
+}
+
+// weighted is a voxel's part of the sum.
+func (a *aperture) weighted(i, l int) float64 {
+	if a.weight[i][l] == 0 {
+		return 0
+	}
+	return a.weight[i][l] * float64(a.signal[i][l])
+}

@@ -1,0 +1,220 @@
+package extract
+
+import (
+	"context"
+	"math"
+	"path/filepath"
+	"testing"
+
+	"github.com/stretchr/testify/require"
+
+	"mirrorloom/calib"
+	"mirrorloom/internal/trial"
+	"mirrorloom/pipeline/reduce"
+	"mirrorloom/pipeline/rehearse"
+)
+
+// tinyRun makes a night of the tiny field and opens its cube.
+func tinyRun(t *testing.T, family string, v, dark int) *Cube {
+	t.Helper()
+	field, err := trial.Tiny()
+	require.NoError(t, err)
+	field.Profile.Spectrograph.SlitTilt, field.Profile.Spectrograph.TraceTilt = 0.05, 0.02
+	field.SetCode(family, v, dark)
+	night, err := field.Plan(t.Context(), t.TempDir())
+	require.NoError(t, err)
+	require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 5, NoTruth: true}))
+	_, err = night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true})
+	require.NoError(t, err)
+	c, err := Open(night.Run(trial.Noisy))
+	require.NoError(t, err)
+	t.Cleanup(func() { c.Close() })
+	return c
+}
+
+var codes = []struct {
+	family  string
+	v, dark int
+}{{"m-sequence", 31, 8}, {"legendre", 31, 8}, {"twin-prime", 35, 12}, {"slit-scan", 23, 0}}
+
+// naive computes the covariances of all channels from the definition: every sample
+// of every pixel is moved by itself, decoded, straightened and resampled as reduce
+// does, and the squares of what it moves are added up.
+func naive(t *testing.T, c *Cube, a *aperture, scale [][]float32) [][]float64 {
+	t.Helper()
+	code := c.decoder.Code()
+	open, closed := code.InverseEntries()
+	columns, channels := c.noise.Columns, c.Grid.Count
+	reader := c.newLightReader(nil)
+	out := table[float64](channels, channels)
+	rows, straight, zeros := table[float32](c.Rows, columns), make([]float32, columns), make([]float32, columns)
+	edges := make([]float64, channels+1)
+	// resampled[i][x] is what one electron in column x of cell i's straightened row
+	// adds to its voxels.
+	resampled := make([][][]float32, len(a.cells))
+	for i, k := range a.cells {
+		c.geometry.EdgesX(edges, float64(k.element), float64(k.row), c.Grid.WavelengthNM(-0.5), c.Grid.StepNM)
+		for x := range columns {
+			voxels := calib.Voxels{Signal: make([]float32, channels), Variance: make([]float32, channels), Flags: make([]calib.Flag, channels), Stride: 1}
+			clear(straight)
+			straight[x] = 1
+			c.resampler.Resample(voxels, straight, zeros, nil, edges)
+			resampled[i] = append(resampled[i], voxels.Signal)
+		}
+	}
+	for y := range c.Rows {
+		light, err := reader.row(y)
+		require.NoError(t, err)
+		p, err := c.readPixels(y)
+		require.NoError(t, err)
+		b := block{n: columns}
+		c.samples(&b, light, p)
+		for x := range columns {
+			// unit is what one electron of an element's light at (x, y) adds to the channels.
+			unit := map[int][]float64{}
+			rows[y][x] = 1
+			for i, k := range a.cells {
+				if first, last := c.shift.Span(k.row); y < first || y > last {
+					continue
+				}
+				if unit[k.element] == nil {
+					unit[k.element] = make([]float64, channels)
+				}
+				c.shift.Signal(straight, rows, 0, k.row)
+				for l, v := range resampled[i][x] {
+					if a.weight[i][l] != 0 {
+						unit[k.element][l] += float64(scale[i][l]) * a.weight[i][l] * float64(straight[x]) * float64(v)
+					}
+				}
+			}
+			rows[y][x] = 0
+			if len(unit) == 0 {
+				continue
+			}
+			add := func(moved []float64, variance float64) {
+				for l, v := range moved {
+					for m, w := range moved {
+						out[l][m] += variance * v * w
+					}
+				}
+			}
+			level := make([]float64, channels)
+			for _, u := range unit {
+				for l, v := range u {
+					level[l] += v
+				}
+			}
+			add(level, float64(p.common[x]))
+			for k := range code.V() {
+				moved := make([]float64, channels)
+				for j, u := range unit {
+					entry := closed
+					if code.Bit(k, c.columns[j]) == 1 {
+						entry = open
+					}
+					for l, v := range u {
+						moved[l] += entry * v
+					}
+				}
+				add(moved, float64(b.variances[k*columns+x]))
+			}
+		}
+	}
+	return out
+}
+
+// scalesOf are the scales that give each voxel its own VARIANCE, [cell][channel].
+func scalesOf(t *testing.T, c *Cube, a *aperture) [][]float32 {
+	p := &propagator{c: c, a: a, pixels: map[int]*pixelRow{}, light: c.newLightReader(nil)}
+	var all [][]float32
+	for i, k := range a.cells {
+		trace, err := p.newTrace(k.row, i, i+1)
+		require.NoError(t, err)
+		all = append(all, trace.scale)
+	}
+	return all
+}
+
+// The adjoint gives what moving every sample by itself gives, for every family of
+// codes: variances, covariances and those of bands.
+func TestCovariancesFromTheDefinition(t *testing.T) {
+	for _, code := range codes {
+		t.Run(code.family, func(t *testing.T) {
+			c := tinyRun(t, code.family, code.v, code.dark)
+			shape, err := ParseVoxels("9-11,14", "7-8")
+			require.NoError(t, err)
+			a, err := c.aperture(t.Context(), SpectrumOptions{Aperture: shape})
+			require.NoError(t, err)
+			a.plain()
+			channels := c.Grid.Count
+			sum, odd := make([]float64, channels), make([]float64, channels)
+			for l := range channels {
+				if a.weight[0][l] != 0 {
+					sum[l], odd[l] = 1, math.Sin(float64(l))
+				}
+			}
+			got, err := c.propagate(t.Context(), a, [][]float64{sum, odd})
+			require.NoError(t, err)
+			want := naive(t, c, a, scalesOf(t, c, a))
+			for l := range channels {
+				for lag := range min(Lags+1, channels-l) {
+					require.InDelta(t, want[l][l+lag], got.channels[l][lag], 2e-4*math.Sqrt(want[l][l]*want[l+lag][l+lag]), "channel %d lag %d", l, lag)
+				}
+			}
+			for i, s := range [][]float64{sum, odd} {
+				exact := 0.0
+				for l := range channels {
+					for m := range channels {
+						exact += s[l] * s[m] * want[l][m]
+					}
+				}
+				require.InEpsilon(t, exact, got.sums[i], 5e-4)
+			}
+		})
+	}
+}
+
+// The error of a single voxel is the root of its VARIANCE.
+func TestOneVoxelHasItsVariance(t *testing.T) {
+	for _, code := range codes {
+		t.Run(code.family, func(t *testing.T) {
+			c := tinyRun(t, code.family, code.v, code.dark)
+			shape, err := ParseVoxels("12", "7")
+			require.NoError(t, err)
+			s, err := c.Spectrum(t.Context(), SpectrumOptions{Aperture: shape})
+			require.NoError(t, err)
+			a, err := c.aperture(t.Context(), SpectrumOptions{Aperture: shape})
+			require.NoError(t, err)
+			a.plain()
+			scale := scalesOf(t, c, a)[0]
+			n := 0
+			for l := range s.Signal {
+				if !math.IsNaN(s.Signal[l]) {
+					n++
+					require.InEpsilon(t, s.Naive[l], s.Error[l], 1e-4)
+					// Nothing had to be scaled for that where the pixels' variance is exact.
+					tolerance := 1e-3
+					if code.family == "slit-scan" { // it depends on the light, which is interpolated
+						tolerance = 0.1
+					}
+					require.InDelta(t, 1, scale[l], tolerance)
+				}
+			}
+			require.Greater(t, n, 10)
+		})
+	}
+}
+
+// The result does not depend on how many blocks work at the same time, and a
+// cancelled context ends the work.
+func TestSpectrumIsCancelled(t *testing.T) {
+	c := tinyRun(t, "m-sequence", 31, 8)
+	ctx, cancel := context.WithCancel(t.Context())
+	cancel()
+	shape, err := ParseVoxels("12", "7")
+	require.NoError(t, err)
+	_, err = c.Spectrum(ctx, SpectrumOptions{Aperture: shape})
+	require.ErrorIs(t, err, context.Canceled)
+	_, err = Open(filepath.Join(t.TempDir(), "nothing"))
+	require.Error(t, err)
+}

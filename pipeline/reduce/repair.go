@@ -1,0 +1,127 @@
+package reduce
+
+import (
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/product"
+)
+
+// The noise may grow by restoration to troubledGrowth without a word, and to
+// hopelessGrowth at all.
+const (
+	troubledGrowth = 2.0
+	hopelessGrowth = 5.0
+)
+
+// repair is what the dark columns are used for in decoding; nil where the recipe or too
+// few of them forbid it.
+type repair struct {
+	restorer *hadamard.Restorer
+	// lost restores the code rows that have no frame; nil where it cannot be done. With
+	// all rows at hand it has none to restore.
+	lost *hadamard.LostRows
+	// most is how many struck samples of a pixel are restored.
+	most int
+	// share is, by code row, the variance of its part in the dark decodes in units of a
+	// sample's; 0 for lost rows.
+	share []float64
+	// pedestal: there are no frames of the light without any open mirror, so that the
+	// mean of the dark decodes stands for it.
+	pedestal bool
+	// meanRatio is the mean of lost.Ratio over the elements, and byElement the ratio of
+	// each to it; nil where they are all the same.
+	meanRatio float64
+	byElement []float32
+}
+
+// newRepair prepares for slots of these frames. lack, if the lost rows cannot be
+// restored, says why.
+func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedestal bool) (p *repair, lack error) {
+	if pedestal {
+		checks = checks.WithoutPedestal()
+	}
+	// Beyond a quarter, noise grows and singular sets are no longer rare.
+	p = &repair{restorer: checks.NewRestorer(), most: len(checks.Columns()) / 4, pedestal: pedestal, meanRatio: 1}
+	left, err := checks.WithoutRows(scale.lost)
+	if err != nil {
+		return nil, err
+	}
+	seen := left.Projector()
+	for i := range scale.quiet {
+		p.share = append(p.share, seen.At(i, i))
+	}
+	if p.lost, lack = p.restorer.Lost(scale.lost, scale.quiet); lack != nil || len(scale.lost) == 0 {
+		return p, lack
+	}
+	p.meanRatio = 0
+	for _, column := range elements {
+		p.meanRatio += p.lost.Ratio[column] / float64(len(elements))
+	}
+	for _, column := range elements {
+		p.byElement = append(p.byElement, float32(p.lost.Ratio[column]/p.meanRatio))
+	}
+	return p, nil
+}
+
+// restores tells whether lost rows are restored in every pixel.
+func (p *repair) restores() bool { return p != nil && p.lost != nil && len(p.lost.Rows) > 0 }
+
+// elementRatios are byElement, nil for nil.
+func (p *repair) elementRatios() []float32 {
+	if p == nil {
+		return nil
+	}
+	return p.byElement
+}
+
+// lostFlag is the flag of every voxel where code rows have no frame.
+func (d *decoder) lostFlag() int16 {
+	switch {
+	case len(d.scale.lost) == 0:
+		return 0
+	case d.repair.restores():
+		return product.FlagRestored
+	}
+	return product.FlagLost
+}
+
+// bears tells whether a pixel with so many struck samples is to be restored.
+func (p *repair) bears(struck int) bool { return p != nil && p.lost != nil && struck <= p.most }
+
+// darkShare is the expected sum of squared dark decodes over g times the variance.
+func (p *repair) darkShare() float64 {
+	if p == nil || p.lost == nil {
+		return 1
+	}
+	return p.lost.DarkShare
+}
+
+// settlePasses: each pass of settle leaves of what was missing the part that the
+// neighbour term is of the light, 7 % at most.
+const settlePasses = 3
+
+// settle restores a block of n pixels, decoded as raw, and leaves it freed of the
+// neighbour term. What is missing shows in dark decodes that are free of that term,
+// and is added before the term is taken out: add is given the one, [code column][pixel],
+// and adds to raw. free is memory of the size of raw.
+func (d *decoder) settle(raw, free, size, slope []float32, n int, add func(free []float32)) {
+	if d.neighbours == nil {
+		add(raw)
+		return
+	}
+	for range settlePasses {
+		copy(free, raw)
+		d.neighbours.pairs.Correct(free, size, slope, n, n)
+		add(free)
+	}
+	d.neighbours.pairs.Correct(raw, size, slope, n, n)
+}
+
+// restoreLost restores the lost rows of a block of n pixels.
+func (d *decoder) restoreLost(w *decodeWorker, n int) {
+	lost := d.repair.lost
+	missing := w.missing[:len(lost.Rows)*n]
+	d.settle(w.decoded[:d.slots*n], w.free, w.size, w.slope, n, func(free []float32) {
+		lost.Missing(missing, free, n, n)
+		hadamard.AddReadings(d.code.Code(), w.decoded, lost.Rows, missing, n, n)
+	})
+}
