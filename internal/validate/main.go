@@ -41,10 +41,12 @@ func checks() []check {
 		calibratedNight("infrared", "demo-infrared", "demo-infrared", 1644.0),
 		lampTerms(),
 		faintNight(),
+		cosmicRays(),
 		enclosedFlux(),
 		seeds(),
 		apertures(),
 		readNoiseGain(),
+		cosmicSingle(),
 		falseAlarms(),
 	}
 }

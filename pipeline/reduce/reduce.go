@@ -86,6 +86,7 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"pair", r.pair},
 		{"prepare", r.prepare},
 		{"calibrate", r.calibrate},
+		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
 		{"finish", r.finish},
 	} {
@@ -152,10 +153,13 @@ type reduction struct {
 	shape      shape // of the products, once strips has begun
 	element    *fitsutil.Cube
 
-	optics    optics
+	optics optics
+	// through is what was found of the throughput; nil if it was not asked for.
+	through   *throughput
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
+	samples   restoredSamples
 	badPixels int
 	stages    []product.Stage
 	// looked counts the bytes that calibrate reads: see traffic.go.
@@ -273,7 +277,8 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	var flags int16
-	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels, d.repair != nil && d.repair.pursuit != nil)
+	r.samples = w.samples
 	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
@@ -356,9 +361,10 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 		r.quality.WavelengthRMSPx = &a.RMSPx
 	}
 	r.quality.Lost = len(r.roles.missing)
+	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if len(r.roles.degraded) > 0 {
