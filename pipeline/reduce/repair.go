@@ -19,6 +19,10 @@ type repair struct {
 	// lost restores the code rows that have no frame; nil where it cannot be done. With
 	// all rows at hand it has none to restore.
 	lost *hadamard.LostRows
+	// left are the checks that lost rows leave.
+	left *hadamard.Checks
+	// pursuit finds samples that cosmic rays struck; nil where that is not asked for.
+	pursuit *pursuit
 	// most is how many struck samples of a pixel are restored.
 	most int
 	// share is, by code row, the variance of its part in the dark decodes in units of a
@@ -45,6 +49,7 @@ func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedest
 	if err != nil {
 		return nil, err
 	}
+	p.left = left
 	seen := left.Projector()
 	for i := range scale.quiet {
 		p.share = append(p.share, seen.At(i, i))
