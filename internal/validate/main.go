@@ -48,6 +48,7 @@ func checks() []check {
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),
+		audits(),
 	}
 }
 
