@@ -49,6 +49,7 @@ func checks() []check {
 		cosmicSingle(),
 		falseAlarms(),
 		audits(),
+		flips(),
 	}
 }
 
