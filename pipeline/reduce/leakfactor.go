@@ -70,14 +70,18 @@ func (l *leakSums) add(b *cycleBlock, s *sample) {
 }
 
 // leakFactor is a of all cycles together with its error; nil where the all-off frames
-// hold too little light to tell.
+// hold too little light to tell. An error of the throughputs makes one of a: the light of
+// the field, so much more than that of the leak, does not cancel then.
 func (d *darkFit) leakFactor(b *belief) *product.Measured {
 	var above, below, variance float64
+	byFrame := mat.NewVecDense(len(b.mean), nil) // what an error of 1+e makes of the sum
 	for i, c := range d.cycles {
 		l := d.sums[i].leak
 		for row, k := range c.frame {
 			if k >= 0 {
-				above += l.mark.AtVec(row) * (1 + b.mean[k]) * l.off[row]
+				part := l.mark.AtVec(row) * l.off[row]
+				byFrame.SetVec(k, part)
+				above += part * (1 + b.mean[k])
 			}
 		}
 		mark := mat.Sum(l.mark)
@@ -87,6 +91,7 @@ func (d *darkFit) leakFactor(b *belief) *product.Measured {
 	if below <= 0 {
 		return nil
 	}
+	variance += mat.Inner(byFrame, b.covariance, byFrame)
 	a, sigma := above/below, math.Sqrt(variance)/below
 	if !(sigma < priorLeak) {
 		return nil

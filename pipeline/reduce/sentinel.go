@@ -41,6 +41,7 @@ type sentinel struct {
 	variance      []float64
 	normal        *mat.SymDense
 	right         [][]float64 // [frame][parameter]
+	pixels        int         // of the window
 	widthSum      [3]float64  // sums of m, m y, m y^2 over the window
 	firstNM, span float64
 }
@@ -213,6 +214,7 @@ func (s *sentinel) add(ctx context.Context, chunk *sample) error {
 			}
 		}
 		y := float64(at.y) - s.r.optics.geometry.TraceShift(float64(at.x))
+		s.pixels++
 		s.widthSum[0] += q[0]
 		s.widthSum[1] += q[0] * y
 		s.widthSum[2] += q[0] * y * y
@@ -276,6 +278,7 @@ func (s *sentinel) solve(frames int) *sentinelResult {
 		return nil
 	}
 	const n = sentinelChunks + motions
+	s.takeGradientNoise(frames)
 	grey := mat.NewDense(1+motions, n, nil) // sums chunks up
 	for c := range sentinelChunks {
 		grey.Set(0, c, 1)
@@ -310,6 +313,28 @@ func (s *sentinel) solve(frames int) *sentinelResult {
 	}
 	s.solveChunks(out, frames)
 	return out
+}
+
+// takeGradientNoise takes from the normal equations what the noise of the mean image
+// makes of its gradients, which would look like structure that a motion moves: of
+// readings of unit variance m_x and m_y have 1/2 over the number of frames, m_yy/2 has
+// 6/4. Gradients that do not stand out of it tell nothing.
+func (s *sentinel) takeGradientNoise(frames int) {
+	for a, noise := range [motions]float64{0.5, 0.5, 1.5} {
+		at := sentinelChunks + a
+		noise *= float64(s.pixels) / float64(frames)
+		left := s.normal.At(at, at) - noise
+		if left < 0.2*noise {
+			left = 0
+			for b := range sentinelChunks + motions {
+				s.normal.SetSym(at, b, 0)
+			}
+			for k := range s.right {
+				s.right[k][at] = 0
+			}
+		}
+		s.normal.SetSym(at, at, left)
+	}
 }
 
 // solveChunks fits a flux a chunk.

@@ -175,9 +175,12 @@ func (r *reduction) fitDark(t *throughput) error {
 		if t.found, err = t.dark.fit(t.belief); err != nil {
 			return err
 		}
-		before := t.found.heldOut
-		before.Before, before.ExpectedBefore = alone.heldOut.Before, alone.heldOut.ExpectedBefore
-		t.addHeldOut("throughput by all methods", before, true)
+		all := t.found.heldOut
+		if !t.found.kept { // then the other methods' correction is left as it was
+			all.After, all.ExpectedAfter = all.Before, all.ExpectedBefore
+		}
+		all.Before, all.ExpectedBefore = alone.heldOut.Before, alone.heldOut.ExpectedBefore
+		t.addHeldOut("throughput by all methods", all, true)
 	}
 	t.addMethod(methodDark, alone.belief, t.found.kept)
 	if t.found.kept {
