@@ -24,9 +24,11 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
-	Warnings   []string    `json:"warnings"`
-	Stages     []Stage     `json:"stages"`
-	Exit       int         `json:"exit"`
+	// Audit is what the audit found of the pairing of frames; nil without one.
+	Audit    any      `json:"audit,omitempty"`
+	Warnings []string `json:"warnings"`
+	Stages   []Stage  `json:"stages"`
+	Exit     int      `json:"exit"`
 }
 
 // Input is a file that went in, with the lower-case hex SHA-256 of its bytes.

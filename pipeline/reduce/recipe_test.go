@@ -110,7 +110,7 @@ func TestNominalRecipe(t *testing.T) {
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Flat)
 	require.NotEqual(t, want.SHA, r.SHA)
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Throughput)
-	want.Arc.Use, want.Flat.Use, want.Throughput.Use = "off", "off", "off"
+	want.Arc.Use, want.Flat.Use, want.Throughput.Use, want.Repair.Use = "off", "off", "off", "off"
 	want.SHA, want.Name = r.SHA, r.Name
 	require.Equal(t, want, r)
 }
