@@ -50,6 +50,8 @@ func checks() []check {
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),
+		audits(),
+		flips(),
 	}
 }
 
