@@ -40,6 +40,8 @@ type page struct {
 	Ledger           ledgerView
 	Quality          []fact
 	Calibration      []fact
+	Throughput       template.HTML
+	ThroughputFacts  []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
