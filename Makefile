@@ -4,7 +4,7 @@
 GO ?= go
 STATICCHECK := honnef.co/go/tools/cmd/staticcheck@v0.8.2
 # Debian's packages that the cross-checks run.
-PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml fitsverify netpbm
+PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml python3-astroscrappy fitsverify netpbm
 COMMANDS := fitsverify pngtopnm
 
 .PHONY: all build demo test lint bench validate packages
@@ -41,7 +41,7 @@ bench: build packages
 # The cross-checks skip where neither the packages nor apt are there (and fail
 # under CI=true), so a machine without apt still runs everything else.
 packages:
-	@if /usr/bin/python3 -c 'import numpy, scipy, astropy, PIL, yaml' 2>/dev/null && which $(COMMANDS) >/dev/null; then :; \
+	@if /usr/bin/python3 -c 'import numpy, scipy, astropy, PIL, yaml, astroscrappy' 2>/dev/null && which $(COMMANDS) >/dev/null; then :; \
 	elif ! command -v apt-get >/dev/null; then echo "no apt-get: external cross-checks will be skipped"; \
 	elif [ "$$(id -u)" != 0 ]; then echo "external cross-checks need, once: sudo apt-get install $(PACKAGES)"; \
 	else apt-get update -q && DEBIAN_FRONTEND=noninteractive apt-get install -y -q --no-install-recommends $(PACKAGES); fi

@@ -69,11 +69,11 @@ func scatter(rms float64, v int) *mat.SymDense {
 }
 
 // TestTerms: 5 % scatter and a 30 % trend with, besides, a slope in wavelength of 4 % rms
-// or sky lines that vary by 10 % rms against the rest. Over 4 nights of 63 rows the term
+// or sky lines that vary by 10 % rms against the rest. Over 2 nights of 63 rows the term
 // that is there is kept, and its error and the throughput's are as predicted within 20 %;
 // the other term is not found.
 func TestTerms(t *testing.T) {
-	const v, pixels, nights = 63, 2000, 4
+	const v, pixels, nights = 63, 2000, 2
 	c := mustCode(t, MSequence, v)
 	t.Log("term     rms    error  predicted   c error  predicted  without term   chi2/noise before  after")
 	for which, x := range []struct {

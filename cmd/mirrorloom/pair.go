@@ -21,19 +21,21 @@ type pairOptions struct {
 	file     string
 	replace  bool
 	all      bool
+	audit    bool
 }
 
 func (o *pairOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.sequence, "sequence", "", "folder of the sequence, as plan wrote it")
 	f.StringVarP(&o.file, "output", "o", "", "write the ledger to this CSV file as well")
 	f.BoolVar(&o.replace, "replace", false, "replace the file if it holds something")
+	f.BoolVar(&o.audit, "audit", false, "find out from the frames' light which masks they show, and correct the pairing by it")
 	f.BoolVar(&o.all, "all", false, "list every frame, not only those with a fault")
 }
 
 func newPairCommand(a *app) *cobra.Command {
 	var o pairOptions
 	cmd := &cobra.Command{
-		Use:   "pair NIGHT --sequence SEQ [-o FILE.csv]",
+		Use:   "pair NIGHT --sequence SEQ [--audit] [-o FILE.csv]",
 		Short: "Pair the frames of a night with the steps of a sequence",
 		Args:  cobra.ExactArgs(1),
 		RunE:  func(cmd *cobra.Command, args []string) error { return runPair(cmd.Context(), a, args[0], o) },
@@ -54,7 +56,8 @@ func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
 		return err
 	}
 	draw := a.progress()
-	paired, err := pair.Run(ctx, seq, pair.Options{Night: night}, func(done, total int) { draw("pair", done, total) })
+	opts := pair.Options{Night: night, Audit: o.audit, AuditProgress: func(done, total int) { draw("audit", done, total) }}
+	paired, err := pair.Run(ctx, seq, opts, func(done, total int) { draw("pair", done, total) })
 	if err != nil {
 		return err
 	}
@@ -65,6 +68,12 @@ func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
 	}
 	answer := struct {
 		Ledger product.Ledger `json:"ledger"`
-	}{paired.Ledger}
-	return a.answer(answer, func(w io.Writer) error { return pair.Print(w, paired.Ledger, o.all) })
+		Audit  *pair.Audit    `json:"audit,omitempty"`
+	}{paired.Ledger, paired.Audit}
+	return a.answer(answer, func(w io.Writer) error {
+		if err := pair.Print(w, paired.Ledger, o.all); err != nil {
+			return err
+		}
+		return paired.Audit.Print(w)
+	})
 }

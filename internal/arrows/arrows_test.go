@@ -31,6 +31,7 @@ var rules = []rule{
 	{"pipeline/parallel", []string{"mirrorloom"}, "parallel knows nothing"},
 	{"pipeline/plan", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "plan is beside the others"},
 	{"pipeline/rehearse", []string{"mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "rehearse shares no code with the reduction"},
+	{"pipeline/audit", []string{"mirrorloom/pipeline/product", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "audit is below pair"},
 	{"pipeline/pair", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "pair is beside the others"},
 	{"pipeline/extract", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "extract reads cubes and is below report"},
 	{"pipeline/report", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "report is below reduce"},

@@ -7,6 +7,9 @@
 package outside
 
 import (
+	"context"
+	"errors"
+	"fmt"
 	"os"
 	"os/exec"
 	"path/filepath"
@@ -19,8 +22,11 @@ import (
 // python is Debian's interpreter: another one on the path may lack astropy.
 const python = "/usr/bin/python3"
 
+// modules are those that the scripts import.
+const modules = "numpy, scipy, astropy, PIL, yaml, astroscrappy"
+
 var pythonReady = sync.OnceValue(func() error {
-	return exec.Command(python, "-c", "import numpy, scipy, astropy, PIL, yaml").Run()
+	return exec.Command(python, "-c", "import "+modules).Run()
 })
 
 // Python runs testdata/crosscheck/script with Debian's Python and returns its
@@ -28,7 +34,7 @@ var pythonReady = sync.OnceValue(func() error {
 func Python(t testing.TB, script string, args ...string) string {
 	t.Helper()
 	if err := pythonReady(); err != nil {
-		missing(t, python+" with numpy, scipy, astropy, PIL and yaml (make test installs them)")
+		missing(t, python+" with "+modules+" (make test installs them)")
 	}
 	return run(t, python, append([]string{filepath.Join(Root(t), "testdata", "crosscheck", script)}, args...)...)
 }
@@ -44,27 +50,57 @@ func Program(t testing.TB, name string, args ...string) string {
 	return run(t, path, args...)
 }
 
+// Script is Python outside of a test. The error names ErrMissing where Python or one
+// of its modules is.
+func Script(ctx context.Context, script string, args ...string) (string, error) {
+	if err := pythonReady(); err != nil {
+		return "", fmt.Errorf("%s with %s: %w", python, modules, ErrMissing)
+	}
+	root, ok := root()
+	if !ok {
+		return "", errors.New("the program does not know where its source lies")
+	}
+	return output(ctx, python, append([]string{filepath.Join(root, "testdata", "crosscheck", script)}, args...)...)
+}
+
+// ErrMissing: `make packages` installs what is missing.
+var ErrMissing = errors.New("missing; `make packages` installs it")
+
 // Root is the top folder of the module.
 func Root(t testing.TB) string {
 	t.Helper()
-	_, file, _, ok := runtime.Caller(0)
+	root, ok := root()
 	if !ok {
 		t.Fatal("the test binary does not know where its source lies")
 	}
-	return filepath.Dir(filepath.Dir(filepath.Dir(file)))
+	return root
+}
+
+func root() (string, bool) {
+	_, file, _, ok := runtime.Caller(0)
+	return filepath.Dir(filepath.Dir(filepath.Dir(file))), ok
 }
 
 func run(t testing.TB, path string, args ...string) string {
 	t.Helper()
-	cmd := exec.Command(path, args...)
+	out, err := output(t.Context(), path, args...)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return out
+}
+
+// output is what a program prints; the error has all of it.
+func output(ctx context.Context, path string, args ...string) (string, error) {
+	cmd := exec.CommandContext(ctx, path, args...)
 	// One thread: the suite shares two cores among packages.
 	cmd.Env = append(os.Environ(), "OPENBLAS_NUM_THREADS=1", "PYTHONDONTWRITEBYTECODE=1")
 	var stdout, stderr strings.Builder
 	cmd.Stdout, cmd.Stderr = &stdout, &stderr
 	if err := cmd.Run(); err != nil {
-		t.Fatalf("%s %s: %v\n%s%s", path, strings.Join(args, " "), err, stdout.String(), stderr.String())
+		return "", fmt.Errorf("%s %s: %w\n%s%s", path, strings.Join(args, " "), err, stdout.String(), stderr.String())
 	}
-	return stdout.String()
+	return stdout.String(), nil
 }
 
 func missing(t testing.TB, what string) {

@@ -45,6 +45,7 @@ func checks() []check {
 		seeds(),
 		apertures(),
 		readNoiseGain(),
+		cosmicSingle(),
 		falseAlarms(),
 	}
 }

@@ -30,14 +30,19 @@
 // the first by name. The others are duplicates.
 //
 // Kinds that contradict the step, masks of no step and frames of another
-// instrument are extra. The audit by the dark columns, which confirms the pairing
-// and finds relabelled frames, comes between matching and writing the ledger.
+// instrument are extra.
+//
+// The audit by the dark columns (package audit), if it is asked for, comes between
+// matching and writing the ledger: frames that show another step's mask are given to
+// that step (verdict relabelled, matched by audit), frames that show no mask of their
+// own are of a wrong mask, and the notes say what they show and how sure that is.
 //
 // # Invariants
 //
 // Ledger[i] is the row of step i+1 for every step of the sequence; the frames
 // that hold no step follow with Step 0, by file name. The result depends on the
-// headers alone, not on the number of workers.
+// headers alone, or with the audit on the science frames too, not on the number of
+// workers.
 //
 // Cost: headers only, one file open a worker at a time. A gzip file has to be
 // unpacked whole into the scratch folder to find its headers, which takes about

@@ -18,6 +18,12 @@ type Options struct {
 	ScratchDir string
 	// Workers read headers at the same time; 0 for one a processor.
 	Workers int
+	// Audit has the dark columns judge which science frame shows which mask, from the
+	// frames themselves (package audit), and corrects the pairing by it. With AsLabelled
+	// it is said what is wrong, and nothing is corrected.
+	Audit, AsLabelled bool
+	// AuditProgress, which may be nil, is called as cycles are audited.
+	AuditProgress func(done, total int)
 }
 
 // Night is a paired night.
@@ -29,6 +35,8 @@ type Night struct {
 	Ledger product.Ledger
 	// Frames are those to be used, in the order of their steps.
 	Frames []Frame
+	// Audit is what the audit found; nil if none was asked for.
+	Audit *Audit
 }
 
 // Frame is a frame to be used. It holds nothing open.
@@ -98,5 +106,17 @@ func Run(ctx context.Context, seq *sequence.Sequence, opts Options, progress fun
 	if err := m.checkScience(); err != nil {
 		return nil, err
 	}
-	return m.night(), nil
+	if !opts.Audit {
+		return m.night(), nil
+	}
+	found, err := m.audit(ctx, opts)
+	if err != nil {
+		return nil, err
+	}
+	if err := m.checkScience(); err != nil {
+		return nil, err
+	}
+	n := m.night()
+	n.Audit = found
+	return n, nil
 }

@@ -32,6 +32,33 @@ func Print(w io.Writer, l product.Ledger, verbose bool) error {
 	return nil
 }
 
+// Print writes what the audit found, a line for each cycle and for each finding; nothing
+// without an audit.
+func (a *Audit) Print(w io.Writer) error {
+	if a == nil {
+		return nil
+	}
+	var b strings.Builder
+	b.WriteString("\n")
+	for _, c := range a.Cycles {
+		fmt.Fprintf(&b, "audit of cycle %d: dark columns %.3f times their noise in %d samples of %d detector rows", c.Cycle, c.Chi2, c.Samples, c.Rows)
+		if len(c.Findings) == 0 && c.Whole == "" && !c.AllInverted {
+			b.WriteString("; every frame shows the mask of its step")
+		}
+		if !c.Sure {
+			b.WriteString("; some exchanges of frames could not be told")
+		}
+		b.WriteString("\n")
+	}
+	for _, text := range a.Warnings() {
+		b.WriteString(text + "\n")
+	}
+	if _, err := io.WriteString(w, b.String()); err != nil {
+		return fmt.Errorf("print the audit: %w", err)
+	}
+	return nil
+}
+
 // summary is one line: "271 steps: 270 ok, 1 missing; besides: 2 duplicate".
 func summary(l product.Ledger) string {
 	var steps, others product.Ledger

@@ -21,9 +21,12 @@ type Run struct {
 	Quality  Quality        `json:"quality"`
 	// Calibration is what was measured of the instrument; nil if nothing was.
 	Calibration *Calibration `json:"calibration,omitempty"`
-	Warnings    []string     `json:"warnings"`
-	Stages      []Stage      `json:"stages"`
-	Exit        int          `json:"exit"`
+	// Throughput is what was found of the frames' throughput; nil if it was not asked
+	// for.
+	Throughput *Throughput `json:"throughput,omitempty"`
+	Warnings   []string    `json:"warnings"`
+	Stages     []Stage     `json:"stages"`
+	Exit       int         `json:"exit"`
 }
 
 // Input is a file that went in, with the lower-case hex SHA-256 of its bytes.

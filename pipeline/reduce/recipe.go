@@ -73,8 +73,8 @@ type GridRecipe struct {
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
 	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
-	r.Flat, r.Arc = auto, auto
-	r.Sky, r.Flux, r.Throughput, r.Repair = off, off, off, off
+	r.Flat, r.Arc, r.Throughput = auto, auto, auto
+	r.Sky, r.Flux, r.Repair = off, off, off
 	r.Detector.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto}
 }
@@ -124,10 +124,10 @@ func (r *Recipe) check(doc *config.Doc) error {
 		use string
 	}{
 		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
-		{"throughput", r.Throughput.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
+	c.OneOf("throughput.use", r.Throughput.Use, useAuto, useOff)
 	c.OneOf("repair.use", r.Repair.Use, useAuto, useOff)
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",

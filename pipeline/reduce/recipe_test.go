@@ -46,7 +46,7 @@ func TestRecipeRefusals(t *testing.T) {
 		{"\narc: {use: arcs.csv}", "r.yaml:2: arc.use"},
 		{"sky: {use: auto}", `sky.use: "auto" is not available in this version; use off`},
 		{"flux: {use: auto}", "flux.use"},
-		{"throughput: {use: auto}", "throughput.use"},
+		{"throughput: {use: maybe}", "throughput.use"},
 		{"repair: {use: yes}", "repair.use"},
 		{"detector: {use: maybe}", "detector.use"},
 		{"detector: {use: auto, clip_sigma: 1}", "detector.clip_sigma"},
@@ -100,7 +100,7 @@ func FuzzRecipe(f *testing.F) {
 }
 
 // The recipe "nominal" takes the profile's word for wavelengths, trace and response, and
-// nothing else.
+// the frames as steady.
 func TestNominalRecipe(t *testing.T) {
 	r, err := LoadRecipe("nominal")
 	require.NoError(t, err)
@@ -109,7 +109,8 @@ func TestNominalRecipe(t *testing.T) {
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Arc)
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Flat)
 	require.NotEqual(t, want.SHA, r.SHA)
-	want.Arc.Use, want.Flat.Use = "off", "off"
+	require.Equal(t, StageRecipe{Use: "auto"}, want.Throughput)
+	want.Arc.Use, want.Flat.Use, want.Throughput.Use = "off", "off", "off"
 	want.SHA, want.Name = r.SHA, r.Name
 	require.Equal(t, want, r)
 }

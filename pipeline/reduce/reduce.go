@@ -86,6 +86,7 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"pair", r.pair},
 		{"prepare", r.prepare},
 		{"calibrate", r.calibrate},
+		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
 		{"finish", r.finish},
 	} {
@@ -152,7 +153,9 @@ type reduction struct {
 	shape      shape // of the products, once strips has begun
 	element    *fitsutil.Cube
 
-	optics    optics
+	optics optics
+	// through is what was found of the throughput; nil if it was not asked for.
+	through   *throughput
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
@@ -356,9 +359,10 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 		r.quality.WavelengthRMSPx = &a.RMSPx
 	}
 	r.quality.Lost = len(r.roles.missing)
+	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if len(r.roles.degraded) > 0 {

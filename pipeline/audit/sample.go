@@ -1,0 +1,311 @@
+package audit
+
+import (
+	"context"
+	"math"
+	"math/bits"
+	"slices"
+
+	"mirrorloom/calib"
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/parallel"
+	"mirrorloom/pipeline/sequence"
+)
+
+// binned columns make one sample: a line's image is at least three wide, so that little
+// light is lost, and frames whose light is below the noise are told apart with a third
+// of the pixels.
+const binned = 3
+
+// sampler reads rows of frames.
+type sampler struct {
+	camera  *exposure.Camera
+	album   *exposure.Album
+	workers int
+	// pedestals are frames without light; their mean is taken off, so that throughput
+	// has no bias or dark current to act on.
+	pedestals *exposure.Album
+	rows      []int // candidates, in the order in which samples take them
+	used      int
+	gram      *hadamard.Gram
+	parts     []*hadamard.Gram // of every fourth row
+	level     []float64        // of each frame: sum of y/s
+}
+
+// candidateRows are the detector rows that coded mirror rows feed and sentinels do not
+// reach, in an order whose beginnings all spread evenly over the detector.
+func candidateRows(seq *sequence.Sequence) []int {
+	rows := codedRows(seq, traceReach)
+	if len(rows) == 0 {
+		rows = codedRows(seq, 0)
+	}
+	// Bits read backwards put the second row between the first and the last, and so on.
+	width := bits.Len(uint(max(len(rows)-1, 1)))
+	var order []int
+	for i := range 1 << width {
+		if at := int(bits.Reverse64(uint64(i)) >> (64 - width)); at < len(rows) {
+			order = append(order, rows[at])
+		}
+	}
+	return order
+}
+
+// traceReach is how far, in rows, the trace leads light away from its row.
+const traceReach = 8
+
+func codedRows(seq *sequence.Sequence, reach float64) []int {
+	p := seq.Profile
+	first, last := p.WRange()
+	reach += 0.5 + p.Spectrograph.LSFFWHMPx
+	mirror := func(y float64) int {
+		return int(math.Round(p.WCenter() + (y-p.Spectrograph.YCenterPx)/p.Spectrograph.WStepPx))
+	}
+	var rows []int
+	for y := range p.Detector.Rows {
+		w := mirror(float64(y))
+		low, high := mirror(float64(y)-reach), mirror(float64(y)+reach)
+		low, high = min(low, high), max(low, high)
+		ok := w >= first && w <= last
+		for _, r := range seq.Rows {
+			switch r.Use {
+			case sequence.UseSentinel:
+				ok = ok && (r.Last < low || r.First > high)
+			case sequence.UseClosed:
+				ok = ok && (r.Element >= 0 || w < r.First || w > r.Last)
+			}
+		}
+		if ok {
+			rows = append(rows, y)
+		}
+	}
+	return rows
+}
+
+// grow adds rows until so many are used, and returns false if there are no more.
+func (s *sampler) grow(ctx context.Context, rows int) (more bool, err error) {
+	rows = min(rows, len(s.rows))
+	frames := len(s.album.Frames)
+	if s.gram == nil {
+		s.gram, s.level = hadamard.NewGram(frames), make([]float64, frames)
+		for range parts {
+			s.parts = append(s.parts, hadamard.NewGram(frames))
+		}
+	}
+	scratch := make([]rowScratch, s.workers)
+	for s.used < rows {
+		// Rows are read side by side and added in order.
+		n := min(s.workers, rows-s.used)
+		sums := make([]*rowSum, n)
+		err := parallel.Do(ctx, s.workers, n, func(worker, i int) (err error) {
+			sums[i], err = s.row(s.rows[s.used+i], &scratch[worker])
+			return err
+		})
+		if err != nil {
+			return false, err
+		}
+		for i, sum := range sums {
+			s.gram.Merge(sum.gram)
+			s.parts[(s.used+i)%parts].Merge(sum.gram)
+			for m, x := range sum.level {
+				s.level[m] += x
+			}
+		}
+		s.used += n
+		if err := s.release(); err != nil {
+			return false, err
+		}
+	}
+	return s.used < len(s.rows), nil
+}
+
+// release gives descriptors back where they are scarce.
+func (s *sampler) release() error {
+	for _, a := range []*exposure.Album{s.album, s.pedestals} {
+		if a == nil {
+			continue
+		}
+		for _, f := range a.Frames {
+			if err := a.Done(f); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
+type rowScratch struct {
+	read      exposure.Scratch
+	row, dark []float32
+	flags     []calib.Flag
+	all       []float32 // [frame][column]
+	spoilt    []bool    // by column
+	series    []float32
+	y, s2     []float32 // [frame][sample]
+}
+
+type rowSum struct {
+	gram  *hadamard.Gram
+	level []float64
+}
+
+// row sums a detector row of all frames.
+func (s *sampler) row(y int, w *rowScratch) (*rowSum, error) {
+	columns, frames := s.camera.Columns, len(s.album.Frames)
+	if w.row == nil {
+		w.row, w.dark, w.flags = make([]float32, columns), make([]float32, columns), make([]calib.Flag, columns)
+		w.all, w.spoilt = make([]float32, frames*columns), make([]bool, columns)
+		w.series = make([]float32, frames)
+		w.y, w.s2 = make([]float32, frames*(columns/binned)), make([]float32, frames*(columns/binned))
+	}
+	clear(w.spoilt)
+	clear(w.dark)
+	read := func(f *exposure.Frame, dst []float32) error {
+		clear(w.flags)
+		_, err := s.camera.Read(dst, f.Image, y, y+1, &w.read, func(found []calib.Flag, x, row, width int) {
+			s.camera.Merge(w.flags, y, found, x, row, width)
+		})
+		for x, f := range w.flags {
+			w.spoilt[x] = w.spoilt[x] || f != 0
+		}
+		return err
+	}
+	if s.pedestals != nil {
+		for _, f := range s.pedestals.Frames {
+			if err := read(f, w.row); err != nil {
+				return nil, err
+			}
+			for x, v := range w.row {
+				w.dark[x] += v / float32(len(s.pedestals.Frames))
+			}
+		}
+	}
+	for m, f := range s.album.Frames {
+		if err := read(f, w.all[m*columns:(m+1)*columns]); err != nil {
+			return nil, err
+		}
+	}
+	s.strike(w, y)
+	return s.sum(w, y), nil
+}
+
+// A reading is a cosmic ray's if it lies so many times the quartiles' distance, and of
+// its noise, above the upper quartile of its series; a frame with more than a part of
+// its readings so high is not struck but shows more light than it should. Any light is
+// in half of the frames, so that it widens the quartiles; hits are rare.
+const (
+	strikeSpans  = 4
+	strikeSigmas = 6
+	strikePart   = 0.05
+	// beside is where a pixel's neighbours are that it is compared with, beyond a
+	// line's core: less their light, a star's continuum hides no hit.
+	beside = 2
+)
+
+// strike marks the pixels that a cosmic ray struck in some frame, by their readings
+// alone and by what they are above their neighbours'.
+func (s *sampler) strike(w *rowScratch, y int) {
+	columns, frames := s.camera.Columns, len(s.album.Frames)
+	quiet := s.camera.Variance[y]
+	alone, above := make([]float32, columns), make([]float32, columns)
+	ratio := make([]float32, columns)
+	for x := range columns {
+		for m := range frames {
+			w.series[m] = w.all[m*columns+x] - w.dark[x]
+		}
+		low, middle, high := quartiles(w.series)
+		noise := math.Sqrt(quiet[x] + max(0, float64(high)))
+		alone[x] = high + strikeSpans*(high-low) + float32(strikeSigmas*noise)
+		ratio[x], above[x] = 0, alone[x]
+		if x < beside || x >= columns-beside {
+			continue
+		}
+		for m := range frames {
+			w.series[m] = w.neighbours(m, x, columns)
+		}
+		if _, around, _ := quartiles(w.series); around > 0 && middle > 0 {
+			ratio[x] = min(middle/around, 2)
+		}
+		for m := range frames {
+			w.series[m] = w.all[m*columns+x] - w.dark[x] - ratio[x]*w.neighbours(m, x, columns)
+		}
+		low, _, top := quartiles(w.series)
+		above[x] = top + strikeSpans*(top-low) + float32(strikeSigmas*math.Sqrt2*noise)
+	}
+	for m := range frames {
+		row := w.all[m*columns : (m+1)*columns]
+		hit := func(x int) bool {
+			v := row[x] - w.dark[x]
+			return v > alone[x] || ratio[x] > 0 && v-ratio[x]*w.neighbours(m, x, columns) > above[x]
+		}
+		struck := 0
+		for x := range row {
+			if hit(x) {
+				struck++
+			}
+		}
+		if struck == 0 || float64(struck) > strikePart*float64(columns) {
+			continue
+		}
+		for x := range row {
+			w.spoilt[x] = w.spoilt[x] || hit(x)
+		}
+	}
+}
+
+// neighbours is the mean light beside a pixel.
+func (w *rowScratch) neighbours(m, x, columns int) float32 {
+	row := w.all[m*columns : (m+1)*columns]
+	return (row[x-beside] - w.dark[x-beside] + row[x+beside] - w.dark[x+beside]) / 2
+}
+
+// sum bins the row's good pixels and adds them up.
+func (s *sampler) sum(w *rowScratch, y int) *rowSum {
+	columns, frames := s.camera.Columns, len(s.album.Frames)
+	stride := columns / binned
+	quiet := s.camera.Variance[y]
+	photon := 1 + s.camera.PhotonExcess
+	n := 0
+	var floor float64
+	for x := 0; x+binned <= columns; x += binned {
+		good := true
+		dark := 0.0
+		for i := range binned {
+			good = good && !w.spoilt[x+i]
+			dark += quiet[x+i]
+		}
+		if !good {
+			continue
+		}
+		for m := range frames {
+			var sum float64
+			for i := range binned {
+				sum += float64(w.all[m*columns+x+i] - w.dark[x+i])
+			}
+			w.y[m*stride+n], w.s2[m*stride+n] = float32(sum), float32(dark+photon*sum)
+		}
+		if floor == 0 || dark < floor {
+			floor = dark
+		}
+		n++
+	}
+	out := &rowSum{gram: hadamard.NewGram(frames), level: make([]float64, frames)}
+	out.gram.Add(w.y, w.s2, n, stride, float32(floor))
+	for p := range n {
+		mean := 0.0
+		for m := range frames {
+			mean += float64(w.s2[m*stride+p]) / float64(frames)
+		}
+		scale := 1 / math.Sqrt(max(mean, floor))
+		for m := range frames {
+			out.level[m] += float64(w.y[m*stride+p]) * scale
+		}
+	}
+	return out
+}
+
+// quartiles reorders x.
+func quartiles(x []float32) (low, middle, high float32) {
+	slices.Sort(x)
+	return x[len(x)/4], x[len(x)/2], x[len(x)*3/4]
+}

@@ -1,0 +1,49 @@
+package product
+
+// Throughput is what was found of the science frames' throughput, offsets and leak, in
+// run.json.
+type Throughput struct {
+	// Verdict says in words what was measured, how well, and what to do where it was
+	// not.
+	Verdict string `json:"verdict"`
+	// Methods are those that measured, in the order in which they were combined.
+	Methods []ThroughputMethod `json:"methods,omitempty"`
+	// HeldOut is what each step of the correction gained.
+	HeldOut []HeldOutStep `json:"dark_chi2_heldout,omitempty"`
+	// Leak is the factor of the all-off frames' light; absent where it was not measured.
+	Leak *Measured `json:"leak_factor,omitempty"`
+	// Offset is the rms of the frames' own levels, electrons, and the error of one;
+	// absent where there is no unlit pixel.
+	Offset *Measured `json:"offset_rms_e,omitempty"`
+	// Image is what sentinel rows tell of the image's motion; absent without.
+	Image *ImageMotion `json:"image,omitempty"`
+}
+
+// ThroughputMethod is one way of measuring throughput.
+type ThroughputMethod struct {
+	Name string `json:"name"` // dark columns, sentinel rows, monitor
+	// RMS is that of c around 1, Error the rms of its standard errors, by this method.
+	RMS   float64 `json:"rms"`
+	Error float64 `json:"err"`
+	// Share is the part of the information that comes from this method.
+	Share float64 `json:"share"`
+	// Used tells whether it went into the correction.
+	Used bool `json:"used"`
+}
+
+// HeldOutStep is the chi-square of dark columns that a step's fit has not seen, before
+// and after it, over what noise gives: 1 if all is well.
+type HeldOutStep struct {
+	Step   string  `json:"step"`
+	Before float64 `json:"before"`
+	After  float64 `json:"after"`
+	Kept   bool    `json:"kept"`
+}
+
+// ImageMotion is the rms over the frames of the image's place and width on the
+// detector, with the error of a frame's.
+type ImageMotion struct {
+	XPx      Measured `json:"x_rms_px"`
+	YPx      Measured `json:"y_rms_px"`
+	FWHMPart Measured `json:"fwhm_rms"` // relative, of the width along the slit
+}

@@ -1,0 +1,226 @@
+package reduce
+
+import (
+	"context"
+	"fmt"
+	"math"
+
+	"go.uber.org/zap"
+
+	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/product"
+)
+
+// throughput is what a reduction finds out about its science frames before it decodes
+// them.
+type throughput struct {
+	frames []*exposure.Frame
+	times  []float64 // of their middles, -0.5 to 0.5
+	// belief is what is known of them after all methods.
+	belief *belief
+	// corrected: something was measured that went into the correction.
+	corrected bool
+	dark      *darkFit // nil without dark columns enough
+	found     *darkResult
+	report    product.Throughput
+}
+
+// measureThroughput is the stage that fills the correction.
+func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
+	r.correction = noCorrection(len(r.seq.Steps))
+	if r.opts.Recipe.Throughput.Use == useOff || r.roles.science == 0 {
+		return 0, nil
+	}
+	r.looked.Store(0)
+	frames := r.scienceFrames()
+	t := &throughput{frames: frames, times: r.times(frames)}
+	t.belief = newBelief(t.times)
+	r.through = t
+	var err error
+	if t.dark, err = r.newDarkFit(t.frames); err != nil {
+		return 0, err
+	}
+	if t.dark != nil {
+		s := r.codedSampler(r.correction.offset)
+		if err := s.each(ctx, func(chunk *sample) error { return t.dark.add(ctx, chunk) }); err != nil {
+			return 0, err
+		}
+		if err := r.fitDark(t); err != nil {
+			return 0, err
+		}
+	}
+	if t.corrected {
+		r.applyThroughput(t)
+	}
+	t.report.Verdict = r.throughputVerdict(t)
+	return r.looked.Load(), ctx.Err()
+}
+
+// fitMatrices is how many square matrices of the code's size a fit holds at most.
+const fitMatrices = 24
+
+// newDarkFit gives the fit by dark columns; nil if there are too few of them. The error
+// says how much memory it needs.
+func (r *reduction) newDarkFit(frames []*exposure.Frame) (*darkFit, error) {
+	dark := r.seq.DarkColumns()
+	code, err := r.code()
+	if err != nil || len(dark) == 0 {
+		return nil, err
+	}
+	checks, err := hadamard.NewChecks(code, dark)
+	if err != nil {
+		return nil, err
+	}
+	if !checks.Reliable() {
+		return nil, nil
+	}
+	v := int64(r.seq.V)
+	if need := fitMatrices*8*v*v + runtimeBytes; need > r.opts.MemoryBytes {
+		return nil, fmt.Errorf("--memory of %d MiB is too little to measure the throughput of %d code rows; give at least %d MiB, or say `throughput: {use: off}` in the recipe", r.opts.MemoryBytes>>20, v, need>>20+1)
+	}
+	d, err := newDarkFit(checks.WithoutPedestal(), r.cycles(frames), r.camera.PhotonExcess, r.opts.Workers)
+	if err != nil {
+		return nil, err
+	}
+	d.neighbour, err = r.sampleNeighbour(code)
+	return d, err
+}
+
+// fitDark measures the throughput by the dark columns.
+func (r *reduction) fitDark(t *throughput) error {
+	var err error
+	if t.found, err = t.dark.fit(t.belief); err != nil {
+		return err
+	}
+	h := t.found.heldOut
+	step := product.HeldOutStep{
+		Step: "throughput by dark columns", Before: h.Before / h.ExpectedBefore, After: h.After / h.ExpectedAfter, Kept: t.found.kept,
+	}
+	t.report.HeldOut = append(t.report.HeldOut, step)
+	r.log.Info(step.Step, zap.Float64("before", step.Before), zap.Float64("after", step.After), zap.Bool("kept", step.Kept),
+		zap.Float64("patterns", t.found.directions), zap.Int("pixels", t.found.pixels), zap.Int("struck", t.dark.struck))
+	t.addMethod(methodDark, t.found.belief, t.found.kept)
+	if t.found.kept {
+		t.belief, t.corrected = t.found.belief, true
+	}
+	return nil
+}
+
+// addMethod lists a method with what it measured.
+func (t *throughput) addMethod(name string, b *belief, used bool) {
+	own := b.clone()
+	own.normalise()
+	rms, err := scatter(own.c(), own.errors())
+	t.report.Methods = append(t.report.Methods, product.ThroughputMethod{Name: name, RMS: rms, Error: err, Used: used})
+}
+
+// scatter is the rms of c around 1 and that of its errors.
+func scatter(c, sigma []float64) (rms, err float64) {
+	for k := range c {
+		rms += (c[k] - 1) * (c[k] - 1)
+		err += sigma[k] * sigma[k]
+	}
+	n := float64(max(1, len(c)))
+	return math.Sqrt(rms / n), math.Sqrt(err / n)
+}
+
+// sampleNeighbour gives what takes the light of open neighbours out of readings,
+// [code row][pixel] of the given stride: it decodes, corrects as the strips are
+// corrected, and predicts the readings again. Rows without a frame are taken as the
+// mean of the others. It is nil where there is nothing to correct.
+func (r *reduction) sampleNeighbour(code *hadamard.Code) (func(y []float32, pixels []place, stride int, lost []int), error) {
+	d := r.newDecoder(code, r.roles.slots, nil)
+	term, err := r.optics.neighbourTerm(d)
+	if term == nil || err != nil {
+		return nil, err
+	}
+	return func(y []float32, pixels []place, stride int, lost []int) {
+		v := d.slots
+		samples, decoded := make([]float32, v*struckChunk), make([]float32, v*struckChunk)
+		size, slope := make([]float32, struckChunk), make([]float32, struckChunk)
+		for p0 := 0; p0 < len(pixels); p0 += struckChunk {
+			n := min(struckChunk, len(pixels)-p0)
+			copyBlock(samples, y[p0:], v, n, n, stride)
+			fillMean(samples, lost, v, n)
+			d.code.Decode(decoded, samples, n, n)
+			for p, at := range pixels[p0 : p0+n] {
+				size[p], slope[p] = term.at(at.x, at.y)
+			}
+			term.pairs.Correct(decoded, size, slope, n, n)
+			d.code.Predict(samples, decoded, n, n)
+			for _, k := range lost {
+				clear(samples[k*n : (k+1)*n])
+			}
+			copyBlock(y[p0:], samples, v, n, stride, n)
+		}
+	}, nil
+}
+
+// copyBlock copies rows of n samples between blocks of different strides.
+func copyBlock(dst, src []float32, rows, n, dstStride, srcStride int) {
+	for i := range rows {
+		copy(dst[i*dstStride:i*dstStride+n], src[i*srcStride:i*srcStride+n])
+	}
+}
+
+// fillMean puts the mean of the other rows into the lost ones.
+func fillMean(block []float32, lost []int, rows, n int) {
+	if len(lost) == 0 || len(lost) == rows {
+		return
+	}
+	for p := range n {
+		sum := float32(0)
+		for i := range rows {
+			sum += block[i*n+p] // lost rows hold 0
+		}
+		for _, k := range lost {
+			block[k*n+p] = sum / float32(rows-len(lost))
+		}
+	}
+}
+
+// applyThroughput puts what is believed into the correction and the ledger.
+func (r *reduction) applyThroughput(t *throughput) {
+	t.belief.normalise()
+	c, sigma := t.belief.c(), t.belief.errors()
+	for k, f := range t.frames {
+		r.correction.factor[f.Step] = 1 + t.belief.mean[k]
+		r.correction.variance[f.Step] = max(0, t.belief.covariance.At(k, k))
+		entry := &r.night.Ledger[f.Entry]
+		entry.Throughput, entry.ThroughputErr = c[k], sigma[k]
+	}
+}
+
+// quality fills in run.json's figures; nothing if there was no correction.
+func (t *throughput) quality(q *product.Quality) {
+	if t == nil || !t.corrected {
+		return
+	}
+	rms, err := scatter(t.belief.c(), t.belief.errors())
+	q.ThroughputRMS, q.ThroughputErr = &rms, &err
+}
+
+// section is run.json's; nil if throughput was not asked for.
+func (t *throughput) section() *product.Throughput {
+	if t == nil {
+		return nil
+	}
+	shares(t.report.Methods)
+	return &t.report
+}
+
+// shares divides the information, the inverse variance, among the methods in use.
+func shares(methods []product.ThroughputMethod) {
+	total := 0.0
+	for _, m := range methods {
+		if m.Used && m.Error > 0 {
+			total += 1 / (m.Error * m.Error)
+		}
+	}
+	for i, m := range methods {
+		if m.Used && m.Error > 0 {
+			methods[i].Share = 1 / (m.Error * m.Error) / total
+		}
+	}
+}

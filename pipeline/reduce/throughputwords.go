@@ -1,0 +1,63 @@
+package reduce
+
+import (
+	"fmt"
+	"math"
+)
+
+// The methods' names.
+const (
+	methodDark     = "dark columns"
+	methodSentinel = "sentinel rows"
+	methodMonitor  = "monitor"
+)
+
+// cures are what to do where a scene cannot measure throughput.
+const cures = "plan sentinel rows on a bright star or on bright sky, or give a monitor's table in the recipe (throughput: {use: FILE})"
+
+// throughputVerdict says what was measured, and warns where that is not enough.
+func (r *reduction) throughputVerdict(t *throughput) string {
+	dark := len(r.seq.DarkColumns())
+	switch {
+	case t.found == nil && t.corrected:
+		rms, err := scatter(t.belief.c(), t.belief.errors())
+		return fmt.Sprintf("the throughput varied by %s rms and was corrected with an error of %s a frame; the %d dark columns of the code are too few to check it", percent(rms), percent(err), dark)
+	case t.found == nil:
+		words := fmt.Sprintf("the throughput of the frames was not measured: %d dark columns are fewer than the %.0f that it takes; plan more of them, %s", dark, math.Ceil(2*math.Log2(float64(r.seq.V))), cures)
+		if dark > 0 {
+			r.warn("%s", words)
+		}
+		return words
+	case !t.corrected && !t.found.uneasy():
+		return fmt.Sprintf("the frames were left as they are: the dark columns show no drift of their throughput (chi-square %.3f where 1 is due)", t.before())
+	case !t.corrected:
+		words := fmt.Sprintf("the frames were left as they are: no correction of their throughput brought the dark columns that it had not seen nearer to zero (chi-square %.3f, with one fitted to the others %.3f)", t.before(), t.after())
+		if !t.measured() {
+			words += "; this scene could hardly measure it: " + cures
+		}
+		r.warn("%s", words)
+		return words
+	}
+	rms, err := scatter(t.belief.c(), t.belief.errors())
+	words := fmt.Sprintf("the throughput varied by %s rms and was corrected with an error of %s a frame: the chi-square of dark columns that the fit had not seen went from %.3f to %.3f", percent(rms), percent(err), t.before(), t.after())
+	if !t.measured() {
+		words = fmt.Sprintf("this scene cannot measure the throughput of every frame (%.0f of %d patterns): its error is %s a frame where the scatter is %s; %s", t.found.directions, len(t.frames)-len(t.dark.cycles), percent(err), percent(rms), cures)
+		r.warn("%s", words)
+	}
+	return words
+}
+
+// before and after are the held-out chi-square without any correction and with all.
+func (t *throughput) before() float64 { return t.report.HeldOut[0].Before }
+
+func (t *throughput) after() float64 { return t.report.HeldOut[len(t.report.HeldOut)-1].After }
+
+// measured tells whether every frame's throughput is known to half of the scatter that
+// was assumed, or better: beyond a level and a trend in time, which most scenes measure
+// however little they tell of single frames.
+func (t *throughput) measured() bool {
+	return t.belief.detrended(t.times) < priorScatter/2
+}
+
+// percent writes a part with two digits.
+func percent(part float64) string { return fmt.Sprintf("%.2g %%", 100*part) }
