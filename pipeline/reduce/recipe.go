@@ -73,8 +73,8 @@ type GridRecipe struct {
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
 	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
-	r.Flat, r.Arc, r.Throughput = auto, auto, auto
-	r.Sky, r.Flux, r.Repair = off, off, off
+	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
+	r.Sky, r.Flux = off, off
 	r.Detector.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto}
 }
