@@ -143,6 +143,9 @@ func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int) (restored 
 		d.neighbours.pairs.Correct(w.decoded, w.size, w.slope, n, n)
 	}
 	if d.repair != nil {
+		if d.repair.weights != nil {
+			d.repair.weights.Apply(w.decoded, n, n)
+		}
 		restored += d.restoreHits(w, s, at, n, x0, y)
 	}
 	return restored

@@ -38,7 +38,7 @@ func (d *decoder) scaleErrors(row *decodedRow) {
 	if !d.scales() {
 		return
 	}
-	dof := d.repair.darkShare() * float64(len(d.darkColumns))
+	dof := d.repair.lost.DarkShare * float64(len(d.darkColumns))
 	const reach = scaleWidth / 2
 	for x := range row.measured {
 		// Sums anew for each column: a running sum would keep the rounding of a bright
