@@ -155,6 +155,30 @@ func TestRobustLevel(t *testing.T) {
 	require.InDelta(t, 0.166101, square/samples, 0.166101*5*math.Sqrt(2.0/samples))
 }
 
+// The variance of the median of N normal values is pi/2 times that of their mean, N
+// large (Kendall & Stuart, The Advanced Theory of Statistics, vol. 1, chapter 14, from
+// memory). For N = 301 it is 0.3 % less.
+func TestMedianVariance(t *testing.T) {
+	const values, samples = 301, 20000
+	rng := rand.New(rand.NewPCG(17, 3))
+	v, scratch := make([]float32, values), make([]float32, values)
+	var ofMedian, ofMean float64
+	for range samples {
+		sum := 0.0
+		for i := range v {
+			v[i] = float32(rng.NormFloat64())
+			sum += float64(v[i]) / values
+		}
+		level, _ := RobustLevel(v, scratch)
+		ofMedian += level * level / samples
+		ofMean += sum * sum / samples
+	}
+	const five = 5 * 0.01 // standard error of either variance: sqrt(2/samples)
+	t.Logf("variance of the median over 1/N: %.4f (pi/2 = %.4f), of the mean %.4f", ofMedian*values, math.Pi/2, ofMean*values)
+	require.InEpsilon(t, 1, ofMean*values, five)
+	require.InEpsilon(t, math.Pi/2, ofMedian*values, five)
+}
+
 // A master bias of 20 frames: cosmic rays leave no trace, the variance is sigma^2/20.
 func TestClipStack(t *testing.T) {
 	const frames, pixels = 20, 4000

@@ -15,10 +15,9 @@ var ErrNoLight = errors.New("too little light")
 // ColourRule says what a ColourFit fits. With l = L - L_c in nm, f_j the light of
 // element j, L_j(x,y) its wavelength at a pixel and c_j Weights,
 //
-//	T(x,y) = sum_j c_j f_j(x,y) (p_0 + p_1 l + ... + p_Degree l^Degree) + pedestal - curve Q,  l = L_j(x,y) - L_c.
+//	T(x,y) = sum_j c_j f_j(x,y) (p_0 + p_1 l + ... + p_Degree l^Degree) - curve Q,  l = L_j(x,y) - L_c.
 type ColourRule struct {
-	Degree   int
-	Pedestal bool // a constant is fitted as well: needs rows without light
+	Degree int
 	// Curve fits as well what is left of the detector's non-linearity. A charge e that
 	// is read as e (1 - curve e) leaves in all-on - all-even - all-odd minus the curve
 	// times Q = on^2 - even^2 - odd^2 = 2 even odd: 0.4 % at saturation looks like
@@ -27,10 +26,6 @@ type ColourRule struct {
 	Curve bool
 	// Weights of the elements; nil for all 1.
 	Weights []float64
-	// Before and After are the widths, in elements, of mirrors outside the coded
-	// field that send light as well, below element 0 and above the last. Theirs is
-	// taken to be the end element's, shifted along x.
-	Before, After float64
 	// Clip, in sigmas, leaves pixels out that deviate from the robust level of their
 	// row: cosmic rays.
 	Clip float64
@@ -52,15 +47,6 @@ func NeighbourRule(elements int) ColourRule {
 	return ColourRule{Degree: 1, Curve: true, Weights: weights, Clip: 6}
 }
 
-// LeakRule is that of the leak e(L) = 1/contrast, p_0 + p_1 l + p_2 l^2: T is an
-// all-off frame of the lamp with bias and dark taken off, and its pedestal is fitted
-// too. Mirrors outside the coded field leak as well, before elements' widths below it
-// and after above; rows outside the slit, and light that never met the device, are
-// not in the model.
-func LeakRule(before, after float64) ColourRule {
-	return ColourRule{Degree: 2, Pedestal: true, Before: before, After: after, Clip: 6}
-}
-
 // ColourFit gathers normal equations row by row. The sums of a row can be gathered
 // apart and merged: give each row its own and Merge them in order, and the result
 // does not depend on who did which.
@@ -79,15 +65,14 @@ type ColourFit struct {
 	light         float64
 }
 
-// maxTerms: a cubic, a pedestal and a curve.
-const maxTerms = 6
+// maxTerms: a cubic and a curve.
+const maxTerms = 5
 
 // ColourTerm is the result of a ColourFit: d(L) or e(L) with its errors.
 type ColourTerm struct {
 	CenterNM   float64
 	Coef       []float64     // p_0 .. p_Degree, per nm^k
 	Covariance *mat.SymDense // of Coef
-	Pedestal   float64       // 0 where none was fitted
 	// Curve is the part of a charge lost per electron of it, 0 where it was not fitted.
 	Curve, CurveError float64
 	// Chi2 per degree of freedom; errors are widened by its root where it is above 1.
@@ -113,14 +98,15 @@ func (c *ColourTerm) Significance(vacuumNm float64) float64 {
 	return value / err
 }
 
-// Contrast is 1/e at a wavelength with its standard error; +Inf, +Inf where e is
-// not positive.
+// Contrast is the light of open mirrors over that of closed ones at a wavelength, with
+// its standard error; +Inf, +Inf where e is not positive. Decoded light, to which e
+// refers, is what opening adds: open less closed.
 func (c *ColourTerm) Contrast(vacuumNm float64) (ratio, err float64) {
 	e, sigma := c.At(vacuumNm)
 	if !(e > 0) {
 		return math.Inf(1), math.Inf(1)
 	}
-	return 1 / e, sigma / (e * e)
+	return 1 + 1/e, sigma / (e * e)
 }
 
 // NewColourFit begins a fit; g must have been checked.
@@ -128,8 +114,8 @@ func NewColourFit(rule ColourRule, g Geometry, elements, columns int) (*ColourFi
 	switch {
 	case elements < 1 || columns < 1:
 		return nil, fmt.Errorf("colour fit: %d elements on %d columns", elements, columns)
-	case rule.Degree < 0 || rule.Degree > maxTerms-3:
-		return nil, fmt.Errorf("colour fit: degree %d; use 0 to %d", rule.Degree, maxTerms-3)
+	case rule.Degree < 0 || rule.Degree > maxTerms-2:
+		return nil, fmt.Errorf("colour fit: degree %d; use 0 to %d", rule.Degree, maxTerms-2)
 	case rule.Weights != nil && len(rule.Weights) != elements:
 		return nil, fmt.Errorf("colour fit: %d weights for %d elements", len(rule.Weights), elements)
 	}
@@ -155,12 +141,4 @@ func (f *ColourFit) Merge(other *ColourFit) {
 // Fork is an empty fit that shares rule and tables, for another worker or row.
 func (f *ColourFit) Fork() *ColourFit {
 	return &ColourFit{rule: f.rule, geometry: f.geometry, elements: f.elements, columns: f.columns, table: f.table}
-}
-
-// ForkBeyond is a Fork with mirrors beyond the field of other widths: those of a row
-// where the device ends elsewhere.
-func (f *ColourFit) ForkBeyond(before, after float64) *ColourFit {
-	row := f.Fork()
-	row.rule.Before, row.rule.After = before, after
-	return row
 }

@@ -19,15 +19,16 @@ const curveScaleE = 1e5
 
 // AddRow adds detector row y: the term T with its variance, flags (pixels with any
 // are left out; nil for none), and light[j], the light of element j in that row, of
-// the same exposure time as T: the decoded coded flat. A row without light fixes the
-// pedestal, if there is one, and else nothing.
+// the same exposure time as T: the decoded coded flat. A row without light fixes
+// nothing.
 //
 // Weights are 1/variance averaged over the pixels around: a variance taken from T
 // itself is small where noise made T small, and would draw the fit down (0.4 e of 3 e
 // rms in a dark frame).
 func (f *ColourFit) AddRow(y int, term, variance []float32, flags []Flag, light [][]float32) {
 	r := f.regressors(y, light)
-	use := f.usable(term, variance, flags, r[0])
+	use, clipped := usablePixels(f.rule.Clip, term, variance, flags, r[0])
+	f.clips += clipped
 	weights := smoothWeights(variance, use)
 	terms := f.terms()
 	for x, ok := range use {
@@ -69,12 +70,9 @@ func smoothWeights(variance []float32, use []bool) []float64 {
 	return weights
 }
 
-// terms is the number of unknowns: the colour's, the pedestal, the curve.
+// terms is the number of unknowns: the colour's and the curve.
 func (f *ColourFit) terms() int {
 	n := f.rule.Degree + 1
-	if f.rule.Pedestal {
-		n++
-	}
 	if f.rule.Curve {
 		n++
 	}
@@ -87,11 +85,6 @@ func (f *ColourFit) regressors(y int, light [][]float32) [][]float64 {
 	for a := range r {
 		r[a] = make([]float64, f.columns)
 	}
-	if f.rule.Pedestal {
-		for x := range r[f.rule.Degree+1] {
-			r[f.rule.Degree+1][x] = 1
-		}
-	}
 	for j := range f.elements {
 		weight := 1.0
 		if f.rule.Weights != nil {
@@ -99,8 +92,6 @@ func (f *ColourFit) regressors(y int, light [][]float32) [][]float64 {
 		}
 		f.addElement(r, y, float64(j), weight, light[j])
 	}
-	f.addBeyond(r, y, light, f.rule.Before, -1)
-	f.addBeyond(r, y, light, f.rule.After, +1)
 	if f.rule.Curve {
 		addCurve(r[f.terms()-1], light)
 	}
@@ -137,29 +128,6 @@ func (f *ColourFit) addElement(r [][]float64, y int, j, weight float64, light []
 	}
 }
 
-// addBeyond adds mirrors outside the field, width elements wide, below (side -1) or
-// above it: the mean of the elements at that end, each shifted to their place.
-func (f *ColourFit) addBeyond(r [][]float64, y int, light [][]float32, width float64, side int) {
-	n := min(endElements, f.elements)
-	beyond := make([]float32, f.columns)
-	for i := 1; width > 0; i++ {
-		clear(beyond)
-		for m := range n {
-			from := m
-			if side > 0 {
-				from = f.elements - 1 - m
-			}
-			addShifted(beyond, light[from], -float64(side)*float64(i+m)*f.geometry.X_e, 1/float64(n))
-		}
-		place := -float64(i)
-		if side > 0 {
-			place = float64(f.elements - 1 + i)
-		}
-		f.addElement(r, y, place, min(1, width), beyond)
-		width--
-	}
-}
-
 // addShifted adds weight src(x + shift) to dst, linearly interpolated.
 func addShifted(dst, src []float32, shift, weight float64) {
 	whole := math.Floor(shift)
@@ -173,17 +141,18 @@ func addShifted(dst, src []float32, shift, weight float64) {
 	}
 }
 
-// usable tells which pixels of a row take part: those without flags whose deviation
-// from the row's own level, T = D times the light, is within Clip sigmas.
-func (f *ColourFit) usable(term, variance []float32, flags []Flag, light []float64) []bool {
-	use := make([]bool, f.columns)
+// usablePixels tells which pixels of a row take part, and how many are left out as
+// deviant: those without flags whose deviation from the row's own level, T = D times
+// the light, is within clip sigmas (no limit where clip is 0).
+func usablePixels(clip float64, term, variance []float32, flags []Flag, light []float64) (use []bool, clipped int) {
+	use = make([]bool, len(term))
 	for x := range use {
 		use[x] = (flags == nil || flags[x] == 0) && variance[x] > 0 && term[x] == term[x]
 	}
-	if f.rule.Clip <= 0 {
-		return use
+	if clip <= 0 {
+		return use, 0
 	}
-	miss, scratch := make([]float32, f.columns), make([]float32, f.columns)
+	miss, scratch := make([]float32, len(term)), make([]float32, len(term))
 	for range 3 {
 		var top, bottom float64
 		for x, ok := range use {
@@ -204,14 +173,14 @@ func (f *ColourFit) usable(term, variance []float32, flags []Flag, light []float
 		}
 		level, scatter := RobustLevel(miss, scratch)
 		for x, ok := range use {
-			limit := f.rule.Clip * max(scatter, math.Sqrt(float64(variance[x])))
+			limit := clip * max(scatter, math.Sqrt(float64(variance[x])))
 			if ok && !(math.Abs(float64(miss[x])-level) <= limit) {
 				use[x] = false
-				f.clips++
+				clipped++
 			}
 		}
 	}
-	return use
+	return use, clipped
 }
 
 // Solve gives the term; an error wrapping ErrNoLight where the rows do not fix it.
@@ -257,9 +226,6 @@ func (f *ColourFit) term(solution *mat.VecDense, inverse *mat.SymDense) *ColourT
 		for b := a; b < powers; b++ {
 			out.Covariance.SetSym(a, b, inverse.At(a, b)*widen*scale*math.Pow(colourScaleNM, -float64(b)))
 		}
-	}
-	if f.rule.Pedestal {
-		out.Pedestal = solution.AtVec(powers)
 	}
 	if f.rule.Curve {
 		out.Curve = solution.AtVec(n-1) / curveScaleE

@@ -6,7 +6,6 @@ import (
 	"testing"
 
 	"github.com/stretchr/testify/require"
-	"gonum.org/v1/gonum/mat"
 )
 
 // lampField is the light of a lamp through each element, on the detector: a band of
@@ -110,55 +109,6 @@ func TestNeighbourFit(t *testing.T) {
 	require.Greater(t, d.Significance(580), 20.0)
 	require.InDelta(t, 1, d.Chi2, 0.1)
 	require.InDelta(t, 0.01*float64(f.rows*f.columns)/2, d.Clipped, 60)
-}
-
-// The leak of closed mirrors, those outside the field included: contrast with its
-// error at several wavelengths, from one all-off lamp frame with a bias that is wrong
-// by 0.4 e.
-func TestLeakFit(t *testing.T) {
-	f := newLampField()
-	leak := func(nm float64) float64 { return 1/3700.0 + 6e-7*(nm-580) + 2e-9*(nm-580)*(nm-580) }
-	const before, after = 8, 8.5
-	rng := rand.New(rand.NewPCG(2, 9))
-	fit, err := NewColourFit(LeakRule(before, after), f.geometry, f.elements, f.columns)
-	require.NoError(t, err)
-	for y := range f.rows {
-		term, variance := make([]float32, f.columns), make([]float32, f.columns)
-		for x := range term {
-			sum := 0.0
-			for j := -9; j < f.elements+9; j++ {
-				v, nm := f.light(float64(j), x, y)
-				if v == 0 {
-					continue
-				}
-				share := 1.0
-				if j == -9 {
-					share = 0
-				}
-				if j == f.elements+8 {
-					share = 0.5
-				}
-				sum += share * v * leak(nm)
-			}
-			// Ten all-off frames' mean.
-			term[x] = float32(sum + 0.4 + math.Sqrt((sum+9)/10)*rng.NormFloat64())
-			// As the reduction has it, from the noisy value itself.
-			variance[x] = (max(term[x], 0) + 9) / 10
-		}
-		fit.AddRow(y, term, variance, nil, f.row(y, 37, rng))
-	}
-	e, err := fit.Solve()
-	require.NoError(t, err)
-	require.InDelta(t, 0.4, e.Pedestal, 0.05)
-	for _, nm := range []float64{500, 540, 580, 620, 660} {
-		ratio, sigma := e.Contrast(nm)
-		t.Logf("%g nm: contrast %.0f +- %.0f, truth %.0f", nm, ratio, sigma, 1/leak(nm))
-		require.InDelta(t, 1/leak(nm), ratio, 5*sigma+0.01*ratio)
-		require.InEpsilon(t, 1/leak(nm), ratio, 0.03)
-	}
-	dark := ColourTerm{CenterNM: 580, Coef: []float64{0}, Covariance: mat.NewSymDense(1, []float64{1})}
-	ratio, sigma := dark.Contrast(580)
-	require.True(t, math.IsInf(ratio, 1) && math.IsInf(sigma, 1))
 }
 
 // The stated errors against the scatter of N = 100 fits.

@@ -6,11 +6,12 @@ type Flag = int16
 
 // The bits that this package sets or reads; their numbers are the cube's contract.
 const (
-	NoData    Flag = 1  // no light could be measured here
-	Saturated Flag = 2  // a raw value at or above the saturation level
-	BadPixel  Flag = 4  // a hot, dead or struck pixel
-	LowFlat   Flag = 8  // too little lamp light to divide by
-	Partial   Flag = 32 // less than 99 % of the voxel lies on the detector
+	NoData    Flag = 1   // no light could be measured here
+	Saturated Flag = 2   // a raw value at or above the saturation level
+	BadPixel  Flag = 4   // a hot, dead or struck pixel
+	LowFlat   Flag = 8   // too little lamp light to divide by
+	Partial   Flag = 32  // less than 99 % of the voxel lies on the detector
+	SkyLine   Flag = 512 // a line of the sky dominates
 )
 
 // reachLimit: a flagged pixel voids the voxels that it reaches with a weight of

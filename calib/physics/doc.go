@@ -21,4 +21,5 @@ const (
 	lightSpeed_km_s  = LightSpeed_m_s / 1000
 	wattsPerJansky   = 1e-26 // W m-2 Hz-1
 	degreesPerRadian = 57.29577951308232
+	arcsecPerRadian  = 3600 * degreesPerRadian
 )

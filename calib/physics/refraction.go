@@ -56,7 +56,6 @@ func (a Atmosphere) DifferentialRefraction(vacuumNm, referenceNm, apparentZenith
 	if !(apparentZenithDeg >= 0 && apparentZenithDeg < 90) {
 		return math.NaN()
 	}
-	const arcsecPerRadian = 3600 * degreesPerRadian
 	tan := math.Tan(apparentZenithDeg / degreesPerRadian)
 	return arcsecPerRadian * (a.Refractivity(vacuumNm) - a.Refractivity(referenceNm)) * tan
 }

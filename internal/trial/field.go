@@ -61,6 +61,27 @@ func Square() (*Field, error) {
 	return f, nil
 }
 
+// Struckable is the small square field with elements of one mirror and a code of v with
+// so many dark columns, on a detector wide enough, the noise of a raw sample near 10 e.
+func Struckable(v, dark int) (*Field, error) {
+	f, err := Square()
+	if err != nil {
+		return nil, err
+	}
+	f.Target.Code.ElementMirrors = 1
+	f.SetCode("m-sequence", v, dark)
+	p := f.Profile
+	p.DMD.Columns = v
+	columns := 2 * ((v + 110) / 2)
+	TwoAmplifiers(&p.Detector, columns, 48)
+	p.Spectrograph.XCenterPx = float64(columns)/2 - 0.3
+	for i := range p.Detector.Amplifiers {
+		p.Detector.Amplifiers[i].ReadNoiseE = 8
+	}
+	f.scenery()
+	return f, nil
+}
+
 // Diagonal is a small field of the embedded profile "infrared": the device
 // turned by 45 degrees, one amplifier without overscan, parity -1.
 func Diagonal() (*Field, error) {

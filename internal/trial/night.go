@@ -2,6 +2,7 @@ package trial
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"os"
 	"path/filepath"
@@ -65,6 +66,11 @@ func (n *Night) Rehearse(ctx context.Context, name string, opts rehearse.Options
 	}
 	_, err := rehearse.Run(ctx, n.Seq, n.Field.Scene, opts, n.Frames(name), nil)
 	return err
+}
+
+// Discard removes the frames and products of the night named name, if there are any.
+func (n *Night) Discard(name string) error {
+	return errors.Join(os.RemoveAll(n.Frames(name)), os.RemoveAll(n.Run(name)))
 }
 
 // Reduce reduces the night named name with the recipe of opts or, without one,

@@ -119,6 +119,36 @@ func (p *Pulls) Findings(name string) []Finding { return p.judge(name, clean) }
 // CalibratedFindings are those of an imperfect instrument: within 0.03 and 0.05.
 func (p *Pulls) CalibratedFindings(name string) []Finding { return p.judge(name, calibrated) }
 
+// FaultyFindings judge the mean and the scatter of all pulls of a night with faults that
+// were repaired, and the scatter in each decile of the counts: within 0.05.
+func (p *Pulls) FaultyFindings(name string) []Finding {
+	return p.judge(name, pullFigure{mean: 0.05, std: 0.05})
+}
+
+// Kurtosis is the fourth moment of pulls over the square of the second: 3 for a normal
+// law.
+type Kurtosis struct {
+	N              int
+	square, fourth float64
+}
+
+// Add takes the pulls of a cube's good voxels.
+func (k *Kurtosis) Add(c *Cube, truth []float32) {
+	for i, t := range truth {
+		if !c.Good(i) || t != t {
+			continue
+		}
+		d := float64(c.Signal[i] - t)
+		square := d * d / float64(c.Variance[i])
+		k.N++
+		k.square += square
+		k.fourth += square * square
+	}
+}
+
+// Value is the kurtosis.
+func (k *Kurtosis) Value() float64 { return k.fourth / k.square * float64(k.N) / k.square }
+
 func (p *Pulls) judge(name string, figure pullFigure) []Finding {
 	list := figure.judge(name+", all good voxels", &p.All)
 	for i := range p.ByCounts {

@@ -41,6 +41,7 @@ func checks() []check {
 		calibratedNight("infrared", "demo-infrared", "demo-infrared", 1644.0),
 		lampTerms(),
 		faintNight(),
+		cosmicRays(),
 		enclosedFlux(),
 		seeds(),
 		apertures(),

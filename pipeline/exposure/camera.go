@@ -3,6 +3,7 @@ package exposure
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
@@ -55,13 +56,52 @@ func NewCamera(d *instrument.Detector) (*Camera, error) {
 			}
 			amp.levels = calib.DefaultOverscan(amp.overscan.Width())
 			// The level's own noise: read noise over the pixels it averages.
-			averaged := min(amp.overscan.Height(), 2*amp.levels.HalfWindow+1) * amp.overscan.Width()
-			amp.variance *= 1 + 1/float64(averaged)
+			amp.variance *= 1 + 1/float64(amp.averaged())
 		}
 		c.Amplifiers = append(c.Amplifiers, amp)
 	}
 	c.Variance = c.variances()
 	return c, nil
+}
+
+// averaged is how many overscan pixels a level is the mean of, 0 without overscan.
+func (a *Amplifier) averaged() int {
+	if !a.hasOverscan {
+		return 0
+	}
+	return min(a.overscan.Height(), 2*a.levels.HalfWindow+1) * a.overscan.Width()
+}
+
+// LevelVariance is that of a row's bias level, electrons squared, and how many rows
+// share overscan pixels; 0 and 1 without overscan.
+func (a *Amplifier) LevelVariance() (variance float64, rows int) {
+	n := a.averaged()
+	if n == 0 {
+		return 0, 1
+	}
+	return a.variance / float64(n+1), 2*a.levels.HalfWindow + 1
+}
+
+// AmplifierOf gives the amplifier of each column, by detector row; rows of the same
+// amplifiers share it.
+func (c *Camera) AmplifierOf() [][]uint8 {
+	all := make([][]uint8, c.Rows)
+	for y := range all {
+		row := make([]uint8, c.Columns)
+		for i := range c.Amplifiers {
+			p := &c.Amplifiers[i].Place
+			if y >= p.Y0 && y < p.Y0+p.Raw.Height() {
+				for x := p.X0; x < p.X0+p.Raw.Width(); x++ {
+					row[x] = uint8(i)
+				}
+			}
+		}
+		if y > 0 && slices.Equal(row, all[y-1]) {
+			row = all[y-1]
+		}
+		all[y] = row
+	}
+	return all
 }
 
 // NoisiestVariance is the largest variance of a sample without light among the

@@ -24,9 +24,11 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
-	Warnings   []string    `json:"warnings"`
-	Stages     []Stage     `json:"stages"`
-	Exit       int         `json:"exit"`
+	// Audit is what the audit found of the pairing of frames; nil without one.
+	Audit    any      `json:"audit,omitempty"`
+	Warnings []string `json:"warnings"`
+	Stages   []Stage  `json:"stages"`
+	Exit     int      `json:"exit"`
 }
 
 // Input is a file that went in, with the lower-case hex SHA-256 of its bytes.
@@ -49,7 +51,10 @@ type Quality struct {
 	DarkChi2Heldout *float64 `json:"dark_chi2_heldout"`
 	ThroughputRMS   *float64 `json:"throughput_rms"`
 	ThroughputErr   *float64 `json:"throughput_err"`
+	// Hits counts the samples that cosmic rays struck and that were restored,
+	// DoubtfulPixels the pixels voided because it cannot be told which were struck.
 	Hits            *int     `json:"hits"`
+	DoubtfulPixels  int      `json:"doubtful_pixels"`
 	Restored        int      `json:"restored"`
 	Lost            int      `json:"lost"`
 	WavelengthRMSPx *float64 `json:"wavelength_rms_px"`

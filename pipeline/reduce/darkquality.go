@@ -15,10 +15,21 @@ func (c *darkChi2) add(o darkChi2) {
 	c.terms += o.terms
 }
 
+// restoredSample is the place of a sample that was restored: detector column and row (the
+// line), and code row.
+type restoredSample struct {
+	column, line uint32
+	row          uint16
+}
+
 // blockQuality is what a block of pixels adds to the figures of its row.
 type blockQuality struct {
 	dark     darkChi2
 	restored int // samples
+	// hits are those among them that cosmic rays struck, doubtful the pixels with hits
+	// that cannot be told; samples are the restored ones but those of lost rows.
+	hits, doubtful int
+	samples        []restoredSample
 	// steps is, by code row, the sum over sampled pixels of the square of the row's part
 	// in their dark residuals; noise is the sum of the variances of one sample of theirs.
 	steps []float64

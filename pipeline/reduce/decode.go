@@ -53,6 +53,8 @@ type decodeWorker struct {
 	sum, square, drift                 []float64
 	size, slope                        []float32 // of the neighbour term
 	free                               []float32 // a block freed of that term
+	raw                                []float32 // a block as decoded, before anything is restored
+	pursuit                            *pursuitWork
 	missing                            []float32 // what lost rows lack, [row][pixel]
 	growth                             []float64 // of variance by restored samples
 	hits                               hits
@@ -72,6 +74,12 @@ func (d *decoder) newWorker() *decodeWorker {
 		w.missing = make([]float32, len(d.scale.lost)*n)
 		if d.neighbours != nil {
 			w.free = make([]float32, d.slots*n)
+		}
+	}
+	if d.repair != nil {
+		w.pursuit = d.repair.pursuit.newWork(n)
+		if d.repair.restores() || d.neighbours != nil || d.repair.weights != nil {
+			w.raw = make([]float32, d.slots*n)
 		}
 	}
 	if !d.code.VarianceUniform() {
@@ -100,7 +108,7 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *b
 	at := (y-s.y0)*d.columns + x0
 	quiet := s.quiet[y-s.y0][x0:x1]
 	d.load(w, s, at, n)
-	q.restored = d.decode(w, s, at, n, x0, y)
+	d.decode(w, s, at, n, x0, y, q)
 	uniform := d.code.VarianceUniform()
 	if uniform {
 		d.uniformVariance(out.variance[0][x0:x1], w, s, at, quiet)
@@ -123,14 +131,16 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *b
 }
 
 // decode turns the loaded block into columns, restores what is missing and takes out
-// the neighbour term. It gives the number of restored samples.
-func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int) (restored int) {
+// the neighbour term. What was restored is counted in q.
+func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int, q *blockQuality) {
 	d.code.Decode(w.decoded, w.samples, n, n)
-	if d.repair != nil {
-		d.gatherHits(w, n)
-		for p := range w.growth {
-			w.growth[p] = 1
-		}
+	raw := w.decoded
+	if w.raw != nil {
+		raw = w.raw
+		copy(raw, w.decoded[:d.slots*n])
+	}
+	for p := range w.growth {
+		w.growth[p] = 1
 	}
 	if d.neighbours != nil {
 		d.neighbours.sizes(w.size, w.slope, x0, y, n)
@@ -138,17 +148,22 @@ func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int) (restored 
 	switch {
 	case d.repair.restores():
 		d.restoreLost(w, n)
-		restored = len(d.scale.lost) * n
+		q.restored = len(d.scale.lost) * n
 	case d.neighbours != nil:
 		d.neighbours.pairs.Correct(w.decoded, w.size, w.slope, n, n)
 	}
-	if d.repair != nil {
-		if d.repair.weights != nil {
-			d.repair.weights.Apply(w.decoded, n, n)
-		}
-		restored += d.restoreHits(w, s, at, n, x0, y)
+	if d.repair == nil {
+		return
 	}
-	return restored
+	if d.repair.weights != nil {
+		d.repair.weights.Apply(w.decoded, n, n)
+	}
+	if d.repair.pursuit != nil {
+		q.doubtful = d.pursue(w, s, at, n, s.quiet[y-s.y0][x0:x0+n])
+		d.addFound(w, n)
+	}
+	d.gatherHits(w, raw, n)
+	d.restoreHits(w, s, at, n, x0, y, q)
 }
 
 // load copies a block of all slots, less its bias, dark current, level and all-off

@@ -149,10 +149,9 @@ func (r *reduction) pixelFlat(ctx context.Context, m *wholeMasters) error {
 	return err
 }
 
-// slitFlat decodes the coded lamp frames and fits slit function and efficiency. In
-// the first pass the decoded light serves the neighbour term and the leak as well;
-// the second is freed of the neighbour term, whose ghosts would else be taken for a
-// slit function.
+// slitFlat decodes the coded lamp frames and fits slit function and efficiency, the
+// neighbour term and the leak. The second pass is freed of the first's neighbour term,
+// whose ghosts would else be taken for a slit function.
 func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 	code, err := r.code()
 	if err != nil {
@@ -175,14 +174,15 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 	if err != nil {
 		return err
 	}
-	for pass := range flatPasses {
+	for range flatPasses {
 		w, err := r.flatSweep(code, s, rectify, fit)
 		if err != nil {
 			return err
 		}
-		if pass == 0 {
-			w.light = terms.addRow
+		if err := terms.begin(&r.optics); err != nil {
+			return err
 		}
+		w.light = terms.addRow
 		if err := w.run(ctx); err != nil {
 			return err
 		}
@@ -193,10 +193,8 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		if r.optics.response, err = fit.Solve(); err != nil {
 			return err
 		}
-		if pass == 0 {
-			if err := terms.solve(&r.optics); err != nil {
-				return err
-			}
+		if err := terms.solve(&r.optics); err != nil {
+			return err
 		}
 	}
 	return nil

@@ -3,6 +3,7 @@ package reduce
 import (
 	"math"
 
+	"mirrorloom/calib"
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 )
@@ -17,6 +18,8 @@ var missing32 = float32(math.NaN())
 type hit struct {
 	pixel int
 	rows  []int // the struck code rows, and the lost ones
+	// reason is the flag of a pixel that cannot be restored.
+	reason calib.Flag
 	// growth is what restoring multiplied the pixel's variance by; 0 for a pixel that
 	// could not be restored.
 	growth float64
@@ -59,7 +62,7 @@ func (d *decoder) collectHits(w *decodeWorker, s *strip, at, n int) {
 			*flags |= reason
 		case *flags == 0:
 			h.rows = append(h.rows, d.scale.lost...)
-			h.list = append(h.list, hit{pixel: p, rows: h.rows[from:len(h.rows):len(h.rows)]})
+			h.list = append(h.list, hit{pixel: p, rows: h.rows[from:len(h.rows):len(h.rows)], reason: reason})
 		}
 	}
 }
@@ -89,25 +92,38 @@ func (d *decoder) fillStruck(w *decodeWorker, off float32, rows []int, n, p int)
 	}
 }
 
-// gatherHits copies the columns of the hits, as decoded, side by side.
-func (d *decoder) gatherHits(w *decodeWorker, n int) {
+// addFound adds the samples that the search found to the hits, pixel by pixel.
+func (d *decoder) addFound(w *decodeWorker, n int) {
+	h, found := &w.hits, w.pursuit.found
+	for i := 0; i < len(found); {
+		pixel, from := found[i].pixel, len(h.rows)
+		for ; i < len(found) && found[i].pixel == pixel; i++ {
+			h.rows = append(h.rows, found[i].hit.Row)
+		}
+		h.rows = append(h.rows, d.scale.lost...)
+		h.list = append(h.list, hit{pixel: pixel, rows: h.rows[from:len(h.rows):len(h.rows)], reason: calib.BadPixel})
+	}
+}
+
+// gatherHits copies the columns of the hits from raw, the block as decoded, side by side.
+func (d *decoder) gatherHits(w *decodeWorker, raw []float32, n int) {
 	h := &w.hits
 	m := len(h.list)
 	h.raw = growFloats(h.raw, d.slots*m)
 	for j := range d.slots {
 		for i, one := range h.list {
-			h.raw[j*m+i] = w.decoded[j*n+one.pixel]
+			h.raw[j*m+i] = raw[j*n+one.pixel]
 		}
 	}
 }
 
 // restoreHits restores the hits of a block and puts them back, freed of the neighbour
 // term. Pixels that cannot be restored keep what they had and get their reason as a flag.
-func (d *decoder) restoreHits(w *decodeWorker, s *strip, at, n, x0, y int) (restored int) {
+func (d *decoder) restoreHits(w *decodeWorker, s *strip, at, n, x0, y int, q *blockQuality) {
 	h := &w.hits
 	m := len(h.list)
 	if m == 0 {
-		return 0
+		return
 	}
 	h.size, h.slope = growFloats(h.size, m), growFloats(h.slope, m)
 	if d.neighbours != nil {
@@ -124,17 +140,23 @@ func (d *decoder) restoreHits(w *decodeWorker, s *strip, at, n, x0, y int) (rest
 	for i := range h.list {
 		one := &h.list[i]
 		if one.growth == 0 {
-			s.flags[at+one.pixel] |= s.struck[at+one.pixel]
+			s.flags[at+one.pixel] |= one.reason
 			continue
 		}
-		restored += len(one.rows) - len(d.scale.lost)
+		own := one.rows[:len(one.rows)-len(d.scale.lost)]
+		q.restored += len(own)
+		if s.struck[at+one.pixel] == 0 {
+			q.hits += len(own)
+		}
+		for _, row := range own {
+			q.samples = append(q.samples, restoredSample{column: uint32(x0 + one.pixel), line: uint32(y), row: uint16(row)})
+		}
 		s.flags[at+one.pixel] |= product.FlagRestored
 		w.growth[one.pixel] = one.growth
 		for j := range d.slots {
 			w.decoded[j*n+one.pixel] = h.raw[j*m+i]
 		}
 	}
-	return restored
 }
 
 // restoreHit adds to hit i of m what its residual, freed of the neighbour term, shows to

@@ -3,35 +3,39 @@ package reduce
 import (
 	"context"
 	"errors"
+	"math"
 
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/exposure"
 )
 
 // lampTerms fits the neighbour term and the leak to lamp frames, row by row of the
-// decoded lamp light.
+// decoded lamp light. Each pass over the coded flat does so anew: neighbours lift the
+// decoded light by d, which would else make d and the contrast too small by as much.
 type lampTerms struct {
-	columns int
+	columns, elements int
 	// neighbour is all-on - all-even - all-odd + all-off, leak all-off: means over
 	// their frames with variances; nil where a kind of frame is missing.
-	neighbour, leak       *calib.Exposure
-	neighbourFit, leakFit *calib.ColourFit
-	beyond                []leakRow // by detector row
+	neighbour, leak *calib.Exposure
+	leakRows        []leakRow // by detector row
+	leakFrame       calib.LeakFrame
+	amplifier       [][]uint8 // by detector row, of each column
+
+	neighbourFit *calib.ColourFit
+	leakFit      *calib.LeakFit
 }
 
 func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTerms, error) {
 	l := &r.roles.calibration.lamps
-	t := &lampTerms{columns: r.camera.Columns}
-	g, n := r.optics.geometry, r.seq.N()
+	t := &lampTerms{columns: r.camera.Columns, elements: r.seq.N()}
 	var err error
 	if len(l.off) > 0 {
 		if t.leak, err = r.meanExposure(ctx, l.off, m); err != nil {
 			return nil, err
 		}
-		t.beyond = r.leakRows()
-		if t.leakFit, err = calib.NewColourFit(calib.LeakRule(0, 0), g, n, t.columns); err != nil {
-			return nil, err
-		}
+		t.leakRows = r.leakRows()
+		t.leakFrame = r.leakFrame(len(l.off))
+		t.amplifier = r.camera.AmplifierOf()
 	}
 	if len(l.on) == 0 || len(l.even) == 0 || len(l.odd) == 0 || len(l.off) == 0 {
 		return t, nil
@@ -49,8 +53,46 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 	}
 	combine(on, t.leak, 1)
 	t.neighbour = on
-	t.neighbourFit, err = calib.NewColourFit(calib.NeighbourRule(n), g, n, t.columns)
-	return t, err
+	return t, nil
+}
+
+// leakFrame describes the mean of so many all-off frames of the lamp.
+func (r *reduction) leakFrame(frames int) calib.LeakFrame {
+	c := &r.roles.calibration
+	f := calib.LeakFrame{Geometry: r.optics.geometry, Elements: r.seq.N(), Columns: r.camera.Columns, LevelRows: 1}
+	p, columns := r.seq.Profile, r.seq.ElementColumns()
+	middle := r.seq.Elements[columns[len(columns)/2]]
+	for y := range r.camera.Rows {
+		f.Coded = append(f.Coded, rowFlags(r.seq, p, mirrorRow(p, float64(y)), middle) == 0)
+	}
+	// A level is that of each frame and of each that was taken off.
+	part := 1 / float64(frames)
+	if n := len(c.bias); n > 0 {
+		part += 1 / float64(n)
+	}
+	if n := len(c.dark); n > 0 {
+		part += math.Pow(c.lamps.seconds/c.darkSeconds, 2) / float64(n)
+	}
+	for i := range r.camera.Amplifiers {
+		variance, rows := r.camera.Amplifiers[i].LevelVariance()
+		f.LevelRows = max(f.LevelRows, rows)
+		f.LevelSigma = append(f.LevelSigma, math.Sqrt(part*variance))
+	}
+	return f
+}
+
+// begin empties the fits, which then take the light of a pass over the coded flat.
+func (t *lampTerms) begin(o *optics) (err error) {
+	if t.leak != nil {
+		t.leakFrame.Geometry = o.geometry
+		if t.leakFit, err = calib.NewLeakFit(calib.DefaultLeakRule(), t.leakFrame, o.leak); err != nil {
+			return err
+		}
+	}
+	if t.neighbour != nil {
+		t.neighbourFit, err = calib.NewColourFit(calib.NeighbourRule(t.elements), o.geometry, t.elements, t.columns)
+	}
+	return err
 }
 
 // meanExposure is the mean of frames, less bias and dark current.
@@ -82,30 +124,30 @@ func (t *lampTerms) addRow(row *decodedRow) {
 	if e := t.neighbour; t.neighbourFit != nil {
 		t.neighbourFit.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
 	}
-	if e := t.leak; t.leakFit != nil && t.beyond[row.y].use {
-		own := t.leakFit.ForkBeyond(t.beyond[row.y].before, t.beyond[row.y].after)
-		own.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
-		t.leakFit.Merge(own)
+	if e, at := t.leak, t.leakRows; t.leakFit != nil && at[row.y].use {
+		own := calib.LeakRow{
+			Y: row.y, Term: e.Signal[a:b], Variance: e.Variance[a:b], Flags: e.Flags[a:b],
+			Before: at[row.y].before, After: at[row.y].after, Amplifier: t.amplifier[row.y],
+		}
+		if at[row.y].lit {
+			own.Light = row.signal
+		}
+		t.leakFit.AddRow(own)
 	}
 }
 
 // solve puts the terms into o; a term that the lamp does not fix stays nil.
-func (t *lampTerms) solve(o *optics) error {
-	for _, f := range []struct {
-		fit *calib.ColourFit
-		to  **calib.ColourTerm
-	}{{t.neighbourFit, &o.neighbour}, {t.leakFit, &o.leak}} {
-		if f.fit == nil {
-			continue
-		}
-		term, err := f.fit.Solve()
-		if errors.Is(err, calib.ErrNoLight) {
-			continue
-		}
-		if err != nil {
+func (t *lampTerms) solve(o *optics) (err error) {
+	o.neighbour, o.leak = nil, nil
+	if t.neighbourFit != nil {
+		if o.neighbour, err = t.neighbourFit.Solve(); err != nil && !errors.Is(err, calib.ErrNoLight) {
 			return err
 		}
-		*f.to = term
+	}
+	if t.leakFit != nil {
+		if o.leak, err = t.leakFit.Solve(); err != nil && !errors.Is(err, calib.ErrNoLight) {
+			return err
+		}
 	}
 	return nil
 }

@@ -2,14 +2,17 @@ package reduce
 
 import (
 	"math"
+	"slices"
 
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/sequence"
 )
 
-// leakRow tells whether a detector row serves the fit of the leak, and how many
-// elements' widths of mirrors lie beyond the field on both sides of it.
+// leakRow tells whether a detector row serves the fit of the leak, whether mirrors
+// reach it, and how many elements' widths of mirrors lie beyond the field on both sides
+// of it.
 type leakRow struct {
-	use           bool
+	use, lit      bool
 	before, after float64
 }
 
@@ -31,11 +34,13 @@ func (r *reduction) leakRows() []leakRow {
 		low, high := mirrorRow(p, float64(y)-reach), mirrorRow(p, float64(y)+reach)
 		coded, bare := true, true
 		for w := low; w <= high; w++ {
-			coded = coded && rowFlags(seq, p, w, middle) == 0
+			coded = coded && rowFlags(seq, p, w, middle) == 0 && !slices.ContainsFunc(seq.Rows, func(r sequence.RowRange) bool {
+				return r.Use == sequence.UseClosed && w >= r.First && w <= r.Last
+			})
 			bare = bare && (w < wFirst || w > wLast)
 		}
 		row := &rows[y]
-		if row.use = coded || bare; coded {
+		if row.use, row.lit = coded || bare, coded; coded {
 			from, to := uRangeOf(p, mirrorRow(p, float64(y)))
 			width := float64(seq.ElementMirrors())
 			row.before = max(0, float64(first.First-from)/width)

@@ -48,6 +48,9 @@ func (r *reduction) scienceRepair(d *decoder) {
 	if d.repair == nil && len(d.darkColumns) > 0 && r.opts.Recipe.Repair.Use != useOff {
 		r.warn("nothing is restored and no error scale measured: %v", lack)
 	}
+	if d.repair != nil && lack == nil {
+		d.repair.pursuit = newPursuit(d.repair.left)
+	}
 	lost := len(d.scale.lost)
 	if lost == 0 {
 		return

@@ -75,25 +75,52 @@ func TestNeighbourGhosts(t *testing.T) {
 	require.InDelta(t, 0.0025, before, 0.0003, "-d/4 and +d/4")
 	require.Less(t, after, 2e-4)
 	for _, d := range r.Run.Calibration.Neighbour {
-		require.InEpsilon(t, 0.01*d.WavelengthNM/613, d.Value, 0.02)
+		require.InEpsilon(t, 0.01*d.WavelengthNM/613, d.Value, 0.008)
 	}
 }
 
-// Contrast within 3 % under leak with its structure of 20 %, from faint leak and
-// strong, by which the coded flat itself is lifted.
-func TestContrastMeasured(t *testing.T) {
-	for i, leak := range []float64{3e-4, 1e-2} {
+// The neighbour term and the contrast of N = 5 noisy nights, the leak with its structure
+// of 20 %: their errors hold, and their means are true. One night more leaks a hundredth, which
+// dims the decoded light by as much, and has no neighbour term: there the contrast is
+// held to 3 %, but not to its error.
+func TestLampTermsMeasured(t *testing.T) {
+	const nights, strong, d = 6, 1, 0.01
+	var neighbour, contrast, ratios trial.Sample
+	for seed := range nights {
+		leak, faults := 3e-4, []rehearse.Fault{{Name: rehearse.Neighbour, Size: d}}
+		if seed >= nights-strong {
+			leak, faults = 1e-2, nil
+		}
 		f, err := trial.Lamps()
 		require.NoError(t, err)
 		n, err := f.Plan(context.Background(), t.TempDir())
 		require.NoError(t, err)
-		require.NoError(t, n.Rehearse(context.Background(), trial.Noisy, rehearse.Options{Seed: uint64(1 + i), NoTruth: true, Faults: []rehearse.Fault{{Name: rehearse.Leak, Size: leak}}}))
+		faults = append(faults, rehearse.Fault{Name: rehearse.Leak, Size: leak})
+		require.NoError(t, n.Rehearse(context.Background(), trial.Noisy, rehearse.Options{Seed: uint64(1 + seed), NoTruth: true, Faults: faults}))
 		r, err := n.Reduce(context.Background(), trial.Noisy, reduce.Options{Cube: true})
 		require.NoError(t, err)
 		require.Len(t, r.Run.Calibration.Contrast, 5)
-		for _, c := range r.Run.Calibration.Contrast {
-			t.Logf("leak %g at %.0f nm: contrast %.1f +- %.1f", leak, c.WavelengthNM, c.Value, c.Error)
-			require.InEpsilon(t, 1/leak, c.Value, 0.03)
+		for _, at := range r.Run.Calibration.Contrast {
+			limit := 0.06 // of one wavelength of a night: the means have to be better
+			if seed >= nights-strong {
+				limit = 0.03
+			}
+			require.InEpsilon(t, 1/leak, at.Value, limit)
+		}
+		if seed < nights-strong {
+			// The five wavelengths' errors go together: the middle stands for all.
+			c := r.Run.Calibration.Contrast[2]
+			contrast.Add((c.Value - 1/leak) / c.Error)
+			ratios.Add(c.Value * leak)
+			at := r.Run.Calibration.Neighbour[2]
+			neighbour.Add((at.Value - d*at.WavelengthNM/f.Profile.Spectrograph.CenterNM) / at.Error)
 		}
 	}
+	t.Logf("pulls of d: %v; of the contrast: %v; contrast over the truth's: %v", &neighbour, &contrast, &ratios)
+	for _, pulls := range []*trial.Sample{&neighbour, &contrast} {
+		require.Less(t, pulls.RMS(), 1.5)
+		require.Less(t, math.Abs(pulls.Mean()), 5*pulls.StandardError())
+	}
+	require.InDelta(t, 1, ratios.Mean(), 0.03)
+	require.Less(t, 5*ratios.StandardError(), 0.03)
 }

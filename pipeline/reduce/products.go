@@ -68,6 +68,9 @@ func (r *reduction) finish(context.Context) (int64, error) {
 		if err := r.finishNoise(); err != nil {
 			return 0, err
 		}
+		if err := r.finishRestored(); err != nil {
+			return 0, err
+		}
 		if err := r.cube.Commit(); err != nil {
 			return 0, err
 		}

@@ -15,6 +15,7 @@ type rowQuality struct {
 	flags                 int16
 	saturated             int // pixels
 	restored              int // samples
+	hits, doubtful        int // samples that cosmic rays struck; pixels where they cannot be told
 	scale                 rowScale
 }
 
@@ -42,8 +43,8 @@ func (q *rowQuality) count(out *outStrip, row, elements, voxels int, use []int16
 	}
 }
 
-// sum adds the rows in order.
-func sum(rows []rowQuality, total int) (product.Quality, int16) {
+// sum adds the rows in order; searched: cosmic rays were looked for.
+func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 	var all rowQuality
 	var chi2 float64 // of each row, as often as it has terms
 	for _, r := range rows {
@@ -57,8 +58,13 @@ func sum(rows []rowQuality, total int) (product.Quality, int16) {
 		all.flags |= r.flags
 		all.saturated += r.saturated
 		all.restored += r.restored
+		all.hits += r.hits
+		all.doubtful += r.doubtful
 	}
-	q := product.Quality{Saturated: all.saturated, Restored: all.restored}
+	q := product.Quality{Saturated: all.saturated, Restored: all.restored, DoubtfulPixels: all.doubtful}
+	if searched {
+		q.Hits = &all.hits
+	}
 	if total > 0 {
 		q.GoodFraction = float64(all.good) / float64(total)
 	}

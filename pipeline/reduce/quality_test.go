@@ -27,12 +27,12 @@ func TestQuality(t *testing.T) {
 	// The chi-squares of rows count by their terms, whatever their light: (10 1.2 +
 	// 30 0.9)/40. A row without good pixels has none.
 	bright := rowQuality{dark: darkChi2{square: 9e6, variance: 1e7, terms: 30}}
-	sums, flags := sum([]rowQuality{q, {}, bright}, 10)
+	sums, flags := sum([]rowQuality{q, {}, bright}, 10, false)
 	require.InDelta(t, 0.1, sums.GoodFraction, 1e-12)
 	require.InDelta(t, 1.0/3, sums.CoveredGoodFraction, 1e-12)
 	require.InDelta(t, 0.975, *sums.DarkChi2Heldout, 1e-12)
 	require.Equal(t, 3, sums.Saturated)
 	require.Equal(t, int16(product.FlagBadPixel|product.FlagPartial|product.FlagNoData|product.FlagSaturated), flags)
-	sums, _ = sum(nil, 0)
+	sums, _ = sum(nil, 0, false)
 	require.Nil(t, sums.DarkChi2Heldout)
 }

@@ -39,6 +39,8 @@ type Options struct {
 	MemoryBytes int64
 	// Workers compute at the same time; 0 for one a processor.
 	Workers int
+	// AsLabelled keeps the pairing of the frames' labels, whatever the audit finds.
+	AsLabelled bool
 	// Out is a folder that exists and is empty. A folder in which Run failed is
 	// to be removed.
 	Out string
@@ -159,6 +161,7 @@ type reduction struct {
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
+	samples   restoredSamples
 	badPixels int
 	stages    []product.Stage
 	// looked counts the bytes that calibrate reads: see traffic.go.
@@ -193,8 +196,11 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if err := os.MkdirAll(r.scratch(), 0o755); err != nil {
 		return 0, fmt.Errorf("make a scratch folder: %w", err)
 	}
-	r.night, err = pair.Run(ctx, r.seq, pair.Options{Night: r.opts.Night, ScratchDir: r.scratch(), Workers: r.opts.Workers},
-		func(done, total int) { r.opts.Progress("pair", done, total) })
+	r.night, err = pair.Run(ctx, r.seq, pair.Options{
+		Night: r.opts.Night, ScratchDir: r.scratch(), Workers: r.opts.Workers,
+		Audit: r.opts.Recipe.Repair.Use != useOff, AsLabelled: r.opts.AsLabelled,
+		AuditProgress: func(done, total int) { r.opts.Progress("audit", done, total) },
+	}, func(done, total int) { r.opts.Progress("pair", done, total) })
 	if err != nil {
 		return 0, err
 	}
@@ -205,8 +211,25 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe), r.scratch()); err != nil {
 		return 0, err
 	}
-	r.roles, err = assign(r.seq, r.album.Frames, calibrates)
-	return 0, err
+	if r.roles, err = assign(r.seq, r.album.Frames, calibrates); err != nil {
+		return 0, err
+	}
+	r.heedAudit()
+	return 0, nil
+}
+
+// heedAudit says what the audit found.
+func (r *reduction) heedAudit() {
+	found := r.night.Audit
+	if found == nil {
+		return
+	}
+	for _, text := range found.Warnings() {
+		r.warn("%s", text)
+	}
+	if found.Inverted() {
+		r.degrade("every mask of the night is inverted: all light is negative")
+	}
 }
 
 // prepare makes the masters.
@@ -276,7 +299,8 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	var flags int16
-	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels)
+	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels, d.repair != nil && d.repair.pursuit != nil)
+	r.samples = w.samples
 	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
@@ -364,6 +388,9 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
 		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
+	}
+	if r.night.Audit != nil {
+		run.Audit = r.night.Audit
 	}
 	if len(r.roles.degraded) > 0 {
 		run.Exit = ExitDegraded

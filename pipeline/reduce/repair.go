@@ -25,6 +25,10 @@ type repair struct {
 	// weights decode slots of unequal depth better than the plain inverse, by more than
 	// worthwhileGain; nil where that is not so.
 	weights *hadamard.Reweighting
+	// left are the checks that lost rows leave.
+	left *hadamard.Checks
+	// pursuit finds samples that cosmic rays struck; nil where that is not asked for.
+	pursuit *pursuit
 	// most is how many struck samples of a pixel are restored.
 	most int
 	// share is, by code row, the variance of its part in the dark decodes in units of a
@@ -51,6 +55,7 @@ func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedest
 	if err != nil {
 		return nil, err
 	}
+	p.left = left
 	seen := left.Projector()
 	for i := range scale.quiet {
 		p.share = append(p.share, seen.At(i, i))
@@ -87,10 +92,17 @@ func (p *repair) weigh(checks *hadamard.Checks, scale *slotScale) (ratio []float
 		return nil, false
 	}
 	noise := slices.Clone(scale.quiet)
-	for _, row := range scale.lost {
-		noise[row] = math.Inf(1)
+	low, high := math.Inf(1), 0.0
+	for row := range noise {
+		if scale.isLost(row) {
+			noise[row] = math.Inf(1)
+			continue
+		}
+		low, high = min(low, noise[row]), max(high, noise[row])
 	}
-	if low, high := slices.Min(noise), slices.Max(noise); low == high {
+	// Variances that differ by the frames' factors alone gain nothing.
+	const differ = 1.2
+	if high < differ*low {
 		return nil, false
 	}
 	w, err := checks.Reweight(noise)

@@ -14,6 +14,7 @@ func (r *reduction) settings() map[string]any {
 		"elements":     r.opts.Elements,
 		"memory_bytes": r.opts.MemoryBytes,
 		"workers":      r.opts.Workers,
+		"as_labelled":  r.opts.AsLabelled,
 		"recipe": map[string]any{
 			"name": recipe.Name,
 			"detector": map[string]any{

@@ -39,6 +39,7 @@ type sweep struct {
 	// finished is the first row that is not yet fit for rectifying.
 	finished int
 	quality  []rowQuality
+	samples  restoredSamples
 	steps    stepChi2
 }
 
@@ -205,6 +206,9 @@ func (w *sweep) decodeBlocks(ctx context.Context, s *strip, rows []*decodedRow) 
 		q := &w.quality[rows[i/blocks].y]
 		q.dark.add(b.dark)
 		q.restored += b.restored
+		q.hits += b.hits
+		q.doubtful += b.doubtful
+		w.samples.add(b.samples)
 		w.steps.add(b)
 	}
 	return nil
