@@ -23,7 +23,8 @@
 //     a line followed over the blocks of a frame. SolveArcs names them and fits the
 //     Geometry's x; FitTrace fits its y to RowEnds, where lit mirror rows end.
 //   - A Strike is a pixel of one frame that a cosmic ray hit, as its sharp edges tell
-//     (EdgeRule), with the value of the light around it.
+//     (EdgeRule), with the value of the light around it; a StandIn is what it would have
+//     read by the other frames at its pixel.
 //   - A ColourTerm is a small part of the light that grows smoothly with wavelength:
 //     what open neighbours lend each other, or what closed mirrors leak.
 //

@@ -81,6 +81,23 @@ func (g *Geometry) EdgesX(dst []float64, j, y0, firstNm, stepNm float64) []float
 	return dst
 }
 
+// EdgesXAt is EdgesX for edges at any vacuum wavelengths in nm, ascending or descending, of
+// the same number as dst: those of a grid in air, of a logarithmic one, or of another
+// standard of rest.
+func (g *Geometry) EdgesXAt(dst []float64, j, y0 float64, vacuumNm []float64) []float64 {
+	if len(vacuumNm) == 0 {
+		return dst[:0]
+	}
+	start := g.unbent(j, vacuumNm[0])
+	x := g.solveX(start, y0, start)
+	lean, slope := x-start, g.leanSlope(x, y0)
+	for i, nm := range vacuumNm {
+		unbent := g.unbent(j, nm)
+		dst[i] = g.solveX(unbent, y0, unbent+lean+slope*(unbent-start))
+	}
+	return dst
+}
+
 // Check refuses a geometry whose mapping cannot be inverted: a number that is not
 // finite, a D1 of 0, a dispersion that turns between firstNm and lastNm, or a
 // coupling of x and y, over columns 0..columns-1 and trace rows 0..rows-1, so

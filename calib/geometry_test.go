@@ -75,6 +75,13 @@ func TestGeometryRoundTrip(t *testing.T) {
 		requireSolved(t, g, x, j, y0, wavelength)
 		require.InDelta(t, wavelength, g.Wavelength(x, j, y0), 1e-9)
 		edges := g.EdgesX(make([]float64, 60), j, y0, 560, 3)
+		var uneven []float64
+		for i := range edges {
+			uneven = append(uneven, 560*math.Exp(float64(i)/200))
+		}
+		for i, x := range g.EdgesXAt(make([]float64, 60), j, y0, uneven) {
+			require.InDelta(t, g.X(j, y0, uneven[i]), x, 1e-8)
+		}
 		for i, e := range edges {
 			requireSolved(t, g, e, j, y0, 560+3*float64(i))
 			if i > 0 {

@@ -66,3 +66,16 @@ func TestAirRoundTrip(t *testing.T) {
 	require.True(t, math.IsNaN(AirToVacuum(math.NaN())))
 	require.InDelta(t, AirIndex(500), DryAirIndex(500, 15, 101325), 1e-15)
 }
+
+// A formula that FITS software offers for air (Greisen et al. 2006, A&A 446, 747, equation
+// 65) is the index of air at 0 degrees C, 5.5 % above that of the 15 degrees in which
+// spectroscopists tabulate lines: it puts them 0.0077 nm off at 500 nm, 0.0129 at 850
+// (ratio 288.15/273.15). Ours must not.
+func TestAirIsNotThatOfZeroDegrees(t *testing.T) {
+	for nm, off := range map[float64]float64{500: 0.0077, 850: 0.0129} {
+		s2 := 1e6 / (nm * nm)
+		cold := 1e-6 * (287.6155 + s2*(1.62887+0.01360*s2))
+		require.InDelta(t, off, nm*(cold-(AirIndex(nm)-1)), 1e-4)
+		require.InEpsilon(t, 288.15/273.15, cold/(AirIndex(nm)-1), 1e-3)
+	}
+}

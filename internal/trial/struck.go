@@ -23,14 +23,16 @@ type Struck struct {
 	// each.
 	Frames [][]float32
 	Noise  calib.FrameNoise
+	// Flags mark the dead columns, which a lamp would tell.
+	Flags []calib.Flag
 	// Height is how far a ray lifts a sample, in sigmas of what it would have
 	// without: 0 where none struck.
 	Height [][]float64
 }
 
 // MakeStruck rehearses the night twice, with perThousand struck samples per 1000 and
-// without, and reads the science frames of both.
-func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perThousand float64) (*Struck, error) {
+// without, and reads every so many-th science frame of both.
+func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perThousand float64, every int) (*Struck, error) {
 	clean := name + "-clean"
 	opts := rehearse.Options{Seed: seed, NoTruth: true}
 	if err := n.Rehearse(ctx, clean, opts); err != nil {
@@ -48,15 +50,24 @@ func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perTho
 	if err != nil {
 		return nil, err
 	}
-	s := &Struck{Width: camera.Columns, Rows: camera.Rows}
+	s := &Struck{Width: camera.Columns, Rows: camera.Rows, Flags: make([]calib.Flag, camera.Columns*camera.Rows)}
+	for _, x := range truth.DeadColumns {
+		for y := range s.Rows {
+			s.Flags[y*s.Width+x] = calib.BadPixel
+		}
+	}
 	s.Noise.Photon = 1 + camera.PhotonExcess
 	for _, row := range camera.Variance {
 		for _, v := range row {
 			s.Noise.Read = append(s.Noise.Read, float32(v))
 		}
 	}
+	science := 0
 	for i, step := range n.Seq.Steps {
-		if step.Kind == sequence.Science {
+		if step.Kind != sequence.Science {
+			continue
+		}
+		if science++; science%every == 0 {
 			if err := s.add(camera, n.Frames(name), n.Frames(clean), truth.Frames[i]); err != nil {
 				return nil, err
 			}

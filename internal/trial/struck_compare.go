@@ -22,10 +22,9 @@ func (s *Struck) sigma(i int, clean float32) float64 {
 
 // Ours are the samples that a rule finds, [frame][pixel].
 func (s *Struck) Ours(rule calib.EdgeRule) ([][]bool, error) {
-	flags := make([]calib.Flag, s.Width*s.Rows)
 	var all [][]bool
 	for _, frame := range s.Frames {
-		hits, err := rule.Find(frame, s.Width, s.Noise, flags)
+		hits, err := rule.Find(frame, s.Width, s.Noise, s.Flags)
 		if err != nil {
 			return nil, err
 		}
@@ -42,11 +41,14 @@ func (s *Struck) Ours(rule calib.EdgeRule) ([][]bool, error) {
 // Its noise model knows one read noise alone, that of the first pixel. Files are
 // made in dir.
 func (s *Struck) Theirs(ctx context.Context, rule calib.EdgeRule, dir string) (found [][]bool, version string, err error) {
-	frames, masks := filepath.Join(dir, "frames.bin"), filepath.Join(dir, "masks.bin")
-	if err := s.write(frames); err != nil {
+	frames, flags, masks := filepath.Join(dir, "frames.bin"), filepath.Join(dir, "flags.bin"), filepath.Join(dir, "masks.bin")
+	if err := writeBinary(frames, s.Frames); err != nil {
 		return nil, "", err
 	}
-	version, err = outside.Script(ctx, "calib_edges.py", frames, fmt.Sprint(s.Width), fmt.Sprint(s.Rows),
+	if err := writeBinary(flags, [][]calib.Flag{s.Flags}); err != nil {
+		return nil, "", err
+	}
+	version, err = outside.Script(ctx, "calib_edges.py", frames, flags, fmt.Sprint(s.Width), fmt.Sprint(s.Rows),
 		fmt.Sprint(math.Sqrt(float64(s.Noise.Read[0]))), fmt.Sprint(rule.Sigmas), fmt.Sprint(rule.Fraction),
 		fmt.Sprint(rule.Contrast), fmt.Sprint(rule.Iterations), masks)
 	if err != nil {
@@ -70,14 +72,14 @@ func (s *Struck) Theirs(ctx context.Context, rule calib.EdgeRule, dir string) (f
 	return found, strings.TrimSpace(version), nil
 }
 
-func (s *Struck) write(path string) error {
+func writeBinary[T any](path string, blocks [][]T) error {
 	file, err := os.Create(path)
 	if err != nil {
 		return err
 	}
 	w := bufio.NewWriter(file)
-	for _, frame := range s.Frames {
-		if err := binary.Write(w, binary.LittleEndian, frame); err != nil {
+	for _, block := range blocks {
+		if err := binary.Write(w, binary.LittleEndian, block); err != nil {
 			file.Close() // the first error counts
 			return err
 		}

@@ -32,8 +32,9 @@ const (
 )
 
 // CompareStruck makes a night of the field with perThousand struck samples per 1000
-// in dir and holds calib.DefaultEdgeRule against astroscrappy with the same figures.
-func (f *Field) CompareStruck(ctx context.Context, dir, what string, seed uint64, perThousand float64) ([]Finding, error) {
+// in dir and holds calib.DefaultEdgeRule against astroscrappy with the same figures,
+// on every so many-th science frame.
+func (f *Field) CompareStruck(ctx context.Context, dir, what string, seed uint64, perThousand float64, every int) ([]Finding, error) {
 	if err := os.MkdirAll(dir, 0o755); err != nil {
 		return nil, err
 	}
@@ -41,7 +42,7 @@ func (f *Field) CompareStruck(ctx context.Context, dir, what string, seed uint64
 	if err != nil {
 		return nil, err
 	}
-	s, err := n.MakeStruck(ctx, "struck", seed, perThousand)
+	s, err := n.MakeStruck(ctx, "struck", seed, perThousand, every)
 	if err != nil {
 		return nil, err
 	}

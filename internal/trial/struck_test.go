@@ -16,7 +16,7 @@ func TestCrosscheckStruck(t *testing.T) {
 	f, err := Tiny()
 	require.NoError(t, err)
 	f.Undarken("slit-scan", 100)
-	findings, err := f.CompareStruck(t.Context(), t.TempDir(), "slit scan", 71, 10)
+	findings, err := f.CompareStruck(t.Context(), t.TempDir(), "slit scan", 71, 10, 1)
 	if errors.Is(err, outside.ErrMissing) && os.Getenv("CI") != "true" {
 		t.Skip(err)
 	}

@@ -32,6 +32,7 @@ type check struct {
 func checks() []check {
 	return []check{
 		peakMemory(),
+		extractCost(),
 		interrupts(),
 		demoNight("optical", "demo", "demo", 0.6),
 		// The figure of 60 % is that of `mirrorloom demo`; this target closes almost
@@ -49,6 +50,7 @@ func checks() []check {
 		errorScale(),
 		allFaults(),
 		apertures(),
+		lineMaps(),
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),

@@ -6,10 +6,12 @@ func (p *propagator) block(w *part, y int, traces []*traceRow, light [][]float32
 		return
 	}
 	p.c.samples(&w.b, light, pixels)
-	w.k.prepare(&w.b)
-	for x := range w.n {
-		if p.touched(w, x) {
-			p.pixel(w, x, light, pixels)
+	if !p.sumsOnly {
+		w.k.prepare(&w.b)
+		for x := range w.n {
+			if p.touched(w, x) {
+				p.pixel(w, x, light, pixels)
+			}
 		}
 	}
 	p.addSums(w, light, pixels)
@@ -67,7 +69,8 @@ func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int
 	channels := p.c.Grid.Count
 	for _, t := range traces {
 		for i := t.from; i < t.to; i++ {
-			for l := range channels {
+			reach := t.reach[i-t.from][w.x0/blockPixels]
+			for l := int(reach[0]); l < int(reach[1]); l++ {
 				first, weights := t.voxel(i, l, channels)
 				from := first - w.x0
 				if from >= w.n || from+len(weights) <= 0 || len(weights) == 0 {

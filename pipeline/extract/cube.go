@@ -4,6 +4,7 @@ import (
 	"crypto/sha256"
 	"fmt"
 	"path/filepath"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
@@ -56,6 +57,21 @@ func Open(run string) (*Cube, error) {
 	return c, nil
 }
 
+// WithLight is c with the light of SIGNAL in another file on the same grid, such as a
+// model or the truth of a rehearsal, and c's variances. Both files stay to be closed.
+func (c *Cube) WithLight(f *fitsutil.File) (*Cube, error) {
+	im, err := f.ImageNamed(product.Signal)
+	if err != nil {
+		return nil, err
+	}
+	if !slices.Equal(im.Axes, c.signal.Axes) {
+		return nil, fmt.Errorf("%s has the axes %v, the cube %v", f.Path(), im.Axes, c.signal.Axes)
+	}
+	other := *c
+	other.signal = im
+	return &other, nil
+}
+
 // Close ends the use of the cube.
 func (c *Cube) Close() error { return c.file.Close() }
 
@@ -75,7 +91,7 @@ func (c *Cube) read() (err error) {
 		if *im.to, err = c.file.ImageNamed(im.name); err != nil {
 			return err
 		}
-		if len((*im.to).Axes) != 3 || fmt.Sprint((*im.to).Axes) != fmt.Sprint(c.signal.Axes) {
+		if len((*im.to).Axes) != 3 || !slices.Equal((*im.to).Axes, c.signal.Axes) {
 			return c.fault("image %s has the axes %v", im.name, (*im.to).Axes)
 		}
 	}

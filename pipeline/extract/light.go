@@ -52,9 +52,16 @@ func (r *lightReader) row(y int) ([][]float32, error) {
 		}
 	}
 	light := table[float32](c.Elements, c.noise.Columns)
-	for j, row := range light {
-		for x := range row {
-			row[x] = (1-part[x])*r.traces[below[x]][j][x] + part[x]*r.traces[below[x]+1][j][x]
+	for from, to := 0, 0; from < len(below); from = to {
+		for to < len(below) && below[to] == below[from] {
+			to++
+		}
+		lower, upper := r.traces[below[from]], r.traces[below[from]+1]
+		for j, row := range light {
+			a, b := lower[j], upper[j]
+			for x := from; x < to; x++ {
+				row[x] = (1-part[x])*a[x] + part[x]*b[x]
+			}
 		}
 	}
 	return light, nil

@@ -23,10 +23,12 @@ type covariances struct {
 
 // propagator carries the weights of an aperture back to the detector.
 type propagator struct {
-	c     *Cube
-	a     *aperture
-	sums  [][]float64 // [sum][channel]
-	light *lightReader
+	c    *Cube
+	a    *aperture
+	sums [][]float64 // [sum][channel]
+	// sumsOnly leaves the covariances of channels out.
+	sumsOnly bool
+	light    *lightReader
 	// rowAt is the first cell of each row, from a.firstRow on, one more than rows.
 	rowAt  []int
 	pixels map[int]*pixelRow
@@ -59,7 +61,20 @@ type part struct {
 // propagate computes the covariances of the weighted sums over the aperture and of
 // sums of channels with the weights sums, [sum][channel].
 func (c *Cube) propagate(ctx context.Context, a *aperture, sums [][]float64) (*covariances, error) {
-	p := &propagator{c: c, a: a, sums: sums, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, fork: c.newCoupling(a.elements)}
+	return c.carry(ctx, a, sums, false)
+}
+
+// variancesOf computes those of sums of channels alone, which takes less time.
+func (c *Cube) variancesOf(ctx context.Context, a *aperture, sums [][]float64) ([]float64, error) {
+	v, err := c.carry(ctx, a, sums, true)
+	if err != nil {
+		return nil, err
+	}
+	return v.sums, nil
+}
+
+func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnly bool) (*covariances, error) {
+	p := &propagator{c: c, a: a, sums: sums, sumsOnly: sumsOnly, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, fork: c.newCoupling(a.elements)}
 	p.rowAt = make([]int, a.endRow-a.firstRow+1)
 	for _, k := range a.cells {
 		p.rowAt[k.row-a.firstRow+1]++

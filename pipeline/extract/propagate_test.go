@@ -9,24 +9,15 @@ import (
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/calib"
-	"mirrorloom/internal/trial"
-	"mirrorloom/pipeline/reduce"
-	"mirrorloom/pipeline/rehearse"
 )
 
-// tinyRun makes a night of the tiny field and opens its cube.
+// TinyRun makes a run of the tiny field: see fixture_test.go.
+var TinyRun func(t *testing.T, family string, v, dark int) string
+
+// tinyRun opens its cube.
 func tinyRun(t *testing.T, family string, v, dark int) *Cube {
 	t.Helper()
-	field, err := trial.Tiny()
-	require.NoError(t, err)
-	field.Profile.Spectrograph.SlitTilt, field.Profile.Spectrograph.TraceTilt = 0.05, 0.02
-	field.SetCode(family, v, dark)
-	night, err := field.Plan(t.Context(), t.TempDir())
-	require.NoError(t, err)
-	require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 5, NoTruth: true}))
-	_, err = night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true})
-	require.NoError(t, err)
-	c, err := Open(night.Run(trial.Noisy))
+	c, err := Open(TinyRun(t, family, v, dark))
 	require.NoError(t, err)
 	t.Cleanup(func() { c.Close() })
 	return c

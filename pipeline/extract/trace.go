@@ -11,6 +11,21 @@ type traceRow struct {
 	start    []int32 // where a voxel's weights begin in w, one more than voxels
 	w        []float32
 	scale    []float32 // [cell][wavelength]: see scaleTo; 0 without weight
+	// reach is the channels, first and one more than the last, that reach each block of
+	// columns, [cell][block].
+	reach [][][2]int32
+}
+
+// note takes down that channel l of the last cell lies on columns first..last.
+func (t *traceRow) note(l, first, last int) {
+	blocks := t.reach[len(t.reach)-1]
+	for b := first / blockPixels; b <= last/blockPixels; b++ {
+		if r := &blocks[b]; r[1] == 0 {
+			*r = [2]int32{int32(l), int32(l + 1)}
+		} else {
+			r[1] = int32(l + 1)
+		}
+	}
 }
 
 // voxel gives the weights of a voxel of cell i on the columns from first on.
@@ -19,12 +34,19 @@ func (t *traceRow) voxel(i, l, channels int) (first int, w []float32) {
 	return int(t.first[at]), t.w[t.start[at]:t.start[at+1]]
 }
 
+// weightsOfVoxel is the number of weights that a voxel of 1 px usually has.
+const weightsOfVoxel = 9
+
 // newTraceRow computes the weights of row y0 of the aperture, cells from..to-1:
 // those of resampling, divided by the response, times the aperture's, scaled such
 // that each voxel has its own VARIANCE. own is the variance of each slot's
 // straightened row, by column.
 func (c *Cube) newTraceRow(a *aperture, y0, from, to int, own func(slot int) []float32) (*traceRow, error) {
-	t := &traceRow{y0: y0, from: from, to: to}
+	n := (to - from) * c.Grid.Count
+	t := &traceRow{
+		y0: y0, from: from, to: to, scale: make([]float32, 0, n), first: make([]int32, 0, n), start: make([]int32, 0, n+1),
+		w: make([]float32, 0, weightsOfVoxel*n),
+	}
 	slit, err := c.slitRow(0, y0)
 	if err != nil {
 		return nil, err
@@ -35,10 +57,12 @@ func (c *Cube) newTraceRow(a *aperture, y0, from, to int, own func(slot int) []f
 		j := a.cells[i].element
 		variance := own(a.slot[i])
 		c.geometry.EdgesX(edges, float64(j), float64(y0), c.Grid.WavelengthNM(-0.5), c.Grid.StepNM)
+		t.reach = append(t.reach, make([][2]int32, (c.noise.Columns+blockPixels-1)/blockPixels))
 		for l := range channels {
 			at, first, scale := len(t.w), 0, 0.0
 			if a.weight[i][l] != 0 {
 				first, t.w = c.resampler.Weights(t.w, edges[l], edges[l+1])
+				t.note(l, first, first+len(t.w)-at-1)
 				scale = scaleTo(t.w[at:], variance[first:], c.response(slit, j, l), c.pixelPart(a, i, l), a.weight[i][l])
 			}
 			t.first, t.start = append(t.first, int32(first)), append(t.start, int32(at))

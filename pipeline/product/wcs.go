@@ -19,10 +19,7 @@ import (
 // The steps c1 and c2 differ in general: voxels are not square.
 func (s Schema) wcs() []card {
 	sin, cos := math.Sincos(s.RotangDeg * math.Pi / 180)
-	parity := 1.0
-	if s.Parity < 0 {
-		parity = -1
-	}
+	parity := s.parity()
 	cards := []card{
 		{"WCSAXES", 3, "world coordinate axes"},
 		{"CTYPE1", "RA---TAN", "right ascension, gnomonic"},

@@ -62,17 +62,19 @@ func (s shape) outBytes(rows int) int64 {
 	return int64(rows)*int64(s.elements)*int64(s.voxels)*bytesVoxel + s.window(s.margin+rows)
 }
 
-// stripRow is the memory of one row of a strip: two buffers of every slot's
-// pixels, and the decoded columns if they are a product of their own.
+// stripRow is the memory of one row of a strip: two buffers of every slot's pixels and
+// of what is taken off them, with flags, and the decoded columns if they are a product
+// of their own.
 func (s shape) stripRow() int64 {
-	planes := 2 * s.slots
+	const taken = 5 // base, off, level, levelVariance; two sets of flags
+	planes := 2 * (s.slots + taken)
 	if s.elementCube {
 		planes += s.slots
 		if !s.uniform {
 			planes += s.slots
 		}
 	}
-	return int64(planes+2) * int64(s.columns) * bytesFloat
+	return int64(planes) * int64(s.columns) * bytesFloat
 }
 
 // window is the memory of decoded rows.

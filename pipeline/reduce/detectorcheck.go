@@ -127,7 +127,9 @@ func (r *reduction) amplifierPair(a int, e [2]*calib.Exposure) calib.Pair {
 }
 
 // persistence compares each arc frame that directly follows a flat with that flat:
-// what it left behind shows between the arc's lines, those found and those listed.
+// what it left behind shows between the arc's lines, those found and those listed. An
+// arc frame like it that follows another arc is taken off first: what leaks past closed
+// mirrors lies where the flat's light lies, and is the same in both.
 func (r *reduction) persistence(m *wholeMasters, arcs []calib.ArcFrame) error {
 	byStep := map[int]*exposure.Frame{}
 	for _, f := range r.roles.calibration.lamps.all() {
@@ -151,9 +153,24 @@ func (r *reduction) persistence(m *wholeMasters, arcs []calib.ArcFrame) error {
 		if err != nil {
 			return err
 		}
+		like := r.likeArc(i)
+		if like >= 0 {
+			other, err := r.lampExposure(r.roles.arcs[like], m, false, new(exposure.Scratch))
+			if err != nil {
+				return err
+			}
+			calib.Subtract(left.Signal, other.Signal, 1)
+			for p, v := range other.Variance {
+				left.Variance[p] += v
+				left.Flags[p] |= other.Flags[p]
+			}
+		}
 		for y := range r.camera.Rows {
 			a, b := y*r.camera.Columns, (y+1)*r.camera.Columns
 			r.hideLines(left.Flags[a:b], arcs[i], y)
+			if like >= 0 {
+				r.hideLines(left.Flags[a:b], arcs[like], y)
+			}
 			fit.Add(left.Signal[a:b], left.Variance[a:b], lit.Signal[a:b], left.Flags[a:b])
 		}
 		fit.NextFrame()
@@ -172,6 +189,23 @@ func (r *reduction) persistence(m *wholeMasters, arcs []calib.ArcFrame) error {
 		r.warn("%.2g +- %.1g of each frame's charge appears in the next; it is not corrected", p.Share, p.Error)
 	}
 	return nil
+}
+
+// likeArc is an arc frame of the lamp and exposure of arc i that follows another arc, the
+// nearest; -1 if there is none.
+func (r *reduction) likeArc(i int) int {
+	step := func(i int) sequence.Step { return r.seq.Steps[r.roles.arcs[i].Step] }
+	best := -1
+	for j := range r.roles.arcs {
+		at := r.roles.arcs[j].Step
+		if j == i || at == 0 || r.seq.Steps[at-1].Kind != sequence.Arc || step(j).Lamp != step(i).Lamp || step(j).ExptimeSeconds != step(i).ExptimeSeconds {
+			continue
+		}
+		if best < 0 || max(j-i, i-j) < max(best-i, i-best) {
+			best = j
+		}
+	}
+	return best
 }
 
 // hideLines flags the pixels of a row that a line of the arc may reach.

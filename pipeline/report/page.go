@@ -33,6 +33,9 @@ type page struct {
 	Picture          template.HTML
 	PictureNote      string
 	Spectra          []spectrumView
+	Sums             []sumView
+	SumPlaces        []string
+	SumsNote         string
 	Flags            []flagShare
 	Ledger           ledgerView
 	Quality          []fact

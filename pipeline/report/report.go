@@ -76,6 +76,9 @@ func assemble(ctx context.Context, runDir string, in Input) (*page, error) {
 		}
 		spectra = append(spectra, s)
 	}
+	if err := p.addSums(ctx, c.file.Path(), places); err != nil {
+		return nil, err
+	}
 	charts, err := drawSpectra(spectra, in.Schema.Grid, c.unitWord())
 	if err != nil {
 		return nil, err
