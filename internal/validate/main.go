@@ -54,6 +54,8 @@ func checks() []check {
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),
+		audits(),
+		flips(),
 	}
 }
 

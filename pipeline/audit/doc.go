@@ -33,6 +33,10 @@
 // Where errors of the model (seeing, guiding) leave an excess in all frames, odds are
 // weakened by it and a move must gain many times what is common.
 //
+// Cosmic rays are left out twice: readings far above their pixel's series (strike), and
+// those that contradict the checks of the pairing found where their frame does not
+// elsewhere (clean); then the cycle is judged again.
+//
 // What no dark column sees: all masks flipped or shifted alike. All masks inverted turn
 // the light negative, which is seen (Verdict.AllInverted).
 package audit

@@ -17,14 +17,20 @@ var sureLogOdds = math.Log(1e6)
 // the odds are beyond 1e6 to 1; frames that the frame test calls wrong and that nothing
 // explains are taken out. Errors are hadamard's of too few dark columns.
 func Judge(c *Cycle) (*Verdict, error) {
+	v, _, err := judge(c)
+	return v, err
+}
+
+// judge gives the state of the best pairing too, nil without one.
+func judge(c *Cycle) (*Verdict, *state, error) {
 	e, err := newEngine(c)
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
 	base := e.newState(c.Pairing, nil)
 	v := &Verdict{Pairing: slices.Clone(c.Pairing), Pixels: e.pixels}
 	if base == nil || e.pixels == 0 {
-		return v, nil
+		return v, nil, nil
 	}
 	few := e.newHunt(base)
 	few.run()
@@ -34,7 +40,7 @@ func Judge(c *Cycle) (*Verdict, error) {
 	if most := few.state.excess + 4*math.Sqrt(2*dark); (separation{most, dark}).logOdds(most) > sureLogOdds {
 		name, whole, tried := e.searchWhole()
 		if whole == nil {
-			return best.verdict(v), nil
+			return best.verdict(v), best.state, nil
 		}
 		q := whole.scatter()
 		gain, further := base.excess-whole.excess, few.state.excess-whole.excess
@@ -46,7 +52,7 @@ func Judge(c *Cycle) (*Verdict, error) {
 			best.run()
 		}
 	}
-	return best.verdict(v), nil
+	return best.verdict(v), best.state, nil
 }
 
 // verdict finishes the hunt and says what it found.

@@ -44,7 +44,7 @@ func TestAuditFindsFaults(t *testing.T) {
 	}{
 		{[]string{"drift=0.05"}, 0, 0},
 		{[]string{"drift=0.05", "mislabel=4"}, 4, 4},
-		{[]string{"drift=0.05", "stale=2"}, 2, 0},
+		{[]string{"drift=0.05", "stale=2", "cosmic=0.5"}, 2, 0},
 		{[]string{"drift=0.05", "flip=1", "invert=1", "lost=1"}, 2, 0},
 	} {
 		name := fmt.Sprint(i)

@@ -184,6 +184,9 @@ const (
 	sampleWork   = 16e9
 )
 
+// cleanings is how often hits are looked for before a sample is judged at its size.
+const cleanings = 3
+
 // cycle audits one cycle; nil if it has not enough frames to tell anything.
 func (a *audit) cycle(ctx context.Context, number int, frames []Frame) (_ *CycleReport, err error) {
 	c, steps := a.problem(number, frames)
@@ -210,9 +213,15 @@ func (a *audit) cycle(ctx context.Context, number int, frames []Frame) (_ *Cycle
 		if err != nil {
 			return nil, err
 		}
-		c.Gram, c.Parts, c.Level = s.gram, s.parts, s.level
-		if report.Verdict, err = Judge(c); err != nil {
-			return nil, err
+		for range cleanings {
+			c.Gram, c.Parts, c.Level = s.gram, s.parts, s.level
+			var st *state
+			if report.Verdict, st, err = judge(c); err != nil {
+				return nil, err
+			}
+			if st == nil || s.clean(st) == 0 {
+				break
+			}
 		}
 		report.Rows = s.used
 		if report.Sure || !more || rows >= limit {

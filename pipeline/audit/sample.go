@@ -30,6 +30,7 @@ type sampler struct {
 	used      int
 	gram      *hadamard.Gram
 	parts     []*hadamard.Gram // of every fourth row
+	data      []*rowData       // of the rows used
 	level     []float64        // of each frame: sum of y/s
 }
 
@@ -85,18 +86,14 @@ func codedRows(seq *sequence.Sequence, reach float64) []int {
 // grow adds rows until so many are used, and returns false if there are no more.
 func (s *sampler) grow(ctx context.Context, rows int) (more bool, err error) {
 	rows = min(rows, len(s.rows))
-	frames := len(s.album.Frames)
 	if s.gram == nil {
-		s.gram, s.level = hadamard.NewGram(frames), make([]float64, frames)
-		for range parts {
-			s.parts = append(s.parts, hadamard.NewGram(frames))
-		}
+		s.reset()
 	}
 	scratch := make([]rowScratch, s.workers)
 	for s.used < rows {
 		// Rows are read side by side and added in order.
 		n := min(s.workers, rows-s.used)
-		sums := make([]*rowSum, n)
+		sums := make([]*rowData, n)
 		err := parallel.Do(ctx, s.workers, n, func(worker, i int) (err error) {
 			sums[i], err = s.row(s.rows[s.used+i], &scratch[worker])
 			return err
@@ -104,13 +101,10 @@ func (s *sampler) grow(ctx context.Context, rows int) (more bool, err error) {
 		if err != nil {
 			return false, err
 		}
-		for i, sum := range sums {
-			s.gram.Merge(sum.gram)
-			s.parts[(s.used+i)%parts].Merge(sum.gram)
-			for m, x := range sum.level {
-				s.level[m] += x
-			}
+		for i, d := range sums {
+			s.add(s.used+i, d)
 		}
+		s.data = append(s.data, sums...)
 		s.used += n
 		if err := s.release(); err != nil {
 			return false, err
@@ -144,13 +138,8 @@ type rowScratch struct {
 	y, s2     []float32 // [frame][sample]
 }
 
-type rowSum struct {
-	gram  *hadamard.Gram
-	level []float64
-}
-
-// row sums a detector row of all frames.
-func (s *sampler) row(y int, w *rowScratch) (*rowSum, error) {
+// row takes the samples of a detector row of all frames.
+func (s *sampler) row(y int, w *rowScratch) (*rowData, error) {
 	columns, frames := s.camera.Columns, len(s.album.Frames)
 	if w.row == nil {
 		w.row, w.dark, w.flags = make([]float32, columns), make([]float32, columns), make([]calib.Flag, columns)
@@ -186,7 +175,7 @@ func (s *sampler) row(y int, w *rowScratch) (*rowSum, error) {
 		}
 	}
 	s.strike(w, y)
-	return s.sum(w, y), nil
+	return s.bin(w, y), nil
 }
 
 // A reading is a cosmic ray's if it lies so many times the quartiles' distance, and of
@@ -259,8 +248,8 @@ func (w *rowScratch) neighbours(m, x, columns int) float32 {
 	return (row[x-beside] - w.dark[x-beside] + row[x+beside] - w.dark[x+beside]) / 2
 }
 
-// sum bins the row's good pixels and adds them up.
-func (s *sampler) sum(w *rowScratch, y int) *rowSum {
+// bin adds up the row's good pixels by threes.
+func (s *sampler) bin(w *rowScratch, y int) *rowData {
 	columns, frames := s.camera.Columns, len(s.album.Frames)
 	stride := columns / binned
 	quiet := s.camera.Variance[y]
@@ -289,19 +278,12 @@ func (s *sampler) sum(w *rowScratch, y int) *rowSum {
 		}
 		n++
 	}
-	out := &rowSum{gram: hadamard.NewGram(frames), level: make([]float64, frames)}
-	out.gram.Add(w.y, w.s2, n, stride, float32(floor))
-	for p := range n {
-		mean := 0.0
-		for m := range frames {
-			mean += float64(w.s2[m*stride+p]) / float64(frames)
-		}
-		scale := 1 / math.Sqrt(max(mean, floor))
-		for m := range frames {
-			out.level[m] += float64(w.y[m*stride+p]) * scale
-		}
+	d := &rowData{y: make([]float32, frames*n), s2: make([]float32, frames*n), n: n, floor: floor, struck: make([]bool, n)}
+	for m := range frames {
+		copy(d.y[m*n:(m+1)*n], w.y[m*stride:])
+		copy(d.s2[m*n:(m+1)*n], w.s2[m*stride:])
 	}
-	return out
+	return d
 }
 
 // quartiles reorders x.

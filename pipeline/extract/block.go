@@ -109,6 +109,9 @@ func (w *part) weights(slot, x int) (lo int, values []float64) {
 func (p *propagator) pixel(w *part, x int, light [][]float32, pixels *pixelRow) {
 	common := float64(pixels.common[w.x0+x])
 	w.k.at(w.pairs, &w.b, x, func(slot int) float64 {
+		if p.c.noise.Uniform {
+			return w.b.own[x]
+		}
 		return float64(pixels.of(slot)[w.x0+x]) - common
 	})
 	for j := range p.a.elements {

@@ -30,6 +30,8 @@
 // and row), of the efficiency (by the rows of an element, and taken as shared by
 // neighbouring wavelengths) and of the frames' throughput.
 //
-// Each voxel's weight is scaled so that its own variance is exactly VARIANCE, which
-// therefore may have been scaled by a measured error scale or a flux calibration.
+// Each voxel's weight is scaled so that its own variance is VARIANCE, which therefore
+// may have been scaled by a measured error scale or a flux calibration. (Where the
+// throughput has errors it is a little more: reduce takes them for independent in the
+// pixels of a voxel as well.) Samples that were restored are taken for read ones.
 package extract

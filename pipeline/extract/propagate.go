@@ -75,13 +75,7 @@ func (c *Cube) variancesOf(ctx context.Context, a *aperture, sums [][]float64) (
 
 func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnly bool) (*covariances, error) {
 	p := &propagator{c: c, a: a, sums: sums, sumsOnly: sumsOnly, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, fork: c.newCoupling(a.elements)}
-	p.rowAt = make([]int, a.endRow-a.firstRow+1)
-	for _, k := range a.cells {
-		p.rowAt[k.row-a.firstRow+1]++
-	}
-	for i := range len(p.rowAt) - 1 {
-		p.rowAt[i+1] += p.rowAt[i]
-	}
+	p.rowAt = rowStarts(a)
 	electrons, err := p.electrons()
 	if err != nil {
 		return nil, err
@@ -106,6 +100,18 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 		}
 	}
 	return p.result(), nil
+}
+
+// rowStarts are the places of each row's first cell, from a.firstRow on.
+func rowStarts(a *aperture) []int {
+	at := make([]int, a.endRow-a.firstRow+1)
+	for _, k := range a.cells {
+		at[k.row-a.firstRow+1]++
+	}
+	for i := range len(at) - 1 {
+		at[i+1] += at[i]
+	}
+	return at
 }
 
 func (p *propagator) newPart(x0 int) *part {

@@ -33,6 +33,7 @@ type block struct {
 	// predicted is the light of each step, variances that of its samples.
 	predicted, variances []float32
 	light                []float32 // of each code column
+	own                  []float64 // what variances make of every element, where all are the same
 }
 
 // blockPixels are worked on together.
@@ -43,11 +44,14 @@ const blockPixels = 256
 //
 //	s_k^2 = weight_k (level + photon variance * (W f)_k),
 //
-// with the level of each pixel such that the samples add up to what PIXELVAR says.
+// with the level of each pixel such that the samples add up to what PIXELVAR says. What
+// PIXELVAR holds for the errors of the throughput, sum (error_k (W f)_k)^2, is taken out:
+// all pixels share those errors, see addThroughput.
 func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 	v, n := c.noise.V, b.n
 	if len(b.light) != v*n {
 		b.light, b.predicted, b.variances = make([]float32, v*n), make([]float32, v*n), make([]float32, v*n)
+		b.own = make([]float64, n)
 	}
 	clear(b.light)
 	for j, column := range c.columns {
@@ -58,11 +62,16 @@ func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 	for x := range n {
 		level := float64(p.plane[b.x0+x])
 		if c.noise.Uniform {
-			own := (level - float64(p.common[b.x0+x])) / (closed * closed)
-			for k, w := range c.weight {
-				own -= w * c.noise.PhotonVariance * float64(b.predicted[k*n+x])
+			sum := (level - float64(p.common[b.x0+x])) / (closed * closed)
+			for k := range c.weight {
+				shared := c.noise.ThroughputErr[k] * float64(b.predicted[k*n+x])
+				sum -= shared * shared
 			}
-			level = own / c.sumWeight
+			b.own[x] = sum * closed * closed
+			for k, w := range c.weight {
+				sum -= w * c.noise.PhotonVariance * float64(b.predicted[k*n+x])
+			}
+			level = sum / c.sumWeight
 		}
 		for k, w := range c.weight {
 			b.variances[k*n+x] = float32(w * (level + c.noise.PhotonVariance*float64(b.predicted[k*n+x])))

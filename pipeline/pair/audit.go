@@ -104,6 +104,10 @@ func (m *matcher) audit(ctx context.Context, opts Options) (*Audit, error) {
 			owner[l.path] = l
 		}
 	}
+	if p := m.provisional; p != nil && p.spare != nil {
+		frames = append(frames, audit.Frame{Source: p.spare.source(-1), Start: p.spare.start})
+		owner[p.spare.path] = p.spare
+	}
 	report, err := audit.Run(ctx, m.seq, frames, audit.Options{
 		Pedestals: m.pedestals(), ScratchDir: opts.ScratchDir, Workers: opts.Workers, Progress: opts.AuditProgress,
 	})
@@ -111,6 +115,9 @@ func (m *matcher) audit(ctx context.Context, opts Options) (*Audit, error) {
 		return nil, fmt.Errorf("audit of the pairing: %w", err)
 	}
 	out := &Audit{Skipped: report.Skipped, Cycles: []AuditCycle{}}
+	if m.provisional != nil && !m.confirmed(report) {
+		return out, nil
+	}
 	for _, c := range report.Cycles {
 		out.Cycles = append(out.Cycles, m.describe(&c, !opts.AsLabelled))
 		if !opts.AsLabelled {
@@ -195,8 +202,14 @@ func (m *matcher) repair(c *audit.CycleReport, owner map[string]*label) {
 		l := owner[frame.Path]
 		step, paired := to[i]
 		switch {
+		case !paired && l.by == product.ByTime:
+			l.refuse(product.Extra, "the audit found no step that it serves")
 		case !paired:
 			l.verdict = product.WrongMask
+		case step != frame.Step && l.by == product.ByTime:
+			l.at, l.by = step, product.ByAudit
+			l.verdict = m.judge(l)
+			m.holders[step] = l
 		case step != frame.Step:
 			l.at, l.by, l.verdict = step, product.ByAudit, product.Relabelled
 			m.holders[step] = l
@@ -206,7 +219,7 @@ func (m *matcher) repair(c *audit.CycleReport, owner map[string]*label) {
 	}
 	// A wrong frame is shown in its step's row if no other frame is.
 	for i, frame := range c.Frames {
-		if _, paired := to[i]; !paired && frame.Step >= 0 && m.holders[frame.Step] == nil {
+		if _, paired := to[i]; !paired && frame.Step >= 0 && owner[frame.Path].verdict != product.Extra && m.holders[frame.Step] == nil {
 			m.holders[frame.Step] = owner[frame.Path]
 		}
 	}

@@ -120,6 +120,10 @@ func (m *matcher) deal(g *group) {
 	slices.SortStableFunc(frames, func(a, b *label) int {
 		return cmp.Or(a.start.Compare(b.start), cmp.Compare(a.name, b.name))
 	})
+	if m.provisional == nil && m.oneOff(g, frames) {
+		m.deferred(g, frames)
+		return
+	}
 	if !m.exchangeable(g.steps) && (len(frames) != len(g.steps) || !ordered(frames)) {
 		for _, l := range frames {
 			l.refuse(product.Extra, "%s", m.undecided(g, frames))

@@ -24,6 +24,9 @@
 //     kind and exposure, only if there are as many frames as steps (or the
 //     steps are alike) and all times differ.
 //
+//     With the audit, science frames of a single cycle may be one fewer or one more:
+//     it finds the place.
+//
 // What these rules leave undecided gets the verdict extra and a note; nothing is
 // guessed. Of several good frames of one step the one taken last holds it (a
 // frame is repeated because the first was not good); of equal or unknown times

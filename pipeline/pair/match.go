@@ -27,6 +27,9 @@ type matcher struct {
 	labels []*label
 	// holders has for each step the frame that is shown in its row, or nil.
 	holders []*label
+	// audits: the audit will look at the pairing, and may be left a question.
+	audits      bool
+	provisional *provisional
 }
 
 func newMatcher(dir string, seq *sequence.Sequence, labels []*label) *matcher {

@@ -98,6 +98,7 @@ func Run(ctx context.Context, seq *sequence.Sequence, opts Options, progress fun
 		return nil, err
 	}
 	m := newMatcher(opts.Night, seq, labels)
+	m.audits = opts.Audit && !opts.AsLabelled
 	if err := m.screen(); err != nil {
 		return nil, err
 	}

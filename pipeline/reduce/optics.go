@@ -187,7 +187,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	solution, err := calib.SolveArcs(r.optics.geometry, frames, r.arcRule())
 	var unknown *calib.ArcError
 	if errors.As(err, &unknown) {
-		r.nominal(err)
+		r.nominal(r.maskFault(frames, err))
 		return nil
 	}
 	if err != nil {
