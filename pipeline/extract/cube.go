@@ -2,6 +2,7 @@ package extract
 
 import (
 	"crypto/sha256"
+	"errors"
 	"fmt"
 	"path/filepath"
 	"slices"
@@ -12,6 +13,10 @@ import (
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 )
+
+// ErrGrid marks a cube whose wavelengths extract cannot place on the detector: not
+// linear, not in vacuum, or not as observed.
+var ErrGrid = errors.New("extract reads linear grids of vacuum wavelength in nm, as observed; reduce again with such a grid")
 
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
@@ -135,8 +140,12 @@ func (c *Cube) readGrid() error {
 	if err != nil {
 		return err
 	}
-	if kind != "WAVE" || unit != "nm" {
-		return fmt.Errorf("%s: the wavelength axis is %s in %s; extract reads linear grids of vacuum wavelength in nm: reduce without the recipe's other grid", c.Path(), kind, unit)
+	frame, err := c.signal.Header.Str("SPECSYS")
+	if err != nil {
+		return err
+	}
+	if kind != "WAVE" || unit != "nm" || frame != string(product.Topocentric) {
+		return fmt.Errorf("%s: the wavelength axis is %s in %s, %s: %w", c.Path(), kind, unit, frame, ErrGrid)
 	}
 	c.Grid.Count = c.signal.Planes()
 	if c.Grid.FirstNM, err = c.signal.Header.Float("CRVAL3"); err != nil {

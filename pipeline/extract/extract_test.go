@@ -152,6 +152,27 @@ func rescale(t *testing.T, from, to string, factor float32) {
 	require.NoError(t, fitsutil.WriteFile(to, f.HDUs()[0].Header, hdus...))
 }
 
+// A cube whose wavelengths are others says what it is and what to do.
+func TestOtherGridsRefused(t *testing.T) {
+	run := tinyRun(t, "m-sequence", 31, 8)
+	for _, c := range [][2]string{{"CTYPE3", "AWAV"}, {"CTYPE3", "WAVE-LOG"}, {"SPECSYS", "BARYCENT"}} {
+		other := filepath.Join(t.TempDir(), "cube.fits")
+		f, err := fitsutil.Open(filepath.Join(run, "cube.fits"))
+		require.NoError(t, err)
+		defer f.Close()
+		header := f.HDUs()[1].Header.Clone()
+		require.NoError(t, header.Set(c[0], c[1], ""))
+		axes := f.HDUs()[1].Axes
+		image := func(name string) *fitsutil.ImageData {
+			return &fitsutil.ImageData{Name: name, Header: header, Axes: axes, Data: make([]float32, axes[0]*axes[1]*axes[2])}
+		}
+		require.NoError(t, fitsutil.WriteFile(other, nil, image("SIGNAL"), image("VARIANCE"), image("FLAGS")))
+		_, err = extract.Open(other)
+		require.ErrorIs(t, err, extract.ErrGrid)
+		require.ErrorContains(t, err, c[1])
+	}
+}
+
 // Without a run, or with something else in its place, the error names the file.
 func TestOpenRefuses(t *testing.T) {
 	path := filepath.Join(t.TempDir(), "cube.fits")

@@ -19,13 +19,13 @@ type sumView struct {
 
 // addSums tells what adding voxels up does to errors, at the brightest place and at
 // one of blank sky: the first and the last of places. A cube that does not carry what
-// it takes, of an older version, gets no such section.
+// it takes, of an older version, or has another grid, gets no such section.
 func (p *page) addSums(ctx context.Context, cubePath string, places []place) error {
 	if len(places) == 0 {
 		return nil
 	}
 	c, err := extract.Open(cubePath)
-	if errors.Is(err, fitsutil.ErrMissingHDU) || errors.Is(err, fitsutil.ErrMissingCard) {
+	if errors.Is(err, fitsutil.ErrMissingHDU) || errors.Is(err, fitsutil.ErrMissingCard) || errors.Is(err, extract.ErrGrid) {
 		return nil
 	}
 	if err != nil {
