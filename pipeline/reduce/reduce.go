@@ -400,6 +400,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	}
 	err := report.Write(ctx, r.opts.Out, report.Input{
 		Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
+		Throughput: r.through.reportCurves(),
 	})
 	if err != nil {
 		return nil, err

@@ -41,6 +41,8 @@ type page struct {
 	Quality          []fact
 	Calibration      []fact
 	ErrorScale       template.HTML
+	Throughput       template.HTML
+	ThroughputFacts  []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
