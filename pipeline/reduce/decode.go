@@ -212,6 +212,9 @@ func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 	if len(d.scale.lost) > 0 {
 		d.fillLost(w, n)
 	}
+	if d.code.VarianceUniform() {
+		d.addExtra(w, s, at, n)
+	}
 }
 
 // fillLost puts the mean over the other slots into a lost one. What it is off
@@ -297,6 +300,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 			}
 		}
 	}
+	d.addExtra(w, s, at, n)
 	copy(w.smooth, w.variance)
 	d.code.Variance(w.variance, w.smooth, n, n, 0)
 	for j := range d.slots {
