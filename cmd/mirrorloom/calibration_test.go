@@ -172,7 +172,12 @@ func TestBrokenCalibrations(t *testing.T) {
 			exitDegraded, `flat field is not corrected.* LOWFLAT.*too little light`, low, 0, 0},
 		{"flats missing", func(b *broken) { b.remove(sequence.Flat, every) },
 			exitDegraded, `flat field is not corrected.* LOWFLAT.*there is no coded lamp frame; plan or repeat`, low, 0, 0},
-		{"flat cycle lacks two", func(b *broken) { b.remove(sequence.Flat, some(2, b.coded)) },
+		{"flat cycle lacks two, restored", func(b *broken) { b.remove(sequence.Flat, some(2, b.coded)) },
+			exitWhole, `^$`, 0, 0, nominal | low},
+		{"flat cycle lacks two, no repairs", func(b *broken) {
+			b.remove(sequence.Flat, some(2, b.coded))
+			b.recipe = b.write("repair: {use: off}")
+		},
 			exitDegraded, `flat field is not corrected.* LOWFLAT.*61 of 63 coded lamp frames are there; repeat step [0-9]+, [0-9]+, or`, low, 0, nominal},
 		{"flat cycle lacks most", func(b *broken) { b.remove(sequence.Flat, some(40, b.coded)) },
 			exitDegraded, `flat field is not corrected.* LOWFLAT.*23 of 63 coded lamp frames`, low, 0, nominal},

@@ -36,6 +36,8 @@ to name the flip, and the run to end with exit code 3.`,
 				}
 				if len(r.Degraded) > 0 && strings.Contains(strings.Join(r.Degraded, " "), "every mask flipped") {
 					named++
+				} else {
+					fmt.Fprintf(os.Stderr, "seed %d: %v\n", 400+seed, r.Degraded)
 				}
 				for _, folder := range []string{n.Frames(name), n.Run(name)} {
 					if err := os.RemoveAll(filepath.Clean(folder)); err != nil {

@@ -17,9 +17,11 @@
 //  1. By the STEP card. MASKID, KIND, EXPTIME, INSTRUME and the size must then
 //     agree with the step; a card that is not there is not checked, and the
 //     note says so.
+//
 //  2. Without STEP, by MASKID, KIND and EXPTIME among the steps that no frame
 //     holds yet. Steps that agree in all three are alike and exchangeable for
 //     the decoding: their frames are given out in the order of DATE-OBS.
+//
 //  3. Without MASKID, by the order of DATE-OBS among the steps of the frame's
 //     kind and exposure, only if there are as many frames as steps (or the
 //     steps are alike) and all times differ.

@@ -46,4 +46,7 @@ type ImageMotion struct {
 	XPx      Measured `json:"x_rms_px"`
 	YPx      Measured `json:"y_rms_px"`
 	FWHMPart Measured `json:"fwhm_rms"` // relative, of the width along the slit
+	// Slope is the rms of the throughput's slope, the difference between the ends of
+	// the band, beyond the error of a frame's, and that error.
+	Slope Measured `json:"slope_rms"`
 }

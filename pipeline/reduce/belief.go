@@ -45,8 +45,8 @@ func (b *belief) clone() *belief {
 }
 
 // times are the middles of the frames' exposures, from -0.5 in the first to 0.5 in
-// the last: by DATE-OBS where all have it, or else by the sequence's own times.
-func (r *reduction) times(frames []*exposure.Frame) []float64 {
+// the last, and in minutes since the first: by DATE-OBS where all have it, or else by the sequence's own times.
+func (r *reduction) times(frames []*exposure.Frame) (times, minutes []float64) {
 	at := r.plannedTimes()
 	t := make([]float64, len(frames))
 	starts := map[int]float64{}
@@ -66,7 +66,11 @@ func (r *reduction) times(frames []*exposure.Frame) []float64 {
 			t[k] = starts[f.Step] + r.seq.Steps[f.Step].ExptimeSeconds/2
 		}
 	}
-	return normalTimes(t)
+	minutes = make([]float64, len(t))
+	for k, x := range t {
+		minutes[k] = (x - slices.Min(t)) / 60
+	}
+	return normalTimes(t), minutes
 }
 
 // normalTimes brings times to -0.5..0.5.
@@ -104,6 +108,15 @@ const freeScale = 10.0
 // standard error, +Inf where a frame was not measured.
 type relative struct {
 	c, err []float64
+}
+
+// newRelative is one of n frames that were not measured.
+func newRelative(n int) *relative {
+	m := &relative{c: make([]float64, n), err: make([]float64, n)}
+	for k := range m.err {
+		m.err[k] = math.Inf(1)
+	}
+	return m
 }
 
 // e gives 1/c - 1 of the frames that were measured, c scaled to mean 1, with errors.

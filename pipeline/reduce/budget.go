@@ -79,7 +79,7 @@ func (s shape) stripRow() int64 {
 
 // window is the memory of decoded rows.
 func (s shape) window(rows int) int64 {
-	planes := s.elements + 10 // variances, pedestal, error scale, and the flags
+	planes := s.elements + 12 // variances, pedestal, error scale, and the flags
 	if !s.uniform {
 		planes += s.elements
 	}

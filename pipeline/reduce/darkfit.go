@@ -13,7 +13,7 @@ import (
 // darkFit measures the throughput of a night from its dark columns, cycle by cycle.
 // It adds up the sample first and fits then.
 type darkFit struct {
-	checks  *hadamard.Checks // of a whole cycle, blind to a pedestal
+	checks  *hadamard.Checks // of a whole cycle
 	cycles  []*cycle
 	sums    []cycleSums
 	excess  float64 // of photon noise
@@ -27,20 +27,22 @@ type darkFit struct {
 type cycleSums struct {
 	checks *hadamard.Checks // blind to the rows that are lost
 	gram   *hadamard.Gram
+	leak   *leakSums
 	// light is the sum of each row over the pixels that are good in all cycles.
 	light []float64
 }
 
-// newDarkFit makes a fit without readings.
+// newDarkFit makes a fit without readings. Throughput is measured by checks blind to a
+// pedestal, which the leak is.
 func newDarkFit(checks *hadamard.Checks, cycles []*cycle, excess float64, workers int) (*darkFit, error) {
 	d := &darkFit{checks: checks, cycles: cycles, sums: make([]cycleSums, len(cycles)), excess: excess, workers: workers}
 	v := checks.Code().V()
 	for i, c := range cycles {
-		own, err := checks.WithoutRows(c.lost())
+		all, err := checks.WithoutRows(c.lost())
 		if err != nil {
 			return nil, err
 		}
-		d.sums[i] = cycleSums{checks: own, gram: hadamard.NewGram(v), light: make([]float64, v)}
+		d.sums[i] = cycleSums{checks: all.WithoutPedestal(), gram: hadamard.NewGram(v), leak: newLeakSums(all), light: make([]float64, v)}
 	}
 	return d, nil
 }
@@ -63,6 +65,7 @@ func (d *darkFit) add(ctx context.Context, s *sample) error {
 		if err := d.addGram(ctx, &d.sums[i], b, s.pixels, c.lost()); err != nil {
 			return err
 		}
+		d.sums[i].leak.add(b, s)
 	}
 	if len(d.cycles) > 1 {
 		d.addLight(blocks, n)

@@ -55,6 +55,7 @@ func (d *decoder) judge(w *decodeWorker, out *decodedRow, x0, n int, q *blockQua
 		return
 	}
 	d.sumDark(w, out, x0, n)
+	d.sumAlong(w, out.along[x0:x0+n], n)
 	share := d.repair.darkShare()
 	blind := d.repair != nil && d.repair.pedestal
 	flags := out.flags[x0 : x0+n]
@@ -69,6 +70,10 @@ func (d *decoder) judge(w *decodeWorker, out *decodedRow, x0, n int, q *blockQua
 			continue
 		}
 		measured[p] = float32(square / (share * float64(g)))
+		if blind && p+1 < n {
+			out.along[x0+p] -= float32(mean * w.darkSum[p+1])
+		}
+		out.along[x0+p] /= float32(share * float64(g))
 		if blind {
 			pedestal[p] = float32(mean)
 		}
@@ -102,6 +107,18 @@ func (d *decoder) sumDark(w *decodeWorker, out *decodedRow, x0, n int) {
 	if d.code.VarianceUniform() {
 		for p, v := range out.variance[0][x0 : x0+n] {
 			variance[p] = float64(v) * float64(len(d.darkColumns))
+		}
+	}
+}
+
+// sumAlong sums the products of each pixel's dark decodes with those of the next pixel
+// of the block.
+func (d *decoder) sumAlong(w *decodeWorker, along []float32, n int) {
+	clear(along)
+	for _, column := range d.darkColumns {
+		row := w.decoded[column*n : (column+1)*n]
+		for p := 1; p < n; p++ {
+			along[p-1] += row[p-1] * row[p]
 		}
 	}
 }

@@ -78,7 +78,7 @@ func (d *decoder) newWorker() *decodeWorker {
 	}
 	if d.repair != nil {
 		w.pursuit = d.repair.pursuit.newWork(n)
-		if d.repair.restores() || d.neighbours != nil {
+		if d.repair.restores() || d.neighbours != nil || d.repair.weights != nil {
 			w.raw = make([]float32, d.slots*n)
 		}
 	}
@@ -155,6 +155,9 @@ func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int, q *blockQu
 	if d.repair == nil {
 		return
 	}
+	if d.repair.weights != nil {
+		d.repair.weights.Apply(w.decoded, n, n)
+	}
 	if d.repair.pursuit != nil {
 		q.doubtful = d.pursue(w, s, at, n, s.quiet[y-s.y0][x0:x0+n])
 		d.addFound(w, n)
@@ -211,6 +214,9 @@ func (d *decoder) load(w *decodeWorker, s *strip, at, n int) {
 	}
 	if len(d.scale.lost) > 0 {
 		d.fillLost(w, n)
+	}
+	if d.code.VarianceUniform() {
+		d.addExtra(w, s, at, n)
 	}
 }
 
@@ -297,6 +303,7 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 			}
 		}
 	}
+	d.addExtra(w, s, at, n)
 	copy(w.smooth, w.variance)
 	d.code.Variance(w.variance, w.smooth, n, n, 0)
 	for j := range d.slots {

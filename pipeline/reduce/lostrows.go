@@ -46,7 +46,7 @@ func (r *reduction) scienceRepair(d *decoder) {
 	var lack error
 	d.repair, lack = r.newRepair(d, r.roles.calibration.off)
 	if d.repair == nil && len(d.darkColumns) > 0 && r.opts.Recipe.Repair.Use != useOff {
-		r.warn("nothing is restored and no error scale measured: %v", lack)
+		r.warn("lost frames are not restored, no error scale is measured, and cosmic rays are looked for in single frames: %v", lack)
 	}
 	if d.repair != nil && lack == nil {
 		d.repair.pursuit = newPursuit(d.repair.left)

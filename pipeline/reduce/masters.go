@@ -115,11 +115,15 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 	if err != nil {
 		return nil, err
 	}
-	dark, err := p.stack(ctx, p.frames.dark, y0, y1, s.bad, y0)
+	faint := stacking{noise: math.Sqrt(p.camera.NoisiestVariance())}
+	dark, err := p.stackRows(ctx, p.frames.dark, y0, y1, s.bad, y0, faint)
 	if err != nil {
 		return nil, err
 	}
-	off, err := p.stack(ctx, p.frames.off, y0, y1, s.bad, y0)
+	// Hot pixels look like cosmic rays: where darks have told them, and all-off frames are
+	// too few to be compared, each is searched by itself.
+	faint.clean = dark != nil && len(p.frames.off) < fewestCompared
+	off, err := p.stackRows(ctx, p.frames.off, y0, y1, s.bad, y0, faint)
 	if err != nil {
 		return nil, err
 	}
@@ -134,10 +138,31 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 	return s, p.findDead(ctx, s, y0, y1)
 }
 
+// fewestCompared frames tell by comparison which of their samples are struck, if their
+// noise is known; fewestScattered tell their noise as well.
+const (
+	fewestCompared  = 3
+	fewestScattered = 5
+)
+
+// stacking is how frames are combined.
+type stacking struct {
+	// noise is that of a sample without light, electrons, for frames with little light,
+	// and serves where they are too few to tell; 0 for others.
+	noise float64
+	// clean takes cosmic rays out of each frame first.
+	clean bool
+}
+
 // stack takes the clipped mean of frames over rows y0..y1-1, in electrons
 // above the level; nil without frames. Pixels without a value are marked in
 // bad, whose first row is badY0.
 func (p *prepare) stack(ctx context.Context, frames []*exposure.Frame, y0, y1 int, bad []calib.Flag, badY0 int) ([]float32, error) {
+	return p.stackRows(ctx, frames, y0, y1, bad, badY0, stacking{})
+}
+
+// stackRows is stack, with a way to combine.
+func (p *prepare) stackRows(ctx context.Context, frames []*exposure.Frame, y0, y1 int, bad []calib.Flag, badY0 int, how stacking) ([]float32, error) {
 	if len(frames) == 0 {
 		return nil, nil
 	}
@@ -156,6 +181,12 @@ func (p *prepare) stack(ctx context.Context, frames []*exposure.Frame, y0, y1 in
 		if _, err := p.camera.Read(samples[i], frames[i].Image, y0, y1, &scratch[worker], mark); err != nil {
 			return err
 		}
+		if how.clean {
+			var err error
+			if samples[i], err = p.cleaned(frames[i], y0, y1, &scratch[worker]); err != nil {
+				return err
+			}
+		}
 		return p.album.Done(frames[i])
 	})
 	if err != nil {
@@ -165,6 +196,11 @@ func (p *prepare) stack(ctx context.Context, frames []*exposure.Frame, y0, y1 in
 	clip := calib.Clip{Sigmas: p.recipe.ClipSigma, Floor: 0.5}
 	columns := p.camera.Columns
 	err = parallel.Do(ctx, p.workers, y1-y0, func(_, row int) error {
+		clip := clip
+		if how.noise > 0 && len(frames) < fewestScattered {
+			level, _ := calib.RobustLevel(samples[0][row*columns:(row+1)*columns], make([]float32, columns))
+			clip.Noise = math.Sqrt(how.noise*how.noise + (1+p.camera.PhotonExcess)*max(0, level))
+		}
 		part := make([][]float32, len(samples))
 		for i := range samples {
 			part[i] = samples[i][row*columns : (row+1)*columns]

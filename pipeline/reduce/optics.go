@@ -195,7 +195,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	}
 	switch worst := r.worstError(solution); {
 	case !(worst < hopelessPx):
-		r.nominal(fmt.Errorf("the %d arc lines leave an error of %.2g px somewhere in the cube; use a lamp with lines all over the band", solution.Lines, worst))
+		r.nominal(r.maskFault(frames, fmt.Errorf("the %d arc lines leave an error of %.2g px somewhere in the cube; use a lamp with lines all over the band", solution.Lines, worst)))
 		return nil
 	case worst > figurePx:
 		r.warn("wavelengths are uncertain by %.2g px somewhere in the cube; use a lamp with lines all over the band", worst)

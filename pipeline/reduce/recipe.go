@@ -39,7 +39,8 @@ type Recipe struct {
 }
 
 // StageRecipe is a stage without options. The arc's `use` may also name the
-// cube.fits of another run, whose geometry is then taken.
+// cube.fits of another run, whose geometry is then taken, and the throughput's a table
+// of a monitor's fluxes, which then count with what the frames themselves tell.
 type StageRecipe struct {
 	Use string `yaml:"use"`
 }
@@ -127,7 +128,8 @@ func (r *Recipe) check(doc *config.Doc) error {
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
-	c.OneOf("throughput.use", r.Throughput.Use, useAuto, useOff)
+	c.That(r.Throughput.Use == useAuto || r.Throughput.Use == useOff || isTable(r.Throughput.Use), "throughput.use",
+		"%q is unknown; use auto, off, or a monitor's table (.csv or .fits) with the columns step, flux, error", r.Throughput.Use)
 	c.OneOf("repair.use", r.Repair.Use, useAuto, useOff)
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",

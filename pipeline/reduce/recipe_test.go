@@ -100,7 +100,7 @@ func FuzzRecipe(f *testing.F) {
 }
 
 // The recipe "nominal" takes the profile's word for wavelengths, trace and response, and
-// the frames as steady.
+// the frames as steady and whole.
 func TestNominalRecipe(t *testing.T) {
 	r, err := LoadRecipe("nominal")
 	require.NoError(t, err)
@@ -110,6 +110,7 @@ func TestNominalRecipe(t *testing.T) {
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Flat)
 	require.NotEqual(t, want.SHA, r.SHA)
 	require.Equal(t, StageRecipe{Use: "auto"}, want.Throughput)
+	require.Equal(t, StageRecipe{Use: "auto"}, want.Repair)
 	want.Arc.Use, want.Flat.Use, want.Throughput.Use, want.Repair.Use = "off", "off", "off", "off"
 	want.SHA, want.Name = r.SHA, r.Name
 	require.Equal(t, want, r)

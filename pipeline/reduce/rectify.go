@@ -40,6 +40,7 @@ const group = 16
 type rectifyWorker struct {
 	signal, variance  []float32 // a straightened row
 	scale, applied    []float32 // times variance, straightened
+	coherent          []float32 // the same, of errors that pixels share
 	flags             calib.RowFlags
 	edges             []float64
 	before            []float32
@@ -47,7 +48,7 @@ type rectifyWorker struct {
 	scales            []float32
 	bits              []calib.Flag
 	signals, vars     [][]float32 // one element's rows in the window
-	scaleRows         [2][][]float32
+	scaleRows         [3][][]float32
 	bitRows           [][]calib.Flag
 }
 
@@ -80,7 +81,7 @@ func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, wor
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
 			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
-			scale: make([]float32, s.columns), applied: make([]float32, s.columns),
+			scale: make([]float32, s.columns), applied: make([]float32, s.columns), coherent: make([]float32, s.columns),
 			edges:  make([]float64, grid.Count+1),
 			before: make([]float32, grid.Count),
 			voxels: make([]float32, group*grid.Count), variances: make([]float32, group*grid.Count),

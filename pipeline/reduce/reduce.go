@@ -295,12 +295,21 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		w.pixelVariance = r.writePixelVariance
 	}
 	w.reader.restore = d.repair != nil
+	if w.reader.edges, err = r.edges(ctx, d); err != nil {
+		return 0, err
+	}
+	w.reader.scale = &d.scale
 	if err := w.run(ctx); err != nil {
 		return 0, err
 	}
 	var flags int16
 	r.quality, flags = sum(w.quality, s.elements*s.rows*s.voxels, d.repair != nil && d.repair.pursuit != nil)
 	r.samples = w.samples
+	if w.reader.edges != nil {
+		hits := w.reader.edges.count()
+		r.quality.Hits = &hits
+		r.quality.Restored += hits
+	}
 	r.repairQuality(w)
 	r.judge(flags)
 	return r.stripBytes(s), nil
@@ -400,6 +409,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	}
 	err := report.Write(ctx, r.opts.Out, report.Input{
 		Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
+		Throughput: r.through.reportCurves(),
 	})
 	if err != nil {
 		return nil, err

@@ -1,6 +1,9 @@
 package reduce
 
 import (
+	"math"
+	"slices"
+
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 )
@@ -19,6 +22,9 @@ type repair struct {
 	// lost restores the code rows that have no frame; nil where it cannot be done. With
 	// all rows at hand it has none to restore.
 	lost *hadamard.LostRows
+	// weights decode slots of unequal depth better than the plain inverse, by more than
+	// worthwhileGain; nil where that is not so.
+	weights *hadamard.Reweighting
 	// left are the checks that lost rows leave.
 	left *hadamard.Checks
 	// pursuit finds samples that cosmic rays struck; nil where that is not asked for.
@@ -54,17 +60,61 @@ func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedest
 	for i := range scale.quiet {
 		p.share = append(p.share, seen.At(i, i))
 	}
-	if p.lost, lack = p.restorer.Lost(scale.lost, scale.quiet); lack != nil || len(scale.lost) == 0 {
+	if p.lost, lack = p.restorer.Lost(scale.lost, scale.quiet); lack != nil {
 		return p, lack
+	}
+	ratio := p.lost.Ratio
+	if weighted, ok := p.weigh(checks, scale); ok {
+		ratio = weighted
+	}
+	if p.weights == nil && len(scale.lost) == 0 {
+		return p, nil
 	}
 	p.meanRatio = 0
 	for _, column := range elements {
-		p.meanRatio += p.lost.Ratio[column] / float64(len(elements))
+		p.meanRatio += ratio[column] / float64(len(elements))
 	}
 	for _, column := range elements {
-		p.byElement = append(p.byElement, float32(p.lost.Ratio[column]/p.meanRatio))
+		p.byElement = append(p.byElement, float32(ratio[column]/p.meanRatio))
 	}
 	return p, nil
+}
+
+// worthwhileGain in variance is what weights must promise: their own cost is g
+// multiplications a voxel.
+const worthwhileGain = 1.02
+
+// weigh prepares weights where slots hold different numbers of frames and it is worth
+// while, and gives what then becomes of Ratio. A pedestal would pass through the
+// weights, so that there are none where the dark columns have to find it.
+func (p *repair) weigh(checks *hadamard.Checks, scale *slotScale) (ratio []float64, ok bool) {
+	if p.pedestal {
+		return nil, false
+	}
+	noise := slices.Clone(scale.quiet)
+	low, high := math.Inf(1), 0.0
+	for row := range noise {
+		if scale.isLost(row) {
+			noise[row] = math.Inf(1)
+			continue
+		}
+		low, high = min(low, noise[row]), max(high, noise[row])
+	}
+	// Variances that differ by the frames' factors alone gain nothing.
+	const differ = 1.2
+	if high < differ*low {
+		return nil, false
+	}
+	w, err := checks.Reweight(noise)
+	if err != nil || p.lost.Growth < worthwhileGain*w.Growth {
+		return nil, false
+	}
+	p.weights = w
+	v := float64(len(noise))
+	for _, growth := range w.ColumnGrowth {
+		ratio = append(ratio, growth*v/(v-float64(len(scale.lost))))
+	}
+	return ratio, true
 }
 
 // restores tells whether lost rows are restored in every pixel.
@@ -92,10 +142,14 @@ func (d *decoder) lostFlag() int16 {
 // bears tells whether a pixel with so many struck samples is to be restored.
 func (p *repair) bears(struck int) bool { return p != nil && p.lost != nil && struck <= p.most }
 
-// darkShare is the expected sum of squared dark decodes over g times the variance.
+// darkShare is the expected sum of squared dark decodes over g times the variance of
+// the elements. Weights change the latter alone.
 func (p *repair) darkShare() float64 {
-	if p == nil || p.lost == nil {
+	switch {
+	case p == nil || p.lost == nil:
 		return 1
+	case p.weights != nil:
+		return p.lost.DarkShare * p.lost.Growth / p.weights.Growth
 	}
 	return p.lost.DarkShare
 }

@@ -212,6 +212,57 @@ func TestRestoreStruckSamples(t *testing.T) {
 	}
 }
 
+// Slots of unequal depth are weighed where that gains more than 2 % of the variance, and
+// the variance says what was gained; beside a lost row as well. Equal ones are not.
+func TestUnequalDepth(t *testing.T) {
+	const v, g, columns = 63, 16, 3000
+	for _, lost := range [][]int{nil, {30}} {
+		c := newRepairCase(t, v, g, columns, lost)
+		slots := make([][]*exposure.Frame, v)
+		for i := range slots {
+			switch {
+			case slices.Contains(lost, i):
+			case i%2 == 0:
+				slots[i] = []*exposure.Frame{{}}
+			default:
+				slots[i] = []*exposure.Frame{{}, {}, {}, {}, {}, {}}
+			}
+		}
+		c.decoder.scale = newSlotScale(slots, nil)
+		require.True(t, c.prepare(t))
+		require.NotNil(t, c.decoder.repair.weights)
+		plain, err := c.decoder.repair.restorer.Lost(lost, c.decoder.scale.quiet)
+		require.NoError(t, err)
+		require.Greater(t, plain.Growth/c.decoder.repair.weights.Growth, worthwhileGain)
+		c.constant(900)
+		sum, square, n, _, q := c.pulls()
+		// As for struck samples; the elements of a pixel share part of their errors.
+		require.InDelta(t, 0, sum/float64(n), 0.02)
+		require.InDelta(t, 1, math.Sqrt(square/float64(n)), 0.02)
+		require.InDelta(t, 1, q.dark.square/q.dark.variance, 0.03)
+	}
+	c := newRepairCase(t, v, g, columns, nil)
+	require.True(t, c.prepare(t))
+	require.Nil(t, c.decoder.repair.weights)
+}
+
+// constant draws samples of the same light in each step, which decodes to 1/k of itself
+// and is what the elements are compared with; with it taken off as the level.
+func (c *repairCase) constant(level float32) {
+	d := c.decoder
+	clear(c.light)
+	for p := range d.columns {
+		c.strip.off[p], c.strip.level[p] = level, level
+	}
+	for i := range d.slots {
+		for p := range d.columns {
+			frames := math.Sqrt(1 / max(d.scale.quiet[i], 1e-9))
+			noise := math.Sqrt(float64(level)+repairReadNoise*repairReadNoise) / frames
+			c.strip.slot(i)[p] = level + float32(noise*c.draw.NormFloat64())
+		}
+	}
+}
+
 // Without frames of the light that comes without open mirrors, the mean of the dark
 // decodes stands for it, and lost rows are restored all the same.
 func TestPedestalFromDarkColumns(t *testing.T) {

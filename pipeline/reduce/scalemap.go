@@ -37,7 +37,7 @@ func newRowScale(row *decodedRow) rowScale {
 		r.all.add(one)
 		r.coarse[x*scaleColumns/len(row.scale)].add(one)
 		r.most = max(r.most, one.sum)
-		if row.applied[x] != 1 {
+		if row.applied[x] != 1 || row.coherent[x] != 0 {
 			r.applied++
 		}
 	}

@@ -18,6 +18,7 @@ type strip struct {
 	raw             []float32    // [slot][row][column]
 	flags           []calib.Flag // [row][column]
 	struck          []calib.Flag // what is wrong with the pixel's struck samples, 0 without any
+	extra           []extraNoise // of stand-ins for struck samples, by pixel
 	base            []float32    // bias and dark current of an exposure
 	off             []float32    // all-off light to be taken off it
 	level           []float32    // dark current and all-off light of an exposure
@@ -73,6 +74,10 @@ type stripReader struct {
 	// restore: struck samples are marked one by one, rather than their pixel flagged.
 	restore bool
 	struck  [][]struckSample // by worker
+	// edges are struck samples to be replaced, nil where they are not looked for in single
+	// frames; scale is how frames make samples.
+	edges edgeHits
+	scale *slotScale
 }
 
 // read fills s with rows y0..y1-1.
@@ -90,7 +95,7 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 		defer mu.Unlock()
 		r.camera.Merge(s.flags, y0, flags, x, y, w)
 	}
-	return parallel.Do(ctx, r.workers, len(r.slots), func(worker, i int) error {
+	err := parallel.Do(ctx, r.workers, len(r.slots), func(worker, i int) error {
 		for n, f := range r.slots[i] {
 			if err := r.readFrame(s, i, n, f, worker, merge); err != nil {
 				return err
@@ -100,6 +105,10 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 		divide(s.slot(i), len(r.slots[i]))
 		return nil
 	})
+	if err != nil {
+		return err
+	}
+	return r.standIns(ctx, s)
 }
 
 // readFrame adds frame n of slot i, times its factor, to the slot.

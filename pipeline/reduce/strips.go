@@ -312,6 +312,7 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	for x, v := range row.variance[0] {
 		row.scale[x] *= v
 		row.applied[x] *= v
+		row.coherent[x] *= v
 	}
 }
 

@@ -23,9 +23,13 @@ type decodedRow struct {
 	// pedestal is the mean of the dark decodes, where it is to be taken off, and level
 	// what was taken off.
 	pedestal, level []float32
-	// scale is the error scale, and applied that by which the variance is to be
-	// multiplied.
-	scale, applied []float32
+	// along is, by column, the mean product of its dark decodes and those of the next
+	// column, in the units of measured.
+	along []float32
+	// scale is the error scale q. applied is by what the variance is multiplied as that
+	// of independent pixels, and coherent what is added, in units of it, for errors that
+	// neighbouring pixels share: see scaleErrors.
+	scale, applied, coherent []float32
 }
 
 func newDecodedRow(elements, variances, columns int) *decodedRow {
@@ -36,6 +40,7 @@ func newDecodedRow(elements, variances, columns int) *decodedRow {
 		measured: make([]float32, columns), expected: make([]float32, columns),
 		pedestal: make([]float32, columns), level: make([]float32, columns),
 		scale: make([]float32, columns), applied: make([]float32, columns),
+		coherent: make([]float32, columns), along: make([]float32, columns),
 	}
 }
 

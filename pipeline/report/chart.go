@@ -6,6 +6,7 @@ import (
 	"html/template"
 	"image/color"
 	"math"
+	"strings"
 
 	"gonum.org/v1/plot"
 	"gonum.org/v1/plot/plotter"
@@ -120,6 +121,13 @@ func roundTicks(low, high float64) []plot.Tick {
 	return all
 }
 
+// labelled replaces what a chart is called where it cannot be seen.
+func labelled(chart template.HTML, label string) template.HTML {
+	return template.HTML(strings.Replace(string(chart), spectrumLabel, label, 1))
+}
+
+const spectrumLabel = "Spectrum with errors"
+
 // runs gives the stretches of good voxels, first and last inclusive.
 func (s *spectrum) runs() [][2]int {
 	var runs [][2]int
@@ -192,5 +200,5 @@ func inline(file []byte) (template.HTML, error) {
 	if start < 0 || box < start {
 		return "", fmt.Errorf("internal error: a chart is no SVG with a view box")
 	}
-	return template.HTML(`<svg class="chart" role="img" aria-label="Spectrum with errors" ` + string(file[box:])), nil
+	return template.HTML(`<svg class="chart" role="img" aria-label="` + spectrumLabel + `" ` + string(file[box:])), nil
 }

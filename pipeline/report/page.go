@@ -40,6 +40,9 @@ type page struct {
 	Ledger           ledgerView
 	Quality          []fact
 	Calibration      []fact
+	ErrorScale       template.HTML
+	Throughput       template.HTML
+	ThroughputFacts  []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
@@ -62,7 +65,7 @@ func newPage(in Input) *page {
 	p := &page{
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
-		Ledger: viewLedger(in.Ledger), Quality: qualityFacts(in.Run.Quality), Calibration: calibrationFacts(in.Run.Calibration),
+		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: calibrationFacts(in.Run.Calibration),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")

@@ -22,6 +22,8 @@ type Input struct {
 	// Degraded says why the exit code is 3, a clause each. Clauses that
 	// Run.Warnings repeats are shown once.
 	Degraded []string
+	// Throughput is that of the science frames, by each method and by all together.
+	Throughput []Curve
 }
 
 // Write writes report.html into the folder runDir, whose cube.fits is whole. A
@@ -45,6 +47,9 @@ func Write(ctx context.Context, runDir string, in Input) error {
 // assemble gathers all that the page shows.
 func assemble(ctx context.Context, runDir string, in Input) (*page, error) {
 	p := newPage(in)
+	if err := p.addThroughput(in); err != nil {
+		return nil, err
+	}
 	c, err := openCube(filepath.Join(runDir, product.CubeFile))
 	if errors.Is(err, fs.ErrNotExist) {
 		return p, nil

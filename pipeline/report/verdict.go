@@ -42,7 +42,7 @@ func judge(in Input, what string) verdict {
 	default:
 		v.Headline = fmt.Sprintf("The %s is whole and its errors hold.", what)
 	}
-	v.Trust = []string{framesSentence(in.Ledger), goodSentence(in.Run.Quality), chi2Sentence(chi2), waveSentence(in.Run.Quality), throughputSentence(in.Run.Quality)}
+	v.Trust = []string{framesSentence(in.Ledger), goodSentence(in.Run.Quality), chi2Sentence(chi2), waveSentence(in.Run.Quality), throughputSentence(in.Run)}
 	for _, w := range in.Degraded {
 		v.Look = append(v.Look, sentence(w))
 	}
@@ -151,13 +151,9 @@ func waveSentence(q product.Quality) string {
 	return fmt.Sprintf("Wavelengths come from arc frames, whose lines agree within %.3f pixel rms.", *q.WavelengthRMSPx)
 }
 
-func throughputSentence(q product.Quality) string {
-	if q.ThroughputRMS == nil {
+func throughputSentence(run *product.Run) string {
+	if run.Throughput == nil {
 		return "The throughput of the frames was not measured: each counts the same."
 	}
-	text := fmt.Sprintf("The throughput of the frames varied by %s rms and was corrected", percent(*q.ThroughputRMS))
-	if q.ThroughputErr != nil {
-		text += fmt.Sprintf(", each with an error of %s", percent(*q.ThroughputErr))
-	}
-	return text + "."
+	return sentence(run.Throughput.Verdict)
 }
