@@ -32,6 +32,8 @@ type LeakRule struct {
 	// Structure and Beyond are rms relative to e, Fall is that of the variances: sizes
 	// that are possible.
 	Structure, Beyond, Fall []float64
+	// Model is the part of e that it may be wrong by whatever the data say.
+	Model float64
 	// Clip as in ColourRule.
 	Clip float64
 }
@@ -39,10 +41,11 @@ type LeakRule struct {
 // DefaultLeakRule: mirrors leak alike within some 20 % over a device (common practice,
 // no source), twice as well or badly. Mirrors outside the field may be the field's equals
 // but for the 3 % that slit function and efficiency make. Six orders follow two periods
-// over the field; what is finer averages out over the elements in a pixel.
+// over the field; what is finer averages out over the elements in a pixel, but for the
+// 1 % by which e scatters on rehearsed nights where noise plays no part.
 func DefaultLeakRule() LeakRule {
 	return LeakRule{
-		Degree: 2, Orders: 6, BeyondOrder: 2, Clip: 6,
+		Degree: 2, Orders: 6, BeyondOrder: 2, Clip: 6, Model: 0.01,
 		Structure: []float64{0.05, 0.1, 0.2, 0.4}, Beyond: []float64{0.03, 0.1, 0.3}, Fall: []float64{0, 1},
 	}
 }

@@ -37,7 +37,9 @@ func (f *LeakFit) Solve() (*ColourTerm, error) {
 	for i, logarithm := range weights {
 		weights[i] = math.Exp(logarithm - top)
 	}
-	return mixedTerm(terms, weights, widest.Chi2), nil
+	e := mixedTerm(terms, weights, widest.Chi2)
+	e.Covariance.SymRankOne(e.Covariance, f.rule.Model*f.rule.Model, mat.NewVecDense(len(e.Coef), e.Coef))
+	return e, nil
 }
 
 // sizes are all combinations where e is e0, the widest last.
