@@ -64,8 +64,11 @@ func (n *Night) Audit(ctx context.Context, name string, opts pair.Options) (*Aud
 			a.Wrong, a.Missed = append(a.Wrong, label), append(a.Missed, label)
 		default:
 			a.Wrong = append(a.Wrong, label)
-			// Only frames that were labelled wrongly can serve another step.
-			if usable := f.Labelled > 0 && f.Shown == 0 && !f.Flipped && !f.Inverted; usable != (e.Verdict == product.Relabelled) || usable && e.Step != shows {
+			// A frame that was labelled wrongly has to serve the step that it shows; a
+			// stale one may, where that step's own frame is wrong too.
+			whole := !f.Flipped && !f.Inverted
+			used := e.Verdict == product.Relabelled
+			if used && (e.Step != shows || !whole) || !used && whole && f.Labelled > 0 && f.Shown == 0 {
 				a.Mistaken = append(a.Mistaken, label)
 			}
 		}

@@ -148,6 +148,24 @@ func (n *Night) Drift(ctx context.Context, seed uint64, faults ...rehearse.Fault
 	return d, nil
 }
 
+// DriftOnly rehearses and reduces such a night for its throughput alone.
+func (n *Night) DriftOnly(ctx context.Context, seed uint64, faults ...rehearse.Fault) (*ThroughputErrors, error) {
+	recipe, err := reduce.LoadRecipe(n.recipe())
+	if err != nil {
+		return nil, err
+	}
+	recipe.Throughput.Use = "auto"
+	defer os.RemoveAll(n.Frames(Noisy))
+	defer os.RemoveAll(n.Run(Noisy))
+	if err := n.Rehearse(ctx, Noisy, rehearse.Options{Seed: seed, NoTruth: true, Faults: faults}); err != nil {
+		return nil, err
+	}
+	if _, err := n.Reduce(ctx, Noisy, reduce.Options{Cube: true, Recipe: recipe}); err != nil {
+		return nil, err
+	}
+	return n.Throughput(Noisy)
+}
+
 // recipe is the name of the recipe that suits the field.
 func (n *Night) recipe() string {
 	if n.Field.Imperfect {

@@ -41,6 +41,7 @@ func checks() []check {
 		calibratedNight("optical", "demo", "demo", 500.824),
 		calibratedNight("infrared", "demo-infrared", "demo-infrared", 1644.0),
 		lampTerms(),
+		throughput(),
 		faintNight(),
 		cosmicRays(),
 		enclosedFlux(),

@@ -251,7 +251,7 @@ func (h *hunt) finish() {
 // pardon takes back erased frames that show their own row's mask after all, once the
 // others' faults are gone.
 func (h *hunt) pardon(label map[int]int) {
-	for again := true; again; {
+	for again, tries := true, 0; again && tries <= h.v; tries++ {
 		again = false
 		for k, off := range h.state.erased {
 			m := h.state.from[k]
@@ -274,7 +274,7 @@ func (h *hunt) pardon(label map[int]int) {
 // settle lists the frames that moved, and puts back those that the odds no longer speak
 // for, once the others' faults are gone.
 func (h *hunt) settle(label map[int]int) {
-	for again := true; again; {
+	for again, tries := true, 0; again && tries <= h.v; tries++ {
 		again, h.findings = false, nil
 		for k, m := range h.state.from {
 			if m == none || h.state.erased[k] || label[m] == k {
@@ -295,19 +295,24 @@ func (h *hunt) settle(label map[int]int) {
 // the state back has it.
 func (h *hunt) moved(label map[int]int, frame, k int) (f Finding, back *state) {
 	f = Finding{Kind: Moved, Frame: frame, Row: label[frame], Shows: k, LogOdds: math.Inf(1)}
+	// The frames that changed places, from row to row; each leaves before any returns.
+	var circle []int
 	from := slices.Clone(h.state.from)
-	round := 0
-	for at := k; round < h.v; round++ {
+	for at := k; len(circle) < h.v; {
 		m := h.state.from[at]
 		if m == none || h.state.erased[at] {
-			from[at] = none
 			break
 		}
-		from[label[m]] = m
+		circle = append(circle, m)
+		from[at] = none
 		if at = label[m]; at == k {
 			break
 		}
 	}
+	for _, m := range circle {
+		from[label[m]] = m
+	}
+	round := len(circle) - 1
 	if round == 1 {
 		f.Kind = Exchanged
 	}

@@ -31,15 +31,17 @@ func dropStruck(y, s2 []float32, pixels, stride int, basis *mat.Dense) (dropped 
 	}
 	u := basis.RawMatrix()
 	x, r, z := make([]float64, v*struckChunk), make([]float64, g*struckChunk), make([]float64, v*struckChunk)
-	variance := make([]float64, struckChunk)
+	variance, light := make([]float64, struckChunk), make([]float64, struckChunk)
 	for p0 := 0; p0 < pixels; p0 += struckChunk {
 		n := min(struckChunk, pixels-p0)
 		clear(variance)
+		clear(light)
 		for k := range v {
 			at := k*stride + p0
 			for p := range n {
 				x[k*n+p] = float64(y[at+p])
 				variance[p] += float64(s2[at+p]) / float64(v)
+				light[p] += float64(y[at+p]) / float64(v)
 			}
 		}
 		general := func(data []float64, rows int) blas64.General {
@@ -48,7 +50,7 @@ func dropStruck(y, s2 []float32, pixels, stride int, basis *mat.Dense) (dropped 
 		blas64.Gemm(blas.NoTrans, blas.NoTrans, 1, u, general(x, v), 0, general(r, g))
 		blas64.Gemm(blas.Trans, blas.NoTrans, 1, u, general(r, g), 0, general(z, v))
 		for p := range n {
-			if isStruck(r[p:], z[p:], share, n, g, variance[p]) {
+			if isStruck(r[p:], z[p:], share, n, g, variance[p], light[p]) {
 				y[p0+p] = nan32
 				dropped++
 			}
@@ -57,9 +59,9 @@ func dropStruck(y, s2 []float32, pixels, stride int, basis *mat.Dense) (dropped 
 	return dropped
 }
 
-// isStruck looks at a pixel of a mean variance: r are its checks, z their projection
-// on each frame, both at every stride-th place.
-func isStruck(r, z, share []float64, stride, g int, variance float64) bool {
+// isStruck looks at a pixel of a mean variance and light: r are its checks, z their
+// projection on each frame, both at every stride-th place.
+func isStruck(r, z, share []float64, stride, g int, variance, light float64) bool {
 	if !(variance > 0) { // or NaN
 		return false
 	}
@@ -74,8 +76,14 @@ func isStruck(r, z, share []float64, stride, g int, variance float64) bool {
 		}
 	}
 	rest := max(variance, (chi2-worst)/float64(g-1))
-	return worst > struckRatio*rest
+	unsteady := likelyThroughput * light
+	return worst > struckRatio*min(rest, variance+unsteady*unsteady)
 }
+
+// likelyThroughput: what stands out by six times so much of a pixel's light is no
+// throughput, however little stands out beside it: two hits hide each other from the mean
+// of the other checks.
+const likelyThroughput = 0.1
 
 // leastShare is the part of a frame's variance in the checks from which it is judged:
 // rows that were lost have none.
