@@ -221,12 +221,10 @@ func (r *reduction) newTerms(code *hadamard.Code) *terms {
 	slope := &termTable{first: math.Floor(first), values: make([]float32, int((last-math.Floor(first))*termSteps)+2)}
 	grid := r.schema.Grid
 	start, end := grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)
-	const beyond = 1.0 // the slope is not taken further than so many bands
 	for i := range slope.values {
 		s := slope.first + float64(i)/termSteps
 		nm := t.geometry.Wavelength(s, t.geometry.J_c, t.geometry.Y_c-t.geometry.TraceShift(s))
-		w := max(-beyond, min(beyond, (nm-(start+end)/2)/(end-start)))
-		if w == w { // light of no wavelength has none
+		if w := (nm - (start+end)/2) / (end - start); w == w { // light of no wavelength has none
 			slope.values[i] = float32(w)
 		}
 	}
