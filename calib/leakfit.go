@@ -29,17 +29,25 @@ type LeakRule struct {
 	Degree int
 	// Orders are the highest of P over elements and rows, BeyondOrder that of t.
 	Orders, BeyondOrder int
-	// Structure and Beyond are rms, relative to e.
-	Structure, Beyond float64
+	// Structure and Beyond are rms relative to e, Fall is that of the variances: sizes
+	// that are possible.
+	Structure, Beyond, Fall []float64
+	// Model is the part of e that it may be wrong by whatever the data say.
+	Model float64
 	// Clip as in ColourRule.
 	Clip float64
 }
 
 // DefaultLeakRule: mirrors leak alike within some 20 % over a device (common practice,
-// no source). Six orders follow two periods over the field; what is finer averages out
-// over the elements in a pixel.
+// no source), twice as well or badly. Mirrors outside the field may be the field's equals
+// but for the 3 % that slit function and efficiency make. Six orders follow two periods
+// over the field; what is finer averages out over the elements in a pixel, but for the
+// 1 % by which e scatters on rehearsed nights where noise plays no part.
 func DefaultLeakRule() LeakRule {
-	return LeakRule{Degree: 2, Orders: 6, BeyondOrder: 2, Structure: 0.2, Beyond: 0.2, Clip: 6}
+	return LeakRule{
+		Degree: 2, Orders: 6, BeyondOrder: 2, Clip: 6, Model: 0.01,
+		Structure: []float64{0.05, 0.1, 0.2, 0.4}, Beyond: []float64{0.03, 0.1, 0.3}, Fall: []float64{0, 1},
+	}
 }
 
 // LeakFrame describes what the rows of a LeakFit have in common.
@@ -64,10 +72,11 @@ type LeakRow struct {
 	// Light is that of the elements, as in ColourFit.AddRow; nil for a row that no
 	// mirror reaches, which tells of levels alone.
 	Light [][]float32
-	// Before and After are how many elements' widths of mirrors lie outside the field
-	// below element 0 and above the last. Their light is taken to be the end
-	// elements', shifted along x.
-	Before, After float64
+	// Before and After are, by column, how many elements' worth of mirrors lie outside
+	// the field below element 0 and above the last; nil for none. Their light is taken
+	// to be the end elements', shifted along x. Where that would have to come from past
+	// the detector's ends, pixels are left out.
+	Before, After []float64
 	// Amplifier is, by column, the index of the amplifier that reads it.
 	Amplifier []uint8
 }
@@ -105,6 +114,8 @@ func NewLeakFit(rule LeakRule, frame LeakFrame, shape *ColourTerm) (*LeakFit, er
 		return nil, fmt.Errorf("leak fit: %d elements on %d columns", frame.Elements, frame.Columns)
 	case rule.Degree < 0 || rule.Orders < 0 || rule.BeyondOrder < 0 || frame.LevelRows < 1:
 		return nil, fmt.Errorf("leak fit: degree %d, orders %d and %d, levels of %d rows", rule.Degree, rule.Orders, rule.BeyondOrder, frame.LevelRows)
+	case len(rule.Structure) < 1 || len(rule.Beyond) < 1 || len(rule.Fall) < 1:
+		return nil, errors.New("leak fit: no size of the structures")
 	case len(frame.LevelSigma) < 1:
 		return nil, errors.New("leak fit: no amplifier")
 	}

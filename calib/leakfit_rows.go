@@ -13,6 +13,7 @@ func (f *LeakFit) AddRow(row LeakRow) {
 	regressors, shares := f.regressors(&row)
 	use, clipped := usablePixels(f.rule.Clip, row.Term, row.Variance, row.Flags, regressors[0])
 	f.clips += clipped
+	f.blind(&row, use)
 	weights := smoothWeights(row.Variance, use)
 	m := len(regressors)
 	normal, right := make([]float64, m*m), make([]float64, m)
@@ -120,8 +121,8 @@ func (f *LeakFit) addField(row *LeakRow, r [][]float64, add func(...share) []flo
 			}
 		})
 	}
-	for side, width := range []float64{row.Before, row.After} {
-		if width <= 0 {
+	for side, width := range [][]float64{row.Before, row.After} {
+		if !(most(width) > 0) {
 			continue
 		}
 		var list []share
@@ -163,31 +164,98 @@ func (f *LeakFit) shapeAt(l float64) float64 {
 	return max(value/f.shape.Coef[0], 0)
 }
 
-// addBeyond adds mirrors outside the field, width elements wide, below (side 0) or
-// above it: the mean of the elements at that end, each shifted to their place.
-func (f *LeakFit) addBeyond(r [][]float64, row *LeakRow, width float64, side int, sum []float64) {
+// most is the largest number, 0 of none.
+func most(list []float64) float64 {
+	top := 0.0
+	for _, v := range list {
+		top = max(top, v)
+	}
+	return top
+}
+
+// addBeyond adds mirrors outside the field, width elements wide at each column, below
+// (side 0) or above it: the mean of the elements at that end, each shifted to their
+// place.
+func (f *LeakFit) addBeyond(r [][]float64, row *LeakRow, width []float64, side int, sum []float64) {
 	n := min(endElements, f.frame.Elements)
 	out := float64(2*side - 1)
 	end := float64(side * (f.frame.Elements - 1))
 	beyond := make([]float32, f.frame.Columns)
-	for done := 0.0; done < width; done++ {
-		part := min(1, width-done)
-		away := done + 0.5 + part/2 // of their middle from the end element's
+	for done, top := 0.0, most(width); done < top; done++ {
+		away := done + 0.5 + min(1, top-done)/2 // of their middle from the end element's
 		clear(beyond)
 		for m := range n {
-			from := m + side*(f.frame.Elements-1-2*m)
-			addShifted(beyond, row.Light[from], -out*(away+float64(m))*f.frame.Geometry.X_e, 1/float64(n))
+			addShifted(beyond, row.Light[f.endElement(side, m)], -out*(away+float64(m))*f.frame.Geometry.X_e, 1/float64(n))
 		}
-		f.addMirrors(r, row.Y, end+out*away, part, beyond, func(x int, v float64) { sum[x] += v })
+		for x := range beyond {
+			beyond[x] *= float32(min(1, max(0, width[x]-done)))
+		}
+		f.addMirrors(r, row.Y, end+out*away, 1, beyond, func(x int, v float64) { sum[x] += v })
 	}
 }
 
-// priors are the variances of the unknowns, 0 where nothing is known before. e0 is e
-// at L_c, roughly.
-func (f *LeakFit) priors(e0 float64) []float64 {
+// endElement is the element m places from the end at a side.
+func (f *LeakFit) endElement(side, m int) int { return m + side*(f.frame.Elements-1-2*m) }
+
+// edgeColumns at each end of the detector tell whether light goes on beyond it, edgeLit
+// how much of the row's mean is light: well above the noise of so few pixels, and too
+// little to matter.
+const (
+	edgeColumns = 4
+	edgeLit     = 0.05
+)
+
+// blind leaves out pixels for which addBeyond would have to look past the detector's
+// end, where the end elements' light goes on.
+func (f *LeakFit) blind(row *LeakRow, use []bool) {
+	if row.Light == nil {
+		return
+	}
+	n := min(endElements, f.frame.Elements)
+	for side, width := range [][]float64{row.Before, row.After} {
+		top := most(width)
+		if !(top > 0) {
+			continue
+		}
+		reach := min(int(math.Ceil((top+0.5+float64(n))*math.Abs(f.frame.Geometry.X_e))), len(use))
+		dark := use[len(use)-reach:]
+		if side == 1 == (f.frame.Geometry.X_e > 0) { // they look towards lower x
+			dark = use[:reach]
+		}
+		if f.lightGoesOn(row, side, n, &dark[0] == &use[0]) {
+			clear(dark)
+		}
+	}
+}
+
+// lightGoesOn tells whether n elements at a side are lit at the detector's first (low) or
+// last columns.
+func (f *LeakFit) lightGoesOn(row *LeakRow, side, n int, low bool) bool {
+	edge, whole := 0.0, 0.0
+	for m := range n {
+		light := row.Light[f.endElement(side, m)]
+		columns := min(edgeColumns, len(light))
+		from := len(light) - columns
+		if low {
+			from = 0
+		}
+		for _, v := range light[from : from+columns] {
+			edge += float64(v) / float64(columns)
+		}
+		for _, v := range light {
+			whole += float64(v) / float64(len(light))
+		}
+	}
+	return edge > edgeLit*whole
+}
+
+// sizes are those that LeakRule lists, structure and beyond in the units of e.
+type sizes struct{ structure, beyond, fall float64 }
+
+// priors are the variances of the unknowns, 0 where nothing is known before.
+func (f *LeakFit) priors(s sizes) []float64 {
 	all := make([]float64, f.unknowns())
-	// Structure shrinks with the order as that of a smooth field.
-	size := func(a, b int) float64 { return 1 / (1 + float64(a*a+b*b)) }
+	size := func(a, b int) float64 { return math.Pow(1+float64(a*a+b*b), -s.fall) }
 	sum := 0.0
 	for a := range f.rule.Orders + 1 {
 		for b := range f.rule.Orders + 1 {
@@ -199,7 +267,7 @@ func (f *LeakFit) priors(e0 float64) []float64 {
 	for a := range f.rule.Orders + 1 {
 		for b := range f.rule.Orders + 1 {
 			if a+b > 0 {
-				all[f.structureAt(a, b)] = math.Pow(f.rule.Structure*e0, 2) * size(a, b) / sum
+				all[f.structureAt(a, b)] = s.structure * s.structure * size(a, b) / sum
 			}
 		}
 	}
@@ -209,7 +277,7 @@ func (f *LeakFit) priors(e0 float64) []float64 {
 	}
 	for side := range 2 {
 		for b := range f.rule.BeyondOrder + 1 {
-			all[f.beyondAt()+side*(f.rule.BeyondOrder+1)+b] = math.Pow(f.rule.Beyond*e0, 2) * size(0, b) / sum
+			all[f.beyondAt()+side*(f.rule.BeyondOrder+1)+b] = s.beyond * s.beyond * size(0, b) / sum
 		}
 	}
 	for block := range f.blocks {

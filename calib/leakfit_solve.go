@@ -3,35 +3,87 @@ package calib
 import (
 	"fmt"
 	"math"
+	"slices"
 
+	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/mat"
 )
 
 // Solve gives e(L); an error wrapping ErrNoLight where the rows do not fix it.
 //
 // A first solution without any structure tells how large e is, and so how large the
-// structure may be. Where the fit then is worse than the noise (Chi2 above 1), what
-// the variances lack counts as noise as well.
+// structure may be. Where the fit with the widest structures is worse than the noise (Chi2
+// above 1), what the variances lack counts as noise as well.
 func (f *LeakFit) Solve() (*ColourTerm, error) {
 	if f.pixels <= f.certain() || !(f.light > 0) {
 		return nil, fmt.Errorf("leak fit: %w: %d pixels", ErrNoLight, f.pixels)
 	}
-	rough, err := f.solve(0, 1)
+	rough, _, err := f.solve(sizes{}, 1)
 	if err != nil {
 		return nil, err
 	}
-	size := math.Abs(rough.Coef[0])
-	term, err := f.solve(size, 1)
-	if err != nil || term.Chi2 <= 1 {
-		return term, err
+	all := f.sizes(math.Abs(rough.Coef[0]))
+	widest, _, err := f.solve(all[len(all)-1], 1)
+	if err != nil {
+		return nil, err
 	}
-	return f.solve(size, term.Chi2)
+	terms, weights := make([]*ColourTerm, len(all)), make([]float64, len(all))
+	for i, s := range all {
+		if terms[i], weights[i], err = f.solve(s, max(1, widest.Chi2)); err != nil {
+			return nil, err
+		}
+	}
+	top := slices.Max(weights)
+	for i, logarithm := range weights {
+		weights[i] = math.Exp(logarithm - top)
+	}
+	e := mixedTerm(terms, weights, widest.Chi2)
+	e.Covariance.SymRankOne(e.Covariance, f.rule.Model*f.rule.Model, mat.NewVecDense(len(e.Coef), e.Coef))
+	return e, nil
 }
 
-// solve takes noise to be widen times as large in variance as stated, and structures
-// to be relative to e = size. Unknowns that are known to be 0 are left out.
-func (f *LeakFit) solve(size, widen float64) (*ColourTerm, error) {
-	priors := f.priors(size)
+// sizes are all combinations where e is e0, the widest last.
+func (f *LeakFit) sizes(e0 float64) []sizes {
+	var all []sizes
+	for _, fall := range f.rule.Fall {
+		for _, s := range f.rule.Structure {
+			for _, b := range f.rule.Beyond {
+				all = append(all, sizes{structure: s * e0, beyond: b * e0, fall: fall})
+			}
+		}
+	}
+	return all
+}
+
+// mixedTerm is the weighted mean of terms, its covariance that of their mixture.
+func mixedTerm(terms []*ColourTerm, weights []float64, chi2 float64) *ColourTerm {
+	n := len(terms[0].Coef)
+	out := *terms[0]
+	out.Coef, out.Covariance, out.Chi2 = make([]float64, n), mat.NewSymDense(n, nil), chi2
+	total := floats.Sum(weights)
+	for i, t := range terms {
+		floats.AddScaled(out.Coef, weights[i]/total, t.Coef)
+	}
+	for i, t := range terms {
+		off := make([]float64, n)
+		floats.SubTo(off, t.Coef, out.Coef)
+		out.Covariance.AddSym(out.Covariance, scaledSym(weights[i]/total, t.Covariance))
+		out.Covariance.SymRankOne(out.Covariance, weights[i]/total, mat.NewVecDense(n, off))
+	}
+	return &out
+}
+
+func scaledSym(factor float64, m *mat.SymDense) *mat.SymDense {
+	var out mat.SymDense
+	out.ScaleSym(factor, m)
+	return &out
+}
+
+// solve takes noise to be widen times as large in variance as stated. Unknowns that are
+// known to be 0 are left out. logarithm is that of how likely s makes the data, but for a
+// constant.
+func (f *LeakFit) solve(s sizes, widen float64) (term *ColourTerm, logarithm float64, err error) {
+	priors := f.priors(s)
 	var list []int
 	for u, p := range priors {
 		if p > 0 || u < f.certain() && f.normal.At(u, u) > 0 {
@@ -53,22 +105,28 @@ func (f *LeakFit) solve(size, widen float64) (*ColourTerm, error) {
 	}
 	var factor mat.Cholesky
 	if !factor.Factorize(normal) || factor.Cond() > 1e13 {
-		return nil, fmt.Errorf("leak fit: %w: %d pixels do not fix it", ErrNoLight, f.pixels)
+		return nil, 0, fmt.Errorf("leak fit: %w: %d pixels do not fix it", ErrNoLight, f.pixels)
 	}
 	var solution mat.VecDense
 	var inverse mat.SymDense
 	if err := factor.SolveVecTo(&solution, right); err != nil {
-		return nil, fmt.Errorf("leak fit: %w", err)
+		return nil, 0, fmt.Errorf("leak fit: %w", err)
 	}
 	if err := factor.InverseTo(&inverse); err != nil {
-		return nil, fmt.Errorf("leak fit: %w", err)
+		return nil, 0, fmt.Errorf("leak fit: %w", err)
 	}
-	for a := range list {
+	// The data's density, with all unknowns integrated out.
+	logarithm = -factor.LogDet() / 2
+	for a, u := range list {
+		logarithm += solution.AtVec(a)*right.AtVec(a)/2 + math.Log(scale[a])
+		if priors[u] > 0 {
+			logarithm -= math.Log(priors[u]) / 2
+		}
 		solution.SetVec(a, solution.AtVec(a)*scale[a])
 	}
-	term := f.term(&solution, func(k, l int) float64 { return inverse.At(k, l) * scale[k] * scale[l] })
+	term = f.term(&solution, func(k, l int) float64 { return inverse.At(k, l) * scale[k] * scale[l] })
 	term.Chi2 = f.chi2(&solution, list)
-	return term, nil
+	return term, logarithm, nil
 }
 
 // knowledge is an element of the inverse covariance: from the data and from before.

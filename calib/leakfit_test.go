@@ -93,7 +93,7 @@ func (n *leakNight) fit(t *testing.T, rng *rand.Rand, shape *ColourTerm) *Colour
 	require.NoError(t, err)
 	mean := n.mean()
 	for y := 0; y < n.rows; y += 2 {
-		row := LeakRow{Y: y, Amplifier: owner, Before: n.before, After: n.after}
+		row := LeakRow{Y: y, Amplifier: owner, Before: everyColumn(n.before, n.columns), After: everyColumn(n.after, n.columns)}
 		row.Term, row.Variance = n.term(y, mean, rng)
 		if frame.Coded[y] {
 			row.Light = n.row(y, 37, rng)
@@ -103,6 +103,14 @@ func (n *leakNight) fit(t *testing.T, rng *rand.Rand, shape *ColourTerm) *Colour
 	e, err := fit.Solve()
 	require.NoError(t, err)
 	return e
+}
+
+func everyColumn(v float64, columns int) []float64 {
+	list := make([]float64, columns)
+	for x := range list {
+		list[x] = v
+	}
+	return list
 }
 
 // Contrast within 3 % with an error that holds, whatever the structure of the leak: N =
@@ -145,6 +153,7 @@ func TestLeakFitRefuses(t *testing.T) {
 		func(_ *LeakRule, f *LeakFrame) { f.LevelSigma = nil },
 		func(_ *LeakRule, f *LeakFrame) { f.LevelRows = 0 },
 		func(r *LeakRule, _ *LeakFrame) { r.Degree = -1 },
+		func(r *LeakRule, _ *LeakFrame) { r.Beyond = nil },
 	} {
 		rule, frame := DefaultLeakRule(), good
 		change(&rule, &frame)

@@ -148,8 +148,11 @@ func (f *Field) ErrorScaleFindings(ctx context.Context, name, dir string, seed u
 // its lines tell the throughput. What is left of the leak is by how much it shifts the
 // constant of a line through cube against truth, in units of the field's mean; the slope
 // loses what off mirrors send of each element's own light, and is the lamp flat's to find.
-func (f *Field) LeakFindings(ctx context.Context, name, dir string, seed uint64, allOff bool) ([]Finding, error) {
+func (f *Field) LeakFindings(ctx context.Context, name, dir string, seeds []uint64, allOff bool) ([]Finding, error) {
 	f.leakScene()
+	// The estimator takes off what the all-off frames' noise adds to the square of their
+	// light: these nights have none, so many frames make it small.
+	f.Target.AllOffEvery = 2
 	if !allOff {
 		f.Target.AllOffEvery = 0
 	}
@@ -157,40 +160,51 @@ func (f *Field) LeakFindings(ctx context.Context, name, dir string, seed uint64,
 	if err != nil {
 		return nil, err
 	}
-	var residual, slopes [2]float64
+	var left, own, slopes Moments
 	var count int
 	var by product.ResidualLight
-	for i, faults := range [][]string{{"drift=0.05"}, {"drift=0.05", "leak=0.002"}} {
-		night := []string{Twin, Noisy}[i]
-		if err := n.RehearseFaults(ctx, night, rehearse.Options{Seed: seed, Noiseless: true}, faults...); err != nil {
-			return nil, err
+	for _, seed := range seeds {
+		var residual, slope [2]float64
+		for i, faults := range [][]string{{"drift=0.05"}, {"drift=0.05", "leak=0.002"}} {
+			night := []string{Twin, Noisy}[i]
+			if err := n.Discard(night); err != nil {
+				return nil, err
+			}
+			if err := n.RehearseFaults(ctx, night, rehearse.Options{Seed: seed, Noiseless: true}, faults...); err != nil {
+				return nil, err
+			}
+			result, err := n.Correct(ctx, night, "auto", "auto")
+			if err != nil {
+				return nil, err
+			}
+			by = result.Run.Quality.ResidualLight
+			cube, err := ReadCube(n.CubePath(night))
+			if err != nil {
+				return nil, err
+			}
+			truth, err := cube.ReadTruth(n.TruthPath(night))
+			if err != nil {
+				return nil, err
+			}
+			var constant, mean float64
+			slope[i], constant, mean, count = linesThrough(cube, truth)
+			residual[i] = constant / mean
 		}
-		result, err := n.Correct(ctx, night, "auto", "auto")
-		if err != nil {
-			return nil, err
-		}
-		by = result.Run.Quality.ResidualLight
-		cube, err := ReadCube(n.CubePath(night))
-		if err != nil {
-			return nil, err
-		}
-		truth, err := cube.ReadTruth(n.TruthPath(night))
-		if err != nil {
-			return nil, err
-		}
-		slope, constant, mean, good := lineThrough(cube, truth)
-		residual[i], slopes[i], count = constant/mean, slope, good
+		left.Add(residual[1] - residual[0])
+		own.Add(residual[0])
+		slopes.Add(slope[1] / slope[0])
 	}
 	what := fmt.Sprintf("%s, light taken off by %s", name, by)
 	list := []Finding{
-		Stated(what+": slope of cube against truth, over that without leak", slopes[1]/slopes[0], count),
-		Stated(what+": what the throughput's own error leaves, in the field's mean", residual[0], count),
+		Stated(what+": slope of cube against truth, over that without leak", slopes.Mean(), count),
+		Stated(what+": what the throughput's own error leaves, in the field's mean, scatter over the nights", own.Std(), len(seeds)),
+		Stated(what+": left of the leak, scatter over the nights", left.Std(), len(seeds)),
 	}
-	left := residual[1] - residual[0]
+	const mean = ": left of the leak, in the field's mean, mean of the nights"
 	if allOff {
-		return append(list, Near(what+": left of the leak, in the field's mean", left, 0, 1e-4, 0, count)), nil
+		return append(list, Near(what+mean, left.Mean(), 0, 1e-4, left.Std()/math.Sqrt(float64(len(seeds))), len(seeds))), nil
 	}
-	return append(list, Stated(what+": left of the leak, in the field's mean", left, count)), nil
+	return append(list, Stated(what+mean, left.Mean(), len(seeds))), nil
 }
 
 // leakScene brightens the sky, widens the device and puts a star beyond the field.
@@ -210,20 +224,30 @@ func (f *Field) leakScene() {
 	f.Scene.Sources = append(f.Scene.Sources, star)
 }
 
-// lineThrough fits cube = slope truth + constant to the good voxels.
-func lineThrough(c *Cube, truth []float32) (slope, constant, mean float64, n int) {
-	var x, y, xx, xy float64
-	for i, t := range truth {
-		if !c.Good(i) || t != t {
+// linesThrough fits cube = slope truth + constant to the good voxels of each element, since
+// what a mirror leaks when it is off is missing from what opening it adds, and leaks have
+// structure over the elements. It gives the means over the elements, the mean of truth and
+// the number of voxels.
+func linesThrough(c *Cube, truth []float32) (slope, constant, mean float64, n int) {
+	elements := c.N
+	used := 0.0
+	for j := range elements {
+		var x, y, xx, xy, m float64
+		for i := j; i < len(truth); i += elements {
+			if t := truth[i]; c.Good(i) && t == t {
+				a, b := float64(t), float64(c.Signal[i])
+				x, y, xx, xy, m = x+a, y+b, xx+a*a, xy+a*b, m+1
+			}
+		}
+		if m < 2 || xx*m <= x*x {
 			continue
 		}
-		a, b := float64(t), float64(c.Signal[i])
-		x, y, xx, xy = x+a, y+b, xx+a*a, xy+a*b
-		n++
+		own := (xy - x*y/m) / (xx - x*x/m)
+		slope, constant, mean = slope+own, constant+(y-own*x)/m, mean+x/m
+		n += int(m)
+		used++
 	}
-	m := float64(n)
-	slope = (xy - x*y/m) / (xx - x*x/m)
-	return slope, (y - slope*x) / m, x / m, n
+	return slope / used, constant / used, mean / used, n
 }
 
 // AllFaultsFindings make a night of the field with everything the dark columns are there

@@ -189,6 +189,11 @@ func (p *propagator) addSums(w *part, light [][]float32, pixels *pixelRow) {
 			}
 		}
 		p.c.decoder.Decode(w.sumSamples, w.sumWeights, w.n, w.n)
+		for x, e := range w.b.erased {
+			if e != nil {
+				e.reweigh(p.c.erased.projector, w.sumSamples[x:], w.n)
+			}
+		}
 		for k := range p.c.noise.V {
 			for x, h := range w.sumSamples[k*w.n : (k+1)*w.n] {
 				w.sums[s] += float64(w.b.variances[k*w.n+x]) * float64(h) * float64(h)

@@ -60,6 +60,9 @@ func (k *coupling) at(dst [][]float64, b *block, x int, own func(slot int) float
 			dst[a][e], dst[e][a] = v, v
 		}
 	}
+	if e := b.erased[x]; e != nil {
+		e.couple(dst, k.decoder.Code(), k.columns, b.white[x])
+	}
 }
 
 // sum is sum_k A_jk A_j'k s_k^2, from the definition.

@@ -34,6 +34,7 @@ type Cube struct {
 	sky                        *sky
 	geometry                   calib.Geometry
 	noise                      *product.Noise
+	erased                     *erasures // nil where no sample was restored
 	decoder                    *hadamard.Decoder
 	columns                    []int     // code column of each element
 	weight                     []float64 // 1/frames of each code row
@@ -123,6 +124,9 @@ func (c *Cube) read() (err error) {
 		return err
 	}
 	c.SHA = c.identify()
+	if err := c.readErasures(); err != nil {
+		return err
+	}
 	return c.readGeometry()
 }
 

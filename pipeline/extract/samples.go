@@ -2,6 +2,7 @@ package extract
 
 // pixelRow is the variances of a detector row.
 type pixelRow struct {
+	y int
 	// own is the variance of decoded elements, [slot of the aperture's elements][column],
 	// or [0][column] where all elements of a pixel have the same; common is the part
 	// of it that all elements share.
@@ -14,7 +15,7 @@ func (p *pixelRow) of(slot int) []float32 { return p.own[min(slot, len(p.own)-1)
 
 // readPixels reads the row y of PIXELVAR.
 func (c *Cube) readPixels(y int) (*pixelRow, error) {
-	p := &pixelRow{common: make([]float32, c.noise.Columns), plane: make([]float32, c.noise.Columns)}
+	p := &pixelRow{y: y, common: make([]float32, c.noise.Columns), plane: make([]float32, c.noise.Columns)}
 	for i, dst := range [][]float32{p.plane, p.common} {
 		if err := c.pixelVariance.ReadPlaneRows(dst, i, y, y+1); err != nil {
 			return nil, err
@@ -34,6 +35,10 @@ type block struct {
 	predicted, variances []float32
 	light                []float32 // of each code column
 	own                  []float64 // what variances make of every element, where all are the same
+	// erased are the pixels' restored samples, nil for none; white is the mean variance
+	// of a sample there.
+	erased []*erasure
+	white  []float64
 }
 
 // blockPixels are worked on together.
@@ -45,14 +50,16 @@ const blockPixels = 256
 //	s_k^2 = weight_k (level + photon variance * (W f)_k),
 //
 // with the level of each pixel such that the samples add up to what PIXELVAR says. What
+// Of a pixel with restored samples PIXELVAR says 1 + tr(Q)/v times as much. What
 // PIXELVAR holds for the errors of the throughput, sum (error_k (W f)_k)^2, is taken out:
 // all pixels share those errors, see addThroughput.
 func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 	v, n := c.noise.V, b.n
 	if len(b.light) != v*n {
 		b.light, b.predicted, b.variances = make([]float32, v*n), make([]float32, v*n), make([]float32, v*n)
-		b.own = make([]float64, n)
+		b.own, b.white = make([]float64, n), make([]float64, n)
 	}
+	b.erased = c.erased.row(p.y, b.x0, n)
 	clear(b.light)
 	for j, column := range c.columns {
 		copy(b.light[column*n:(column+1)*n], light[j][b.x0:b.x0+n])
@@ -68,6 +75,10 @@ func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 				sum -= shared * shared
 			}
 			b.own[x] = sum * closed * closed
+			if e := b.erased[x]; e != nil {
+				sum /= 1 + e.trace/float64(v)
+			}
+			b.white[x] = sum / float64(v)
 			for k, w := range c.weight {
 				sum -= w * c.noise.PhotonVariance * float64(b.predicted[k*n+x])
 			}

@@ -7,6 +7,7 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/instrument"
 )
 
 // lampTerms fits the neighbour term and the leak to lamp frames, row by row of the
@@ -18,6 +19,8 @@ type lampTerms struct {
 	// their frames with variances; nil where a kind of frame is missing.
 	neighbour, leak *calib.Exposure
 	leakRows        []leakRow // by detector row
+	beyond          *beyondField
+	profile         *instrument.Profile
 	leakFrame       calib.LeakFrame
 	amplifier       [][]uint8 // by detector row, of each column
 
@@ -34,6 +37,7 @@ func (r *reduction) newLampTerms(ctx context.Context, m *wholeMasters) (*lampTer
 			return nil, err
 		}
 		t.leakRows = r.leakRows()
+		t.beyond, t.profile = newBeyondField(r.seq), r.seq.Profile
 		t.leakFrame = r.leakFrame(len(l.off))
 		t.amplifier = r.camera.AmplifierOf()
 	}
@@ -127,10 +131,12 @@ func (t *lampTerms) addRow(row *decodedRow) {
 	if e, at := t.leak, t.leakRows; t.leakFit != nil && at[row.y].use {
 		own := calib.LeakRow{
 			Y: row.y, Term: e.Signal[a:b], Variance: e.Variance[a:b], Flags: e.Flags[a:b],
-			Before: at[row.y].before, After: at[row.y].after, Amplifier: t.amplifier[row.y],
+			Amplifier: t.amplifier[row.y],
 		}
 		if at[row.y].lit {
 			own.Light = row.signal
+			own.Before, own.After = make([]float64, t.columns), make([]float64, t.columns)
+			t.beyond.row(own.Before, own.After, t.profile, &t.leakFrame.Geometry, row.y)
 		}
 		t.leakFit.AddRow(own)
 	}

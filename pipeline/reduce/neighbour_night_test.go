@@ -79,13 +79,13 @@ func TestNeighbourGhosts(t *testing.T) {
 	}
 }
 
-// The neighbour term and the contrast of N = 5 noisy nights, the leak with its structure
-// of 20 %: their errors hold, and their means are true. One night more leaks a hundredth, which
-// dims the decoded light by as much, and has no neighbour term: there the contrast is
-// held to 3 %, but not to its error.
+// The neighbour term and the contrast of N = 3 noisy nights, the leak with its structure
+// of 20 %: their errors hold. The last leaks a hundredth, which dims the decoded light by as
+// much, and has no neighbour term; there the structure is all that blurs the contrast.
+// Means over more nights are make validate's.
 func TestLampTermsMeasured(t *testing.T) {
-	const nights, strong, d = 6, 1, 0.01
-	var neighbour, contrast, ratios trial.Sample
+	const nights, strong, d = 3, 1, 0.01
+	var neighbour, contrast trial.Sample
 	for seed := range nights {
 		leak, faults := 3e-4, []rehearse.Fault{{Name: rehearse.Neighbour, Size: d}}
 		if seed >= nights-strong {
@@ -101,26 +101,19 @@ func TestLampTermsMeasured(t *testing.T) {
 		require.NoError(t, err)
 		require.Len(t, r.Run.Calibration.Contrast, 5)
 		for _, at := range r.Run.Calibration.Contrast {
-			limit := 0.06 // of one wavelength of a night: the means have to be better
-			if seed >= nights-strong {
-				limit = 0.03
-			}
-			require.InEpsilon(t, 1/leak, at.Value, limit)
+			require.InEpsilon(t, 1/leak, at.Value, 0.03)
+			require.Less(t, at.Error, 0.03*at.Value)
 		}
+		// The five wavelengths' errors go together: the middle stands for all.
+		c := r.Run.Calibration.Contrast[2]
+		contrast.Add((c.Value - 1/leak) / c.Error)
 		if seed < nights-strong {
-			// The five wavelengths' errors go together: the middle stands for all.
-			c := r.Run.Calibration.Contrast[2]
-			contrast.Add((c.Value - 1/leak) / c.Error)
-			ratios.Add(c.Value * leak)
 			at := r.Run.Calibration.Neighbour[2]
 			neighbour.Add((at.Value - d*at.WavelengthNM/f.Profile.Spectrograph.CenterNM) / at.Error)
 		}
 	}
-	t.Logf("pulls of d: %v; of the contrast: %v; contrast over the truth's: %v", &neighbour, &contrast, &ratios)
+	t.Logf("pulls of d: %v; of the contrast: %v", &neighbour, &contrast)
 	for _, pulls := range []*trial.Sample{&neighbour, &contrast} {
-		require.Less(t, pulls.RMS(), 1.5)
-		require.Less(t, math.Abs(pulls.Mean()), 5*pulls.StandardError())
+		require.Less(t, pulls.RMS(), 2.0)
 	}
-	require.InDelta(t, 1, ratios.Mean(), 0.03)
-	require.Less(t, 5*ratios.StandardError(), 0.03)
 }

@@ -1,7 +1,9 @@
 package reduce
 
 import (
+	"cmp"
 	"fmt"
+	"slices"
 
 	"mirrorloom/pipeline/product"
 )
@@ -31,6 +33,9 @@ func (r *reduction) finishRestored() error {
 	if len(list) == 0 {
 		return nil
 	}
+	slices.SortFunc(list, func(a, b restoredSample) int {
+		return cmp.Or(cmp.Compare(a.line, b.line), cmp.Compare(a.column, b.column), cmp.Compare(a.row, b.row))
+	})
 	s := product.Restored{X: make([]int32, len(list)), Y: make([]int32, len(list)), CodeRow: make([]int32, len(list))}
 	for i, one := range list {
 		s.X[i], s.Y[i], s.CodeRow[i] = int32(one.column), int32(one.line), int32(one.row)
