@@ -350,14 +350,11 @@ func TestKnownLines(t *testing.T) {
 		s[k] = 0.1 * m.rng.NormFloat64()
 		mean += s[k] / v
 	}
-	m.expose(nil)
-	clean := slices.Clone(m.y) // decodes to the light without the term
-	decoded, weights := make([]float32, v*pixels), weightBlock(v, pixels, lineWeight)
-	m.decoder.Decode(decoded, clean, pixels, pixels)
-	for i := range weights {
-		weights[i] *= decoded[i]
-	}
 	m.withTerm(lineWeight, s, 10)
+	weights := weightBlock(v, pixels, lineWeight)
+	for i := range weights {
+		weights[i] *= m.light[i]
+	}
 	m.expose(nil)
 	g, err := NewTermGram(m.checks, m.decoder, 1)
 	require.NoError(t, err)
