@@ -34,7 +34,6 @@ type hits struct {
 	size      []float32 // of the neighbour term
 	slope     []float32
 	residual  []float64
-	total     []float64 // added to the readings of rows
 	repair    hadamard.Repair
 }
 
