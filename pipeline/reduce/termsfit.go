@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"context"
+	"fmt"
 	"math"
 
 	"go.uber.org/zap"
@@ -19,14 +20,17 @@ const (
 	// stand above what noise gives, after the throughput alone, for terms to be looked
 	// for.
 	termSigmas = 5
-	// termSampleWork bounds v^2 x pixels of their sample, for a second or so; its error is
-	// that of a reading over the root of pixels x g/v.
-	termSampleWork = 50_000_000
+	// termSampleWork bounds v^2 x pixels of their sample, for a few seconds where they are
+	// looked for; its error is that of a reading over the root of pixels x g/v, and with a
+	// fifth of it the halves of 16 dark columns do not tell a slope of 10 % on the demo.
+	termSampleWork = 250_000_000
 	leastTermPixel = 512
 	// mostTermRows bounds the code's size: the fit solves for three times as many
 	// unknowns.
-	mostTermRows = 511
-	termPasses   = 2
+	mostTermRows = 255
+	// termBytes a reading are held: readings, variances, light twice, decode and weights.
+	termBytes  = 4 * (5 + termCount)
+	termPasses = 2
 )
 
 // troubled tells whether the dark columns stand away from zero after what was done.
@@ -50,8 +54,13 @@ func (r *reduction) measureTerms(ctx context.Context, t *throughput, before *bel
 	if err != nil {
 		return err
 	}
+	pixels := min(samplePixels, r.camera.Columns*r.camera.Rows, max(leastTermPixel, termSampleWork/(v*v*len(t.dark.cycles))))
+	unknowns := int64(1+termCount) * int64(v)
+	samples := int64(v) * int64(pixels) * int64(len(t.dark.cycles))
+	if need := fitMatrices*8*unknowns*unknowns + termBytes*samples + runtimeBytes; need > r.opts.MemoryBytes {
+		return fmt.Errorf("--memory of %d MiB is too little to look for what varies apart from the throughput of %d code rows; give at least %d MiB, or say `throughput: {use: off}` in the recipe", r.opts.MemoryBytes>>20, v, need>>20+1)
+	}
 	f := &termsFit{reduction: r, through: t, terms: r.newTerms(code), before: before, joint: &darkResult{belief: before.clone(), kept: true}}
-	pixels := max(leastTermPixel, termSampleWork/(v*v*len(t.dark.cycles)))
 	if err := r.codedSampler(r.correction.offset, pixels).each(ctx, f.add); err != nil {
 		return err
 	}
