@@ -2,6 +2,7 @@ package hadamard
 
 import (
 	"math"
+	"slices"
 	"sort"
 
 	"gonum.org/v1/gonum/mat"
@@ -108,15 +109,27 @@ func (eq *normalEquations) measured() *mat.SymDense {
 	n, v := len(eq.d), eq.size
 	kinds := n / v
 	unit := mat.NewDense(n, n, nil)
+	scale := slices.Clone(eq.scale)
+	for a := range kinds {
+		if own := scale[a*v : a*v+v]; noiseless(own) {
+			for i := range own {
+				own[i] = 1
+			}
+		}
+	}
 	for i := range n {
 		for j := range n {
-			if s := eq.scale[i] * eq.scale[j]; s > 0 {
+			if s := scale[i] * scale[j]; s > 0 {
 				unit.Set(i, j, eq.h.At(i, j)/s)
 			}
 		}
 	}
 	kept := make([]*mat.Dense, kinds) // projectors
 	for a := range kinds {
+		if noiseless(eq.scale[a*v : a*v+v]) { // its light is known: all of H is measured
+			kept[a] = identity(v)
+			continue
+		}
 		kept[a] = above(symmetric(mat.DenseCopyOf(unit.Slice(a*v, a*v+v, a*v, a*v+v))), eq.edge)
 	}
 	out := mat.NewSymDense(n, nil)
@@ -127,7 +140,7 @@ func (eq *normalEquations) measured() *mat.SymDense {
 			for i := range v {
 				for j := range v {
 					if a < b || i <= j {
-						out.SetSym(a*v+i, b*v+j, block.At(i, j)*eq.scale[a*v+i]*eq.scale[b*v+j])
+						out.SetSym(a*v+i, b*v+j, block.At(i, j)*scale[a*v+i]*scale[b*v+j])
 					}
 				}
 			}
@@ -135,6 +148,9 @@ func (eq *normalEquations) measured() *mat.SymDense {
 	}
 	return out
 }
+
+// noiseless tells a kind of light without noise.
+func noiseless(scale []float64) bool { return slices.Max(scale) == 0 }
 
 // above is the projector on the eigenvectors of a symmetric matrix whose eigenvalues
 // exceed an edge.

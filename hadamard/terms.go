@@ -23,6 +23,7 @@ type TermGram struct {
 	*Gram
 	decoder *Decoder
 	lit     []int
+	known   []bool // by term, 0 being the readings
 	// light[m][n] for m <= n, the term 0 being the readings; [0][0] stays empty.
 	light [][]*mat.Dense
 	// weights[m][n] is sum_p w_m w_n' for 1 <= m <= n, and first[m] sum_p w_m.
@@ -39,7 +40,7 @@ func NewTermGram(c *Checks, d *Decoder, terms int) (*TermGram, error) {
 	if terms < 1 {
 		return nil, fmt.Errorf("terms: %d of them; without a term use a Gram", terms)
 	}
-	t := &TermGram{Gram: NewGram(c.code.v), decoder: d, first: make([][]float64, terms+1)}
+	t := &TermGram{Gram: NewGram(c.code.v), decoder: d, first: make([][]float64, terms+1), known: make([]bool, terms+1)}
 	for j, dark := range c.isDark() {
 		if !dark {
 			t.lit = append(t.lit, j)
@@ -58,6 +59,11 @@ func NewTermGram(c *Checks, d *Decoder, terms int) (*TermGram, error) {
 	}
 	return t, nil
 }
+
+// Know makes term m, from 1 on, one whose light is known beforehand, as that of sky lines
+// whose spectrum is: weights are then not multiplied by the pixel's decode but are the light
+// of the columns itself, and without noise. Call it before Add, and for what is merged too.
+func (t *TermGram) Know(m int) { t.known[m] = true }
 
 // Terms is the number of terms.
 func (t *TermGram) Terms() int { return len(t.light) - 1 }
@@ -133,10 +139,13 @@ func (t *TermGram) addBlock(b *termBlock, light []float32, weights [][]float32, 
 	}
 	t.decoder.Decode(b.decoded, b.clean, pixels, pixels)
 	for m, w := range weights {
-		t.termLight(b, w, pixels, stride)
+		t.termLight(b, m+1, w, pixels, stride)
 		scaled(b.light[m+1], b.out, root, v)
 		bare := b.weights[m+1][:v*pixels]
 		clear(bare)
+		if t.known[m+1] {
+			continue // no noise
+		}
 		for _, j := range t.lit {
 			for p := range pixels {
 				if by[p] > 0 {
@@ -157,10 +166,14 @@ func (t *TermGram) addBlock(b *termBlock, light []float32, weights [][]float32, 
 	}
 }
 
-// termLight sets b.out to the light of a term in pixels whose decode is b.decoded.
-func (t *TermGram) termLight(b *termBlock, weights []float32, pixels, stride int) {
+// termLight sets b.out to the light of term m in pixels whose decode is b.decoded.
+func (t *TermGram) termLight(b *termBlock, m int, weights []float32, pixels, stride int) {
 	clear(b.work[:t.V()*pixels])
 	for _, j := range t.lit {
+		if t.known[m] {
+			copy(b.work[j*pixels:(j+1)*pixels], weights[j*stride:])
+			continue
+		}
 		for p, x := range weights[j*stride : j*stride+pixels] {
 			b.work[j*pixels+p] = x * b.decoded[j*pixels+p]
 		}

@@ -42,7 +42,7 @@ const minTermDirections = 0.5
 
 // ThroughputTerms is Throughput with terms: first the readings' factor alone, then each
 // term in its order together with what was kept before, kept where the held-out chi-square
-// falls (and the factor again at the end, if it was not kept before); at last all that is
+// falls (a term that is not, together with the factor if that was not kept before; and the factor again at the end, if it was not kept before); at last all that is
 // kept, on all checks. priors[0] is the prior covariance of the throughput's E, priors[m]
 // that of term m, v x v each; one of low rank ties rows together, as an extinction smooth
 // in time does.
@@ -69,6 +69,11 @@ func (c *Checks) ThroughputTerms(g *TermGram, priors []*mat.SymDense) (*TermsFit
 		if s.out.Terms[m-1].HeldOut, s.out.Terms[m-1].Directions, err = s.try(m); err != nil {
 			return nil, err
 		}
+		if !s.kept[m] && !s.kept[0] { // each may hide the other
+			if s.out.Terms[m-1].HeldOut, s.out.Terms[m-1].Directions, err = s.try(0, m); err != nil {
+				return nil, err
+			}
+		}
 	}
 	if !s.kept[0] && slices.Contains(s.kept, true) {
 		if _, _, err := s.try(0); err != nil {
@@ -87,10 +92,13 @@ type termSearch struct {
 	out    *TermsFit
 }
 
-// try fits what is kept and term m on each half, judges it on the other and keeps it or
-// not.
-func (s *termSearch) try(m int) (HeldOut, float64, error) {
-	s.kept[m] = true
+// try fits what is kept and more terms on each half, judges them on the other and keeps
+// them or not, by the last one's directions.
+func (s *termSearch) try(more ...int) (HeldOut, float64, error) {
+	m := more[len(more)-1]
+	for _, m := range more {
+		s.kept[m] = true
+	}
 	terms := s.terms()
 	sums := s.gram.sums(terms)
 	held, directions := HeldOut{Before: s.out.HeldOut.After, ExpectedBefore: s.out.HeldOut.ExpectedAfter}, 0.0
@@ -109,7 +117,11 @@ func (s *termSearch) try(m int) (HeldOut, float64, error) {
 		x, expected, sd := split[1].Chi2(sums.corrected(e))
 		held.After, held.ExpectedAfter, held.SD = held.After+x, held.ExpectedAfter+expected, math.Hypot(held.SD, sd)
 	}
-	if s.kept[m] = held.Falls() && directions >= minTermDirections; s.kept[m] {
+	kept := held.Falls() && directions >= minTermDirections
+	for _, m := range more {
+		s.kept[m] = kept
+	}
+	if kept {
 		before := s.out.HeldOut
 		s.out.HeldOut = held
 		s.out.HeldOut.Before, s.out.HeldOut.ExpectedBefore = before.Before, before.ExpectedBefore
@@ -240,7 +252,7 @@ func (f *TermsFit) correctBlock(dst, y, light []float32, weights [][]float32, t 
 		if !term.Kept {
 			continue
 		}
-		t.termLight(b, weights[m][first:], n, stride)
+		t.termLight(b, m+1, weights[m][first:], n, stride)
 		for k := range t.V() {
 			e := float32(term.E[k])
 			for p, x := range b.out[k*n : (k+1)*n] {

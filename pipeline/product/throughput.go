@@ -10,6 +10,8 @@ type Throughput struct {
 	Methods []ThroughputMethod `json:"methods,omitempty"`
 	// HeldOut is what each step of the correction gained.
 	HeldOut []HeldOutStep `json:"dark_chi2_heldout,omitempty"`
+	// Terms are parts of the light that varied apart from it and were corrected.
+	Terms []ThroughputTerm `json:"terms,omitempty"`
 	// Leak is the factor of the all-off frames' light; absent where it was not measured.
 	Leak *Measured `json:"leak_factor,omitempty"`
 	// Offset is the rms of the frames' own levels, electrons, and the error of one;
@@ -29,6 +31,15 @@ type ThroughputMethod struct {
 	Share float64 `json:"share"`
 	// Used tells whether it went into the correction.
 	Used bool `json:"used"`
+}
+
+// ThroughputTerm is a part of the light whose share varied from frame to frame.
+type ThroughputTerm struct {
+	Name string `json:"name"` // slope over the band, sky lines' part
+	// RMS is that over the frames of what was corrected: of the slope, the difference
+	// between the band's ends; of the sky lines, relative. Error is that of a frame.
+	RMS   float64 `json:"rms"`
+	Error float64 `json:"err"`
 }
 
 // HeldOutStep is the chi-square of dark columns that a step's fit has not seen, before

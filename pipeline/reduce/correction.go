@@ -13,6 +13,8 @@ type correction struct {
 	// leak is the factor a of the night: the light of all-off frames is taken off
 	// corrected readings a times.
 	leak float64
+	// terms are parts of the light that vary apart from it; nil for none.
+	terms *terms
 }
 
 // noCorrection changes nothing.

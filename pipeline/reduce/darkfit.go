@@ -7,6 +7,7 @@ import (
 	"gonum.org/v1/gonum/mat"
 
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/parallel"
 )
 
@@ -21,6 +22,11 @@ type darkFit struct {
 	struck  int
 	// neighbour takes the light of open neighbours out of a block; nil for nothing.
 	neighbour func(y []float32, pixels []place, stride int, lost []int)
+	// terms, where not nil, are taken out of the sample; base are the factors that the
+	// readings of frames are multiplied by to make the terms' light.
+	terms  *terms
+	base   []float64
+	frames []*exposure.Frame
 }
 
 // cycleSums is what is kept of the sample in a cycle.
@@ -62,7 +68,7 @@ func (d *darkFit) add(ctx context.Context, s *sample) error {
 	for i, c := range d.cycles {
 		b := &blocks[i]
 		b.y, b.s2 = s.block(c, d.excess)
-		if err := d.addGram(ctx, &d.sums[i], b, s.pixels, c.lost()); err != nil {
+		if err := d.addGram(ctx, &d.sums[i], b, s.pixels, c); err != nil {
 			return err
 		}
 		d.sums[i].leak.add(b, s)
@@ -82,7 +88,7 @@ const (
 
 // addGram corrects the pixels of a block, drops those that were struck, and adds the
 // others up.
-func (d *darkFit) addGram(ctx context.Context, sums *cycleSums, b *cycleBlock, pixels []place, lost []int) error {
+func (d *darkFit) addGram(ctx context.Context, sums *cycleSums, b *cycleBlock, pixels []place, c *cycle) error {
 	n, v := len(pixels), d.checks.Code().V()
 	most := max(1, min(gramParts, gramBytes/(8*v*v)))
 	size := max(struckChunk, (n+most-1)/most)
@@ -92,8 +98,9 @@ func (d *darkFit) addGram(ctx context.Context, sums *cycleSums, b *cycleBlock, p
 	err := parallel.Do(ctx, d.workers, len(parts), func(_, i int) error {
 		from, to := i*size, min((i+1)*size, n)
 		if d.neighbour != nil {
-			d.neighbour(b.y[from:], pixels[from:to], n, lost)
+			d.neighbour(b.y[from:], pixels[from:to], n, c.lost())
 		}
+		d.freeOfTerms(b.y[from:], pixels[from:to], n, c)
 		if basis != nil {
 			struck[i] = dropStruck(b.y[from:], b.s2[from:], to-from, n, basis)
 		}

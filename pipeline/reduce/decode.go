@@ -27,6 +27,8 @@ type decoder struct {
 	neighbours *neighbourTerm
 	// repair restores samples from the dark columns; nil for nothing.
 	repair *repair
+	// terms are taken out of decoded blocks; nil for none.
+	terms *slotTerms
 }
 
 // sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w,
@@ -53,6 +55,7 @@ type decodeWorker struct {
 	sum, square, drift                 []float64
 	size, slope                        []float32 // of the neighbour term
 	free                               []float32 // a block freed of that term
+	terms                              *termWork // of the throughput's terms
 	raw                                []float32 // a block as decoded, before anything is restored
 	pursuit                            *pursuitWork
 	missing                            []float32 // what lost rows lack, [row][pixel]
@@ -75,6 +78,9 @@ func (d *decoder) newWorker() *decodeWorker {
 		if d.neighbours != nil {
 			w.free = make([]float32, d.slots*n)
 		}
+	}
+	if d.terms != nil {
+		w.terms = d.terms.newWork(n)
 	}
 	if d.repair != nil {
 		w.pursuit = d.repair.pursuit.newWork(n)
@@ -134,6 +140,9 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *b
 // the neighbour term. What was restored is counted in q.
 func (d *decoder) decode(w *decodeWorker, s *strip, at, n, x0, y int, q *blockQuality) {
 	d.code.Decode(w.decoded, w.samples, n, n)
+	if d.terms != nil {
+		d.terms.correct(d, w, n, x0, y)
+	}
 	raw := w.decoded
 	if w.raw != nil {
 		raw = w.raw

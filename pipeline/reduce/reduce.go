@@ -357,6 +357,9 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame, c
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()
 	}
+	if c != nil && c.terms.corrects() {
+		d.terms = newSlotTerms(c.terms, slots)
+	}
 	return d
 }
 

@@ -58,10 +58,11 @@ const (
 	chunkSamples = 1 << 21
 )
 
-// codedSampler reads pixels spread evenly over those whose light follows the code.
-func (r *reduction) codedSampler(offset []float64) *sampler {
+// codedSampler reads about so many pixels spread evenly over those whose light follows
+// the code.
+func (r *reduction) codedSampler(offset []float64, want int) *sampler {
 	rows := r.codedRows()
-	columns, want := r.camera.Columns, r.sampleSize()
+	columns := r.camera.Columns
 	n := min(len(rows), max(sampleRows, (want+columns-1)/columns))
 	stride := max(1, (n*columns+want/2)/want)
 	chosen := spreadRuns(rows, n, max(1, n/sampleRows))

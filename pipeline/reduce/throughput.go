@@ -54,11 +54,15 @@ func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	if t.dark != nil {
-		s := r.codedSampler(r.correction.offset)
+		s := r.codedSampler(r.correction.offset, r.sampleSize())
 		if err := s.each(ctx, func(chunk *sample) error { return t.dark.add(ctx, chunk) }); err != nil {
 			return 0, err
 		}
+		before := t.belief.clone()
 		if err := r.fitDark(t); err != nil {
+			return 0, err
+		}
+		if err := r.measureTerms(ctx, t, before); err != nil {
 			return 0, err
 		}
 	}

@@ -38,6 +38,7 @@ func TestThroughputOfANight(t *testing.T) {
 	require.InDelta(t, d.C.True, *q.ThroughputRMS, 5e-3)
 	require.InDelta(t, d.C.Predicted, *q.ThroughputErr, 1e-9)
 	require.Empty(t, d.Result.Run.Warnings)
+	require.Empty(t, d.Result.Run.Throughput.Terms)
 	step := d.Result.Run.Throughput.HeldOut[0]
 	require.True(t, step.Kept)
 	require.Less(t, step.After, 1.2)

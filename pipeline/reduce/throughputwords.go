@@ -3,6 +3,7 @@ package reduce
 import (
 	"fmt"
 	"math"
+	"strings"
 )
 
 // The methods' names.
@@ -19,6 +20,8 @@ const cures = "plan sentinel rows on a bright star or on bright sky, or give a m
 func (r *reduction) throughputVerdict(t *throughput) string {
 	dark := len(r.seq.DarkColumns())
 	switch {
+	case len(t.report.Terms) > 0 && !t.corrected:
+		return fmt.Sprintf("the frames' throughput was left as it is, but %s: the chi-square of dark columns that the fit had not seen went from %.3f to %.3f", t.termWords(), t.before(), t.after())
 	case t.found == nil && t.corrected:
 		rms, err := scatter(t.belief.c(), t.belief.errors())
 		return fmt.Sprintf("the throughput varied by %s rms and was corrected with an error of %s a frame; the %d dark columns of the code are too few to check it", percent(rms), percent(err), dark)
@@ -40,6 +43,9 @@ func (r *reduction) throughputVerdict(t *throughput) string {
 	}
 	rms, err := scatter(t.belief.c(), t.belief.errors())
 	words := fmt.Sprintf("the throughput varied by %s rms and was corrected with an error of %s a frame: the chi-square of dark columns that the fit had not seen went from %.3f to %.3f", percent(rms), percent(err), t.before(), t.after())
+	if len(t.report.Terms) > 0 {
+		words += "; besides, " + t.termWords()
+	}
 	if !t.measured() {
 		words = fmt.Sprintf("this scene cannot measure the throughput of every frame (%.0f of %d patterns): its error is %s a frame where the scatter is %s; %s", t.found.directions, len(t.frames)-len(t.dark.cycles), percent(err), percent(rms), cures)
 		r.warn("%s", words)
@@ -47,10 +53,28 @@ func (r *reduction) throughputVerdict(t *throughput) string {
 	return words
 }
 
-// before and after are the held-out chi-square without any correction and with all.
+// termWords says which terms were corrected.
+func (t *throughput) termWords() string {
+	var all []string
+	for _, m := range t.report.Terms {
+		all = append(all, fmt.Sprintf("the %s varied by %s rms and was corrected with an error of %s a frame", m.Name, percent(m.RMS), percent(m.Error)))
+	}
+	return strings.Join(all, ", ")
+}
+
+// before and after are the held-out chi-square without any correction and with all that
+// was kept, or with the first if none was.
 func (t *throughput) before() float64 { return t.report.HeldOut[0].Before }
 
-func (t *throughput) after() float64 { return t.report.HeldOut[len(t.report.HeldOut)-1].After }
+func (t *throughput) after() float64 {
+	last := t.report.HeldOut[0].After
+	for _, h := range t.report.HeldOut {
+		if h.Kept {
+			last = h.After
+		}
+	}
+	return last
+}
 
 // measured tells whether every frame's throughput is known to half of the scatter that
 // was assumed, or better: beyond a level and a trend in time, which most scenes measure

@@ -130,6 +130,9 @@ func throughputFacts(t *product.Throughput) []fact {
 		}
 		add("By "+m.Name, "%s rms, error of a frame %s; %s", percent(m.RMS), percent(m.Error), use)
 	}
+	for _, m := range t.Terms {
+		add("Corrected apart: "+m.Name, "%s rms, error of a frame %s", percent(m.RMS), percent(m.Error))
+	}
 	for _, h := range t.HeldOut {
 		kept := "kept"
 		if !h.Kept {
