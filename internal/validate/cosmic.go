@@ -18,11 +18,14 @@ func cosmicRays() check {
 10 e) with struck samples: log-normal charges (median 1500 e, sigma 0.8) in tracks, as rehearse
 draws them, and single samples of a power law E^-1.5 from 20 e on, added to the frames. Strong hits are above eight
 standard errors of the charge that the dark columns measure. Rows of bright stars, where the
-variance is above four times its median, are counted apart. Pulls are those of the
+variance is above 1.5 times its median, are counted apart. Pulls are those of the
 other checks; their kurtosis is 3 for a normal law.`,
 		run: runCosmic,
 	}
 }
+
+// brightRows times the median variance: what lies above are the rows of bright stars.
+const brightRows = 1.5
 
 // powerLaw draws charges of E^-1.5 from 20 e on.
 func powerLaw(r *rand.Rand) float64 {
@@ -111,7 +114,7 @@ func cosmicNights(ctx context.Context, dir, name string, v, dark int, tracks, si
 			to     *trial.StrikeCount
 			bright bool
 		}{{&plain, false}, {&bright, true}} {
-			c, err := n.CountStruck(night, strikes, func(variance, median float64) bool { return (variance > 4*median) == part.bright })
+			c, err := n.CountStruck(night, strikes, func(variance, median float64) bool { return (variance > brightRows*median) == part.bright })
 			if err != nil {
 				return nil, err
 			}
