@@ -1,4 +1,4 @@
-package rehearse
+package scene
 
 import (
 	"mirrorloom/pipeline/config"
@@ -25,10 +25,10 @@ type Atmosphere struct {
 	Refraction bool `yaml:"refraction" config:"optional"`
 }
 
-func (a *Atmosphere) check(c *config.Checks) {
-	instrument.CheckAir(c, "atmosphere", a.PressureHPa, a.TemperatureC, a.WaterHPa, a.Extinction)
+func (a *Atmosphere) check(c *config.Checks, path string) {
+	instrument.CheckAir(c, path, a.PressureHPa, a.TemperatureC, a.WaterHPa, a.Extinction)
 	if a.GuideNM != nil {
-		c.Within("atmosphere.guide_nm", *a.GuideNM, leastRefractedNM, maxNM)
+		c.Within(path+".guide_nm", *a.GuideNM, leastRefractedNM, maxNM)
 	}
 }
 
@@ -48,20 +48,20 @@ type RefStar struct {
 	SeeingFWHMArcsec *float64 `yaml:"seeing_fwhm_arcsec" config:"optional"`
 }
 
-// source is the star as a source of a scene.
-func (r *RefStar) source() Source {
+// Source is the star as a source of a scene.
+func (r *RefStar) Source() Source {
 	return Source{
 		Kind: KindStar, EastArcsec: r.EastArcsec, NorthArcsec: r.NorthArcsec,
 		ABMag: &r.ABMag, AtNM: r.AtNM, TemperatureK: r.TemperatureK, SpectrumCSV: r.SpectrumCSV,
 	}
 }
 
-func (r *RefStar) check(c *config.Checks) {
-	source := r.source()
-	source.check(c, "refstar")
+func (r *RefStar) check(c *config.Checks, path string) {
+	source := r.Source()
+	source.check(c, path)
 	if r.SeeingFWHMArcsec != nil {
-		c.Positive("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec)
-		c.Within("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec, 0, maxArcsec)
+		c.Positive(path+".seeing_fwhm_arcsec", *r.SeeingFWHMArcsec)
+		c.Within(path+".seeing_fwhm_arcsec", *r.SeeingFWHMArcsec, 0, maxArcsec)
 	}
 }
 
@@ -82,7 +82,7 @@ func (s *Scene) allSources() []placedSource {
 		list = append(list, placedSource{sourcePath(i), source})
 	}
 	if s.RefStar != nil {
-		list = append(list, placedSource{"refstar", s.RefStar.source()})
+		list = append(list, placedSource{"refstar", s.RefStar.Source()})
 	}
 	return list
 }
