@@ -36,6 +36,13 @@ func (s Spectrum) At(nm float64) float64 {
 	return s.RelativeFlux[i-1] + t*(s.RelativeFlux[i]-s.RelativeFlux[i-1])
 }
 
+// ShareSpectra gives the scene the files that another one, nil for none, has read.
+func (s *Scene) ShareSpectra(other *Scene) {
+	if other != nil {
+		s.files, s.spectra = other.files, other.spectra
+	}
+}
+
 var spectrumHeader = []string{"wavelength_nm", "relative_flux"}
 
 // parseSpectrum reads a CSV file whose first line is wavelength_nm,relative_flux
