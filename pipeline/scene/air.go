@@ -1,6 +1,7 @@
 package scene
 
 import (
+	"mirrorloom/calib/physics"
 	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
 )
@@ -85,4 +86,9 @@ func (s *Scene) allSources() []placedSource {
 		list = append(list, placedSource{"refstar", s.RefStar.Source()})
 	}
 	return list
+}
+
+// Over is the air of the night: what the scene says, and the site's for the rest.
+func (a *Atmosphere) Over(site instrument.Site) physics.Atmosphere {
+	return instrument.WithAir(site.Atmosphere(), a.PressureHPa, a.TemperatureC, a.WaterHPa)
 }
