@@ -34,9 +34,9 @@ func estimate(eq *normalEquations, s *mat.SymDense) (*estimated, error) {
 	gain.Mul(selected(s, all(n), active), h)
 	total.Mul(h, selected(&gain, active, all(len(active))))
 	total.Add(&total, noise)
-	var factor mat.Cholesky
-	if !factor.Factorize(symmetric(&total)) {
-		return nil, errNoCovariance
+	factor, err := factorised(symmetric(&total))
+	if err != nil {
+		return nil, err
 	}
 	var weights, change, share mat.Dense
 	if err := factor.SolveTo(&weights, gain.T()); err != nil && !isCondition(err) {
@@ -62,6 +62,32 @@ func estimate(eq *normalEquations, s *mat.SymDense) (*estimated, error) {
 		}
 	}
 	return out, nil
+}
+
+// Ridges, in units of the diagonal, that factorised tries. At a signal to noise ratio of
+// hundreds H S H outweighs V by more than float64 holds, and rounding makes eigenvalues
+// that are only V's negative. A larger V is the safe side: the estimate stays nearer to
+// the prior.
+var ridges = []float64{0, 1e-14, 1e-12, 1e-10}
+
+// factorised is the Cholesky factor of a covariance, with the smallest ridge that makes
+// one of it. The error is errNoCovariance.
+func factorised(m *mat.SymDense) (*mat.Cholesky, error) {
+	n := m.SymmetricDim()
+	diagonal := make([]float64, n)
+	for i := range diagonal {
+		diagonal[i] = m.At(i, i)
+	}
+	factor := new(mat.Cholesky)
+	for _, ridge := range ridges {
+		for i, x := range diagonal {
+			m.SetSym(i, i, x*(1+ridge))
+		}
+		if factor.Factorize(m) {
+			return factor, nil
+		}
+	}
+	return nil, errNoCovariance
 }
 
 // active are the unknowns on which the equations bear.

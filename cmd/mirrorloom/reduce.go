@@ -21,6 +21,7 @@ type reduceOptions struct {
 	products []string
 	memory   byteSize
 	workers  int
+	cycles   []int
 	labelled bool
 	output   outputOptions
 }
@@ -32,6 +33,7 @@ func (o *reduceOptions) addFlags(f *pflag.FlagSet) {
 	f.StringSliceVar(&o.products, "products", []string{"cube"}, "what to write: cube, elements or both")
 	f.Var(&o.memory, "memory", "memory that the program may take")
 	f.IntVar(&o.workers, "workers", 0, "computations at the same time; 0 for one a processor")
+	f.IntSliceVar(&o.cycles, "cycles", nil, "cycles of science steps to use, from 1, with commas; all without")
 	f.BoolVar(&o.labelled, "as-labelled", false, "use every frame as its labels say, whatever the audit finds")
 	o.output.addFlags(f, "products")
 }
@@ -57,7 +59,7 @@ func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
 		return reduce.Options{}, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
 	}
 	opts := reduce.Options{
-		Night: night, Sequence: o.sequence, MemoryBytes: int64(o.memory), Workers: o.workers, AsLabelled: o.labelled,
+		Night: night, Sequence: o.sequence, MemoryBytes: int64(o.memory), Workers: o.workers, AsLabelled: o.labelled, Cycles: o.cycles,
 		Log: a.log, Progress: a.progress(),
 	}
 	for _, p := range o.products {

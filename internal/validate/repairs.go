@@ -48,7 +48,7 @@ func residualLight() check {
 		about: `Six nights each without noise whose off mirrors leak 1/500 of their light with 20 % of
 structure, a star outside the field of about a thousand elements' light, under a
 bright sky, and a throughput that drifts by 5 %: with all-off frames, and by the dark
-columns without.`,
+columns without. Left of the leak is what the night has more than one without leak.`,
 		run: func(ctx context.Context, dir string) ([]trial.Finding, error) {
 			var all []trial.Finding
 			for _, field := range smallFields {

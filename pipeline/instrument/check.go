@@ -41,9 +41,7 @@ func (p *Profile) checkTelescope(c *config.Checks) {
 	f := p.Telescope.ObscuredFraction
 	c.That(f >= 0 && f < 1, "telescope.obscured_fraction", "%v is not from 0 to below 1; give the shadowed share of the area", f)
 	p.Telescope.Throughput.check(c, "telescope.throughput")
-	c.Within("site.latitude_deg", p.Site.LatitudeDeg, -90, 90)
-	c.Within("site.longitude_east_deg", p.Site.LongitudeEastDeg, -180, 360)
-	c.Within("site.height_m", p.Site.HeightM, -500, 10000)
+	p.Site.check(c, "site")
 }
 
 func (p *Profile) checkDMD(c *config.Checks) {

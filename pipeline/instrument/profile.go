@@ -30,16 +30,6 @@ type Telescope struct {
 	Throughput Curve `yaml:"throughput"`
 }
 
-// Site is where the telescope stands.
-type Site struct {
-	// LatitudeDeg is geodetic, north positive, degrees.
-	LatitudeDeg float64 `yaml:"latitude_deg"`
-	// LongitudeEastDeg is east positive, -180 to 360 degrees.
-	LongitudeEastDeg float64 `yaml:"longitude_east_deg"`
-	// HeightM is above the ellipsoid, metres.
-	HeightM float64 `yaml:"height_m"`
-}
-
 // Mountings of the device.
 const (
 	Square   = "square"

@@ -17,12 +17,17 @@ const maxAirmass = 2
 // at the end of the last, and the largest at any start or end of one; 0 stands
 // for a field below the horizon.
 func airmass(s *sequence.Sequence) [3]float64 {
+	return airmassOf(s, sequence.Science, s.Target.RADeg, s.Target.DecDeg)
+}
+
+// airmassOf is that of a place during the steps of a kind, as airmass gives it.
+func airmassOf(s *sequence.Sequence, kind sequence.Kind, raDeg, decDeg float64) [3]float64 {
 	at, err := s.Target.Start()
 	if err != nil { // a checked target has a start
 		return [3]float64{}
 	}
 	look := func() float64 {
-		x := physics.TargetAirmass(s.Target.RADeg, s.Target.DecDeg, at, s.Profile.Site.LatitudeDeg, s.Profile.Site.LongitudeEastDeg)
+		x := physics.TargetAirmass(raDeg, decDeg, at, s.Profile.Site.LatitudeDeg, s.Profile.Site.LongitudeEastDeg)
 		if math.IsNaN(x) {
 			return math.Inf(1)
 		}
@@ -30,12 +35,12 @@ func airmass(s *sequence.Sequence) [3]float64 {
 	}
 	first, last, most := 0.0, 0.0, 0.0
 	for _, st := range s.Steps {
-		if st.Kind == sequence.Science && first == 0 {
+		if st.Kind == kind && first == 0 {
 			first = look()
 			most = first
 		}
 		at = at.Add(time.Duration(st.ExptimeSeconds * float64(time.Second)))
-		if st.Kind == sequence.Science {
+		if st.Kind == kind {
 			last = look()
 			most = max(most, last)
 		}

@@ -34,6 +34,7 @@ func (e *exposures) night() {
 	e.flats(c.Flat)
 	e.arcs(c.Arc)
 	e.science()
+	e.refStar(c.RefStar)
 }
 
 // add appends a step that shows bits; STEP and, where there is none, ROW are
@@ -115,6 +116,17 @@ func (e *exposures) science() {
 				e.repeat(1, off)
 			}
 		}
+	}
+}
+
+// refStar appends frames of the reference star, all elements of its wide element open.
+func (e *exposures) refStar(r *sequence.RefStarFrames) {
+	if r == nil {
+		return
+	}
+	bits := e.open(func(j int) bool { return j >= r.Elements[0] && j <= r.Elements[1] })
+	for range r.Count {
+		e.add(sequence.Step{Kind: sequence.RefStar, ExptimeSeconds: r.DwellSeconds, Row: -1}, bits)
 	}
 }
 

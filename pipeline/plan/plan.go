@@ -72,6 +72,9 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if err := checkRows(target, profile, n); err != nil {
 		return nil, nil, err
 	}
+	if star := target.Calibration.RefStar; star != nil && star.Elements[1] >= n {
+		return nil, nil, refuse("calibration.refstar.elements[1]", "there is no element %d among the field's 0 to %d; give one of these", star.Elements[1], n-1)
+	}
 	dark, err := hadamard.ChooseDark(ctx, code, code.V()-n, uint64(target.Code.Seed))
 	if err != nil {
 		return nil, nil, fmt.Errorf("choosing the dark columns: %w", err)

@@ -35,6 +35,8 @@ type Summary struct {
 	// Airmass is that of the field's centre at the first and at the end of the
 	// last science step and the largest between; 0 below the horizon.
 	Airmass [3]float64 `json:"airmass"`
+	// RefStar is the reference star; nil where none is planned.
+	RefStar *RefStar `json:"refstar,omitempty"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -58,6 +60,13 @@ type Code struct {
 	DarkCorrelation float64 `json:"dark_correlation"`
 	Order           string  `json:"order"`
 	Cycles          int     `json:"cycles"`
+}
+
+// RefStar is the reference star of a plan.
+type RefStar struct {
+	Name string `json:"name"`
+	// Airmass is as Summary.Airmass, in the star's frames.
+	Airmass [3]float64 `json:"airmass"`
 }
 
 // KindTotal is the steps of one kind.
@@ -95,8 +104,21 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	} else if r.Airmass[2] > maxAirmass {
 		r.warn("the field's airmass reaches %.2f during science exposures", r.Airmass[2])
 	}
+	r.addRefStar(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
 	return r
+}
+
+// addRefStar says what becomes of the reference star.
+func (r *Summary) addRefStar(s *sequence.Sequence) {
+	star := s.Target.Calibration.RefStar
+	if star == nil {
+		return
+	}
+	r.RefStar = &RefStar{Name: star.Name, Airmass: airmassOf(s, sequence.RefStar, star.RADeg, star.DecDeg)}
+	if x := r.RefStar.Airmass; x[0] == 0 || x[1] == 0 || x[2] == 0 {
+		r.warn("the reference star %s is below the horizon; choose another", star.Name)
+	}
 }
 
 func (r *Summary) warn(format string, args ...any) {
@@ -155,6 +177,9 @@ func (r *Summary) String() string {
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
 	if r.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	}
+	if r.RefStar != nil && r.RefStar.Airmass[2] > 0 {
+		fmt.Fprintf(&b, "refstar  %s, airmass %.2f to %.2f\n", r.RefStar.Name, r.RefStar.Airmass[0], r.RefStar.Airmass[1])
 	}
 	fmt.Fprintf(&b, "frames   %.2f GB, %d distinct masks\n", r.Gigabytes, r.Masks)
 	for _, w := range r.Warnings {

@@ -56,10 +56,12 @@ type Schema struct {
 	Grid           instrument.Grid
 	// Frame is the standard of rest of the grid's wavelengths.
 	Frame SpectralFrame
-	// RADeg and DecDeg (ICRS) lie at element (n-1)/2 and detector row
-	// RowCenter, both counted from 0.
+	// RADeg and DecDeg (ICRS) lie at element (n-1)/2 + ElementShift and detector row
+	// RowCenter, both counted from 0. ElementShift is 0 but where cubes were put
+	// together.
 	RADeg, DecDeg float64
 	RowCenter     float64
+	ElementShift  float64
 	// RotangDeg is the position angle of +axis 2, north through east; east is
 	// towards -axis 1 at 0 unless Parity is -1.
 	RotangDeg float64

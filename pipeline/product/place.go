@@ -12,7 +12,7 @@ const arcsecPerDeg = 3600
 // the plane that touches the sky at (RADeg, DecDeg): arc seconds east and north.
 func (s Schema) Offset(element, row float64) (east, north float64) {
 	sin, cos := math.Sincos(s.RotangDeg * math.Pi / 180)
-	x := (element - float64(s.Elements-1)/2) * s.C1Deg * arcsecPerDeg * s.parity()
+	x := (element - s.centre()) * s.C1Deg * arcsecPerDeg * s.parity()
 	y := (row - s.RowCenter) * s.C2Deg * arcsecPerDeg
 	return -x*cos + y*sin, x*sin + y*cos
 }
@@ -22,7 +22,7 @@ func (s Schema) Offset(element, row float64) (east, north float64) {
 func (s Schema) Place(east, north float64) (element, row float64) {
 	sin, cos := math.Sincos(s.RotangDeg * math.Pi / 180)
 	x, y := -east*cos+north*sin, east*sin+north*cos
-	element = float64(s.Elements-1)/2 + x*s.parity()/(s.C1Deg*arcsecPerDeg)
+	element = s.centre() + x*s.parity()/(s.C1Deg*arcsecPerDeg)
 	return element, s.RowCenter + y/(s.C2Deg*arcsecPerDeg)
 }
 

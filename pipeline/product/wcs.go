@@ -28,7 +28,7 @@ func (s Schema) wcs() []card {
 		{"CUNIT1", "deg", ""},
 		{"CUNIT2", "deg", ""},
 		{"CUNIT3", "nm", ""},
-		{"CRPIX1", float64(s.Elements+1) / 2, "middle of the elements"},
+		{"CRPIX1", s.centre() + 1, s.centreWords()},
 		{"CRPIX2", s.RowCenter + 1, "detector row y_c"},
 		{"CRPIX3", 1.0, ""},
 		{"CRVAL1", s.RADeg, "RA of the field's centre"},
@@ -65,6 +65,16 @@ func spectralWords(g instrument.Grid) string {
 		words += ", logarithmic"
 	}
 	return words
+}
+
+// centre is the element, from 0, at RADeg and DecDeg.
+func (s Schema) centre() float64 { return float64(s.Elements-1)/2 + s.ElementShift }
+
+func (s Schema) centreWords() string {
+	if s.ElementShift != 0 {
+		return "element of the field's centre"
+	}
+	return "middle of the elements"
 }
 
 // plus turns a negative zero into zero, which a header should not show.

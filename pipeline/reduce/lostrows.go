@@ -81,15 +81,15 @@ func (r *reduction) missingSteps() []string {
 	return names
 }
 
-// findLost lists the code rows that no frame shows, and their steps.
-func (r *roles) findLost(seq *sequence.Sequence) {
+// findLost lists the code rows that no frame of the cycles shows, and their steps.
+func (r *roles) findLost(seq *sequence.Sequence, cycles []int) {
 	for row, frames := range r.slots {
 		if len(frames) == 0 {
 			r.lost = append(r.lost, row)
 		}
 	}
 	for _, i := range seq.StepsOf(sequence.Science) {
-		if len(r.slots[seq.Steps[i].Row]) == 0 {
+		if usesCycle(cycles, seq.Steps[i]) && len(r.slots[seq.Steps[i].Row]) == 0 {
 			r.missing = append(r.missing, seq.Steps[i].Step)
 		}
 	}

@@ -25,7 +25,7 @@ type roles struct {
 // sources are the frames that a reduction opens, in the order of their steps:
 // those of science, and what the recipe asks for. Lamp frames with all mirrors on
 // tell dead pixels, so that the detector asks for them as well as the flat.
-func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []exposure.Source {
+func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe, cycles []int) []exposure.Source {
 	detector := recipe.Detector.Use != useOff
 	flat, arc := recipe.Flat.Use != useOff, recipe.Arc.Use == useAuto
 	var all []exposure.Source
@@ -33,7 +33,7 @@ func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe) []exposu
 		wanted := false
 		switch f.Kind {
 		case sequence.Science:
-			wanted = true
+			wanted = usesCycle(cycles, seq.Steps[f.StepIndex])
 		case sequence.Bias, sequence.Dark, sequence.AllOff:
 			wanted = detector
 		case sequence.Flat:
@@ -56,7 +56,7 @@ func isLampOn(seq *sequence.Sequence, step int) bool {
 }
 
 // assign sorts the open frames and says what is missing.
-func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration bool) (*roles, error) {
+func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration bool, cycles []int) (*roles, error) {
 	r := &roles{slots: make([][]*exposure.Frame, seq.V)}
 	times := map[sequence.Kind]float64{}
 	for _, f := range frames {
@@ -87,7 +87,7 @@ func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration boo
 	}
 	c := &r.calibration
 	c.scienceSeconds, c.darkSeconds, c.offSeconds = times[sequence.Science], times[sequence.Dark], times[sequence.AllOff]
-	r.findLost(seq)
+	r.findLost(seq, cycles)
 	if useCalibration {
 		r.findMissing(seq)
 	}

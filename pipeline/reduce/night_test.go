@@ -30,7 +30,7 @@ func flatsAndCycles(target *sequence.Target, _ *instrument.Profile) {
 func TestAssignWhole(t *testing.T) {
 	seq := smallSequence(t, instrument.Square, flatsAndCycles)
 	all := func(sequence.Step) bool { return true }
-	r, err := assign(seq, framesOf(seq, all), true)
+	r, err := assign(seq, framesOf(seq, all), true, nil)
 	require.NoError(t, err)
 	for row, frames := range r.slots {
 		require.Len(t, frames, 2, "slot %d", row)
@@ -69,7 +69,7 @@ func TestAssignMissing(t *testing.T) {
 	single := seq.Steps[science[0]]
 	r, err := assign(seq, framesOf(seq, func(st sequence.Step) bool {
 		return st.Kind != sequence.Dark && st.Kind != sequence.Flat && st.Row != gone && st.Step != single.Step && st.Step != 1
-	}), true)
+	}), true, nil)
 	require.NoError(t, err)
 	require.Equal(t, []int{gone}, r.lost)
 	require.Equal(t, repeat, r.missing)
@@ -82,7 +82,7 @@ func TestAssignMissing(t *testing.T) {
 	require.True(t, scale.isLost(gone))
 	require.Equal(t, 1.0, scale.quiet[single.Row])
 	// Who asks for no calibration misses none.
-	r, err = assign(seq, framesOf(seq, func(st sequence.Step) bool { return st.Kind == sequence.Science }), false)
+	r, err = assign(seq, framesOf(seq, func(st sequence.Step) bool { return st.Kind == sequence.Science }), false, nil)
 	require.NoError(t, err)
 	require.Empty(t, r.degraded)
 }
@@ -91,6 +91,6 @@ func TestAssignMissing(t *testing.T) {
 func TestAssignRefusesMixedExposures(t *testing.T) {
 	seq := smallSequence(t, instrument.Square, nil)
 	seq.Steps[seq.StepsOf(sequence.Dark)[2]].ExptimeSeconds = 45
-	_, err := assign(seq, framesOf(seq, func(sequence.Step) bool { return true }), true)
+	_, err := assign(seq, framesOf(seq, func(sequence.Step) bool { return true }), true, nil)
 	require.ErrorContains(t, err, "dark steps of 90 s and of 45 s")
 }

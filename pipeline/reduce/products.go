@@ -70,6 +70,7 @@ func (r *reduction) judge(flags int16) {
 
 // finish appends the tables and gives every product its name.
 func (r *reduction) finish(context.Context) (int64, error) {
+	noteCycles(r.night.Ledger, r.seq, r.opts.Cycles)
 	r.roles.fillLedger(r.night.Ledger, r.album.Frames, r.seq, r.camera.Columns*r.camera.Rows)
 	if r.cube != nil {
 		if err := r.cube.AppendTable(r.night.Ledger.Table()); err != nil {

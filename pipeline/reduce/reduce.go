@@ -39,6 +39,8 @@ type Options struct {
 	MemoryBytes int64
 	// Workers compute at the same time; 0 for one a processor.
 	Workers int
+	// Cycles are the numbers, from 1, of the cycles of science steps to use; none for all.
+	Cycles []int
 	// AsLabelled keeps the pairing of the frames' labels, whatever the audit finds.
 	AsLabelled bool
 	// Out is a folder that exists and is empty. A folder in which Run failed is
@@ -198,6 +200,9 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if r.seq, err = sequence.Read(ctx, r.opts.Sequence); err != nil {
 		return 0, err
 	}
+	if err := checkCycles(r.seq, r.opts.Cycles); err != nil {
+		return 0, fmt.Errorf("%s: %w", r.opts.Sequence, err)
+	}
 	if err := os.MkdirAll(r.scratch(), 0o755); err != nil {
 		return 0, fmt.Errorf("make a scratch folder: %w", err)
 	}
@@ -213,10 +218,10 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	calibrates := r.opts.Recipe.Detector.Use != useOff
-	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe), r.scratch()); err != nil {
+	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe, r.opts.Cycles), r.scratch()); err != nil {
 		return 0, err
 	}
-	if r.roles, err = assign(r.seq, r.album.Frames, calibrates); err != nil {
+	if r.roles, err = assign(r.seq, r.album.Frames, calibrates, r.opts.Cycles); err != nil {
 		return 0, err
 	}
 	r.heedAudit()

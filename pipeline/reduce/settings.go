@@ -7,7 +7,7 @@ import "mirrorloom/pipeline/product"
 func (r *reduction) settings() map[string]any {
 	recipe := r.opts.Recipe
 	stage := func(s StageRecipe) map[string]any { return map[string]any{"use": s.Use} }
-	return map[string]any{
+	settings := map[string]any{
 		"night":        r.opts.NightName,
 		"sequence":     r.opts.SequenceName,
 		"cube":         r.opts.Cube,
@@ -28,6 +28,10 @@ func (r *reduction) settings() map[string]any {
 			"throughput": stage(recipe.Throughput), "repair": stage(recipe.Repair),
 		},
 	}
+	if len(r.opts.Cycles) > 0 {
+		settings["cycles"] = r.opts.Cycles
+	}
+	return settings
 }
 
 // inputs are the files that rule the reduction, with their digests; the ledger

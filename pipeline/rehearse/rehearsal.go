@@ -72,6 +72,9 @@ func newRehearsal(seq *sequence.Sequence, scene *Scene, opts Options) (*rehearsa
 	if slices.ContainsFunc(seq.Steps, func(s sequence.Step) bool { return s.MaskID == "" }) {
 		return nil, errors.New("the sequence's masks have no names; write it first, or read it")
 	}
+	if scene.Atmosphere != nil || len(seq.StepsOf(sequence.RefStar)) > 0 {
+		return nil, errors.New("atmosphere and reference stars are not drawn by this version; leave them out of scene and target")
+	}
 	g := nominalGeometry(seq)
 	if !opts.Perfect {
 		g = offsetGeometry(g, seq.Profile.Detector, opts.Seed)

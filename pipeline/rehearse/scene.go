@@ -20,14 +20,18 @@ const (
 	KindGalaxy = "galaxy"
 )
 
-// Scene is what lies on the sky: the keys of a scene file. All light is above
-// the atmosphere's extinction, which is not modelled.
+// Scene is what lies on the sky: the keys of a scene file. The light of sources is that
+// above the atmosphere.
 type Scene struct {
 	// SeeingFWHMArcsec is the full width at half maximum of the seeing, a
 	// circular Gaussian, the same at all wavelengths.
 	SeeingFWHMArcsec float64  `yaml:"seeing_fwhm_arcsec"`
 	Sources          []Source `yaml:"sources" config:"optional"`
 	Sky              Sky      `yaml:"sky" config:"optional"`
+	// Atmosphere dims and moves the sources; nil for a telescope above the air.
+	Atmosphere *Atmosphere `yaml:"atmosphere" config:"optional"`
+	// RefStar is what refstar steps see; nil in a scene without.
+	RefStar *RefStar `yaml:"refstar" config:"optional"`
 
 	files map[string][]byte
 	// spectra are the tables of the CSV files, by name.

@@ -37,11 +37,20 @@ func (s *Scene) check(doc *config.Doc) error {
 	c.Within("seeing_fwhm_arcsec", s.SeeingFWHMArcsec, 0, maxArcsec)
 	c.That(len(s.Sources) <= maxSources, "sources", "%d sources are too many; give at most %d", len(s.Sources), maxSources)
 	for i := range s.Sources {
-		s.Sources[i].check(c, fmt.Sprintf("sources[%d]", i))
+		s.Sources[i].check(c, sourcePath(i))
 	}
 	s.Sky.check(c)
+	if s.Atmosphere != nil {
+		s.Atmosphere.check(c)
+	}
+	if s.RefStar != nil {
+		s.RefStar.check(c)
+	}
 	return c.Err()
 }
+
+// sourcePath is the key path of source i.
+func sourcePath(i int) string { return fmt.Sprintf("sources[%d]", i) }
 
 func (s *Source) check(c *config.Checks, path string) {
 	c.OneOf(path+".kind", s.Kind, KindStar, KindGaussian, KindRing, KindGalaxy)
@@ -113,9 +122,9 @@ func (s *Scene) validated() error {
 	if err := s.check(nil); err != nil {
 		return err
 	}
-	for i := range s.Sources {
-		if name := s.Sources[i].SpectrumCSV; name != "" && s.spectra[name].nm == nil {
-			return fmt.Errorf("sources[%d].spectrum_csv: %s was not read; load the scene from its file", i, name)
+	for _, at := range s.allSources() {
+		if name := at.source.SpectrumCSV; name != "" && s.spectra[name].nm == nil {
+			return fmt.Errorf("%s.spectrum_csv: %s was not read; load the scene from its file", at.path, name)
 		}
 	}
 	return nil

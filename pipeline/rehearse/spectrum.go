@@ -85,12 +85,12 @@ func parseSpectrum(name string, data []byte) (spectrum, error) {
 // readSpectra reads the CSV files of all sources.
 func (s *Scene) readSpectra(doc *config.Doc, beside func(string) ([]byte, error)) error {
 	s.files, s.spectra = map[string][]byte{}, map[string]spectrum{}
-	for i, source := range s.Sources {
-		name := source.SpectrumCSV
+	for _, placed := range s.allSources() {
+		source, name := placed.source, placed.source.SpectrumCSV
 		if name == "" {
 			continue
 		}
-		path := fmt.Sprintf("sources[%d].spectrum_csv", i)
+		path := placed.path + ".spectrum_csv"
 		if beside == nil {
 			return doc.Errorf(path, "a scene read from memory can name no file; leave the key out")
 		}
@@ -106,7 +106,7 @@ func (s *Scene) readSpectra(doc *config.Doc, beside func(string) ([]byte, error)
 			s.files[name], s.spectra[name] = data, table
 		}
 		if !(s.spectra[name].at(source.AtNM) > 0) {
-			return doc.Errorf(fmt.Sprintf("sources[%d].at_nm", i), "%s has no light at %v nm to scale by ab_mag; give a wavelength where it has", name, source.AtNM)
+			return doc.Errorf(placed.path+".at_nm", "%s has no light at %v nm to scale by ab_mag; give a wavelength where it has", name, source.AtNM)
 		}
 	}
 	return nil

@@ -135,7 +135,7 @@ func (s *Sequence) checkStep(i int) error {
 		return fault("step %d has ROW %d where the code has rows 0 to %d", st.Step, st.Row, s.V-1)
 	case st.Kind == Science && st.Row < 0:
 		return fault("step %d is a science step without a code ROW", st.Step)
-	case st.Row >= 0 && (st.Kind == Bias || st.Kind == Dark || st.Kind == AllOn || st.Kind == AllOff):
+	case st.Row >= 0 && (st.Kind == Bias || st.Kind == Dark || st.Kind == AllOn || st.Kind == AllOff || st.Kind == RefStar):
 		return fault("step %d is of kind %s and has the code ROW %d, not -1", st.Step, st.Kind, st.Row)
 	case (st.Row >= 0) != (st.Cycle >= 1) || st.Cycle < 0:
 		return fault("step %d has ROW %d and CYCLE %d: cycles count from 1 for code rows and are 0 without", st.Step, st.Row, st.Cycle)
@@ -164,9 +164,29 @@ func (s *Sequence) checkBits(i int, code *codeRows) error {
 		return fault("CODE row %d belongs to a step of kind all-on and is not 1 throughout", i+1)
 	case (st.Kind == Bias || st.Kind == Dark || st.Kind == AllOff) && ones != 0:
 		return fault("CODE row %d belongs to a step of kind %s and is not 0 throughout", i+1, st.Kind)
+	case st.Kind == RefStar:
+		return s.checkWide(i)
 	default:
 		if p, _ := s.Pattern(i); p == PatternOther {
 			return fault("CODE row %d shows neither a code row nor all, no, every other or one element", i+1)
+		}
+	}
+	return nil
+}
+
+// checkWide demands of a refstar step that it opens the elements that the target names,
+// and no dark column.
+func (s *Sequence) checkWide(i int) error {
+	star := s.Target.Calibration.RefStar
+	if star == nil {
+		return fault("step %d is of kind refstar where target.yaml has no calibration.refstar", s.Steps[i].Step)
+	}
+	if first, last, ok := s.WideElement(i); !ok || [2]int{first, last} != star.Elements {
+		return fault("CODE row %d does not open the elements %d to %d, as calibration.refstar of target.yaml says", i+1, star.Elements[0], star.Elements[1])
+	}
+	for _, column := range s.DarkColumns() {
+		if s.Code[i][column] != 0 {
+			return fault("CODE row %d belongs to a step of kind refstar and opens the dark column %d", i+1, column)
 		}
 	}
 	return nil

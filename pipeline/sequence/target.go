@@ -86,6 +86,8 @@ type Calibration struct {
 	Dark DarkFrames `yaml:"dark" config:"optional"`
 	Flat FlatFrames `yaml:"flat" config:"optional"`
 	Arc  ArcFrames  `yaml:"arc" config:"optional"`
+	// RefStar asks for frames of a star of known flux; nil for none.
+	RefStar *RefStarFrames `yaml:"refstar" config:"optional"`
 }
 
 // BiasFrames asks for Count frames of no exposure time.
@@ -120,6 +122,22 @@ type ArcFrames struct {
 	Lamp string `yaml:"lamp" config:"optional"`
 	// Every chooses the elements 0, Every, 2 Every ... and the last one.
 	Every int `yaml:"every" config:"optional"`
+}
+
+// RefStarFrames asks for frames of a reference star, whose flux is known, through
+// neighbouring elements that are all open: one wide element, that no light of the star
+// may miss. The telescope points so that the star stands in its middle, between the
+// device's rows; rows away from the star show the sky of the same frame.
+type RefStarFrames struct {
+	// Name is the star's.
+	Name         string  `yaml:"name"`
+	Count        int     `yaml:"count"`
+	DwellSeconds float64 `yaml:"dwell_s"`
+	// RADeg and DecDeg are its ICRS position.
+	RADeg  float64 `yaml:"ra_deg"`
+	DecDeg float64 `yaml:"dec_deg"`
+	// Elements are the first and the last element that are open.
+	Elements [2]int `yaml:"elements,flow"`
 }
 
 // SetDefaults sets what absent keys mean.

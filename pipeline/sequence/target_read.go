@@ -124,6 +124,22 @@ func (t *Target) checkCalibration(c *config.Checks) {
 	if k.Arc.Count > 0 {
 		checkLamp(c, "calibration.arc.lamp", k.Arc.Lamp)
 	}
+	if k.RefStar != nil {
+		k.RefStar.check(c, "calibration.refstar")
+	}
+}
+
+func (r *RefStarFrames) check(c *config.Checks, path string) {
+	c.That(printable(r.Name, maxNameBytes), path+".name", "%q is no name; write 1 to %d printable ASCII characters", r.Name, maxNameBytes)
+	c.Count(path+".count", r.Count, 1, maxFrames)
+	c.Positive(path+".dwell_s", r.DwellSeconds)
+	c.Within(path+".dwell_s", r.DwellSeconds, 0, maxDwellSeconds)
+	c.That(r.RADeg >= 0 && r.RADeg < 360, path+".ra_deg", "%v is outside 0 to below 360; give degrees", r.RADeg)
+	c.Within(path+".dec_deg", r.DecDeg, -90, 90)
+	for i, j := range r.Elements {
+		c.Count(fmt.Sprintf("%s.elements[%d]", path, i), j, 0, maxV-1)
+	}
+	c.That(r.Elements[0] <= r.Elements[1], path+".elements", "%d lies before %d; exchange them", r.Elements[1], r.Elements[0])
 }
 
 func checkLit(c *config.Checks, path string, count int, dwell float64) {
