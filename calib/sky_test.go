@@ -189,7 +189,7 @@ func TestSkySubtract(t *testing.T) {
 		before := make([][]float32, voxels)
 		for l := range voxels {
 			before[l] = append([]float32(nil), variance[l]...)
-			sky.Subtract(l, signal[l], variance[l], flags[l], BadPixel)
+			sky.Subtract(l, signal[l], variance[l], flags[l], BadPixel, nil)
 		}
 		for l := 1; l < voxels; l++ {
 			for i := range rows * elements {
@@ -244,10 +244,10 @@ func TestSkyVoid(t *testing.T) {
 	require.Equal(t, 1.0, sky.Variance[0]) // 2 x 1/2
 	require.Equal(t, []int{2, 0}, sky.Places)
 	for l := range 2 {
-		sky.Subtract(l, signal[l], variance[l], flags[l], BadPixel)
+		sky.Subtract(l, signal[l], variance[l], flags[l], BadPixel, []float32{1, 1, 0.5})
 	}
-	require.Equal(t, []float32{-1, 1, 7}, signal[0])
-	require.Equal(t, []float32{1, 1, 2}, variance[0]) // 1 - 2/2 + 1
+	require.Equal(t, []float32{-1, 1, 8}, signal[0])
+	require.Equal(t, []float32{1, 1, 1.25}, variance[0]) // 1 - 2/2 + 1, 1 + 1/4
 	for i := range 3 {
 		require.True(t, math.IsNaN(float64(signal[1][i])) && math.IsNaN(float64(variance[1][i])))
 		require.NotZero(t, flags[1][i]&NoData)

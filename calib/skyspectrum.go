@@ -215,15 +215,16 @@ func (r SkyLineRule) mark(sky *SkySpectrum) []bool {
 	return line
 }
 
-// Subtract takes the sky from the plane of voxel l, [row][element], in place. The variance
+// Subtract takes the sky from the plane of voxel l, [row][element], in place: of each
+// place the part of the sky that it sees (nil for 1), less at the slit's ends. The variance
 // of a voxel becomes
 //
-//	var (1 - 2 u) + Variance,  u = its share Weight/TotalWeight in the sky, 0 where it has none,
+//	var (1 - 2 u part) + Variance part^2,  u = its share Weight/TotalWeight in the sky, 0 where it has none,
 //
 // and two voxels p, q of wavelength l then share Covariance. Sky lines are flagged
 // SkyLine; voxels without a sky become NoData.
-func (k *SkySpectrum) Subtract(l int, signal, variance []float32, flags []Flag, bad Flag) {
-	sky := k.Value[l]
+func (k *SkySpectrum) Subtract(l int, signal, variance []float32, flags []Flag, bad Flag, part []float32) {
+	sky, sees := k.Value[l], 1.0
 	for i, w := range k.Weight {
 		if k.Line[l] {
 			flags[i] |= SkyLine
@@ -237,12 +238,16 @@ func (k *SkySpectrum) Subtract(l int, signal, variance []float32, flags []Flag, 
 		if flags[i]&bad == 0 {
 			share = w / k.TotalWeight[l]
 		}
-		signal[i] = float32(float64(signal[i]) - sky)
-		variance[i] = float32(float64(variance[i])*(1-2*share) + k.Variance[l])
+		if part != nil {
+			sees = float64(part[i])
+		}
+		signal[i] = float32(float64(signal[i]) - sees*sky)
+		variance[i] = float32(float64(variance[i])*(1-2*share*sees) + sees*sees*k.Variance[l])
 	}
 }
 
-// Covariance is what the sky adds to two different places of a wavelength: its variance,
+// Covariance is what the sky adds to two different places of a wavelength that see all
+// of it: its variance,
 // less what either had in it; p and q are their variances before and shares, 0 for
 // those that are not blank.
 func (k *SkySpectrum) Covariance(l int, varianceP, shareP, varianceQ, shareQ float64) float64 {

@@ -12,7 +12,7 @@ import (
 // Names of what a cube holds that was brought to the sky, and its units.
 const (
 	SkyTable   = "SKYSPEC"  // the sky that was subtracted, by wavelength
-	SkyShare   = "SKYSHARE" // image: the weight of each element and row in it
+	SkyShare   = "SKYSHARE" // image: weight of each element and row in it, and what part it sees
 	FluxTable  = "FLUXCAL"  // what turned counts into flux, by wavelength
 	UnitFlux   = "aW m-2 nm-1"
 	UnitFlux2  = "aW2 m-4 nm-2"

@@ -104,7 +104,7 @@ func (r *reduction) measureSky(ctx context.Context, source *skyflux.Source, o sk
 	if recipe.Use == useOff {
 		return nil
 	}
-	sky, err := source.MeasureSky(ctx, skyflux.Names{Elements: recipe.Elements, Rows: recipe.Rows}, r.alongSlit(), o)
+	sky, err := source.MeasureSky(ctx, skyflux.Names{Elements: recipe.Elements, Rows: recipe.Rows}, r.lit(), r.alongSlit(), o)
 	if ctx.Err() != nil {
 		return ctx.Err()
 	}

@@ -56,7 +56,7 @@ func (r *reduction) cubeImages(done product.OnSky) ([]fitsutil.ImageSpec, error)
 	}
 	images = append(images, more...)
 	if done.Sky != nil {
-		images = append(images, fitsutil.ImageSpec{Name: product.SkyShare, BITPIX: -32, Axes: []int{r.schema.Elements, r.schema.Rows}})
+		images = append(images, fitsutil.ImageSpec{Name: product.SkyShare, BITPIX: -32, Axes: []int{r.schema.Elements, r.schema.Rows, 2}})
 	}
 	return images, nil
 }

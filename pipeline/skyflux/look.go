@@ -29,8 +29,8 @@ const medianPlaces = 20000
 // and what calib.SkyRule holds.
 const lookBytes = planeBytes + 9*8 + 60
 
-// lookAt makes a look.
-func (s *Source) lookAt(ctx context.Context, rule calib.SkyRule, progress func(done, total int)) (*look, error) {
+// lookAt makes a look at places that see the whole sky.
+func (s *Source) lookAt(ctx context.Context, rule calib.SkyRule, part []float32, progress func(done, total int)) (*look, error) {
 	white, band := newMeans(s.places()), newMeans(s.places())
 	peaks := rule.NewPeaks(s.places(), s.Elements)
 	p := s.newPlane()
@@ -42,6 +42,7 @@ func (s *Source) lookAt(ctx context.Context, rule calib.SkyRule, progress func(d
 		if err := s.read(p, l); err != nil {
 			return nil, err
 		}
+		p.void(part)
 		if level, noise, ok := window.of(p); ok {
 			white.add(p, level, 1/noise)
 			band.add(p, level, 1/noise)
@@ -55,6 +56,18 @@ func (s *Source) lookAt(ctx context.Context, rule calib.SkyRule, progress func(d
 	out := &look{peaks: peaks.Found()}
 	out.picture, out.variance = white.picture()
 	return out, nil
+}
+
+// wholeSky is the least part of the sky that a place must see to be one of blank sky.
+const wholeSky = 0.995
+
+// void takes out of a plane what sees less; nil for nothing.
+func (p *plane) void(part []float32) {
+	for i, v := range part {
+		if v < wholeSky {
+			p.flags[i] |= calib.NoData
+		}
+	}
 }
 
 // means are weighted means over planes, by place.

@@ -50,8 +50,10 @@ func (n Names) hold(element, row int) bool {
 type Sky struct {
 	Record product.SkyRecord
 	Report product.SkyReport
-	// Blank are the places it was measured at, [row][element].
+	// Blank are the places it was measured at, [row][element]. Part is what each place sees
+	// of the sky, less than 1 at the slit's ends.
 	Blank    []bool
+	Part     []float32
 	spectrum *calib.SkySpectrum
 }
 
@@ -59,19 +61,20 @@ type Sky struct {
 const leastPlaces = 8
 
 // MeasureSky chooses the blank places and measures their light. correlated is by how much
-// neighbouring rows share pixels (calib.Correlation's alongSlit), 1 where not known. An
-// error says that the sky cannot be found, and the cure.
-func (s *Source) MeasureSky(ctx context.Context, names Names, correlated float64, o Options) (*Sky, error) {
+// neighbouring rows share pixels (calib.Correlation's alongSlit), 1 where not known; part
+// is what each place sees of the sky, [row][element]. An error says that the sky cannot be
+// found, and the cure.
+func (s *Source) MeasureSky(ctx context.Context, names Names, part []float32, correlated float64, o Options) (*Sky, error) {
 	o.setDefaults()
 	if need := (lookBytes + planeBytes) * int64(s.places()); need > o.MemoryBytes {
 		return nil, fmt.Errorf("sky: %d elements and %d rows need %d MiB of memory; give --memory %d MiB more", s.Elements, s.Rows, need>>20+1, (need-o.MemoryBytes)>>20+1)
 	}
 	rule := calib.DefaultSkyRule()
-	seen, err := s.lookAt(ctx, rule, func(done, total int) { o.Progress("look", done, total) })
+	seen, err := s.lookAt(ctx, rule, part, func(done, total int) { o.Progress("look", done, total) })
 	if err != nil {
 		return nil, err
 	}
-	sky := &Sky{Report: product.SkyReport{Chosen: "blindly"}}
+	sky := &Sky{Part: part, Report: product.SkyReport{Chosen: "blindly"}}
 	usable := 0
 	for _, v := range seen.variance {
 		if v > 0 {
@@ -140,13 +143,13 @@ func (k *Sky) record() {
 	k.Report.Correlated, k.Report.CorrelatedLines = c.Correlated, c.CorrelatedLines
 }
 
-// Share is the image SKYSHARE, [row][element].
+// Share is the image SKYSHARE, [plane][row][element]: weights, and Part.
 func (k *Sky) Share() []float32 {
-	out := make([]float32, len(k.spectrum.Weight))
+	out := make([]float32, len(k.spectrum.Weight), 2*len(k.spectrum.Weight))
 	for i, w := range k.spectrum.Weight {
 		out[i] = float32(w)
 	}
-	return out
+	return append(out, k.Part...)
 }
 
 // each reads every plane once, several at a time; held is the memory in use for each place.

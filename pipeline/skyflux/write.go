@@ -33,7 +33,7 @@ func (s *Source) Write(ctx context.Context, to *fitsutil.Cube, sky *Sky, flux *c
 	err = s.each(ctx, "write", o, 9, func(p *plane, l int) error {
 		before := p.count()
 		if sky != nil {
-			sky.spectrum.Subtract(l, p.signal, p.variance, p.flags, product.FlagBad)
+			sky.spectrum.Subtract(l, p.signal, p.variance, p.flags, product.FlagBad, sky.Part)
 		}
 		if flux != nil {
 			flux.Apply(l, p.signal, p.variance, p.flags)
@@ -57,7 +57,7 @@ func (s *Source) Write(ctx context.Context, to *fitsutil.Cube, sky *Sky, flux *c
 	}
 	next, err := s.copyRest(ctx, to)
 	if err == nil && sky != nil {
-		err = to.WriteStrip(next, 0, s.Rows, 0, 1, sky.Share())
+		err = to.WriteStrip(next, 0, s.Rows, 0, 2, sky.Share())
 	}
 	return voided, good, err
 }
