@@ -35,9 +35,9 @@ type SkyRule struct {
 func DefaultSkyRule() SkyRule {
 	// 4 sigma of 1e5 places and six sides choose a dozen or two by chance, which costs nothing.
 	// 5.5 sigma of 1e5 places in 100 bands choose less than one. A line's light falls by
-	// half within a ring or two beyond where a square still sees it.
+	// degrees beyond where a square still sees it.
 	return SkyRule{Sigmas: 4, Sides: []int{1, 3, 5, 9, 17, 33}, RingSigmas: 1, Margin: 1, Least: 0.05,
-		PeakSigmas: 5.5, PeakSides: []int{3, 9}, PeakMargin: 2}
+		PeakSigmas: 5.5, PeakSides: []int{3, 9}, PeakMargin: 4}
 }
 
 // SkyChoice is where the sky is blank, [row][element].
