@@ -67,7 +67,7 @@ type Result struct {
 }
 
 // ExitDegraded is run.json's exit for a product that is not whole.
-const ExitDegraded = 3
+const ExitDegraded = product.ExitDegraded
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
 // ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
