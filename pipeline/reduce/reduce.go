@@ -280,7 +280,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
 	if s.cube {
-		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
+		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
