@@ -34,8 +34,7 @@ func (d *rowData) gram(frames int) (*hadamard.Gram, []float64) {
 	}
 	g, level := hadamard.NewGram(frames), make([]float64, frames)
 	g.Add(y, s2, n, d.n, float32(d.floor))
-	for p := range n {
-		scale := 1 / math.Sqrt(variance(s2[p:], frames, d.n, d.floor))
+	for p, scale := range d.scales(s2, n) {
 		for m := range frames {
 			level[m] += float64(y[m*d.n+p]) * scale
 		}
@@ -43,13 +42,22 @@ func (d *rowData) gram(frames int) (*hadamard.Gram, []float64) {
 	return g, level
 }
 
-// variance is the mean of a sample's variances, as Gram weighs it.
-func variance(s2 []float32, frames, stride int, floor float64) float64 {
-	sum := 0.0
-	for m := range frames {
-		sum += float64(s2[m*stride])
+// scales are 1/s of n samples, s^2 the mean of a sample's variances s2, as Gram weighs it.
+func (d *rowData) scales(s2 []float32, n int) []float64 {
+	scale := make([]float64, n)
+	if d.n == 0 {
+		return scale
 	}
-	return max(sum/float64(frames), floor)
+	frames := len(s2) / d.n
+	for m := range frames {
+		for p, v := range s2[m*d.n : m*d.n+n] {
+			scale[p] += float64(v)
+		}
+	}
+	for p, sum := range scale {
+		scale[p] = 1 / math.Sqrt(max(sum/float64(frames), d.floor))
+	}
+	return scale
 }
 
 // A reading is a hit that no look at its pixel told if its check is off by more than
@@ -60,70 +68,136 @@ const (
 	hitSpans  = 30
 	// calm is the upper quartile of chi-square of one degree of freedom, with room.
 	calm = 1.6
+	// ruleSamples are enough to tell what is common; the first rows spread evenly over
+	// the detector.
+	ruleSamples = 1 << 12
 )
+
+// hitRule tells hits under the pairing and the factors of a state.
+type hitRule struct {
+	*state
+	basis *mat.Dense // L with LL' = P: L'y are the checks
+	// common is what a code row's checks are beyond noise, at brightness 1; +Inf for
+	// rows that no check sees.
+	common []float64
+}
+
+// rule learns what is common from the first rows.
+func (s *sampler) rule(st *state) *hitRule {
+	r := &hitRule{state: st, basis: basis(st.projector, st.freedom), common: make([]float64, st.v)}
+	squares := make([][]float64, st.v)
+	var bright []float64
+	for _, d := range s.data {
+		if len(bright) >= ruleSamples {
+			break
+		}
+		checks, b := r.checks(d)
+		bright = append(bright, b...)
+		for k := range st.v {
+			own := st.projector.At(k, k)
+			if own <= leastSeen {
+				continue
+			}
+			for p, off := range d.struck {
+				if !off {
+					x := checks.At(k, p)
+					squares[k] = append(squares[k], x*x/own)
+				}
+			}
+		}
+	}
+	typical := max(median(bright), 1)
+	for k, list := range squares {
+		r.common[k] = math.Inf(1)
+		if len(list) > 0 {
+			r.common[k] = max(0, nth(list, len(list)*3/4)-calm) / typical
+		}
+	}
+	return r
+}
+
+// checks gives each reading's part in what the dark columns show, a row a code row, and
+// each sample's brightness.
+func (r *hitRule) checks(d *rowData) (checks *mat.Dense, bright []float64) {
+	bright = make([]float64, d.n)
+	if d.n == 0 {
+		return nil, bright
+	}
+	y, scale := mat.NewDense(r.v, d.n, nil), d.scales(d.s2, d.n)
+	for k, m := range r.from {
+		if m == none {
+			continue
+		}
+		row := y.RawRowView(k)
+		for p, v := range d.y[m*d.n : (m+1)*d.n] {
+			row[p] = r.factor[k] * float64(v) * scale[p]
+			bright[p] += row[p] / float64(r.v)
+		}
+	}
+	for p, mean := range bright {
+		bright[p] = 1 + mean*mean
+	}
+	var seen mat.Dense
+	seen.Mul(r.basis.T(), y)
+	y.Mul(r.basis, &seen)
+	return y, bright
+}
+
+// strike marks a row's samples with hits, and gives their number.
+func (r *hitRule) strike(d *rowData) (found int) {
+	checks, bright := r.checks(d)
+	for k, common := range r.common {
+		if math.IsInf(common, 1) || d.n == 0 {
+			continue
+		}
+		own := r.projector.At(k, k)
+		for p, x := range checks.RawRowView(k) {
+			if !d.struck[p] && x*x > own*(hitSquare+hitSpans*common*bright[p]) {
+				d.struck[p] = true
+				found++
+			}
+		}
+	}
+	return found
+}
+
+// basis is L, of so many columns, with LL' = P: Cholesky's factor of a projector, pivot
+// by pivot (a rank revealing one, Higham 1990, in Reliable Numerical Computation, 161).
+func basis(p *mat.Dense, rank int) *mat.Dense {
+	v, _ := p.Dims()
+	l := mat.NewDense(v, rank, nil)
+	left := make([]float64, v) // the diagonal of what is left of P
+	for k := range left {
+		left[k] = p.At(k, k)
+	}
+	for c := range rank {
+		pivot := 0
+		for k, x := range left {
+			if x > left[pivot] {
+				pivot = k
+			}
+		}
+		if left[pivot] < leastSeen {
+			break
+		}
+		root, at := math.Sqrt(left[pivot]), l.RawRowView(pivot)[:c]
+		for k := range v {
+			row := l.RawRowView(k)
+			row[c] = (p.At(k, pivot) - dot(at, row)) / root
+			left[k] -= row[c] * row[c]
+		}
+		left[pivot] = 0
+	}
+	return l
+}
 
 // clean marks the samples in which a single reading contradicts the others under the
 // pairing and the factors of a state, and returns how many there are. Hits of bright
 // pixels hide among the masks' own light until the pairing is known.
-func (s *sampler) clean(st *state) int {
-	frames := len(s.album.Frames)
-	squares := make([][]float64, st.v) // of each row's checks, over all samples
-	bright := make([][]float64, len(s.data))
-	checks := make([]*mat.Dense, len(s.data))
-	for i, d := range s.data {
-		if d.n == 0 {
-			continue
-		}
-		y := mat.NewDense(st.v, d.n, nil)
-		bright[i] = make([]float64, d.n)
-		for p := range d.n {
-			scale := 1 / math.Sqrt(variance(d.s2[p:], frames, d.n, d.floor))
-			mean := 0.0
-			for k, m := range st.from {
-				if m != none {
-					x := st.factor[k] * float64(d.y[m*d.n+p]) * scale
-					y.Set(k, p, x)
-					mean += x / float64(st.v)
-				}
-			}
-			bright[i][p] = 1 + mean*mean
-		}
-		checks[i] = new(mat.Dense)
-		checks[i].Mul(st.projector, y)
-		for k := range st.v {
-			if own := st.projector.At(k, k); own > leastSeen {
-				for p, r := range checks[i].RawRowView(k) {
-					if !d.struck[p] {
-						squares[k] = append(squares[k], r*r/own)
-					}
-				}
-			}
-		}
-	}
-	var all []float64
-	for _, b := range bright {
-		all = append(all, b...)
-	}
-	typical := max(median(all), 1)
-	found := 0
-	for k := range st.v {
-		own := st.projector.At(k, k)
-		if own <= leastSeen || len(squares[k]) == 0 {
-			continue
-		}
-		slices.Sort(squares[k])
-		common := max(0, squares[k][len(squares[k])*3/4]-calm) / typical
-		for i, d := range s.data {
-			if checks[i] == nil {
-				continue
-			}
-			for p, r := range checks[i].RawRowView(k) {
-				if !d.struck[p] && r*r/own > hitSquare+hitSpans*common*bright[i][p] {
-					d.struck[p] = true
-					found++
-				}
-			}
-		}
+func (s *sampler) clean(st *state) (found int) {
+	rule := s.rule(st)
+	for _, d := range s.data {
+		found += rule.strike(d)
 	}
 	if found > 0 {
 		s.resum()

@@ -19,6 +19,8 @@ type Cycle struct {
 	// Parts are the same of parts of the sample, to tell what all of it shows from what
 	// a few pixels do; nil if there are none.
 	Parts []*hadamard.Gram
+	// MostPixels is how large the sample may get; 0 if it cannot grow.
+	MostPixels int
 	// Pairing is, by code row, the frame that is labelled with it; none without.
 	Pairing []int
 	// Spare are frames without a label, more than there are rows.

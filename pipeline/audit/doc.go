@@ -35,7 +35,10 @@
 //
 // Cosmic rays are left out twice: readings far above their pixel's series (strike), and
 // those that contradict the checks of the pairing found where their frame does not
-// elsewhere (clean); then the cycle is judged again.
+// elsewhere (clean); then the cycle is judged again, and rows that the sample grows by are
+// cleaned under that pairing before they are added. It grows as long as some exchange of
+// two frames is neither excluded nor harmless nor beyond what the largest sample could
+// tell (sure).
 //
 // What no dark column sees: all masks flipped or shifted alike. All masks inverted turn
 // the light negative, which is seen (Verdict.AllInverted).

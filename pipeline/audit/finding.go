@@ -68,4 +68,7 @@ type Verdict struct {
 	// Sure tells that every other way to pair two frames is excluded by the odds, or
 	// harmless.
 	Sure bool
+	// Wanted is the size that the sample should have to exclude those that are not;
+	// Pixels where more would not help.
+	Wanted int
 }

@@ -110,16 +110,6 @@ func (s *state) everywhere(k int, limit float64) bool {
 	return out <= len(s.Parts)/parts
 }
 
-func median(x []float64) float64 {
-	if len(x) == 0 {
-		return 0
-	}
-	sorted := slices.Clone(x)
-	slices.Sort(sorted)
-	n := len(sorted)
-	return (sorted[(n-1)/2] + sorted[n/2]) / 2
-}
-
 func sumOf(x []float64) float64 {
 	sum := 0.0
 	for _, v := range x {

@@ -9,6 +9,10 @@ import (
 // 1e6 to 1.
 var sureLogOdds = math.Log(1e6)
 
+// unexplained is how many standard deviations of the noise a pairing's excess must have
+// for others of all frames to be looked at.
+const unexplained = 2
+
 // Judge finds the pairing of a cycle's frames that the dark columns speak for.
 //
 // Hypotheses are weighed by half the difference of their chi-square over the scatter
@@ -36,8 +40,9 @@ func judge(c *Cycle) (*Verdict, *state, error) {
 	few.run()
 	best := few
 	dark := float64(e.pixels) * float64(e.freedom)
-	// No other pairing can gain more than the whole excess.
-	if most := few.state.excess + 4*math.Sqrt(2*dark); (separation{most, dark}).logOdds(most) > sureLogOdds {
+	// What noise explains needs no other order: one that is wrong all over would have
+	// left much more, or the sample is too small to tell.
+	if few.state.excess > unexplained*math.Sqrt(2*dark) {
 		name, whole, tried := e.searchWhole()
 		if whole == nil {
 			return best.verdict(v), best.state, nil
@@ -69,7 +74,7 @@ func (h *hunt) verdict(v *Verdict) *Verdict {
 	if h.state.expected > 0 {
 		v.Chi2 = 1 + h.state.excess/h.state.expected
 	}
-	v.Sure = h.sure()
+	v.Sure, v.Wanted = h.state.sure()
 	v.NegativeSigmas = h.state.negative()
 	v.AllInverted = v.NegativeSigmas > negativeSigmas
 	return v
@@ -377,28 +382,4 @@ func (h *hunt) fill() {
 			h.state, f.Kind = next, Moved
 		}
 	}
-}
-
-// sure tells whether every exchange of two frames is excluded by the odds, or harmless.
-func (h *hunt) sure() bool {
-	s := h.state
-	q := s.scatter()
-	for k := range s.v {
-		if s.erased[k] {
-			continue
-		}
-		for i := k + 1; i < s.v; i++ {
-			if s.erased[i] {
-				continue
-			}
-			p := s.exchange(k, i)
-			// The rms change of voxels by an exchange is sqrt(2 d^2/(s^2 v)).
-			between := s.sum.At(k, k) + s.sum.At(i, i) - 2*s.sum.At(k, i) - s.noise[k] - s.noise[i]
-			harmful := 2*between/(float64(s.pixels)*float64(s.v)) > HarmlessSigma*HarmlessSigma
-			if harmful && p.expected()/q < sureLogOdds+2*math.Log(float64(s.v)) {
-				return false
-			}
-		}
-	}
-	return true
 }

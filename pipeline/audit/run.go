@@ -60,9 +60,9 @@ type CycleReport struct {
 const maxPedestals = 4
 
 // Run audits the science frames of a night, cycle by cycle. The sample of a cycle
-// starts with a thousand pixels and doubles until every other pairing of two frames is
-// excluded or harmless, the detector's rows run out, or the sums would take longer than
-// they may. The result does not depend on the workers.
+// starts with a thousand pixels and grows until every other pairing of two frames is
+// excluded or harmless, or more pixels would not help, the detector's rows run out, or
+// the sums would take longer than they may. The result does not depend on the workers.
 //
 // Errors are those of reading, the context's, and a *hadamard.NoCodeError.
 func Run(ctx context.Context, seq *sequence.Sequence, frames []Frame, opts Options) (*Report, error) {
@@ -184,6 +184,10 @@ const (
 	sampleWork   = 16e9
 )
 
+// fastest is how many times as large a sample gets at once: what it is expected to need
+// is known poorly while it is small.
+const fastest = 4
+
 // cleanings is how often hits are looked for before a sample is judged at its size.
 const cleanings = 3
 
@@ -208,25 +212,29 @@ func (a *audit) cycle(ctx context.Context, number int, frames []Frame) (_ *Cycle
 	most := sampleWork / float64(len(frames)*len(frames))
 	limit := int(min(max(most, leastSamples), mostSamples)) / perRow
 	report := &CycleReport{Cycle: number, Frames: frames, Steps: steps}
-	for rows := (firstSamples + perRow - 1) / perRow; ; rows *= 2 {
-		more, err := s.grow(ctx, min(rows, max(limit, 1)))
+	c.MostPixels = min(limit, len(s.rows)) * perRow
+	var st *state
+	for rows := (firstSamples + perRow - 1) / perRow; ; {
+		more, err := s.grow(ctx, min(rows, max(limit, 1)), st)
 		if err != nil {
 			return nil, err
 		}
 		for range cleanings {
 			c.Gram, c.Parts, c.Level = s.gram, s.parts, s.level
-			var st *state
+			before := st
 			if report.Verdict, st, err = judge(c); err != nil {
 				return nil, err
 			}
-			if st == nil || s.clean(st) == 0 {
+			if st == nil || st.alike(before) || s.clean(st) == 0 {
 				break
 			}
 		}
 		report.Rows = s.used
-		if report.Sure || !more || rows >= limit {
+		if report.Wanted <= report.Pixels || !more || rows >= limit {
 			return report, ctx.Err()
 		}
+		times := math.Ceil(float64(report.Wanted) / float64(report.Pixels))
+		rows *= int(min(max(times, 2), fastest))
 	}
 }
 

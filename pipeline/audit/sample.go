@@ -4,7 +4,6 @@ import (
 	"context"
 	"math"
 	"math/bits"
-	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/hadamard"
@@ -83,11 +82,16 @@ func codedRows(seq *sequence.Sequence, reach float64) []int {
 	return rows
 }
 
-// grow adds rows until so many are used, and returns false if there are no more.
-func (s *sampler) grow(ctx context.Context, rows int) (more bool, err error) {
+// grow adds rows until so many are used, cleaned of the hits that a state tells (nil for
+// none), and returns false if there are no more.
+func (s *sampler) grow(ctx context.Context, rows int, st *state) (more bool, err error) {
 	rows = min(rows, len(s.rows))
 	if s.gram == nil {
 		s.reset()
+	}
+	var rule *hitRule
+	if st != nil {
+		rule = s.rule(st)
 	}
 	scratch := make([]rowScratch, s.workers)
 	for s.used < rows {
@@ -96,6 +100,9 @@ func (s *sampler) grow(ctx context.Context, rows int) (more bool, err error) {
 		sums := make([]*rowData, n)
 		err := parallel.Do(ctx, s.workers, n, func(worker, i int) (err error) {
 			sums[i], err = s.row(s.rows[s.used+i], &scratch[worker])
+			if err == nil && rule != nil {
+				rule.strike(sums[i])
+			}
 			return err
 		})
 		if err != nil {
@@ -212,7 +219,7 @@ func (s *sampler) strike(w *rowScratch, y int) {
 		for m := range frames {
 			w.series[m] = w.neighbours(m, x, columns)
 		}
-		if _, around, _ := quartiles(w.series); around > 0 && middle > 0 {
+		if around := nth(w.series, frames/2); around > 0 && middle > 0 {
 			ratio[x] = min(middle/around, 2)
 		}
 		for m := range frames {
@@ -284,10 +291,4 @@ func (s *sampler) bin(w *rowScratch, y int) *rowData {
 		copy(d.s2[m*n:(m+1)*n], w.s2[m*stride:])
 	}
 	return d
-}
-
-// quartiles reorders x.
-func quartiles(x []float32) (low, middle, high float32) {
-	slices.Sort(x)
-	return x[len(x)/4], x[len(x)/2], x[len(x)*3/4]
 }

@@ -28,11 +28,20 @@ func (p separation) expected() float64 { return p.logOdds(p.delta) }
 // p = a'Pa/2 and D the light between the two readings, delta = 2 p D and the variance
 // is 4 (1-p) (delta + 4 p pixels).
 func (s *state) exchange(k, i int) separation {
-	p := (s.projector.At(k, k) + s.projector.At(i, i) - 2*s.projector.At(k, i)) / 2
-	light, _ := cheapest(s.sum.At(k, k)-s.noise[k], s.sum.At(k, i), s.sum.At(i, i)-s.noise[i], 0)
-	delta := 2 * p * light
-	// In terms of 4 (delta + noise), which keeps a little more noise.
-	return separation{delta, 4 * p * (1 - p) * float64(s.pixels)}
+	p, light := s.apart(k, i)
+	return s.exchanged(p, light)
+}
+
+// exchanged, in terms of 4 (delta + noise), keeps a little more noise.
+func (s *state) exchanged(p, light float64) separation {
+	return separation{2 * p * light, 4 * p * (1 - p) * float64(s.pixels)}
+}
+
+// apart is the p and the D of exchange.
+func (s *state) apart(k, i int) (p, light float64) {
+	p = (s.projector.At(k, k) + s.projector.At(i, i) - 2*s.projector.At(k, i)) / 2
+	light, _ = cheapest(s.sum.At(k, k)-s.noise[k], s.sum.At(k, i), s.sum.At(i, i)-s.noise[i], 0)
+	return p, light
 }
 
 // between separates the meanings w and own of the frame of an erased row k. With unit

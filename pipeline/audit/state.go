@@ -28,6 +28,12 @@ type state struct {
 	product          *mat.Dense // see lit
 }
 
+// alike tells whether another state, nil for none, believes the same frames in the same
+// rows.
+func (s *state) alike(other *state) bool {
+	return other != nil && slices.Equal(s.from, other.from) && slices.Equal(s.erased, other.erased)
+}
+
 // lit is PG, computed once.
 func (s *state) lit() *mat.Dense {
 	if s.product == nil {

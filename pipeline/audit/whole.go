@@ -144,21 +144,6 @@ func (e *engine) level() []float64 {
 	return factor
 }
 
-// rough is the excess of a pairing with given factors of the frames.
-func (e *engine) rough(from []int, factor []float64) float64 {
-	s := e.unfitted(from, nil)
-	if s == nil {
-		return math.Inf(1)
-	}
-	for k, m := range s.from {
-		if m != none {
-			s.factor[k] = factor[m]
-		}
-	}
-	s.scale()
-	return s.excess
-}
-
 // wholeShortlist is how many pairings of a family get throughputs of their own.
 const wholeShortlist = 3
 
@@ -166,9 +151,9 @@ const wholeShortlist = 3
 // and the number that were tried; nil without one.
 func (e *engine) searchWhole() (name string, s *state, tried int) {
 	list := e.wholes()
-	factor := e.level()
+	r := e.newRougher()
 	for i := range list {
-		list[i].rough = e.rough(list[i].from, factor)
+		list[i].rough = r.excess(list[i].from)
 	}
 	tried = len(list)
 	slices.SortStableFunc(list, func(a, b whole) int { return compare(a.rough, b.rough) })

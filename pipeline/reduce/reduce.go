@@ -67,7 +67,7 @@ type Result struct {
 }
 
 // ExitDegraded is run.json's exit for a product that is not whole.
-const ExitDegraded = 3
+const ExitDegraded = product.ExitDegraded
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
 // ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
@@ -275,7 +275,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
 	if s.cube {
-		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
+		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()

@@ -1,0 +1,51 @@
+package audit
+
+import "math"
+
+// lightSigmas is by how many standard deviations the light between two frames may be
+// more than the sample shows.
+const lightSigmas = 3
+
+// sure tells whether every exchange of two frames is excluded by the odds, or harmless;
+// and how many pixels the sample should have to exclude those that are not. Where even
+// the largest sample would not do, with as much light as there may be, more pixels are
+// not wanted: rows whose marks on the dark columns are alike cannot be told apart.
+func (s *state) sure() (sure bool, wanted int) {
+	sure, wanted = true, s.pixels
+	limit := (sureLogOdds + 2*math.Log(float64(s.v))) * s.scatter()
+	most := float64(s.MostPixels) / float64(s.pixels)
+	for k := range s.v {
+		if s.erased[k] {
+			continue
+		}
+		for i := k + 1; i < s.v; i++ {
+			if s.erased[i] || s.tame(k, i) {
+				continue
+			}
+			p, light := s.apart(k, i)
+			odds := s.exchanged(p, light).expected()
+			if odds >= limit {
+				continue
+			}
+			sure = false
+			highest := light + lightSigmas*math.Sqrt(8*(float64(s.pixels)+max(light, 0)))
+			// Odds grow with the sample.
+			if s.exchanged(p, highest).expected()*most < limit {
+				continue
+			}
+			times := most
+			if odds > 0 {
+				times = min(limit/odds, most)
+			}
+			wanted = max(wanted, int(math.Ceil(times*float64(s.pixels))))
+		}
+	}
+	return sure, wanted
+}
+
+// tame tells whether the exchange of two rows' frames is harmless: the rms change of
+// voxels by it is sqrt(2 d^2/(s^2 v)).
+func (s *state) tame(k, i int) bool {
+	between := s.sum.At(k, k) + s.sum.At(i, i) - 2*s.sum.At(k, i) - s.noise[k] - s.noise[i]
+	return 2*between/(float64(s.pixels)*float64(s.v)) <= HarmlessSigma*HarmlessSigma
+}
