@@ -57,6 +57,7 @@ func checks() []check {
 		falseAlarms(),
 		audits(),
 		flips(),
+		combined(),
 	}
 }
 

@@ -117,7 +117,7 @@ func (b Band) add(s *Spectrum, g instrument.Grid, unit string) (BandLight, []flo
 	}
 	if perNM(unit) {
 		for l := range w {
-			w[l] *= math.Abs(g.StepNM)
+			w[l] *= math.Abs(g.WidthNM(l))
 		}
 	}
 	for l, v := range w {

@@ -14,9 +14,8 @@ import (
 	"mirrorloom/pipeline/product"
 )
 
-// ErrGrid marks a cube whose wavelengths extract cannot place on the detector: not
-// linear, not in vacuum, or not as observed.
-var ErrGrid = errors.New("extract reads linear grids of vacuum wavelength in nm, as observed; reduce again with such a grid")
+// ErrGrid marks a cube whose world coordinates are not as reduce writes them.
+var ErrGrid = errors.New("extract cannot place its voxels on the detector")
 
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
@@ -27,7 +26,9 @@ type Cube struct {
 	SHA                        string
 	Elements, Rows             int
 	Grid                       instrument.Grid
-	Unit                       string // BUNIT of SIGNAL
+	Frame                      product.SpectralFrame // to which the grid's wavelengths belong
+	edges, centres             calib.Wavelengths     // of the voxels
+	Unit                       string                // BUNIT of SIGNAL
 	signal, variance, flags    *fitsutil.Image
 	pixelVariance              *fitsutil.Image
 	slitResponse, bandResponse *fitsutil.Image // nil without a response
@@ -136,34 +137,22 @@ func (c *Cube) fault(format string, args ...any) error {
 }
 
 func (c *Cube) readGrid() error {
-	kind, err := c.signal.Header.Str("CTYPE3")
+	s, err := product.ReadSchema(c.signal.Header, c.signal.Axes)
 	if err != nil {
-		return err
+		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
-	unit, err := c.signal.Header.Str("CUNIT3")
-	if err != nil {
-		return err
-	}
-	frame, err := c.signal.Header.Str("SPECSYS")
-	if err != nil {
-		return err
-	}
-	if kind != "WAVE" || unit != "nm" || frame != string(product.Topocentric) {
-		return fmt.Errorf("%s: the wavelength axis is %s in %s, %s: %w", c.Path(), kind, unit, frame, ErrGrid)
-	}
-	c.Grid.Count = c.signal.Planes()
-	if c.Grid.FirstNM, err = c.signal.Header.Float("CRVAL3"); err != nil {
-		return err
-	}
-	if c.Grid.StepNM, err = c.signal.Header.Float("CD3_3"); err != nil {
-		return err
-	}
-	reference, err := c.signal.Header.Float("CRPIX3")
-	if err != nil {
-		return err
-	}
-	c.Grid.FirstNM += (1 - reference) * c.Grid.StepNM
+	c.Grid, c.Frame = s.Grid, s.Frame
+	axis := c.axis()
+	c.edges, c.centres = c.edgesOf(0, axis.Grid.Count), calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), 0, axis.Grid.Count)
 	return nil
+}
+
+func (c *Cube) axis() product.SpectralAxis { return product.SpectralAxis{Grid: c.Grid, Frame: c.Frame} }
+
+// edgesOf are the edges of voxels from..to-1, one more than voxels.
+func (c *Cube) edgesOf(from, to int) calib.Wavelengths {
+	axis := c.axis()
+	return calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), float64(from)-0.5, to-from+1)
 }
 
 // readResponse reads BANDRESP whole: it is as large as a row of the cube.
@@ -233,7 +222,7 @@ func (c *Cube) readGeometry() error {
 	if err := product.ReadGeometry(header, c.geometry.Parameters()); err != nil {
 		return err
 	}
-	if err := c.geometry.Check(c.noise.Columns, c.noise.Rows, c.Grid.WavelengthNM(-0.5), c.Grid.WavelengthNM(float64(c.Grid.Count)-0.5)); err != nil {
+	if err := c.geometry.Check(c.noise.Columns, c.noise.Rows, c.axis().FirstNM(), c.axis().LastNM()); err != nil {
 		return fmt.Errorf("%s: %w", c.Path(), err)
 	}
 	if c.noise.Rows != c.Rows || c.pixelVariance.Planes() != 2 {

@@ -7,6 +7,7 @@ import (
 
 	"mirrorloom/internal/trial"
 	"mirrorloom/pipeline/extract"
+	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/reduce"
 	"mirrorloom/pipeline/rehearse"
 )
@@ -16,8 +17,9 @@ import (
 func init() { extract.TinyRun = tinyRun }
 
 // tinyRun makes a night of the tiny field, with a slit and a trace that lean, and
-// reduces it. It returns the run's folder.
-func tinyRun(t *testing.T, family string, v, dark int) string {
+// reduces it with a recipe that change, if there is one, changes. It returns the run's
+// folder.
+func tinyRun(t *testing.T, family string, v, dark int, change ...string) string {
 	t.Helper()
 	field, err := trial.Tiny()
 	require.NoError(t, err)
@@ -26,7 +28,23 @@ func tinyRun(t *testing.T, family string, v, dark int) string {
 	night, err := field.Plan(t.Context(), t.TempDir())
 	require.NoError(t, err)
 	require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 5, NoTruth: true}))
-	_, err = night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true})
+	recipe, err := reduce.LoadRecipe("nominal")
 	require.NoError(t, err)
+	for _, name := range change {
+		changes[name](field, recipe)
+	}
+	result, err := night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true, Recipe: recipe})
+	require.NoError(t, err)
+	require.Empty(t, result.Degraded)
 	return night.Run(trial.Noisy)
+}
+
+// changes of the recipe by their names.
+var changes = map[string]func(*trial.Field, *reduce.Recipe){
+	"air, log": func(f *trial.Field, r *reduce.Recipe) {
+		g := f.Profile.Grid
+		r.Grid.FirstNM, r.Grid.StepNM, r.Grid.Count = g.FirstNM-0.1, g.StepNM, g.Count
+		r.Grid.Axis, r.Grid.Spacing = instrument.Air, instrument.Logarithmic
+	},
+	"barycentric": func(_ *trial.Field, r *reduce.Recipe) { r.Grid.Frame = "barycentric" },
 }

@@ -36,11 +36,8 @@ func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Ima
 		Signal: make([]float32, n), Error: make([]float32, n), Naive: make([]float32, n), Coverage: make([]float32, n), Flags: make([]int16, n),
 	}
 	inside := overlap(c.Grid, b.FromNM, b.ToNM)
-	step := 1.0
-	if perNM(c.Unit) {
-		step = math.Abs(c.Grid.StepNM)
-	}
 	from, to := span(weights)
+	widths := c.widths(from, to)
 	noise := c.newSpectrumNoise()
 	for y0 := 0; y0 < c.Rows; y0 += pieceRows {
 		y1 := min(y0+pieceRows, c.Rows)
@@ -59,12 +56,25 @@ func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Ima
 			for j := range c.Elements {
 				s := v.spectrum((y-y0)*c.Elements + j)
 				noise.setElement(j, from, to)
-				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], step, noise, c.sharedBy(slit, j, from))
+				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], widths, noise, c.sharedBy(slit, j, from))
 			}
 		}
 		progress(y1)
 	}
 	return im, nil
+}
+
+// widths are by what channels from..to-1 are multiplied in a sum: their widths where the
+// cube's values are densities, else 1.
+func (c *Cube) widths(from, to int) []float64 {
+	w := make([]float64, to-from)
+	for i := range w {
+		w[i] = 1
+		if perNM(c.Unit) {
+			w[i] = math.Abs(c.Grid.WidthNM(from + i))
+		}
+	}
+	return w
 }
 
 // span is the range of channels with a weight.
@@ -79,7 +89,7 @@ func span(weights []float64) (from, to int) {
 }
 
 // set computes pixel i from the voxels of its spectrum.
-func (im *Image) set(i int, s spectrumVoxels, weights, inside []float64, step float64, noise *spectrumNoise, r responseNoise) {
+func (im *Image) set(i int, s spectrumVoxels, weights, inside, widths []float64, noise *spectrumNoise, r responseNoise) {
 	var goodBand, allBand, goodSide, allSide float64
 	for l, w := range weights {
 		side := inside[l] - w // what the continuum takes
@@ -103,9 +113,9 @@ func (im *Image) set(i int, s spectrumVoxels, weights, inside []float64, step fl
 		if !s.good(l) {
 			continue
 		}
-		own[l] = step * inside[l] * allBand / goodBand
+		own[l] = widths[l] * inside[l] * allBand / goodBand
 		if allSide > 0 {
-			own[l] -= step * (inside[l] - w) * allSide / goodSide
+			own[l] -= widths[l] * (inside[l] - w) * allSide / goodSide
 		}
 		signal += own[l] * float64(s.signal[l])
 		naive += own[l] * own[l] * float64(s.variance[l])

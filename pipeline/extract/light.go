@@ -93,7 +93,7 @@ func (r *lightReader) trace(y0 int) error {
 				values[l] = 0 // no data: as good as no light
 			}
 		}
-		c.geometry.EdgesX(places, float64(j), float64(y0), c.Grid.FirstNM, c.Grid.StepNM)
+		c.geometry.Places(places, float64(j), float64(y0), c.centres)
 		spread(light[j], values, places)
 	}
 	r.traces[y0] = light

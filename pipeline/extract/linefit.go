@@ -69,7 +69,7 @@ const (
 type lineModel struct {
 	o      *LineOptions
 	edges  []float64 // nm, one more than channels
-	step   float64   // the voxel's width where values are densities, else 1
+	widths []float64 // of the channels where values are densities, else 1
 	middle float64   // of the window, nm
 	half   float64
 	sigma0 float64 // nm
@@ -101,7 +101,7 @@ func (m *lineModel) eval(p, value []float64, slope *mat.Dense) {
 			velocity, sigma, flux := p[s], p[shapes+s], p[m.fluxAt(line)]
 			center := rest * physics.DopplerFactor(velocity)
 			ua, ub := (a-center)/sigma, (b-center)/sigma
-			part := math.Abs(normal(ub)-normal(ua)) / m.step
+			part := math.Abs(normal(ub)-normal(ua)) / m.widths[l]
 			value[l] += flux * part
 			if slope == nil {
 				continue
@@ -109,9 +109,9 @@ func (m *lineModel) eval(p, value []float64, slope *mat.Dense) {
 			sign := math.Copysign(1, b-a)
 			da, db := density(ua), density(ub)
 			slope.Set(l, m.fluxAt(line), part)
-			perNM := -flux * sign * (db - da) / sigma / m.step
+			perNM := -flux * sign * (db - da) / sigma / m.widths[l]
 			slope.Set(l, s, slope.At(l, s)+perNM*center/lightKmS)
-			slope.Set(l, shapes+s, slope.At(l, shapes+s)-flux*sign*(ub*db-ua*da)/sigma/m.step)
+			slope.Set(l, shapes+s, slope.At(l, shapes+s)-flux*sign*(ub*db-ua*da)/sigma/m.widths[l])
 		}
 		t := ((a+b)/2 - m.middle) / m.half
 		at, power := m.fluxAt(len(m.o.RestNM)), 1.0

@@ -52,23 +52,26 @@ func (o *LineOptions) check(g instrument.Grid) (from, to int, err error) {
 		nm := rest * (1 + o.VelocityKmS/lightKmS)
 		low, high = min(low, nm), max(high, nm)
 	}
-	a, b := (low-o.WindowNM-g.FirstNM)/g.StepNM, (high+o.WindowNM-g.FirstNM)/g.StepNM
+	a, b := g.Index(low-o.WindowNM), g.Index(high+o.WindowNM)
 	from, to = int(math.Round(min(a, b))), int(math.Round(max(a, b)))+1
-	if first, last := (low-g.FirstNM)/g.StepNM, (high-g.FirstNM)/g.StepNM; min(first, last) < 0 || max(first, last) > float64(g.Count-1) {
-		return 0, 0, fmt.Errorf("lines at %g to %g nm (observed) are not within the cube's %g to %g nm in vacuum", low, high, g.FirstNM, g.LastNM())
+	if first, last := g.Index(low), g.Index(high); min(first, last) < 0 || max(first, last) > float64(g.Count-1) {
+		return 0, 0, fmt.Errorf("lines at %g to %g nm (observed) are not within the cube's %g to %g nm in vacuum", low, high, g.WavelengthNM(0), g.LastNM())
 	}
 	return max(from, 0), min(to, g.Count), nil
 }
 
 func (o *LineOptions) model(g instrument.Grid, from, to int, unit string) *lineModel {
-	m := &lineModel{o: o, step: 1, sigma0: startSigma * math.Abs(g.StepNM)}
+	m := &lineModel{o: o, sigma0: startSigma * math.Abs(g.WidthNM((from+to)/2))}
 	for l := from; l <= to; l++ {
 		m.edges = append(m.edges, g.WavelengthNM(float64(l)-0.5))
 	}
 	first, last := m.edges[0], m.edges[len(m.edges)-1]
 	m.middle, m.half = (first+last)/2, math.Abs(last-first)/2
-	if perNM(unit) {
-		m.step = math.Abs(g.StepNM)
+	for l := range to - from {
+		m.widths = append(m.widths, 1)
+		if perNM(unit) {
+			m.widths[l] = math.Abs(m.edges[l+1] - m.edges[l])
+		}
 	}
 	return m
 }

@@ -9,15 +9,16 @@ import (
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/product"
 )
 
 // TinyRun makes a run of the tiny field: see fixture_test.go.
-var TinyRun func(t *testing.T, family string, v, dark int) string
+var TinyRun func(t *testing.T, family string, v, dark int, change ...string) string
 
 // tinyRun opens its cube.
-func tinyRun(t *testing.T, family string, v, dark int) *Cube {
+func tinyRun(t *testing.T, family string, v, dark int, change ...string) *Cube {
 	t.Helper()
-	c, err := Open(TinyRun(t, family, v, dark))
+	c, err := Open(TinyRun(t, family, v, dark, change...))
 	require.NoError(t, err)
 	t.Cleanup(func() { c.Close() })
 	return c
@@ -44,7 +45,7 @@ func naive(t *testing.T, c *Cube, a *aperture, scale [][]float32) [][]float64 {
 	// adds to its voxels.
 	resampled := make([][][]float32, len(a.cells))
 	for i, k := range a.cells {
-		c.geometry.EdgesX(edges, float64(k.element), float64(k.row), c.Grid.WavelengthNM(-0.5), c.Grid.StepNM)
+		c.geometry.Places(edges, float64(k.element), float64(k.row), c.edges)
 		for x := range columns {
 			voxels := calib.Voxels{Signal: make([]float32, channels), Variance: make([]float32, channels), Flags: make([]calib.Flag, channels), Stride: 1}
 			clear(straight)
@@ -142,6 +143,14 @@ func TestCovariancesFromTheDefinition(t *testing.T) {
 	}
 }
 
+// So it does on other grids and in other frames.
+func TestCovariancesOnOtherAxes(t *testing.T) {
+	c := tinyRun(t, "m-sequence", 31, 8, "air, log", "barycentric")
+	require.False(t, c.Grid.Even())
+	require.Equal(t, product.Barycentric, c.Frame.Name)
+	compareWithDefinition(t, c, "9-11,14", "7-8")
+}
+
 // compareWithDefinition returns the error of the sum over all channels over what
 // channels of independent elements would have.
 func compareWithDefinition(t *testing.T, c *Cube, elements, rows string) (ratio float64) {
@@ -234,4 +243,26 @@ func TestSpectrumIsCancelled(t *testing.T) {
 	require.ErrorIs(t, err, context.Canceled)
 	_, err = Open(filepath.Join(t.TempDir(), "nothing"))
 	require.Error(t, err)
+}
+
+// A line has the same flux on every grid, and the velocity of its frame.
+func TestLinesOnOtherAxes(t *testing.T) {
+	shape, err := ParseVoxels("2-20", "4-11")
+	require.NoError(t, err)
+	fit := func(c *Cube) Line {
+		s, err := c.Spectrum(t.Context(), SpectrumOptions{Aperture: shape, Lines: &LineOptions{RestNM: []float64{499.216}, WindowNM: 2.2}})
+		require.NoError(t, err)
+		require.Len(t, s.Lines, 1)
+		return s.Lines[0]
+	}
+	log, other := tinyRun(t, "m-sequence", 31, 8, "air, log"), tinyRun(t, "m-sequence", 31, 8, "air, log", "barycentric")
+	plain, want, got := fit(tinyRun(t, "m-sequence", 31, 8)), fit(log), fit(other)
+	require.Greater(t, want.Flux, 10*want.FluxErr)
+	// Other voxels have other parts of the same noise, by half an error or so.
+	require.InDelta(t, plain.Flux, want.Flux, plain.FluxErr)
+	require.InDelta(t, plain.Velocity, want.Velocity, plain.VelocityErr)
+	require.InEpsilon(t, want.Flux, got.Flux, 0.005)
+	frame := other.Frame.VelocityMS() / 1000
+	require.InDelta(t, want.Velocity-frame, got.Velocity, 3)
+	require.Greater(t, math.Abs(frame), 5.0) // so that a wrong sign would show
 }

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/version"
 )
 
@@ -28,6 +29,10 @@ func (c *Cube) primary(more ...card) (*fitsutil.Header, error) {
 		if text, err := from.Str(k.key); err == nil {
 			cards = append(cards, card{k.key, text, k.comment})
 		}
+	}
+	if c.Frame.Name != product.Topocentric {
+		cards = append(cards, card{"SPECSYS", string(c.Frame.Name), "standard of rest of the wavelengths"},
+			card{"VELOSYS", c.Frame.VelocityMS(), "[m/s] observer's recession from the target"})
 	}
 	cards = append(cards,
 		card{"SOFTVERS", "mirrorloom " + version.Version, "software that made this file"},

@@ -56,7 +56,7 @@ func (c *Cube) newTraceRow(a *aperture, y0, from, to int, own func(slot int) []f
 	for i := from; i < to; i++ {
 		j := a.cells[i].element
 		variance := own(a.slot[i])
-		c.geometry.EdgesX(edges, float64(j), float64(y0), c.Grid.WavelengthNM(-0.5), c.Grid.StepNM)
+		c.geometry.Places(edges, float64(j), float64(y0), c.edges)
 		t.reach = append(t.reach, make([][2]int32, (c.noise.Columns+blockPixels-1)/blockPixels))
 		for l := range channels {
 			at, first, scale := len(t.w), 0, 0.0

@@ -1,6 +1,10 @@
 package extract
 
-import "math"
+import (
+	"math"
+
+	"mirrorloom/calib"
+)
 
 // spectrumNoise gives the covariance of the voxels of one element and row, whose
 // wavelengths share pixels. Elements that share pixels as well lie at other
@@ -13,6 +17,9 @@ type spectrumNoise struct {
 	w        []float32
 	first    []int32
 	start    []int32
+	// wavelengths are the edges of channels partFrom..partTo-1.
+	wavelengths      calib.Wavelengths
+	partFrom, partTo int
 }
 
 // newSpectrumNoise is for channels from..to-1 of elements of a row, one at a time.
@@ -44,11 +51,18 @@ func (s *spectrumNoise) setRow(y int) error {
 	return nil
 }
 
+// part are the edges of channels from..to-1, listed once for all elements.
+func (s *spectrumNoise) part(from, to int) calib.Wavelengths {
+	if s.wavelengths.Count() == 0 || from != s.partFrom || to != s.partTo {
+		s.wavelengths, s.partFrom, s.partTo = s.c.edgesOf(from, to), from, to
+	}
+	return s.wavelengths
+}
+
 // setElement computes the weights of channels from..to-1.
 func (s *spectrumNoise) setElement(element, from, to int) {
-	g := s.c.Grid
 	edges := s.edges[:to-from+1]
-	s.c.geometry.EdgesX(edges, float64(element), float64(s.row), g.WavelengthNM(float64(from)-0.5), g.StepNM)
+	s.c.geometry.Places(edges, float64(element), float64(s.row), s.part(from, to))
 	s.w, s.first, s.start = s.w[:0], s.first[:0], s.start[:0]
 	for l := range to - from {
 		s.start = append(s.start, int32(len(s.w)))

@@ -5,6 +5,7 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
+	"mirrorloom/pipeline/scene"
 )
 
 // sight is the air that a candidate's science frames look through, in steps fine enough for
@@ -84,9 +85,6 @@ func (l *Light) bend(s sight) func(nm float64) float64 {
 	const at45Degrees = 45 // tan z = 1
 	atmosphere := air.Over(l.profile.Site)
 	return func(nm float64) float64 {
-		return atmosphere.DifferentialRefraction(max(nm, leastRefractedNM), guide, at45Degrees) * float64(s.centiTan) / 100
+		return atmosphere.DifferentialRefraction(max(nm, scene.LeastRefractedNM), guide, at45Degrees) * float64(s.centiTan) / 100
 	}
 }
-
-// leastRefractedNM is the least wavelength at which the formula for refraction holds.
-const leastRefractedNM = 200

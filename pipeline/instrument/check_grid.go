@@ -22,13 +22,18 @@ func (p *Profile) checkGrid(c *config.Checks) {
 	c.Positive("grid.step_nm", g.StepNM)
 	c.Count("grid.count", g.Count, 1, maxGrid)
 	c.Finite("grid.step_nm", g.LastNM())
-	c.That(g.Axis == Vacuum || !(g.FirstNM-g.StepNM < leastAirNM), "grid.first_nm", "wavelengths in air are not defined below %v nm; use axis: wave", leastAirNM)
-	c.That(g.Spacing == Linear || g.StepNM < g.FirstNM, "grid.step_nm", "a logarithmic step of %v nm at %v nm is no wavelength grid; give a smaller one", g.StepNM, g.FirstNM)
+	g.CheckScale(c)
 	if c.Err() != nil {
 		return
 	}
 	p.checkDispersion(c)
 	p.checkBand(c)
+}
+
+// CheckScale refuses a grid under the key grid whose scale has no wavelengths there.
+func (g Grid) CheckScale(c *config.Checks) {
+	c.That(g.Axis == Vacuum || !(g.FirstNM-g.StepNM < leastAirNM), "grid.first_nm", "wavelengths in air are not defined below %v nm; use axis: wave", leastAirNM)
+	c.That(g.Spacing == Linear || g.StepNM < g.FirstNM, "grid.step_nm", "a logarithmic step of %v nm at %v nm is no wavelength grid; give a smaller one", g.StepNM, g.FirstNM)
 }
 
 // checkDispersion demands that wavelengths run one way along x over the whole

@@ -140,5 +140,13 @@ func (g Grid) SpanNM() float64 {
 	return g.WavelengthNM(float64(g.Count)-0.5) - g.WavelengthNM(-0.5)
 }
 
+// WidthNM is the width of voxel i, vacuum nm.
+func (g Grid) WidthNM(i int) float64 {
+	if g.Even() {
+		return g.StepNM
+	}
+	return g.WavelengthNM(float64(i)+0.5) - g.WavelengthNM(float64(i)-0.5)
+}
+
 // Even tells whether voxels are equally wide in vacuum nm.
 func (g Grid) Even() bool { return g.Axis == Vacuum && g.Spacing == Linear }

@@ -12,9 +12,9 @@ import (
 // which the Standard does not know, is tolerated.
 var dateObs = regexp.MustCompile(`^\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d(\.\d*)?Z?$`)
 
-// parseDateObs reads DATE-OBS as UTC. A second of 60 (a leap second) is the
+// ParseDateObs reads DATE-OBS as UTC. A second of 60 (a leap second) is the
 // first of the next minute. Digits beyond nanoseconds are dropped.
-func parseDateObs(text string) (time.Time, error) {
+func ParseDateObs(text string) (time.Time, error) {
 	if !dateObs.MatchString(text) {
 		return time.Time{}, fmt.Errorf("%q is no ISO 8601 time such as 2031-03-14T02:30:00.5", text)
 	}

@@ -30,7 +30,7 @@ func TestParseDateObs(t *testing.T) {
 		{"1996-10-14T24:00:00", time.Time{}},
 		{"", time.Time{}},
 	} {
-		got, err := parseDateObs(c.text)
+		got, err := ParseDateObs(c.text)
 		require.Equal(t, c.want.IsZero(), err != nil, c.text)
 		require.True(t, c.want.Equal(got), "%s: %v", c.text, got)
 	}
@@ -42,12 +42,12 @@ func FuzzDateObs(f *testing.F) {
 		f.Add(s)
 	}
 	f.Fuzz(func(t *testing.T, text string) {
-		got, err := parseDateObs(text)
+		got, err := ParseDateObs(text)
 		if err != nil {
 			require.True(t, got.IsZero())
 			return
 		}
-		again, err := parseDateObs(got.Format("2006-01-02T15:04:05.999999999"))
+		again, err := ParseDateObs(got.Format("2006-01-02T15:04:05.999999999"))
 		if got.Year() > 9999 { // a leap second at the end of the calendar
 			return
 		}

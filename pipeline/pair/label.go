@@ -163,7 +163,7 @@ func (l *label) read(im *fitsutil.Image, primary *fitsutil.Header, p *instrument
 	l.exptime, l.airmass = c.number(k.Exptime), c.number(k.Airmass)
 	l.instrument = c.text(k.Instrume)
 	if l.dateObs = c.text(k.DateObs); l.dateObs != "" {
-		t, err := parseDateObs(l.dateObs)
+		t, err := ParseDateObs(l.dateObs)
 		if err != nil {
 			l.note("%s %v", k.DateObs, err)
 		}

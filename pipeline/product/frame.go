@@ -29,6 +29,14 @@ func (f SpectralFrame) ObservedNM(nm float64) float64 {
 	return nm / f.Factor
 }
 
+// FrameNM inverts ObservedNM.
+func (f SpectralFrame) FrameNM(observedNM float64) float64 {
+	if f.topocentric() {
+		return observedNM
+	}
+	return observedNM * f.Factor
+}
+
 // VelocityMS is VELOSYS: the radial velocity, m/s, at which the observer recedes from
 // the target with respect to the frame, so that the relativistic Doppler factor of it is
 // wavelength observed over wavelength in the frame. About minus the correction that is

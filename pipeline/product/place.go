@@ -49,3 +49,8 @@ func (s Schema) parity() float64 {
 	}
 	return 1
 }
+
+// PlaceOf inverts Sky; not a number behind the horizon of the plane.
+func (s Schema) PlaceOf(raDeg, decDeg float64) (element, row float64) {
+	return s.Place(physics.Gnomonic(raDeg, decDeg, s.RADeg, s.DecDeg))
+}

@@ -89,7 +89,7 @@ func (r *wcsReader) spectral(s *Schema) {
 		}
 	}
 	s.Frame.Name = FrameName(r.text("SPECSYS"))
-	if s.Frame.Name != Topocentric && r.header.Has("VELOSYS") {
+	if r.err == nil && s.Frame.Name != Topocentric {
 		s.Frame.Factor = 1 / physics.DopplerFactor(r.number("VELOSYS")/1000)
 	}
 }

@@ -24,6 +24,10 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
+	// Sky is what was subtracted of the sky; nil if nothing was.
+	Sky *SkyReport `json:"sky,omitempty"`
+	// Combined are the runs that were combined; nil for a reduction.
+	Combined Members `json:"combined,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.
 	Audit    any      `json:"audit,omitempty"`
 	Warnings []string `json:"warnings"`
@@ -31,8 +35,12 @@ type Run struct {
 	Exit     int      `json:"exit"`
 }
 
+// ExitDegraded is Exit of a product that was written but is not whole.
+const ExitDegraded = 3
+
 // Input is a file that went in, with the lower-case hex SHA-256 of its bytes.
-// Frames are not among them: the ledger lists those.
+// Frames are not among them: the ledger lists those. Of a cube.fits it is what Identify
+// gives.
 type Input struct {
 	File   string `json:"file"`
 	SHA256 string `json:"sha256"`

@@ -38,10 +38,10 @@ func (r *reduction) calibration() *product.Calibration {
 // sampled gives a function of the wavelength at five places of the band.
 func (r *reduction) sampled(f func(nm float64) (value, err float64)) []product.AtNM {
 	const places = 5
-	g := r.schema.Grid
+	axis := r.schema.Axis()
 	var all []product.AtNM
 	for i := range places {
-		nm := g.WavelengthNM(float64(g.Count-1) * float64(i) / (places - 1))
+		nm := axis.ObservedNM(float64(axis.Grid.Count-1) * float64(i) / (places - 1))
 		if v, err := f(nm); !math.IsNaN(v) && !math.IsInf(v, 0) {
 			all = append(all, product.AtNM{WavelengthNM: nm, Value: v, Error: err})
 		}
@@ -64,7 +64,7 @@ func (r *reduction) arcSummary(a *calib.ArcSolution) *product.Arcs {
 // worstError is the largest standard error of the wavelength solution over the
 // cube, px: it is a smooth function, largest at some corner or end.
 func (r *reduction) worstError(a *calib.ArcSolution) float64 {
-	g, n := r.schema.Grid, r.seq.N()
+	axis, n := r.schema.Axis(), r.seq.N()
 	worst := 0.0
 	for _, j := range []int{0, n / 2, n - 1} {
 		first, last := r.litRows(j)
@@ -73,7 +73,7 @@ func (r *reduction) worstError(a *calib.ArcSolution) float64 {
 		}
 		for _, y := range []int{first, (first + last) / 2, last} {
 			for l := 0; l <= 8; l++ {
-				nm := g.WavelengthNM(float64(g.Count-1) * float64(l) / 8)
+				nm := axis.ObservedNM(float64(axis.Grid.Count-1) * float64(l) / 8)
 				worst = max(worst, a.ErrorPx(float64(j), float64(y), nm))
 			}
 		}

@@ -87,8 +87,7 @@ type flatPrediction struct {
 	geometry    calib.Geometry
 	pixel       *calib.PixelResponse
 	response    *calib.Response
-	firstNM     float64
-	stepNM      float64
+	axis        product.SpectralAxis
 	lamp        []float64 // lamp colour, [voxel]
 	lit         []bool    // [trace row]: of all elements in full
 	first, last int
@@ -97,7 +96,7 @@ type flatPrediction struct {
 func (r *reduction) newFlatPrediction() *flatPrediction {
 	p := &flatPrediction{
 		geometry: r.optics.geometry, pixel: r.optics.pixel, response: r.optics.response,
-		firstNM: r.schema.Grid.FirstNM, stepNM: r.schema.Grid.StepNM,
+		axis: r.schema.Axis(),
 		lamp: r.lampLight(), lit: make([]bool, r.camera.Rows), last: r.camera.Rows,
 	}
 	for l, c := range p.response.Colour {
@@ -154,7 +153,7 @@ func (p *flatPrediction) wavelength(x float64, j, y int) float64 {
 // element is F(j, y0, L) by straight lines between rows and voxels; NaN where it was
 // not fitted.
 func (p *flatPrediction) element(j int, y0, nm float64) float64 {
-	v := (nm - p.firstNM) / p.stepNM
+	v := p.axis.Index(nm)
 	l, y := int(math.Floor(v)), int(math.Floor(y0))
 	if !(v >= 0) || l+1 >= p.response.Voxels || y < 0 || y+1 >= len(p.lit) || !p.lit[y] || !p.lit[y+1] {
 		return math.NaN()

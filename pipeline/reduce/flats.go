@@ -161,7 +161,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		columns: r.camera.Columns, rows: r.camera.Rows, slots: r.seq.V, elements: r.seq.N(),
 		voxels: r.schema.Grid.Count, cube: true, uniform: code.Design().IsS(),
 	}
-	rectify, err := newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers)
+	rectify, err := newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers)
 	if err != nil {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 	}
@@ -240,7 +240,7 @@ func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 	rule := calib.DefaultFlatRule()
 	edges := make([]float64, r.schema.Grid.Count+1)
 	y := r.camera.Rows / 2
-	r.optics.geometry.EdgesX(edges, r.optics.geometry.J_c, float64(y), r.schema.Grid.WavelengthNM(-0.5), r.schema.Grid.StepNM)
+	r.optics.geometry.Places(edges, r.optics.geometry.J_c, float64(y), rectify.edges)
 	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
 	return rule
 }
@@ -248,10 +248,10 @@ func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 // lampLight is what is known of the lamp's light in each voxel: a black body
 // through the profile's throughput.
 func (r *reduction) lampLight() []float64 {
-	g := r.schema.Grid
-	light := make([]float64, g.Count)
+	axis := r.schema.Axis()
+	light := make([]float64, axis.Grid.Count)
 	for l := range light {
-		light[l] = r.lampAt(g.WavelengthNM(float64(l)))
+		light[l] = r.lampAt(axis.ObservedNM(float64(l)))
 	}
 	return light
 }

@@ -65,6 +65,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	r.usage = newUsage(r.seq)
 	r.schema = product.NewSchema(r.seq)
 	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
+	r.setFrame()
 	r.optics.geometry = nominalGeometry(r.seq)
 	if err := r.checkGrid(); err != nil {
 		return 0, err
@@ -109,11 +110,8 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 
 // checkGrid refuses a grid that the geometry cannot serve.
 func (r *reduction) checkGrid() error {
-	g := r.schema.Grid
-	if !g.Even() {
-		return fmt.Errorf("the wavelength grid of %s: axis %s with spacing %s cannot be reduced to yet; use wave and linear", r.gridSource(), g.Axis, g.Spacing)
-	}
-	err := r.optics.geometry.Check(r.camera.Columns, r.camera.Rows, g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5))
+	axis := r.schema.Axis()
+	err := r.optics.geometry.Check(r.camera.Columns, r.camera.Rows, axis.FirstNM(), axis.LastNM())
 	if err != nil {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 	}
@@ -211,8 +209,8 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 // arcLines lists what the lamp of each arc frame may show in the band and a tenth of
 // it beyond. The error names a lamp of which there is no list.
 func (r *reduction) arcLines() ([][]calib.LampLine, error) {
-	g := r.schema.Grid
-	first, last := g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5)
+	axis := r.schema.Axis()
+	first, last := axis.FirstNM(), axis.LastNM()
 	beyond := (last - first) / 10
 	all := make([][]calib.LampLine, len(r.roles.arcs))
 	for i, f := range r.roles.arcs {
@@ -226,8 +224,8 @@ func (r *reduction) arcLines() ([][]calib.LampLine, error) {
 
 // arcRule bounds the search for the band of the cube's grid.
 func (r *reduction) arcRule() calib.ArcRule {
-	g := r.schema.Grid
-	return calib.DefaultArcRule(g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5), r.seq.Profile.Spectrograph.LSFFWHMPx)
+	axis := r.schema.Axis()
+	return calib.DefaultArcRule(axis.FirstNM(), axis.LastNM(), r.seq.Profile.Spectrograph.LSFFWHMPx)
 }
 
 // solveTrace measures the trace at the ends of the slit: in the lamp's all-on

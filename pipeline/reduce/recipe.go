@@ -16,6 +16,12 @@ const (
 	useOff  = "off"
 )
 
+// The values of grid.frame.
+const (
+	frameObservatory = "observatory"
+	frameBarycentric = "barycentric"
+)
+
 // DefaultRecipe is the name of the embedded recipe that is followed when none
 // is given.
 const DefaultRecipe = "default"
@@ -26,7 +32,7 @@ type Recipe struct {
 	Detector   DetectorRecipe `yaml:"detector" config:"optional"`
 	Flat       StageRecipe    `yaml:"flat" config:"optional"`
 	Arc        StageRecipe    `yaml:"arc" config:"optional"`
-	Sky        StageRecipe    `yaml:"sky" config:"optional"`
+	Sky        SkyRecipe      `yaml:"sky" config:"optional"`
 	Flux       StageRecipe    `yaml:"flux" config:"optional"`
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
@@ -59,8 +65,8 @@ type DetectorRecipe struct {
 	DeadBelow float64 `yaml:"dead_below" config:"optional"`
 }
 
-// GridRecipe is the cube's wavelength axis, vacuum nm: the profile's unless
-// first_nm, step_nm and count are given.
+// GridRecipe is the cube's wavelength axis: the profile's unless first_nm, step_nm and
+// count are given, nm on the grid's own scale.
 type GridRecipe struct {
 	Use     string  `yaml:"use"`
 	FirstNM float64 `yaml:"first_nm" config:"optional"`
@@ -69,15 +75,18 @@ type GridRecipe struct {
 	// Axis and Spacing are those of instrument.Grid; they need a grid of the recipe's own.
 	Axis    instrument.Axis    `yaml:"axis" config:"optional"`
 	Spacing instrument.Spacing `yaml:"spacing" config:"optional"`
+	// Frame is the standard of rest of the wavelengths: observatory, as observed, or
+	// barycentric, of the solar system's barycentre.
+	Frame string `yaml:"frame" config:"optional"`
 }
 
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
 	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
-	r.Sky, r.Flux = off, off
+	r.Sky, r.Flux = SkyRecipe{Use: useOff}, off
 	r.Detector.SetDefaults()
-	r.Grid = GridRecipe{Use: useAuto}
+	r.Grid = GridRecipe{Use: useAuto, Frame: frameObservatory}
 }
 
 // SetDefaults gives the options their defaults.
@@ -124,7 +133,7 @@ func (r *Recipe) check(doc *config.Doc) error {
 		key string
 		use string
 	}{
-		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
+		{"flux", r.Flux.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
@@ -134,17 +143,20 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
+	r.Sky.check(c)
 	r.checkGrid(c)
 	return c.Err()
 }
 
 func (r *Recipe) checkGrid(c *config.Checks) {
 	c.OneOf("grid.use", r.Grid.Use, useAuto, useOff)
+	c.OneOf("grid.frame", r.Grid.Frame, frameObservatory, frameBarycentric)
 	if r.ownGrid() {
 		c.That(r.Grid.Use == useAuto, "grid.use", "off takes the profile's grid, so first_nm, step_nm and count have no effect; use auto or leave them out")
 		c.Positive("grid.first_nm", r.Grid.FirstNM)
 		c.Positive("grid.step_nm", r.Grid.StepNM)
 		c.Count("grid.count", r.Grid.Count, 2, 1<<20)
+		r.grid(nil).CheckScale(c)
 		return
 	}
 	for _, k := range []struct {

@@ -6,7 +6,6 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/fitsutil"
-	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
 )
@@ -15,7 +14,8 @@ import (
 // then to the cube's wavelengths by calib.Resampler, once each.
 type rectifier struct {
 	geometry calib.Geometry
-	grid     instrument.Grid
+	edges    calib.Wavelengths // of the voxels
+	voxels   int
 	shift    *calib.RowShift
 	columns  *calib.Resampler
 	usage    *usage
@@ -60,8 +60,8 @@ type outStrip struct {
 	scale            []float32
 }
 
-func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, workers int) (*rectifier, error) {
-	if err := g.Check(s.columns, s.rows, grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)); err != nil {
+func newRectifier(g calib.Geometry, axis product.SpectralAxis, s shape, u *usage, workers int) (*rectifier, error) {
+	if err := g.Check(s.columns, s.rows, axis.FirstNM(), axis.LastNM()); err != nil {
 		return nil, err
 	}
 	shift := make([]float64, s.columns)
@@ -76,19 +76,25 @@ func newRectifier(g calib.Geometry, grid instrument.Grid, s shape, u *usage, wor
 	if err != nil {
 		return nil, err
 	}
-	r := &rectifier{geometry: g, grid: grid, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
+	n := axis.Grid.Count
+	r := &rectifier{geometry: g, edges: edgesOf(axis), voxels: n, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
 	r.added = make([]float32, s.rows*s.elements)
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
 			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
 			scale: make([]float32, s.columns), applied: make([]float32, s.columns), coherent: make([]float32, s.columns),
-			edges:  make([]float64, grid.Count+1),
-			before: make([]float32, grid.Count),
-			voxels: make([]float32, group*grid.Count), variances: make([]float32, group*grid.Count),
-			bits: make([]calib.Flag, group*grid.Count), scales: make([]float32, group*grid.Count),
+			edges:  make([]float64, n+1),
+			before: make([]float32, n),
+			voxels: make([]float32, group*n), variances: make([]float32, group*n),
+			bits: make([]calib.Flag, group*n), scales: make([]float32, group*n),
 		})
 	}
 	return r, nil
+}
+
+// edgesOf are the edges of all voxels.
+func edgesOf(axis product.SpectralAxis) calib.Wavelengths {
+	return calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), -0.5, axis.Grid.Count+1)
 }
 
 // margin is the largest number of rows that a trace row reads beyond itself,
@@ -135,7 +141,7 @@ func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
 // rectify makes the voxels of elements j0..j0+group-1 of one row.
 func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 int) {
 	y := out.y0 + row
-	nl := r.grid.Count
+	nl := r.voxels
 	j1 := min(j0+group, r.elements)
 	first := w.first()
 	k.bitRows = k.bitRows[:0]
@@ -144,7 +150,6 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 	}
 	r.shift.Flags(&k.flags, k.bitRows, first, y)
 	r.straightenScale(k, w, first, y)
-	firstNM, stepNM := r.grid.WavelengthNM(-0.5), r.grid.StepNM
 	for j := j0; j < j1; j++ {
 		k.signals, k.vars = k.signals[:0], k.vars[:0]
 		for _, d := range w.rows {
@@ -155,7 +160,7 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		if !r.uniform || j == j0 {
 			r.shift.Variance(k.variance, k.vars, first, y)
 		}
-		r.geometry.EdgesX(k.edges, float64(j), float64(y), firstNM, stepNM)
+		r.geometry.Places(k.edges, float64(j), float64(y), r.edges)
 		at := (j - j0) * nl
 		r.columns.Resample(calib.Voxels{
 			Signal: k.voxels[at:], Variance: k.variances[at:], Flags: k.bits[at:], Stride: 1,
@@ -172,7 +177,7 @@ func (r *rectifier) flatten(k *rectifyWorker, at, j, y int) {
 	if r.response == nil {
 		return
 	}
-	nl := r.grid.Count
+	nl := r.voxels
 	signal, variance, flags := k.voxels[at:at+nl], k.variances[at:at+nl], k.bits[at:at+nl]
 	sampled := j%addedEvery == 0
 	if sampled {
@@ -228,7 +233,7 @@ func (r *rectifier) addedVariance() float64 {
 // store writes a group's voxels into the strip, and voids those that no mirror
 // feeds.
 func (r *rectifier) store(k *rectifyWorker, out *outStrip, row, j0, j1 int) {
-	nl, n := r.grid.Count, j1-j0
+	nl, n := r.voxels, j1-j0
 	use := r.usage.row(out.y0 + row)[j0:j1]
 	for l := range nl {
 		at := (l*out.h+row)*r.elements + j0

@@ -67,7 +67,7 @@ type Result struct {
 }
 
 // ExitDegraded is run.json's exit for a product that is not whole.
-const ExitDegraded = 3
+const ExitDegraded = product.ExitDegraded
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
 // ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
@@ -92,8 +92,12 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"calibrate", r.calibrate},
 		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
+		{"sky", r.bringToSky},
 		{"finish", r.finish},
 	} {
+		if step.name == "sky" && !r.toSky() {
+			continue
+		}
 		start := time.Now()
 		bytes, err := step.run(ctx)
 		if err != nil {
@@ -158,6 +162,7 @@ type reduction struct {
 	element    *fitsutil.Cube
 
 	optics optics
+	onSky  onSky
 	// through is what was found of the throughput; nil if it was not asked for.
 	through   *throughput
 	report    product.Calibration
@@ -275,7 +280,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
 	if s.cube {
-		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Grid, s, r.usage, r.opts.Workers); err != nil {
+		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
@@ -403,7 +408,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if r.night.Audit != nil {

@@ -113,8 +113,8 @@ func (r *reduction) newSentinel(rows sequence.RowRange) *sentinel {
 	if s.y1-s.y0 < 5 {
 		return nil
 	}
-	g := r.schema.Grid
-	s.firstNM, s.span = g.WavelengthNM(-0.5), g.WavelengthNM(float64(g.Count)-0.5)-g.WavelengthNM(-0.5)
+	axis := r.schema.Axis()
+	s.firstNM, s.span = axis.FirstNM(), axis.LastNM()-axis.FirstNM()
 	n := sentinelChunks + motions
 	s.normal = mat.NewSymDense(n, nil)
 	return s

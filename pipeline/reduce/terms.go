@@ -219,8 +219,8 @@ func (r *reduction) newTerms(code *hadamard.Code) *terms {
 		}
 	}
 	slope := &termTable{first: math.Floor(first), values: make([]float32, int((last-math.Floor(first))*termSteps)+2)}
-	grid := r.schema.Grid
-	start, end := grid.WavelengthNM(-0.5), grid.WavelengthNM(float64(grid.Count)-0.5)
+	axis := r.schema.Axis()
+	start, end := axis.FirstNM(), axis.LastNM()
 	for i := range slope.values {
 		s := slope.first + float64(i)/termSteps
 		nm := t.geometry.Wavelength(s, t.geometry.J_c, t.geometry.Y_c-t.geometry.TraceShift(s))

@@ -26,6 +26,18 @@ type placeCase struct {
 	RA        float64 `json:"ra"`
 	Dec       float64 `json:"dec"`
 	LSFVoxels float64 `json:"lsf_voxels"`
+	// CType is that of the wavelengths, WAVE if empty; Observer, where not nil, is that of
+	// a cube in the frame of the barycentre.
+	CType    string    `json:"ctype,omitempty"`
+	Observer *observer `json:"observer,omitempty"`
+}
+
+// observer is where and when exposures were made: UTC of their middles.
+type observer struct {
+	Latitude float64  `json:"latitude"`
+	East     float64  `json:"east"`
+	Height   float64  `json:"height"`
+	Middles  []string `json:"middles"`
 }
 
 // placed is its answer: the largest distances, in voxels.
@@ -36,6 +48,8 @@ type placed struct {
 	StarX float64 `json:"star_x"`
 	StarY float64 `json:"star_y"`
 	Line  float64 `json:"line"`
+	// VelocityOff is VELOSYS less astropy's, m/s.
+	VelocityOff float64 `json:"velocity_off"`
 }
 
 func (p placed) worst() float64 { return max(p.StarX, p.StarY, p.Line) }

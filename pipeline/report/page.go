@@ -43,6 +43,7 @@ type page struct {
 	ErrorScale       template.HTML
 	Throughput       template.HTML
 	ThroughputFacts  []fact
+	OnSky            []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
@@ -66,6 +67,7 @@ func newPage(in Input) *page {
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
 		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: calibrationFacts(in.Run.Calibration),
+		OnSky:    skyFacts(in.Run.Sky),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")
@@ -73,9 +75,9 @@ func newPage(in Input) *page {
 	return p
 }
 
-// addCube says that there is a cube and what it spans.
 // gridWords describe a wavelength axis.
-func gridWords(g instrument.Grid) string {
+func gridWords(a product.SpectralAxis) string {
+	g := a.Grid
 	text := fmt.Sprintf("%g to %g nm in vacuum, %g nm a voxel", g.WavelengthNM(0), g.LastNM(), g.StepNM)
 	if g.Axis == instrument.Air {
 		text = fmt.Sprintf("%g to %g nm in air, %g nm a voxel", g.AxisNM(0), g.AxisNM(float64(g.Count-1)), g.StepNM)
@@ -83,9 +85,16 @@ func gridWords(g instrument.Grid) string {
 	if g.Spacing == instrument.Logarithmic {
 		text += " at the first, growing in proportion"
 	}
+	switch a.Frame.Name {
+	case product.Barycentric:
+		text += fmt.Sprintf("; in the frame of the solar system's barycentre, from which the observer receded at %+.3f km/s", a.Frame.VelocityMS()/1000)
+	case product.Heliocentric:
+		text += fmt.Sprintf("; in the frame of the sun's centre, from which the observer receded at %+.3f km/s", a.Frame.VelocityMS()/1000)
+	}
 	return text
 }
 
+// addCube says that there is a cube and what it spans.
 func (p *page) addCube(in Input) {
 	p.HasCube, p.Verdict = true, judge(in, "cube")
 	s := in.Schema
@@ -95,7 +104,7 @@ func (p *page) addCube(in Input) {
 	}
 	p.Facts = []fact{
 		{"Voxels", fmt.Sprintf("%d elements × %d detector rows × %d wavelengths", s.Elements, s.Rows, s.Grid.Count)},
-		{"Wavelengths", gridWords(s.Grid)},
+		{"Wavelengths", gridWords(s.Axis())},
 		{"Field", fmt.Sprintf("%.1f″ × %.1f″, voxels of %.3f″ × %.3f″", s.C1Deg*arcsecPerDeg*float64(s.Elements), s.C2Deg*arcsecPerDeg*float64(s.Rows), s.C1Deg*arcsecPerDeg, s.C2Deg*arcsecPerDeg)},
 		{"Centre", fmt.Sprintf("RA %.6f°, Dec %+.6f° (ICRS)", s.RADeg, s.DecDeg)},
 		{"Orientation", fmt.Sprintf("rows run to position angle %g°; east lies %s", s.RotangDeg, east)},

@@ -43,6 +43,10 @@ func judge(in Input, what string) verdict {
 		v.Headline = fmt.Sprintf("The %s is whole and its errors hold.", what)
 	}
 	v.Trust = []string{framesSentence(in.Ledger), goodSentence(in.Run.Quality), chi2Sentence(chi2), waveSentence(in.Run.Quality), throughputSentence(in.Run)}
+	if in.Run.Combined != nil {
+		v.Trust = combinedSentences(in)
+	}
+	v.Trust = append(v.Trust, onSkySentences(in.Run)...)
 	for _, w := range in.Degraded {
 		v.Look = append(v.Look, sentence(w))
 	}

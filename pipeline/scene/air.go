@@ -29,7 +29,7 @@ type Atmosphere struct {
 func (a *Atmosphere) check(c *config.Checks, path string) {
 	instrument.CheckAir(c, path, a.PressureHPa, a.TemperatureC, a.WaterHPa, a.Extinction)
 	if a.GuideNM != nil {
-		c.Within(path+".guide_nm", *a.GuideNM, leastRefractedNM, maxNM)
+		c.Within(path+".guide_nm", *a.GuideNM, LeastRefractedNM, maxNM)
 	}
 }
 
@@ -66,9 +66,22 @@ func (r *RefStar) check(c *config.Checks, path string) {
 	}
 }
 
-// leastRefractedNM is the least wavelength at which air bends light by the formula in
+// StarScene is what refstar steps see: the star in the middle of its wide element, which
+// lies dEast and dNorth arc seconds from the field's centre, and the scene's sky.
+func (s *Scene) StarScene(dEast, dNorth float64) *Scene {
+	star := s.RefStar.Source()
+	star.EastArcsec += dEast
+	star.NorthArcsec += dNorth
+	t := &Scene{SeeingFWHMArcsec: s.SeeingFWHMArcsec, Sources: []Source{star}, Sky: s.Sky, Atmosphere: s.Atmosphere, spectra: s.spectra}
+	if s.RefStar.SeeingFWHMArcsec != nil {
+		t.SeeingFWHMArcsec = *s.RefStar.SeeingFWHMArcsec
+	}
+	return t
+}
+
+// LeastRefractedNM is the least wavelength at which air bends light by the formula in
 // use; none shorter reaches the ground.
-const leastRefractedNM = 200
+const LeastRefractedNM = 200
 
 // placedSource is a source and its key path.
 type placedSource struct {

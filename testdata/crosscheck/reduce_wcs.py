@@ -1,8 +1,11 @@
 """Find the stars and emission lines of reduced cubes through astropy's WCS.
 
 usage: reduce_wcs.py CASES.json; each case: name, cube (FITS), scene (YAML), ra
-and dec (degrees, of the target), lsf_voxels (FWHM of a line, about). One line a
-case is printed, JSON: the largest distances found, in voxels.
+and dec (degrees, of the target), lsf_voxels (FWHM of a line, about), and where they
+differ from WAVE and TOPOCENT ctype (of the wavelengths) and observer (latitude, east,
+height, middles: UTC of the exposures; for SPECSYS = BARYCENT). One line a
+case is printed, JSON: the largest distances found, in voxels, and velocity_off, VELOSYS
+less that of astropy's ephemeris, m/s.
 
 Where things must lie is worked out from the scene alone. A star's east and north
 offsets lie in the plane of the sky that touches the sphere at the target: a unit
@@ -33,13 +36,16 @@ import sys
 import astropy.units as u
 import numpy as np
 import yaml
-from astropy.coordinates import CartesianRepresentation, SkyCoord
+from astropy.coordinates import CartesianRepresentation, EarthLocation, SkyCoord
 from astropy.io import fits
+from astropy.time import Time
+from astropy.utils import iers
 from astropy.wcs import WCS
 from astropy.wcs.utils import proj_plane_pixel_scales
 from scipy.optimize import least_squares
 from scipy.special import ndtr
 
+iers.conf.auto_download = False
 LIGHT_KM_S = 299792.458
 FLAGBAD = 127
 WINDOW = 8  # voxels on each side of a line
@@ -67,6 +73,24 @@ def offsets(ra, dec, sky):
     return np.degrees((v @ e) / depth) * 3600, np.degrees((v @ n) / depth) * 3600
 
 
+def vacuum(air):
+    """Ciddor 1996, equation 1, solved for the vacuum wavelength."""
+    nm = air
+    for _ in range(8):
+        s = (1000 / nm) ** 2
+        nm = air * (1 + 1e-8 * (5792105 / (238.0185 - s) + 167917 / (57.362 - s)))
+    return nm
+
+
+def barycentric(case):
+    """Wavelength at the barycentre over wavelength observed, mean over the exposures."""
+    o = case["observer"]
+    site = EarthLocation.from_geodetic(o["east"] * u.deg, o["latitude"] * u.deg, o["height"] * u.m)
+    target = SkyCoord(case["ra"] * u.deg, case["dec"] * u.deg, frame="icrs")
+    velocity = target.radial_velocity_correction("barycentric", obstime=Time(o["middles"], scale="utc"), location=site)
+    return float(np.mean(1 + velocity.to_value(u.km / u.s) / LIGHT_KM_S))
+
+
 class Cube:
     def __init__(self, case):
         with fits.open(case["cube"]) as hdus:
@@ -76,7 +100,8 @@ class Cube:
             good = (hdus["FLAGS"].data & FLAGBAD) == 0
             variance = np.array(hdus["VARIANCE"].data, float)
         self.wcs = WCS(header)
-        assert list(self.wcs.wcs.ctype) == ["RA---TAN", "DEC--TAN", "WAVE"], list(self.wcs.wcs.ctype)
+        ctype = case.get("ctype", "WAVE")
+        assert list(self.wcs.wcs.ctype) == ["RA---TAN", "DEC--TAN", ctype], list(self.wcs.wcs.ctype)
         self.signal = np.where(good, signal, np.nan)
         self.weight = np.where(good, 1 / np.where(good, variance, 1), 0)
         with np.errstate(invalid="ignore"):
@@ -89,6 +114,16 @@ class Cube:
         # Wavelength in nm of voxels from 0, asked of the whole WCS at the middle.
         world = self.wcs.all_pix2world(np.full(l.size, columns.mean()), np.full(l.size, rows.mean()), l, 0)[2]
         self.nm = (world * self.wcs.wcs.cunit[2]).to_value(u.nm)
+        if ctype.startswith("AWAV"):
+            self.nm = vacuum(self.nm)
+        self.velocity_off = 0.0
+        # From the cube's standard of rest to that of the observatory.
+        assert header["SPECSYS"] == ("BARYCENT" if "observer" in case else "TOPOCENT"), header["SPECSYS"]
+        if "observer" in case:
+            factor = barycentric(case)
+            velosys = 299792458.0 * (factor**-2 - 1) / (factor**-2 + 1)
+            self.velocity_off = header["VELOSYS"] - velosys
+            self.nm = self.nm / factor
         self.voxel = lambda nm: np.interp(nm, self.nm, l) + (nm - np.clip(nm, self.nm[0], self.nm[-1])) / (self.nm[1] - self.nm[0])
 
     @staticmethod
@@ -248,7 +283,7 @@ def check(case):
     return {
         "name": case["name"], "stars": len(stars), "lines": len(lines),
         "star_x": max(abs(x) for x, _ in stars), "star_y": max(abs(y) for _, y in stars),
-        "line": max(abs(s) for _, _, s in lines), "all_stars": stars, "all_lines": lines,
+        "line": max(abs(s) for _, _, s in lines), "velocity_off": cube.velocity_off, "all_stars": stars, "all_lines": lines,
     }
 
 
