@@ -69,6 +69,15 @@ func (r *reduction) finish(context.Context) (int64, error) {
 		if err := r.finishNoise(); err != nil {
 			return 0, err
 		}
+		if r.shift != nil {
+			table, err := r.shift.Table()
+			if err != nil {
+				return 0, err
+			}
+			if err := r.cube.AppendTable(table); err != nil {
+				return 0, err
+			}
+		}
 		if err := r.finishRestored(); err != nil {
 			return 0, err
 		}
