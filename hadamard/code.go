@@ -19,7 +19,11 @@ type Code struct {
 //     J. Math. Phys. 12, 311; the S-matrices in the appendix of Harwit and
 //     Sloane 1979, Hadamard Transform Optics, for v = 7, 11, 19, 23);
 //   - TwinPrime: the complement of the twin-prime difference set of Stanton and
-//     Sprott 1958, Canad. J. Math. 10, 73, so that k = (v+1)/2.
+//     Sprott 1958, Canad. J. Math. 10, 73, so that k = (v+1)/2;
+//   - Singer: ones where x^i has trace 0, x a generator of GF(q^(d+1)) (Singer
+//     1938, Trans. Am. Math. Soc. 43, 377), of the largest q where several have
+//     this v;
+//   - a complement: ones where its family has zeros.
 //
 // The slit scan is W = I.
 //
@@ -31,21 +35,35 @@ func New(f Family, v int) (*Code, error) {
 	if !hasSize(f, v) {
 		return nil, noCode(f, v)
 	}
-	switch f {
-	case SlitScan:
+	if f == SlitScan {
 		return &Code{family: f, v: v, k: 1, l: 0}, nil
-	case MSequence:
-		degree := degreeOf(v)
-		c, err := newCyclic(f, mSequence(degree))
-		if err != nil {
-			return nil, err
+	}
+	base, complement := f.Base()
+	first, poly := firstRow(base, v)
+	if complement {
+		for j := range first {
+			first[j] = 1 - first[j]
 		}
-		c.poly = primitive[degree]
-		return c, nil
+	}
+	c, err := newCyclic(f, first)
+	if err != nil {
+		return nil, err
+	}
+	c.poly = poly
+	return c, nil
+}
+
+// firstRow is the first row of a cyclic family of a size it has, and Poly.
+func firstRow(f Family, v int) (first []uint8, poly uint32) {
+	switch f {
+	case MSequence:
+		return mSequence(degreeOf(v)), primitive[degreeOf(v)]
 	case Legendre:
-		return newCyclic(f, legendreRow(v))
+		return legendreRow(v), 0
+	case TwinPrime:
+		return twinPrimeRow(v), 0
 	default:
-		return newCyclic(f, twinPrimeRow(v))
+		return singerOf(v).row()
 	}
 }
 
@@ -87,9 +105,10 @@ func (c *Code) L() int { return c.l }
 // Design gives v, k and l to the formulas of the S/N theory.
 func (c *Code) Design() Design { return Design{V: c.v, K: c.k, L: c.l} }
 
-// Poly is the m-sequence's primitive polynomial over GF(2), bit t the
-// coefficient of x^t, the leading term included (x^3+x+1 is 11); 0 for the
-// other families.
+// Poly is the primitive polynomial of an m-sequence over GF(2), or of a Singer
+// code over GF(p), p the prime of its q, or of the complement of one: a number
+// in base p (2 for an m-sequence) whose digit of p^t is the coefficient of x^t,
+// the leading one included (x^3+x+1 over GF(2) is 11); 0 for the other families.
 func (c *Code) Poly() uint32 { return c.poly }
 
 // Bit is W[row][column], 0 or 1. It panics when an index is outside 0..v-1.

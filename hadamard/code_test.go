@@ -247,6 +247,8 @@ func TestNoSuchCode(t *testing.T) {
 		{Legendre, 4095, "no legendre code has v = 4095: the largest is 4091"},
 		{Legendre, 13, "no legendre code has v = 13: the nearest are 11 and 19"},
 		{TwinPrime, 63, "no twin-prime code has v = 63: the nearest are 35 and 143"},
+		{Singer, 1023 + 1, "no singer code has v = 1024: the nearest are 1023 and 1057"},
+		{LegendreComplement, 3, "no legendre-complement code has v = 3: the smallest is 7"},
 		{SlitScan, 0, "no slit-scan code has v = 0: the smallest is 1"},
 		{SlitScan, -3, "no slit-scan code has v = -3: the smallest is 1"},
 		{SlitScan, 4096, "no slit-scan code has v = 4096: the largest is 4095"},
@@ -259,7 +261,13 @@ func TestNoSuchCode(t *testing.T) {
 	}
 	_, err := New("walsh", 7)
 	require.ErrorIs(t, err, ErrUnknownFamily)
-	require.EqualError(t, err, `unknown code family "walsh": use one of m-sequence, legendre, twin-prime, slit-scan`)
+	require.EqualError(t, err, `unknown code family "walsh": use one of m-sequence, legendre, twin-prime, singer, `+
+		`m-sequence-complement, legendre-complement, twin-prime-complement, singer-complement, slit-scan`)
+	for _, name := range []Family{"slit-scan-complement", "-complement", "singer-complement-complement"} {
+		require.Nil(t, Sizes(name))
+		_, err := New(name, 7)
+		require.ErrorIs(t, err, ErrUnknownFamily)
+	}
 	for _, f := range Families() {
 		parsed, err := ParseFamily(string(f))
 		require.NoError(t, err)

@@ -70,7 +70,13 @@ func TestDecodeError(t *testing.T) {
 		MSequence: Sizes(MSequence),
 		Legendre:  {3, 7, 11, 19, 23, 31, 127, 251, 503, 1019, 4091},
 		TwinPrime: Sizes(TwinPrime),
+		Singer:    {7, 57, 511, 820, 3783, 4095},
 		SlitScan:  {1, 2, 63, 511, 4095},
+
+		MSequenceComplement: {511},
+		LegendreComplement:  {503},
+		TwinPrimeComplement: {323},
+		SingerComplement:    {57, 1093, 3906},
 	}
 	for _, f := range Families() {
 		for _, v := range sizes[f] {
@@ -79,7 +85,7 @@ func TestDecodeError(t *testing.T) {
 			if v > 511 {
 				figure = 6e-6
 			}
-			line := fmt.Sprintf("%-10s v = %4d", f, v)
+			line := fmt.Sprintf("%-21s v = %4d", f, v)
 			for _, name := range []string{"random", "flat", "bright"} {
 				scene := scenes(v)[name]
 				y := readings(c, scene)

@@ -19,15 +19,20 @@ type wideRow [lanes]float64
 // the one that its eight bits of W name (the method of the four Russians:
 // Arlazarov, Dinic, Kronrod and Faradzev 1970, Sov. Math. Dokl. 11, 1209). That
 // is v/8 additions a sample in place of v/2, all in float64, so that nothing
-// needs subtracting first and one rounding is left.
+// needs subtracting first and one rounding is left. Where less than an eighth of a
+// column's entries are ones, or zeros, S_j is the sum over those alone, or T less it.
 type dense struct {
 	v            int
 	k            float64
 	open, closed float64
 	// window[i] has bit t set when the code's first row is 1 at i+t (mod v):
 	// the subset of rows r..r+7 that column j takes is window[r+j].
-	window  []uint8
-	scratch sync.Pool // *denseScratch
+	window []uint8
+	// few, where not nil, are the places of the ones of the code's first row, or of
+	// its zeros (then fewClosed).
+	few       []int
+	fewClosed bool
+	scratch   sync.Pool // *denseScratch
 }
 
 type denseScratch struct {
@@ -42,6 +47,14 @@ func newDense(c *Code) *dense {
 	for i := range d.window {
 		for t := range groupRows {
 			d.window[i] |= c.first[(i+t)%c.v] << t
+		}
+	}
+	d.fewClosed = c.k > c.v/2
+	if fewer := min(c.k, c.v-c.k); fewer < c.v/groupRows {
+		for i, bit := range c.first {
+			if (bit == 0) == d.fewClosed {
+				d.few = append(d.few, i)
+			}
 		}
 	}
 	d.scratch.New = func() any { return &denseScratch{sums: make([]wideRow, c.v)} }
@@ -83,6 +96,10 @@ func (d *dense) combine(dst, src []float32, stride int, total, open float64) {
 func (d *dense) sum(s *denseScratch, src []float32, stride int) {
 	clear(s.sums)
 	s.total = wideRow{}
+	if d.few != nil {
+		d.sumFew(s, src, stride)
+		return
+	}
 	for first := 0; first < d.v; first += groupRows {
 		rows := min(groupRows, d.v-first)
 		tabulate(s, src[first*stride:], rows, stride)
@@ -90,6 +107,32 @@ func (d *dense) sum(s *denseScratch, src []float32, stride int) {
 		// Columns in the two runs over which window does not wrap.
 		addSubsets(s.sums[:d.v-first], d.window[first:], &s.table, mask)
 		addSubsets(s.sums[d.v-first:], d.window[:first], &s.table, mask)
+	}
+}
+
+// sumFew is sum by the rows that few names: those of column j are few less j, mod v.
+func (d *dense) sumFew(s *denseScratch, src []float32, stride int) {
+	for i := range d.v {
+		for p, x := range rowAt(src, i*stride) {
+			s.total[p] += float64(x)
+		}
+	}
+	for j := range s.sums {
+		sum := &s.sums[j]
+		for _, place := range d.few {
+			i := place - j
+			if i < 0 {
+				i += d.v
+			}
+			for p, x := range rowAt(src, i*stride) {
+				sum[p] += float64(x)
+			}
+		}
+		if d.fewClosed {
+			for p := range sum {
+				sum[p] = s.total[p] - sum[p]
+			}
+		}
 	}
 }
 

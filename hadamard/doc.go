@@ -10,7 +10,8 @@
 //   - v, k, l: the code's size, the ones in each row and in each column, and
 //     the ones that two rows (or two columns) share.
 //   - family: how W arises. An m-sequence has v = 2^p - 1, a Legendre code a
-//     prime v = 3 mod 4, a twin-prime code v = p(p+2); the slit scan is W = I.
+//     prime v = 3 mod 4, a twin-prime code v = p(p+2), a Singer code v =
+//     (q^(d+1)-1)/(q-1); each has a complement; the slit scan is W = I.
 //   - A: the inverse of W. Its row j decodes column j.
 //   - open and closed entries: A holds only a = 1/k where W' is 1 and
 //     b = -l/(k(k-l)) where it is 0.
@@ -31,8 +32,9 @@
 //   - Every family but the slit scan is cyclic: W[i][j] = s[(i+j) mod v], so row
 //     i+1 is row i shifted left by one and W is symmetric.
 //   - W'W = (k-l)I + lJ with J all ones, and k(k-1) = l(v-1). Codes with k = 2l
-//     (v = 4l-1) are S-matrices: |a| = |b| = 2/(v+1). All families here but the
-//     slit scan are S-matrices; the formulas hold for any cyclic difference set.
+//     (v = 4l-1) are S-matrices: |a| = |b| = 2/(v+1), and all columns of a pixel have
+//     the same variance. Singer codes (but a complement of q = 2), complements and
+//     the slit scan are none; the formulas hold for any cyclic difference set.
 //   - A Code and a Decoder never change and serve any number of goroutines.
 //   - A pixel's result depends on that pixel's samples alone: not on the
 //     stride, the number of pixels or its place among them, bit for bit. Sums

@@ -3,6 +3,7 @@ package hadamard
 import (
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 )
 
@@ -13,19 +14,54 @@ const MaxV = 4095
 // carry.
 type Family string
 
-// The families. All but SlitScan are S-matrices.
+// The families. MSequence, Legendre and TwinPrime are S-matrices, half of whose columns
+// are open. A Singer code opens about one in q of its v = (q^(d+1)-1)/(q-1) columns, q a
+// prime power: with photon noise the sparser is the better.
+//
+// A family's complement opens what the family leaves closed: (v, v-k, v-2k+l). It has the
+// same k-l and so almost the same read noise. Complements of S-matrices have (v-1)/2 open
+// columns for (v+1)/2 and with photon noise alone are better by one part in v; those of
+// Singer codes of q > 2 open most columns and are the worse wherever light has noise.
+// Complements of less than 7 columns would be slit scans and are not among the sizes.
 const (
 	MSequence Family = "m-sequence" // v = 2^p - 1, p = 2..12
 	Legendre  Family = "legendre"   // v prime, v = 3 mod 4, 3..4091
 	TwinPrime Family = "twin-prime" // v = p(p+2), both prime: 15, 35, 143, 323, 899, 1763, 3599
+	Singer    Family = "singer"     // v = (q^(d+1)-1)/(q-1), d >= 2: 7, 13, 15, 21, 31 ... 3783, 4095
 	SlitScan  Family = "slit-scan"  // W = I, v = 1..4095
+
+	MSequenceComplement Family = MSequence + complementSuffix
+	LegendreComplement  Family = Legendre + complementSuffix
+	TwinPrimeComplement Family = TwinPrime + complementSuffix
+	SingerComplement    Family = Singer + complementSuffix
+)
+
+const (
+	complementSuffix = "-complement"
+	// minComplement: below it a complement opens one column at a time.
+	minComplement = 7
 )
 
 // ErrUnknownFamily is returned, wrapped, for a name that is no family.
 var ErrUnknownFamily = errors.New("unknown code family")
 
 // Families lists the families in the order in which help texts show them.
-func Families() []Family { return []Family{MSequence, Legendre, TwinPrime, SlitScan} }
+func Families() []Family {
+	return []Family{
+		MSequence, Legendre, TwinPrime, Singer,
+		MSequenceComplement, LegendreComplement, TwinPrimeComplement, SingerComplement, SlitScan,
+	}
+}
+
+// Base is the family that f is the complement of, and true; f itself and false where it is
+// no complement.
+func (f Family) Base() (Family, bool) {
+	base, is := strings.CutSuffix(string(f), complementSuffix)
+	if is && slices.Contains(Families(), f) {
+		return Family(base), true
+	}
+	return f, false
+}
 
 // ParseFamily turns a family's exact name into a Family, or returns an error
 // wrapping ErrUnknownFamily that lists the names.
@@ -44,6 +80,14 @@ func ParseFamily(s string) (Family, error) {
 // unknown family.
 func Sizes(f Family) []int {
 	var sizes []int
+	if base, is := f.Base(); is {
+		for _, v := range Sizes(base) {
+			if v >= minComplement {
+				sizes = append(sizes, v)
+			}
+		}
+		return sizes
+	}
 	switch f {
 	case MSequence:
 		for degree := minDegree; degree <= maxDegree; degree++ {
@@ -60,6 +104,10 @@ func Sizes(f Family) []int {
 			if isPrime(p) && isPrime(p+2) {
 				sizes = append(sizes, p*(p+2))
 			}
+		}
+	case Singer:
+		for _, s := range singers() {
+			sizes = append(sizes, s.v())
 		}
 	case SlitScan:
 		for v := 1; v <= MaxV; v++ {

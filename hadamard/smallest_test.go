@@ -64,7 +64,7 @@ func TestSmallest(t *testing.T) {
 // TestSmallestIsSmallest: the size satisfies the rule and no smaller one does.
 func TestSmallestIsSmallest(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
-		f := rapid.SampledFrom([]Family{MSequence, Legendre, TwinPrime}).Draw(t, "family")
+		f := rapid.SampledFrom(cyclicFamilies()).Draw(t, "family")
 		n := rapid.IntRange(1, 3000).Draw(t, "n")
 		dark := rapid.IntRange(-1, 300).Draw(t, "dark")
 		fits := func(v int) bool {

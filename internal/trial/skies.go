@@ -36,6 +36,9 @@ func (f *Field) Show(s Sky) {
 	s.set(f)
 }
 
+// Alter makes the scene that the field has the sky's, without new scenery.
+func (f *Field) Alter(s Sky) { s.set(f) }
+
 // onlyStars leaves the first n stars on a sky without light.
 func (f *Field) onlyStars(n int) {
 	var stars []rehearse.Source

@@ -7,6 +7,7 @@ import (
 	"os"
 	"path/filepath"
 	"slices"
+	"time"
 
 	"mirrorloom/fitsutil"
 	"mirrorloom/internal/trial"
@@ -20,7 +21,8 @@ func audits() check {
 		name: "audit of the pairing",
 		about: `Small nights with a throughput that scatters by 5 % and falls by 30 %, half of them with a
 fault drawn from: two or four frames exchanged, one or two stale, flipped or inverted masks,
-the first with a lost frame besides. Found is what the ledger does not call ok; a fault
+the first with a lost frame besides; all masks a step or a third of the steps off, in reverse,
+every second one and then the others, or one passed over. Found is what the ledger does not call ok; a fault
 that changes decoded voxels by less than 0.05 of their error (rms, of noiseless frames) may
 be missed. A false alarm is a frame that is right and is not called so. Exchanged frames
 have to be used for the steps that they show, those of other faults for none.`,
@@ -123,30 +125,35 @@ func (c auditCase) run(ctx context.Context, dir string) ([]trial.Finding, error)
 	if err != nil {
 		return nil, err
 	}
-	kinds := [][]rehearse.Fault{
-		{{Name: rehearse.Mislabel, Size: 2}}, {{Name: rehearse.Mislabel, Size: 4}}, {{Name: rehearse.Stale, Size: 1}}, {{Name: rehearse.Stale, Size: 2}},
-		{{Name: rehearse.Flip, Size: 1}}, {{Name: rehearse.Invert, Size: 1}}, {{Name: rehearse.Flip, Size: 2}}, {{Name: rehearse.Invert, Size: 2}},
-		{{Name: rehearse.Mislabel, Size: 2}, {Name: rehearse.Lost, Size: 1}},
-	}
+	kinds := auditKinds()
 	drift := []rehearse.Fault{{Name: rehearse.Drift, Size: 0.05}, {Name: rehearse.Trend, Size: -0.3}}
 	var wrong, missed, mistaken, faint, alarms int
 	for night := range 2 * c.nights {
-		faults := drift
+		faults, order := drift, func(t, _ int) int { return t }
 		if night%2 == 0 {
-			faults = append(append([]rehearse.Fault{}, drift...), kinds[night/2%len(kinds)]...)
+			kind := kinds[night/2%len(kinds)]
+			faults = append(append([]rehearse.Fault{}, drift...), kind.faults...)
+			if kind.order != nil {
+				order = kind.order
+			}
 		}
 		name := fmt.Sprint(night)
-		if err := n.Rehearse(ctx, name, rehearse.Options{Seed: uint64(1000*c.v + night), NoTruth: true, Faults: faults}); err != nil {
+		start := time.Now()
+		if err := n.RehearseOrder(ctx, name, order, rehearse.Options{Seed: uint64(1000*c.v + night), NoTruth: true, Faults: faults}); err != nil {
 			return nil, err
 		}
+		rehearsed := time.Now()
 		a, err := n.Audit(ctx, name, pair.Options{})
 		if err != nil {
 			return nil, err
 		}
+		audited := time.Now()
 		truth, err := n.Faults(name)
 		if err != nil {
 			return nil, err
 		}
+		fmt.Fprintf(os.Stderr, "night %d of %d, v = %d: %d frames wrong, %d missed, %d mistaken, %d false; rehearsed in %.1f s, audited in %.1f s\n",
+			night+1, 2*c.nights, c.v, len(a.Wrong), len(a.Missed), len(a.Mistaken), len(a.False), rehearsed.Sub(start).Seconds(), audited.Sub(rehearsed).Seconds())
 		wrong += len(a.Wrong)
 		alarms += len(a.False)
 		mistaken += len(a.Mistaken)
@@ -154,12 +161,12 @@ func (c auditCase) run(ctx context.Context, dir string) ([]trial.Finding, error)
 			if sigma := light.change(truth, step, flipped, inverted); sigma < 0.05 {
 				faint++
 			} else {
-				fmt.Fprintf(os.Stderr, "night %d of v = %d: step %d, which changes voxels by %.3f sigma, was missed\n", night, c.v, step, sigma)
+				fmt.Fprintf(os.Stderr, "night %d of v = %d: step %d, which changes voxels by %.3f sigma, was missed\n", night+1, c.v, step, sigma)
 				missed++
 			}
 		}
 		if len(a.False)+len(a.Mistaken) > 0 {
-			fmt.Fprintf(os.Stderr, "night %d of v = %d: false %v, mistaken %v: %v\n", night, c.v, a.False, a.Mistaken, a.Night.Audit.Warnings())
+			fmt.Fprintf(os.Stderr, "night %d of v = %d: false %v, mistaken %v: %v\n", night+1, c.v, a.False, a.Mistaken, a.Night.Audit.Warnings())
 		}
 		if err := os.RemoveAll(n.Frames(name)); err != nil {
 			return nil, err
@@ -172,6 +179,39 @@ func (c auditCase) run(ctx context.Context, dir string) ([]trial.Finding, error)
 		trial.Below(at+"wrong frames found, but given to a wrong step or to none", float64(mistaken), 1, wrong),
 		trial.Below(at+"right frames called wrong, in all nights", float64(alarms), 1, 2*c.nights),
 	}, nil
+}
+
+// auditKind is what goes wrong in a night: faults, or the order of all masks.
+type auditKind struct {
+	faults []rehearse.Fault
+	order  func(t, n int) int // the step whose mask step t shows; nil for its own
+}
+
+func auditKinds() []auditKind {
+	fault := func(name string, size float64) rehearse.Fault { return rehearse.Fault{Name: name, Size: size} }
+	single := func(list ...rehearse.Fault) auditKind { return auditKind{faults: list} }
+	order := func(f func(t, n int) int) auditKind { return auditKind{order: f} }
+	return []auditKind{
+		single(fault(rehearse.Mislabel, 2)),
+		single(fault(rehearse.Mislabel, 4)),
+		single(fault(rehearse.Stale, 1)),
+		single(fault(rehearse.Stale, 2)),
+		single(fault(rehearse.Flip, 1)),
+		single(fault(rehearse.Invert, 1)),
+		single(fault(rehearse.Flip, 2)),
+		single(fault(rehearse.Invert, 2)),
+		single(fault(rehearse.Mislabel, 2), fault(rehearse.Lost, 1)),
+		order(func(t, n int) int { return (t + 1) % n }),
+		order(func(t, n int) int { return (t + n - n/3) % n }),
+		order(func(t, n int) int { return n - 1 - t }),
+		order(func(t, n int) int { return 2 * t % n }), // n is odd
+		order(func(t, n int) int { // a mask passed over, and at the end the first again
+			if t < n/4 {
+				return t
+			}
+			return (t + 1) % n
+		}),
+	}
 }
 
 // cleanLight is the readings of a noiseless night without a fault, by science step.

@@ -64,7 +64,12 @@ func (s *state) scan() []move {
 func (s *state) names(k, label int) []move {
 	var list []move
 	try := func(m move) {
-		d, noise := s.misfit(k, s.weightsOf(m))
+		var d, noise float64
+		if m.kind == Stale && !s.erased[m.other] {
+			d, noise = s.repeated(k, m.other)
+		} else {
+			d, noise = s.misfit(k, s.weightsOf(m))
+		}
 		m.gain = -d / noise
 		list = append(list, m)
 	}

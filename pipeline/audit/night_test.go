@@ -94,3 +94,29 @@ func TestAuditSaysWhyNot(t *testing.T) {
 	require.NoError(t, err)
 	require.Equal(t, []string{"the pairing was not audited: the sequence has 6 dark columns, of the 10 that 31 code columns need (2 log2 v)"}, got.Audit.Warnings())
 }
+
+// Nights whose masks are all others than labelled: every frame is given to the step that
+// it shows.
+func TestAuditFindsOrders(t *testing.T) {
+	n := plan(t)
+	for what, order := range map[string]func(t, n int) int{
+		"off by 3: each shows the mask of 3 steps later": func(t, n int) int { return (t + 3) % n },
+		"one step on from frame 21 of 63": func(t, n int) int {
+			if t < 20 {
+				return t
+			}
+			return (t + 1) % n
+		},
+	} {
+		name := what[:3]
+		require.NoError(t, n.RehearseOrder(t.Context(), name, order, rehearse.Options{Seed: 5, NoTruth: true, Faults: faults(t, "drift=0.05", "trend=-0.3", "mislabel=2")}))
+		got, err := n.Audit(t.Context(), name, pair.Options{})
+		require.NoError(t, err)
+		require.Contains(t, got.Night.Audit.Cycles[0].Whole, what)
+		require.GreaterOrEqual(t, len(got.Wrong), 40)
+		require.Empty(t, got.Missed)
+		require.Empty(t, got.Mistaken)
+		require.Empty(t, got.False)
+		require.NoError(t, os.RemoveAll(n.Frames(name)))
+	}
+}

@@ -97,6 +97,22 @@ func (s *state) misfit(k int, w []float64) (misfit, noise float64) {
 	return value / norm, (noise + own) / norm
 }
 
+// repeated is the misfit of the frame of an erased row k with the mask of row r, which is
+// not erased. The reading of r predicts it as well as any t, so that x = (I - P)(e_k - e_r),
+// whose forms are all in G, PG and P.
+func (s *state) repeated(k, r int) (misfit, noise float64) {
+	pg, p := s.lit().RawRowView(r), s.projector.RawRowView(r)
+	c := s.sum.At(r, r) - 2*pg[r] + dot(pg, p)
+	b := s.sum.At(r, k) - pg[k]
+	for i, x := range p {
+		noise += x * x * s.noise[i]
+	}
+	noise += (1 - 2*p[r]) * s.noise[r]
+	value, own := cheapest(s.sum.At(k, k), b, c, s.noise[k])
+	norm := 2 - p[r]
+	return value / norm, (noise + own) / norm
+}
+
 // prediction is t of misfit: it reads no erased row.
 func (s *state) prediction(w []float64) []float64 {
 	h := make([]float64, s.v)

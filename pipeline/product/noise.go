@@ -84,7 +84,7 @@ func (n Noise) CodeTable() (*fitsutil.Table, error) {
 		{"FAMILY", n.Family, "code"},
 		{"CODEV", n.V, "code rows and columns"},
 		{"CODEK", n.K, "ones in a column"},
-		{"CODEPOLY", int64(n.Poly), "polynomial of an m-sequence"},
+		{"CODEPOLY", int64(n.Poly), "of an m-sequence or a Singer code"},
 		{"PHOTVAR", n.PhotonVariance, "variance of light in a sample, over the light"},
 	})
 }

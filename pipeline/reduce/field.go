@@ -191,3 +191,15 @@ func (r *reduction) shiftField() error {
 	}
 	return err
 }
+
+// finishShift writes the table of the shift.
+func (r *reduction) finishShift() error {
+	if r.shift == nil {
+		return nil
+	}
+	table, err := r.shift.Table()
+	if err != nil {
+		return err
+	}
+	return r.cube.AppendTable(table)
+}

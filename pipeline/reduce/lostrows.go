@@ -57,11 +57,11 @@ func (r *reduction) scienceRepair(d *decoder) {
 	}
 	names := strings.Join(r.missingSteps(), ", ")
 	if lack != nil {
-		r.degrade("%d of %d code rows have no frame and are not restored (%v), so that every voxel is LOST; repeat step %s", lost, d.slots, lack, names)
+		r.degrade("code rows without a frame: %d of %d; they are not restored (%v), so that every voxel is LOST; repeat step %s", lost, d.slots, lack, names)
 		return
 	}
 	growth := math.Sqrt(d.repair.lost.Growth)
-	what := fmt.Sprintf("%d of %d code rows have no frame; they are restored from the dark columns, which multiplies the noise by %.3g; repeat step %s to do better", lost, d.slots, growth, names)
+	what := fmt.Sprintf("code rows without a frame: %d of %d, restored from the dark columns, which multiplies the noise by %.3g; repeat step %s to do better", lost, d.slots, growth, names)
 	if lost > len(d.darkColumns)/4 {
 		what += fmt.Sprintf(" (more than a quarter of the %d dark columns is not to be relied on)", len(d.darkColumns))
 	}

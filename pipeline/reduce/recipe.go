@@ -32,7 +32,7 @@ type Recipe struct {
 	Detector   DetectorRecipe `yaml:"detector" config:"optional"`
 	Flat       StageRecipe    `yaml:"flat" config:"optional"`
 	Arc        StageRecipe    `yaml:"arc" config:"optional"`
-	Sky        StageRecipe    `yaml:"sky" config:"optional"`
+	Sky        SkyRecipe      `yaml:"sky" config:"optional"`
 	Flux       StageRecipe    `yaml:"flux" config:"optional"`
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
@@ -93,7 +93,7 @@ type GridRecipe struct {
 func (r *Recipe) SetDefaults() {
 	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
-	r.Sky, r.Flux = off, off
+	r.Sky, r.Flux = SkyRecipe{Use: useOff}, off
 	r.Detector.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto, Refraction: useOff}
 }
@@ -142,7 +142,7 @@ func (r *Recipe) check(doc *config.Doc) error {
 		key string
 		use string
 	}{
-		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
+		{"flux", r.Flux.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
@@ -152,6 +152,7 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
+	r.Sky.check(c)
 	r.checkGrid(c)
 	return c.Err()
 }

@@ -92,8 +92,12 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"calibrate", r.calibrate},
 		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
+		{"sky", r.bringToSky},
 		{"finish", r.finish},
 	} {
+		if step.name == "sky" && !r.toSky() {
+			continue
+		}
 		start := time.Now()
 		bytes, err := step.run(ctx)
 		if err != nil {
@@ -159,6 +163,7 @@ type reduction struct {
 	element    *fitsutil.Cube
 
 	optics optics
+	onSky  onSky
 	// through is what was found of the throughput; nil if it was not asked for.
 	through   *throughput
 	report    product.Calibration
@@ -412,7 +417,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	if r.night.Audit != nil {

@@ -15,10 +15,27 @@ const (
 	mSequence = "m-sequence"
 	legendre  = "legendre"
 	twinPrime = "twin-prime"
+	singer    = "singer"
 	slitScan  = "slit-scan"
+
+	// complementSuffix after one of the others but the slit scan: open where that is
+	// closed.
+	complementSuffix = "-complement"
 )
 
-var families = [...]string{mSequence, legendre, twinPrime, slitScan}
+var families = [...]string{
+	mSequence, legendre, twinPrime, singer,
+	mSequence + complementSuffix, legendre + complementSuffix, twinPrime + complementSuffix, singer + complementSuffix,
+	slitScan,
+}
+
+// baseFamily is the family that a known one is the complement of, or itself.
+func baseFamily(family string) (base string, complement bool) {
+	return strings.CutSuffix(family, complementSuffix)
+}
+
+// minComplement is the smallest complement: those of 3 columns would be slit scans.
+const minComplement = 7
 
 // maxV is the largest code size: 4095 steps.
 const maxV = 4095
@@ -39,13 +56,20 @@ func hasSize(family string, v int) bool {
 	if v < 1 || v > maxV {
 		return false
 	}
-	switch family {
+	base, complement := baseFamily(family)
+	if complement && v < minComplement {
+		return false
+	}
+	switch base {
 	case mSequence:
 		return v >= 3 && v&(v+1) == 0
 	case legendre:
 		return v%4 == 3 && isPrime(v)
 	case twinPrime:
 		_, ok := smallerTwin(v)
+		return ok
+	case singer:
+		_, ok := singerFieldOf(v)
 		return ok
 	}
 	return family == slitScan
@@ -94,17 +118,25 @@ type codeRows struct {
 }
 
 // newCodeRows makes the code of a family, of a size it has; poly is needed for an
-// m-sequence and has to be 0 for the others.
+// m-sequence, a Singer code and their complements and has to be 0 for the others.
 func newCodeRows(family string, v int, poly uint32) (*codeRows, error) {
-	if family != mSequence && poly != 0 {
+	base, complement := baseFamily(family)
+	if base != mSequence && base != singer && poly != 0 {
 		return nil, fault("CODEPOLY is %d where the family %s has no polynomial and 0 is due", poly, family)
 	}
 	c := &codeRows{family: family, v: v, k: (v + 1) / 2, l: (v + 1) / 4}
-	switch family {
+	switch base {
 	case mSequence:
 		if c.first = mSequenceRow(v, poly); c.first == nil {
 			return nil, fault("CODEPOLY %d is no primitive polynomial of an m-sequence of %d columns", poly, v)
 		}
+	case singer:
+		field, _ := singerFieldOf(v)
+		if c.first = field.row(poly); c.first == nil {
+			return nil, fault("CODEPOLY %d is no primitive polynomial of degree %d over GF(%d), as a Singer code of %d columns has", poly, field.degree, field.p, v)
+		}
+		c.k = (v - 1) / field.q
+		c.l = (c.k - 1) / field.q
 	case legendre:
 		c.first = residueRow(v)
 	case twinPrime:
@@ -113,6 +145,12 @@ func newCodeRows(family string, v int, poly uint32) (*codeRows, error) {
 		c.first = make([]uint8, v)
 		c.first[0] = 1
 		c.k, c.l = 1, 0
+	}
+	if complement {
+		for j := range c.first {
+			c.first[j] = 1 - c.first[j]
+		}
+		c.k, c.l = v-c.k, v-2*c.k+c.l
 	}
 	return c, nil
 }

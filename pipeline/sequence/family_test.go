@@ -103,8 +103,44 @@ func TestSizeAdvice(t *testing.T) {
 		{legendre, 1 << 60, "nearest sizes are 4091"},
 		{twinPrime, 16, "nearest sizes are 15 and 35"},
 		{mSequence, -1 << 60, "nearest sizes are 3"},
+		{singer, 1000, "nearest sizes are 993 and 1023"},
+		{singer + complementSuffix, 1, "nearest sizes are 7"},
 		{slitScan, 0, "nearest sizes are 1"},
 	} {
 		require.Contains(t, sizeAdvice(c.family, c.v), c.want)
 	}
+}
+
+// A Singer code's polynomial: of degree 2 over GF(4), that is of degree 6 over GF(2), there
+// are phi(63)/6 = 6 primitive ones (21 columns), of degree 3 over GF(3) phi(26)/3 = 4 (13
+// columns); each gives a set whose differences are all different.
+func TestSingerPolynomials(t *testing.T) {
+	for v, want := range map[int]int{21: 6, 13: 4} {
+		field, ok := singerFieldOf(v)
+		require.True(t, ok)
+		found := 0
+		for poly := range uint32(200) {
+			row := field.row(poly)
+			if row == nil {
+				continue
+			}
+			found++
+			seen := map[int]bool{}
+			for i, a := range row {
+				for j, b := range row {
+					if i != j && a == 1 && b == 1 {
+						require.False(t, seen[(v+i-j)%v])
+						seen[(v+i-j)%v] = true
+					}
+				}
+			}
+			require.Len(t, seen, v-1)
+		}
+		require.Equal(t, want, found, v)
+	}
+	_, err := newCodeRows(singer, 13, 35)
+	require.ErrorContains(t, err, "no primitive polynomial of degree 3 over GF(3)")
+	_, err = newCodeRows(singer+complementSuffix, 13, 0)
+	require.Error(t, err)
+	require.False(t, hasSize(slitScan+complementSuffix, 7))
 }

@@ -18,7 +18,7 @@ func (s *Sequence) writeFITS(path string) error {
 		fitsutil.Card{Key: "CODEV", Value: int64(s.V), Comment: "code columns, steps of a cycle"},
 		fitsutil.Card{Key: "CODEK", Value: int64(s.K), Comment: "open columns of a code row"},
 		fitsutil.Card{Key: "CODEL", Value: int64(s.L), Comment: "open columns two code rows share"},
-		fitsutil.Card{Key: "CODEPOLY", Value: int64(s.Poly), Comment: "polynomial bits of an m-sequence, else 0"},
+		fitsutil.Card{Key: "CODEPOLY", Value: int64(s.Poly), Comment: "m-sequence: polynomial bits; singer: in base p"},
 		fitsutil.Card{Key: "ORDSEED", Value: int64(s.OrderSeed), Comment: "seed of the order of science steps"},
 		fitsutil.Card{Key: "PROFNAME", Value: s.ProfileName, Comment: "instrument profile"},
 		fitsutil.Card{Key: "PROFSHA", Value: s.ProfileSHA},

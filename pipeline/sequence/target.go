@@ -35,7 +35,7 @@ type Target struct {
 
 // CodeChoice says how the field is coded.
 type CodeChoice struct {
-	// Family is m-sequence, legendre, twin-prime or slit-scan.
+	// Family is one of the families: m-sequence, singer-complement, slit-scan ...
 	Family string `yaml:"family"`
 	// V is the code's size; nil leaves it to plan: the smallest code that holds
 	// as many elements as device and detector allow.
