@@ -1,12 +1,15 @@
 package rehearse
 
 import (
+	"context"
 	"math"
 	"os"
 	"path/filepath"
 	"testing"
 
 	"github.com/stretchr/testify/require"
+
+	"mirrorloom/pipeline/instrument"
 )
 
 // A spectrum is scaled to the AB magnitude and goes with the night.
@@ -33,4 +36,18 @@ sources:
 	again, err := LoadScene(filepath.Join(night, TruthFolder, SceneFile))
 	require.NoError(t, err)
 	require.Equal(t, s, again)
+}
+
+// A file that would replace one of the truth's is refused.
+func TestTruthKeepsItsNames(t *testing.T) {
+	dir := t.TempDir()
+	path := filepath.Join(dir, "scene.yaml")
+	require.NoError(t, os.WriteFile(path, []byte(`seeing_fwhm_arcsec: 1.1
+refstar: {ab_mag: 12, at_nm: 550, spectrum_csv: `+StarFile+`}
+`), 0o666))
+	require.NoError(t, os.WriteFile(filepath.Join(dir, StarFile), []byte("wavelength_nm,relative_flux\n500,1\n600,2\n"), 0o666))
+	s, err := LoadScene(path)
+	require.NoError(t, err)
+	_, err = Run(context.Background(), planned(t, airProfile(t, instrument.Square, 1), airTarget()), s, noiseless, t.TempDir(), nil)
+	require.EqualError(t, err, "scene: its file refstar_flux.csv has a name of the truth's own; give it another")
 }
