@@ -107,7 +107,13 @@ func (r *rehearsal) writeTexts() error {
 			return err
 		}
 	}
+	if len(r.seq.StepsOf(sequence.RefStar)) > 0 {
+		texts[StarFile] = r.starTable()
+	}
 	for name, data := range r.scene.Files() {
+		if _, taken := texts[name]; taken {
+			return fmt.Errorf("scene: its file %s has a name of the truth's own; give it another", name)
+		}
 		texts[name] = data
 	}
 	for name, data := range texts {
