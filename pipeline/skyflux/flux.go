@@ -71,6 +71,14 @@ type Flux struct {
 	Unknown int
 }
 
+// Factors are what Write applies; nil without a flux.
+func (f *Flux) Factors() *calib.FluxScale {
+	if f == nil {
+		return nil
+	}
+	return &f.Scale
+}
+
 // Calibrate finds the flux of exposures on voxels with the given edges, nm at the
 // telescope, from a star seen by the same instrument.
 func Calibrate(star *Star, table calib.FluxTable, seen, science Exposures, p *instrument.Profile, edges []float64) (*Flux, error) {

@@ -76,7 +76,7 @@ func WhereStar(path string, s product.Schema, at StarPlace) (element, row float6
 // from which it was. Errors say what is wrong and the cure.
 func (s *Source) MeasureStar(ctx context.Context, at StarPlace, sky *Sky, o Options) (*Star, error) {
 	o.setDefaults()
-	schema, err := product.ReadSchema(s.signal.Header, s.signal.Axes)
+	schema, err := s.Schema()
 	if err != nil {
 		return nil, err
 	}
