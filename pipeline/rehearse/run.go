@@ -31,6 +31,7 @@ const (
 	FaultsFile   = "faults.json"
 	GeometryFile = "geometry.yaml"
 	SceneFile    = "scene.yaml"
+	AirFile      = "atmosphere.json" // with an atmosphere alone
 	scratchFile  = ".frames.scratch"
 )
 
