@@ -51,12 +51,11 @@ func Prior(p *instrument.Profile, edges []float64) []float64 {
 
 // electrons are those of each photon's chance.
 func electrons(areaM2 float64, edges []float64, chance func(nm float64) float64) []float64 {
-	const joulesNM = 1.98644586e-16 // h c, J nm
 	out := make([]float64, len(edges)-1)
 	for l := range out {
 		for i := range priorSamples {
 			nm := edges[l] + (edges[l+1]-edges[l])*(float64(i)+0.5)/priorSamples
-			out[l] += chance(nm) * areaM2 * nm / joulesNM / physics.AttowattsPerWatt / priorSamples
+			out[l] += chance(nm) * areaM2 * physics.PhotonsFromFlux(1, nm) / priorSamples
 		}
 	}
 	return out
