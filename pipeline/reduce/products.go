@@ -89,6 +89,9 @@ func (r *reduction) finish(context.Context) (int64, error) {
 		if err := r.finishOnSky(); err != nil {
 			return 0, err
 		}
+		if err := r.finishShift(); err != nil {
+			return 0, err
+		}
 		if err := r.finishRestored(); err != nil {
 			return 0, err
 		}

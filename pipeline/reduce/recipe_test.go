@@ -71,6 +71,15 @@ func TestRecipeRefusals(t *testing.T) {
 		{"grid: {use: auto, first_nm: 500, step_nm: 1, count: 1}", "grid.count"},
 		{"grid: {use: off, first_nm: 500, step_nm: 1, count: 10}", "grid.use"},
 		{"grid: {use: off}\n---\ngrid: {use: off}", "r.yaml"},
+		{"grid: {use: auto, first_nm: 150, step_nm: 1, count: 10, axis: awav}", "grid.first_nm: wavelengths in air are not defined below 200 nm"},
+		{"grid: {use: auto, first_nm: 5, step_nm: 6, count: 10, spacing: log}", "grid.step_nm: a logarithmic step"},
+		{"grid: {use: auto, frame: sun}", "grid.frame"},
+		{"grid: {use: auto, refraction: yes}", "grid.refraction"},
+		{"grid: {use: auto, guide_nm: 500}", "grid.guide_nm: without refraction no wavelength is moved"},
+		{"grid: {use: auto, refraction: auto, guide_nm: 50}", "grid.guide_nm"},
+		{"grid: {use: auto, onto: run}", `grid.onto: "run" is no cube.fits`},
+		{"grid: {use: off, onto: cube.fits}", "grid.onto: the grid is that of the cube"},
+		{"grid: {use: auto, onto: cube.fits, first_nm: 500, step_nm: 1, count: 10}", "grid.onto: the grid is that of the cube"},
 		{"- 1", "r.yaml"},
 	} {
 		r, err := parseRecipe("r.yaml", []byte(c.text))

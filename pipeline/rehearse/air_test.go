@@ -260,11 +260,15 @@ func TestAirBelowTheHorizon(t *testing.T) {
 }
 
 // The bytes of a night through air do not depend on workers and memory, with faults that
-// draw each frame anew and without; and such faults of size 0 change nothing that is seen.
+// draw each frame anew and without; and such faults of next to no size change nothing that
+// is seen.
 func TestAirBytes(t *testing.T) {
 	p := airProfile(t, instrument.Square, 1)
+	p.Detector.Rows, p.DMD.Rows, p.Spectrograph.YCenterPx = 32, 28, 15.5
+	p.Detector.Amplifiers[0].Data, p.Detector.Amplifiers[0].Overscan = instrument.Section{1, 624, 1, 32}, instrument.Overscan{625, 640, 1, 32}
 	seq := planned(t, p, airTarget())
 	scene := lineScene()
+	scene.Sources[0].Lines = scene.Sources[0].Lines[2:4]
 	scene.Sources[0].ABMag, scene.Sources[0].AtNM = ptr(14), 550
 	scene.Sources[0].Velocity = Velocity{SystemicKmS: 300, GradientKmSArcsec: 40, PADeg: 30}
 	scene.Sky.ContinuumABArcsec2 = ptr(19.5)
@@ -284,7 +288,8 @@ func TestAirBytes(t *testing.T) {
 		require.Equal(t, a, b, "step %d", k+1)
 		x, _, _ := frame(t, one, k)
 		y, _, _ := frame(t, redrawn, k)
-		require.InDeltaSlice(t, x, y, 0.02, "step %d", k+1)
+		// ADU. What leaks has its structure along mirror rows there, along detector rows here.
+		require.InDeltaSlice(t, x, y, 0.05, "step %d", k+1)
 	}
 	for _, name := range []string{TruthFile, AirFile} {
 		a, err := os.ReadFile(filepath.Join(one, TruthFolder, name))

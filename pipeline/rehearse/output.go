@@ -107,7 +107,13 @@ func (r *rehearsal) writeTexts() error {
 			return err
 		}
 	}
+	if len(r.seq.StepsOf(sequence.RefStar)) > 0 {
+		texts[StarFile] = r.starTable()
+	}
 	for name, data := range r.scene.Files() {
+		if _, taken := texts[name]; taken {
+			return fmt.Errorf("scene: its file %s has a name of the truth's own; give it another", name)
+		}
 		texts[name] = data
 	}
 	for name, data := range texts {
@@ -178,7 +184,7 @@ func (r *rehearsal) starts() ([]time.Time, error) {
 	list := make([]time.Time, len(r.seq.Steps))
 	for i, st := range r.seq.Steps {
 		list[i] = at
-		at = at.Add(time.Duration((st.ExptimeSeconds + r.seq.Profile.Detector.ReadS) * float64(time.Second)))
+		at = at.Add(time.Duration((st.ExptimeSeconds + r.seq.Profile.OverheadS()) * float64(time.Second)))
 	}
 	return list, nil
 }

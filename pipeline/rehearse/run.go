@@ -31,7 +31,8 @@ const (
 	FaultsFile   = "faults.json"
 	GeometryFile = "geometry.yaml"
 	SceneFile    = "scene.yaml"
-	AirFile      = "atmosphere.json" // with an atmosphere alone
+	AirFile      = "atmosphere.json"  // with an atmosphere alone
+	StarFile     = "refstar_flux.csv" // with refstar steps alone
 	scratchFile  = ".frames.scratch"
 )
 
@@ -53,7 +54,7 @@ func Run(ctx context.Context, seq *sequence.Sequence, scene *Scene, opts Options
 	if err := checkFaults(opts.Faults, seq); err != nil {
 		return nil, err
 	}
-	if err := scene.validated(); err != nil {
+	if err := scene.Usable(); err != nil {
 		return nil, fmt.Errorf("scene: %w", err)
 	}
 	r, err := newRehearsal(seq, scene, opts)

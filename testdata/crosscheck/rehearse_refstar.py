@@ -72,6 +72,11 @@ def refractivity(nm):
     return 1e-6 * (sea * p * (1 + (1.049 - 0.0157 * t) * 1e-6 * p) / (720.883 * (1 + 0.003661 * t)) - (0.0624 - 0.000680 * s2) / (1 + 0.003661 * t) * f)
 
 
+catalogue = np.loadtxt(night + "/truth/refstar_flux.csv", delimiter=",", skiprows=1)
+energy = photons(catalogue[:, 0]) * H * C / (catalogue[:, 0] * 1e-9) * 1e18
+assert catalogue[0, 0] <= 390 and catalogue[-1, 0] >= 910 and np.all(np.diff(catalogue[:, 0]) == 1)
+assert np.abs(catalogue[:, 1] / energy - 1).max() < 1e-7, "truth/refstar_flux.csv"
+
 nm = np.arange(380, 920, 0.01)
 area = np.pi / 4 * profile["telescope"]["diameter_m"] ** 2 * (1 - profile["telescope"]["obscured_fraction"])
 efficiency = table(profile["telescope"]["throughput"], "fraction", nm) * table(spec["throughput"], "fraction", nm, left=0, right=0)

@@ -1,4 +1,4 @@
-package rehearse
+package scene
 
 import (
 	"os"
@@ -65,11 +65,11 @@ func TestRefStarSpectrum(t *testing.T) {
 	dir := t.TempDir()
 	path := filepath.Join(dir, "scene.yaml")
 	require.NoError(t, os.WriteFile(path, []byte(strings.Replace(airScene, "temperature_k: 9000", "spectrum_csv: star.csv", 1)), 0o666))
-	_, err := LoadScene(path)
+	_, err := Load(path)
 	require.ErrorContains(t, err, "scene.yaml:26: refstar.spectrum_csv: there is no file star.csv")
 	require.NoError(t, os.WriteFile(filepath.Join(dir, "star.csv"), []byte("wavelength_nm,relative_flux\n500,1\n600,2\n"), 0o666))
-	s, err := LoadScene(path)
+	s, err := Load(path)
 	require.NoError(t, err)
 	require.Contains(t, s.Files(), "star.csv")
-	require.NoError(t, s.validated())
+	require.NoError(t, s.Usable())
 }
