@@ -259,4 +259,3 @@ func (j *Forecasted) SumFindings(name string) Finding {
 	n := j.Sums.N
 	return Near(fmt.Sprintf("%s: S/N of sums (forecast %.2g to %.2g), measured over forecast", name, j.SumSNR[0], j.SumSNR[1]), j.SumRatio(), 1, forecastFigure, 1/math.Sqrt(2*float64(n)), n)
 }
-
