@@ -24,6 +24,8 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
+	// Sky is what was subtracted of the sky; nil if nothing was.
+	Sky *SkyReport `json:"sky,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.
