@@ -117,7 +117,8 @@ func naive(t *testing.T, c *Cube, a *aperture, scale [][]float32) [][]float64 {
 
 // scalesOf are the scales that give each voxel its own VARIANCE, [cell][channel].
 func scalesOf(t *testing.T, c *Cube, a *aperture) [][]float32 {
-	p := &propagator{c: c, a: a, pixels: map[int]*pixelRow{}, light: c.newLightReader(nil)}
+	p := c.newPropagator(a)
+	p.light = c.newLightReader(nil)
 	var all [][]float32
 	for i, k := range a.cells {
 		trace, err := p.newTrace(k.row, i, i+1)
