@@ -134,7 +134,11 @@ func (p *propagator) pixel(w *part, x int, light [][]float32, pixels *pixelRow) 
 		if p.c.noise.Uniform {
 			return w.b.own[x]
 		}
-		return float64(pixels.of(slot)[w.x0+x]) - common
+		own := float64(pixels.of(slot)[w.x0+x]) - common
+		if pixels.shared != nil {
+			own -= float64(pixels.shared[slot][w.x0+x])
+		}
+		return own
 	})
 	for j := range p.elements {
 		lo, g := w.weights(j, x)
