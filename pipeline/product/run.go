@@ -24,6 +24,9 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
+	// Stars is what listed stars told of the place on the sky; nil if none were listed or
+	// they were not found.
+	Stars *Stars `json:"stars,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.

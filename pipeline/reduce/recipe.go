@@ -37,6 +37,7 @@ type Recipe struct {
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
 	Repair     StageRecipe    `yaml:"repair" config:"optional"`
+	Stars      StarsRecipe    `yaml:"stars" config:"optional"`
 
 	// SHA is the lower-case hex SHA-256 of the recipe's text (RECSHA).
 	SHA string `yaml:"-" config:"-"`
@@ -86,6 +87,7 @@ func (r *Recipe) SetDefaults() {
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
 	r.Sky, r.Flux = off, off
 	r.Detector.SetDefaults()
+	r.Stars.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto, Frame: frameObservatory}
 }
 
@@ -143,6 +145,7 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
+	r.Stars.check(c)
 	r.checkGrid(c)
 	return c.Err()
 }

@@ -65,7 +65,7 @@ func newPage(in Input) *page {
 	p := &page{
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
-		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: calibrationFacts(in.Run.Calibration),
+		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: append(calibrationFacts(in.Run.Calibration), starFacts(in.Run.Stars)...),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")
