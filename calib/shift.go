@@ -26,6 +26,7 @@ type rowPlan struct {
 	weights     []float32 // [column][points]
 	runs        []run
 	cover       []Flag // per column: Partial, NoData; nil when all is covered
+	covers      []Flag // its memory
 	first, last int    // rows read, relative to y0, inclusive
 }
 
@@ -64,11 +65,22 @@ func NewRowShift(shift []float64, rows int) (*RowShift, error) {
 
 // plan computes the weights of trace row y0.
 func (s *stencil) plan(shift []float64, y0 int) *rowPlan {
-	p := &rowPlan{weights: make([]float32, len(shift)*points), first: math.MaxInt, last: math.MinInt}
-	cover := make([]Flag, len(shift))
-	whole := true
+	p := &rowPlan{}
+	p.set(s, y0, 0, len(shift), shift)
+	return p
+}
+
+// set computes the weights of columns x0.. of trace row y0 of a detector of so many
+// columns; shift holds theirs.
+func (p *rowPlan) set(s *stencil, y0, x0, columns int, shift []float64) {
+	p.first, p.last, p.runs = math.MaxInt, math.MinInt, p.runs[:0]
+	if len(p.weights) != columns*points {
+		p.weights, p.covers = make([]float32, columns*points), make([]Flag, columns)
+	}
+	p.cover = nil
 	low, high := newEdge(), newEdge()
-	for x, t := range shift {
+	for i, t := range shift {
+		x := x0 + i
 		s.set(&low, float64(y0)-0.5+t)
 		s.set(&high, float64(y0)+0.5+t)
 		start := min(low.base, s.size-points)
@@ -76,25 +88,24 @@ func (s *stencil) plan(shift []float64, y0 int) *rowPlan {
 		for i := range w {
 			w[i] = high.tails[pad+start-high.base+i] - low.tails[pad+start-low.base+i]
 		}
+		p.covers[x] = 0
 		switch c := high.place - low.place; {
 		case c < halfCover:
-			cover[x] = NoData | Partial
+			p.covers[x] = NoData | Partial
 		case c < fullCover:
-			cover[x] = Partial
+			p.covers[x] = Partial
 		}
-		whole = whole && cover[x] == 0
+		if p.covers[x] != 0 {
+			p.cover = p.covers
+		}
 		p.add(x, start-y0)
 	}
-	if !whole {
-		p.cover = cover
-	}
-	return p
 }
 
 // add appends column x, whose weights begin at row, to the runs.
 func (p *rowPlan) add(x, row int) {
 	p.first, p.last = min(p.first, row), max(p.last, row+points-1)
-	if n := len(p.runs); n > 0 && p.runs[n-1].row == row {
+	if n := len(p.runs); n > 0 && p.runs[n-1].row == row && p.runs[n-1].x1 == x {
 		p.runs[n-1].x1 = x + 1
 		return
 	}
@@ -113,7 +124,10 @@ func (s *RowShift) Span(y0 int) (first, last int) {
 // Weights gives the weights with which column x of trace row y0 gathers the detector
 // rows first, first+1, ... The slice is not to be changed.
 func (s *RowShift) Weights(y0, x int) (first int, w []float32) {
-	p := s.plans[y0]
+	return s.plans[y0].at(y0, x)
+}
+
+func (p *rowPlan) at(y0, x int) (first int, w []float32) {
 	at := sort.Search(len(p.runs), func(i int) bool { return p.runs[i].x1 > x })
 	return y0 + p.runs[at].row, p.weights[x*points:][:points]
 }
@@ -121,10 +135,14 @@ func (s *RowShift) Weights(y0, x int) (first int, w []float32) {
 // Signal writes trace row y0 to dst, one value a column: sum w v. rows[i] is
 // detector row first+i; all of Span(y0) must be among them.
 func (s *RowShift) Signal(dst []float32, rows [][]float32, first, y0 int) {
-	p := s.plans[y0]
+	s.plans[y0].signal(dst, rows, y0-first)
+}
+
+// signal takes trace row y0 from rows of which the first is row y0 - below.
+func (p *rowPlan) signal(dst []float32, rows [][]float32, below int) {
 	for _, r := range p.runs {
 		out := dst[r.x0:r.x1]
-		q := window(rows, y0+r.row-first, r)
+		q := window(rows, below+r.row, r)
 		w := p.weights[r.x0*points:]
 		for x := range out {
 			u := w[x*points:][:points]
@@ -136,10 +154,13 @@ func (s *RowShift) Signal(dst []float32, rows [][]float32, first, y0 int) {
 
 // Variance is Signal for variances: sum w^2 var.
 func (s *RowShift) Variance(dst []float32, rows [][]float32, first, y0 int) {
-	p := s.plans[y0]
+	s.plans[y0].variance(dst, rows, y0-first)
+}
+
+func (p *rowPlan) variance(dst []float32, rows [][]float32, below int) {
 	for _, r := range p.runs {
 		out := dst[r.x0:r.x1]
-		q := window(rows, y0+r.row-first, r)
+		q := window(rows, below+r.row, r)
 		w := p.weights[r.x0*points:]
 		for x := range out {
 			u := w[x*points:][:points]
@@ -164,17 +185,23 @@ func window(rows [][]float32, at int, r run) [points][]float32 {
 // up: a column that is bad in every row reaches its trace rows whole.
 func (s *RowShift) Flags(dst *RowFlags, rows [][]Flag, first, y0 int) {
 	dst.resize(s.columns)
-	p := s.plans[y0]
+	s.plans[y0].flags(dst, rows, y0-first)
+}
+
+// flags fills dst, which has the detector's columns, where the plan has weights.
+func (p *rowPlan) flags(dst *RowFlags, rows [][]Flag, below int) {
 	for _, r := range p.runs {
 		for x := r.x0; x < r.x1; x++ {
 			w := p.weights[x*points:][:points]
-			dst.Bits[x], dst.Reach[x] = reach(w, rows[y0+r.row-first:], x)
+			dst.Bits[x], dst.Reach[x] = reach(w, rows[below+r.row:], x)
 		}
 	}
-	for x, c := range p.cover {
-		if c != 0 {
-			dst.Bits[x] |= c
-			dst.Reach[x] = 1
+	for _, r := range p.runs {
+		for x := r.x0; x < r.x1 && p.cover != nil; x++ {
+			if c := p.cover[x]; c != 0 {
+				dst.Bits[x] |= c
+				dst.Reach[x] = 1
+			}
 		}
 	}
 	dst.count()

@@ -142,6 +142,11 @@ func (c *Cube) readGrid() error {
 		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
 	c.Grid, c.Frame = s.Grid, s.Frame
+	for _, u := range c.file.HDUs() {
+		if u.Name == product.Shift {
+			return fmt.Errorf("%s: the place of its light depends on the wavelength (table %s), which errors of sums do not know yet: %w", c.Path(), product.Shift, ErrGrid)
+		}
+	}
 	axis := c.axis()
 	c.edges, c.centres = c.edgesOf(0, axis.Grid.Count), calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), 0, axis.Grid.Count)
 	return nil

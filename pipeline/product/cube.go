@@ -113,19 +113,22 @@ type layer struct {
 }
 
 // decodedLayers are the images that cube and element cube share, in their order.
-func decodedLayers() []layer {
+func decodedLayers(signal, variance string) []layer {
 	return []layer{
-		{Signal, UnitSignal, -32, nil},
-		{Variance, UnitVariance, -32, nil},
+		{Signal, signal, -32, nil},
+		{Variance, variance, -32, nil},
 		{FlagsImage, "", 16, flagCards()},
 	}
 }
 
 // Images gives the four images of cube.fits in their order.
-func (s Schema) Images() ([]fitsutil.ImageSpec, error) {
+func (s Schema) Images() ([]fitsutil.ImageSpec, error) { return s.ImagesOnSky(OnSky{}) }
+
+// ImagesOnSky are Images of a cube to which that was done.
+func (s Schema) ImagesOnSky(o OnSky) ([]fitsutil.ImageSpec, error) {
 	var specs []fitsutil.ImageSpec
-	for _, im := range append(decodedLayers(), layer{Scale, "", -32, nil}) {
-		h, err := s.Header(im.unit)
+	for _, im := range append(decodedLayers(o.Units()), layer{Scale, "", -32, nil}) {
+		h, err := s.Header(im.unit, o.Cards()...)
 		if err != nil {
 			return nil, err
 		}
@@ -164,7 +167,7 @@ func (p Provenance) Primary(object string) (*fitsutil.Header, error) {
 // detector coordinates, dark columns too.
 func ElementImages(columns, rows, v int) ([]fitsutil.ImageSpec, error) {
 	var specs []fitsutil.ImageSpec
-	for _, im := range decodedLayers() {
+	for _, im := range decodedLayers(UnitSignal, UnitVariance) {
 		h := fitsutil.NewHeader()
 		cards := im.cards
 		if im.unit != "" {

@@ -27,6 +27,8 @@ type Run struct {
 	// Stars is what listed stars told of the place on the sky; nil if none were listed or
 	// they were not found.
 	Stars *Stars `json:"stars,omitempty"`
+	// Sky is what was subtracted of the sky; nil if nothing was.
+	Sky *SkyReport `json:"sky,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.

@@ -40,11 +40,16 @@ func (r *reduction) moments() ([]moment, error) {
 	return all, nil
 }
 
-// setFrame gives the cube's wavelengths their standard of rest. The mean factor of the
+// setFrame gives the cube's wavelengths their standard of rest: that of the recipe, or of
+// the cube whose voxels are wanted. The mean factor of the
 // exposures serves all of them: the observer's velocity changes by some 0.1 km/s an hour,
 // a thousandth of a voxel.
-func (r *reduction) setFrame() {
-	if r.opts.Recipe.Grid.Frame != frameBarycentric {
+func (r *reduction) setFrame(onto *product.Schema) {
+	wanted := r.opts.Recipe.Grid.Frame
+	if onto != nil {
+		wanted = frameOf(onto.Frame)
+	}
+	if wanted != frameBarycentric {
 		return
 	}
 	moments, err := r.moments()

@@ -51,8 +51,8 @@ func (r *reduction) writePixelVariance(row *decodedRow) error {
 	return nil
 }
 
-// finishNoise writes the response and the table of the code.
-func (r *reduction) finishNoise() error {
+// writeResponses writes the response by which voxels were divided.
+func (r *reduction) writeResponses() error {
 	if f := r.optics.response; f != nil {
 		// BANDRESP has the order of a plane of the cube's elements and wavelengths.
 		band, variance := transposed(f.Band, f.Elements, f.Voxels), transposed(f.BandVariance, f.Elements, f.Voxels)
@@ -66,6 +66,16 @@ func (r *reduction) finishNoise() error {
 			if err := r.cube.WriteStrip(im.image, 0, im.rows, im.plane, 1, im.data); err != nil {
 				return err
 			}
+		}
+	}
+	return nil
+}
+
+// finishNoise appends the table of the code, and the response where it is not written yet.
+func (r *reduction) finishNoise() error {
+	if !r.toSky() {
+		if err := r.writeResponses(); err != nil {
+			return err
 		}
 	}
 	table, err := r.noise().CodeTable()

@@ -63,9 +63,9 @@ func (o *optics) pixelVariance() float64 {
 // profile says and is a reason why the product is not whole.
 func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 	r.usage = newUsage(r.seq)
-	r.schema = product.NewSchema(r.seq)
-	r.schema.Grid = r.opts.Recipe.grid(r.seq.Profile)
-	r.setFrame()
+	if err := r.placeVoxels(); err != nil {
+		return 0, err
+	}
 	r.optics.geometry = nominalGeometry(r.seq)
 	if err := r.checkGrid(); err != nil {
 		return 0, err

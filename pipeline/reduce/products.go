@@ -11,24 +11,16 @@ import (
 
 // create lays out the products.
 func (r *reduction) create(s shape) error {
-	primary, err := product.Provenance{
-		ProfileName: r.seq.ProfileName, ProfileSHA: r.seq.ProfileSHA, SequenceSHA: r.seq.SHA, RecipeSHA: r.opts.Recipe.SHA,
-		FramesUsed: r.roles.science, FramesLost: len(r.roles.missing),
-	}.Primary(r.seq.Target.Name)
+	primary, err := r.primary()
 	if err != nil {
 		return err
 	}
 	if s.cube {
-		images, err := r.schema.Images()
+		images, err := r.cubeImages(product.OnSky{})
 		if err != nil {
 			return err
 		}
-		more, err := r.noiseImages()
-		if err != nil {
-			return err
-		}
-		images = append(images, more...)
-		if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary.Clone(), images); err != nil {
+		if r.cube, err = fitsutil.CreateCube(r.cubePath(), primary.Clone(), images); err != nil {
 			return err
 		}
 	}
@@ -42,6 +34,31 @@ func (r *reduction) create(s shape) error {
 		}
 	}
 	return nil
+}
+
+// primary is the primary header of the products.
+func (r *reduction) primary() (*fitsutil.Header, error) {
+	return product.Provenance{
+		ProfileName: r.seq.ProfileName, ProfileSHA: r.seq.ProfileSHA, SequenceSHA: r.seq.SHA, RecipeSHA: r.opts.Recipe.SHA,
+		FramesUsed: r.roles.science, FramesLost: len(r.roles.missing),
+	}.Primary(r.seq.Target.Name)
+}
+
+// cubeImages are those of cube.fits once that was done to it.
+func (r *reduction) cubeImages(done product.OnSky) ([]fitsutil.ImageSpec, error) {
+	images, err := r.schema.ImagesOnSky(done)
+	if err != nil {
+		return nil, err
+	}
+	more, err := r.noiseImages()
+	if err != nil {
+		return nil, err
+	}
+	images = append(images, more...)
+	if done.Sky != nil {
+		images = append(images, fitsutil.ImageSpec{Name: product.SkyShare, BITPIX: -32, Axes: []int{r.schema.Elements, r.schema.Rows, 2}})
+	}
+	return images, nil
 }
 
 // judge turns flags that were set into reasons why the product is not whole.
@@ -70,6 +87,12 @@ func (r *reduction) finish(context.Context) (int64, error) {
 			return 0, err
 		}
 		if err := r.finishNoise(); err != nil {
+			return 0, err
+		}
+		if err := r.finishOnSky(); err != nil {
+			return 0, err
+		}
+		if err := r.finishShift(); err != nil {
 			return 0, err
 		}
 		if err := r.finishRestored(); err != nil {

@@ -32,7 +32,7 @@ type Recipe struct {
 	Detector   DetectorRecipe `yaml:"detector" config:"optional"`
 	Flat       StageRecipe    `yaml:"flat" config:"optional"`
 	Arc        StageRecipe    `yaml:"arc" config:"optional"`
-	Sky        StageRecipe    `yaml:"sky" config:"optional"`
+	Sky        SkyRecipe      `yaml:"sky" config:"optional"`
 	Flux       StageRecipe    `yaml:"flux" config:"optional"`
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
@@ -77,18 +77,27 @@ type GridRecipe struct {
 	Axis    instrument.Axis    `yaml:"axis" config:"optional"`
 	Spacing instrument.Spacing `yaml:"spacing" config:"optional"`
 	// Frame is the standard of rest of the wavelengths: observatory, as observed, or
-	// barycentric, of the solar system's barycentre.
+	// barycentric, of the solar system's barycentre. Unless given it is that of onto's cube,
+	// or observatory.
 	Frame string `yaml:"frame" config:"optional"`
+	// Refraction auto takes out what the air's refraction does to the place of each
+	// wavelength, off leaves it in. GuideNM is the vacuum wavelength at which the guider
+	// holds the target; the profile's center_nm unless given.
+	Refraction string  `yaml:"refraction" config:"optional"`
+	GuideNM    float64 `yaml:"guide_nm" config:"optional"`
+	// Onto names the cube.fits of another run whose voxels this cube is to have: its pixels
+	// on the sky, its wavelengths and their frame.
+	Onto string `yaml:"onto" config:"optional"`
 }
 
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
 	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
-	r.Sky, r.Flux = off, off
+	r.Sky, r.Flux = SkyRecipe{Use: useOff}, off
 	r.Detector.SetDefaults()
 	r.Stars.SetDefaults()
-	r.Grid = GridRecipe{Use: useAuto, Frame: frameObservatory}
+	r.Grid = GridRecipe{Use: useAuto, Refraction: useOff}
 }
 
 // SetDefaults gives the options their defaults.
@@ -135,7 +144,7 @@ func (r *Recipe) check(doc *config.Doc) error {
 		key string
 		use string
 	}{
-		{"sky", r.Sky.Use}, {"flux", r.Flux.Use},
+		{"flux", r.Flux.Use},
 	} {
 		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
 	}
@@ -146,13 +155,18 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
 	r.Stars.check(c)
+	c.That(r.Stars.Use == useOff || r.Grid.Onto == "", "stars.use", "the cube's place is that of grid.onto, which stars would move again; leave one of them out")
+	r.Sky.check(c)
 	r.checkGrid(c)
 	return c.Err()
 }
 
 func (r *Recipe) checkGrid(c *config.Checks) {
 	c.OneOf("grid.use", r.Grid.Use, useAuto, useOff)
-	c.OneOf("grid.frame", r.Grid.Frame, frameObservatory, frameBarycentric)
+	if r.Grid.Frame != "" {
+		c.OneOf("grid.frame", r.Grid.Frame, frameObservatory, frameBarycentric)
+	}
+	r.checkField(c)
 	if r.ownGrid() {
 		c.That(r.Grid.Use == useAuto, "grid.use", "off takes the profile's grid, so first_nm, step_nm and count have no effect; use auto or leave them out")
 		c.Positive("grid.first_nm", r.Grid.FirstNM)
@@ -166,6 +180,20 @@ func (r *Recipe) checkGrid(c *config.Checks) {
 		other bool
 	}{{"grid.axis", r.Grid.Axis != instrument.Vacuum}, {"grid.spacing", r.Grid.Spacing != instrument.Linear}} {
 		c.That(!k.other, k.key, "the profile's grid has its own; give first_nm, step_nm and count as well")
+	}
+}
+
+// checkField refuses contradictions among the keys that say where voxels lie on the sky.
+func (r *Recipe) checkField(c *config.Checks) {
+	g := r.Grid
+	c.OneOf("grid.refraction", g.Refraction, useAuto, useOff)
+	if g.GuideNM != 0 {
+		c.Within("grid.guide_nm", g.GuideNM, 200, 1e5)
+		c.That(g.Refraction == useAuto, "grid.guide_nm", "without refraction no wavelength is moved; add refraction: auto or leave guide_nm out")
+	}
+	if g.Onto != "" {
+		c.That(strings.HasSuffix(g.Onto, ".fits"), "grid.onto", "%q is no cube.fits; give that of the run whose voxels are wanted", g.Onto)
+		c.That(g.Use == useAuto && !r.ownGrid(), "grid.onto", "the grid is that of the cube; leave first_nm, step_nm, count and use: off out")
 	}
 }
 

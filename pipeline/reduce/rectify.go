@@ -31,6 +31,10 @@ type rectifier struct {
 	scaled    bool
 	byElement []float32
 	workers   []rectifyWorker
+	// field, where not nil, shifts the voxels' light: see rectifyfield.go. group elements
+	// are made together.
+	field *calib.ShiftField
+	group int
 }
 
 // group is the number of elements that one worker takes to voxels before it
@@ -38,18 +42,27 @@ type rectifier struct {
 const group = 16
 
 type rectifyWorker struct {
-	signal, variance  []float32 // a straightened row
-	scale, applied    []float32 // times variance, straightened
-	coherent          []float32 // the same, of errors that pixels share
-	flags             calib.RowFlags
-	edges             []float64
-	before            []float32
-	voxels, variances []float32 // [element of the group][voxel]
-	scales            []float32
-	bits              []calib.Flag
-	signals, vars     [][]float32 // one element's rows in the window
-	scaleRows         [3][][]float32
-	bitRows           [][]calib.Flag
+	signal, variance []float32 // a straightened row
+	scale, applied   []float32 // times variance, straightened
+	coherent         []float32 // the same, of errors that pixels share
+	flags            calib.RowFlags
+	edges            []float64
+	before           []float32
+	out              spectra // of the group's elements
+	field            *fieldWorker
+	signals, vars    [][]float32 // one element's rows in the window
+	scaleRows        [3][][]float32
+	bitRows          [][]calib.Flag
+}
+
+// spectra are voxels of some elements, [element][voxel].
+type spectra struct {
+	signal, variance, scale []float32
+	flags                   []calib.Flag
+}
+
+func newSpectra(n int) spectra {
+	return spectra{make([]float32, n), make([]float32, n), make([]float32, n), make([]calib.Flag, n)}
 }
 
 // outStrip is some rows of the cube: [voxel][row][element].
@@ -77,7 +90,7 @@ func newRectifier(g calib.Geometry, axis product.SpectralAxis, s shape, u *usage
 		return nil, err
 	}
 	n := axis.Grid.Count
-	r := &rectifier{geometry: g, edges: edgesOf(axis), voxels: n, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
+	r := &rectifier{group: group, geometry: g, edges: edgesOf(axis), voxels: n, shift: rows, columns: columns, usage: u, elements: s.elements, uniform: s.uniform}
 	r.added = make([]float32, s.rows*s.elements)
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
@@ -85,8 +98,7 @@ func newRectifier(g calib.Geometry, axis product.SpectralAxis, s shape, u *usage
 			scale: make([]float32, s.columns), applied: make([]float32, s.columns), coherent: make([]float32, s.columns),
 			edges:  make([]float64, n+1),
 			before: make([]float32, n),
-			voxels: make([]float32, group*n), variances: make([]float32, group*n),
-			bits: make([]calib.Flag, group*n), scales: make([]float32, group*n),
+			out:    newSpectra(group * n),
 		})
 	}
 	return r, nil
@@ -102,17 +114,25 @@ func edgesOf(axis product.SpectralAxis) calib.Wavelengths {
 func (r *rectifier) margin(rows int) int {
 	most := 0
 	for y := range rows {
-		first, last := r.shift.Span(y)
+		first, last := r.span(y)
 		most = max(most, last-first)
 	}
 	return most
+}
+
+// span is the range of detector rows that trace row y reads.
+func (r *rectifier) span(y int) (first, last int) {
+	if r.field != nil {
+		return r.field.Span(y)
+	}
+	return r.shift.Span(y)
 }
 
 // ready is the number of trace rows from y on whose rows are all below next.
 func (r *rectifier) ready(y, next int) int {
 	n := 0
 	for ; y+n < r.usage.rows; n++ {
-		if _, last := r.shift.Span(y + n); last >= next {
+		if _, last := r.span(y + n); last >= next {
 			break
 		}
 	}
@@ -123,7 +143,7 @@ func (r *rectifier) ready(y, next int) int {
 func (r *rectifier) needs(y int) int {
 	least := y
 	for ; y < r.usage.rows; y++ {
-		first, _ := r.shift.Span(y)
+		first, _ := r.span(y)
 		least = min(least, first)
 	}
 	return max(0, least)
@@ -131,9 +151,14 @@ func (r *rectifier) needs(y int) int {
 
 // run fills the strip from the window.
 func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
-	groups := (r.elements + group - 1) / group
+	groups := (r.elements + r.group - 1) / r.group
 	return parallel.Do(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
-		r.rectify(&r.workers[worker], out, w, i/groups, i%groups*group)
+		row, j0 := i/groups, i%groups*r.group
+		if r.field != nil {
+			r.rectifyShifted(&r.workers[worker], out, w, row, j0)
+		} else {
+			r.rectify(&r.workers[worker], out, w, row, j0)
+		}
 		return nil
 	})
 }
@@ -163,9 +188,9 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		r.geometry.Places(k.edges, float64(j), float64(y), r.edges)
 		at := (j - j0) * nl
 		r.columns.Resample(calib.Voxels{
-			Signal: k.voxels[at:], Variance: k.variances[at:], Flags: k.bits[at:], Stride: 1,
+			Signal: k.out.signal[at:], Variance: k.out.variance[at:], Flags: k.out.flags[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
-		r.scaleVoxels(k, at, j)
+		r.scaleVoxels(k, &k.out, at, j)
 		r.flatten(k, at, j, y)
 	}
 	r.store(k, out, row, j0, j1)
@@ -178,7 +203,7 @@ func (r *rectifier) flatten(k *rectifyWorker, at, j, y int) {
 		return
 	}
 	nl := r.voxels
-	signal, variance, flags := k.voxels[at:at+nl], k.variances[at:at+nl], k.bits[at:at+nl]
+	signal, variance, flags := k.out.signal[at:at+nl], k.out.variance[at:at+nl], k.out.flags[at:at+nl]
 	sampled := j%addedEvery == 0
 	if sampled {
 		copy(k.before, variance)
@@ -206,11 +231,17 @@ func (r *rectifier) addedShare(k *rectifyWorker, variance []float32, j, y int) f
 			n++
 		}
 	}
-	if n == 0 {
+	return medianOf(k.before[:n])
+}
+
+// medianOf is the median of the numbers among x, whose order is lost; 0 for none.
+func medianOf(x []float32) float32 {
+	x = slices.DeleteFunc(x, func(v float32) bool { return v != v })
+	if len(x) == 0 {
 		return 0
 	}
-	slices.Sort(k.before[:n])
-	return k.before[n/2]
+	slices.Sort(x)
+	return x[len(x)/2]
 }
 
 // addedVariance is the median of addedShare over the rows that mirrors feed.
@@ -241,8 +272,8 @@ func (r *rectifier) store(k *rectifyWorker, out *outStrip, row, j0, j1 int) {
 		flags, scale := out.flags[at:at+n], out.scale[at:at+n]
 		for i := range n {
 			from := i*nl + l
-			signal[i], variance[i], flags[i], scale[i] = k.voxels[from], k.variances[from], k.bits[from], k.scales[from]
-			if use[i] != 0 {
+			signal[i], variance[i], flags[i], scale[i] = k.out.signal[from], k.out.variance[from], k.out.flags[from], k.out.scale[from]
+			if use[i] != 0 && r.field == nil {
 				signal[i], variance[i] = nan32, nan32
 				flags[i] |= use[i]
 			}

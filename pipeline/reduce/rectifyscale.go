@@ -25,8 +25,8 @@ func (r *rectifier) straightenScale(k *rectifyWorker, w *window, first, y int) {
 // their middle, and their variances what of it is sure, and what the restoration of lost
 // rows does to this element. Of errors that pixels share, a voxel of w pixels has w^2.
 // SCALE is what the variance was multiplied by, and where that is 1 the q measured.
-func (r *rectifier) scaleVoxels(k *rectifyWorker, at, j int) {
-	scales, variances := k.scales[at:at+r.voxels], k.variances[at:at+r.voxels]
+func (r *rectifier) scaleVoxels(k *rectifyWorker, s *spectra, at, j int) {
+	scales, variances := s.scale[at:at+r.voxels], s.variance[at:at+r.voxels]
 	own := float32(1)
 	if r.byElement != nil {
 		own = r.byElement[j]

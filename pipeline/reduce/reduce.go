@@ -92,8 +92,12 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"calibrate", r.calibrate},
 		{"throughput", r.measureThroughput},
 		{"strips", r.strips},
+		{"sky", r.bringToSky},
 		{"finish", r.finish},
 	} {
+		if step.name == "sky" && !r.toSky() {
+			continue
+		}
 		start := time.Now()
 		bytes, err := step.run(ctx)
 		if err != nil {
@@ -152,12 +156,14 @@ type reduction struct {
 	// nil for nothing.
 	correction *correction
 	schema     product.Schema
+	shift      *product.FieldShift // nil for none
 	usage      *usage
 	cube       *fitsutil.Cube
 	shape      shape // of the products, once strips has begun
 	element    *fitsutil.Cube
 
 	optics optics
+	onSky  onSky
 	// through is what was found of the throughput; nil if it was not asked for.
 	through   *throughput
 	report    product.Calibration
@@ -282,6 +288,9 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 		}
+		if err := r.shiftField(); err != nil {
+			return 0, err
+		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
 	}
@@ -348,12 +357,17 @@ func (r *reduction) gridSource() string {
 	return filepath.Join(r.opts.Sequence, "profile.yaml")
 }
 
-// heldBytes is the memory of what calibrate keeps for the strips.
+// heldBytes is the memory of what calibrate keeps for the strips, and of what the
+// rectifier needs more than usual.
 func (r *reduction) heldBytes() int64 {
-	if r.optics.pixel == nil {
-		return 0
+	held := int64(0)
+	if r.rectifier != nil {
+		held = r.rectifier.fieldBytes()
 	}
-	return exposureBytes * int64(len(r.optics.pixel.Factor))
+	if r.optics.pixel == nil {
+		return held
+	}
+	return held + exposureBytes*int64(len(r.optics.pixel.Factor))
 }
 
 // newDecoder decodes the frames of slots, corrected so; nil for uncorrected ones.
@@ -408,7 +422,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	run.Stars = r.stars.report

@@ -9,6 +9,7 @@ import "math"
 // feature is kept.
 type band struct {
 	first float64 // px of rate[0]
+	index int     // of rate[0] among the points of all dispersed distances
 	rate  []float64
 }
 
@@ -41,7 +42,7 @@ func (g *Geometry) newBand(perNM func(nm float64) float64, from, to float64) *ba
 		return nil
 	}
 	first, last = max(first-1, 0), min(last+1, n-1)
-	return &band{first: from + float64(first)*bandStep, rate: rate[first : last+1]}
+	return &band{first: from + float64(first)*bandStep, index: first, rate: rate[first : last+1]}
 }
 
 // integral is int f from a to b, by Gauss's rule of two points in four equal

@@ -35,6 +35,8 @@ func (o *optics) newMirrorRow(w int) *mirrorRow {
 type density struct {
 	h        []float64
 	from, to int
+	// shaped and shares are scratch of light behind air.
+	shaped, shares []float64
 }
 
 func (d *density) clear() {
@@ -69,7 +71,11 @@ func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64
 			if emitters[e].band == nil {
 				continue
 			}
-			if p := emitters[e].image.fraction(column, row); p > leastFraction {
+			if emitters[e].sight != nil {
+				o.addThrough(d, &emitters[e], m, column, row, across)
+				continue
+			}
+			if p := emitters[e].image.fraction(float64(column), float64(row)); p > leastFraction {
 				d.touch(emitters[e].band.add(d.h, p, m.start, across))
 			}
 		}
@@ -86,7 +92,11 @@ func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64
 			if len(emitters[e].lines) == 0 {
 				continue
 			}
-			if p := emitters[e].image.fraction(column, row); p > leastFraction {
+			if emitters[e].sight != nil {
+				o.addLinesThrough(d, &emitters[e], efficiency, m, column, row, u)
+				continue
+			}
+			if p := emitters[e].image.fraction(float64(column), float64(row)); p > leastFraction {
 				o.addLines(d, &emitters[e], efficiency, p, m, u)
 			}
 		}
@@ -95,23 +105,27 @@ func (o *optics) collect(d *density, emitters []emitter, efficiency func(float64
 
 // addLines puts an emitter's lines on d.
 func (o *optics) addLines(d *density, e *emitter, efficiency func(float64) float64, p float64, m *mirrorRow, u int) {
-	g := &o.geometry
 	factor := 1.0
 	if e.motion != nil {
 		factor = physics.DopplerFactor(e.motion.at(o.field.skyOf(u, m.w)))
 	}
-	across := g.across(float64(u))
+	across := o.geometry.across(float64(u))
 	for _, line := range e.lines {
 		nm := line.nm * factor
-		rate := p * line.photons * efficiency(nm)
-		px := g.dispersed(nm)
-		if !(rate > 0) || px < o.pxFrom || px > o.pxTo || g.dispersion(nm)*g.DispersionPxPerNM[0] <= 0 {
-			continue
-		}
-		x := g.land(across, px, m.row)
-		width := line.fwhmKmS / fwhmPerSigma / (physics.LightSpeed_m_s / 1000) * nm * math.Abs(g.dispersion(nm))
-		o.deposit(d, x, width, rate)
+		o.addLine(d, nm, p*line.photons*efficiency(nm), line.fwhmKmS, across, m)
 	}
+}
+
+// addLine puts a line of so many electrons per second on d.
+func (o *optics) addLine(d *density, nm, rate, fwhmKmS, across float64, m *mirrorRow) {
+	g := &o.geometry
+	px := g.dispersed(nm)
+	if !(rate > 0) || px < o.pxFrom || px > o.pxTo || g.dispersion(nm)*g.DispersionPxPerNM[0] <= 0 {
+		return
+	}
+	x := g.land(across, px, m.row)
+	width := fwhmKmS / fwhmPerSigma / (physics.LightSpeed_m_s / 1000) * nm * math.Abs(g.dispersion(nm))
+	o.deposit(d, x, width, rate)
 }
 
 // Lines from sampledFrom px (standard deviation) up are sampled on the grid:

@@ -24,9 +24,9 @@ func bentOptics(t *testing.T, name string) *optics {
 func testProfiles() []string { return []string{"optical", "infrared"} }
 
 // oneLine is a light of one line that only mirror (u, w) gets.
-type oneMirror struct{ column, row int }
+type oneMirror struct{ column, row float64 }
 
-func (m oneMirror) fraction(column, row int) float64 {
+func (m oneMirror) fraction(column, row float64) float64 {
 	if column == m.column && row == m.row {
 		return 1
 	}
@@ -101,7 +101,7 @@ func TestPixelsAreGaussianIntegrals(t *testing.T) {
 			u, w, nm := int(spot[0]), int(spot[1]), spot[2]
 			column, row, ok := o.field.mirror(u, w)
 			require.True(t, ok)
-			e := []emitter{{image: oneMirror{column, row}, lines: []emission{{nm: nm, photons: 1000}}}}
+			e := []emitter{{image: oneMirror{float64(column), float64(row)}, lines: []emission{{nm: nm, photons: 1000}}}}
 			image := drawnPixels(o, e, func(float64) float64 { return 1 }, u, u)
 			x0, y0 := landing(o.geometry, u, w, nm)
 			sigma := o.geometry.LSFFWHMPx / (2 * math.Sqrt(2*math.Log(2)))
@@ -132,7 +132,7 @@ func TestWideLines(t *testing.T) {
 	sigma := g.LSFFWHMPx / fwhmPerSigma
 	x0, y0 := landing(g, u, w, nm)
 	for _, fwhm := range []float64{10, 60, 200, 320, 500, 1500} {
-		e := []emitter{{image: oneMirror{u, w}, lines: []emission{{nm: nm, photons: 1000, fwhmKmS: fwhm}}}}
+		e := []emitter{{image: oneMirror{float64(u), float64(w)}, lines: []emission{{nm: nm, photons: 1000, fwhmKmS: fwhm}}}}
 		image := drawnPixels(o, e, func(float64) float64 { return 1 }, u, u)
 		width := fwhm / 2.35482 / 299792.458 * nm * g.dispersion(nm)
 		points := 60 + int(60*width)
@@ -165,7 +165,7 @@ func TestVoxelsAreCellIntegrals(t *testing.T) {
 		for _, spot := range spots(o) {
 			u, w, nm := int(spot[0]), int(spot[1]), spot[2]
 			column, row, _ := o.field.mirror(u, w)
-			e := []emitter{{image: oneMirror{column, row}, lines: []emission{{nm: nm, photons: 1000}}}}
+			e := []emitter{{image: oneMirror{float64(column), float64(row)}, lines: []emission{{nm: nm, photons: 1000}}}}
 			s, light := collected(o, e, func(float64) float64 { return 1 }, u, u)
 			got := v.draw(s, light, o.geometry.across(float64(u)))
 			x0, y0 := landing(o.geometry, u, w, nm)

@@ -69,6 +69,17 @@ func (f *field) device(u, w float64) (column, row float64) {
 	return u, w
 }
 
+// mirrorsAlong is how many of the device's columns and rows an arc second towards a
+// direction on the sky is.
+func (f *field) mirrorsAlong(east, north float64) (columns, rows float64) {
+	u, w := f.along(east, north)
+	u, w = u/f.arcsecPerU, w/f.arcsecPerU
+	if f.diagonal {
+		return (u - w) / 2, (u + w) / 2
+	}
+	return u, w
+}
+
 // skyOf is the place on the sky of the centre of mirror (u, w).
 func (f *field) skyOf(u, w int) (east, north float64) {
 	return f.sky((float64(u)-f.uMiddle)*f.arcsecPerU, (float64(w)-f.wMiddle)*f.arcsecPerU)

@@ -9,11 +9,14 @@ import (
 
 // drawn is the light of a strip: either the rows of every beam of every source,
 // for each row of the strip, or, where each frame is drawn anew, the sums of
-// each step.
+// each step. Where only sources are drawn anew for each step, the rows are the sky's
+// alone and objects has the sources.
 type drawn struct {
 	y0, y1 int
 	rows   [][]rowsOf[float32] // [source][y - y0]
 	sums   [][]float32         // [step][(y - y0) columns + x], electrons per second
+	// objects is as sums; nil for a step without.
+	objects [][]float32
 	// signal and sky are the truth's voxels, [voxel][y - y0][element].
 	signal, sky []float32
 }
@@ -72,6 +75,11 @@ func (r *rehearsal) illuminate(ctx context.Context, y0, y1 int) (*drawn, error) 
 		}
 		d.rows = append(d.rows, rows)
 	}
+	if r.air != nil {
+		if err := r.drawObjects(ctx, s, d, painters); err != nil {
+			return nil, err
+		}
+	}
 	return d, nil
 }
 
@@ -92,11 +100,15 @@ func (r *rehearsal) paintSource(ctx context.Context, s *strip, at int, d *drawn,
 		}
 		p := painters[worker]
 		r.gather(p, s, &r.sources[at], b)
-		if d.signal != nil && r.sources[at].sky && b < r.beams.n {
+		if d.signal != nil && at == skySource && b < r.beams.n {
 			r.paintVoxels(p, s, b, d)
 		}
-		for k := range p.objects {
-			p.objects[k].add(&p.sky[k])
+		if r.sources[at].sky && r.air != nil {
+			p.objects, p.sky = p.sky, p.objects // each step draws its sources itself
+		} else {
+			for k := range p.objects {
+				p.objects[k].add(&p.sky[k])
+			}
 		}
 		r.dim(p.objects, s, b)
 		for layer := range layers {

@@ -5,13 +5,15 @@ import "math"
 // image is how an emitter's light, 1 in all, falls on the mirrors; column and
 // row are the device's.
 type image interface {
-	fraction(column, row int) float64
+	// fraction is the part that falls on the square of a mirror, whole numbers where a
+	// mirror is.
+	fraction(column, row float64) float64
 }
 
 // uniformImage gives every mirror the same.
 type uniformImage float64
 
-func (u uniformImage) fraction(int, int) float64 { return float64(u) }
+func (u uniformImage) fraction(float64, float64) float64 { return float64(u) }
 
 // gaussianImage is a round Gaussian (a star or a Gaussian source behind the
 // seeing): a mirror's share is the product of two differences of error
@@ -20,8 +22,8 @@ type gaussianImage struct {
 	column, row, sigma float64
 }
 
-func (g gaussianImage) fraction(column, row int) float64 {
-	dc, dr := float64(column)-g.column, float64(row)-g.row
+func (g gaussianImage) fraction(column, row float64) float64 {
+	dc, dr := column-g.column, row-g.row
 	reach := 0.5 + 9*g.sigma // beyond lies less than 1e-18
 	if math.Abs(dc) > reach || math.Abs(dr) > reach {
 		return 0
@@ -40,9 +42,9 @@ type radialImage struct {
 	step       float64
 }
 
-func (r *radialImage) fraction(column, row int) float64 {
+func (r *radialImage) fraction(column, row float64) float64 {
 	const node, side, middle = 0.3872983346207417, 5.0 / 18, 8.0 / 18 // Gauss-Legendre on -1/2..1/2
-	dc, dr := float64(column)-r.column, float64(row)-r.row
+	dc, dr := column-r.column, row-r.row
 	reach := float64(len(r.brightness)-3)*r.step - 1
 	if dc*dc+dr*dr > reach*reach {
 		return 0

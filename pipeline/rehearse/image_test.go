@@ -82,7 +82,7 @@ func TestFractionsSumToOne(t *testing.T) {
 			sum, column, row := 0.0, 0.0, 0.0
 			for c := range f.columns {
 				for r := range f.rows {
-					p := im.fraction(c, r)
+					p := im.fraction(float64(c), float64(r))
 					sum += p
 					column += p * float64(c)
 					row += p * float64(r)

@@ -17,6 +17,8 @@ type emitter struct {
 	lines []emission
 	// motion shifts the lines; nil where they stand as observed.
 	motion *motion
+	// sight is the air before it; nil for none.
+	sight *sightline
 }
 
 // emission is a line.
@@ -44,6 +46,8 @@ type light struct {
 	allSky []emitter
 	// efficiency turns photons per m^2 into detected electrons, by vacuum nm.
 	efficiency func(nm float64) float64
+	// view is that of the objects.
+	view viewing
 }
 
 // skyEfficiency is the collecting area, m^2, times what of the photons becomes
@@ -57,16 +61,27 @@ func skyEfficiency(p *instrument.Profile) func(nm float64) float64 {
 // field, arc seconds along u and w.
 type viewing struct {
 	seeing, du, dw float64
+	// sight is the air; nil for none.
+	sight *sightline
+}
+
+// sameImage tells whether sources fall on the same mirrors, air aside.
+func (v viewing) sameImage(w viewing) bool {
+	return v.seeing == w.seeing && v.du == w.du && v.dw == w.dw
 }
 
 // viewed is the sky's light as another step sees it: sources fall on other
-// mirrors, their spectra are the same.
+// mirrors and through other air, their spectra above it are the same.
 func (o *optics) viewed(l *light, s *Scene, v viewing) *light {
 	other := *l
 	other.objects = make([]emitter, len(l.objects))
 	for i := range l.objects {
 		source := &s.Sources[i]
 		other.objects[i] = l.objects[i]
+		other.objects[i].sight = v.sight
+		if v.sameImage(l.view) {
+			continue
+		}
 		other.objects[i].image = o.field.imageOf(source, v.seeing, v.du, v.dw)
 		other.objects[i].motion = o.newMotion(source, v)
 	}
@@ -75,7 +90,7 @@ func (o *optics) viewed(l *light, s *Scene, v viewing) *light {
 
 // newSkyLight builds the scene's light through a geometry.
 func (o *optics) newSkyLight(s *Scene, v viewing) *light {
-	l := &light{efficiency: skyEfficiency(o.profile)}
+	l := &light{efficiency: skyEfficiency(o.profile), view: v}
 	for i := range s.Sources {
 		l.objects = append(l.objects, o.newObject(s, &s.Sources[i], v, l.efficiency))
 	}
@@ -96,7 +111,7 @@ func (o *optics) newSkyLight(s *Scene, v viewing) *light {
 }
 
 func (o *optics) newObject(s *Scene, source *Source, v viewing, efficiency func(float64) float64) emitter {
-	e := emitter{image: o.field.imageOf(source, v.seeing, v.du, v.dw)}
+	e := emitter{image: o.field.imageOf(source, v.seeing, v.du, v.dw), sight: v.sight}
 	if source.ABMag != nil {
 		e.band = o.newBand(s.photons(source), efficiency)
 	}

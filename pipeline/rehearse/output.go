@@ -15,6 +15,7 @@ import (
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/sequence"
 )
 
 // openOutputs creates the scratch file and lays out truth.fits.
@@ -101,7 +102,18 @@ func (r *rehearsal) writeTexts() error {
 		return err
 	}
 	texts := map[string][]byte{GeometryFile: geometry, SceneFile: scene, FaultsFile: faults}
+	if r.air != nil {
+		if texts[AirFile], err = r.airJSON(); err != nil {
+			return err
+		}
+	}
+	if len(r.seq.StepsOf(sequence.RefStar)) > 0 {
+		texts[StarFile] = r.starTable()
+	}
 	for name, data := range r.scene.Files() {
+		if _, taken := texts[name]; taken {
+			return fmt.Errorf("scene: its file %s has a name of the truth's own; give it another", name)
+		}
 		texts[name] = data
 	}
 	for name, data := range texts {
@@ -186,20 +198,24 @@ func (r *rehearsal) frameHeader(k int, start time.Time) (*fitsutil.Header, error
 	if !ok {
 		return nil, fmt.Errorf("frame header: the profile has no word for the kind %s", st.Kind)
 	}
+	ra, dec := r.pointing(k)
+	object, place := t.Name, "field's centre"
+	if st.Kind == sequence.RefStar {
+		object, place = t.Calibration.RefStar.Name, "reference star"
+	}
 	cards := []fitsutil.Card{
 		{Key: key.Instrume, Value: p.Name, Comment: "instrument profile"},
-		{Key: "OBJECT", Value: t.Name, Comment: "target"},
+		{Key: "OBJECT", Value: object, Comment: "target"},
 		{Key: key.Step, Value: label.Step, Comment: "step of the sequence"},
 		{Key: key.MaskID, Value: label.MaskID, Comment: "digest of the mask"},
 		{Key: key.Kind, Value: kind, Comment: "kind of the step"},
 		{Key: key.Exptime, Value: st.ExptimeSeconds, Comment: "exposure time, s"},
 		{Key: key.DateObs, Value: start.UTC().Format("2006-01-02T15:04:05.000"), Comment: "start of the exposure, UTC"},
-		{Key: key.RA, Value: t.RADeg, Comment: "right ascension of the field's centre, deg"},
-		{Key: key.Dec, Value: t.DecDeg, Comment: "declination of the field's centre, deg"},
+		{Key: key.RA, Value: ra, Comment: "right ascension of the " + place + ", deg"},
+		{Key: key.Dec, Value: dec, Comment: "declination of the " + place + ", deg"},
 		{Key: key.RotAng, Value: t.RotangDeg, Comment: "position angle of the detector's rows, deg"},
 	}
-	middle := start.Add(time.Duration(st.ExptimeSeconds / 2 * float64(time.Second)))
-	if x := physics.TargetAirmass(t.RADeg, t.DecDeg, middle, p.Site.LatitudeDeg, p.Site.LongitudeEastDeg); !math.IsNaN(x) {
+	if x := physics.TargetAirmass(ra, dec, middleOf(st, start), p.Site.LatitudeDeg, p.Site.LongitudeEastDeg); !math.IsNaN(x) {
 		cards = append(cards, fitsutil.Card{Key: key.Airmass, Value: x, Comment: "of the middle of the exposure"})
 	}
 	if st.Lamp != "" {

@@ -22,12 +22,16 @@ func (r *rehearsal) redraw(ctx context.Context, s *strip, d *drawn, painters []*
 
 // prepareViews works out how each step sees the sources.
 func (r *rehearsal) prepareViews(ctx context.Context) error {
-	if !r.redraws {
+	if !r.redraws && r.air == nil {
 		return nil
 	}
 	return parallel.Do(ctx, r.opts.Workers, len(r.steps), func(_, k int) error {
-		if step := &r.steps[k]; step.source == 0 {
-			step.light = r.optics.viewed(r.sources[0].light, r.scene, step.view)
+		step := &r.steps[k]
+		if step.source < 0 {
+			return nil
+		}
+		if from := &r.sources[step.source]; from.sky {
+			step.light = r.optics.viewed(from.light, from.scene, step.view)
 		}
 		return nil
 	})
@@ -53,7 +57,7 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 		}
 		p := painters[worker]
 		r.gather(p, s, from, b)
-		if d.signal != nil && from.sky && b < r.beams.n {
+		if d.signal != nil && at == skySource && b < r.beams.n {
 			r.paintVoxels(p, s, b, d)
 		}
 		r.fill(p, &c.objects, p.objects, nil, s, from, b)
@@ -70,7 +74,7 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 			continue
 		}
 		f := &r.fates[k]
-		if from.sky && (fresh || f.seeing != 1 || f.guideU != 0 || f.guideW != 0) {
+		if from.sky && (fresh || r.air != nil || f.seeing != 1 || f.guideU != 0 || f.guideW != 0) {
 			if err := r.refill(ctx, c, s, from, step.light, painters); err != nil {
 				return err
 			}

@@ -3,6 +3,7 @@ package rehearse
 import (
 	"errors"
 	"fmt"
+	"math"
 	"os"
 	"slices"
 	"sync"
@@ -24,6 +25,8 @@ type rehearsal struct {
 	steps    []stepPlan
 	sources  []source
 	maps     *efficiencyMap // nil for a perfect instrument
+	air      *air           // nil without an atmosphere
+	sights   []*sightline   // by step; nil where a step does not look at the sky
 	colour   *weights       // of layerColour; nil without that fault
 	beside   *weights       // of layerNeighbour; nil without that fault
 	leakSize float64
@@ -48,6 +51,8 @@ type source struct {
 	light *light
 	scale float64
 	sky   bool
+	// scene is what a light of the sky was made from.
+	scene *Scene
 	// used marks the beams that some step opens, all where mirrors leak.
 	used []bool
 }
@@ -61,7 +66,7 @@ type stepPlan struct {
 	factor float64
 	// view is how the step sees the sky.
 	view viewing
-	// light is the sky's in that view, where frames are drawn one by one.
+	// light is the sky's in that view, where sources or frames are drawn one by one.
 	light *light
 }
 
@@ -72,8 +77,8 @@ func newRehearsal(seq *sequence.Sequence, scene *Scene, opts Options) (*rehearsa
 	if slices.ContainsFunc(seq.Steps, func(s sequence.Step) bool { return s.MaskID == "" }) {
 		return nil, errors.New("the sequence's masks have no names; write it first, or read it")
 	}
-	if scene.Atmosphere != nil || len(seq.StepsOf(sequence.RefStar)) > 0 {
-		return nil, errors.New("atmosphere and reference stars are not drawn by this version; leave them out of scene and target")
+	if len(seq.StepsOf(sequence.RefStar)) > 0 && scene.RefStar == nil {
+		return nil, errors.New("the sequence has refstar steps and the scene has no star for them; add refstar to the scene")
 	}
 	g := nominalGeometry(seq)
 	if !opts.Perfect {
@@ -118,16 +123,26 @@ func (r *rehearsal) prepareFaults() {
 	r.redraws = size(Seeing) > 0 || size(Guide) > 0 || size(Shift) > 0
 }
 
-// view is how a step with a fate sees the sky.
-func (r *rehearsal) view(f *fate) viewing {
+// view is how a step with a fate sees a scene.
+func (r *rehearsal) view(s *Scene, f *fate, sight *sightline) viewing {
 	element := float64(r.seq.ElementMirrors()) * r.optics.field.arcsecPerU
-	return viewing{seeing: r.scene.SeeingFWHMArcsec * f.seeing, du: f.guideU * element, dw: f.guideW * element}
+	return viewing{sight: sight, seeing: s.SeeingFWHMArcsec * f.seeing, du: f.guideU * element, dw: f.guideW * element}
 }
 
 func (r *rehearsal) prepareSources() error {
 	clear := fate{seeing: 1}
-	sky := r.optics.newSkyLight(r.scene, r.view(&clear))
-	r.sources = []source{{light: sky, scale: 1, sky: true}}
+	var mean *sightline
+	if r.air = r.optics.newAir(r.scene); r.air != nil {
+		var err error
+		if r.sights, mean, err = r.sightlines(); err != nil {
+			return err
+		}
+	}
+	addSky := func(s *Scene, sight *sightline) {
+		light := r.optics.newSkyLight(s, r.view(s, &clear, sight))
+		r.sources = append(r.sources, source{light: light, scale: 1, sky: true, scene: s})
+	}
+	addSky(r.scene, mean)
 	keys, steps := lampSteps(r.seq)
 	for _, key := range keys {
 		lamp, err := r.optics.newLampLight(key.lamp, r.opts.Seed, r.opts.Perfect)
@@ -139,10 +154,33 @@ func (r *rehearsal) prepareSources() error {
 			return fmt.Errorf("lamp %q gives no light on the detector in its %s frames; choose another lamp", key.lamp, key.kind)
 		}
 	}
+	if len(r.seq.StepsOf(sequence.RefStar)) > 0 {
+		addSky(r.scene.starScene(r.wideElement()), nil)
+	}
 	for i := range r.sources {
 		r.sources[i].used = make([]bool, len(r.beams.list))
 	}
 	return nil
+}
+
+// skySource is the index of the light that the truth speaks of.
+const skySource = 0
+
+// wideElement is where the middle of the refstar steps' wide element lies, arc seconds
+// east and north of the field's centre.
+func (r *rehearsal) wideElement() (east, north float64) {
+	f, strips := r.optics.field, r.beams.strips
+	open := r.seq.Target.Calibration.RefStar.Elements
+	middle := float64(strips[open[0]].First+strips[open[1]].Last) / 2
+	return f.sky((middle-f.uMiddle)*f.arcsecPerU, 0)
+}
+
+// sight is the air of a step; nil for none.
+func (r *rehearsal) sight(step int) *sightline {
+	if r.sights == nil {
+		return nil
+	}
+	return r.sights[step]
 }
 
 func (r *rehearsal) planSteps() error {
@@ -157,15 +195,17 @@ func (r *rehearsal) planSteps() error {
 			continue
 		case sequence.Flat, sequence.Arc:
 			p.source = 1 + slices.Index(keys, lampKey{st.Kind, st.Lamp})
+		case sequence.RefStar:
+			p.source = len(r.sources) - 1
 		default:
-			p.source = 0
+			p.source = skySource
 		}
 		p.mixture = r.beams.newMixture(r.beams.open(r.seq, f.shown), r.leakSize > 0, r.beside != nil)
 		p.factor = st.ExptimeSeconds * r.sources[p.source].scale
-		if p.source == 0 {
+		if from := &r.sources[p.source]; from.sky {
 			p.factor *= f.throughput
 			p.mixture.colour, p.mixture.lines = f.colour, f.skyLines-1
-			p.view = r.view(f)
+			p.view = r.view(from.scene, f, r.sight(i))
 		}
 		for _, b := range slices.Concat(p.mixture.open, p.mixture.shut) {
 			r.sources[p.source].used[b] = true
@@ -173,10 +213,25 @@ func (r *rehearsal) planSteps() error {
 	}
 	if !r.opts.NoTruth {
 		for j := range r.beams.n {
-			r.sources[0].used[j] = true
+			r.sources[skySource].used[j] = true
 		}
 	}
+	if r.air != nil && r.air.refracts {
+		r.placeNodes()
+	}
 	return nil
+}
+
+// placeNodes lays out the nodes of images for the sharpest of the steps and the one
+// that refraction moves most.
+func (r *rehearsal) placeNodes() {
+	seeing, tanZ := math.Inf(1), 0.0
+	for _, step := range r.steps {
+		if step.view.sight != nil {
+			seeing, tanZ = min(seeing, step.view.seeing), max(tanZ, step.view.sight.tanZ)
+		}
+	}
+	r.air.placeNodes(seeing, tanZ)
 }
 
 // advance tells that more units of work are done.

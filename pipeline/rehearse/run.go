@@ -31,6 +31,8 @@ const (
 	FaultsFile   = "faults.json"
 	GeometryFile = "geometry.yaml"
 	SceneFile    = "scene.yaml"
+	AirFile      = "atmosphere.json"  // with an atmosphere alone
+	StarFile     = "refstar_flux.csv" // with refstar steps alone
 	scratchFile  = ".frames.scratch"
 )
 

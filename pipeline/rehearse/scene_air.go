@@ -1,6 +1,7 @@
 package rehearse
 
 import (
+	"mirrorloom/calib/physics"
 	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
 )
@@ -23,6 +24,11 @@ type Atmosphere struct {
 	// Refraction moves each wavelength by its refraction less that of GuideNM,
 	// towards the zenith. Optional; false.
 	Refraction bool `yaml:"refraction" config:"optional"`
+}
+
+// over is the air of the night: what the scene says, and the site's for the rest.
+func (a *Atmosphere) over(site instrument.Site) physics.Atmosphere {
+	return instrument.WithAir(site.Atmosphere(), a.PressureHPa, a.TemperatureC, a.WaterHPa)
 }
 
 func (a *Atmosphere) check(c *config.Checks) {
@@ -63,6 +69,19 @@ func (r *RefStar) check(c *config.Checks) {
 		c.Positive("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec)
 		c.Within("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec, 0, maxArcsec)
 	}
+}
+
+// starScene is what refstar steps see: the star in the middle of its wide element, which
+// lies dEast and dNorth arc seconds from the field's centre, and the scene's sky.
+func (s *Scene) starScene(dEast, dNorth float64) *Scene {
+	star := s.RefStar.source()
+	star.EastArcsec += dEast
+	star.NorthArcsec += dNorth
+	t := &Scene{SeeingFWHMArcsec: s.SeeingFWHMArcsec, Sources: []Source{star}, Sky: s.Sky, Atmosphere: s.Atmosphere, spectra: s.spectra}
+	if s.RefStar.SeeingFWHMArcsec != nil {
+		t.SeeingFWHMArcsec = *s.RefStar.SeeingFWHMArcsec
+	}
+	return t
 }
 
 // leastRefractedNM is the least wavelength at which air bends light by the formula in

@@ -1,12 +1,15 @@
 package rehearse
 
 import (
+	"context"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
 
 	"github.com/stretchr/testify/require"
+
+	"mirrorloom/pipeline/instrument"
 )
 
 const airScene = plainScene + `atmosphere:
@@ -72,4 +75,9 @@ func TestRefStarSpectrum(t *testing.T) {
 	require.NoError(t, err)
 	require.Contains(t, s.Files(), "star.csv")
 	require.NoError(t, s.validated())
+
+	// A file that would replace one of the truth's is refused.
+	s.files[StarFile] = s.files["star.csv"]
+	_, err = Run(context.Background(), planned(t, airProfile(t, instrument.Square, 1), airTarget()), s, noiseless, t.TempDir(), nil)
+	require.EqualError(t, err, "scene: its file refstar_flux.csv has a name of the truth's own; give it another")
 }

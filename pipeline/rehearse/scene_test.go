@@ -32,7 +32,7 @@ sky:
 func parsePlain(text string) (*Scene, error) { return ParseScene("scene.yaml", []byte(text), nil) }
 
 func TestEmbeddedScenes(t *testing.T) {
-	require.Equal(t, []string{"demo-infrared", "demo"}, SceneNames())
+	require.Equal(t, []string{"demo-infrared", "demo-visible", "demo"}, SceneNames())
 	for _, name := range SceneNames() {
 		s, err := LoadScene(name)
 		require.NoError(t, err)
@@ -44,6 +44,12 @@ func TestEmbeddedScenes(t *testing.T) {
 		kinds := map[string]int{}
 		for _, source := range s.Sources {
 			kinds[source.Kind]++
+		}
+		if name == "demo-visible" {
+			require.Equal(t, map[string]int{KindStar: 3}, kinds, name)
+			require.NotNil(t, s.RefStar)
+			require.True(t, s.Atmosphere.Refraction)
+			continue
 		}
 		require.Equal(t, map[string]int{KindRing: 1, KindStar: 5, KindGalaxy: 1}, kinds, name)
 	}

@@ -46,6 +46,9 @@ func (r *rehearsal) stripHeight() int {
 		}
 	}
 	perRow += drawnRows * int64(r.optics.columns) * 4
+	if r.air != nil { // the sources in each step
+		perRow += int64(len(r.steps)) * int64(r.optics.columns) * 4
+	}
 	if r.truth != nil {
 		perRow += 8 * int64(r.optics.profile.Grid.Count) * int64(r.beams.n)
 	}
@@ -179,6 +182,11 @@ func (s *stepReader) expect(k, y int, light *drawn, response, leaks []float64) {
 		}
 	default:
 		mix(s.mean, step.mixture, &light.rows[step.source][y-light.y0], leaks)
+		if light.objects != nil && light.objects[k] != nil {
+			for x, e := range light.objects[k][(y-light.y0)*r.optics.columns:][:len(s.mean)] {
+				s.mean[x] += float64(e)
+			}
+		}
 	}
 	for x := range s.mean {
 		s.mean[x] *= step.factor * response[x]

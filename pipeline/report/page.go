@@ -43,6 +43,7 @@ type page struct {
 	ErrorScale       template.HTML
 	Throughput       template.HTML
 	ThroughputFacts  []fact
+	OnSky            []fact
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
@@ -66,6 +67,7 @@ func newPage(in Input) *page {
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
 		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: append(calibrationFacts(in.Run.Calibration), starFacts(in.Run.Stars)...),
+		OnSky:    skyFacts(in.Run.Sky),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")

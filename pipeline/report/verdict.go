@@ -46,6 +46,7 @@ func judge(in Input, what string) verdict {
 	if in.Run.Combined != nil {
 		v.Trust = combinedSentences(in)
 	}
+	v.Trust = append(v.Trust, onSkySentences(in.Run)...)
 	for _, w := range in.Degraded {
 		v.Look = append(v.Look, sentence(w))
 	}
