@@ -18,7 +18,8 @@
 // grid on the detector.
 //
 // The night runs bias, dark, lamp flats (all on, even, odd, all off; then coded
-// cycles), arcs of single elements, then science with its all-off frames.
+// cycles), arcs of single elements, science with its all-off frames, then the
+// reference star.
 // Coded steps are in a random order drawn from code.seed unless code.order is
 // natural. The same target and profile give the same sequence.
 package plan

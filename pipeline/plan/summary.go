@@ -135,7 +135,7 @@ func (r *Summary) countTime(s *sequence.Sequence) {
 		if len(steps) == 0 {
 			continue
 		}
-		seconds := float64(len(steps)) * s.Profile.Detector.ReadS
+		seconds := float64(len(steps)) * s.Profile.OverheadS()
 		for _, i := range steps {
 			seconds += s.Steps[i].ExptimeSeconds
 		}

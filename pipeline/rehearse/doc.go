@@ -11,6 +11,8 @@
 //     fraction), its continuum and its lines;
 //   - beam: mirrors that always switch together: one element's in the coded rows,
 //     one element's in one range of sentinel rows;
+//   - air: what an atmosphere does to the sources, dimmed and moved anew in every
+//     step; the sky's own light is that seen from the ground;
 //   - fault: something that goes wrong in the night on request (see Fault).
 //
 // # Model

@@ -73,7 +73,7 @@ func TestRefStarRefusals(t *testing.T) {
 
 // What STEPS and CODE say of a refstar step must be what the target asks for.
 func TestRefStarContradictions(t *testing.T) {
-	target, profile := small(t, instrument.Diagonal)
+	_, profile := small(t, instrument.Diagonal)
 	target, err := sequence.ParseTarget("small.yaml", []byte(smallTarget+starKeys))
 	require.NoError(t, err)
 	whole := build(t, target, profile)
