@@ -29,6 +29,8 @@ type Run struct {
 	Stars *Stars `json:"stars,omitempty"`
 	// Sky is what was subtracted of the sky; nil if nothing was.
 	Sky *SkyReport `json:"sky,omitempty"`
+	// Flux is what the reference star told; nil for a cube in counts.
+	Flux *FluxReport `json:"flux,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.

@@ -230,7 +230,7 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	r.heedAudit()
-	return 0, nil
+	return 0, r.checkFlux()
 }
 
 // heedAudit says what the audit found.
@@ -422,7 +422,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.through.quality(&r.quality)
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(),
+		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	run.Stars = r.stars.report
