@@ -21,7 +21,7 @@ type Summary struct {
 	// ReadNoiseGain is the gain in S/N over a slit scan of the same field in the
 	// same time where the detector's noise is all; PhotonThreshold how many
 	// times brighter than the mean an element must be to gain where photon noise
-	// is all. Both are 0 for a slit scan.
+	// is all, 0 where none does. Both are 0 for a slit scan.
 	ReadNoiseGain   float64 `json:"read_noise_gain"`
 	PhotonThreshold float64 `json:"photon_threshold"`
 	// Kinds lists the steps by kind, without the kinds that do not occur.
@@ -99,6 +99,10 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	if code.Family() != hadamard.SlitScan {
 		d := code.Design()
 		r.ReadNoiseGain, r.PhotonThreshold = d.ReadNoiseGainDark(s.N()), d.PhotonThreshold(s.N())
+		if math.IsInf(r.PhotonThreshold, 1) {
+			r.PhotonThreshold = 0
+		}
+		r.judgeDark(dark.Correlation)
 	}
 	r.countTime(s)
 	r.Airmass = airmass(s)
@@ -110,6 +114,16 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	r.addRefStar(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
 	return r
+}
+
+// judgeDark says where some steps leave the same mark on dark columns that are enough
+// otherwise: steps of a sparse code that open none of them.
+func (r *Summary) judgeDark(correlation float64) {
+	const same = 1 - 1e-9
+	if g := len(r.Code.DarkColumns); correlation > same && float64(g) >= 2*math.Log2(float64(r.Code.V)) {
+		r.warn("the %d dark columns leave the same mark for some steps, whose frames can be neither told apart nor restored when lost: a step opens %.1f of them in the mean; give code.dark %d or more",
+			g, float64(g*r.Code.K)/float64(r.Code.V), (5*r.Code.V+r.Code.K-1)/r.Code.K)
+	}
 }
 
 // addRefStar says what becomes of the reference star.
@@ -170,7 +184,11 @@ func (r *Summary) String() string {
 	}
 	if r.ReadNoiseGain > 0 {
 		fmt.Fprintf(&b, "gain     over a slit scan in equal time: %.2f where read noise rules;\n", r.ReadNoiseGain)
-		fmt.Fprintf(&b, "         where photon noise rules only elements above %.2f times the mean gain\n", r.PhotonThreshold)
+		if r.PhotonThreshold > 0 {
+			fmt.Fprintf(&b, "         where photon noise rules only elements above %.2f times the mean gain\n", r.PhotonThreshold)
+		} else {
+			fmt.Fprintf(&b, "         where photon noise rules no element gains\n")
+		}
 	}
 	fmt.Fprintf(&b, "\n%-8s %6s %9s\n", "kind", "steps", "minutes")
 	for _, k := range r.Kinds {
