@@ -98,7 +98,11 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if len(s.Steps) > maxSteps {
 		return nil, nil, refuse("code.cycles", "the target asks for %d exposures where a sequence has at most %d; ask for fewer cycles or calibration frames", len(s.Steps), maxSteps)
 	}
-	return s, summarize(s, code, dark, o), nil
+	summary := summarize(s, code, dark, o)
+	if err := summary.addForecast(ctx, s); err != nil {
+		return nil, nil, err
+	}
+	return s, summary, nil
 }
 
 // maxSteps bounds the memory of a plan: its code bits are maxSteps * v bytes.

@@ -8,6 +8,7 @@ import (
 	"time"
 
 	"mirrorloom/hadamard"
+	"mirrorloom/pipeline/forecast"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -40,6 +41,9 @@ type Summary struct {
 	// Pointing is where the telescope is to be sent, so that the field lies where the
 	// target says; nil without a registration.
 	Pointing *PointingTo `json:"pointing,omitempty"`
+	// Forecast is what the plan will give; nil where the target does not say what to
+	// expect.
+	Forecast *forecast.Result `json:"forecast,omitempty"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -195,6 +199,7 @@ func (r *Summary) String() string {
 		fmt.Fprintf(&b, "%-8s %6d %9.1f\n", k.Kind, k.Steps, k.Minutes)
 	}
 	fmt.Fprintf(&b, "%-8s %6d %9.1f\n\n", "all", r.Steps, r.Minutes)
+	b.WriteString(r.forecastText())
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
 	if r.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
