@@ -17,6 +17,9 @@ import (
 // ErrGrid marks a cube whose world coordinates are not as reduce writes them.
 var ErrGrid = errors.New("extract cannot place its voxels on the detector")
 
+// ErrCombined marks a cube of several runs, which does not carry the errors of sums.
+var ErrCombined = errors.New("its voxels' own errors are in VARIANCE, but what they share is not carried by a combined cube, so that sums would have wrong errors; extract from each run and take the mean, weighted by the errors that come out")
+
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
 type Cube struct {
@@ -41,6 +44,7 @@ type Cube struct {
 	weight                     []float64 // 1/frames of each code row
 	sumWeight                  float64
 	shift                      *calib.RowShift
+	field                      *calib.ShiftField // nil where light is taken from its own place
 	resampler                  *calib.Resampler
 	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
 }
@@ -112,6 +116,12 @@ func (c *Cube) read() (err error) {
 	if err := c.readGrid(); err != nil {
 		return err
 	}
+	if made, err := product.ReadMembers(c.file); err != nil || made != nil {
+		if err == nil {
+			err = fmt.Errorf("%s is made of %d runs: %w", c.Path(), len(made), ErrCombined)
+		}
+		return err
+	}
 	if c.noise, err = product.ReadNoise(c.file); err != nil {
 		return err
 	}
@@ -142,11 +152,6 @@ func (c *Cube) readGrid() error {
 		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
 	c.Grid, c.Frame = s.Grid, s.Frame
-	for _, u := range c.file.HDUs() {
-		if u.Name == product.Shift {
-			return fmt.Errorf("%s: the place of its light depends on the wavelength (table %s), which errors of sums do not know yet: %w", c.Path(), product.Shift, ErrGrid)
-		}
-	}
 	axis := c.axis()
 	c.edges, c.centres = c.edgesOf(0, axis.Grid.Count), calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), 0, axis.Grid.Count)
 	return nil
@@ -239,6 +244,9 @@ func (c *Cube) readGeometry() error {
 	}
 	var err error
 	if c.shift, err = calib.NewRowShift(shift, c.Rows); err != nil {
+		return err
+	}
+	if err := c.readShift(shift); err != nil {
 		return err
 	}
 	c.resampler, err = calib.NewResampler(0, c.noise.Columns-1)

@@ -52,6 +52,9 @@ func (p *Profile) checkDMD(c *config.Checks) {
 	c.OneOf("dmd.mounting", d.Mounting, Square, Diagonal)
 	c.That(d.TiltDeg > 0 && d.TiltDeg < 45, "dmd.tilt_deg", "%v is not between 0 and 45; give the mirrors' tilt from flat", d.TiltDeg)
 	c.Positive("dmd.arcsec_per_mirror", d.ArcsecPerMirror)
+	if d.LoadS != nil {
+		c.NotNegative("dmd.load_s", *d.LoadS)
+	}
 	c.That(d.Parity == 1 || d.Parity == -1, "dmd.parity", "%d is no parity; write 1 or -1", d.Parity)
 	d.Contrast.check(c, "dmd.contrast")
 	c.That(d.StuckCSV == "" || config.BareName(d.StuckCSV), "dmd.stuck_csv", "%q is no bare file name; put the file beside the profile and name it without a folder", d.StuckCSV)

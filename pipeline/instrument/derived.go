@@ -70,3 +70,12 @@ func (p *Profile) CollectingAreaM2() float64 {
 func (p *Profile) Throughput(wavelengthNM float64) float64 {
 	return p.Telescope.Throughput.At(wavelengthNM) * p.Spectrograph.Throughput.At(wavelengthNM)
 }
+
+// OverheadS is the time between the end of an exposure and the start of the next, seconds:
+// the detector is read and the next mask loaded.
+func (p *Profile) OverheadS() float64 {
+	if p.DMD.LoadS == nil {
+		return p.Detector.ReadS
+	}
+	return p.Detector.ReadS + *p.DMD.LoadS
+}

@@ -58,6 +58,9 @@ type DMD struct {
 	// StuckCSV names a CSV file beside the profile with the mirrors that do not
 	// move (see StuckMirror). Optional; empty when all move.
 	StuckCSV string `yaml:"stuck_csv" config:"optional"`
+	// LoadS is the time that loading a mask takes before each exposure, seconds,
+	// beyond what passes while the detector is read. Optional; nil for 0.
+	LoadS *float64 `yaml:"load_s" config:"optional"`
 }
 
 // SetDefaults gives the optional keys their defaults.

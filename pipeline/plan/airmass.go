@@ -44,7 +44,7 @@ func airmassOf(s *sequence.Sequence, kind sequence.Kind, raDeg, decDeg float64) 
 			last = look()
 			most = max(most, last)
 		}
-		at = at.Add(time.Duration(s.Profile.Detector.ReadS * float64(time.Second)))
+		at = at.Add(time.Duration(s.Profile.OverheadS() * float64(time.Second)))
 	}
 	return [3]float64{finite(first), finite(last), finite(most)}
 }

@@ -94,7 +94,7 @@ func (r *reduction) plannedTimes() []float64 {
 	at, all := 0.0, make([]float64, len(r.seq.Steps))
 	for i, st := range r.seq.Steps {
 		all[i] = at + st.ExptimeSeconds/2
-		at += st.ExptimeSeconds + r.seq.Profile.Detector.ReadS
+		at += st.ExptimeSeconds + r.seq.Profile.OverheadS()
 	}
 	return all
 }

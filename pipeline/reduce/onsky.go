@@ -37,13 +37,18 @@ func (s SkyRecipe) check(c *config.Checks) {
 
 // onSky is what becomes of the cube once it is made in counts.
 type onSky struct {
-	sky  *skyflux.Sky
-	done product.OnSky
+	sky   *skyflux.Sky
+	flux  *skyflux.Flux
+	done  product.OnSky
+	table calib.FluxTable // of the reference star
+	// air is that of the science exposures, or airError why it is not known.
+	air      skyflux.Exposures
+	airError error
 }
 
 // toSky tells whether something does.
 func (r *reduction) toSky() bool {
-	return r.opts.Cube && r.opts.Recipe.Sky.Use != useOff
+	return r.opts.Cube && (r.opts.Recipe.Sky.Use != useOff || r.opts.Recipe.Flux.Use != useOff)
 }
 
 // cubePath is where the cube is made: beside the masters if it is only the beginning.
@@ -54,7 +59,7 @@ func (r *reduction) cubePath() string {
 	return filepath.Join(r.opts.Out, product.CubeFile)
 }
 
-// bringToSky writes the cube anew without the light of the sky. What cannot be found is
+// bringToSky writes the cube anew without the light of the sky, in units of flux. What cannot be found is
 // said, and the cube stays as it is.
 func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 	if err := r.writeResponses(); err != nil {
@@ -73,14 +78,18 @@ func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 		MemoryBytes: r.opts.MemoryBytes - runtimeBytes - r.heldBytes(), Workers: r.opts.Workers,
 		Progress: func(pass string, done, total int) { r.opts.Progress(pass, done, total) },
 	}
+	r.onSky.air, r.onSky.airError = r.scienceAir()
 	if err := r.measureSky(ctx, source, o); err != nil {
+		return 0, err
+	}
+	if err := r.measureFlux(ctx, o); err != nil {
 		return 0, err
 	}
 	primary, err := r.primary()
 	if err != nil {
 		return 0, err
 	}
-	if err := setCards(primary, r.onSky.done.Cards()); err != nil {
+	if err := setCards(primary, append(r.onSky.done.Cards(), r.airCards()...)); err != nil {
 		return 0, err
 	}
 	images, err := r.cubeImages(r.onSky.done)
@@ -90,7 +99,7 @@ func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 	if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary, images); err != nil {
 		return 0, err
 	}
-	voided, good, err := source.Write(ctx, r.cube, r.onSky.sky, nil, o)
+	voided, good, err := source.Write(ctx, r.cube, r.onSky.sky, r.onSky.flux.Factors(), o)
 	if err != nil {
 		return 0, err
 	}
@@ -141,7 +150,12 @@ func (r *reduction) lessGood(voided, good int) {
 // finishOnSky appends the tables of what was done.
 func (r *reduction) finishOnSky() error {
 	if s := r.onSky.done.Sky; s != nil {
-		return r.cube.AppendTable(s.Table())
+		if err := r.cube.AppendTable(s.Table()); err != nil {
+			return err
+		}
+	}
+	if f := r.onSky.done.Flux; f != nil {
+		return r.cube.AppendTable(f.Table())
 	}
 	return nil
 }
@@ -161,6 +175,14 @@ func (r *reduction) skySection() *product.SkyReport {
 		return nil
 	}
 	return &r.onSky.sky.Report
+}
+
+// fluxSection is run.json's; nil without a flux.
+func (r *reduction) fluxSection() *product.FluxReport {
+	if r.onSky.flux == nil {
+		return nil
+	}
+	return &r.onSky.flux.Report
 }
 
 // settings are what run.json says of the recipe.

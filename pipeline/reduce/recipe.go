@@ -33,10 +33,11 @@ type Recipe struct {
 	Flat       StageRecipe    `yaml:"flat" config:"optional"`
 	Arc        StageRecipe    `yaml:"arc" config:"optional"`
 	Sky        SkyRecipe      `yaml:"sky" config:"optional"`
-	Flux       StageRecipe    `yaml:"flux" config:"optional"`
+	Flux       FluxRecipe     `yaml:"flux" config:"optional"`
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
 	Repair     StageRecipe    `yaml:"repair" config:"optional"`
+	Stars      StarsRecipe    `yaml:"stars" config:"optional"`
 
 	// SHA is the lower-case hex SHA-256 of the recipe's text (RECSHA).
 	SHA string `yaml:"-" config:"-"`
@@ -91,10 +92,11 @@ type GridRecipe struct {
 
 // SetDefaults gives every stage its default.
 func (r *Recipe) SetDefaults() {
-	off, auto := StageRecipe{Use: useOff}, StageRecipe{Use: useAuto}
+	auto := StageRecipe{Use: useAuto}
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
-	r.Sky, r.Flux = SkyRecipe{Use: useOff}, off
+	r.Sky, r.Flux = SkyRecipe{Use: useOff}, FluxRecipe{Use: useOff}
 	r.Detector.SetDefaults()
+	r.Stars.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto, Refraction: useOff}
 }
 
@@ -138,21 +140,16 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.Within("detector.clip_sigma", r.Detector.ClipSigma, 2, 100)
 	c.Within("detector.hot_sigma", r.Detector.HotSigma, 4, 1000)
 	c.Within("detector.dead_below", r.Detector.DeadBelow, 0, 1)
-	for _, s := range []struct {
-		key string
-		use string
-	}{
-		{"flux", r.Flux.Use},
-	} {
-		c.That(s.use == useOff, s.key+".use", "%q is not available in this version; use off", s.use)
-	}
 	c.That(r.Throughput.Use == useAuto || r.Throughput.Use == useOff || isTable(r.Throughput.Use), "throughput.use",
 		"%q is unknown; use auto, off, or a monitor's table (.csv or .fits) with the columns step, flux, error", r.Throughput.Use)
 	c.OneOf("repair.use", r.Repair.Use, useAuto, useOff)
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
+	r.Stars.check(c)
+	c.That(r.Stars.Use == useOff || r.Grid.Onto == "", "stars.use", "the cube's place is that of grid.onto, which stars would move again; leave one of them out")
 	r.Sky.check(c)
+	r.Flux.check(c)
 	r.checkGrid(c)
 	return c.Err()
 }

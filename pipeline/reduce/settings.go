@@ -21,7 +21,7 @@ func (r *reduction) settings() map[string]any {
 				"use": recipe.Detector.Use, "clip_sigma": recipe.Detector.ClipSigma,
 				"hot_sigma": recipe.Detector.HotSigma, "dead_below": recipe.Detector.DeadBelow,
 			},
-			"flat": stage(recipe.Flat), "arc": stage(recipe.Arc), "sky": recipe.Sky.settings(), "flux": stage(recipe.Flux),
+			"flat": stage(recipe.Flat), "arc": stage(recipe.Arc), "sky": recipe.Sky.settings(), "flux": recipe.Flux.settings(),
 			"grid": map[string]any{
 				"use": recipe.Grid.Use, "first_nm": r.schema.Grid.FirstNM, "step_nm": r.schema.Grid.StepNM, "count": r.schema.Grid.Count,
 				"axis": r.schema.Grid.Axis.String(), "spacing": r.schema.Grid.Spacing.String(), "frame": frameOf(r.schema.Frame),
@@ -29,6 +29,9 @@ func (r *reduction) settings() map[string]any {
 			},
 			"throughput": stage(recipe.Throughput), "repair": stage(recipe.Repair),
 		},
+	}
+	if s := recipe.Stars; s.Use != useOff {
+		settings["recipe"].(map[string]any)["stars"] = map[string]any{"use": s.Use, "fit": s.Fit, "search_arcsec": s.SearchArcsec}
 	}
 	if len(r.opts.Cycles) > 0 {
 		settings["cycles"] = r.opts.Cycles

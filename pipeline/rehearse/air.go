@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
+	"mirrorloom/pipeline/scene"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -67,7 +68,7 @@ func (o *optics) newAir(s *Scene) *air {
 	if s.Atmosphere.GuideNM != nil {
 		a.guideNM = *s.Atmosphere.GuideNM
 	}
-	a.atmosphere = s.Atmosphere.over(o.profile.Site)
+	a.atmosphere = s.Atmosphere.Over(o.profile.Site)
 	n := o.bandPoints()
 	a.magnitudes, a.bend = make([]float64, n), make([]float64, n)
 	low, high := math.Inf(1), math.Inf(-1)
@@ -99,7 +100,7 @@ const bendMargin = 0.05
 // bendAt is the refraction at a vacuum wavelength where tan z is 1, less that of the
 // guide's, arc seconds.
 func (a *air) bendAt(nm float64) float64 {
-	return a.atmosphere.DifferentialRefraction(max(nm, leastRefractedNM), a.guideNM, 45)
+	return a.atmosphere.DifferentialRefraction(max(nm, scene.LeastRefractedNM), a.guideNM, 45)
 }
 
 // nodesPerSigma is how close nodes lie: the cubic through four of them errs by less

@@ -104,7 +104,7 @@ func (n *night) places() []float64 {
 	at, first, last := 0.0, math.Inf(1), math.Inf(-1)
 	for i, st := range n.seq.Steps {
 		place[i] = at + st.ExptimeSeconds/2
-		at += st.ExptimeSeconds + n.seq.Profile.Detector.ReadS
+		at += st.ExptimeSeconds + n.seq.Profile.OverheadS()
 		if seesSky(st.Kind) {
 			first, last = math.Min(first, place[i]), math.Max(last, place[i])
 		}

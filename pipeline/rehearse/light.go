@@ -113,7 +113,7 @@ func (o *optics) newSkyLight(s *Scene, v viewing) *light {
 func (o *optics) newObject(s *Scene, source *Source, v viewing, efficiency func(float64) float64) emitter {
 	e := emitter{image: o.field.imageOf(source, v.seeing, v.du, v.dw), sight: v.sight}
 	if source.ABMag != nil {
-		e.band = o.newBand(s.photons(source), efficiency)
+		e.band = o.newBand(photons(s, source), efficiency)
 	}
 	for _, line := range source.Lines {
 		// The flux is as observed: the photons are those of the shifted line.
@@ -137,23 +137,6 @@ func (o *optics) newMotion(source *Source, v viewing) *motion {
 		east: source.EastArcsec + east, north: source.NorthArcsec + north,
 		systemic: source.Velocity.SystemicKmS, towardsEast: gradient * sin, towardsNorth: gradient * cos,
 	}
-}
-
-// photons is the source's continuum in photons per s, m^2 and nm, by vacuum nm.
-func (s *Scene) photons(source *Source) func(nm float64) float64 {
-	mag, at := *source.ABMag, source.AtNM
-	scale := func(shape func(nm float64) float64) func(nm float64) float64 {
-		factor := physics.ABPhotons(mag, at) / shape(at)
-		return func(nm float64) float64 { return factor * shape(nm) }
-	}
-	switch {
-	case source.TemperatureK > 0:
-		return scale(func(nm float64) float64 { return physics.PlanckPhotons(nm, source.TemperatureK) })
-	case source.SpectrumCSV != "":
-		table := s.spectra[source.SpectrumCSV]
-		return scale(func(nm float64) float64 { return table.at(nm) * nm })
-	}
-	return func(nm float64) float64 { return physics.ABPhotons(mag, nm) }
 }
 
 // newBand tabulates photons times efficiency over all that mirrors of the

@@ -184,7 +184,7 @@ func (r *rehearsal) starts() ([]time.Time, error) {
 	list := make([]time.Time, len(r.seq.Steps))
 	for i, st := range r.seq.Steps {
 		list[i] = at
-		at = at.Add(time.Duration((st.ExptimeSeconds + r.seq.Profile.Detector.ReadS) * float64(time.Second)))
+		at = at.Add(time.Duration((st.ExptimeSeconds + r.seq.Profile.OverheadS()) * float64(time.Second)))
 	}
 	return list, nil
 }

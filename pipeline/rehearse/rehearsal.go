@@ -155,7 +155,7 @@ func (r *rehearsal) prepareSources() error {
 		}
 	}
 	if len(r.seq.StepsOf(sequence.RefStar)) > 0 {
-		addSky(r.scene.starScene(r.wideElement()), nil)
+		addSky(r.scene.StarScene(r.wideElement()), nil)
 	}
 	for i := range r.sources {
 		r.sources[i].used = make([]bool, len(r.beams.list))

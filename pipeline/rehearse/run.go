@@ -54,7 +54,7 @@ func Run(ctx context.Context, seq *sequence.Sequence, scene *Scene, opts Options
 	if err := checkFaults(opts.Faults, seq); err != nil {
 		return nil, err
 	}
-	if err := scene.validated(); err != nil {
+	if err := scene.Usable(); err != nil {
 		return nil, fmt.Errorf("scene: %w", err)
 	}
 	r, err := newRehearsal(seq, scene, opts)

@@ -13,13 +13,13 @@ import (
 // have it: vacuum nm and aW m-2 nm-1. Wavelengths without light are left out.
 func (r *rehearsal) starTable() []byte {
 	const beyondNM = 10
-	star, grid := r.scene.RefStar.source(), r.optics.profile.Grid
-	photons := r.scene.photons(&star)
+	star, grid := r.scene.RefStar.Source(), r.optics.profile.Grid
+	perNM := photons(r.scene, &star)
 	var text bytes.Buffer
 	fmt.Fprintln(&text, "wavelength_nm,flux_aw_m2_nm")
 	last := math.Ceil(grid.WavelengthNM(float64(grid.Count)-0.5)) + beyondNM
 	for nm := math.Floor(grid.WavelengthNM(-0.5)) - beyondNM; nm <= last; nm++ {
-		if flux := physics.FluxFromPhotons(photons(nm), nm); flux > 0 {
+		if flux := physics.FluxFromPhotons(perNM(nm), nm); flux > 0 {
 			fmt.Fprintf(&text, "%g,%.8g\n", nm, flux)
 		}
 	}

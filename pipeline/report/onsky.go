@@ -13,7 +13,29 @@ func onSkySentences(run *product.Run) []string {
 		all = append(all, fmt.Sprintf("The light of the sky was subtracted, as %d places show it (%s of those that see it whole), chosen %s; its own error is %s of it.",
 			s.Places, percent(s.Share), s.Chosen, percent(s.RelError)))
 	}
+	if f := run.Flux; f != nil {
+		all = append(all, fmt.Sprintf("Counts became flux by a reference star, of whose light %s was measured; the rest, lost at the edges of the aperture or slit, is put back, with an error of %s of the flux. In all the common factor is known to %s.",
+			percent(f.SlitFraction), percent(f.SlitRelError), percent(f.RelError)))
+	}
 	return all
+}
+
+// fluxFacts are figures of the reference star.
+func fluxFacts(f *product.FluxReport) []fact {
+	if f == nil {
+		return nil
+	}
+	air := "by the site's extinction"
+	if !f.Extinction {
+		air = "no extinction is known"
+	}
+	return []fact{
+		{"Reference star", fmt.Sprintf("%s with %s, at element %.2f, row %.2f, %.2f arcsec wide", f.Star, f.Table, f.Element, f.Row, f.FWHMArcsec)},
+		{"Slit loss of the star", fmt.Sprintf("%s of its light was measured; relative error %s", percent(f.SlitFraction), percent(f.SlitRelError))},
+		{"Air mass", fmt.Sprintf("%.3f of the star, %.3f of the science frames: %s", f.StarAirmass, f.Airmass, air)},
+		{"Sensitivity", fmt.Sprintf("from %d voxels of the star (%d rejected), which scatter about it by %s; error of the factor %s, in the median", f.Used, f.Rejected, percent(f.RMS), percent(f.RelError))},
+		{"Largest efficiency", percent(f.Efficiency)},
+	}
 }
 
 // skyFacts are figures of the sky.

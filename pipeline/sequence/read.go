@@ -108,7 +108,8 @@ func (s *Sequence) readTexts(dir string) error {
 		return err
 	}
 	path := filepath.Join(dir, profileFile)
-	s.Profile, err = instrument.Parse(path, text, func(name string) ([]byte, error) { return readText(dir, name) })
+	beside := func(name string) ([]byte, error) { return readText(dir, name) }
+	s.Profile, err = instrument.Parse(path, text, beside)
 	if err != nil {
 		return err
 	}
@@ -126,7 +127,7 @@ func (s *Sequence) readTexts(dir string) error {
 		return err
 	}
 	path = filepath.Join(dir, targetFile)
-	if s.Target, err = ParseTarget(path, text); err != nil {
+	if s.Target, err = ParseTargetBeside(path, text, beside); err != nil {
 		return err
 	}
 	if digest(text) != s.TargetSHA {

@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"mirrorloom/pipeline/config"
+	"mirrorloom/pipeline/scene"
 )
 
 // Target is what the observer asks for: section by section the keys of a
@@ -31,6 +32,11 @@ type Target struct {
 	SentinelRows []SentinelRow `yaml:"sentinel_rows" config:"optional"`
 	Closed       []ClosedRow   `yaml:"closed" config:"optional"`
 	Calibration  Calibration   `yaml:"calibration" config:"optional"`
+	// Forecast is what is expected of the field; nil where nothing is said of it.
+	Forecast *Forecast `yaml:"forecast" config:"optional"`
+
+	// sky holds the spectra that the forecast names, once they are read.
+	sky *scene.Scene
 }
 
 // CodeChoice says how the field is coded.

@@ -27,12 +27,17 @@ func LoadTarget(pathOrName string) (*Target, error) {
 	if err != nil {
 		return nil, fmt.Errorf("target: %w", err)
 	}
-	return ParseTarget(source.Name, source.Data)
+	return ParseTargetBeside(source.Name, source.Data, source.Beside)
 }
 
-// ParseTarget reads and checks the text of a target; name is what errors call
-// the file.
+// ParseTarget reads and checks the text of a target that names no CSV files; name is what
+// errors call the file.
 func ParseTarget(name string, data []byte) (*Target, error) {
+	return ParseTargetBeside(name, data, nil)
+}
+
+// ParseTargetBeside is ParseTarget for a target that may name files, which beside reads.
+func ParseTargetBeside(name string, data []byte, beside func(file string) ([]byte, error)) (*Target, error) {
 	doc, err := config.Parse(name, data)
 	if err != nil {
 		return nil, err
@@ -42,6 +47,9 @@ func ParseTarget(name string, data []byte) (*Target, error) {
 		return nil, err
 	}
 	if err := t.check(doc); err != nil {
+		return nil, err
+	}
+	if err := t.readSpectra(doc, beside); err != nil {
 		return nil, err
 	}
 	return t, nil
@@ -64,6 +72,7 @@ func (t *Target) check(doc *config.Doc) error {
 	c.Count("all_off_every", t.AllOffEvery, 0, maxFrames)
 	t.checkRows(c)
 	t.checkCalibration(c)
+	t.checkForecast(c)
 	return c.Err()
 }
 

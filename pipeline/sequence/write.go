@@ -1,6 +1,7 @@
 package sequence
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
@@ -134,9 +135,15 @@ func (s *Sequence) writeTexts(dir string) error {
 		return fmt.Errorf("target: %w", err)
 	}
 	files := s.Profile.Files()
+	for name, data := range s.Target.Files() {
+		if other, taken := files[name]; taken && !bytes.Equal(other, data) {
+			return fault("profile and target name different files %s; rename one", name)
+		}
+		files[name] = data
+	}
 	for name, data := range map[string][]byte{profileFile: profile, targetFile: target} {
 		if _, taken := files[name]; taken {
-			return fault("the profile names a file %s, which is a name of the sequence's own", name)
+			return fault("profile or target names a file %s, which is a name of the sequence's own", name)
 		}
 		files[name] = data
 	}

@@ -80,3 +80,30 @@ func (p *plane) good(i int) bool {
 	v := p.signal[i]
 	return p.flags[i]&product.FlagBad == 0 && v == v && p.variance[i] > 0
 }
+
+// Primary is the primary header.
+func (s *Source) Primary() *fitsutil.Header { return s.file.HDUs()[0].Header }
+
+// Table reads a table of the cube.
+func (s *Source) Table(name string) (*fitsutil.Table, error) { return s.file.Table(name) }
+
+// Schema is the cube's shape and place.
+func (s *Source) Schema() (product.Schema, error) {
+	schema, err := product.ReadSchema(s.signal.Header, s.signal.Axes)
+	if err != nil {
+		return schema, fmt.Errorf("%s: %w", s.file.Path(), err)
+	}
+	return schema, nil
+}
+
+// Unit is BUNIT of SIGNAL.
+func (s *Source) Unit() string {
+	unit, _ := s.signal.Header.Str("BUNIT") // empty is no unit that serves
+	return unit
+}
+
+// Subtracted tells whether the sky was taken off already.
+func (s *Source) Subtracted() bool {
+	done, err := product.ReadOnSky(s.file)
+	return err == nil && done.Sky != nil
+}

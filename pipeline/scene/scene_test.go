@@ -1,7 +1,6 @@
-package rehearse
+package scene
 
 import (
-	"math"
 	"os"
 	"path/filepath"
 	"strings"
@@ -29,16 +28,16 @@ sky:
     - {wavelength_nm: 557.9, flux_w_m2_arcsec2: 1.0e-18}
 `
 
-func parsePlain(text string) (*Scene, error) { return ParseScene("scene.yaml", []byte(text), nil) }
+func parsePlain(text string) (*Scene, error) { return Parse("scene.yaml", []byte(text), nil) }
 
 func TestEmbeddedScenes(t *testing.T) {
-	require.Equal(t, []string{"demo-infrared", "demo-visible", "demo"}, SceneNames())
-	for _, name := range SceneNames() {
-		s, err := LoadScene(name)
+	require.Equal(t, []string{"demo-infrared", "demo-visible", "demo"}, Names())
+	for _, name := range Names() {
+		s, err := Load(name)
 		require.NoError(t, err)
 		text, err := s.YAML()
 		require.NoError(t, err)
-		again, err := ParseScene(name, text, nil)
+		again, err := Parse(name, text, nil)
 		require.NoError(t, err)
 		require.Equal(t, s, again)
 		kinds := map[string]int{}
@@ -94,7 +93,7 @@ func TestSpectrumCSV(t *testing.T) {
 	text := strings.Replace(plainScene, "temperature_k: 5000", "spectrum_csv: s.csv", 1)
 	path := filepath.Join(dir, "scene.yaml")
 	require.NoError(t, os.WriteFile(path, []byte(text), 0o666))
-	_, err := LoadScene(path)
+	_, err := Load(path)
 	require.ErrorContains(t, err, "scene.yaml:3: sources[0].spectrum_csv: there is no file s.csv")
 	for data, want := range map[string]string{
 		"":           "s.csv:1: the table has 0 rows; give at least 2",
@@ -108,32 +107,23 @@ func TestSpectrumCSV(t *testing.T) {
 		"wavelength_nm,relative_flux\n500,1\n\"700,2\n": "",
 	} {
 		require.NoError(t, os.WriteFile(filepath.Join(dir, "s.csv"), []byte(data), 0o666))
-		_, err := LoadScene(path)
+		_, err := Load(path)
 		require.Error(t, err, data)
 		if want != "" {
 			require.EqualError(t, err, want)
 		}
 	}
 	require.NoError(t, os.WriteFile(filepath.Join(dir, "s.csv"), []byte("wavelength_nm,relative_flux\n500,1\n600,3\n"), 0o666))
-	s, err := LoadScene(path)
+	s, err := Load(path)
 	require.NoError(t, err)
-	photons := s.photons(&s.Sources[0])
-	// At 550 nm as the AB magnitude says: 0.9963399 e8 x 10^-6.8; at 600 the
-	// energy is 3/2 of that at 550, the photons 3/2 x 600/550.
-	require.InEpsilon(t, ab550*math.Pow(10, -0.4*17), photons(550), 1e-4)
-	require.InEpsilon(t, photons(550)*1.5*600/550, photons(600), 1e-12)
-	require.Zero(t, photons(601))
-	require.Zero(t, photons(499))
-
-	p := smallProfile(t, "optical")
-	night, _ := rehearsed(t, planned(t, p, smallTarget(p)), s, Options{NoTruth: true})
-	again, err := LoadScene(filepath.Join(night, TruthFolder, SceneFile))
-	require.NoError(t, err)
-	require.Equal(t, s, again)
+	table := s.Spectrum("s.csv")
+	require.InEpsilon(t, 2.0, table.At(550), 1e-12)
+	require.Zero(t, table.At(601))
+	require.Zero(t, table.At(499))
 
 	copied := *s
 	copied.spectra = nil
-	require.EqualError(t, copied.validated(), "sources[0].spectrum_csv: s.csv was not read; load the scene from its file")
+	require.EqualError(t, copied.Usable(), "sources[0].spectrum_csv: s.csv was not read; load the scene from its file")
 	require.Error(t, s.Validate())
 }
 
@@ -148,17 +138,17 @@ func FuzzScene(f *testing.F) {
 	f.Add([]byte("seeing_fwhm_arcsec: 1\nsources: [{kind: star, east_arcsec: 0, north_arcsec: 0, ab_mag: 1, at_nm: 500, spectrum_csv: s.csv}]\n"))
 	f.Fuzz(func(t *testing.T, data []byte) {
 		beside := func(string) ([]byte, error) { return []byte("wavelength_nm,relative_flux\n100,1\n900,2\n"), nil }
-		s, err := ParseScene("scene.yaml", data, beside)
+		s, err := Parse("scene.yaml", data, beside)
 		if err != nil {
 			require.Nil(t, s)
 			return
 		}
 		text, err := s.YAML()
 		require.NoError(t, err)
-		again, err := ParseScene("scene.yaml", text, beside)
+		again, err := Parse("scene.yaml", text, beside)
 		require.NoError(t, err)
 		require.Equal(t, s, again)
-		require.NoError(t, s.validated())
+		require.NoError(t, s.Usable())
 	})
 }
 
@@ -171,9 +161,9 @@ func FuzzSpectrum(f *testing.F) {
 		if err != nil {
 			return
 		}
-		require.GreaterOrEqual(t, len(s.nm), 2)
-		for i := range s.nm {
-			require.InEpsilon(t, 1+s.flux[i], 1+s.at(s.nm[i]), 1e-9)
+		require.GreaterOrEqual(t, len(s.NM), 2)
+		for i := range s.NM {
+			require.InEpsilon(t, 1+s.RelativeFlux[i], 1+s.At(s.NM[i]), 1e-9)
 		}
 	})
 }

@@ -1,4 +1,4 @@
-package rehearse
+package scene
 
 import (
 	"mirrorloom/calib/physics"
@@ -26,15 +26,10 @@ type Atmosphere struct {
 	Refraction bool `yaml:"refraction" config:"optional"`
 }
 
-// over is the air of the night: what the scene says, and the site's for the rest.
-func (a *Atmosphere) over(site instrument.Site) physics.Atmosphere {
-	return instrument.WithAir(site.Atmosphere(), a.PressureHPa, a.TemperatureC, a.WaterHPa)
-}
-
-func (a *Atmosphere) check(c *config.Checks) {
-	instrument.CheckAir(c, "atmosphere", a.PressureHPa, a.TemperatureC, a.WaterHPa, a.Extinction)
+func (a *Atmosphere) check(c *config.Checks, path string) {
+	instrument.CheckAir(c, path, a.PressureHPa, a.TemperatureC, a.WaterHPa, a.Extinction)
 	if a.GuideNM != nil {
-		c.Within("atmosphere.guide_nm", *a.GuideNM, leastRefractedNM, maxNM)
+		c.Within(path+".guide_nm", *a.GuideNM, LeastRefractedNM, maxNM)
 	}
 }
 
@@ -54,27 +49,27 @@ type RefStar struct {
 	SeeingFWHMArcsec *float64 `yaml:"seeing_fwhm_arcsec" config:"optional"`
 }
 
-// source is the star as a source of a scene.
-func (r *RefStar) source() Source {
+// Source is the star as a source of a scene.
+func (r *RefStar) Source() Source {
 	return Source{
 		Kind: KindStar, EastArcsec: r.EastArcsec, NorthArcsec: r.NorthArcsec,
 		ABMag: &r.ABMag, AtNM: r.AtNM, TemperatureK: r.TemperatureK, SpectrumCSV: r.SpectrumCSV,
 	}
 }
 
-func (r *RefStar) check(c *config.Checks) {
-	source := r.source()
-	source.check(c, "refstar")
+func (r *RefStar) check(c *config.Checks, path string) {
+	source := r.Source()
+	source.check(c, path)
 	if r.SeeingFWHMArcsec != nil {
-		c.Positive("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec)
-		c.Within("refstar.seeing_fwhm_arcsec", *r.SeeingFWHMArcsec, 0, maxArcsec)
+		c.Positive(path+".seeing_fwhm_arcsec", *r.SeeingFWHMArcsec)
+		c.Within(path+".seeing_fwhm_arcsec", *r.SeeingFWHMArcsec, 0, maxArcsec)
 	}
 }
 
-// starScene is what refstar steps see: the star in the middle of its wide element, which
+// StarScene is what refstar steps see: the star in the middle of its wide element, which
 // lies dEast and dNorth arc seconds from the field's centre, and the scene's sky.
-func (s *Scene) starScene(dEast, dNorth float64) *Scene {
-	star := s.RefStar.source()
+func (s *Scene) StarScene(dEast, dNorth float64) *Scene {
+	star := s.RefStar.Source()
 	star.EastArcsec += dEast
 	star.NorthArcsec += dNorth
 	t := &Scene{SeeingFWHMArcsec: s.SeeingFWHMArcsec, Sources: []Source{star}, Sky: s.Sky, Atmosphere: s.Atmosphere, spectra: s.spectra}
@@ -84,9 +79,9 @@ func (s *Scene) starScene(dEast, dNorth float64) *Scene {
 	return t
 }
 
-// leastRefractedNM is the least wavelength at which air bends light by the formula in
+// LeastRefractedNM is the least wavelength at which air bends light by the formula in
 // use; none shorter reaches the ground.
-const leastRefractedNM = 200
+const LeastRefractedNM = 200
 
 // placedSource is a source and its key path.
 type placedSource struct {
@@ -101,7 +96,12 @@ func (s *Scene) allSources() []placedSource {
 		list = append(list, placedSource{sourcePath(i), source})
 	}
 	if s.RefStar != nil {
-		list = append(list, placedSource{"refstar", s.RefStar.source()})
+		list = append(list, placedSource{"refstar", s.RefStar.Source()})
 	}
 	return list
+}
+
+// Over is the air of the night: what the scene says, and the site's for the rest.
+func (a *Atmosphere) Over(site instrument.Site) physics.Atmosphere {
+	return instrument.WithAir(site.Atmosphere(), a.PressureHPa, a.TemperatureC, a.WaterHPa)
 }

@@ -1,4 +1,4 @@
-package rehearse
+package scene
 
 import (
 	"fmt"
@@ -20,33 +20,39 @@ const (
 	faintestMag = 60
 )
 
-// Validate checks a scene that was built in Go as LoadScene checks one from a
+// Validate checks a scene that was built in Go as Load checks one from a
 // file. Such a scene cannot name CSV files.
 func (s *Scene) Validate() error {
 	if err := s.check(nil); err != nil {
 		return err
 	}
-	return s.readSpectra(nil, nil)
+	return s.ReadSpectra(nil, "", nil)
 }
 
 // check finds the first value that makes no sense; doc gives the lines and may
 // be nil.
 func (s *Scene) check(doc *config.Doc) error {
 	c := doc.Checks()
-	c.Positive("seeing_fwhm_arcsec", s.SeeingFWHMArcsec)
-	c.Within("seeing_fwhm_arcsec", s.SeeingFWHMArcsec, 0, maxArcsec)
-	c.That(len(s.Sources) <= maxSources, "sources", "%d sources are too many; give at most %d", len(s.Sources), maxSources)
+	s.CheckIn(c, "")
+	return c.Err()
+}
+
+// CheckIn checks the values of a scene whose keys stand after prefix (empty, or a key path
+// with a closing dot); the files that it names are not read.
+func (s *Scene) CheckIn(c *config.Checks, prefix string) {
+	c.Positive(prefix+"seeing_fwhm_arcsec", s.SeeingFWHMArcsec)
+	c.Within(prefix+"seeing_fwhm_arcsec", s.SeeingFWHMArcsec, 0, maxArcsec)
+	c.That(len(s.Sources) <= maxSources, prefix+"sources", "%d sources are too many; give at most %d", len(s.Sources), maxSources)
 	for i := range s.Sources {
-		s.Sources[i].check(c, sourcePath(i))
+		s.Sources[i].check(c, prefix+sourcePath(i))
 	}
-	s.Sky.check(c)
+	s.Sky.check(c, prefix+"sky")
 	if s.Atmosphere != nil {
-		s.Atmosphere.check(c)
+		s.Atmosphere.check(c, prefix+"atmosphere")
 	}
 	if s.RefStar != nil {
-		s.RefStar.check(c)
+		s.RefStar.check(c, prefix+"refstar")
 	}
-	return c.Err()
 }
 
 // sourcePath is the key path of source i.
@@ -99,13 +105,13 @@ func (s *Source) checkContinuum(c *config.Checks, path string) {
 	}
 }
 
-func (s *Sky) check(c *config.Checks) {
+func (s *Sky) check(c *config.Checks, path string) {
 	if s.ContinuumABArcsec2 != nil {
-		c.Within("sky.continuum_ab_arcsec2", *s.ContinuumABArcsec2, -30, faintestMag)
+		c.Within(path+".continuum_ab_arcsec2", *s.ContinuumABArcsec2, -30, faintestMag)
 	}
-	c.That(len(s.Lines) <= maxLines, "sky.lines", "%d lines are too many; give at most %d", len(s.Lines), maxLines)
+	c.That(len(s.Lines) <= maxLines, path+".lines", "%d lines are too many; give at most %d", len(s.Lines), maxLines)
 	for i, l := range s.Lines {
-		at := fmt.Sprintf("sky.lines[%d]", i)
+		at := fmt.Sprintf("%s.lines[%d]", path, i)
 		checkLine(c, at, l.WavelengthNM, l.FWHMKmS)
 		c.Within(at+".flux_w_m2_arcsec2", l.FluxWM2Arcsec2, 0, maxFlux)
 	}
@@ -116,14 +122,14 @@ func checkLine(c *config.Checks, at string, wavelength, fwhm float64) {
 	c.Within(at+".fwhm_km_s", fwhm, 0, maxKmS)
 }
 
-// validated checks a scene again that a caller may have built or changed in Go;
+// Usable checks a scene again that a caller may have built or changed in Go;
 // the spectra of its files must have been read.
-func (s *Scene) validated() error {
+func (s *Scene) Usable() error {
 	if err := s.check(nil); err != nil {
 		return err
 	}
 	for _, at := range s.allSources() {
-		if name := at.source.SpectrumCSV; name != "" && s.spectra[name].nm == nil {
+		if name := at.source.SpectrumCSV; name != "" && s.spectra[name].NM == nil {
 			return fmt.Errorf("%s.spectrum_csv: %s was not read; load the scene from its file", at.path, name)
 		}
 	}
