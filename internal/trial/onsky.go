@@ -11,7 +11,6 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
-	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
@@ -171,16 +170,7 @@ func (f *Field) airGrid() reduce.GridRecipe {
 // FluxTruth turns a truth in electrons, less its sky, into flux: what the instrument and
 // the air did to it is known. Voxels where neither lets light through are NaN.
 func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
-	truth, err := c.ReadTruth(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	file, err := fitsutil.Open(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	defer file.Close() // only read from
-	sky, _, err := readImage(file, product.Sky)
+	truth, err := n.SkylessTruth(c, name)
 	if err != nil {
 		return nil, err
 	}
@@ -199,7 +189,7 @@ func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
 		}
 		plane := c.N * c.Rows
 		for i := l * plane; i < (l+1)*plane; i++ {
-			truth[i] = float32(float64(truth[i]-sky[i]) / per)
+			truth[i] = float32(float64(truth[i]) / per)
 		}
 	}
 	return truth, nil

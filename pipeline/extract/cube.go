@@ -33,6 +33,7 @@ type Cube struct {
 	pixelVariance              *fitsutil.Image
 	slitResponse, bandResponse *fitsutil.Image // nil without a response
 	sky                        *sky
+	onSky                      *onSky
 	geometry                   calib.Geometry
 	noise                      *product.Noise
 	erased                     *erasures // nil where no sample was restored
@@ -110,6 +111,9 @@ func (c *Cube) read() (err error) {
 		return fmt.Errorf("%s: %w", c.Path(), err)
 	}
 	if err := c.readGrid(); err != nil {
+		return err
+	}
+	if err := c.readOnSky(); err != nil {
 		return err
 	}
 	if c.noise, err = product.ReadNoise(c.file); err != nil {

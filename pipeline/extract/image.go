@@ -133,7 +133,10 @@ type responseNoise struct {
 // sharedBy gives those of element j, whose channels begin at from; slit is the row's
 // of SLITRESP.
 func (c *Cube) sharedBy(slit []float32, j, from int) responseNoise {
-	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 { return c.bandVarianceAt(j, from+l) }}
+	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 {
+		_, flux := c.onSky.factor(from + l) // as smooth as the efficiency, and shared like it
+		return c.bandVarianceAt(j, from+l) + flux
+	}}
 	if slit != nil {
 		r.slit = float64(slit[j])
 	}

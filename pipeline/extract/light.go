@@ -150,6 +150,9 @@ func (r *lightReader) load(y0 int) error {
 		if err := c.signal.ReadPlaneRows(r.chunk[l*n:(l+1)*n], l, r.chunkRow, r.chunkRow+r.chunkRows); err != nil {
 			return err
 		}
+		if err := c.onSky.inCounts(r.chunk[l*n:(l+1)*n], l, r.chunkRow, c.Elements); err != nil {
+			return err
+		}
 	}
 	return nil
 }

@@ -75,8 +75,8 @@ func (c *Cube) newTraceRow(a *aperture, y0, from, to int, own func(slot int) []f
 
 // pixelPart is VARIANCE of a voxel without what the responses add.
 func (c *Cube) pixelPart(a *aperture, i, l int) float64 {
-	v := float64(a.signal[i][l])
-	return float64(a.variance[i][l]) - v*v*(c.noise.ResponseVariance+a.slitVariance[i]+c.bandVarianceAt(a.cells[i].element, l))
+	v, variance := c.onSky.before(a, i, l)
+	return variance - v*v*(c.noise.ResponseVariance+a.slitVariance[i]+c.bandVarianceAt(a.cells[i].element, l))
 }
 
 // bandVarianceAt is the relative variance of BANDRESP.
