@@ -58,6 +58,8 @@ func checks() []check {
 		audits(),
 		flips(),
 		combined(),
+		skySubtraction(),
+		onSky(),
 	}
 }
 
