@@ -52,6 +52,7 @@ func checks() []check {
 		allFaults(),
 		apertures(),
 		lineMaps(),
+		forecasts(),
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),

@@ -42,6 +42,7 @@ type Cube struct {
 	weight                     []float64 // 1/frames of each code row
 	sumWeight                  float64
 	shift                      *calib.RowShift
+	field                      *calib.ShiftField // nil where light is taken from its own place
 	resampler                  *calib.Resampler
 	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
 }
@@ -146,11 +147,6 @@ func (c *Cube) readGrid() error {
 		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
 	c.Grid, c.Frame = s.Grid, s.Frame
-	for _, u := range c.file.HDUs() {
-		if u.Name == product.Shift {
-			return fmt.Errorf("%s: the place of its light depends on the wavelength (table %s), which errors of sums do not know yet: %w", c.Path(), product.Shift, ErrGrid)
-		}
-	}
 	axis := c.axis()
 	c.edges, c.centres = c.edgesOf(0, axis.Grid.Count), calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), 0, axis.Grid.Count)
 	return nil
@@ -243,6 +239,9 @@ func (c *Cube) readGeometry() error {
 	}
 	var err error
 	if c.shift, err = calib.NewRowShift(shift, c.Rows); err != nil {
+		return err
+	}
+	if err := c.readShift(shift); err != nil {
 		return err
 	}
 	c.resampler, err = calib.NewResampler(0, c.noise.Columns-1)

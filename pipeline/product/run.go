@@ -24,6 +24,9 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
+	// Stars is what listed stars told of the place on the sky; nil if none were listed or
+	// they were not found.
+	Stars *Stars `json:"stars,omitempty"`
 	// Sky is what was subtracted of the sky; nil if nothing was.
 	Sky *SkyReport `json:"sky,omitempty"`
 	// Flux is what the reference star told; nil for a cube in counts.

@@ -173,3 +173,51 @@ func TestRefractionWithoutAirmass(t *testing.T) {
 		require.Equal(t, reduce.ExitDegraded, result.Run.Exit)
 	}
 }
+
+// So does a night whose instrument is calibrated by its own lamps: the light that comes from
+// other elements and rows is divided by their response, not by that of the voxel's own.
+func TestOntoOfACalibratedNight(t *testing.T) {
+	ctx := t.Context()
+	f, err := trial.Lamps()
+	require.NoError(t, err)
+	f.Target.Code.ElementMirrors = 1
+	f.Scene.SeeingFWHMArcsec = max(f.Scene.SeeingFWHMArcsec, 1.2)
+	first, _, err := f.Pair(ctx, filepath.Join(t.TempDir(), "first"), 51)
+	require.NoError(t, err)
+	second, err := f.Displaced(1.4, 1.5).Plan(ctx, filepath.Join(t.TempDir(), "second"))
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe(reduce.DefaultRecipe)
+	require.NoError(t, err)
+	recipe.Grid.Onto = first.CubePath(trial.Noisy)
+	cubes := map[string]*trial.Cube{}
+	for name, opts := range map[string]rehearse.Options{trial.Noisy: {Seed: 51, NoTruth: true}, trial.Twin: {Seed: 51, Noiseless: true, NoTruth: true}} {
+		require.NoError(t, second.Rehearse(ctx, name, opts))
+		_, err := second.Reduce(ctx, name, reduce.Options{Cube: true, Recipe: recipe})
+		require.NoError(t, err)
+		cubes[name], err = trial.ReadCube(second.CubePath(name))
+		require.NoError(t, err)
+	}
+	want, err := trial.ReadCube(first.CubePath(trial.Noisy))
+	require.NoError(t, err)
+	truth, err := want.ReadTruth(first.TruthPath(trial.Noisy))
+	require.NoError(t, err)
+	low, high := want.Rows, 0
+	for i := range truth {
+		if want.Good(i) {
+			low, high = min(low, i/want.N%want.Rows), max(high, i/want.N%want.Rows)
+		}
+	}
+	for i := range truth {
+		if y := i / want.N % want.Rows; y < low+6 || y > high-6 || i%want.N < 3 || i%want.N > want.N-4 {
+			truth[i] = float32(math.NaN())
+		}
+	}
+	own, err := trial.NewPulls(want, truth, want.Variance, 1)
+	require.NoError(t, err)
+	p, err := trial.NewPulls(cubes[trial.Noisy], truth, cubes[trial.Twin].Variance, 1)
+	require.NoError(t, err)
+	t.Logf("pulls: mean %.4f, std %.4f (of the first night %.4f, %.4f), N = %d", p.All.Mean(), p.All.Std(), own.All.Mean(), own.All.Std(), p.All.N)
+	require.InDelta(t, 0, p.All.Mean(), 0.05)
+	require.InDelta(t, 1, p.All.Std(), 0.05)
+	require.Greater(t, p.All.N, 20000)
+}
