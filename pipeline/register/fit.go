@@ -104,13 +104,11 @@ func (f *fitting) match() error {
 	if len(f.peaks) == 0 {
 		return fmt.Errorf("no star is bright enough in the white light of the field; expose longer or list no stars")
 	}
-	by := f.nominal()
+	look := f.pointing
 	if f.rule.Fit == Similarity {
-		by = f.turned()
-	} else {
-		by = f.pointing()
+		look = f.turned
 	}
-	f.found = f.pairs(by)
+	f.found = f.pairs(look())
 	if n, need := len(f.found), f.rule.fewest(); n < need {
 		return fmt.Errorf("%d of the %d listed stars in the field are found among the %d stars seen, where a %s takes %d; check the list, or let `search_arcsec` be larger", n, len(f.stars), len(f.peaks), f.rule.Fit, need)
 	}
