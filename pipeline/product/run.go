@@ -33,6 +33,9 @@ type Run struct {
 	Flux *FluxReport `json:"flux,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
+	// FieldShift says where in the field the light of the voxels was taken; nil at their
+	// own places.
+	FieldShift *FieldShiftSection `json:"field_shift,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.
 	Audit    any      `json:"audit,omitempty"`
 	Warnings []string `json:"warnings"`
