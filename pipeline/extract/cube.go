@@ -267,14 +267,6 @@ func (c *Cube) identify() string {
 	return fmt.Sprintf("%x", sum.Sum(nil))
 }
 
-// response of an element, row and wavelength; slit is the row's of SLITRESP.
-func (c *Cube) response(slit []float32, element, voxel int) float64 {
-	if slit == nil {
-		return 1
-	}
-	return float64(slit[element]) * float64(c.bandFactor[voxel*c.Elements+element])
-}
-
 // slitRow reads a row of SLITRESP, factor or variance; nil without a response.
 func (c *Cube) slitRow(plane, y int) ([]float32, error) {
 	if c.slitResponse == nil {
