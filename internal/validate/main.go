@@ -60,6 +60,8 @@ func checks() []check {
 		audits(255, 32, 10),
 		flips(),
 		combined(),
+		skySubtraction(),
+		onSky(),
 	}
 }
 
