@@ -106,9 +106,7 @@ func TestCovariancesAddUp(t *testing.T) {
 		}
 		const x, y = 100, 50
 		n.light.camera.quiet = []float64{quiet, quiet}
-		for i := range 4 {
-			n.field.row(n.trace(x, y).q + i).overlap[x] = total
-		}
+		n.field.pixelRow(y).overlap[x] = total
 		var sum Parts
 		var o overlapped
 		o.overlap = total
