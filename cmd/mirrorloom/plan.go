@@ -15,12 +15,15 @@ import (
 
 type planOptions struct {
 	profile string
-	list    bool
-	output  outputOptions
+	// registration is a file that reduce wrote.
+	registration string
+	list         bool
+	output       outputOptions
 }
 
 func (o *planOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.profile, "profile", "", "instrument profile: a YAML file, or the name of a built-in one")
+	f.StringVar(&o.registration, "registration", "", "registration.yaml of a run on listed stars: the field lies where it says")
 	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
 	o.output.addFlags(f, "sequence")
 }
@@ -69,11 +72,15 @@ func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
 	if o.profile == "" || o.output.dir == "" {
 		return usageError{errors.New("plan needs --profile and -o; see 'mirrorloom plan --help'")}
 	}
+	inputs := []string{target, o.profile}
+	if o.registration != "" {
+		inputs = append(inputs, o.registration)
+	}
 	var summary *plan.Summary
 	err := o.output.write(ctx, func(dir string) (err error) {
-		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Out: dir})
+		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Registration: o.registration, Out: dir})
 		return err
-	}, target, o.profile)
+	}, inputs...)
 	if err != nil {
 		return err
 	}

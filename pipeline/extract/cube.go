@@ -17,6 +17,9 @@ import (
 // ErrGrid marks a cube whose world coordinates are not as reduce writes them.
 var ErrGrid = errors.New("extract cannot place its voxels on the detector")
 
+// ErrCombined marks a cube of several runs, which does not carry the errors of sums.
+var ErrCombined = errors.New("its voxels' own errors are in VARIANCE, but what they share is not carried by a combined cube, so that sums would have wrong errors; extract from each run and take the mean, weighted by the errors that come out")
+
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
 type Cube struct {
@@ -111,6 +114,12 @@ func (c *Cube) read() (err error) {
 		return fmt.Errorf("%s: %w", c.Path(), err)
 	}
 	if err := c.readGrid(); err != nil {
+		return err
+	}
+	if made, err := product.ReadMembers(c.file); err != nil || made != nil {
+		if err == nil {
+			err = fmt.Errorf("%s is made of %d runs: %w", c.Path(), len(made), ErrCombined)
+		}
 		return err
 	}
 	if c.noise, err = product.ReadNoise(c.file); err != nil {

@@ -4,10 +4,12 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"path/filepath"
 
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/register"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -15,6 +17,9 @@ import (
 type Options struct {
 	// Target and Profile are paths, or names of embedded files.
 	Target, Profile string
+	// Registration is the path of a registration of the instrument (package register), by
+	// which the telescope is to be pointed; empty for none.
+	Registration string
 	// Out is the folder to write into, made if there is none. It must hold no
 	// sequence; giving it its final name when it is whole is the caller's part.
 	Out string
@@ -32,6 +37,10 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	if err != nil {
 		return nil, err
 	}
+	registration, err := readRegistration(o.Registration, profile)
+	if err != nil {
+		return nil, err
+	}
 	s, summary, err := Build(ctx, target, profile)
 	if err != nil {
 		var c *config.Error
@@ -42,6 +51,12 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	}
 	if err := s.Write(ctx, o.Out); err != nil {
 		return nil, err
+	}
+	if registration != nil {
+		summary.Pointing = pointingOf(registration, s)
+		if err := registration.Write(filepath.Join(o.Out, register.File)); err != nil {
+			return nil, err
+		}
 	}
 	summary.SequenceSHA = s.SHA
 	summary.Masks = countMasks(s)

@@ -38,6 +38,9 @@ type Summary struct {
 	Airmass [3]float64 `json:"airmass"`
 	// RefStar is the reference star; nil where none is planned.
 	RefStar *RefStar `json:"refstar,omitempty"`
+	// Pointing is where the telescope is to be sent, so that the field lies where the
+	// target says; nil without a registration.
+	Pointing *PointingTo `json:"pointing,omitempty"`
 	// Forecast is what the plan will give; nil where the target does not say what to
 	// expect.
 	Forecast *forecast.Result `json:"forecast,omitempty"`
@@ -200,6 +203,10 @@ func (r *Summary) String() string {
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
 	if r.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	}
+	if p := r.Pointing; p != nil {
+		fmt.Fprintf(&b, "point    the telescope at RA %.6f, Dec %+.6f, position angle %.4f (degrees):\n", p.RADeg, p.DecDeg, p.RotangDeg)
+		fmt.Fprintf(&b, "         the field lies %.2f arcsec from there, as %d stars say\n", p.AwayArcsec, p.Stars)
 	}
 	if r.RefStar != nil && r.RefStar.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "refstar  %s, airmass %.2f to %.2f\n", r.RefStar.Name, r.RefStar.Airmass[0], r.RefStar.Airmass[1])

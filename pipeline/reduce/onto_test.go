@@ -1,6 +1,8 @@
 package reduce_test
 
 import (
+	"bytes"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -136,6 +138,45 @@ func TestOntoRefusals(t *testing.T) {
 	require.NoError(t, err)
 	require.Equal(t, product.Barycentric, result.Schema.Frame.Name)
 	require.NotZero(t, result.Schema.Frame.Factor)
+}
+
+// A frame whose header contradicts the target is said: a right ascension in hours, another
+// place, another air mass.
+func TestPointingWarnings(t *testing.T) {
+	ctx := t.Context()
+	f, err := trial.Tiny()
+	require.NoError(t, err)
+	night, err := f.Plan(ctx, t.TempDir())
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe("nominal")
+	require.NoError(t, err)
+	recipe.Grid.Refraction = "auto"
+	for _, c := range []struct{ key, value, want string }{
+		{"RA", "8.22", "degrees in hours"}, {"RA", "12.5", "check ra_deg"}, {"AIRMASS", "2.9", "where site, target and time give"},
+	} {
+		require.NoError(t, night.Rehearse(ctx, trial.Noisy, rehearse.Options{Seed: 3, NoTruth: true}))
+		setCard(t, night.Frames(trial.Noisy), c.key, c.value)
+		result, err := night.Reduce(ctx, trial.Noisy, reduce.Options{Cube: true, Recipe: recipe})
+		require.NoError(t, err)
+		require.Len(t, result.Run.Warnings, 1)
+		require.Contains(t, result.Run.Warnings[0], c.want)
+		require.NoError(t, night.Discard(trial.Noisy))
+	}
+}
+
+// setCard gives a card of all frames of a folder another number.
+func setCard(t *testing.T, folder, key, value string) {
+	t.Helper()
+	frames, err := filepath.Glob(filepath.Join(folder, "*.fits"))
+	require.NoError(t, err)
+	for _, path := range frames {
+		data, err := os.ReadFile(path)
+		require.NoError(t, err)
+		at := bytes.Index(data, []byte((key + "        ")[:8]+"="))
+		require.Positive(t, at, path)
+		copy(data[at+9:at+80], fmt.Appendf(nil, " %20s%-50s", value, ""))
+		require.NoError(t, os.WriteFile(path, data, 0o644))
+	}
 }
 
 // Where no air mass can be computed refraction stays in the cube, which is said.

@@ -89,6 +89,8 @@ func TestRefractedNight(t *testing.T) {
 		result, err := night.Reduce(ctx, name, reduce.Options{Cube: true, Recipe: recipe})
 		require.NoError(t, err)
 		require.Empty(t, result.Degraded)
+		require.Empty(t, result.Run.Warnings)
+		require.InDelta(t, 1.5, *result.Run.FieldShift.Airmass, 0.02)
 		cubes[name], err = trial.ReadCube(night.CubePath(name))
 		require.NoError(t, err)
 	}
