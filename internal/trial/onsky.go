@@ -11,7 +11,6 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
-	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
@@ -117,14 +116,15 @@ func WriteFluxTable(path string, s *rehearse.Source, firstNM, lastNM float64) er
 	return os.WriteFile(path, []byte(b.String()), 0o644)
 }
 
-// OnSkyRecipe is the nominal recipe with throughput and repairs, and with sky and flux.
+// OnSkyRecipe is the nominal recipe with throughput and repairs, with refraction taken out,
+// and with sky and flux.
 func OnSkyRecipe(sky reduce.SkyRecipe, flux reduce.FluxRecipe) (*reduce.Recipe, error) {
 	r, err := reduce.LoadRecipe("nominal")
 	if err != nil {
 		return nil, err
 	}
 	r.Throughput.Use, r.Repair.Use = "auto", "auto"
-	r.Sky, r.Flux = sky, flux
+	r.Sky, r.Flux, r.Grid.Refraction = sky, flux, "auto"
 	return r, nil
 }
 
@@ -151,7 +151,6 @@ func (f *Field) StarNight(ctx context.Context, dir string, mag, airmass float64,
 	if err != nil {
 		return none, err
 	}
-	recipe.Grid = f.airGrid()
 	result, err := n.Reduce(ctx, "star", reduce.Options{Cube: true, Recipe: recipe})
 	if err != nil {
 		return none, err
@@ -163,24 +162,10 @@ func (f *Field) StarNight(ctx context.Context, dir string, mag, airmass float64,
 	return reduce.FluxRecipe{Use: n.CubePath("star"), Star: table}, WriteFluxTable(table, &g.Scene.Sources[0], 350, 950)
 }
 
-// airGrid is the recipe's grid: the profile's.
-func (f *Field) airGrid() reduce.GridRecipe {
-	return reduce.GridRecipe{Use: "auto"}
-}
-
 // FluxTruth turns a truth in electrons, less its sky, into flux: what the instrument and
 // the air did to it is known. Voxels where neither lets light through are NaN.
 func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
-	truth, err := c.ReadTruth(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	file, err := fitsutil.Open(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	defer file.Close() // only read from
-	sky, _, err := readImage(file, product.Sky)
+	truth, err := n.SkylessTruth(c, name)
 	if err != nil {
 		return nil, err
 	}
@@ -199,7 +184,7 @@ func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
 		}
 		plane := c.N * c.Rows
 		for i := l * plane; i < (l+1)*plane; i++ {
-			truth[i] = float32(float64(truth[i]-sky[i]) / per)
+			truth[i] = float32(float64(truth[i]) / per)
 		}
 	}
 	return truth, nil

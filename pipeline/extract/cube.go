@@ -36,6 +36,7 @@ type Cube struct {
 	pixelVariance              *fitsutil.Image
 	slitResponse, bandResponse *fitsutil.Image // nil without a response
 	sky                        *sky
+	onSky                      *onSky
 	geometry                   calib.Geometry
 	noise                      *product.Noise
 	erased                     *erasures // nil where no sample was restored
@@ -114,6 +115,9 @@ func (c *Cube) read() (err error) {
 		return fmt.Errorf("%s: %w", c.Path(), err)
 	}
 	if err := c.readGrid(); err != nil {
+		return err
+	}
+	if err := c.readOnSky(); err != nil {
 		return err
 	}
 	if made, err := product.ReadMembers(c.file); err != nil || made != nil {
@@ -261,14 +265,6 @@ func (c *Cube) identify() string {
 		}
 	}
 	return fmt.Sprintf("%x", sum.Sum(nil))
-}
-
-// response of an element, row and wavelength; slit is the row's of SLITRESP.
-func (c *Cube) response(slit []float32, element, voxel int) float64 {
-	if slit == nil {
-		return 1
-	}
-	return float64(slit[element]) * float64(c.bandFactor[voxel*c.Elements+element])
 }
 
 // slitRow reads a row of SLITRESP, factor or variance; nil without a response.

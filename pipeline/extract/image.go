@@ -129,13 +129,18 @@ type responseNoise struct {
 	pixel, slit float64
 	band        func(l int) float64
 	shares      func(l int) (elements, rows float64) // see Cube.shares
+	flux        func(l int) float64                  // of the factor from counts to flux
 }
 
 // sharedBy gives those of element j, whose channels begin at from; slit is the row's
 // of SLITRESP.
 func (c *Cube) sharedBy(slit []float32, j, y, from int) responseNoise {
 	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 { return c.bandVarianceAt(j, from+l) },
-		shares: func(l int) (float64, float64) { return c.shares(cell{element: j, row: y}, from+l) }}
+		shares: func(l int) (float64, float64) { return c.shares(cell{element: j, row: y}, from+l) },
+		flux: func(l int) float64 {
+			_, relative := c.onSky.factor(from + l)
+			return relative
+		}}
 	if slit != nil {
 		r.slit = float64(slit[j])
 	}
@@ -143,9 +148,9 @@ func (c *Cube) sharedBy(slit []float32, j, y, from int) responseNoise {
 }
 
 // variance of a sum over channels by the responses: that of the slit is common to
-// all channels, that of the efficiency is taken for it.
+// all channels, those of the efficiency and of the flux are taken for it.
 func (r responseNoise) variance(weights []float64, s spectrumVoxels) float64 {
-	var all, band, pixels float64
+	var all, band, pixels, flux float64
 	for l, w := range weights {
 		if w == 0 {
 			continue
@@ -155,8 +160,9 @@ func (r responseNoise) variance(weights []float64, s spectrumVoxels) float64 {
 		all += v * math.Sqrt(elements*rows)
 		band += v * math.Sqrt(elements*r.band(l))
 		pixels += v * v * elements
+		flux += v * math.Sqrt(max(0, r.flux(l)))
 	}
-	return r.slit*all*all + band*band + r.pixel*pixels
+	return r.slit*all*all + band*band + r.pixel*pixels + flux*flux
 }
 
 // onPixels turns weights of channels into such that give each channel the part of
@@ -177,7 +183,7 @@ func (r responseNoise) onPixels(weights []float64, s spectrumVoxels, noise *spec
 func (r responseNoise) rest(s spectrumVoxels, l int) float64 {
 	v := float64(s.signal[l])
 	elements, rows := r.shares(l)
-	return float64(s.variance[l]) - v*v*elements*(r.pixel+rows*r.slit+r.band(l))
+	return float64(s.variance[l]) - v*v*(r.flux(l)+elements*(r.pixel+rows*r.slit+r.band(l)))
 }
 
 // variance of a sum over channels with the given weights.

@@ -198,6 +198,9 @@ func (r *lightReader) load(y0 int) error {
 		if err := c.signal.ReadPlaneRows(r.chunk[l*n:(l+1)*n], l, from, from+r.chunkRows+more); err != nil {
 			return err
 		}
+		if err := c.onSky.inCounts(r.chunk[l*n:(l+1)*n], l, from, c.Elements); err != nil {
+			return err
+		}
 	}
 	return nil
 }

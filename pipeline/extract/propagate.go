@@ -121,7 +121,7 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 			return nil, err
 		}
 	}
-	return p.result(), nil
+	return p.result()
 }
 
 // rowStarts are the places of each row's first cell, from a.firstRow on.
@@ -290,7 +290,7 @@ func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
 }
 
 // result adds the blocks, and the errors that pixels do not tell.
-func (p *propagator) result() *covariances {
+func (p *propagator) result() (*covariances, error) {
 	out := &covariances{channels: table[float64](p.c.Grid.Count, Lags+1), sums: make([]float64, len(p.sums))}
 	for _, w := range p.parts {
 		for l, row := range w.channels {
@@ -304,7 +304,7 @@ func (p *propagator) result() *covariances {
 	}
 	p.addThroughput(out)
 	p.addResponse(out)
-	return out
+	return out, p.addOnSky(out)
 }
 
 // addThroughput adds the errors of the steps' throughput, which all pixels share.
@@ -367,7 +367,7 @@ func (p *propagator) addResponse(out *covariances) {
 		root := math.Sqrt(p.a.slitVariance[i])
 		for l := range light {
 			elements, rows := p.c.shares(k, l)
-			light[l] = root * math.Sqrt(elements*rows) * p.a.weighted(i, l)
+			light[l] = root * math.Sqrt(elements*rows) * p.a.weighted(p.c.onSky, i, l)
 		}
 		add()
 	}
@@ -377,7 +377,7 @@ func (p *propagator) addResponse(out *covariances) {
 			if p.a.slot[i] == slot {
 				for l := range light {
 					elements, _ := p.c.shares(k, l)
-					light[l] += math.Sqrt(elements) * p.a.weighted(i, l)
+					light[l] += math.Sqrt(elements) * p.a.weighted(p.c.onSky, i, l)
 				}
 			}
 		}
@@ -388,10 +388,11 @@ func (p *propagator) addResponse(out *covariances) {
 	}
 }
 
-// weighted is a voxel's part of the sum.
-func (a *aperture) weighted(i, l int) float64 {
+// weighted is a voxel's part of the sum, with the sky that was taken off it.
+func (a *aperture) weighted(o *onSky, i, l int) float64 {
 	if a.weight[i][l] == 0 {
 		return 0
 	}
-	return a.weight[i][l] * float64(a.signal[i][l])
+	light, _ := o.before(a, i, l)
+	return a.weight[i][l] * light
 }

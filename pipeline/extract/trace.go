@@ -113,9 +113,9 @@ func (c *Cube) newTraceRow(a *aperture, y0, from, to int, of func(element int) *
 
 // pixelPart is VARIANCE of a voxel without what the responses add.
 func (c *Cube) pixelPart(a *aperture, i, l int) float64 {
-	v := float64(a.signal[i][l])
+	v, variance := c.onSky.before(a, i, l)
 	elements, rows := c.shares(a.cells[i], l)
-	return float64(a.variance[i][l]) - v*v*elements*(c.noise.ResponseVariance+rows*a.slitVariance[i]+c.bandVarianceAt(a.cells[i].element, l))
+	return variance - v*v*elements*(c.noise.ResponseVariance+rows*a.slitVariance[i]+c.bandVarianceAt(a.cells[i].element, l))
 }
 
 // bandVarianceAt is the relative variance of BANDRESP.
