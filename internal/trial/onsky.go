@@ -116,15 +116,18 @@ func WriteFluxTable(path string, s *rehearse.Source, firstNM, lastNM float64) er
 	return os.WriteFile(path, []byte(b.String()), 0o644)
 }
 
-// OnSkyRecipe is the nominal recipe with throughput and repairs, with refraction taken out,
-// and with sky and flux.
-func OnSkyRecipe(sky reduce.SkyRecipe, flux reduce.FluxRecipe) (*reduce.Recipe, error) {
+// OnSkyRecipe is the nominal recipe with throughput and repairs, refraction taken
+// out where the scene has one, and with sky and flux.
+func (f *Field) OnSkyRecipe(sky reduce.SkyRecipe, flux reduce.FluxRecipe) (*reduce.Recipe, error) {
 	r, err := reduce.LoadRecipe("nominal")
 	if err != nil {
 		return nil, err
 	}
 	r.Throughput.Use, r.Repair.Use = "auto", "auto"
-	r.Sky, r.Flux, r.Grid.Refraction = sky, flux, "auto"
+	r.Sky, r.Flux = sky, flux
+	if f.Scene.Atmosphere.Refraction {
+		r.Grid.Refraction = "auto"
+	}
 	return r, nil
 }
 
@@ -147,7 +150,7 @@ func (f *Field) StarNight(ctx context.Context, dir string, mag, airmass float64,
 	if err := n.Rehearse(ctx, "star", rehearse.Options{Seed: seed, NoTruth: true}); err != nil {
 		return none, err
 	}
-	recipe, err := OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, none)
+	recipe, err := f.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, none)
 	if err != nil {
 		return none, err
 	}

@@ -35,7 +35,7 @@ all good voxels against the truth in units of flux.`,
 			if err != nil {
 				return nil, err
 			}
-			recipe, err := trial.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, flux)
+			recipe, err := field.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, flux)
 			if err != nil {
 				return nil, err
 			}
