@@ -16,12 +16,14 @@ import (
 type planOptions struct {
 	profile string
 	list    bool
+	dryRun  bool
 	output  outputOptions
 }
 
 func (o *planOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.profile, "profile", "", "instrument profile: a YAML file, or the name of a built-in one")
 	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
+	f.BoolVar(&o.dryRun, "dry-run", false, "plan and print, write no sequence")
 	o.output.addFlags(f, "sequence")
 }
 
@@ -32,7 +34,12 @@ func newPlanCommand(a *app) *cobra.Command {
 		Short: "Plan the exposures and masks of a target",
 		Long: `plan writes a sequence: the exposures of a night with their masks, and copies of
 the profile and the target it was made from. Every later command needs only the
-sequence.`,
+sequence.
+
+Where the target has a forecast, plan also says what S/N it will give, and holds the
+code against others and against a slit scan of the same field in the same time; the
+table is trade.csv in the sequence, the plot trade.svg. With code.family: auto plan
+takes the best within the target's limits.`,
 		Args: func(cmd *cobra.Command, args []string) error {
 			if o.list {
 				return cobra.NoArgs(cmd, args)
@@ -66,14 +73,23 @@ func runListProfiles(a *app) error {
 }
 
 func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
-	if o.profile == "" || o.output.dir == "" {
+	switch {
+	case o.profile == "" || o.output.dir == "" && !o.dryRun:
 		return usageError{errors.New("plan needs --profile and -o; see 'mirrorloom plan --help'")}
+	case o.output.dir != "" && o.dryRun:
+		return usageError{errors.New("--dry-run writes nothing and -o says where; leave one of the two out")}
 	}
 	var summary *plan.Summary
-	err := o.output.write(ctx, func(dir string) (err error) {
+	run := func(dir string) (err error) {
 		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Out: dir})
 		return err
-	}, target, o.profile)
+	}
+	var err error
+	if o.dryRun {
+		err = run("")
+	} else {
+		err = o.output.write(ctx, run, target, o.profile)
+	}
 	if err != nil {
 		return err
 	}
