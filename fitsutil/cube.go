@@ -178,6 +178,34 @@ func (c *Cube) writeRuns(image *cubeImage, y0, h, l0, nl int, data any) error {
 	return nil
 }
 
+// Revise gives a card of image number hdu another value, before Commit. The card must be
+// there and, as after, take one line (ErrRange otherwise, and nothing changes).
+func (c *Cube) Revise(hdu int, key string, value any) error {
+	c.running.Lock()
+	defer c.running.Unlock()
+	if c.closed {
+		return closedError(c.path)
+	}
+	if hdu < 0 || hdu >= len(c.images) {
+		return fileError(c.path, ErrRange, fmt.Sprintf("image %d of %d is to be revised", hdu, len(c.images)), "")
+	}
+	image := c.images[hdu]
+	h := image.hdu.header
+	at, found := h.index[foldKey(key)]
+	if !found || structural(foldKey(key)) || len(h.entries[at].raw) != cardSize {
+		return c.fault(image, ErrRange, fmt.Sprintf("card %s cannot be revised", key), "")
+	}
+	e, err := h.newEntry(Card{Key: h.entries[at].card.Key, Value: value, Comment: h.entries[at].card.Comment})
+	if err != nil {
+		return inFile(c.path, err)
+	}
+	if len(e.raw) != cardSize {
+		return c.fault(image, ErrRange, fmt.Sprintf("card %s would take more than a line", key), "")
+	}
+	h.entries[at] = e
+	return nil
+}
+
 // AppendTable adds a table behind the images and the tables appended before.
 // Errors as for WriteFile.
 func (c *Cube) AppendTable(t *Table) error {

@@ -76,6 +76,37 @@ func (r *Restorer) Solve(out *Repair, rows []int, residual []float64) bool {
 	return true
 }
 
+// Spread puts into dst, by code column, the variance that the restored readings of the
+// last Solve, of the same rows, add to a lit column's decode: A_jK P_KK^-1 A_jK', in units
+// of the variance of a reading, to rows/v of the whole; 0 for dark columns. Columns of an S-matrix
+// all get the same of a single row, those of a sparse code much more where they are open in
+// it.
+func (r *Restorer) Spread(dst []float64, rows []int, solved *Repair) {
+	r.spread(dst, rows, solved.factor)
+}
+
+func (r *Restorer) spread(dst []float64, rows []int, factor []float64) {
+	open, closed := r.code.InverseEntries()
+	var buffer [maxColumn]float64
+	x := buffer[:min(len(rows), maxColumn)]
+	if len(rows) > maxColumn {
+		x = make([]float64, len(rows))
+	}
+	for j := range dst[:r.code.v] {
+		for a, k := range rows {
+			x[a] = closed
+			if r.code.Bit(k, j) == 1 {
+				x[a] = open
+			}
+		}
+		solveLower(factor, x)
+		dst[j] = dot(x, x)
+	}
+	for _, j := range r.columns {
+		dst[j] = 0
+	}
+}
+
 // Project puts P y into dst, one value a code row, for a pixel's residual r = Ag y, dark
 // decodes in the order of Columns: each row's part in what the dark columns show.
 func (r *Restorer) Project(dst, residual []float64) {
@@ -174,6 +205,8 @@ type LostRows struct {
 	// pedestal, less their mean, over g times the mean variance of the lit columns: near
 	// (g - rows)/g.
 	DarkShare float64
+	// Spread is, by code column, what Restorer.Spread is.
+	Spread []float64
 
 	code    *Code
 	columns []int
@@ -189,7 +222,8 @@ func (r *Restorer) Lost(rows []int, noise []float64) (*LostRows, error) {
 	if !r.factorise(l, rows) {
 		return nil, fmt.Errorf("%d lost code rows leave dependent marks on the %d dark columns", n, g)
 	}
-	out := &LostRows{Rows: rows, code: r.code, columns: r.columns, weights: make([]float32, n*g)}
+	out := &LostRows{Rows: rows, code: r.code, columns: r.columns, weights: make([]float32, n*g), Spread: make([]float64, v)}
+	r.spread(out.Spread, rows, l)
 	weights := mat.NewDense(max(1, n), g, nil) // one row of zeros where none is lost
 	column := make([]float64, n)
 	for d := range g {

@@ -225,3 +225,64 @@ func TestRestorerAllocatesNothing(t *testing.T) {
 	residual := make([]float64, 16)
 	require.Zero(t, testing.AllocsPerRun(10, func() { r.Solve(&repair, []int{3, 9, 40}, residual) }))
 }
+
+// TestSpread: what restoring rows adds to the variance of lit columns is, to rows/v
+// of the whole, the difference of the rows of A + A_K e Ag and of A, squared and added up, in the
+// rows that are not lost, where lost ones count as if they had been read.
+func TestSpread(t *testing.T) {
+	for _, x := range []struct {
+		c *Code
+		g int
+	}{{mustCode(t, MSequence, 63), 16}, {mustCode(t, Singer, 73), 26}, {mustCode(t, SingerComplement, 73), 26}} {
+		set, err := ChooseDark(t.Context(), x.c, x.g, 3)
+		require.NoError(t, err)
+		checks, err := NewChecks(x.c, set.Columns)
+		require.NoError(t, err)
+		v, rows := x.c.V(), []int{3, 20, 41}
+		r := checks.NewRestorer()
+		var solved Repair
+		require.True(t, r.Solve(&solved, rows, make([]float64, x.g)))
+		spread := make([]float64, v)
+		r.Spread(spread, rows, &solved)
+		even := make([]float64, v)
+		for i := range even {
+			even[i] = 1
+		}
+		lost, err := r.Lost(rows, even)
+		require.NoError(t, err)
+		require.Equal(t, spread, lost.Spread)
+		variance := x.c.Design().ReadNoiseVariance()
+		growth, lit := 0.0, 0.0
+		for j := range v {
+			if slices.Contains(set.Columns, j) {
+				require.Zero(t, spread[j])
+				continue
+			}
+			plain := 0.0 // of the rows at hand
+			for k := range v {
+				if !slices.Contains(rows, k) {
+					plain += inverseOf(x.c).At(j, k) * inverseOf(x.c).At(j, k)
+				}
+			}
+			require.InDelta(t, lost.Ratio[j]*plain, variance+spread[j], 5*variance/float64(v), "%s column %d", x.c.Family(), j)
+			growth, lit = growth+spread[j]/variance, lit+1
+		}
+		require.InDelta(t, lost.Growth, 1+growth/lit, 5/float64(v))
+	}
+}
+
+// TestSparseDark: a step of a sparse code opens few dark columns, g k/v of them in the mean.
+// With five the chosen set tells any two steps apart, with two or three some steps open
+// none and leave the same mark, which Correlation says.
+func TestSparseDark(t *testing.T) {
+	for _, x := range []struct {
+		v, g  int
+		tells bool
+	}{{73, 40, true}, {85, 20, true}, {121, 16, true}, {57, 16, false}, {73, 16, false}} {
+		c := mustCode(t, Singer, x.v)
+		set, err := ChooseDark(t.Context(), c, x.g, 1)
+		require.NoError(t, err)
+		t.Logf("singer %d: %d dark columns, correlation %.3f", x.v, x.g, set.Correlation)
+		require.Equal(t, x.tells, set.Correlation < 0.999, "%d of %d", x.g, x.v)
+	}
+}

@@ -15,13 +15,16 @@ import (
 
 type planOptions struct {
 	profile string
-	list    bool
-	dryRun  bool
-	output  outputOptions
+	// registration is a file that reduce wrote.
+	registration string
+	list         bool
+	dryRun       bool
+	output       outputOptions
 }
 
 func (o *planOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.profile, "profile", "", "instrument profile: a YAML file, or the name of a built-in one")
+	f.StringVar(&o.registration, "registration", "", "registration.yaml of a run on listed stars: the field lies where it says")
 	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
 	f.BoolVar(&o.dryRun, "dry-run", false, "plan and print, write no sequence")
 	o.output.addFlags(f, "sequence")
@@ -79,16 +82,20 @@ func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
 	case o.output.dir != "" && o.dryRun:
 		return usageError{errors.New("--dry-run writes nothing and -o says where; leave one of the two out")}
 	}
+	inputs := []string{target, o.profile}
+	if o.registration != "" {
+		inputs = append(inputs, o.registration)
+	}
 	var summary *plan.Summary
 	run := func(dir string) (err error) {
-		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Out: dir})
+		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Registration: o.registration, Out: dir})
 		return err
 	}
 	var err error
 	if o.dryRun {
 		err = run("")
 	} else {
-		err = o.output.write(ctx, run, target, o.profile)
+		err = o.output.write(ctx, run, inputs...)
 	}
 	if err != nil {
 		return err

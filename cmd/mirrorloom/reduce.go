@@ -87,7 +87,7 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 		opts.Out = dir
 		result, err = reduce.Run(ctx, opts)
 		return err
-	}, night, o.sequence, o.recipe, opts.Recipe.Arc.Use)
+	}, night, o.sequence, o.recipe, opts.Recipe.Arc.Use, opts.Recipe.Stars.Use)
 	if err != nil {
 		return err
 	}

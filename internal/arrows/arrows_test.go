@@ -36,6 +36,7 @@ var rules = []rule{
 	{"pipeline/audit", []string{"mirrorloom/pipeline/product", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "audit is below pair"},
 	{"pipeline/pair", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "pair is beside the others"},
 	{"pipeline/extract", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "extract reads cubes and is below report"},
+	{"pipeline/register", []string{"mirrorloom/hadamard", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "register is below plan and reduce"},
 	{"pipeline/combine", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "combine reads runs, however they were made"},
 	{"pipeline/report", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "report is below reduce"},
 	{"pipeline/reduce", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/demo"}, "reduce must not know what rehearse drew"},

@@ -29,15 +29,17 @@ type ForecastPlan struct {
 	Leak float64
 }
 
-// ForecastPlans are twelve: three families and the slit scan on both instruments, from
-// faint, where read noise rules, to bright.
+// ForecastPlans are twelve: three families, dense and sparse, and the slit scan on both
+// instruments, from faint, where read noise rules, to bright.
 func ForecastPlans() []ForecastPlan {
 	var plans []ForecastPlan
 	for _, on := range []struct {
-		name string
-		make func() (*Field, error)
-		leak float64
-	}{{"optical", Square, 1. / 4500}, {"infrared", Diagonal, 1. / 1150}} {
+		name    string
+		make    func() (*Field, error)
+		leak    float64
+		family  string // the third
+		v, dark int
+	}{{"optical", Square, 1. / 4500, "twin-prime", 35, 8}, {"infrared", Diagonal, 1. / 1150, "singer", 57, 10}} {
 		add := func(words, family string, v, dark, cycles int, dimmer float64, extinct bool, leak float64) {
 			name := fmt.Sprintf("%s, %s v = %d, %d dark, cycles %d, %s", on.name, family, v, dark, cycles, words)
 			plans = append(plans, ForecastPlan{on.make, name, family, v, dark, cycles, dimmer, extinct, leak})
@@ -45,7 +47,7 @@ func ForecastPlans() []ForecastPlan {
 		add("faint", "m-sequence", 63, 16, 1, 3, false, 0)
 		add("bright", "m-sequence", 63, 16, 1, -3, false, 0)
 		add("extinction", "legendre", 59, 12, 2, 0, true, 0)
-		add("bright", "twin-prime", 35, 8, 1, -1.5, false, 0)
+		add("bright", on.family, on.v, on.dark, 1, -1.5, false, 0)
 		add("leak", "slit-scan", 47, 0, 1, 0, false, on.leak)
 		add("bright", "slit-scan", 47, 0, 2, -3, false, 0)
 	}
@@ -254,9 +256,16 @@ func (j *Forecasted) Findings(name string) []Finding {
 	}
 }
 
+// Scaled is what the nights would say of forecasts whose sigma is scaled: a test of the test.
+func (j *Forecasted) Scaled(scale float64) *Forecasted {
+	k := *j
+	k.Voxels.square /= scale * scale
+	k.Sums.square /= scale * scale
+	return &k
+}
+
 // SumFindings judge the sums of all plans.
 func (j *Forecasted) SumFindings(name string) Finding {
 	n := j.Sums.N
 	return Near(fmt.Sprintf("%s: S/N of sums (forecast %.2g to %.2g), measured over forecast", name, j.SumSNR[0], j.SumSNR[1]), j.SumRatio(), 1, forecastFigure, 1/math.Sqrt(2*float64(n)), n)
 }
-

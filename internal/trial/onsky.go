@@ -11,7 +11,6 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
-	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
@@ -117,14 +116,18 @@ func WriteFluxTable(path string, s *rehearse.Source, firstNM, lastNM float64) er
 	return os.WriteFile(path, []byte(b.String()), 0o644)
 }
 
-// OnSkyRecipe is the nominal recipe with throughput and repairs, and with sky and flux.
-func OnSkyRecipe(sky reduce.SkyRecipe, flux reduce.FluxRecipe) (*reduce.Recipe, error) {
+// OnSkyRecipe is the nominal recipe with throughput and repairs, refraction taken
+// out where the scene has one, and with sky and flux.
+func (f *Field) OnSkyRecipe(sky reduce.SkyRecipe, flux reduce.FluxRecipe) (*reduce.Recipe, error) {
 	r, err := reduce.LoadRecipe("nominal")
 	if err != nil {
 		return nil, err
 	}
 	r.Throughput.Use, r.Repair.Use = "auto", "auto"
 	r.Sky, r.Flux = sky, flux
+	if f.Scene.Atmosphere.Refraction {
+		r.Grid.Refraction = "auto"
+	}
 	return r, nil
 }
 
@@ -147,11 +150,10 @@ func (f *Field) StarNight(ctx context.Context, dir string, mag, airmass float64,
 	if err := n.Rehearse(ctx, "star", rehearse.Options{Seed: seed, NoTruth: true}); err != nil {
 		return none, err
 	}
-	recipe, err := OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, none)
+	recipe, err := f.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, none)
 	if err != nil {
 		return none, err
 	}
-	recipe.Grid = f.airGrid()
 	result, err := n.Reduce(ctx, "star", reduce.Options{Cube: true, Recipe: recipe})
 	if err != nil {
 		return none, err
@@ -163,24 +165,10 @@ func (f *Field) StarNight(ctx context.Context, dir string, mag, airmass float64,
 	return reduce.FluxRecipe{Use: n.CubePath("star"), Star: table}, WriteFluxTable(table, &g.Scene.Sources[0], 350, 950)
 }
 
-// airGrid is the recipe's grid: the profile's.
-func (f *Field) airGrid() reduce.GridRecipe {
-	return reduce.GridRecipe{Use: "auto"}
-}
-
 // FluxTruth turns a truth in electrons, less its sky, into flux: what the instrument and
 // the air did to it is known. Voxels where neither lets light through are NaN.
 func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
-	truth, err := c.ReadTruth(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	file, err := fitsutil.Open(n.TruthPath(name))
-	if err != nil {
-		return nil, err
-	}
-	defer file.Close() // only read from
-	sky, _, err := readImage(file, product.Sky)
+	truth, err := n.SkylessTruth(c, name)
 	if err != nil {
 		return nil, err
 	}
@@ -199,7 +187,7 @@ func (n *Night) FluxTruth(c *Cube, name string) ([]float32, error) {
 		}
 		plane := c.N * c.Rows
 		for i := l * plane; i < (l+1)*plane; i++ {
-			truth[i] = float32(float64(truth[i]-sky[i]) / per)
+			truth[i] = float32(float64(truth[i]) / per)
 		}
 	}
 	return truth, nil

@@ -11,7 +11,7 @@ import (
 func forecasts() check {
 	return check{
 		name: "Forecast S/N against rehearsed nights",
-		about: `Twelve plans of the small fields of both profiles: three families and the slit scan, faint
+		about: `Twelve plans of the small fields of both profiles: four families and the slit scan, faint
 to bright, two with extinction, two with leaking mirrors. Twenty nights of each, rehearsed
 and reduced; every voxel less the truth is divided by the standard deviation that the
 forecast gave it beforehand, and so are sums: lines of the nebula at places of its rim, and
@@ -26,12 +26,13 @@ light over the truth's.`,
 				if err != nil {
 					return all, err
 				}
-				found := append(l.Findings(p.Name+", line"), b.Findings(p.Name+", band")...)
-				all = append(all, found...)
+				all = append(append(all, l.Findings(p.Name+", line")...), b.Findings(p.Name+", band")...)
 				lines.Merge(l)
 				bands.Merge(b)
 			}
-			return append(all, lines.SumFindings("all plans, line"), bands.SumFindings("all plans, band")), nil
+			short := lines.Scaled(0.94)
+			return append(all, lines.SumFindings("all plans, line"), bands.SumFindings("all plans, band"),
+				trial.MustFail("the same, the forecast's sigma scaled by 0.94", append(short.Findings("line")[:1], short.SumFindings("line")))), nil
 		},
 	}
 }

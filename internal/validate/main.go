@@ -56,9 +56,12 @@ func checks() []check {
 		readNoiseGain(),
 		cosmicSingle(),
 		falseAlarms(),
-		audits(),
+		audits(63, 16, 3),
+		audits(255, 32, 10),
 		flips(),
 		combined(),
+		skySubtraction(),
+		onSky(),
 	}
 }
 

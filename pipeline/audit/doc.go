@@ -33,6 +33,10 @@
 // Where errors of the model (seeing, guiding) leave an excess in all frames, odds are
 // weakened by it and a move must gain many times what is common.
 //
+// What noise gives must be right to a percent where frames are faint: dark current and
+// the bias level of a row have a part in it, and hits are kept out of the frames without
+// light that are taken off.
+//
 // Cosmic rays are left out twice: readings far above their pixel's series (strike), and
 // those that contradict the checks of the pairing found where their frame does not
 // elsewhere (clean); then the cycle is judged again, and rows that the sample grows by are

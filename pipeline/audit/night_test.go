@@ -71,6 +71,24 @@ func TestAuditFindsFaults(t *testing.T) {
 	}
 }
 
+// On a faint night a hit in a dark frame would take light, and the noise that belongs to
+// it, from all frames, and hide what is wrong with them.
+func TestAuditOfFaintNights(t *testing.T) {
+	field, err := trial.Square()
+	require.NoError(t, err)
+	field.Dim(2.5)
+	n, err := field.Plan(t.Context(), t.TempDir())
+	require.NoError(t, err)
+	require.NoError(t, n.Rehearse(t.Context(), "faint", rehearse.Options{Seed: 6, NoTruth: true, Faults: faults(t, "drift=0.05", "cosmic=2", "mislabel=2", "invert=1")}))
+	got, err := n.Audit(t.Context(), "faint", pair.Options{})
+	require.NoError(t, err)
+	require.Len(t, got.Wrong, 3)
+	require.Empty(t, got.Missed)
+	require.Empty(t, got.Mistaken)
+	require.Empty(t, got.False)
+	require.InDelta(t, 1, got.Night.Audit.Cycles[0].Chi2, 0.01)
+}
+
 // Masks that are all inverted leave the dark columns dark, but turn the light.
 func TestAuditNamesInvertedNights(t *testing.T) {
 	n := plan(t)

@@ -197,7 +197,7 @@ func (a *audit) cycle(ctx context.Context, number int, frames []Frame) (_ *Cycle
 	if missing := a.seq.V - len(frames); missing > len(a.seq.DarkColumns())/2 {
 		return nil, nil
 	}
-	s := &sampler{camera: a.camera, workers: a.opts.Workers, rows: candidateRows(a.seq)}
+	s := &sampler{camera: a.camera, workers: a.opts.Workers, rows: candidateRows(a.seq), offsets: levelVariances(a.camera)}
 	if s.album, err = open(frames, a.opts.ScratchDir); err != nil {
 		return nil, err
 	}

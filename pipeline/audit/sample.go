@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"math/bits"
+	"slices"
 
 	"mirrorloom/calib"
 	"mirrorloom/hadamard"
@@ -25,12 +26,15 @@ type sampler struct {
 	// pedestals are frames without light; their mean is taken off, so that throughput
 	// has no bias or dark current to act on.
 	pedestals *exposure.Album
-	rows      []int // candidates, in the order in which samples take them
-	used      int
-	gram      *hadamard.Gram
-	parts     []*hadamard.Gram // of every fourth row
-	data      []*rowData       // of the rows used
-	level     []float64        // of each frame: sum of y/s
+	// offsets is, by detector row and column, the variance of the bias level that a
+	// sample's pixels have in common.
+	offsets [][]float64
+	rows    []int // candidates, in the order in which samples take them
+	used    int
+	gram    *hadamard.Gram
+	parts   []*hadamard.Gram // of every fourth row
+	data    []*rowData       // of the rows used
+	level   []float64        // of each frame: sum of y/s
 }
 
 // candidateRows are the detector rows that coded mirror rows feed and sentinels do not
@@ -137,7 +141,8 @@ func (s *sampler) release() error {
 
 type rowScratch struct {
 	read      exposure.Scratch
-	row, dark []float32
+	dark      []float32
+	pedestals []float32 // [frame][column]
 	flags     []calib.Flag
 	all       []float32 // [frame][column]
 	spoilt    []bool    // by column
@@ -148,8 +153,11 @@ type rowScratch struct {
 // row takes the samples of a detector row of all frames.
 func (s *sampler) row(y int, w *rowScratch) (*rowData, error) {
 	columns, frames := s.camera.Columns, len(s.album.Frames)
-	if w.row == nil {
-		w.row, w.dark, w.flags = make([]float32, columns), make([]float32, columns), make([]calib.Flag, columns)
+	if w.dark == nil {
+		w.dark, w.flags = make([]float32, columns), make([]calib.Flag, columns)
+		if s.pedestals != nil {
+			w.pedestals = make([]float32, len(s.pedestals.Frames)*columns)
+		}
 		w.all, w.spoilt = make([]float32, frames*columns), make([]bool, columns)
 		w.series = make([]float32, frames)
 		w.y, w.s2 = make([]float32, frames*(columns/binned)), make([]float32, frames*(columns/binned))
@@ -167,14 +175,12 @@ func (s *sampler) row(y int, w *rowScratch) (*rowData, error) {
 		return err
 	}
 	if s.pedestals != nil {
-		for _, f := range s.pedestals.Frames {
-			if err := read(f, w.row); err != nil {
+		for i, f := range s.pedestals.Frames {
+			if err := read(f, w.pedestals[i*columns:(i+1)*columns]); err != nil {
 				return nil, err
 			}
-			for x, v := range w.row {
-				w.dark[x] += v / float32(len(s.pedestals.Frames))
-			}
 		}
+		s.pedestal(w, y)
 	}
 	for m, f := range s.album.Frames {
 		if err := read(f, w.all[m*columns:(m+1)*columns]); err != nil {
@@ -183,6 +189,32 @@ func (s *sampler) row(y int, w *rowScratch) (*rowData, error) {
 	}
 	s.strike(w, y)
 	return s.bin(w, y), nil
+}
+
+// pedestal averages each pixel's readings without light, but for those that are a cosmic
+// ray's. One left in would take light away from all frames of the night, and their noise
+// with it.
+func (s *sampler) pedestal(w *rowScratch, y int) {
+	columns, frames := s.camera.Columns, len(s.pedestals.Frames)
+	series := make([]float32, frames)
+	for x := range columns {
+		for m := range frames {
+			series[m] = w.pedestals[m*columns+x]
+		}
+		middle := nth(series, (frames-1)/2)
+		limit := middle + float32(strikeSigmas*math.Sqrt2*math.Sqrt(s.camera.Variance[y][x]+max(0, float64(middle))))
+		kept := 0
+		for m := range frames {
+			if v := w.pedestals[m*columns+x]; !(v > limit) {
+				kept++
+			}
+		}
+		for m := range frames {
+			if v := w.pedestals[m*columns+x]; !(v > limit) {
+				w.dark[x] += v / float32(kept)
+			}
+		}
+	}
 }
 
 // A reading is a cosmic ray's if it lies so many times the quartiles' distance, and of
@@ -255,20 +287,65 @@ func (w *rowScratch) neighbours(m, x, columns int) float32 {
 	return (row[x-beside] - w.dark[x-beside] + row[x+beside] - w.dark[x+beside]) / 2
 }
 
+// levelVariances are those of the bias levels, by detector row and column; rows of the
+// same amplifiers share theirs.
+func levelVariances(c *exposure.Camera) [][]float64 {
+	of := c.AmplifierOf()
+	all := make([][]float64, c.Rows)
+	for y, amplifiers := range of {
+		if y > 0 && slices.Equal(amplifiers, of[y-1]) {
+			all[y] = all[y-1]
+			continue
+		}
+		all[y] = make([]float64, c.Columns)
+		for x, a := range amplifiers {
+			all[y][x], _ = c.Amplifiers[a].LevelVariance()
+		}
+	}
+	return all
+}
+
+// glow is the dark current of each pixel, whose noise is in every frame: its pedestal
+// where that stands out, else the mean of the others, since a noisy variance would make
+// chi-square too large.
+func (s *sampler) glow(w *rowScratch, y int) []float64 {
+	out := make([]float64, len(w.dark))
+	if s.pedestals == nil {
+		return out
+	}
+	frames := float64(len(s.pedestals.Frames))
+	mean, n := 0.0, 0.0
+	for x, v := range w.dark {
+		if float64(v) > strikeSigmas*math.Sqrt(s.camera.Variance[y][x]/frames) {
+			out[x] = float64(v)
+			continue
+		}
+		mean, n = mean+float64(v), n+1
+	}
+	for x, v := range out {
+		if v == 0 && n > 0 {
+			out[x] = max(0, mean/n)
+		}
+	}
+	return out
+}
+
 // bin adds up the row's good pixels by threes.
 func (s *sampler) bin(w *rowScratch, y int) *rowData {
 	columns, frames := s.camera.Columns, len(s.album.Frames)
 	stride := columns / binned
 	quiet := s.camera.Variance[y]
 	photon := 1 + s.camera.PhotonExcess
+	glow := s.glow(w, y)
 	n := 0
 	var floor float64
 	for x := 0; x+binned <= columns; x += binned {
 		good := true
-		dark := 0.0
+		dark := s.offsets[y][x+binned/2] * binned * binned
 		for i := range binned {
 			good = good && !w.spoilt[x+i]
 			dark += quiet[x+i]
+			dark += photon * glow[x+i]
 		}
 		if !good {
 			continue

@@ -46,14 +46,17 @@ func (p *propagator) gather(w *part, y int, traces []*traceRow) bool {
 	w.values = w.values[:size]
 	clear(w.values)
 	for _, t := range traces {
-		rows := make([]float64, w.n)
-		for x := range rows {
-			first, weights := p.c.shift.Weights(t.y0, w.x0+x)
-			if k := y - first; k >= 0 && k < len(weights) {
-				rows[x] = float64(weights[k])
-			}
-		}
+		bySlot := map[int][]float64{}
 		p.visit(w, []*traceRow{t}, func(slot, l, from int, weights []float32) {
+			of := slot
+			if t.gathers == nil {
+				of = 0 // all slots alike
+			}
+			rows := bySlot[of]
+			if rows == nil {
+				rows = p.rowWeights(w, t, y, slot)
+				bySlot[of] = rows
+			}
 			for k, v := range weights {
 				at := slot*w.n + from + k
 				w.values[w.at[at]+int32(l)-w.lo[at]] += rows[from+k] * float64(v)
@@ -63,13 +66,32 @@ func (p *propagator) gather(w *part, y int, traces []*traceRow) bool {
 	return true
 }
 
+// rowWeights are the weights of detector row y in trace t of an element, by column of the
+// block.
+func (p *propagator) rowWeights(w *part, t *traceRow, y, slot int) []float64 {
+	rows := make([]float64, w.n)
+	from, to, at := 0, w.n, func(x int) (int, []float32) { return p.c.shift.Weights(t.y0, x) }
+	if t.gathers != nil {
+		g := t.gathers[slot]
+		low, high := g.Columns()
+		from, to, at = max(0, low-w.x0), min(w.n, high-w.x0), g.Weights
+	}
+	for x := from; x < to; x++ {
+		first, weights := at(w.x0 + x)
+		if k := y - first; k >= 0 && k < len(weights) {
+			rows[x] = float64(weights[k])
+		}
+	}
+	return rows
+}
+
 // visit calls f with the weights of every voxel that reaches the block, from column
 // from of the block on.
 func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int, weights []float32)) {
 	channels := p.c.Grid.Count
 	for _, t := range traces {
-		for i := t.from; i < t.to; i++ {
-			reach := t.reach[i-t.from][w.x0/blockPixels]
+		for i := range t.sources {
+			reach := t.reach[i][w.x0/blockPixels]
 			for l := int(reach[0]); l < int(reach[1]); l++ {
 				first, weights := t.voxel(i, l, channels)
 				from := first - w.x0
@@ -79,7 +101,7 @@ func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int
 				if from < 0 {
 					weights, from = weights[-from:], 0
 				}
-				f(p.a.slot[i], l, from, weights[:min(len(weights), w.n-from)])
+				f(t.sources[i].slot, l, from, weights[:min(len(weights), w.n-from)])
 			}
 		}
 	}
@@ -87,7 +109,7 @@ func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int
 
 // touched tells whether any weight lies on pixel x of the block.
 func (p *propagator) touched(w *part, x int) bool {
-	for slot := range p.a.elements {
+	for slot := range p.elements {
 		if at := slot*w.n + x; w.hi[at] > w.lo[at] {
 			return true
 		}
@@ -112,19 +134,23 @@ func (p *propagator) pixel(w *part, x int, light [][]float32, pixels *pixelRow) 
 		if p.c.noise.Uniform {
 			return w.b.own[x]
 		}
-		return float64(pixels.of(slot)[w.x0+x]) - common
+		own := float64(pixels.of(slot)[w.x0+x]) - common
+		if pixels.shared != nil {
+			own -= float64(pixels.shared[slot][w.x0+x])
+		}
+		return own
 	})
-	for j := range p.a.elements {
+	for j := range p.elements {
 		lo, g := w.weights(j, x)
 		if g == nil {
 			continue
 		}
 		row := w.row[:len(g)+Lags]
 		clear(row)
-		for other := range p.a.elements {
+		for other := range p.elements {
 			low, h := w.weights(other, x)
 			c := w.pairs[j][other] + common
-			c += p.c.noise.ResponseVariance * float64(light[p.a.elements[j]][w.x0+x]) * float64(light[p.a.elements[other]][w.x0+x])
+			c += p.c.noise.ResponseVariance * float64(light[p.elements[j]][w.x0+x]) * float64(light[p.elements[other]][w.x0+x])
 			from, to := max(lo, low), min(lo+len(row), low+len(h))
 			for l := from; l < to; l++ {
 				row[l-lo] += c * h[l-low]
@@ -146,7 +172,7 @@ func (p *propagator) pixel(w *part, x int, light [][]float32, pixels *pixelRow) 
 func (p *propagator) pixelThroughput(w *part, x int) {
 	code := p.c.decoder.Code()
 	open, closed := code.InverseEntries()
-	for slot, j := range p.a.elements {
+	for slot, j := range p.elements {
 		lo, g := w.weights(slot, x)
 		for k := range p.c.noise.V {
 			if p.c.noise.ThroughputErr[k] == 0 || g == nil {
@@ -176,7 +202,7 @@ func (p *propagator) addSums(w *part, light [][]float32, pixels *pixelRow) {
 	for s, sum := range p.sums {
 		clear(w.sumWeights)
 		total, ofResponse := make([]float64, w.n), make([]float64, w.n)
-		for slot, j := range p.a.elements {
+		for slot, j := range p.elements {
 			for x := range w.n {
 				lo, g := w.weights(slot, x)
 				all := 0.0

@@ -17,6 +17,9 @@ import (
 // ErrGrid marks a cube whose world coordinates are not as reduce writes them.
 var ErrGrid = errors.New("extract cannot place its voxels on the detector")
 
+// ErrCombined marks a cube of several runs, which does not carry the errors of sums.
+var ErrCombined = errors.New("its voxels' own errors are in VARIANCE, but what they share is not carried by a combined cube, so that sums would have wrong errors; extract from each run and take the mean, weighted by the errors that come out")
+
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
 type Cube struct {
@@ -33,6 +36,7 @@ type Cube struct {
 	pixelVariance              *fitsutil.Image
 	slitResponse, bandResponse *fitsutil.Image // nil without a response
 	sky                        *sky
+	onSky                      *onSky
 	geometry                   calib.Geometry
 	noise                      *product.Noise
 	erased                     *erasures // nil where no sample was restored
@@ -41,6 +45,7 @@ type Cube struct {
 	weight                     []float64 // 1/frames of each code row
 	sumWeight                  float64
 	shift                      *calib.RowShift
+	field                      *calib.ShiftField // nil where light is taken from its own place
 	resampler                  *calib.Resampler
 	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
 }
@@ -112,6 +117,15 @@ func (c *Cube) read() (err error) {
 	if err := c.readGrid(); err != nil {
 		return err
 	}
+	if err := c.readOnSky(); err != nil {
+		return err
+	}
+	if made, err := product.ReadMembers(c.file); err != nil || made != nil {
+		if err == nil {
+			err = fmt.Errorf("%s is made of %d runs: %w", c.Path(), len(made), ErrCombined)
+		}
+		return err
+	}
 	if c.noise, err = product.ReadNoise(c.file); err != nil {
 		return err
 	}
@@ -142,11 +156,6 @@ func (c *Cube) readGrid() error {
 		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
 	c.Grid, c.Frame = s.Grid, s.Frame
-	for _, u := range c.file.HDUs() {
-		if u.Name == product.Shift {
-			return fmt.Errorf("%s: the place of its light depends on the wavelength (table %s), which errors of sums do not know yet: %w", c.Path(), product.Shift, ErrGrid)
-		}
-	}
 	axis := c.axis()
 	c.edges, c.centres = c.edgesOf(0, axis.Grid.Count), calib.NewWavelengths(axis.ObservedNM, axis.EvenStepNM(), 0, axis.Grid.Count)
 	return nil
@@ -241,6 +250,9 @@ func (c *Cube) readGeometry() error {
 	if c.shift, err = calib.NewRowShift(shift, c.Rows); err != nil {
 		return err
 	}
+	if err := c.readShift(shift); err != nil {
+		return err
+	}
 	c.resampler, err = calib.NewResampler(0, c.noise.Columns-1)
 	return err
 }
@@ -253,14 +265,6 @@ func (c *Cube) identify() string {
 		}
 	}
 	return fmt.Sprintf("%x", sum.Sum(nil))
-}
-
-// response of an element, row and wavelength; slit is the row's of SLITRESP.
-func (c *Cube) response(slit []float32, element, voxel int) float64 {
-	if slit == nil {
-		return 1
-	}
-	return float64(slit[element]) * float64(c.bandFactor[voxel*c.Elements+element])
 }
 
 // slitRow reads a row of SLITRESP, factor or variance; nil without a response.

@@ -33,5 +33,5 @@
 // Each voxel's weight is scaled so that its own variance is VARIANCE, which therefore
 // may have been scaled by a measured error scale or a flux calibration. (Where the
 // throughput has errors it is a little more: reduce takes them for independent in the
-// pixels of a voxel as well.) Samples that were restored are taken for read ones.
+// pixels of a voxel as well.) Of samples that were restored see erasure.
 package extract

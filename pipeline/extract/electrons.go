@@ -15,8 +15,8 @@ const sampledCells = 9
 // median of some cells. nil for a cube in electrons.
 func (p *propagator) electrons() ([]float64, error) {
 	c := p.c
-	if c.Unit == product.UnitSignal {
-		return nil, nil
+	if c.Unit == product.UnitSignal || c.onSky != nil && c.onSky.flux != nil {
+		return nil, nil // the light reader knows the factor
 	}
 	if !c.noise.Uniform {
 		return nil, c.fault("a cube of a %s in %s does not tell the electrons behind it", c.noise.Family, c.Unit)

@@ -46,5 +46,9 @@ var changes = map[string]func(*trial.Field, *reduce.Recipe){
 		r.Grid.FirstNM, r.Grid.StepNM, r.Grid.Count = g.FirstNM-0.1, g.StepNM, g.Count
 		r.Grid.Axis, r.Grid.Spacing = instrument.Air, instrument.Logarithmic
 	},
+	// A guider at 380 nm is off by half an arc second and more.
+	"refraction": func(_ *trial.Field, r *reduce.Recipe) {
+		r.Grid.Refraction, r.Grid.GuideNM = "auto", 380
+	},
 	"barycentric": func(_ *trial.Field, r *reduce.Recipe) { r.Grid.Frame = "barycentric" },
 }

@@ -56,7 +56,7 @@ func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Ima
 			for j := range c.Elements {
 				s := v.spectrum((y-y0)*c.Elements + j)
 				noise.setElement(j, from, to)
-				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], widths, noise, c.sharedBy(slit, j, from))
+				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], widths, noise, c.sharedBy(slit, j, y, from))
 			}
 		}
 		progress(y1)
@@ -128,12 +128,19 @@ func (im *Image) set(i int, s spectrumVoxels, weights, inside, widths []float64,
 type responseNoise struct {
 	pixel, slit float64
 	band        func(l int) float64
+	shares      func(l int) (elements, rows float64) // see Cube.shares
+	flux        func(l int) float64                  // of the factor from counts to flux
 }
 
 // sharedBy gives those of element j, whose channels begin at from; slit is the row's
 // of SLITRESP.
-func (c *Cube) sharedBy(slit []float32, j, from int) responseNoise {
-	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 { return c.bandVarianceAt(j, from+l) }}
+func (c *Cube) sharedBy(slit []float32, j, y, from int) responseNoise {
+	r := responseNoise{pixel: c.noise.ResponseVariance, band: func(l int) float64 { return c.bandVarianceAt(j, from+l) },
+		shares: func(l int) (float64, float64) { return c.shares(cell{element: j, row: y}, from+l) },
+		flux: func(l int) float64 {
+			_, relative := c.onSky.factor(from + l)
+			return relative
+		}}
 	if slit != nil {
 		r.slit = float64(slit[j])
 	}
@@ -141,19 +148,21 @@ func (c *Cube) sharedBy(slit []float32, j, from int) responseNoise {
 }
 
 // variance of a sum over channels by the responses: that of the slit is common to
-// all channels, that of the efficiency is taken for it.
+// all channels, those of the efficiency and of the flux are taken for it.
 func (r responseNoise) variance(weights []float64, s spectrumVoxels) float64 {
-	var all, band, pixels float64
+	var all, band, pixels, flux float64
 	for l, w := range weights {
 		if w == 0 {
 			continue
 		}
 		v := w * float64(s.signal[l])
-		all += v
-		band += v * math.Sqrt(r.band(l))
-		pixels += v * v
+		elements, rows := r.shares(l)
+		all += v * math.Sqrt(elements*rows)
+		band += v * math.Sqrt(elements*r.band(l))
+		pixels += v * v * elements
+		flux += v * math.Sqrt(max(0, r.flux(l)))
 	}
-	return r.slit*all*all + band*band + r.pixel*pixels
+	return r.slit*all*all + band*band + r.pixel*pixels + flux*flux
 }
 
 // onPixels turns weights of channels into such that give each channel the part of
@@ -173,24 +182,19 @@ func (r responseNoise) onPixels(weights []float64, s spectrumVoxels, noise *spec
 // rest is VARIANCE without what the responses add.
 func (r responseNoise) rest(s spectrumVoxels, l int) float64 {
 	v := float64(s.signal[l])
-	return float64(s.variance[l]) - v*v*(r.pixel+r.slit+r.band(l))
+	elements, rows := r.shares(l)
+	return float64(s.variance[l]) - v*v*(r.flux(l)+elements*(r.pixel+rows*r.slit+r.band(l)))
 }
 
 // variance of a sum over channels with the given weights.
 func (s *spectrumNoise) variance(weights []float64) float64 {
-	first, last := math.MaxInt, 0
-	for l := range weights {
-		first, last = min(first, int(s.first[l])), max(last, int(s.first[l]+s.start[l+1]-s.start[l]))
-	}
-	onPixels := make([]float64, max(0, last-first))
-	for l, weight := range weights {
-		for k, w := range s.w[s.start[l]:s.start[l+1]] {
-			onPixels[int(s.first[l])+k-first] += weight * float64(w)
-		}
-	}
 	sum := 0.0
-	for x, w := range onPixels {
-		sum += w * w * float64(s.straight[first+x])
+	own := make([]float64, len(weights))
+	for _, p := range s.parts {
+		for l, w := range weights {
+			own[l] = w * p.at(l)
+		}
+		sum += p.sumVariance(own)
 	}
 	return sum
 }

@@ -10,7 +10,9 @@ type lightReader struct {
 	c *Cube
 	// electrons turns the cube's unit into detected electrons, [wavelength]; nil for 1.
 	electrons []float64
-	chunk     []float32 // [wavelength][row][element] of rows chunkRow...
+	// chunk holds rows chunkRow... of each plane, [wavelength][row][element]; of a shifted
+	// field two rows more, and each plane's from where its light of chunkRow went.
+	chunk     []float32
 	chunkRow  int
 	chunkRows int
 	traces    map[int][][]float32 // by trace row: [element][column]
@@ -76,7 +78,7 @@ func (r *lightReader) trace(y0 int) error {
 		return err
 	}
 	c := r.c
-	slit, err := c.slitRow(0, y0)
+	slit, err := c.slitRows(y0)
 	if err != nil {
 		return err
 	}
@@ -84,11 +86,11 @@ func (r *lightReader) trace(y0 int) error {
 	values, places := make([]float64, c.Grid.Count), make([]float64, c.Grid.Count)
 	for j := range light {
 		for l := range values {
-			v := float64(r.chunk[(l*r.chunkRows+y0-r.chunkRow)*c.Elements+j])
+			v := r.voxel(j, y0, l)
 			if r.electrons != nil {
 				v *= r.electrons[l]
 			}
-			values[l] = v * c.response(slit, j, l)
+			values[l] = v * c.responseOf(slit, j, l)
 			if math.IsNaN(values[l]) {
 				values[l] = 0 // no data: as good as no light
 			}
@@ -134,20 +136,69 @@ func spread(dst []float32, values, places []float64) {
 	}
 }
 
+// voxel is the cube's light of element j and trace row y0: that of its own voxel, or, of a
+// shifted field, what lies where the shift took it, by straight lines between voxels.
+// Beyond the cube's ends the last voxel's light is taken to go on.
+func (r *lightReader) voxel(j, y0, l int) float64 {
+	c := r.c
+	if c.field == nil {
+		return float64(r.chunk[(l*r.chunkRows+y0-r.chunkRow)*c.Elements+j])
+	}
+	elements, rows := c.field.Shift(l)
+	x := min(max(float64(j)-elements, 0), float64(c.Elements-1))
+	y := min(max(float64(y0)-rows, 0), float64(c.Rows-1))
+	base, n := r.planeRow(l), r.chunkRows+shiftedRows
+	x0, at := min(int(x), c.Elements-2), min(max(int(y)-base, 0), n-2)
+	y -= float64(base + at)
+	x -= float64(x0)
+	sum, weight := 0.0, 0.0
+	for _, corner := range [][3]float64{{0, 0, (1 - x) * (1 - y)}, {1, 0, x * (1 - y)}, {0, 1, (1 - x) * y}, {1, 1, x * y}} {
+		v := float64(r.chunk[(l*n+at+int(corner[1]))*c.Elements+x0+int(corner[0])])
+		if v == v && corner[2] > 0 {
+			sum += corner[2] * v
+			weight += corner[2]
+		}
+	}
+	if weight == 0 {
+		return math.NaN()
+	}
+	return sum / weight
+}
+
+// shiftedRows more are needed of a plane whose rows are shifted by no whole number.
+const shiftedRows = 2
+
+// planeRow is the row of the cube with which the chunk of a plane begins.
+func (r *lightReader) planeRow(l int) int {
+	if r.c.field == nil {
+		return r.chunkRow
+	}
+	_, rows := r.c.field.Shift(l)
+	return min(max(r.chunkRow+int(math.Floor(-rows)), 0), max(0, r.c.Rows-r.chunkRows-shiftedRows))
+}
+
 // load reads the chunk of rows from y0 on.
 func (r *lightReader) load(y0 int) error {
 	c := r.c
 	if r.chunkRow >= 0 && y0 >= r.chunkRow && y0 < r.chunkRow+r.chunkRows {
 		return nil
 	}
-	r.chunkRows = min(r.chunkRows, c.Rows)
+	more := 0
+	if c.field != nil {
+		more = shiftedRows
+	}
+	r.chunkRows = min(r.chunkRows, c.Rows-more)
 	r.chunkRow = min(y0, c.Rows-r.chunkRows)
-	n := r.chunkRows * c.Elements
+	n := (r.chunkRows + more) * c.Elements
 	if r.chunk == nil {
 		r.chunk = make([]float32, n*c.Grid.Count)
 	}
 	for l := range c.Grid.Count {
-		if err := c.signal.ReadPlaneRows(r.chunk[l*n:(l+1)*n], l, r.chunkRow, r.chunkRow+r.chunkRows); err != nil {
+		from := r.planeRow(l)
+		if err := c.signal.ReadPlaneRows(r.chunk[l*n:(l+1)*n], l, from, from+r.chunkRows+more); err != nil {
+			return err
+		}
+		if err := c.onSky.inCounts(r.chunk[l*n:(l+1)*n], l, from, c.Elements); err != nil {
 			return err
 		}
 	}

@@ -146,8 +146,8 @@ func (c *Cube) fitRow(ctx context.Context, m *LineMap, model *lineModel, noise *
 		noise.setElement(j, from, to)
 		noise.covariance(covariance, variance)
 		f := model.fit(values, variance, covariance)
-		shared := c.sharedBy(slit, j, from)
-		m.Lines[at] = model.lines(&f, shared.slit+shared.band((to-from)/2))
+		shared := c.sharedBy(slit, j, y, from)
+		m.Lines[at] = model.lines(&f, shared.slit+shared.band((to-from)/2)+shared.flux((to-from)/2))
 		m.Status[at], m.Chi2[at] = f.status, float32(f.chi2)
 		if f.covariance == nil {
 			m.Chi2[at] = float32(math.NaN())

@@ -6,6 +6,8 @@ import (
 	"runtime"
 	"sync"
 	"sync/atomic"
+
+	"mirrorloom/calib"
 )
 
 // Lags is the number of neighbouring channels, on each side, with which a channel's
@@ -29,6 +31,10 @@ type propagator struct {
 	// sumsOnly leaves the covariances of channels out.
 	sumsOnly bool
 	light    *lightReader
+	// elements are those whose light the aperture's voxels are made of, slot the place of
+	// each among them.
+	elements []int
+	slot     map[int]int
 	// rowAt is the first cell of each row, from a.firstRow on, one more than rows.
 	rowAt  []int
 	pixels map[int]*pixelRow
@@ -73,8 +79,24 @@ func (c *Cube) variancesOf(ctx context.Context, a *aperture, sums [][]float64) (
 	return v.sums, nil
 }
 
+func (c *Cube) newPropagator(a *aperture) *propagator {
+	p := &propagator{c: c, a: a, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, slot: map[int]int{}}
+	for _, j := range a.elements {
+		first, last := c.sourcesOf(j)
+		for s := first; s <= last; s++ {
+			if _, known := p.slot[s]; !known {
+				p.slot[s] = len(p.elements)
+				p.elements = append(p.elements, s)
+			}
+		}
+	}
+	p.fork = c.newCoupling(p.elements)
+	return p
+}
+
 func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnly bool) (*covariances, error) {
-	p := &propagator{c: c, a: a, sums: sums, sumsOnly: sumsOnly, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, fork: c.newCoupling(a.elements)}
+	p := c.newPropagator(a)
+	p.sums, p.sumsOnly = sums, sumsOnly
 	p.rowAt = rowStarts(a)
 	electrons, err := p.electrons()
 	if err != nil {
@@ -87,7 +109,7 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 	first, last := c.Rows, -1
 	for y0 := a.firstRow; y0 < a.endRow; y0++ {
 		if p.rowAt[y0-a.firstRow] < p.rowAt[y0-a.firstRow+1] {
-			f, l := c.shift.Span(y0)
+			f, l := c.span(y0)
 			first, last = min(first, f), max(last, l)
 		}
 	}
@@ -99,7 +121,7 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 			return nil, err
 		}
 	}
-	return p.result(), nil
+	return p.result()
 }
 
 // rowStarts are the places of each row's first cell, from a.firstRow on.
@@ -121,8 +143,8 @@ func (p *propagator) newPart(x0 int) *part {
 	w.channels = table[float64](channels, Lags+1)
 	w.sums = make([]float64, len(p.sums))
 	w.b.x0, w.b.n = x0, w.n
-	w.pairs = table[float64](len(p.a.elements), len(p.a.elements))
-	m := len(p.a.elements) * w.n
+	w.pairs = table[float64](len(p.elements), len(p.elements))
+	m := len(p.elements) * w.n
 	w.lo, w.hi, w.at = make([]int32, m), make([]int32, m), make([]int32, m)
 	w.row, w.column = make([]float64, channels+Lags+1), make([]float64, c.noise.V)
 	if p.hasThroughput() {
@@ -176,7 +198,7 @@ func (p *propagator) tracesOf(y int) ([]*traceRow, error) {
 	var all []*traceRow
 	for y0 := p.a.firstRow; y0 < p.a.endRow; y0++ {
 		from, to := p.rowAt[y0-p.a.firstRow], p.rowAt[y0-p.a.firstRow+1]
-		first, last := p.c.shift.Span(y0)
+		first, last := p.c.span(y0)
 		if last < y {
 			delete(p.traces, y0)
 		}
@@ -201,7 +223,8 @@ func (p *propagator) tracesOf(y int) ([]*traceRow, error) {
 }
 
 func (p *propagator) newTrace(y0, from, to int) (*traceRow, error) {
-	first, last := p.c.shift.Span(y0)
+	c := p.c
+	first, last := c.span(y0)
 	var rows []*pixelRow
 	for y := first; y <= last; y++ {
 		r, err := p.pixelsOf(y)
@@ -210,19 +233,40 @@ func (p *propagator) newTrace(y0, from, to int) (*traceRow, error) {
 		}
 		rows = append(rows, r)
 	}
-	straight := make([][]float32, len(rows[0].own))
-	return p.c.newTraceRow(p.a, y0, from, to, func(slot int) []float32 {
-		slot = min(slot, len(straight)-1)
-		if straight[slot] == nil {
-			straight[slot] = make([]float32, p.c.noise.Columns)
-			variances := make([][]float32, len(rows))
-			for i, r := range rows {
-				variances[i] = r.own[slot]
-			}
-			p.c.shift.Variance(straight[slot], variances, first, y0)
+	gathers := map[int]*calib.Gather{}
+	known := map[int]*elementRow{}
+	straight := make([][]float32, len(rows[0].own)) // where all gather alike
+	t, err := c.newTraceRow(p.a, y0, from, to, func(element int) *elementRow {
+		if known[element] != nil {
+			return known[element]
 		}
-		return straight[slot]
+		r := &elementRow{slot: p.slot[element], edges: make([]float64, c.Grid.Count+1)}
+		known[element] = r
+		c.geometry.Places(r.edges, float64(element), float64(y0), c.edges)
+		own := min(r.slot, len(straight)-1)
+		if r.variance = straight[own]; r.variance != nil && c.field == nil {
+			return r
+		}
+		r.variance = make([]float32, c.noise.Columns)
+		straight[own] = r.variance
+		variances := make([][]float32, len(rows))
+		for i, row := range rows {
+			variances[i] = row.own[own]
+		}
+		if c.field == nil {
+			c.shift.Variance(r.variance, variances, first, y0)
+			return r
+		}
+		g := c.field.NewGather()
+		c.field.Set(g, y0, r.edges)
+		g.Variance(r.variance, variances, first)
+		gathers[r.slot] = g
+		return r
 	})
+	if err == nil && c.field != nil {
+		t.gathers = gathers
+	}
+	return t, err
 }
 
 func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
@@ -239,14 +283,14 @@ func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
 		if err != nil {
 			return nil, err
 		}
-		p.c.ownVariances(r, light, p.a.elements)
+		p.c.ownVariances(r, light, p.elements)
 	}
 	p.pixels[y] = r
 	return r, nil
 }
 
 // result adds the blocks, and the errors that pixels do not tell.
-func (p *propagator) result() *covariances {
+func (p *propagator) result() (*covariances, error) {
 	out := &covariances{channels: table[float64](p.c.Grid.Count, Lags+1), sums: make([]float64, len(p.sums))}
 	for _, w := range p.parts {
 		for l, row := range w.channels {
@@ -260,7 +304,7 @@ func (p *propagator) result() *covariances {
 	}
 	p.addThroughput(out)
 	p.addResponse(out)
-	return out
+	return out, p.addOnSky(out)
 }
 
 // addThroughput adds the errors of the steps' throughput, which all pixels share.
@@ -319,19 +363,21 @@ func (p *propagator) addResponse(out *covariances) {
 			out.sums[i] += total * total
 		}
 	}
-	for i := range p.a.cells {
+	for i, k := range p.a.cells {
 		root := math.Sqrt(p.a.slitVariance[i])
 		for l := range light {
-			light[l] = root * p.a.weighted(i, l)
+			elements, rows := p.c.shares(k, l)
+			light[l] = root * math.Sqrt(elements*rows) * p.a.weighted(p.c.onSky, i, l)
 		}
 		add()
 	}
 	for slot, j := range p.a.elements {
 		clear(light)
-		for i := range p.a.cells {
+		for i, k := range p.a.cells {
 			if p.a.slot[i] == slot {
 				for l := range light {
-					light[l] += p.a.weighted(i, l)
+					elements, _ := p.c.shares(k, l)
+					light[l] += math.Sqrt(elements) * p.a.weighted(p.c.onSky, i, l)
 				}
 			}
 		}
@@ -342,10 +388,11 @@ func (p *propagator) addResponse(out *covariances) {
 	}
 }
 
-// weighted is a voxel's part of the sum.
-func (a *aperture) weighted(i, l int) float64 {
+// weighted is a voxel's part of the sum, with the sky that was taken off it.
+func (a *aperture) weighted(o *onSky, i, l int) float64 {
 	if a.weight[i][l] == 0 {
 		return 0
 	}
-	return a.weight[i][l] * float64(a.signal[i][l])
+	light, _ := o.before(a, i, l)
+	return a.weight[i][l] * light
 }

@@ -49,7 +49,7 @@ func (c *Cube) readErasures() error {
 			dark = append(dark, i)
 		}
 	}
-	if len(dark) == 0 || !c.noise.Uniform || len(lost)+len(table.X) == 0 {
+	if len(dark) == 0 || len(lost)+len(table.X) == 0 {
 		return nil
 	}
 	checks, err := hadamard.NewChecks(c.decoder.Code(), dark)
@@ -115,12 +115,10 @@ func (e *erasures) row(y, x0, n int) []*erasure {
 	return out
 }
 
-// couple adds to the covariances of pairs of elements, in given code columns, what
-// restored samples of the variance white make of them; the diagonal knows it already.
-func (e *erasure) couple(dst [][]float64, code *hadamard.Code, columns []int, white float64) {
-	n := len(e.rows)
+// marks are A_jK of the elements in given code columns, and A_jK Q.
+func (e *erasure) marks(code *hadamard.Code, columns []int) (marks, weighted *mat.Dense) {
 	open, closed := code.InverseEntries()
-	marks := mat.NewDense(len(columns), n, nil)
+	marks, weighted = mat.NewDense(len(columns), len(e.rows), nil), new(mat.Dense)
 	for i, j := range columns {
 		for a, k := range e.rows {
 			entry := closed
@@ -130,8 +128,27 @@ func (e *erasure) couple(dst [][]float64, code *hadamard.Code, columns []int, wh
 			marks.Set(i, a, entry)
 		}
 	}
-	var weighted mat.Dense
 	weighted.Mul(marks, e.q)
+	return marks, weighted
+}
+
+// spread is A_jK Q A_jK' of the elements in given code columns: what restoring adds to their
+// variance, in units of a sample's.
+func (e *erasure) spread(code *hadamard.Code, columns []int) []float64 {
+	marks, weighted := e.marks(code, columns)
+	out := make([]float64, len(columns))
+	for i := range out {
+		for a, m := range marks.RawRowView(i) {
+			out[i] += m * weighted.At(i, a)
+		}
+	}
+	return out
+}
+
+// couple adds to the covariances of pairs of elements, in given code columns, what
+// restored samples of the variance white make of them; the diagonal has it already.
+func (e *erasure) couple(dst [][]float64, code *hadamard.Code, columns []int, white float64) {
+	marks, weighted := e.marks(code, columns)
 	for i := range columns {
 		left := weighted.RawRowView(i)
 		for o := range i {

@@ -1,12 +1,17 @@
 package extract
 
+import "slices"
+
 // pixelRow is the variances of a detector row.
 type pixelRow struct {
 	y int
 	// own is the variance of decoded elements, [slot of the aperture's elements][column],
 	// or [0][column] where all elements of a pixel have the same; common is the part
 	// of it that all elements share.
-	own    [][]float32
+	own [][]float32
+	// shared is the part of own that comes from the errors of the throughput, where
+	// variances differ; nil without.
+	shared [][]float32
 	common []float32
 	plane  []float32 // plane 1 of PIXELVAR
 }
@@ -49,8 +54,9 @@ const blockPixels = 256
 //
 //	s_k^2 = weight_k (level + photon variance * (W f)_k),
 //
-// with the level of each pixel such that the samples add up to what PIXELVAR says. What
-// Of a pixel with restored samples PIXELVAR says 1 + tr(Q)/v times as much. What
+// with the level of each pixel such that the samples add up to what PIXELVAR says, but for a
+// slit scan, where it is the level. Of a pixel with restored samples it says 1 + tr(Q)/v times
+// as much where all elements have the same variance. What
 // PIXELVAR holds for the errors of the throughput, sum (error_k (W f)_k)^2, is taken out:
 // all pixels share those errors, see addThroughput.
 func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
@@ -65,17 +71,17 @@ func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 		copy(b.light[column*n:(column+1)*n], light[j][b.x0:b.x0+n])
 	}
 	c.decoder.Predict(b.predicted, b.light, n, n)
-	_, closed := c.decoder.Code().InverseEntries()
+	unit := c.decoder.Code().Design().ReadNoiseVariance() / float64(v) // mean square of A's entries
 	for x := range n {
 		level := float64(p.plane[b.x0+x])
-		if c.noise.Uniform {
-			sum := (level - float64(p.common[b.x0+x])) / (closed * closed)
+		if c.noise.Uniform || c.noise.Mean {
+			sum := (level - float64(p.common[b.x0+x])) / unit
 			for k := range c.weight {
 				shared := c.noise.ThroughputErr[k] * float64(b.predicted[k*n+x])
 				sum -= shared * shared
 			}
-			b.own[x] = sum * closed * closed
-			if e := b.erased[x]; e != nil {
+			b.own[x] = sum * unit
+			if e := b.erased[x]; e != nil && c.noise.Uniform {
 				sum /= 1 + e.trace/float64(v)
 			}
 			b.white[x] = sum / float64(v)
@@ -87,12 +93,19 @@ func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 		for k, w := range c.weight {
 			b.variances[k*n+x] = float32(w * (level + c.noise.PhotonVariance*float64(b.predicted[k*n+x])))
 		}
+		if !c.noise.Uniform {
+			b.white[x] = c.mean(b.variances[x:], n)
+		}
 	}
 }
 
 // ownVariances fills p.own for elements, for codes whose columns differ.
 func (c *Cube) ownVariances(p *pixelRow, light [][]float32, elements []int) {
 	p.own = table[float32](len(elements), c.noise.Columns)
+	throughput := slices.ContainsFunc(c.noise.ThroughputErr, func(e float64) bool { return e > 0 })
+	if throughput {
+		p.shared = table[float32](len(elements), c.noise.Columns)
+	}
 	var b block
 	for b.x0 = 0; b.x0 < c.noise.Columns; b.x0 += blockPixels {
 		b.n = min(blockPixels, c.noise.Columns-b.x0)
@@ -104,5 +117,57 @@ func (c *Cube) ownVariances(p *pixelRow, light [][]float32, elements []int) {
 				p.own[slot][b.x0+x] = v + p.common[b.x0+x]
 			}
 		}
+		c.addSpread(p, &b, elements)
+		if throughput {
+			c.addShared(p, &b, elements, dst)
+		}
 	}
+}
+
+// addSpread adds what restored samples make of the elements' variances.
+func (c *Cube) addSpread(p *pixelRow, b *block, elements []int) {
+	columns := make([]int, len(elements))
+	for slot, j := range elements {
+		columns[slot] = c.columns[j]
+	}
+	var last *erasure
+	var spread []float64
+	for x, e := range b.erased {
+		if e == nil {
+			continue
+		}
+		if e != last {
+			last, spread = e, e.spread(c.decoder.Code(), columns)
+		}
+		for slot := range elements {
+			p.own[slot][b.x0+x] += float32(b.white[x] * spread[slot])
+		}
+	}
+}
+
+// addShared adds what the throughput's errors make of the elements' variances, with dst as
+// memory.
+func (c *Cube) addShared(p *pixelRow, b *block, elements []int, dst []float32) {
+	for k, e := range c.noise.ThroughputErr {
+		for x, light := range b.predicted[k*b.n : (k+1)*b.n] {
+			shared := float32(e) * light
+			b.variances[k*b.n+x] = shared * shared
+		}
+	}
+	c.decoder.Variance(dst, b.variances, b.n, b.n, 0)
+	for slot, j := range elements {
+		for x, v := range dst[c.columns[j]*b.n:][:b.n] {
+			p.shared[slot][b.x0+x] = v
+			p.own[slot][b.x0+x] += v
+		}
+	}
+}
+
+// mean is that of every n-th value, one a code row.
+func (c *Cube) mean(values []float32, n int) float64 {
+	sum := 0.0
+	for k := range c.noise.V {
+		sum += float64(values[k*n])
+	}
+	return sum / float64(c.noise.V)
 }

@@ -34,7 +34,8 @@ func TestThroughputIsShared(t *testing.T) {
 	// the sum is made of those moves, and what the pixels held of them goes.
 	moves := make([]float64, c.noise.V)
 	inPixels := 0.0
-	p := &propagator{c: c, a: a, pixels: map[int]*pixelRow{}, traces: map[int]*traceRow{}, light: c.newLightReader(nil), fork: c.newCoupling(a.elements), sums: sums}
+	p := c.newPropagator(a)
+	p.light, p.sums = c.newLightReader(nil), sums
 	p.rowAt = rowStarts(a)
 	code := c.decoder.Code()
 	open, closed := code.InverseEntries()

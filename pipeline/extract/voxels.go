@@ -19,6 +19,8 @@ type aperture struct {
 	weight [][]float64
 	// slitVariance is the relative variance of each cell's slit response.
 	slitVariance []float64
+	// skyPart is what each cell sees of the sky that was subtracted, skyShare its weight in it.
+	skyPart, skyShare []float64
 	// elements are those of the cells, ascending; slot is the place of each cell's
 	// element among them.
 	elements []int
@@ -52,6 +54,9 @@ func (c *Cube) load(ctx context.Context, cells []cell) (*aperture, error) {
 				im.take(i, l, plane[(k.row-a.firstRow)*c.Elements+k.element])
 			}
 		}
+	}
+	if err := c.onSky.places(a, c.Elements); err != nil {
+		return nil, err
 	}
 	return a, a.readSlit(c)
 }

@@ -10,55 +10,76 @@ import (
 	"mirrorloom/pipeline/sequence"
 )
 
-// fieldKey is what light depends on: the strip of mirrors that is coded, the air, and the
-// rows closed besides the target's.
-type fieldKey struct {
-	first, last int
-	sight       sight
-	closed      string
+// deviceKey is what the light on the device depends on: where the field's middle lies, in
+// halves of a u, and the air.
+type deviceKey struct {
+	middle2 int
+	sight   sight
 }
 
-// fieldLight is the light of a coded strip.
-type fieldLight struct {
+// deviceLight is the light on all mirrors of the device.
+type deviceLight struct {
 	light *Light
-	fieldKey
-	// middle is the middle of the strip, u.
+	// middle is the middle of the strip that is coded, u.
 	middle         float64
 	uFirst, uLast  int
 	wFirst, wLast  int
 	wMiddle, sigma float64
 	pieces         []*piece
+	leaks          map[int][]float64 // by trace row
+}
+
+// fieldKey is what the light of coded elements depends on besides: the strip, the width of
+// elements, and the rows closed.
+type fieldKey struct {
+	deviceKey
+	first, last, mirrors int
+	closed               string
+}
+
+// fieldLight is the light of a coded strip.
+type fieldLight struct {
+	*deviceLight
+	first, last, mirrors int
 	// closed are rows of single elements or of all that no step opens.
-	closedRows []sequence.RowRange
-	mirrors    int
-	rows       map[int]*rowLight
+	closed    []sequence.RowRange
+	shares    map[int][]*share // by trace row: of each piece
+	rows      map[int]*rowLight
+	pixelRows map[int]*pixelRow
+	squares   map[int][]float64 // by trace row
 }
 
 // field is the light of a candidate's strip.
 func (l *Light) field(c Candidate, at sight) *fieldLight {
+	at.airmass = 0 // its steps are the key
 	first, last := c.strip(l.profile)
-	ranges := l.closedRows(c)
-	key := fieldKey{first: first, last: last, sight: at}
-	key.sight.airmass = 0 // its steps are the key
-	for _, r := range ranges {
-		key.closed += fmt.Sprint(r, " ")
-		if r.Element >= 0 {
-			key.closed += fmt.Sprint(c.ElementMirrors, " ")
-		}
-	}
+	closed := l.closedRows(c)
+	key := fieldKey{deviceKey{first + last, at}, first, last, c.ElementMirrors, fmt.Sprint(closed)}
 	if f := l.fields[key]; f != nil {
 		return f
 	}
 	f := &fieldLight{
-		light: l, fieldKey: key, middle: float64(first+last) / 2, wMiddle: l.profile.WCenter(),
-		sigma: l.profile.Spectrograph.LSFFWHMPx / fwhmPerSigma, closedRows: ranges, mirrors: c.ElementMirrors, rows: map[int]*rowLight{},
+		deviceLight: l.device(key.deviceKey), first: first, last: last, mirrors: c.ElementMirrors, closed: closed,
+		shares: map[int][]*share{}, rows: map[int]*rowLight{}, pixelRows: map[int]*pixelRow{}, squares: map[int][]float64{},
 	}
-	f.uFirst, f.uLast = l.profile.URange()
-	f.wFirst, f.wLast = l.profile.WRange()
-	f.addSources(at)
-	f.addSky()
 	l.fields[key] = f
 	return f
+}
+
+func (l *Light) device(key deviceKey) *deviceLight {
+	if d := l.devices[key]; d != nil {
+		return d
+	}
+	d := &deviceLight{
+		light: l, middle: float64(key.middle2) / 2, wMiddle: l.profile.WCenter(),
+		sigma: l.profile.Spectrograph.LSFFWHMPx / fwhmPerSigma, leaks: map[int][]float64{},
+	}
+	d.uFirst, d.uLast = l.profile.URange()
+	d.wFirst, d.wLast = l.profile.WRange()
+	d.addSources(key.sight)
+	d.addSky()
+	l.devices[key] = d
+	return d
 }
 
 // closedRows are the ranges of rows closed in coded steps: the target's, the candidate's and
@@ -89,7 +110,7 @@ func (l *Light) through(air func(nm float64) float64) func(nm float64) float64 {
 // everything is the part of a piece that takes all wavelengths.
 func everything(float64) float64 { return 1 }
 
-func (f *fieldLight) addSources(at sight) {
+func (f *deviceLight) addSources(at sight) {
 	l := f.light
 	through := l.through(l.transmission(at))
 	for i := range l.scene.Sources {
@@ -112,7 +133,7 @@ func (f *fieldLight) addSources(at sight) {
 	}
 }
 
-func (f *fieldLight) addSky() {
+func (f *deviceLight) addSky() {
 	l := f.light
 	sky := l.scene.Sky
 	var photons func(nm float64) float64
@@ -132,18 +153,18 @@ func (f *fieldLight) addSky() {
 	f.pieces = append(f.pieces, p)
 }
 
-func (f *fieldLight) newPiece(source int, image image) *piece {
-	return &piece{source: source, image: image, parts: map[int][]float64{}, shares: map[int]*share{}, leaks: map[int]*share{}}
+func (f *deviceLight) newPiece(source int, image image) *piece {
+	return &piece{source: source, image: image, parts: map[int][]float64{}}
 }
 
 // place puts a piece's image on the device, arc seconds along u and w from the middle.
-func (f *fieldLight) place(p *piece, u, w float64) {
+func (f *deviceLight) place(p *piece, u, w float64) {
 	a := f.light.profile.ArcsecPerU()
-	p.column, p.row = f.device(f.middle+u/a, f.wMiddle+w/a)
+	p.column, p.row = f.onDevice(f.middle+u/a, f.wMiddle+w/a)
 }
 
-// device turns u and w into the device's column and row.
-func (f *fieldLight) device(u, w float64) (column, row float64) {
+// onDevice turns u and w into the device's column and row.
+func (f *deviceLight) onDevice(u, w float64) (column, row float64) {
 	if f.light.profile.DMD.Mounting == instrument.Diagonal {
 		return (u - w) / 2, (u + w) / 2
 	}
@@ -162,7 +183,7 @@ type bent struct {
 // the image by (seeing/5)^2/6 at most, in the mean of squares.
 const bendsPerSeeing = 5
 
-func (f *fieldLight) bends(at sight) []bent {
+func (f *deviceLight) bends(at sight) []bent {
 	if at.centiTan == 0 {
 		return []bent{{part: everything}}
 	}

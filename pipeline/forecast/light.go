@@ -24,13 +24,15 @@ type Light struct {
 	camera  *camera
 	rows    *calib.RowShift
 	columns *calib.Resampler
+	traces  []traced // by column
 	// edgesNM are the edges of the grid's voxels, vacuum nm.
 	edgesNM    []float64
 	wanted     []wanted
 	frameBytes float64
 
-	mu     sync.Mutex
-	fields map[fieldKey]*fieldLight
+	mu      sync.Mutex
+	devices map[deviceKey]*deviceLight
+	fields  map[fieldKey]*fieldLight
 }
 
 // New prepares the forecast of a target that has the key forecast. Target and profile are
@@ -45,7 +47,7 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	if err := target.Check(); err != nil {
 		return nil, err
 	}
-	l := &Light{target: target, profile: profile, scene: target.Scene(), edgesNM: profile.Grid.EdgesNM(), fields: map[fieldKey]*fieldLight{}}
+	l := &Light{target: target, profile: profile, scene: target.Scene(), edgesNM: profile.Grid.EdgesNM(), devices: map[deviceKey]*deviceLight{}, fields: map[fieldKey]*fieldLight{}}
 	var err error
 	if l.start, err = target.Start(); err != nil {
 		return nil, err
@@ -64,6 +66,7 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	shift := make([]float64, d.Columns)
 	for x := range shift {
 		shift[x] = geometry.TraceShift(float64(x))
+		l.traces = append(l.traces, newTraced(shift[x]))
 	}
 	if l.rows, err = calib.NewRowShift(shift, d.Rows); err != nil {
 		return nil, err
@@ -188,9 +191,10 @@ func (l *Light) Row(c Candidate, y int) ([]float64, error) {
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	n := newNoiseModel(l, l.field(c, l.sightOf(l.Time(c))), c, 0)
+	light := n.field.pixelRow(y)
 	open, row := float64(c.K)/float64(c.V), make([]float64, l.camera.columns)
 	for x := range row {
-		row[x] = (n.overlapAt(x, y)*open + n.leakAt(x, y) + n.dark) * c.DwellSeconds
+		row[x] = (light.overlap[x]*open + light.leak[x] + n.dark) * c.DwellSeconds
 	}
 	return row, nil
 }

@@ -10,8 +10,9 @@ type pixelNoise struct {
 	// own is the element's variance by part, throughput aside; own.Level is common to all
 	// elements.
 	own Parts
-	// light and overlap are the element's and all elements' electrons.
-	light, overlap float64
+	// light, overlap and leak are the electrons of the element, of all elements, and of all
+	// mirrors when closed.
+	light, overlap, leak float64
 	// scatter is the standard deviation that the transmission's scatter gives.
 	scatter float64
 }
@@ -140,6 +141,7 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 			s.variance.Leak += square * n.own.Leak
 			s.variance.Level += square * n.own.Level
 			scatter += g * n.scatter
+			s.pixel(g, n)
 			o := &s.pixels[s.window.at(x, y)]
 			o.overlap = n.overlap
 			o.weight += g
@@ -180,7 +182,6 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 					variance += g * g * n.variance()
 					scatter += g * n.scatter
 					weights[win.at(x, y)] += v.Weight * g
-					s.pixel(v.Weight*g, n, x, y)
 				}
 			}
 		}
@@ -198,12 +199,12 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 }
 
 // pixel counts a pixel's electrons.
-func (s *sum) pixel(weight float64, n *pixelNoise, x, y int) {
+func (s *sum) pixel(weight float64, n *pixelNoise) {
 	d := s.candidate.Design()
 	s.weight += weight
 	s.electrons.Own += weight * n.light
 	s.electrons.Overlap += weight * n.overlap
-	s.electrons.Frame += weight * (n.overlap*float64(d.K)/float64(d.V) + (s.noise.leakAt(x, y)+s.noise.dark)*s.candidate.DwellSeconds)
+	s.electrons.Frame += weight * (n.overlap*float64(d.K)/float64(d.V) + n.leak + s.noise.dark*s.candidate.DwellSeconds)
 }
 
 // finish adds what elements share and makes the measure.

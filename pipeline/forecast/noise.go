@@ -3,7 +3,6 @@ package forecast
 import (
 	"math"
 
-	"mirrorloom/calib"
 	"mirrorloom/hadamard"
 )
 
@@ -13,14 +12,14 @@ type noiseModel struct {
 	field     *fieldLight
 	design    hadamard.Design
 	candidate Candidate
-	geometry  calib.Geometry
 	read      float64 // ReadNoiseVariance
 	dark      float64 // electrons a second
 	scatter   float64 // rms of a frame's transmission
 	// What is taken off all frames: the means of so many frames.
 	bias, darks, off int
 	darkDwell        float64
-	pedestal         int // dark columns whose mean is taken off; 0 for none
+	pedestal         int               // dark columns whose mean is taken off; 0 for none
+	squares          map[int][]float64 // by detector row
 }
 
 // pedestalColumns is over how many pixels of a row the reduction averages dark decodes where
@@ -30,9 +29,9 @@ const pedestalColumns = 7
 func newNoiseModel(l *Light, f *fieldLight, c Candidate, throughput float64) *noiseModel {
 	k := l.target.Calibration
 	n := &noiseModel{
-		light: l, field: f, design: c.Design(), candidate: c, geometry: l.geometry(c.N, c.ElementMirrors),
+		light: l, field: f, design: c.Design(), candidate: c,
 		dark: l.camera.darkEPS, scatter: throughput,
-		bias: k.Bias.Count, darks: k.Dark.Count, darkDwell: k.Dark.DwellSeconds, off: allOff(l.target, c.V*c.Cycles),
+		bias: k.Bias.Count, darks: k.Dark.Count, darkDwell: k.Dark.DwellSeconds, off: allOff(l.target, c.V*c.Cycles), squares: map[int][]float64{},
 	}
 	n.read = n.design.ReadNoiseVariance()
 	if n.off == 0 && checks(c) {
@@ -44,45 +43,24 @@ func newNoiseModel(l *Light, f *fieldLight, c Candidate, throughput float64) *no
 // checks tells whether there are dark columns enough for what the reduction does by them.
 func checks(c Candidate) bool { return c.Dark > 0 && float64(c.Dark) >= 2*math.Log2(float64(c.V)) }
 
-// traceRow gives the trace rows on both sides of a pixel, and the part of the upper.
-func (n *noiseModel) traceRow(x, y int) (q int, part float64) {
-	at := float64(y) - n.geometry.TraceShift(float64(x))
-	low := math.Floor(at)
-	return int(low), at - low
-}
-
-// overlapAt is all elements' light at a pixel, electrons a second.
-func (n *noiseModel) overlapAt(x, y int) float64 {
-	q, part := n.traceRow(x, y)
-	a, b := n.field.row(q).overlap[x], n.field.row(q + 1).overlap[x]
-	return a + (b-a)*part
-}
-
-// leakAt is what all mirrors of the device leak there when closed, electrons a second.
-func (n *noiseModel) leakAt(x, y int) float64 {
-	q, part := n.traceRow(x, y)
-	a, b := n.field.row(q).leak[x], n.field.row(q + 1).leak[x]
-	return a + (b-a)*part
-}
-
 // pixels is the noise of element j in the pixels of a window.
 func (n *noiseModel) pixels(j int, win *window) []pixelNoise {
+	width := win.x1 - win.x0 + 1
 	rows := map[int][]float64{}
-	own := func(q, x int) float64 {
-		light := rows[q]
-		if light == nil {
-			light = make([]float64, win.x1-win.x0+1)
-			n.field.element(light, j, q, win.x0, func(int) bool { return true }, false)
-			rows[q] = light
-		}
-		return light[x-win.x0]
-	}
 	list := make([]pixelNoise, win.size())
+	own := make([]float64, width)
 	for y := win.y0; y <= win.y1; y++ {
-		for x := win.x0; x <= win.x1; x++ {
-			q, part := n.traceRow(x, y)
-			a, b := own(q, x), own(q+1, x)
-			list[win.at(x, y)] = n.at(x, y, a+(b-a)*part)
+		n.light.untrace(own, win.x0, y, func(q int) []float64 {
+			light := rows[q]
+			if light == nil {
+				light = make([]float64, width)
+				n.field.element(light, j, q, win.x0, func(int) bool { return true }, false)
+				rows[q] = light
+			}
+			return light
+		})
+		for i, v := range own {
+			list[win.at(win.x0+i, y)] = n.at(win.x0+i, y, v)
 		}
 	}
 	return list
@@ -92,9 +70,10 @@ func (n *noiseModel) pixels(j int, win *window) []pixelNoise {
 func (n *noiseModel) at(x, y int, own float64) pixelNoise {
 	d, t, cycles := n.design, n.candidate.DwellSeconds, float64(n.candidate.Cycles)
 	camera := n.light.camera
-	leak := n.leakAt(x, y) * t
+	row := n.field.pixelRow(y)
+	leak := row.leak[x] * t
 	quiet := camera.quiet[camera.amplifier(x, y)]
-	p := pixelNoise{light: own * t, overlap: n.overlapAt(x, y) * t}
+	p := pixelNoise{light: own * t, overlap: row.overlap[x] * t, leak: leak}
 	p.own = Parts{
 		Photons:  camera.photon * d.PhotonVariance(p.light, p.overlap) / cycles,
 		Detector: n.read * quiet / cycles,
@@ -117,9 +96,11 @@ func (n *noiseModel) scatterOf(x, y int, p *pixelNoise) float64 {
 		return n.scatter * p.light
 	}
 	t := n.candidate.DwellSeconds
-	q, part := n.traceRow(x, y)
-	a, b := n.field.squares(q, x, n.candidate.N), n.field.squares(q+1, x, n.candidate.N)
-	return n.design.ThroughputNoise(n.scatter, p.overlap, (a+(b-a)*part)*t*t)
+	if n.squares[y] == nil {
+		n.squares[y] = make([]float64, n.light.camera.columns)
+		n.light.untrace(n.squares[y], 0, y, func(q int) []float64 { return n.field.squaresOf(q, n.candidate) })
+	}
+	return n.design.ThroughputNoise(n.scatter, p.overlap, max(n.squares[y][x], 0)*t*t)
 }
 
 // level is the variance, in a decoded element, of what is taken off all frames: a constant
@@ -151,7 +132,7 @@ func (n *noiseModel) addShared(v *Parts, x, y int, o *overlapped) {
 	}
 	d, t, cycles := n.design, n.candidate.DwellSeconds, float64(n.candidate.Cycles)
 	camera := n.light.camera
-	quiet, leak := camera.quiet[camera.amplifier(x, y)], n.leakAt(x, y)*t
+	quiet, leak := camera.quiet[camera.amplifier(x, y)], n.field.pixelRow(y).leak[x]*t
 	k, l := float64(d.K), float64(d.L)
 	constant := -l / (k * k * (k - l)) / cycles * pairs
 	v.Detector += constant * quiet
@@ -162,24 +143,6 @@ func (n *noiseModel) addShared(v *Parts, x, y int, o *overlapped) {
 		light := 2 * (o.light*o.weight - o.squareLight)
 		v.Photons -= camera.photon * l / (k * (k - l) * float64(d.V-2)) / cycles * (o.overlap*pairs - light)
 	}
-}
-
-// squares is the sum of the squares of the elements' light at column x of a trace row,
-// electrons a second squared.
-func (f *fieldLight) squares(q, x, elements int) float64 {
-	r := f.row(q)
-	if r.squares == nil {
-		r.squares = make([]float64, len(r.overlap))
-		light := make([]float64, len(r.overlap))
-		for j := range elements {
-			clear(light)
-			f.element(light, j, q, 0, func(int) bool { return true }, false)
-			for i, v := range light {
-				r.squares[i] += v * v
-			}
-		}
-	}
-	return r.squares[x]
 }
 
 // throughputLeft is the scatter of the frames' transmission that is left in the data: what

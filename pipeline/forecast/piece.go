@@ -24,10 +24,8 @@ type piece struct {
 	// lines are all lines; they move if motion is there.
 	lines  []line
 	motion *motion
-	// parts[w] are those of mirrors (u, w) by u, shares and leaks what falls on a trace row.
-	parts  map[int][]float64
-	shares map[int]*share
-	leaks  map[int]*share
+	// parts[w] are those of mirrors (u, w) by u from the device's first.
+	parts map[int][]float64
 }
 
 // share is the part of a piece that mirrors of each u, from uFirst, put on a trace row, all 0

@@ -11,14 +11,12 @@ import (
 type rowLight struct {
 	// overlap is that of all elements, leak that of all mirrors of the device when closed.
 	overlap, leak []float64
-	// squares is the sum over elements of their light's square; nil until asked for.
-	squares []float64
 	// xi[x] is the dispersed distance, px, of what a mirror in the middle sends to x.
 	xi []float64
 }
 
 // rowParts are a piece's parts of the mirrors of row w, by u from uFirst.
-func (f *fieldLight) rowParts(p *piece, w int) []float64 {
+func (f *deviceLight) rowParts(p *piece, w int) []float64 {
 	if parts := p.parts[w]; parts != nil {
 		return parts
 	}
@@ -29,7 +27,7 @@ func (f *fieldLight) rowParts(p *piece, w int) []float64 {
 		if d.Mounting == instrument.Diagonal && (u-w)&1 != 0 {
 			continue
 		}
-		column, row := f.device(float64(u), float64(w))
+		column, row := f.onDevice(float64(u), float64(w))
 		if column < 0 || row < 0 || column > float64(d.Columns-1) || row > float64(d.Rows-1) {
 			continue
 		}
@@ -48,7 +46,7 @@ func (f *fieldLight) rowParts(p *piece, w int) []float64 {
 
 // shut tells whether mirrors (u, w) stay closed in every coded step.
 func (f *fieldLight) shut(u, w int) bool {
-	for _, r := range f.closedRows {
+	for _, r := range f.closed {
 		if w < r.First || w > r.Last {
 			continue
 		}
@@ -59,29 +57,36 @@ func (f *fieldLight) shut(u, w int) bool {
 	return false
 }
 
-// shareOf is what mirrors of the strip that open put on trace row q, and leakOf what all
-// mirrors of the device do.
-func (f *fieldLight) shareOf(p *piece, q int) *share {
-	if s := p.shares[q]; s != nil {
-		return s
+// sharesOf are what mirrors of the strip that open put on trace row q, of each piece.
+func (f *fieldLight) sharesOf(q int) []*share {
+	if list := f.shares[q]; list != nil {
+		return list
 	}
-	s := f.gather(p, q, f.first, f.last, true)
-	p.shares[q] = s
-	return s
+	list := make([]*share, len(f.pieces))
+	for i, p := range f.pieces {
+		list[i] = f.gather(p, q, f.first, f.last, f.shut)
+	}
+	f.shares[q] = list
+	return list
 }
 
-func (f *fieldLight) leakOf(p *piece, q int) *share {
-	if s := p.leaks[q]; s != nil {
-		return s
+// leak is what all mirrors of the device put on trace row q when closed, electrons a second
+// by column.
+func (f *deviceLight) leak(q int, xi []float64) []float64 {
+	if row := f.leaks[q]; row != nil {
+		return row
 	}
-	s := f.gather(p, q, f.uFirst, f.uLast, false)
-	p.leaks[q] = s
-	return s
+	row := make([]float64, len(xi))
+	for _, p := range f.pieces {
+		f.addShare(row, xi, p.leaked, f.gather(p, q, f.uFirst, f.uLast, nil))
+	}
+	f.leaks[q] = row
+	return row
 }
 
 // gather adds up the parts of mirror rows, each times the part of its spot that falls on the
-// trace row.
-func (f *fieldLight) gather(p *piece, q, first, last int, opens bool) *share {
+// trace row; shut, if not nil, tells which are left out.
+func (f *deviceLight) gather(p *piece, q, first, last int, shut func(u, w int) bool) *share {
 	s := f.light.profile.Spectrograph
 	out := &share{part: make([]float64, f.uLast-f.uFirst+1)}
 	reach := 6*f.sigma + 0.5
@@ -93,7 +98,7 @@ func (f *fieldLight) gather(p *piece, q, first, last int, opens bool) *share {
 		weight := between(d-0.5, d+0.5, f.sigma)
 		parts := f.rowParts(p, w)
 		for u := first; u <= last; u++ {
-			if v := parts[u-f.uFirst]; v != 0 && !(opens && f.shut(u, w)) {
+			if v := parts[u-f.uFirst]; v != 0 && (shut == nil || !shut(u, w)) {
 				out.part[u-f.uFirst] += weight * v
 			}
 		}
@@ -118,18 +123,18 @@ func (f *fieldLight) row(q int) *rowLight {
 		return r
 	}
 	n := f.light.profile.Detector.Columns
-	r := &rowLight{overlap: make([]float64, n), leak: make([]float64, n), xi: f.dispersedAt(q)}
-	for _, p := range f.pieces {
-		f.addShare(r.overlap, r.xi, p.still, f.shareOf(p, q))
-		f.addShare(r.leak, r.xi, p.leaked, f.leakOf(p, q))
-		f.addMoving(r.overlap, r.xi, p, f.shareOf(p, q), q)
+	r := &rowLight{overlap: make([]float64, n), xi: f.dispersedAt(q)}
+	r.leak = f.leak(q, r.xi)
+	for i, s := range f.sharesOf(q) {
+		f.addShare(r.overlap, r.xi, f.pieces[i].still, s)
+		f.addMoving(r.overlap, r.xi, f.pieces[i], s, q)
 	}
 	f.rows[q] = r
 	return r
 }
 
 // dispersedAt is xi of trace row q.
-func (f *fieldLight) dispersedAt(q int) []float64 {
+func (f *deviceLight) dispersedAt(q int) []float64 {
 	s := f.light.profile.Spectrograph
 	xi := make([]float64, f.light.profile.Detector.Columns)
 	for x := range xi {
@@ -141,7 +146,7 @@ func (f *fieldLight) dispersedAt(q int) []float64 {
 }
 
 // across is how far mirrors of u send their light from where those of the middle do, px.
-func (f *fieldLight) across(i int) float64 {
+func (f *deviceLight) across(i int) float64 {
 	return f.light.profile.Spectrograph.UStepPx * (float64(f.uFirst+i) - f.middle)
 }
 
@@ -149,7 +154,7 @@ func (f *fieldLight) across(i int) float64 {
 const evenWithin = 1e-9
 
 // addShare adds a table's light by shares: runs of equal ones at once.
-func (f *fieldLight) addShare(dst, xi []float64, t *table, s *share) {
+func (f *deviceLight) addShare(dst, xi []float64, t *table, s *share) {
 	for i := s.from; i < s.to; {
 		v := s.part[i]
 		end := i + 1
@@ -175,7 +180,7 @@ func (f *fieldLight) addShare(dst, xi []float64, t *table, s *share) {
 }
 
 // addMoving adds lines that move.
-func (f *fieldLight) addMoving(dst, xi []float64, p *piece, s *share, q int) {
+func (f *deviceLight) addMoving(dst, xi []float64, p *piece, s *share, q int) {
 	if p.motion == nil {
 		return
 	}
@@ -191,7 +196,7 @@ func (f *fieldLight) addMoving(dst, xi []float64, p *piece, s *share, q int) {
 }
 
 // addLine adds a line where it falls; dst[i] is column x0+i.
-func (f *fieldLight) addLine(dst, xi []float64, e *line, kmS, across, part float64, x0 int) {
+func (f *deviceLight) addLine(dst, xi []float64, e *line, kmS, across, part float64, x0 int) {
 	reach := 6*e.sigma + 1.5
 	centre := e.px + kmS*e.perKmS + across
 	// xi is nearly x - x_c: the slant of rows, a few px, is allowed for by looking there.
@@ -203,13 +208,13 @@ func (f *fieldLight) addLine(dst, xi []float64, e *line, kmS, across, part float
 }
 
 // slantNear is the slant of a row at its middle, px; along it it changes by a px or two.
-func (f *fieldLight) slantNear(xi []float64) float64 {
+func (f *deviceLight) slantNear(xi []float64) float64 {
 	m := len(xi) / 2
 	return float64(m) - f.light.profile.Spectrograph.XCenterPx - xi[m]
 }
 
 // placeOf is the place in the field of mirrors of u on trace row q, arc seconds along u and w.
-func (f *fieldLight) placeOf(i, q int) (u, w float64) {
+func (f *deviceLight) placeOf(i, q int) (u, w float64) {
 	p := f.light.profile
 	a := p.ArcsecPerU()
 	return (float64(f.uFirst+i) - f.middle) * a, (float64(q) - p.Spectrograph.YCenterPx) / p.Spectrograph.WStepPx * a
@@ -220,11 +225,12 @@ func (f *fieldLight) placeOf(i, q int) (u, w float64) {
 func (f *fieldLight) element(dst []float64, j, q, x0 int, of func(source int) bool, linesOnly bool) {
 	xi := f.row(q).xi
 	first := f.first + j*f.mirrors - f.uFirst
-	for _, p := range f.pieces {
+	shares := f.sharesOf(q)
+	for k, p := range f.pieces {
 		if !of(p.source) {
 			continue
 		}
-		s := f.shareOf(p, q)
+		s := shares[k]
 		for i := max(first, s.from); i < min(first+f.mirrors, s.to); i++ {
 			v := s.part[i]
 			if v == 0 {

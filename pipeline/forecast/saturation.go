@@ -49,8 +49,8 @@ func (f *fieldLight) brightColumns(q int) []int {
 	r := f.row(q)
 	columns := []int{brightest(r.overlap)}
 	light := make([]float64, len(r.overlap))
-	for _, p := range f.pieces {
-		s := f.shareOf(p, q)
+	for i, s := range f.sharesOf(q) {
+		p := f.pieces[i]
 		if p.source < 0 || s.from >= s.to {
 			continue
 		}

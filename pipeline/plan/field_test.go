@@ -207,6 +207,9 @@ func TestWarnings(t *testing.T) {
 	}{
 		{"few dark columns", func(target *sequence.Target, _ *instrument.Profile) { target.Code.Dark = of(13) },
 			"13 dark columns are fewer than 2 log2 v = 14: the order audit, the throughput correction and repairs are off"},
+		{"few dark columns a step", func(target *sequence.Target, _ *instrument.Profile) {
+			target.Code.Family, target.Code.V, target.Code.Dark = "singer", of(73), nil
+		}, "a step opens 2.0 of them in the mean; give code.dark 41 or more"},
 		{"band cut", func(_ *sequence.Target, p *instrument.Profile) { p.Spectrograph.XCenterPx = 200 },
 			"element 0 of 111 has"},
 		{"no all-off", func(target *sequence.Target, _ *instrument.Profile) { target.AllOffEvery = 0 }, "no all-off frame is planned"},

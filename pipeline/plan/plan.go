@@ -4,10 +4,12 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"path/filepath"
 
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/register"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -15,6 +17,9 @@ import (
 type Options struct {
 	// Target and Profile are paths, or names of embedded files.
 	Target, Profile string
+	// Registration is the path of a registration of the instrument (package register), by
+	// which the telescope is to be pointed; empty for none.
+	Registration string
 	// Out is the folder to write into, made if there is none. It must hold no
 	// sequence; giving it its final name when it is whole is the caller's part. Empty, the
 	// plan is made and nothing is written.
@@ -33,6 +38,10 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	if err != nil {
 		return nil, err
 	}
+	registration, err := readRegistration(o.Registration, profile)
+	if err != nil {
+		return nil, err
+	}
 	s, summary, err := Build(ctx, target, profile)
 	if err != nil {
 		var c *config.Error
@@ -44,6 +53,9 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
+	if registration != nil {
+		summary.Pointing = pointingOf(registration, s)
+	}
 	if o.Out == "" {
 		return summary, nil
 	}
@@ -53,6 +65,11 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	if err := writeTrade(o.Out, summary.Trade); err != nil {
 		return nil, err
 	}
+	if registration != nil {
+		if err := registration.Write(filepath.Join(o.Out, register.File)); err != nil {
+			return nil, err
+		}
+	}
 	summary.SequenceSHA = s.SHA
 	summary.Masks = countMasks(s)
 	return summary, nil
@@ -60,7 +77,8 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 
 // Build plans a sequence in memory: masks are named when it is written. The
 // target is left as it is; the sequence's own has code.v and code.dark filled
-// in, and all that a target of code.family auto leaves open. Errors about the target are a *config.Error with the key path.
+// in, and all that a target of code.family auto leaves open. Errors about the target are a
+// *config.Error with the key path.
 func Build(ctx context.Context, target *sequence.Target, profile *instrument.Profile) (*sequence.Sequence, *Summary, error) {
 	if err := profile.Validate(); err != nil {
 		return nil, nil, fmt.Errorf("profile: %w", err)

@@ -23,7 +23,7 @@ type Summary struct {
 	// ReadNoiseGain is the gain in S/N over a slit scan of the same field in the
 	// same time where the detector's noise is all; PhotonThreshold how many
 	// times brighter than the mean an element must be to gain where photon noise
-	// is all. Both are 0 for a slit scan.
+	// is all, 0 where none does. Both are 0 for a slit scan.
 	ReadNoiseGain   float64 `json:"read_noise_gain"`
 	PhotonThreshold float64 `json:"photon_threshold"`
 	// Kinds lists the steps by kind, without the kinds that do not occur.
@@ -39,6 +39,9 @@ type Summary struct {
 	Airmass [3]float64 `json:"airmass"`
 	// RefStar is the reference star; nil where none is planned.
 	RefStar *RefStar `json:"refstar,omitempty"`
+	// Pointing is where the telescope is to be sent, so that the field lies where the
+	// target says; nil without a registration.
+	Pointing *PointingTo `json:"pointing,omitempty"`
 	// Forecast is what the plan will give; nil where the target does not say what to
 	// expect.
 	Forecast *forecast.Result `json:"forecast,omitempty"`
@@ -106,6 +109,10 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	if code.Family() != hadamard.SlitScan {
 		d := code.Design()
 		r.ReadNoiseGain, r.PhotonThreshold = d.ReadNoiseGainDark(s.N()), d.PhotonThreshold(s.N())
+		if math.IsInf(r.PhotonThreshold, 1) {
+			r.PhotonThreshold = 0
+		}
+		r.judgeDark(dark.Correlation)
 	}
 	r.countTime(s)
 	r.Airmass = airmass(s)
@@ -117,6 +124,16 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	r.addRefStar(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
 	return r
+}
+
+// judgeDark says where some steps leave the same mark on dark columns that are enough
+// otherwise: steps of a sparse code that open none of them.
+func (r *Summary) judgeDark(correlation float64) {
+	const same = 1 - 1e-9
+	if g := len(r.Code.DarkColumns); correlation > same && float64(g) >= 2*math.Log2(float64(r.Code.V)) {
+		r.warn("the %d dark columns leave the same mark for some steps, whose frames can be neither told apart nor restored when lost: a step opens %.1f of them in the mean; give code.dark %d or more",
+			g, float64(g*r.Code.K)/float64(r.Code.V), (5*r.Code.V+r.Code.K-1)/r.Code.K)
+	}
 }
 
 // addRefStar says what becomes of the reference star.
@@ -177,7 +194,11 @@ func (r *Summary) String() string {
 	}
 	if r.ReadNoiseGain > 0 {
 		fmt.Fprintf(&b, "gain     over a slit scan in equal time: %.2f where read noise rules;\n", r.ReadNoiseGain)
-		fmt.Fprintf(&b, "         where photon noise rules only elements above %.2f times the mean gain\n", r.PhotonThreshold)
+		if r.PhotonThreshold > 0 {
+			fmt.Fprintf(&b, "         where photon noise rules only elements above %.2f times the mean gain\n", r.PhotonThreshold)
+		} else {
+			fmt.Fprintf(&b, "         where photon noise rules no element gains\n")
+		}
 	}
 	fmt.Fprintf(&b, "\n%-8s %6s %9s\n", "kind", "steps", "minutes")
 	for _, k := range r.Kinds {
@@ -192,6 +213,10 @@ func (r *Summary) String() string {
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
 	if r.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	}
+	if p := r.Pointing; p != nil {
+		fmt.Fprintf(&b, "point    the telescope at RA %.6f, Dec %+.6f, position angle %.4f (degrees):\n", p.RADeg, p.DecDeg, p.RotangDeg)
+		fmt.Fprintf(&b, "         the field lies %.2f arcsec from there, as %d stars say\n", p.AwayArcsec, p.Stars)
 	}
 	if r.RefStar != nil && r.RefStar.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "refstar  %s, airmass %.2f to %.2f\n", r.RefStar.Name, r.RefStar.Airmass[0], r.RefStar.Airmass[1])

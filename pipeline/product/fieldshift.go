@@ -71,3 +71,32 @@ func ReadFieldShift(f *fitsutil.File, n int) (*FieldShift, error) {
 	}
 	return s, nil
 }
+
+// FieldShiftSection is a FieldShift in run.json: what refracted, and the shift of the first
+// and of the last wavelength.
+type FieldShiftSection struct {
+	Airmass      *float64    `json:"airmass,omitempty"` // mean of the science frames
+	GuideNM      float64     `json:"guide_nm,omitempty"`
+	PressureHPa  float64     `json:"pressure_hpa,omitempty"`
+	TemperatureC *float64    `json:"temperature_c,omitempty"`
+	WaterHPa     float64     `json:"water_hpa,omitempty"`
+	Elements     [2]float64  `json:"elements"`
+	Rows         [2]float64  `json:"rows"`
+	Onto         *[2]float64 `json:"onto,omitempty"` // elements and rows, the same for all
+}
+
+// Section sums s up for run.json; nil for nil.
+func (s *FieldShift) Section() *FieldShiftSection {
+	if s == nil {
+		return nil
+	}
+	last := len(s.Rows) - 1
+	out := &FieldShiftSection{
+		Elements: [2]float64{s.Elements[0], s.Elements[last]}, Rows: [2]float64{s.Rows[0], s.Rows[last]}, Onto: s.Onto,
+	}
+	if a := s.Atmosphere; a != nil {
+		out.Airmass, out.GuideNM = &s.Airmass, s.GuideNM
+		out.PressureHPa, out.TemperatureC, out.WaterHPa = a.PressurePa/100, &a.TemperatureC, a.VapourPa/100
+	}
+	return out
+}

@@ -23,9 +23,10 @@ type Noise struct {
 	// but for some read modes; K how often a column is open.
 	PhotonVariance float64
 	K              int
-	// Columns and Rows are the detector's. Uniform tells what PIXELVAR holds.
+	// Columns and Rows are the detector's. Uniform and Mean tell what PIXELVAR holds: all
+	// elements of a pixel have one variance, or the mean over the code's columns is given.
 	Columns, Rows int
-	Uniform       bool
+	Uniform, Mean bool
 	// ResponseVariance is the mean relative variance of a pixel's response.
 	ResponseVariance float64
 	// Response tells whether the voxels were divided by a response.
@@ -36,6 +37,9 @@ type Noise struct {
 const (
 	// OfElements: the variance that every element of the pixel has when decoded.
 	OfElements = "elements"
+	// OfMean: the mean over the code columns of what decoding gives each, restored samples
+	// taken for read ones.
+	OfMean = "mean"
 	// OfUnlit: the variance of one sample that no open mirror lights.
 	OfUnlit = "unlit"
 )
@@ -50,13 +54,16 @@ const (
 //     and in plane 2 their relative variances.
 func (n Noise) NoiseImages(s Schema) ([]fitsutil.ImageSpec, error) {
 	kind := OfUnlit
-	if n.Uniform {
+	switch {
+	case n.Uniform:
 		kind = OfElements
+	case n.Mean:
+		kind = OfMean
 	}
 	h := fitsutil.NewHeader()
 	err := set(h, []card{
 		{"BUNIT", UnitVariance, "variance of detected electrons"},
-		{"PIXVKIND", kind, "plane 1: of decoded elements or unlit samples"},
+		{"PIXVKIND", kind, "plane 1: of decoded elements, mean, unlit"},
 		{"RESPVAR", n.ResponseVariance, "relative variance of a pixel's response"},
 	})
 	if err != nil {
@@ -144,7 +151,7 @@ func (n *Noise) readImages(f *fitsutil.File) error {
 	if n.ResponseVariance, err = im.Header.Float("RESPVAR"); err != nil {
 		return err
 	}
-	n.Uniform, n.Columns, n.Rows = kind == OfElements, im.Width(), im.Height()
+	n.Uniform, n.Mean, n.Columns, n.Rows = kind == OfElements, kind == OfMean, im.Width(), im.Height()
 	for _, u := range f.HDUs() {
 		n.Response = n.Response || u.Name == SlitResponse
 	}

@@ -24,12 +24,18 @@ type Run struct {
 	// Throughput is what was found of the frames' throughput; nil if it was not asked
 	// for.
 	Throughput *Throughput `json:"throughput,omitempty"`
+	// Stars is what listed stars told of the place on the sky; nil if none were listed or
+	// they were not found.
+	Stars *Stars `json:"stars,omitempty"`
 	// Sky is what was subtracted of the sky; nil if nothing was.
 	Sky *SkyReport `json:"sky,omitempty"`
 	// Flux is what the reference star told; nil for a cube in counts.
 	Flux *FluxReport `json:"flux,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
+	// FieldShift says where in the field the light of the voxels was taken; nil at their
+	// own places.
+	FieldShift *FieldShiftSection `json:"field_shift,omitempty"`
 	// Audit is what the audit found of the pairing of frames; nil without one.
 	Audit    any      `json:"audit,omitempty"`
 	Warnings []string `json:"warnings"`

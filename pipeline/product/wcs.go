@@ -3,6 +3,7 @@ package product
 import (
 	"math"
 
+	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -42,6 +43,18 @@ func (s Schema) wcs() []card {
 		{"RADESYS", "ICRS", ""},
 	}
 	return append(cards, s.Frame.cards()...)
+}
+
+// PlaceCards are the values of the cards by which images tell where on the sky they lie.
+func (s Schema) PlaceCards() []fitsutil.Card {
+	var cards []fitsutil.Card
+	for _, c := range s.wcs() {
+		switch c.key {
+		case "CRVAL1", "CRVAL2", "CD1_1", "CD1_2", "CD2_1", "CD2_2":
+			cards = append(cards, fitsutil.Card{Key: c.key, Value: c.value, Comment: c.comment})
+		}
+	}
+	return cards
 }
 
 // spectralType is CTYPE3 of a grid.

@@ -134,6 +134,18 @@ func (d *decoder) judgeSteps(w *decodeWorker, p, n int, variance float64, q *blo
 	for i, z := range w.projected {
 		q.steps[i] += z * z
 	}
-	_, closed := d.code.Code().InverseEntries()
-	q.noise += variance / (closed * closed * d.scale.quietSum * d.repair.meanRatio) * d.scale.meanQuiet()
+	q.noise += variance / (d.darkQuiet() * d.repair.meanRatio) * d.scale.meanQuiet()
+}
+
+// darkQuiet is the variance of a dark decode of dark samples, in units of one's.
+func (d *decoder) darkQuiet() float64 {
+	if d.code.VarianceUniform() {
+		_, closed := d.code.Code().InverseEntries()
+		return closed * closed * d.scale.quietSum
+	}
+	sum := 0.0
+	for _, column := range d.darkColumns {
+		sum += d.quietSum[column]
+	}
+	return sum / float64(len(d.darkColumns))
 }

@@ -63,6 +63,7 @@ type decodeWorker struct {
 	hits                               hits
 	darkSum, darkSquare, darkVariance  []float64 // of each pixel's dark decodes
 	residual, projected                []float64 // of one pixel: dark decodes, by step
+	white                              []float64 // mean variance of each pixel's samples
 }
 
 func (d *decoder) newWorker() *decodeWorker {
@@ -89,7 +90,7 @@ func (d *decoder) newWorker() *decodeWorker {
 		}
 	}
 	if !d.code.VarianceUniform() {
-		w.variance, w.smooth = make([]float32, d.slots*n), make([]float32, d.slots*n)
+		w.variance, w.smooth, w.white = make([]float32, d.slots*n), make([]float32, d.slots*n), make([]float64, n)
 	}
 	return w
 }
@@ -130,7 +131,9 @@ func (d *decoder) run(w *decodeWorker, s *strip, y, b int, out *decodedRow, q *b
 	copy(out.flags[x0:x1], s.flags[at:at+n])
 	for p, v := range s.levelVariance[at : at+n] {
 		out.common[x0+p] = float32(float64(v) / (d.k * d.k))
-		out.unlit[x0+p] = float32(quiet[p] + (1+d.photonExcess)*float64(s.level[at+p]))
+	}
+	if !uniform {
+		d.pixelVariance(out.pixel[x0:x1], w, s, at, quiet)
 	}
 	s.keep(w, at, n, out, x0, uniform)
 	d.judge(w, out, x0, n, q)
@@ -291,7 +294,8 @@ const varianceFloor = 0.5
 // ownVariances computes each column's variance where they differ: from the
 // light that the decoded, smoothed elements predict for each slot, since a
 // column of few samples would else weigh its own noise. As with equal variances
-// only the sum is floored.
+// only the sum is floored. Restored samples count as if they had been read, as noisily as
+// the others; what restoring adds comes on top.
 func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []float64) {
 	for j := range d.slots {
 		smoothRow(w.smooth[j*n:(j+1)*n], w.decoded[j*n:(j+1)*n])
@@ -299,9 +303,13 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	d.code.Predict(w.variance, w.smooth, n, n)
 	for i := range d.slots {
 		row := w.variance[i*n : (i+1)*n]
+		dark, bright := d.scale.quiet[i], d.scale.light[i]
+		if d.scale.isLost(i) && d.repair.restores() {
+			dark, bright = d.scale.meanQuiet(), d.scale.meanLight()
+		}
 		for p := range row {
 			light := float64(row[p]) + float64(s.level[at+p])
-			v := d.scale.quiet[i]*quiet[p] + (1+d.photonExcess)*d.scale.light[i]*light
+			v := dark*quiet[p] + (1+d.photonExcess)*bright*light
 			row[p] = float32(v + d.scale.uncertain[i]*light*light)
 		}
 	}
@@ -314,12 +322,60 @@ func (d *decoder) ownVariances(w *decodeWorker, s *strip, at, n int, quiet []flo
 	}
 	d.addExtra(w, s, at, n)
 	copy(w.smooth, w.variance)
+	clear(w.white)
+	for i := range d.slots {
+		for p, s2 := range w.smooth[i*n : (i+1)*n] {
+			w.white[p] += float64(s2) / float64(d.slots)
+		}
+	}
 	d.code.Variance(w.variance, w.smooth, n, n, 0)
+	d.addSpread(w, n)
 	for j := range d.slots {
 		row := w.variance[j*n : (j+1)*n]
 		for p, v := range row {
 			floor := varianceFloor * quiet[p] * d.quietSum[j]
-			row[p] = float32(max(float64(v), floor)*d.grown(w, p) + float64(s.levelVariance[at+p])/(d.k*d.k))
+			row[p] = float32(max(float64(v), floor) + float64(s.levelVariance[at+p])/(d.k*d.k))
+		}
+	}
+}
+
+// pixelVariance fills in decodedRow.pixel after ownVariances: A's squares add up to
+// ReadNoiseVariance in each row and in each column.
+func (d *decoder) pixelVariance(dst []float32, w *decodeWorker, s *strip, at int, quiet []float64) {
+	code := d.code.Code()
+	unit := code.Design().ReadNoiseVariance()
+	for p := range dst {
+		if code.Family() == hadamard.SlitScan {
+			dst[p] = float32(quiet[p] + (1+d.photonExcess)*float64(s.level[at+p]))
+			continue
+		}
+		least := varianceFloor * quiet[p] * d.scale.meanQuiet()
+		dst[p] = float32(unit*max(w.white[p], least) + float64(s.levelVariance[at+p])/(d.k*d.k))
+	}
+}
+
+// addSpread adds to the variances of a block what restoring its lost rows and struck samples
+// adds.
+func (d *decoder) addSpread(w *decodeWorker, n int) {
+	if d.repair == nil || len(w.hits.list) == 0 && !d.repair.restores() {
+		return
+	}
+	add := func(p int, spread func(j int) float64) {
+		for j := range d.slots {
+			w.variance[j*n+p] += float32(w.white[p] * spread(j))
+		}
+	}
+	if d.repair.restores() {
+		for p := range n {
+			if w.growth[p] == 1 {
+				add(p, func(j int) float64 { return d.repair.lost.Spread[j] })
+			}
+		}
+	}
+	m := len(w.hits.list)
+	for i, one := range w.hits.list {
+		if one.growth != 0 {
+			add(one.pixel, func(j int) float64 { return w.hits.spread[j*m+i] })
 		}
 	}
 }

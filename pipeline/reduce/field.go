@@ -90,8 +90,54 @@ func (r *reduction) refract(night product.Schema) error {
 		shift.Elements, shift.Rows = append(shift.Elements, x-x0), append(shift.Rows, y-y0)
 	}
 	r.shift = &shift
+	r.warnDrift(moments, shift, night)
+	r.warnPointing(moments[0])
 	r.log.Info("refraction", zap.Float64("airmass", shift.Airmass), zap.Float64("elements", shift.Elements[0]-shift.Elements[n-1]), zap.Float64("rows", shift.Rows[0]-shift.Rows[n-1]))
 	return nil
+}
+
+// warnDrift tells of refraction that changes so much within the science frames that its
+// mean does not stand for all of them.
+func (r *reduction) warnDrift(moments []moment, s product.FieldShift, night product.Schema) {
+	site, target := r.seq.Profile.Site, r.seq.Target
+	least, most := math.Inf(1), 0.0
+	for _, m := range moments {
+		x := physics.TargetAirmass(target.RADeg, target.DecDeg, m.middle, site.LatitudeDeg, site.LongitudeEastDeg)
+		tan := math.Tan(physics.AirmassZenithDistance(x) * math.Pi / 180)
+		least, most = min(least, tan), max(most, tan)
+	}
+	axis := r.schema.Axis()
+	arcsec := 0.0
+	for _, i := range []float64{0, float64(axis.Grid.Count - 1)} {
+		arcsec = max(arcsec, (most-least)*math.Abs(s.Atmosphere.DifferentialRefraction(axis.ObservedNM(i), s.GuideNM, 45)))
+	}
+	if voxel := 3600 * min(night.C1Deg, night.C2Deg); arcsec > voxel {
+		r.warn("refraction changes by %.2g arcsec within the science frames at an end of the band, more than a voxel of %.2g: its mean is taken out, the rest blurs the image; plan shorter cycles, or guide within the band", arcsec, voxel)
+	}
+}
+
+// warnPointing compares what a frame says of its place on the sky with the target's, of
+// which air mass and refraction were computed.
+func (r *reduction) warnPointing(m moment) {
+	const degrees, airmass = 0.5, 0.05
+	site, target, key := r.seq.Profile.Site, r.seq.Target, r.seq.Profile.Keywords
+	h := m.frame.Image.Header
+	if ra, err := h.Float(key.RA); err == nil {
+		off := func(ra float64) float64 { return math.Abs(math.Remainder(ra-target.RADeg, 360)) }
+		switch {
+		case off(ra) <= degrees:
+		case off(15*ra) <= degrees:
+			r.warn("frame %s has %s = %g, the target's %g degrees in hours; the target's is used, but other programs will take it for degrees", m.frame.Name, key.RA, ra, target.RADeg)
+		default:
+			r.warn("frame %s has %s = %g where the target has %g degrees; check ra_deg, of which the refraction was computed", m.frame.Name, key.RA, ra, target.RADeg)
+		}
+	}
+	if said, err := h.Float(key.Airmass); err == nil {
+		x := physics.TargetAirmass(target.RADeg, target.DecDeg, m.middle, site.LatitudeDeg, site.LongitudeEastDeg)
+		if math.Abs(said-x) > airmass*x {
+			r.warn("frame %s has %s = %.3f where site, target and time give %.3f; check the profile's site and the target's place", m.frame.Name, key.Airmass, said, x)
+		}
+	}
 }
 
 // mostZenithDeg: nearer the horizon plane layers of air are no model.

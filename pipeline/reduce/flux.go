@@ -346,8 +346,12 @@ func (r *reduction) starAir(source *skyflux.Source) (skyflux.Exposures, error) {
 // cardAirmass is the mean of the science frames'.
 const cardAirmass = "AIRMASS"
 
-// airCards are for the primary header of a cube that was brought to the sky.
+// airCards are for the primary header of a cube that was brought to the sky; none for one
+// that stays as it is.
 func (r *reduction) airCards() []fitsutil.Card {
+	if r.onSky.done == (product.OnSky{}) {
+		return nil
+	}
 	cards := []fitsutil.Card{{Key: "EXPTIME", Value: r.roles.calibration.scienceSeconds, Comment: "[s] one science exposure"}}
 	if x := r.onSky.air.Airmass(); x > 0 {
 		cards = append(cards, fitsutil.Card{Key: cardAirmass, Value: x, Comment: "mean of the science exposures"})

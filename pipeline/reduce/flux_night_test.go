@@ -28,7 +28,7 @@ func TestFluxNight(t *testing.T) {
 	require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 9}))
 	run := func(flux reduce.FluxRecipe) (*reduce.Result, error) {
 		require.NoError(t, os.RemoveAll(night.Run(trial.Noisy)))
-		recipe, err := trial.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, flux)
+		recipe, err := f.OnSkyRecipe(reduce.SkyRecipe{Use: "auto"}, flux)
 		require.NoError(t, err)
 		return night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true, Recipe: recipe})
 	}

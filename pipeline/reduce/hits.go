@@ -35,6 +35,9 @@ type hits struct {
 	slope     []float32
 	residual  []float64
 	repair    hadamard.Repair
+	// spread is hadamard.Restorer.Spread where variances differ between elements, [code
+	// column][hit]; column is that of one hit.
+	spread, column []float64
 }
 
 // collectHits looks for struck samples in a block that was loaded, fills them with the
@@ -131,6 +134,9 @@ func (d *decoder) restoreHits(w *decodeWorker, s *strip, at, n, x0, y int, q *bl
 		}
 	}
 	h.free = growFloats(h.free, d.slots*m)
+	if d.repair.additive {
+		h.spread, h.column = growFloats(h.spread, d.slots*m), growFloats(h.column, d.slots)
+	}
 	d.settle(h.raw, h.free, h.size, h.slope, m, func(free []float32) {
 		for i := range h.list {
 			d.restoreHit(w, i, m, free)
@@ -173,6 +179,12 @@ func (d *decoder) restoreHit(w *decodeWorker, i, m int, free []float32) {
 		return
 	}
 	one.growth = h.repair.Growth
+	if d.repair.additive {
+		d.repair.restorer.Spread(h.column, one.rows, &h.repair)
+		for j, x := range h.column {
+			h.spread[j*m+i] = x
+		}
+	}
 	code := d.code.Code()
 	open, closed := code.InverseEntries()
 	for j := range d.slots {
@@ -192,9 +204,9 @@ func (d *decoder) restoreHit(w *decodeWorker, i, m int, free []float32) {
 }
 
 // growFloats gives n floats, of x's memory if that suffices.
-func growFloats(x []float32, n int) []float32 {
+func growFloats[T float32 | float64](x []T, n int) []T {
 	if cap(x) < n {
-		return make([]float32, n)
+		return make([]T, n)
 	}
 	return x[:n]
 }

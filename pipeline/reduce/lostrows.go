@@ -28,7 +28,7 @@ func (r *reduction) newRepair(d *decoder, off []*exposure.Frame) (p *repair, lac
 	if !checks.Reliable() {
 		return nil, fmt.Errorf("%d dark columns are too few to restore anything: %d are needed for a code of %d", len(d.darkColumns), neededDark(d.slots), d.slots)
 	}
-	p, lack = newRepair(checks, d.elementColumns, &d.scale, len(off) == 0)
+	p, lack = newRepair(checks, d.elementColumns, &d.scale, len(off) == 0, d.code.VarianceUniform())
 	if lack == nil && math.Sqrt(p.lost.Growth) > hopelessGrowth {
 		lack = fmt.Errorf("restoring them would multiply the noise by %.2g", math.Sqrt(p.lost.Growth))
 	}
@@ -47,6 +47,9 @@ func (r *reduction) scienceRepair(d *decoder) {
 	d.repair, lack = r.newRepair(d, r.roles.calibration.off)
 	if d.repair == nil && len(d.darkColumns) > 0 && r.opts.Recipe.Repair.Use != useOff {
 		r.warn("lost frames are not restored, no error scale is measured, and cosmic rays are looked for in single frames: %v", lack)
+	}
+	if d.repair != nil && d.repair.additive {
+		r.warn("no error scale is measured: the %s code is no S-matrix, so that errors of seeing, guiding and flexure do not spread evenly over its columns, dark ones among them", r.seq.Family)
 	}
 	if d.repair != nil && lack == nil {
 		d.repair.pursuit = newPursuit(d.repair.left)

@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"mirrorloom/calib/physics"
+	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
 )
@@ -14,6 +15,7 @@ import (
 type moment struct {
 	middle  time.Time // UTC, of the exposure
 	seconds float64   // exposed
+	frame   *exposure.Frame
 }
 
 // moments are those of the science frames used, in the order of code rows. The error
@@ -31,7 +33,7 @@ func (r *reduction) moments() ([]moment, error) {
 				return nil, fmt.Errorf("frame %s: %s %w", f.Name, r.seq.Profile.Keywords.DateObs, err)
 			}
 			seconds := r.seq.Steps[f.Step].ExptimeSeconds
-			all = append(all, moment{start.Add(time.Duration(seconds / 2 * float64(time.Second))), seconds})
+			all = append(all, moment{start.Add(time.Duration(seconds / 2 * float64(time.Second))), seconds, f})
 		}
 	}
 	if len(all) == 0 {

@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 )
 
@@ -13,6 +14,7 @@ func (r *reduction) noise() product.Noise {
 		Family: r.seq.Family, V: r.seq.V, K: r.seq.K, Poly: r.seq.Poly,
 		PhotonVariance: 1 + r.camera.PhotonExcess,
 		Columns:        r.camera.Columns, Rows: r.camera.Rows, Uniform: r.shape.uniform,
+		Mean:             !r.shape.uniform && hadamard.Family(r.seq.Family) != hadamard.SlitScan,
 		ResponseVariance: r.optics.pixelVariance(), Response: r.optics.response != nil,
 		Element: make([]int32, r.seq.V), Frames: make([]int32, r.seq.V), ThroughputErr: make([]float64, r.seq.V),
 	}

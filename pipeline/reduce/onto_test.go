@@ -1,6 +1,8 @@
 package reduce_test
 
 import (
+	"bytes"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -138,6 +140,45 @@ func TestOntoRefusals(t *testing.T) {
 	require.NotZero(t, result.Schema.Frame.Factor)
 }
 
+// A frame whose header contradicts the target is said: a right ascension in hours, another
+// place, another air mass.
+func TestPointingWarnings(t *testing.T) {
+	ctx := t.Context()
+	f, err := trial.Tiny()
+	require.NoError(t, err)
+	night, err := f.Plan(ctx, t.TempDir())
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe("nominal")
+	require.NoError(t, err)
+	recipe.Grid.Refraction = "auto"
+	for _, c := range []struct{ key, value, want string }{
+		{"RA", "8.22", "degrees in hours"}, {"RA", "12.5", "check ra_deg"}, {"AIRMASS", "2.9", "where site, target and time give"},
+	} {
+		require.NoError(t, night.Rehearse(ctx, trial.Noisy, rehearse.Options{Seed: 3, NoTruth: true}))
+		setCard(t, night.Frames(trial.Noisy), c.key, c.value)
+		result, err := night.Reduce(ctx, trial.Noisy, reduce.Options{Cube: true, Recipe: recipe})
+		require.NoError(t, err)
+		require.Len(t, result.Run.Warnings, 1)
+		require.Contains(t, result.Run.Warnings[0], c.want)
+		require.NoError(t, night.Discard(trial.Noisy))
+	}
+}
+
+// setCard gives a card of all frames of a folder another number.
+func setCard(t *testing.T, folder, key, value string) {
+	t.Helper()
+	frames, err := filepath.Glob(filepath.Join(folder, "*.fits"))
+	require.NoError(t, err)
+	for _, path := range frames {
+		data, err := os.ReadFile(path)
+		require.NoError(t, err)
+		at := bytes.Index(data, []byte((key + "        ")[:8]+"="))
+		require.Positive(t, at, path)
+		copy(data[at+9:at+80], fmt.Appendf(nil, " %20s%-50s", value, ""))
+		require.NoError(t, os.WriteFile(path, data, 0o644))
+	}
+}
+
 // Where no air mass can be computed refraction stays in the cube, which is said.
 func TestRefractionWithoutAirmass(t *testing.T) {
 	ctx := t.Context()
@@ -172,4 +213,52 @@ func TestRefractionWithoutAirmass(t *testing.T) {
 		require.Contains(t, result.Degraded[0], c.want, name)
 		require.Equal(t, reduce.ExitDegraded, result.Run.Exit)
 	}
+}
+
+// So does a night whose instrument is calibrated by its own lamps: the light that comes from
+// other elements and rows is divided by their response, not by that of the voxel's own.
+func TestOntoOfACalibratedNight(t *testing.T) {
+	ctx := t.Context()
+	f, err := trial.Lamps()
+	require.NoError(t, err)
+	f.Target.Code.ElementMirrors = 1
+	f.Scene.SeeingFWHMArcsec = max(f.Scene.SeeingFWHMArcsec, 1.2)
+	first, _, err := f.Pair(ctx, filepath.Join(t.TempDir(), "first"), 51)
+	require.NoError(t, err)
+	second, err := f.Displaced(1.4, 1.5).Plan(ctx, filepath.Join(t.TempDir(), "second"))
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe(reduce.DefaultRecipe)
+	require.NoError(t, err)
+	recipe.Grid.Onto = first.CubePath(trial.Noisy)
+	cubes := map[string]*trial.Cube{}
+	for name, opts := range map[string]rehearse.Options{trial.Noisy: {Seed: 51, NoTruth: true}, trial.Twin: {Seed: 51, Noiseless: true, NoTruth: true}} {
+		require.NoError(t, second.Rehearse(ctx, name, opts))
+		_, err := second.Reduce(ctx, name, reduce.Options{Cube: true, Recipe: recipe})
+		require.NoError(t, err)
+		cubes[name], err = trial.ReadCube(second.CubePath(name))
+		require.NoError(t, err)
+	}
+	want, err := trial.ReadCube(first.CubePath(trial.Noisy))
+	require.NoError(t, err)
+	truth, err := want.ReadTruth(first.TruthPath(trial.Noisy))
+	require.NoError(t, err)
+	low, high := want.Rows, 0
+	for i := range truth {
+		if want.Good(i) {
+			low, high = min(low, i/want.N%want.Rows), max(high, i/want.N%want.Rows)
+		}
+	}
+	for i := range truth {
+		if y := i / want.N % want.Rows; y < low+6 || y > high-6 || i%want.N < 3 || i%want.N > want.N-4 {
+			truth[i] = float32(math.NaN())
+		}
+	}
+	own, err := trial.NewPulls(want, truth, want.Variance, 1)
+	require.NoError(t, err)
+	p, err := trial.NewPulls(cubes[trial.Noisy], truth, cubes[trial.Twin].Variance, 1)
+	require.NoError(t, err)
+	t.Logf("pulls: mean %.4f, std %.4f (of the first night %.4f, %.4f), N = %d", p.All.Mean(), p.All.Std(), own.All.Mean(), own.All.Std(), p.All.N)
+	require.InDelta(t, 0, p.All.Mean(), 0.05)
+	require.InDelta(t, 1, p.All.Std(), 0.05)
+	require.Greater(t, p.All.N, 20000)
 }

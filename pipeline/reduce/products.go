@@ -70,6 +70,9 @@ func (r *reduction) judge(flags int16) {
 
 // finish appends the tables and gives every product its name.
 func (r *reduction) finish(context.Context) (int64, error) {
+	if err := r.findStars(); err != nil {
+		return 0, err
+	}
 	noteCycles(r.night.Ledger, r.seq, r.opts.Cycles)
 	r.roles.fillLedger(r.night.Ledger, r.album.Frames, r.seq, r.camera.Columns*r.camera.Rows)
 	if r.cube != nil {

@@ -178,13 +178,36 @@ func (d *decoder) searchPixel(w *decodeWorker, x, n int, hinted func(int) bool, 
 	p.checks.Whiten(k.checks, k.residual)
 	there := float64(d.slots - len(d.scale.lost))
 	p.search.Find(k.search, k.checks, k.noise[x]*k.excess[x], (1+d.photonExcess)*d.scale.lightSum/(there*there), hinted)
-	switch {
-	case k.search.Ambiguous || len(k.search.Hits) > 0 && k.search.Left > p.tolerable:
-		k.doubtful[x] = true
-	default:
-		for _, h := range k.search.Hits {
+	before := len(found)
+	for _, h := range k.search.Hits {
+		if d.outstanding(w, x, n, h) {
 			found = append(found, struckRow{x, h})
 		}
 	}
+	if len(found) > before && (k.search.Ambiguous || k.search.Left > p.tolerable) {
+		k.doubtful[x] = true
+		found = found[:before]
+	}
 	return found
+}
+
+// outstanding tells whether a hit that the search found in pixel x stands out of its own
+// sample's noise as well. The search takes all samples of a pixel for equally noisy. Those of
+// an S-matrix are, but for a factor of 2; those of a sparse code that show a bright star may
+// be far noisier than the rest, and many of them would be called struck. The charge of a
+// sample whose part in the checks is P_kk has the variance s_k^2 + (1/P_kk - 1) s^2.
+func (d *decoder) outstanding(w *decodeWorker, x, n int, h hadamard.Hit) bool {
+	if !d.repair.additive {
+		return true
+	}
+	k, rule := w.pursuit, hadamard.DefaultPursuitRule(d.repair.left.G())
+	mean := k.noise[x] * k.excess[x]
+	light := d.scale.light[h.Row] * (float64(w.samples[h.Row*n+x]) - h.Charge)
+	usual := w.sum[x] / float64(d.slots-len(d.scale.lost))
+	own := max(mean+(1+d.photonExcess)*(light-usual), mean/2)
+	limit := rule.Sigmas
+	if h.Hinted {
+		limit = rule.HintSigmas
+	}
+	return h.Charge > limit*math.Sqrt(own+mean*(1/d.repair.share[h.Row]-1))
 }

@@ -37,6 +37,7 @@ type Recipe struct {
 	Grid       GridRecipe     `yaml:"grid" config:"optional"`
 	Throughput StageRecipe    `yaml:"throughput" config:"optional"`
 	Repair     StageRecipe    `yaml:"repair" config:"optional"`
+	Stars      StarsRecipe    `yaml:"stars" config:"optional"`
 
 	// SHA is the lower-case hex SHA-256 of the recipe's text (RECSHA).
 	SHA string `yaml:"-" config:"-"`
@@ -95,6 +96,7 @@ func (r *Recipe) SetDefaults() {
 	r.Flat, r.Arc, r.Throughput, r.Repair = auto, auto, auto, auto
 	r.Sky, r.Flux = SkyRecipe{Use: useOff}, FluxRecipe{Use: useOff}
 	r.Detector.SetDefaults()
+	r.Stars.SetDefaults()
 	r.Grid = GridRecipe{Use: useAuto, Refraction: useOff}
 }
 
@@ -144,6 +146,8 @@ func (r *Recipe) check(doc *config.Doc) error {
 	c.OneOf("flat.use", r.Flat.Use, useAuto, useOff)
 	c.That(r.Arc.Use == useAuto || r.Arc.Use == useOff || strings.HasSuffix(r.Arc.Use, ".fits"), "arc.use",
 		"%q is unknown; use auto, off, or the cube.fits of a run of the same instrument", r.Arc.Use)
+	r.Stars.check(c)
+	c.That(r.Stars.Use == useOff || r.Grid.Onto == "", "stars.use", "the cube's place is that of grid.onto, which stars would move again; leave one of them out")
 	r.Sky.check(c)
 	r.Flux.check(c)
 	r.checkGrid(c)

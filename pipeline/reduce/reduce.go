@@ -169,6 +169,7 @@ type reduction struct {
 	report    product.Calibration
 	rectifier *rectifier
 	quality   product.Quality
+	stars     starSearch
 	samples   restoredSamples
 	badPixels int
 	stages    []product.Stage
@@ -203,6 +204,9 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	}
 	if err := checkCycles(r.seq, r.opts.Cycles); err != nil {
 		return 0, fmt.Errorf("%s: %w", r.opts.Sequence, err)
+	}
+	if err := r.readStars(); err != nil {
+		return 0, err
 	}
 	if err := os.MkdirAll(r.scratch(), 0o755); err != nil {
 		return 0, fmt.Errorf("make a scratch folder: %w", err)
@@ -389,6 +393,7 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 			out.flags[i] |= unknown
 		}
 	}
+	r.stars.look(out, w.shape)
 	for row := range out.h {
 		y := out.y0 + row
 		w.quality[y].count(out, row, w.shape.elements, w.shape.voxels, r.usage.row(y))
@@ -418,8 +423,10 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
 		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
-		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
+		FieldShift: r.shift.Section(),
+		Warnings:   append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
+	run.Stars = r.stars.report
 	if r.night.Audit != nil {
 		run.Audit = r.night.Audit
 	}

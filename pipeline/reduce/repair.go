@@ -41,16 +41,20 @@ type repair struct {
 	// each to it; nil where they are all the same.
 	meanRatio float64
 	byElement []float32
+	// additive: variances differ between the elements, as with codes that are no
+	// S-matrices. What restoring adds to an element's is then Spread times the mean
+	// variance of a sample, and the ratios are not used.
+	additive bool
 }
 
 // newRepair prepares for slots of these frames. lack, if the lost rows cannot be
-// restored, says why.
-func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedestal bool) (p *repair, lack error) {
+// restored, says why. uniform: all elements of a pixel have the same variance.
+func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedestal, uniform bool) (p *repair, lack error) {
 	if pedestal {
 		checks = checks.WithoutPedestal()
 	}
 	// Beyond a quarter, noise grows and singular sets are no longer rare.
-	p = &repair{restorer: checks.NewRestorer(), most: len(checks.Columns()) / 4, pedestal: pedestal, meanRatio: 1}
+	p = &repair{restorer: checks.NewRestorer(), most: len(checks.Columns()) / 4, pedestal: pedestal, meanRatio: 1, additive: !uniform}
 	left, err := checks.WithoutRows(scale.lost)
 	if err != nil {
 		return nil, err
@@ -62,6 +66,9 @@ func newRepair(checks *hadamard.Checks, elements []int, scale *slotScale, pedest
 	}
 	if p.lost, lack = p.restorer.Lost(scale.lost, scale.quiet); lack != nil {
 		return p, lack
+	}
+	if p.additive {
+		return p, nil
 	}
 	ratio := p.lost.Ratio
 	if weighted, ok := p.weigh(checks, scale); ok {
@@ -143,11 +150,14 @@ func (d *decoder) lostFlag() int16 {
 func (p *repair) bears(struck int) bool { return p != nil && p.lost != nil && struck <= p.most }
 
 // darkShare is the expected sum of squared dark decodes over g times the variance of
-// the elements. Weights change the latter alone.
+// the elements, or of the dark columns with all rows at hand where variances differ.
+// Weights change the former alone.
 func (p *repair) darkShare() float64 {
 	switch {
 	case p == nil || p.lost == nil:
 		return 1
+	case p.additive:
+		return float64(p.left.G()) / float64(len(p.left.Columns()))
 	case p.weights != nil:
 		return p.lost.DarkShare * p.lost.Growth / p.weights.Growth
 	}

@@ -69,7 +69,7 @@ func (c *repairCase) prepare(t *testing.T) bool {
 	checks, err := hadamard.NewChecks(c.decoder.code.Code(), c.dark)
 	require.NoError(t, err)
 	var lack error
-	c.decoder.repair, lack = newRepair(checks, c.decoder.elementColumns, &c.decoder.scale, false)
+	c.decoder.repair, lack = newRepair(checks, c.decoder.elementColumns, &c.decoder.scale, false, true)
 	return lack == nil
 }
 
@@ -274,7 +274,7 @@ func TestPedestalFromDarkColumns(t *testing.T) {
 		}
 		checks, err := hadamard.NewChecks(c.decoder.code.Code(), c.dark)
 		require.NoError(t, err)
-		c.decoder.repair, err = newRepair(checks, c.decoder.elementColumns, &c.decoder.scale, true)
+		c.decoder.repair, err = newRepair(checks, c.decoder.elementColumns, &c.decoder.scale, true, true)
 		require.NoError(t, err)
 		c.expose()
 		_, _, _, out, q := c.pulls()

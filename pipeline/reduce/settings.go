@@ -30,6 +30,9 @@ func (r *reduction) settings() map[string]any {
 			"throughput": stage(recipe.Throughput), "repair": stage(recipe.Repair),
 		},
 	}
+	if s := recipe.Stars; s.Use != useOff {
+		settings["recipe"].(map[string]any)["stars"] = map[string]any{"use": s.Use, "fit": s.Fit, "search_arcsec": s.SearchArcsec}
+	}
 	if len(r.opts.Cycles) > 0 {
 		settings["cycles"] = r.opts.Cycles
 	}

@@ -50,6 +50,11 @@ func newSlotScale(slots [][]*exposure.Frame, c *correction) slotScale {
 // isLost tells a slot without frames.
 func (s *slotScale) isLost(slot int) bool { return s.quiet[slot] == 0 }
 
+// meanLight is the mean of light over the slots with frames.
+func (s *slotScale) meanLight() float64 {
+	return s.lightSum / float64(max(1, len(s.quiet)-len(s.lost)))
+}
+
 // meanQuiet is the mean of quiet over the slots with frames.
 func (s *slotScale) meanQuiet() float64 {
 	return s.quietSum / float64(max(1, len(s.quiet)-len(s.lost)))

@@ -291,7 +291,7 @@ func (w *sweep) dividePixels(row *decodedRow) {
 	}
 	for x, f := range factor {
 		row.common[x] /= f * f
-		row.unlit[x] /= f * f
+		row.pixel[x] /= f * f
 	}
 	for x, f := range flags {
 		row.flags[x] |= f
@@ -307,7 +307,7 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 		f.Variance(r)
 	}
 	f.Variance(row.common)
-	f.Variance(row.unlit)
+	f.Variance(row.pixel)
 	// From here on the scales are those of variances, as the rectifier takes them.
 	for x, v := range row.variance[0] {
 		row.scale[x] *= v

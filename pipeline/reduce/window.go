@@ -13,9 +13,10 @@ type decodedRow struct {
 	// own are the flags before those of neighbouring rows spread to this one.
 	own []calib.Flag
 	// common is the part of variance that all elements of a pixel share: that of what
-	// was taken off all frames. unlit is the variance of a sample that no open mirror
-	// lights; it is filled in where variance differs between the elements.
-	common, unlit []float32
+	// was taken off all frames. pixel is filled in where variance differs between the
+	// elements: the mean over the code columns of what decoding alone gives them or, of a
+	// slit scan, the variance of a sample that no open mirror lights.
+	common, pixel []float32
 	// measured is, by column, the mean square of the dark decodes in units of the
 	// variance of elements, unmeasured where flags forbid it; expected is that variance
 	// as the noise model has it, before the response is divided out.
@@ -36,7 +37,7 @@ func newDecodedRow(elements, variances, columns int) *decodedRow {
 	return &decodedRow{
 		signal: planes(elements, columns), variance: planes(variances, columns),
 		flags: make([]calib.Flag, columns), own: make([]calib.Flag, columns),
-		common: make([]float32, columns), unlit: make([]float32, columns),
+		common: make([]float32, columns), pixel: make([]float32, columns),
 		measured: make([]float32, columns), expected: make([]float32, columns),
 		pedestal: make([]float32, columns), level: make([]float32, columns),
 		scale: make([]float32, columns), applied: make([]float32, columns),
@@ -49,7 +50,7 @@ func (r *decodedRow) pixelVariance(uniform bool) (own, common []float32) {
 	if uniform {
 		return r.variance[0], r.common
 	}
-	return r.unlit, r.common
+	return r.pixel, r.common
 }
 
 // window holds decoded rows in order until no trace needs them.

@@ -67,7 +67,7 @@ func newPage(in Input) *page {
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
 		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: calibrationFacts(in.Run.Calibration),
-		OnSky:    append(skyFacts(in.Run.Sky), fluxFacts(in.Run.Flux)...),
+		OnSky:    slices.Concat(skyFacts(in.Run.Sky), fluxFacts(in.Run.Flux), starFacts(in.Run.Stars)),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")
