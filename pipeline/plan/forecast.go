@@ -28,6 +28,11 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	if at := r.Forecast.Saturation; at.Saturated() {
 		r.warn("the brightest pixel (column %d, row %d) will saturate: %.0f e of %.0f, most of it from %s; expose for less than %.3g s", at.Column, at.Row, at.Electrons, at.Limit, sourceWords(at), at.LongestDwellSeconds)
 	}
+	for _, m := range r.Forecast.Wanted {
+		if m.Voxels == 0 {
+			r.warn("%s is not seen by this plan: it lies beyond the field, or its wavelengths beyond the detector", m.Name)
+		}
+	}
 	return nil
 }
 
