@@ -18,10 +18,7 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	if err != nil {
 		return err
 	}
-	r.Forecast, err = light.Of(ctx, forecast.Candidate{
-		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
-		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
-	})
+	r.Forecast, err = light.Of(ctx, candidateOf(s))
 	if err != nil {
 		return err
 	}
