@@ -42,8 +42,9 @@ const minTermDirections = 0.5
 
 // ThroughputTerms is Throughput with terms: first the readings' factor alone, then each
 // term in its order together with what was kept before, kept where the held-out chi-square
-// falls (a term that is not, together with the factor if that was not kept before; and the factor again at the end, if it was not kept before); at last all that is
-// kept, on all checks. priors[0] is the prior covariance of the throughput's E, priors[m]
+// falls (a term that is not, together with the factor if that was not kept before; and the
+// factor again at the end, if it was not kept before); at last all that is kept, on all
+// checks, where it stands above its error. priors[0] is the prior covariance of the throughput's E, priors[m]
 // that of term m, v x v each; one of low rank ties rows together, as an extinction smooth
 // in time does.
 //
@@ -150,13 +151,48 @@ func (s *termSearch) activePriors() []*mat.SymDense {
 	return active
 }
 
-// finish fits all that was kept on all checks.
+// leastSignificance is how many times its error a term must be, both rms over the rows. A
+// scene whose light in the term is almost that of the factor (sky lines on a smooth sky)
+// tells the two only together: the held-out chi-square falls by what a second factor
+// absorbs of the first one's error, and the throughput would be given away for it. Noise
+// alone makes a term of less than 1 of its errors, 1.5 being several standard deviations of
+// that over tens of rows.
+const leastSignificance = 1.5
+
+// fitKept fits all that was kept on all checks, without terms that do not stand above
+// their errors.
+func (s *termSearch) fitKept() (fit *ThroughputFit, found []TermFit, err error) {
+	used := s.checks.usedRows()
+	for {
+		terms := s.terms()
+		fit, found, err = s.checks.fitTerms(s.gram.sums(terms), s.activePriors(), terms)
+		if err != nil {
+			return nil, nil, err
+		}
+		dropped := false
+		for a, m := range terms[1:] {
+			f := &found[a+1]
+			square := 0.0
+			for _, k := range used {
+				square += f.E[k] * f.E[k] / float64(len(used))
+			}
+			if math.Sqrt(square) < leastSignificance*rmsError(f.Posterior, used) {
+				s.kept[m], dropped = false, true
+			}
+		}
+		if !dropped {
+			return fit, found, nil
+		}
+	}
+}
+
+// finish takes the fit of what was kept.
 func (s *termSearch) finish() error {
-	used, terms := s.checks.usedRows(), s.terms()
-	fit, found, err := s.checks.fitTerms(s.gram.sums(terms), s.activePriors(), terms)
+	fit, found, err := s.fitKept()
 	if err != nil {
 		return err
 	}
+	used, terms := s.checks.usedRows(), s.terms()
 	if s.kept[0] {
 		fit.HeldOut, fit.Kept = s.out.Throughput.HeldOut, true
 		s.out.Throughput = fit

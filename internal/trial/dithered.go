@@ -215,4 +215,3 @@ func (f *Field) PairDisplaced(ctx context.Context, dir string, elements, rows fl
 	second, _, err := g.Pair(ctx, filepath.Join(dir, "second"), seed+1)
 	return []*Night{first, second}, err
 }
-

@@ -21,7 +21,9 @@ compared with the truth over all nights (several seeds), the cube with that of a
 night of the same noise. How well a sky measures c at best follows from its light and the
 number of pixels: the error of every estimator is at least the root of the inverse of
 S^-1 + H (Cramer and Rao), which at a ratio of 30 is 0.5 % in the small fields of 10000
-pixels; there the error of c, and of a cube with it, is stated.`,
+pixels and 0.4 % in the demo's 65000 with an eighth of the columns dark: c is held against
+0.2 % at a ratio of 100, and the cube against a steady night's but where both pixels and
+light are few.`,
 		run: runThroughput,
 	}
 }
@@ -48,7 +50,7 @@ func runThroughput(ctx context.Context, dir string) ([]trial.Finding, error) {
 				f.Show(sky)
 				place := filepath.Join(dir, fmt.Sprintf("%s-%s-%g", field.name, sky.Name, sn))
 				name := fmt.Sprintf("%s, %s, S/N %g", field.name, sky.Name, sn)
-				more, err := driftFindings(ctx, f, place, name, sn, driftCase{seeds: 40, rich: sky.Rich, judged: sn >= 100})
+				more, err := driftFindings(ctx, f, place, name, sn, driftCase{seeds: 40, rich: sky.Rich, bright: sn >= 100})
 				if err != nil {
 					return list, err
 				}
@@ -75,7 +77,7 @@ func wholeFields(ctx context.Context, dir string) ([]trial.Finding, error) {
 			f.Alter(sky)
 			place := filepath.Join(dir, fmt.Sprintf("whole-%s-%s", at[0], sky.Name))
 			name := fmt.Sprintf("%s, whole device, %s, S/N %d", at[0], sky.Name, sn)
-			more, err := driftFindings(ctx, f, place, name, sn, driftCase{seeds: 6, rich: true, judged: true})
+			more, err := driftFindings(ctx, f, place, name, sn, driftCase{seeds: 6, rich: true, manyPixels: true})
 			if err != nil {
 				return nil, err
 			}
@@ -85,11 +87,12 @@ func wholeFields(ctx context.Context, dir string) ([]trial.Finding, error) {
 	return list, nil
 }
 
-// driftCase is how many nights are made; whether the sky is rich in light that differs,
-// and whether then the error of c is held against the figure.
+// driftCase is how many nights are made; whether the sky is rich in light that differs; and
+// what then can reach the figures: c where the light is bright, the cube where it is bright
+// or pixels are many.
 type driftCase struct {
-	seeds        int
-	rich, judged bool
+	seeds                    int
+	rich, bright, manyPixels bool
 }
 
 // driftFindings makes nights of several seeds, one of them with its cube.
@@ -128,15 +131,18 @@ func driftFindings(ctx context.Context, f *trial.Field, dir, name string, sn flo
 		trial.Below(name+": rms of the cube over that without correction", d.Corrected/d.Raw, 1, d.Pulls.All.N/2),
 	}
 	errorOfC, rms := name+": error of c", name+": rms of the cube over that of a steady night"
-	switch {
-	case !k.rich:
+	if !k.rich {
 		return append(list, trial.Stated(errorOfC, measured, frames)), nil
-	case k.judged:
-		list = append(list, trial.Below(errorOfC, measured, 0.002, frames),
-			trial.Below(rms, d.Corrected/d.Steady, 1.05, d.Pulls.All.N/2))
-	default:
-		list = append(list, trial.Stated(errorOfC, measured, frames),
-			trial.Stated(rms, d.Corrected/d.Steady, d.Pulls.All.N/2))
+	}
+	if k.bright {
+		list = append(list, trial.Below(errorOfC, measured, 0.002, frames))
+	} else {
+		list = append(list, trial.Stated(errorOfC, measured, frames))
+	}
+	if ratio := d.Corrected / d.Steady; k.bright || k.manyPixels {
+		list = append(list, trial.Below(rms, ratio, 1.05, d.Pulls.All.N/2))
+	} else {
+		list = append(list, trial.Stated(rms, ratio, d.Pulls.All.N/2))
 	}
 	return append(list,
 		trial.Near(name+": standard deviation of the pulls", d.Pulls.All.Std(), 1, 0.05, 1/math.Sqrt(float64(d.Pulls.All.N)), d.Pulls.All.N/2),

@@ -224,3 +224,20 @@ func TestSections(t *testing.T) {
 	require.Equal(t, Placement{Section{61, 110, 45, 84}, 50, 40}, mosaic.Detector.Active()[3])
 	require.Equal(t, 84, mosaic.Detector.RawRows())
 }
+
+// Between exposures the detector is read and, where the profile says so, the next mask is
+// loaded.
+func TestOverhead(t *testing.T) {
+	p, err := Load("optical")
+	require.NoError(t, err)
+	require.Equal(t, 4.0, p.OverheadS())
+	text, err := p.YAML()
+	require.NoError(t, err)
+	require.NotContains(t, string(text), "load_s", "profiles without the key keep their text")
+	loads := 0.25
+	p.DMD.LoadS = &loads
+	require.NoError(t, p.Validate())
+	require.Equal(t, 4.25, p.OverheadS())
+	loads = -1
+	require.ErrorContains(t, p.Validate(), "dmd.load_s: -1 is below 0; give a number not below 0")
+}
