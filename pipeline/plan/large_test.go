@@ -47,7 +47,7 @@ func ptr[T any](x T) *T { return &x }
 // the chooser takes the Singer code (820,91,10) for a field of 800 elements, and says that it
 // is sparse.
 func TestSparseCodeIsChosen(t *testing.T) {
-	target, profile := wide(t, 800, 21.6)
+	target, profile := wide(t, 800, 19.8)
 	// No overhead: the codes' sizes differ by some hundred frames.
 	profile.Detector.ReadS = 0
 	start := time.Now()
@@ -58,6 +58,10 @@ func TestSparseCodeIsChosen(t *testing.T) {
 	row := chosen(t, summary.Trade)
 	require.Equal(t, "singer", row.Candidate.Family)
 	require.Equal(t, [3]int{820, 91, 10}, [3]int{row.Candidate.V, row.Candidate.K, row.Candidate.L})
+	// An element's photons are a tenth of the detector's variance: 91 open ones 9.1 times it.
+	require.InDelta(t, 9.1, photons.Photons/photons.Detector, 1)
+	// 2.972 less the dark columns' part; dark current counts with the detector and adds some.
+	require.InEpsilon(t, 2.972*800/820, row.OverSlit, 0.08)
 	require.Contains(t, summary.Trade.Recommendation, "opens only 91 columns at once")
 }
 
