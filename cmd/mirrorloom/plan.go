@@ -18,6 +18,7 @@ type planOptions struct {
 	// registration is a file that reduce wrote.
 	registration string
 	list         bool
+	dryRun       bool
 	output       outputOptions
 }
 
@@ -25,6 +26,7 @@ func (o *planOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.profile, "profile", "", "instrument profile: a YAML file, or the name of a built-in one")
 	f.StringVar(&o.registration, "registration", "", "registration.yaml of a run on listed stars: the field lies where it says")
 	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
+	f.BoolVar(&o.dryRun, "dry-run", false, "plan and print, write no sequence")
 	o.output.addFlags(f, "sequence")
 }
 
@@ -35,7 +37,12 @@ func newPlanCommand(a *app) *cobra.Command {
 		Short: "Plan the exposures and masks of a target",
 		Long: `plan writes a sequence: the exposures of a night with their masks, and copies of
 the profile and the target it was made from. Every later command needs only the
-sequence.`,
+sequence.
+
+Where the target has a forecast, plan also says what S/N it will give, and holds the
+code against others and against a slit scan of the same field in the same time; the
+table is trade.csv in the sequence, the plot trade.svg. With code.family: auto plan
+takes the best within the target's limits.`,
 		Args: func(cmd *cobra.Command, args []string) error {
 			if o.list {
 				return cobra.NoArgs(cmd, args)
@@ -69,18 +76,27 @@ func runListProfiles(a *app) error {
 }
 
 func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
-	if o.profile == "" || o.output.dir == "" {
+	switch {
+	case o.profile == "" || o.output.dir == "" && !o.dryRun:
 		return usageError{errors.New("plan needs --profile and -o; see 'mirrorloom plan --help'")}
+	case o.output.dir != "" && o.dryRun:
+		return usageError{errors.New("--dry-run writes nothing and -o says where; leave one of the two out")}
 	}
 	inputs := []string{target, o.profile}
 	if o.registration != "" {
 		inputs = append(inputs, o.registration)
 	}
 	var summary *plan.Summary
-	err := o.output.write(ctx, func(dir string) (err error) {
+	run := func(dir string) (err error) {
 		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Registration: o.registration, Out: dir})
 		return err
-	}, inputs...)
+	}
+	var err error
+	if o.dryRun {
+		err = run("")
+	} else {
+		err = o.output.write(ctx, run, inputs...)
+	}
 	if err != nil {
 		return err
 	}

@@ -112,7 +112,8 @@ func (s *starSums) findings() []trial.Finding {
 		band := fmt.Sprintf("%.0f to %.0f nm, mean of %d stars", s.from[b], s.to[b], n)
 		list = append(list,
 			trial.Near("flux over the true one, "+band, s.ratio[b].Mean(), 1, 0.01, math.Sqrt(s.errors[b])/float64(n), n),
-			trial.Below("scatter of the same, star by star", s.ratio[b].Std(), 0.01, n),
+			trial.Stated("scatter of the same, star by star", s.ratio[b].Std(), n),
+			trial.Below("the same beyond its own errors", math.Sqrt(max(0, s.ratio[b].Std()*s.ratio[b].Std()-s.errors[b]/float64(n))), 0.01, n),
 			trial.Near("centre of light, elements, "+band, s.element[b].Mean(), 0, 0.1, math.Sqrt(s.places[b])/float64(n), n),
 			trial.Near("centre of light, rows, "+band, s.row[b].Mean(), 0, 0.1, math.Sqrt(s.places[b])/float64(n), n))
 	}

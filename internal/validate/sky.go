@@ -14,7 +14,7 @@ import (
 func skySubtraction() check {
 	return check{
 		name: "Sky subtraction",
-		about: `Small fields of both profiles with two stars and a sky with lines: 12 nights each, reduced
+		about: `Small fields of both profiles with two stars and a sky with lines: 36 nights each, reduced
 with the sky taken off where a rule found it blank. The mean residual of a night is that of all
 good voxels whose places are not among the blank ones, against the truth without its sky;
 its standard error is the scatter of the nights. Sums over 4 x 3 and 1 x 9 elements and rows,
@@ -46,7 +46,7 @@ instrument calibrated by its lamps: where the sky was found, checked against the
 }
 
 func skyNights(ctx context.Context, name, dir string, make func() (*trial.Field, error)) ([]trial.Finding, error) {
-	const nights, first = 12, 500
+	const nights, first = 36, 500
 	field, err := make()
 	if err != nil {
 		return nil, err

@@ -77,6 +77,10 @@ const (
 type hitRule struct {
 	*state
 	basis *mat.Dense // L with LL' = P: L'y are the checks
+	// alone gives each erased row with a frame the check that it has if it alone is not
+	// erased; nil for others. A frame that was only hit would else never be cleaned.
+	alone [][]float64
+	own   []float64 // the variance of each row's check
 	// common is what a code row's checks are beyond noise, at brightness 1; +Inf for
 	// rows that no check sees.
 	common []float64
@@ -84,7 +88,19 @@ type hitRule struct {
 
 // rule learns what is common from the first rows.
 func (s *sampler) rule(st *state) *hitRule {
-	r := &hitRule{state: st, basis: basis(st.projector, st.freedom), common: make([]float64, st.v)}
+	r := &hitRule{state: st, basis: basis(st.projector, st.freedom), alone: make([][]float64, st.v), own: make([]float64, st.v), common: make([]float64, st.v)}
+	for k, m := range st.from {
+		r.own[k] = st.projector.At(k, k)
+		if m == none || !st.erased[k] {
+			continue
+		}
+		erased := slices.Clone(st.erased)
+		erased[k] = false
+		if with := st.unfitted(st.from, erased); with != nil {
+			r.alone[k] = with.projector.RawRowView(k)
+			r.own[k] = r.alone[k][k]
+		}
+	}
 	squares := make([][]float64, st.v)
 	var bright []float64
 	for _, d := range s.data {
@@ -94,7 +110,7 @@ func (s *sampler) rule(st *state) *hitRule {
 		checks, b := r.checks(d)
 		bright = append(bright, b...)
 		for k := range st.v {
-			own := st.projector.At(k, k)
+			own := r.own[k]
 			if own <= leastSeen {
 				continue
 			}
@@ -139,8 +155,14 @@ func (r *hitRule) checks(d *rowData) (checks *mat.Dense, bright []float64) {
 	}
 	var seen mat.Dense
 	seen.Mul(r.basis.T(), y)
-	y.Mul(r.basis, &seen)
-	return y, bright
+	checks = mat.NewDense(r.v, d.n, nil)
+	checks.Mul(r.basis, &seen)
+	for k, alone := range r.alone {
+		if alone != nil {
+			mat.NewDense(1, d.n, checks.RawRowView(k)).Mul(mat.NewDense(1, r.v, alone), y)
+		}
+	}
+	return checks, bright
 }
 
 // strike marks a row's samples with hits, and gives their number.
@@ -150,7 +172,7 @@ func (r *hitRule) strike(d *rowData) (found int) {
 		if math.IsInf(common, 1) || d.n == 0 {
 			continue
 		}
-		own := r.projector.At(k, k)
+		own := r.own[k]
 		for p, x := range checks.RawRowView(k) {
 			if !d.struck[p] && x*x > own*(hitSquare+hitSpans*common*bright[p]) {
 				d.struck[p] = true

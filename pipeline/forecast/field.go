@@ -62,9 +62,15 @@ func (l *Light) field(c Candidate, at sight) *fieldLight {
 		deviceLight: l.device(key.deviceKey), first: first, last: last, mirrors: c.ElementMirrors, closed: closed,
 		shares: map[int][]*share{}, rows: map[int]*rowLight{}, pixelRows: map[int]*pixelRow{}, squares: map[int][]float64{},
 	}
+	if len(l.fields) >= mostKept {
+		clear(l.fields)
+	}
 	l.fields[key] = f
 	return f
 }
+
+// mostKept bounds the memory of what candidates share: some MB each for a large detector.
+const mostKept = 16
 
 func (l *Light) device(key deviceKey) *deviceLight {
 	if d := l.devices[key]; d != nil {
@@ -78,6 +84,9 @@ func (l *Light) device(key deviceKey) *deviceLight {
 	d.wFirst, d.wLast = l.profile.WRange()
 	d.addSources(key.sight)
 	d.addSky()
+	if len(l.devices) >= mostKept {
+		clear(l.devices)
+	}
 	l.devices[key] = d
 	return d
 }

@@ -11,17 +11,24 @@ import (
 	"mirrorloom/internal/trial"
 	"mirrorloom/pipeline/forecast"
 	"mirrorloom/pipeline/rehearse"
+	"mirrorloom/pipeline/scene"
 	"mirrorloom/pipeline/sequence"
 )
 
 // The pixels of rehearsed frames without noise, in the mean over a cycle, are the forecast's
 // within 1 %, and 0.2 % of the row's brightest.
 func TestFramesAsForecast(t *testing.T) {
-	for name, make := range map[string]func() (*trial.Field, error){"square": trial.Square, "diagonal": trial.Diagonal} {
+	refracted := func() (*trial.Field, error) {
+		f, err := trial.Square()
+		f.Scene.Atmosphere = &scene.Atmosphere{Refraction: true, Extinction: f.Profile.Site.Extinction}
+		f.Target.StartUTC = "2031-02-11T08:30:00Z" // air mass 1.8
+		return f, err
+	}
+	for name, make := range map[string]func() (*trial.Field, error){"square": trial.Square, "diagonal": trial.Diagonal, "refracted": refracted} {
 		field, err := make()
 		require.NoError(t, err)
 		field.Target.Forecast = &sequence.Forecast{
-			SeeingFWHMArcsec: field.Scene.SeeingFWHMArcsec, Sources: field.Scene.Sources, Sky: field.Scene.Sky, Aim: sequence.AimFaintest,
+			SeeingFWHMArcsec: field.Scene.SeeingFWHMArcsec, Sources: field.Scene.Sources, Sky: field.Scene.Sky, Atmosphere: field.Scene.Atmosphere, Aim: sequence.AimFaintest,
 		}
 		light, err := forecast.New(field.Target, field.Profile)
 		require.NoError(t, err)

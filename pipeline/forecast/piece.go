@@ -162,6 +162,7 @@ func (l *Light) spectrum(p *piece, photons func(nm float64) float64, lines []emi
 		} else {
 			put(nm, px, electrons, true)
 		}
+		at.shape()
 		p.lines = append(p.lines, at)
 	}
 	p.still.finish(sigma)

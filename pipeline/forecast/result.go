@@ -89,7 +89,8 @@ type Saturation struct {
 	Source int `json:"source"`
 	// SourceFraction is its part.
 	SourceFraction float64 `json:"source_fraction"`
-	// LongestDwellSeconds is the dwell at which the pixel saturates.
+	// LongestDwellSeconds is the dwell at which the pixel saturates; 0 where there is no
+	// light and no dark current.
 	LongestDwellSeconds float64 `json:"longest_dwell_s"`
 }
 

@@ -16,7 +16,9 @@ func (l *Light) saturation(f *fieldLight, c Candidate) Saturation {
 			}
 		}
 	}
-	worst.LongestDwellSeconds = c.DwellSeconds * worst.Limit / worst.Electrons
+	if worst.Electrons > 0 {
+		worst.LongestDwellSeconds = c.DwellSeconds * worst.Limit / worst.Electrons
+	}
 	return worst
 }
 

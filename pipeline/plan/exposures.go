@@ -16,10 +16,11 @@ type exposures struct {
 	rows    [][]uint8 // the code's rows, shared among steps
 	columns []int     // the code column of each element
 	none    []uint8   // bits of no open column
+	orders  [][]int   // of the science cycles
 }
 
-func newExposures(s *sequence.Sequence, code *hadamard.Code) *exposures {
-	e := &exposures{s: s, columns: s.ElementColumns(), none: make([]uint8, s.V)}
+func newExposures(s *sequence.Sequence, code *hadamard.Code, orders [][]int) *exposures {
+	e := &exposures{s: s, orders: orders, columns: s.ElementColumns(), none: make([]uint8, s.V)}
 	for row := range s.V {
 		e.rows = append(e.rows, code.Row(row))
 	}
@@ -67,7 +68,11 @@ func (e *exposures) flats(f sequence.FlatFrames) {
 		}
 	}
 	for cycle := 1; cycle <= f.CodedCycles; cycle++ {
-		for _, row := range e.order("flat", cycle) {
+		rows := naturalRows(e.s.V)
+		if e.s.Target.Code.Order != sequence.OrderNatural {
+			rows = shuffledRows(e.s.OrderSeed, "flat", cycle, e.s.V)
+		}
+		for _, row := range rows {
 			step.Row, step.Cycle = row, cycle
 			e.add(step, e.rows[row])
 		}
@@ -109,7 +114,7 @@ func (e *exposures) science() {
 		e.repeat(1, off)
 	}
 	for cycle := 1; cycle <= t.Code.Cycles; cycle++ {
-		for _, row := range e.order("science", cycle) {
+		for _, row := range e.orders[cycle-1] {
 			e.add(sequence.Step{Kind: sequence.Science, ExptimeSeconds: t.DwellSeconds, Row: row, Cycle: cycle}, e.rows[row])
 			done++
 			if t.AllOffEvery > 0 && (done%t.AllOffEvery == 0 || done == total) {
@@ -128,18 +133,6 @@ func (e *exposures) refStar(r *sequence.RefStarFrames) {
 	for range r.Count {
 		e.add(sequence.Step{Kind: sequence.RefStar, ExptimeSeconds: r.DwellSeconds, Row: -1}, bits)
 	}
-}
-
-// order gives the code rows of a cycle in the order in which they are exposed.
-func (e *exposures) order(stream string, cycle int) []int {
-	rows := make([]int, e.s.V)
-	for i := range rows {
-		rows[i] = i
-	}
-	if e.s.Target.Code.Order == sequence.OrderShuffled {
-		random(e.s.OrderSeed, stream, cycle).Shuffle(len(rows), func(i, k int) { rows[i], rows[k] = rows[k], rows[i] })
-	}
-	return rows
 }
 
 // random is a generator of its own for each cycle of each kind, so that one

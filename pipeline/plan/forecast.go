@@ -18,15 +18,17 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	if err != nil {
 		return err
 	}
-	r.Forecast, err = light.Of(ctx, forecast.Candidate{
-		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
-		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
-	})
+	r.Forecast, err = light.Of(ctx, candidateOf(s))
 	if err != nil {
 		return err
 	}
 	if at := r.Forecast.Saturation; at.Saturated() {
 		r.warn("the brightest pixel (column %d, row %d) will saturate: %.0f e of %.0f, most of it from %s; expose for less than %.3g s", at.Column, at.Row, at.Electrons, at.Limit, sourceWords(at), at.LongestDwellSeconds)
+	}
+	for _, m := range r.Forecast.Wanted {
+		if m.Voxels == 0 {
+			r.warn("%s is not seen by this plan: it lies beyond the field, or its wavelengths beyond the detector", m.Name)
+		}
 	}
 	return nil
 }

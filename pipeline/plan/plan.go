@@ -21,7 +21,8 @@ type Options struct {
 	// which the telescope is to be pointed; empty for none.
 	Registration string
 	// Out is the folder to write into, made if there is none. It must hold no
-	// sequence; giving it its final name when it is whole is the caller's part.
+	// sequence; giving it its final name when it is whole is the caller's part. Empty, the
+	// plan is made and nothing is written.
 	Out string
 }
 
@@ -49,11 +50,22 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 		}
 		return nil, err
 	}
-	if err := s.Write(ctx, o.Out); err != nil {
+	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
 	if registration != nil {
 		summary.Pointing = pointingOf(registration, s)
+	}
+	if o.Out == "" {
+		return summary, nil
+	}
+	if err := s.Write(ctx, o.Out); err != nil {
+		return nil, err
+	}
+	if err := writeTrade(o.Out, summary.Trade); err != nil {
+		return nil, err
+	}
+	if registration != nil {
 		if err := registration.Write(filepath.Join(o.Out, register.File)); err != nil {
 			return nil, err
 		}
@@ -65,7 +77,8 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 
 // Build plans a sequence in memory: masks are named when it is written. The
 // target is left as it is; the sequence's own has code.v and code.dark filled
-// in. Errors about the target are a *config.Error with the key path.
+// in, and all that a target of code.family auto leaves open. Errors about the target are a
+// *config.Error with the key path.
 func Build(ctx context.Context, target *sequence.Target, profile *instrument.Profile) (*sequence.Sequence, *Summary, error) {
 	if err := profile.Validate(); err != nil {
 		return nil, nil, fmt.Errorf("profile: %w", err)
@@ -73,6 +86,29 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if err := target.Check(); err != nil {
 		return nil, nil, err
 	}
+	if !target.Code.Auto() {
+		s, summary, err := build(ctx, target, profile, nil)
+		if err != nil {
+			return nil, nil, err
+		}
+		summary.Trade, err = judged(ctx, s)
+		return s, summary, err
+	}
+	c, err := choose(ctx, target, profile)
+	if err != nil {
+		return nil, nil, err
+	}
+	s, summary, err := build(ctx, c.target, profile, c.dark)
+	if err != nil {
+		return nil, nil, err
+	}
+	summary.Trade = c.trade
+	return s, summary, nil
+}
+
+// build plans a target of which everything is settled; chosen are its dark columns, nil where
+// they are to be chosen.
+func build(ctx context.Context, target *sequence.Target, profile *instrument.Profile, chosen *hadamard.DarkSet) (*sequence.Sequence, *Summary, error) {
 	o := newOptics(profile, target)
 	if err := o.checkRowsSeen(); err != nil {
 		return nil, nil, err
@@ -90,15 +126,26 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if star := target.Calibration.RefStar; star != nil && star.Elements[1] >= n {
 		return nil, nil, refuse("calibration.refstar.elements[1]", "there is no element %d among the field's 0 to %d; give one of these", star.Elements[1], n-1)
 	}
-	dark, err := hadamard.ChooseDark(ctx, code, code.V()-n, uint64(target.Code.Seed))
-	if err != nil {
-		return nil, nil, fmt.Errorf("choosing the dark columns: %w", err)
+	if chosen == nil {
+		dark, err := hadamard.ChooseDark(ctx, code, code.V()-n, uint64(target.Code.Seed))
+		if err != nil {
+			return nil, nil, fmt.Errorf("choosing the dark columns: %w", err)
+		}
+		chosen = &dark
 	}
-	s := assemble(target, profile, code, dark.Columns)
+	dark := *chosen
+	orders, err := scienceOrders(target.Code.Order, code, dark.Columns, target.Code.Cycles, uint64(target.Code.Seed))
+	if err != nil {
+		return nil, nil, err
+	}
+	s := assemble(target, profile, code, dark.Columns, orders)
 	if len(s.Steps) > maxSteps {
 		return nil, nil, refuse("code.cycles", "the target asks for %d exposures where a sequence has at most %d; ask for fewer cycles or calibration frames", len(s.Steps), maxSteps)
 	}
 	summary := summarize(s, code, dark, o)
+	if summary.ShortNights, err = shortNights(s, code, dark.Columns, orders); err != nil {
+		return nil, nil, err
+	}
 	if err := summary.addForecast(ctx, s); err != nil {
 		return nil, nil, err
 	}
@@ -109,7 +156,7 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 const maxSteps = 20000
 
 // assemble makes the sequence of a code whose dark columns are chosen.
-func assemble(target *sequence.Target, profile *instrument.Profile, code *hadamard.Code, dark []int) *sequence.Sequence {
+func assemble(target *sequence.Target, profile *instrument.Profile, code *hadamard.Code, dark []int, orders [][]int) *sequence.Sequence {
 	resolved := *target
 	v, g := code.V(), len(dark)
 	resolved.Code.V, resolved.Code.Dark = &v, &g
@@ -122,7 +169,7 @@ func assemble(target *sequence.Target, profile *instrument.Profile, code *hadama
 		Profile:   profile,
 		Target:    &resolved,
 	}
-	newExposures(s, code).night()
+	newExposures(s, code, orders).night()
 	return s
 }
 

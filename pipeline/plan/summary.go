@@ -10,6 +10,7 @@ import (
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/forecast"
 	"mirrorloom/pipeline/sequence"
+	"mirrorloom/pipeline/trade"
 )
 
 // Summary is what the observer wants to know of a plan.
@@ -44,6 +45,11 @@ type Summary struct {
 	// Forecast is what the plan will give; nil where the target does not say what to
 	// expect.
 	Forecast *forecast.Result `json:"forecast,omitempty"`
+	// Trade holds the plan against other codes and the slit scan; nil where the target does
+	// not say what it wants.
+	Trade *trade.Trade `json:"trade,omitempty"`
+	// ShortNights say what is lost where the night ends early, by order of the steps.
+	ShortNights []ShortNight `json:"short_nights"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -200,6 +206,10 @@ func (r *Summary) String() string {
 	}
 	fmt.Fprintf(&b, "%-8s %6d %9.1f\n\n", "all", r.Steps, r.Minutes)
 	b.WriteString(r.forecastText())
+	if r.Trade != nil {
+		fmt.Fprintf(&b, "%s\n", r.Trade)
+	}
+	b.WriteString(r.shortNightText())
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
 	if r.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
@@ -211,7 +221,11 @@ func (r *Summary) String() string {
 	if r.RefStar != nil && r.RefStar.Airmass[2] > 0 {
 		fmt.Fprintf(&b, "refstar  %s, airmass %.2f to %.2f\n", r.RefStar.Name, r.RefStar.Airmass[0], r.RefStar.Airmass[1])
 	}
-	fmt.Fprintf(&b, "frames   %.2f GB, %d distinct masks\n", r.Gigabytes, r.Masks)
+	fmt.Fprintf(&b, "frames   %.2f GB", r.Gigabytes)
+	if r.Masks > 0 {
+		fmt.Fprintf(&b, ", %d distinct masks", r.Masks)
+	}
+	b.WriteString("\n")
 	for _, w := range r.Warnings {
 		fmt.Fprintf(&b, "warning  %s\n", w)
 	}

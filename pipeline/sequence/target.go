@@ -24,8 +24,8 @@ type Target struct {
 	StartUTC string     `yaml:"start_utc"`
 	Code     CodeChoice `yaml:"code"`
 	// DwellSeconds is the exposure time of a science step and of the all-off
-	// frames between them.
-	DwellSeconds float64 `yaml:"dwell_s"`
+	// frames between them. It may be left out (0) where Code.Family is FamilyAuto.
+	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
 	// AllOffEvery asks for an all-off frame before the first science step,
 	// after every so many of them, and after the last; 0 for none.
 	AllOffEvery  int           `yaml:"all_off_every" config:"optional"`
@@ -41,20 +41,23 @@ type Target struct {
 
 // CodeChoice says how the field is coded.
 type CodeChoice struct {
-	// Family is one of the families: m-sequence, singer-complement, slit-scan ...
+	// Family is one of the families: m-sequence, singer-complement, slit-scan ..., or
+	// FamilyAuto: then plan chooses it, and of V, Dark, ElementMirrors and Cycles, and of
+	// the dwell, what is left out.
 	Family string `yaml:"family"`
 	// V is the code's size; nil leaves it to plan: the smallest code that holds
 	// as many elements as device and detector allow.
 	V *int `yaml:"v" config:"optional"`
 	// Dark is the number of dark columns; nil for the default rule.
 	Dark *int `yaml:"dark" config:"optional"`
-	// ElementMirrors is the width of an element in u.
-	ElementMirrors int `yaml:"element_mirrors"`
-	// Order is OrderNatural or OrderShuffled (the default).
+	// ElementMirrors is the width of an element in u, 0 where plan is to choose it.
+	ElementMirrors int `yaml:"element_mirrors" config:"optional"`
+	// Order is one of the orders below, OrderShuffled by default.
 	Order string `yaml:"order" config:"optional"`
 	// Seed chooses the dark columns and the order of the science steps.
 	Seed int64 `yaml:"seed" config:"optional"`
-	// Cycles is the number of complete sets of coded steps, 1 by default.
+	// Cycles is the number of complete sets of coded steps, 1 by default; 0 where plan is to
+	// choose it.
 	Cycles int `yaml:"cycles" config:"optional"`
 }
 
@@ -63,11 +66,25 @@ func (c *CodeChoice) SetDefaults() {
 	c.Order, c.Cycles = OrderShuffled, 1
 }
 
+// FamilyAuto asks plan for the code that serves the forecast's aim best.
+const FamilyAuto = "auto"
+
+// Auto tells whether plan is to choose the code.
+func (c *CodeChoice) Auto() bool { return c.Family == FamilyAuto }
+
 // The orders of the science steps within a cycle.
 const (
 	OrderNatural  = "natural"
 	OrderShuffled = "shuffled"
+	// OrderNested puts last the steps that a night cut short misses least.
+	OrderNested = "nested"
+	// OrderDrift is the order in which a throughput that drifts evenly marks dark columns
+	// rather than elements.
+	OrderDrift = "drift"
 )
+
+// Orders lists the orders.
+func Orders() []string { return []string{OrderNatural, OrderShuffled, OrderNested, OrderDrift} }
 
 // SentinelRow keeps the mirror rows First..Last (w, inclusive) on Element
 // alone through all science steps.

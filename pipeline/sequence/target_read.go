@@ -46,6 +46,9 @@ func ParseTargetBeside(name string, data []byte, beside func(file string) ([]byt
 	if err := doc.Decode(t); err != nil {
 		return nil, err
 	}
+	if t.Code.Auto() && !doc.Has("code.cycles") {
+		t.Code.Cycles = 0
+	}
 	if err := t.check(doc); err != nil {
 		return nil, err
 	}
@@ -66,9 +69,16 @@ func (t *Target) check(doc *config.Doc) error {
 	c.Within("rotang_deg", t.RotangDeg, -360, 360)
 	_, err := parseUTC(t.StartUTC)
 	c.That(err == nil, "start_utc", "%q is no time; write it like 2031-03-14T02:30:00Z", t.StartUTC)
-	t.checkCode(c)
-	c.Positive("dwell_s", t.DwellSeconds)
-	c.Within("dwell_s", t.DwellSeconds, 0, maxDwellSeconds)
+	if t.Code.Auto() {
+		t.checkAuto(c)
+	} else {
+		t.checkCode(c, doc)
+	}
+	if !t.Code.Auto() || t.DwellSeconds != 0 {
+		c.That(doc == nil || doc.Has("dwell_s"), "dwell_s", "the key is missing; add it")
+		c.Positive("dwell_s", t.DwellSeconds)
+		c.Within("dwell_s", t.DwellSeconds, 0, maxDwellSeconds)
+	}
 	c.Count("all_off_every", t.AllOffEvery, 0, maxFrames)
 	t.checkRows(c)
 	t.checkCalibration(c)
@@ -76,9 +86,9 @@ func (t *Target) check(doc *config.Doc) error {
 	return c.Err()
 }
 
-func (t *Target) checkCode(c *config.Checks) {
+func (t *Target) checkCode(c *config.Checks, doc *config.Doc) {
 	family := t.Code.Family
-	if !c.That(isFamily(family), "code.family", "%q is no code family; write one of %s", family, familyList()) {
+	if !c.That(isFamily(family), "code.family", "%q is no code family; write one of %s, %s", family, FamilyAuto, familyList()) {
 		return
 	}
 	dark := 0
@@ -91,10 +101,37 @@ func (t *Target) checkCode(c *config.Checks) {
 		c.That(hasSize(family, *t.Code.V), "code.v", "%s", sizeAdvice(family, *t.Code.V))
 		c.That(dark < *t.Code.V, "code.dark", "%d dark columns leave no element of the %d columns; give fewer", dark, *t.Code.V)
 	}
+	c.That(doc == nil || doc.Has("code.element_mirrors"), "code.element_mirrors", "the key is missing; add it")
 	c.Count("code.element_mirrors", t.Code.ElementMirrors, 1, maxMirror)
-	c.OneOf("code.order", t.Code.Order, OrderNatural, OrderShuffled)
-	c.That(t.Code.Seed >= 0, "code.seed", "%d is below 0; give a whole number from 0", t.Code.Seed)
 	c.Count("code.cycles", t.Code.Cycles, 1, maxCycles)
+	t.checkOrder(c)
+}
+
+// checkAuto looks at the code of a target that leaves it to plan.
+func (t *Target) checkAuto(c *config.Checks) {
+	if t.Code.Dark != nil {
+		c.Count("code.dark", *t.Code.Dark, 0, maxV-1)
+	}
+	if t.Code.V != nil {
+		c.Count("code.v", *t.Code.V, 1, maxV)
+		c.That(t.Code.Dark == nil || *t.Code.Dark < *t.Code.V, "code.dark", "no element is left of the %d columns; give fewer", *t.Code.V)
+	}
+	c.Count("code.element_mirrors", t.Code.ElementMirrors, 0, maxMirror)
+	c.Count("code.cycles", t.Code.Cycles, 0, maxCycles)
+	t.checkOrder(c)
+	switch f := t.Forecast; {
+	case f == nil:
+		c.That(false, "code.family", "auto chooses by what is expected, and the target has no forecast; add one, or write a family")
+	case len(f.Wanted) == 0:
+		c.That(false, "forecast.wanted", "code.family auto chooses by the S/N of what is wanted, and nothing is; list measurements, or write a family")
+	default:
+		c.That(f.Limits.TotalSeconds > 0, "forecast.limits.total_s", "code.family auto compares codes in equal time, and there is no limit; give the seconds of all exposures")
+	}
+}
+
+func (t *Target) checkOrder(c *config.Checks) {
+	c.OneOf("code.order", t.Code.Order, Orders()...)
+	c.That(t.Code.Seed >= 0, "code.seed", "%d is below 0; give a whole number from 0", t.Code.Seed)
 }
 
 func (t *Target) checkRows(c *config.Checks) {

@@ -99,7 +99,7 @@ func TestTargetRefuses(t *testing.T) {
 		{"dark negative", "dark: 7", "dark: -1", "code.dark:"},
 		{"dark slit scan", "m-sequence", "slit-scan", "code.dark: a slit scan has no dark columns"},
 		{"no width", "element_mirrors: 2", "element_mirrors: 0", "code.element_mirrors:"},
-		{"order", "seed: 5", "order: random, seed: 5", "code.order: \"random\" is unknown; write natural or shuffled"},
+		{"order", "seed: 5", "order: random, seed: 5", "code.order: \"random\" is unknown; write natural, shuffled, nested or drift"},
 		{"seed negative", "seed: 5", "seed: -5", "code.seed: -5 is below 0"},
 		{"seed fraction", "seed: 5", "seed: 5.5", "code.seed:"},
 		{"no cycle", "cycles: 2", "cycles: 0", "code.cycles:"},
