@@ -48,9 +48,9 @@ func (a StripArray) WidthUM() float64 { return a.StepUM() * float64(a.Mirrors) }
 // falls with the width and the pupil's oversize. Gaps between mirrors, foreshortening,
 // polarization and aberrations are left out. Elements two apart are coupled by a tenth or less.
 //
-// Good to 1e-3 (absolute): elements of more than four mirrors are computed at four and scaled
+// Good to 2e-3 (absolute): elements of more than four mirrors are computed at four and scaled
 // by their width, and so are mirrors of which more than 8 orders fit into the cones' radii. NaN
-// outside of the limits of the fields.
+// outside of the limits of the fields, and where mirrors are so small that no light arrives.
 func (a StripArray) Neighbour(nm float64, b Beam) float64 {
 	if !b.valid() || !(nm > 0 && a.PitchUM > 0 && !math.IsInf(a.PitchUM, 1)) || a.Mirrors < 1 {
 		return math.NaN()
@@ -67,7 +67,7 @@ func (a StripArray) Neighbour(nm float64, b Beam) float64 {
 		unit = least
 	}
 	var alone, pair float64
-	for _, c := range b.chords(16) {
+	for _, c := range b.chords(10) {
 		f, k := a.couplings(nm, unit, c, b)
 		alone += c.weight * f
 		pair += c.weight * k
@@ -77,7 +77,7 @@ func (a StripArray) Neighbour(nm float64, b Beam) float64 {
 
 // couplings are K(0) and K(1) of a chord; unit is the sine of x = 1.
 func (a StripArray) couplings(nm, unit float64, c chord, b Beam) (alone, pair float64) {
-	const perPeriod = 32
+	const perPeriod = 16
 	big := b.Oversize * b.radius()
 	at := a.blaze(nm, c.t)
 	reach := (big + b.radius()) / unit
