@@ -1,7 +1,8 @@
 // Package physics holds the closed formulas that the rehearsal and the
 // reduction share: black bodies, AB magnitudes and photon counts, the index of
 // air, airmass, refraction, extinction, the place of a target in the sky, the
-// velocity of the observer, Doppler factors, the noise of read modes.
+// velocity of the observer, Doppler factors, the noise of read modes, diffraction at the
+// telescope and at an array of mirrors.
 //
 // It imports the standard library only and keeps no state. Units are in every
 // name: wavelengths are nanometres in vacuum unless the name says air, fluxes

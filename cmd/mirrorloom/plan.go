@@ -19,6 +19,7 @@ type planOptions struct {
 	registration string
 	list         bool
 	dryRun       bool
+	compare      bool
 	output       outputOptions
 }
 
@@ -27,6 +28,7 @@ func (o *planOptions) addFlags(f *pflag.FlagSet) {
 	f.StringVar(&o.registration, "registration", "", "registration.yaml of a run on listed stars: the field lies where it says")
 	f.BoolVar(&o.list, "list-profiles", false, "list the built-in profiles and stop")
 	f.BoolVar(&o.dryRun, "dry-run", false, "plan and print, write no sequence")
+	f.BoolVar(&o.compare, "compare", false, "compare two plans, each the folder of a sequence or a target, and write nothing")
 	o.output.addFlags(f, "sequence")
 }
 
@@ -42,16 +44,25 @@ sequence.
 Where the target has a forecast, plan also says what S/N it will give, and holds the
 code against others and against a slit scan of the same field in the same time; the
 table is trade.csv in the sequence, the plot trade.svg. With code.family: auto plan
-takes the best within the target's limits.`,
+takes the best within the target's limits.
+
+plan --compare A B holds two plans side by side, each the folder of a sequence or a
+target.`,
 		Args: func(cmd *cobra.Command, args []string) error {
 			if o.list {
 				return cobra.NoArgs(cmd, args)
+			}
+			if o.compare {
+				return cobra.ExactArgs(2)(cmd, args)
 			}
 			return cobra.ExactArgs(1)(cmd, args)
 		},
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if o.list {
 				return runListProfiles(a)
+			}
+			if o.compare {
+				return runComparePlans(cmd.Context(), a, args[0], args[1], o)
 			}
 			return runPlan(cmd.Context(), a, args[0], o)
 		},
@@ -72,6 +83,20 @@ func runListProfiles(a *app) error {
 			}
 		}
 		return nil
+	})
+}
+
+func runComparePlans(ctx context.Context, a *app, first, second string, o planOptions) error {
+	if o.output.dir != "" || o.dryRun || o.registration != "" {
+		return usageError{errors.New("--compare plans nothing to be written; leave -o, --dry-run and --registration out")}
+	}
+	c, err := plan.Compare(ctx, first, second, o.profile)
+	if err != nil {
+		return err
+	}
+	return a.answer(c, func(w io.Writer) error {
+		_, err := fmt.Fprint(w, c)
+		return err
 	})
 }
 

@@ -1,7 +1,6 @@
 package extract
 
 import (
-	"crypto/sha256"
 	"errors"
 	"fmt"
 	"path/filepath"
@@ -17,19 +16,20 @@ import (
 // ErrGrid marks a cube whose world coordinates are not as reduce writes them.
 var ErrGrid = errors.New("extract cannot place its voxels on the detector")
 
-// ErrCombined marks a cube of several runs, which does not carry the errors of sums.
-var ErrCombined = errors.New("its voxels' own errors are in VARIANCE, but what they share is not carried by a combined cube, so that sums would have wrong errors; extract from each run and take the mean, weighted by the errors that come out")
-
 // Cube is an open cube.fits. Its methods read what they need by offset; the cube is
 // never held.
 type Cube struct {
 	file *fitsutil.File
+	// members are the runs that it is made of, nil for the cube of one run: a combined
+	// cube has images, sky and grid alone, what is to know of the detector is theirs.
+	members []member
 	// SHA identifies the cube: the SHA-256 of all its headers, whose DATASUM cards
 	// stand for the data.
 	SHA                        string
 	Elements, Rows             int
 	Grid                       instrument.Grid
 	Frame                      product.SpectralFrame // to which the grid's wavelengths belong
+	observed                   bool                  // Frame has an observer's velocity
 	edges, centres             calib.Wavelengths     // of the voxels
 	Unit                       string                // BUNIT of SIGNAL
 	signal, variance, flags    *fitsutil.Image
@@ -50,8 +50,9 @@ type Cube struct {
 	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
 }
 
-// Open opens the cube of a run: a folder that reduce wrote, or its cube.fits. The
-// errors name the file and the cure.
+// Open opens the cube of a run: a folder that reduce or combine wrote, or its cube.fits.
+// The runs of a combined cube have to be where they were, seen from it. The errors name
+// the file and the cure.
 func Open(run string) (*Cube, error) {
 	path := run
 	if filepath.Ext(run) != ".fits" {
@@ -63,14 +64,15 @@ func Open(run string) (*Cube, error) {
 	}
 	c := &Cube{file: file}
 	if err := c.read(); err != nil {
-		file.Close() // only read from
+		c.Close() // only read from
 		return nil, err
 	}
 	return c, nil
 }
 
 // WithLight is c with the light of SIGNAL in another file on the same grid, such as a
-// model or the truth of a rehearsal, and c's variances. Both files stay to be closed.
+// model or the truth of a rehearsal, and c's variances. Both files stay to be closed. Of a
+// combined cube the light of the runs, by which errors of responses go, stays theirs.
 func (c *Cube) WithLight(f *fitsutil.File) (*Cube, error) {
 	im, err := f.ImageNamed(product.Signal)
 	if err != nil {
@@ -85,7 +87,16 @@ func (c *Cube) WithLight(f *fitsutil.File) (*Cube, error) {
 }
 
 // Close ends the use of the cube.
-func (c *Cube) Close() error { return c.file.Close() }
+func (c *Cube) Close() error {
+	err := c.file.Close()
+	for _, m := range c.members {
+		err = errors.Join(err, m.Close())
+	}
+	return err
+}
+
+// Runs is the number of runs that the cube is made of, 1 unless it was combined.
+func (c *Cube) Runs() int { return len(c.runs()) }
 
 // Path is the name of the cube's file.
 func (c *Cube) Path() string { return c.file.Path() }
@@ -93,7 +104,23 @@ func (c *Cube) Path() string { return c.file.Path() }
 // Position is the place on the sky of an element and row, from 0.
 func (c *Cube) Position(element, row float64) Position { return c.sky.position(element, row) }
 
-func (c *Cube) read() (err error) {
+func (c *Cube) read() error {
+	if err := c.readImages(); err != nil {
+		return err
+	}
+	made, err := product.ReadMembers(c.file)
+	if err != nil {
+		return err
+	}
+	if made != nil {
+		return c.openMembers(made)
+	}
+	return c.readRun()
+}
+
+// readImages reads what every cube has.
+func (c *Cube) readImages() (err error) {
+	c.SHA = product.Identify(c.file)
 	for _, im := range []struct {
 		name string
 		to   **fitsutil.Image
@@ -114,16 +141,12 @@ func (c *Cube) read() (err error) {
 	if c.sky, err = readSky(c.signal.Header); err != nil {
 		return fmt.Errorf("%s: %w", c.Path(), err)
 	}
-	if err := c.readGrid(); err != nil {
-		return err
-	}
+	return c.readGrid()
+}
+
+// readRun reads what the cube of one run has besides.
+func (c *Cube) readRun() (err error) {
 	if err := c.readOnSky(); err != nil {
-		return err
-	}
-	if made, err := product.ReadMembers(c.file); err != nil || made != nil {
-		if err == nil {
-			err = fmt.Errorf("%s is made of %d runs: %w", c.Path(), len(made), ErrCombined)
-		}
 		return err
 	}
 	if c.noise, err = product.ReadNoise(c.file); err != nil {
@@ -138,7 +161,6 @@ func (c *Cube) read() (err error) {
 	if err := c.readCode(); err != nil {
 		return err
 	}
-	c.SHA = c.identify()
 	if err := c.readErasures(); err != nil {
 		return err
 	}
@@ -150,8 +172,24 @@ func (c *Cube) fault(format string, args ...any) error {
 	return fmt.Errorf("%s: %s; make the cube again with reduce", c.Path(), fmt.Sprintf(format, args...))
 }
 
+// Cards of a combined cube: VELOSYS is left out where its runs differ in it.
+const (
+	observerVelocity = "VELOSYS"
+	runsCard         = "NRUNS"
+)
+
 func (c *Cube) readGrid() error {
-	s, err := product.ReadSchema(c.signal.Header, c.signal.Axes)
+	h := c.signal.Header
+	if h.Has(observerVelocity) || !c.file.HDUs()[0].Header.Has(runsCard) {
+		c.observed = true
+	} else {
+		// The runs of a combined cube have observers of their own: see their cubes.
+		h = h.Clone()
+		if err := h.Set(observerVelocity, 0.0, ""); err != nil {
+			return err
+		}
+	}
+	s, err := product.ReadSchema(h, c.signal.Axes)
 	if err != nil {
 		return fmt.Errorf("%s: %w: %w", c.Path(), err, ErrGrid)
 	}
@@ -255,16 +293,6 @@ func (c *Cube) readGeometry() error {
 	}
 	c.resampler, err = calib.NewResampler(0, c.noise.Columns-1)
 	return err
-}
-
-func (c *Cube) identify() string {
-	sum := sha256.New()
-	for _, u := range c.file.HDUs() {
-		for _, card := range u.Header.Cards() {
-			fmt.Fprintf(sum, "%s=%v/%s\n", card.Key, card.Value, card.Comment) // a hash takes everything
-		}
-	}
-	return fmt.Sprintf("%x", sum.Sum(nil))
 }
 
 // slitRow reads a row of SLITRESP, factor or variance; nil without a response.

@@ -34,4 +34,11 @@
 // may have been scaled by a measured error scale or a flux calibration. (Where the
 // throughput has errors it is a little more: reduce takes them for independent in the
 // pixels of a voxel as well.) Of samples that were restored see erasure.
+//
+// A combined cube is the mean of runs by shares o_iv. Its runs are opened, and the
+// variance of a sum is the sum over them of what the weights w_v o_iv give in run i: runs
+// are taken to be independent, as nights are. What cycles of one night share (lamp and
+// bias frames, the errors of responses with them), and nights that were calibrated by one
+// star (the flux), counts as if it were not shared, here as in VARIANCE: the error of a
+// sum that such an error rules comes out too small, by a root of 2 for two equal runs.
 package extract

@@ -3,8 +3,6 @@ package extract
 import (
 	"context"
 	"math"
-
-	"mirrorloom/pipeline/product"
 )
 
 // Image is the light in a band of every element and row, [row][element].
@@ -38,10 +36,14 @@ func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Ima
 	inside := overlap(c.Grid, b.FromNM, b.ToNM)
 	from, to := span(weights)
 	widths := c.widths(from, to)
-	noise := c.newSpectrumNoise()
+	noise := c.newFieldNoise(from, to)
 	for y0 := 0; y0 < c.Rows; y0 += pieceRows {
 		y1 := min(y0+pieceRows, c.Rows)
 		v, err := c.readVoxels(ctx, from, to, y0, y1)
+		if err != nil {
+			return nil, err
+		}
+		runs, err := c.readRuns(ctx, v, from, to, y0, y1)
 		if err != nil {
 			return nil, err
 		}
@@ -49,14 +51,10 @@ func (c *Cube) Image(ctx context.Context, b Band, progress func(done int)) (*Ima
 			if err := noise.setRow(y); err != nil {
 				return nil, err
 			}
-			slit, err := c.slitRow(1, y)
-			if err != nil {
-				return nil, err
-			}
 			for j := range c.Elements {
 				s := v.spectrum((y-y0)*c.Elements + j)
-				noise.setElement(j, from, to)
-				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], widths, noise, c.sharedBy(slit, j, y, from))
+				noise.setElement(j, s, runs)
+				im.set(y*c.Elements+j, s, weights[from:to], inside[from:to], widths, noise)
 			}
 		}
 		progress(y1)
@@ -89,7 +87,7 @@ func span(weights []float64) (from, to int) {
 }
 
 // set computes pixel i from the voxels of its spectrum.
-func (im *Image) set(i int, s spectrumVoxels, weights, inside, widths []float64, noise *spectrumNoise, r responseNoise) {
+func (im *Image) set(i int, s spectrumVoxels, weights, inside, widths []float64, noise *fieldNoise) {
 	var goodBand, allBand, goodSide, allSide float64
 	for l, w := range weights {
 		side := inside[l] - w // what the continuum takes
@@ -121,7 +119,7 @@ func (im *Image) set(i int, s spectrumVoxels, weights, inside, widths []float64,
 		naive += own[l] * own[l] * float64(s.variance[l])
 	}
 	im.Signal[i], im.Naive[i] = float32(signal), float32(math.Sqrt(naive))
-	im.Error[i] = float32(math.Sqrt(r.variance(own, s) + noise.variance(r.onPixels(own, s, noise))))
+	im.Error[i] = float32(math.Sqrt(noise.variance(own)))
 }
 
 // responseNoise is the relative variances of the responses in one spectrum.
@@ -216,7 +214,7 @@ func (b *voxelBlock) spectrum(i int) spectrumVoxels {
 }
 
 func (s spectrumVoxels) good(l int) bool {
-	return s.flags[l]&product.FlagBad == 0 && !isNaN(s.signal[l]) && s.variance[l] > 0
+	return isGood(s.flags[l], s.signal[l], s.variance[l])
 }
 
 // readVoxels reads channels from..to-1 of rows y0..y1-1.

@@ -91,7 +91,11 @@ func (c *Cube) Lines(ctx context.Context, o LineOptions, progress func(done int)
 		if err != nil {
 			return nil, err
 		}
-		if err := c.fitRows(ctx, m, v, y0, y1, from, to); err != nil {
+		runs, err := c.readRuns(ctx, v, from, to, y0, y1)
+		if err != nil {
+			return nil, err
+		}
+		if err := c.fitRows(ctx, m, v, runs, y0, y1, from, to); err != nil {
 			return nil, err
 		}
 		progress(y1)
@@ -100,15 +104,15 @@ func (c *Cube) Lines(ctx context.Context, o LineOptions, progress func(done int)
 }
 
 // fitRows fits rows y0..y1-1, several at a time.
-func (c *Cube) fitRows(ctx context.Context, m *LineMap, v *voxelBlock, y0, y1, from, to int) error {
+func (c *Cube) fitRows(ctx context.Context, m *LineMap, v *voxelBlock, runs []runVoxels, y0, y1, from, to int) error {
 	var next atomic.Int64
 	var workers sync.WaitGroup
 	failed := make([]error, y1-y0)
 	for range min(runtime.GOMAXPROCS(0), y1-y0) {
 		workers.Go(func() {
-			noise, model := c.newSpectrumNoise(), m.Options.model(c.Grid, from, to, c.Unit)
+			noise, model := c.newFieldNoise(from, to), m.Options.model(c.Grid, from, to, c.Unit)
 			for i := int(next.Add(1)) - 1; i < y1-y0; i = int(next.Add(1)) - 1 {
-				failed[i] = c.fitRow(ctx, m, model, noise, v, y0, i, from, to)
+				failed[i] = c.fitRow(ctx, m, model, noise, v, runs, y0, i)
 			}
 		})
 	}
@@ -121,20 +125,16 @@ func (c *Cube) fitRows(ctx context.Context, m *LineMap, v *voxelBlock, y0, y1, f
 	return nil
 }
 
-func (c *Cube) fitRow(ctx context.Context, m *LineMap, model *lineModel, noise *spectrumNoise, v *voxelBlock, y0, i, from, to int) error {
-	y := y0 + i
+func (c *Cube) fitRow(ctx context.Context, m *LineMap, model *lineModel, noise *fieldNoise, v *voxelBlock, runs []runVoxels, y0, i int) error {
+	y, channels := y0+i, noise.to-noise.from
 	if err := ctx.Err(); err != nil {
 		return err
 	}
 	if err := noise.setRow(y); err != nil {
 		return err
 	}
-	slit, err := c.slitRow(1, y)
-	if err != nil {
-		return err
-	}
-	covariance := table[float64](to-from, Lags+1)
-	values, variance := make([]float64, to-from), make([]float64, to-from)
+	covariance := table[float64](channels, Lags+1)
+	values, variance := make([]float64, channels), make([]float64, channels)
 	for j := range c.Elements {
 		s, at := v.spectrum(i*c.Elements+j), y*c.Elements+j
 		for l := range values {
@@ -143,11 +143,10 @@ func (c *Cube) fitRow(ctx context.Context, m *LineMap, model *lineModel, noise *
 				values[l], variance[l] = float64(s.signal[l]), float64(s.variance[l])
 			}
 		}
-		noise.setElement(j, from, to)
+		noise.setElement(j, s, runs)
 		noise.covariance(covariance, variance)
 		f := model.fit(values, variance, covariance)
-		shared := c.sharedBy(slit, j, y, from)
-		m.Lines[at] = model.lines(&f, shared.slit+shared.band((to-from)/2)+shared.flux((to-from)/2))
+		m.Lines[at] = model.lines(&f, noise.shared(variance))
 		m.Status[at], m.Chi2[at] = f.status, float32(f.chi2)
 		if f.covariance == nil {
 			m.Chi2[at] = float32(math.NaN())

@@ -23,6 +23,22 @@ type covariances struct {
 	sums []float64
 }
 
+func newCovariances(channels, sums int) *covariances {
+	return &covariances{table[float64](channels, Lags+1), make([]float64, sums)}
+}
+
+// add takes those of something independent.
+func (v *covariances) add(o *covariances) {
+	for l, row := range o.channels {
+		for lag, x := range row {
+			v.channels[l][lag] += x
+		}
+	}
+	for i, x := range o.sums {
+		v.sums[i] += x
+	}
+}
+
 // propagator carries the weights of an aperture back to the detector.
 type propagator struct {
 	c    *Cube
@@ -95,6 +111,9 @@ func (c *Cube) newPropagator(a *aperture) *propagator {
 }
 
 func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnly bool) (*covariances, error) {
+	if c.members != nil {
+		return c.carryMembers(ctx, a, sums, sumsOnly)
+	}
 	p := c.newPropagator(a)
 	p.sums, p.sumsOnly = sums, sumsOnly
 	p.rowAt = rowStarts(a)
@@ -291,16 +310,9 @@ func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
 
 // result adds the blocks, and the errors that pixels do not tell.
 func (p *propagator) result() (*covariances, error) {
-	out := &covariances{channels: table[float64](p.c.Grid.Count, Lags+1), sums: make([]float64, len(p.sums))}
+	out := newCovariances(p.c.Grid.Count, len(p.sums))
 	for _, w := range p.parts {
-		for l, row := range w.channels {
-			for lag, v := range row {
-				out.channels[l][lag] += v
-			}
-		}
-		for i, v := range w.sums {
-			out.sums[i] += v
-		}
+		out.add(&covariances{w.channels, w.sums})
 	}
 	p.addThroughput(out)
 	p.addResponse(out)

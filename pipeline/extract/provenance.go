@@ -31,8 +31,13 @@ func (c *Cube) primary(more ...card) (*fitsutil.Header, error) {
 		}
 	}
 	if c.Frame.Name != product.Topocentric {
-		cards = append(cards, card{"SPECSYS", string(c.Frame.Name), "standard of rest of the wavelengths"},
-			card{"VELOSYS", c.Frame.VelocityMS(), "[m/s] observer's recession from the target"})
+		cards = append(cards, card{"SPECSYS", string(c.Frame.Name), "standard of rest of the wavelengths"})
+		if c.observed {
+			cards = append(cards, card{observerVelocity, c.Frame.VelocityMS(), "[m/s] observer's recession from the target"})
+		}
+	}
+	if c.members != nil {
+		cards = append(cards, card{runsCard, len(c.members), "runs combined, taken to be independent"})
 	}
 	cards = append(cards,
 		card{"SOFTVERS", "mirrorloom " + version.Version, "software that made this file"},

@@ -11,7 +11,7 @@ import (
 // Options of Run. An aperture asks for its spectrum, with the bands and lines in it;
 // without one, Image and Lines ask for maps of the whole field.
 type Options struct {
-	// Run is the folder of a reduction, or its cube.fits.
+	// Run is the folder of a reduction or of a combination of them, or its cube.fits.
 	Run      string
 	Spectrum SpectrumOptions
 	Image    *Band
@@ -24,9 +24,11 @@ type Options struct {
 
 // Answer says what was found and written.
 type Answer struct {
-	Cube     string          `json:"cube"`
-	CubeSHA  string          `json:"cube_sha256"`
-	Unit     string          `json:"unit"`
+	Cube    string `json:"cube"`
+	CubeSHA string `json:"cube_sha256"`
+	Unit    string `json:"unit"`
+	// Runs is how many the cube is made of; they are taken to be independent.
+	Runs     int             `json:"runs"`
 	Files    []string        `json:"files"`
 	Spectrum *SpectrumAnswer `json:"spectrum,omitempty"`
 	Image    *ImageAnswer    `json:"image,omitempty"`
@@ -72,7 +74,7 @@ func Run(ctx context.Context, opts Options) (*Answer, error) {
 		return nil, err
 	}
 	defer c.Close() // only read from
-	a := &Answer{Cube: c.Path(), CubeSHA: c.SHA, Unit: c.Unit}
+	a := &Answer{Cube: c.Path(), CubeSHA: c.SHA, Unit: c.Unit, Runs: c.Runs()}
 	if opts.Spectrum.Aperture != nil {
 		s, err := c.Spectrum(ctx, opts.Spectrum)
 		if err != nil {

@@ -96,10 +96,16 @@ func (a *aperture) readSlit(c *Cube) error {
 	return nil
 }
 
-// good tells whether a voxel may be added up.
+// good tells whether a voxel may be added up, as combine does.
 func (a *aperture) good(i, l int) bool {
-	return a.flags[i][l]&product.FlagBad == 0 && !isNaN(a.signal[i][l]) && a.variance[i][l] > 0
+	return isGood(a.flags[i][l], a.signal[i][l], a.variance[i][l])
 }
+
+func isGood(flags int16, signal, variance float32) bool {
+	return flags&product.FlagBad == 0 && finite(signal) && variance > 0 && finite(variance)
+}
+
+func finite(x float32) bool { return x-x == 0 }
 
 func isNaN(x float32) bool { return x != x }
 

@@ -5,6 +5,7 @@ import (
 	"math"
 	"regexp"
 
+	"mirrorloom/calib/physics"
 	"mirrorloom/pipeline/config"
 )
 
@@ -52,6 +53,9 @@ func (p *Profile) checkDMD(c *config.Checks) {
 	c.OneOf("dmd.mounting", d.Mounting, Square, Diagonal)
 	c.That(d.TiltDeg > 0 && d.TiltDeg < 45, "dmd.tilt_deg", "%v is not between 0 and 45; give the mirrors' tilt from flat", d.TiltDeg)
 	c.Positive("dmd.arcsec_per_mirror", d.ArcsecPerMirror)
+	if d.IncidenceDeg != nil {
+		c.Within("dmd.incidence_deg", *d.IncidenceDeg, -60, 60)
+	}
 	if d.LoadS != nil {
 		c.NotNegative("dmd.load_s", *d.LoadS)
 	}
@@ -66,7 +70,7 @@ func (p *Profile) checkSpectrograph(c *config.Checks) {
 	// A mirror turns the beam by twice its tilt between flat and either state;
 	// cones of half-angle atan(1/2N) wider than the tilt overlap (common
 	// practice; N > 2.35 at 12 degrees).
-	slowest := 1 / (2 * math.Tan(p.DMD.TiltDeg*math.Pi/180))
+	slowest := physics.FastestFNumber(p.DMD.TiltDeg)
 	c.That(s.FNumber > slowest, "spectrograph.f_number", "the beams of on and off mirrors overlap at f/%v with a tilt of %v degrees; give a slower beam than f/%.4g", s.FNumber, p.DMD.TiltDeg, slowest)
 	c.Within("spectrograph.pupil_oversize", s.PupilOversize, 1, 10)
 	c.Positive("spectrograph.center_nm", s.CenterNM)

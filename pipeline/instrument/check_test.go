@@ -136,6 +136,7 @@ func TestWrongProfiles(t *testing.T) {
 		{"  pitch_um: 13", "  pitch_um: -13", "p.yaml:15: dmd.pitch_um: -13 is not above 0; give a positive number"},
 		{"  mounting: square", "  mounting: turned", `p.yaml:16: dmd.mounting: "turned" is unknown; write square or diagonal`},
 		{"  tilt_deg: 12", "  tilt_deg: 45", "p.yaml:17: dmd.tilt_deg: 45 is not between 0 and 45; give the mirrors' tilt from flat"},
+		{"  tilt_deg: 12", "  tilt_deg: 12\n  incidence_deg: 90", "p.yaml:18: dmd.incidence_deg: 90 is outside -60 to 60; give a number in this range"},
 		{"  arcsec_per_mirror: 0.25", "  arcsec_per_mirror: 0", "p.yaml:18: dmd.arcsec_per_mirror: 0 is not above 0; give a positive number"},
 		{"  parity: -1", "  parity: 0", "p.yaml:19: dmd.parity: 0 is no parity; write 1 or -1"},
 		{"wavelength_nm: 700, ratio: 2000", "wavelength_nm: 300, ratio: 2000", "p.yaml:22: dmd.contrast[1].wavelength_nm: 300 does not lie above 400 before it; list the rows in ascending order"},

@@ -47,6 +47,10 @@ type DMD struct {
 	Mounting string `yaml:"mounting"`
 	// TiltDeg is the mirrors' tilt from flat in both states, degrees.
 	TiltDeg float64 `yaml:"tilt_deg"`
+	// IncidenceDeg is the angle of the light that comes to the device's normal, in the plane
+	// of the tilt and positive towards the side to which on mirrors turn, degrees. Optional;
+	// nil for 0.
+	IncidenceDeg *float64 `yaml:"incidence_deg" config:"optional"`
 	// ArcsecPerMirror is the side of a mirror on the sky, arc seconds.
 	ArcsecPerMirror float64 `yaml:"arcsec_per_mirror"`
 	// Parity is 1 where east lies towards -axis 1 at position angle 0, as seen

@@ -88,9 +88,6 @@ func drifting(checks *hadamard.Checks, seed uint64) []int {
 				break
 			}
 			seen = size
-			if e := driftError(checks, order); e < least {
-				least, best = e, slices.Clone(order)
-			}
 			slices.SortStableFunc(order, func(a, b int) int {
 				switch {
 				case projected[a] < projected[b]:
@@ -100,6 +97,9 @@ func drifting(checks *hadamard.Checks, seed uint64) []int {
 				}
 				return 0
 			})
+		}
+		if e := driftError(checks, order); e < least {
+			least, best = e, order
 		}
 	}
 	return best

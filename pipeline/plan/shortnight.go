@@ -38,9 +38,9 @@ type Tail struct {
 // tailFractions are the parts of the night that are missed.
 var tailFractions = [...]float64{0.10, 0.25, 0.50}
 
-// mostCompared is the largest code of which orders other than the plan's are worked out: it
-// takes seconds beyond.
-const mostCompared = 1100
+// mostCompared is the largest code of which orders other than the plan's are worked out:
+// beyond it takes seconds.
+const mostCompared = 300
 
 // shortNights compares the orders, the plan's first, then the same in more cycles of shorter
 // steps.

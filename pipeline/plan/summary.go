@@ -50,6 +50,8 @@ type Summary struct {
 	Trade *trade.Trade `json:"trade,omitempty"`
 	// ShortNights say what is lost where the night ends early, by order of the steps.
 	ShortNights []ShortNight `json:"short_nights"`
+	// Device is what the optics of the mirror array do.
+	Device *Device `json:"device"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -122,6 +124,7 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 		r.warn("the field's airmass reaches %.2f during science exposures", r.Airmass[2])
 	}
 	r.addRefStar(s)
+	r.Device = deviceOf(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
 	return r
 }
@@ -226,6 +229,9 @@ func (r *Summary) String() string {
 		fmt.Fprintf(&b, ", %d distinct masks", r.Masks)
 	}
 	b.WriteString("\n")
+	if r.Device != nil {
+		b.WriteString(r.Device.String())
+	}
 	for _, w := range r.Warnings {
 		fmt.Fprintf(&b, "warning  %s\n", w)
 	}

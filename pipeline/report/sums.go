@@ -25,7 +25,7 @@ func (p *page) addSums(ctx context.Context, cubePath string, places []place) err
 		return nil
 	}
 	c, err := extract.Open(cubePath)
-	if errors.Is(err, fitsutil.ErrMissingHDU) || errors.Is(err, fitsutil.ErrMissingCard) || errors.Is(err, extract.ErrGrid) || errors.Is(err, extract.ErrCombined) {
+	if errors.Is(err, fitsutil.ErrMissingHDU) || errors.Is(err, fitsutil.ErrMissingCard) || errors.Is(err, extract.ErrGrid) {
 		return nil
 	}
 	if err != nil {

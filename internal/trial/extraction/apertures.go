@@ -87,15 +87,24 @@ type Scatter struct {
 	apertures []*aperture
 }
 
-// MeasureApertures rehearses and reduces so many nights, with the seeds first, first+1
-// ..., one after the other in dir, and extracts the apertures of each.
-func MeasureApertures(ctx context.Context, dir string, stars bool, nights int, first uint64) (*Scatter, error) {
+// tried is the field whose apertures are extracted.
+func tried(stars bool) (*trial.Field, error) {
 	field, err := trial.Square()
 	if err != nil {
 		return nil, err
 	}
 	field.Profile.Grid.FirstNM, field.Profile.Grid.Count = 478, 108
 	scene(field, stars)
+	return field, nil
+}
+
+// MeasureApertures rehearses and reduces so many nights, with the seeds first, first+1
+// ..., one after the other in dir, and extracts the apertures of each.
+func MeasureApertures(ctx context.Context, dir string, stars bool, nights int, first uint64) (*Scatter, error) {
+	field, err := tried(stars)
+	if err != nil {
+		return nil, err
+	}
 	night, err := field.Plan(ctx, dir)
 	if err != nil {
 		return nil, err
