@@ -221,3 +221,13 @@ func (n *Night) air(name string) (func(nm float64) float64, error) {
 		return sum
 	}, nil
 }
+
+// Visible is the embedded demo field of the profile "visible", with its reference star.
+func Visible() (*Field, error) {
+	f, err := load("visible", "demo-visible")
+	if err != nil {
+		return nil, err
+	}
+	f.Scene, err = rehearse.LoadScene("demo-visible")
+	return f, err
+}

@@ -172,6 +172,14 @@ type FluxReport struct {
 	// band, SlitRelError its relative error; the flux of the cube is of all its light.
 	SlitFraction float64 `json:"slit_fraction"`
 	SlitRelError float64 `json:"slit_rel_error"`
+	// Frames counts those of the star through one wide element, 0 for a star's cube. What
+	// wavelengths they show depends on Element, known to ElementError: assumed to be where
+	// the telescope was to point, or found by the ends of the band and the star's lines.
+	// FrameError is the relative error of the mean by which the frames differ.
+	Frames         int     `json:"frames,omitempty"`
+	ElementError   float64 `json:"element_error,omitempty"`
+	ElementAssumed bool    `json:"element_assumed,omitempty"`
+	FrameError     float64 `json:"frame_error,omitempty"`
 	// StarAirmass and Airmass are those of the star's and of the science exposures.
 	StarAirmass float64 `json:"star_airmass"`
 	Airmass     float64 `json:"airmass"`

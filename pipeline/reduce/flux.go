@@ -19,8 +19,9 @@ import (
 	"mirrorloom/pipeline/skyflux"
 )
 
-// FluxRecipe rules the calibration of the flux by a reference star: the cube.fits of a run
-// on it, found at a position or, without, as the brightest; and its table of fluxes.
+// FluxRecipe rules the calibration of the flux by a reference star: this night's frames of
+// it through one wide element (auto), or the cube.fits of a run on it, found at a position
+// or, without, as the brightest; and its table of fluxes.
 type FluxRecipe struct {
 	Use  string `yaml:"use"`
 	Star string `yaml:"star" config:"optional"`
@@ -37,7 +38,8 @@ func (f FluxRecipe) check(c *config.Checks) {
 		c.That(f.Star == "" && f.RADeg == nil && f.DecDeg == nil && f.RadiusArcsec == 0, "flux.use", "off leaves the other keys of flux without effect; write use: FILE, or leave them out")
 		return
 	}
-	c.That(strings.HasSuffix(f.Use, ".fits"), "flux.use", "%q is unknown; use off, or the cube.fits of a run on a reference star", f.Use)
+	c.That(f.Use == useAuto || strings.HasSuffix(f.Use, ".fits"), "flux.use", "%q is unknown; use off, auto for this night's refstar frames, or the cube.fits of a run on a reference star", f.Use)
+	c.That(f.Use != useAuto || f.RADeg == nil && f.DecDeg == nil, "flux.ra_deg", "a position finds the star in a cube; with use: auto it is that of the target's calibration.refstar; leave ra_deg and dec_deg out")
 	c.That(strings.HasSuffix(f.Star, ".csv"), "flux.star", "%q is no table of the star's flux; give a .csv of wavelengths and fluxes", f.Star)
 	if f.RADeg != nil {
 		c.Within("flux.ra_deg", *f.RADeg, 0, 360)
@@ -78,6 +80,9 @@ func (r *reduction) checkFlux() error {
 	r.onSky.table = table
 	if err := r.fluxCovers(table); err != nil {
 		return err
+	}
+	if f.Use == useAuto {
+		return nil
 	}
 	source, err := r.openStar(f.Use)
 	if err != nil {
@@ -171,7 +176,7 @@ func (r *reduction) measureFlux(ctx context.Context, o skyflux.Options) error {
 		r.degrade("the flux was not calibrated: %v", err)
 		return nil
 	}
-	flux.Report.Star, flux.Report.Table = f.Use, f.Star
+	flux.Report.Star, flux.Report.Table = r.starName(), f.Star
 	if flux.Unknown > 0 {
 		r.degrade("the flux of %d of %d wavelengths is not known, as the star's table, its spectrum or the extinction curve ends before them: their voxels are NODATA", flux.Unknown, r.schema.Grid.Count)
 	}
@@ -205,6 +210,9 @@ func (r *reduction) judgeAir(f product.FluxReport) {
 func (r *reduction) fluxOf(ctx context.Context, o skyflux.Options) (*skyflux.Flux, error) {
 	if r.onSky.airError != nil {
 		return nil, r.onSky.airError
+	}
+	if r.opts.Recipe.Flux.Use == useAuto {
+		return r.fluxOfFrames(ctx)
 	}
 	source, err := r.openStar(r.opts.Recipe.Flux.Use)
 	if err != nil {

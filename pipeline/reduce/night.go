@@ -14,6 +14,7 @@ import (
 type roles struct {
 	calibration calibration
 	arcs        []*exposure.Frame
+	refstars    []*exposure.Frame   // of a star through one wide element
 	slots       [][]*exposure.Frame // science frames by code row
 	science     int                 // their number
 	lost        []int               // code rows without a frame
@@ -40,6 +41,8 @@ func sources(seq *sequence.Sequence, night *pair.Night, recipe *Recipe, cycles [
 			wanted = flat || detector && isLampOn(seq, f.StepIndex)
 		case sequence.Arc:
 			wanted = arc
+		case sequence.RefStar:
+			wanted = recipe.Flux.Use == useAuto
 		}
 		if !wanted {
 			continue
@@ -79,6 +82,8 @@ func assign(seq *sequence.Sequence, frames []*exposure.Frame, useCalibration boo
 		case sequence.Arc:
 			r.arcs = append(r.arcs, f)
 			continue // of as many times as there are lamps
+		case sequence.RefStar:
+			r.refstars = append(r.refstars, f)
 		}
 		if t, seen := times[step.Kind]; seen && t != step.ExptimeSeconds && step.Kind != sequence.Bias {
 			return nil, fmt.Errorf("the sequence has %s steps of %g s and of %g s; plan them all of one exposure time", step.Kind, t, step.ExptimeSeconds)

@@ -29,13 +29,21 @@ func fluxFacts(f *product.FluxReport) []fact {
 	if !f.Extinction {
 		air = "no extinction is known"
 	}
-	return []fact{
+	var wide []fact
+	if f.Frames > 0 {
+		how := "found by the ends of the band and the lines of the star"
+		if f.ElementAssumed {
+			how = "where the telescope was to point, as its spectrum does not tell"
+		}
+		wide = []fact{{"Star in the wide element", fmt.Sprintf("%d frames, which differ by %s of their mean's light; its place, on which wavelengths depend, is known to %.3f elements, %s", f.Frames, percent(f.FrameError), f.ElementError, how)}}
+	}
+	return append(wide, []fact{
 		{"Reference star", fmt.Sprintf("%s with %s, at element %.2f, row %.2f, %.2f arcsec wide", f.Star, f.Table, f.Element, f.Row, f.FWHMArcsec)},
 		{"Slit loss of the star", fmt.Sprintf("%s of its light was measured; relative error %s", percent(f.SlitFraction), percent(f.SlitRelError))},
 		{"Air mass", fmt.Sprintf("%.3f of the star, %.3f of the science frames: %s", f.StarAirmass, f.Airmass, air)},
 		{"Sensitivity", fmt.Sprintf("from %d voxels of the star (%d rejected), which scatter about it by %s; error of the factor %s, in the median", f.Used, f.Rejected, percent(f.RMS), percent(f.RelError))},
 		{"Largest efficiency", percent(f.Efficiency)},
-	}
+	}...)
 }
 
 // skyFacts are figures of the sky.

@@ -96,6 +96,9 @@ func Calibrate(star *Star, table calib.FluxTable, seen, science Exposures, p *in
 	if err != nil {
 		return nil, err
 	}
+	for l, v := range fit.Value {
+		fit.Variance[l] += v * v * star.shared(l)
+	}
 	own, err := onGrid(fit, star.Edges, prior, edges, Prior(p, edges))
 	if err != nil {
 		return nil, err
@@ -106,6 +109,7 @@ func Calibrate(star *Star, table calib.FluxTable, seen, science Exposures, p *in
 	f.Report = product.FluxReport{
 		Element: star.Element, Row: star.Row, FWHMArcsec: star.FWHMArcsec, SlitFraction: star.Fraction[n/2], SlitRelError: star.LossError * lost[n/2],
 		StarAirmass: seen.Airmass(), Airmass: science.Airmass(), Extinction: len(curve) > 0, Used: fit.Used, Rejected: fit.Rejected, RMS: fit.RMS,
+		ElementError: star.PlaceError, ElementAssumed: star.Misplaced != nil && !star.PlaceMeasured, FrameError: star.FrameError,
 	}
 	f.judge(own, edges, p)
 	return f, nil

@@ -51,6 +51,22 @@ type Star struct {
 	Element, Row float64
 	FWHMArcsec   float64
 	RadiusArcsec float64
+	// PlaceError is that of Element where it decides on wavelengths, which PlaceMeasured
+	// says were not only assumed; Misplaced what it does to the counts, relative, by voxel.
+	PlaceError    float64
+	PlaceMeasured bool
+	Misplaced     []float64
+	// FrameError is the relative error of all counts alike, of exposures that differ.
+	FrameError float64
+}
+
+// shared is the relative variance of a voxel's counts that its neighbours share.
+func (s *Star) shared(l int) float64 {
+	v := s.FrameError * s.FrameError
+	if s.Misplaced != nil {
+		v += s.Misplaced[l] * s.Misplaced[l]
+	}
+	return v
 }
 
 // WhereStar checks that a star's place lies in a cube.
