@@ -21,7 +21,8 @@ func TestParallacticAngleByHand(t *testing.T) {
 		h, d, p := rapid.Float64Range(-179, 179).Draw(t, "H"), rapid.Float64Range(-89, 89).Draw(t, "d"), rapid.Float64Range(-89, 89).Draw(t, "p")
 		q := ParallacticAngle(h, d, p)
 		cosZ := sinDeg(p)*sinDeg(d) + cosDeg(p)*cosDeg(d)*cosDeg(h)
-		require.InDelta(t, cosDeg(p)*sinDeg(h), sinDeg(q)*math.Sqrt(1-cosZ*cosZ), 1e-9)
+		// Near the zenith 1 - cos^2 z keeps half of its digits.
+		require.InDelta(t, cosDeg(p)*sinDeg(h), sinDeg(q)*math.Sqrt(max(0, 1-cosZ*cosZ)), 5e-8)
 		require.InDelta(t, -q, ParallacticAngle(-h, d, p), 1e-12)
 	})
 }
