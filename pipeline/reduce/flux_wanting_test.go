@@ -97,9 +97,20 @@ func TestFluxWanting(t *testing.T) {
 	require.ErrorContains(t, err, "looks like hours: write ra_deg:")
 	require.NoFileExists(t, night.CubePath(trial.Noisy))
 
-	// Frames of which neither the air mass nor the time is known.
+	// Fewer frames of the star than planned, and none; they are the night's last.
 	frames, err := filepath.Glob(filepath.Join(night.Frames(trial.Noisy), "*.fits"))
 	require.NoError(t, err)
+	for _, want := range []string{"1 of 2 refstar frames are missing", "the flux was not calibrated: all 2 refstar frames are missing; repeat them, or give flux: {use: cube.fits of a run on the star}"} {
+		require.NoError(t, os.Remove(frames[len(frames)-1]))
+		frames = frames[:len(frames)-1]
+		result, err = run(reduce.FluxRecipe{Use: "auto", Star: table})
+		require.NoError(t, err)
+		require.Equal(t, reduce.ExitDegraded, result.Run.Exit) // the first for want of an extinction
+		require.Contains(t, result.Run.Warnings, want)
+	}
+	require.Nil(t, result.Run.Flux)
+
+	// Frames of which neither the air mass nor the time is known.
 	for _, path := range frames {
 		data, err := os.ReadFile(path)
 		require.NoError(t, err)
