@@ -12,6 +12,7 @@ func TestNames(t *testing.T) {
 	require.Contains(t, Names(Profiles), "infrared")
 	require.Contains(t, Names(Recipes), "default")
 	require.IsIncreasing(t, Names(Profiles))
+	require.Subset(t, Names(Recipes), Names(Profiles), "a profile without a recipe of its own")
 	require.Empty(t, Names("nothing"))
 	require.Empty(t, Names("configs.go"))
 	for _, folder := range []string{Profiles, Targets, Scenes, Recipes} {

@@ -62,7 +62,10 @@ Without one: an image of a band, or maps of lines, of the whole field.
 Positions are degrees (123.3 -21.6) or sexagesimal (08:13:12 -21:36:00, or
 8h13m12s -21d36m00s); sizes are arc seconds; position angles are degrees, north
 through east. Errors know that voxels share pixels and that decoding couples
-elements; those that take voxels for independent stand beside them.`,
+elements; those that take voxels for independent stand beside them.
+
+RUN may be what combine wrote: errors then come from the runs in it, whose folders must
+be where they were, as seen from it.`,
 		Example: `  mirrorloom extract run --circle "08:13:12.0 +21:36:00 2.5" --annulus "4 7" -o star
   mirrorloom extract run --band 500-502 --continuum 494-498,504-508 -o oxygen
   mirrorloom extract run --lines 656.461,658.527,654.986 -o hydrogen`,

@@ -30,26 +30,32 @@ func leaning(t *testing.T) *trial.Field {
 }
 
 // tinyPair makes two nights of it, the second with two cycles and so many elements and rows
-// further on, and combines them in dir, as "all" of "run0" and "run1".
-func tinyPair(t *testing.T, dir string, elements, rows float64, family string, v, dark int) {
+// further on, two months later, and combines them in dir, as "all" of "run0" and "run1".
+func tinyPair(t *testing.T, dir string, elements, rows float64, family string, v, dark int, change ...string) {
 	t.Helper()
 	field := leaning(t)
 	field.SetCode(family, v, dark)
+	recipe, err := reduce.LoadRecipe("nominal")
+	require.NoError(t, err)
+	for _, name := range change {
+		changes[name](field, recipe)
+	}
 	other := field.Displaced(elements, rows)
 	other.Target.Code.Cycles = 2
+	other.Target.StartUTC = "2031-04-11T02:00:00Z"
 	opts := combine.Options{Out: filepath.Join(dir, "all")}
 	for i, f := range []*trial.Field{field, other} {
 		night, err := f.Plan(t.Context(), filepath.Join(dir, fmt.Sprint("night", i)))
 		require.NoError(t, err)
 		require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 5 + uint64(i), NoTruth: true}))
-		_, err = night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true})
+		_, err = night.Reduce(t.Context(), trial.Noisy, reduce.Options{Cube: true, Recipe: recipe})
 		require.NoError(t, err)
 		run := filepath.Join(dir, fmt.Sprint("run", i))
 		require.NoError(t, os.Rename(night.Run(trial.Noisy), run))
 		opts.Runs = append(opts.Runs, run)
 	}
 	require.NoError(t, os.MkdirAll(opts.Out, 0o755))
-	_, err := combine.Run(t.Context(), opts)
+	_, err = combine.Run(t.Context(), opts)
 	require.NoError(t, err)
 }
 

@@ -15,7 +15,7 @@ import (
 // TinyPair combines two nights in a folder, TinyCycles the cycles of one: see
 // fixture_test.go.
 var (
-	TinyPair   func(t *testing.T, dir string, elements, rows float64, family string, v, dark int)
+	TinyPair   func(t *testing.T, dir string, elements, rows float64, family string, v, dark int, change ...string)
 	TinyCycles func(t *testing.T, dir string)
 )
 
@@ -247,4 +247,33 @@ func TestRunsOfACombinationAreChecked(t *testing.T) {
 	require.NoError(t, os.CopyFS(second, os.DirFS(filepath.Join(moved, "run0"))))
 	_, err = Open(all)
 	require.ErrorContains(t, err, "another cube now; combine the runs again")
+}
+
+// Nights whose observers move otherwise have one frame of wavelengths together, and no
+// observer's velocity; each run's voxels lie on its detector by its own.
+func TestCombinationOfTwoVelocities(t *testing.T) {
+	dir := t.TempDir()
+	TinyPair(t, dir, 2, -1, "m-sequence", 31, 8, "barycentric")
+	c := openRun(t, filepath.Join(dir, "all"))
+	require.Equal(t, product.Barycentric, c.Frame.Name)
+	require.False(t, c.observed)
+	first, second := c.members[0], c.members[1]
+	require.True(t, first.observed)
+	require.Greater(t, math.Abs(first.Frame.VelocityMS()-second.Frame.VelocityMS()), 5000.0)
+	a := listed(t, c, "9-11", "7-8")
+	a.plain()
+	want, both := definition(t, c, a)
+	require.Positive(t, both)
+	got, err := c.propagate(t.Context(), a, nil)
+	require.NoError(t, err)
+	for l := range want {
+		require.InDelta(t, want[l][l], got.channels[l][0], 2e-4*want[l][l])
+	}
+	h, err := c.primary()
+	require.NoError(t, err)
+	require.True(t, h.Has("SPECSYS"))
+	require.False(t, h.Has(observerVelocity))
+	n, err := h.Int(runsCard)
+	require.NoError(t, err)
+	require.EqualValues(t, 2, n)
 }

@@ -13,6 +13,7 @@ import (
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
 	"mirrorloom/pipeline/rehearse"
+	"mirrorloom/pipeline/sequence"
 )
 
 // Counts become flux by a coded star at another air mass: stars' spectra are those of the
@@ -23,6 +24,10 @@ func TestFluxNight(t *testing.T) {
 	dir := t.TempDir()
 	flux, err := f.StarNight(t.Context(), filepath.Join(dir, "star"), 11.5, 1.15, 8)
 	require.NoError(t, err)
+	f.Target.Calibration.RefStar = &sequence.RefStarFrames{
+		Name: "a star", Count: 3, DwellSeconds: 20, RADeg: f.Target.RADeg, DecDeg: f.Target.DecDeg + 18, Elements: [2]int{10, 36},
+	}
+	f.Scene.RefStar = &rehearse.RefStar{ABMag: 11.5, AtNM: 550, TemperatureK: 20000}
 	night, err := f.Plan(t.Context(), dir)
 	require.NoError(t, err)
 	require.NoError(t, night.Rehearse(t.Context(), trial.Noisy, rehearse.Options{Seed: 9}))
@@ -64,4 +69,24 @@ func TestFluxNight(t *testing.T) {
 	text, err := os.ReadFile(filepath.Join(night.Run(trial.Noisy), product.ReportFile))
 	require.NoError(t, err)
 	require.Contains(t, string(text), "Slit loss of the star")
+
+	// The night's own frames of another star through a wide element say the same.
+	coded := fluxFactors(t, night.CubePath(trial.Noisy))
+	table := filepath.Join(dir, "wide.csv")
+	source := f.Scene.RefStar.Source()
+	require.NoError(t, trial.WriteFluxTable(table, &source, 350, 950))
+	result, err = run(reduce.FluxRecipe{Use: "auto", Star: table})
+	require.NoError(t, err)
+	require.Empty(t, result.Degraded)
+	t.Logf("%+v", *result.Run.Flux)
+	wide, bands := fluxFactors(t, night.CubePath(trial.Noisy)), ""
+	for from := 0; from < len(wide); from += 40 {
+		ratio, n := 0.0, 0.0
+		for l := from; l < min(from+40, len(wide)); l++ {
+			ratio, n = ratio+wide[l]/coded[l], n+1
+		}
+		bands += fmt.Sprintf(" %.4f", ratio/n)
+		require.InDelta(t, 1, ratio/n, 0.01, "voxels from %d on", from)
+	}
+	t.Logf("wide element over coded:%s", bands)
 }

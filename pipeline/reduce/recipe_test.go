@@ -56,6 +56,8 @@ func TestRecipeRefusals(t *testing.T) {
 		{"flux: {use: star/cube.fits, star: s.csv, ra_deg: 361, dec_deg: 2}", "flux.ra_deg"},
 		{"flux: {use: star/cube.fits, star: s.csv, ra_deg: '08:13:12', dec_deg: 2}", "flux.ra_deg"},
 		{"flux: {use: star/cube.fits, star: s.csv, radius_arcsec: -1}", "flux.radius_arcsec"},
+		{"flux: {use: auto}", "flux.star"},
+		{"flux: {use: auto, star: s.csv, ra_deg: 12.5, dec_deg: 3}", "flux.ra_deg: a position finds the star in a cube; with use: auto"},
 		{"throughput: {use: maybe}", "throughput.use"},
 		{"repair: {use: yes}", "repair.use"},
 		{"detector: {use: maybe}", "detector.use"},

@@ -62,8 +62,7 @@ const (
 	badPlace = 0.5
 )
 
-// wideRows are voxels of some rows, [row][voxel], with the light that is expected of even
-// light (the mean response of the open elements).
+// wideRows are voxels of some rows, [row][voxel].
 type wideRows struct {
 	rows             []int
 	signal, variance [][]float32
@@ -95,7 +94,7 @@ func (w *Wide) inner(l int) int {
 	return min(max(l-w.Beyond, 0), len(w.Edges)-2-2*w.Beyond)
 }
 
-// even is the mean response of the open elements.
+// even is the mean response of the open elements: what light that fills all of them gets.
 func (w *Wide) even(y, l int) float64 {
 	sum := 0.0
 	for j := w.First; j <= w.Last; j++ {
@@ -196,6 +195,12 @@ func (w *Wide) alongSlit(place float64) (*rowShape, error) {
 		return nil, fmt.Errorf("the star's frames have %d usable rows; open more", len(rows))
 	}
 	all := w.read(rows, place)
+	for i, even := range w.evens(rows) {
+		for l, e := range even {
+			all.signal[i][l] /= float32(e)
+			all.variance[i][l] /= float32(e * e)
+		}
+	}
 	n := len(w.Edges) - 1
 	row, sigma, ok := all.peak(w, w.Beyond, n-w.Beyond)
 	if !ok {

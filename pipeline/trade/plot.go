@@ -79,7 +79,8 @@ func (t *Trade) WritePlot(w io.Writer) (err error) {
 	}
 	p.NominalY(names...)
 	p.X.Min = 0
-	canvas := vgsvg.New(8*vg.Inch, vg.Points(70+14*float64(len(drawn))))
+	// With its font inside, since a reader's other one may be wider than the room for it.
+	canvas := vgsvg.NewWith(vgsvg.UseWH(8*vg.Inch, vg.Points(70+14*float64(len(drawn)))), vgsvg.EmbedFonts(true))
 	p.Draw(draw.New(canvas))
 	_, err = canvas.WriteTo(w)
 	return err

@@ -15,7 +15,7 @@ const mostPrinted = 12
 func (t *Trade) String() string {
 	var b strings.Builder
 	fmt.Fprintf(&b, "candidates, each of %s; S/N of %s\n", seconds(t.BudgetSeconds), t.aim())
-	fmt.Fprintf(&b, "%-24s %5s %5s %8s %7s %5s %6s %9s %9s %9s %6s\n", "code", "v", "k", "elements", "mirrors", "dark", "cycles", "dwell_s", "S/N", "slit = 1", "full")
+	fmt.Fprintf(&b, "%-34s %5s %5s %8s %7s %5s %6s %9s %9s %9s %6s\n", "code", "v", "k", "elements", "mirrors", "dark", "cycles", "dwell_s", "S/N", "slit = 1", "full")
 	printed, left := 0, 0
 	for i := range t.Rows {
 		r := &t.Rows[i]
@@ -68,7 +68,7 @@ func (r *Row) line() string {
 	if r.Breaks != "" {
 		note += "  no: " + r.Why
 	}
-	return fmt.Sprintf("%-24s %5d %5d %8d %7d %5d %6d %9.4g %9.2f %9s %6.2f%s\n", name, c.V, c.K, c.N, c.ElementMirrors, c.Dark, c.Cycles, c.DwellSeconds, r.Figure, over, r.Full, note)
+	return fmt.Sprintf("%-34s %5d %5d %8d %7d %5d %6d %9.4g %9.2f %9s %6.2f%s\n", name, c.V, c.K, c.N, c.ElementMirrors, c.Dark, c.Cycles, c.DwellSeconds, r.Figure, over, r.Full, note)
 }
 
 // WriteCSV writes all rows, a header line first.
