@@ -31,7 +31,7 @@ func choose(ctx context.Context, target *sequence.Target, profile *instrument.Pr
 		return nil, err
 	}
 	t, err := trade.Compare(ctx, trade.Request{
-		Target: target, Light: light, Fields: fields, V: target.Code.V, Dark: target.Code.Dark,
+		Target: target, Profile: profile, Light: light, Fields: fields, V: target.Code.V, Dark: target.Code.Dark,
 		DwellSeconds: target.DwellSeconds, Cycles: target.Code.Cycles,
 	})
 	if err != nil {
@@ -175,7 +175,7 @@ func judged(ctx context.Context, s *sequence.Sequence) (*trade.Trade, error) {
 	}
 	given := candidateOf(s)
 	t, err := trade.Compare(ctx, trade.Request{
-		Target: target, Light: light, Given: &given,
+		Target: target, Profile: s.Profile, Light: light, Given: &given,
 		Fields: []trade.Field{{Elements: s.N(), Mirrors: s.ElementMirrors()}},
 	})
 	if err != nil {

@@ -12,6 +12,7 @@ import (
 	"mirrorloom/pipeline/config"
 	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/plan"
+	"mirrorloom/pipeline/scene"
 	"mirrorloom/pipeline/sequence"
 	"mirrorloom/pipeline/trade"
 )
@@ -84,6 +85,7 @@ func TestExplicitCodeIsKept(t *testing.T) {
 	v, dark := 127, 47
 	target.Code.Family, target.Code.V, target.Code.Dark, target.Code.Cycles = "m-sequence", &v, &dark, 1
 	target.DwellSeconds = 60
+	target.Forecast.Atmosphere = &scene.Atmosphere{} // no refraction limits its one long cycle
 	s, summary := build(t, target, profile)
 	require.Equal(t, "m-sequence", s.Family)
 	require.Equal(t, 60., s.Target.DwellSeconds)
@@ -92,6 +94,7 @@ func TestExplicitCodeIsKept(t *testing.T) {
 
 	// The best code itself is kept without a better one.
 	auto, profile := small(t)
+	auto.Forecast.Atmosphere = target.Forecast.Atmosphere
 	_, best := build(t, auto, profile)
 	c := chosen(t, best.Trade).Candidate
 	target.Code.Family, target.Code.V, target.Code.Dark, target.Code.Cycles = c.Family, &c.V, &c.Dark, c.Cycles
@@ -158,7 +161,7 @@ func TestImpossibleTargets(t *testing.T) {
 		{"no time", func(target *sequence.Target) { target.Forecast.Limits.TotalSeconds = 900 },
 			`the shortest night takes .*; it would take forecast\.limits\.total_s of [0-9]+ s`},
 		{"no cycle", func(target *sequence.Target) { target.Forecast.Limits.CycleSeconds = 60 },
-			`a cycle takes .* or more; it would take forecast\.limits\.cycle_s of [0-9]+ s`},
+			`a cycle takes .* or more of the 60 s that are allowed by forecast\.limits\.cycle_s; it would take forecast\.limits\.cycle_s of [0-9]+ s`},
 		{"saturated", func(target *sequence.Target) {
 			mag := 7.5
 			target.Forecast.Sources[1].ABMag, target.DwellSeconds = &mag, 90
@@ -179,6 +182,42 @@ func TestImpossibleTargets(t *testing.T) {
 			require.ErrorAs(t, err, &e)
 		})
 	}
+}
+
+// What changes in a night without being a factor per frame shortens the cycles of a choice,
+// and the slit scan wins where none is short enough; an explicit code is kept and warned of.
+func TestCyclesFollowFromChange(t *testing.T) {
+	target, profile := small(t)
+	target.Forecast.Limits.SkyChangePerHour = 0.2
+	_, summary := build(t, target, profile)
+	row := chosen(t, summary.Trade)
+	require.Equal(t, trade.RuleRefraction, row.CycleLimit.Rule)
+	require.Greater(t, row.Candidate.Cycles, 1)
+	require.LessOrEqual(t, row.CycleSeconds, row.CycleLimit.Seconds)
+	require.Contains(t, summary.String(), "A cycle may take ")
+	require.Contains(t, summary.String(), "the limit is that of refraction, which moves light of 499.83 nm by 0.1 elements in that time")
+	require.Contains(t, strings.Join(summary.Warnings, "\n"), "s that are allowed by the sky's lines, which change by 10 % in that time; give a shorter dwell_s")
+
+	target.Forecast.Limits.FlexurePxPerHour = 0.1
+	_, summary = build(t, target, profile)
+	row = chosen(t, summary.Trade)
+	require.Equal(t, trade.CycleLimit{Rule: trade.RuleFlexure, Seconds: 3600}, row.CycleLimit)
+	require.LessOrEqual(t, row.CycleSeconds, 3600.)
+
+	target.Forecast.Limits.FlexurePxPerHour = 10 // 36 s, the time of a few read-outs
+	_, summary = build(t, target, profile)
+	require.True(t, chosen(t, summary.Trade).IsSlit())
+	require.Contains(t, summary.Trade.Recommendation, "as no code's cycle is short enough: ")
+
+	target, profile = small(t)
+	v, dark := 127, 47
+	target.Code.Family, target.Code.V, target.Code.Dark, target.Code.Cycles = "m-sequence", &v, &dark, 1
+	target.DwellSeconds = 60
+	s, summary := build(t, target, profile)
+	require.Equal(t, 60., s.Target.DwellSeconds)
+	own := summary.Trade.Own()
+	require.Equal(t, trade.BreachCycle, own.Breaks)
+	require.Contains(t, summary.Warnings, own.CycleLimit.Warning(own.CycleSeconds))
 }
 
 // A limit on the cycle's time makes several cycles; a fixed dwell as many as there is time for.

@@ -7,6 +7,7 @@ import (
 
 	"mirrorloom/pipeline/forecast"
 	"mirrorloom/pipeline/sequence"
+	"mirrorloom/pipeline/trade"
 )
 
 // addForecast adds what a sequence will give, where its target says what to expect.
@@ -28,6 +29,32 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	for _, m := range r.Forecast.Wanted {
 		if m.Voxels == 0 {
 			r.warn("%s is not seen by this plan: it lies beyond the field, or its wavelengths beyond the detector", m.Name)
+		}
+	}
+	return nil
+}
+
+// warnCycle says where a cycle is longer than what changes in a night allows; of a code that
+// was chosen so that it is not, only what the sky's lines do.
+func (r *Summary) warnCycle(s *sequence.Sequence, chosen bool) error {
+	if r.Forecast == nil {
+		return nil
+	}
+	c, t := r.Forecast.Candidate, r.Forecast.Time
+	limits := []trade.CycleLimit{}
+	if !chosen {
+		light, err := forecast.New(s.Target, s.Profile)
+		if err != nil {
+			return err
+		}
+		limits = append(limits, trade.LimitOf(s.Target, s.Profile, light, c, t.ScienceSeconds))
+	}
+	if c.K > 1 {
+		limits = append(limits, trade.SkyLimit(s.Target))
+	}
+	for _, l := range limits {
+		if w := l.Warning(t.CycleSeconds); w != "" {
+			r.warn("%s", w)
 		}
 	}
 	return nil

@@ -91,6 +91,9 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 		if err != nil {
 			return nil, nil, err
 		}
+		if err := summary.warnCycle(s, false); err != nil {
+			return nil, nil, err
+		}
 		summary.Trade, err = judged(ctx, s)
 		return s, summary, err
 	}
@@ -100,6 +103,9 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	}
 	s, summary, err := build(ctx, c.target, profile, c.dark)
 	if err != nil {
+		return nil, nil, err
+	}
+	if err := summary.warnCycle(s, true); err != nil {
 		return nil, nil, err
 	}
 	summary.Trade = c.trade

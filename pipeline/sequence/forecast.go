@@ -69,6 +69,12 @@ type Limits struct {
 	// CycleSeconds is how long a cycle may take, for what changes in a night and is no
 	// factor per frame.
 	CycleSeconds float64 `yaml:"cycle_s" config:"optional"`
+	// FlexurePxPerHour is how fast the image drifts on the detector, pixels an hour.
+	FlexurePxPerHour float64 `yaml:"flexure_px_h" config:"optional"`
+	// SeeingChangePerHour and SkyChangePerHour are by what part the seeing's width and the
+	// sky's lines change in an hour, rms.
+	SeeingChangePerHour float64 `yaml:"seeing_change_per_h" config:"optional"`
+	SkyChangePerHour    float64 `yaml:"sky_change_per_h" config:"optional"`
 }
 
 // Scene is the sky of the forecast; it shares its slices. The spectra that sources name are
@@ -104,7 +110,11 @@ func (t *Target) readSpectra(doc *config.Doc, beside func(file string) ([]byte, 
 	return nil
 }
 
-const maxWanted = 1000
+const (
+	maxWanted = 1000
+	// mostChangePerHour, pixels or parts, is far above what any night is used for.
+	mostChangePerHour = 1000
+)
 
 func (t *Target) checkForecast(c *config.Checks) {
 	f := t.Forecast
@@ -128,6 +138,9 @@ func (t *Target) checkForecast(c *config.Checks) {
 	c.Count("forecast.limits.lost_frames", f.Limits.LostFrames, 0, maxV)
 	c.Within("forecast.limits.cosmic_per_1000", f.Limits.CosmicPer1000, 0, 1000)
 	c.NotNegative("forecast.limits.cycle_s", f.Limits.CycleSeconds)
+	c.Within("forecast.limits.flexure_px_h", f.Limits.FlexurePxPerHour, 0, mostChangePerHour)
+	c.Within("forecast.limits.seeing_change_per_h", f.Limits.SeeingChangePerHour, 0, mostChangePerHour)
+	c.Within("forecast.limits.sky_change_per_h", f.Limits.SkyChangePerHour, 0, mostChangePerHour)
 }
 
 // Limits of a measurement.

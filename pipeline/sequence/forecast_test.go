@@ -28,7 +28,7 @@ const forecastKeys = `forecast:
     - {name: knot, east_arcsec: 0, north_arcsec: -1, radius_arcsec: 1.5, line_nm: 500.8}
   aim: knot
   throughput_rms: 0.01
-  limits: {total_s: 7200, lost_frames: 2, cosmic_per_1000: 0.5, cycle_s: 3600}
+  limits: {total_s: 7200, lost_frames: 2, cosmic_per_1000: 0.5, cycle_s: 3600, flexure_px_h: 0.2, seeing_change_per_h: 0.3, sky_change_per_h: 0.4}
 `
 
 func TestForecastKeys(t *testing.T) {
@@ -38,7 +38,7 @@ func TestForecastKeys(t *testing.T) {
 	require.Equal(t, 0, *f.Wanted[0].Source)
 	require.Equal(t, []float64{540, 560}, f.Wanted[0].BandNM)
 	require.Equal(t, 500.8, *f.Wanted[1].LineNM)
-	require.Equal(t, sequence.Limits{TotalSeconds: 7200, LostFrames: 2, CosmicPer1000: 0.5, CycleSeconds: 3600}, f.Limits)
+	require.Equal(t, sequence.Limits{TotalSeconds: 7200, LostFrames: 2, CosmicPer1000: 0.5, CycleSeconds: 3600, FlexurePxPerHour: 0.2, SeeingChangePerHour: 0.3, SkyChangePerHour: 0.4}, f.Limits)
 	require.Equal(t, 1.3, target.Scene().SeeingFWHMArcsec)
 	text, err := target.YAML()
 	require.NoError(t, err)
@@ -78,6 +78,9 @@ func TestForecastRefusals(t *testing.T) {
 		{"total_s: 7200", "total_s: -1", "forecast.limits.total_s: -1 is below 0"},
 		{"lost_frames: 2", "lost_frames: -2", "forecast.limits.lost_frames: -2 is outside"},
 		{"cosmic_per_1000: 0.5", "cosmic_per_1000: 5000", "forecast.limits.cosmic_per_1000: 5000 is outside"},
+		{"flexure_px_h: 0.2", "flexure_px_h: -1", "forecast.limits.flexure_px_h: -1 is outside 0 to 1000"},
+		{"seeing_change_per_h: 0.3", "seeing_change_per_h: -1", "forecast.limits.seeing_change_per_h: -1 is outside 0 to 1000"},
+		{"sky_change_per_h: 0.4", "sky_change_per_h: 1e9", "forecast.limits.sky_change_per_h: 1e+09 is outside 0 to 1000"},
 		{"cycle_s: 3600", "cycle: 3600", "forecast.limits.cycle: unknown key; write cycle_s"},
 	} {
 		require.Equal(t, 1, strings.Count(forecastKeys, c.old), c.old)

@@ -25,4 +25,12 @@
 // by more than g/4 cosmic rays, which are as many as can be restored. With fewer
 // than 2 log2 v columns nothing can be audited or restored, so that is the least in
 // any case. None of this is asked of a slit scan: a frame lost is an element lost.
+//
+// # Cycles
+//
+// What changes within a cycle and is no factor per frame upsets decoding, and dark columns
+// cannot tell how. The shortest of the target's cycle_s and of the times in which refraction
+// moves what is wanted by 0.1 element, flexure the image by 0.1 px and the seeing changes by
+// 10 % bounds the cycles of codes (CycleLimit); a slit scan is bound by cycle_s alone. The
+// rate of refraction is that in the middle of the science frames.
 package trade

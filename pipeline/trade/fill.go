@@ -20,10 +20,10 @@ func (w *weighing) fill(ctx context.Context, c forecast.Candidate) (Row, error) 
 		return row, nil
 	}
 	if w.Cycles == 0 {
-		if ok := w.forCycle(&c); !ok {
-			row := Row{Candidate: c, TotalSeconds: shortest.TotalSeconds, CycleSeconds: shortest.CycleSeconds, Source: -1}
-			row.breaks(BreachCycle, fmt.Sprintf("a cycle takes %s or more", seconds(shortest.CycleSeconds)),
-				fmt.Sprintf("forecast.limits.cycle_s of %s, or wider elements", seconds(shortest.CycleSeconds)))
+		limit := w.limit(c)
+		if ok := w.forCycle(&c, limit); !ok {
+			row := Row{Candidate: c, TotalSeconds: shortest.TotalSeconds, CycleSeconds: shortest.CycleSeconds, Source: -1, CycleLimit: limit}
+			row.breaks(BreachCycle, fmt.Sprintf("a cycle takes %s or more of the %s that are allowed by %s", seconds(shortest.CycleSeconds), seconds(limit.Seconds), limit.cause()), limit.cure(shortest.CycleSeconds))
 			return row, nil
 		}
 	}
@@ -81,11 +81,11 @@ func floorDigits(x float64) float64 {
 }
 
 // forCycle raises the cycles until one is short enough; false where none is.
-func (w *weighing) forCycle(c *forecast.Candidate) bool {
-	limit := w.limits.CycleSeconds
-	if limit == 0 {
+func (w *weighing) forCycle(c *forecast.Candidate, most CycleLimit) bool {
+	if most.Rule == RuleNone {
 		return true
 	}
+	limit := most.Seconds
 	if w.Light.Time(*c).CycleSeconds > limit { // at the shortest dwell
 		return false
 	}

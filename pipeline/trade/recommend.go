@@ -64,6 +64,8 @@ func (t *Trade) reasons(target *sequence.Target, r *Row) string {
 		if code := t.code(r); code != nil {
 			parts = append(parts, fmt.Sprintf("as the best code (%s) gives %.2f times its S/N of %s: %.0f %% of that code's noise is photons of everything that overlaps",
 				Name(code.Candidate), code.Figure/r.Figure, t.aim(), 100*code.PhotonPart))
+		} else if slow := t.quickest(r); slow != nil {
+			parts = append(parts, fmt.Sprintf("as no code's cycle is short enough: with %s %s", Name(slow.Candidate), slow.Why))
 		}
 	} else if t.sparse(r) {
 		if dense := t.dense(r); dense != nil && dense.Figure > 0 {
@@ -113,6 +115,19 @@ func (t *Trade) bareOf(r *Row) *Row {
 // code is the best code of a slit scan's elements within the limits.
 func (t *Trade) code(slit *Row) *Row {
 	return t.find(slit, func(r *Row) bool { return !r.IsSlit() })
+}
+
+// quickest is, of the codes of a slit scan's elements whose cycles are too long, that with the
+// shortest; nil for none.
+func (t *Trade) quickest(slit *Row) *Row {
+	var best *Row
+	for i := range t.Rows {
+		r := &t.Rows[i]
+		if !r.IsSlit() && r.Breaks == BreachCycle && r.Candidate.ElementMirrors == slit.Candidate.ElementMirrors && (best == nil || r.CycleSeconds < best.CycleSeconds) {
+			best = r
+		}
+	}
+	return best
 }
 
 // dense is the best of a row's elements that opens half the columns or more.

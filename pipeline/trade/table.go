@@ -29,8 +29,21 @@ func (t *Trade) String() string {
 	if left > 0 {
 		fmt.Fprintf(&b, "and %d more in trade.csv\n", left)
 	}
+	if r := t.planned(); r != nil && r.CycleLimit.Rule != RuleNone {
+		fmt.Fprintf(&b, "\n%s\n", upper(r.CycleLimit.String()))
+	}
 	fmt.Fprintf(&b, "\n%s\n", t.Recommendation)
 	return b.String()
+}
+
+// planned is the row that is chosen, or the given one; nil for neither.
+func (t *Trade) planned() *Row {
+	for i := range t.Rows {
+		if t.Rows[i].Chosen {
+			return &t.Rows[i]
+		}
+	}
+	return t.Own()
 }
 
 func (r *Row) line() string {
@@ -61,7 +74,7 @@ func (r *Row) line() string {
 // WriteCSV writes all rows, a header line first.
 func (t *Trade) WriteCSV(w io.Writer) error {
 	out := csv.NewWriter(w)
-	rows := [][]string{{"family", "v", "k", "l", "elements", "element_mirrors", "dark", "cycles", "dwell_s", "total_s", "cycle_s", "snr", "over_slit_scan", "full", "longest_dwell_s", "photon_part", "covered_sources", "use", "breaks", "why"}}
+	rows := [][]string{{"family", "v", "k", "l", "elements", "element_mirrors", "dark", "cycles", "dwell_s", "total_s", "cycle_s", "cycle_limit_s", "cycle_limit_by", "snr", "over_slit_scan", "full", "longest_dwell_s", "photon_part", "covered_sources", "use", "breaks", "why"}}
 	number := func(x float64) string { return strconv.FormatFloat(x, 'g', 6, 64) }
 	for i := range t.Rows {
 		r := &t.Rows[i]
@@ -79,7 +92,7 @@ func (t *Trade) WriteCSV(w io.Writer) error {
 		}
 		rows = append(rows, []string{
 			c.Family, strconv.Itoa(c.V), strconv.Itoa(c.K), strconv.Itoa(c.L), strconv.Itoa(c.N), strconv.Itoa(c.ElementMirrors), strconv.Itoa(c.Dark),
-			strconv.Itoa(c.Cycles), number(c.DwellSeconds), number(r.TotalSeconds), number(r.CycleSeconds), number(r.Figure), number(r.OverSlit), number(r.Full),
+			strconv.Itoa(c.Cycles), number(c.DwellSeconds), number(r.TotalSeconds), number(r.CycleSeconds), number(r.CycleLimit.Seconds), string(r.CycleLimit.Rule), number(r.Figure), number(r.OverSlit), number(r.Full),
 			number(r.LongestDwellSeconds), number(r.PhotonPart), strings.Join(covered, " "), use, string(r.Breaks), r.Why,
 		})
 	}

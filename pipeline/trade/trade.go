@@ -8,13 +8,15 @@ import (
 
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/forecast"
+	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
 // Request says what is held against each other.
 type Request struct {
-	Target *sequence.Target
-	Light  *forecast.Light
+	Target  *sequence.Target
+	Profile *instrument.Profile
+	Light   *forecast.Light
 	// Fields are those to be tried.
 	Fields []Field
 	// Given is the target's own candidate, nil where plan is to choose. It is judged as it
@@ -55,6 +57,8 @@ type Row struct {
 	// TotalSeconds and CycleSeconds are its times.
 	TotalSeconds float64 `json:"total_s"`
 	CycleSeconds float64 `json:"cycle_s"`
+	// CycleLimit is how long a cycle may take.
+	CycleLimit CycleLimit `json:"cycle_limit"`
 	// Full is the brightest pixel over its saturation, Source the index of the source most
 	// of it comes from (-1 for the sky).
 	Full   float64 `json:"full"`

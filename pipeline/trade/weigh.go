@@ -102,6 +102,7 @@ func (w *weighing) given(ctx context.Context, c forecast.Candidate) (Row, error)
 		return row, err
 	}
 	row.Given = true
+	row.CycleLimit = w.limitIn(row.Candidate, w.Light.Time(row.Candidate).ScienceSeconds)
 	switch {
 	case row.Full >= 1:
 		row.breaks(BreachSaturation, fmt.Sprintf("its brightest pixel saturates after %s", seconds(row.LongestDwellSeconds)), "a shorter dwell_s")
@@ -121,8 +122,8 @@ func (w *weighing) judge(row *Row) {
 		least = LeastDark(c.V, w.limits)
 	}
 	switch {
-	case w.limits.CycleSeconds > 0 && row.CycleSeconds > w.limits.CycleSeconds*(1+1e-9):
-		row.breaks(BreachCycle, fmt.Sprintf("a cycle takes %s of the %s allowed", seconds(row.CycleSeconds), seconds(w.limits.CycleSeconds)), fmt.Sprintf("forecast.limits.cycle_s of %s", seconds(row.CycleSeconds)))
+	case row.CycleLimit.broken(row.CycleSeconds):
+		row.breaks(BreachCycle, fmt.Sprintf("a cycle takes %s of the %s that are allowed by %s", seconds(row.CycleSeconds), seconds(row.CycleLimit.Seconds), row.CycleLimit.cause()), row.CycleLimit.cure(row.CycleSeconds))
 	case !row.IsSlit() && c.Dark < least:
 		row.breaks(BreachDark, fmt.Sprintf("its %d dark columns are fewer than the %d that the limits ask for", c.Dark, least), "a larger code or fewer elements")
 	}
@@ -141,6 +142,7 @@ func (w *weighing) try(ctx context.Context, c forecast.Candidate) (Row, error) {
 		TotalSeconds: got.Time.TotalSeconds, CycleSeconds: got.Time.CycleSeconds,
 		Full: got.Saturation.Electrons / got.Saturation.Limit, Source: got.Saturation.Source,
 		LongestDwellSeconds: got.Saturation.LongestDwellSeconds,
+		CycleLimit:          w.limit(got.Candidate),
 	}
 	if math.IsNaN(row.Figure) {
 		row.Figure = 0
@@ -149,6 +151,15 @@ func (w *weighing) try(ctx context.Context, c forecast.Candidate) (Row, error) {
 		row.PhotonPart += m.Variance.Photons / float64(len(got.Wanted))
 	}
 	return row, nil
+}
+
+// limit is that of a candidate's cycles, whose science frames fill the budget.
+func (w *weighing) limit(c forecast.Candidate) CycleLimit {
+	return w.limitIn(c, max(0, w.budget-w.Light.Time(c).CalibrationSeconds))
+}
+
+func (w *weighing) limitIn(c forecast.Candidate, scienceSeconds float64) CycleLimit {
+	return LimitOf(w.Target, w.Profile, w.Light, c, scienceSeconds)
 }
 
 // weigh finds dwell and cycles for a code, with mirrors closed on sources.
