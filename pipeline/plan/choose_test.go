@@ -188,23 +188,23 @@ func TestImpossibleTargets(t *testing.T) {
 // and the slit scan wins where none is short enough; an explicit code is kept and warned of.
 func TestCyclesFollowFromChange(t *testing.T) {
 	target, profile := small(t)
-	target.Forecast.Limits.SkyChangePerHour = 0.2
+	target.Forecast.Limits.SkyChangePerHour = 0.7
 	_, summary := build(t, target, profile)
 	row := chosen(t, summary.Trade)
 	require.Equal(t, trade.RuleRefraction, row.CycleLimit.Rule)
 	require.Greater(t, row.Candidate.Cycles, 1)
 	require.LessOrEqual(t, row.CycleSeconds, row.CycleLimit.Seconds)
 	require.Contains(t, summary.String(), "A cycle may take ")
-	require.Contains(t, summary.String(), "the limit is that of refraction, which moves light of 499.83 nm by 0.1 elements in that time")
-	require.Contains(t, strings.Join(summary.Warnings, "\n"), "s that are allowed by the sky's lines, which change by 10 % in that time; give a shorter dwell_s")
+	require.Contains(t, summary.String(), "the limit is that of refraction, which moves light of 499.83 nm by 0.35 elements in that time")
+	require.Contains(t, strings.Join(summary.Warnings, "\n"), "s that are allowed by the sky's lines, which change by 35 % in that time; give a shorter dwell_s")
 
-	target.Forecast.Limits.FlexurePxPerHour = 0.1
+	target.Forecast.Limits.FlexurePxPerHour = 0.35
 	_, summary = build(t, target, profile)
 	row = chosen(t, summary.Trade)
 	require.Equal(t, trade.CycleLimit{Rule: trade.RuleFlexure, Seconds: 3600}, row.CycleLimit)
 	require.LessOrEqual(t, row.CycleSeconds, 3600.)
 
-	target.Forecast.Limits.FlexurePxPerHour = 10 // 36 s, the time of a few read-outs
+	target.Forecast.Limits.FlexurePxPerHour = 35 // 36 s, the time of a few read-outs
 	_, summary = build(t, target, profile)
 	require.True(t, chosen(t, summary.Trade).IsSlit())
 	require.Contains(t, summary.Trade.Recommendation, "as no code's cycle is short enough: ")
@@ -213,6 +213,7 @@ func TestCyclesFollowFromChange(t *testing.T) {
 	v, dark := 127, 47
 	target.Code.Family, target.Code.V, target.Code.Dark, target.Code.Cycles = "m-sequence", &v, &dark, 1
 	target.DwellSeconds = 60
+	target.Forecast.Limits.FlexurePxPerHour = 0.35
 	s, summary := build(t, target, profile)
 	require.Equal(t, 60., s.Target.DwellSeconds)
 	own := summary.Trade.Own()

@@ -30,7 +30,7 @@
 //
 // What changes within a cycle and is no factor per frame upsets decoding, and dark columns
 // cannot tell how. The shortest of the target's cycle_s and of the times in which refraction
-// moves what is wanted by 0.1 element, flexure the image by 0.1 px and the seeing changes by
-// 10 % bounds the cycles of codes (CycleLimit); a slit scan is bound by cycle_s alone. The
+// moves what is wanted by 0.35 elements, flexure the image by 0.35 px and the seeing changes by
+// 35 % (a tenth each in rms) bounds the cycles of codes (CycleLimit); a slit scan is bound by cycle_s alone. The
 // rate of refraction is that in the middle of the science frames.
 package trade
