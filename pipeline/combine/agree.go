@@ -25,7 +25,7 @@ func agree(a, b *member) error {
 	if ua, ub := a.card("BUNIT"), b.card("BUNIT"); ua != ub {
 		return refuse("their units are %s and %s; reduce both with the flux calibration, or both without", ua, ub)
 	}
-	if sa, sb := a.card("SKYSUB"), b.card("SKYSUB"); (sa == "") != (sb == "") {
+	if sa, sb := a.card("SKYTAKEN"), b.card("SKYTAKEN"); (sa == "") != (sb == "") {
 		return refuse("the sky was subtracted from one of them alone; reduce both with the same `sky` in the recipe")
 	}
 	ga, gb := a.schema.Grid, b.schema.Grid

@@ -158,7 +158,7 @@ func TestCombineRefuses(t *testing.T) {
 	}{
 		{func(f *fake) { f.primary.ProfileName = "other" }, `instruments "tiny" and "other"; combine runs of one instrument`},
 		{func(f *fake) { f.unit = "aW m-2 nm-1" }, "units are ct and aW m-2 nm-1; reduce both with the flux calibration"},
-		{func(f *fake) { f.cards = []fitsutil.Card{{Key: "SKYSUB", Value: true}} }, "sky was subtracted from one of them alone"},
+		{func(f *fake) { f.cards = []fitsutil.Card{{Key: "SKYTAKEN", Value: true}} }, "sky was subtracted from one of them alone"},
 		{func(f *fake) { f.schema.Grid.FirstNM += 0.25 }, "wavelengths differ .*same `grid`"},
 		{func(f *fake) { f.schema.Grid.Axis = instrument.Air }, "wavelengths differ .*WAVE and AWAV"},
 		{func(f *fake) { f.schema.Grid.Spacing = instrument.Logarithmic }, "WAVE and WAVE-LOG"},

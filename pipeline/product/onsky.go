@@ -11,12 +11,12 @@ import (
 
 // Names of what a cube holds that was brought to the sky, and its units.
 const (
-	SkyTable   = "SKYSPEC"  // the sky that was subtracted, by wavelength
-	SkyShare   = "SKYSHARE" // image: weight of each element and row in it, and what part it sees
-	FluxTable  = "FLUXCAL"  // what turned counts into flux, by wavelength
+	SkyTable   = "SKYSPEC"    // the sky that was subtracted, by wavelength
+	SkyShare   = "SKYSHARE"   // image: weight of each element and row in it, and what part it sees
+	FluxTable  = "FLUXFACTOR" // what turned counts into flux, by wavelength
 	UnitFlux   = "aW m-2 nm-1"
 	UnitFlux2  = "aW2 m-4 nm-2"
-	cardSkySub = "SKYSUB"
+	cardSkySub = "SKYTAKEN"
 )
 
 // SkyRecord is the sky that was subtracted from a cube in counts, by wavelength: electrons
@@ -49,7 +49,7 @@ type FluxRecord struct {
 	Transmission []float64
 }
 
-// Table is the table FLUXCAL; row l tells of plane l.
+// Table is the table FLUXFACTOR; row l tells of plane l.
 func (f *FluxRecord) Table() *fitsutil.Table {
 	return &fitsutil.Table{Name: FluxTable, Columns: []fitsutil.Column{
 		{Name: "FACTOR", Format: "D", Unit: UnitFlux + " ct-1", Data: f.Factor},
