@@ -2,14 +2,11 @@ package reduce
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"os"
 	"path/filepath"
-	"runtime"
 	"runtime/debug"
 	"slices"
-	"strings"
 	"sync/atomic"
 	"time"
 
@@ -20,54 +17,8 @@ import (
 	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
-	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/sequence"
-	"mirrorloom/pipeline/version"
 )
-
-// Options of Run.
-type Options struct {
-	// Night is the folder of frames, Sequence that of the sequence.
-	Night, Sequence string
-	// NightName and SequenceName are what run.json calls them; empty for their paths.
-	NightName, SequenceName string
-	// Recipe is what to do; nil for the default.
-	Recipe *Recipe
-	// Cube and Elements ask for cube.fits and elements.fits.
-	Cube, Elements bool
-	// MemoryBytes bounds the memory of the process; 0 for DefaultMemoryBytes.
-	MemoryBytes int64
-	// Workers compute at the same time; 0 for one a processor.
-	Workers int
-	// Cycles are the numbers, from 1, of the cycles of science steps to use; none for all.
-	Cycles []int
-	// AsLabelled keeps the pairing of the frames' labels, whatever the audit finds.
-	AsLabelled bool
-	// Out is a folder that exists and is empty. A folder in which Run failed is
-	// to be removed.
-	Out string
-	// Log receives what a user may want to know; nil for nothing.
-	Log *zap.Logger
-	// Progress, which may be nil, is called as a stage gets on, by one
-	// goroutine at a time.
-	Progress func(stage string, done, total int)
-}
-
-// DefaultMemoryBytes suits a laptop that does other things as well.
-const DefaultMemoryBytes = 1 << 30
-
-// Result says what was written.
-type Result struct {
-	Run    *product.Run
-	Ledger product.Ledger
-	Schema product.Schema
-	// Degraded says in plain sentences why the product is not whole; empty if
-	// it is (exit code 3 or 0).
-	Degraded []string
-}
-
-// ExitDegraded is run.json's exit for a product that is not whole.
-const ExitDegraded = product.ExitDegraded
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
 // ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
@@ -108,38 +59,6 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		r.log.Info("stage done", zap.String("stage", step.name), zap.Float64("seconds", seconds), zap.Int64("bytes", bytes))
 	}
 	return r.result(ctx)
-}
-
-func (o *Options) setDefaults() error {
-	if !o.Cube && !o.Elements {
-		return errors.New("no product asked for; ask for cube, elements or both with --products")
-	}
-	if o.Workers <= 0 {
-		o.Workers = runtime.GOMAXPROCS(0)
-	}
-	if o.MemoryBytes == 0 {
-		o.MemoryBytes = DefaultMemoryBytes
-	}
-	if o.Log == nil {
-		o.Log = zap.NewNop()
-	}
-	if o.Progress == nil {
-		o.Progress = func(string, int, int) {}
-	}
-	if o.NightName == "" {
-		o.NightName = o.Night
-	}
-	if o.SequenceName == "" {
-		o.SequenceName = o.Sequence
-	}
-	if o.Recipe == nil {
-		recipe, err := LoadRecipe(DefaultRecipe)
-		if err != nil {
-			return err
-		}
-		o.Recipe = recipe
-	}
-	return nil
 }
 
 // reduction is a run in the making.
@@ -410,53 +329,4 @@ func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim in
 		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
 		struck: make([][]struckSample, r.opts.Workers),
 	}
-}
-
-// result writes run.json and the report, and sums up.
-func (r *reduction) result(ctx context.Context) (*Result, error) {
-	r.quality.BadPixels = r.badPixels
-	if a := r.optics.arcs; a != nil {
-		r.quality.WavelengthRMSPx = &a.RMSPx
-	}
-	r.quality.Lost = len(r.roles.missing)
-	r.through.quality(&r.quality)
-	run := &product.Run{
-		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
-		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
-		FieldShift: r.shift.Section(),
-		Warnings:   append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
-	}
-	run.Stars = r.stars.report
-	if r.night.Audit != nil {
-		run.Audit = r.night.Audit
-	}
-	if len(r.roles.degraded) > 0 {
-		run.Exit = ExitDegraded
-	}
-	if err := fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.RunFile), run.Write); err != nil {
-		return nil, err
-	}
-	err := report.Write(ctx, r.opts.Out, report.Input{
-		Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
-		Throughput: r.through.reportCurves(),
-	})
-	if err != nil {
-		return nil, err
-	}
-	return &Result{Run: run, Ledger: r.night.Ledger, Schema: r.schema, Degraded: r.roles.degraded}, nil
-}
-
-// warnings are the frames that could not be used, and what roles noticed.
-func (r *reduction) warnings() []string {
-	all := r.roles.warnings
-	for _, v := range []product.Verdict{product.Unreadable, product.WrongMask, product.WrongExposure, product.WrongSize, product.Duplicate, product.Extra} {
-		if n := r.night.Ledger.Count(v); n > 0 {
-			frames, was := "frames are", "were"
-			if n == 1 {
-				frames, was = "frame is", "was"
-			}
-			all = append(all, fmt.Sprintf("%d %s %s and %s not used: see the ledger", n, frames, strings.ReplaceAll(string(v), "-", " "), was))
-		}
-	}
-	return all
 }
