@@ -3,6 +3,7 @@ package physics
 import (
 	"encoding/json"
 	"math"
+	"os"
 	"sync"
 	"testing"
 
@@ -48,6 +49,9 @@ func mirrorAnswersOf(t *testing.T) *mirrorAnswers {
 		require.NoError(t, json.Unmarshal([]byte(outside.Python(t, "calib_mirrors.py")), &a.mirrorAnswers))
 	})
 	if len(a.Neighbour) == 0 {
+		if os.Getenv("CI") == "true" {
+			t.Fatal("the script did not run")
+		}
 		t.Skip("the script did not run")
 	}
 	return &a.mirrorAnswers

@@ -69,10 +69,7 @@ func runCombine(ctx context.Context, a *app, runs []string, o combineOptions) er
 	if err := a.answer(result.Run, func(w io.Writer) error { return printCombination(w, o.output.dir, runs, result) }); err != nil {
 		return err
 	}
-	if len(result.Degraded) > 0 {
-		return degradedError{"written, but not whole: " + strings.Join(result.Degraded, "; ")}
-	}
-	return nil
+	return unlessWhole(result.Degraded)
 }
 
 func printCombination(w io.Writer, dir string, runs []string, r *combine.Result) error {

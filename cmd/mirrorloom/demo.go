@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"io"
-	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -39,8 +38,8 @@ func runDemo(ctx context.Context, a *app, o outputOptions) error {
 		_, err := io.WriteString(w, result.Words(o.dir))
 		return err
 	})
-	if err == nil && len(result.Degraded) > 0 {
-		return degradedError{"written, but not whole: " + strings.Join(result.Degraded, "; ")}
+	if err != nil {
+		return err
 	}
-	return err
+	return unlessWhole(result.Degraded)
 }

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"strings"
 )
 
 // Exit codes: what a script may rely on.
@@ -24,6 +25,14 @@ func (e usageError) Unwrap() error { return e.err }
 
 // degradedError says why a product that was written is not whole.
 type degradedError struct{ why string }
+
+// unlessWhole is a degradedError that gives the reasons, nil where there is none.
+func unlessWhole(reasons []string) error {
+	if len(reasons) == 0 {
+		return nil
+	}
+	return degradedError{"written, but not whole: " + strings.Join(reasons, "; ")}
+}
 
 func (e degradedError) Error() string { return e.why }
 

@@ -94,10 +94,7 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	if err := a.answer(result.Run, func(w io.Writer) error { return printReduction(w, o.output.dir, opts, result) }); err != nil {
 		return err
 	}
-	if len(result.Degraded) > 0 {
-		return degradedError{"written, but not whole: " + strings.Join(result.Degraded, "; ")}
-	}
-	return nil
+	return unlessWhole(result.Degraded)
 }
 
 func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Result) error {

@@ -87,5 +87,8 @@ func (n *Night) Faults(name string) (*rehearse.FaultsTruth, error) {
 	if err := json.Unmarshal(data, truth); err != nil {
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
+	if len(truth.Frames) != len(n.Seq.Steps) {
+		return nil, fmt.Errorf("%s: %d frames, not the sequence's %d", path, len(truth.Frames), len(n.Seq.Steps))
+	}
 	return truth, nil
 }

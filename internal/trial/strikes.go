@@ -42,7 +42,7 @@ func (s *StrikeCount) Add(o StrikeCount) {
 
 // TrueStrikes are those that rehearse drew for the night named name.
 func (n *Night) TrueStrikes(name string) ([]Strike, error) {
-	truth, err := n.faults(name)
+	truth, err := n.Faults(name)
 	if err != nil {
 		return nil, err
 	}

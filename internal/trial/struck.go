@@ -2,9 +2,6 @@ package trial
 
 import (
 	"context"
-	"encoding/json"
-	"fmt"
-	"os"
 	"path/filepath"
 
 	"mirrorloom/calib"
@@ -42,7 +39,7 @@ func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perTho
 	if err := n.Rehearse(ctx, name, opts); err != nil {
 		return nil, err
 	}
-	truth, err := n.faults(name)
+	truth, err := n.Faults(name)
 	if err != nil {
 		return nil, err
 	}
@@ -74,23 +71,6 @@ func (n *Night) MakeStruck(ctx context.Context, name string, seed uint64, perTho
 		}
 	}
 	return s, nil
-}
-
-// faults reads what went wrong in the night named name.
-func (n *Night) faults(name string) (*rehearse.FaultsTruth, error) {
-	path := filepath.Join(n.Frames(name), rehearse.TruthFolder, rehearse.FaultsFile)
-	text, err := os.ReadFile(path)
-	if err != nil {
-		return nil, err
-	}
-	var truth rehearse.FaultsTruth
-	if err := json.Unmarshal(text, &truth); err != nil {
-		return nil, fmt.Errorf("%s: %w", path, err)
-	}
-	if len(truth.Frames) != len(n.Seq.Steps) {
-		return nil, fmt.Errorf("%s: %d frames, not the sequence's %d", path, len(truth.Frames), len(n.Seq.Steps))
-	}
-	return &truth, nil
 }
 
 // add reads a science frame with and without rays.

@@ -2,7 +2,6 @@ package trial
 
 import (
 	"context"
-	"encoding/json"
 	"fmt"
 	"math"
 	"os"
@@ -13,16 +12,6 @@ import (
 	"mirrorloom/pipeline/rehearse"
 	"mirrorloom/pipeline/sequence"
 )
-
-// Truth is the faults of the night named name.
-func (n *Night) Truth(name string) (*rehearse.FaultsTruth, error) {
-	text, err := os.ReadFile(filepath.Join(n.Frames(name), rehearse.TruthFolder, "faults.json"))
-	if err != nil {
-		return nil, err
-	}
-	t := new(rehearse.FaultsTruth)
-	return t, json.Unmarshal(text, t)
-}
 
 // ThroughputErrors compares the throughput in a night's ledger with the truth.
 type ThroughputErrors struct {
@@ -38,7 +27,7 @@ func (n *Night) Throughput(name string) (*ThroughputErrors, error) {
 	if err != nil {
 		return nil, err
 	}
-	truth, err := n.Truth(name)
+	truth, err := n.Faults(name)
 	if err != nil {
 		return nil, err
 	}

@@ -78,7 +78,7 @@ func TestSentinelNight(t *testing.T) {
 // told of.
 func TestMonitorNight(t *testing.T) {
 	night := oneStarNight(t, drifts()...)
-	truth, err := night.Truth("a")
+	truth, err := night.Faults("a")
 	require.NoError(t, err)
 	r := rand.New(rand.NewPCG(7, 8))
 	write := func(sigma, wrong float64) string {
@@ -135,7 +135,7 @@ func TestOffsetsOfANight(t *testing.T) {
 		}
 		ledger, err := product.ReadLedger(filepath.Join(night.Run("a"), product.LedgerFile))
 		require.NoError(t, err)
-		truth, err := night.Truth("a")
+		truth, err := night.Faults("a")
 		require.NoError(t, err)
 		var own, off trial.Moments
 		for _, e := range ledger {
@@ -162,7 +162,7 @@ func TestLeakFactorOfANight(t *testing.T) {
 	require.NoError(t, night.Rehearse(context.Background(), "a", rehearse.Options{Seed: 6, NoTruth: true, Faults: append(drifts(), rehearse.Fault{Name: rehearse.Leak, Size: 0.05})}))
 	m := reduceAuto(t, night, "auto").Run.Throughput.Leak
 	require.NotNil(t, m, "the error is below a tenth")
-	truth, err := night.Truth("a")
+	truth, err := night.Faults("a")
 	require.NoError(t, err)
 	var science, off trial.Moments
 	for _, frame := range truth.Frames {
