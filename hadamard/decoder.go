@@ -18,6 +18,7 @@ type row [lanes]float32
 // work at a time have each made a call.
 type Decoder struct {
 	code   *Code
+	level  level
 	engine engine
 	tails  sync.Pool // *tail
 }
@@ -39,15 +40,21 @@ type tail struct{ dst, src []float32 }
 // NewDecoder makes the decoder of a code. An m-sequence decodes by a fast
 // Walsh-Hadamard transform, other cyclic codes by sums over subsets of eight
 // rows, the slit scan by a copy.
-func NewDecoder(c *Code) *Decoder {
-	d := &Decoder{code: c}
+//
+// The kernels use what instructions the processor has (CPULevel); results are
+// the same bits with any.
+func NewDecoder(c *Code) *Decoder { return newDecoder(c, bestLevel()) }
+
+// newDecoder makes a decoder with the kernels of a level, one of levels().
+func newDecoder(c *Code, l level) *Decoder {
+	d := &Decoder{code: c, level: l}
 	switch c.family {
 	case SlitScan:
 		d.engine = copier{v: c.v}
 	case MSequence:
-		d.engine = newTransform(c)
+		d.engine = newTransform(c, l)
 	default:
-		d.engine = newDense(c)
+		d.engine = newDense(c, l)
 	}
 	d.tails.New = func() any {
 		return &tail{dst: make([]float32, c.v*lanes), src: make([]float32, c.v*lanes)}

@@ -35,7 +35,7 @@ func TestPassesMeetStages(t *testing.T) {
 	for degree := minDegree; degree <= maxDegree; degree++ {
 		c := mustCode(t, MSequence, 1<<degree-1)
 		rng := rand.New(rand.NewPCG(uint64(degree), 3))
-		tr := newTransform(c)
+		tr := newTransform(c, pureGo)
 		s := tr.scratch.New().(*transformScratch)
 		for i := range s.rows {
 			for p := range lanes {
@@ -181,7 +181,7 @@ func TestMeanMatters(t *testing.T) {
 		for i := range y {
 			src[i*lanes] = y[i]
 		}
-		tr := newTransform(c)
+		tr := newTransform(c, pureGo)
 		tr.decode(with, src, lanes)
 		s := tr.scratch.New().(*transformScratch)
 		tr.load(s, &tr.steps, src, lanes)
