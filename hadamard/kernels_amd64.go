@@ -23,9 +23,9 @@ func bestLevel() level {
 func passesOf(l level) passes {
 	switch l {
 	case avx2:
-		return transformAssembly{gatherAVX2, first8AVX2, middle8AVX2, middle4AVX2, last8AVX2, last4AVX2}.passes()
+		return transformAssembly{gatherAVX2, residueAVX2, first8AVX2, middle8AVX2, middle4AVX2, last8AVX2, last4AVX2}.passes()
 	case avx512:
-		return transformAssembly{gatherAVX512, first8AVX512, middle8AVX512, middle4AVX512, last8AVX512, last4AVX512}.passes()
+		return transformAssembly{gatherAVX512, residueAVX512, first8AVX512, middle8AVX512, middle4AVX512, last8AVX512, last4AVX512}.passes()
 	}
 	return portablePasses
 }
@@ -43,6 +43,7 @@ func sumsOf(l level) sums {
 // transformAssembly are the functions of transform_*_amd64.s.
 type transformAssembly struct {
 	gather           func(rows, sum, src *float32, index *int32, count, stride int)
+	residue          func(sum *float64, rows, mean *float32, count int)
 	first8           func(rows, mean *float32, blocks int)
 	middle8, middle4 func(rows *float32, blocks, h int)
 	last8, last4     func(rows, drop, base, dst *float32, to *int32, h, stride int, scale float32)
@@ -55,6 +56,9 @@ func (a transformAssembly) passes() passes {
 			mustHold(len(src), len(index), stride, lanes)
 			a.gather(&rows[0][0], &sum[0], &src[0], &index[0], len(index), stride)
 		},
+		residue: func(sum *[lanes]float64, rows []row, mean *row) {
+			a.residue(&sum[0], &rows[0][0], &mean[0], len(rows))
+		},
 		first8:  func(rows []row, mean *row) { a.first8(&rows[0][0], &mean[0], len(rows)/8) },
 		middle8: func(rows []row, h int) { a.middle8(&rows[0][0], len(rows)/(8*h), h) },
 		middle4: func(rows []row, h int) { a.middle4(&rows[0][0], len(rows)/(4*h), h) },
@@ -65,7 +69,7 @@ func (a transformAssembly) passes() passes {
 
 func lastPass(last func(rows, drop, base, dst *float32, to *int32, h, stride int, scale float32), radix int) func(*transformScratch, []int32, []float32, int, float32) {
 	return func(s *transformScratch, to []int32, dst []float32, stride int, scale float32) {
-		mustHold(len(dst), len(to)-1, stride, lanes)
+		mustHold(len(dst), len(s.rows)-1, stride, lanes)
 		last(&s.rows[0][0], &s.drop[0], &s.base[0], &dst[0], &to[0], len(s.rows)/radix, stride, scale)
 	}
 }

@@ -9,6 +9,9 @@ type passes struct {
 	// sum, taken in groups of four: ((r0+r1)+(r2+r3)) added to the sum so far,
 	// what is left of the last group one by one.
 	gather func(rows []row, sum *row, src []float32, index []int32, stride int)
+	// residue sets sum to the sum over the rows, in their order, of row less mean,
+	// the difference in float32 and the sum in float64.
+	residue func(sum *[lanes]float64, rows []row, mean *row)
 	// first8 subtracts mean from every row and does the stages 1, 2, 4.
 	first8 func(rows []row, mean *row)
 	// middle8 does the stages h, 2h, 4h; middle4 the stages h, 2h.
@@ -26,6 +29,7 @@ type passes struct {
 // arrays of a constant size: no bounds are checked within.
 var portablePasses = passes{
 	gather:  gather,
+	residue: residue,
 	first8:  first8,
 	middle8: middle8,
 	middle4: middle4,
@@ -55,6 +59,16 @@ func gather(rows []row, sum *row, src []float32, index []int32, stride int) {
 		rows[index[i]] = *r
 		for p := range sum {
 			sum[p] += r[p]
+		}
+	}
+}
+
+func residue(sum *[lanes]float64, rows []row, mean *row) {
+	*sum = [lanes]float64{}
+	for i := range rows {
+		r := &rows[i]
+		for p := range sum {
+			sum[p] += float64(r[p] - mean[p])
 		}
 	}
 }

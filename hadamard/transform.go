@@ -28,7 +28,7 @@ type places struct {
 	index []int32 // index[row] is the place, 1..v
 	row   []int32 // row[place] is the row; row[0] is -1
 	// last is row as the last pass takes the places: last[radix*i+t] is
-	// row[i+t*h].
+	// row[i+t*h]. It ends with aheadPlaces that are looked at but not used.
 	last []int32
 }
 
@@ -41,10 +41,11 @@ type pass struct {
 // transformScratch holds the v+1 rows in work, and one row for what has no
 // place outside.
 type transformScratch struct {
-	rows []row
-	drop row
-	mean row
-	base row
+	rows    []row
+	drop    row
+	mean    row
+	base    row
+	residue [lanes]float64
 }
 
 func newTransform(c *Code, l level) *transform {
@@ -73,6 +74,9 @@ func placesOf(index []int) places {
 	return p
 }
 
+// aheadPlaces is how far a last pass looks ahead for the rows that it will write.
+const aheadPlaces = 16
+
 // orderOf gives the rows in the order in which a last pass takes their places.
 func (p places) orderOf(last pass) []int32 {
 	var order []int32
@@ -81,7 +85,7 @@ func (p places) orderOf(last pass) []int32 {
 			order = append(order, p.row[i+t*last.h])
 		}
 	}
-	return order
+	return append(order, make([]int32, aheadPlaces)...)
 }
 
 // schedule splits the stages of a transform of 2^degree rows into passes. The
@@ -128,11 +132,8 @@ func (t *transform) predict(dst, f []float32, stride int) {
 	s := t.scratch.Get().(*transformScratch)
 	t.load(s, &t.columns, f, stride)
 	k := float64(t.v+1) / 2
-	for p := range s.base {
-		sum := 0.0
-		for j := 1; j < len(s.rows); j++ {
-			sum += float64(s.rows[j][p] - s.mean[p])
-		}
+	t.passes.residue(&s.residue, s.rows[1:], &s.mean)
+	for p, sum := range s.residue {
 		s.base[p] = float32(float64(sum/2) + float64(k*float64(s.mean[p])))
 	}
 	t.run(s, &t.steps, dst, stride, -0.5)

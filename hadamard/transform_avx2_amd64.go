@@ -10,6 +10,12 @@ package hadamard
 //go:noescape
 func gatherAVX2(rows *float32, sum *float32, src *float32, index *int32, count int, stride int)
 
+// residueAVX2 sets sum to the sum over the rows of row less mean, the difference in
+// float32, the sum in float64.
+//
+//go:noescape
+func residueAVX2(sum *float64, rows *float32, mean *float32, count int)
+
 // first8AVX2 subtracts mean from every row and does the stages 1, 2, 4 of so
 // many blocks of eight rows.
 //

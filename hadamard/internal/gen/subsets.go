@@ -141,15 +141,13 @@ func (g *generator) combine() {
 			g.VMULPD(m, factor, r)
 			g.VADDPD(r, base[part], r)
 			to := operand.Mem{Base: dst, Disp: part * g.width / 2}
+			narrow := g.halfVector()
 			if g.width == rowBytes {
-				narrow := g.YMM()
 				g.VCVTPD2PS(r, narrow)
-				g.VMOVUPS(narrow, to)
 			} else {
-				narrow := g.XMM()
 				g.VCVTPD2PSY(r, narrow)
-				g.VMOVUPS(narrow, to)
 			}
+			g.VMOVUPS(narrow, to)
 		}
 		g.ADDQ(operand.U32(rowBytes), sums)
 		g.ADDQ(stride, dst)

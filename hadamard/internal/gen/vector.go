@@ -40,6 +40,14 @@ func (g *generator) vector() reg.VecVirtual {
 	return g.YMM()
 }
 
+// halfVector holds as many float32 as a vector holds float64.
+func (g *generator) halfVector() reg.VecVirtual {
+	if g.width == rowBytes {
+		return g.YMM()
+	}
+	return g.XMM()
+}
+
 // row allocates the registers of a row.
 func (g *generator) row() []reg.VecVirtual {
 	r := make([]reg.VecVirtual, g.parts())
