@@ -142,9 +142,7 @@ func middle(x []float64) float64 {
 }
 
 func (d *decoding) write(b *strings.Builder) {
-	fmt.Fprintf(b, `## Decoding
-
-One core. Bytes are those in and out. A block has %d pixels, as in `+"`reduce`"+`; the streamed one has 64 Ki, 268 MB in and out.
+	fmt.Fprintf(b, `One core. Bytes are those in and out. A block has %d pixels, as in `+"`reduce`"+`; the streamed one has 64 Ki, 268 MB in and out.
 Each figure is a median of %d runs, in each of which the kernel, a plain copy of the block and the matrix product of numpy
 run in turn; ratios are of the same run (range over the runs). The product is OpenBLAS's in float32, on one thread, of up
 to 16384 pixels, by its fastest kernels here, %s. Those tried, at v = 511: %s.

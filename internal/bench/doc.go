@@ -4,6 +4,5 @@
 // Machines are noisy and differ, so that figures are ratios of what ran in turn
 // within one run of bench: decoding beside a plain copy and a matrix product,
 // other kernels beside a plain copy, and whole reductions beside numpy scripts
-// that make the same products (testdata/bench). Both sides
-// end with their product synced to the disk.
+// that make the same products (testdata/bench), both synced to the disk.
 package main

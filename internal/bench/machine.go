@@ -32,7 +32,7 @@ func thisMachine(ctx context.Context) (machine, error) {
 		return machine{}, fmt.Errorf("the scripts need Debian's python3-numpy, -scipy, -astropy and -yaml (make packages installs them): %w", err)
 	}
 	return machine{
-		model: procField("/proc/cpuinfo", "model name"),
+		model:  procField("/proc/cpuinfo", "model name"),
 		memory: procField("/proc/meminfo", "MemTotal"), libraries: strings.TrimSpace(string(out)),
 	}, nil
 }
