@@ -54,9 +54,9 @@ func ForecastPlans() []ForecastPlan {
 	return plans
 }
 
-// field is the field of a plan, with a forecast of the sky that it rehearses: lines of the
+// Field is the field of a plan, with a forecast of the sky that it rehearses: lines of the
 // nebula at 12 places of its rim, bands at four of the stars.
-func (p *ForecastPlan) field() (*Field, error) {
+func (p *ForecastPlan) Field() (*Field, error) {
 	f, err := p.Make()
 	if err != nil {
 		return nil, err
@@ -158,7 +158,7 @@ type measured struct {
 // holds their voxels and sums against the forecast. The cube's light is known to be the
 // truth's but for noise, which the noise is measured about.
 func (p *ForecastPlan) MeasureForecast(ctx context.Context, dir string, nights int, first uint64) (lines, bands *Forecasted, err error) {
-	f, err := p.field()
+	f, err := p.Field()
 	if err != nil {
 		return nil, nil, err
 	}

@@ -37,7 +37,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 			r.overlap[x], r.leak[x] = overlap, 0
 		}
 	}
-	return newNoiseModel(l, f, c, 0)
+	return newNoiseModel(l, f, c, taken{cycles: float64(c.Cycles)})
 }
 
 // The CCD equation's worked value: N* = 10000 in 10 pixels with sky 50, dark 2 and read
