@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"slices"
 )
 
 // cellLight is the light of a cell by detector column, electrons in one science exposure.
@@ -65,13 +66,38 @@ func (l *Light) Beside(ctx context.Context, c Candidate, wanted int) ([]Voxel, e
 	if !w.line {
 		return list, l.lights(ctx, field, c, w, l.ring(w, c), w.fromNM, w.toNM, each)
 	}
+	cells := l.cells(w, c)
+	var most peak
+	if err := l.lights(ctx, field, c, w, cells, w.fromNM, w.toNM, most.take); err != nil {
+		return nil, err
+	}
 	middle, half := (w.fromNM+w.toNM)/2, (w.toNM-w.fromNM)/2
 	for _, side := range [][2]float64{{middle - besideTo*half, middle - besideFrom*half}, {middle + besideFrom*half, middle + besideTo*half}} {
-		if err := l.lights(ctx, field, c, w, l.cells(w, c), side[0], side[1], each); err != nil {
+		if err := l.lights(ctx, field, c, w, cells, side[0], side[1], each); err != nil {
 			return nil, err
 		}
 	}
-	return list, nil
+	return most.even(list), nil
+}
+
+// peak is the most light of a line and of the sky in a voxel of a line's window.
+type peak struct{ wanted, sky float64 }
+
+func (p *peak) take(v Voxel) { p.wanted, p.sky = max(p.wanted, v.Wanted), max(p.sky, v.Sky) }
+
+// Of the voxels beside a line those are left out that hold more than lineLeft of its peak in
+// lines of its source, and those whose sky is above skyEven times the window's: lines of the
+// sky may be off by another factor than its continuum.
+const (
+	lineLeft = 0.05
+	skyEven  = 1.3
+)
+
+// even is the voxels without lines.
+func (p *peak) even(list []Voxel) []Voxel {
+	return slices.DeleteFunc(list, func(v Voxel) bool {
+		return v.Wanted > lineLeft*p.wanted || v.Sky > skyEven*p.sky
+	})
 }
 
 // ring is the cells about a measurement's circle, two elements and rows wide at least.

@@ -53,7 +53,7 @@ func TestCCDEquation(t *testing.T) {
 	}
 	require.InEpsilon(t, 96.358970, star/math.Sqrt(variance), 1e-7)
 	// Four cycles, each as long: SIGNAL is their mean.
-	n.candidate.Cycles = 4
+	n.cycles = 4
 	p := n.at(300, 90, sky+star/pixels)
 	require.InEpsilon(t, variance/pixels/4, p.variance(), 1e-9)
 }

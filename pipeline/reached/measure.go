@@ -208,6 +208,9 @@ func (m *measurement) reached(field *product.Measured) product.Reached {
 		Name: m.plan.Name, FromNM: m.plan.FromNM, ToNM: m.plan.ToNM, Plan: expected(m.plan.Signal, m.plan.Sigma),
 		Taken: expected(m.in.wanted, m.sigma), Good: m.good, Unwanted: product.UnwantedNone, ErrorScale: m.scale,
 	}
+	if m.outside {
+		w.Why = "its wavelengths are not all in this cube"
+	}
 	variance := m.pixels.Variance()
 	if !(variance > 0) || !(w.Taken.Sigma > 0) {
 		return w

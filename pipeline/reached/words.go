@@ -9,13 +9,17 @@ import (
 	"mirrorloom/pipeline/product"
 )
 
-// What is worth a word: light that is off by more than lightWorth and so many of its errors,
-// noise by more than noiseWorth, other factors by more than factorWorth.
+// What is worth a word: light that is off by more than lightWorth and so many of its errors;
+// noise by more than what a forecast is good to; what all measurements share by more than
+// shareWorth; frames by more than factorWorth, causes of noise by more than causeWorth, parts
+// of it and of the voxels by more than those.
 const (
 	lightWorth  = 0.02
 	lightSigmas = 3
-	noiseWorth  = 0.03
+	noiseWorth  = 0.05
+	shareWorth  = 0.03
 	factorWorth = 0.005
+	causeWorth  = 0.02
 	partWorth   = 0.05
 	goodWorth   = 0.02
 )
@@ -24,8 +28,9 @@ const (
 func (n *Night) explain(f *product.Forecast) {
 	frames := n.framesWords(f)
 	for i := range f.Wanted {
-		w := &f.Wanted[i]
-		w.Why = why(f, w, frames)
+		if w := &f.Wanted[i]; w.Why == "" {
+			w.Why = why(f, w, frames)
+		}
 	}
 	if frames != "" {
 		f.Notes = append(f.Notes, sentence(fmt.Sprintf("%s; their noise is that of %.3g of %d cycles", frames, f.CyclesReached, f.Cycles)))
@@ -36,10 +41,10 @@ func (n *Night) explain(f *product.Forecast) {
 	if p := f.Passed; p != nil {
 		f.Notes = append(f.Notes, fmt.Sprintf("The reference star says that telescope and instrument let %.2f pass of what the profile says.", *p))
 	}
-	if s := f.Sky; s != nil && math.Abs(s.Value-1) > max(noiseWorth, lightSigmas*s.Error) {
+	if s := f.Sky; s != nil && math.Abs(s.Value-1) > max(shareWorth, lightSigmas*s.Error) {
 		f.Notes = append(f.Notes, fmt.Sprintf("The sky is %.2f times as bright as forecast.", s.Value))
 	}
-	if r := f.ReadNoise; r != nil && math.Abs(*r-1) > noiseWorth {
+	if r := f.ReadNoise; r != nil && math.Abs(*r-1) > shareWorth {
 		f.Notes = append(f.Notes, fmt.Sprintf("The read noise is %.2f times that of the profile.", *r))
 	}
 }
@@ -98,9 +103,18 @@ func why(f *product.Forecast, w *product.Reached, frames string) string {
 		return "as forecast, within the errors"
 	}
 	if light == "" {
-		parts = append(parts, fmt.Sprintf("its light is as forecast (%.2f ± %.2f)", *w.LightRatio, *w.LightRatioError))
+		parts = append(parts, fmt.Sprintf("its light is as forecast (%s)", figure(*w.LightRatio, *w.LightRatioError)))
 	}
 	return strings.Join(parts, "; ")
+}
+
+// figure is a value with its error, to a figure of the error that is not 0.
+func figure(value, err float64) string {
+	digits := 2
+	if err < 0.01 {
+		digits = 3
+	}
+	return fmt.Sprintf("%.*f ± %.*f", digits, value, digits, err)
 }
 
 func lightWords(w *product.Reached) string {
@@ -112,7 +126,7 @@ func lightWords(w *product.Reached) string {
 	if ratio > 1 {
 		what = "brighter than forecast, or more of its light came through"
 	}
-	return fmt.Sprintf("its light is %.2f ± %.2f of the forecast's: the source is %s", ratio, err, what)
+	return fmt.Sprintf("its light is %s of the forecast's: the source is %s", figure(ratio, err), what)
 }
 
 // noiseWords say how the noise differs, and what is known to make it so.
@@ -123,14 +137,14 @@ func noiseWords(f *product.Forecast, w *product.Reached) string {
 	}
 	var causes []string
 	cause := func(of float64, words string) {
-		if (of-1)*(ratio-1) > 0 && math.Abs(of-1) > factorWorth {
+		if (of-1)*(ratio-1) > 0 && math.Abs(of-1) > causeWorth {
 			causes = append(causes, fmt.Sprintf(words, of))
 		}
 	}
-	if f.Sky != nil && math.Abs(f.Sky.Value-1) > max(noiseWorth, lightSigmas*f.Sky.Error) {
+	if f.Sky != nil && math.Abs(f.Sky.Value-1) > max(shareWorth, lightSigmas*f.Sky.Error) {
 		cause(f.Sky.Value, "the sky is %.2f times as bright as forecast")
 	}
-	if f.ReadNoise != nil && math.Abs(*f.ReadNoise-1) > noiseWorth {
+	if f.ReadNoise != nil && math.Abs(*f.ReadNoise-1) > shareWorth {
 		cause(*f.ReadNoise, "the read noise is %.2f times the profile's")
 	}
 	if w.ErrorScale > 0 {
@@ -170,7 +184,7 @@ func alike(all []product.Reached) string {
 	sorted := slices.Clone(ratios)
 	slices.Sort(sorted)
 	middle := (sorted[(len(sorted)-1)/2] + sorted[len(sorted)/2]) / 2
-	if math.Abs(middle-1) < noiseWorth {
+	if math.Abs(middle-1) < shareWorth {
 		return ""
 	}
 	for i, r := range ratios {
