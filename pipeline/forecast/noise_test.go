@@ -28,7 +28,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 		g.Calibration, g.AllOffEvery = frames, allOffEvery
 	})
 	c.DwellSeconds, c.ElementMirrors = 1, 1
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	require.NoError(t, err)
 	f := l.field(c, sight{})
 	for q := -20; q < l.profile.Detector.Rows+20; q++ {

@@ -159,9 +159,10 @@ func (f *deviceLight) dispersedAt(q int) []float64 {
 	return xi
 }
 
-// across is how far mirrors of u send their light from where those of the middle do, px.
+// across is how far mirrors of u send their light from where those of the device's middle
+// do, px.
 func (f *deviceLight) across(i int) float64 {
-	return f.light.profile.Spectrograph.UStepPx * (float64(f.uFirst+i) - f.middle)
+	return f.light.profile.Spectrograph.UStepPx * (float64(f.uFirst+i) - f.light.profile.UCenter())
 }
 
 // evenWithin is how alike shares of neighbours are that are summed at once.

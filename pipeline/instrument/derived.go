@@ -20,11 +20,18 @@ func (p *Profile) WRange() (wMin, wMax int) {
 	return 0, p.DMD.Rows - 1
 }
 
-// UCenter is the middle of the device's u: strips are centred there as well as
-// their widths allow.
+// UCenter is the middle of the device's u: its light falls on column x_c, and strips are
+// centred there as well as their widths allow, unless a field lies beside it.
 func (p *Profile) UCenter() float64 {
 	first, last := p.URange()
 	return float64(first+last) / 2
+}
+
+// FieldFirstU is the first u of a field of so many u whose middle lies offset u from the
+// device's, by half a u more where its width is odd and the device's even or the other way
+// round. It may lie off the device.
+func (p *Profile) FieldFirstU(width, offset int) int {
+	return offset + int(math.Ceil(p.UCenter()-float64(width-1)/2))
 }
 
 // WCenter is the middle of the device's w, r_c of the geometry: its light falls

@@ -18,7 +18,7 @@ type Geometry struct {
 	// UStepPx and WStepPx are u_step and w_step, px.
 	UStepPx float64 `yaml:"u_step_px"`
 	WStepPx float64 `yaml:"w_step_px"`
-	// UMiddle is u_mid, WMiddle is r_c, in mirrors.
+	// UMiddle is u_mid, WMiddle is r_c, in mirrors: the device's middle.
 	UMiddle float64 `yaml:"u_middle"`
 	WMiddle float64 `yaml:"w_middle"`
 	// XCenterPx and YCenterPx are x_c and y_c, in active pixels from 0.
@@ -34,13 +34,14 @@ type Geometry struct {
 	LSFFWHMPx float64 `yaml:"lsf_fwhm_px"`
 }
 
-// nominalGeometry is the profile's geometry for a sequence's strips.
+// nominalGeometry is the profile's geometry: light of the device's middle lands on x_c
+// and y_c, wherever the strips lie.
 func nominalGeometry(seq *sequence.Sequence) Geometry {
 	s := seq.Profile.Spectrograph
 	return Geometry{
 		CenterNM: s.CenterNM, DispersionPxPerNM: s.DispersionPxPerNM,
 		UStepPx: s.UStepPx, WStepPx: s.WStepPx,
-		UMiddle: seq.FieldCenterU(), WMiddle: seq.Profile.WCenter(),
+		UMiddle: seq.Profile.UCenter(), WMiddle: seq.Profile.WCenter(),
 		XCenterPx: s.XCenterPx, YCenterPx: s.YCenterPx,
 		SlitTilt: s.SlitTilt, SmilePerPx: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurvePerPx: s.TraceCurvePerPx,
