@@ -50,8 +50,10 @@ func (l *Light) resolved(c Candidate) (Candidate, error) {
 	switch width := c.N * c.ElementMirrors; {
 	case c.N < 1 || c.ElementMirrors < 1 || c.Dark < 0 || c.N+c.Dark != c.V:
 		return c, fmt.Errorf("%d elements of %d mirrors and %d dark columns are no use of a code of %d columns; make elements and dark columns add up", c.N, c.ElementMirrors, c.Dark, c.V)
+	case width > uLast-uFirst+1:
+		return c, fmt.Errorf("%d elements of %d mirrors span %d where the device has %d; give fewer or narrower ones", c.N, c.ElementMirrors, width, uLast-uFirst+1)
 	case first < uFirst || last > uLast:
-		return c, fmt.Errorf("%d elements of %d mirrors span %d, u %d to %d, where the device has %d to %d; give fewer or narrower ones", c.N, c.ElementMirrors, width, first, last, uFirst, uLast)
+		return c, fmt.Errorf("%d elements of %d mirrors span u from %d to %d where the device has %d to %d; give fewer ones or a smaller field.offset_u", c.N, c.ElementMirrors, first, last, uFirst, uLast)
 	case c.V > 1 && (c.K < 1 || c.K <= c.L || c.K*(c.K-1) != c.L*(c.V-1)):
 		return c, fmt.Errorf("no code has v = %d, k = %d, l = %d", c.V, c.K, c.L)
 	case !(c.DwellSeconds > 0) || math.IsInf(c.DwellSeconds, 0) || c.Cycles < 1:

@@ -83,15 +83,11 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	return l, nil
 }
 
-// geometry is where light of a candidate's elements lands, nominally: that of the device's
-// middle at x_c.
+// geometry is where light of a candidate's elements lands, nominally.
 func (l *Light) geometry(c Candidate) calib.Geometry {
 	s := l.profile.Spectrograph
-	first, _ := l.strip(c)
-	mirrors := float64(c.ElementMirrors)
 	return calib.Geometry{
-		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(c.ElementMirrors),
-		J_c: (l.profile.UCenter() - float64(first) - (mirrors-1)/2) / mirrors,
+		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(c.ElementMirrors), J_c: float64(c.N-1)/2 - float64(l.target.OffsetU())/float64(c.ElementMirrors),
 		L_c: s.CenterNM, D: s.DispersionPxPerNM, SlitTilt: s.SlitTilt, Smile: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurve: s.TraceCurvePerPx,
 	}

@@ -166,7 +166,7 @@ func TestThroughputLeft(t *testing.T) {
 	left := func(mag float64, dark int) float64 {
 		l := newTestLight(t, "optical", "demo", scene.Scene{SeeingFWHMArcsec: 1, Sky: scene.Sky{ContinuumABArcsec2: &mag}}, nil,
 			func(_ *instrument.Profile, g *sequence.Target) { g.Forecast.ThroughputRMS = 0.01 })
-		c, err := Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1}.resolved(l.profile)
+		c, err := l.resolved(Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1})
 		require.NoError(t, err)
 		return l.throughputLeft(l.field(c, sight{}), c)
 	}

@@ -20,8 +20,8 @@ func (p *Profile) WRange() (wMin, wMax int) {
 	return 0, p.DMD.Rows - 1
 }
 
-// UCenter is the middle of the device's u: its light falls on column x_c, and strips are
-// centred there as well as their widths allow, unless a field lies beside it.
+// UCenter is the middle of the device's u: strips are centred there as well as
+// their widths allow, unless the field lies beside it.
 func (p *Profile) UCenter() float64 {
 	first, last := p.URange()
 	return float64(first+last) / 2

@@ -131,9 +131,8 @@ func most(fits func(n int) bool) int {
 
 // column is x of the centre wavelength of element j of n on the row y_c.
 func (o *optics) column(j, n int) float64 {
-	first, _ := o.field(n)
-	u := float64(first+j*o.mirrors) + float64(o.mirrors-1)/2
-	return o.profile.Spectrograph.XCenterPx + o.profile.Spectrograph.UStepPx*(u-o.profile.UCenter())
+	across := float64(o.offsetU) + float64(o.mirrors)*(float64(j)-float64(n-1)/2) // mirrors
+	return o.profile.Spectrograph.XCenterPx + o.profile.Spectrograph.UStepPx*across
 }
 
 // bandSeen is the fraction of the grid's voxels whose centre lies on the

@@ -13,7 +13,6 @@ import (
 	"mirrorloom/internal/trial"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/rehearse"
-	"mirrorloom/pipeline/sequence"
 )
 
 // An imperfect night, calibrated by its own lamps: the pulls are normal, white light and
@@ -75,10 +74,6 @@ func checkGeometry(t *testing.T, night *trial.Night, c *product.Calibration) {
 	got := geometryOf(t, night.CubePath(trial.Noisy))
 	xc, yc, xe, jc, lc := got[0], got[1], got[2], got[3], got[4]
 	n := night.Seq.N()
-	var strips []sequence.Element
-	for _, column := range night.Seq.ElementColumns() {
-		strips = append(strips, night.Seq.Elements[column])
-	}
 	worst := 0.0
 	for j := range n {
 		for y := 10; y < p.Detector.Rows-10; y++ {
@@ -88,7 +83,7 @@ func checkGeometry(t *testing.T, night *trial.Night, c *product.Calibration) {
 				x := xc + xe*(float64(j)-jc) + l*(got[5]+l*(got[6]+l*got[7])) + q*(got[8]+q*got[9])
 				l, q = p.Grid.WavelengthNM(float64(i))-truth.CenterNM, float64(y)-truth.YCenterPx
 				d := truth.DispersionPxPerNM
-				x -= truth.XCenterPx + truth.UStepPx*(float64(strips[j].First+strips[j].Last)/2-p.UCenter()) +
+				x -= truth.XCenterPx + truth.UStepPx*(float64(night.Seq.Target.OffsetU())+float64(night.Seq.ElementMirrors())*(float64(j)-float64(n-1)/2)) +
 					l*(d[0]+l*(d[1]+l*d[2])) + q*(truth.SlitTilt+q*truth.SmilePerPx)
 				square += x * x / float64(p.Grid.Count)
 			}

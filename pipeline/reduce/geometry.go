@@ -1,13 +1,14 @@
 package reduce
 
 import (
+	"math"
+
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/sequence"
 )
 
-// nominalGeometry is the profile's own mapping: light of the device's middle falls on x_c,
-// so that J_c, the place there counted in elements, is the field's middle only where the field
-// lies in the device's.
+// nominalGeometry is the profile's own mapping: section 3 of the design, for a field that may
+// lie beside the device's middle.
 func nominalGeometry(seq *sequence.Sequence) calib.Geometry {
 	s := seq.Profile.Spectrograph
 	return calib.Geometry{
@@ -19,10 +20,12 @@ func nominalGeometry(seq *sequence.Sequence) calib.Geometry {
 	}
 }
 
-// placeOfMiddle is the place of the device's middle counted in elements: 0 in the middle of
-// the first element's strip, and beyond 0..n-1 where the field lies beside it.
+// placeOfMiddle is J_c, the place counted in elements whose light falls on x_c: the field's
+// middle less the whole mirrors by which its first strip lies beyond where a field in the
+// device's middle begins. It lies beyond 0..n-1 where the field does not reach the middle.
 func placeOfMiddle(seq *sequence.Sequence) float64 {
-	mirrors := float64(seq.ElementMirrors())
-	first := float64(seq.Elements[seq.ElementColumns()[0]].First) + (mirrors-1)/2
-	return (seq.Profile.UCenter() - first) / mirrors
+	n, mirrors := seq.N(), seq.ElementMirrors()
+	centred := int(math.Ceil(seq.Profile.UCenter() - float64(n*mirrors-1)/2))
+	first := seq.Elements[seq.ElementColumns()[0]].First
+	return float64(n-1)/2 - float64(first-centred)/float64(mirrors)
 }
