@@ -107,9 +107,6 @@ func (o *optics) onDevice(n int) bool {
 	return first >= uFirst && last <= uLast
 }
 
-// elementsOnDevice is the largest number of elements on the device, 0 for none.
-func (o *optics) elementsOnDevice() int { return most(o.onDevice) }
-
 // elementsWithWholeBand is the largest number of elements on the device of which each has
 // every voxel of the grid on the detector, in every row; 0 for none.
 func (o *optics) elementsWithWholeBand() int {
