@@ -100,14 +100,6 @@ func (f *Field) wanted() []sequence.Wanted {
 	return list
 }
 
-// Candidate is a planned sequence as the forecast knows it.
-func Candidate(seq *sequence.Sequence) forecast.Candidate {
-	return forecast.Candidate{
-		Family: seq.Family, V: seq.V, K: seq.K, L: seq.L, N: seq.N(), ElementMirrors: seq.ElementMirrors(),
-		Dark: seq.V - seq.N(), DwellSeconds: seq.Target.DwellSeconds, Cycles: seq.Target.Code.Cycles,
-	}
-}
-
 // Forecasted is what nights say of forecasts, by lines and bands.
 type Forecasted struct {
 	// VoxelSNR and SumSNR are the least and the largest forecast.
@@ -210,7 +202,7 @@ func (f *Field) forecasts(ctx context.Context, seq *sequence.Sequence) ([]measur
 	if err != nil {
 		return nil, err
 	}
-	c := Candidate(seq)
+	c := forecast.CandidateOf(seq)
 	r, err := light.Of(ctx, c)
 	if err != nil {
 		return nil, err

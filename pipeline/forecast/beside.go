@@ -50,7 +50,7 @@ const (
 // measurement does not want: those of its circle at wavelengths beside a line, those of a
 // ring about it in a band. Sigma is 0. None where the field or the grid has none.
 func (l *Light) Beside(ctx context.Context, c Candidate, wanted int) ([]Voxel, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
