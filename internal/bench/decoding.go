@@ -6,6 +6,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"regexp"
 	"slices"
 	"strings"
 
@@ -87,19 +88,18 @@ func measureDecoding(ctx context.Context, scratch string) (*decoding, error) {
 			d.cases = append(d.cases, c)
 		}
 	}
-	for _, name := range []string{"Pixels", "Workers"} {
-		k, err := runBenchmark(ctx, binary, name, decodeRuns)
-		if err != nil {
-			return nil, err
-		}
-		d.growths = append(d.growths, k...)
+	pixels, err := runBenchmark(ctx, binary, "Pixels", benchmarkBusy, decodeRuns)
+	if err != nil {
+		return nil, err
 	}
-	return d, nil
+	workers, err := runBenchmark(ctx, binary, "Workers", benchmarkLine, decodeRuns)
+	d.growths = append(pixels, workers...)
+	return d, err
 }
 
 // measure adds a run, unless this processor has not the level.
 func (c *decodeCase) measure(ctx context.Context, binary string, g *gemm) error {
-	ours, err := runBenchmark(ctx, binary, c.name, 1)
+	ours, err := runBenchmark(ctx, binary, c.name, benchmarkBusy, 1)
 	if err != nil || len(ours) == 0 {
 		return err
 	}
@@ -107,7 +107,7 @@ func (c *decodeCase) measure(ctx context.Context, binary string, g *gemm) error 
 	if strings.HasPrefix(c.name, "Streamed") {
 		name = "CopyStreamed"
 	}
-	plain, err := runBenchmark(ctx, binary, name, 1)
+	plain, err := runBenchmark(ctx, binary, name, benchmarkBusy, 1)
 	if err != nil {
 		return err
 	}
@@ -124,15 +124,15 @@ func (c *decodeCase) measure(ctx context.Context, binary string, g *gemm) error 
 	return nil
 }
 
-// runBenchmark runs a benchmark of a test binary, with those below it, on one
-// processor, or as many as it takes itself.
-func runBenchmark(ctx context.Context, binary, name string, runs int) ([]kernel, error) {
+// runBenchmark runs a benchmark of a test binary, with those below it, and reads
+// the lines of a form.
+func runBenchmark(ctx context.Context, binary, name string, form *regexp.Regexp, runs int) ([]kernel, error) {
 	pattern := "^Benchmark" + strings.ReplaceAll(name, "/", "$/^") + "$"
 	out, err := exec.CommandContext(ctx, binary, "-test.run", "^$", "-test.bench", pattern, "-test.benchtime", "100ms", "-test.count", fmt.Sprint(runs)).Output()
 	if err != nil {
 		return nil, fmt.Errorf("benchmark %s: %w\n%s", name, err, out)
 	}
-	return parseKernels("hadamard", out), nil
+	return parseKernels("hadamard", out, form), nil
 }
 
 // middle is the median.
@@ -141,10 +141,13 @@ func middle(x []float64) float64 {
 	return sorted[len(sorted)/2]
 }
 
-func (d *decoding) write(b *strings.Builder) {
-	fmt.Fprintf(b, `One core. Bytes are those in and out. A block has %d pixels, as in `+"`reduce`"+`; the streamed one has 64 Ki, 268 MB in and out.
-Each figure is a median of %d runs, in each of which the kernel, a plain copy of the block and the matrix product of numpy
-run in turn; ratios are of the same run (range over the runs). The product is OpenBLAS's in float32, on one thread, of up
+// table is the section's text.
+func (d *decoding) table() string {
+	var b strings.Builder
+	fmt.Fprintf(&b, `One core. Bytes are those in and out. A block has %d pixels, as in `+"`reduce`"+`; the streamed one has 64 Ki, 268 MB in and out.
+Rates are in processor time, so that what else runs on the machine counts less. Each figure is a median of %d runs, in each
+of which the kernel, a plain copy of the block and the matrix product of numpy run in turn; ratios are of the same run
+(range over the runs). The product is OpenBLAS's in float32, on one thread, of up
 to 16384 pixels, by its fastest kernels here, %s. Those tried, at v = 511: %s.
 
 | code | kernels | GB/s | of a copy | of the product | to reach |
@@ -155,18 +158,18 @@ to 16384 pixels, by its fastest kernels here, %s. Those tried, at v = 511: %s.
 		if least := c.least[c.level]; least > 0 {
 			reach = fmt.Sprintf(">= %g", least)
 		}
-		fmt.Fprintf(b, "| %s | %s | %.2f | %.2f | %.2f (%.2f to %.2f) | %s |\n", c.what, levelNames[c.level],
+		fmt.Fprintf(&b, "| %s | %s | %.2f | %.2f | %.2f (%.2f to %.2f) | %s |\n", c.what, levelNames[c.level],
 			middle(c.rates), middle(c.copies), middle(c.ratios), slices.Min(c.ratios), slices.Max(c.ratios), reach)
 	}
-	fmt.Fprintf(b, `
-Growth with pixels and with workers, v = 511, %s. Blocks whose rows are a power of two apart fall into the same few
+	fmt.Fprintf(&b, `
+Growth with pixels, and with workers (these by the clock), v = 511, %s. Blocks whose rows are a power of two apart fall into the same few
 places of a cache; 272 floats are 17 cache lines.
 
 | what | GB/s |
 | --- | --- |
 `, hadamard.CPULevel())
 	for _, k := range d.growths {
-		fmt.Fprintf(b, "| %s | %.2f |\n", strings.ToLower(strings.Replace(k.name, "/", " ", 1)), k.median())
+		fmt.Fprintf(&b, "| %s | %.2f |\n", strings.ToLower(strings.Replace(k.name, "/", " ", 1)), k.median())
 	}
-	b.WriteString("\n")
+	return b.String()
 }

@@ -44,7 +44,7 @@ func measureKernels(ctx context.Context) ([]kernel, error) {
 		if err != nil {
 			return nil, fmt.Errorf("benchmarks of %s: %w\n%s", k.pkg, err, out)
 		}
-		all = append(all, parseKernels(k.pkg, out)...)
+		all = append(all, parseKernels(k.pkg, out, benchmarkLine)...)
 	}
 	return all, nil
 }
@@ -60,15 +60,20 @@ func copyRate(size int) float64 {
 	return 2 * float64(size) * float64(r.N) / r.T.Seconds() / 1e9
 }
 
-// benchmarkLine is "BenchmarkX/sub-2   123   456 ns/op   789.1 MB/s ...".
-var benchmarkLine = regexp.MustCompile(`^Benchmark(\S+?)(?:-\d+)?\s+\d+\s+[\d.]+ ns/op.*?\s([\d.]+) MB/s`)
+// benchmarkLine is "BenchmarkX/sub-2   123   456 ns/op   789.1 MB/s ...";
+// benchmarkBusy the same with the rate in processor time, where it has one.
+var (
+	benchmarkLine = regexp.MustCompile(`^Benchmark(\S+?)(?:-\d+)?\s+\d+\s+[\d.]+ ns/op.*?\s([\d.]+) MB/s`)
+	benchmarkBusy = regexp.MustCompile(`^Benchmark(\S+?)(?:-\d+)?\s+\d+\s+[\d.]+ ns/op.*?\s([\d.]+) MB/busy-s`)
+)
 
-// parseKernels collects the runs of each benchmark, in order.
-func parseKernels(pkg string, out []byte) []kernel {
+// parseKernels collects the runs of each benchmark whose lines have the form, in
+// order.
+func parseKernels(pkg string, out []byte, form *regexp.Regexp) []kernel {
 	var all []kernel
 	scanner := bufio.NewScanner(bytes.NewReader(out))
 	for scanner.Scan() {
-		m := benchmarkLine.FindStringSubmatch(scanner.Text())
+		m := form.FindStringSubmatch(scanner.Text())
 		if m == nil {
 			continue
 		}
