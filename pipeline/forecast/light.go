@@ -62,7 +62,7 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	if l.columns, err = calib.NewResampler(0, d.Columns-1); err != nil {
 		return nil, err
 	}
-	geometry := l.geometry(1, 1)
+	geometry := l.geometry(Candidate{N: 1, ElementMirrors: 1})
 	shift := make([]float64, d.Columns)
 	for x := range shift {
 		shift[x] = geometry.TraceShift(float64(x))
@@ -83,11 +83,11 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	return l, nil
 }
 
-// geometry is where light of n elements of so many mirrors lands, nominally.
-func (l *Light) geometry(n, mirrors int) calib.Geometry {
+// geometry is where light of a candidate's elements lands, nominally.
+func (l *Light) geometry(c Candidate) calib.Geometry {
 	s := l.profile.Spectrograph
 	return calib.Geometry{
-		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(mirrors), J_c: float64(n-1) / 2,
+		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(c.ElementMirrors), J_c: float64(c.N-1)/2 - float64(l.target.OffsetU())/float64(c.ElementMirrors),
 		L_c: s.CenterNM, D: s.DispersionPxPerNM, SlitTilt: s.SlitTilt, Smile: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurve: s.TraceCurvePerPx,
 	}
@@ -96,7 +96,7 @@ func (l *Light) geometry(n, mirrors int) calib.Geometry {
 // Of is the forecast of a candidate, with the slit scan that takes as long. Errors say what
 // makes it no candidate, and are those of ctx.
 func (l *Light) Of(ctx context.Context, c Candidate) (*Result, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
@@ -163,7 +163,7 @@ type Voxel struct {
 
 // Voxels are the voxels that a candidate's measurement adds up, by element, row and channel.
 func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
@@ -181,7 +181,7 @@ func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
 // Row is what the pixels of a detector row hold in the mean over a cycle's coded frames,
 // electrons by column, dark current and leak included.
 func (l *Light) Row(c Candidate, y int) ([]float64, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}

@@ -97,7 +97,7 @@ func newSum(l *Light, f *fieldLight, c Candidate, throughput float64, w *wanted,
 // edges are those of the channels of an element on a row, in detector x; ok tells whether the
 // detector holds them.
 func (s *sum) edges(j, row int) (edges []float64, ok bool) {
-	g := s.light.geometry(s.candidate.N, s.candidate.ElementMirrors)
+	g := s.light.geometry(s.candidate)
 	edges = make([]float64, len(s.parts)+1)
 	g.EdgesXAt(edges, float64(j), float64(row), s.light.edgesNM[s.first:s.first+len(edges)])
 	a, b := edges[0], edges[len(edges)-1]

@@ -87,13 +87,13 @@ func fieldElements(c sequence.CodeChoice, profile *instrument.Profile, target *s
 	like.Code = c
 	o := newOptics(profile, &like)
 	if c.V == nil {
-		return min(o.deviceU/c.ElementMirrors, o.elementsWithWholeBand()), nil
+		return o.elementsWithWholeBand(), nil
 	}
 	n := elementsOf(*c.V, c.Dark, hadamard.MSequence)
 	if n < 1 {
 		return 0, refuse("code.v", "the default of %d dark columns leaves no element of the %d columns; give code.dark or a larger code.v", hadamard.DefaultDark(*c.V), *c.V)
 	}
-	if n*c.ElementMirrors > o.deviceU {
+	if !o.onDevice(n) {
 		return 0, nil
 	}
 	return n, nil
