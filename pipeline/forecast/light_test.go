@@ -60,7 +60,7 @@ func TestForecastsRepeat(t *testing.T) {
 	other := Candidate{Family: "legendre", V: 107, N: 94, Dark: 13, ElementMirrors: 1, DwellSeconds: 60, Cycles: 1}
 	sky, err := scene.Load("demo")
 	require.NoError(t, err)
-	star, ring, nm := 2, 0, 500.887
+	star, ring, nm := 1, 0, 500.887
 	radius := 2.0
 	wanted := []sequence.Wanted{
 		{Name: "star", Source: &star, BandNM: []float64{560, 570}},
