@@ -111,6 +111,9 @@ func (l *Light) ring(w *wanted, c Candidate) []cell {
 	for _, k := range l.cells(&inner, c) {
 		near[[2]int{k.element, k.row}] = k.area
 	}
+	for _, k := range l.cells(w, c) {
+		near[[2]int{k.element, k.row}] = 1 // of a wide cell the circle may touch a part
+	}
 	var list []cell
 	for _, k := range l.cells(&outer, c) {
 		if k.area -= near[[2]int{k.element, k.row}]; k.area > 0 {
