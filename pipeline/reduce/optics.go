@@ -29,6 +29,7 @@ type optics struct {
 	response       *calib.Response
 	neighbour      *calib.ColourTerm
 	leak           *calib.ColourTerm
+	stuck          *stuckMirrors // nil where all mirrors move
 }
 
 // unknown is the flags of every voxel for what was asked of the lamps in vain.
@@ -77,6 +78,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 		}
 		arc = useOff
 	}
+	r.placeStuck()
 	if arc == useOff && flat == useOff {
 		return 0, nil
 	}
@@ -99,6 +101,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 			return 0, err
 		}
 	}
+	r.placeStuck()
 	if flat == useAuto {
 		if err := r.flats(ctx, m); err != nil {
 			return 0, err
