@@ -173,7 +173,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) error {
 		_, element := r.seq.Pattern(r.roles.arcs[i].Step)
 		frames[i].Element, frames[i].Lines = element, lines[i]
-		for _, rows := range r.litStretches(element) {
+		for _, rows := range r.optics.stuck.quiet(r.litStretches(element)) {
 			peaks, err := rule.Find(*e, rows[0], rows[1])
 			if err != nil {
 				return err

@@ -185,6 +185,28 @@ func (s *stuckMirrors) measureGain() {
 	}
 }
 
+// lampLit is lit, and nothing in rows of an element that lack light of mirrors which do not
+// move: the slit function goes on smoothly there, as if they had it.
+func (r *reduction) lampLit() []float32 {
+	all := r.lit()
+	if s := r.optics.stuck; s != nil {
+		for i, g := range s.gain {
+			if g < unaffected {
+				all[i] = 0
+			}
+		}
+	}
+	return all
+}
+
+// gainAt is the gain at an index [row][element].
+func (s *stuckMirrors) gainAt(at int) float64 {
+	if s == nil {
+		return 1
+	}
+	return float64(s.gain[at])
+}
+
 // unaffected is the gain from which a row is taken to have all its light.
 const unaffected = 0.999
 
@@ -208,3 +230,34 @@ func (s *stuckMirrors) low() []calib.Flag {
 
 // shinesOn tells whether the light of mirrors stuck on lands on a detector row.
 func (s *stuckMirrors) shinesOn(y int) bool { return s != nil && s.shines[y] }
+
+// leastQuiet rows in a stretch are too few to look for lines in.
+const leastQuiet = 3
+
+// quiet are the parts of stretches of detector rows, inclusive, on which no mirror stuck
+// on shines; all of them where that would leave less than half of the rows: then the few
+// that are wrong have to stand out by themselves.
+func (s *stuckMirrors) quiet(stretches [][2]int) [][2]int {
+	if s == nil {
+		return stretches
+	}
+	var parts [][2]int
+	all, left := 0, 0
+	for _, rows := range stretches {
+		all += rows[1] - rows[0] + 1
+		for y := rows[0]; y <= rows[1]; y++ {
+			first := y
+			for y <= rows[1] && !s.shines[y] {
+				y++
+			}
+			if y-first >= leastQuiet {
+				parts = append(parts, [2]int{first, y - 1})
+				left += y - first
+			}
+		}
+	}
+	if 2*left < all {
+		return stretches
+	}
+	return parts
+}
