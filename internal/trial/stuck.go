@@ -121,3 +121,31 @@ func (p *StuckPulls) Merge(o *StuckPulls) {
 	p.Bright.Merge(o.Bright)
 	p.Others.Merge(o.Others)
 }
+
+// Findings judge the pulls: within 0.05 of 0 and 1 where light is missing, and as on a
+// clean night elsewhere. bright tells whether there are bright voxels enough to judge.
+func (p *StuckPulls) Findings(name string, bright bool) []Finding {
+	figure := pullFigure{mean: 0.05, std: 0.05}
+	list := figure.judge(name+", light of stuck mirrors missing", &p.Lacking)
+	if bright {
+		list = append(list, figure.judge(name+", the same, above 5 sigma", &p.Bright)...)
+	}
+	return append(list, calibrated.judge(name+", all other voxels", &p.Others)...)
+}
+
+// StuckPullsOf compares nights with the truth of the noisy one.
+func (n *Night) StuckPullsOf(scale float64, names ...string) (*StuckPulls, error) {
+	all := new(StuckPulls)
+	for _, name := range names {
+		c, err := ReadCube(n.CubePath(name))
+		if err != nil {
+			return nil, err
+		}
+		truth, err := c.ReadTruth(n.TruthPath(Noisy))
+		if err != nil {
+			return nil, err
+		}
+		all.Merge(NewStuckPulls(c, truth, n.Seq, scale))
+	}
+	return all, nil
+}

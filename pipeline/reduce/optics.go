@@ -185,6 +185,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	if err != nil {
 		return err
 	}
+	r.optics.stuck.dropStuckLines(frames, rule.FWHMPx)
 	solution, err := calib.SolveArcs(r.optics.geometry, frames, r.arcRule())
 	var unknown *calib.ArcError
 	if errors.As(err, &unknown) {

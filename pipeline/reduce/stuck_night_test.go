@@ -2,34 +2,133 @@ package reduce_test
 
 import (
 	"context"
+	"fmt"
+	"math"
+	"path/filepath"
 	"testing"
 
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/internal/trial"
+	"mirrorloom/pipeline/reduce"
 	"mirrorloom/pipeline/rehearse"
+	"mirrorloom/pipeline/sequence"
 )
 
-func TestStuckNights(t *testing.T) {
-	for i, field := range fields {
-		t.Run(field.name, func(t *testing.T) {
-			f, err := field.make()
+// stuckNights are fields whose device has 30 mirrors that do not move, on bright stars
+// some of them.
+var stuckNights = []struct {
+	name   string
+	make   func() (*trial.Field, error)
+	change func(f *trial.Field)
+	faults rehearse.Options
+	nights int
+	lamps  bool
+}{
+	{name: "square", make: trial.Square, nights: 2},
+	{name: "diagonal", make: trial.Diagonal, nights: 2},
+	{name: "elements of one mirror", make: func() (*trial.Field, error) { return trial.Struckable(63, 16) }, nights: 1},
+	{name: "square, no all-off frames", make: trial.Square, nights: 1, change: func(f *trial.Field) { f.Target.AllOffEvery = 0 }},
+	{name: "diagonal, faults", make: trial.Diagonal, nights: 2, faults: rehearse.Options{Faults: []rehearse.Fault{
+		{Name: rehearse.Drift, Size: 0.02}, {Name: rehearse.Lost, Size: 2}, {Name: rehearse.Cosmic, Size: 0.3},
+	}}},
+	{name: "calibrated by its lamps", make: trial.Lamps, nights: 1, lamps: true},
+}
+
+// Where light of stuck mirrors is missing the pulls are those of any other voxel, against
+// the truth of an element whose mirrors all move; the night is whole.
+func TestStuckMirrors(t *testing.T) {
+	for i, c := range stuckNights {
+		t.Run(c.name, func(t *testing.T) {
+			ctx := context.Background()
+			f, err := c.make()
 			require.NoError(t, err)
-			require.NoError(t, f.Stick(uint64(1+i), 30))
-			night, err := f.Plan(context.Background(), t.TempDir())
-			require.NoError(t, err)
-			result, err := night.Make(context.Background(), trial.Noisy, rehearse.Options{Seed: uint64(31 + i)})
-			require.NoError(t, err)
-			require.Empty(t, result.Degraded)
-			t.Log(result.Run.Warnings)
-			c, err := trial.ReadCube(night.CubePath(trial.Noisy))
-			require.NoError(t, err)
-			truth, err := c.ReadTruth(night.TruthPath(trial.Noisy))
-			require.NoError(t, err)
-			p := trial.NewStuckPulls(c, truth, night.Seq, 1)
-			for _, m := range []trial.Moments{p.Lacking, p.Bright, p.Others} {
-				t.Logf("%d: mean %.4f std %.4f", m.N, m.Mean(), m.Std())
+			if c.change != nil {
+				c.change(f)
 			}
+			require.NoError(t, f.Stick(uint64(1+i), 30))
+			night, err := f.Plan(ctx, t.TempDir())
+			require.NoError(t, err)
+			names := []string{trial.Noisy}
+			for k := range c.nights {
+				opts := c.faults
+				if opts.Seed = uint64(31 + 10*i + k); k > 0 {
+					names, opts.NoTruth = append(names, fmt.Sprint(k)), true
+				}
+				result, err := night.Make(ctx, names[k], opts)
+				require.NoError(t, err)
+				require.Empty(t, result.Degraded)
+				require.Zero(t, result.Run.Exit)
+				for _, w := range result.Run.Warnings {
+					t.Log("warning:", w)
+				}
+				if c.lamps {
+					checkGeometry(t, night, result.Run.Calibration)
+					checkFlatDepth(t, result.Run.Calibration.FlatDepth)
+				}
+			}
+			pulls, err := night.StuckPullsOf(1, names...)
+			require.NoError(t, err)
+			t.Logf("above 5 sigma: %d pulls, mean %.4f, standard deviation %.4f", pulls.Bright.N, pulls.Bright.Mean(), pulls.Bright.Std())
+			hold(t, pulls.Findings(c.name, false))
+			small, err := night.StuckPullsOf(0.88, names...)
+			require.NoError(t, err)
+			require.False(t, trial.AllHold(small.Findings(c.name, false)[:2]), "VARIANCE too small passes")
 		})
 	}
+}
+
+// Rows that no stuck mirror's light reaches have the same bytes with the list of stuck
+// mirrors and without; where light is missing, without the list it is.
+func TestStuckMirrorsLeaveOthersAlone(t *testing.T) {
+	ctx := context.Background()
+	f, err := trial.Square()
+	require.NoError(t, err)
+	dir := t.TempDir()
+	unaware, err := f.Plan(ctx, filepath.Join(dir, "unaware"))
+	require.NoError(t, err)
+	require.NoError(t, f.Stick(4, 12))
+	night, err := f.Plan(ctx, filepath.Join(dir, "aware"))
+	require.NoError(t, err)
+	_, err = night.Make(ctx, trial.Noisy, rehearse.Options{Seed: 5})
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe("nominal")
+	require.NoError(t, err)
+	_, err = reduce.Run(ctx, reduce.Options{
+		Night: night.Frames(trial.Noisy), Sequence: unaware.SequencePath(), Out: unaware.Run(trial.Noisy), Recipe: recipe, Cube: true,
+	})
+	require.NoError(t, err)
+	with, err := trial.ReadCube(night.CubePath(trial.Noisy))
+	require.NoError(t, err)
+	without, err := trial.ReadCube(unaware.CubePath(trial.Noisy))
+	require.NoError(t, err)
+	require.Equal(t, len(without.Signal), len(with.Signal))
+	same, other := 0, 0
+	lacking := trial.Lacking(night.Seq)
+	for i, v := range with.Signal {
+		j, y := i%with.N, i/with.N%with.Rows
+		if stuckDistance(night.Seq, j, y) > 13 { // spot, trace and eight rows of a stencil
+			same++
+			if math.Float32bits(v) != math.Float32bits(without.Signal[i]) || math.Float32bits(with.Variance[i]) != math.Float32bits(without.Variance[i]) || with.Flags[i] != without.Flags[i] {
+				t.Fatalf("element %d, row %d: %g, without the list %g", j, y, v, without.Signal[i])
+			}
+		}
+		if lacking[y][j] && v != without.Signal[i] && with.Variance[i] > without.Variance[i] {
+			other++
+		}
+	}
+	require.Greater(t, same, 100_000)
+	require.Greater(t, other, 5_000)
+}
+
+// stuckDistance is how many rows a row of an element is from its nearest stuck mirror.
+func stuckDistance(seq *sequence.Sequence, j, y int) float64 {
+	least := math.Inf(1)
+	p := seq.Profile
+	for _, m := range seq.StuckMirrors() {
+		if m.Element == j {
+			least = min(least, math.Abs(float64(y)-p.Spectrograph.YCenterPx-p.Spectrograph.WStepPx*(float64(m.W)-p.WCenter())))
+		}
+	}
+	return least
 }
