@@ -28,6 +28,9 @@ type MissingLight struct {
 // sum_i c_i D_i if there is no noise. ok is false where the data do not fix C.
 func (m *MissingLight) Weights(noise float64) (c []float64, structure float64, ok bool) {
 	n := len(m.Weight)
+	if n == 0 {
+		return nil, 0, false
+	}
 	sum := mat.NewSymDense(n, nil)
 	sum.CopySym(m.Data)
 	// Neighbouring data hold nearly the same: a little noise keeps them apart.
@@ -40,7 +43,7 @@ func (m *MissingLight) Weights(noise float64) (c []float64, structure float64, o
 		sum.SetSym(i, i, m.Data.At(i, i)+noise+least*largest)
 	}
 	var factor mat.Cholesky
-	if n == 0 || !factor.Factorize(sum) {
+	if !factor.Factorize(sum) {
 		return nil, 0, false
 	}
 	var k, w mat.VecDense

@@ -40,6 +40,7 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		err = r.slitFlat(ctx, m)
 	}
 	if err == nil {
+		r.doubtStuck()
 		err = r.flatDepth(ctx, m)
 	}
 	if errors.Is(err, calib.ErrNoLight) {

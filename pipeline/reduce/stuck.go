@@ -52,10 +52,8 @@ func newStuckMirrors(seq *sequence.Sequence, trace func(x float64) float64, offs
 	if len(placed) == 0 {
 		return nil
 	}
-	s := &stuckMirrors{seq: seq, offset: offset, shines: make([]bool, seq.Profile.Detector.Rows)}
-	for _, column := range seq.ElementColumns() {
-		s.elements = append(s.elements, stuckElement{Element: seq.Elements[column]})
-	}
+	s := sortElements(seq)
+	s.offset = offset
 	for _, m := range placed {
 		if m.On {
 			s.shine(m.W, trace)
@@ -66,6 +64,15 @@ func newStuckMirrors(seq *sequence.Sequence, trace func(x float64) float64, offs
 		}
 	}
 	s.measureGain()
+	return s
+}
+
+// sortElements begins with no mirror stuck.
+func sortElements(seq *sequence.Sequence) *stuckMirrors {
+	s := &stuckMirrors{seq: seq, shines: make([]bool, seq.Profile.Detector.Rows)}
+	for _, column := range seq.ElementColumns() {
+		s.elements = append(s.elements, stuckElement{Element: seq.Elements[column]})
+	}
 	return s
 }
 
@@ -230,6 +237,9 @@ func (s *stuckMirrors) low() []calib.Flag {
 
 // shinesOn tells whether the light of mirrors stuck on lands on a detector row.
 func (s *stuckMirrors) shinesOn(y int) bool { return s != nil && s.shines[y] }
+
+// anyOn tells whether light of mirrors stuck on lands anywhere.
+func (s *stuckMirrors) anyOn() bool { return s != nil && slices.Contains(s.shines, true) }
 
 // leastQuiet rows in a stretch are too few to look for lines in.
 const leastQuiet = 3

@@ -5,11 +5,13 @@ import (
 	"fmt"
 	"math"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"github.com/stretchr/testify/require"
 
 	"mirrorloom/internal/trial"
+	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/reduce"
 	"mirrorloom/pipeline/rehearse"
 	"mirrorloom/pipeline/sequence"
@@ -55,7 +57,13 @@ func TestStuckMirrors(t *testing.T) {
 				if opts.Seed = uint64(31 + 10*i + k); k > 0 {
 					names, opts.NoTruth = append(names, fmt.Sprint(k)), true
 				}
-				result, err := night.Make(ctx, names[k], opts)
+				require.NoError(t, night.Rehearse(ctx, names[k], opts))
+				recipe, err := reduce.LoadRecipe(reduce.DefaultRecipe)
+				require.NoError(t, err)
+				if !c.lamps {
+					recipe.Arc.Use, recipe.Flat.Use = "off", "off"
+				}
+				result, err := night.Reduce(ctx, names[k], reduce.Options{Cube: true, Recipe: recipe})
 				require.NoError(t, err)
 				require.Empty(t, result.Degraded)
 				require.Zero(t, result.Run.Exit)
@@ -131,4 +139,51 @@ func stuckDistance(seq *sequence.Sequence, j, y int) float64 {
 		}
 	}
 	return least
+}
+
+// A wrong list: a mirror that is dead and not listed, and one that is listed and moves,
+// are named by the coded flat; a right list is not doubted.
+func TestWrongListOfStuckMirrors(t *testing.T) {
+	ctx := context.Background()
+	f, err := trial.Lamps()
+	require.NoError(t, err)
+	dir := t.TempDir()
+	element := func(j int) int { // its first column
+		return (f.Profile.DMD.Columns-2*f.Elements())/2 + 2*j
+	}
+	always := instrument.StuckMirror{Column: element(20), Row: 30}
+	truly := []instrument.StuckMirror{always, {Column: element(9), Row: 18}, {Column: element(33) + 1, Row: 41, On: true}}
+	require.NoError(t, f.Profile.SetStuck("stuck.csv", truly))
+	night, err := f.Plan(ctx, filepath.Join(dir, "true"))
+	require.NoError(t, err)
+	result, err := night.Make(ctx, trial.Noisy, rehearse.Options{Seed: 8, NoTruth: true})
+	require.NoError(t, err)
+	require.Empty(t, doubts(result), "of a right list")
+
+	require.NoError(t, f.Profile.SetStuck("stuck.csv", []instrument.StuckMirror{always, {Column: element(14), Row: 25}}))
+	wrong, err := f.Plan(ctx, filepath.Join(dir, "wrong"))
+	require.NoError(t, err)
+	recipe, err := reduce.LoadRecipe(reduce.DefaultRecipe)
+	require.NoError(t, err)
+	result, err = reduce.Run(ctx, reduce.Options{
+		Night: night.Frames(trial.Noisy), Sequence: wrong.SequencePath(), Out: wrong.Run(trial.Noisy), Recipe: recipe, Cube: true,
+	})
+	require.NoError(t, err)
+	said := doubts(result)
+	require.Len(t, said, 1)
+	t.Log(said[0])
+	require.Regexp(t, `element 9 lacks the light of [01]\.\d mirrors more at w = 1[789]`, said[0])
+	require.Regexp(t, `element 14 has the light of [01]\.\d mirrors more at w = 2[456]`, said[0])
+	require.Regexp(t, `element 33 lacks the light of [01]\.\d mirrors more at w = 4[012]`, said[0])
+	require.NotContains(t, said[0], "element 20")
+}
+
+func doubts(result *reduce.Result) []string {
+	var said []string
+	for _, w := range result.Run.Warnings {
+		if strings.Contains(w, "list of stuck mirrors") {
+			said = append(said, w)
+		}
+	}
+	return said
 }

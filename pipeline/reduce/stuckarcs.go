@@ -18,7 +18,7 @@ const leastArcs = 4
 // within a width of such a line, whose place it would spoil: fits part lines that are wider
 // apart.
 func (s *stuckMirrors) dropStuckLines(frames []calib.ArcFrame, fwhm float64) {
-	if s == nil || !slices.Contains(s.shines, true) || len(frames) < leastArcs {
+	if !s.anyOn() || len(frames) < leastArcs {
 		return
 	}
 	var constant []calib.Peak
