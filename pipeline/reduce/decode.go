@@ -29,8 +29,7 @@ type decoder struct {
 	repair *repair
 	// terms are taken out of decoded blocks; nil for none.
 	terms *slotTerms
-	// shines tells on which detector rows the light of mirrors stuck on lands; nil for
-	// none.
+	// shines tells on which detector rows mirrors stuck on shine; nil for none.
 	shines func(y int) bool
 }
 

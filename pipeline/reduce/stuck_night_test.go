@@ -1,9 +1,11 @@
 package reduce_test
 
 import (
+	"bytes"
 	"context"
 	"fmt"
 	"math"
+	"os"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -12,6 +14,7 @@ import (
 
 	"mirrorloom/internal/trial"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
 	"mirrorloom/pipeline/rehearse"
 	"mirrorloom/pipeline/sequence"
@@ -102,6 +105,15 @@ func TestStuckMirrorsLeaveOthersAlone(t *testing.T) {
 	require.NoError(t, err)
 	recipe, err := reduce.LoadRecipe("nominal")
 	require.NoError(t, err)
+	// One worker and strips of a few rows give the same bytes.
+	again := filepath.Join(dir, "again")
+	require.NoError(t, os.Mkdir(again, 0o755))
+	_, err = reduce.Run(ctx, reduce.Options{
+		Night: night.Frames(trial.Noisy), Sequence: night.SequencePath(), Out: again, Recipe: recipe, Cube: true, Workers: 1, MemoryBytes: 60 << 20,
+	})
+	require.NoError(t, err)
+	requireSameFile(t, night.CubePath(trial.Noisy), filepath.Join(again, product.CubeFile))
+	require.NoError(t, os.MkdirAll(unaware.Run(trial.Noisy), 0o755))
 	_, err = reduce.Run(ctx, reduce.Options{
 		Night: night.Frames(trial.Noisy), Sequence: unaware.SequencePath(), Out: unaware.Run(trial.Noisy), Recipe: recipe, Cube: true,
 	})
@@ -127,6 +139,15 @@ func TestStuckMirrorsLeaveOthersAlone(t *testing.T) {
 	}
 	require.Greater(t, same, 100_000)
 	require.Greater(t, other, 5_000)
+}
+
+func requireSameFile(t *testing.T, a, b string) {
+	t.Helper()
+	first, err := os.ReadFile(a)
+	require.NoError(t, err)
+	second, err := os.ReadFile(b)
+	require.NoError(t, err)
+	require.True(t, bytes.Equal(first, second), "%s and %s differ", a, b)
 }
 
 // stuckDistance is how many rows a row of an element is from its nearest stuck mirror.
