@@ -182,3 +182,24 @@ func TestFromSourcesRefused(t *testing.T) {
 	_, _, err := plan.Build(context.Background(), target, profile)
 	require.ErrorContains(t, err, "from_sources: rows are chosen by the sources of the forecast, and the target has none")
 }
+
+// The embedded example uses all of it: a field beside the middle, its rows, a sentinel and a
+// patch; and its light falls where nothing is warned of.
+func TestCornerExample(t *testing.T) {
+	target, err := sequence.LoadTarget("demo-corner")
+	require.NoError(t, err)
+	profile, err := instrument.Load("optical")
+	require.NoError(t, err)
+	s, summary := build(t, target, profile)
+	require.InDelta(t, 60, s.FieldCenterU()-profile.UCenter(), 0.5)
+	var uses []string
+	for _, p := range summary.Picked {
+		uses = append(uses, p.Use)
+	}
+	require.Equal(t, []string{sequence.UseSentinel, sequence.UseClosed}, uses)
+	require.Less(t, summary.Forecast.Saturation.Electrons, summary.Forecast.Saturation.Limit)
+	require.Equal(t, sequence.RowRange{First: 0, Last: 29, Use: sequence.UseClosed, Element: -1}, s.Rows[0])
+	for _, w := range summary.Warnings {
+		require.NotContains(t, w, "wavelength grid")
+	}
+}
