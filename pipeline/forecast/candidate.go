@@ -27,6 +27,14 @@ type Candidate struct {
 	Closed []sequence.ClosedRow `json:"closed,omitempty"`
 }
 
+// CandidateOf is how a sequence observes its field.
+func CandidateOf(s *sequence.Sequence) Candidate {
+	return Candidate{
+		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
+		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
+	}
+}
+
 // Design is the code's parameters.
 func (c Candidate) Design() hadamard.Design { return hadamard.Design{V: c.V, K: c.K, L: c.L} }
 

@@ -47,7 +47,7 @@ func TestFramesAsForecast(t *testing.T) {
 		require.NoError(t, n.Rehearse(context.Background(), "twin", rehearse.Options{Seed: 1, Noiseless: true, NoTruth: true}))
 		frames := meanElectrons(t, n, "twin")
 		for y := 4; y < field.Profile.Detector.Rows-4; y += 5 {
-			row, err := light.Row(trial.Candidate(n.Seq), y)
+			row, err := light.Row(forecast.CandidateOf(n.Seq), y)
 			require.NoError(t, err)
 			most := 0.0
 			for _, v := range frames[y] {

@@ -37,7 +37,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 			r.overlap[x], r.leak[x] = overlap, 0
 		}
 	}
-	return newNoiseModel(l, f, c, 0)
+	return newNoiseModel(l, f, c, taken{cycles: float64(c.Cycles)})
 }
 
 // The CCD equation's worked value: N* = 10000 in 10 pixels with sky 50, dark 2 and read
@@ -53,7 +53,7 @@ func TestCCDEquation(t *testing.T) {
 	}
 	require.InEpsilon(t, 96.358970, star/math.Sqrt(variance), 1e-7)
 	// Four cycles, each as long: SIGNAL is their mean.
-	n.candidate.Cycles = 4
+	n.cycles = 4
 	p := n.at(300, 90, sky+star/pixels)
 	require.InEpsilon(t, variance/pixels/4, p.variance(), 1e-9)
 }

@@ -173,7 +173,7 @@ func judged(ctx context.Context, s *sequence.Sequence) (*trade.Trade, error) {
 	if err != nil {
 		return nil, err
 	}
-	given := candidateOf(s)
+	given := forecast.CandidateOf(s)
 	t, err := trade.Compare(ctx, trade.Request{
 		Target: target, Profile: s.Profile, Light: light, Given: &given,
 		Fields: []trade.Field{{Elements: s.N(), Mirrors: s.ElementMirrors()}},
@@ -183,12 +183,4 @@ func judged(ctx context.Context, s *sequence.Sequence) (*trade.Trade, error) {
 	}
 	t.Choose(target, nil)
 	return t, nil
-}
-
-// candidateOf is a sequence as forecasts see it.
-func candidateOf(s *sequence.Sequence) forecast.Candidate {
-	return forecast.Candidate{
-		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
-		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
-	}
 }
