@@ -24,6 +24,9 @@ type Options struct {
 	// sequence; giving it its final name when it is whole is the caller's part. Empty, the
 	// plan is made and nothing is written.
 	Out string
+	// Sheet, if not nil, writes what the observer takes along into the folder, when all else
+	// of the sequence is there: nightsheet.Write, which is above this package.
+	Sheet func(dir string, s *sequence.Sequence, r *Summary) error
 }
 
 // Run plans and writes a sequence. Errors are one sentence that names file or
@@ -72,6 +75,11 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	}
 	summary.SequenceSHA = s.SHA
 	summary.Masks = countMasks(s)
+	if o.Sheet != nil {
+		if err := o.Sheet(o.Out, s, summary); err != nil {
+			return nil, err
+		}
+	}
 	return summary, nil
 }
 
@@ -168,6 +176,7 @@ func build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if err := summary.addForecast(ctx, s); err != nil {
 		return nil, nil, err
 	}
+	summary.judgeCalibrations(s)
 	return s, summary, nil
 }
 

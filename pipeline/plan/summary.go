@@ -48,6 +48,11 @@ type Summary struct {
 	// Trade holds the plan against other codes and the slit scan; nil where the target does
 	// not say what it wants.
 	Trade *trade.Trade `json:"trade,omitempty"`
+	// CycleLimits bound the time of a cycle, each rule once; nil without a forecast.
+	CycleLimits []trade.CycleLimit `json:"cycle_limits,omitempty"`
+	// Calibrations say whether the calibration frames are enough; nil where the target does
+	// not say what it wants.
+	Calibrations []CalibrationSize `json:"calibration_sizes,omitempty"`
 	// ShortNights say what is lost where the night ends early, by order of the steps.
 	ShortNights []ShortNight `json:"short_nights"`
 	// Device is what the optics of the mirror array do.
