@@ -151,6 +151,14 @@ func build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 		chosen = &dark
 	}
 	dark := *chosen
+	picked, err := pick(ctx, target, profile, code, dark.Columns)
+	if err != nil {
+		return nil, nil, err
+	}
+	target = picked.target
+	if err := checkRows(target, profile, n); err != nil {
+		return nil, nil, err
+	}
 	orders, err := scienceOrders(target.Code.Order, code, dark.Columns, target.Code.Cycles, uint64(target.Code.Seed))
 	if err != nil {
 		return nil, nil, err
@@ -160,6 +168,8 @@ func build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 		return nil, nil, refuse("code.cycles", "the target asks for %d exposures where a sequence has at most %d; ask for fewer cycles or calibration frames", len(s.Steps), maxSteps)
 	}
 	summary := summarize(s, code, dark, o)
+	summary.Picked = picked.picked
+	summary.Warnings = append(summary.Warnings, picked.warnings...)
 	if summary.ShortNights, err = shortNights(s, code, dark.Columns, orders); err != nil {
 		return nil, nil, err
 	}

@@ -57,6 +57,8 @@ type Summary struct {
 	ShortNights []ShortNight `json:"short_nights"`
 	// Device is what the optics of the mirror array do.
 	Device *Device `json:"device"`
+	// Picked are the rows that were chosen by the sources of the forecast.
+	Picked []PickedRows `json:"picked_rows,omitempty"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -207,6 +209,9 @@ func (r *Summary) String() string {
 		} else {
 			fmt.Fprintf(&b, "         where photon noise rules no element gains\n")
 		}
+	}
+	for _, p := range r.Picked {
+		fmt.Fprintf(&b, "rows     %s\n", p)
 	}
 	fmt.Fprintf(&b, "\n%-8s %6s %9s\n", "kind", "steps", "minutes")
 	for _, k := range r.Kinds {
