@@ -6,8 +6,8 @@ import (
 )
 
 // lanes is how many pixels are worked on together. Sixteen float32 are one
-// cache line and one AVX-512 register, or two of AVX2, and a block of 511 rows is 32 KiB: it
-// stays in the first-level cache.
+// cache line and one AVX-512 register, or two of AVX2, and a block of 511 rows
+// is 32 KiB: it stays in the first-level cache.
 const lanes = 16
 
 // row is one row of a block of pixels.

@@ -147,8 +147,8 @@ func (d *decoding) table() string {
 	fmt.Fprintf(&b, `One core. Bytes are those in and out. A block has %d pixels, as in `+"`reduce`"+`; the streamed one has 64 Ki, 268 MB in and out.
 Rates are in processor time, so that what else runs on the machine counts less. Each figure is a median of %d runs, in each
 of which the kernel, a plain copy of the block and the matrix product of numpy run in turn; ratios are of the same run
-(range over the runs). The product is OpenBLAS's in float32, on one thread, of up
-to 16384 pixels, by its fastest kernels here, %s. Those tried, at v = 511: %s.
+(range over the runs). The product is OpenBLAS's in float32, on one thread, of up to 16384 pixels, by its fastest kernels
+here, %s. Those tried, at v = 511: %s.
 
 | code | kernels | GB/s | of a copy | of the product | to reach |
 | --- | --- | --- | --- | --- | --- |
@@ -162,8 +162,8 @@ to 16384 pixels, by its fastest kernels here, %s. Those tried, at v = 511: %s.
 			middle(c.rates), middle(c.copies), middle(c.ratios), slices.Min(c.ratios), slices.Max(c.ratios), reach)
 	}
 	fmt.Fprintf(&b, `
-Growth with pixels, and with workers (these by the clock), v = 511, %s. Blocks whose rows are a power of two apart fall into the same few
-places of a cache; 272 floats are 17 cache lines.
+Growth with pixels, and with workers (these by the clock), v = 511, %s. Blocks whose rows are a power
+of two apart fall into the same few places of a cache; 272 floats are 17 cache lines.
 
 | what | GB/s |
 | --- | --- |
