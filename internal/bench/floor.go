@@ -25,7 +25,7 @@ const floorBlock = 1 << 20
 
 func runFloor(args []string) error {
 	if len(args) < 2 {
-		return errors.New("floor BYTES OUT FRAME...")
+		return errors.New("floor wants BYTES OUT FRAME")
 	}
 	bytes, err := strconv.ParseInt(args[0], 10, 64)
 	if err != nil {
