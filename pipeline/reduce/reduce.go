@@ -45,8 +45,9 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"strips", r.strips},
 		{"sky", r.bringToSky},
 		{"finish", r.finish},
+		{"forecast", r.holdForecast},
 	} {
-		if step.name == "sky" && !r.toSky() {
+		if step.name == "sky" && !r.toSky() || step.name == "forecast" && !r.hasForecast() {
 			continue
 		}
 		start := time.Now()
@@ -90,6 +91,8 @@ type reduction struct {
 	quality   product.Quality
 	stars     starSearch
 	samples   restoredSamples
+	// reached is the forecast beside what the cube has; nil without a forecast.
+	reached   *product.Forecast
 	badPixels int
 	stages    []product.Stage
 	// looked counts the bytes that calibrate reads: see traffic.go.
