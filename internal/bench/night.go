@@ -136,9 +136,9 @@ func allLamps(every int) edit {
 `, every)}
 }
 
-// coded takes another code, with as many dark columns as is the default.
+// coded takes another code, with as many dark columns as are the default or more.
 func coded(v, elementMirrors int) edit {
-	return edit{"target.yaml", oneCode, fmt.Sprintf("v: %d, dark: %d, element_mirrors: %d", v, (v+1)/8, elementMirrors)}
+	return edit{"target.yaml", oneCode, fmt.Sprintf("v: %d, dark: %d, element_mirrors: %d", v, max(16, (v+1)/8), elementMirrors)}
 }
 
 // narrowMirrors puts as many mirrors of half the width side by side, so that a code of

@@ -243,11 +243,15 @@ depth, terms of colour, pairings other than common mix-ups). %d runs of each sid
 // laptop is the memory of a usual laptop.
 const laptop = 16 << 30
 
+func longPlan() nightPlan {
+	return nightPlan{"long", append(narrowMirrors(), allLamps(32), coded(1023, 1)), append([]string{"--no-truth"}, someFaults...)}
+}
+
 // longNight is the race of the default recipe at four times the frames.
 func longNight(ctx context.Context, s *session) (string, error) {
 	r := everything()
 	r.frames = "1023 science and 1023 coded lamp frames of 1024 x 1024, and calibrations as above"
-	r.night = nightPlan{"long", append(narrowMirrors(), allLamps(32), coded(1023, 1)), append([]string{"--no-truth"}, someFaults...)}
+	r.night = longPlan()
 	r.memory, r.scriptMemory = "512MiB", laptop
 	once := *s
 	once.runs = 1
