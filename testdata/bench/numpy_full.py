@@ -111,6 +111,8 @@ def rectify(g, grid, x, variance, flag, shift):
         var[:, y] = np.diff(running_sum(variance[0, y])(at), axis=1).T
         out = np.where(share <= 0, NODATA, 0)
         for bit in (SATURATED, BADPIXEL, RESTORED):
+            if not (flag[y] & bit).any():
+                continue
             hit = np.concatenate([[0], np.cumsum(flag[y] & bit > 0)])
             out |= np.where(np.diff(np.interp(at, pixel_edges, hit), axis=1) > 0.1, bit, 0)
         flags[:, y] = out.T
