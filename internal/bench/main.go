@@ -88,5 +88,5 @@ func measure(ctx context.Context, s *session, part section) (string, error) {
 	}
 	fmt.Fprintf(os.Stderr, "%s took %.0f s\n", part.name, time.Since(start).Seconds())
 	fmt.Print(text)
-	return fmt.Sprintf("%s\nLoad before: %s.\n", strings.TrimRight(text, "\n"), before), nil
+	return fmt.Sprintf("%s\n\nLoad before: %s.\n", strings.TrimRight(text, "\n"), before), nil
 }
