@@ -64,6 +64,14 @@ type decoding struct {
 	growths []kernel
 }
 
+func decodingTable(ctx context.Context, s *session) (string, error) {
+	d, err := measureDecoding(ctx, s.dir)
+	if err != nil {
+		return "", err
+	}
+	return d.table(), nil
+}
+
 // measureDecoding runs each benchmark of decoding, a copy of the same block and
 // a matrix product in turn.
 func measureDecoding(ctx context.Context, scratch string) (*decoding, error) {

@@ -94,7 +94,7 @@ func parseKernels(pkg string, out []byte, form *regexp.Regexp) []kernel {
 func (k kernel) median() float64 { return middle(k.rates) }
 
 func writeKernels(b *strings.Builder, all []kernel) {
-	fmt.Fprintf(b, `## Other kernels
+	fmt.Fprintf(b, `## Kernels
 
 One core; medians of %d runs. Rates are of the bytes that a kernel reads and writes; the last column compares them with
 the plain copy in cache of the same run.
