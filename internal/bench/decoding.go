@@ -158,16 +158,16 @@ of which the kernel, a plain copy of the block and the matrix product of numpy r
 (range over the runs). The product is OpenBLAS's in float32, on one thread, of up to 16384 pixels, by its fastest kernels
 here, %s. Those tried, at v = 511: %s.
 
-| code | kernels | GB/s | of a copy | of the product | to reach |
-| --- | --- | --- | --- | --- | --- |
+| code | kernels | GB/s | of a copy | of the product | to reach | verdict |
+| --- | --- | --- | --- | --- | --- | --- |
 `, 272, decodeRuns, d.gemm, strings.Join(d.tried, ", "))
 	for _, c := range d.cases {
-		reach := ""
+		reach, verdict := "", ""
 		if least := c.least[c.level]; least > 0 {
-			reach = fmt.Sprintf(">= %g", least)
+			reach, verdict = fmt.Sprintf(">= %g", least), judged(middle(c.ratios) >= least)
 		}
-		fmt.Fprintf(&b, "| %s | %s | %.2f | %.2f | %.2f (%.2f to %.2f) | %s |\n", c.what, levelNames[c.level],
-			middle(c.rates), middle(c.copies), middle(c.ratios), slices.Min(c.ratios), slices.Max(c.ratios), reach)
+		fmt.Fprintf(&b, "| %s | %s | %.2f | %.2f | %.2f (%.2f to %.2f) | %s | %s |\n", c.what, levelNames[c.level],
+			middle(c.rates), middle(c.copies), middle(c.ratios), slices.Min(c.ratios), slices.Max(c.ratios), reach, verdict)
 	}
 	fmt.Fprintf(&b, `
 Growth with pixels, and with workers (these by the clock), v = 511, %s. Blocks whose rows are a power

@@ -10,6 +10,8 @@ import (
 	"path/filepath"
 	"strconv"
 	"strings"
+
+	"mirrorloom/internal/child"
 )
 
 // gemm is numpy's product of float32 matrices by OpenBLAS on one thread, in a
@@ -31,7 +33,7 @@ func gemmPixels(v int) int { return min(16384, 8<<20/v) }
 
 func startGEMM(ctx context.Context, coreType string) (*gemm, error) {
 	g := &gemm{chosen: coreType == "", cmd: exec.CommandContext(ctx, python, filepath.Join(given, "numpy_gemm.py"))}
-	g.cmd.Env = os.Environ()
+	g.cmd.Env = child.Environment()
 	if coreType != "" {
 		g.cmd.Env = append(g.cmd.Env, "OPENBLAS_CORETYPE="+coreType)
 	}
