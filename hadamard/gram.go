@@ -63,6 +63,42 @@ func (g *Gram) Add(y, s2 []float32, pixels, stride int, floor float32) {
 	}
 }
 
+// AddExpected adds what pixels will give in the mean before they are read: light and
+// variances as Add's y and s2, both known, [code row][pixel] without gaps, where pixel p
+// stands for counts[p] of the same light. With w = count/s^2, s^2 the mean of a pixel's
+// variances, sum_p w (y y' + diag(s2)) goes to G and w s2 to its noise: the expected value
+// of Add on so many drawn pixels. Pixels of no variance are skipped.
+func (g *Gram) AddExpected(light, variances []float64, counts []int) {
+	v, pixels := g.V(), len(counts)
+	if need := v * pixels; len(light) != need || len(variances) != need {
+		panic(fmt.Sprintf("internal error: hadamard: Gram.AddExpected of %d rows of %d pixels needs %d samples, has %d and %d variances", v, pixels, need, len(light), len(variances)))
+	}
+	weights := make([]float64, pixels)
+	for p, count := range counts {
+		mean := 0.0
+		for i := range v {
+			mean += variances[i*pixels+p] / float64(v)
+		}
+		if mean > 0 {
+			weights[p] = float64(count) / mean
+			g.Pixels += count
+		} else {
+			g.Skipped += count
+		}
+	}
+	scaled := make([]float64, len(light))
+	for i := range v {
+		noise := 0.0
+		for p, w := range weights {
+			scaled[i*pixels+p] = light[i*pixels+p] * math.Sqrt(w)
+			noise += variances[i*pixels+p] * w
+		}
+		g.noise[i] += noise
+		g.sum.SetSym(i, i, g.sum.At(i, i)+noise)
+	}
+	addOuter(g.sum, scaled, pixels)
+}
+
 // addBlock adds pixels of given weights; buffer is left with the readings times the roots
 // of the weights.
 func (g *Gram) addBlock(buffer []float64, y, s2 []float32, weights []float64, stride int) {

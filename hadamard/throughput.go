@@ -71,6 +71,14 @@ func (f *ThroughputFit) Measured() bool {
 	return f.used > 1 && f.Directions >= 0.75*float64(f.used-1)
 }
 
+// What a night is taken to do until it is measured: each frame differs by NightScatter
+// (rms, relative), and the whole night's trend spans NightTrend from end to end, as the
+// airmass of a long visit and thin clouds make it (common practice, no source).
+const (
+	NightScatter = 0.05
+	NightTrend   = 0.30
+)
+
 // DefaultThroughputPrior is the covariance of E that a night is given before its
 // frames are seen: independent relative errors of rms independent, and a linear trend
 // whose span from end to end has the standard deviation trendSpan. times are those of

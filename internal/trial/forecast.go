@@ -209,7 +209,7 @@ func (f *Field) forecasts(ctx context.Context, seq *sequence.Sequence) ([]measur
 	}
 	var list []measured
 	for i, m := range r.Wanted {
-		voxels, err := light.Voxels(c, i)
+		voxels, err := light.Voxels(ctx, c, i)
 		if err != nil {
 			return nil, err
 		}

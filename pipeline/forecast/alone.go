@@ -33,6 +33,13 @@ type Alone struct {
 	Wanted string `json:"wanted,omitempty"`
 }
 
+const (
+	// sentinelEdges is how far light from beyond sentinel rows reaches, in widths of a line.
+	sentinelEdges = 1.5
+	// anySource stands for all light.
+	anySource = -2
+)
+
 // Alone is what a star gives in sentinel rows of a candidate's elements. The error is about
 // what is no candidate, or no star.
 func (l *Light) Alone(c Candidate, source int) (Alone, error) {
@@ -58,7 +65,7 @@ func (l *Light) Alone(c Candidate, source int) (Alone, error) {
 	out.Element = j
 	off := (at - float64(j)) * step
 	out.Held, out.Best = between(-step/2-off, step/2-off, sigma), between(-step/2, step/2, sigma)
-	edge := 1.5 * p.Spectrograph.LSFFWHMPx
+	edge := sentinelEdges * p.Spectrograph.LSFFWHMPx
 	half := l.scene.SeeingFWHMArcsec/a + edge/p.Spectrograph.WStepPx
 	middle := p.WCenter() + w/a
 	out.First, out.Last = l.openAbout(int(math.Round(middle)), int(math.Floor(middle-half)), int(math.Ceil(middle+half)), j)
@@ -102,7 +109,7 @@ func (l *Light) expose(out *Alone, f *fieldLight, dwell, edge float64) {
 		clear(light)
 		clear(star)
 		f.element(light, out.Element, q, 0, func(int) bool { return true }, false)
-		f.element(star, out.Element, q, 0, func(source int) bool { return source == out.Source }, false)
+		f.element(star, out.Element, q, 0, func(source int) bool { return source == out.Source || out.Source == anySource }, false)
 		inside := float64(q) >= low+edge && float64(q) <= high-edge
 		for x, e := range light {
 			amplifier := l.camera.amplifier(x, q)

@@ -27,7 +27,7 @@ func besideLight(t *testing.T) (*Light, Candidate) {
 // there, where no other source is left out.
 func TestSkyIsNotWanted(t *testing.T) {
 	l, c := besideLight(t)
-	voxels, err := l.Voxels(c, 0)
+	voxels, err := l.Voxels(context.Background(), c, 0)
 	require.NoError(t, err)
 	require.NotEmpty(t, voxels)
 	for _, v := range voxels {

@@ -25,13 +25,15 @@ type Candidate struct {
 	Cycles       int     `json:"cycles"`
 	// Closed are rows of mirrors closed besides those of the target.
 	Closed []sequence.ClosedRow `json:"closed,omitempty"`
+
+	columns []int // dark ones of a sequence, ascending; nil where they are not chosen
 }
 
 // CandidateOf is how a sequence observes its field.
 func CandidateOf(s *sequence.Sequence) Candidate {
 	return Candidate{
 		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
-		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
+		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles, columns: s.DarkColumns(),
 	}
 }
 
@@ -41,6 +43,7 @@ func (c Candidate) Design() hadamard.Design { return hadamard.Design{V: c.V, K: 
 // SlitScan is the candidate's field observed element by element, its dwell not yet chosen.
 func (c Candidate) SlitScan() Candidate {
 	c.Family, c.V, c.K, c.L, c.Dark = string(hadamard.SlitScan), c.N, 1, 0, 0
+	c.columns = nil
 	return c
 }
 

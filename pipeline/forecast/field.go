@@ -47,6 +47,8 @@ type fieldLight struct {
 	rows      map[int]*rowLight
 	pixelRows map[int]*pixelRow
 	squares   map[int][]float64 // by trace row
+	sampled   *sampled          // nil until asked for
+	left      map[throughputKey]transmission
 }
 
 // field is the light of a candidate's strip.
@@ -60,7 +62,7 @@ func (l *Light) field(c Candidate, at sight) *fieldLight {
 	}
 	f := &fieldLight{
 		deviceLight: l.device(key.deviceKey), first: first, last: last, mirrors: c.ElementMirrors, closed: closed,
-		shares: map[int][]*share{}, rows: map[int]*rowLight{}, pixelRows: map[int]*pixelRow{}, squares: map[int][]float64{},
+		shares: map[int][]*share{}, rows: map[int]*rowLight{}, pixelRows: map[int]*pixelRow{}, squares: map[int][]float64{}, left: map[throughputKey]transmission{},
 	}
 	if len(l.fields) >= mostKept {
 		clear(l.fields)

@@ -112,8 +112,12 @@ func (l *Light) Of(ctx context.Context, c Candidate) (*Result, error) {
 	at := l.sightOf(t)
 	field := l.field(c, at)
 	r := &Result{Candidate: c, Time: t, Airmass: at.airmass}
-	r.ThroughputRMS = l.throughputLeft(field, c)
-	if r.Wanted, err = l.measures(ctx, field, c, taken{float64(c.Cycles), r.ThroughputRMS}); err != nil {
+	left, err := l.throughputLeft(ctx, field, c)
+	if err != nil {
+		return nil, err
+	}
+	r.ThroughputRMS = left.rms
+	if r.Wanted, err = l.measures(ctx, field, c, taken{float64(c.Cycles), left}); err != nil {
 		return nil, err
 	}
 	r.Saturation = l.saturation(field, c)
@@ -139,14 +143,20 @@ func (l *Light) slit(ctx context.Context, field *fieldLight, c Candidate, second
 		}
 		s.Candidate, s.Saturation = c, l.saturation(field, c)
 	}
-	var err error
-	s.Wanted, err = l.measures(ctx, field, s.Candidate, taken{float64(s.Candidate.Cycles), l.target.Forecast.ThroughputRMS})
+	left, err := l.throughputLeft(ctx, field, s.Candidate)
+	if err != nil {
+		return nil, err
+	}
+	s.Wanted, err = l.measures(ctx, field, s.Candidate, taken{float64(s.Candidate.Cycles), left})
 	return s, err
 }
 
 // taken is what frames have in common with a candidate's and what not: cycles, the number of
-// frames of each step, and throughput, the scatter of the transmission that is left.
-type taken struct{ cycles, throughput float64 }
+// frames of each step, and throughput, what is not known of the transmission.
+type taken struct {
+	cycles     float64
+	throughput transmission
+}
 
 // Planned is what Of says of what is wanted, and no more.
 func (l *Light) Planned(ctx context.Context, c Candidate) ([]Measure, error) {
@@ -157,7 +167,11 @@ func (l *Light) Planned(ctx context.Context, c Candidate) ([]Measure, error) {
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	field := l.field(c, l.sightOf(l.Time(c)))
-	return l.measures(ctx, field, c, taken{float64(c.Cycles), l.throughputLeft(field, c)})
+	left, err := l.throughputLeft(ctx, field, c)
+	if err != nil {
+		return nil, err
+	}
+	return l.measures(ctx, field, c, taken{float64(c.Cycles), left})
 }
 
 // Taken is what is wanted of frames that were taken of a candidate, with the voxels of each
@@ -172,20 +186,23 @@ func (l *Light) Taken(ctx context.Context, c Candidate, cycles float64, throughp
 	defer l.mu.Unlock()
 	field := l.field(c, l.sightOf(l.Time(c)))
 	of := taken{cycles: cycles}
-	if throughput != nil {
-		of.throughput = *throughput
-	} else {
-		of.throughput = l.throughputLeft(field, c)
+	if of.throughput, err = l.throughputLeft(ctx, field, c); err != nil {
+		return nil, nil, err
 	}
-	if !(of.cycles > 0) || !(of.throughput >= 0) {
-		return nil, nil, fmt.Errorf("%v cycles with an error of the transmission of %v are no frames; give positive numbers", of.cycles, of.throughput)
+	if throughput != nil {
+		of.throughput = of.throughput.scaled(*throughput)
+	}
+	if !(of.cycles > 0) || !(of.throughput.rms >= 0) {
+		return nil, nil, fmt.Errorf("%v cycles with an error of the transmission of %v are no frames; give positive numbers", of.cycles, of.throughput.rms)
 	}
 	list, voxels := make([]Measure, len(l.wanted)), make([][]Voxel, len(l.wanted))
 	for i := range l.wanted {
 		if err := ctx.Err(); err != nil {
 			return nil, nil, err
 		}
-		list[i] = l.measure(field, c, of, i, func(v Voxel) { voxels[i] = append(voxels[i], v) })
+		if list[i], err = l.measure(field, c, of, i, func(v Voxel) { voxels[i] = append(voxels[i], v) }); err != nil {
+			return nil, nil, err
+		}
 	}
 	return list, voxels, nil
 }
@@ -197,7 +214,10 @@ func (l *Light) measures(ctx context.Context, field *fieldLight, c Candidate, of
 		if err := ctx.Err(); err != nil {
 			return nil, err
 		}
-		list[i] = l.measure(field, c, of, i, nil)
+		var err error
+		if list[i], err = l.measure(field, c, of, i, nil); err != nil {
+			return nil, err
+		}
 	}
 	return list, nil
 }
@@ -214,7 +234,7 @@ type Voxel struct {
 }
 
 // Voxels are the voxels that a candidate's measurement adds up, by element, row and channel.
-func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
+func (l *Light) Voxels(ctx context.Context, c Candidate, wanted int) ([]Voxel, error) {
 	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
@@ -225,9 +245,13 @@ func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
 	l.mu.Lock()
 	defer l.mu.Unlock()
 	field := l.field(c, l.sightOf(l.Time(c)))
+	left, err := l.throughputLeft(ctx, field, c)
+	if err != nil {
+		return nil, err
+	}
 	var list []Voxel
-	l.measure(field, c, taken{float64(c.Cycles), l.throughputLeft(field, c)}, wanted, func(v Voxel) { list = append(list, v) })
-	return list, nil
+	_, err = l.measure(field, c, taken{float64(c.Cycles), left}, wanted, func(v Voxel) { list = append(list, v) })
+	return list, err
 }
 
 // Row is what the pixels of a detector row hold in the mean over a cycle's coded frames,

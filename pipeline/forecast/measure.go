@@ -33,7 +33,7 @@ func (w *window) at(x, y int) int { return (y-w.y0)*(w.x1-w.x0+1) + x - w.x0 }
 func (w *window) empty() bool     { return w.y1 < w.y0 || w.x1 < w.x0 }
 
 // measure is the forecast of a measurement; each, if not nil, is called for its voxels.
-func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each func(Voxel)) Measure {
+func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each func(Voxel)) (Measure, error) {
 	w := &l.wanted[index]
 	m := Measure{Name: w.name, Line: w.line, FromNM: w.fromNM, ToNM: w.toNM}
 	cells := l.cells(w, c)
@@ -46,8 +46,13 @@ func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each fu
 		s.element(cells[i:end], each)
 		i = end
 	}
+	shaken, err := s.shaken()
+	if err != nil {
+		return m, err
+	}
+	s.variance.Throughput += shaken
 	s.finish(&m)
-	return m
+	return m, nil
 }
 
 // sum adds up a measurement.
@@ -71,6 +76,9 @@ type sum struct {
 	// times light.
 	pixels []overlapped
 	window window
+	// apertures are the weights of each element of a code, where its frames' transmission
+	// scatters.
+	apertures []aperture
 }
 
 // channelSum adds up the voxels of a wavelength.
@@ -139,6 +147,10 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 	for i, k := range kept {
 		s.cell(k, all[i], &win, noise, weights, each)
 	}
+	coded := s.candidate.K > 1
+	if coded && s.noise.scatter > 0 {
+		s.apertures = append(s.apertures, aperture{j, win, weights})
+	}
 	scatter := 0.0
 	for y := win.y0; y <= win.y1; y++ {
 		for x := win.x0; x <= win.x1; x++ {
@@ -164,7 +176,9 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 			o.squareLight += square * n.light
 		}
 	}
-	s.variance.Throughput += scatter * scatter
+	if !coded { // one element a frame
+		s.variance.Throughput += scatter * scatter
+	}
 }
 
 // cell adds the voxels of a cell.

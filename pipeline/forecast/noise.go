@@ -15,6 +15,7 @@ type noiseModel struct {
 	read      float64 // ReadNoiseVariance
 	dark      float64 // electrons a second
 	scatter   float64 // rms of a frame's transmission
+	rows      transmission
 	cycles    float64 // frames of each step
 	// What is taken off all frames: the means of so many frames.
 	bias, darks, off int
@@ -31,7 +32,7 @@ func newNoiseModel(l *Light, f *fieldLight, c Candidate, of taken) *noiseModel {
 	k := l.target.Calibration
 	n := &noiseModel{
 		light: l, field: f, design: c.Design(), candidate: c,
-		dark: l.camera.darkEPS, scatter: of.throughput, cycles: of.cycles,
+		dark: l.camera.darkEPS, scatter: of.throughput.rms, rows: of.throughput, cycles: of.cycles,
 		bias: k.Bias.Count, darks: k.Dark.Count, darkDwell: k.Dark.DwellSeconds, off: allOff(l.target, c.V*c.Cycles), squares: map[int][]float64{},
 	}
 	n.read = n.design.ReadNoiseVariance()
@@ -147,32 +148,4 @@ func (n *noiseModel) addShared(v *Parts, levels *Levels, x, y int, o *overlapped
 		light := 2 * (o.light*o.weight - o.squareLight)
 		v.Photons -= camera.photon * l / (k * (k - l) * float64(d.V-2)) / cycles * (o.overlap*pairs - light)
 	}
-}
-
-// throughputLeft is the scatter of the frames' transmission that is left in the data: what
-// the target says, d, or less where dark columns measure it. Of a frame's factor the g dark
-// columns see g/v; a pixel of y electrons, s^2 its variance, measures it to s/y. So the sum
-// I of y^2/s^2 over the detector leaves d^2 b/(d^2 + b), b = v/(g I).
-func (l *Light) throughputLeft(f *fieldLight, c Candidate) float64 {
-	d := l.target.Forecast.ThroughputRMS
-	if d == 0 || !checks(c) {
-		return d
-	}
-	const sampled = 8 // rows
-	rows := l.profile.Detector.Rows
-	design, information := c.Design(), 0.0
-	open := float64(design.K) / float64(design.V) * c.DwellSeconds
-	for i := range sampled {
-		q := (2*i + 1) * rows / (2 * sampled)
-		for x, overlap := range f.row(q).overlap {
-			y := overlap * open
-			information += y * y / (y + l.camera.quiet[l.camera.amplifier(x, q)])
-		}
-	}
-	information *= float64(rows) / sampled
-	if information == 0 {
-		return d
-	}
-	b := float64(design.V) / (float64(c.Dark) * information)
-	return math.Sqrt(d * d * b / (d*d + b))
 }

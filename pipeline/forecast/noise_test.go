@@ -1,6 +1,7 @@
 package forecast
 
 import (
+	"context"
 	"fmt"
 	"math"
 	"testing"
@@ -166,16 +167,25 @@ func TestCovarianceOfACode(t *testing.T) {
 	}
 }
 
-// Of a scatter of 1 %, dark columns leave little under a bright sky and all under none.
+// Of a scatter of 2 %, dark columns leave little under bright lines of the sky, which fall on
+// other elements at every pixel, all under faint ones, and no less than reduce claims under a
+// bright continuum, which lights all frames in one pattern; too few of them leave all.
 func TestThroughputLeft(t *testing.T) {
-	left := func(mag float64, dark int) float64 {
-		l := newTestLight(t, "optical", "demo", scene.Scene{SeeingFWHMArcsec: 1, Sky: scene.Sky{ContinuumABArcsec2: &mag}}, nil,
-			func(_ *instrument.Profile, g *sequence.Target) { g.Forecast.ThroughputRMS = 0.01 })
+	left := func(mag, line float64, dark int) float64 {
+		sky := scene.Sky{ContinuumABArcsec2: &mag}
+		for nm := 482.0; nm < 680; nm += 9 {
+			sky.Lines = append(sky.Lines, scene.SkyLine{WavelengthNM: nm, FluxWM2Arcsec2: line})
+		}
+		l := newTestLight(t, "optical", "demo", scene.Scene{SeeingFWHMArcsec: 1, Sky: sky}, nil,
+			func(_ *instrument.Profile, g *sequence.Target) { g.Forecast.ThroughputRMS = 0.02 })
 		c, err := l.resolved(Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1})
 		require.NoError(t, err)
-		return l.throughputLeft(l.field(c, sight{}), c)
+		left, err := l.throughputLeft(context.Background(), l.field(c, sight{}), c)
+		require.NoError(t, err)
+		return left.rms
 	}
-	require.Less(t, left(20, 16), 0.002)
-	require.Greater(t, left(35, 16), 0.0099)
-	require.Equal(t, 0.01, left(20, 2), "too few dark columns measure nothing")
+	require.Less(t, left(22, 1e-16, 16), 0.005)
+	require.Equal(t, 0.02, left(35, 0, 16))
+	require.Greater(t, left(18, 0, 16), 0.015)
+	require.Equal(t, 0.02, left(22, 1e-16, 2), "too few dark columns measure nothing")
 }

@@ -2,59 +2,58 @@ package forecast
 
 import "math"
 
-// Sampled is the light of all elements at some of the detector's pixels.
-type Sampled struct {
-	// Light is by element and pixel, electrons a frame; Quiet is the variance of a sample but
-	// for the light that is open, e^2, Photon that of an electron.
-	Light  [][]float64
-	Quiet  []float64
-	Photon float64
-	// Stands is how many of the detector's pixels each stands for.
-	Stands []float64
+// sampled is the light of all elements at some of the detector's pixels, those of like places
+// standing for each other.
+type sampled struct {
+	// light is by element and pixel, that of its open mirrors; quiet the read noise's
+	// variance, e^2, leak the light of closed mirrors. Light in electrons a second.
+	light       [][]float64
+	quiet, leak []float64
+	// stands is how many of the detector's pixels each stands for.
+	stands []float64
 }
 
 // Rows and columns sampled: as many rows near sources as elsewhere, so that few stars count by
-// what they are.
+// what they are; columns a few pixels apart, so that a line of each element falls on some.
 const (
 	sampledRows    = 8
-	sampledColumns = 64
+	sampledColumns = 192
 )
 
-// Sampled samples a candidate's frames.
-func (l *Light) Sampled(c Candidate) (*Sampled, error) {
-	c, err := l.resolved(c)
-	if err != nil {
-		return nil, err
+// sample samples the light of a candidate's n elements; it is kept.
+func (f *fieldLight) sample(n int) *sampled {
+	if f.sampled != nil {
+		return f.sampled
 	}
-	l.mu.Lock()
-	defer l.mu.Unlock()
-	f := l.field(c, l.sightOf(l.Time(c)))
-	out := &Sampled{Light: make([][]float64, c.N), Photon: l.camera.photon}
+	l := f.light
+	s := &sampled{light: make([][]float64, n)}
 	all, one := func(int) bool { return true }, make([]float64, 1)
-	for _, rows := range l.strata() {
+	columns := min(sampledColumns, l.camera.columns)
+	for _, rows := range f.strata() {
 		n := min(sampledRows, len(rows))
 		for i := range n {
 			q := rows[(2*i+1)*len(rows)/(2*n)]
-			columns := min(sampledColumns, l.camera.columns)
 			for k := range columns {
 				x := (2*k + 1) * l.camera.columns / (2 * columns)
-				for j := range out.Light {
+				for j := range s.light {
 					one[0] = 0
 					f.element(one, j, q, x, all, false)
-					out.Light[j] = append(out.Light[j], one[0]*c.DwellSeconds)
+					s.light[j] = append(s.light[j], one[0])
 				}
-				quiet := l.camera.quiet[l.camera.amplifier(x, q)]
-				out.Quiet = append(out.Quiet, quiet+l.camera.photon*(l.camera.darkEPS+f.row(q).leak[x])*c.DwellSeconds)
-				out.Stands = append(out.Stands, float64(len(rows)*l.camera.columns)/float64(n*columns))
+				s.quiet = append(s.quiet, l.camera.quiet[l.camera.amplifier(x, q)])
+				s.leak = append(s.leak, f.row(q).leak[x])
+				s.stands = append(s.stands, float64(len(rows)*l.camera.columns)/float64(n*columns))
 			}
 		}
 	}
-	return out, nil
+	f.sampled = s
+	return s
 }
 
-// strata are the detector's rows within an FWHM of a source's middle, and the others; one of
-// the two may be missing.
-func (l *Light) strata() [][]int {
+// strata are the detector's coded rows within an FWHM of a source's middle, and the others;
+// one of the two may be missing.
+func (f *fieldLight) strata() [][]int {
+	l := f.light
 	s, a := l.profile.Spectrograph, l.profile.ArcsecPerU()
 	near := make([]bool, l.camera.rows)
 	for i := range l.scene.Sources {
@@ -68,9 +67,11 @@ func (l *Light) strata() [][]int {
 	}
 	var strata [2][]int
 	for q, is := range near {
-		if is {
+		switch {
+		case !f.coded(q):
+		case is:
 			strata[0] = append(strata[0], q)
-		} else {
+		default:
 			strata[1] = append(strata[1], q)
 		}
 	}
@@ -81,4 +82,18 @@ func (l *Light) strata() [][]int {
 		}
 	}
 	return list
+}
+
+// coded tells whether the mirrors whose light falls on a trace row's middle follow the code,
+// in some element.
+func (f *fieldLight) coded(q int) bool {
+	s, d := f.light.profile.Spectrograph, f.light.profile.DMD
+	w := int(math.Round(f.wMiddle + (float64(q)-s.YCenterPx)/s.WStepPx))
+	for u := f.first; u <= f.last; u++ {
+		column, row := f.onDevice(float64(u), float64(w))
+		if column >= 0 && row >= 0 && column <= float64(d.Columns-1) && row <= float64(d.Rows-1) && !f.shut(u, w) {
+			return true
+		}
+	}
+	return false
 }

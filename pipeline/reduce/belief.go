@@ -26,16 +26,8 @@ func isCondition(err error) bool {
 	return errors.As(err, &condition)
 }
 
-// What a night is taken to do until it is measured: each frame differs by
-// priorScatter, and the whole night's trend spans priorTrend from end to end, as the
-// airmass of a long visit and thin clouds make it.
-const (
-	priorScatter = 0.05
-	priorTrend   = 0.30
-)
-
 func newBelief(times []float64) *belief {
-	return &belief{mean: make([]float64, len(times)), covariance: hadamard.DefaultThroughputPrior(times, priorScatter, priorTrend)}
+	return &belief{mean: make([]float64, len(times)), covariance: hadamard.DefaultThroughputPrior(times, hadamard.NightScatter, hadamard.NightTrend)}
 }
 
 func (b *belief) clone() *belief {

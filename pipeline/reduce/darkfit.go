@@ -189,7 +189,7 @@ func (b *belief) ofCycle(c *cycle) (factor []float64, prior *mat.SymDense) {
 			case k >= 0 && m >= 0:
 				prior.SetSym(i, j, b.covariance.At(k, m)/(factor[i]*factor[j]))
 			case i == j:
-				prior.SetSym(i, j, priorScatter*priorScatter)
+				prior.SetSym(i, j, hadamard.NightScatter*hadamard.NightScatter)
 			}
 		}
 	}

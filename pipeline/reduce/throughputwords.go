@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"strings"
+
+	"mirrorloom/hadamard"
 )
 
 // The methods' names.
@@ -80,7 +82,7 @@ func (t *throughput) after() float64 {
 // was assumed, or better: beyond a level and a trend in time, which most scenes measure
 // however little they tell of single frames.
 func (t *throughput) measured() bool {
-	return t.belief.detrended(t.times) < priorScatter/2
+	return t.belief.detrended(t.times) < hadamard.NightScatter/2
 }
 
 // percent writes a part with two digits.
