@@ -56,6 +56,9 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
+	if v := summary.Visibility; v != nil && !v.Observable {
+		return nil, fmt.Errorf("%s: %s %s", o.Target, target.Name, v.Verdict)
+	}
 	if registration != nil {
 		summary.Pointing = pointingOf(registration, s)
 	}

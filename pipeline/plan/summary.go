@@ -37,6 +37,8 @@ type Summary struct {
 	// Airmass is that of the field's centre at the first and at the end of the
 	// last science step and the largest between; 0 below the horizon.
 	Airmass [3]float64 `json:"airmass"`
+	// Visibility says whether and when the field can be observed; nil without science steps.
+	Visibility *Visibility `json:"visibility,omitempty"`
 	// RefStar is the reference star; nil where none is planned.
 	RefStar *RefStar `json:"refstar,omitempty"`
 	// Pointing is where the telescope is to be sent, so that the field lies where the
@@ -125,11 +127,8 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	}
 	r.countTime(s)
 	r.Airmass = airmass(s)
-	if r.Airmass[0] == 0 || r.Airmass[1] == 0 || r.Airmass[2] == 0 {
-		r.warn("the field is below the horizon during science exposures; choose another start_utc")
-	} else if r.Airmass[2] > maxAirmass {
-		r.warn("the field's airmass reaches %.2f during science exposures", r.Airmass[2])
-	}
+	r.Visibility = look(s)
+	r.warnSky()
 	r.addRefStar(s)
 	r.Device = deviceOf(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
@@ -183,6 +182,16 @@ func (r *Summary) countTime(s *sequence.Sequence) {
 	}
 }
 
+// AirmassWords are the range in the science exposures, its first and its last; "" below the
+// horizon.
+func (r *Summary) AirmassWords() string {
+	v := r.Visibility
+	if v == nil || v.AirmassRange[1] == 0 {
+		return ""
+	}
+	return fmt.Sprintf("%.2f to %.2f in the science exposures (first %.2f, last %.2f)", v.AirmassRange[0], v.AirmassRange[1], r.Airmass[0], r.Airmass[1])
+}
+
 // frameBytes is the size of a raw frame on disk: 16 bits a pixel filled up to
 // whole FITS blocks, and a header of one block.
 func frameBytes(o *optics) float64 {
@@ -224,8 +233,11 @@ func (r *Summary) String() string {
 	}
 	b.WriteString(r.shortNightText())
 	fmt.Fprintf(&b, "time     %s to %s, reading included\n", r.StartUTC, r.EndUTC)
-	if r.Airmass[2] > 0 {
-		fmt.Fprintf(&b, "airmass  %.2f to %.2f, at most %.2f\n", r.Airmass[0], r.Airmass[1], r.Airmass[2])
+	if r.AirmassWords() != "" {
+		fmt.Fprintf(&b, "airmass  %s\n", r.AirmassWords())
+	}
+	if v := r.Visibility; v != nil {
+		fmt.Fprintf(&b, "sky      %s\n", v)
 	}
 	if p := r.Pointing; p != nil {
 		fmt.Fprintf(&b, "point    the telescope at RA %.6f, Dec %+.6f, position angle %.4f (degrees):\n", p.RADeg, p.DecDeg, p.RotangDeg)
