@@ -141,9 +141,24 @@ func (l *Light) Time(c Candidate) Time {
 	return t
 }
 
-// slitDwell is the dwell with which a slit scan of so many cycles takes scienceSeconds, 0 if
-// it cannot.
+// slitDwell is the dwell, in three digits, with which a slit scan of so many cycles takes
+// scienceSeconds, 0 if it cannot.
 func (l *Light) slitDwell(n, cycles int, scienceSeconds float64) float64 {
 	frames := n*cycles + allOff(l.target, n*cycles)
-	return max(0, scienceSeconds/float64(frames)-l.profile.OverheadS())
+	return max(0, FloorDigits(scienceSeconds/float64(frames)-l.profile.OverheadS()))
+}
+
+// FloorDigits rounds down to three digits.
+func FloorDigits(x float64) float64 {
+	if !(x > 0) {
+		return 0
+	}
+	unit := math.Pow(10, math.Floor(math.Log10(x))-2)
+	// A hair is added so that a number of three digits stays itself.
+	down := math.Floor(x/unit*(1+1e-12)) * unit
+	if unit < 1 { // as text has it: 0.1 has no exact power
+		inverse := math.Round(1 / unit)
+		down = math.Floor(x*inverse*(1+1e-12)) / inverse
+	}
+	return down
 }

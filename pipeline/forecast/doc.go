@@ -1,7 +1,7 @@
 // Package forecast tells before the night what S/N it will give: for a target with a
 // forecast, a profile and a candidate (code, elements, dwell, cycles), electrons in every
 // pixel, S/N of what is wanted by voxel, line and band, the brightest pixel, and the time;
-// and the same for a slit scan that takes as long.
+// and the same for a slit scan whose night takes as long.
 //
 // # Words
 //
@@ -39,8 +39,10 @@
 //
 // and the level's variance. Voxels take pixels with the weights of the reduction (rows
 // straightened, then wavelengths), so that a voxel's variance is the sum of squared
-// weights, and that of a sum over voxels counts pixels that several share. Scatter d of
-// the transmission adds hadamard.Design.ThroughputNoise, alike in all pixels of an element.
+// weights, and that of a sum over voxels counts pixels that several share. What is not
+// known of the frames' transmission behind its correction is that of reduce's own fit on the
+// forecast's light; it moves all pixels of a frame, so that it adds up over a sum (see sum.shaken),
+// and adds hadamard.Design.ThroughputNoise to a voxel.
 //
 // Not in it: calibration by lamps, faults, scattered light, the neighbour term, sentinel
 // rows (they are taken for closed), and sky subtraction, whose error is common to the field.

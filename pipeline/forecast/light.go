@@ -124,7 +124,9 @@ func (l *Light) Of(ctx context.Context, c Candidate) (*Result, error) {
 	if c.K == 1 {
 		return r, nil
 	}
-	r.Slit, err = l.slit(ctx, field, c.SlitScan(), t.ScienceSeconds)
+	slit := c.SlitScan()
+	slit.DwellSeconds, slit.Cycles = c.DwellSeconds, 1
+	r.Slit, err = l.slit(ctx, field, slit, t.TotalSeconds-l.Time(slit).CalibrationSeconds)
 	return r, err
 }
 

@@ -18,7 +18,8 @@ type Result struct {
 	// ThroughputRMS is the scatter of the frames' transmission that is left: what the
 	// target says, or what dark columns leave of it.
 	ThroughputRMS float64 `json:"throughput_rms"`
-	// Slit is the slit scan of the same elements in the same science time; nil where
+	// Slit is the slit scan of the same elements in the same night, its own calibrations
+	// included, as comparisons of candidates have it; nil where
 	// reading and loading alone take longer, and for a slit scan itself.
 	Slit *Slit `json:"slit_scan,omitempty"`
 }

@@ -1,6 +1,6 @@
 // Package nightsheet makes of a plan what an observer takes to the telescope: plan.html, two
-// pages of A4 in one file without scripts and without a network, and plan.json, all of it for
-// programs.
+// pages of A4 in one file without scripts and without a network, plan.json, all of it for
+// programs, and steps.csv, the steps in order with the files of their masks.
 //
 // # Words
 //

@@ -259,11 +259,14 @@ func (m *skyMap) key(l *layout, f *Footprint) {
 		}, 9)
 	}
 	if !math.IsInf(m.brightest, 0) {
+		if room := 2 + l.regular.Width(fmt.Sprintf("AB %.0f, %.0f, %.0f or fainter", m.brightest, m.brightest, m.brightest), labelPoints) + 3*21; x > 2 && x+room > m.width {
+			x, y = 2, y+11 // sizes stay on one line
+		}
 		for class := 0; class < brightClasses; class += 2 {
-			text := fmt.Sprintf("AB %.0f", m.brightest+classMagnitude*float64(class))
+			text := fmt.Sprintf("%.0f", m.brightest+classMagnitude*float64(class))
 			switch class {
 			case 0:
-				text = "source of " + text
+				text = "AB " + text
 			case brightClasses - 1:
 				text += " or fainter"
 			}

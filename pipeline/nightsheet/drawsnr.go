@@ -15,7 +15,7 @@ const (
 	snrHead   = 13
 	snrFoot   = 14
 	snrLeft   = 190
-	snrRight  = 200
+	snrRight  = 233
 	snrColumn = 33.3
 )
 
@@ -43,7 +43,7 @@ func (l *layout) drawSNR(width float64, n int) template.HTML {
 		}
 	}
 	s.Text("start", 0, height-4, "S/N, logarithmic: ● plan, ○ slit scan in the same time")
-	columns := []string{"plan", "slit", "ratio", "photons", "detector", "other"}
+	columns := []string{"plan", "slit", "ratio", "photons", "detector", "transm.", "other"}
 	for i, c := range columns {
 		s.Text("end", width-snrColumn*float64(len(columns)-1-i), 8, c)
 	}
@@ -91,7 +91,7 @@ func snrFigures(m, slit *forecast.Measure) []string {
 		return []string{"not seen"}
 	}
 	v := m.Variance
-	list := []string{snr(m.SNR), "–", "–", percent(v.Photons), percent(v.Detector), percent(max(0, 1-v.Photons-v.Detector))}
+	list := []string{snr(m.SNR), "–", "–", percent(v.Photons), percent(v.Detector), percent(v.Throughput), percent(max(0, 1-v.Photons-v.Detector-v.Throughput))}
 	if slit != nil && slit.SNR > 0 {
 		list[1], list[2] = snr(slit.SNR), fmt.Sprintf("%.2f", m.SNR/slit.SNR)
 	}

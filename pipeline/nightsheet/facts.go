@@ -23,10 +23,13 @@ func (s *Sheet) where() []fact {
 		fact{"Position angle", fmt.Sprintf("%s° (of the slit's direction, north through east)", number(s.Telescope.PositionAngleDeg))},
 		fact{"Night", fmt.Sprintf("%s to %s UTC, %s", s.StartUTC, clock(s.EndUTC, s.StartUTC), duration(s.Minutes))})
 	air := "the field is below the horizon during science exposures"
-	if a := s.Airmass; a[0] > 0 && a[1] > 0 && a[2] > 0 {
-		air = fmt.Sprintf("%.2f to %.2f in the science exposures, at most %.2f", a[0], a[1], a[2])
+	if w := s.AirmassWords(); w != "" {
+		air = w
 	}
 	list = append(list, fact{"Airmass", air})
+	if v := s.Visibility; v != nil {
+		list = append(list, fact{"Sky", v.Short()})
+	}
 	if r := s.RefStar; r != nil {
 		words := fmt.Sprintf("airmass %.2f to %.2f; %s", r.Airmass[0], r.Airmass[1], r.Name)
 		if star := s.sequence.Target.Calibration.RefStar; star != nil {
@@ -162,11 +165,7 @@ func (s *Sheet) noiseWords() string {
 	return fmt.Sprintf("variance of %s: %s", label(at), strings.Join(parts, ", "))
 }
 
-// warnings are all of the plan's and of the device's.
+// warnings are all of the plan's.
 func (s *Sheet) warnings() []string {
-	list := append([]string{}, s.Warnings...)
-	if s.Device != nil {
-		list = append(list, s.Device.Warnings...)
-	}
-	return list
+	return append([]string{}, s.Warnings...)
 }

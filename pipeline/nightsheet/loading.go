@@ -30,7 +30,7 @@ func loadingOf(s *sequence.Sequence) Loading {
 	if n := len(s.Steps); n > 0 {
 		l.First, l.Last = s.Steps[0].MaskID, s.Steps[n-1].MaskID
 	}
-	l.Words = fmt.Sprintf("Load from the folder %s, for each step in order, the file MASKID.png that column MASKID of table STEPS in sequence.fits (steps_in_order of %s) names, from %s (step 1) to %s (step %d): %d files of %d x %d mirrors, 1 bit each, white for on, the PNG's top left mirror the device's column 0 of row 0. Write STEP and MASKID into each frame's header.",
-		l.Folder, JSONFile, l.First, l.Last, len(s.Steps), l.Files, l.Columns, l.Rows)
+	l.Words = fmt.Sprintf("%s lists the steps in order, each with its start, lamp, exposure and the file of its mask (from %s.png to %s.png; so does table STEPS of sequence.fits): %d files in %s of %d x %d mirrors, 1 bit each, white for on, the PNG's top left mirror the device's column 0 of row 0. Write STEP and MASKID (the file's name) into each frame's header. To repeat a step, show its mask again with the same STEP at any time: of such frames the last one taken counts.",
+		StepsFile, l.First, l.Last, l.Files, l.Folder, l.Columns, l.Rows)
 	return l
 }

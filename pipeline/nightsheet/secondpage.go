@@ -2,6 +2,7 @@ package nightsheet
 
 import (
 	"fmt"
+	"math"
 
 	"mirrorloom/pipeline/plan"
 )
@@ -56,7 +57,7 @@ func (l *layout) sizes(p *page) {
 		p.SizesNote = "Whether they are enough cannot be said without a forecast of what is wanted: " + plannedWords(l.sheet) + "."
 		return
 	}
-	p.SizesNote = fmt.Sprintf("Needed: what keeps the noise that calibrations add, L/N of a level and R/E of lamp light (see the program's documentation), below %.0f %% of the forecast's. Bias and dark frames also show bad pixels, which this does not count.", 100*plan.MostAdded)
+	p.SizesNote = fmt.Sprintf("Needed: what keeps the noise that calibrations add below %.0f %% of the forecast's: that of the levels taken off falls with the number of frames, that of the responses with the lamp's light. Bias and dark frames also show bad pixels, which this does not count.", 100*plan.MostAdded)
 }
 
 // plannedWords lists the calibrations that are planned.
@@ -85,7 +86,7 @@ func (l *layout) device(p *page) float64 {
 	if d == nil {
 		return max(height, leastNotes)
 	}
-	p.DeviceNote = fmt.Sprintf("Half-angle of the beam %.2f°; lines of mirrors %.2f µm apart along the dispersion; an element is %.2f µm wide.", d.HalfAngleDeg, d.AcrossUM, d.ElementUM)
+	p.DeviceNote = fmt.Sprintf("Half-angle of the beam %.2f°; lines of mirrors %.2f µm apart along the dispersion; an element is %.2f µm wide. Spot: of a star, to its first dark ring. Order: of the mirrors as a grating, brightest where whole. Taken: the light that the pupil takes. Neighbour: what open neighbours change of each other's light. Leak: of closed mirrors, in parts of the field's light.", d.HalfAngleDeg, d.AcrossUM, d.ElementUM)
 	for _, a := range thinned(d.At, mostDevice) {
 		p.DeviceRows = append(p.DeviceRows, deviceRow{
 			fmt.Sprintf("%.1f", a.WavelengthNM), fmt.Sprintf("%.1f", a.SpotUM), fmt.Sprintf("%.0f %%", 100*a.SpotInElement), fmt.Sprintf("%.2f", a.BlazeOrder),
@@ -96,14 +97,43 @@ func (l *layout) device(p *page) float64 {
 	return max(height, leastNotes)
 }
 
-// thinned keeps n of a list, the first and the last among them.
+// thinned keeps n of a list: the ends, what the warnings speak of (peaks of orders, the largest
+// effect of neighbours), then others spread evenly.
 func thinned(list []plan.DeviceAt, n int) []plan.DeviceAt {
 	if len(list) <= n {
 		return list
 	}
-	var kept []plan.DeviceAt
+	keep := map[int]bool{}
+	add := func(i int) {
+		if len(keep) < n {
+			keep[i] = true
+		}
+	}
+	add(0)
+	add(len(list) - 1)
+	strongest := 0
+	for i, a := range list {
+		if math.Abs(a.Neighbour) > math.Abs(list[strongest].Neighbour) {
+			strongest = i
+		}
+	}
+	add(strongest)
+	for i, a := range list {
+		if math.Abs(a.BlazeOrder-math.Round(a.BlazeOrder)) < 0.005 {
+			add(i)
+		}
+	}
 	for i := range n {
-		kept = append(kept, list[i*(len(list)-1)/(n-1)])
+		add(i * (len(list) - 1) / (n - 1))
+	}
+	for i := range list {
+		add(i)
+	}
+	var kept []plan.DeviceAt
+	for i, a := range list {
+		if keep[i] {
+			kept = append(kept, a)
+		}
 	}
 	return kept
 }
@@ -130,7 +160,7 @@ func (l *layout) steps(p *page, height float64) {
 			number(r.Dwell), clock(r.StartUTC, s.StartUTC), fmt.Sprintf("%.1f", r.Minutes),
 		})
 	}
-	p.TableNote = fmt.Sprintf("Start: UTC, when all goes as planned. Each step by itself, with its MASKID, is in table STEPS of sequence.fits and in %s.", JSONFile)
+	p.TableNote = fmt.Sprintf("Start: UTC, when all goes as planned. Each step by itself, with its MASKID, and the file of its mask, is in %s.", StepsFile)
 	if left > 0 {
 		p.TableNote = fmt.Sprintf("%d more lines in %s. %s", left, JSONFile, p.TableNote)
 	}

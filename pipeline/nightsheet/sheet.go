@@ -16,6 +16,8 @@ import (
 const (
 	HTMLFile = "plan.html"
 	JSONFile = "plan.json"
+	// StepsFile lists the steps in order, a line each with the file of its mask.
+	StepsFile = "steps.csv"
 )
 
 // Schema is the number of plan.json's form: it grows where a key changes its meaning or goes.
@@ -73,7 +75,7 @@ func (s *Sheet) Sequence() *sequence.Sequence { return s.sequence }
 // seconds is the length of the night.
 func (s *Sheet) seconds() float64 { return s.Minutes * 60 }
 
-// Write makes the sheet and writes its two files into the sequence's folder. It is what
+// Write makes the sheet and writes its three files into the sequence's folder. It is what
 // plan.Options.Sheet wants.
 func Write(dir string, s *sequence.Sequence, r *plan.Summary) error {
 	sheet, err := Make(s, r)
@@ -83,7 +85,7 @@ func Write(dir string, s *sequence.Sequence, r *plan.Summary) error {
 	for _, f := range []struct {
 		name  string
 		write func(io.Writer) error
-	}{{JSONFile, sheet.WriteJSON}, {HTMLFile, sheet.WriteHTML}} {
+	}{{JSONFile, sheet.WriteJSON}, {StepsFile, sheet.WriteSteps}, {HTMLFile, sheet.WriteHTML}} {
 		if err := fitsutil.WriteAtomic(filepath.Join(dir, f.name), f.write); err != nil {
 			return fmt.Errorf("writing the night sheet: %w", err)
 		}

@@ -38,7 +38,11 @@ func verdict(r *plan.Summary) string {
 	default:
 		text = fmt.Sprintf("Multiplexing does not pay here: %s gives only %.2f times the S/N of %s that a slit scan gives in the same time", trade.Name(row.Candidate), row.OverSlit, aim(r.Trade))
 	}
-	return text + better(r.Trade, row) + "."
+	text += better(r.Trade, row) + "."
+	if v := r.Visibility; v != nil && v.Verdict != "" {
+		text = "Not all of this plan can be observed: " + v.Verdict + ". " + text
+	}
+	return text
 }
 
 // planned is the row that is chosen, or the given one; nil for neither.

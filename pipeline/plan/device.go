@@ -29,8 +29,8 @@ type Device struct {
 	// PeakCount how many those are in all: at most 8 are listed.
 	Peaks     []OrderPeak `json:"order_peaks"`
 	PeakCount int         `json:"order_peak_count"`
-	// Warnings are about the device; other ones are in Summary.
-	Warnings []string `json:"warnings"`
+	// Warnings are about the device; Summary has them among all.
+	Warnings []string `json:"-"`
 }
 
 // DeviceAt is the device at a wavelength.
@@ -236,13 +236,12 @@ func (d *Device) String() string {
 	var b strings.Builder
 	fmt.Fprintf(&b, "device   half-angle of the beam %.2f degrees; lines of mirrors %.2f um apart along the dispersion,\n", d.HalfAngleDeg, d.AcrossUM)
 	fmt.Fprintf(&b, "         %.2f um along the tilt; an element is %.2f um wide\n\n", d.TiltPeriodUM, d.ElementUM)
-	fmt.Fprintf(&b, "%9s %8s %10s %6s %6s %10s %9s %9s\n", "nm", "spot um", "in element", "order", "taken", "neighbour", "contrast", "pedestal")
+	fmt.Fprintf(&b, "%9s %8s %10s %6s %6s %10s %9s %9s\n", "nm", "spot um", "in element", "order", "taken", "neighbour", "contrast", "leak")
 	for _, a := range d.At {
 		fmt.Fprintf(&b, "%9.1f %8.2f %8.1f %% %6.2f %4.0f %% %+8.2f %% %9.0f %9.1e\n", a.WavelengthNM, a.SpotUM, 100*a.SpotInElement, a.BlazeOrder, 100*a.Taken, 100*a.Neighbour, a.Contrast, a.Pedestal)
 	}
-	b.WriteString("\n")
-	for _, w := range d.Warnings {
-		fmt.Fprintf(&b, "warning  %s\n", w)
-	}
+	b.WriteString("\nspot: of a star, to its first dark ring; order: of the mirrors as a grating, brightest where whole; taken: the\n" +
+		"light that the pupil takes; neighbour: what open neighbours change of each other's light; leak: of closed mirrors,\n" +
+		"in a decoded element, in parts of the whole field's light\n\n")
 	return b.String()
 }

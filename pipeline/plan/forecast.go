@@ -19,6 +19,7 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	if err != nil {
 		return err
 	}
+	r.scatter = s.Target.Forecast.ThroughputRMS
 	r.Forecast, err = light.Of(ctx, forecast.CandidateOf(s))
 	if err != nil {
 		return err
@@ -31,6 +32,7 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 			r.warn("%s is not seen by this plan: it lies beyond the field, or its wavelengths beyond the detector", m.Name)
 		}
 	}
+	r.warnFaint(s)
 	return nil
 }
 
@@ -61,6 +63,16 @@ func (r *Summary) warnCycle(s *sequence.Sequence, chosen bool) error {
 	return nil
 }
 
+// gainsMore tells whether something wanted gains more over the slit scan than read noise does.
+func (r *Summary) gainsMore() bool {
+	for i, m := range r.Forecast.Wanted {
+		if s := r.Forecast.Slit; s != nil && s.Wanted[i].SNR > 0 && m.SNR > r.ReadNoiseGain*s.Wanted[i].SNR {
+			return true
+		}
+	}
+	return false
+}
+
 // sourceWords names what gives most of a pixel's light.
 func sourceWords(s forecast.Saturation) string {
 	if s.Source < 0 {
@@ -76,19 +88,27 @@ func (r *Summary) forecastText() string {
 		return ""
 	}
 	var b strings.Builder
-	fmt.Fprintf(&b, "\n%-20s %18s %9s %9s %9s %9s\n", "wanted", "nm", "e", "S/N", "a voxel", "slit scan")
+	fmt.Fprintf(&b, "\n%-20s %18s %9s %9s %9s %9s %9s %9s %7s\n", "wanted", "nm", "e", "S/N", "a voxel", "slit scan", "photons", "detector", "transm.")
 	for i, m := range f.Wanted {
 		slit := "-"
 		if f.Slit != nil {
 			slit = fmt.Sprintf("%.1f", f.Slit.Wanted[i].SNR)
 		}
-		fmt.Fprintf(&b, "%-20s %8.2f to %6.2f %9.0f %9.1f %9.2f %9s\n", m.Name, m.FromNM, m.ToNM, m.Signal, m.SNR, m.VoxelSNR, slit)
+		v := m.Variance
+		fmt.Fprintf(&b, "%-20s %8.2f to %6.2f %9.0f %9.1f %9.2f %9s %7.0f %% %7.0f %% %5.0f %%\n", m.Name, m.FromNM, m.ToNM, m.Signal, m.SNR, m.VoxelSNR, slit, 100*v.Photons, 100*v.Detector, 100*v.Throughput)
 	}
 	at := f.Saturation
 	fmt.Fprintf(&b, "\nbrightest pixel %.0f e of %.0f, %.0f %% from %s", at.Electrons, at.Limit, 100*at.SourceFraction, sourceWords(at))
 	if f.Slit != nil {
-		fmt.Fprintf(&b, "; slit scan of %d x %.1f s in the same time", f.Slit.Candidate.N*f.Slit.Candidate.Cycles, f.Slit.Candidate.DwellSeconds)
+		fmt.Fprintf(&b, "; slit scan of %d x %.4g s in the same night", f.Slit.Candidate.N*f.Slit.Candidate.Cycles, f.Slit.Candidate.DwellSeconds)
 	}
-	b.WriteString("\n\n")
+	b.WriteString("\n")
+	if d := r.scatter; d > 0 && f.Candidate.K > 1 {
+		fmt.Fprintf(&b, "the frames' transmission, of %.2g %% scatter, is known to %.2g %% behind the correction\n", 100*d, 100*f.ThroughputRMS)
+		if r.gainsMore() {
+			fmt.Fprintf(&b, "gains over the slit scan above the %.2f of read noise are its frames': nothing tells their scatter from light, so that it stays\n", r.ReadNoiseGain)
+		}
+	}
+	b.WriteString("\n")
 	return b.String()
 }

@@ -97,6 +97,9 @@ func Build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 	if err := target.Check(); err != nil {
 		return nil, nil, err
 	}
+	if err = checkLamps(target); err != nil {
+		return nil, nil, err
+	}
 	if target, err = withFieldRows(target, profile); err != nil {
 		return nil, nil, err
 	}

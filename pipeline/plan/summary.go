@@ -67,6 +67,8 @@ type Summary struct {
 	Masks       int      `json:"masks"`
 	SequenceSHA string   `json:"sequence_sha256"`
 	Warnings    []string `json:"warnings"`
+
+	scatter float64 // of the frames' transmission, as the target says
 }
 
 // Code is the code of a plan.
@@ -131,6 +133,8 @@ func summarize(s *sequence.Sequence, code *hadamard.Code, dark hadamard.DarkSet,
 	r.warnSky()
 	r.addRefStar(s)
 	r.Device = deviceOf(s)
+	r.Warnings = append(r.Warnings, r.Device.Warnings...)
+	r.warnTimes(s)
 	r.Gigabytes = float64(len(s.Steps)) * frameBytes(o) / 1e9
 	return r
 }
@@ -206,10 +210,10 @@ func (r *Summary) String() string {
 	var b strings.Builder
 	c := r.Code
 	fmt.Fprintf(&b, "target   %s with %s\n", r.Target, r.Profile)
-	fmt.Fprintf(&b, "code     %s, v = %d, k = %d, l = %d, %s order, cycles %d\n", c.Family, c.V, c.K, c.L, c.Order, c.Cycles)
+	fmt.Fprintf(&b, "code     %s of v = %d columns, k = %d open at once, l = %d of them in any two steps; %s order, cycles %d\n", c.Family, c.V, c.K, c.L, c.Order, c.Cycles)
 	fmt.Fprintf(&b, "field    %d elements of %d mirrors, %.1f x %.1f arcsec\n", c.Elements, c.ElementMirrors, r.FieldArcsec[0], r.FieldArcsec[1])
 	if len(c.DarkColumns) > 0 {
-		fmt.Fprintf(&b, "dark     %d columns, largest correlation %.3f\n", len(c.DarkColumns), c.DarkCorrelation)
+		fmt.Fprintf(&b, "dark     %d columns; the marks of two steps on them are alike by %.3f at most (1: not to be told apart)\n", len(c.DarkColumns), c.DarkCorrelation)
 	}
 	if r.ReadNoiseGain > 0 {
 		fmt.Fprintf(&b, "gain     over a slit scan in equal time: %.2f where read noise rules;\n", r.ReadNoiseGain)

@@ -213,6 +213,23 @@ func (v *Visibility) String() string {
 	return fmt.Sprintf("%s; in the science exposures the sun is at %.0f degrees at most and %s", v.windowWords(), v.SunDeg, moon)
 }
 
+// Short is String with times of day alone, for the night sheet.
+func (v *Visibility) Short() string {
+	clock := func(utc string) string { return utc[len("2006-01-02T") : len(utc)-1] }
+	text := "never rises"
+	if v.TransitAirmass > 0 {
+		text = fmt.Sprintf("transit %s (airmass %.2f)", clock(v.TransitUTC), v.TransitAirmass)
+	}
+	if v.Window[0] != "" {
+		text += fmt.Sprintf(", below %d from %s to %s UTC", maxAirmass, clock(v.Window[0]), clock(v.Window[1]))
+	}
+	moon := "moon down"
+	if v.Moon.AltitudeDeg > 0 {
+		moon = fmt.Sprintf("moon to %.0f°, %.0f %% lit, %.0f° away", v.Moon.AltitudeDeg, 100*v.Moon.Lit, v.Moon.AwayDeg)
+	}
+	return fmt.Sprintf("%s; sun at %.0f° at most, %s", text, v.SunDeg, moon)
+}
+
 // warnSky warns of what the sky does to a plan that can be observed.
 func (r *Summary) warnSky() {
 	v := r.Visibility
@@ -232,6 +249,6 @@ func (r *Summary) warnSky() {
 		r.warn("science exposures fall in the last twilight, the sun %.0f degrees below the horizon at the least: the sky is brighter than by night", -v.SunDeg)
 	}
 	if m := v.Moon; m.AltitudeDeg > 0 && m.Lit > brightMoon {
-		r.warn("the moon is up, at most %.0f degrees high, %.0f %% lit and %.0f degrees from the field, within a degree: a forecast's sky must have its light", m.AltitudeDeg, 100*m.Lit, m.AwayDeg)
+		r.warn("the moon is up, at most %.0f degrees high, %.0f %% lit and %.0f degrees from the field: a forecast's sky must have its light", m.AltitudeDeg, 100*m.Lit, m.AwayDeg)
 	}
 }

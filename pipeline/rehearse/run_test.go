@@ -138,8 +138,12 @@ func TestRefusals(t *testing.T) {
 	p := smallProfile(t, "optical")
 	seq := planned(t, p, smallTarget(p))
 	scene := smallScene(580)
-	lamp := smallTarget(p)
-	lamp.Calibration.Arc.Lamp = "Krypton"
+	lamp := planned(t, p, smallTarget(p)) // plan itself refuses such a lamp
+	for i := range lamp.Steps {
+		if lamp.Steps[i].Kind == sequence.Arc {
+			lamp.Steps[i].Lamp = "Krypton"
+		}
+	}
 	dark := smallTarget(p)
 	dark.Calibration.Arc.Lamp = "Ar"
 	bad := *scene
@@ -156,7 +160,7 @@ func TestRefusals(t *testing.T) {
 		{seq, scene, Options{Faults: []Fault{{"stale", 15}}}, "fault stale=15: the sequence has 14 science frames that it can befall; give a smaller number"},
 		{seq, scene, Options{Faults: []Fault{{"drift", 0.1}, {"drift", 0.2}}}, "fault drift is given twice; give it once"},
 		{seq, &bad, Options{}, "scene: seeing_fwhm_arcsec: 0 is not above 0; give a positive number"},
-		{planned(t, p, lamp), scene, Options{}, `lamp "Krypton" is unknown; name one of continuum, halogen, or elements of the list like Ne or NeAr`},
+		{lamp, scene, Options{}, `lamp "Krypton" is unknown; name one of continuum, halogen, or elements of the list like Ne or NeAr`},
 		{planned(t, p, dark), scene, Options{}, `lamp "Ar" has no line in the band of profile optical; choose another lamp`},
 	} {
 		_, err := Run(context.Background(), c.seq, c.scene, c.opts, t.TempDir(), nil)

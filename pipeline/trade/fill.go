@@ -3,7 +3,6 @@ package trade
 import (
 	"context"
 	"fmt"
-	"math"
 
 	"mirrorloom/pipeline/forecast"
 )
@@ -62,22 +61,7 @@ func (w *weighing) dwell(c forecast.Candidate) float64 {
 	t := w.Light.Time(c)
 	frames := float64(t.Steps + t.AllOff)
 	overhead := t.ScienceSeconds/frames - c.DwellSeconds
-	return floorDigits((w.budget-t.CalibrationSeconds)/frames - overhead)
-}
-
-// floorDigits rounds down to three digits.
-func floorDigits(x float64) float64 {
-	if !(x > 0) {
-		return 0
-	}
-	unit := math.Pow(10, math.Floor(math.Log10(x))-2)
-	// A hair is added so that a number of three digits stays itself.
-	down := math.Floor(x/unit*(1+1e-12)) * unit
-	if unit < 1 { // as text has it: 0.1 has no exact power
-		inverse := math.Round(1 / unit)
-		down = math.Floor(x*inverse*(1+1e-12)) / inverse
-	}
-	return down
+	return forecast.FloorDigits((w.budget-t.CalibrationSeconds)/frames - overhead)
 }
 
 // forCycle raises the cycles until one is short enough; false where none is.
@@ -130,7 +114,7 @@ func (w *weighing) fixed(ctx context.Context, c forecast.Candidate) (Row, error)
 			fmt.Sprintf("forecast.limits.total_s of %s, or a shorter dwell_s", seconds(row.TotalSeconds)))
 	case row.Full >= 1:
 		row.breaks(BreachSaturation, fmt.Sprintf("its brightest pixel saturates after %s", seconds(row.LongestDwellSeconds)),
-			fmt.Sprintf("dwell_s of %s", seconds(floorDigits(Fullest*row.LongestDwellSeconds))))
+			fmt.Sprintf("dwell_s of %s", seconds(forecast.FloorDigits(Fullest*row.LongestDwellSeconds))))
 	default:
 		w.bounds(&row)
 	}
@@ -146,7 +130,7 @@ func (w *weighing) fits(cycles int, c forecast.Candidate) bool {
 // that they fill the time, or in one cycle less, the time not filled; what gives more.
 func (w *weighing) shorter(ctx context.Context, full Row) (Row, error) {
 	c := full.Candidate
-	longest := floorDigits(Fullest * full.LongestDwellSeconds)
+	longest := forecast.FloorDigits(Fullest * full.LongestDwellSeconds)
 	if longest < shortestDwell {
 		full.breaks(BreachSaturation, fmt.Sprintf("its brightest pixel saturates after %s", seconds(full.LongestDwellSeconds)),
 			"closed mirrors on the brightest source, or a sparser code")

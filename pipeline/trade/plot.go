@@ -45,7 +45,7 @@ func (t *Trade) WritePlot(w io.Writer) (err error) {
 	for _, shade := range shades {
 		kinds[shade] = make(plotter.Values, len(drawn))
 	}
-	slit := 0.0
+	slit, longest := 0.0, 0.0
 	for i := range drawn {
 		r := drawn[len(drawn)-1-i] // the first lies lowest
 		shade := color.Color(codeBar)
@@ -59,6 +59,7 @@ func (t *Trade) WritePlot(w io.Writer) (err error) {
 			slit = max(slit, r.Figure)
 		}
 		kinds[shade][i] = r.Figure
+		longest = max(longest, r.Figure)
 		names = append(names, r.label())
 	}
 	for _, shade := range shades {
@@ -78,10 +79,14 @@ func (t *Trade) WritePlot(w io.Writer) (err error) {
 		p.Add(line)
 	}
 	p.NominalY(names...)
-	p.X.Min = 0
+	// Room at the bars' ends, and half a row above the first and below the last.
+	p.X.Min, p.X.Max = 0, 1.04*max(longest, 1e-9)
+	p.Y.Min, p.Y.Max = -0.9, float64(len(drawn))-0.1
 	// With its font inside, since a reader's other one may be wider than the room for it.
 	canvas := vgsvg.NewWith(vgsvg.UseWH(8*vg.Inch, vg.Points(70+14*float64(len(drawn)))), vgsvg.EmbedFonts(true))
-	p.Draw(draw.New(canvas))
+	// The widths of the library's font are a little less than the drawn ones.
+	const margin = 0.35
+	p.Draw(draw.Crop(draw.New(canvas), margin*vg.Inch, -vg.Points(8), vg.Points(4), -vg.Points(4)))
 	_, err = canvas.WriteTo(w)
 	return err
 }

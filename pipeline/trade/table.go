@@ -29,6 +29,7 @@ func (t *Trade) String() string {
 	if left > 0 {
 		fmt.Fprintf(&b, "and %d more in trade.csv\n", left)
 	}
+	b.WriteString("slit = 1: over the S/N of the slit scan in the same time; full: the brightest pixel over its saturation\n")
 	if r := t.planned(); r != nil && r.CycleLimit.Rule != RuleNone {
 		fmt.Fprintf(&b, "\n%s\n", upper(r.CycleLimit.String()))
 	}

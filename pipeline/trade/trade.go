@@ -115,11 +115,20 @@ func Compare(ctx context.Context, r Request) (*Trade, error) {
 		if err != nil {
 			return nil, err
 		}
-		t.Rows = append(t.Rows, rows...)
+		for _, row := range rows {
+			if own := t.Own(); own == nil || !same(own.Candidate, row.Candidate) {
+				t.Rows = append(t.Rows, row)
+			}
+		}
 	}
 	t.sort()
 	t.overSlit()
 	return t, nil
+}
+
+// same tells whether two candidates are one.
+func same(a, b forecast.Candidate) bool {
+	return a.Family == b.Family && a.V == b.V && a.N == b.N && a.ElementMirrors == b.ElementMirrors && a.Cycles == b.Cycles && a.DwellSeconds == b.DwellSeconds && len(a.Closed) == 0 && len(b.Closed) == 0
 }
 
 // Best is the first row within the limits that is not the given one, nil for none.
