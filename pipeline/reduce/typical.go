@@ -1,6 +1,11 @@
 package reduce
 
-import "gonum.org/v1/gonum/mat"
+import (
+	"errors"
+	"slices"
+
+	"gonum.org/v1/gonum/mat"
+)
 
 // Scatters and spans of trends that a night may have, the widest first.
 var (
@@ -8,9 +13,13 @@ var (
 	typicalTrends   = []float64{priorTrend, 0.05}
 )
 
+// decisive is by how much the logarithm of one's likelihood must exceed a wider one's, odds of
+// 150: a scene that tells nothing leaves the widest.
+const decisive = 5
+
 // typical is what frames of such times are taken to do, before each is measured: of some
-// scatters and trends the one under which what the dark columns of all cycles say is
-// likeliest. One that is too wide would answer with noise where the scene tells little.
+// scatters and trends the widest that is about as likely as any, by what the dark columns of
+// all cycles say. One that is too wide would answer with noise where the scene tells little.
 func (d *darkFit) typical(times []float64) (*belief, error) {
 	var all []*belief
 	for _, scatter := range typicalScatters {
@@ -32,11 +41,11 @@ func (d *darkFit) typical(times []float64) (*belief, error) {
 			likely[m] += x
 		}
 	}
-	best := 0
+	most := slices.Max(likely)
 	for m, x := range likely {
-		if x > likely[best] {
-			best = m
+		if x >= most-decisive {
+			return all[m], nil
 		}
 	}
-	return all[best], nil
+	return nil, errors.New("internal error: no scatter is likely")
 }
