@@ -43,6 +43,7 @@ type prepare struct {
 	recipe  DetectorRecipe
 	workers int
 	memory  int64 // for buffers
+	traffic *fitsutil.Traffic
 }
 
 // deadMargin are the rows beyond a strip that the search for dead pixels needs.
@@ -63,6 +64,7 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 		return 0, err
 	}
 	defer out.Abort()
+	out.CountInto(p.traffic)
 	h := p.height()
 	for y0 := 0; y0 < p.camera.Rows; y0 += h {
 		y1 := min(y0+h, p.camera.Rows)

@@ -8,6 +8,7 @@ import (
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/report"
 )
 
 // rectifier takes decoded rows to voxels: along the trace by calib.RowShift,
@@ -362,6 +363,17 @@ func (o *outStrip) begin(s shape, y0, h int) {
 	o.y0, o.h = y0, h
 	n := h * s.elements * s.voxels
 	o.signal, o.variance, o.flags, o.scale = o.signal[:n], o.variance[:n], o.flags[:n], o.scale[:n]
+}
+
+// addLight has the report look at a row; nothing for no light.
+func (o *outStrip) addLight(light *report.Light, row int, s shape) {
+	if light == nil {
+		return
+	}
+	for l := range s.voxels {
+		at := (l*o.h + row) * s.elements
+		light.AddRow(o.y0+row, o.signal[at:at+s.elements], o.flags[at:at+s.elements])
+	}
 }
 
 // write hands the strip to the cube.
