@@ -49,6 +49,7 @@ func checks() []check {
 		restoreLost(),
 		residualLight(),
 		errorScale(),
+		stuckMirrors(),
 		allFaults(),
 		apertures(),
 		lineMaps(),

@@ -8,8 +8,9 @@ import (
 // one science exposure's units.
 type pixelNoise struct {
 	// own is the element's variance by part, throughput aside; own.Level is common to all
-	// elements.
-	own Parts
+	// elements, and level what it is made of.
+	own   Parts
+	level Levels
 	// light, overlap and leak are the electrons of the element, of all elements, and of all
 	// mirrors when closed.
 	light, overlap, leak float64
@@ -32,11 +33,11 @@ func (w *window) at(x, y int) int { return (y-w.y0)*(w.x1-w.x0+1) + x - w.x0 }
 func (w *window) empty() bool     { return w.y1 < w.y0 || w.x1 < w.x0 }
 
 // measure is the forecast of a measurement; each, if not nil, is called for its voxels.
-func (l *Light) measure(f *fieldLight, c Candidate, throughput float64, index int, each func(Voxel)) Measure {
+func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each func(Voxel)) Measure {
 	w := &l.wanted[index]
-	m := Measure{Name: w.name, FromNM: w.fromNM, ToNM: w.toNM}
+	m := Measure{Name: w.name, Line: w.line, FromNM: w.fromNM, ToNM: w.toNM}
 	cells := l.cells(w, c)
-	s := newSum(l, f, c, throughput, w, cells)
+	s := newSum(l, f, c, of, w, cells)
 	for i := 0; i < len(cells); {
 		end := i
 		for end < len(cells) && cells[end].element == cells[i].element {
@@ -61,7 +62,9 @@ type sum struct {
 	voxels     float64
 	snr, count float64 // of voxels, by weight
 	signal     float64
-	variance   Parts // in electrons squared
+	channels   []channelSum
+	variance   Parts  // in electrons squared
+	levels     Levels // those of variance
 	electrons  Electrons
 	weight     float64 // of electrons
 	// Per pixel of all elements: the weights, their squares, weights times light, squares
@@ -70,12 +73,16 @@ type sum struct {
 	window window
 }
 
+// channelSum adds up the voxels of a wavelength.
+type channelSum struct{ snr, count float64 }
+
 // overlapped is what elements share of a pixel.
 type overlapped struct{ weight, square, light, squareLight, overlap float64 }
 
-func newSum(l *Light, f *fieldLight, c Candidate, throughput float64, w *wanted, cells []cell) *sum {
-	s := &sum{light: l, field: f, candidate: c, noise: newNoiseModel(l, f, c, throughput), wanted: w}
+func newSum(l *Light, f *fieldLight, c Candidate, of taken, w *wanted, cells []cell) *sum {
+	s := &sum{light: l, field: f, candidate: c, noise: newNoiseModel(l, f, c, of), wanted: w}
 	s.first, s.parts = l.channels(w)
+	s.channels = make([]channelSum, len(s.parts))
 	s.window = window{y0: math.MaxInt, y1: -1, x1: l.camera.columns - 1}
 	for _, k := range cells {
 		y0, y1 := l.rows.Span(k.row)
@@ -90,7 +97,7 @@ func newSum(l *Light, f *fieldLight, c Candidate, throughput float64, w *wanted,
 // edges are those of the channels of an element on a row, in detector x; ok tells whether the
 // detector holds them.
 func (s *sum) edges(j, row int) (edges []float64, ok bool) {
-	g := s.light.geometry(s.candidate.N, s.candidate.ElementMirrors)
+	g := s.light.geometry(s.candidate)
 	edges = make([]float64, len(s.parts)+1)
 	g.EdgesXAt(edges, float64(j), float64(row), s.light.edgesNM[s.first:s.first+len(edges)])
 	a, b := edges[0], edges[len(edges)-1]
@@ -98,6 +105,13 @@ func (s *sum) edges(j, row int) (edges []float64, ok bool) {
 		a, b = b, a
 	}
 	return edges, a >= -0.5 && b <= float64(s.light.camera.columns)-0.5
+}
+
+// columns are the first and the last that voxels with these edges take light from.
+func (s *sum) columns(edges []float64) (x0, x1 int) {
+	const reach = 9 // pixels that a voxel's weights reach beyond its edges
+	a, b := min(edges[0], edges[len(edges)-1]), max(edges[0], edges[len(edges)-1])
+	return max(int(a)-reach, 0), min(int(b)+reach, s.light.camera.columns-1)
 }
 
 // element adds the cells of one element.
@@ -111,9 +125,8 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 		if !ok {
 			continue
 		}
-		const reach = 9 // pixels that a voxel's weights reach beyond its edges
-		a, b := min(edges[0], edges[len(edges)-1]), max(edges[0], edges[len(edges)-1])
-		win.x0, win.x1 = min(win.x0, max(int(a)-reach, 0)), max(win.x1, min(int(b)+reach, s.light.camera.columns-1))
+		x0, x1 := s.columns(edges)
+		win.x0, win.x1 = min(win.x0, x0), max(win.x1, x1)
 		y0, y1 := s.light.rows.Span(k.row)
 		win.y0, win.y1 = min(win.y0, y0), max(win.y1, y1)
 		kept, all = append(kept, k), append(all, edges)
@@ -140,6 +153,7 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 			s.variance.Dark += square * n.own.Dark
 			s.variance.Leak += square * n.own.Leak
 			s.variance.Level += square * n.own.Level
+			s.levels.add(square, &n.level)
 			scatter += g * n.scatter
 			s.pixel(g, n)
 			o := &s.pixels[s.window.at(x, y)]
@@ -155,12 +169,8 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 
 // cell adds the voxels of a cell.
 func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, weights []float64, each func(Voxel)) {
-	l, dwell := s.light, s.candidate.DwellSeconds
-	own, light := make([]float64, win.x1-win.x0+1), make([]float64, win.x1-win.x0+1)
-	s.field.element(own, k.element, k.row, win.x0, s.wanted.of, s.wanted.line)
-	if each != nil {
-		s.field.element(light, k.element, k.row, win.x0, func(int) bool { return true }, false)
-	}
+	l := s.light
+	light := newCellLight(s.field, s.wanted, s.candidate, k, win.x0, win.x1, each != nil)
 	var buffer []float32
 	for i, part := range s.parts {
 		var first int
@@ -173,8 +183,7 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 				continue
 			}
 			wx := float64(across)
-			v.Wanted += wx * own[x-win.x0] * dwell
-			v.Light += wx * light[x-win.x0] * dwell
+			light.add(&v, x, wx)
 			row, along := l.rows.Weights(k.row, x)
 			for d, wy := range along {
 				if y := row + d; wy != 0 && y >= win.y0 && y <= win.y1 {
@@ -191,6 +200,8 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 		if v.Sigma > 0 {
 			s.snr += v.Weight * v.Wanted / v.Sigma
 			s.count += v.Weight
+			s.channels[i].snr += v.Weight * v.Wanted / v.Sigma
+			s.channels[i].count += v.Weight
 		}
 		if each != nil {
 			each(v)
@@ -209,9 +220,12 @@ func (s *sum) pixel(weight float64, n *pixelNoise) {
 
 // finish adds what elements share and makes the measure.
 func (s *sum) finish(m *Measure) {
+	response := 0.0
 	for y := s.window.y0; y <= s.window.y1; y++ {
 		for x := s.window.x0; x <= s.window.x1; x++ {
-			s.noise.addShared(&s.variance, x, y, &s.pixels[s.window.at(x, y)])
+			o := &s.pixels[s.window.at(x, y)]
+			s.noise.addShared(&s.variance, &s.levels, x, y, o)
+			response += o.light * o.light
 		}
 	}
 	m.Voxels, m.Signal = s.voxels, s.signal
@@ -223,8 +237,16 @@ func (s *sum) finish(m *Measure) {
 		for _, v := range []*float64{&p.Photons, &p.Detector, &p.Dark, &p.Leak, &p.Level, &p.Throughput} {
 			*v /= total
 		}
+		s.levels.scale(1 / total)
 	}
-	m.Variance = *p
+	m.Variance, m.Levels, m.ResponseSigma = *p, s.levels, math.Sqrt(response)/100
+	m.Spectrum = []Channel{}
+	for i, c := range s.channels {
+		if c.count > 0 {
+			nm := (s.light.edgesNM[s.first+i] + s.light.edgesNM[s.first+i+1]) / 2
+			m.Spectrum = append(m.Spectrum, Channel{nm, c.snr / c.count})
+		}
+	}
 	if s.count > 0 {
 		m.VoxelSNR = s.snr / s.count
 	}

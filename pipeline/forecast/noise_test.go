@@ -28,7 +28,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 		g.Calibration, g.AllOffEvery = frames, allOffEvery
 	})
 	c.DwellSeconds, c.ElementMirrors = 1, 1
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	require.NoError(t, err)
 	f := l.field(c, sight{})
 	for q := -20; q < l.profile.Detector.Rows+20; q++ {
@@ -37,7 +37,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 			r.overlap[x], r.leak[x] = overlap, 0
 		}
 	}
-	return newNoiseModel(l, f, c, 0)
+	return newNoiseModel(l, f, c, taken{cycles: float64(c.Cycles)})
 }
 
 // The CCD equation's worked value: N* = 10000 in 10 pixels with sky 50, dark 2 and read
@@ -53,7 +53,7 @@ func TestCCDEquation(t *testing.T) {
 	}
 	require.InEpsilon(t, 96.358970, star/math.Sqrt(variance), 1e-7)
 	// Four cycles, each as long: SIGNAL is their mean.
-	n.candidate.Cycles = 4
+	n.cycles = 4
 	p := n.at(300, 90, sky+star/pixels)
 	require.InEpsilon(t, variance/pixels/4, p.variance(), 1e-9)
 }
@@ -78,9 +78,14 @@ func TestLevels(t *testing.T) {
 	c := Candidate{Family: "m-sequence", V: 63, N: 47, Dark: 16, Cycles: 1}
 	frames := sequence.Calibration{Bias: sequence.BiasFrames{Count: 10}, Dark: sequence.DarkFrames{Count: 4, DwellSeconds: 2}, Arc: sequence.ArcFrames{Every: 1}}
 	off := evenNoise(t, c, 4000, 30, 3, frames, 21) // 1 + 3 frames
-	require.InEpsilon(t, (30+3+0.5)/4/(32*32), off.level(30, 0.5), 1e-12)
+	level := off.level(30, 0.5)
+	require.InEpsilon(t, (30+3+0.5)/4/(32*32), level.AllOff, 1e-12)
+	require.Equal(t, level.AllOff, level.total())
 	darks := evenNoise(t, c, 4000, 30, 3, frames, 0)
-	require.InEpsilon(t, (0.25*(30+6)/4+0.25*30/10)/(32*32), darks.level(30, 0.5), 1e-12)
+	level = darks.level(30, 0.5)
+	require.InEpsilon(t, 0.25*(30+6)/4/(32*32), level.Dark, 1e-12)
+	require.InEpsilon(t, 0.25*30/10/(32*32), level.Bias, 1e-12)
+	require.Zero(t, level.AllOff+level.DarkColumns)
 }
 
 // The sum of all v columns of a pixel is sum(y)/k: its variance is that of v frames over
@@ -119,7 +124,7 @@ func TestCovariancesAddUp(t *testing.T) {
 			o.light += f
 			o.squareLight += f
 		}
-		n.addShared(&sum, x, y, &o)
+		n.addShared(&sum, new(Levels), x, y, &o)
 		k := float64(n.design.K)
 		require.InDelta(t, float64(c.V)*quiet/(k*k), sum.Detector, 1e-9*(1+quiet))
 		require.InDelta(t, total/k, sum.Photons, 1e-9*(1+total))
@@ -166,7 +171,7 @@ func TestThroughputLeft(t *testing.T) {
 	left := func(mag float64, dark int) float64 {
 		l := newTestLight(t, "optical", "demo", scene.Scene{SeeingFWHMArcsec: 1, Sky: scene.Sky{ContinuumABArcsec2: &mag}}, nil,
 			func(_ *instrument.Profile, g *sequence.Target) { g.Forecast.ThroughputRMS = 0.01 })
-		c, err := Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1}.resolved(l.profile)
+		c, err := l.resolved(Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1})
 		require.NoError(t, err)
 		return l.throughputLeft(l.field(c, sight{}), c)
 	}

@@ -40,6 +40,7 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		err = r.slitFlat(ctx, m)
 	}
 	if err == nil {
+		r.doubtStuck()
 		err = r.flatDepth(ctx, m)
 	}
 	if errors.Is(err, calib.ErrNoLight) {
@@ -166,7 +167,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 	}
 	s.margin = rectify.margin(s.rows)
-	fit, err := calib.NewFlatFit(r.flatRule(rectify), s.elements, s.rows, s.voxels, r.lampLight(), r.lit())
+	fit, err := calib.NewFlatFit(r.flatRule(rectify), s.elements, s.rows, s.voxels, r.lampLight(), r.lampLit())
 	if err != nil {
 		return err
 	}
@@ -240,7 +241,7 @@ func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 	rule := calib.DefaultFlatRule()
 	edges := make([]float64, r.schema.Grid.Count+1)
 	y := r.camera.Rows / 2
-	r.optics.geometry.Places(edges, r.optics.geometry.J_c, float64(y), rectify.edges)
+	r.optics.geometry.Places(edges, float64(r.seq.N()-1)/2, float64(y), rectify.edges)
 	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
 	return rule
 }

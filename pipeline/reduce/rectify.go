@@ -29,7 +29,10 @@ type rectifier struct {
 	added         []float32 // [row][element], see addedShare
 	// scaled: rows bring the error scale. byElement, where not nil, multiplies the
 	// variance of each element.
-	scaled    bool
+	scaled bool
+	// low are flags of voxels most of whose mirrors do not move, [row][element]; nil for
+	// none.
+	low       []calib.Flag
 	byElement []float32
 	workers   []rectifyWorker
 	// field, where not nil, shifts the voxels' light: see rectifyfield.go. group elements
@@ -57,6 +60,10 @@ type rectifyWorker struct {
 	field            *fieldWorker
 	signals, vars    [][]float32 // one element's rows in the window
 	scaleRows        [3][][]float32
+	extra            []float32 // added variance of an element whose mirrors do not move
+	extras           [][]float32
+	none             []float32 // zeros
+	added            spectra   // of one element
 	bitRows          [][]calib.Flag
 }
 
@@ -186,7 +193,7 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		r.straightenCommon(k, rows, first, y)
 	}
 	for j := j0; j < j1; j++ {
-		k.elementRows(rows, j)
+		k.collect(rows, j)
 		if !r.uniform {
 			r.shift.Variance(k.variance, k.vars, first, y)
 		}
@@ -198,7 +205,12 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 			Signal: k.out.signal[at:], Variance: k.out.variance[at:], Flags: k.out.flags[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
 		r.scaleVoxels(k, &k.out, at, j)
+		if r.extraRows(k, rows, j) {
+			r.shift.Signal(k.extra, k.extras, first, y)
+			r.addExtra(k, &k.out, at)
+		}
 		r.flatten(k, at, j, y)
+		r.flagLow(k.out.flags[at:at+nl], j, y)
 	}
 	r.store(k, out, row, j0, j1)
 }
@@ -207,15 +219,6 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 func (r *rectifier) spanned(w *window, y int) (rows []*decodedRow, first int) {
 	first, last := r.span(y)
 	return w.rows[first-w.first() : last+1-w.first()], first
-}
-
-// elementRows cuts element j out of rows.
-func (k *rectifyWorker) elementRows(rows []*decodedRow, j int) {
-	k.signals, k.vars = k.signals[:0], k.vars[:0]
-	for _, d := range rows {
-		k.signals = append(k.signals, d.signal[j])
-		k.vars = append(k.vars, d.variance[min(j, len(d.variance)-1)])
-	}
 }
 
 // straightenCommon turns a worker to trace row y: what all elements share is straightened
@@ -228,7 +231,7 @@ func (r *rectifier) straightenCommon(k *rectifyWorker, rows []*decodedRow, first
 		k.bitRows = append(k.bitRows, d.flags)
 	}
 	r.shift.Flags(&k.flags, k.bitRows, first, y)
-	k.elementRows(rows, 0)
+	k.collect(rows, 0)
 	r.shift.Variance(k.variance, k.vars, first, y)
 	r.straightenScale(k, rows, first, y)
 }

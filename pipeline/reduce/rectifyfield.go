@@ -93,7 +93,7 @@ func (r *rectifier) rectifyShifted(k *rectifyWorker, out *outStrip, w *window, r
 // of the worker's sources. own tells that this group is the one to take note of it.
 func (r *rectifier) source(k *rectifyWorker, rows []*decodedRow, first, y, s, at int, own bool) {
 	f := k.field
-	k.elementRows(rows, s)
+	k.collect(rows, s)
 	k.places.Places(k.edges, float64(s))
 	r.field.Set(f.gather, y, k.edges)
 	f.gather.Signal(k.signal, k.signals, first)
@@ -109,6 +109,10 @@ func (r *rectifier) source(k *rectifyWorker, rows []*decodedRow, first, y, s, at
 		Signal: f.source.signal[at:], Variance: f.source.variance[at:], Flags: f.source.flags[at:], Stride: 1,
 	}, k.signal, k.variance, &k.flags, k.edges)
 	r.scaleVoxels(k, &f.source, at, s)
+	if r.extraRows(k, rows, s) {
+		f.gather.Signal(k.extra, k.extras, first)
+		r.addExtra(k, &f.source, at)
+	}
 	r.flattenShifted(k, y, s, at, own)
 }
 
@@ -128,6 +132,9 @@ func (r *rectifier) flattenShifted(k *rectifyWorker, y, s, at int, own bool) {
 			at := (first+i)*r.elements + s
 			if reaches {
 				flags[l] |= r.usage.flags[at]
+				if r.low != nil {
+					flags[l] |= r.low[at]
+				}
 			}
 			if r.response == nil {
 				continue

@@ -45,8 +45,9 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 		{"strips", r.strips},
 		{"sky", r.bringToSky},
 		{"finish", r.finish},
+		{"forecast", r.holdForecast},
 	} {
-		if step.name == "sky" && !r.toSky() {
+		if step.name == "sky" && !r.toSky() || step.name == "forecast" && !r.hasForecast() {
 			continue
 		}
 		if err := r.timed(step.name, func() (int64, error) { return step.run(ctx) }); err != nil {
@@ -85,6 +86,8 @@ type reduction struct {
 	quality   product.Quality
 	stars     starSearch
 	samples   restoredSamples
+	// reached is the forecast beside what the cube has; nil without a forecast.
+	reached   *product.Forecast
 	badPixels int
 	stages    []product.Stage
 	// traffic counts what is read of frames and masters and written of products.
@@ -210,6 +213,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	if s.cube && !r.toSky() {
 		r.light = report.NewLight(s.elements, s.rows, s.voxels)
 	}
+	var stuck *stuckLight
 	if s.cube {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
@@ -219,6 +223,10 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
+		if stuck = newStuckLight(r.optics.stuck, &r.optics.geometry, s.columns, s.uniform); stuck != nil {
+			s.margin += 2 * lightRows
+			r.rectifier.low = r.optics.stuck.low()
+		}
 	}
 	h, err := s.heights(r.opts.MemoryBytes - r.heldBytes())
 	if err != nil {
@@ -232,6 +240,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		shape: s, heights: h, decoder: d, rectify: r.rectifier, elements: r.element, workers: r.opts.Workers,
 		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff, r.correction),
 		pixel:    r.optics.pixel,
+		stuck:    stuck,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
 	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
@@ -302,6 +311,7 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame, c
 		code: hadamard.NewDecoder(code), columns: r.camera.Columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
 		k: float64(code.K()), photonExcess: r.camera.PhotonExcess, scale: newSlotScale(slots, c),
+		shines: r.optics.stuck.shinesOn,
 	}
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()

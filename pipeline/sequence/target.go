@@ -23,6 +23,8 @@ type Target struct {
 	// 2031-03-14T02:30:00Z; Start gives it as a time.
 	StartUTC string     `yaml:"start_utc"`
 	Code     CodeChoice `yaml:"code"`
+	// Field is where on the device the field lies; nil for its middle and all rows.
+	Field *FieldChoice `yaml:"field" config:"optional"`
 	// DwellSeconds is the exposure time of a science step and of the all-off
 	// frames between them. It may be left out (0) where Code.Family is FamilyAuto.
 	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
@@ -31,12 +33,33 @@ type Target struct {
 	AllOffEvery  int           `yaml:"all_off_every" config:"optional"`
 	SentinelRows []SentinelRow `yaml:"sentinel_rows" config:"optional"`
 	Closed       []ClosedRow   `yaml:"closed" config:"optional"`
-	Calibration  Calibration   `yaml:"calibration" config:"optional"`
+	// FromSources asks plan for more of both, by the sources of the forecast; nil in a
+	// sequence, where they are listed.
+	FromSources *SourceRows `yaml:"from_sources" config:"optional"`
+	Calibration Calibration `yaml:"calibration" config:"optional"`
 	// Forecast is what is expected of the field; nil where nothing is said of it.
 	Forecast *Forecast `yaml:"forecast" config:"optional"`
 
 	// sky holds the spectra that the forecast names, once they are read.
 	sky *scene.Scene
+}
+
+// FieldChoice says which part of the device is used.
+type FieldChoice struct {
+	// OffsetU is how many u the middle of the strips lies beyond the device's, towards larger
+	// u; the position of the target moves with it, and so does the light on the detector.
+	OffsetU int `yaml:"offset_u" config:"optional"`
+	// Rows are the first and the last mirror row (w) to be used, empty for all. Plan closes
+	// the others, but for sentinel rows among them.
+	Rows []int `yaml:"rows,flow" config:"optional"`
+}
+
+// OffsetU is Field's, 0 where none is given.
+func (t *Target) OffsetU() int {
+	if t.Field == nil {
+		return 0
+	}
+	return t.Field.OffsetU
 }
 
 // CodeChoice says how the field is coded.
@@ -100,6 +123,16 @@ type ClosedRow struct {
 	First   int  `yaml:"first"`
 	Last    int  `yaml:"last"`
 	Element *int `yaml:"element" config:"optional"`
+}
+
+// SourceRows is what plan is to choose by the sources of the forecast.
+type SourceRows struct {
+	// Sentinels is how many ranges of sentinel rows may be planned, each on a star that no
+	// measurement is about, if one measures the transmission better than dark columns do.
+	Sentinels int `yaml:"sentinels" config:"optional"`
+	// Patches is on how many such stars mirrors may be closed, where one would saturate or
+	// its photon noise rule the other elements of its rows.
+	Patches int `yaml:"patches" config:"optional"`
 }
 
 // Calibration lists the frames that are not of the target. A section left out

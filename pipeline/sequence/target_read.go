@@ -16,8 +16,9 @@ const (
 	maxFrames       = 10000  // of one kind of calibration
 	maxMirror       = 100000 // any mirror coordinate
 	maxCycles       = 1000
-	maxLampBytes    = 8  // the LAMP column
-	maxNameBytes    = 68 // one header card
+	maxFromSources  = 100 // ranges of sentinel rows, or patches
+	maxLampBytes    = 8   // the LAMP column
+	maxNameBytes    = 68  // one header card
 )
 
 // LoadTarget reads and checks a target by the name of an embedded one or by
@@ -80,6 +81,7 @@ func (t *Target) check(doc *config.Doc) error {
 		c.Within("dwell_s", t.DwellSeconds, 0, maxDwellSeconds)
 	}
 	c.Count("all_off_every", t.AllOffEvery, 0, maxFrames)
+	t.checkField(c)
 	t.checkRows(c)
 	t.checkCalibration(c)
 	t.checkForecast(c)
@@ -134,11 +136,32 @@ func (t *Target) checkOrder(c *config.Checks) {
 	c.That(t.Code.Seed >= 0, "code.seed", "%d is below 0; give a whole number from 0", t.Code.Seed)
 }
 
+func (t *Target) checkField(c *config.Checks) {
+	f := t.Field
+	if f == nil {
+		return
+	}
+	c.Count("field.offset_u", f.OffsetU, -maxMirror, maxMirror)
+	if len(f.Rows) == 0 {
+		return
+	}
+	if c.That(len(f.Rows) == 2, "field.rows", "%d numbers are no range of rows; write [first, last]", len(f.Rows)) {
+		c.Count("field.rows[0]", f.Rows[0], -maxMirror, maxMirror)
+		c.Count("field.rows[1]", f.Rows[1], -maxMirror, maxMirror)
+		c.That(f.Rows[0] <= f.Rows[1], "field.rows", "%d lies before %d; exchange them", f.Rows[1], f.Rows[0])
+	}
+}
+
 func (t *Target) checkRows(c *config.Checks) {
 	for i, r := range t.SentinelRows {
 		path := fmt.Sprintf("sentinel_rows[%d]", i)
 		checkRange(c, path, r.First, r.Last)
 		c.Count(path+".element", r.Element, 0, maxV-1)
+	}
+	if s := t.FromSources; s != nil {
+		c.Count("from_sources.sentinels", s.Sentinels, 0, maxFromSources)
+		c.Count("from_sources.patches", s.Patches, 0, maxFromSources)
+		c.That(t.Forecast != nil, "from_sources", "rows are chosen by the sources of the forecast, and the target has none; add forecast.sources, or list the rows")
 	}
 	for i, r := range t.Closed {
 		path := fmt.Sprintf("closed[%d]", i)
