@@ -19,12 +19,14 @@ type app struct {
 	logLevel       string
 	logFile        string
 	log            *zap.Logger
+	profiles       profiles
 }
 
 func (a *app) addFlags(f *pflag.FlagSet) {
 	f.BoolVar(&a.json, "json", false, "print the answer as one JSON object")
 	f.StringVar(&a.logLevel, "log-level", "warn", "messages from this level on: debug, info, warn or error")
 	f.StringVar(&a.logFile, "log-file", "", "write the messages to this file as JSON lines, instead of standard error")
+	a.profiles.addFlags(f)
 }
 
 // answer prints what a command found: as JSON if asked, else as words.
@@ -46,6 +48,9 @@ func run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	root, started := newRootCommand(a)
 	root.SetArgs(args)
 	err := root.ExecuteContext(ctx)
+	if failed := a.profiles.end(); failed != nil && err == nil {
+		err = failed
+	}
 	if err != nil && !*started {
 		// cobra found the mistake before any command began to work.
 		err = usageError{fmt.Errorf("%w; see 'mirrorloom --help'", err)}
@@ -83,7 +88,7 @@ not whole; 130 interrupted.`,
 			}
 			a.log = log
 			*started = true
-			return nil
+			return a.profiles.start()
 		},
 	}
 	root.SetOut(a.stdout)
