@@ -20,10 +20,10 @@ type sweep struct {
 	// sink takes each strip of the cube; the strip is used again afterwards.
 	sink     func(ctx context.Context, out *outStrip) error
 	elements *fitsutil.Cube // nil without an element cube
-	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
-	// decoded row, in order, before bad pixels are filled.
+	// pixel is the pixels' response, nil for 1. light, where not nil, sees the
+	// decoded rows, in order, before bad pixels are filled.
 	pixel *calib.PixelResponse
-	light func(row *decodedRow)
+	light func(ctx context.Context, rows []*decodedRow, workers int) error
 	// stuck puts in the light of mirrors that do not move; nil where all move.
 	stuck *stuckLight
 	// pixelVariance, where not nil, takes each row's variances, in order, when they
@@ -186,8 +186,8 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		return err
 	}
 	if w.light != nil {
-		for _, row := range rows {
-			w.light(row)
+		if err := w.light(ctx, rows, w.workers); err != nil {
+			return err
 		}
 	}
 	return w.finish(ctx, s.y1)
