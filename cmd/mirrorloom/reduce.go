@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"path/filepath"
+	"runtime"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -81,6 +82,10 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	opts, err := o.options(a, night)
 	if err != nil {
 		return err
+	}
+	if o.workers > 0 {
+		// The reader, the writer and the garbage collector compute as well.
+		runtime.GOMAXPROCS(o.workers)
 	}
 	var result *reduce.Result
 	err = o.output.write(ctx, func(dir string) (err error) {
