@@ -68,7 +68,7 @@ func readRecords(r io.ReaderAt, size int64, each func(record []byte) bool) (end 
 			record = make([]byte, n)
 		}
 		record = record[:n]
-		if _, err := r.ReadAt(record, end+recordHead); err != nil {
+		if _, err := r.ReadAt(record, end+recordHead); n > 0 && err != nil {
 			return 0, err
 		}
 		if crc32.Checksum(record, castagnoli) != binary.LittleEndian.Uint32(head[4:]) || !each(record) {
