@@ -1,0 +1,126 @@
+package reduce
+
+import (
+	"context"
+	"errors"
+	"path/filepath"
+	"time"
+
+	"go.uber.org/zap"
+
+	"mirrorloom/pipeline/kept"
+)
+
+// keeper writes the journal while a sweep runs. A record follows when the strips that it
+// tells of have been brought to the disk, which goes on beside the work.
+type keeper struct {
+	r       *reduction
+	w       *sweep
+	journal *kept.Journal
+	// recorded is the last mark that went into the journal, latest that of the last strip.
+	recorded, latest mark
+	// pending gives the outcome of the record that is on its way; nil for none.
+	pending chan error
+	// due is when the next record may begin.
+	due time.Time
+}
+
+// A record is begun when keepEvery times what the last one took have passed, which
+// bounds its cost, within these limits: the shortest makes short nights resumable, the
+// longest is what a power cut may cost.
+const (
+	keepEvery = 30
+	keepLeast = 100 * time.Millisecond
+	keepMost  = 10 * time.Second
+)
+
+func (r *reduction) journalPath() string { return filepath.Join(r.scratch(), journalFile) }
+
+// startJournal begins a journal for the cubes just created.
+func (r *reduction) startJournal() (*kept.Journal, error) {
+	head := journalHead{State: r.state}
+	if r.cube != nil {
+		head.Cube = filepath.Base(r.cube.Unfinished())
+	}
+	if r.element != nil {
+		head.Elements = filepath.Base(r.element.Unfinished())
+	}
+	record, err := encodeRecord(head)
+	if err != nil {
+		return nil, err
+	}
+	j, err := kept.CreateJournal(r.journalPath())
+	if err != nil {
+		return nil, err
+	}
+	if err := errors.Join(j.Append(record), j.Sync()); err != nil {
+		return nil, errors.Join(err, j.Close())
+	}
+	return j, nil
+}
+
+// boundary notes the end of a strip, and begins a record if it is time.
+func (k *keeper) boundary(decoded int) error {
+	k.latest = k.r.mark(k.w, decoded)
+	select {
+	case err := <-k.pending:
+		k.pending = nil
+		if err != nil {
+			return err
+		}
+	default:
+	}
+	if k.pending != nil || time.Now().Before(k.due) {
+		return nil
+	}
+	record, err := k.r.record(k.w, &k.recorded, &k.latest)
+	if err != nil {
+		return err
+	}
+	k.recorded, k.pending = k.latest, make(chan error, 1)
+	go func(done chan<- error) {
+		start := time.Now()
+		err := k.flush()
+		if err == nil {
+			err = errors.Join(k.journal.Append(record), k.journal.Sync())
+		}
+		took := time.Since(start)
+		k.due = time.Now().Add(min(max(keepEvery*took, keepLeast), keepMost))
+		k.r.log.Debug("strips kept", zap.Int("rows", decoded), zap.Float64("seconds", took.Seconds()))
+		done <- err
+	}(k.pending)
+	return nil
+}
+
+// flush brings the cubes to the disk.
+func (k *keeper) flush() error {
+	var err error
+	if k.r.cube != nil {
+		err = k.r.cube.Flush()
+	}
+	if k.r.element != nil {
+		err = errors.Join(err, k.r.element.Flush())
+	}
+	return err
+}
+
+// end ends a sweep that ended with failed. After a whole or an interrupted one the
+// journal tells of its last strip: sky and finish may be interrupted as well. Nothing waits for the
+// disk here: a record of strips that a power cut took away is found out by their sums.
+func (k *keeper) end(failed error) error {
+	var err error
+	if k.pending != nil {
+		err = <-k.pending
+	}
+	if err == nil && (failed == nil || errors.Is(failed, context.Canceled)) && k.latest.decoded > k.recorded.decoded {
+		var record []byte
+		if record, err = k.r.record(k.w, &k.recorded, &k.latest); err == nil {
+			err = k.journal.Append(record)
+		}
+	}
+	err = errors.Join(err, k.journal.Close())
+	if failed != nil {
+		return failed
+	}
+	return err
+}
