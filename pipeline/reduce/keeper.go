@@ -30,7 +30,7 @@ type keeper struct {
 // longest is what a power cut may cost.
 const (
 	keepEvery = 30
-	keepLeast = 100 * time.Millisecond
+	keepLeast = 20 * time.Millisecond
 	keepMost  = 10 * time.Second
 )
 
@@ -89,6 +89,11 @@ func (k *keeper) boundary(decoded int) error {
 		k.r.log.Debug("strips kept", zap.Int("rows", decoded), zap.Float64("seconds", took.Seconds()))
 		done <- err
 	}(k.pending)
+	if k.r.opts.eachStrip {
+		err := <-k.pending
+		k.pending, k.due = nil, time.Time{}
+		return err
+	}
 	return nil
 }
 

@@ -33,6 +33,8 @@ type Options struct {
 	// cleared. Note, which may be nil, is told in a clause what became of it.
 	Resume bool
 	Note   func(clause string)
+	// eachStrip is for tests: each strip is kept before the next one begins.
+	eachStrip bool
 	// Log receives what a user may want to know; nil for nothing.
 	Log *zap.Logger
 	// Progress, which may be nil, is called as a stage gets on, by one

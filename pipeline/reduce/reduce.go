@@ -38,12 +38,11 @@ func Run(ctx context.Context, opts Options) (result *Result, err error) {
 	if err := r.runStages(ctx, []stage{{"open", r.open}}); err != nil {
 		return nil, err
 	}
-	resumed, err := r.resume()
-	if err != nil {
+	if err := r.resume(); err != nil {
 		return nil, err
 	}
 	var stages []stage
-	if !resumed {
+	if !r.resumed {
 		stages = append(stages, stage{"pair", r.pair}, stage{"prepare", r.prepare}, stage{"calibrate", r.calibrate}, stage{"throughput", r.measureThroughput}, stage{"keep", r.savePrepared})
 	}
 	stages = append(stages, stage{"strips", r.strips})
@@ -112,9 +111,10 @@ type reduction struct {
 	looked atomic.Int64
 
 	// dependence is what the strips follow from, and state the digest of the file of
-	// what the stages before them found.
+	// what the stages before them found, which resumed did not run.
 	dependence *dependence
 	state      kept.Digest
+	resumed    bool
 }
 
 // close gives back everything; what was committed stays, and what a later run can go on

@@ -20,21 +20,22 @@ func CanResume(out string) bool {
 
 // resume goes on with what an earlier run left, if it is asked for; what cannot be used
 // is cleared.
-func (r *reduction) resume() (bool, error) {
+func (r *reduction) resume() error {
 	if !r.opts.Resume {
-		return false, nil
+		return nil
 	}
 	p, why := r.loadPrepared()
 	if why == nil {
 		if err := r.clear(r.leftCubes()); err != nil {
-			return false, err
+			return err
 		}
-		return true, r.takePrepared(p)
+		r.resumed = true
+		return r.takePrepared(p)
 	}
 	if !errors.Is(why, errNoState) {
 		r.opts.Note(fmt.Sprintf("the unfinished run is started over: %v", why))
 	}
-	return false, r.clear(nil)
+	return r.clear(nil)
 }
 
 // leftCubes are the files that the journal names, and the names that they have once they
@@ -98,6 +99,9 @@ func (r *reduction) readJournal(strip func(s *stripRecord) bool) (*journalHead, 
 		var s stripRecord
 		return decodeRecord(record, &s) == nil && strip(&s)
 	})
+	if errors.Is(err, os.ErrNotExist) {
+		return nil, nil, errNoState
+	}
 	if err != nil {
 		return nil, nil, err
 	}
@@ -114,12 +118,13 @@ func (r *reduction) newKeeper(w *sweep) (*keeper, error) {
 	if r.opts.Resume {
 		why := r.goOn(k)
 		switch {
-		case why == nil && k.recorded.decoded > 0:
+		case why == nil:
 			r.opts.Note(fmt.Sprintf("the unfinished run is gone on with: %d of %d rows of the detector are done", k.recorded.decoded, w.shape.rows))
 			return k, nil
-		case why == nil:
-			return k, nil
-		case !errors.Is(why, os.ErrNotExist):
+		case !r.resumed:
+		case errors.Is(why, errNoState):
+			r.opts.Note("the unfinished run is gone on with: its calibration is done")
+		default:
 			r.opts.Note(fmt.Sprintf("the strips of the unfinished run are begun anew: %v", why))
 		}
 		if err := r.clear(map[string]bool{r.preparedPath(): true, filepath.Join(r.scratch(), mastersFile): true}); err != nil {
@@ -165,7 +170,7 @@ func (r *reduction) goOn(k *keeper) error {
 // reopen opens the unfinished cubes that a journal tells of.
 func (r *reduction) reopen(s shape, head *journalHead, m *mark) error {
 	if s.cube != (head.Cube != "") || s.elementCube != (head.Elements != "") || m.decoded == 0 {
-		return errors.New("no strip of it is done")
+		return errNoState // no strip is done
 	}
 	primary, err := r.primary()
 	if err != nil {
