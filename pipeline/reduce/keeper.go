@@ -23,6 +23,8 @@ type keeper struct {
 	pending chan error
 	// due is when the next record may begin.
 	due time.Time
+	// failed: the journal could not be written, which stops it but not the reduction.
+	failed bool
 }
 
 // A record is begun when keepEvery times what the last one took have passed, which
@@ -64,13 +66,10 @@ func (k *keeper) boundary(decoded int) error {
 	k.latest = k.r.mark(k.w, decoded)
 	select {
 	case err := <-k.pending:
-		k.pending = nil
-		if err != nil {
-			return err
-		}
+		k.settle(err)
 	default:
 	}
-	if k.pending != nil || time.Now().Before(k.due) {
+	if k.failed || k.pending != nil || time.Now().Before(k.due) {
 		return nil
 	}
 	record, err := k.r.record(k.w, &k.recorded, &k.latest)
@@ -90,11 +89,20 @@ func (k *keeper) boundary(decoded int) error {
 		done <- err
 	}(k.pending)
 	if k.r.opts.eachStrip {
-		err := <-k.pending
-		k.pending, k.due = nil, time.Time{}
-		return err
+		k.settle(<-k.pending)
+		k.due = time.Time{}
 	}
 	return nil
+}
+
+// settle takes note of what became of a record. A cube that cannot be brought to the disk
+// knows it itself.
+func (k *keeper) settle(err error) {
+	k.pending = nil
+	if err != nil {
+		k.failed = true
+		k.r.log.Warn("strips done from now on are not kept for --resume", zap.Error(err))
+	}
 }
 
 // flush brings the cubes to the disk.
@@ -113,19 +121,18 @@ func (k *keeper) flush() error {
 // journal tells of its last strip: sky and finish may be interrupted as well. Nothing waits for the
 // disk here: a record of strips that a power cut took away is found out by their sums.
 func (k *keeper) end(failed error) error {
-	var err error
 	if k.pending != nil {
-		err = <-k.pending
+		k.settle(<-k.pending)
 	}
-	if err == nil && (failed == nil || errors.Is(failed, context.Canceled)) && k.latest.decoded > k.recorded.decoded {
-		var record []byte
-		if record, err = k.r.record(k.w, &k.recorded, &k.latest); err == nil {
+	if !k.failed && (failed == nil || errors.Is(failed, context.Canceled)) && k.latest.decoded > k.recorded.decoded {
+		record, err := k.r.record(k.w, &k.recorded, &k.latest)
+		if err == nil {
 			err = k.journal.Append(record)
 		}
+		k.settle(err)
 	}
-	err = errors.Join(err, k.journal.Close())
-	if failed != nil {
-		return failed
+	if k.journal != nil {
+		k.journal.Close() // what it holds was written
 	}
-	return err
+	return failed
 }

@@ -135,8 +135,10 @@ func (r *reduction) newKeeper(w *sweep) (*keeper, error) {
 		return nil, err
 	}
 	var err error
-	k.journal, err = r.startJournal()
-	return k, err
+	if k.journal, err = r.startJournal(); err != nil {
+		k.settle(err)
+	}
+	return k, nil
 }
 
 // goOn takes up the journal and the cubes of an earlier run. After an error nothing is
