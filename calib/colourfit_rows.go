@@ -243,8 +243,9 @@ type dispersed struct {
 }
 
 func newDispersed(g *Geometry, elements, columns int) *dispersed {
-	// Far enough for every element, those beyond the field, and the slit's lean.
-	reach := columns + int(math.Abs(g.X_e)*float64(elements)*2) + 64
+	// Far enough for every element, those beyond the field, a field beside X_c, and the
+	// slit's lean.
+	reach := columns + int(math.Abs(g.X_e)*(float64(elements)*2+math.Abs(g.J_c-float64(elements-1)/2))) + 64
 	d := &dispersed{first: -reach, l: make([]float64, 2*reach+1)}
 	for i := range d.l {
 		d.l[i] = g.invertDispersion(float64(i-reach)) / colourScaleNM

@@ -49,7 +49,8 @@ func (s *shape) at(x float64) float64 {
 // the slit's lean.
 func fieldShape(g *Geometry, elements, columns int, fwhm float64, lamp func(vacuumNm float64) float64) *shape {
 	half := math.Abs(g.X_e) * float64(elements)
-	reach := float64(columns) + 2*half + 64
+	// The field may lie beside X_c.
+	reach := float64(columns) + 2*half + 64 + math.Abs(g.X_e*(g.J_c-float64(elements-1)/2))
 	one := &shape{first: -reach, value: make([]float64, int(2*reach*shapeSteps)+1)}
 	for i := range one.value {
 		l := g.invertDispersion(one.first + float64(i)/shapeSteps)

@@ -126,6 +126,7 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 	if q.DarkChi2Heldout != nil {
 		fmt.Fprintf(&b, "dark columns: mean square %.4f in units of their variance\n", *q.DarkChi2Heldout)
 	}
+	printForecast(&b, r.Run.Forecast)
 	for _, text := range r.Run.Warnings {
 		fmt.Fprintf(&b, "warning: %s\n", text)
 	}

@@ -39,6 +39,7 @@ var rules = []rule{
 	{"pipeline/extract", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "extract reads cubes and is below report"},
 	{"pipeline/register", []string{"mirrorloom/hadamard", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "register is below plan and reduce"},
 	{"pipeline/combine", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "combine reads runs, however they were made"},
+	{"pipeline/reached", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "reached holds a cube against a forecast, and is below reduce"},
 	{"pipeline/report", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "report is below reduce"},
 	{"pipeline/reduce", []string{"mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/demo"}, "reduce must not know what rehearse drew"},
 }

@@ -23,7 +23,7 @@ func Covered(seq *sequence.Sequence) func(i int) bool {
 			return false
 		}
 		for _, edge := range []float64{-0.5, 0.5} {
-			x := columnOf(p, n, seq.ElementMirrors(), float64(j), float64(y), p.Grid.WavelengthNM(float64(l)+edge))
+			x := columnOf(p, float64(seq.Target.OffsetU())+float64(seq.ElementMirrors())*(float64(j)-float64(n-1)/2), float64(y), p.Grid.WavelengthNM(float64(l)+edge))
 			row := float64(y) + traceOf(p, x)
 			if x < -0.5 || x > float64(p.Detector.Columns)-0.5 || row < 0 || row > float64(rows-1) {
 				return false
@@ -52,13 +52,14 @@ func traceOf(p *instrument.Profile, x float64) float64 {
 	return s.TraceTilt*d + s.TraceCurvePerPx*d*d
 }
 
-// columnOf solves x = x_c + x_e (j - j_c) + d1 l + d2 l^2 + d3 l^3 + slit_tilt q +
-// smile q^2 with q the row that the trace really has at x.
-func columnOf(p *instrument.Profile, n, mirrors int, j, y, nm float64) float64 {
+// columnOf solves x = x_c + u_step across + d1 l + d2 l^2 + d3 l^3 + slit_tilt q +
+// smile q^2 with q the row that the trace really has at x, for an element so many mirrors
+// across from the middle.
+func columnOf(p *instrument.Profile, across, y, nm float64) float64 {
 	s := p.Spectrograph
 	l := nm - s.CenterNM
 	d := s.DispersionPxPerNM
-	straight := s.XCenterPx + s.UStepPx*float64(mirrors)*(j-float64(n-1)/2) + d[0]*l + d[1]*l*l + d[2]*l*l*l
+	straight := s.XCenterPx + s.UStepPx*across + d[0]*l + d[1]*l*l + d[2]*l*l*l
 	x := straight
 	for range 20 { // each pass gains the product of the slopes, less than 0.1
 		q := y + traceOf(p, x) - s.YCenterPx

@@ -108,6 +108,22 @@ func Diagonal() (*Field, error) {
 	return f, nil
 }
 
+// Beside puts the field beside the device's middle, in the rows given (none: all of them). The
+// device of a square mounting grows, and the light falls where it fell: the spectrograph's
+// middle moves back by as much.
+func (f *Field) Beside(offsetU int, rows ...int) {
+	p := f.Profile
+	f.Target.Field = &sequence.FieldChoice{OffsetU: offsetU, Rows: rows}
+	if p.DMD.Mounting == instrument.Square {
+		p.DMD.Columns += 2 * max(offsetU, -offsetU)
+	}
+	p.Spectrograph.XCenterPx -= float64(offsetU) * p.Spectrograph.UStepPx
+	if len(rows) > 0 {
+		f.Target.Closed = nil
+	}
+	f.scenery()
+}
+
 // Tiny is a field whose night is made in a fraction of a second: 23 elements, 31
 // science frames, 72 x 16 pixels.
 func Tiny() (*Field, error) {
@@ -213,6 +229,9 @@ func (f *Field) HalfArcsec() (u, w float64) {
 		if r.Element == nil && r.Last >= w1 {
 			w1 = r.First - 1
 		}
+	}
+	if field := f.Target.Field; field != nil && len(field.Rows) == 2 {
+		w0, w1 = max(w0, field.Rows[0]), min(w1, field.Rows[1])
 	}
 	return a * float64(f.Elements()*f.Target.Code.ElementMirrors) / 2, a * float64(w1-w0+1) / 2
 }

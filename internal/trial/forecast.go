@@ -54,9 +54,9 @@ func ForecastPlans() []ForecastPlan {
 	return plans
 }
 
-// field is the field of a plan, with a forecast of the sky that it rehearses: lines of the
+// Field is the field of a plan, with a forecast of the sky that it rehearses: lines of the
 // nebula at 12 places of its rim, bands at four of the stars.
-func (p *ForecastPlan) field() (*Field, error) {
+func (p *ForecastPlan) Field() (*Field, error) {
 	f, err := p.Make()
 	if err != nil {
 		return nil, err
@@ -98,14 +98,6 @@ func (f *Field) wanted() []sequence.Wanted {
 		}
 	}
 	return list
-}
-
-// Candidate is a planned sequence as the forecast knows it.
-func Candidate(seq *sequence.Sequence) forecast.Candidate {
-	return forecast.Candidate{
-		Family: seq.Family, V: seq.V, K: seq.K, L: seq.L, N: seq.N(), ElementMirrors: seq.ElementMirrors(),
-		Dark: seq.V - seq.N(), DwellSeconds: seq.Target.DwellSeconds, Cycles: seq.Target.Code.Cycles,
-	}
 }
 
 // Forecasted is what nights say of forecasts, by lines and bands.
@@ -158,7 +150,7 @@ type measured struct {
 // holds their voxels and sums against the forecast. The cube's light is known to be the
 // truth's but for noise, which the noise is measured about.
 func (p *ForecastPlan) MeasureForecast(ctx context.Context, dir string, nights int, first uint64) (lines, bands *Forecasted, err error) {
-	f, err := p.field()
+	f, err := p.Field()
 	if err != nil {
 		return nil, nil, err
 	}
@@ -210,7 +202,7 @@ func (f *Field) forecasts(ctx context.Context, seq *sequence.Sequence) ([]measur
 	if err != nil {
 		return nil, err
 	}
-	c := Candidate(seq)
+	c := forecast.CandidateOf(seq)
 	r, err := light.Of(ctx, c)
 	if err != nil {
 		return nil, err

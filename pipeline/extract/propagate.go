@@ -116,10 +116,19 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 	}
 	p := c.newPropagator(a)
 	p.sums, p.sumsOnly = sums, sumsOnly
+	if err := p.walk(ctx); err != nil {
+		return nil, err
+	}
+	return p.result()
+}
+
+// walk adds what the pixels of all rows contribute.
+func (p *propagator) walk(ctx context.Context) error {
+	c, a := p.c, p.a
 	p.rowAt = rowStarts(a)
 	electrons, err := p.electrons()
 	if err != nil {
-		return nil, err
+		return err
 	}
 	p.light = c.newLightReader(electrons)
 	for x0 := 0; x0 < c.noise.Columns; x0 += blockPixels {
@@ -134,13 +143,13 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 	}
 	for y := first; y <= last; y++ {
 		if err := ctx.Err(); err != nil {
-			return nil, err
+			return err
 		}
 		if err := p.row(y); err != nil {
-			return nil, err
+			return err
 		}
 	}
-	return p.result()
+	return nil
 }
 
 // rowStarts are the places of each row's first cell, from a.firstRow on.

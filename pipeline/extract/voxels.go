@@ -29,6 +29,11 @@ type aperture struct {
 
 // load reads the voxels of cells, which are sorted by row.
 func (c *Cube) load(ctx context.Context, cells []cell) (*aperture, error) {
+	return c.loadChannels(ctx, cells, 0, c.Grid.Count)
+}
+
+// loadChannels is load of channels from..to-1; the others stay 0.
+func (c *Cube) loadChannels(ctx context.Context, cells []cell, from, to int) (*aperture, error) {
 	a := &aperture{cells: cells, firstRow: cells[0].row, endRow: cells[len(cells)-1].row + 1}
 	a.sortElements(c.Elements)
 	n := c.Grid.Count
@@ -43,7 +48,7 @@ func (c *Cube) load(ctx context.Context, cells []cell) (*aperture, error) {
 		{c.variance, func(i, l int, v float32) { a.variance[i][l] = v }},
 		{c.flags, func(i, l int, v float32) { a.flags[i][l] = int16(v) }},
 	} {
-		for l := range n {
+		for l := from; l < to; l++ {
 			if err := ctx.Err(); err != nil {
 				return nil, err
 			}

@@ -5,7 +5,6 @@ import (
 	"math"
 
 	"mirrorloom/hadamard"
-	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -28,6 +27,14 @@ type Candidate struct {
 	Closed []sequence.ClosedRow `json:"closed,omitempty"`
 }
 
+// CandidateOf is how a sequence observes its field.
+func CandidateOf(s *sequence.Sequence) Candidate {
+	return Candidate{
+		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
+		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
+	}
+}
+
 // Design is the code's parameters.
 func (c Candidate) Design() hadamard.Design { return hadamard.Design{V: c.V, K: c.K, L: c.L} }
 
@@ -38,7 +45,7 @@ func (c Candidate) SlitScan() Candidate {
 }
 
 // resolved fills in K and L and refuses what is no candidate.
-func (c Candidate) resolved(p *instrument.Profile) (Candidate, error) {
+func (l *Light) resolved(c Candidate) (Candidate, error) {
 	if c.K == 0 {
 		code, err := hadamard.New(hadamard.Family(c.Family), c.V)
 		if err != nil {
@@ -46,12 +53,15 @@ func (c Candidate) resolved(p *instrument.Profile) (Candidate, error) {
 		}
 		c.K, c.L = code.K(), code.L()
 	}
-	first, last := p.URange()
+	uFirst, uLast := l.profile.URange()
+	first, last := l.strip(c)
 	switch width := c.N * c.ElementMirrors; {
 	case c.N < 1 || c.ElementMirrors < 1 || c.Dark < 0 || c.N+c.Dark != c.V:
 		return c, fmt.Errorf("%d elements of %d mirrors and %d dark columns are no use of a code of %d columns; make elements and dark columns add up", c.N, c.ElementMirrors, c.Dark, c.V)
-	case width > last-first+1:
-		return c, fmt.Errorf("%d elements of %d mirrors span %d where the device has %d; give fewer or narrower ones", c.N, c.ElementMirrors, width, last-first+1)
+	case width > uLast-uFirst+1:
+		return c, fmt.Errorf("%d elements of %d mirrors span %d where the device has %d; give fewer or narrower ones", c.N, c.ElementMirrors, width, uLast-uFirst+1)
+	case first < uFirst || last > uLast:
+		return c, fmt.Errorf("%d elements of %d mirrors span u from %d to %d where the device has %d to %d; give fewer ones or a smaller field.offset_u", c.N, c.ElementMirrors, first, last, uFirst, uLast)
 	case c.V > 1 && (c.K < 1 || c.K <= c.L || c.K*(c.K-1) != c.L*(c.V-1)):
 		return c, fmt.Errorf("no code has v = %d, k = %d, l = %d", c.V, c.K, c.L)
 	case !(c.DwellSeconds > 0) || math.IsInf(c.DwellSeconds, 0) || c.Cycles < 1:
@@ -60,11 +70,11 @@ func (c Candidate) resolved(p *instrument.Profile) (Candidate, error) {
 	return c, nil
 }
 
-// strip is the first and the last u of the elements: the rule of package plan.
-func (c Candidate) strip(p *instrument.Profile) (first, last int) {
-	total := c.N * c.ElementMirrors
-	first = int(math.Ceil(p.UCenter() - float64(total-1)/2))
-	return first, first + total - 1
+// strip is the first and the last u of a candidate's elements.
+func (l *Light) strip(c Candidate) (first, last int) {
+	width := c.N * c.ElementMirrors
+	first = l.profile.FieldFirstU(width, l.target.OffsetU())
+	return first, first + width - 1
 }
 
 // Time is how long a candidate takes; overheads are those of reading and of loading masks.

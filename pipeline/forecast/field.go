@@ -52,7 +52,7 @@ type fieldLight struct {
 // field is the light of a candidate's strip.
 func (l *Light) field(c Candidate, at sight) *fieldLight {
 	at.airmass = 0 // its steps are the key
-	first, last := c.strip(l.profile)
+	first, last := l.strip(c)
 	closed := l.closedRows(c)
 	key := fieldKey{deviceKey{first + last, at}, first, last, c.ElementMirrors, fmt.Sprint(closed)}
 	if f := l.fields[key]; f != nil {

@@ -38,6 +38,12 @@ type Light struct {
 // New prepares the forecast of a target that has the key forecast. Target and profile are
 // not to be changed afterwards. Errors about the target are *config.Error with key path.
 func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
+	return NewOn(target, profile, profile.Grid.EdgesNM())
+}
+
+// NewOn is New for voxels with other edges than the profile's grid has: ascending vacuum
+// wavelengths at the telescope, nm, one more than voxels.
+func NewOn(target *sequence.Target, profile *instrument.Profile, edgesNM []float64) (*Light, error) {
 	if target.Forecast == nil {
 		return nil, &config.Error{Path: "forecast", What: "the target says nothing of what to expect; add the key"}
 	}
@@ -47,7 +53,7 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	if err := target.Check(); err != nil {
 		return nil, err
 	}
-	l := &Light{target: target, profile: profile, scene: target.Scene(), edgesNM: profile.Grid.EdgesNM(), devices: map[deviceKey]*deviceLight{}, fields: map[fieldKey]*fieldLight{}}
+	l := &Light{target: target, profile: profile, scene: target.Scene(), edgesNM: edgesNM, devices: map[deviceKey]*deviceLight{}, fields: map[fieldKey]*fieldLight{}}
 	var err error
 	if l.start, err = target.Start(); err != nil {
 		return nil, err
@@ -62,7 +68,7 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	if l.columns, err = calib.NewResampler(0, d.Columns-1); err != nil {
 		return nil, err
 	}
-	geometry := l.geometry(1, 1)
+	geometry := l.geometry(Candidate{N: 1, ElementMirrors: 1})
 	shift := make([]float64, d.Columns)
 	for x := range shift {
 		shift[x] = geometry.TraceShift(float64(x))
@@ -83,11 +89,11 @@ func New(target *sequence.Target, profile *instrument.Profile) (*Light, error) {
 	return l, nil
 }
 
-// geometry is where light of n elements of so many mirrors lands, nominally.
-func (l *Light) geometry(n, mirrors int) calib.Geometry {
+// geometry is where light of a candidate's elements lands, nominally.
+func (l *Light) geometry(c Candidate) calib.Geometry {
 	s := l.profile.Spectrograph
 	return calib.Geometry{
-		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(mirrors), J_c: float64(n-1) / 2,
+		X_c: s.XCenterPx, Y_c: s.YCenterPx, X_e: l.profile.ElementStepPx(c.ElementMirrors), J_c: float64(c.N-1)/2 - float64(l.target.OffsetU())/float64(c.ElementMirrors),
 		L_c: s.CenterNM, D: s.DispersionPxPerNM, SlitTilt: s.SlitTilt, Smile: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurve: s.TraceCurvePerPx,
 	}
@@ -96,7 +102,7 @@ func (l *Light) geometry(n, mirrors int) calib.Geometry {
 // Of is the forecast of a candidate, with the slit scan that takes as long. Errors say what
 // makes it no candidate, and are those of ctx.
 func (l *Light) Of(ctx context.Context, c Candidate) (*Result, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
@@ -107,7 +113,7 @@ func (l *Light) Of(ctx context.Context, c Candidate) (*Result, error) {
 	field := l.field(c, at)
 	r := &Result{Candidate: c, Time: t, Airmass: at.airmass}
 	r.ThroughputRMS = l.throughputLeft(field, c)
-	if r.Wanted, err = l.measures(ctx, field, c, r.ThroughputRMS); err != nil {
+	if r.Wanted, err = l.measures(ctx, field, c, taken{float64(c.Cycles), r.ThroughputRMS}); err != nil {
 		return nil, err
 	}
 	r.Saturation = l.saturation(field, c)
@@ -134,18 +140,64 @@ func (l *Light) slit(ctx context.Context, field *fieldLight, c Candidate, second
 		s.Candidate, s.Saturation = c, l.saturation(field, c)
 	}
 	var err error
-	s.Wanted, err = l.measures(ctx, field, s.Candidate, l.target.Forecast.ThroughputRMS)
+	s.Wanted, err = l.measures(ctx, field, s.Candidate, taken{float64(s.Candidate.Cycles), l.target.Forecast.ThroughputRMS})
 	return s, err
 }
 
+// taken is what frames have in common with a candidate's and what not: cycles, the number of
+// frames of each step, and throughput, the scatter of the transmission that is left.
+type taken struct{ cycles, throughput float64 }
+
+// Planned is what Of says of what is wanted, and no more.
+func (l *Light) Planned(ctx context.Context, c Candidate) ([]Measure, error) {
+	c, err := l.resolved(c)
+	if err != nil {
+		return nil, err
+	}
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	field := l.field(c, l.sightOf(l.Time(c)))
+	return l.measures(ctx, field, c, taken{float64(c.Cycles), l.throughputLeft(field, c)})
+}
+
+// Taken is what is wanted of frames that were taken of a candidate, with the voxels of each
+// measurement: cycles of each step, in the harmonic mean, with a relative error throughput of
+// each frame's transmission, nil for what is expected of it.
+func (l *Light) Taken(ctx context.Context, c Candidate, cycles float64, throughput *float64) ([]Measure, [][]Voxel, error) {
+	c, err := l.resolved(c)
+	if err != nil {
+		return nil, nil, err
+	}
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	field := l.field(c, l.sightOf(l.Time(c)))
+	of := taken{cycles: cycles}
+	if throughput != nil {
+		of.throughput = *throughput
+	} else {
+		of.throughput = l.throughputLeft(field, c)
+	}
+	if !(of.cycles > 0) || !(of.throughput >= 0) {
+		return nil, nil, fmt.Errorf("%v cycles with an error of the transmission of %v are no frames; give positive numbers", of.cycles, of.throughput)
+	}
+	list, voxels := make([]Measure, len(l.wanted)), make([][]Voxel, len(l.wanted))
+	for i := range l.wanted {
+		if err := ctx.Err(); err != nil {
+			return nil, nil, err
+		}
+		list[i] = l.measure(field, c, of, i, func(v Voxel) { voxels[i] = append(voxels[i], v) })
+	}
+	return list, voxels, nil
+}
+
 // measures are those of all that is wanted.
-func (l *Light) measures(ctx context.Context, field *fieldLight, c Candidate, throughput float64) ([]Measure, error) {
+func (l *Light) measures(ctx context.Context, field *fieldLight, c Candidate, of taken) ([]Measure, error) {
 	list := make([]Measure, len(l.wanted))
 	for i := range l.wanted {
 		if err := ctx.Err(); err != nil {
 			return nil, err
 		}
-		list[i] = l.measure(field, c, throughput, i, nil)
+		list[i] = l.measure(field, c, of, i, nil)
 	}
 	return list, nil
 }
@@ -156,14 +208,14 @@ type Voxel struct {
 	Element, Row, Channel int
 	// Weight is the part of it that is added up.
 	Weight float64
-	// Wanted is the light wanted, Light all of it, sky included; Sigma the standard
+	// Wanted is the light wanted, Light all of it, Sky that of the sky; Sigma the standard
 	// deviation. Electrons in one science exposure.
-	Wanted, Light, Sigma float64
+	Wanted, Light, Sky, Sigma float64
 }
 
 // Voxels are the voxels that a candidate's measurement adds up, by element, row and channel.
 func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
@@ -174,14 +226,14 @@ func (l *Light) Voxels(c Candidate, wanted int) ([]Voxel, error) {
 	defer l.mu.Unlock()
 	field := l.field(c, l.sightOf(l.Time(c)))
 	var list []Voxel
-	l.measure(field, c, l.throughputLeft(field, c), wanted, func(v Voxel) { list = append(list, v) })
+	l.measure(field, c, taken{float64(c.Cycles), l.throughputLeft(field, c)}, wanted, func(v Voxel) { list = append(list, v) })
 	return list, nil
 }
 
 // Row is what the pixels of a detector row hold in the mean over a cycle's coded frames,
 // electrons by column, dark current and leak included.
 func (l *Light) Row(c Candidate, y int) ([]float64, error) {
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	if err != nil {
 		return nil, err
 	}
@@ -190,7 +242,7 @@ func (l *Light) Row(c Candidate, y int) ([]float64, error) {
 	}
 	l.mu.Lock()
 	defer l.mu.Unlock()
-	n := newNoiseModel(l, l.field(c, l.sightOf(l.Time(c))), c, 0)
+	n := newNoiseModel(l, l.field(c, l.sightOf(l.Time(c))), c, taken{cycles: float64(c.Cycles)})
 	light := n.field.pixelRow(y)
 	open, row := float64(c.K)/float64(c.V), make([]float64, l.camera.columns)
 	for x := range row {

@@ -32,11 +32,11 @@ func (w *window) at(x, y int) int { return (y-w.y0)*(w.x1-w.x0+1) + x - w.x0 }
 func (w *window) empty() bool     { return w.y1 < w.y0 || w.x1 < w.x0 }
 
 // measure is the forecast of a measurement; each, if not nil, is called for its voxels.
-func (l *Light) measure(f *fieldLight, c Candidate, throughput float64, index int, each func(Voxel)) Measure {
+func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each func(Voxel)) Measure {
 	w := &l.wanted[index]
 	m := Measure{Name: w.name, FromNM: w.fromNM, ToNM: w.toNM}
 	cells := l.cells(w, c)
-	s := newSum(l, f, c, throughput, w, cells)
+	s := newSum(l, f, c, of, w, cells)
 	for i := 0; i < len(cells); {
 		end := i
 		for end < len(cells) && cells[end].element == cells[i].element {
@@ -73,8 +73,8 @@ type sum struct {
 // overlapped is what elements share of a pixel.
 type overlapped struct{ weight, square, light, squareLight, overlap float64 }
 
-func newSum(l *Light, f *fieldLight, c Candidate, throughput float64, w *wanted, cells []cell) *sum {
-	s := &sum{light: l, field: f, candidate: c, noise: newNoiseModel(l, f, c, throughput), wanted: w}
+func newSum(l *Light, f *fieldLight, c Candidate, of taken, w *wanted, cells []cell) *sum {
+	s := &sum{light: l, field: f, candidate: c, noise: newNoiseModel(l, f, c, of), wanted: w}
 	s.first, s.parts = l.channels(w)
 	s.window = window{y0: math.MaxInt, y1: -1, x1: l.camera.columns - 1}
 	for _, k := range cells {
@@ -90,7 +90,7 @@ func newSum(l *Light, f *fieldLight, c Candidate, throughput float64, w *wanted,
 // edges are those of the channels of an element on a row, in detector x; ok tells whether the
 // detector holds them.
 func (s *sum) edges(j, row int) (edges []float64, ok bool) {
-	g := s.light.geometry(s.candidate.N, s.candidate.ElementMirrors)
+	g := s.light.geometry(s.candidate)
 	edges = make([]float64, len(s.parts)+1)
 	g.EdgesXAt(edges, float64(j), float64(row), s.light.edgesNM[s.first:s.first+len(edges)])
 	a, b := edges[0], edges[len(edges)-1]
@@ -98,6 +98,13 @@ func (s *sum) edges(j, row int) (edges []float64, ok bool) {
 		a, b = b, a
 	}
 	return edges, a >= -0.5 && b <= float64(s.light.camera.columns)-0.5
+}
+
+// columns are the first and the last that voxels with these edges take light from.
+func (s *sum) columns(edges []float64) (x0, x1 int) {
+	const reach = 9 // pixels that a voxel's weights reach beyond its edges
+	a, b := min(edges[0], edges[len(edges)-1]), max(edges[0], edges[len(edges)-1])
+	return max(int(a)-reach, 0), min(int(b)+reach, s.light.camera.columns-1)
 }
 
 // element adds the cells of one element.
@@ -111,9 +118,8 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 		if !ok {
 			continue
 		}
-		const reach = 9 // pixels that a voxel's weights reach beyond its edges
-		a, b := min(edges[0], edges[len(edges)-1]), max(edges[0], edges[len(edges)-1])
-		win.x0, win.x1 = min(win.x0, max(int(a)-reach, 0)), max(win.x1, min(int(b)+reach, s.light.camera.columns-1))
+		x0, x1 := s.columns(edges)
+		win.x0, win.x1 = min(win.x0, x0), max(win.x1, x1)
 		y0, y1 := s.light.rows.Span(k.row)
 		win.y0, win.y1 = min(win.y0, y0), max(win.y1, y1)
 		kept, all = append(kept, k), append(all, edges)
@@ -155,12 +161,8 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 
 // cell adds the voxels of a cell.
 func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, weights []float64, each func(Voxel)) {
-	l, dwell := s.light, s.candidate.DwellSeconds
-	own, light := make([]float64, win.x1-win.x0+1), make([]float64, win.x1-win.x0+1)
-	s.field.element(own, k.element, k.row, win.x0, s.wanted.of, s.wanted.line)
-	if each != nil {
-		s.field.element(light, k.element, k.row, win.x0, func(int) bool { return true }, false)
-	}
+	l := s.light
+	light := newCellLight(s.field, s.wanted, s.candidate, k, win.x0, win.x1, each != nil)
 	var buffer []float32
 	for i, part := range s.parts {
 		var first int
@@ -173,8 +175,7 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 				continue
 			}
 			wx := float64(across)
-			v.Wanted += wx * own[x-win.x0] * dwell
-			v.Light += wx * light[x-win.x0] * dwell
+			light.add(&v, x, wx)
 			row, along := l.rows.Weights(k.row, x)
 			for d, wy := range along {
 				if y := row + d; wy != 0 && y >= win.y0 && y <= win.y1 {

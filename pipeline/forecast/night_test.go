@@ -24,24 +24,37 @@ func TestFramesAsForecast(t *testing.T) {
 		f.Target.StartUTC = "2031-02-11T08:30:00Z" // air mass 1.8
 		return f, err
 	}
-	for name, make := range map[string]func() (*trial.Field, error){"square": trial.Square, "diagonal": trial.Diagonal, "refracted": refracted} {
+	beside := func(make func() (*trial.Field, error), offset int, rows ...int) func() (*trial.Field, error) {
+		return func() (*trial.Field, error) {
+			f, err := make()
+			f.Beside(offset, rows...)
+			return f, err
+		}
+	}
+	for name, make := range map[string]func() (*trial.Field, error){
+		"square": trial.Square, "diagonal": trial.Diagonal, "refracted": refracted,
+		"square, beside": beside(trial.Square, 61), "diagonal, beside": beside(trial.Diagonal, -15, -33, 33),
+	} {
 		field, err := make()
 		require.NoError(t, err)
 		field.Target.Forecast = &sequence.Forecast{
 			SeeingFWHMArcsec: field.Scene.SeeingFWHMArcsec, Sources: field.Scene.Sources, Sky: field.Scene.Sky, Atmosphere: field.Scene.Atmosphere, Aim: sequence.AimFaintest,
 		}
-		light, err := forecast.New(field.Target, field.Profile)
-		require.NoError(t, err)
 		n, err := field.Plan(context.Background(), t.TempDir())
+		require.NoError(t, err)
+		light, err := forecast.New(n.Seq.Target, field.Profile)
 		require.NoError(t, err)
 		require.NoError(t, n.Rehearse(context.Background(), "twin", rehearse.Options{Seed: 1, Noiseless: true, NoTruth: true}))
 		frames := meanElectrons(t, n, "twin")
 		for y := 4; y < field.Profile.Detector.Rows-4; y += 5 {
-			row, err := light.Row(trial.Candidate(n.Seq), y)
+			row, err := light.Row(forecast.CandidateOf(n.Seq), y)
 			require.NoError(t, err)
 			most := 0.0
 			for _, v := range frames[y] {
 				most = max(most, v)
+			}
+			if most < 20 {
+				continue // closed rows have leaked light alone, 4 e
 			}
 			for x, want := range frames[y] {
 				require.InDelta(t, want, row[x], 0.01*want+0.002*most, "%s column %d row %d", name, x, y)

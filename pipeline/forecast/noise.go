@@ -15,6 +15,7 @@ type noiseModel struct {
 	read      float64 // ReadNoiseVariance
 	dark      float64 // electrons a second
 	scatter   float64 // rms of a frame's transmission
+	cycles    float64 // frames of each step
 	// What is taken off all frames: the means of so many frames.
 	bias, darks, off int
 	darkDwell        float64
@@ -26,11 +27,11 @@ type noiseModel struct {
 // they stand for all-off frames.
 const pedestalColumns = 7
 
-func newNoiseModel(l *Light, f *fieldLight, c Candidate, throughput float64) *noiseModel {
+func newNoiseModel(l *Light, f *fieldLight, c Candidate, of taken) *noiseModel {
 	k := l.target.Calibration
 	n := &noiseModel{
 		light: l, field: f, design: c.Design(), candidate: c,
-		dark: l.camera.darkEPS, scatter: throughput,
+		dark: l.camera.darkEPS, scatter: of.throughput, cycles: of.cycles,
 		bias: k.Bias.Count, darks: k.Dark.Count, darkDwell: k.Dark.DwellSeconds, off: allOff(l.target, c.V*c.Cycles), squares: map[int][]float64{},
 	}
 	n.read = n.design.ReadNoiseVariance()
@@ -68,7 +69,7 @@ func (n *noiseModel) pixels(j int, win *window) []pixelNoise {
 
 // at is the noise of a pixel for an element of so many electrons a second.
 func (n *noiseModel) at(x, y int, own float64) pixelNoise {
-	d, t, cycles := n.design, n.candidate.DwellSeconds, float64(n.candidate.Cycles)
+	d, t, cycles := n.design, n.candidate.DwellSeconds, n.cycles
 	camera := n.light.camera
 	row := n.field.pixelRow(y)
 	leak := row.leak[x] * t
@@ -130,7 +131,7 @@ func (n *noiseModel) addShared(v *Parts, x, y int, o *overlapped) {
 	if pairs == 0 {
 		return
 	}
-	d, t, cycles := n.design, n.candidate.DwellSeconds, float64(n.candidate.Cycles)
+	d, t, cycles := n.design, n.candidate.DwellSeconds, n.cycles
 	camera := n.light.camera
 	quiet, leak := camera.quiet[camera.amplifier(x, y)], n.field.pixelRow(y).leak[x]*t
 	k, l := float64(d.K), float64(d.L)

@@ -28,7 +28,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 		g.Calibration, g.AllOffEvery = frames, allOffEvery
 	})
 	c.DwellSeconds, c.ElementMirrors = 1, 1
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	require.NoError(t, err)
 	f := l.field(c, sight{})
 	for q := -20; q < l.profile.Detector.Rows+20; q++ {
@@ -37,7 +37,7 @@ func evenNoise(t testing.TB, c Candidate, overlap, quiet, dark float64, frames s
 			r.overlap[x], r.leak[x] = overlap, 0
 		}
 	}
-	return newNoiseModel(l, f, c, 0)
+	return newNoiseModel(l, f, c, taken{cycles: float64(c.Cycles)})
 }
 
 // The CCD equation's worked value: N* = 10000 in 10 pixels with sky 50, dark 2 and read
@@ -53,7 +53,7 @@ func TestCCDEquation(t *testing.T) {
 	}
 	require.InEpsilon(t, 96.358970, star/math.Sqrt(variance), 1e-7)
 	// Four cycles, each as long: SIGNAL is their mean.
-	n.candidate.Cycles = 4
+	n.cycles = 4
 	p := n.at(300, 90, sky+star/pixels)
 	require.InEpsilon(t, variance/pixels/4, p.variance(), 1e-9)
 }
@@ -166,7 +166,7 @@ func TestThroughputLeft(t *testing.T) {
 	left := func(mag float64, dark int) float64 {
 		l := newTestLight(t, "optical", "demo", scene.Scene{SeeingFWHMArcsec: 1, Sky: scene.Sky{ContinuumABArcsec2: &mag}}, nil,
 			func(_ *instrument.Profile, g *sequence.Target) { g.Forecast.ThroughputRMS = 0.01 })
-		c, err := Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1}.resolved(l.profile)
+		c, err := l.resolved(Candidate{Family: "m-sequence", V: 127, N: 127 - dark, Dark: dark, ElementMirrors: 2, DwellSeconds: 90, Cycles: 1})
 		require.NoError(t, err)
 		return l.throughputLeft(l.field(c, sight{}), c)
 	}

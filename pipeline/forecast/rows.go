@@ -159,9 +159,9 @@ func (f *deviceLight) dispersedAt(q int) []float64 {
 	return xi
 }
 
-// across is how far mirrors of u send their light from where those of the middle do, px.
+// across is how far from x_c mirrors of u send their light, px.
 func (f *deviceLight) across(i int) float64 {
-	return f.light.profile.Spectrograph.UStepPx * (float64(f.uFirst+i) - f.middle)
+	return f.light.profile.Spectrograph.UStepPx * (float64(f.uFirst+i+f.light.target.OffsetU()) - f.middle)
 }
 
 // evenWithin is how alike shares of neighbours are that are summed at once.

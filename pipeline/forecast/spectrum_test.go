@@ -67,7 +67,7 @@ func TestElectronsByHand(t *testing.T) {
 		p.Spectrograph.Throughput = instrument.Curve{{WavelengthNM: 300, Fraction: 0.5}, {WavelengthNM: 1000, Fraction: 0.5}}
 	})
 	c := Candidate{Family: "m-sequence", V: 127, N: 111, Dark: 16, ElementMirrors: 2, DwellSeconds: 10, Cycles: 1}
-	c, err := c.resolved(l.profile)
+	c, err := l.resolved(c)
 	require.NoError(t, err)
 	f := l.field(c, sight{})
 	sum := func(of func(p *piece) []float64) (total float64) {

@@ -21,9 +21,9 @@ type wanted struct {
 	fromNM, toNM float64
 }
 
-// of tells whether the light of a source is meant.
+// of tells whether the light of a source is meant; that of the sky, -1, never is.
 func (w *wanted) of(source int) bool {
-	return source == w.source || w.source < 0 && source >= 0
+	return source >= 0 && (w.source < 0 || source == w.source)
 }
 
 // Where nothing else is said, apertures and windows are the best ones for a Gaussian on an

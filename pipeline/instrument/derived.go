@@ -21,10 +21,17 @@ func (p *Profile) WRange() (wMin, wMax int) {
 }
 
 // UCenter is the middle of the device's u: strips are centred there as well as
-// their widths allow.
+// their widths allow, unless the field lies beside it.
 func (p *Profile) UCenter() float64 {
 	first, last := p.URange()
 	return float64(first+last) / 2
+}
+
+// FieldFirstU is the first u of a field of so many u whose middle lies offset u from the
+// device's, by half a u more where its width is odd and the device's even or the other way
+// round. It may lie off the device.
+func (p *Profile) FieldFirstU(width, offset int) int {
+	return offset + int(math.Ceil(p.UCenter()-float64(width-1)/2))
 }
 
 // WCenter is the middle of the device's w, r_c of the geometry: its light falls

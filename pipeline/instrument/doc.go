@@ -18,10 +18,11 @@
 // With l = wavelength - center_nm in vacuum nanometres and q = y - y_center_px,
 // the profile's spectrograph means, for element j of n and mirror w,
 //
-//	x = x_center_px + u_step_px m (j - (n-1)/2) + d1 l + d2 l^2 + d3 l^3 + slit_tilt q + smile_per_px q^2
+//	x = x_center_px + u_step_px (o + m (j - (n-1)/2)) + d1 l + d2 l^2 + d3 l^3 + slit_tilt q + smile_per_px q^2
 //	y = y_center_px + w_step_px (w - wc) + trace_tilt (x - x_center_px) + trace_curve_per_px (x - x_center_px)^2
 //
-// m mirrors an element, wc the middle of w.
+// m mirrors an element, o the whole mirrors by which the field lies beyond the device's
+// middle, wc the middle of w.
 //
 // Invariants: a *Profile from Load or Parse has passed every check of Validate;
 // YAML of it is the same text on every machine and reads back as an equal

@@ -87,13 +87,13 @@ func fieldElements(c sequence.CodeChoice, profile *instrument.Profile, target *s
 	like.Code = c
 	o := newOptics(profile, &like)
 	if c.V == nil {
-		return min(o.deviceU/c.ElementMirrors, o.elementsWithWholeBand()), nil
+		return o.elementsWithWholeBand(), nil
 	}
 	n := elementsOf(*c.V, c.Dark, hadamard.MSequence)
 	if n < 1 {
 		return 0, refuse("code.v", "the default of %d dark columns leaves no element of the %d columns; give code.dark or a larger code.v", hadamard.DefaultDark(*c.V), *c.V)
 	}
-	if n*c.ElementMirrors > o.deviceU {
+	if !o.onDevice(n) {
 		return 0, nil
 	}
 	return n, nil
@@ -173,7 +173,7 @@ func judged(ctx context.Context, s *sequence.Sequence) (*trade.Trade, error) {
 	if err != nil {
 		return nil, err
 	}
-	given := candidateOf(s)
+	given := forecast.CandidateOf(s)
 	t, err := trade.Compare(ctx, trade.Request{
 		Target: target, Profile: s.Profile, Light: light, Given: &given,
 		Fields: []trade.Field{{Elements: s.N(), Mirrors: s.ElementMirrors()}},
@@ -183,12 +183,4 @@ func judged(ctx context.Context, s *sequence.Sequence) (*trade.Trade, error) {
 	}
 	t.Choose(target, nil)
 	return t, nil
-}
-
-// candidateOf is a sequence as forecasts see it.
-func candidateOf(s *sequence.Sequence) forecast.Candidate {
-	return forecast.Candidate{
-		Family: s.Family, V: s.V, K: s.K, L: s.L, N: s.N(), ElementMirrors: s.ElementMirrors(), Dark: s.V - s.N(),
-		DwellSeconds: s.Target.DwellSeconds, Cycles: s.Target.Code.Cycles,
-	}
 }

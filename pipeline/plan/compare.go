@@ -109,7 +109,7 @@ func sideOf(ctx context.Context, name, profile string) (*Side, error) {
 }
 
 func newSide(ctx context.Context, name string, s *sequence.Sequence) (*Side, error) {
-	side := &Side{Name: name, Profile: s.Profile.Name, Candidate: candidateOf(s), Order: s.Target.Code.Order, Steps: len(s.Steps)}
+	side := &Side{Name: name, Profile: s.Profile.Name, Candidate: forecast.CandidateOf(s), Order: s.Target.Code.Order, Steps: len(s.Steps)}
 	for _, st := range s.Steps {
 		side.Minutes += (st.ExptimeSeconds + s.Profile.OverheadS()) / 60
 	}

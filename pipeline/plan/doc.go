@@ -2,8 +2,8 @@
 // code, which strips of mirrors, which exposures in which order.
 //
 // The field is n elements, neighbouring strips of code.element_mirrors u each,
-// centred on the device's u as well as whole mirrors allow. n follows from the
-// target:
+// centred on the device's u as well as whole mirrors allow, or field.offset_u from there.
+// n follows from the target:
 //
 //   - code.v and code.dark given: n = v - dark;
 //   - code.v alone: the largest n that leaves the default number of dark

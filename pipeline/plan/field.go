@@ -2,7 +2,6 @@ package plan
 
 import (
 	"fmt"
-	"math"
 	"slices"
 
 	"mirrorloom/hadamard"
@@ -34,6 +33,11 @@ func chooseCode(c sequence.CodeChoice, o *optics) (*hadamard.Code, int, error) {
 	if width := n * c.ElementMirrors; width > o.deviceU {
 		return nil, 0, refuse("code.v", "%d elements of %d mirrors span %d where the device has %d; give a smaller code.v, narrower elements or more code.dark", n, c.ElementMirrors, width, o.deviceU)
 	}
+	if !o.onDevice(n) {
+		first, last := o.field(n)
+		uFirst, uLast := o.profile.URange()
+		return nil, 0, refuse("field.offset_u", "a field of %d elements of %d mirrors would span u from %d to %d where the device has %d to %d; give an offset from %d to %d, or a smaller field", n, c.ElementMirrors, first, last, uFirst, uLast, o.offsetU+uFirst-first, o.offsetU+uLast-last)
+	}
 	return code, n, nil
 }
 
@@ -52,12 +56,15 @@ func elementsOf(v int, dark *int, family hadamard.Family) int {
 // fittingCode is the smallest code for as many elements as device, detector and
 // family allow.
 func fittingCode(c sequence.CodeChoice, family hadamard.Family, o *optics) (*hadamard.Code, int, error) {
+	if !o.onDevice(1) {
+		return nil, 0, refuse("field.offset_u", "the device's %d u hold no element at an offset of %d; give a smaller one", o.deviceU, o.offsetU)
+	}
 	byDetector := o.elementsWithWholeBand()
 	if byDetector < 1 {
 		return nil, 0, refuse("code.v", "the wavelength grid does not fit the detector's %d columns even for one element; give code.v, or a profile with a shorter grid", o.profile.Detector.Columns)
 	}
 	sizes := hadamard.Sizes(family)
-	n := min(o.deviceU/c.ElementMirrors, byDetector, elementsOf(sizes[len(sizes)-1], c.Dark, family))
+	n := min(byDetector, elementsOf(sizes[len(sizes)-1], c.Dark, family))
 	if n < 1 {
 		return nil, 0, refuse("code.dark", "no %s code has room for %d dark columns and an element; give fewer", family, *c.Dark)
 	}
@@ -73,11 +80,8 @@ func fittingCode(c sequence.CodeChoice, family hadamard.Family, o *optics) (*had
 }
 
 // strips assigns the columns that are not dark, in order, to neighbouring
-// strips of mirrors centred on the device: with T mirrors in all the first is
-// ceil(u_c - (T-1)/2), u_c the middle of the device's u.
-func strips(p *instrument.Profile, v int, dark []int, mirrors int) []sequence.Element {
-	total := (v - len(dark)) * mirrors
-	next := int(math.Ceil(p.UCenter() - float64(total-1)/2))
+// strips of mirrors from u = next on.
+func strips(next, v int, dark []int, mirrors int) []sequence.Element {
 	elements := make([]sequence.Element, v)
 	j := 0
 	for column := range elements {

@@ -237,3 +237,86 @@ func TestWarnings(t *testing.T) {
 		})
 	}
 }
+
+// A field beside the device's middle: its strips by as many u, as many elements as still keep
+// the grid on the detector, and refusals that name the key and a cure that works.
+func TestFieldBeside(t *testing.T) {
+	of := func(x int) *int { return &x }
+	beside := func(offset int, v, dark *int) (*sequence.Target, *instrument.Profile) {
+		target, profile := demo(t)
+		target.Code.V, target.Code.Dark, target.Field = v, dark, &sequence.FieldChoice{OffsetU: offset}
+		return target, profile
+	}
+	firstOf := func(s *sequence.Sequence) int { return s.Elements[s.ElementColumns()[0]].First }
+	target, profile := beside(0, of(127), of(16)) // 222 of 256 mirrors
+	centred, _ := build(t, target, profile)
+	for _, offset := range []int{-17, 5, 17} {
+		target.Field.OffsetU = offset
+		s, _ := build(t, target, profile)
+		require.Equal(t, firstOf(centred)+offset, firstOf(s))
+		require.InDelta(t, float64(offset), s.FieldCenterU()-profile.UCenter(), 1e-12)
+		require.Equal(t, offset, s.Target.OffsetU())
+	}
+	for _, c := range []struct {
+		offset int
+		want   string
+	}{
+		{18, "field.offset_u: a field of 111 elements of 2 mirrors would span u from 35 to 256 where the device has 0 to 255; give an offset from -17 to 17, or a smaller field"},
+		{-18, "give an offset from -17 to 17"},
+	} {
+		target.Field.OffsetU = c.offset
+		_, _, err := plan.Build(context.Background(), target, profile)
+		require.ErrorContains(t, err, c.want)
+	}
+
+	// Left to plan, the field loses at one side what it gains at the other: every mirror of
+	// offset takes two.
+	target, profile = beside(0, nil, nil)
+	whole, _ := build(t, target, profile)
+	target.Field.OffsetU = 20
+	s, _ := build(t, target, profile)
+	require.Equal(t, whole.N()-20, s.N(), "elements of two mirrors")
+	profile.Spectrograph.XCenterPx -= 20 * profile.Spectrograph.UStepPx
+	s, _ = build(t, target, profile)
+	require.Equal(t, min(whole.N(), (256-40)/2), s.N(), "the detector is moved, the device is the limit")
+
+	// Beyond the detector.
+	target, profile = beside(-900, of(31), of(7))
+	profile.DMD.Columns = 2200
+	_, _, err := plan.Build(context.Background(), target, profile)
+	require.ErrorContains(t, err, "field.offset_u: the detector's 640 columns hold no wavelength of the grid for element")
+
+	// Mounted diagonally, strips near the corner have no mirror in the rows in use.
+	target, profile = beside(120, of(31), of(7))
+	profile.DMD.Mounting = instrument.Diagonal
+	profile.DMD.Columns, profile.DMD.Rows = 160, 160
+	target.Field.Rows = []int{60, 90}
+	_, _, err = plan.Build(context.Background(), target, profile)
+	require.ErrorContains(t, err, "has no mirror in the rows that are open")
+	target.Field.Rows = []int{-200, 90}
+	_, _, err = plan.Build(context.Background(), target, profile)
+	require.ErrorContains(t, err, "field.rows: the rows -200 to 90 reach beyond the device's w of -159 to 159")
+}
+
+// field.rows becomes closed rows, with no row of two uses.
+func TestFieldRows(t *testing.T) {
+	target, profile := demo(t)
+	target.Field = &sequence.FieldChoice{Rows: []int{30, 90}}
+	target.SentinelRows = []sequence.SentinelRow{{First: 100, Last: 110, Element: 3}}
+	element := 7
+	target.Closed = []sequence.ClosedRow{{First: 85, Last: 95}, {First: 5, Last: 40, Element: &element}}
+	s, _ := build(t, target, profile)
+	last := profile.DMD.Rows - 1
+	require.Equal(t, []sequence.RowRange{
+		{First: 0, Last: 29, Use: sequence.UseClosed, Element: -1},
+		{First: 30, Last: 84, Use: sequence.UseCoded, Element: -1},
+		{First: 85, Last: 95, Use: sequence.UseClosed, Element: -1},
+		{First: 96, Last: 99, Use: sequence.UseClosed, Element: -1},
+		{First: 100, Last: 110, Use: sequence.UseSentinel, Element: 3},
+		{First: 111, Last: last, Use: sequence.UseClosed, Element: -1},
+		{First: 5, Last: 40, Use: sequence.UseClosed, Element: 7},
+	}, s.Rows)
+	require.Empty(t, s.Target.Field.Rows)
+	again, _ := build(t, s.Target, profile)
+	require.Equal(t, s.Rows, again.Rows, "the resolved target plans the same")
+}

@@ -19,7 +19,7 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	if err != nil {
 		return err
 	}
-	r.Forecast, err = light.Of(ctx, candidateOf(s))
+	r.Forecast, err = light.Of(ctx, forecast.CandidateOf(s))
 	if err != nil {
 		return err
 	}

@@ -14,6 +14,7 @@ type optics struct {
 	profile *instrument.Profile
 	mirrors int // of an element
 	deviceU int // number of u
+	offsetU int // of the field's middle from the device's
 	// wFirst and wLast bound the rows that are not closed for all elements.
 	wFirst, wLast int
 	// band is where the grid's voxels begin and end in x relative to the
@@ -30,7 +31,7 @@ func empty() extent { return extent{math.Inf(1), math.Inf(-1)} }
 
 func newOptics(p *instrument.Profile, t *sequence.Target) *optics {
 	uFirst, uLast := p.URange()
-	o := &optics{profile: p, mirrors: t.Code.ElementMirrors, deviceU: uLast - uFirst + 1, band: empty()}
+	o := &optics{profile: p, mirrors: t.Code.ElementMirrors, deviceU: uLast - uFirst + 1, offsetU: t.OffsetU(), band: empty()}
 	o.wFirst, o.wLast = openRows(p, t)
 	for i := range p.Grid.Count + 1 {
 		o.band.take(o.dispersion(p.Grid.WavelengthNM(float64(i) - 0.5)))
@@ -92,23 +93,49 @@ func rangeOf(a, b, q0, q1 float64) extent {
 	return e
 }
 
-// elementsWithWholeBand is the largest number of elements of which each has
-// every voxel of the grid on the detector, in every row.
+// field is the first and the last u of n elements.
+func (o *optics) field(n int) (first, last int) {
+	width := n * o.mirrors
+	first = o.profile.FieldFirstU(width, o.offsetU)
+	return first, first + width - 1
+}
+
+// onDevice tells whether the device has all u of n elements.
+func (o *optics) onDevice(n int) bool {
+	uFirst, uLast := o.profile.URange()
+	first, last := o.field(n)
+	return first >= uFirst && last <= uLast
+}
+
+// elementsWithWholeBand is the largest number of elements on the device of which each has
+// every voxel of the grid on the detector, in every row; 0 for none.
 func (o *optics) elementsWithWholeBand() int {
-	x := o.profile.Spectrograph.XCenterPx
-	left := x + o.band.low + o.slit.low + 0.5
-	right := float64(o.profile.Detector.Columns) - 0.5 - (x + o.band.high + o.slit.high)
-	margin := min(left, right)
-	if margin < 0 {
-		return 0
+	right := float64(o.profile.Detector.Columns) - 0.5
+	return most(func(n int) bool {
+		return o.onDevice(n) && o.column(0, n)+o.band.low+o.slit.low >= -0.5 && o.column(n-1, n)+o.band.high+o.slit.high <= right
+	})
+}
+
+// most is the largest n from 1 on up to which all fit: wider fields reach further to both
+// sides.
+func most(fits func(n int) bool) int {
+	n := 0
+	for fits(n + 1) {
+		n++
 	}
-	return 1 + int(min(2*margin/o.profile.ElementStepPx(o.mirrors), float64(o.deviceU)))
+	return n
+}
+
+// column is x of the centre wavelength of element j of n on the row y_c.
+func (o *optics) column(j, n int) float64 {
+	across := float64(o.offsetU) + float64(o.mirrors)*(float64(j)-float64(n-1)/2) // mirrors
+	return o.profile.Spectrograph.XCenterPx + o.profile.Spectrograph.UStepPx*across
 }
 
 // bandSeen is the fraction of the grid's voxels whose centre lies on the
 // detector for element j of n, on the row y_c.
 func (o *optics) bandSeen(j, n int) float64 {
-	at := o.profile.Spectrograph.XCenterPx + o.profile.ElementStepPx(o.mirrors)*(float64(j)-float64(n-1)/2)
+	at := o.column(j, n)
 	seen := 0
 	for i := range o.profile.Grid.Count {
 		x := at + o.dispersion(o.profile.Grid.WavelengthNM(float64(i)))
@@ -119,14 +146,35 @@ func (o *optics) bandSeen(j, n int) float64 {
 	return float64(seen) / float64(o.profile.Grid.Count)
 }
 
-// checkField refuses a field whose edge elements the detector does not see.
+// checkField refuses a field whose edge elements the detector does not see, or whose edge
+// strips have no mirror in the open rows.
 func (o *optics) checkField(n int) error {
-	for _, j := range []int{0, n - 1} {
+	key, cure := "code", "give fewer or narrower elements"
+	if o.offsetU != 0 {
+		key, cure = "field.offset_u", "bring the field nearer to the device's middle, or give fewer or narrower elements"
+	}
+	first, last := o.field(n)
+	for _, edge := range [][2]int{{0, first + o.mirrors - 1}, {n - 1, last - o.mirrors + 1}} {
+		j, u := edge[0], edge[1] // the u nearest to the field's middle
 		if o.bandSeen(j, n) == 0 {
-			return refuse("code", "the detector's %d columns hold no wavelength of the grid for element %d of %d; give fewer or narrower elements", o.profile.Detector.Columns, j, n)
+			return refuse(key, "the detector's %d columns hold no wavelength of the grid for element %d of %d; %s", o.profile.Detector.Columns, j, n, cure)
+		}
+		if wFirst, wLast := o.stripEnds(u); wFirst > wLast {
+			return refuse(key, "element %d of %d lies in the device's corner and has no mirror in the rows that are open; %s", j, n, cure)
 		}
 	}
 	return nil
+}
+
+// stripEnds are the first and the last w, of those open, that the mirrors of u reach; first
+// > last for none.
+func (o *optics) stripEnds(u int) (first, last int) {
+	d := o.profile.DMD
+	if d.Mounting != instrument.Diagonal {
+		return o.wFirst, o.wLast
+	}
+	// w = row - column = u - 2 column.
+	return max(o.wFirst, u-2*min(u, d.Columns-1)), min(o.wLast, u-2*max(0, u-(d.Rows-1)))
 }
 
 // stripRows is the height, in detector rows, of what the mirrors of u light,
@@ -135,12 +183,6 @@ func (o *optics) checkField(n int) error {
 func (o *optics) stripRows(u int) (reached, seen float64) {
 	q0, q1 := o.rowsSeen()
 	seen = q1 - q0
-	d := o.profile.DMD
-	if d.Mounting != instrument.Diagonal {
-		return seen, seen
-	}
-	// w = row - column = u - 2 column.
-	wFirst := float64(u - 2*min(u, d.Columns-1))
-	wLast := float64(u - 2*max(0, u-(d.Rows-1)))
-	return max(0, min(q1, o.row(wLast))-max(q0, o.row(wFirst))), seen
+	first, last := o.stripEnds(u)
+	return max(0, min(q1, o.row(float64(last)))-max(q0, o.row(float64(first)))), seen
 }

@@ -79,11 +79,14 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 // target is left as it is; the sequence's own has code.v and code.dark filled
 // in, and all that a target of code.family auto leaves open. Errors about the target are a
 // *config.Error with the key path.
-func Build(ctx context.Context, target *sequence.Target, profile *instrument.Profile) (*sequence.Sequence, *Summary, error) {
+func Build(ctx context.Context, target *sequence.Target, profile *instrument.Profile) (_ *sequence.Sequence, _ *Summary, err error) {
 	if err := profile.Validate(); err != nil {
 		return nil, nil, fmt.Errorf("profile: %w", err)
 	}
 	if err := target.Check(); err != nil {
+		return nil, nil, err
+	}
+	if target, err = withFieldRows(target, profile); err != nil {
 		return nil, nil, err
 	}
 	if !target.Code.Auto() {
@@ -170,7 +173,7 @@ func assemble(target *sequence.Target, profile *instrument.Profile, code *hadama
 	s := &sequence.Sequence{
 		Family: string(code.Family()), V: v, K: code.K(), L: code.L(), Poly: code.Poly(),
 		OrderSeed: uint64(target.Code.Seed),
-		Elements:  strips(profile, v, dark, target.Code.ElementMirrors),
+		Elements:  strips(profile.FieldFirstU((v-g)*target.Code.ElementMirrors, target.OffsetU()), v, dark, target.Code.ElementMirrors),
 		Rows:      target.RowRanges(wFirst, wLast),
 		Profile:   profile,
 		Target:    &resolved,

@@ -31,6 +31,9 @@ type Run struct {
 	Sky *SkyReport `json:"sky,omitempty"`
 	// Flux is what the reference star told; nil for a cube in counts.
 	Flux *FluxReport `json:"flux,omitempty"`
+	// Forecast is the plan's forecast beside what was reached; nil if the target has none, or
+	// without a cube.
+	Forecast *Forecast `json:"forecast,omitempty"`
 	// Combined are the runs that were combined; nil for a reduction.
 	Combined Members `json:"combined,omitempty"`
 	// FieldShift says where in the field the light of the voxels was taken; nil at their

@@ -62,11 +62,7 @@ func checkFlatDepth(t *testing.T, depth []product.DepthAtSN) {
 // checkGeometry holds what run.json says against truth/geometry.yaml.
 func checkGeometry(t *testing.T, night *trial.Night, c *product.Calibration) {
 	t.Helper()
-	path := filepath.Join(night.Frames(trial.Noisy), rehearse.TruthFolder, rehearse.GeometryFile)
-	text, err := os.ReadFile(path)
-	require.NoError(t, err)
-	truth, err := rehearse.ReadGeometry(path, text)
-	require.NoError(t, err)
+	truth := readGeometry(t, filepath.Join(night.Frames(trial.Noisy), rehearse.TruthFolder, rehearse.GeometryFile))
 	p := night.Seq.Profile
 	s := p.Spectrograph
 	require.InDelta(t, truth.DispersionPxPerNM[0]/s.DispersionPxPerNM[0], c.Arcs.DispersionRatio, 1e-3)
@@ -87,7 +83,7 @@ func checkGeometry(t *testing.T, night *trial.Night, c *product.Calibration) {
 				x := xc + xe*(float64(j)-jc) + l*(got[5]+l*(got[6]+l*got[7])) + q*(got[8]+q*got[9])
 				l, q = p.Grid.WavelengthNM(float64(i))-truth.CenterNM, float64(y)-truth.YCenterPx
 				d := truth.DispersionPxPerNM
-				x -= truth.XCenterPx + truth.UStepPx*float64(night.Seq.ElementMirrors())*(float64(j)-float64(n-1)/2) +
+				x -= truth.XCenterPx + truth.UStepPx*(float64(night.Seq.Target.OffsetU())+float64(night.Seq.ElementMirrors())*(float64(j)-float64(n-1)/2)) +
 					l*(d[0]+l*(d[1]+l*d[2])) + q*(truth.SlitTilt+q*truth.SmilePerPx)
 				square += x * x / float64(p.Grid.Count)
 			}
@@ -96,4 +92,13 @@ func checkGeometry(t *testing.T, night *trial.Night, c *product.Calibration) {
 	}
 	t.Logf("wavelengths: worst rms of an element and row %.4f px against the truth; arc lines %.4f px around the solution", worst, c.Arcs.RMSPx)
 	require.Less(t, worst, 0.05)
+}
+
+func readGeometry(t *testing.T, path string) *rehearse.Geometry {
+	t.Helper()
+	text, err := os.ReadFile(path)
+	require.NoError(t, err)
+	g, err := rehearse.ReadGeometry(path, text)
+	require.NoError(t, err)
+	return g
 }

@@ -240,7 +240,7 @@ func (r *reduction) flatRule(rectify *rectifier) calib.FlatRule {
 	rule := calib.DefaultFlatRule()
 	edges := make([]float64, r.schema.Grid.Count+1)
 	y := r.camera.Rows / 2
-	r.optics.geometry.Places(edges, r.optics.geometry.J_c, float64(y), rectify.edges)
+	r.optics.geometry.Places(edges, float64(r.seq.N()-1)/2, float64(y), rectify.edges)
 	rule.AlongWavelength, rule.AlongSlit = calib.Correlation(rectify.shift, rectify.columns, edges, y)
 	return rule
 }

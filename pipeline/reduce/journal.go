@@ -123,7 +123,7 @@ func (r *reduction) takeVoxels(w *sweep, y int, v *voxelRecord) {
 // mark is where the sweep stood at the end of a strip, with what goes on changing after
 // it; rows below it change no more.
 type mark struct {
-	reached
+	extent
 	samples, samplesLeft  int
 	steps                 []float64
 	stepNoise             float64
@@ -133,7 +133,7 @@ type mark struct {
 
 func (r *reduction) mark(w *sweep, decoded int) mark {
 	m := mark{
-		reached: w.reached(decoded), samples: len(w.samples.list), samplesLeft: w.samples.left,
+		extent: w.extent(decoded), samples: len(w.samples.list), samplesLeft: w.samples.left,
 		steps: append([]float64{}, w.steps.square...), stepNoise: w.steps.noise, saturated: w.reader.tally.saturated(),
 	}
 	if r.cube != nil {
@@ -208,7 +208,7 @@ func (r *reduction) take(w *sweep, m *mark, s *stripRecord) bool {
 	w.samples.left = s.SamplesLeft
 	w.steps = stepChi2{square: s.Steps, noise: s.StepNoise}
 	*m = mark{
-		reached: reached{s.Decoded, s.Finished, s.NextOut}, samples: len(w.samples.list), samplesLeft: s.SamplesLeft,
+		extent: extent{s.Decoded, s.Finished, s.NextOut}, samples: len(w.samples.list), samplesLeft: s.SamplesLeft,
 		steps: s.Steps, stepNoise: s.StepNoise, saturated: s.Saturated, cubeSums: s.CubeSums, elementSums: s.ElementSums,
 	}
 	return true

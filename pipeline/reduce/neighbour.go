@@ -11,6 +11,7 @@ type neighbourTerm struct {
 	pairs    *hadamard.Neighbours
 	geometry calib.Geometry
 	term     *calib.ColourTerm
+	middle   float64 // of the field, in elements
 }
 
 // neighbourSigmas is the significance from which the term is corrected: a term
@@ -27,7 +28,7 @@ func (o *optics) neighbourTerm(d *decoder) (*neighbourTerm, error) {
 	if err != nil {
 		return nil, err
 	}
-	return &neighbourTerm{pairs: pairs, geometry: o.geometry, term: o.neighbour}, nil
+	return &neighbourTerm{pairs: pairs, geometry: o.geometry, term: o.neighbour, middle: float64(len(d.elementColumns)-1) / 2}, nil
 }
 
 // sizes fills in the term of the n pixels of row y from column x0 on.
@@ -41,7 +42,7 @@ func (t *neighbourTerm) sizes(size, slope []float32, x0, y, n int) {
 // next. The size of the term is linear in the wavelength, and so nearly linear over the
 // elements of a pixel.
 func (t *neighbourTerm) at(column, y int) (size, slope float32) {
-	middle, x := t.geometry.J_c, float64(column)
+	middle, x := t.middle, float64(column)
 	row := float64(y) - t.geometry.TraceShift(x)
 	below, _ := t.term.At(t.geometry.Wavelength(x, middle-0.5, row))
 	above, _ := t.term.At(t.geometry.Wavelength(x, middle+0.5, row))

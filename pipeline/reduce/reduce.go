@@ -49,7 +49,11 @@ func Run(ctx context.Context, opts Options) (result *Result, err error) {
 	if r.toSky() {
 		stages = append(stages, stage{"sky", r.bringToSky})
 	}
-	if err := r.runStages(ctx, append(stages, stage{"finish", r.finish})); err != nil {
+	stages = append(stages, stage{"finish", r.finish})
+	if r.hasForecast() {
+		stages = append(stages, stage{"forecast", r.holdForecast})
+	}
+	if err := r.runStages(ctx, stages); err != nil {
 		return nil, err
 	}
 	return r.result(ctx)
@@ -105,6 +109,8 @@ type reduction struct {
 	quality   product.Quality
 	stars     starSearch
 	samples   restoredSamples
+	// reached is the forecast beside what the cube has; nil without a forecast.
+	reached   *product.Forecast
 	badPixels int
 	stages    []product.Stage
 	// looked counts the bytes that calibrate reads: see traffic.go.

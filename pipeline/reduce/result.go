@@ -37,8 +37,8 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	run := &product.Run{
 		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
 		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
-		FieldShift: r.shift.Section(),
-		Warnings:   append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
+		FieldShift: r.shift.Section(), Forecast: r.reached,
+		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
 	}
 	run.Stars = r.stars.report
 	if r.night.Audit != nil {

@@ -161,7 +161,7 @@ func (r *reduction) goOn(k *keeper) error {
 	for i, n := range m.saturated {
 		w.reader.tally.frames[i].Saturated = n
 	}
-	w.before = m.reached
+	w.before = m.extent
 	for y := w.firstAgain(); y < m.decoded; y++ {
 		w.quality[y].forgetDecoding()
 	}

@@ -31,7 +31,7 @@ type sweep struct {
 	progress      func(rows int)
 	// before is how far an earlier sweep came, whose sums begin gives back to this one;
 	// nothing for a sweep from the start. boundary, where not nil, is called after each strip.
-	before   reached
+	before   extent
 	boundary func(decoded int) error
 
 	window  *window

@@ -3,8 +3,8 @@ package reduce
 // A sweep that goes on where an earlier one ended decodes again the rows that the next
 // trace rows need. What they give is the same, and is neither written nor counted twice.
 
-// reached is how far a sweep came at the end of a strip.
-type reached struct {
+// extent is how far a sweep came at the end of a strip.
+type extent struct {
 	decoded  int // detector rows
 	finished int // detector rows fit for rectifying, whose variances are written
 	nextOut  int // trace rows written
@@ -47,9 +47,9 @@ func (w *sweep) bound(s *strip) error {
 	return w.boundary(s.y1)
 }
 
-// reached tells how far the sweep came, at the end of a strip.
-func (w *sweep) reached(decoded int) reached {
-	at := reached{decoded: decoded, finished: w.finished, nextOut: w.nextOut}
+// extent tells how far the sweep came, at the end of a strip.
+func (w *sweep) extent(decoded int) extent {
+	at := extent{decoded: decoded, finished: w.finished, nextOut: w.nextOut}
 	if w.rectify == nil {
 		at.finished, at.nextOut = decoded, 0
 	}

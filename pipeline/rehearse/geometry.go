@@ -18,7 +18,7 @@ type Geometry struct {
 	// UStepPx and WStepPx are u_step and w_step, px.
 	UStepPx float64 `yaml:"u_step_px"`
 	WStepPx float64 `yaml:"w_step_px"`
-	// UMiddle is u_mid, WMiddle is r_c, in mirrors.
+	// UMiddle is u_mid, the u whose light lands on x_c, WMiddle is r_c, in mirrors.
 	UMiddle float64 `yaml:"u_middle"`
 	WMiddle float64 `yaml:"w_middle"`
 	// XCenterPx and YCenterPx are x_c and y_c, in active pixels from 0.
@@ -40,12 +40,20 @@ func nominalGeometry(seq *sequence.Sequence) Geometry {
 	return Geometry{
 		CenterNM: s.CenterNM, DispersionPxPerNM: s.DispersionPxPerNM,
 		UStepPx: s.UStepPx, WStepPx: s.WStepPx,
-		UMiddle: seq.FieldCenterU(), WMiddle: seq.Profile.WCenter(),
+		UMiddle: middleU(seq), WMiddle: seq.Profile.WCenter(),
 		XCenterPx: s.XCenterPx, YCenterPx: s.YCenterPx,
 		SlitTilt: s.SlitTilt, SmilePerPx: s.SmilePerPx,
 		TraceTilt: s.TraceTilt, TraceCurvePerPx: s.TraceCurvePerPx,
 		LSFFWHMPx: s.LSFFWHMPx,
 	}
+}
+
+// middleU is the u whose light lands on x_c: the middle of the strips or, where they lie so
+// many whole mirrors beside the device's, the place as many mirrors back. (Half a mirror, by
+// which strips of an odd number of mirrors miss the middle of an even number, is no offset.)
+func middleU(seq *sequence.Sequence) float64 {
+	middle := seq.FieldCenterU()
+	return middle - math.Floor(middle-seq.Profile.UCenter())
 }
 
 // How far the true geometry may be from the profile's.

@@ -44,6 +44,7 @@ type page struct {
 	Throughput       template.HTML
 	ThroughputFacts  []fact
 	OnSky            []fact
+	Forecast         *forecastView
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
@@ -67,6 +68,7 @@ func newPage(in Input) *page {
 		Style: template.CSS(pageCSS), Object: in.Schema.Object, Profile: in.Profile,
 		Version: in.Run.Version, CPU: in.Run.CPULevel,
 		Ledger: viewLedger(in.Ledger), Quality: append(qualityFacts(in.Run.Quality), darkFacts(in.Run.Quality)...), ErrorScale: drawScale(in.Run.Quality.ErrorScale), Calibration: calibrationFacts(in.Run.Calibration),
+		Forecast: viewForecast(in.Run.Forecast),
 		OnSky:    slices.Concat(skyFacts(in.Run.Sky), fluxFacts(in.Run.Flux), starFacts(in.Run.Stars)),
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}

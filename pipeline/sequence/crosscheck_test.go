@@ -31,6 +31,21 @@ func everySequence(t *testing.T) (sequences []*sequence.Sequence, dirs []string)
 	for _, mounting := range []string{instrument.Square, instrument.Diagonal} {
 		sequences = append(sequences, build(t, onlyTarget(small(t, mounting)), onlyProfile(small(t, mounting))))
 	}
+	for _, c := range []struct {
+		mounting      string
+		field         sequence.FieldChoice
+		mirrors, turn int
+	}{
+		{instrument.Square, sequence.FieldChoice{OffsetU: -2, Rows: []int{1, 27}}, 2, 33},
+		{instrument.Square, sequence.FieldChoice{OffsetU: 14}, 1, 180},
+		{instrument.Diagonal, sequence.FieldChoice{OffsetU: -9, Rows: []int{-9, 17}}, 2, -33},
+		{instrument.Diagonal, sequence.FieldChoice{OffsetU: 13}, 1, 0},
+		{instrument.Diagonal, sequence.FieldChoice{}, 3, 90},
+	} {
+		target, profile := small(t, c.mounting)
+		target.Field, target.Code.ElementMirrors, target.RotangDeg = &c.field, c.mirrors, float64(c.turn)
+		sequences = append(sequences, build(t, target, profile))
+	}
 	for _, s := range sequences {
 		dirs = append(dirs, write(t, s))
 	}

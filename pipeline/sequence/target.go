@@ -23,6 +23,8 @@ type Target struct {
 	// 2031-03-14T02:30:00Z; Start gives it as a time.
 	StartUTC string     `yaml:"start_utc"`
 	Code     CodeChoice `yaml:"code"`
+	// Field is where on the device the field lies; nil for its middle and all rows.
+	Field *FieldChoice `yaml:"field" config:"optional"`
 	// DwellSeconds is the exposure time of a science step and of the all-off
 	// frames between them. It may be left out (0) where Code.Family is FamilyAuto.
 	DwellSeconds float64 `yaml:"dwell_s" config:"optional"`
@@ -37,6 +39,24 @@ type Target struct {
 
 	// sky holds the spectra that the forecast names, once they are read.
 	sky *scene.Scene
+}
+
+// FieldChoice says which part of the device is used.
+type FieldChoice struct {
+	// OffsetU is how many u the middle of the strips lies beyond the device's, towards larger
+	// u; the position of the target moves with it, and so does the light on the detector.
+	OffsetU int `yaml:"offset_u" config:"optional"`
+	// Rows are the first and the last mirror row (w) to be used, empty for all. Plan closes
+	// the others, but for sentinel rows among them.
+	Rows []int `yaml:"rows,flow" config:"optional"`
+}
+
+// OffsetU is Field's, 0 where none is given.
+func (t *Target) OffsetU() int {
+	if t.Field == nil {
+		return 0
+	}
+	return t.Field.OffsetU
 }
 
 // CodeChoice says how the field is coded.

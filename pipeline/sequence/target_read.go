@@ -80,6 +80,7 @@ func (t *Target) check(doc *config.Doc) error {
 		c.Within("dwell_s", t.DwellSeconds, 0, maxDwellSeconds)
 	}
 	c.Count("all_off_every", t.AllOffEvery, 0, maxFrames)
+	t.checkField(c)
 	t.checkRows(c)
 	t.checkCalibration(c)
 	t.checkForecast(c)
@@ -132,6 +133,22 @@ func (t *Target) checkAuto(c *config.Checks) {
 func (t *Target) checkOrder(c *config.Checks) {
 	c.OneOf("code.order", t.Code.Order, Orders()...)
 	c.That(t.Code.Seed >= 0, "code.seed", "%d is below 0; give a whole number from 0", t.Code.Seed)
+}
+
+func (t *Target) checkField(c *config.Checks) {
+	f := t.Field
+	if f == nil {
+		return
+	}
+	c.Count("field.offset_u", f.OffsetU, -maxMirror, maxMirror)
+	if len(f.Rows) == 0 {
+		return
+	}
+	if c.That(len(f.Rows) == 2, "field.rows", "%d numbers are no range of rows; write [first, last]", len(f.Rows)) {
+		c.Count("field.rows[0]", f.Rows[0], -maxMirror, maxMirror)
+		c.Count("field.rows[1]", f.Rows[1], -maxMirror, maxMirror)
+		c.That(f.Rows[0] <= f.Rows[1], "field.rows", "%d lies before %d; exchange them", f.Rows[1], f.Rows[0])
+	}
 }
 
 func (t *Target) checkRows(c *config.Checks) {

@@ -68,6 +68,19 @@ class Device:
         return on
 
 
+def check_field(target, device, elements):
+    """The strips lie side by side, in order of the columns, each element_mirrors wide; their
+    middle is that of the device's u, or half a mirror beyond, plus field.offset_u."""
+    field = target.get("field") or {}
+    assert not field.get("rows"), field
+    strips = [(int(e["FIRST"]), int(e["LAST"])) for e in elements if not e["DARK"]]
+    wide = target["code"]["element_mirrors"]
+    assert all(last - first + 1 == wide for first, last in strips)
+    assert all(b[0] == a[1] + 1 for a, b in zip(strips, strips[1:]))
+    middle = strips[0][0] + strips[-1][1] - device.u.min() - device.u.max() - 2 * field.get("offset_u", 0)
+    assert middle in (0, 1), middle
+
+
 def check(folder):
     profile = yaml.safe_load((folder / "profile.yaml").read_text())
     dmd = profile["dmd"]
@@ -78,6 +91,7 @@ def check(folder):
         v = head["CODEV"]
         assert code.dtype == np.uint8 and code.shape == (len(steps), v)
         device = Device(dmd, elements, rows)
+        check_field(yaml.safe_load((folder / "target.yaml").read_text()), device, elements)
         s = first_row(head["FAMILY"], v, head["CODEPOLY"])
         assert s.sum() == head["CODEK"]
         seen, coded = set(), 0
