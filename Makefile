@@ -3,9 +3,10 @@
 
 GO ?= go
 STATICCHECK := honnef.co/go/tools/cmd/staticcheck@v0.8.2
-# Debian's packages that the cross-checks run.
-PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml python3-astroscrappy fitsverify netpbm
-COMMANDS := fitsverify pngtopnm
+# Debian's packages that the cross-checks run: chromium prints the night sheet, poppler
+# counts its pages.
+PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml python3-astroscrappy fitsverify netpbm chromium poppler-utils
+COMMANDS := fitsverify pngtopnm chromium pdfinfo pdffonts pdftoppm
 
 .PHONY: all build demo test lint bench validate packages
 

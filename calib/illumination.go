@@ -8,7 +8,6 @@ import "math"
 // spread by a Gaussian of width fwhm, in rows. It is 1 inside a slit, falls over
 // about one fwhm at its ends, and shows what an element of few or closed rows lacks.
 func Illumination(dst, centres []float64, pitch, fwhm float64) {
-	scale := fwhmPerSigma / (fwhm * math.Sqrt2)
 	for y := range dst {
 		dst[y] = 0
 		for _, c := range centres {
@@ -16,7 +15,14 @@ func Illumination(dst, centres []float64, pitch, fwhm float64) {
 			if math.Abs(d) > 3*fwhm+1 {
 				continue
 			}
-			dst[y] += math.Abs(pitch) * (math.Erf((d+0.5)*scale) - math.Erf((d-0.5)*scale)) / 2
+			dst[y] += math.Abs(pitch) * RowShare(d, fwhm)
 		}
 	}
+}
+
+// RowShare is the part of a mirror row's light that falls on a row of pixels d rows
+// from its centre, spread by a Gaussian of width fwhm, in rows.
+func RowShare(d, fwhm float64) float64 {
+	scale := fwhmPerSigma / (fwhm * math.Sqrt2)
+	return (math.Erf((d+0.5)*scale) - math.Erf((d-0.5)*scale)) / 2
 }

@@ -8,6 +8,10 @@ type Response struct {
 	// Slit is s, [row][element]; Band is b, [element][voxel]. The variances are
 	// relative: var(s)/s^2 and var(b)/b^2.
 	Slit, SlitVariance []float32
+	// SlitRaw is the light of each row and element as measured, over the smooth course of
+	// s along the slit, also where a row was left out of the fit; NaN where there was no
+	// light to measure.
+	SlitRaw            []float32
 	Band, BandVariance []float32
 	// SlitFlags and BandFlags hold LowFlat where the flat does not tell; the factor
 	// is 1 there.

@@ -13,8 +13,8 @@ func (f *FlatFit) Solve() (*Response, error) {
 	r := &Response{
 		Elements: f.elements, Rows: f.rows, Voxels: f.voxels,
 		Slit: make([]float32, f.rows*f.elements), SlitVariance: make([]float32, f.rows*f.elements),
-		SlitFlags: make([]Flag, f.rows*f.elements),
-		Band:      make([]float32, f.elements*f.voxels), BandVariance: make([]float32, f.elements*f.voxels),
+		SlitFlags: make([]Flag, f.rows*f.elements), SlitRaw: make([]float32, f.rows*f.elements),
+		Band: make([]float32, f.elements*f.voxels), BandVariance: make([]float32, f.elements*f.voxels),
 		BandFlags: make([]Flag, f.elements*f.voxels),
 	}
 	colour, err := f.colour()
@@ -259,6 +259,7 @@ func (f *FlatFit) smoothSlits(r *Response, scales []float64) {
 		}
 		for y := range f.rows {
 			at := y*f.elements + j
+			r.SlitRaw[at] = float32(scale * f.slitTop[at] / f.slitBottom[at] / course[y])
 			switch {
 			case err != nil:
 				r.Slit[at], r.SlitFlags[at] = 1, LowFlat

@@ -10,6 +10,7 @@ import (
 	"github.com/spf13/pflag"
 
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/nightsheet"
 	"mirrorloom/pipeline/plan"
 )
 
@@ -40,6 +41,10 @@ func newPlanCommand(a *app) *cobra.Command {
 		Long: `plan writes a sequence: the exposures of a night with their masks, and copies of
 the profile and the target it was made from. Every later command needs only the
 sequence.
+
+plan.html in it is the night sheet: two printable pages of A4 with where to point, the
+time, the limits, the field, the forecast and the steps. plan.json has all of it for
+programs.
 
 Where the target has a forecast, plan also says what S/N it will give, and holds the
 code against others and against a slit scan of the same field in the same time; the
@@ -113,7 +118,7 @@ func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
 	}
 	var summary *plan.Summary
 	run := func(dir string) (err error) {
-		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Registration: o.registration, Out: dir})
+		summary, err = plan.Run(ctx, plan.Options{Target: target, Profile: o.profile, Registration: o.registration, Out: dir, Sheet: nightsheet.Write})
 		return err
 	}
 	var err error

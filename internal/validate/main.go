@@ -50,6 +50,7 @@ func checks() []check {
 		restoreLost(),
 		residualLight(),
 		errorScale(),
+		stuckMirrors(),
 		allFaults(),
 		apertures(),
 		lineMaps(),

@@ -10,6 +10,7 @@ import (
 	"go.uber.org/zap"
 
 	"mirrorloom/configs"
+	"mirrorloom/pipeline/nightsheet"
 	"mirrorloom/pipeline/plan"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/reduce"
@@ -99,7 +100,7 @@ func (r *Result) plan(ctx context.Context, o Options) (err error) {
 		return err
 	}
 	r.Plan, err = plan.Run(ctx, plan.Options{
-		Target: filepath.Join(o.Out, TargetFile), Profile: filepath.Join(o.Out, ProfileFile), Out: dir,
+		Target: filepath.Join(o.Out, TargetFile), Profile: filepath.Join(o.Out, ProfileFile), Out: dir, Sheet: nightsheet.Write,
 	})
 	return err
 }

@@ -60,7 +60,7 @@ func TestForecastsRepeat(t *testing.T) {
 	other := Candidate{Family: "legendre", V: 107, N: 94, Dark: 13, ElementMirrors: 1, DwellSeconds: 60, Cycles: 1}
 	sky, err := scene.Load("demo")
 	require.NoError(t, err)
-	star, ring, nm := 2, 0, 500.887
+	star, ring, nm := 1, 0, 500.887
 	radius := 2.0
 	wanted := []sequence.Wanted{
 		{Name: "star", Source: &star, BandNM: []float64{560, 570}},
@@ -76,6 +76,20 @@ func TestForecastsRepeat(t *testing.T) {
 	require.NoError(t, err)
 	require.Equal(t, want, got)
 	require.InEpsilon(t, want.Wanted[1].Signal, half.Wanted[1].Signal, 0.06, "a circle holds the same light, but for cells that it cuts")
+	for _, m := range want.Wanted {
+		require.InDelta(t, m.Variance.Level, m.Levels.total(), 1e-12)
+		require.Greater(t, m.ResponseSigma, 0.0)
+		sum := 0.0
+		for _, c := range m.Spectrum {
+			require.True(t, c.WavelengthNM > m.FromNM-0.5 && c.WavelengthNM < m.ToNM+0.5)
+			sum += c.VoxelSNR
+		}
+		if !m.Line { // 10 nm of 0.5, two voxels cut in half: all the rest count alike
+			require.Len(t, m.Spectrum, 21)
+			sum -= (m.Spectrum[0].VoxelSNR + m.Spectrum[20].VoxelSNR) / 2
+			require.InEpsilon(t, m.VoxelSNR, sum/20, 1e-6)
+		}
+	}
 	require.InEpsilon(t, want.Wanted[1].Voxels*2, half.Wanted[1].Voxels, 0.03)
 }
 

@@ -8,8 +8,9 @@ import (
 // one science exposure's units.
 type pixelNoise struct {
 	// own is the element's variance by part, throughput aside; own.Level is common to all
-	// elements.
-	own Parts
+	// elements, and level what it is made of.
+	own   Parts
+	level Levels
 	// light, overlap and leak are the electrons of the element, of all elements, and of all
 	// mirrors when closed.
 	light, overlap, leak float64
@@ -34,7 +35,7 @@ func (w *window) empty() bool     { return w.y1 < w.y0 || w.x1 < w.x0 }
 // measure is the forecast of a measurement; each, if not nil, is called for its voxels.
 func (l *Light) measure(f *fieldLight, c Candidate, of taken, index int, each func(Voxel)) Measure {
 	w := &l.wanted[index]
-	m := Measure{Name: w.name, FromNM: w.fromNM, ToNM: w.toNM}
+	m := Measure{Name: w.name, Line: w.line, FromNM: w.fromNM, ToNM: w.toNM}
 	cells := l.cells(w, c)
 	s := newSum(l, f, c, of, w, cells)
 	for i := 0; i < len(cells); {
@@ -61,7 +62,9 @@ type sum struct {
 	voxels     float64
 	snr, count float64 // of voxels, by weight
 	signal     float64
-	variance   Parts // in electrons squared
+	channels   []channelSum
+	variance   Parts  // in electrons squared
+	levels     Levels // those of variance
 	electrons  Electrons
 	weight     float64 // of electrons
 	// Per pixel of all elements: the weights, their squares, weights times light, squares
@@ -70,12 +73,16 @@ type sum struct {
 	window window
 }
 
+// channelSum adds up the voxels of a wavelength.
+type channelSum struct{ snr, count float64 }
+
 // overlapped is what elements share of a pixel.
 type overlapped struct{ weight, square, light, squareLight, overlap float64 }
 
 func newSum(l *Light, f *fieldLight, c Candidate, of taken, w *wanted, cells []cell) *sum {
 	s := &sum{light: l, field: f, candidate: c, noise: newNoiseModel(l, f, c, of), wanted: w}
 	s.first, s.parts = l.channels(w)
+	s.channels = make([]channelSum, len(s.parts))
 	s.window = window{y0: math.MaxInt, y1: -1, x1: l.camera.columns - 1}
 	for _, k := range cells {
 		y0, y1 := l.rows.Span(k.row)
@@ -146,6 +153,7 @@ func (s *sum) element(cells []cell, each func(Voxel)) {
 			s.variance.Dark += square * n.own.Dark
 			s.variance.Leak += square * n.own.Leak
 			s.variance.Level += square * n.own.Level
+			s.levels.add(square, &n.level)
 			scatter += g * n.scatter
 			s.pixel(g, n)
 			o := &s.pixels[s.window.at(x, y)]
@@ -192,6 +200,8 @@ func (s *sum) cell(k cell, edges []float64, win *window, noise []pixelNoise, wei
 		if v.Sigma > 0 {
 			s.snr += v.Weight * v.Wanted / v.Sigma
 			s.count += v.Weight
+			s.channels[i].snr += v.Weight * v.Wanted / v.Sigma
+			s.channels[i].count += v.Weight
 		}
 		if each != nil {
 			each(v)
@@ -210,9 +220,12 @@ func (s *sum) pixel(weight float64, n *pixelNoise) {
 
 // finish adds what elements share and makes the measure.
 func (s *sum) finish(m *Measure) {
+	response := 0.0
 	for y := s.window.y0; y <= s.window.y1; y++ {
 		for x := s.window.x0; x <= s.window.x1; x++ {
-			s.noise.addShared(&s.variance, x, y, &s.pixels[s.window.at(x, y)])
+			o := &s.pixels[s.window.at(x, y)]
+			s.noise.addShared(&s.variance, &s.levels, x, y, o)
+			response += o.light * o.light
 		}
 	}
 	m.Voxels, m.Signal = s.voxels, s.signal
@@ -224,8 +237,16 @@ func (s *sum) finish(m *Measure) {
 		for _, v := range []*float64{&p.Photons, &p.Detector, &p.Dark, &p.Leak, &p.Level, &p.Throughput} {
 			*v /= total
 		}
+		s.levels.scale(1 / total)
 	}
-	m.Variance = *p
+	m.Variance, m.Levels, m.ResponseSigma = *p, s.levels, math.Sqrt(response)/100
+	m.Spectrum = []Channel{}
+	for i, c := range s.channels {
+		if c.count > 0 {
+			nm := (s.light.edgesNM[s.first+i] + s.light.edgesNM[s.first+i+1]) / 2
+			m.Spectrum = append(m.Spectrum, Channel{nm, c.snr / c.count})
+		}
+	}
 	if s.count > 0 {
 		m.VoxelSNR = s.snr / s.count
 	}

@@ -81,10 +81,11 @@ func (n *noiseModel) at(x, y int, own float64) pixelNoise {
 		Dark:     n.read * camera.photon * n.dark * t / cycles,
 		Leak:     n.read * camera.photon * leak / cycles,
 	}
-	p.own.Level = n.level(quiet, leak)
+	p.level = n.level(quiet, leak)
 	if n.pedestal > 0 {
-		p.own.Level += (p.own.Photons + p.own.Detector + p.own.Dark + p.own.Leak) / float64(n.pedestal*pedestalColumns)
+		p.level.DarkColumns = (p.own.Photons + p.own.Detector + p.own.Dark + p.own.Leak) / float64(n.pedestal*pedestalColumns)
 	}
+	p.own.Level = p.level.total()
 	if n.scatter > 0 {
 		p.scatter = n.scatterOf(x, y, &p) / math.Sqrt(cycles)
 	}
@@ -104,29 +105,29 @@ func (n *noiseModel) scatterOf(x, y int, p *pixelNoise) float64 {
 	return n.design.ThroughputNoise(n.scatter, p.overlap, max(n.squares[y][x], 0)*t*t)
 }
 
-// level is the variance, in a decoded element, of what is taken off all frames: a constant
-// decodes to 1/k of itself.
-func (n *noiseModel) level(quiet, leak float64) float64 {
+// level is the variance, in a decoded element, of what is taken off all frames, by the
+// frames that give it: a constant decodes to 1/k of itself.
+func (n *noiseModel) level(quiet, leak float64) Levels {
 	camera, t, k := n.light.camera, n.candidate.DwellSeconds, float64(n.design.K)
-	bias := 0.0
+	var v Levels
 	if n.bias > 0 {
-		bias = quiet / float64(n.bias)
+		v.Bias = quiet / float64(n.bias)
 	}
-	variance := bias
 	switch {
 	case n.off > 0: // as long as the science frames
-		variance = (quiet + camera.photon*(n.dark*t+leak)) / float64(n.off)
+		v = Levels{AllOff: (quiet + camera.photon*(n.dark*t+leak)) / float64(n.off)}
 	case n.darks > 0:
 		ratio := t / n.darkDwell
-		own := quiet + camera.photon*n.dark*n.darkDwell
-		variance = ratio*ratio*own/float64(n.darks) + (1-ratio)*(1-ratio)*bias
+		v.Dark = ratio * ratio * (quiet + camera.photon*n.dark*n.darkDwell) / float64(n.darks)
+		v.Bias *= (1 - ratio) * (1 - ratio)
 	}
-	return variance / (k * k)
+	v.scale(1 / (k * k))
+	return v
 }
 
-// addShared adds the covariances of elements at a pixel to the variance of a sum (see the
-// package's documentation).
-func (n *noiseModel) addShared(v *Parts, x, y int, o *overlapped) {
+// addShared adds the covariances of elements at a pixel to the variance of a sum, and to that
+// of its levels (see the package's documentation).
+func (n *noiseModel) addShared(v *Parts, levels *Levels, x, y int, o *overlapped) {
 	pairs := o.weight*o.weight - o.square
 	if pairs == 0 {
 		return
@@ -139,7 +140,9 @@ func (n *noiseModel) addShared(v *Parts, x, y int, o *overlapped) {
 	v.Detector += constant * quiet
 	v.Dark += constant * camera.photon * n.dark * t
 	v.Leak += constant * camera.photon * leak
-	v.Level += n.level(quiet, leak) * pairs
+	level := n.level(quiet, leak)
+	v.Level += level.total() * pairs
+	levels.add(pairs, &level)
 	if d.V > 2 {
 		light := 2 * (o.light*o.weight - o.squareLight)
 		v.Photons -= camera.photon * l / (k * (k - l) * float64(d.V-2)) / cycles * (o.overlap*pairs - light)

@@ -78,9 +78,14 @@ func TestLevels(t *testing.T) {
 	c := Candidate{Family: "m-sequence", V: 63, N: 47, Dark: 16, Cycles: 1}
 	frames := sequence.Calibration{Bias: sequence.BiasFrames{Count: 10}, Dark: sequence.DarkFrames{Count: 4, DwellSeconds: 2}, Arc: sequence.ArcFrames{Every: 1}}
 	off := evenNoise(t, c, 4000, 30, 3, frames, 21) // 1 + 3 frames
-	require.InEpsilon(t, (30+3+0.5)/4/(32*32), off.level(30, 0.5), 1e-12)
+	level := off.level(30, 0.5)
+	require.InEpsilon(t, (30+3+0.5)/4/(32*32), level.AllOff, 1e-12)
+	require.Equal(t, level.AllOff, level.total())
 	darks := evenNoise(t, c, 4000, 30, 3, frames, 0)
-	require.InEpsilon(t, (0.25*(30+6)/4+0.25*30/10)/(32*32), darks.level(30, 0.5), 1e-12)
+	level = darks.level(30, 0.5)
+	require.InEpsilon(t, 0.25*(30+6)/4/(32*32), level.Dark, 1e-12)
+	require.InEpsilon(t, 0.25*30/10/(32*32), level.Bias, 1e-12)
+	require.Zero(t, level.AllOff+level.DarkColumns)
 }
 
 // The sum of all v columns of a pixel is sum(y)/k: its variance is that of v frames over
@@ -119,7 +124,7 @@ func TestCovariancesAddUp(t *testing.T) {
 			o.light += f
 			o.squareLight += f
 		}
-		n.addShared(&sum, x, y, &o)
+		n.addShared(&sum, new(Levels), x, y, &o)
 		k := float64(n.design.K)
 		require.InDelta(t, float64(c.V)*quiet/(k*k), sum.Detector, 1e-9*(1+quiet))
 		require.InDelta(t, total/k, sum.Photons, 1e-9*(1+total))

@@ -34,6 +34,8 @@ type Slit struct {
 // Measure is the forecast of one measurement.
 type Measure struct {
 	Name string `json:"name"`
+	// Line tells whether it is of a line, not of a band.
+	Line bool `json:"line"`
 	// FromNM and ToNM bound the wavelengths added up, vacuum nm.
 	FromNM float64 `json:"from_nm"`
 	ToNM   float64 `json:"to_nm"`
@@ -48,6 +50,13 @@ type Measure struct {
 	VoxelSNR float64 `json:"voxel_snr"`
 	// Variance says where Sigma's square comes from, in parts of 1.
 	Variance Parts `json:"variance"`
+	// Levels is Variance.Level by the frames that it comes from, in the same parts.
+	Levels Levels `json:"levels"`
+	// ResponseSigma is what Sigma would be if nothing but the pixels' response were wrong,
+	// in each pixel by 1 %, at random: electrons. Flats make it smaller.
+	ResponseSigma float64 `json:"sigma_of_1_percent_response_e"`
+	// Spectrum is the S/N along the wavelengths.
+	Spectrum []Channel `json:"spectrum"`
 	// Electrons are those of a mean pixel of these voxels.
 	Electrons Electrons `json:"electrons"`
 }
@@ -63,6 +72,37 @@ type Parts struct {
 	Leak       float64 `json:"leak"`
 	Level      float64 `json:"level"`
 	Throughput float64 `json:"throughput"`
+}
+
+// Levels are parts of a variance that come from what is taken off all frames.
+type Levels struct {
+	// Bias, Dark and AllOff are from frames of these kinds, DarkColumns from dark columns
+	// that stand for all-off frames.
+	Bias        float64 `json:"bias"`
+	Dark        float64 `json:"dark"`
+	AllOff      float64 `json:"all_off"`
+	DarkColumns float64 `json:"dark_columns"`
+}
+
+func (l *Levels) total() float64 { return l.Bias + l.Dark + l.AllOff + l.DarkColumns }
+
+func (l *Levels) add(times float64, o *Levels) {
+	l.Bias += times * o.Bias
+	l.Dark += times * o.Dark
+	l.AllOff += times * o.AllOff
+	l.DarkColumns += times * o.DarkColumns
+}
+
+func (l *Levels) scale(by float64) {
+	l.Bias, l.Dark, l.AllOff, l.DarkColumns = by*l.Bias, by*l.Dark, by*l.AllOff, by*l.DarkColumns
+}
+
+// Channel is a wavelength of a measurement.
+type Channel struct {
+	// WavelengthNM is the middle of the voxels, vacuum nm; VoxelSNR the mean S/N of those
+	// added up there.
+	WavelengthNM float64 `json:"wavelength_nm"`
+	VoxelSNR     float64 `json:"voxel_snr"`
 }
 
 // Electrons in one science exposure at a pixel.

@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"strconv"
+	"strings"
 
 	"mirrorloom/pipeline/config"
 )
@@ -24,6 +25,26 @@ var stuckHeader = []string{"column", "row", "state"}
 // Stuck lists the mirrors that do not move, in the order of the file; not to be
 // changed.
 func (p *Profile) Stuck() []StuckMirror { return p.stuck }
+
+// SetStuck gives the profile a CSV file of that name that lists mirrors which do not
+// move. The error says what is wrong with the list.
+func (p *Profile) SetStuck(name string, list []StuckMirror) error {
+	var text bytes.Buffer
+	fmt.Fprintln(&text, strings.Join(stuckHeader, ","))
+	for _, m := range list {
+		state := "off"
+		if m.On {
+			state = "on"
+		}
+		fmt.Fprintf(&text, "%d,%d,%s\n", m.Column, m.Row, state)
+	}
+	stuck, err := parseStuck(name, text.Bytes(), p.DMD.Columns, p.DMD.Rows)
+	if err != nil {
+		return err
+	}
+	p.DMD.StuckCSV, p.stuck, p.files = name, stuck, map[string][]byte{name: text.Bytes()}
+	return nil
+}
 
 func (p *Profile) readStuck(doc *config.Doc, beside func(string) ([]byte, error)) error {
 	name := p.DMD.StuckCSV

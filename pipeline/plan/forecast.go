@@ -34,19 +34,20 @@ func (r *Summary) addForecast(ctx context.Context, s *sequence.Sequence) error {
 	return nil
 }
 
-// warnCycle says where a cycle is longer than what changes in a night allows; of a code that
+// warnCycle lists what limits a cycle and says where one is longer than what changes in a night allows; of a code that
 // was chosen so that it is not, only what the sky's lines do.
 func (r *Summary) warnCycle(s *sequence.Sequence, chosen bool) error {
 	if r.Forecast == nil {
 		return nil
 	}
 	c, t := r.Forecast.Candidate, r.Forecast.Time
+	light, err := forecast.New(s.Target, s.Profile)
+	if err != nil {
+		return err
+	}
+	r.CycleLimits = trade.LimitsOf(s.Target, s.Profile, light, c, t.ScienceSeconds)
 	limits := []trade.CycleLimit{}
 	if !chosen {
-		light, err := forecast.New(s.Target, s.Profile)
-		if err != nil {
-			return err
-		}
 		limits = append(limits, trade.LimitOf(s.Target, s.Profile, light, c, t.ScienceSeconds))
 	}
 	if c.K > 1 {

@@ -24,6 +24,9 @@ type Options struct {
 	// sequence; giving it its final name when it is whole is the caller's part. Empty, the
 	// plan is made and nothing is written.
 	Out string
+	// Sheet, if not nil, writes what the observer takes along into the folder, when all else
+	// of the sequence is there: nightsheet.Write, which is above this package.
+	Sheet func(dir string, s *sequence.Sequence, r *Summary) error
 }
 
 // Run plans and writes a sequence. Errors are one sentence that names file or
@@ -72,6 +75,11 @@ func Run(ctx context.Context, o Options) (*Summary, error) {
 	}
 	summary.SequenceSHA = s.SHA
 	summary.Masks = countMasks(s)
+	if o.Sheet != nil {
+		if err := o.Sheet(o.Out, s, summary); err != nil {
+			return nil, err
+		}
+	}
 	return summary, nil
 }
 
@@ -143,6 +151,14 @@ func build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 		chosen = &dark
 	}
 	dark := *chosen
+	picked, err := pick(ctx, target, profile, code, dark.Columns)
+	if err != nil {
+		return nil, nil, err
+	}
+	target = picked.target
+	if err := checkRows(target, profile, n); err != nil {
+		return nil, nil, err
+	}
 	orders, err := scienceOrders(target.Code.Order, code, dark.Columns, target.Code.Cycles, uint64(target.Code.Seed))
 	if err != nil {
 		return nil, nil, err
@@ -152,12 +168,15 @@ func build(ctx context.Context, target *sequence.Target, profile *instrument.Pro
 		return nil, nil, refuse("code.cycles", "the target asks for %d exposures where a sequence has at most %d; ask for fewer cycles or calibration frames", len(s.Steps), maxSteps)
 	}
 	summary := summarize(s, code, dark, o)
+	summary.Picked = picked.picked
+	summary.Warnings = append(summary.Warnings, picked.warnings...)
 	if summary.ShortNights, err = shortNights(s, code, dark.Columns, orders); err != nil {
 		return nil, nil, err
 	}
 	if err := summary.addForecast(ctx, s); err != nil {
 		return nil, nil, err
 	}
+	summary.judgeCalibrations(s)
 	return s, summary, nil
 }
 

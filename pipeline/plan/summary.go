@@ -48,10 +48,17 @@ type Summary struct {
 	// Trade holds the plan against other codes and the slit scan; nil where the target does
 	// not say what it wants.
 	Trade *trade.Trade `json:"trade,omitempty"`
+	// CycleLimits bound the time of a cycle, each rule once; nil without a forecast.
+	CycleLimits []trade.CycleLimit `json:"cycle_limits,omitempty"`
+	// Calibrations say whether the calibration frames are enough; nil where the target does
+	// not say what it wants.
+	Calibrations []CalibrationSize `json:"calibration_sizes,omitempty"`
 	// ShortNights say what is lost where the night ends early, by order of the steps.
 	ShortNights []ShortNight `json:"short_nights"`
 	// Device is what the optics of the mirror array do.
 	Device *Device `json:"device"`
+	// Picked are the rows that were chosen by the sources of the forecast.
+	Picked []PickedRows `json:"picked_rows,omitempty"`
 	// Gigabytes is the size of the raw frames, 16 bits a pixel, in 1e9 bytes.
 	Gigabytes float64 `json:"gigabytes"`
 	// Masks is the number of distinct masks, 0 before they are written.
@@ -202,6 +209,9 @@ func (r *Summary) String() string {
 		} else {
 			fmt.Fprintf(&b, "         where photon noise rules no element gains\n")
 		}
+	}
+	for _, p := range r.Picked {
+		fmt.Fprintf(&b, "rows     %s\n", p)
 	}
 	fmt.Fprintf(&b, "\n%-8s %6s %9s\n", "kind", "steps", "minutes")
 	for _, k := range r.Kinds {

@@ -30,10 +30,7 @@ func warnings(s *sequence.Sequence, o *optics) []string {
 	add(c.Flat.Count > 0 || c.Flat.CodedCycles > 0, "no flat is planned")
 	add(c.Flat.Count == 0 || c.Flat.CodedCycles > 0, "no coded flat cycle is planned: slit function and efficiency will not be corrected")
 	add(c.Arc.Count > 0, "no arc is planned: wavelengths will be nominal")
-	if stuck := s.Profile.Stuck(); len(stuck) > 0 {
-		add(false, "%d mirrors of the device do not move", len(stuck))
-	}
-	return w
+	return append(w, stuckWarnings(s)...)
 }
 
 func edges(n int) []int {

@@ -29,6 +29,8 @@ type decoder struct {
 	repair *repair
 	// terms are taken out of decoded blocks; nil for none.
 	terms *slotTerms
+	// shines tells on which detector rows mirrors stuck on shine; nil for none.
+	shines func(y int) bool
 }
 
 // sumQuiet fills in quietSum: b^2 sum(w) + (a^2-b^2) sum_i(W_ij w_i) for weights w,

@@ -22,6 +22,7 @@ const (
 //
 //	light(x, y) = P(x, y) sum_j F(j, y0, L) dL/dx,   F = lamp(L) colour(L) s(j, y0) b(j, L),
 //
+// less what mirrors that do not move take of it,
 // L the wavelength that element j has at x, y0 = y - t(x), scaled to the frames' total.
 // Pixels that any element feeds with a wavelength beyond the grid, or from a row that
 // is not lit in full, are left out: nothing was fitted there.
@@ -88,6 +89,7 @@ type flatPrediction struct {
 	pixel       *calib.PixelResponse
 	response    *calib.Response
 	axis        product.SpectralAxis
+	stuck       *stuckMirrors
 	lamp        []float64 // lamp colour, [voxel]
 	lit         []bool    // [trace row]: of all elements in full
 	first, last int
@@ -95,7 +97,7 @@ type flatPrediction struct {
 
 func (r *reduction) newFlatPrediction() *flatPrediction {
 	p := &flatPrediction{
-		geometry: r.optics.geometry, pixel: r.optics.pixel, response: r.optics.response,
+		geometry: r.optics.geometry, pixel: r.optics.pixel, response: r.optics.response, stuck: r.optics.stuck,
 		axis: r.schema.Axis(),
 		lamp: r.lampLight(), lit: make([]bool, r.camera.Rows), last: r.camera.Rows,
 	}
@@ -165,5 +167,6 @@ func (p *flatPrediction) element(j int, y0, nm float64) float64 {
 	f, g := v-float64(l), y0-float64(y)
 	band := (1-f)*p.lamp[l]*float64(p.response.Band[at]) + f*p.lamp[l+1]*float64(p.response.Band[at+1])
 	s := y*p.response.Elements + j
-	return band * ((1-g)*float64(p.response.Slit[s]) + g*float64(p.response.Slit[s+p.response.Elements]))
+	next := s + p.response.Elements
+	return band * ((1-g)*float64(p.response.Slit[s])*p.stuck.gainAt(s) + g*float64(p.response.Slit[next])*p.stuck.gainAt(next))
 }

@@ -40,6 +40,7 @@ func (r *reduction) flats(ctx context.Context, m *wholeMasters) error {
 		err = r.slitFlat(ctx, m)
 	}
 	if err == nil {
+		r.doubtStuck()
 		err = r.flatDepth(ctx, m)
 	}
 	if errors.Is(err, calib.ErrNoLight) {
@@ -166,7 +167,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		return fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
 	}
 	s.margin = rectify.margin(s.rows)
-	fit, err := calib.NewFlatFit(r.flatRule(rectify), s.elements, s.rows, s.voxels, r.lampLight(), r.lit())
+	fit, err := calib.NewFlatFit(r.flatRule(rectify), s.elements, s.rows, s.voxels, r.lampLight(), r.lampLit())
 	if err != nil {
 		return err
 	}

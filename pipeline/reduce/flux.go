@@ -82,7 +82,7 @@ func (r *reduction) checkFlux() error {
 		return err
 	}
 	if f.Use == useAuto {
-		return nil
+		return r.checkStarMemory()
 	}
 	source, err := r.openStar(f.Use)
 	if err != nil {

@@ -35,7 +35,8 @@ func (r *reduction) leakRows() []leakRow {
 			})
 			bare = bare && (w < wFirst || w > wLast)
 		}
-		rows[y] = leakRow{use: coded || bare, lit: coded}
+		// Nor do those on which mirrors stuck on shine, which no mask closes.
+		rows[y] = leakRow{use: (coded || bare) && !r.optics.stuck.shinesOn(y), lit: coded}
 	}
 	return rows
 }

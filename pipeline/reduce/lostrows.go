@@ -48,6 +48,9 @@ func (r *reduction) scienceRepair(d *decoder) {
 	if d.repair == nil && len(d.darkColumns) > 0 && r.opts.Recipe.Repair.Use != useOff {
 		r.warn("lost frames are not restored, no error scale is measured, and cosmic rays are looked for in single frames: %v", lack)
 	}
+	if d.repair == nil && len(r.roles.calibration.off) == 0 && r.optics.stuck.anyOn() {
+		r.warn("the light of mirrors stuck on is left in the cube, 1/%.0f of it in every element: there is no all-off frame, and no repair by dark columns that would find it", d.k)
+	}
 	if d.repair != nil && d.repair.additive {
 		r.warn("no error scale is measured: the %s code is no S-matrix, so that errors of seeing, guiding and flexure do not spread evenly over its columns, dark ones among them", r.seq.Family)
 	}

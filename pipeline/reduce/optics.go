@@ -29,6 +29,7 @@ type optics struct {
 	response       *calib.Response
 	neighbour      *calib.ColourTerm
 	leak           *calib.ColourTerm
+	stuck          *stuckMirrors // nil where all mirrors move
 }
 
 // unknown is the flags of every voxel for what was asked of the lamps in vain.
@@ -77,6 +78,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 		}
 		arc = useOff
 	}
+	r.placeStuck()
 	if arc == useOff && flat == useOff {
 		return 0, nil
 	}
@@ -99,6 +101,7 @@ func (r *reduction) calibrate(ctx context.Context) (int64, error) {
 			return 0, err
 		}
 	}
+	r.placeStuck()
 	if flat == useAuto {
 		if err := r.flats(ctx, m); err != nil {
 			return 0, err
@@ -170,7 +173,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	err = r.eachExposure(ctx, r.roles.arcs, m, false, func(i int, e *calib.Exposure) error {
 		_, element := r.seq.Pattern(r.roles.arcs[i].Step)
 		frames[i].Element, frames[i].Lines = element, lines[i]
-		for _, rows := range r.litStretches(element) {
+		for _, rows := range r.optics.stuck.quiet(r.litStretches(element)) {
 			peaks, err := rule.Find(*e, rows[0], rows[1])
 			if err != nil {
 				return err
@@ -182,6 +185,7 @@ func (r *reduction) solveArcs(ctx context.Context, m *wholeMasters) error {
 	if err != nil {
 		return err
 	}
+	r.optics.stuck.dropStuckLines(frames, rule.FWHMPx)
 	solution, err := calib.SolveArcs(r.optics.geometry, frames, r.arcRule())
 	var unknown *calib.ArcError
 	if errors.As(err, &unknown) {

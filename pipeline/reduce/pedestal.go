@@ -3,7 +3,7 @@ package reduce
 // pedestalWidth is over how many columns of a row the mean of the dark decodes is
 // averaged where it stands for the light of all-off frames: leaking light has the
 // smoothness of a spectrum, and the mean's own variance falls to 1/(width g) of an
-// element's.
+// element's. Where the light of mirrors stuck on lands, which may have lines, it is not.
 const pedestalWidth = 7
 
 // takePedestal subtracts from a row's elements, and its planes of the element cube if
@@ -13,7 +13,10 @@ func (d *decoder) takePedestal(row *decodedRow, s *strip) {
 	if d.repair == nil || !d.repair.pedestal || len(d.scale.lost) > 0 && !d.repair.restores() {
 		return
 	}
-	const reach = pedestalWidth / 2
+	reach := pedestalWidth / 2
+	if d.shines != nil && d.shines(row.y) {
+		reach = 0 // it has lines
+	}
 	level := row.level
 	for x := range level {
 		sum, n := float32(0), 0

@@ -163,6 +163,7 @@ func (r *reduction) takePrepared(p *prepared) error {
 	r.schema, r.shift, r.report = p.Schema, p.Shift, p.Report
 	r.usage = newUsage(r.seq)
 	r.optics, r.through = p.Optics.take(), p.Throughput.take()
+	r.placeStuck()
 	r.correction, err = p.Correction.take(r)
 	return err
 }

@@ -28,7 +28,10 @@ type rectifier struct {
 	added         []float32 // [row][element], see addedShare
 	// scaled: rows bring the error scale. byElement, where not nil, multiplies the
 	// variance of each element.
-	scaled    bool
+	scaled bool
+	// low are flags of voxels most of whose mirrors do not move, [row][element]; nil for
+	// none.
+	low       []calib.Flag
 	byElement []float32
 	workers   []rectifyWorker
 	// field, where not nil, shifts the voxels' light: see rectifyfield.go. group elements
@@ -52,6 +55,10 @@ type rectifyWorker struct {
 	field            *fieldWorker
 	signals, vars    [][]float32 // one element's rows in the window
 	scaleRows        [3][][]float32
+	extra            []float32 // added variance of an element whose mirrors do not move
+	extras           [][]float32
+	none             []float32 // zeros
+	added            spectra   // of one element
 	bitRows          [][]calib.Flag
 }
 
@@ -176,11 +183,7 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 	r.shift.Flags(&k.flags, k.bitRows, first, y)
 	r.straightenScale(k, w, first, y)
 	for j := j0; j < j1; j++ {
-		k.signals, k.vars = k.signals[:0], k.vars[:0]
-		for _, d := range w.rows {
-			k.signals = append(k.signals, d.signal[j])
-			k.vars = append(k.vars, d.variance[min(j, len(d.variance)-1)])
-		}
+		k.collect(w, j)
 		r.shift.Signal(k.signal, k.signals, first, y)
 		if !r.uniform || j == j0 {
 			r.shift.Variance(k.variance, k.vars, first, y)
@@ -191,7 +194,12 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 			Signal: k.out.signal[at:], Variance: k.out.variance[at:], Flags: k.out.flags[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
 		r.scaleVoxels(k, &k.out, at, j)
+		if r.extraRows(k, w, j) {
+			r.shift.Signal(k.extra, k.extras, first, y)
+			r.addExtra(k, &k.out, at)
+		}
 		r.flatten(k, at, j, y)
+		r.flagLow(k.out.flags[at:at+nl], j, y)
 	}
 	r.store(k, out, row, j0, j1)
 }

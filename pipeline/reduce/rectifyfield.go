@@ -94,11 +94,7 @@ func (r *rectifier) rectifyShifted(k *rectifyWorker, out *outStrip, w *window, r
 // of the worker's sources. own tells that this group is the one to take note of it.
 func (r *rectifier) source(k *rectifyWorker, w *window, first, y, s, at int, own bool) {
 	f := k.field
-	k.signals, k.vars = k.signals[:0], k.vars[:0]
-	for _, d := range w.rows {
-		k.signals = append(k.signals, d.signal[s])
-		k.vars = append(k.vars, d.variance[min(s, len(d.variance)-1)])
-	}
+	k.collect(w, s)
 	r.geometry.Places(k.edges, float64(s), float64(y), r.edges)
 	r.field.Set(f.gather, y, k.edges)
 	f.gather.Signal(k.signal, k.signals, first)
@@ -113,6 +109,10 @@ func (r *rectifier) source(k *rectifyWorker, w *window, first, y, s, at int, own
 		Signal: f.source.signal[at:], Variance: f.source.variance[at:], Flags: f.source.flags[at:], Stride: 1,
 	}, k.signal, k.variance, &k.flags, k.edges)
 	r.scaleVoxels(k, &f.source, at, s)
+	if r.extraRows(k, w, s) {
+		f.gather.Signal(k.extra, k.extras, first)
+		r.addExtra(k, &f.source, at)
+	}
 	r.flattenShifted(k, y, s, at, own)
 }
 
@@ -132,6 +132,9 @@ func (r *rectifier) flattenShifted(k *rectifyWorker, y, s, at int, own bool) {
 			at := (first+i)*r.elements + s
 			if reaches {
 				flags[l] |= r.usage.flags[at]
+				if r.low != nil {
+					flags[l] |= r.low[at]
+				}
 			}
 			if r.response == nil {
 				continue

@@ -253,6 +253,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.uniform = d.code.VarianceUniform()
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
+	var stuck *stuckLight
 	if s.cube {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
 			return 0, fmt.Errorf("the wavelength grid of %s: %w", r.gridSource(), err)
@@ -262,6 +263,10 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		}
 		r.rectifier.response, r.rectifier.pixelVariance = r.optics.response, r.optics.pixelVariance()
 		s.margin = r.rectifier.margin(s.rows)
+		if stuck = newStuckLight(r.optics.stuck, &r.optics.geometry, s.columns, s.uniform); stuck != nil {
+			s.margin += 2 * lightRows
+			r.rectifier.low = r.optics.stuck.low()
+		}
 	}
 	h, err := s.heights(r.opts.MemoryBytes - r.heldBytes())
 	if err != nil {
@@ -272,6 +277,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		shape: s, heights: h, decoder: d, rectify: r.rectifier, workers: r.opts.Workers,
 		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff, r.correction),
 		pixel:    r.optics.pixel,
+		stuck:    stuck,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
 	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
@@ -347,6 +353,7 @@ func (r *reduction) newDecoder(code *hadamard.Code, slots [][]*exposure.Frame, c
 		code: hadamard.NewDecoder(code), columns: r.camera.Columns, slots: r.seq.V,
 		elementColumns: r.seq.ElementColumns(), darkColumns: r.seq.DarkColumns(),
 		k: float64(code.K()), photonExcess: r.camera.PhotonExcess, scale: newSlotScale(slots, c),
+		shines: r.optics.stuck.shinesOn,
 	}
 	if !d.code.VarianceUniform() {
 		d.sumQuiet()

@@ -24,6 +24,8 @@ type sweep struct {
 	// decoded row, in order, before bad pixels are filled.
 	pixel *calib.PixelResponse
 	light func(row *decodedRow)
+	// stuck puts in the light of mirrors that do not move; nil where all move.
+	stuck *stuckLight
 	// pixelVariance, where not nil, takes each row's variances, in order, when they
 	// are what voxels are made of.
 	pixelVariance func(row *decodedRow) error
@@ -161,7 +163,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 			return err
 		}
 	}
-	w.window.dropBefore(min(w.rectify.needs(w.nextOut), w.finished-1))
+	w.window.dropBefore(min(w.rectify.needs(w.nextOut), w.finished-max(1, w.ahead())))
 	return w.bound(s)
 }
 
@@ -236,9 +238,15 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		return nil
 	}
 	if next < w.shape.rows {
-		next--
+		next -= max(1, w.ahead())
+	}
+	if next <= w.finished {
+		return nil
 	}
 	first, n := w.window.first(), next-w.finished
+	if err := w.putLight(ctx, next); err != nil {
+		return err
+	}
 	err := parallel.Do(ctx, w.workers, n, func(worker, i int) error {
 		at := w.finished + i - first
 		row := w.window.rows[at]
@@ -251,7 +259,7 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 		w.fill(&w.fills[worker], row)
 		return nil
 	})
-	if err != nil || n <= 0 {
+	if err != nil {
 		return err
 	}
 	if w.pixelVariance != nil {
@@ -266,6 +274,37 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 	}
 	w.finished = next
 	return nil
+}
+
+// ahead is how many rows beyond a row its light is put in from.
+func (w *sweep) ahead() int {
+	if w.stuck == nil {
+		return 0
+	}
+	return lightRows
+}
+
+// putLight gives elements whose mirrors do not move their light back, in the rows up to
+// next that are yet to be finished.
+func (w *sweep) putLight(ctx context.Context, next int) error {
+	if w.stuck == nil {
+		return nil
+	}
+	type place struct{ row, slot, element int }
+	var all []place
+	first := w.window.first()
+	for y := w.finished; y < next; y++ {
+		list := w.stuck.affected(y)
+		w.window.rows[y-first].whole = make([]wholeElement, len(list))
+		for i, j := range list {
+			all = append(all, place{y, i, j})
+		}
+	}
+	return parallel.Do(ctx, w.workers, len(all), func(_, i int) error {
+		p := all[i]
+		w.window.rows[p.row-first].whole[p.slot] = w.stuck.restore(w.window, p.row, p.element)
+		return nil
+	})
 }
 
 // spread takes over the saturation of a neighbouring row.
@@ -318,6 +357,10 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 	f.Plan(row.flags, calib.BadPixel|calib.Saturated)
 	for _, r := range row.signal {
 		f.Signal(r)
+	}
+	for _, r := range row.whole {
+		f.Signal(r.signal)
+		f.Variance(r.extra)
 	}
 	for _, r := range row.variance {
 		f.Variance(r)

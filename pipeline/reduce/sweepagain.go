@@ -10,14 +10,14 @@ type extent struct {
 	nextOut  int // trace rows written
 }
 
-// firstAgain is the first row to decode. The row before those that are needed shows what
-// bleeds into them.
+// firstAgain is the first row to decode. The rows before those that are needed show what
+// bleeds into them and what light of stuck mirrors they lack.
 func (w *sweep) firstAgain() int {
 	b := w.before
 	if w.rectify == nil || b.decoded == 0 || b.nextOut == w.shape.rows {
 		return b.decoded
 	}
-	return max(0, min(w.rectify.needs(b.nextOut), b.finished)-1)
+	return max(0, min(w.rectify.needs(b.nextOut), b.finished)-max(1, w.ahead()))
 }
 
 // isAgain tells a row that an earlier sweep decoded.

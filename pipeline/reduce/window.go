@@ -31,6 +31,27 @@ type decodedRow struct {
 	// of independent pixels, and coherent what is added, in units of it, for errors that
 	// neighbouring pixels share: see scaleErrors.
 	scale, applied, coherent []float32
+	// whole are the elements of which mirrors do not move, with all their light; signal
+	// keeps what was decoded.
+	whole []wholeElement
+}
+
+// wholeOf is that of an element; nil where all its mirrors move.
+func (r *decodedRow) wholeOf(j int) *wholeElement {
+	for i := range r.whole {
+		if r.whole[i].element == j {
+			return &r.whole[i]
+		}
+	}
+	return nil
+}
+
+// light is the signal of an element, the light of mirrors that do not move put in.
+func (r *decodedRow) light(j int) []float32 {
+	if whole := r.wholeOf(j); whole != nil {
+		return whole.signal
+	}
+	return r.signal[j]
 }
 
 func newDecodedRow(elements, variances, columns int) *decodedRow {
@@ -90,7 +111,7 @@ func (w *window) extend(y0, y1 int) []*decodedRow {
 		} else {
 			r = w.make()
 		}
-		r.y = y
+		r.y, r.whole = y, nil
 		w.rows = append(w.rows, r)
 	}
 	return w.rows[from:]

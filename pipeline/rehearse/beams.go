@@ -115,14 +115,15 @@ func (b *beams) follows(j, class, w int) bool {
 }
 
 // mirrors gives, for a beam in a mirror row, the range of u and the choice among
-// them (nil for all); first > last where the beam has no mirror there.
-func (b *beams) mirrors(at, w int) (first, last int, keep func(u int) bool) {
+// them (nil for all); first > last where the beam has no mirror there. Of elements
+// those that do not move are left out, unless whole asks for them.
+func (b *beams) mirrors(at, w int, whole bool) (first, last int, keep func(u int) bool) {
 	m := b.list[at]
 	if m.element >= 0 {
 		if !b.follows(m.element, m.class, w) {
 			return 0, -1, nil
 		}
-		if len(b.stuck) > 0 {
+		if len(b.stuck) > 0 && !whole {
 			keep = func(u int) bool { _, stuck := b.stuck[[2]int{u, w}]; return !stuck }
 		}
 		return m.first, m.last, keep

@@ -36,7 +36,9 @@
 // the integrals of f over pixels, the truth those over voxels: wavelengths
 // between the edges of the grid, rows between y0 - 1/2 and y0 + 1/2 following the
 // trace, both from the same h_w, so that nothing but a reduction can make them
-// differ. See draw.go and voxel.go for how the integrals are made, with their
+// differ. Mirrors that do not move are left out of an element's light in frames, and
+// shine in all of them if they are stuck on; the truth is that of an element whose
+// mirrors all move. See draw.go and voxel.go for how the integrals are made, with their
 // accuracy.
 //
 // # Invariants

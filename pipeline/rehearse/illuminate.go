@@ -99,10 +99,7 @@ func (r *rehearsal) paintSource(ctx context.Context, s *strip, at int, d *drawn,
 			return nil
 		}
 		p := painters[worker]
-		r.gather(p, s, &r.sources[at], b)
-		if d.signal != nil && at == skySource && b < r.beams.n {
-			r.paintVoxels(p, s, b, d)
-		}
+		r.observe(p, s, at, b, d)
 		if r.sources[at].sky && r.air != nil {
 			p.objects, p.sky = p.sky, p.objects // each step draws its sources itself
 		} else {
@@ -142,11 +139,25 @@ func (r *rehearsal) hasLayer(layer, source int) bool {
 	return true
 }
 
+// observe gathers the light of a beam, and before that paints the truth of an element:
+// what all its mirrors would send, those as well that do not move.
+func (r *rehearsal) observe(p *painter, s *strip, at, b int, d *drawn) {
+	from := &r.sources[at]
+	element := d.signal != nil && at == skySource && b < r.beams.n
+	if element {
+		r.gather(p, s, from, b, true)
+		r.paintVoxels(p, s, b, d)
+	}
+	if !element || len(r.beams.stuck) > 0 {
+		r.gather(p, s, from, b, false)
+	}
+}
+
 // gather collects a beam's light in all mirror rows of a strip, the sources in
-// p.objects and the sky in p.sky.
-func (r *rehearsal) gather(p *painter, s *strip, from *source, b int) {
+// p.objects and the sky in p.sky; whole as for beams.mirrors.
+func (r *rehearsal) gather(p *painter, s *strip, from *source, b int, whole bool) {
 	for k, m := range s.mirrors {
-		first, last, keep := r.beams.mirrors(b, m.w)
+		first, last, keep := r.beams.mirrors(b, m.w, whole)
 		r.optics.collect(&p.objects[k], from.light.objects, from.light.efficiency, m, first, last, keep)
 		r.optics.collect(&p.sky[k], from.light.allSky, from.light.efficiency, m, first, last, keep)
 	}
@@ -185,7 +196,7 @@ func (r *rehearsal) layer(p *painter, layer int, light []density, lines []emitte
 		return p.other
 	case layerLines:
 		for k, m := range s.mirrors {
-			first, last, keep := r.beams.mirrors(b, m.w)
+			first, last, keep := r.beams.mirrors(b, m.w, false)
 			r.optics.collect(&p.other[k], lines, from.light.efficiency, m, first, last, keep)
 		}
 		r.dim(p.other, s, b)

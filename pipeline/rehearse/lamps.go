@@ -215,7 +215,7 @@ func (o *optics) brightest(l *light, b *beams, steps []int, y int) float64 {
 			continue
 		}
 		for k, m := range s.mirrors {
-			first, last, keep := b.mirrors(i, m.w)
+			first, last, keep := b.mirrors(i, m.w, false)
 			o.collect(&lights[k], l.objects, l.efficiency, m, first, last, keep)
 		}
 		rows[layerMain][i] = make([]float32, o.columns)

@@ -48,6 +48,28 @@ func TestStuckMirrors(t *testing.T) {
 	})
 }
 
+// The truth is that of elements whose mirrors all move, however many do not: also where
+// each frame is drawn anew.
+func TestTruthIgnoresStuckMirrors(t *testing.T) {
+	scene := &Scene{SeeingFWHMArcsec: 1, Sky: Sky{Lines: []SkyLine{{WavelengthNM: 580, FluxWM2Arcsec2: 1e-16}}}}
+	for _, faults := range [][]Fault{nil, {{Name: Guide, Size: 0.1}}} {
+		var truths [2][]float32
+		var nights [2]float64
+		for i := range truths {
+			p := smallProfile(t, "optical")
+			if i == 1 {
+				require.NoError(t, p.SetStuck("stuck.csv", []instrument.StuckMirror{{Column: 20, Row: 11}, {Column: 23, Row: 14, On: true}}))
+			}
+			seq := planned(t, p, smallTarget(p))
+			dir, _ := rehearsed(t, seq, scene, Options{Perfect: true, Noiseless: true, Faults: faults})
+			truths[i], _, _, _ = truth(t, dir, "SIGNAL")
+			nights[i] = sumOf(electrons(t, dir, seq, seq.StepsOf(sequence.Science)[0], 0)) + sumOf(electrons(t, dir, seq, seq.StepsOf(sequence.AllOff)[0], 0))
+		}
+		require.Equal(t, truths[0], truths[1])
+		require.NotEqual(t, nights[0], nights[1])
+	}
+}
+
 // countMirrors compares the light of every frame of the sky with the number of
 // open mirrors; change is what the device does to a mask.
 func countMirrors(t *testing.T, seq *sequence.Sequence, p *instrument.Profile, change func(on []uint8, columns int)) {

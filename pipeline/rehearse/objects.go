@@ -46,7 +46,7 @@ func (r *rehearsal) drawObjectsOf(s *strip, step *stepPlan, p *painter) []float3
 // addBeam adds a beam's light of the sources in a mirror row to mixed: weight times all
 // of it and its slope over the band, and what opening its neighbours adds.
 func (r *rehearsal) addBeam(p *painter, mixed *density, step *stepPlan, m *mirrorRow, b int, weight, neighbours float64) {
-	first, last, keep := r.beams.mirrors(b, m.w)
+	first, last, keep := r.beams.mirrors(b, m.w, false)
 	if first > last {
 		return
 	}

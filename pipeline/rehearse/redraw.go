@@ -56,10 +56,7 @@ func (r *rehearsal) redrawSource(ctx context.Context, s *strip, at int, d *drawn
 			return nil
 		}
 		p := painters[worker]
-		r.gather(p, s, from, b)
-		if d.signal != nil && at == skySource && b < r.beams.n {
-			r.paintVoxels(p, s, b, d)
-		}
+		r.observe(p, s, at, b, d)
 		r.fill(p, &c.objects, p.objects, nil, s, from, b)
 		r.fill(p, &c.sky, p.sky, from.light.skyLines, s, from, b)
 		return nil
@@ -127,7 +124,7 @@ func (r *rehearsal) refill(ctx context.Context, c *canvas, s *strip, from *sourc
 		}
 		p := painters[worker]
 		for k, m := range s.mirrors {
-			first, last, keep := r.beams.mirrors(b, m.w)
+			first, last, keep := r.beams.mirrors(b, m.w, false)
 			r.optics.collect(&p.objects[k], light.objects, light.efficiency, m, first, last, keep)
 		}
 		r.fill(p, &c.objects, p.objects, nil, s, from, b)

@@ -15,6 +15,7 @@ import (
 	"gonum.org/v1/plot/vg/draw"
 	"gonum.org/v1/plot/vg/vgsvg"
 
+	"mirrorloom/pipeline/drawing"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -113,7 +114,7 @@ func newChart(grid instrument.Grid, unit string) *plot.Plot {
 
 // roundTicks puts three to six labelled ticks at round numbers.
 func roundTicks(low, high float64) []plot.Tick {
-	step := roundStep((high - low) / 3)
+	step := drawing.RoundStep((high - low) / 3)
 	var all []plot.Tick
 	for i := math.Ceil(low / step); i*step <= high; i++ {
 		all = append(all, plot.Tick{Value: i * step, Label: figure(i * step)})

@@ -8,6 +8,7 @@ import (
 	"slices"
 	"strings"
 
+	"mirrorloom/pipeline/drawing"
 	"mirrorloom/pipeline/product"
 )
 
@@ -63,7 +64,7 @@ func drawScale(e *product.ErrorScale) template.HTML {
 		}
 	}
 	w, h := width/float64(len(e.Map[0])), height/float64(len(e.Map))
-	var s svg
+	var s drawing.SVG
 	fmt.Fprintf(&s, `<svg class="picture" viewBox="0 0 560 250" role="img" aria-label="Error scale over the detector" xmlns="http://www.w3.org/2000/svg">`)
 	for y, row := range e.Map {
 		for x, q := range row {
@@ -73,13 +74,13 @@ func drawScale(e *product.ErrorScale) template.HTML {
 			// 1 is white, the largest black, in logarithms.
 			dark := math.Log(math.Max(1, *q)) / math.Log(most)
 			fmt.Fprintf(&s, `<rect x="%s" y="%s" width="%s" height="%s" fill="#111" fill-opacity="%s"><title>%s</title></rect>`,
-				coord(left+float64(x)*w), coord(top+height-float64(y+1)*h), coord(w), coord(h), coord(dark), figure(*q))
+				drawing.Coord(left+float64(x)*w), drawing.Coord(top+height-float64(y+1)*h), drawing.Coord(w), drawing.Coord(h), drawing.Coord(dark), figure(*q))
 		}
 	}
-	s.rect("frame", left, top, width, height)
-	s.text("middle", left+width/2, top+height+18, "detector column")
-	s.turned(left-12, top+height/2, "detector row")
-	s.text("start", left, top+height+36, fmt.Sprintf("white: 1 or less; black: %s", figure(most)))
+	s.Rect("frame", left, top, width, height)
+	s.Text("middle", left+width/2, top+height+18, "detector column")
+	s.Turned(left-12, top+height/2, "detector row")
+	s.Text("start", left, top+height+36, fmt.Sprintf("white: 1 or less; black: %s", figure(most)))
 	s.WriteString("</svg>")
 	return template.HTML(s.String())
 }

@@ -6,6 +6,7 @@ import (
 	"math"
 	"strconv"
 
+	"mirrorloom/pipeline/drawing"
 	"mirrorloom/pipeline/product"
 )
 
@@ -85,25 +86,25 @@ func drawRatios(all []product.Reached) template.HTML {
 		return ratioLeft + (math.Min(math.Max(ratio, low), high)-low)/(high-low)*(chartWidth-ratioLeft-ratioRight)
 	}
 	bottom := 8 + ratioRow*float64(len(rows))
-	var s svg
-	fmt.Fprintf(&s, `<svg class="ratios" role="img" aria-label="S/N reached over that forecast" viewBox="0 0 %d %s">`, chartWidth, coord(bottom+40))
-	s.line("axis", ratioLeft, bottom, chartWidth-ratioRight, bottom)
-	s.line("one", x(1), 4, x(1), bottom)
+	var s drawing.SVG
+	fmt.Fprintf(&s, `<svg class="ratios" role="img" aria-label="S/N reached over that forecast" viewBox="0 0 %d %s">`, chartWidth, drawing.Coord(bottom+40))
+	s.Line("axis", ratioLeft, bottom, chartWidth-ratioRight, bottom)
+	s.Line("one", x(1), 4, x(1), bottom)
 	for _, t := range roundTicks(low, high) {
-		s.line("axis", x(t.Value), bottom, x(t.Value), bottom+4)
-		s.text("middle", x(t.Value), bottom+17, t.Label)
+		s.Line("axis", x(t.Value), bottom, x(t.Value), bottom+4)
+		s.Text("middle", x(t.Value), bottom+17, t.Label)
 	}
-	s.text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+34, "S/N reached over forecast")
+	s.Text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+34, "S/N reached over forecast")
 	for i, w := range rows {
 		y := 8 + ratioRow*(float64(i)+0.5)
 		name := []rune(w.Name)
 		if len(name) > nameRunes {
 			name = append(name[:nameRunes-1], '…')
 		}
-		s.text("end", ratioLeft-10, y+4, string(name))
+		s.Text("end", ratioLeft-10, y+4, string(name))
 		e := ratioError(w)
-		s.line("error", x(*w.Ratio-e), y, x(*w.Ratio+e), y)
-		fmt.Fprintf(&s, `<circle class="dot" cx="%s" cy="%s" r="4"/>`, coord(x(*w.Ratio)), coord(y))
+		s.Line("error", x(*w.Ratio-e), y, x(*w.Ratio+e), y)
+		fmt.Fprintf(&s, `<circle class="dot" cx="%s" cy="%s" r="4"/>`, drawing.Coord(x(*w.Ratio)), drawing.Coord(y))
 	}
 	s.WriteString("</svg>")
 	return template.HTML(s.String())

@@ -41,14 +41,6 @@ func TestRate(t *testing.T) {
 	require.Empty(t, rate(1, 0))
 }
 
-func TestRoundStep(t *testing.T) {
-	for x, want := range map[float64]float64{1: 1, 1.99: 1, 2: 2, 4.9: 2, 5: 5, 9.9: 5, 10: 10, 0.3: 0.2, 450: 200} {
-		require.InDelta(t, want, roundStep(x), 1e-12)
-	}
-	require.Equal(t, []int{0, 20, 40, 60, 80, 100}, ticks(110, 5))
-	require.Equal(t, []int{0}, ticks(0, 5))
-}
-
 // A large cube is looked at in evenly spaced planes, no more than fit the bound,
 // and at least in one.
 func TestStride(t *testing.T) {

@@ -10,6 +10,8 @@ import (
 	"image/png"
 	"math"
 	"slices"
+
+	"mirrorloom/pipeline/drawing"
 )
 
 // The layout of the picture, in units of its view box.
@@ -80,14 +82,14 @@ func drawPicture(w *whiteLight, sky skyPlane, places []place) (template.HTML, er
 	width, height := float64(w.elements)*sky.stepX, float64(w.rows)*sky.stepY // arc seconds
 	scale := plotMost / max(width, height)
 	f := frame{w: w, left: plotLeft, top: plotTop, width: width * scale, height: height * scale}
-	var s svg
+	var s drawing.SVG
 	below := plotTop + max(f.height, sideHeight)
 	side := f.left + max(f.width, plotLeast) + sideGap + sideWidth/2.0
-	fmt.Fprintf(&s, `<svg class="picture" viewBox="0 0 %d %s" role="img" aria-label="White-light picture of the field" xmlns="http://www.w3.org/2000/svg">`, pictureWidth, coord(below+96))
+	fmt.Fprintf(&s, `<svg class="picture" viewBox="0 0 %d %s" role="img" aria-label="White-light picture of the field" xmlns="http://www.w3.org/2000/svg">`, pictureWidth, drawing.Coord(below+96))
 	s.WriteString(`<defs><pattern id="nodata" width="6" height="6" patternUnits="userSpaceOnUse"><path d="M0,6L6,0" class="hatch"/></pattern></defs>`)
-	fmt.Fprintf(&s, `<rect fill="url(#nodata)" x="%s" y="%s" width="%s" height="%s"/>`, coord(f.left), coord(f.top), coord(f.width), coord(f.height))
+	fmt.Fprintf(&s, `<rect fill="url(#nodata)" x="%s" y="%s" width="%s" height="%s"/>`, drawing.Coord(f.left), drawing.Coord(f.top), drawing.Coord(f.width), drawing.Coord(f.height))
 	fmt.Fprintf(&s, `<image href="data:image/png;base64,%s" x="%s" y="%s" width="%s" height="%s" preserveAspectRatio="none"/>`,
-		base64.StdEncoding.EncodeToString(data), coord(f.left), coord(f.top), coord(f.width), coord(f.height))
+		base64.StdEncoding.EncodeToString(data), drawing.Coord(f.left), drawing.Coord(f.top), drawing.Coord(f.width), drawing.Coord(f.height))
 	f.axes(&s)
 	for _, p := range places {
 		f.mark(&s, p)
@@ -110,77 +112,77 @@ func (f frame) at(element, row float64) (x, y float64) {
 	return f.left + (element+0.5)/float64(f.w.elements)*f.width, f.top + f.height - (row+0.5)/float64(f.w.rows)*f.height
 }
 
-func (f frame) axes(s *svg) {
-	s.rect("frame", f.left, f.top, f.width, f.height)
+func (f frame) axes(s *drawing.SVG) {
+	s.Rect("frame", f.left, f.top, f.width, f.height)
 	bottom := f.top + f.height
 	// As many ticks as their labels leave room for.
-	for _, i := range ticks(f.w.elements-1, max(1, int(f.width/55))) {
+	for _, i := range drawing.Ticks(f.w.elements-1, max(1, int(f.width/55))) {
 		x, _ := f.at(float64(i), 0)
-		s.line("tick", x, bottom, x, bottom+5)
-		s.text("middle", x, bottom+19, fmt.Sprint(i))
+		s.Line("tick", x, bottom, x, bottom+5)
+		s.Text("middle", x, bottom+19, fmt.Sprint(i))
 	}
-	for _, i := range ticks(f.w.rows-1, max(1, int(f.height/45))) {
+	for _, i := range drawing.Ticks(f.w.rows-1, max(1, int(f.height/45))) {
 		_, y := f.at(0, float64(i))
-		s.line("tick", f.left-5, y, f.left, y)
-		s.text("end", f.left-8, y+4, fmt.Sprint(i))
+		s.Line("tick", f.left-5, y, f.left, y)
+		s.Text("end", f.left-8, y+4, fmt.Sprint(i))
 	}
-	s.text("middle", f.left+max(f.width, plotLeast)/2, bottom+36, "element")
-	s.turned(f.left-40, f.top+max(f.height/2, plotLeast*2/3), "detector row")
+	s.Text("middle", f.left+max(f.width, plotLeast)/2, bottom+36, "element")
+	s.Turned(f.left-40, f.top+max(f.height/2, plotLeast*2/3), "detector row")
 }
 
 // mark rings a place and writes its label beside it.
-func (f frame) mark(s *svg, p place) {
+func (f frame) mark(s *drawing.SVG, p place) {
 	const radius = 10
 	x, y := f.at(float64(p.element), float64(p.row))
 	for _, class := range []string{"halo", "ring"} {
-		fmt.Fprintf(s, `<circle class="%s" cx="%s" cy="%s" r="%d"/>`, class, coord(x), coord(y), radius)
+		fmt.Fprintf(s, `<circle class="%s" cx="%s" cy="%s" r="%d"/>`, class, drawing.Coord(x), drawing.Coord(y), radius)
 	}
 	anchor, beside := "start", x+radius+3
 	if beside > f.left+f.width-12 {
 		anchor, beside = "end", x-radius-3
 	}
 	s.WriteString(`<g class="label">`)
-	s.text(anchor, beside, y+5, p.label)
+	s.Text(anchor, beside, y+5, p.label)
 	s.WriteString("</g>")
 }
 
 // drawCompass draws the arrows of north and east about a centre.
-func drawCompass(s *svg, sky skyPlane, x, y float64) {
+func drawCompass(s *drawing.SVG, sky skyPlane, x, y float64) {
 	const length, beyond = 30, 41
 	for _, arm := range []struct {
 		class, word string
 		east, north float64
 	}{{"north", "N", 0, 1}, {"east", "E", 1, 0}} {
 		dx, dy := sky.direction(arm.east, arm.north)
-		s.arrow(arm.class, x, y, dx, -dy, length) // the drawing's y runs downwards
-		s.text("middle", x+dx*beyond, y-dy*beyond+5, arm.word)
+		s.Arrow(arm.class, x, y, dx, -dy, length) // the drawing's y runs downwards
+		s.Text("middle", x+dx*beyond, y-dy*beyond+5, arm.word)
 	}
 }
 
 // drawScaleBar draws a bar of a round number of arc seconds; scale is in units
 // per arc second.
-func drawScaleBar(s *svg, scale, x, y float64) {
-	arcsec := roundStep((sideWidth - 8) / scale)
+func drawScaleBar(s *drawing.SVG, scale, x, y float64) {
+	arcsec := drawing.RoundStep((sideWidth - 8) / scale)
 	half := arcsec * scale / 2
-	s.line("bar", x-half, y, x+half, y)
-	s.line("bar", x-half, y-5, x-half, y+5)
-	s.line("bar", x+half, y-5, x+half, y+5)
-	s.text("middle", x, y+20, fmt.Sprintf("%g″", arcsec))
+	s.Line("bar", x-half, y, x+half, y)
+	s.Line("bar", x-half, y-5, x-half, y+5)
+	s.Line("bar", x+half, y-5, x+half, y+5)
+	s.Text("middle", x, y+20, fmt.Sprintf("%g″", arcsec))
 }
 
 // drawLegend draws the grey scale with its values.
-func drawLegend(s *svg, st stretch, y float64) {
+func drawLegend(s *drawing.SVG, st stretch, y float64) {
 	const steps, height = 64, 12
 	for i := range steps {
 		grey := shade(uint8(math.Round(1 + float64(i)/(steps-1)*(greys-1))))
 		fmt.Fprintf(s, `<rect x="%s" y="%s" width="%s" height="%d" fill="#%02x%02x%02x"/>`,
-			coord(plotLeft+float64(i)*plotMost/steps), coord(y), coord(plotMost/steps+0.5), height, grey, grey, grey)
+			drawing.Coord(plotLeft+float64(i)*plotMost/steps), drawing.Coord(y), drawing.Coord(plotMost/steps+0.5), height, grey, grey, grey)
 	}
-	s.rect("frame", plotLeft, y, plotMost, height)
+	s.Rect("frame", plotLeft, y, plotMost, height)
 	for _, t := range []float64{0, 0.25, 0.5, 0.75, 1} {
 		x := plotLeft + t*plotMost
-		s.line("tick", x, y+height, x, y+height+4)
-		s.text("middle", x, y+height+17, figure(st.inverse(t)))
+		s.Line("tick", x, y+height, x, y+height+4)
+		s.Text("middle", x, y+height+17, figure(st.inverse(t)))
 	}
 }
 

@@ -33,7 +33,10 @@ type Target struct {
 	AllOffEvery  int           `yaml:"all_off_every" config:"optional"`
 	SentinelRows []SentinelRow `yaml:"sentinel_rows" config:"optional"`
 	Closed       []ClosedRow   `yaml:"closed" config:"optional"`
-	Calibration  Calibration   `yaml:"calibration" config:"optional"`
+	// FromSources asks plan for more of both, by the sources of the forecast; nil in a
+	// sequence, where they are listed.
+	FromSources *SourceRows `yaml:"from_sources" config:"optional"`
+	Calibration Calibration `yaml:"calibration" config:"optional"`
 	// Forecast is what is expected of the field; nil where nothing is said of it.
 	Forecast *Forecast `yaml:"forecast" config:"optional"`
 
@@ -120,6 +123,16 @@ type ClosedRow struct {
 	First   int  `yaml:"first"`
 	Last    int  `yaml:"last"`
 	Element *int `yaml:"element" config:"optional"`
+}
+
+// SourceRows is what plan is to choose by the sources of the forecast.
+type SourceRows struct {
+	// Sentinels is how many ranges of sentinel rows may be planned, each on a star that no
+	// measurement is about, if one measures the transmission better than dark columns do.
+	Sentinels int `yaml:"sentinels" config:"optional"`
+	// Patches is on how many such stars mirrors may be closed, where one would saturate or
+	// its photon noise rule the other elements of its rows.
+	Patches int `yaml:"patches" config:"optional"`
 }
 
 // Calibration lists the frames that are not of the target. A section left out

@@ -16,8 +16,9 @@ const (
 	maxFrames       = 10000  // of one kind of calibration
 	maxMirror       = 100000 // any mirror coordinate
 	maxCycles       = 1000
-	maxLampBytes    = 8  // the LAMP column
-	maxNameBytes    = 68 // one header card
+	maxFromSources  = 100 // ranges of sentinel rows, or patches
+	maxLampBytes    = 8   // the LAMP column
+	maxNameBytes    = 68  // one header card
 )
 
 // LoadTarget reads and checks a target by the name of an embedded one or by
@@ -156,6 +157,11 @@ func (t *Target) checkRows(c *config.Checks) {
 		path := fmt.Sprintf("sentinel_rows[%d]", i)
 		checkRange(c, path, r.First, r.Last)
 		c.Count(path+".element", r.Element, 0, maxV-1)
+	}
+	if s := t.FromSources; s != nil {
+		c.Count("from_sources.sentinels", s.Sentinels, 0, maxFromSources)
+		c.Count("from_sources.patches", s.Patches, 0, maxFromSources)
+		c.That(t.Forecast != nil, "from_sources", "rows are chosen by the sources of the forecast, and the target has none; add forecast.sources, or list the rows")
 	}
 	for i, r := range t.Closed {
 		path := fmt.Sprintf("closed[%d]", i)

@@ -42,25 +42,36 @@ type CycleLimit struct {
 	NM float64 `json:"nm,omitempty"`
 }
 
-// LimitOf is the shortest limit of a candidate's cycle, whose science frames take so many
-// seconds. The zero value stands for none.
-func LimitOf(target *sequence.Target, profile *instrument.Profile, light *forecast.Light, c forecast.Candidate, scienceSeconds float64) CycleLimit {
+// LimitsOf are the limits of a candidate's cycle, whose science frames take so many seconds:
+// all that its target, its instrument and its sky set, each rule once.
+func LimitsOf(target *sequence.Target, profile *instrument.Profile, light *forecast.Light, c forecast.Candidate, scienceSeconds float64) []CycleLimit {
 	limits := target.Forecast.Limits
-	var shortest CycleLimit
+	list := []CycleLimit{}
 	take := func(l CycleLimit) {
-		if l.Seconds > 0 && (shortest.Rule == RuleNone || l.Seconds < shortest.Seconds) {
-			shortest = l
+		if l.Seconds > 0 {
+			list = append(list, l)
 		}
 	}
 	take(CycleLimit{Rule: RuleKey, Seconds: limits.CycleSeconds})
 	if c.Family == string(hadamard.SlitScan) {
-		return shortest
+		return list
 	}
 	drift := light.RefractionDrift(c, scienceSeconds)
 	element := profile.ArcsecPerU() * float64(c.ElementMirrors)
 	take(CycleLimit{Rule: RuleRefraction, Seconds: secondsOf(drift.ArcsecPerHour / element), NM: drift.NM})
 	take(CycleLimit{Rule: RuleFlexure, Seconds: secondsOf(limits.FlexurePxPerHour)})
 	take(CycleLimit{Rule: RuleSeeing, Seconds: secondsOf(limits.SeeingChangePerHour)})
+	return list
+}
+
+// LimitOf is the shortest of LimitsOf; the zero value stands for none.
+func LimitOf(target *sequence.Target, profile *instrument.Profile, light *forecast.Light, c forecast.Candidate, scienceSeconds float64) CycleLimit {
+	var shortest CycleLimit
+	for _, l := range LimitsOf(target, profile, light, c, scienceSeconds) {
+		if shortest.Rule == RuleNone || l.Seconds < shortest.Seconds {
+			shortest = l
+		}
+	}
 	return shortest
 }
 

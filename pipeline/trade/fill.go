@@ -35,7 +35,7 @@ func (w *weighing) fill(ctx context.Context, c forecast.Candidate) (Row, error) 
 	if err != nil {
 		return row, err
 	}
-	if row.Full > fullest {
+	if row.Full > Fullest {
 		if row, err = w.shorter(ctx, row); err != nil {
 			return row, err
 		}
@@ -130,7 +130,7 @@ func (w *weighing) fixed(ctx context.Context, c forecast.Candidate) (Row, error)
 			fmt.Sprintf("forecast.limits.total_s of %s, or a shorter dwell_s", seconds(row.TotalSeconds)))
 	case row.Full >= 1:
 		row.breaks(BreachSaturation, fmt.Sprintf("its brightest pixel saturates after %s", seconds(row.LongestDwellSeconds)),
-			fmt.Sprintf("dwell_s of %s", seconds(floorDigits(fullest*row.LongestDwellSeconds))))
+			fmt.Sprintf("dwell_s of %s", seconds(floorDigits(Fullest*row.LongestDwellSeconds))))
 	default:
 		w.bounds(&row)
 	}
@@ -146,7 +146,7 @@ func (w *weighing) fits(cycles int, c forecast.Candidate) bool {
 // that they fill the time, or in one cycle less, the time not filled; what gives more.
 func (w *weighing) shorter(ctx context.Context, full Row) (Row, error) {
 	c := full.Candidate
-	longest := floorDigits(fullest * full.LongestDwellSeconds)
+	longest := floorDigits(Fullest * full.LongestDwellSeconds)
 	if longest < shortestDwell {
 		full.breaks(BreachSaturation, fmt.Sprintf("its brightest pixel saturates after %s", seconds(full.LongestDwellSeconds)),
 			"closed mirrors on the brightest source, or a sparser code")
@@ -172,7 +172,7 @@ func (w *weighing) shorter(ctx context.Context, full Row) (Row, error) {
 	if err != nil {
 		return row, err
 	}
-	if more.Figure > row.Figure && more.Full <= fullest {
+	if more.Figure > row.Figure && more.Full <= Fullest {
 		return more, nil
 	}
 	return row, nil

@@ -95,7 +95,7 @@ func (t *Trade) remedies(target *sequence.Target, r *Row) []string {
 			parts = append(parts, fmt.Sprintf("%.2f times the S/N with them open", r.Figure/open.Figure))
 		}
 	}
-	if r.Full > 0 && r.Candidate.DwellSeconds > 0.97*fullest*r.LongestDwellSeconds {
+	if r.Full > 0 && r.Candidate.DwellSeconds > 0.97*Fullest*r.LongestDwellSeconds {
 		parts = append(parts, fmt.Sprintf("no longer dwell, as %s saturates after %s", sourceWords(r.Source), seconds(r.LongestDwellSeconds)))
 	}
 	return parts

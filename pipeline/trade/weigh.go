@@ -12,9 +12,9 @@ import (
 )
 
 const (
-	// fullest is how full the brightest pixel is to be at most: the forecast is an expected
+	// Fullest is how full the brightest pixel is to be at most: the forecast is an expected
 	// value, and seeing may be better than it says (common practice, no source).
-	fullest = 0.9
+	Fullest = 0.9
 	// shortestDwell, s: below it a mask is not shown for a well-known time (common practice,
 	// no source).
 	shortestDwell = 0.1
@@ -64,7 +64,7 @@ func (w *weighing) withCovers(ctx context.Context, rows []Row) ([]Row, error) {
 		}
 		tried++
 		for range covered {
-			if !w.unwanted(r.Source) || slices.Contains(r.Covered, r.Source) {
+			if !Unwanted(w.Target.Forecast, r.Source) || slices.Contains(r.Covered, r.Source) {
 				break
 			}
 			next, err := w.weigh(ctx, bare(r.Candidate), append(slices.Clone(r.Covered), r.Source))
@@ -86,9 +86,8 @@ func bare(c forecast.Candidate) forecast.Candidate {
 	return c
 }
 
-// unwanted tells whether a source is a star that no measurement is about.
-func (w *weighing) unwanted(source int) bool {
-	f := w.Target.Forecast
+// Unwanted tells whether a source is a star that no measurement is about.
+func Unwanted(f *sequence.Forecast, source int) bool {
 	if source < 0 || source >= len(f.Sources) || f.Sources[source].Kind != scene.KindStar {
 		return false
 	}
@@ -166,12 +165,17 @@ func (w *weighing) limitIn(c forecast.Candidate, scienceSeconds float64) CycleLi
 func (w *weighing) weigh(ctx context.Context, c forecast.Candidate, cover []int) (Row, error) {
 	radius := coverSeeings * w.Target.Forecast.SeeingFWHMArcsec
 	for _, source := range cover {
-		c.Closed = append(c.Closed, w.Light.Cover(c, source, radius)...)
+		c = Covered(w.Light, c, source, radius)
 	}
-	c.Closed = disjoint(c.Closed)
 	row, err := w.fill(ctx, c)
 	row.Covered = cover
 	return row, err
+}
+
+// Covered is a candidate with mirrors closed besides within radius arc seconds of a source.
+func Covered(light *forecast.Light, c forecast.Candidate, source int, radius float64) forecast.Candidate {
+	c.Closed = disjoint(append(slices.Clone(c.Closed), light.Cover(c, source, radius)...))
+	return c
 }
 
 // disjoint drops rows that others hold already, so that each has one use: covers of stars
