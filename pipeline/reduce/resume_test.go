@@ -48,6 +48,12 @@ func resumeCases() []resumeCase {
 			target.Code.Cycles = 2
 			target.Calibration.Flat = sequence.FlatFrames{Count: 1, DwellSeconds: 5, Lamp: "halogen"}
 		}, []string{"cosmic=1", "drift=0.03"}, "sky: {use: auto}\ngrid: {use: auto, refraction: auto}\n", 1 << 20},
+		{"stuck mirrors", func(p *instrument.Profile, target *sequence.Target, scene *rehearse.Scene) {
+			dark9(p, target, scene)
+			if err := p.SetStuck("stuck.csv", []instrument.StuckMirror{{Column: 12, Row: 9}, {Column: 15, Row: 17, On: true}, {Column: 16, Row: 22}, {Column: 20, Row: 27}}); err != nil {
+				panic(err)
+			}
+		}, []string{"cosmic=1"}, "flat: {use: off}\narc: {use: off}\n", 900 << 10},
 		{"edges", func(*instrument.Profile, *sequence.Target, *rehearse.Scene) {}, []string{"cosmic=3"}, "flat: {use: off}\narc: {use: off}\n", 300 << 10},
 		{"slit scan", func(_ *instrument.Profile, target *sequence.Target, _ *rehearse.Scene) {
 			target.Code.Family, target.Code.Dark = "slit-scan", nil
