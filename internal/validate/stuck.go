@@ -23,8 +23,8 @@ func stuckMirrors() check {
 		name: "Stuck mirrors",
 		about: `Small fields of both mountings, their devices with 30 mirrors that do not move, on and off
 in turn: one in ten outside the field, every fourth of the others on a star. Four nights of
-noise for each of three lists, with elements of one and two mirrors (or u, mounted
-diagonally), four with elements of six; and the infrared demo calibrated by its own lamps. Pulls are against the
+noise for each of three lists, with elements of one, two and six mirrors (or u, mounted
+diagonally), and the infrared demo calibrated by its own lamps. Pulls are against the
 truth of elements whose mirrors all move, where at least 1 part in 1000 of an element's light
 is missing; those above 5 sigma are on stars and lines for the most part.`,
 		run: runStuck,
