@@ -35,7 +35,7 @@ validate: build packages
 	MIRRORLOOM_VALIDATE=1 $(GO) test -count=1 -timeout 60m -run 'TestArcNights|TestSpeedOfLargestDevice' ./pipeline/reduce ./pipeline/sequence
 
 # Figures are compared as ratios within one run, as machines are noisy: writes
-# BENCHMARKS.md.
+# BENCHMARKS.md. One section alone: go run ./internal/bench -only memory.
 bench: build packages
 	$(GO) run ./internal/bench
 

@@ -10,6 +10,7 @@ import (
 
 	"golang.org/x/sys/cpu"
 
+	"mirrorloom/internal/child"
 	"mirrorloom/pipeline/version"
 )
 
@@ -21,14 +22,25 @@ type machine struct {
 // python is Debian's interpreter with numpy, scipy and astropy.
 const python = "/usr/bin/python3"
 
-// libraryVersions prints what the scripts compute with.
+// libraryVersions prints what the scripts compute with, and the kernels that OpenBLAS
+// chose, by its own function: a library older than the processor may choose slower ones.
 const libraryVersions = `
-import sys, numpy, scipy, astropy
-print("Python", sys.version.split()[0] + ", numpy", numpy.__version__ + ", scipy", scipy.__version__ + ", astropy", astropy.__version__)
+import ctypes, sys, numpy, scipy, astropy
+kernel = "unknown"
+with open("/proc/self/maps") as maps:
+    for path in sorted({line.split()[-1] for line in maps if "blas" in line}):
+        name = getattr(ctypes.CDLL(path), "openblas_get_corename", None)
+        if name is not None:
+            name.restype = ctypes.c_char_p
+            kernel = name().decode()
+print("Python", sys.version.split()[0] + ", numpy", numpy.__version__ + ", scipy", scipy.__version__ + ", astropy",
+      astropy.__version__ + ", BLAS kernels", kernel)
 `
 
 func thisMachine(ctx context.Context) (machine, error) {
-	out, err := exec.CommandContext(ctx, python, "-c", libraryVersions).Output()
+	cmd := exec.CommandContext(ctx, python, "-c", libraryVersions)
+	cmd.Env = child.Environment()
+	out, err := cmd.Output()
 	if err != nil {
 		return machine{}, fmt.Errorf("the scripts need Debian's python3-numpy, -scipy, -astropy and -yaml (make packages installs them): %w", err)
 	}
