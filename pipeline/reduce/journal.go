@@ -7,6 +7,7 @@ import (
 
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/kept"
+	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/register"
 )
 
@@ -131,13 +132,23 @@ type mark struct {
 	cubeSums, elementSums []uint32
 }
 
-func (r *reduction) mark(w *sweep, decoded int) mark {
+// voxelImages is the number of the cube's images of voxels, which come first.
+const voxelImages = product.ScaleImage + 1
+
+// mark takes stock when so many rows were decoded and these voxels written.
+func (r *reduction) mark(w *sweep, decoded int, written writtenVoxels) mark {
 	m := mark{
-		extent: w.extent(decoded), samples: len(w.samples.list), samplesLeft: w.samples.left,
+		extent: extent{decoded: decoded, finished: w.finished, nextOut: written.rows}, samples: len(w.samples.list), samplesLeft: w.samples.left,
 		steps: append([]float64{}, w.steps.square...), stepNoise: w.steps.noise, saturated: w.reader.tally.saturated(),
 	}
+	if w.rectify == nil {
+		m.finished = decoded
+	}
 	if r.cube != nil {
+		// Voxels may be written meanwhile: their sums are those of the rows told.
 		m.cubeSums = r.cube.Sums()
+		copy(m.cubeSums[:voxelImages], make([]uint32, voxelImages))
+		copy(m.cubeSums, written.sums)
 	}
 	if r.element != nil {
 		m.elementSums = r.element.Sums()
@@ -187,7 +198,7 @@ func (r *reduction) take(w *sweep, m *mark, s *stripRecord) bool {
 	rows := w.shape.rows
 	unfit := func(v voxelRecord) bool { return !v.fits(r, w.shape.elements) }
 	switch {
-	case s.Decoded <= m.decoded || s.Decoded > rows || len(s.Rows) != s.Decoded-m.decoded,
+	case s.Decoded < m.decoded || s.Decoded == 0 || s.Decoded > rows || len(s.Rows) != s.Decoded-m.decoded,
 		s.NextOut < m.nextOut || s.NextOut > rows || len(s.Voxels) != s.NextOut-m.nextOut,
 		s.Finished < m.finished || s.Finished > s.Decoded,
 		w.rectify == nil && s.NextOut > 0,
@@ -218,7 +229,7 @@ func (r *reduction) take(w *sweep, m *mark, s *stripRecord) bool {
 // rows of voxels that were written, PIXELVAR those of the detector that are fit, and the
 // responses none.
 func (m *mark) cubeProgress() []fitsutil.ImageProgress {
-	rows := []int{m.nextOut, m.nextOut, m.nextOut, m.nextOut, m.finished}
+	rows := []int{product.SignalImage: m.nextOut, product.VarianceImage: m.nextOut, product.FlagsImageIndex: m.nextOut, product.ScaleImage: m.nextOut, product.PixelVarianceImage: m.finished}
 	all := make([]fitsutil.ImageProgress, len(m.cubeSums))
 	for i, sum := range m.cubeSums {
 		if i < len(rows) {

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"path/filepath"
+	"sync"
 	"time"
 
 	"go.uber.org/zap"
@@ -23,8 +24,32 @@ type keeper struct {
 	pending chan error
 	// due is when the next record may begin.
 	due time.Time
+	// written is what of the cube's images of voxels was written, by whichever goroutine
+	// writes.
+	mu      sync.Mutex
+	written writtenVoxels
 	// failed: the journal could not be written, which stops it but not the reduction.
 	failed bool
+}
+
+// writtenVoxels are the trace rows written, and the sums of the images of voxels then.
+type writtenVoxels struct {
+	rows int
+	sums []uint32
+}
+
+// wrote notes that the next rows of the cube were written and counted.
+func (k *keeper) wrote(out *outStrip) {
+	k.mu.Lock()
+	defer k.mu.Unlock()
+	k.written = writtenVoxels{rows: out.y0 + out.h, sums: k.r.cube.Sums()[:voxelImages]}
+}
+
+// voxelsWritten is what wrote noted last.
+func (k *keeper) voxelsWritten() writtenVoxels {
+	k.mu.Lock()
+	defer k.mu.Unlock()
+	return k.written
 }
 
 // A record is begun when keepEvery times what the last one took have passed, which
@@ -63,7 +88,7 @@ func (r *reduction) startJournal() (*kept.Journal, error) {
 
 // boundary notes the end of a strip, and begins a record if it is time.
 func (k *keeper) boundary(decoded int) error {
-	k.latest = k.r.mark(k.w, decoded)
+	k.latest = k.r.mark(k.w, decoded, k.voxelsWritten())
 	select {
 	case err := <-k.pending:
 		k.settle(err)
@@ -124,7 +149,10 @@ func (k *keeper) end(failed error) error {
 	if k.pending != nil {
 		k.settle(<-k.pending)
 	}
-	if !k.failed && (failed == nil || errors.Is(failed, context.Canceled)) && k.latest.decoded > k.recorded.decoded {
+	if failed == nil {
+		k.latest = k.r.mark(k.w, k.w.shape.rows, k.voxelsWritten())
+	}
+	if !k.failed && (failed == nil || errors.Is(failed, context.Canceled)) && k.latest.extent != k.recorded.extent {
 		record, err := k.r.record(k.w, &k.recorded, &k.latest)
 		if err == nil {
 			err = k.journal.Append(record)

@@ -73,8 +73,8 @@ func FuzzStripRecord(f *testing.F) {
 	w.quality[0].good, w.quality[1].hits = 7, 3
 	w.samples.list = []restoredSample{{1, 2, 3}}
 	w.reader.tally.frames[1].Saturated = 5
-	w.finished, w.nextOut = 1, 1
-	at := r.mark(w, 2)
+	w.finished = 1
+	at := r.mark(w, 2, writtenVoxels{rows: 1})
 	seed, err := r.record(w, &mark{}, &at)
 	require.NoError(f, err)
 	f.Add(seed[4:])

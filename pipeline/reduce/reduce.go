@@ -280,7 +280,6 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		stuck:    stuck,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
-	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
 	if s.cube {
 		w.pixelVariance = r.writePixelVariance
 	}
@@ -294,6 +293,13 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	w.elements, w.boundary = r.element, keeper.boundary
+	w.sink = func(_ context.Context, out *outStrip) error {
+		err := r.write(w, out)
+		if err == nil {
+			keeper.wrote(out)
+		}
+		return err
+	}
 	if err := keeper.end(w.run(ctx)); err != nil {
 		return 0, err
 	}

@@ -166,6 +166,9 @@ func (r *reduction) goOn(k *keeper) error {
 		w.quality[y].forgetDecoding()
 	}
 	k.journal, k.recorded, k.latest = journal, m, m
+	if w.rectify != nil {
+		k.written = writtenVoxels{m.nextOut, m.cubeSums[:voxelImages]}
+	}
 	return nil
 }
 

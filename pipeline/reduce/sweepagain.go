@@ -46,12 +46,3 @@ func (w *sweep) bound(s *strip) error {
 	}
 	return w.boundary(s.y1)
 }
-
-// extent tells how far the sweep came, at the end of a strip.
-func (w *sweep) extent(decoded int) extent {
-	at := extent{decoded: decoded, finished: w.finished, nextOut: w.nextOut}
-	if w.rectify == nil {
-		at.finished, at.nextOut = decoded, 0
-	}
-	return at
-}
