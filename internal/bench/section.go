@@ -25,6 +25,7 @@ func sections() []section {
 		{"Memory", largeNight},
 		{"Workers", workers},
 		{"Growth", growth},
+		{"Decoding", decodingTable},
 		{"Kernels", kernelTable},
 	}
 }

@@ -4,10 +4,10 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
-	"runtime"
 	"strings"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/version"
@@ -35,7 +35,7 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.quality.Lost = len(r.roles.missing)
 	r.through.quality(&r.quality)
 	run := &product.Run{
-		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
+		Schema: product.RunSchema, Version: version.Version, CPULevel: hadamard.CPULevel(),
 		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
 		FieldShift: r.shift.Section(), Forecast: r.reached,
 		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
