@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -37,7 +36,7 @@ func newPairCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "pair NIGHT --sequence SEQ [--audit] [-o FILE.csv]",
 		Short: "Pair the frames of a night with the steps of a sequence",
-		Args:  cobra.ExactArgs(1),
+		Args:  arguments("NIGHT, the folder of the frames"),
 		RunE:  func(cmd *cobra.Command, args []string) error { return runPair(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -45,8 +44,8 @@ func newPairCommand(a *app) *cobra.Command {
 }
 
 func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
-	if o.sequence == "" {
-		return usageError{errors.New("pair needs --sequence; see 'mirrorloom pair --help'")}
+	if err := lacking("pair", needed{"--sequence", o.sequence}); err != nil {
+		return err
 	}
 	if info, err := os.Stat(o.file); err == nil && info.Mode().IsRegular() && info.Size() > 0 && !o.replace {
 		return fmt.Errorf("the output file is not empty: %s; choose another with -o or pass --replace", o.file)

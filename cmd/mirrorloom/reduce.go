@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"path/filepath"
@@ -43,7 +42,7 @@ func newReduceCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "reduce NIGHT --sequence SEQ -o RUN",
 		Short: "Turn a night of frames into a spectral cube",
-		Args:  cobra.ExactArgs(1),
+		Args:  arguments("NIGHT, the folder of the frames"),
 		RunE:  func(cmd *cobra.Command, args []string) error { return runReduce(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -52,8 +51,8 @@ func newReduceCommand(a *app) *cobra.Command {
 
 // options turns flags into those of the pipeline.
 func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
-	if o.sequence == "" || o.output.dir == "" {
-		return reduce.Options{}, usageError{errors.New("reduce needs --sequence and -o; see 'mirrorloom reduce --help'")}
+	if err := lacking("reduce", needed{"--sequence", o.sequence}, needed{"-o", o.output.dir}); err != nil {
+		return reduce.Options{}, err
 	}
 	if o.workers < 0 {
 		return reduce.Options{}, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
