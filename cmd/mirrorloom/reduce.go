@@ -113,8 +113,10 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 		fmt.Fprintf(&b, " (%.2f %% of those in coded rows on the detector)", 100*q.CoveredGoodFraction)
 	}
 	b.WriteString("\n")
+	b.WriteString(scienceWords(r))
+	b.WriteString(flagWords(q))
 	if q.DarkChi2Heldout != nil {
-		fmt.Fprintf(&b, "dark columns: mean square %.4f in units of their variance\n", *q.DarkChi2Heldout)
+		fmt.Fprintf(&b, "dark columns: their squares are %.4f times what the errors say; 1 if errors can be believed\n", *q.DarkChi2Heldout)
 	}
 	printForecast(&b, r.Run.Forecast)
 	for _, text := range r.Run.Warnings {
