@@ -22,6 +22,7 @@ type reduceOptions struct {
 	workers  int
 	cycles   []int
 	labelled bool
+	resume   bool
 	output   outputOptions
 }
 
@@ -34,6 +35,7 @@ func (o *reduceOptions) addFlags(f *pflag.FlagSet) {
 	f.IntVar(&o.workers, "workers", 0, "computations at the same time; 0 for one a processor")
 	f.IntSliceVar(&o.cycles, "cycles", nil, "cycles of science steps to use, from 1, with commas; all without")
 	f.BoolVar(&o.labelled, "as-labelled", false, "use every frame as its labels say, whatever the audit finds")
+	f.BoolVar(&o.resume, "resume", false, "go on with the unfinished run that lies beside -o, and keep it there if this one is interrupted")
 	o.output.addFlags(f, "products")
 }
 
@@ -59,7 +61,8 @@ func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
 	}
 	opts := reduce.Options{
 		Night: night, Sequence: o.sequence, MemoryBytes: int64(o.memory), Workers: o.workers, AsLabelled: o.labelled, Cycles: o.cycles,
-		Log: a.log, Progress: a.progress(),
+		Log: a.log, Progress: a.progress(), Resume: o.resume,
+		Note: func(clause string) { fmt.Fprintf(a.stderr, "mirrorloom: %s\n", clause) },
 	}
 	for _, p := range o.products {
 		switch p {
@@ -82,11 +85,17 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 		return err
 	}
 	var result *reduce.Result
-	err = o.output.write(ctx, func(dir string) (err error) {
+	work := func(dir string) (err error) {
 		opts.Out = dir
 		result, err = reduce.Run(ctx, opts)
 		return err
-	}, night, o.sequence, o.recipe, opts.Recipe.Arc.Use, opts.Recipe.Stars.Use)
+	}
+	inputs := []string{night, o.sequence, o.recipe, opts.Recipe.Arc.Use, opts.Recipe.Stars.Use}
+	if o.resume {
+		err = o.output.resume(ctx, work, reduce.CanResume, inputs...)
+	} else {
+		err = o.output.write(ctx, work, inputs...)
+	}
 	if err != nil {
 		return err
 	}

@@ -4,7 +4,6 @@ import (
 	"context"
 	"fmt"
 	"math"
-	"os"
 	"path/filepath"
 
 	"mirrorloom/calib"
@@ -104,7 +103,8 @@ func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	r.lessGood(voided, good)
-	return 4 * r.shape.cubeBytes(), os.Remove(r.cubePath())
+	// What it was made of stays until the end: an interrupted run goes on from there.
+	return 4 * r.shape.cubeBytes(), nil
 }
 
 // measureSky finds the sky; where there is none the cube is not whole.

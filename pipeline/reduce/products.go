@@ -29,7 +29,7 @@ func (r *reduction) create(s shape) error {
 		if err != nil {
 			return err
 		}
-		if r.element, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.ElementsFile), primary.Clone(), images); err != nil {
+		if r.element, err = fitsutil.CreateCube(r.elementsPath(), primary.Clone(), images); err != nil {
 			return err
 		}
 	}

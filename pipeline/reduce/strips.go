@@ -31,6 +31,10 @@ type sweep struct {
 	pixelVariance func(row *decodedRow) error
 	workers       int
 	progress      func(rows int)
+	// before is how far an earlier sweep came, whose sums begin gives back to this one;
+	// nothing for a sweep from the start. boundary, where not nil, is called after each strip.
+	before   extent
+	boundary func(decoded int) error
 
 	window  *window
 	scratch []*decodeWorker
@@ -63,7 +67,7 @@ func (w *sweep) run(ctx context.Context) error {
 		free <- w.shape.newStrip(w.heights.strip)
 	}
 	reader.Go(func() { w.read(ctx, free, ready) })
-	for y0 := 0; y0 < w.shape.rows; y0 += w.heights.strip {
+	for _, rows := range w.spans() {
 		var l loaded
 		select {
 		case l = <-ready:
@@ -77,15 +81,17 @@ func (w *sweep) run(ctx context.Context) error {
 			return err
 		}
 		free <- l.strip
-		w.progress(min(y0+w.heights.strip, w.shape.rows))
+		w.progress(rows[1])
 	}
 	return nil
 }
 
 func (w *sweep) begin() {
-	w.steps = newStepChi2(w.shape.slots)
+	if w.quality == nil {
+		w.clear()
+	}
 	w.window = newWindow(w.shape)
-	w.quality = make([]rowQuality, w.shape.rows)
+	w.finished, w.nextOut = w.firstAgain(), w.before.nextOut
 	w.fills = make([]calib.Fill, w.workers)
 	for range w.workers {
 		w.scratch = append(w.scratch, w.decoder.newWorker())
@@ -99,16 +105,21 @@ func (w *sweep) begin() {
 	}
 }
 
+// clear empties the sums.
+func (w *sweep) clear() {
+	w.quality, w.samples, w.steps = make([]rowQuality, w.shape.rows), restoredSamples{}, newStepChi2(w.shape.slots)
+}
+
 // read fills free strips in order and hands them on, until ctx ends.
 func (w *sweep) read(ctx context.Context, free <-chan *strip, ready chan<- loaded) {
-	for y0 := 0; y0 < w.shape.rows; y0 += w.heights.strip {
+	for _, rows := range w.spans() {
 		var s *strip
 		select {
 		case s = <-free:
 		case <-ctx.Done():
 			return
 		}
-		err := w.reader.read(ctx, s, y0, min(y0+w.heights.strip, w.shape.rows))
+		err := w.reader.read(ctx, s, rows[0], rows[1])
 		select {
 		case ready <- loaded{s, err}:
 		case <-ctx.Done():
@@ -128,7 +139,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 	if err := w.decode(ctx, s, rows); err != nil {
 		return err
 	}
-	if w.elements != nil {
+	if w.elements != nil && !w.isAgain(s.y0) {
 		if f := w.decoder.lostFlag(); f != 0 {
 			for i := range s.flags {
 				s.flags[i] |= f
@@ -140,7 +151,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 	}
 	if w.rectify == nil {
 		w.window.dropBefore(s.y1)
-		return nil
+		return w.bound(s)
 	}
 	for {
 		n := min(w.rectify.ready(w.nextOut, w.finished), w.heights.out)
@@ -153,7 +164,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		}
 	}
 	w.window.dropBefore(min(w.rectify.needs(w.nextOut), w.finished-max(1, w.ahead())))
-	return nil
+	return w.bound(s)
 }
 
 func (w *sweep) newPlanes() *elementPlanes {
@@ -210,8 +221,10 @@ func (w *sweep) decodeBlocks(ctx context.Context, s *strip, rows []*decodedRow) 
 		q.restored += b.restored
 		q.hits += b.hits
 		q.doubtful += b.doubtful
-		w.samples.add(b.samples)
-		w.steps.add(b)
+		if !w.isAgain(rows[i/blocks].y) {
+			w.samples.add(b.samples)
+			w.steps.add(b)
+		}
 	}
 	return nil
 }
@@ -251,6 +264,9 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 	}
 	if w.pixelVariance != nil {
 		for _, row := range w.window.rows[w.finished-first:][:n] {
+			if row.y < w.before.finished {
+				continue // an earlier sweep did it
+			}
 			if err := w.pixelVariance(row); err != nil {
 				return err
 			}
