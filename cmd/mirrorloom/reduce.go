@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"path/filepath"
@@ -46,7 +45,7 @@ func newReduceCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "reduce NIGHT --sequence SEQ -o RUN",
 		Short: "Turn a night of frames into a spectral cube",
-		Args:  cobra.ExactArgs(1),
+		Args:  arguments("NIGHT, the folder of the frames"),
 		RunE:  func(cmd *cobra.Command, args []string) error { return runReduce(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -55,8 +54,8 @@ func newReduceCommand(a *app) *cobra.Command {
 
 // options turns flags into those of the pipeline.
 func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
-	if o.sequence == "" || o.output.dir == "" {
-		return reduce.Options{}, usageError{errors.New("reduce needs --sequence and -o; see 'mirrorloom reduce --help'")}
+	if err := lacking("reduce", needed{"--sequence", o.sequence}, needed{"-o", o.output.dir}); err != nil {
+		return reduce.Options{}, err
 	}
 	if o.workers < 0 {
 		return reduce.Options{}, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
@@ -128,8 +127,10 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 		fmt.Fprintf(&b, " (%.2f %% of those in coded rows on the detector)", 100*q.CoveredGoodFraction)
 	}
 	b.WriteString("\n")
+	b.WriteString(scienceWords(r))
+	b.WriteString(flagWords(q))
 	if q.DarkChi2Heldout != nil {
-		fmt.Fprintf(&b, "dark columns: mean square %.4f in units of their variance\n", *q.DarkChi2Heldout)
+		fmt.Fprintf(&b, "dark columns: their squares are %.4f times what the errors say; 1 if errors can be believed\n", *q.DarkChi2Heldout)
 	}
 	printForecast(&b, r.Run.Forecast)
 	for _, text := range r.Run.Warnings {

@@ -54,6 +54,7 @@ type rowRecord struct {
 type voxelRecord struct {
 	Good, Covered, Wanted int
 	Flags                 int16
+	Flagged               [flagBits]int
 	Added                 []float32 // of every so many elements
 	Picture               *register.PictureRow
 }
@@ -92,7 +93,7 @@ func (q *rowQuality) forgetDecoding() { q.take(&rowRecord{}) }
 // voxels is the record of trace row y.
 func (r *reduction) voxels(w *sweep, y int) voxelRecord {
 	q := &w.quality[y]
-	v := voxelRecord{Good: q.good, Covered: q.covered, Wanted: q.wanted, Flags: q.flags}
+	v := voxelRecord{Good: q.good, Covered: q.covered, Wanted: q.wanted, Flags: q.flags, Flagged: q.flagged}
 	for j := 0; j < w.shape.elements; j += addedEvery {
 		v.Added = append(v.Added, w.rectify.added[y*w.shape.elements+j])
 	}
@@ -112,7 +113,7 @@ func (v *voxelRecord) fits(r *reduction, elements int) bool {
 // takeVoxels puts the record of trace row y back.
 func (r *reduction) takeVoxels(w *sweep, y int, v *voxelRecord) {
 	q, n := &w.quality[y], w.shape.elements
-	q.good, q.covered, q.wanted, q.flags = v.Good, v.Covered, v.Wanted, v.Flags
+	q.good, q.covered, q.wanted, q.flags, q.flagged = v.Good, v.Covered, v.Wanted, v.Flags, v.Flagged
 	for i, a := range v.Added {
 		w.rectify.added[y*n+i*addedEvery] = a
 	}
