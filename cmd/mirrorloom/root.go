@@ -53,7 +53,7 @@ func run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	}
 	if err != nil && !*started {
 		// cobra found the mistake before any command began to work.
-		err = usageError{fmt.Errorf("%w; see 'mirrorloom --help'", err)}
+		err = usageError{err}
 	}
 	// A log that cannot be flushed to a terminal is no failure of the run.
 	_ = a.log.Sync()
@@ -74,7 +74,12 @@ Exit codes: 0 whole; 1 error, nothing written; 2 wrong usage; 3 written, but
 not whole; 130 interrupted.`,
 		SilenceUsage:  true,
 		SilenceErrors: true,
-		Args:          cobra.NoArgs,
+		Args: func(cmd *cobra.Command, args []string) error {
+			if len(args) > 0 {
+				return unknownCommand(cmd, args[0])
+			}
+			return nil
+		},
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			if err := cmd.Help(); err != nil {
 				return err
@@ -93,6 +98,7 @@ not whole; 130 interrupted.`,
 	}
 	root.SetOut(a.stdout)
 	root.SetErr(a.stderr)
+	root.SetFlagErrorFunc(wrongFlag)
 	a.addFlags(root.PersistentFlags())
 	root.AddCommand(newPlanCommand(a), newRehearseCommand(a), newPairCommand(a), newReduceCommand(a), newCombineCommand(a), newExtractCommand(a), newDemoCommand(a), newVersionCommand(a))
 	return root, started

@@ -6,6 +6,8 @@ import (
 	"math"
 	"math/rand/v2"
 
+	"gonum.org/v1/gonum/mat"
+
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/sequence"
 )
@@ -43,7 +45,7 @@ func (l *Light) DarkThroughput(ctx context.Context, c Candidate) (float64, error
 	}
 	l.mu.Lock()
 	defer l.mu.Unlock()
-	fit, err := l.fitDark(ctx, l.field(c, l.sightOf(l.Time(c))), c, 0, hadamard.NightScatter, hadamard.NightTrend)
+	fit, err := l.fitDark(ctx, l.field(c, l.sightOf(l.Time(c))), c, 0, priorOf(hadamard.NightScatter, hadamard.NightTrend))
 	if err != nil {
 		return 0, err
 	}
@@ -100,13 +102,13 @@ func (l *Light) throughputLeft(ctx context.Context, f *fieldLight, c Candidate) 
 	if left, ok := f.left[key]; ok {
 		return left, nil
 	}
-	left, scatter, trend := transmission{rms: d}, hadamard.NightScatter, hadamard.NightTrend
+	left, prior := transmission{rms: d}, nightPrior(nil)
 	if own := l.sentinelError(f, c); own < math.Inf(1) {
-		scatter, trend = scatter*own/math.Hypot(scatter, own), 0
-		left.rms = scatter
+		left.rms = hadamard.NightScatter * own / math.Hypot(hadamard.NightScatter, own)
+		prior = priorOf(left.rms, 0)
 	}
 	if checks(c) && c.K > 1 {
-		fit, err := l.fitDark(ctx, f, c, left.rms, scatter, trend)
+		fit, err := l.fitDark(ctx, f, c, left.rms, prior)
 		if err != nil {
 			return left, err
 		}
@@ -129,8 +131,9 @@ func fallOf(fit *hadamard.ThroughputFit) float64 {
 }
 
 // fitDark is reduce's fit of frames of a candidate's light whose transmission scatters by d,
-// drawn once; what frames would add by noise is its mean (hadamard.Gram.AddExpected).
-func (l *Light) fitDark(ctx context.Context, f *fieldLight, c Candidate, d, scatter, trend float64) (*hadamard.ThroughputFit, error) {
+// drawn once; what frames would add by noise is its mean (hadamard.Gram.AddExpected). Without a
+// prior it takes the one that reduce would by the same columns.
+func (l *Light) fitDark(ctx context.Context, f *fieldLight, c Candidate, d float64, prior nightPrior) (*hadamard.ThroughputFit, error) {
 	code, err := hadamard.New(hadamard.Family(c.Family), c.V)
 	if err != nil {
 		return nil, err
@@ -150,7 +153,38 @@ func (l *Light) fitDark(ctx context.Context, f *fieldLight, c Candidate, d, scat
 		factor[k] = 1 + d*rng.NormFloat64()
 		times[k] = (float64(k)/float64(c.V-1) - 0.5) / float64(c.Cycles)
 	}
-	return checks.WithoutPedestal().Throughput(g.Scaled(factor), hadamard.DefaultThroughputPrior(times, scatter, trend))
+	checks, g = checks.WithoutPedestal(), g.Scaled(factor)
+	if prior == nil {
+		if prior, err = typicalPrior(checks, g, times, c.Cycles); err != nil {
+			return nil, err
+		}
+	}
+	return checks.Throughput(g, prior(times))
+}
+
+// typicalPrior is what reduce takes of hadamard.TypicalNights by the dark columns.
+func typicalPrior(checks *hadamard.Checks, g *hadamard.Gram, times []float64, cycles int) (nightPrior, error) {
+	nights := hadamard.TypicalNights()
+	priors := make([]*mat.SymDense, len(nights))
+	for i, n := range nights {
+		priors[i] = priorOf(n.Scatter, n.Trend)(times)
+	}
+	evidence, err := checks.Evidence(g, priors)
+	if err != nil {
+		return nil, err
+	}
+	for i := range evidence {
+		evidence[i] *= float64(cycles)
+	}
+	best := nights[max(0, hadamard.WidestLikely(evidence))]
+	return priorOf(best.Scatter, best.Trend), nil
+}
+
+// nightPrior is the covariance of the rows' transmission that is thought of beforehand.
+type nightPrior func(times []float64) *mat.SymDense
+
+func priorOf(scatter, trend float64) nightPrior {
+	return func(times []float64) *mat.SymDense { return hadamard.DefaultThroughputPrior(times, scatter, trend) }
 }
 
 // expectedGram is what the pixels that reduce looks at will say of a cycle.

@@ -219,7 +219,7 @@ def science(night, p, neighbour):
         np.subtract.at(clean, (k, pixel), charge)
         clean, s2, off = clean[:, ~unclear], s2[:, ~unclear], off[~unclear]
         sample = sample[:, ~unclear]
-        pairing, _ = dark.best_pairing(dark.gram(clean - off, s2)[0], basis.T @ basis)
+        pairing = dark.best_pairing(dark.gram(clean - off, s2)[0], basis.T @ basis)
         e, posterior, kept, before, after = dark.throughput(clean - off, s2, a[night.dark_columns], when)
         if not kept:
             e, posterior = np.zeros(v), np.zeros((v, v))
