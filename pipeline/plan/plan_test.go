@@ -91,7 +91,7 @@ func TestSummaryPrints(t *testing.T) {
 	_, summary := build(t, target, profile)
 	text := summary.String()
 	for _, want := range []string{
-		"demo field with optical", "m-sequence, v = 127, k = 64, l = 32, shuffled order", "111 elements of 2 mirrors",
+		"demo field with optical", "m-sequence of v = 127 columns, k = 64 open at once, l = 32 of them in any two steps; shuffled order", "111 elements of 2 mirrors",
 		"science     127     199.0", "all         314", "warning  no all-off frame",
 	} {
 		require.Contains(t, text, want)
