@@ -30,7 +30,7 @@ type Device struct {
 	Peaks     []OrderPeak `json:"order_peaks"`
 	PeakCount int         `json:"order_peak_count"`
 	// Warnings are about the device; Summary has them among all.
-	Warnings []string `json:"-"`
+	Warnings []string `json:"warnings"`
 }
 
 // DeviceAt is the device at a wavelength.
