@@ -50,7 +50,7 @@ func (c *Cube) Flush() error {
 	if c.closed {
 		return closedError(c.path)
 	}
-	if err := syncData(c.out.part.file); err != nil {
+	if err := c.out.part.traffic.writing(0, func() error { return syncData(c.out.part.file) }); err != nil {
 		return c.fail(c.out.part.wrap(err, "cannot be synced to the disk"))
 	}
 	return nil

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"path/filepath"
+	"runtime"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -84,6 +85,10 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	if err != nil {
 		return err
 	}
+	if o.workers > 0 {
+		// The reader, the writer and the garbage collector compute as well.
+		runtime.GOMAXPROCS(o.workers)
+	}
 	var result *reduce.Result
 	work := func(dir string) (err error) {
 		opts.Out = dir
@@ -136,9 +141,7 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 	for _, text := range r.Run.Warnings {
 		fmt.Fprintf(&b, "warning: %s\n", text)
 	}
-	for _, s := range r.Run.Stages {
-		fmt.Fprintf(&b, "%-8s %7.2f s  %7.3f GB\n", s.Name, s.Seconds, float64(s.Bytes)/1e9)
-	}
+	printStages(&b, r.Run.Stages)
 	for _, p := range []struct {
 		written    bool
 		name, file string
@@ -149,4 +152,15 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 	}
 	_, err := io.WriteString(w, b.String())
 	return err
+}
+
+// printStages prints the stages: seconds in all and of the parts of which they are made, as
+// product.Stage has them, and which of these took longest.
+func printStages(b *strings.Builder, stages []product.Stage) {
+	fmt.Fprintf(b, "%-10s %8s %9s %7s %8s %10s %8s %8s  %s\n", "stage", "seconds", "GB", "GB/s", "reading", "computing", "writing", "waiting", "took longest")
+	for _, s := range stages {
+		line := fmt.Sprintf("%-10s %8.2f %9.3f %7.3f %8.2f %10.2f %8.2f %8.2f  %s", s.Name, s.Seconds, float64(s.Bytes)/1e9,
+			s.GBPerS, s.ReadingS, s.ComputingS, s.WritingS, s.WaitingS, s.BottleneckWords())
+		b.WriteString(strings.TrimRight(line, " ") + "\n")
+	}
 }

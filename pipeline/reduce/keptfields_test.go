@@ -24,7 +24,7 @@ func TestEveryFieldIsKeptOrMadeAnew(t *testing.T) {
 			[]string{
 				"seq", "camera", "album", "roles", "masters", "usage",
 				"cube", "element", "shape", "rectifier", "quality", "samples", "stars", "onSky", "reached",
-				"opts", "log", "looked", "dependence", "state", "resumed",
+				"opts", "log", "looked", "traffic", "light", "unsynced", "dependence", "state", "resumed",
 			}},
 		{reflect.TypeFor[roles](), []string{"degraded", "warnings"}, []string{"calibration", "arcs", "refstars", "slots", "science", "lost", "missing"}},
 		{reflect.TypeFor[optics](), []string{"geometry", "nominalWave", "noFlat", "darkAmplifiers", "arcs", "trace", "pixel", "response", "neighbour", "leak"}, []string{"stuck"}},
@@ -39,7 +39,7 @@ func TestEveryFieldIsKeptOrMadeAnew(t *testing.T) {
 		{reflect.TypeFor[sweep](), []string{"quality", "samples", "steps", "finished", "nextOut"},
 			[]string{
 				"shape", "heights", "reader", "decoder", "rectify", "sink", "elements", "pixel", "light", "pixelVariance", "stuck", "workers", "progress",
-				"before", "boundary", "window", "scratch", "fills", "planes", "out",
+				"before", "boundary", "window", "scratch", "fills", "planes", "outs",
 			}},
 		{reflect.TypeFor[rectifier](), []string{"added"},
 			[]string{"geometry", "edges", "voxels", "shift", "columns", "usage", "elements", "uniform", "response", "pixelVariance", "scaled", "low", "byElement", "workers", "field", "group"}},

@@ -160,6 +160,7 @@ func (r *reduction) takePrepared(p *prepared) error {
 	if r.masters, err = openMasters(r.scratch()); err != nil {
 		return err
 	}
+	r.masters.file.CountInto(&r.traffic)
 	r.schema, r.shift, r.report = p.Schema, p.Shift, p.Report
 	r.usage = newUsage(r.seq)
 	r.optics, r.through = p.Optics.take(), p.Throughput.take()

@@ -23,6 +23,7 @@ func (r *reduction) create(s shape) error {
 		if r.cube, err = fitsutil.CreateCube(r.cubePath(), primary.Clone(), images); err != nil {
 			return err
 		}
+		r.cube.CountInto(&r.traffic)
 	}
 	if s.elementCube {
 		images, err := product.ElementImages(s.columns, s.rows, s.slots)
@@ -32,6 +33,7 @@ func (r *reduction) create(s shape) error {
 		if r.element, err = fitsutil.CreateCube(r.elementsPath(), primary.Clone(), images); err != nil {
 			return err
 		}
+		r.element.CountInto(&r.traffic)
 	}
 	return nil
 }

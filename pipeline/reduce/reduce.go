@@ -8,7 +8,6 @@ import (
 	"runtime/debug"
 	"slices"
 	"sync/atomic"
-	"time"
 
 	"go.uber.org/zap"
 
@@ -18,6 +17,7 @@ import (
 	"mirrorloom/pipeline/kept"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/sequence"
 )
 
@@ -68,14 +68,9 @@ type stage struct {
 // runStages runs stages in turn and times them.
 func (r *reduction) runStages(ctx context.Context, stages []stage) error {
 	for _, step := range stages {
-		start := time.Now()
-		bytes, err := step.run(ctx)
-		if err != nil {
+		if err := r.timed(step.name, func() (int64, error) { return step.run(ctx) }); err != nil {
 			return err
 		}
-		seconds := time.Since(start).Seconds()
-		r.stages = append(r.stages, product.Stage{Name: step.name, Seconds: seconds, Bytes: bytes})
-		r.log.Info("stage done", zap.String("stage", step.name), zap.Float64("seconds", seconds), zap.Int64("bytes", bytes))
 	}
 	return nil
 }
@@ -113,6 +108,13 @@ type reduction struct {
 	reached   *product.Forecast
 	badPixels int
 	stages    []product.Stage
+	// traffic counts what is read of frames and masters and written of products.
+	traffic fitsutil.Traffic
+	// light is the cube's for the report; nil where that reads it from the file.
+	light *report.Light
+	// unsynced are the rows that were written since the system was last asked to bring the
+	// cube to the disk.
+	unsynced int
 	// looked counts the bytes that calibrate reads: see traffic.go.
 	looked atomic.Int64
 
@@ -196,6 +198,7 @@ func (r *reduction) openFrames() (err error) {
 	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe, r.opts.Cycles), r.scratch()); err != nil {
 		return err
 	}
+	r.album.CountInto(&r.traffic)
 	if r.roles, err = assign(r.seq, r.album.Frames, calibrates, r.opts.Cycles); err != nil {
 		return err
 	}
@@ -220,18 +223,19 @@ func (r *reduction) heedAudit() {
 func (r *reduction) prepare(ctx context.Context) (int64, error) {
 	p := &prepare{
 		camera: r.camera, album: r.album, frames: r.roles.calibration, recipe: r.opts.Recipe.Detector,
-		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes,
+		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes, traffic: &r.traffic,
 	}
 	var err error
 	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.Rows) })
 	if err != nil {
 		return 0, err
 	}
-	c := r.roles.calibration
-	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamps.on) + len(c.lamps.off)
 	if r.masters, err = openMasters(r.scratch()); err != nil {
 		return 0, err
 	}
+	r.masters.file.CountInto(&r.traffic)
+	c := r.roles.calibration
+	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamps.on) + len(c.lamps.off)
 	return r.frameBytes()*int64(frames) + r.masterBytes(), nil
 }
 
@@ -253,6 +257,9 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.uniform = d.code.VarianceUniform()
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
+	if s.cube && !r.toSky() && !r.resumed {
+		r.light = report.NewLight(s.elements, s.rows, s.voxels)
+	}
 	var stuck *stuckLight
 	if s.cube {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
@@ -343,7 +350,7 @@ func (r *reduction) gridSource() string {
 // heldBytes is the memory of what calibrate keeps for the strips, and of what the
 // rectifier needs more than usual.
 func (r *reduction) heldBytes() int64 {
-	held := int64(0)
+	held := int64(r.shape.elements) * int64(r.shape.rows) * report.LightBytes
 	if r.rectifier != nil {
 		held = r.rectifier.fieldBytes()
 	}
@@ -381,9 +388,22 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 	for row := range out.h {
 		y := out.y0 + row
 		w.quality[y].count(out, row, w.shape.elements, w.shape.voxels, r.usage.row(y))
+		out.addLight(r.light, row, w.shape)
 	}
-	return out.write(r.cube, w.shape.voxels)
+	if err := out.write(r.cube, w.shape.voxels); err != nil {
+		return err
+	}
+	if r.unsynced += out.h; !r.toSky() && r.unsynced*w.shape.elements*bytesFloat >= syncRun {
+		r.cube.BeginSync()
+		r.unsynced = 0
+	}
+	return nil
 }
+
+// syncRun is how many bytes of a plane are written before the system is asked to bring them
+// to the disk: fewer would make the disk seek, and more would leave much to wait for at the
+// end.
+const syncRun = 256 << 10
 
 // newReader reads the frames of slots, exposed so long, whose light without any
 // open mirror is in master dim, and corrects them so.

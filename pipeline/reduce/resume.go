@@ -189,6 +189,7 @@ func (r *reduction) reopen(s shape, head *journalHead, m *mark) error {
 		if r.cube, err = fitsutil.ReopenCube(r.cubePath(), filepath.Join(filepath.Dir(r.cubePath()), head.Cube), primary.Clone(), images, m.cubeProgress()); err != nil {
 			return err
 		}
+		r.cube.CountInto(&r.traffic)
 	}
 	if s.elementCube {
 		images, err := product.ElementImages(s.columns, s.rows, s.slots)
@@ -202,6 +203,7 @@ func (r *reduction) reopen(s shape, head *journalHead, m *mark) error {
 			}
 			return err
 		}
+		r.element.CountInto(&r.traffic)
 	}
 	return nil
 }

@@ -20,10 +20,10 @@ type sweep struct {
 	// sink takes each strip of the cube; the strip is used again afterwards.
 	sink     func(ctx context.Context, out *outStrip) error
 	elements *fitsutil.Cube // nil without an element cube
-	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
-	// decoded row, in order, before bad pixels are filled.
+	// pixel is the pixels' response, nil for 1. light, where not nil, sees the
+	// decoded rows, in order, before bad pixels are filled.
 	pixel *calib.PixelResponse
-	light func(row *decodedRow)
+	light func(ctx context.Context, rows []*decodedRow, workers int) error
 	// stuck puts in the light of mirrors that do not move; nil where all move.
 	stuck *stuckLight
 	// pixelVariance, where not nil, takes each row's variances, in order, when they
@@ -40,8 +40,8 @@ type sweep struct {
 	scratch []*decodeWorker
 	fills   []calib.Fill
 	planes  *elementPlanes // nil without an element cube
-	out     *outStrip
-	nextOut int // the next trace row to write
+	outs    *outQueue      // nil without a cube
+	nextOut int            // the next trace row to write
 	// finished is the first row that is not yet fit for rectifying.
 	finished int
 	quality  []rowQuality
@@ -55,13 +55,18 @@ type loaded struct {
 	err   error
 }
 
-// run goes through all strips: one is worked on while the next is read.
+// run goes through all strips: one is worked on while the next is read and what was made
+// of the last is written.
 func (w *sweep) run(ctx context.Context) error {
 	w.begin()
 	ctx, cancel := context.WithCancel(ctx)
 	var reader sync.WaitGroup
 	defer reader.Wait()
 	defer cancel()
+	if w.rectify != nil {
+		w.outs = newOutQueue(ctx, w.shape, w.heights.out, w.sink)
+		defer w.outs.close()
+	}
 	free, ready := make(chan *strip, 2), make(chan loaded)
 	for range cap(free) {
 		free <- w.shape.newStrip(w.heights.strip)
@@ -83,6 +88,9 @@ func (w *sweep) run(ctx context.Context) error {
 		free <- l.strip
 		w.progress(rows[1])
 	}
+	if w.outs != nil {
+		return w.outs.close()
+	}
 	return nil
 }
 
@@ -98,7 +106,6 @@ func (w *sweep) begin() {
 	}
 	if w.rectify != nil {
 		w.rectify.scaled, w.rectify.byElement = w.decoder.scales(), w.decoder.repair.elementRatios()
-		w.out = w.shape.newOut(w.heights.out)
 	}
 	if w.elements != nil {
 		w.planes = w.newPlanes()
@@ -190,8 +197,8 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		return err
 	}
 	if w.light != nil {
-		for _, row := range rows {
-			w.light(row)
+		if err := w.light(ctx, rows, w.workers); err != nil {
+			return err
 		}
 	}
 	return w.finish(ctx, s.y1)
@@ -377,20 +384,22 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 
 // emit makes and writes the next n trace rows of the cube.
 func (w *sweep) emit(ctx context.Context, n int) error {
-	w.out.begin(w.shape, w.nextOut, n)
-	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
+	out, err := w.outs.take(ctx)
+	if err != nil {
+		return err
+	}
+	out.begin(w.shape, w.nextOut, n)
+	if err := w.rectify.run(ctx, out, w.window); err != nil {
 		return err
 	}
 	if lost := w.decoder.lostFlag(); lost != 0 {
-		for i, f := range w.out.flags {
+		for i, f := range out.flags {
 			if f&product.FlagNoData == 0 {
-				w.out.flags[i] |= lost
+				out.flags[i] |= lost
 			}
 		}
 	}
-	if err := w.sink(ctx, w.out); err != nil {
-		return err
-	}
+	w.outs.give(out)
 	w.nextOut += n
 	return nil
 }
