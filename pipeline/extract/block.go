@@ -1,20 +1,28 @@
 package extract
 
 // block adds what pixels x0..x0+n-1 of detector row y contribute.
-func (p *propagator) block(w *part, y int, traces []*traceRow, light [][]float32, pixels *pixelRow) {
+func (p *propagator) block(w *part, y int, traces []*traceRow, light *rowLight, pixels *pixelRow) {
 	if !p.gather(w, y, traces) {
 		return
 	}
-	p.c.samples(&w.b, light, pixels)
+	if p.even {
+		p.c.evenSamples(&w.b, light, pixels)
+		w.k.even = w.k.even.of(p.c, light)
+	} else {
+		p.c.samples(&w.b, light.of, pixels)
+	}
 	if !p.sumsOnly {
 		w.k.prepare(&w.b)
 		for x := range w.n {
 			if p.touched(w, x) {
-				p.pixel(w, x, light, pixels)
+				p.pixel(w, x, light.of, pixels)
 			}
 		}
+		if w.moments != nil {
+			p.addMoments(w, light.of)
+		}
 	}
-	p.addSums(w, light, pixels)
+	p.addSums(w, light.of, pixels)
 }
 
 // gather collects the weights of all channels on the block's pixels, by the slots

@@ -1,7 +1,11 @@
 package extract
 
 import (
+	"context"
 	"math"
+	"runtime"
+
+	"mirrorloom/pipeline/parallel"
 )
 
 // lightReader rebuilds from the cube the light of all elements at the detector's
@@ -69,6 +73,17 @@ func (r *lightReader) row(y int) ([][]float32, error) {
 	return light, nil
 }
 
+// some is all of it: the images give no less.
+func (r *lightReader) some(y int, _ []int) (*rowLight, error) {
+	all, err := r.row(y)
+	if err != nil {
+		return nil, err
+	}
+	l := &rowLight{of: all}
+	l.total, l.shared = r.c.addUp(all)
+	return l, nil
+}
+
 // trace fills in the light of a trace row.
 func (r *lightReader) trace(y0 int) error {
 	if r.traces[y0] != nil {
@@ -83,8 +98,11 @@ func (r *lightReader) trace(y0 int) error {
 		return err
 	}
 	light := table[float32](c.Elements, c.noise.Columns)
-	values, places := make([]float64, c.Grid.Count), make([]float64, c.Grid.Count)
-	for j := range light {
+	workers := runtime.GOMAXPROCS(0)
+	memory := table[float64](2*workers, c.Grid.Count)
+	r.traces[y0] = light
+	return parallel.Do(context.Background(), workers, c.Elements, func(worker, j int) error {
+		values, places := memory[2*worker], memory[2*worker+1]
 		for l := range values {
 			v := r.voxel(j, y0, l)
 			if r.electrons != nil {
@@ -97,9 +115,8 @@ func (r *lightReader) trace(y0 int) error {
 		}
 		c.geometry.Places(places, float64(j), float64(y0), c.centres)
 		spread(light[j], values, places)
-	}
-	r.traces[y0] = light
-	return nil
+		return nil
+	})
 }
 
 // beyond the first and last voxel their light is taken to go on for so many columns:
