@@ -7,6 +7,7 @@ import (
 	"io/fs"
 	"math"
 	"os"
+	"path/filepath"
 
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/rowfile"
@@ -153,4 +154,13 @@ func (r *cachedLightRows) some(y int, elements []int) (l *rowLight, err error) {
 		}
 	}
 	return l, nil
+}
+
+// RowsNames are the names of the files that MakeRows makes.
+func (c *Cube) RowsNames() []string {
+	names := []string{filepath.Base(c.rowsPath(""))}
+	for _, m := range c.members {
+		names = append(names, m.RowsNames()...)
+	}
+	return names
 }

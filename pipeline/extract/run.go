@@ -83,7 +83,7 @@ func Run(ctx context.Context, opts Options) (*Answer, error) {
 		if err := c.writeSpectrum(opts.Out, opts.Spectrum, s); err != nil {
 			return nil, err
 		}
-		a.Spectrum = s.answer(opts.Spectrum, c.Unit)
+		a.Spectrum = s.Answer(opts.Spectrum, c.Unit)
 		a.Files = append(a.Files, SpectrumFITS, SpectrumCSV, SpectrumPlot)
 	}
 	if opts.Image != nil {
@@ -104,7 +104,8 @@ func Run(ctx context.Context, opts Options) (*Answer, error) {
 	return a, nil
 }
 
-func (s *Spectrum) answer(o SpectrumOptions, unit string) *SpectrumAnswer {
+// Answer sums up the spectrum that o asked for of a cube in unit.
+func (s *Spectrum) Answer(o SpectrumOptions, unit string) *SpectrumAnswer {
 	a := &SpectrumAnswer{
 		Aperture: o.Aperture.Text, RADeg: s.Position.RADeg, DecDeg: s.Position.DecDeg, Element: s.Element, Row: s.Row, AreaVoxels: s.Area,
 	}
