@@ -15,9 +15,9 @@ type runAnswer struct {
 	Object   string `json:"object"`
 	Verdict  string `json:"verdict"`
 	CanTrust string `json:"can_trust"`
-	// Reasons are what is known for and against it, Look what to look at.
+	// Reasons are what is known for and against it, Do what to do about it.
 	Reasons  []string `json:"reasons"`
-	Look     []string `json:"look"`
+	Do       []string `json:"do"`
 	Combined bool     `json:"combined"`
 	Runs     int      `json:"runs"`
 
@@ -117,14 +117,14 @@ func (v *Viewer) wcs() (a wcsAnswer, err error) {
 
 // judge says whether the cube can be trusted, as the report does.
 func (v *Viewer) judge(a *runAnswer) {
-	a.Reasons, a.Look = []string{}, []string{}
+	a.Reasons, a.Do = []string{}, []string{}
 	if v.run == nil {
 		a.Verdict, a.CanTrust = "There is no "+product.RunFile+" beside the cube: nothing tells how good it is.", string(report.TrustLook)
 		return
 	}
-	j := report.Judge(report.Input{Run: v.run, Ledger: v.ledger, Schema: v.schema}, "cube")
+	j := report.Judge(v.run, v.ledger)
 	a.Verdict, a.CanTrust = j.Headline, string(j.Trust)
-	a.Reasons, a.Look = append(a.Reasons, j.Reasons...), append(a.Look, j.Look...)
+	a.Reasons, a.Do = append(a.Reasons, j.Reasons...), append(a.Do, j.Do...)
 }
 
 func (v *Viewer) getProgress(w http.ResponseWriter, _ *http.Request, q *query) error {
