@@ -40,7 +40,7 @@ of any other. Ctrl-C ends it, with exit code 0.
 What makes spectra fast is kept in RUN/.cache, made once in the background, somewhat
 larger than the cube. It may be removed at any time. Where RUN cannot be written it is
 kept in your own cache folder.`,
-		Args: cobra.ExactArgs(1),
+		Args: arguments("RUN, a folder that reduce or combine wrote, or a cube.fits"),
 		RunE: func(cmd *cobra.Command, args []string) error { return runView(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())

@@ -5,6 +5,7 @@ import (
 	"math"
 	"runtime"
 
+	"mirrorloom/calib"
 	"mirrorloom/pipeline/parallel"
 )
 
@@ -20,6 +21,7 @@ type lightReader struct {
 	chunkRow  int
 	chunkRows int
 	traces    map[int][][]float32 // by trace row: [element][column]
+	places    *calib.RowPlaces    // of the voxels' centres
 }
 
 // chunkBytes of SIGNAL are read at a time.
@@ -30,7 +32,8 @@ const mostChunkRows = 16
 
 func (c *Cube) newLightReader(electrons []float64) *lightReader {
 	rows := min(max(chunkBytes/(4*c.Elements*c.Grid.Count), 1), mostChunkRows)
-	return &lightReader{c: c, electrons: electrons, chunkRow: -1, chunkRows: rows, traces: map[int][][]float32{}}
+	return &lightReader{c: c, electrons: electrons, chunkRow: -1, chunkRows: rows, traces: map[int][][]float32{},
+		places: calib.NewRowPlaces(c.geometry, c.Elements, c.centres)}
 }
 
 // row is the light of detector row y, [element][column], electrons of a science
@@ -100,6 +103,7 @@ func (r *lightReader) trace(y0 int) error {
 	light := table[float32](c.Elements, c.noise.Columns)
 	workers := runtime.GOMAXPROCS(0)
 	memory := table[float64](2*workers, c.Grid.Count)
+	r.places.SetRow(float64(y0))
 	r.traces[y0] = light
 	return parallel.Do(context.Background(), workers, c.Elements, func(worker, j int) error {
 		values, places := memory[2*worker], memory[2*worker+1]
@@ -113,7 +117,7 @@ func (r *lightReader) trace(y0 int) error {
 				values[l] = 0 // no data: as good as no light
 			}
 		}
-		c.geometry.Places(places, float64(j), float64(y0), c.centres)
+		r.places.Places(places, float64(j))
 		spread(light[j], values, places)
 		return nil
 	})

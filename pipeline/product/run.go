@@ -90,6 +90,8 @@ type Quality struct {
 	// in the order of the steps; null where nothing is restored. Steps that show the
 	// same mask share theirs.
 	DarkChi2Steps []StepChi2 `json:"dark_chi2_steps"`
+	// Flags count voxels by their flags; empty without a cube.
+	Flags []FlagCount `json:"flags,omitempty"`
 	// Saturated and BadPixels count detector pixels.
 	Saturated int `json:"saturated"`
 	BadPixels int `json:"bad_pixels"`
@@ -123,15 +125,6 @@ const (
 	ByDark   ResidualLight = "dark columns"
 	NotTaken ResidualLight = "none"
 )
-
-// Stage is one stage of a run: its wall-clock time and the bytes of pixels and tables
-// that it read and wrote. The headers of frames are not counted: a stage that reads
-// nothing else, such as pair, has 0.
-type Stage struct {
-	Name    string  `json:"name"`
-	Seconds float64 `json:"seconds"`
-	Bytes   int64   `json:"bytes"`
-}
 
 // Write writes run.json's text.
 func (r *Run) Write(w io.Writer) error {

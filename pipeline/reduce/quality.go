@@ -2,9 +2,13 @@ package reduce
 
 import (
 	"math"
+	"math/bits"
 
 	"mirrorloom/pipeline/product"
 )
+
+// flagBits are those of FLAGS.
+const flagBits = 16
 
 // rowQuality is what a detector row adds to the figures of run.json. Rows are
 // kept apart and added in order, so that the figures do not depend on how rows
@@ -13,9 +17,10 @@ type rowQuality struct {
 	dark                  darkChi2
 	good, covered, wanted int // voxels: good; good and wanted; in coded rows and on the detector
 	flags                 int16
-	saturated             int // pixels
-	restored              int // samples
-	hits, doubtful        int // samples that cosmic rays struck; pixels where they cannot be told
+	flagged               [flagBits]int // wanted voxels by the bits of their flags
+	saturated             int           // pixels
+	restored              int           // samples
+	hits, doubtful        int           // samples that cosmic rays struck; pixels where they cannot be told
 	scale                 rowScale
 }
 
@@ -34,6 +39,9 @@ func (q *rowQuality) count(out *outStrip, row, elements, voxels int, use []int16
 				q.wanted++
 				if good {
 					q.covered++
+				}
+				for b := uint16(f); b != 0; b &= b - 1 {
+					q.flagged[bits.TrailingZeros16(b)]++
 				}
 			}
 			if use[j] == 0 {
@@ -56,6 +64,9 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 		all.covered += r.covered
 		all.wanted += r.wanted
 		all.flags |= r.flags
+		for i, n := range r.flagged {
+			all.flagged[i] += n
+		}
 		all.saturated += r.saturated
 		all.restored += r.restored
 		all.hits += r.hits
@@ -69,6 +80,10 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 		q.GoodFraction = float64(all.good) / float64(total)
 	}
 	if all.wanted > 0 {
+		for _, f := range product.Flags() {
+			n := all.flagged[bits.TrailingZeros16(uint16(f.Bit))]
+			q.Flags = append(q.Flags, product.FlagCount{Name: f.Name, Bit: f.Bit, Voxels: n, Share: float64(n) / float64(all.wanted)})
+		}
 		q.CoveredGoodFraction = float64(all.covered) / float64(all.wanted)
 	}
 	if all.dark.terms > 0 {
