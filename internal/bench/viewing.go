@@ -79,10 +79,8 @@ func viewNight(ctx context.Context, s *session, p nightPlan, recipe string) (v v
 	if err != nil {
 		return v, err
 	}
-	if recipe != "nominal" {
-		if recipe, err = recipeFile(s.dir, recipe); err != nil {
-			return v, err
-		}
+	if recipe, err = recipeFile(s.dir, recipe); err != nil {
+		return v, err
 	}
 	run := filepath.Join(s.dir, "run")
 	if _, err := child.Run(ctx, program, "reduce", n.frames, "--sequence", n.sequence, "--recipe", recipe, "--memory", workersMemory, "-o", run, "--replace"); err != nil {
