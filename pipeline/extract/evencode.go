@@ -116,3 +116,24 @@ func (k *coupling) lightOfPairs(c *Cube, elements []int) []int {
 	}
 	return all
 }
+
+// chooseEven takes the short way to covariances where the code has one and nothing else
+// needs the samples one by one.
+func (p *propagator) chooseEven() {
+	if !p.c.isEven() || len(p.sums) > 0 || p.c.hasThroughput() && !p.byMoments() {
+		return
+	}
+	p.even, p.fork.even = true, p.c.newEvenCoupling()
+	if !p.c.hasThroughput() {
+		p.of = p.fork.lightOfPairs(p.c, p.elements)
+	}
+}
+
+// lightOf is what is needed of the light of row y.
+func (p *propagator) lightOf(y int) (*rowLight, error) {
+	if p.even {
+		return p.light.some(y, p.of)
+	}
+	all, err := p.light.row(y)
+	return &rowLight{of: all}, err
+}

@@ -34,7 +34,7 @@ type rowLight struct {
 	total, shared []float64
 }
 
-// rows is where c's voxels come from.
+// source is where c's voxels come from.
 func (c *Cube) source() voxelRows {
 	if c.cached != nil {
 		return c.cached

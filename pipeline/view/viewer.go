@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io"
 	"io/fs"
 	"os"
 	"path/filepath"
@@ -35,7 +36,7 @@ type Viewer struct {
 	slots  chan struct{}                // computations at a time
 	busy   atomic.Int64                 // answers that are being computed
 	mu     sync.Mutex
-	opened []interface{ Close() error } // to be closed with the viewer
+	opened []io.Closer // to be closed with the viewer
 	work   sync.WaitGroup
 }
 
@@ -62,7 +63,7 @@ func open(run string) (*Viewer, error) {
 	if err != nil {
 		return nil, err
 	}
-	v := &Viewer{plain: c, dir: filepath.Dir(c.Path()), unit: c.Unit, slots: make(chan struct{}, atOnce), opened: []interface{ Close() error }{c}}
+	v := &Viewer{plain: c, dir: filepath.Dir(c.Path()), unit: c.Unit, slots: make(chan struct{}, atOnce), opened: []io.Closer{c}}
 	if err := v.read(); err != nil {
 		v.close() // only read from
 		return nil, err
@@ -143,7 +144,7 @@ func (v *Viewer) close() error {
 }
 
 // later closes something with the viewer.
-func (v *Viewer) later(c interface{ Close() error }) {
+func (v *Viewer) later(c io.Closer) {
 	v.mu.Lock()
 	defer v.mu.Unlock()
 	v.opened = append(v.opened, c)
