@@ -124,15 +124,6 @@ const (
 	NotTaken ResidualLight = "none"
 )
 
-// Stage is one stage of a run: its wall-clock time and the bytes of pixels and tables
-// that it read and wrote. The headers of frames are not counted: a stage that reads
-// nothing else, such as pair, has 0.
-type Stage struct {
-	Name    string  `json:"name"`
-	Seconds float64 `json:"seconds"`
-	Bytes   int64   `json:"bytes"`
-}
-
 // Write writes run.json's text.
 func (r *Run) Write(w io.Writer) error {
 	enc := json.NewEncoder(w)

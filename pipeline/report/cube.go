@@ -2,7 +2,6 @@ package report
 
 import (
 	"context"
-	"fmt"
 	"math"
 	"slices"
 
@@ -54,89 +53,6 @@ func (c *cube) unitWord() string {
 	return unit
 }
 
-const (
-	// Of a cube whose signal and flags hold more than this many bytes only every
-	// so manieth plane is looked at: a gibibyte is read in a few seconds.
-	scanBytes = 1 << 30
-	// Rows are read in pieces of about this many voxels, 1 MiB of float32.
-	pieceVoxels = 1 << 18
-	// bytesPerVoxel of SIGNAL and FLAGS together, as product writes them.
-	bytesPerVoxel = 4 + 2
-)
-
-// whiteLight is the mean over wavelength of the good voxels.
-type whiteLight struct {
-	elements, rows int
-	mean           []float64 // [row][element]; NaN without a good voxel
-	good           []int32   // good voxels among the planes looked at
-	planes, all    int       // planes looked at, and all
-	flagged        []int64   // voxels that have the flag, in the order of product.Flags
-}
-
-func (c *cube) whiteLight(ctx context.Context) (*whiteLight, error) {
-	w := &whiteLight{elements: c.elements(), rows: c.rows(), all: c.signal.Planes(), flagged: make([]int64, len(product.Flags()))}
-	w.mean, w.good = make([]float64, w.elements*w.rows), make([]int32, w.elements*w.rows)
-	stride := strideFor(w.elements*w.rows, w.all)
-	piece := min(max(1, pieceVoxels/w.elements), w.rows)
-	signal, flags := make([]float32, piece*w.elements), make([]float32, piece*w.elements)
-	for l := stride / 2; l < w.all; l += stride {
-		w.planes++
-		for y := 0; y < w.rows; y += piece {
-			if err := ctx.Err(); err != nil {
-				return nil, err
-			}
-			end := min(y+piece, w.rows)
-			s, f := signal[:(end-y)*w.elements], flags[:(end-y)*w.elements]
-			if err := c.signal.ReadPlaneRows(s, l, y, end); err != nil {
-				return nil, err
-			}
-			if err := c.flags.ReadPlaneRows(f, l, y, end); err != nil {
-				return nil, err
-			}
-			w.add(y*w.elements, s, f)
-		}
-	}
-	for i, n := range w.good {
-		w.mean[i] /= float64(n) // NaN for 0/0
-	}
-	return w, nil
-}
-
-// strideFor is the distance of the planes to look at: the middle one of every
-// stride planes, and at least one plane.
-func strideFor(voxels, planes int) int {
-	most := max(1, scanBytes/(bytesPerVoxel*max(voxels, 1)))
-	return max(1, (planes+most-1)/most)
-}
-
-// add takes in voxels of a plane from an index on.
-func (w *whiteLight) add(at int, signal, flags []float32) {
-	all := product.Flags()
-	for i, f := range flags {
-		bits := int16(f)
-		if bits&product.FlagBad == 0 && !math.IsNaN(float64(signal[i])) {
-			w.mean[at+i] += float64(signal[i])
-			w.good[at+i]++
-		}
-		if bits == 0 {
-			continue
-		}
-		for n, flag := range all {
-			if bits&flag.Bit != 0 {
-				w.flagged[n]++
-			}
-		}
-	}
-}
-
-// note says which planes the picture shows.
-func (w *whiteLight) note() string {
-	if w.planes == w.all {
-		return fmt.Sprintf("all %d wavelengths", w.all)
-	}
-	return fmt.Sprintf("%d of %d wavelengths, evenly chosen as the cube is large", w.planes, w.all)
-}
-
 // flagShare is a flag with the part of the voxels that have it.
 type flagShare struct {
 	Name  string
@@ -145,7 +61,7 @@ type flagShare struct {
 	Bad   bool
 }
 
-func (w *whiteLight) flagShares() []flagShare {
+func (w *Light) flagShares() []flagShare {
 	var shares []flagShare
 	total := float64(w.elements*w.rows) * float64(w.planes)
 	for i, f := range product.Flags() {

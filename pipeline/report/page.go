@@ -48,6 +48,7 @@ type page struct {
 	Settings         []fact
 	Inputs           []product.Input
 	Stages           []stageView
+	StagesMeasured   bool // where their time went
 	TotalSeconds     string
 	TotalBytes, Rate string
 }
@@ -60,7 +61,11 @@ type spectrumView struct {
 	Chart        template.HTML
 }
 
-type stageView struct{ Name, Seconds, Bytes, Rate string }
+type stageView struct {
+	Name, Seconds, Bytes, Rate           string
+	Reading, Computing, Writing, Waiting string
+	Bottleneck                           string
+}
 
 // newPage fills in all that does not come from the cube.
 func newPage(in Input) *page {
@@ -73,7 +78,6 @@ func newPage(in Input) *page {
 		Settings: flatten("", in.Run.Settings), Inputs: in.Run.Inputs,
 	}
 	p.Verdict = judge(in, "element cube")
-	p.addStages(in.Run.Stages)
 	return p
 }
 
@@ -173,7 +177,13 @@ func (p *page) addStages(stages []product.Stage) {
 	var seconds float64
 	var bytes int64
 	for _, s := range stages {
-		p.Stages = append(p.Stages, stageView{s.Name, fmt.Sprintf("%.2f", s.Seconds), bytesText(s.Bytes), rate(s.Bytes, s.Seconds)})
+		v := stageView{Name: s.Name, Seconds: fmt.Sprintf("%.2f", s.Seconds), Bytes: bytesText(s.Bytes), Rate: rate(s.Bytes, s.Seconds), Bottleneck: s.BottleneckWords()}
+		if s.Bottleneck != "" {
+			v.Reading, v.Computing = fmt.Sprintf("%.2f", s.ReadingS), fmt.Sprintf("%.2f", s.ComputingS)
+			v.Writing, v.Waiting = fmt.Sprintf("%.2f", s.WritingS), fmt.Sprintf("%.2f", s.WaitingS)
+			p.StagesMeasured = true
+		}
+		p.Stages = append(p.Stages, v)
 		seconds += s.Seconds
 		bytes += s.Bytes
 	}

@@ -70,7 +70,7 @@ func (s stretch) inverse(t float64) float64 {
 
 // drawPicture draws the white light, darker where it is brighter, as on a
 // photographic negative: that prints well and is read without colours.
-func drawPicture(w *whiteLight, sky skyPlane, places []place) (template.HTML, error) {
+func drawPicture(w *Light, sky skyPlane, places []place) (template.HTML, error) {
 	st, ok := stretchOf(w.mean)
 	if !ok {
 		return "", nil
@@ -103,7 +103,7 @@ func drawPicture(w *whiteLight, sky skyPlane, places []place) (template.HTML, er
 
 // frame is where the field lies in the drawing.
 type frame struct {
-	w                        *whiteLight
+	w                        *Light
 	left, top, width, height float64
 }
 
@@ -193,7 +193,7 @@ func shade(index uint8) uint8 {
 
 // bitmap gives the white light as a PNG, the first row at the bottom. Index 0 is
 // transparent: no good voxel.
-func bitmap(w *whiteLight, st stretch) ([]byte, error) {
+func bitmap(w *Light, st stretch) ([]byte, error) {
 	palette := color.Palette{color.NRGBA{}}
 	for i := 1; i <= greys; i++ {
 		palette = append(palette, color.Gray{Y: shade(uint8(i))})
@@ -216,7 +216,7 @@ func bitmap(w *whiteLight, st stretch) ([]byte, error) {
 }
 
 // binned is the mean of a block of places, NaN if none of them has a good voxel.
-func (w *whiteLight) binned(x0, y0, nx, ny int) float64 {
+func (w *Light) binned(x0, y0, nx, ny int) float64 {
 	sum, n := 0.0, 0
 	for y := y0; y < min(y0+ny, w.rows); y++ {
 		for x := x0; x < min(x0+nx, w.elements); x++ {

@@ -29,18 +29,17 @@ const (
 
 // choosePlaces picks the brightest place, the brightest one apart from it, and
 // one of blank sky, as far as the field has them.
-func choosePlaces(w *whiteLight, sky skyPlane) []place {
+func choosePlaces(w *Light, sky skyPlane) []place {
 	usable := w.usable()
-	slices.SortStableFunc(usable, func(a, b int) int { return cmp.Compare(w.mean[b], w.mean[a]) })
 	if len(usable) == 0 {
 		return nil
 	}
-	first := usable[0]
+	first := w.brightest(usable, func(int) bool { return true })
 	chosen := []place{w.place(first, "the brightest place")}
 	diagonal := math.Hypot(float64(w.elements)*sky.stepX, float64(w.rows)*sky.stepY)
-	second := slices.IndexFunc(usable, func(i int) bool { return w.distance(first, i, sky) > apartPart*diagonal })
+	second := w.brightest(usable, func(i int) bool { return w.distance(first, i, sky) > apartPart*diagonal })
 	if second >= 0 {
-		chosen = append(chosen, w.place(usable[second], "the brightest place apart from A"))
+		chosen = append(chosen, w.place(second, "the brightest place apart from A"))
 	}
 	blank := w.blank(usable)
 	if !slices.ContainsFunc(chosen, func(p place) bool { return p.row*w.elements+p.element == blank }) {
@@ -52,8 +51,19 @@ func choosePlaces(w *whiteLight, sky skyPlane) []place {
 	return chosen
 }
 
+// brightest is the first of the brightest of places that suit, -1 for none.
+func (w *Light) brightest(places []int, suits func(i int) bool) int {
+	best := -1
+	for _, i := range places {
+		if (best < 0 || w.mean[i] > w.mean[best]) && suits(i) {
+			best = i
+		}
+	}
+	return best
+}
+
 // usable gives the places with enough good voxels.
-func (w *whiteLight) usable() []int {
+func (w *Light) usable() []int {
 	least := max(1, int32(math.Ceil(coveredPart*float64(slices.Max(w.good)))))
 	var usable []int
 	for i, n := range w.good {
@@ -64,17 +74,17 @@ func (w *whiteLight) usable() []int {
 	return usable
 }
 
-func (w *whiteLight) place(i int, what string) place {
+func (w *Light) place(i int, what string) place {
 	return place{what: what, element: i % w.elements, row: i / w.elements}
 }
 
-func (w *whiteLight) distance(a, b int, sky skyPlane) float64 {
+func (w *Light) distance(a, b int, sky skyPlane) float64 {
 	return math.Hypot(float64(a%w.elements-b%w.elements)*sky.stepX, float64(a/w.elements-b/w.elements)*sky.stepY)
 }
 
 // blank gives the place whose surroundings are at the lower quartile, one with
 // all its surroundings in the field if there is any.
-func (w *whiteLight) blank(usable []int) int {
+func (w *Light) blank(usable []int) int {
 	inner := slices.DeleteFunc(slices.Clone(usable), func(i int) bool {
 		x, y := i%w.elements, i/w.elements
 		return min(x, w.elements-1-x, y, w.rows-1-y) < surroundings
@@ -95,7 +105,7 @@ func (w *whiteLight) blank(usable []int) int {
 }
 
 // around is the mean white light of a place's surroundings.
-func (w *whiteLight) around(i int) float64 {
+func (w *Light) around(i int) float64 {
 	sum, n := 0.0, 0
 	for y := max(0, i/w.elements-surroundings); y <= min(w.rows-1, i/w.elements+surroundings); y++ {
 		for x := max(0, i%w.elements-surroundings); x <= min(w.elements-1, i%w.elements+surroundings); x++ {
@@ -109,7 +119,7 @@ func (w *whiteLight) around(i int) float64 {
 }
 
 // describe says where a place lies.
-func (p place) describe(w *whiteLight, sky skyPlane) string {
+func (p place) describe(w *Light, sky skyPlane) string {
 	east, north := sky.offset(float64(p.element), float64(p.row))
 	return fmt.Sprintf("%s: element %d, row %d; %s and %s of the field's centre; mean %s", p.what, p.element, p.row,
 		toward(east, "east", "west"), toward(north, "north", "south"), figure(w.mean[p.row*w.elements+p.element]))

@@ -24,6 +24,8 @@ type Input struct {
 	Degraded []string
 	// Throughput is that of the science frames, by each method and by all together.
 	Throughput []Curve
+	// Light is the cube's, as gathered while it was written; nil to have it read.
+	Light *Light
 }
 
 // Write writes report.html into the folder runDir, whose cube.fits is whole. A
@@ -32,12 +34,34 @@ type Input struct {
 // Errors are a *fitsutil.Error for a cube that cannot be read or a page that
 // cannot be written, and ctx.Err when cancelled; then there is no new page.
 func Write(ctx context.Context, runDir string, in Input) error {
-	p, err := assemble(ctx, runDir, in)
+	p, err := Draw(ctx, runDir, in)
 	if err != nil {
 		return err
 	}
-	return fitsutil.WriteAtomic(filepath.Join(runDir, product.ReportFile), func(w io.Writer) error {
-		if err := pageTemplate.Execute(w, p); err != nil {
+	return p.Write(in.Run.Stages)
+}
+
+// Page is a report that lacks but the stages, of which drawing it may be one.
+type Page struct {
+	page *page
+	path string
+}
+
+// Draw makes all of the page that Write writes but the table of stages; stages of in are
+// not looked at.
+func Draw(ctx context.Context, runDir string, in Input) (*Page, error) {
+	p, err := assemble(ctx, runDir, in)
+	if err != nil {
+		return nil, err
+	}
+	return &Page{page: p, path: filepath.Join(runDir, product.ReportFile)}, nil
+}
+
+// Write writes the page, with these stages.
+func (p *Page) Write(stages []product.Stage) error {
+	p.page.addStages(stages)
+	return fitsutil.WriteAtomic(p.path, func(w io.Writer) error {
+		if err := pageTemplate.Execute(w, p.page); err != nil {
 			return fmt.Errorf("%s: %w", product.ReportFile, err)
 		}
 		return nil
@@ -59,10 +83,13 @@ func assemble(ctx context.Context, runDir string, in Input) (*page, error) {
 	}
 	defer c.file.Close() // only read from
 	p.addCube(in)
-	light, err := c.whiteLight(ctx)
-	if err != nil {
-		return nil, err
+	light := in.Light
+	if light == nil {
+		if light, err = c.light(ctx); err != nil {
+			return nil, err
+		}
 	}
+	light.finish()
 	sky, err := skyOf(c.signal.Header)
 	if err != nil {
 		return nil, err
