@@ -2,9 +2,13 @@ package reduce
 
 import (
 	"math"
+	"math/bits"
 
 	"mirrorloom/pipeline/product"
 )
+
+// flagBits are those of FLAGS.
+const flagBits = 16
 
 // rowQuality is what a detector row adds to the figures of run.json. Rows are
 // kept apart and added in order, so that the figures do not depend on how rows
@@ -13,6 +17,8 @@ type rowQuality struct {
 	dark                  darkChi2
 	good, covered, wanted int // voxels: good; good and wanted; in coded rows and on the detector
 	flags                 int16
+	flagged               [flagBits]int // wanted voxels by the bits of their flags
+	pulls                 darkPulls
 	saturated             int // pixels
 	restored              int // samples
 	hits, doubtful        int // samples that cosmic rays struck; pixels where they cannot be told
@@ -35,6 +41,9 @@ func (q *rowQuality) count(out *outStrip, row, elements, voxels int, use []int16
 				if good {
 					q.covered++
 				}
+				for b := uint16(f); b != 0; b &= b - 1 {
+					q.flagged[bits.TrailingZeros16(b)]++
+				}
 			}
 			if use[j] == 0 {
 				q.flags |= f
@@ -56,6 +65,10 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 		all.covered += r.covered
 		all.wanted += r.wanted
 		all.flags |= r.flags
+		for i, n := range r.flagged {
+			all.flagged[i] += n
+		}
+		all.pulls.add(r.pulls)
 		all.saturated += r.saturated
 		all.restored += r.restored
 		all.hits += r.hits
@@ -68,7 +81,12 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 	if total > 0 {
 		q.GoodFraction = float64(all.good) / float64(total)
 	}
+	q.DarkPulls = all.pulls.summary()
 	if all.wanted > 0 {
+		for _, f := range product.Flags() {
+			n := all.flagged[bits.TrailingZeros16(uint16(f.Bit))]
+			q.Flags = append(q.Flags, product.FlagCount{Name: f.Name, Bit: f.Bit, Voxels: n, Share: float64(n) / float64(all.wanted)})
+		}
 		q.CoveredGoodFraction = float64(all.covered) / float64(all.wanted)
 	}
 	if all.dark.terms > 0 {

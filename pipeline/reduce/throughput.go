@@ -70,7 +70,7 @@ func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
 		r.applyThroughput(t)
 	}
 	r.applyLeak(t)
-	t.report.Verdict = r.throughputVerdict(t)
+	t.report.Verdict, t.report.State = r.throughputVerdict(t)
 	return r.looked.Load(), ctx.Err()
 }
 
