@@ -62,8 +62,10 @@ func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
 		if err := r.fitDark(t); err != nil {
 			return 0, err
 		}
-		if err := r.measureTerms(ctx, t, before); err != nil {
-			return 0, err
+		if t.found != nil {
+			if err := r.measureTerms(ctx, t, before); err != nil {
+				return 0, err
+			}
 		}
 	}
 	if t.corrected {
@@ -167,6 +169,10 @@ func (r *reduction) fitDark(t *throughput) error {
 	alone, err := t.dark.fit(first)
 	if err != nil {
 		return err
+	}
+	if !(alone.heldOut.ExpectedBefore > 0) { // lost frames took as many checks as half of the dark columns give
+		t.dark = nil
+		return nil
 	}
 	t.found = alone
 	t.addHeldOut("throughput by dark columns", alone.heldOut, alone.kept)

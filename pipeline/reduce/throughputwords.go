@@ -28,6 +28,11 @@ func (r *reduction) throughputVerdict(t *throughput) (string, product.Throughput
 		rms, err := scatter(t.belief.c(), t.belief.errors())
 		return fmt.Sprintf("the throughput varied by %s rms and was corrected with an error of %s a frame; the %d dark columns of the code are too few to check it", percent(rms), percent(err), dark), product.ThroughputUnchecked
 	case t.found == nil:
+		if dark >= neededDark(r.seq.V) {
+			words := fmt.Sprintf("the throughput of the frames was not measured: too many frames are lost for what %d dark columns can tell", dark)
+			r.warn("%s", words)
+			return words, product.ThroughputUnmeasured
+		}
 		words := fmt.Sprintf("the throughput of the frames was not measured: %d dark columns are fewer than the %.0f that it takes; plan more of them, %s", dark, math.Ceil(2*math.Log2(float64(r.seq.V))), cures)
 		if dark > 0 {
 			r.warn("%s", words)

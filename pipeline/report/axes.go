@@ -128,10 +128,12 @@ func (c *chart) axes() {
 		c.Line("axis", c.x(t.at), c.bottom, c.x(t.at), c.bottom+5)
 		c.Text("middle", c.x(t.at), c.bottom+19, t.words)
 	}
+	c.WriteString(`<g class="name">`)
 	c.Text("middle", (c.left+right)/2, c.bottom+42, c.xName)
 	if c.yName != "" {
 		c.Turned(16, (chartTop+c.bottom)/2, c.yName)
 	}
+	c.WriteString("</g>")
 }
 
 // level draws a line right across at a value that means something.

@@ -205,8 +205,10 @@ func (f frame) axes(s *drawing.SVG) {
 		s.Line("tick", f.left-5, y, f.left, y)
 		s.Text("end", f.left-8, y+4, fmt.Sprint(i))
 	}
+	s.WriteString(`<g class="name">`)
 	s.Text("middle", f.left+max(f.width, plotLeast)/2, bottom+36, "element")
 	s.Turned(f.left-46, f.top+max(f.height/2, plotLeast*2/3), "detector row")
+	s.WriteString("</g>")
 }
 
 // mark rings a place and writes its label beside it.
@@ -263,7 +265,9 @@ func drawLegend(s *drawing.SVG, st stretch, unit string, y float64) {
 		s.Line("tick", x, y+height, x, y+height+4)
 		s.Text("middle", x, y+height+18, figure(st.inverse(t)))
 	}
+	s.WriteString(`<g class="name">`)
 	s.Text("start", plotLeft, y-8, unit)
+	s.WriteString("</g>")
 }
 
 // shade is the grey of a bitmap index from 1 (faint, near white) to 255 (black).

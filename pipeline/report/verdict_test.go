@@ -105,11 +105,11 @@ func TestJudge(t *testing.T) {
 			flagged(r, "NOMINALWAVE", product.FlagNominalWave, 1)
 		}, nil, TrustNo, "Wavelengths were not measured", ""},
 		{"all masks inverted", func(r *product.Run) {
-			r.Audit, r.Exit = &pair.Audit{Cycles: []pair.AuditCycle{{Cycle: 1, AllInverted: true}}}, 3
+			r.Audit, r.Exit = &pair.Audit{Cycles: []pair.AuditCycle{{Cycle: 1, AllInverted: true, Chi2: 0.99, Sure: true}}}, 3
 		}, nil, TrustNo, "Every mask of the night was inverted", "take the night again"},
 		{"frames in another order", func(r *product.Run) {
-			r.Audit = &pair.Audit{Cycles: []pair.AuditCycle{{Cycle: 1, Whole: "one step late"}}}
-		}, nil, TrustYes, "one step late", ""},
+			r.Audit = &pair.Audit{Cycles: []pair.AuditCycle{{Cycle: 1, Whole: "in the order of time", Chi2: 1, Sure: true}}}
+		}, nil, TrustYes, "the frames are in the order of time", ""},
 		{"frames that show another mask", func(r *product.Run) {
 			r.Audit = &pair.Audit{Cycles: []pair.AuditCycle{{Findings: []pair.AuditFinding{{Repaired: true}, {Repaired: true}, {}, {Harmless: true}}}}}
 		}, nil, TrustYes, "3 frames show another mask than their label says: 2 served the step shown, 1 could not be used.", ""},
@@ -126,6 +126,12 @@ func TestJudge(t *testing.T) {
 			r.Quality.DarkChi2Heldout, r.Throughput.State = at(283), product.ThroughputUnexplained
 			r.Quality.ErrorScale = &product.ErrorScale{Mean: 290, Max: 9000, Applied: 0.97}
 		}, nil, TrustNo, "scatter 17 times as much as noise", "take the night again"},
+		{"ruined: masks that nobody knows", func(r *product.Run) { // a third of the masks flipped
+			r.Audit = &pair.Audit{Cycles: []pair.AuditCycle{{Cycle: 1, Chi2: 8.99, AllInverted: true}}}
+			r.Quality.DarkChi2Heldout, r.Throughput.State = at(5.68), product.ThroughputUncertain
+			r.Quality.ErrorScale = &product.ErrorScale{Mean: 4.24, Max: 26, Applied: 0.66}
+		}, nil, TrustNo, "which frame shows which mask cannot be told", "take the night again"},
+		{"an audit that lost frames leave in doubt", func(r *product.Run) { r.Audit.(*pair.Audit).Cycles[0].Sure = false }, nil, TrustYes, "", ""},
 		{"ruined, no error scale", func(r *product.Run) { r.Quality.DarkChi2Heldout, r.Quality.ErrorScale = at(283), nil }, nil, TrustNo, "scatter 17 times as much as their errors", "reduce without them"},
 		{"errors too small", func(r *product.Run) { r.Quality.DarkChi2Heldout, r.Quality.ErrorScale = at(1.44), nil }, nil, TrustLook, "scatter 1.20 times as much", "Multiply all errors by 1.2 (VARIANCE by 1.4)"},
 		{"errors too large", func(r *product.Run) { r.Quality.DarkChi2Heldout = at(0.8) }, nil, TrustLook, "The errors are too large", "gain and read noise"},
