@@ -13,11 +13,11 @@ import (
 // screens, for which the margins have room.
 const (
 	chartWidth  = 560.0
-	chartHeight = 250.0
+	chartHeight = 255.0
 	chartLeft   = 76.0
 	chartRight  = 14.0
 	chartTop    = 14.0
-	chartBottom = 52.0
+	chartBottom = 57.0
 )
 
 // chart is a plot of y over x with axes. Both have names with units.
@@ -126,10 +126,10 @@ func (c *chart) axes() {
 	c.Line("axis", c.left, c.bottom, right, c.bottom)
 	for _, t := range c.xTicks {
 		c.Line("axis", c.x(t.at), c.bottom, c.x(t.at), c.bottom+5)
-		c.Text("middle", c.x(t.at), c.bottom+19, t.words)
+		c.Text("middle", c.x(t.at), c.bottom+23, t.words)
 	}
 	c.WriteString(`<g class="name">`)
-	c.Text("middle", (c.left+right)/2, c.bottom+42, c.xName)
+	c.Text("middle", (c.left+right)/2, c.bottom+47, c.xName)
 	if c.yName != "" {
 		c.Turned(16, (chartTop+c.bottom)/2, c.yName)
 	}

@@ -145,6 +145,9 @@ func auditOf(run *product.Run) *pair.Audit {
 	return a
 }
 
+// takeAgain is all that helps where frames contradict each other.
+const takeAgain = "Look at the frames that fit worst, at the device's log and at the guiding; then take the night again."
+
 // checkMasks tells whether the frames show their masks.
 func checkMasks(run *product.Run) (Check, bool) {
 	a := auditOf(run)
@@ -157,7 +160,7 @@ func checkMasks(run *product.Run) (Check, bool) {
 		if !cycle.Sure && cycle.Chi2 > contradictedChi2 {
 			c.Level, c.Figure = TrustNo, fmt.Sprintf("cannot be told; chi-square %.3g", cycle.Chi2)
 			c.Says = "The frames contradict each other, as if many showed other masks than their labels say, or the light moved: which frame shows which mask cannot be told."
-			c.Do = "Look at the frames that fit worst, at the device's log and at the guiding; take the night again."
+			c.Do = takeAgain
 			return c, true
 		}
 		if cycle.AllInverted {
@@ -206,7 +209,7 @@ func checkDark(run *product.Run) Check {
 	case scale != nil && scale.Mean > hopelessMean && scale.Applied > mostPixels:
 		c.Level = TrustNo
 		c.Says = fmt.Sprintf("The frames contradict each other almost everywhere: columns that no mirror lights scatter %.0f times as much as noise.", math.Sqrt(scale.Mean))
-		c.Do = "Look at the frames that fit worst, and at what was in the telescope's way; take the night again."
+		c.Do = takeAgain
 	case scale != nil && *chi2 > 1+chi2Slack:
 		c.Level = TrustLook
 		c.Says = fmt.Sprintf("In %s of the pixels something changed from frame to frame (%s). The errors there were made larger, up to %.2g times: they hold, but the light may be blurred.", percent(scale.Applied), moved, math.Sqrt(scale.Max))
@@ -287,7 +290,7 @@ func checkWavelengths(run *product.Run) Check {
 	case nominal > 0:
 		c.Level, c.Figure = TrustNo, "not measured"
 		c.Says = "Wavelengths were not measured: they are the profile's, and may be off by many pixels (flag NOMINALWAVE)."
-		c.Do = "Read below why the arcs failed, take them again, and reduce once more; the cube's pictures are of use meanwhile, its wavelengths are not."
+		c.Do = "Read below why the arcs failed, take them again, and reduce once more."
 	case q.WavelengthRMSPx == nil:
 		c.Level, c.Figure = TrustLook, "the profile's"
 		c.Says = "Wavelengths are the profile's, as the recipe asks: no arc frame checks them."
@@ -362,7 +365,10 @@ func checkGood(run *product.Run) Check {
 		c.Figure = percent(good) + " of all"
 		return c
 	}
+	q := run.Quality
 	switch {
+	case max(q.FlagShare(product.FlagLost), q.FlagShare(product.FlagNominalWave), q.FlagShare(product.FlagLowFlat)) >= wholeShare:
+		c.Level = TrustNo // why is said already
 	case good < wholeShare:
 		c.Level = TrustNo
 		c.Says = fmt.Sprintf("Only %s of the voxels are good.", percent(good))

@@ -11,14 +11,20 @@ import (
 type cube struct {
 	file                    *fitsutil.File
 	signal, variance, flags *fitsutil.Image
+	// bad are the flags that keep a voxel from being looked at.
+	bad int16
 }
+
+// wholly are the flags that may lie on all voxels of a cube, in which there is light all the
+// same.
+const wholly = product.FlagLost | product.FlagNominalWave | product.FlagLowFlat
 
 func openCube(path string) (*cube, error) {
 	file, err := fitsutil.Open(path)
 	if err != nil {
 		return nil, err
 	}
-	c := &cube{file: file}
+	c := &cube{file: file, bad: product.FlagBad}
 	for _, im := range []struct {
 		name string
 		to   **fitsutil.Image

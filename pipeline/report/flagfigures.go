@@ -44,12 +44,18 @@ func drawBadMap(w *Light, sky skyPlane) (template.HTML, error) {
 	f.image(&s, "flags", b.Bytes())
 	f.axes(&s)
 	bottom := f.top + f.height + 62
-	for i := range 6 {
-		level := 255 - 51*i
-		fmt.Fprintf(&s, `<rect class="swatch" x="%s" y="%s" width="22" height="10" fill="#%02x%02x%02x"/>`, drawing.Coord(plotLeft+float64(i)*58), drawing.Coord(bottom), level, level, level)
-		s.Text("start", plotLeft+float64(i)*58+25, bottom+9, fmt.Sprintf("%d %%", 20*i))
+	const steps = 46
+	for i := range steps {
+		level := 255 - 255*i/(steps-1)
+		fmt.Fprintf(&s, `<rect x="%s" y="%s" width="%s" height="10" fill="#%02x%02x%02x"/>`, drawing.Coord(plotLeft+float64(i)*legendWidth/steps), drawing.Coord(bottom), drawing.Coord(legendWidth/steps+0.5), level, level, level)
 	}
-	return wrapSVG("picture", "Voxels that are not good, by place", pictureWidth, bottom+22, s.String()), nil
+	s.Rect("frame", plotLeft, bottom, legendWidth, 10)
+	for _, percent := range []float64{0, 50, 100} {
+		x := plotLeft + percent/100*legendWidth
+		s.Line("tick", x, bottom+10, x, bottom+14)
+		s.Text("middle", x, bottom+28, fmt.Sprintf("%g %%", percent))
+	}
+	return wrapSVG("picture", "Voxels that are not good, by place", pictureWidth, bottom+36, s.String()), nil
 }
 
 // A flag is drawn over wavelength where it lies on this part of the voxels somewhere.

@@ -91,10 +91,10 @@ func drawRatios(all []product.Reached) template.HTML {
 	s.Line("due", x(1), 4, x(1), bottom)
 	for _, t := range roundTicks(low, high, 5) {
 		s.Line("axis", x(t.at), bottom, x(t.at), bottom+5)
-		s.Text("middle", x(t.at), bottom+19, t.words)
+		s.Text("middle", x(t.at), bottom+23, t.words)
 	}
 	s.WriteString(`<g class="name">`)
-	s.Text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+42, "S/N reached / S/N forecast")
+	s.Text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+47, "S/N reached / S/N forecast")
 	s.WriteString("</g>")
 	for i, w := range rows {
 		y := 8 + ratioRow*(float64(i)+0.5)

@@ -124,7 +124,7 @@ func (c *cube) meanOf(ctx context.Context, planes []int) ([]float64, error) {
 				return nil, err
 			}
 			for i, v := range s {
-				if int16(f[i])&product.FlagBad == 0 && v == v {
+				if int16(f[i])&c.bad == 0 && v == v {
 					sum[y*width+i] += float64(v)
 					good[y*width+i]++
 				}

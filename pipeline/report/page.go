@@ -33,6 +33,7 @@ type page struct {
 	Verdict         verdictView
 	Pictures        []figureView
 	Spectra         []figureView
+	NoneGood        bool // pictures and spectra are of voxels that are not good
 	HasSky          bool // lines of the sky are marked
 	Sums            []sumView
 	SumPlaces       []string

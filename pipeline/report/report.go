@@ -94,19 +94,31 @@ func assemble(ctx context.Context, runDir string, in Input) (*page, error) {
 	if err != nil {
 		return nil, err
 	}
-	places := choosePlaces(light, sky)
-	s, err := c.survey(ctx, places, light)
+	shown := light
+	if light.empty() { // show what there is
+		c.bad = product.FlagBad &^ wholly
+		if shown, err = c.light(ctx); err != nil {
+			return nil, err
+		}
+		shown.finish()
+		p.NoneGood = !shown.empty()
+	}
+	places := choosePlaces(shown, sky)
+	s, err := c.survey(ctx, places, shown)
 	if err != nil {
 		return nil, err
 	}
-	if err := p.addPictures(ctx, c, in, light, sky, places, s); err != nil {
+	if err := p.addPictures(ctx, c, in, shown, sky, places, s); err != nil {
 		return nil, err
 	}
-	if err := p.addSpectra(c, in, light, sky, places, s); err != nil {
+	if err := p.addSpectra(c, in, shown, sky, places, s); err != nil {
 		return nil, err
 	}
 	if err := p.addFlags(light, sky, s, in.Schema.Grid); err != nil {
 		return nil, err
+	}
+	if light.empty() {
+		return p, nil
 	}
 	return p, p.addSums(ctx, c.file.Path(), places)
 }

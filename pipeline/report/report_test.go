@@ -231,16 +231,25 @@ func TestNoCube(t *testing.T) {
 	contains(t, page, "Can this element cube be trusted?")
 }
 
-// A cube without a single good voxel still gets its page.
+// A cube without a single good voxel still gets its page, and its pictures where there is
+// light.
 func TestNothingGood(t *testing.T) {
 	sc := scene{elements: 1, rows: 4, planes: 3, parity: 1, object: "nothing"}
 	dir := t.TempDir()
 	in := sc.write(t, dir)
-	rewriteFlags(t, dir, sc, product.FlagLost)
+	rewriteFlags(t, dir, sc, product.FlagNoData)
 	page := renderPage(t, dir, in)
 	checkHTML(t, page)
 	checkSVG(t, page, 8) // none of light
 	contains(t, page, "there is nothing to draw")
+	contains(t, page, "<td>NODATA</td><td class=\"n\">1</td><td class=\"n\">100 %</td>")
+
+	rewriteFlags(t, dir, sc, product.FlagLost)
+	page = renderPage(t, dir, in)
+	checkHTML(t, page)
+	checkFigures(t, page)
+	contains(t, page, "No voxel of this cube is good.")
+	contains(t, page, "White-light picture")
 	contains(t, page, "<td>LOST</td><td class=\"n\">16</td><td class=\"n\">100 %</td>")
 }
 

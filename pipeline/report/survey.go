@@ -6,14 +6,13 @@ import (
 	"slices"
 
 	"mirrorloom/fitsutil"
-	"mirrorloom/pipeline/product"
 )
 
 // A survey looks at some spectra all over the field, at all wavelengths: enough to tell
 // lines and flags, while most of the file is left unread.
 const (
-	surveyRows     = 16 // detector rows
-	surveyElements = 64 // in each
+	surveyRows     = 8   // detector rows
+	surveyElements = 128 // in each
 )
 
 // survey is what it finds, by wavelength.
@@ -116,7 +115,7 @@ func (r *surveyor) plane(l int, s *survey, places []place) error {
 // where the voxel is not good.
 func (r *surveyor) voxel(j int) (signal, sigma float64) {
 	signal, sigma = float64(r.images[0][j]), math.Sqrt(float64(r.images[1][j]))
-	if int16(r.images[2][j])&product.FlagBad != 0 || math.IsNaN(signal) || math.IsNaN(sigma) {
+	if int16(r.images[2][j])&r.c.bad != 0 || math.IsNaN(signal) || math.IsNaN(sigma) {
 		return math.NaN(), math.NaN()
 	}
 	return signal, sigma

@@ -61,8 +61,8 @@ func Judge(run *product.Run, ledger product.Ledger) Verdict {
 	sorted := slices.Clone(v.Checks)
 	slices.SortStableFunc(sorted, func(a, b Check) int { return b.rank() - a.rank() })
 	for _, c := range sorted {
-		// Where something is wrong, what is well belongs to the table.
-		if c.Says == "" || c.Level == TrustYes && v.Trust != TrustYes || len(v.Reasons) == mostReasons {
+		// Where something is wrong, what is better belongs to the table.
+		if c.Says == "" || c.Level != v.Trust || len(v.Reasons) == mostReasons {
 			continue
 		}
 		v.Reasons = append(v.Reasons, c.Says)

@@ -16,11 +16,7 @@ func exitSentence(in Input) string {
 	case 0:
 		return "Exit code 0: nothing is missing."
 	case exitDegraded:
-		why := "see the warnings"
-		if len(in.Degraded) > 0 {
-			why = strings.Join(in.Degraded, "; ")
-		}
-		return sentence("Exit code 3: the product was written, but " + why)
+		return "Exit code 3: the product was written, but it is not whole."
 	}
 	return fmt.Sprintf("Exit code %d.", in.Run.Exit)
 }
