@@ -19,7 +19,7 @@ const (
 	pictureWidth = 560
 	plotLeft     = 64
 	plotTop      = 30  // room for right ascensions
-	plotMost     = 400 // the longer side of the field
+	plotMost     = 384 // the longer side of the field
 	plotLeast    = 60  // what its labels need
 	legendWidth  = 230
 	barMost      = 110 // the scale bar
