@@ -5,7 +5,7 @@ GO ?= go
 STATICCHECK := honnef.co/go/tools/cmd/staticcheck@v0.8.2
 # Debian's packages that the cross-checks run: chromium prints the night sheet, poppler
 # counts its pages.
-PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml python3-astroscrappy fitsverify netpbm chromium poppler-utils
+PACKAGES := python3-numpy python3-scipy python3-astropy python3-pil python3-yaml python3-astroscrappy libopenblas0-pthread fitsverify netpbm chromium poppler-utils
 COMMANDS := fitsverify pngtopnm chromium pdfinfo pdffonts pdftoppm
 
 .PHONY: all build demo test lint bench validate packages
@@ -21,13 +21,16 @@ demo: build
 
 test: packages
 	$(GO) test -timeout 20m ./...
+	$(GO) test -tags noasm ./hadamard
 
 lint:
 	@unformatted=$$(gofmt -l .); if [ -n "$$unformatted" ]; then echo "gofmt would change: $$unformatted"; exit 1; fi
 	$(GO) mod verify
 	$(GO) vet ./...
 	GOARCH=arm64 $(GO) vet ./...
+	$(GO) vet -tags noasm ./hadamard
 	$(GO) run $(STATICCHECK) ./...
+	cd hadamard/internal/gen && $(GO) vet ./... && $(GO) run $(STATICCHECK) ./...
 
 # Long statistical checks: writes VALIDATION.md.
 validate: build packages
@@ -35,7 +38,7 @@ validate: build packages
 	MIRRORLOOM_VALIDATE=1 $(GO) test -count=1 -timeout 60m -run 'TestArcNights|TestSpeedOfLargestDevice' ./pipeline/reduce ./pipeline/sequence
 
 # Figures are compared as ratios within one run, as machines are noisy: writes
-# BENCHMARKS.md.
+# BENCHMARKS.md. One section alone: go run ./internal/bench -only memory.
 bench: build packages
 	$(GO) run ./internal/bench
 

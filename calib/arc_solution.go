@@ -51,7 +51,8 @@ type ArcSolution struct {
 	// Width is FWHM against wavelength.
 	Width LineWidth
 
-	blocks []blockCount
+	// Blocks count the centroids, in order of element and row: see LinesAt.
+	Blocks []ArcBlock
 }
 
 // ArcResidual is one identified centroid.
@@ -117,14 +118,15 @@ func (r *ArcSolution) ErrorPx(j, y, vacuumNM float64) float64 {
 	return math.Sqrt(max(0, mat.Inner(v, r.Covariance, v)))
 }
 
-// blockCount sums up the centroids of an element's block of rows.
-type blockCount struct {
-	element, firstRow, lastRow int
-	used, rejected             int
-	squares                    float64
+// ArcBlock sums up the centroids of an element's block of rows, FirstRow to LastRow;
+// Squares is the sum of the squared residuals of those used, px^2.
+type ArcBlock struct {
+	Element, FirstRow, LastRow int
+	Used, Rejected             int
+	Squares                    float64
 }
 
-// countBlocks fills in blocks from Residuals, in order of element and row.
+// countBlocks fills in Blocks from Residuals, in order of element and row.
 func (r *ArcSolution) countBlocks() {
 	at := map[[2]int]int{}
 	for i := range r.Residuals {
@@ -132,19 +134,19 @@ func (r *ArcSolution) countBlocks() {
 		key := [2]int{d.Element, d.FirstRow}
 		k, ok := at[key]
 		if !ok {
-			k = len(r.blocks)
+			k = len(r.Blocks)
 			at[key] = k
-			r.blocks = append(r.blocks, blockCount{element: d.Element, firstRow: d.FirstRow, lastRow: d.LastRow})
+			r.Blocks = append(r.Blocks, ArcBlock{Element: d.Element, FirstRow: d.FirstRow, LastRow: d.LastRow})
 		}
-		if b := &r.blocks[k]; d.Kept {
-			b.used++
-			b.squares += d.ResidualPx * d.ResidualPx
+		if b := &r.Blocks[k]; d.Kept {
+			b.Used++
+			b.Squares += d.ResidualPx * d.ResidualPx
 		} else {
-			b.rejected++
+			b.Rejected++
 		}
 	}
-	slices.SortFunc(r.blocks, func(a, b blockCount) int {
-		return cmp.Or(cmp.Compare(a.element, b.element), cmp.Compare(a.firstRow, b.firstRow))
+	slices.SortFunc(r.Blocks, func(a, b ArcBlock) int {
+		return cmp.Or(cmp.Compare(a.Element, b.Element), cmp.Compare(a.FirstRow, b.FirstRow))
 	})
 }
 
@@ -156,7 +158,7 @@ func (r *ArcSolution) LinesAt(j, y int) (used, rejected int, rmsPx float64) {
 	if len(blocks) == 0 {
 		return 0, 0, math.NaN()
 	}
-	along := func(b *blockCount) int { return max(b.firstRow+b.lastRow-2*y, 2*y-b.firstRow-b.lastRow) }
+	along := func(b *ArcBlock) int { return max(b.FirstRow+b.LastRow-2*y, 2*y-b.FirstRow-b.LastRow) }
 	b := &blocks[0]
 	for i := range blocks {
 		if along(&blocks[i]) < along(b) {
@@ -164,27 +166,27 @@ func (r *ArcSolution) LinesAt(j, y int) (used, rejected int, rmsPx float64) {
 		}
 	}
 	rmsPx = math.NaN()
-	if b.used > 0 {
-		rmsPx = math.Sqrt(b.squares / float64(b.used))
+	if b.Used > 0 {
+		rmsPx = math.Sqrt(b.Squares / float64(b.Used))
 	}
-	return b.used, b.rejected, rmsPx
+	return b.Used, b.Rejected, rmsPx
 }
 
 // nearestBlocks are those of the element with an arc that is nearest to j.
-func (r *ArcSolution) nearestBlocks(j int) []blockCount {
+func (r *ArcSolution) nearestBlocks(j int) []ArcBlock {
 	from := func(element int) int {
-		i, _ := slices.BinarySearchFunc(r.blocks, element, func(b blockCount, e int) int { return cmp.Compare(b.element, e) })
+		i, _ := slices.BinarySearchFunc(r.Blocks, element, func(b ArcBlock, e int) int { return cmp.Compare(b.Element, e) })
 		return i
 	}
 	at := from(j)
-	if at == len(r.blocks) || at > 0 && j-r.blocks[at-1].element <= r.blocks[at].element-j {
+	if at == len(r.Blocks) || at > 0 && j-r.Blocks[at-1].Element <= r.Blocks[at].Element-j {
 		at--
 	}
 	if at < 0 {
 		return nil
 	}
-	element := r.blocks[at].element
-	return r.blocks[from(element):from(element+1)]
+	element := r.Blocks[at].Element
+	return r.Blocks[from(element):from(element+1)]
 }
 
 // String is the solution in a sentence, for logs.

@@ -8,8 +8,9 @@ import (
 
 // LineWidth is a smooth FWHM against wavelength: a parabola, px over nm.
 type LineWidth struct {
-	centerNM, halfNM float64
-	coef             [3]float64
+	// FWHM = Coef[0] + Coef[1] u + Coef[2] u^2, u = (L - CenterNM)/HalfNM within -1 to 1.
+	CenterNM, HalfNM float64
+	Coef             [3]float64
 	// RMSPx is the scatter of the measured widths around it; NaN where none was.
 	RMSPx float64
 }
@@ -18,14 +19,14 @@ type LineWidth struct {
 // without the pixel's own and without the slit's tilt within a block of rows. Beyond
 // the outermost lines it stays what it is there.
 func (w LineWidth) FWHMPx(vacuumNM float64) float64 {
-	u := min(max((vacuumNM-w.centerNM)/w.halfNM, -1), 1)
-	return w.coef[0] + u*(w.coef[1]+u*w.coef[2])
+	u := min(max((vacuumNM-w.CenterNM)/w.HalfNM, -1), 1)
+	return w.Coef[0] + u*(w.Coef[1]+u*w.Coef[2])
 }
 
 // fitWidth fits the widths of the lines kept, by least squares repeated with the
 // biweight. Its degree is at most the number of lines' less 2.
 func fitWidth(r *ArcSolution) LineWidth {
-	w := LineWidth{centerNM: (r.FirstNM + r.LastNM) / 2, halfNM: max((r.LastNM-r.FirstNM)/2, 1e-3), RMSPx: math.NaN()}
+	w := LineWidth{CenterNM: (r.FirstNM + r.LastNM) / 2, HalfNM: max((r.LastNM-r.FirstNM)/2, 1e-3), RMSPx: math.NaN()}
 	terms := min(3, max(1, r.Lines-1))
 	scale := math.Inf(1)
 	for range 6 {
@@ -36,7 +37,7 @@ func fitWidth(r *ArcSolution) LineWidth {
 			if !d.Kept {
 				continue
 			}
-			width, u := r.unslanted(d), (d.VacuumNM-w.centerNM)/w.halfNM
+			width, u := r.unslanted(d), (d.VacuumNM-w.CenterNM)/w.HalfNM
 			miss := width - w.FWHMPx(d.VacuumNM)
 			misses = append(misses, float32(math.Abs(miss)))
 			weight := biweight(miss, scale) / (d.FWHMErr*d.FWHMErr + 1e-4)
@@ -57,7 +58,7 @@ func fitWidth(r *ArcSolution) LineWidth {
 			return w
 		}
 		for a := range terms {
-			w.coef[a] = solved.AtVec(a)
+			w.Coef[a] = solved.AtVec(a)
 		}
 		scale = r.widthScatter(w)
 	}

@@ -100,13 +100,28 @@ func (d DeadRule) below(v float32, line []float32, at, stride int, side []float3
 		}
 		return float64(medianOrNaN(side))
 	}
-	// The cheaper test first: most pixels are as bright as the ones before.
+	// The cheaper tests first: most pixels are above the limit by the brightest of the ones
+	// before, and almost all by their median.
+	if float64(v) >= d.Fraction*float64(brightest(line, max(at-d.Window, 0), at, stride)) {
+		return false
+	}
 	limit := take(at-d.Window, at)
 	if !(limit >= d.Level && float64(v) < d.Fraction*limit) {
 		return false
 	}
 	limit = take(at+1, at+1+d.Window)
 	return limit >= d.Level && float64(v) < d.Fraction*limit
+}
+
+// brightest of the values from..to-1 of a line, not below 0.
+func brightest(line []float32, from, to, stride int) float32 {
+	most := float32(0)
+	for i := from; i < to; i++ {
+		if v := line[i*stride]; v > most {
+			most = v
+		}
+	}
+	return most
 }
 
 // medianOrNaN leaves out NaN, and is NaN for no value. Reorders v.

@@ -47,6 +47,11 @@ const maxClips = 12
 // so that Variance = Noise^2/(r Kept), and Noise^2 = (variance of the kept)/r when
 // it is estimated. (Influence function of the truncated mean.)
 func (c Clip) Mean(values, scratch []float32) Estimate {
+	return c.meanOf(values, scratch, clippedVariance(c.Sigmas))
+}
+
+// meanOf is Mean, given clippedVariance.
+func (c Clip) meanOf(values, scratch []float32, r float64) Estimate {
 	kept := scratch[:0]
 	for _, v := range values {
 		if v == v {
@@ -60,15 +65,29 @@ func (c Clip) Mean(values, scratch []float32) Estimate {
 	if c.Noise == 0 && len(kept) < 5 {
 		return c.unclipped(kept)
 	}
-	r := clippedVariance(c.Sigmas)
 	sample := thin(kept)
-	centre, noise := median(sample), c.Noise
+	centre, noise := 0.0, c.Noise
 	if noise == 0 {
-		noise = max(c.Floor, madPerSigma*medianDeviation(sample, centre)*smallSample(len(sample)))
+		var deviation float64
+		centre, deviation = medians(sample)
+		noise = c.firstNoise(deviation, len(sample))
+	} else {
+		centre = median(sample)
 	}
+	return c.settle(centre, noise, r, func(centre, limit float64) moments { return momentsWithin(values, centre, limit) })
+}
+
+// firstNoise is that by a median deviation of n values.
+func (c Clip) firstNoise(deviation float64, n int) float64 {
+	return max(c.Floor, madPerSigma*deviation*smallSample(n))
+}
+
+// settle repeats from a first centre and noise; within gives the moments of the values
+// within a limit of a centre.
+func (c Clip) settle(centre, noise, r float64, within func(centre, limit float64) moments) Estimate {
 	var n int
 	for range maxClips {
-		m := momentsWithin(values, centre, c.Sigmas*noise)
+		m := within(centre, c.Sigmas*noise)
 		settled := m.n == n && math.Abs(m.mean-centre) <= 1e-9*noise
 		n = m.n
 		if n == 0 {
@@ -87,20 +106,26 @@ func (c Clip) Mean(values, scratch []float32) Estimate {
 	return Estimate{Mean: centre, Variance: noise * noise / (r * float64(n)), Noise: noise, Kept: n}
 }
 
-// thin moves every n-th of more than 128 values to the front and returns those. n is
-// odd, so that rows of an even width do not always give the same columns.
+// thin moves every n-th of more than 128 values to the front and returns those.
 func thin(v []float32) []float32 {
-	const enough = 64
-	step := len(v)/enough | 1
-	if len(v) <= 2*enough {
-		return v
-	}
-	n := 0
-	for i := 0; i < len(v); i += step {
-		v[n] = v[i]
-		n++
+	step, n := thinning(len(v))
+	if step > 1 {
+		for i := range n {
+			v[i] = v[i*step]
+		}
 	}
 	return v[:n]
+}
+
+// thinning says which of values thin keeps: every step-th, n in all. The step is odd, so
+// that rows of an even width do not always give the same columns.
+func thinning(values int) (step, n int) {
+	const enough = 64
+	if values <= 2*enough {
+		return 1, values
+	}
+	step = values/enough | 1
+	return step, (values + step - 1) / step
 }
 
 // smallSample widens the first limits for n values: their median deviation has a
@@ -113,11 +138,12 @@ func smallSample(n int) float64 { return 1 + 2/math.Sqrt(float64(n)) }
 // variance: master biases and darks. Every frame has len(mean) pixels.
 func (c Clip) Stack(mean, variance []float32, frames [][]float32) {
 	values, scratch := make([]float32, len(frames)), make([]float32, len(frames))
+	r := clippedVariance(c.Sigmas)
 	for x := range mean {
 		for k, f := range frames {
 			values[k] = f[x]
 		}
-		e := c.Mean(values, scratch)
+		e := c.meanOf(values, scratch, r)
 		mean[x], variance[x] = float32(e.Mean), float32(e.Variance)
 	}
 }
@@ -145,8 +171,8 @@ func RobustLevel(values, scratch []float32) (level, scatter float64) {
 	if len(kept) == 0 {
 		return math.NaN(), math.NaN()
 	}
-	level = median(kept)
-	return level, madPerSigma * medianDeviation(kept, level)
+	level, deviation := medians(kept)
+	return level, madPerSigma * deviation
 }
 
 // clippedVariance is r: the variance of a unit normal cut at +-c.
@@ -181,64 +207,4 @@ func momentsWithin(values []float32, centre, limit float64) moments {
 		m.variance = max(0, square-sum*shift) / float64(n-1)
 	}
 	return m
-}
-
-// medianDeviation replaces v by its absolute deviations from centre and returns
-// their median.
-func medianDeviation(v []float32, centre float64) float64 {
-	for i, x := range v {
-		v[i] = float32(math.Abs(float64(x) - centre))
-	}
-	return median(v)
-}
-
-// median of at least one value, none NaN; the mean of the two in the middle for an
-// even number. Reorders v.
-func median(v []float32) float64 {
-	half := len(v) / 2
-	upper := selectAt(v, half)
-	if len(v)%2 == 1 {
-		return float64(upper)
-	}
-	lower := v[0]
-	for _, x := range v[1:half] {
-		lower = max(lower, x)
-	}
-	return (float64(lower) + float64(upper)) / 2
-}
-
-// selectAt returns the value that sorting would bring to index k, and leaves the
-// smaller ones before it (Hoare 1961, Communications of the ACM 4, 321).
-func selectAt(v []float32, k int) float32 {
-	low, high := 0, len(v)-1
-	for low < high {
-		pivot := middleOf(v[low], v[low+(high-low)/2], v[high])
-		i, j := low, high
-		for i <= j {
-			for v[i] < pivot {
-				i++
-			}
-			for v[j] > pivot {
-				j--
-			}
-			if i <= j {
-				v[i], v[j] = v[j], v[i]
-				i++
-				j--
-			}
-		}
-		switch {
-		case k <= j:
-			high = j
-		case k >= i:
-			low = i
-		default:
-			return v[k]
-		}
-	}
-	return v[k]
-}
-
-func middleOf(a, b, c float32) float32 {
-	return max(min(a, b), min(max(a, b), c))
 }

@@ -7,7 +7,6 @@ import (
 	"testing"
 
 	"github.com/stretchr/testify/require"
-	"pgregory.net/rapid"
 )
 
 // The table of the reference values (numpy; influence function and Monte Carlo):
@@ -115,22 +114,6 @@ func TestClipMeanSmallAndOdd(t *testing.T) {
 	require.Equal(t, 0, e.Kept)
 	require.Equal(t, 5.0, e.Mean)
 	require.True(t, math.IsNaN(e.Variance))
-}
-
-func TestMedianAgainstSorting(t *testing.T) {
-	rapid.Check(t, func(t *rapid.T) {
-		v := rapid.SliceOfN(rapid.Float32Range(-5, 5), 1, 40).Draw(t, "v")
-		if rapid.Bool().Draw(t, "ties") {
-			for i := range v {
-				v[i] = float32(math.Round(float64(v[i])))
-			}
-		}
-		sorted := slices.Clone(v)
-		slices.Sort(sorted)
-		n := len(v)
-		want := (float64(sorted[(n-1)/2]) + float64(sorted[n/2])) / 2
-		require.Equal(t, want, median(v))
-	})
 }
 
 // 1.482602 (reference table) and the exact variance of the median of 9, 0.166101.

@@ -138,8 +138,11 @@ func (g *Geometry) checkCoupling(columns, rows int) error {
 
 // unbent is x without slit tilt and smile.
 func (g *Geometry) unbent(j, vacuumNm float64) float64 {
-	return g.X_c + g.X_e*(j-g.J_c) + g.disperse(vacuumNm-g.L_c)
+	return g.elementX(j) + g.disperse(vacuumNm-g.L_c)
 }
+
+// elementX is the unbent x of element j at the reference wavelength.
+func (g *Geometry) elementX(j float64) float64 { return g.X_c + g.X_e*(j-g.J_c) }
 
 func (g *Geometry) disperse(l float64) float64 {
 	return l * (g.D[0] + l*(g.D[1]+l*g.D[2]))

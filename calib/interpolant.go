@@ -183,8 +183,10 @@ type stencil struct {
 // seven pixels: ones (pixels wholly to the left), tails, zeros.
 type edge struct {
 	place float64 // clamped to 0..size, pixels from the run's left end
-	base  int     // the pixel that tail 0 belongs to
-	tails [2*pad + taps]float32
+	// clamped tells that the place was beyond the run's ends, or NaN.
+	clamped bool
+	base    int // the pixel that tail 0 belongs to
+	tails   [2*pad + taps]float32
 }
 
 // pad is the largest distance between the bases of a voxel's two edges that the
@@ -204,11 +206,12 @@ func newEdge() edge {
 func (s *stencil) set(e *edge, x float64) {
 	// Comparisons instead of min and max: those mind signed zeros and NaN, at a cost.
 	p := x + 0.5 - float64(s.first)
+	e.clamped = false
 	if !(p > 0) {
-		p = 0
+		p, e.clamped = 0, true
 	}
 	if p > float64(s.size) {
-		p = float64(s.size)
+		p, e.clamped = float64(s.size), true
 	}
 	m := int(p)
 	if m == s.size {

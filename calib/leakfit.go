@@ -82,7 +82,8 @@ type LeakRow struct {
 }
 
 // LeakFit gathers the normal equations of a LeakRule. Rows are to be added in one
-// order always: sums depend on it in their last bits. Memory: the square of
+// order always: sums depend on it in their last bits. What a row adds may be gathered
+// beforehand, by Row. Memory: the square of
 // unknowns() float64, some 100 of them.
 type LeakFit struct {
 	rule  LeakRule

@@ -8,24 +8,34 @@ type share struct {
 	factor  float64
 }
 
+// LeakSums are what a row adds to a LeakFit.
+type LeakSums struct {
+	normal, right []float64 // of the row's regressors
+	shares        [][]share
+	square, light float64
+	pixels, clips int
+}
+
 // AddRow adds a row.
-func (f *LeakFit) AddRow(row LeakRow) {
+func (f *LeakFit) AddRow(row LeakRow) { f.Add(f.Row(row)) }
+
+// Row is what a row is going to add. Any number of goroutines may gather rows at once.
+func (f *LeakFit) Row(row LeakRow) *LeakSums {
 	regressors, shares := f.regressors(&row)
 	use, clipped := usablePixels(f.rule.Clip, row.Term, row.Variance, row.Flags, regressors[0])
-	f.clips += clipped
 	f.blind(&row, use)
 	weights := smoothWeights(row.Variance, use)
 	m := len(regressors)
-	normal, right := make([]float64, m*m), make([]float64, m)
+	s := &LeakSums{normal: make([]float64, m*m), right: make([]float64, m), shares: shares, clips: clipped}
 	at := make([]float64, m)
 	for x, ok := range use {
 		if !ok {
 			continue
 		}
 		w, t := weights[x], float64(row.Term[x])
-		f.square += w * t * t
-		f.light += w * regressors[0][x] * regressors[0][x]
-		f.pixels++
+		s.square += w * t * t
+		s.light += w * regressors[0][x] * regressors[0][x]
+		s.pixels++
 		for i := range at {
 			at[i] = regressors[i][x]
 		}
@@ -34,13 +44,22 @@ func (f *LeakFit) AddRow(row LeakRow) {
 			if wv == 0 {
 				continue
 			}
-			right[i] += wv * t
-			for k := i; k < m; k++ {
-				normal[i*m+k] += wv * at[k]
+			s.right[i] += wv * t
+			for k, u := range at[i:] {
+				s.normal[i*m+i+k] += wv * u
 			}
 		}
 	}
-	f.spread(normal, right, shares)
+	return s
+}
+
+// Add adds the sums of a row.
+func (f *LeakFit) Add(s *LeakSums) {
+	f.clips += s.clips
+	f.square += s.square
+	f.light += s.light
+	f.pixels += s.pixels
+	f.spread(s.normal, s.right, s.shares)
 }
 
 // spread adds a row's sums to those of the unknowns.
@@ -98,11 +117,40 @@ func (f *LeakFit) regressors(row *LeakRow) (r [][]float64, shares [][]share) {
 	return r, shares
 }
 
+// mirrorSums are sums over mirrors at each column, side by side: those of the colours, of
+// the structure's orders across the field, and of the mirrors beyond either side.
+type mirrorSums struct {
+	sums                       []float64 // [column][width]
+	width, structures, beyonds int
+}
+
+func (f *LeakFit) newMirrorSums() *mirrorSums {
+	s := &mirrorSums{structures: f.colours()}
+	s.beyonds = s.structures + f.rule.Orders + 1
+	s.width = s.beyonds + 2
+	s.sums = make([]float64, s.width*f.frame.Columns)
+	return s
+}
+
+// take copies sum i out.
+func (s *mirrorSums) take(dst []float64, i int) {
+	for x := range dst {
+		dst[x] = s.sums[x*s.width+i]
+	}
+}
+
 // addField adds the light of the elements and of the mirrors beyond.
 func (f *LeakFit) addField(row *LeakRow, r [][]float64, add func(...share) []float64) {
 	along := f.along(row.Y)
-	structure := make([][]float64, f.rule.Orders+1)
-	for a := range structure {
+	sums := f.newMirrorSums()
+	orders := make([]float64, f.rule.Orders+1)
+	for j, light := range row.Light {
+		for a := range orders {
+			orders[a] = f.across[a][j]
+		}
+		f.addMirrors(sums, row.Y, float64(j), light, sums.structures, orders)
+	}
+	for a := range orders {
 		var list []share
 		for b := range f.rule.Orders + 1 {
 			switch {
@@ -112,14 +160,7 @@ func (f *LeakFit) addField(row *LeakRow, r [][]float64, add func(...share) []flo
 				list = append(list, share{f.structureAt(a, b), along[b] - f.rowMean[b]})
 			}
 		}
-		structure[a] = add(list...)
-	}
-	for j, light := range row.Light {
-		f.addMirrors(r, row.Y, float64(j), 1, light, func(x int, v float64) {
-			for a, s := range structure {
-				s[x] += v * f.across[a][j]
-			}
-		})
+		sums.take(add(list...), sums.structures+a)
 	}
 	for side, width := range [][]float64{row.Before, row.After} {
 		if !(most(width) > 0) {
@@ -129,23 +170,32 @@ func (f *LeakFit) addField(row *LeakRow, r [][]float64, add func(...share) []flo
 		for b := range f.rule.BeyondOrder + 1 {
 			list = append(list, share{f.beyondAt() + side*(f.rule.BeyondOrder+1) + b, along[b]})
 		}
-		f.addBeyond(r, row, width, side, add(list...))
+		f.addBeyond(sums, row, width, side)
+		sums.take(add(list...), sums.beyonds+side)
+	}
+	for k := range f.colours() {
+		sums.take(r[k], k)
 	}
 }
 
-// addMirrors adds weight light l^k to the colours' sums for mirrors at place j, and
-// hands weight light E(l) to each.
-func (f *LeakFit) addMirrors(r [][]float64, y int, j, weight float64, light []float32, each func(x int, v float64)) {
+// addMirrors adds light l^k to the colours' sums for mirrors at place j, and light E(l)
+// times factors to the sums from index at on.
+func (f *LeakFit) addMirrors(s *mirrorSums, y int, j float64, light []float32, at int, factors []float64) {
 	start := f.table.start(&f.frame.Geometry, float64(y), j)
 	for x, v := range light {
 		l, ok := f.table.at(start + float64(x))
 		if !ok || v == 0 {
 			continue
 		}
-		value := weight * float64(v)
-		each(x, value*f.shapeAt(l))
-		for k := range f.colours() {
-			r[k][x] += value
+		sums := s.sums[x*s.width:][:s.width]
+		value := float64(v)
+		shaped := value * f.shapeAt(l)
+		own := sums[at:][:len(factors)]
+		for a, factor := range factors {
+			own[a] += shaped * factor
+		}
+		for k := range sums[:s.structures] {
+			sums[k] += value
 			value *= l
 		}
 	}
@@ -176,7 +226,7 @@ func most(list []float64) float64 {
 // addBeyond adds mirrors outside the field, width elements wide at each column, below
 // (side 0) or above it: the mean of the elements at that end, each shifted to their
 // place.
-func (f *LeakFit) addBeyond(r [][]float64, row *LeakRow, width []float64, side int, sum []float64) {
+func (f *LeakFit) addBeyond(s *mirrorSums, row *LeakRow, width []float64, side int) {
 	n := min(endElements, f.frame.Elements)
 	out := float64(2*side - 1)
 	end := float64(side * (f.frame.Elements - 1))
@@ -190,7 +240,7 @@ func (f *LeakFit) addBeyond(r [][]float64, row *LeakRow, width []float64, side i
 		for x := range beyond {
 			beyond[x] *= float32(min(1, max(0, width[x]-done)))
 		}
-		f.addMirrors(r, row.Y, end+out*away, 1, beyond, func(x int, v float64) { sum[x] += v })
+		f.addMirrors(s, row.Y, end+out*away, beyond, s.beyonds+side, []float64{1})
 	}
 }
 

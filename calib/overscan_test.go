@@ -61,6 +61,41 @@ func TestOverscanStrips(t *testing.T) {
 	require.ErrorContains(t, o.Levels(whole[:2], wholeVar[:2], block[:8], 1), "rows 1 to 2")
 }
 
+// Levels are what Clip gives of each window by itself: in noise, with hits, with a column
+// that takes charge from the data, rows far off and pixels without a value.
+func TestOverscanAgainstClip(t *testing.T) {
+	const rows, width = 400, 32
+	rng := rand.New(rand.NewPCG(8, 9))
+	block := make([]float32, rows*width)
+	for i := range block {
+		block[i] = float32(math.Round(1012 + 2.3*rng.NormFloat64()))
+		switch x, y := i%width, i/width; {
+		case x == 0 && y >= 100 && y < 200:
+			block[i] += 40
+		case y >= 250 && y < 254:
+			block[i] += 300
+		case rng.IntN(300) == 0:
+			block[i] += 5000
+		case rng.IntN(300) == 0:
+			block[i] = float32(math.NaN())
+		}
+	}
+	for y := 330; y < 333; y++ {
+		for x := range width {
+			block[y*width+x] = float32(math.NaN())
+		}
+	}
+	o := DefaultOverscan(width)
+	level, variance := make([]float64, rows), make([]float64, rows)
+	require.NoError(t, o.Levels(level, variance, block, 0))
+	scratch := make([]float32, 17*width)
+	for y := range rows {
+		e := o.Clip.Mean(block[max(0, y-8)*width:min(rows, y+9)*width], scratch)
+		require.InDelta(t, e.Mean, level[y], 1e-9, "row %d", y)
+		require.InEpsilon(t, e.Variance, variance[y], 1e-9, "row %d", y)
+	}
+}
+
 func BenchmarkOverscan(b *testing.B) {
 	const rows, width = 64, 16
 	rng := rand.New(rand.NewPCG(5, 6))

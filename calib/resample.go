@@ -52,31 +52,56 @@ func (r *Resampler) Resample(dst Voxels, signal, variance []float32, flags *RowF
 	if len(edges) < 2 {
 		return
 	}
+	if !flags.touched(r.pixels.first, r.pixels.first+r.pixels.size) {
+		flags = nil
+	}
 	one, other := newEdge(), newEdge()
 	last, next := &one, &other
 	r.pixels.set(last, edges[0])
+	before := edges[0]
 	at := 0
-	for i := 1; i < len(edges); i++ {
-		r.pixels.set(next, edges[i])
+	for _, x := range edges[1:] {
+		r.pixels.set(next, x)
 		low, high := last, next
 		if low.place > high.place {
 			low, high = high, low
 		}
-		v := r.voxel(low, high, signal, variance, flags)
-		cover := (high.place - low.place) / math.Abs(edges[i]-edges[i-1])
-		if cover < fullCover {
-			v.flags |= Partial
+		var v voxel
+		if high.base-low.base == 1 && (flags == nil || !flags.touched(low.base, low.base+points)) {
+			v.signal, v.variance = weighApart(low, high, signal, variance)
+		} else {
+			v = r.voxel(low, high, signal, variance, flags)
 		}
-		if !(cover >= halfCover) {
-			v.flags |= NoData
+		if low.clamped || high.clamped || low.place == high.place {
+			v.cover(high.place-low.place, math.Abs(x-before))
 		}
 		if v.flags&NoData != 0 {
 			v.signal, v.variance = nan32, nan32
 		}
 		dst.Signal[at], dst.Variance[at], dst.Flags[at] = v.signal, v.variance, v.flags
 		at += dst.Stride
-		last, next = next, last
+		last, next, before = next, last, x
 	}
+}
+
+// Columns is the range of columns, from..to-1, that Resample reads for these edges.
+func (r *Resampler) Columns(edges []float64) (from, to int) {
+	low, high := math.Inf(1), math.Inf(-1)
+	for _, x := range edges {
+		if x < low {
+			low = x
+		}
+		if x > high {
+			high = x
+		}
+		if x != x { // the left end, as in set
+			low = math.Inf(-1)
+		}
+	}
+	var left, right edge
+	r.pixels.set(&left, low)
+	r.pixels.set(&right, high)
+	return left.base, right.base + taps
 }
 
 // Weights gives the weights w of the voxel between two edges, in detector x, as
@@ -109,6 +134,29 @@ var nan32 = float32(math.NaN())
 type voxel struct {
 	signal, variance float32
 	flags            Flag
+}
+
+// cover flags a voxel of so much width of which so much is covered.
+func (v *voxel) cover(covered, width float64) {
+	cover := covered / width
+	if cover < fullCover {
+		v.flags |= Partial
+	}
+	if !(cover >= halfCover) {
+		v.flags |= NoData
+	}
+}
+
+// weighApart is the usual case of voxel, edges whose bases are a pixel apart and no flags:
+// weighEight on weights that need no table.
+func weighApart(low, high *edge, signal, variance []float32) (float32, float32) {
+	v, q := (*[points]float32)(signal[low.base:]), (*[points]float32)(variance[low.base:])
+	a, b := (*[taps]float32)(high.tails[pad:]), (*[taps]float32)(low.tails[pad:])
+	w0, w1, w2, w3 := 1-b[0], a[0]-b[1], a[1]-b[2], a[2]-b[3]
+	w4, w5, w6, w7 := a[3]-b[4], a[4]-b[5], a[5]-b[6], a[6]
+	return (w0*v[0] + w1*v[1]) + (w2*v[2] + w3*v[3]) + ((w4*v[4] + w5*v[5]) + (w6*v[6] + w7*v[7])),
+		(w0*w0*q[0] + w1*w1*q[1]) + (w2*w2*q[2] + w3*w3*q[3]) +
+			((w4*w4*q[4] + w5*w5*q[5]) + (w6*w6*q[6] + w7*w7*q[7]))
 }
 
 func (r *Resampler) voxel(low, high *edge, signal, variance []float32, flags *RowFlags) voxel {

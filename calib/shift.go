@@ -135,12 +135,22 @@ func (p *rowPlan) at(y0, x int) (first int, w []float32) {
 // Signal writes trace row y0 to dst, one value a column: sum w v. rows[i] is
 // detector row first+i; all of Span(y0) must be among them.
 func (s *RowShift) Signal(dst []float32, rows [][]float32, first, y0 int) {
-	s.plans[y0].signal(dst, rows, y0-first)
+	s.plans[y0].signal(dst, rows, y0-first, 0, s.columns)
 }
 
-// signal takes trace row y0 from rows of which the first is row y0 - below.
-func (p *rowPlan) signal(dst []float32, rows [][]float32, below int) {
+// SignalWithin is Signal for columns x0..x1-1 alone: the others of dst stay as they are.
+func (s *RowShift) SignalWithin(dst []float32, rows [][]float32, first, y0, x0, x1 int) {
+	s.plans[y0].signal(dst, rows, y0-first, x0, x1)
+}
+
+// signal takes columns x0..x1-1 of trace row y0 from rows of which the first is row
+// y0 - below.
+func (p *rowPlan) signal(dst []float32, rows [][]float32, below, x0, x1 int) {
 	for _, r := range p.runs {
+		r.x0, r.x1 = max(r.x0, x0), min(r.x1, x1)
+		if r.x0 >= r.x1 {
+			continue
+		}
 		out := dst[r.x0:r.x1]
 		q := window(rows, below+r.row, r)
 		w := p.weights[r.x0*points:]

@@ -141,7 +141,7 @@ func (f *ShiftField) Set(g *Gather, y0 int, edges []float64) {
 // Signal writes the trace row to dst, by column; rows[i] is detector row first+i, and
 // Span(y0) must be among them. Columns without weights are left as they are.
 func (g *Gather) Signal(dst []float32, rows [][]float32, first int) {
-	g.plan.signal(dst, rows, g.y0-first)
+	g.plan.signal(dst, rows, g.y0-first, 0, g.columns)
 }
 
 // Variance is Signal for variances.

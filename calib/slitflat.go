@@ -94,9 +94,10 @@ func NewFlatFit(rule FlatRule, elements, rows, voxels int, lamp []float64, lit [
 // out. Strips of one element come in the order of rows, so that sums do not depend
 // on who adds; different ranges of elements may be added at the same time.
 func (f *FlatFit) AddStrip(y0, h int, signal, variance []float32, flags []Flag, j0, j1 int) {
+	weights := make([]float64, f.voxels*(j1-j0))
 	for row := range h {
 		if y := y0 + row; y >= 0 && y < f.rows {
-			f.addRow(y, flatRow{signal, variance, flags, row * f.elements, h * f.elements}, j0, j1)
+			f.addRow(y, flatRow{signal, variance, flags, row * f.elements, h * f.elements, weights}, j0, j1)
 		}
 	}
 }

@@ -6,6 +6,7 @@ type flatRow struct {
 	signal, variance []float32
 	flags            []Flag
 	at, stride       int
+	weights          []float64 // of the elements added, [voxel][element], once fitSlit was there
 }
 
 // addRow fits s of row y to the template and adds the row to the efficiency's sums.
@@ -24,8 +25,9 @@ func (f *FlatFit) addRow(y int, r flatRow, j0, j1 int) {
 		}
 		from := r.at + l*r.stride
 		to := l * f.elements
+		weights := r.weights[l*(j1-j0):][:j1-j0]
 		for j := j0; j < j1; j++ {
-			w := r.weight(from + j)
+			w := weights[j-j0]
 			if u := slit[j-j0] * lamp; u > 0 && w > 0 {
 				f.bandTop[to+j] += w * u * float64(r.signal[from+j])
 				f.bandBottom[to+j] += w * u * u
@@ -43,9 +45,11 @@ func (f *FlatFit) fitSlit(y int, r flatRow, j0, j1 int) {
 	for l := range f.lamp {
 		from := r.at + l*r.stride
 		template := f.template[l*f.elements:][:f.elements]
+		weights := r.weights[l*(j1-j0):][:j1-j0]
 		for j := j0; j < j1; j++ {
 			t := float64(template[j])
 			w := r.weight(from + j)
+			weights[j-j0] = w
 			if w > 0 {
 				top[j] += w * t * float64(r.signal[from+j])
 				bottom[j] += w * t * t

@@ -27,6 +27,14 @@ func NewWavelengths(nm func(i float64) float64, stepNM, from float64, count int)
 // Count is their number.
 func (w Wavelengths) Count() int { return w.count }
 
+// at is wavelength i.
+func (w Wavelengths) at(i int) float64 {
+	if w.stepNM == 0 {
+		return w.listed[i]
+	}
+	return w.firstNM + float64(i)*w.stepNM
+}
+
 // Places fills dst, as long as w, with the detector columns X(j, y0, L) of wavelengths.
 // It returns dst.
 func (g *Geometry) Places(dst []float64, j, y0 float64, w Wavelengths) []float64 {

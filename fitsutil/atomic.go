@@ -38,8 +38,9 @@ func WriteAtomic(path string, write func(io.Writer) error) error {
 
 // partFile is a file under construction beside its target.
 type partFile struct {
-	path string   // the target
-	file *os.File // the temporary file; nil once committed or aborted
+	path    string   // the target
+	file    *os.File // the temporary file; nil once committed or aborted
+	traffic *Traffic
 }
 
 // createPart opens a new temporary file in the folder of path. Its name does
@@ -69,7 +70,7 @@ func createPart(path string) (*partFile, error) {
 // step, the folder's sync, fails: then the file is whole but may not outlive a
 // power cut.
 func (p *partFile) commit() error {
-	if err := p.file.Sync(); err != nil {
+	if err := p.traffic.writing(0, p.file.Sync); err != nil {
 		return p.wrap(err, "cannot be synced to the disk")
 	}
 	temporary := p.file.Name()

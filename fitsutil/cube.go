@@ -63,14 +63,15 @@ func CreateCube(path string, primary *Header, images []ImageSpec) (*Cube, error)
 		return nil, err
 	}
 	c := &Cube{path: path, out: out}
-	if err := c.layOut(primary, images); err != nil {
+	if err := c.layOut(primary, images, true); err != nil {
 		out.part.abort()
 		return nil, inFile(path, err)
 	}
 	return c, nil
 }
 
-func (c *Cube) layOut(primary *Header, images []ImageSpec) error {
+// layOut gives the HDUs their places, and the file its room if that is to be reserved.
+func (c *Cube) layOut(primary *Header, images []ImageSpec, reserve bool) error {
 	if primary != nil || len(images) == 0 || images[0].Name != "" {
 		if err := addEmptyPrimary(c.out, primary); err != nil {
 			return err
@@ -82,6 +83,9 @@ func (c *Cube) layOut(primary *Header, images []ImageSpec) error {
 			return err
 		}
 		c.images = append(c.images, image)
+	}
+	if !reserve {
+		return nil
 	}
 	return c.out.part.wrap(c.out.reserve(0), "cannot be written")
 }
@@ -176,6 +180,17 @@ func (c *Cube) writeRuns(image *cubeImage, y0, h, l0, nl int, data any) error {
 		}
 	}
 	return nil
+}
+
+// BeginSync asks the system to begin bringing to the disk what was written, so that Commit
+// finds less to wait for. It may wait itself where the disk is slower than the writer.
+func (c *Cube) BeginSync() {
+	c.running.RLock()
+	defer c.running.RUnlock()
+	if c.closed {
+		return
+	}
+	_ = c.out.part.traffic.writing(0, func() error { beginWriteback(c.out.part.file); return nil })
 }
 
 // Revise gives a card of image number hdu another value, before Commit. The card must be

@@ -25,6 +25,7 @@ type File struct {
 	// open opens what is read, the file itself or its unpacked copy, again after Release.
 	open    func() (source, error)
 	scratch string // unpacked copy to remove at Close, or empty
+	traffic *Traffic
 
 	mu     sync.RWMutex // held for reading while fd is in use
 	fd     source       // nil while released
@@ -120,7 +121,11 @@ func (f *File) readAt(p []byte, offset int64) error {
 		return err
 	}
 	defer f.mu.RUnlock()
-	n, err := fd.ReadAt(p, offset)
+	var n int
+	err = f.traffic.reading(len(p), func() (err error) {
+		n, err = fd.ReadAt(p, offset)
+		return err
+	})
 	if n == len(p) {
 		return nil
 	}

@@ -59,8 +59,10 @@ func (l *layout) writeData(hdu *pending, offset int64, bytes []byte) error {
 	hdu.mu.Lock()
 	hdu.sum = addSums(hdu.sum, sum)
 	hdu.mu.Unlock()
-	_, err := l.part.file.WriteAt(bytes, hdu.dataAt+offset)
-	return err
+	return l.part.traffic.writing(len(bytes), func() error {
+		_, err := l.part.file.WriteAt(bytes, hdu.dataAt+offset)
+		return err
+	})
 }
 
 // writeSamples writes data[from:from+count] from an offset, in samples, of the

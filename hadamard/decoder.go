@@ -6,8 +6,8 @@ import (
 )
 
 // lanes is how many pixels are worked on together. Sixteen float32 are one
-// cache line and one AVX-512 register, and a block of 511 rows is 32 KiB: it
-// stays in the first-level cache.
+// cache line and one AVX-512 register, or two of AVX2, and a block of 511 rows
+// is 32 KiB: it stays in the first-level cache.
 const lanes = 16
 
 // row is one row of a block of pixels.
@@ -18,6 +18,7 @@ type row [lanes]float32
 // work at a time have each made a call.
 type Decoder struct {
 	code   *Code
+	level  level
 	engine engine
 	tails  sync.Pool // *tail
 }
@@ -39,15 +40,21 @@ type tail struct{ dst, src []float32 }
 // NewDecoder makes the decoder of a code. An m-sequence decodes by a fast
 // Walsh-Hadamard transform, other cyclic codes by sums over subsets of eight
 // rows, the slit scan by a copy.
-func NewDecoder(c *Code) *Decoder {
-	d := &Decoder{code: c}
+//
+// The kernels use what instructions the processor has (CPULevel); results are
+// the same bits with any.
+func NewDecoder(c *Code) *Decoder { return newDecoder(c, bestLevel()) }
+
+// newDecoder makes a decoder with the kernels of a level, one of levels().
+func newDecoder(c *Code, l level) *Decoder {
+	d := &Decoder{code: c, level: l}
 	switch c.family {
 	case SlitScan:
 		d.engine = copier{v: c.v}
 	case MSequence:
-		d.engine = newTransform(c)
+		d.engine = newTransform(c, l)
 	default:
-		d.engine = newDense(c)
+		d.engine = newDense(c, l)
 	}
 	d.tails.New = func() any {
 		return &tail{dst: make([]float32, c.v*lanes), src: make([]float32, c.v*lanes)}
@@ -62,7 +69,9 @@ func (d *Decoder) Code() *Code { return d.code }
 //
 // src holds y as [code row][pixel], row i at src[i*stride : i*stride+pixels];
 // dst receives f as [code column][pixel] with the same stride. The two may not
-// overlap; src is not changed, nor what lies between the rows of dst.
+// overlap; src is not changed, nor what lies between the rows of dst. It is fastest
+// when rows are an odd number of cache lines (16 samples) apart: a power of two
+// puts them all into the same few places of a cache, and costs a factor of 3.
 //
 // The float32 transform of an m-sequence works on y less its pixel's mean over
 // the rows, and mean/k is added back, which is exact algebra since the rows of

@@ -127,19 +127,26 @@ func decodeError(c *Code, y []float32, want []float64, brightest float64) float6
 // Tolerance: a few float32 roundings of the largest value, as Decode says.
 func TestFastMeetsNaive(t *testing.T) {
 	for _, c := range smallCodes(t) {
-		d := NewDecoder(c)
-		require.Same(t, c, d.Code())
-		for _, pixels := range []int{1, lanes - 1, lanes, 2*lanes + 3} {
-			stride := pixels + pixels%3
-			src := randomBlock(uint64(c.V()*100+pixels), c.V(), stride)
-			before := slices.Clone(src)
-			dst := make([]float32, len(src))
-			d.Decode(dst, src, pixels, stride)
-			requireClose(t, c, dst, multiply(inverseOf(c), src, pixels, stride), pixels, stride)
-			d.Predict(dst, src, pixels, stride)
-			requireClose(t, c, dst, multiply(matrixOf(c), src, pixels, stride), pixels, stride)
-			require.Equal(t, before, src, "the source is not changed")
+		require.Same(t, c, NewDecoder(c).Code())
+		for _, l := range levels() {
+			requireNaive(t, newDecoder(c, l))
 		}
+	}
+}
+
+func requireNaive(t *testing.T, d *Decoder) {
+	t.Helper()
+	c := d.Code()
+	for _, pixels := range []int{1, lanes - 1, lanes, 2*lanes + 3} {
+		stride := pixels + pixels%3
+		src := randomBlock(uint64(c.V()*100+pixels), c.V(), stride)
+		before := slices.Clone(src)
+		dst := make([]float32, len(src))
+		d.Decode(dst, src, pixels, stride)
+		requireClose(t, c, dst, multiply(inverseOf(c), src, pixels, stride), pixels, stride)
+		d.Predict(dst, src, pixels, stride)
+		requireClose(t, c, dst, multiply(matrixOf(c), src, pixels, stride), pixels, stride)
+		require.Equal(t, before, src, "the source is not changed")
 	}
 }
 
@@ -173,7 +180,7 @@ func TestPlaceDoesNotMatter(t *testing.T) {
 	codes = append(codes, mustCode(t, MSequence, 255), mustCode(t, MSequence, 511), mustCode(t, MSequence, 1023))
 	rapid.Check(t, func(t *rapid.T) {
 		c := rapid.SampledFrom(codes).Draw(t, "code")
-		d := NewDecoder(c)
+		d := newDecoder(c, rapid.SampledFrom(levels()).Draw(t, "level"))
 		pixels := rapid.IntRange(1, 50).Draw(t, "pixels")
 		stride := pixels + rapid.IntRange(0, 20).Draw(t, "gap")
 		offset := rapid.IntRange(0, 5).Draw(t, "offset")
@@ -191,7 +198,6 @@ func TestPlaceDoesNotMatter(t *testing.T) {
 			"decode": d.Decode, "predict": d.Predict,
 			"variance": func(dst, src []float32, pixels, stride int) { d.Variance(dst, src, pixels, stride, 1) },
 		} {
-			const guard = -12345
 			dst, want := make([]float32, len(src)), make([]float32, c.V())
 			for i := range dst {
 				dst[i] = guard

@@ -39,7 +39,7 @@
 //   - A pixel's result depends on that pixel's samples alone: not on the
 //     stride, the number of pixels or its place among them, bit for bit. Sums
 //     run in one fixed order, without fused multiply-add where it could round
-//     differently. A sample that is NaN or infinite spoils its pixel only.
+//     differently, so that all instruction sets (CPULevel) give the same bits. A sample that is NaN or infinite spoils its pixel only.
 //   - Methods that take blocks check their lengths and panic with a text that
 //     starts "internal error" when a block is too short: sizes are the caller's
 //     invariant, never input. Everything that input can get wrong is an error.

@@ -26,8 +26,10 @@ type Neighbours struct {
 	columns []int32
 	// ghost[j] is c of pair j; nil where the code is no m-sequence.
 	ghost []int32
-	// open[i][group] tells which of eight pairs step i opens; nil for m-sequences.
+	// open[group][i] tells which of eight pairs step i opens; nil for m-sequences.
+	// The number of groups is even.
 	open    [][]uint8
+	kernels sums
 	scratch sync.Pool // *neighbourScratch
 }
 
@@ -35,10 +37,11 @@ type Neighbours struct {
 // each is fetched and written once, the pairs' terms and, for codes that need it,
 // their sums by step and what those decode to.
 type neighbourScratch struct {
-	light          []row // by code column
-	half           []row // g_j/2
+	light          []row     // by code column
+	half           []float32 // g_j/2, as [pair][pixel]
 	sums           []wideRow
-	table          [subsets]wideRow
+	tables         [2]subsetTable
+	total, none    wideRow // total is of no use here, none stays zero
 	steps, decoded []float32
 }
 
@@ -48,7 +51,7 @@ type neighbourScratch struct {
 func NewNeighbours(d *Decoder, columns []int) (*Neighbours, error) {
 	v := d.code.v
 	seen := make([]bool, v)
-	n := &Neighbours{decoder: d}
+	n := &Neighbours{decoder: d, kernels: sumsOf(d.level)}
 	for j, c := range columns {
 		switch {
 		case c < 0 || c >= v:
@@ -71,7 +74,7 @@ func NewNeighbours(d *Decoder, columns []int) (*Neighbours, error) {
 		n.open = openPairs(d.code, columns)
 	}
 	n.scratch.New = func() any {
-		s := &neighbourScratch{light: make([]row, v), half: make([]row, pairs)}
+		s := &neighbourScratch{light: make([]row, v), half: make([]float32, pairs*lanes)}
 		if n.open != nil {
 			s.sums = make([]wideRow, v)
 			s.steps, s.decoded = make([]float32, v*lanes), make([]float32, v*lanes)
@@ -83,11 +86,13 @@ func NewNeighbours(d *Decoder, columns []int) (*Neighbours, error) {
 
 func openPairs(c *Code, columns []int) [][]uint8 {
 	pairs := len(columns) - 1
-	open := make([][]uint8, c.v)
-	for i := range open {
-		open[i] = make([]uint8, (pairs+groupRows-1)/groupRows)
-		for j := range pairs {
-			open[i][j/groupRows] |= c.Bit(i, columns[j]) * c.Bit(i, columns[j+1]) << (j % groupRows)
+	open := make([][]uint8, (pairs+2*groupRows-1)/(2*groupRows)*2)
+	for group := range open {
+		open[group] = make([]uint8, c.v)
+	}
+	for j := range pairs {
+		for i := range c.v {
+			open[j/groupRows][i] |= c.Bit(i, columns[j]) * c.Bit(i, columns[j+1]) << (j % groupRows)
 		}
 	}
 	return open
@@ -167,22 +172,14 @@ func (s *neighbourScratch) write(block []float32, count, stride int) {
 
 // takeProducts is for other codes: sums over subsets of eight pairs, as in dense.
 func (n *Neighbours) takeProducts(s *neighbourScratch) {
-	clear(s.sums)
-	for group := range n.open[0] {
-		first := group * groupRows
-		tabulatePairs(&s.table, s.half[first:min(first+groupRows, len(s.half))])
-		for i := range s.sums {
-			sum, add := &s.sums[i], &s.table[n.open[i][group]]
-			for p := range sum {
-				sum[p] += add[p]
-			}
+	for p := 0; p < lanes; p += wideLanes {
+		clear(s.sums)
+		for group := 0; group < len(n.open); group += 2 {
+			n.tabulate(s, 0, group, p)
+			n.tabulate(s, 1, group+1, p)
+			n.kernels.addSubsets(s.sums, &s.tables, n.open[group], n.open[group+1])
 		}
-	}
-	for i := range s.sums {
-		out := rowAt(s.steps, i*lanes)
-		for p, v := range &s.sums[i] {
-			out[p] = float32(2 * v)
-		}
+		n.kernels.combine(s.steps[p:], s.sums, &s.none, lanes, 2)
 	}
 	n.decoder.engine.decode(s.decoded, s.steps, lanes)
 	for c := range s.light {
@@ -193,14 +190,13 @@ func (n *Neighbours) takeProducts(s *neighbourScratch) {
 	}
 }
 
-// tabulatePairs sets the sums of all subsets of up to eight rows.
-func tabulatePairs(table *[subsets]wideRow, half []row) {
-	for t := range half {
-		with := table[1<<t : 2<<t]
-		for i := range with {
-			for p := range with[i] {
-				with[i][p] = table[i][p] + float64(half[t][p])
-			}
-		}
+// tabulate sets a table for the pairs of a group, of which there may be fewer
+// than eight, or none.
+func (n *Neighbours) tabulate(s *neighbourScratch, table, group, at int) {
+	first, pairs := group*groupRows, n.Pairs()
+	rows := max(0, min(groupRows, pairs-first))
+	if rows > 0 {
+		at += first * lanes
 	}
+	n.kernels.tabulate(&s.tables[table], &s.total, s.half[at:], rows, lanes)
 }

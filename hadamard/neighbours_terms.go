@@ -24,7 +24,7 @@ func (n *Neighbours) terms(s *neighbourScratch, size, step *row, at int) {
 		g0, g1, g2, g3 := element[0], element[1], element[2], element[3]
 		r0, r1, r2, r3 := float32(d0*g0), float32(d1*g1), float32(d2*g2), float32(d3*g3)
 		h0, h1, h2, h3 := q0+r0, q1+r1, q2+r2, q3+r3
-		half := (*[quad]float32)(s.half[j][at:])
+		half := (*[quad]float32)(s.half[j*lanes+at:])
 		half[0], half[1], half[2], half[3] = h0, h1, h2, h3
 		if own {
 			before[0], before[1], before[2], before[3] = f0-(l0+h0), f1-(l1+h1), f2-(l2+h2), f3-(l3+h3)
@@ -48,7 +48,7 @@ func (n *Neighbours) start(size, step float32) (float32, float32) {
 // takeGhosts gives the columns of an m-sequence's ghosts what they lack.
 func (n *Neighbours) takeGhosts(s *neighbourScratch) {
 	for j, c := range n.ghost {
-		ghost, half := &s.light[c], &s.half[j]
+		ghost, half := &s.light[c], rowAt(s.half, j*lanes)
 		for p := 0; p < lanes; p += quad {
 			g, h := (*[quad]float32)(ghost[p:]), (*[quad]float32)(half[p:])
 			g[0], g[1], g[2], g[3] = g[0]+h[0], g[1]+h[1], g[2]+h[2], g[3]+h[3]

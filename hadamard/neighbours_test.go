@@ -226,12 +226,12 @@ func BenchmarkNeighbours(b *testing.B) {
 			c := mustCode(b, x.f, x.v)
 			n, err := NewNeighbours(NewDecoder(c), spreadColumns(x.v, x.v-x.v/8, 1))
 			require.NoError(b, err)
-			block, _ := benchBlock(x.v)
+			block, _ := benchBlock(x.v, benchPixels)
 			d := make([]float32, benchPixels)
-			b.SetBytes(bytesInOut(x.v))
+			b.SetBytes(bytesInOut(x.v, benchPixels))
 			b.ReportAllocs()
 			for b.Loop() {
-				n.Correct(block, d, d, benchPixels, benchStride)
+				n.Correct(block, d, d, benchPixels, benchPixels)
 			}
 		})
 	}

@@ -9,25 +9,27 @@ type passes struct {
 	// sum, taken in groups of four: ((r0+r1)+(r2+r3)) added to the sum so far,
 	// what is left of the last group one by one.
 	gather func(rows []row, sum *row, src []float32, index []int32, stride int)
-	// center subtracts mean from every row.
-	center func(rows []row, mean *row)
+	// residue sets sum to the sum over the rows, in their order, of row less mean,
+	// the difference in float32 and the sum in float64.
+	residue func(sum *[lanes]float64, rows []row, mean *row)
 	// first8 subtracts mean from every row and does the stages 1, 2, 4.
 	first8 func(rows []row, mean *row)
 	// middle8 does the stages h, 2h, 4h; middle4 the stages h, 2h.
 	middle8 func(rows []row, h int)
 	middle4 func(rows []row, h int)
 	// last8 does the three highest stages, last4 the two highest; both write
-	// s.base + scale*row, the product rounded before the sum, of place i to row
-	// to[i] of dst; to[0] is -1, and that row is dropped.
+	// s.base + scale*row, the product rounded before the sum, to the rows of dst
+	// that to names in the order of places.last; to[0] is -1, and that row is
+	// dropped.
 	last8 func(s *transformScratch, to []int32, dst []float32, stride int, scale float32)
 	last4 func(s *transformScratch, to []int32, dst []float32, stride int, scale float32)
 }
 
-// portable are the passes in plain Go. Rows are handled as pointers to arrays
-// of a constant size: no bounds are checked within.
-var portable = passes{
+// portablePasses are the passes in plain Go. Rows are handled as pointers to
+// arrays of a constant size: no bounds are checked within.
+var portablePasses = passes{
 	gather:  gather,
-	center:  center,
+	residue: residue,
 	first8:  first8,
 	middle8: middle8,
 	middle4: middle4,
@@ -61,6 +63,17 @@ func gather(rows []row, sum *row, src []float32, index []int32, stride int) {
 	}
 }
 
+func residue(sum *[lanes]float64, rows []row, mean *row) {
+	*sum = [lanes]float64{}
+	for i := range rows {
+		r := &rows[i]
+		for p := range sum {
+			sum[p] += float64(r[p] - mean[p])
+		}
+	}
+}
+
+// center subtracts mean from every row.
 func center(rows []row, mean *row) {
 	for i := range rows {
 		r := &rows[i]
@@ -125,7 +138,7 @@ func last8(s *transformScratch, to []int32, dst []float32, stride int, scale flo
 		var in, out [8]*row
 		for t := range in {
 			in[t] = &s.rows[i+t*h]
-			out[t] = s.target(to[i+t*h], dst, stride)
+			out[t] = s.target(to[8*i+t], dst, stride)
 		}
 		scatter8(&in, &out, &s.base, scale)
 	}
@@ -151,8 +164,8 @@ func last4(s *transformScratch, to []int32, dst []float32, stride int, scale flo
 	h := len(s.rows) / 4
 	for i := range h {
 		r0, r1, r2, r3 := &s.rows[i], &s.rows[i+h], &s.rows[i+2*h], &s.rows[i+3*h]
-		o0, o1 := s.target(to[i], dst, stride), s.target(to[i+h], dst, stride)
-		o2, o3 := s.target(to[i+2*h], dst, stride), s.target(to[i+3*h], dst, stride)
+		o0, o1 := s.target(to[4*i], dst, stride), s.target(to[4*i+1], dst, stride)
+		o2, o3 := s.target(to[4*i+2], dst, stride), s.target(to[4*i+3], dst, stride)
 		for p := range lanes {
 			a0, a1, a2, a3 := r0[p]+r1[p], r0[p]-r1[p], r2[p]+r3[p], r2[p]-r3[p]
 			b := s.base[p]

@@ -27,6 +27,9 @@ type transform struct {
 type places struct {
 	index []int32 // index[row] is the place, 1..v
 	row   []int32 // row[place] is the row; row[0] is -1
+	// last is row as the last pass takes the places: last[radix*i+t] is
+	// row[i+t*h]. It ends with aheadPlaces that are looked at but not used.
+	last []int32
 }
 
 // pass is one run over the block that does the stages h, 2h (, 4h).
@@ -38,22 +41,25 @@ type pass struct {
 // transformScratch holds the v+1 rows in work, and one row for what has no
 // place outside.
 type transformScratch struct {
-	rows []row
-	drop row
-	mean row
-	base row
+	rows    []row
+	drop    row
+	mean    row
+	base    row
+	residue [lanes]float64
 }
 
-func newTransform(c *Code) *transform {
+func newTransform(c *Code, l level) *transform {
 	degree := degreeOf(c.v)
 	t := &transform{
 		v:       c.v,
 		steps:   placesOf(stepIndex(degree)),
 		columns: placesOf(columnIndex(degree)),
 		inverse: float32(1 / float64(c.v)),
-		passes:  portable,
+		passes:  passesOf(l),
 	}
 	t.first8, t.middle, t.last = schedule(degree)
+	t.steps.last = t.steps.orderOf(t.last)
+	t.columns.last = t.columns.orderOf(t.last)
 	t.scratch.New = func() any { return &transformScratch{rows: make([]row, c.v+1)} }
 	return t
 }
@@ -66,6 +72,20 @@ func placesOf(index []int) places {
 		p.row[at] = int32(i)
 	}
 	return p
+}
+
+// aheadPlaces is how far a last pass looks ahead for the rows that it will write.
+const aheadPlaces = 16
+
+// orderOf gives the rows in the order in which a last pass takes their places.
+func (p places) orderOf(last pass) []int32 {
+	var order []int32
+	for i := range last.h {
+		for t := range last.radix {
+			order = append(order, p.row[i+t*last.h])
+		}
+	}
+	return append(order, make([]int32, aheadPlaces)...)
 }
 
 // schedule splits the stages of a transform of 2^degree rows into passes. The
@@ -112,11 +132,8 @@ func (t *transform) predict(dst, f []float32, stride int) {
 	s := t.scratch.Get().(*transformScratch)
 	t.load(s, &t.columns, f, stride)
 	k := float64(t.v+1) / 2
-	for p := range s.base {
-		sum := 0.0
-		for j := 1; j < len(s.rows); j++ {
-			sum += float64(s.rows[j][p] - s.mean[p])
-		}
+	t.passes.residue(&s.residue, s.rows[1:], &s.mean)
+	for p, sum := range s.residue {
 		s.base[p] = float32(float64(sum/2) + float64(k*float64(s.mean[p])))
 	}
 	t.run(s, &t.steps, dst, stride, -0.5)
@@ -138,23 +155,46 @@ func (t *transform) load(s *transformScratch, at *places, src []float32, stride 
 	s.rows[0] = s.mean
 }
 
+// nearRows is how many rows all passes but the last go through before they turn
+// to the next ones: 32 KiB, which a first-level cache holds.
+const nearRows = 512
+
 // run transforms s.rows less s.mean and writes base + scale * row to dst.
 func (t *transform) run(s *transformScratch, to *places, dst []float32, stride int, scale float32) {
-	if t.first8 {
-		t.passes.first8(s.rows, &s.mean)
-	} else {
-		t.passes.center(s.rows, &s.mean)
+	near := min(nearRows, len(s.rows))
+	for from := 0; from < len(s.rows); from += near {
+		t.runNear(s.rows[from:from+near], &s.mean)
 	}
 	for _, m := range t.middle {
-		if m.radix == 8 {
-			t.passes.middle8(s.rows, m.h)
-		} else {
-			t.passes.middle4(s.rows, m.h)
+		if m.h*m.radix > near {
+			t.runMiddle(s.rows, m)
 		}
 	}
 	if t.last.radix == 8 {
-		t.passes.last8(s, to.row, dst, stride, scale)
+		t.passes.last8(s, to.last, dst, stride, scale)
 	} else {
-		t.passes.last4(s, to.row, dst, stride, scale)
+		t.passes.last4(s, to.last, dst, stride, scale)
+	}
+}
+
+// runNear subtracts the mean and does the stages that stay within the rows.
+func (t *transform) runNear(rows []row, mean *row) {
+	if t.first8 {
+		t.passes.first8(rows, mean)
+	} else {
+		center(rows, mean)
+	}
+	for _, m := range t.middle {
+		if m.h*m.radix <= len(rows) {
+			t.runMiddle(rows, m)
+		}
+	}
+}
+
+func (t *transform) runMiddle(rows []row, m pass) {
+	if m.radix == 8 {
+		t.passes.middle8(rows, m.h)
+	} else {
+		t.passes.middle4(rows, m.h)
 	}
 }

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"strconv"
 	"strings"
 	"testing"
@@ -28,38 +29,50 @@ func naiveTransform(rows []row) {
 	}
 }
 
-// TestPassesMeetStages: for every size the grouped passes give the bits of the
-// single stages, with the mean subtracted first and scale and base last. This
-// is the test that passes for another instruction set have to meet too.
+// TestPassesMeetStages: for every size the grouped passes of every level give
+// the bits of the single stages, with the mean subtracted first and scale and
+// base last, and write nothing around their rows.
 func TestPassesMeetStages(t *testing.T) {
 	for degree := minDegree; degree <= maxDegree; degree++ {
 		c := mustCode(t, MSequence, 1<<degree-1)
-		rng := rand.New(rand.NewPCG(uint64(degree), 3))
-		tr := newTransform(c)
-		s := tr.scratch.New().(*transformScratch)
-		for i := range s.rows {
-			for p := range lanes {
-				s.rows[i][p] = float32(rng.NormFloat64())
-			}
+		for _, l := range levels() {
+			requireStages(t, newTransform(c, l), c.V(), l)
 		}
+	}
+}
+
+func requireStages(t *testing.T, tr *transform, v int, l level) {
+	t.Helper()
+	rng := rand.New(rand.NewPCG(uint64(v), 3))
+	s := tr.scratch.New().(*transformScratch)
+	between := make([]row, v+3)
+	for i := range between {
 		for p := range lanes {
-			s.mean[p], s.base[p] = float32(rng.NormFloat64()), float32(rng.NormFloat64())
+			between[i][p] = float32(rng.NormFloat64())
 		}
-		want := append([]row(nil), s.rows...)
-		for i := range want {
-			for p := range lanes {
-				want[i][p] -= s.mean[p]
-			}
+	}
+	before, behind := between[0], between[v+2]
+	s.rows = between[1 : v+2]
+	for p := range lanes {
+		s.mean[p], s.base[p] = float32(rng.NormFloat64()), float32(rng.NormFloat64())
+	}
+	mean := s.mean
+	want := slices.Clone(s.rows)
+	for i := range want {
+		for p := range lanes {
+			want[i][p] -= s.mean[p]
 		}
-		naiveTransform(want)
-		const scale = 0.37
-		dst := make([]float32, c.V()*lanes)
-		tr.run(s, &tr.columns, dst, lanes, scale)
-		for place := 1; place <= c.V(); place++ {
-			got := rowAt(dst, int(tr.columns.row[place])*lanes)
-			for p := range lanes {
-				require.Equal(t, s.base[p]+float32(scale*want[place][p]), got[p], "v = %d place %d", c.V(), place)
-			}
+	}
+	naiveTransform(want)
+	const scale = 0.37
+	dst := newGuarded((v-1)*(lanes+1)+lanes, 3)
+	tr.run(s, &tr.columns, dst.block, lanes+1, scale)
+	dst.requireWhole(t, lanes, lanes+1, l.String())
+	require.Equal(t, []row{before, behind, mean}, []row{between[0], between[v+2], s.mean})
+	for place := 1; place <= v; place++ {
+		got := rowAt(dst.block, int(tr.columns.row[place])*(lanes+1))
+		for p := range lanes {
+			require.Equal(t, s.base[p]+float32(scale*want[place][p]), got[p], "%s, v = %d place %d", l, v, place)
 		}
 	}
 }
@@ -86,25 +99,55 @@ func TestSchedule(t *testing.T) {
 // TestGatherSums: rows go to their places, and the sum is taken in the fixed
 // order of groups of four.
 func TestGatherSums(t *testing.T) {
-	for _, v := range []int{3, 7, 31} {
-		src := randomBlock(uint64(v), v, lanes+1)
-		index := placesOf(stepIndex(degreeOf(v))).index
-		rows, sum := make([]row, v+1), row{}
-		gather(rows, &sum, src, index, lanes+1)
+	for _, l := range levels() {
+		for _, v := range []int{3, 7, 31} {
+			requireGathered(t, passesOf(l), v, l)
+		}
+	}
+}
+
+func requireGathered(t *testing.T, p passes, v int, l level) {
+	t.Helper()
+	src := randomBlock(uint64(v), v, lanes+1)
+	index := placesOf(stepIndex(degreeOf(v))).index
+	rows, sum := make([]row, v+2), row{}
+	p.gather(rows[:v+1], &sum, src, index, lanes+1)
+	require.Equal(t, [2]row{}, [2]row{rows[0], rows[v+1]}, "%s: place 0 and what is behind", l)
+	for p := range lanes {
+		at := func(i int) float32 { return src[i*(lanes+1)+p] }
+		want, i := float32(0), 0
+		for ; i+4 <= v; i += 4 {
+			want += (at(i) + at(i+1)) + (at(i+2) + at(i+3))
+		}
+		for ; i < v; i++ {
+			want += at(i)
+		}
+		require.Equal(t, want, sum[p], l)
+		for i := range v {
+			require.Equal(t, at(i), rows[index[i]][p], l)
+		}
+	}
+}
+
+// TestResidue: the differences are rounded to float32, their sum is not.
+func TestResidue(t *testing.T) {
+	rng := rand.New(rand.NewPCG(6, 6))
+	for _, l := range levels() {
+		rows, mean := make([]row, 31), row{}
 		for p := range lanes {
-			at := func(i int) float32 { return src[i*(lanes+1)+p] }
-			want, i := float32(0), 0
-			for ; i+4 <= v; i += 4 {
-				want += (at(i) + at(i+1)) + (at(i+2) + at(i+3))
-			}
-			for ; i < v; i++ {
-				want += at(i)
-			}
-			require.Equal(t, want, sum[p])
-			for i := range v {
-				require.Equal(t, at(i), rows[index[i]][p])
+			mean[p] = rng.Float32()
+			for i := range rows {
+				rows[i][p] = 1000 * rng.Float32()
 			}
 		}
+		var got, want [lanes]float64
+		passesOf(l).residue(&got, rows, &mean)
+		for _, r := range rows {
+			for p := range lanes {
+				want[p] += float64(r[p] - mean[p])
+			}
+		}
+		require.Equal(t, want, got, l)
 	}
 }
 
@@ -181,7 +224,7 @@ func TestMeanMatters(t *testing.T) {
 		for i := range y {
 			src[i*lanes] = y[i]
 		}
-		tr := newTransform(c)
+		tr := newTransform(c, pureGo)
 		tr.decode(with, src, lanes)
 		s := tr.scratch.New().(*transformScratch)
 		tr.load(s, &tr.steps, src, lanes)

@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"path/filepath"
@@ -42,16 +41,24 @@ must coincide but for a whole number of elements and rows; a run whose voxels do
 not is to be reduced again onto those of another, with 'grid: {onto: OTHER/cube.fits}'
 in its recipe. The cube that comes out spans all of them.`,
 		Example: `  mirrorloom combine first/run second/run third/run -o all`,
-		Args:    cobra.MinimumNArgs(2),
+		Args:    twoRuns,
 		RunE:    func(cmd *cobra.Command, args []string) error { return runCombine(cmd.Context(), a, args, o) },
 	}
 	o.addFlags(cmd.Flags())
 	return cmd
 }
 
+// twoRuns demands what there is to combine.
+func twoRuns(cmd *cobra.Command, args []string) error {
+	if len(args) < 2 {
+		return arguments("a RUN", "another RUN")(cmd, args)
+	}
+	return nil
+}
+
 func runCombine(ctx context.Context, a *app, runs []string, o combineOptions) error {
-	if o.output.dir == "" {
-		return usageError{errors.New("combine needs -o; see 'mirrorloom combine --help'")}
+	if err := lacking("combine", needed{"-o", o.output.dir}); err != nil {
+		return err
 	}
 	if o.workers < 0 {
 		return usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}

@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"io"
 
 	"github.com/spf13/cobra"
@@ -15,7 +14,7 @@ func newDemoCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "demo -o DIR",
 		Short: "Plan, rehearse and reduce an invented field, and compare with the truth",
-		Args:  cobra.NoArgs,
+		Args:  arguments(),
 		RunE:  func(cmd *cobra.Command, _ []string) error { return runDemo(cmd.Context(), a, o) },
 	}
 	o.addFlags(cmd.Flags(), "demo")
@@ -23,8 +22,8 @@ func newDemoCommand(a *app) *cobra.Command {
 }
 
 func runDemo(ctx context.Context, a *app, o outputOptions) error {
-	if o.dir == "" {
-		return usageError{errors.New("demo needs -o; see 'mirrorloom demo --help'")}
+	if err := lacking("demo", needed{"-o", o.dir}); err != nil {
+		return err
 	}
 	var result *demo.Result
 	err := o.write(ctx, func(dir string) (err error) {

@@ -14,7 +14,7 @@ const (
 	exitError       = 1   // nothing was written
 	exitUsage       = 2   // the command line was wrong
 	exitDegraded    = 3   // the product is written, but something in it is missing
-	exitInterrupted = 130 // interrupted, nothing is left
+	exitInterrupted = 130 // interrupted, nothing is left unless --resume asked for it
 )
 
 // usageError marks what the command line got wrong.
@@ -36,17 +36,33 @@ func unlessWhole(reasons []string) error {
 
 func (e degradedError) Error() string { return e.why }
 
+// leftError is the error of a run whose unfinished folder was left to be gone on with.
+type leftError struct {
+	err error
+	dir string
+}
+
+func (e leftError) Error() string {
+	return fmt.Sprintf("%v; what is done is kept in %s: once that is mended, give the same command to go on", e.err, e.dir)
+}
+
+func (e leftError) Unwrap() error { return e.err }
+
 // exitCode is the one place where an error becomes an exit code and a sentence
 // on standard error.
 func exitCode(ctx context.Context, err error, stderr io.Writer) int {
 	var usage usageError
 	var degraded degradedError
+	var left leftError
 	switch {
 	case err == nil:
 		return exitWhole
 	case errors.As(err, &degraded):
 		fmt.Fprintf(stderr, "mirrorloom: %s\n", degraded.why)
 		return exitDegraded
+	case ctx.Err() != nil && errors.As(err, &left):
+		fmt.Fprintf(stderr, "mirrorloom: interrupted; what is done is kept in %s: give the same command to go on\n", left.dir)
+		return exitInterrupted
 	case ctx.Err() != nil:
 		fmt.Fprintln(stderr, "mirrorloom: interrupted; nothing was left behind")
 		return exitInterrupted

@@ -69,7 +69,7 @@ be where they were, as seen from it.`,
 		Example: `  mirrorloom extract run --circle "08:13:12.0 +21:36:00 2.5" --annulus "4 7" -o star
   mirrorloom extract run --band 500-502 --continuum 494-498,504-508 -o oxygen
   mirrorloom extract run --lines 656.461,658.527,654.986 -o hydrogen`,
-		Args: cobra.ExactArgs(1),
+		Args: arguments("RUN, a folder that reduce or combine wrote, or a cube.fits"),
 		RunE: func(cmd *cobra.Command, args []string) error { return runExtract(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -79,8 +79,8 @@ be where they were, as seen from it.`,
 // options turns flags into those of the pipeline; every mistake is one of usage.
 func (o *extractOptions) options(a *app, run string) (extract.Options, error) {
 	opts := extract.Options{Run: run, Progress: a.progress()}
-	if o.output.dir == "" {
-		return opts, errors.New("extract needs -o; see 'mirrorloom extract --help'")
+	if err := lacking("extract", needed{"-o", o.output.dir}); err != nil {
+		return opts, err
 	}
 	var err error
 	s := &opts.Spectrum

@@ -220,6 +220,12 @@ func TestKilledRunsLeaveTheirPartAlone(t *testing.T) {
 // runOver runs a command whole where a .part lies already.
 func runOver(t *testing.T, out string, args ...string) {
 	t.Helper()
-	text, err := exec.Command("mirrorloom", append(args, "-o", out)...).CombinedOutput()
-	require.NoError(t, err, string(text))
+	text, err := command(out, args...)
+	require.NoError(t, err, text)
+}
+
+// command runs mirrorloom with `-o out` and gives all that it says.
+func command(out string, args ...string) (string, error) {
+	text, err := exec.Command("mirrorloom", append(slices.Clone(args), "-o", out)...).CombinedOutput()
+	return string(text), err
 }

@@ -2,10 +2,10 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"os"
+	"strings"
 
 	"github.com/spf13/cobra"
 	"github.com/spf13/pflag"
@@ -37,16 +37,22 @@ func newPairCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "pair NIGHT --sequence SEQ [--audit] [-o FILE.csv]",
 		Short: "Pair the frames of a night with the steps of a sequence",
-		Args:  cobra.ExactArgs(1),
-		RunE:  func(cmd *cobra.Command, args []string) error { return runPair(cmd.Context(), a, args[0], o) },
+		Long: `pair compares the headers of a night's frames with the steps of the sequence and says
+which frame serves which step, what is missing and what cannot be used. With --audit it
+looks at the frames' light as well: the dark columns of the code tell which mask a science
+frame shows, whatever its header says.
+
+The exit code is 3 where a step has no frame that can be used.`,
+		Args: arguments("NIGHT, the folder of the frames"),
+		RunE: func(cmd *cobra.Command, args []string) error { return runPair(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
 	return cmd
 }
 
 func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
-	if o.sequence == "" {
-		return usageError{errors.New("pair needs --sequence; see 'mirrorloom pair --help'")}
+	if err := lacking("pair", needed{"--sequence", o.sequence}); err != nil {
+		return err
 	}
 	if info, err := os.Stat(o.file); err == nil && info.Mode().IsRegular() && info.Size() > 0 && !o.replace {
 		return fmt.Errorf("the output file is not empty: %s; choose another with -o or pass --replace", o.file)
@@ -70,10 +76,29 @@ func runPair(ctx context.Context, a *app, night string, o pairOptions) error {
 		Ledger product.Ledger `json:"ledger"`
 		Audit  *pair.Audit    `json:"audit,omitempty"`
 	}{paired.Ledger, paired.Audit}
-	return a.answer(answer, func(w io.Writer) error {
+	err = a.answer(answer, func(w io.Writer) error {
 		if err := pair.Print(w, paired.Ledger, o.all); err != nil {
 			return err
 		}
-		return paired.Audit.Print(w)
+		if err := paired.Audit.Print(w, paired.Ledger, o.all); err != nil {
+			return err
+		}
+		_, err := io.WriteString(w, headersAlone(seq, o.audit))
+		return err
 	})
+	if err != nil {
+		return err
+	}
+	if why := paired.Unserved(); len(why) > 0 {
+		return degradedError{"the night is not whole: " + strings.Join(why, "; ")}
+	}
+	return nil
+}
+
+// headersAlone hints at the audit where only headers were believed, and it could tell more.
+func headersAlone(seq *sequence.Sequence, audited bool) string {
+	if audited || len(seq.DarkColumns()) == 0 {
+		return ""
+	}
+	return "\nOnly headers were compared; --audit tells from the frames' light whether each shows its mask.\n"
 }

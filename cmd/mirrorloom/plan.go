@@ -55,12 +55,12 @@ plan --compare A B holds two plans side by side, each the folder of a sequence o
 target.`,
 		Args: func(cmd *cobra.Command, args []string) error {
 			if o.list {
-				return cobra.NoArgs(cmd, args)
+				return arguments()(cmd, args)
 			}
 			if o.compare {
-				return cobra.ExactArgs(2)(cmd, args)
+				return arguments("a first plan", "a second one to compare it with")(cmd, args)
 			}
-			return cobra.ExactArgs(1)(cmd, args)
+			return arguments("TARGET.yaml, or the name of a built-in target")(cmd, args)
 		},
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if o.list {
@@ -106,10 +106,14 @@ func runComparePlans(ctx context.Context, a *app, first, second string, o planOp
 }
 
 func runPlan(ctx context.Context, a *app, target string, o planOptions) error {
-	switch {
-	case o.profile == "" || o.output.dir == "" && !o.dryRun:
-		return usageError{errors.New("plan needs --profile and -o; see 'mirrorloom plan --help'")}
-	case o.output.dir != "" && o.dryRun:
+	needs := []needed{{"--profile", o.profile}}
+	if !o.dryRun {
+		needs = append(needs, needed{"-o", o.output.dir})
+	}
+	if err := lacking("plan", needs...); err != nil {
+		return err
+	}
+	if o.output.dir != "" && o.dryRun {
 		return usageError{errors.New("--dry-run writes nothing and -o says where; leave one of the two out")}
 	}
 	inputs := []string{target, o.profile}

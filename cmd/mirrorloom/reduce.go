@@ -2,10 +2,10 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 	"path/filepath"
+	"runtime"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -23,6 +23,7 @@ type reduceOptions struct {
 	workers  int
 	cycles   []int
 	labelled bool
+	resume   bool
 	output   outputOptions
 }
 
@@ -35,6 +36,7 @@ func (o *reduceOptions) addFlags(f *pflag.FlagSet) {
 	f.IntVar(&o.workers, "workers", 0, "computations at the same time; 0 for one a processor")
 	f.IntSliceVar(&o.cycles, "cycles", nil, "cycles of science steps to use, from 1, with commas; all without")
 	f.BoolVar(&o.labelled, "as-labelled", false, "use every frame as its labels say, whatever the audit finds")
+	f.BoolVar(&o.resume, "resume", false, "go on with the unfinished run that lies beside -o, and keep it there if this one is interrupted")
 	o.output.addFlags(f, "products")
 }
 
@@ -43,7 +45,7 @@ func newReduceCommand(a *app) *cobra.Command {
 	cmd := &cobra.Command{
 		Use:   "reduce NIGHT --sequence SEQ -o RUN",
 		Short: "Turn a night of frames into a spectral cube",
-		Args:  cobra.ExactArgs(1),
+		Args:  arguments("NIGHT, the folder of the frames"),
 		RunE:  func(cmd *cobra.Command, args []string) error { return runReduce(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -52,15 +54,16 @@ func newReduceCommand(a *app) *cobra.Command {
 
 // options turns flags into those of the pipeline.
 func (o *reduceOptions) options(a *app, night string) (reduce.Options, error) {
-	if o.sequence == "" || o.output.dir == "" {
-		return reduce.Options{}, usageError{errors.New("reduce needs --sequence and -o; see 'mirrorloom reduce --help'")}
+	if err := lacking("reduce", needed{"--sequence", o.sequence}, needed{"-o", o.output.dir}); err != nil {
+		return reduce.Options{}, err
 	}
 	if o.workers < 0 {
 		return reduce.Options{}, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}
 	}
 	opts := reduce.Options{
 		Night: night, Sequence: o.sequence, MemoryBytes: int64(o.memory), Workers: o.workers, AsLabelled: o.labelled, Cycles: o.cycles,
-		Log: a.log, Progress: a.progress(),
+		Log: a.log, Progress: a.progress(), Resume: o.resume,
+		Note: func(clause string) { fmt.Fprintf(a.stderr, "mirrorloom: %s\n", clause) },
 	}
 	for _, p := range o.products {
 		switch p {
@@ -82,12 +85,22 @@ func runReduce(ctx context.Context, a *app, night string, o reduceOptions) error
 	if err != nil {
 		return err
 	}
+	if o.workers > 0 {
+		// The reader, the writer and the garbage collector compute as well.
+		runtime.GOMAXPROCS(o.workers)
+	}
 	var result *reduce.Result
-	err = o.output.write(ctx, func(dir string) (err error) {
+	work := func(dir string) (err error) {
 		opts.Out = dir
 		result, err = reduce.Run(ctx, opts)
 		return err
-	}, night, o.sequence, o.recipe, opts.Recipe.Arc.Use, opts.Recipe.Stars.Use)
+	}
+	inputs := []string{night, o.sequence, o.recipe, opts.Recipe.Arc.Use, opts.Recipe.Stars.Use}
+	if o.resume {
+		err = o.output.resume(ctx, work, reduce.CanResume, inputs...)
+	} else {
+		err = o.output.write(ctx, work, inputs...)
+	}
 	if err != nil {
 		return err
 	}
@@ -114,16 +127,16 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 		fmt.Fprintf(&b, " (%.2f %% of those in coded rows on the detector)", 100*q.CoveredGoodFraction)
 	}
 	b.WriteString("\n")
+	b.WriteString(scienceWords(r))
+	b.WriteString(flagWords(q))
 	if q.DarkChi2Heldout != nil {
-		fmt.Fprintf(&b, "dark columns: mean square %.4f in units of their variance\n", *q.DarkChi2Heldout)
+		fmt.Fprintf(&b, "dark columns: their squares are %.4f times what the errors say; 1 if errors can be believed\n", *q.DarkChi2Heldout)
 	}
 	printForecast(&b, r.Run.Forecast)
 	for _, text := range r.Run.Warnings {
 		fmt.Fprintf(&b, "warning: %s\n", text)
 	}
-	for _, s := range r.Run.Stages {
-		fmt.Fprintf(&b, "%-8s %7.2f s  %7.3f GB\n", s.Name, s.Seconds, float64(s.Bytes)/1e9)
-	}
+	printStages(&b, r.Run.Stages)
 	for _, p := range []struct {
 		written    bool
 		name, file string
@@ -134,4 +147,15 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 	}
 	_, err := io.WriteString(w, b.String())
 	return err
+}
+
+// printStages prints the stages: seconds in all and of the parts of which they are made, as
+// product.Stage has them, and which of these took longest.
+func printStages(b *strings.Builder, stages []product.Stage) {
+	fmt.Fprintf(b, "%-10s %8s %9s %7s %8s %10s %8s %8s  %s\n", "stage", "seconds", "GB", "GB/s", "reading", "computing", "writing", "waiting", "took longest")
+	for _, s := range stages {
+		line := fmt.Sprintf("%-10s %8.2f %9.3f %7.3f %8.2f %10.2f %8.2f %8.2f  %s", s.Name, s.Seconds, float64(s.Bytes)/1e9,
+			s.GBPerS, s.ReadingS, s.ComputingS, s.WritingS, s.WaitingS, s.BottleneckWords())
+		b.WriteString(strings.TrimRight(line, " ") + "\n")
+	}
 }

@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"io"
 
@@ -54,7 +53,7 @@ Faults, each off unless given as --fault NAME=SIZE:
   guide      pointing, rms, elements                shift     image on the detector, rms, pixels
   persist    fraction left from the frame before    neighbour light diffracted between elements
   stale      frames that show the mask before       flip, invert   masks of N frames, or of all`,
-		Args: cobra.ExactArgs(1),
+		Args: arguments("SEQ, the folder of a sequence"),
 		RunE: func(cmd *cobra.Command, args []string) error { return runRehearse(cmd.Context(), a, args[0], o) },
 	}
 	o.addFlags(cmd.Flags())
@@ -63,8 +62,8 @@ Faults, each off unless given as --fault NAME=SIZE:
 
 func (o *rehearseOptions) options() (rehearse.Options, error) {
 	opts := rehearse.Options{Seed: o.seed, Perfect: o.perfect, Noiseless: o.noiseless, NoTruth: o.noTruth, Workers: o.workers}
-	if o.scene == "" || o.output.dir == "" {
-		return opts, usageError{errors.New("rehearse needs --scene and -o; see 'mirrorloom rehearse --help'")}
+	if err := lacking("rehearse", needed{"--scene", o.scene}, needed{"-o", o.output.dir}); err != nil {
+		return opts, err
 	}
 	if o.workers < 0 {
 		return opts, usageError{fmt.Errorf("--workers %d is negative; give 0 for one a processor", o.workers)}

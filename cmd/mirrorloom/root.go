@@ -19,12 +19,14 @@ type app struct {
 	logLevel       string
 	logFile        string
 	log            *zap.Logger
+	profiles       profiles
 }
 
 func (a *app) addFlags(f *pflag.FlagSet) {
 	f.BoolVar(&a.json, "json", false, "print the answer as one JSON object")
 	f.StringVar(&a.logLevel, "log-level", "warn", "messages from this level on: debug, info, warn or error")
 	f.StringVar(&a.logFile, "log-file", "", "write the messages to this file as JSON lines, instead of standard error")
+	a.profiles.addFlags(f)
 }
 
 // answer prints what a command found: as JSON if asked, else as words.
@@ -46,9 +48,12 @@ func run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	root, started := newRootCommand(a)
 	root.SetArgs(args)
 	err := root.ExecuteContext(ctx)
+	if failed := a.profiles.end(); failed != nil && err == nil {
+		err = failed
+	}
 	if err != nil && !*started {
 		// cobra found the mistake before any command began to work.
-		err = usageError{fmt.Errorf("%w; see 'mirrorloom --help'", err)}
+		err = usageError{err}
 	}
 	// A log that cannot be flushed to a terminal is no failure of the run.
 	_ = a.log.Sync()
@@ -69,7 +74,12 @@ Exit codes: 0 whole; 1 error, nothing written; 2 wrong usage; 3 written, but
 not whole; 130 interrupted.`,
 		SilenceUsage:  true,
 		SilenceErrors: true,
-		Args:          cobra.NoArgs,
+		Args: func(cmd *cobra.Command, args []string) error {
+			if len(args) > 0 {
+				return unknownCommand(cmd, args[0])
+			}
+			return nil
+		},
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			if err := cmd.Help(); err != nil {
 				return err
@@ -83,11 +93,12 @@ not whole; 130 interrupted.`,
 			}
 			a.log = log
 			*started = true
-			return nil
+			return a.profiles.start()
 		},
 	}
 	root.SetOut(a.stdout)
 	root.SetErr(a.stderr)
+	root.SetFlagErrorFunc(wrongFlag)
 	a.addFlags(root.PersistentFlags())
 	root.AddCommand(newPlanCommand(a), newRehearseCommand(a), newPairCommand(a), newReduceCommand(a), newCombineCommand(a), newExtractCommand(a), newDemoCommand(a), newVersionCommand(a))
 	return root, started

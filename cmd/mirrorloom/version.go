@@ -14,7 +14,7 @@ func newVersionCommand(a *app) *cobra.Command {
 	return &cobra.Command{
 		Use:   "version",
 		Short: "Print the version",
-		Args:  cobra.NoArgs,
+		Args:  arguments(),
 		RunE:  func(*cobra.Command, []string) error { return runVersion(a) },
 	}
 }

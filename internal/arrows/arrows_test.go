@@ -31,6 +31,7 @@ var rules = []rule{
 	{"pipeline/product", []string{"mirrorloom/hadamard", "mirrorloom/calib", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "product has no algorithm"},
 	{"pipeline/exposure", []string{"mirrorloom/hadamard", "mirrorloom/pipeline/sequence", "mirrorloom/pipeline/product", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce"}, "exposure knows the detector alone"},
 	{"pipeline/parallel", []string{"mirrorloom"}, "parallel knows nothing"},
+	{"pipeline/kept", []string{"mirrorloom/hadamard", "mirrorloom/calib", "mirrorloom/pipeline", "mirrorloom/configs", "mirrorloom/cmd"}, "kept knows no meaning"},
 	{"pipeline/drawing", []string{"mirrorloom"}, "drawing knows nothing"},
 	{"pipeline/trade", []string{"mirrorloom/pipeline/product", "mirrorloom/pipeline/plan", "mirrorloom/pipeline/rehearse", "mirrorloom/pipeline/pair", "mirrorloom/pipeline/extract", "mirrorloom/pipeline/report", "mirrorloom/pipeline/reduce", "mirrorloom/pipeline/demo"}, "trade is below plan"},
 	{"pipeline/nightsheet/typeface", []string{"mirrorloom"}, "typeface knows nothing"},

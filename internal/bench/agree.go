@@ -91,31 +91,36 @@ func sameElements(ours, theirs string) (string, error) {
 	return fmt.Sprintf("within %.1e of the brightest", farthest/brightest), nil
 }
 
-// sameCube demands that SIGNAL differs little against its own errors: the
-// script's interpolant is another one.
-func sameCube(ours, theirs string) (string, error) {
+// sameCube demands that SIGNAL differs by less than so many of its own errors, rms, from
+// a script's, whose interpolant at least is another one.
+func sameCube(small float64, why string) func(ours, theirs string) (string, error) {
+	return func(ours, theirs string) (string, error) {
+		rms, n, err := differenceInSigma(ours, theirs)
+		if err != nil {
+			return "", err
+		}
+		if !(rms < small) {
+			return "", fmt.Errorf("the cubes differ by %g of their errors (rms): they are not the same product", rms)
+		}
+		return fmt.Sprintf("rms difference %.2f sigma over %d voxels that both call good (%s)", rms, n, why), nil
+	}
+}
+
+func differenceInSigma(ours, theirs string) (rms float64, n int, err error) {
 	p, err := openPlanes(imageOf{ours, product.Signal}, imageOf{ours, product.Variance}, imageOf{ours, product.FlagsImage},
 		imageOf{theirs, product.Signal}, imageOf{theirs, product.FlagsImage})
 	if err != nil {
-		return "", err
+		return 0, 0, err
 	}
 	defer p.close()
-	n, square := 0, 0.0
+	square := 0.0
 	err = p.each(func(at []float32) {
-		if int16(at[2])&product.FlagBad != 0 || at[4] != 0 {
+		if int16(at[2])&product.FlagBad != 0 || int16(at[4])&product.FlagBad != 0 {
 			return
 		}
 		d := float64(at[0]-at[3]) / math.Sqrt(float64(at[1]))
 		square += d * d
 		n++
 	})
-	if err != nil {
-		return "", err
-	}
-	rms := math.Sqrt(square / float64(n))
-	const small = 0.15 // sigma
-	if !(rms < small) {
-		return "", fmt.Errorf("the cubes differ by %g of their errors (rms): they are not the same product", rms)
-	}
-	return fmt.Sprintf("rms difference %.2f sigma over %d good voxels (another interpolant)", rms, n), nil
+	return math.Sqrt(square / float64(n)), n, err
 }

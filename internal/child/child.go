@@ -29,13 +29,18 @@ type Usage struct {
 // rule how numpy computes, so that it is run without them.
 var blas = []string{"OPENBLAS_CORETYPE=", "OPENBLAS_L2_SIZE=", "OPENBLAS_NUM_THREADS=", "OMP_NUM_THREADS="}
 
+// Environment is that of the programs that Run runs.
+func Environment() []string {
+	return slices.DeleteFunc(os.Environ(), func(setting string) bool {
+		return slices.ContainsFunc(blas, func(prefix string) bool { return strings.HasPrefix(setting, prefix) })
+	})
+}
+
 // Run runs a program to its end. The error of one that fails shows what it said
 // on standard error.
 func Run(ctx context.Context, name string, args ...string) (Usage, error) {
 	cmd := exec.CommandContext(ctx, name, args...)
-	cmd.Env = slices.DeleteFunc(os.Environ(), func(setting string) bool {
-		return slices.ContainsFunc(blas, func(prefix string) bool { return strings.HasPrefix(setting, prefix) })
-	})
+	cmd.Env = Environment()
 	var stderr bytes.Buffer
 	cmd.Stderr = &stderr
 	start := time.Now()

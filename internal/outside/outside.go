@@ -50,6 +50,17 @@ func Program(t testing.TB, name string, args ...string) string {
 	return run(t, path, args...)
 }
 
+// Generator runs the Go program in folder dir, a module of its own, and returns
+// its standard output. Its modules are fetched if they are not there.
+func Generator(t testing.TB, dir string, args ...string) string {
+	t.Helper()
+	dir = filepath.Join(Root(t), dir)
+	if _, err := output(t.Context(), "go", "-C", dir, "mod", "download"); err != nil {
+		missing(t, "modules of "+dir+", nor could they be fetched: "+err.Error())
+	}
+	return run(t, "go", append([]string{"-C", dir, "run", "."}, args...)...)
+}
+
 // Script is Python outside of a test. The error names ErrMissing where Python or one
 // of its modules is.
 func Script(ctx context.Context, script string, args ...string) (string, error) {

@@ -34,6 +34,7 @@ func checks() []check {
 		peakMemory(),
 		extractCost(),
 		interrupts(),
+		resumes(),
 		demoNight("optical", "demo", "demo", 0.6),
 		// The figure of 60 % is that of `mirrorloom demo`; this target closes almost
 		// half of the rows, where its strips end.

@@ -215,13 +215,18 @@ func TestCombineRecords(t *testing.T) {
 		a.flags[i], b.flags[i] = 0, 0
 		a.variance[i], b.variance[i] = 1, 1
 	}
+	chi2 := 1.4
 	b.exit, b.primary.RecipeSHA = 3, "r2"
+	a.warnings, a.chi2 = []string{"frame f00007.fits is striped"}, &chi2
 	result, err := runAll(t, dir, []*fake{a, b}, 0, 1)
 	require.NoError(t, err)
 	require.Len(t, result.Degraded, 1)
 	require.Contains(t, result.Degraded[0], "run1 is not whole itself")
 	require.Equal(t, product.ExitDegraded, result.Run.Exit)
+	require.Len(t, result.Run.Warnings, 4)
 	require.Contains(t, result.Run.Warnings[1], "times the light of")
+	require.Contains(t, result.Run.Warnings[2], "run0: frame f00007.fits is striped")
+	require.Contains(t, result.Run.Warnings[3], "run0: its dark columns show 1.40 times the squares")
 	out := filepath.Join(dir, "out")
 	f, err := fitsutil.Open(filepath.Join(out, product.CubeFile))
 	require.NoError(t, err)

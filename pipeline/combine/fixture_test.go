@@ -23,6 +23,8 @@ type fake struct {
 	primary          product.Provenance
 	dwell            float64
 	exit             int
+	warnings         []string
+	chi2             *float64        // of the dark columns
 	cards            []fitsutil.Card // of SIGNAL
 	signal, variance []float32
 	flags            []int16
@@ -85,7 +87,7 @@ func (f *fake) write(t require.TestingT) {
 	require.NoError(t, c.AppendTable(l.Table()))
 	require.NoError(t, c.Commit())
 	require.NoError(t, fitsutil.WriteAtomic(filepath.Join(f.dir, product.LedgerFile), l.WriteCSV))
-	run := product.Run{Schema: product.RunSchema, Settings: map[string]any{"night": f.dir}, Exit: f.exit}
+	run := product.Run{Schema: product.RunSchema, Settings: map[string]any{"night": f.dir}, Exit: f.exit, Warnings: f.warnings, Quality: product.Quality{DarkChi2Heldout: f.chi2}}
 	require.NoError(t, fitsutil.WriteAtomic(filepath.Join(f.dir, product.RunFile), run.Write))
 }
 

@@ -65,7 +65,7 @@ func (c *combination) degraded() []string {
 	}
 	for _, m := range c.members {
 		if m.run.Exit != 0 {
-			all = append(all, fmt.Sprintf("%s is not whole itself: its report says why", m.name))
+			all = append(all, fmt.Sprintf("%s is not whole itself (exit code %d): its report says why", m.name, m.run.Exit))
 		}
 	}
 	return all
@@ -78,6 +78,9 @@ func bit(flag int16) int { return int(math.Round(math.Log2(float64(flag)))) }
 const (
 	lightSigmas = 5
 	lightPart   = 0.03
+	// darkSlack is by how much the dark columns' chi-square may exceed 1: errors then are 3 %
+	// too small, as much as a clean night is allowed.
+	darkSlack = 0.06
 )
 
 // warnings are what a user should know before trusting the mean of the runs.
@@ -87,6 +90,14 @@ func (c *combination) warnings() []string {
 		if d := math.Abs(r.Light - 1); r.LightErr > 0 && d > lightPart && d > lightSigmas*r.LightErr {
 			all = append(all, fmt.Sprintf("%s has %.3f ± %.3f times the light of %s where both are good: clouds, another sky or another seeing; the mean is between the two, unless sky and flux are calibrated first",
 				c.members[i+1].name, r.Light, r.LightErr, c.members[0].name))
+		}
+	}
+	for _, m := range c.members {
+		for _, text := range m.run.Warnings {
+			all = append(all, fmt.Sprintf("of %s: %s", m.name, text))
+		}
+		if chi2 := m.run.Quality.DarkChi2Heldout; chi2 != nil && *chi2 > 1+darkSlack {
+			all = append(all, fmt.Sprintf("of %s: its dark columns show %.2f times the squares that its errors allow; look at its report before you trust the mean", m.name, *chi2))
 		}
 	}
 	for i, m := range c.members {

@@ -13,6 +13,7 @@ import (
 	"go.uber.org/zap"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/version"
@@ -191,7 +192,7 @@ func (c *combination) make(ctx context.Context) error {
 func (c *combination) result(ctx context.Context) (*Result, error) {
 	degraded := c.degraded()
 	run := &product.Run{
-		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
+		Schema: product.RunSchema, Version: version.Version, CPULevel: hadamard.CPULevel(),
 		Inputs: c.inputs(), Quality: c.quality(), Combined: c.list,
 		Settings: map[string]any{"runs": c.opts.Runs, "memory_bytes": c.opts.MemoryBytes, "workers": c.opts.Workers},
 		Warnings: append(append([]string{}, degraded...), c.warnings()...),

@@ -129,7 +129,7 @@ func (d *Doc) wrong(n *yaml.Node, path, wanted, cure string) error {
 func suggestion(key string, known []field) string {
 	best, bestDistance := "", 3
 	for _, f := range known {
-		distance := editDistance(strings.ToLower(key), f.key)
+		distance := EditDistance(strings.ToLower(key), f.key)
 		if strings.HasPrefix(f.key, key+"_") {
 			distance = 0
 		}
@@ -147,9 +147,9 @@ func suggestion(key string, known []field) string {
 	return "the keys here are " + strings.Join(keys, ", ")
 }
 
-// editDistance is the Levenshtein distance of two words in bytes, counted no
+// EditDistance is the Levenshtein distance of two words in bytes, counted no
 // further than words of 64 bytes, beyond which nothing is alike.
-func editDistance(a, b string) int {
+func EditDistance(a, b string) int {
 	if len(a) > 64 || len(b) > 64 {
 		return 64
 	}

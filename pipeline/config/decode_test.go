@@ -207,8 +207,8 @@ func TestProgrammingFaults(t *testing.T) {
 
 func TestEditDistance(t *testing.T) {
 	// Levenshtein's textbook pair, and the edges.
-	require.Equal(t, 3, editDistance("kitten", "sitting"))
-	require.Equal(t, 0, editDistance("pitch_um", "pitch_um"))
-	require.Equal(t, 4, editDistance("", "abcd"))
-	require.Equal(t, 64, editDistance(strings.Repeat("a", 65), "a"))
+	require.Equal(t, 3, EditDistance("kitten", "sitting"))
+	require.Equal(t, 0, EditDistance("pitch_um", "pitch_um"))
+	require.Equal(t, 4, EditDistance("", "abcd"))
+	require.Equal(t, 64, EditDistance(strings.Repeat("a", 65), "a"))
 }

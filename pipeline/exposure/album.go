@@ -74,6 +74,13 @@ func (a *Album) Done(f *Frame) error {
 	return f.file.Release()
 }
 
+// CountInto has what is read of the frames add to t.
+func (a *Album) CountInto(t *fitsutil.Traffic) {
+	for _, f := range a.Frames {
+		f.file.CountInto(t)
+	}
+}
+
 // Close closes all frames.
 func (a *Album) Close() error {
 	var err error

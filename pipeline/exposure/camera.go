@@ -7,7 +7,6 @@ import (
 
 	"mirrorloom/calib"
 	"mirrorloom/calib/physics"
-	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/instrument"
 )
 
@@ -142,111 +141,6 @@ func equal(a, b []float64) bool {
 		}
 	}
 	return true
-}
-
-// Scratch is the memory of one reader. Reuse it.
-type Scratch struct {
-	raw, overscan   []float32
-	flags           []calib.Flag
-	level, variance []float64
-}
-
-func grow[T any](s []T, n int) []T {
-	if cap(s) < n {
-		return make([]T, n)
-	}
-	return s[:n]
-}
-
-// Marked is called with the flags found in a block of pixels: rows of width w
-// that begin at active pixel (x, y).
-type Marked func(flags []calib.Flag, x, y, w int)
-
-// Read fills dst, [row][column], with rows y0..y1-1 of a frame in electrons
-// above the bias level, and returns how many pixels are saturated. Saturated
-// pixels, and those without a value, which read as 0 and count as bad, are
-// reported to mark.
-func (c *Camera) Read(dst []float32, im *fitsutil.Image, y0, y1 int, s *Scratch, mark Marked) (saturated int, err error) {
-	for i := range c.Amplifiers {
-		a := &c.Amplifiers[i]
-		first, last := max(y0, a.Place.Y0), min(y1, a.Place.Y0+a.Place.Raw.Height())
-		if first >= last {
-			continue
-		}
-		n, err := c.readAmplifier(dst, im, a, y0, first, last, s, mark)
-		if err != nil {
-			return 0, err
-		}
-		saturated += n
-	}
-	return saturated, nil
-}
-
-func (c *Camera) readAmplifier(dst []float32, im *fitsutil.Image, a *Amplifier, y0, first, last int, s *Scratch, mark Marked) (saturated int, err error) {
-	x0, x1, rawY0, _ := a.Place.Raw.Bounds0()
-	rawFirst := rawY0 + first - a.Place.Y0
-	w, h := x1-x0, last-first
-	s.raw = grow(s.raw, w*h)
-	if err := im.ReadSection(s.raw, x0, x1, rawFirst, rawFirst+h); err != nil {
-		return 0, err
-	}
-	if err := a.rowLevels(im, rawFirst, h, s); err != nil {
-		return 0, err
-	}
-	s.flags = grow(s.flags, w*h)
-	clear(s.flags)
-	saturated = calib.FlagSaturated(s.flags, s.raw, c.saturationADU)
-	found := saturated > 0
-	for y := range h {
-		row := s.raw[y*w : (y+1)*w]
-		level := s.level[y]
-		if len(c.linearity) > 0 {
-			calib.ToElectrons(row, level, 1)
-			calib.Linearise(row, c.linearity)
-			level = 0
-		}
-		calib.ToElectrons(row, level, a.Gain)
-		for x, v := range row {
-			if v != v {
-				row[x], found = 0, true
-				s.flags[y*w+x] |= calib.BadPixel
-			}
-		}
-		copy(dst[(first+y-y0)*c.Columns+a.Place.X0:], row)
-	}
-	if found {
-		mark(s.flags, a.Place.X0, first, w)
-	}
-	return saturated, nil
-}
-
-// rowLevels puts the bias levels in ADU of h rows into s.level: of the
-// overscan, read with the rows that its smoothing needs on both sides, so that
-// a level does not depend on where a strip ends.
-func (a *Amplifier) rowLevels(im *fitsutil.Image, rawFirst, h int, s *Scratch) error {
-	s.level, s.variance = grow(s.level, h), grow(s.variance, h)
-	if !a.hasOverscan {
-		for y := range s.level {
-			s.level[y] = a.biasADU
-		}
-		return nil
-	}
-	x0, x1, y0, y1 := a.overscan.Bounds0()
-	first := max(y0, rawFirst-a.levels.HalfWindow)
-	last := min(y1, rawFirst+h+a.levels.HalfWindow)
-	s.overscan = grow(s.overscan, (x1-x0)*(last-first))
-	if err := im.ReadSection(s.overscan, x0, x1, first, last); err != nil {
-		return err
-	}
-	if err := a.levels.Levels(s.level, s.variance, s.overscan, rawFirst-first); err != nil {
-		return err
-	}
-	for y, v := range s.level {
-		if math.IsNaN(v) {
-			return fmt.Errorf("no value in the overscan of raw row %d; is the profile's overscan section right?", rawFirst+y+1)
-		}
-	}
-	return nil
 }
 
 // Merge adds the flags of a block to those of all columns from row y0 on.

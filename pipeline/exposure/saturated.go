@@ -16,7 +16,10 @@ func (c *Camera) Saturated(im *fitsutil.Image, y int, s *Scratch, mark Marked) e
 		x0, x1, rawY0, _ := p.Raw.Bounds0()
 		raw := rawY0 + y - p.Y0
 		s.raw = grow(s.raw, x1-x0)
-		if err := im.ReadSection(s.raw, x0, x1, raw, raw+1); err != nil {
+		if err := s.stored.Read(im, raw, raw+1); err != nil {
+			return err
+		}
+		if err := s.stored.Convert(s.raw, x0, raw); err != nil {
 			return err
 		}
 		s.flags = grow(s.flags, x1-x0)

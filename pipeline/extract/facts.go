@@ -4,6 +4,9 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"runtime"
+
+	"mirrorloom/pipeline/parallel"
 )
 
 // SumFact tells what the errors of independent voxels would miss in a sum around a
@@ -31,8 +34,7 @@ func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error
 	if element < half || element >= c.Elements-half || row < half || row >= c.Rows-half {
 		return nil, nil
 	}
-	var facts []SumFact
-	for _, sum := range []struct {
+	sums := []struct {
 		what                                  string
 		firstElement, lastElement, rows, band int
 	}{
@@ -41,7 +43,10 @@ func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error
 		{fmt.Sprintf("%d neighbouring wavelengths of one voxel", factVoxels), element, element, 0, factVoxels},
 		{fmt.Sprintf("%d × %d elements and rows, %d wavelengths", factSide, factSide, factVoxels), element - half, element + half, half, factVoxels},
 		{fmt.Sprintf("all elements of a row, %d wavelengths", factChannels), 0, c.Elements - 1, 0, factChannels},
-	} {
+	}
+	facts := make([]SumFact, len(sums))
+	return facts, parallel.Do(ctx, runtime.GOMAXPROCS(0), len(sums), func(_, i int) error {
+		sum := sums[i]
 		var cells []cell
 		for y := row - sum.rows; y <= row+sum.rows; y++ {
 			for j := sum.firstElement; j <= sum.lastElement; j++ {
@@ -49,12 +54,9 @@ func (c *Cube) SumFacts(ctx context.Context, element, row int) ([]SumFact, error
 			}
 		}
 		ratio, err := c.errorRatio(ctx, cells, sum.band)
-		if err != nil {
-			return nil, err
-		}
-		facts = append(facts, SumFact{sum.what, ratio})
-	}
-	return facts, nil
+		facts[i] = SumFact{sum.what, ratio}
+		return err
+	})
 }
 
 // errorRatio is error over naive error of a sum over cells: the median of the

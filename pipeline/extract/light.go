@@ -2,6 +2,8 @@ package extract
 
 import (
 	"math"
+
+	"mirrorloom/calib"
 )
 
 // lightReader rebuilds from the cube the light of all elements at the detector's
@@ -16,6 +18,7 @@ type lightReader struct {
 	chunkRow  int
 	chunkRows int
 	traces    map[int][][]float32 // by trace row: [element][column]
+	places    *calib.RowPlaces    // of the voxels' centres
 }
 
 // chunkBytes of SIGNAL are read at a time.
@@ -26,7 +29,8 @@ const mostChunkRows = 16
 
 func (c *Cube) newLightReader(electrons []float64) *lightReader {
 	rows := min(max(chunkBytes/(4*c.Elements*c.Grid.Count), 1), mostChunkRows)
-	return &lightReader{c: c, electrons: electrons, chunkRow: -1, chunkRows: rows, traces: map[int][][]float32{}}
+	return &lightReader{c: c, electrons: electrons, chunkRow: -1, chunkRows: rows, traces: map[int][][]float32{},
+		places: calib.NewRowPlaces(c.geometry, c.Elements, c.centres)}
 }
 
 // row is the light of detector row y, [element][column], electrons of a science
@@ -84,6 +88,7 @@ func (r *lightReader) trace(y0 int) error {
 	}
 	light := table[float32](c.Elements, c.noise.Columns)
 	values, places := make([]float64, c.Grid.Count), make([]float64, c.Grid.Count)
+	r.places.SetRow(float64(y0))
 	for j := range light {
 		for l := range values {
 			v := r.voxel(j, y0, l)
@@ -95,7 +100,7 @@ func (r *lightReader) trace(y0 int) error {
 				values[l] = 0 // no data: as good as no light
 			}
 		}
-		c.geometry.Places(places, float64(j), float64(y0), c.centres)
+		r.places.Places(places, float64(j))
 		spread(light[j], values, places)
 	}
 	r.traces[y0] = light

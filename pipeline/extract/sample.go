@@ -20,8 +20,9 @@ type Sample struct {
 	Sky float64
 	// Scale is the measured error scale.
 	Scale float64
-	// Good voxels may be added up.
-	Good bool
+	// Good voxels may be added up; Flags are those of FLAGS.
+	Good  bool
+	Flags int16
 }
 
 // Deviation is the parts of the variance of a sum of voxels, electrons squared: that of the
@@ -50,7 +51,7 @@ func (c *Cube) Samples(ctx context.Context, places []Place) ([]Sample, error) {
 		list[n] = Sample{
 			Sky:   s.skyPart[i] * sky,
 			Light: float64(s.signal[i][p.Channel]) / factor, Variance: variance / (factor * factor),
-			Scale: scale[n], Good: s.good(i, p.Channel),
+			Scale: scale[n], Good: s.good(i, p.Channel), Flags: s.flags[i][p.Channel],
 		}
 	}
 	return list, nil

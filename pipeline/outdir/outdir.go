@@ -5,7 +5,8 @@
 // refused unless it is to be replaced, and then the old one stays until the new
 // one is whole. What a run reads is never replaced by what it writes. An
 // interrupted run leaves no `.part`; one left by a killed run is cleared by the
-// next, while a second run at the same time is refused.
+// next, while a second run at the same time is refused. A run that can go on where an
+// earlier one ended begins with Resume, which clears nothing, and may end with Leave.
 package outdir
 
 import (
@@ -28,8 +29,8 @@ var ErrInput = errors.New("the output folder would replace an input")
 // ErrBusy marks a folder that another run is writing just now.
 var ErrBusy = errors.New("another run is writing this output folder")
 
-// Dir is an output folder being made. Exactly one of Commit and Abort ends it;
-// Abort after Commit does nothing, so that it can be deferred.
+// Dir is an output folder being made. Exactly one of Commit, Leave and Abort ends it;
+// Abort after the others does nothing, so that it can be deferred.
 type Dir struct {
 	final, part string
 	lock        *os.File // the .part folder itself, locked while we live
@@ -41,6 +42,15 @@ type Dir struct {
 // inputs, files or folders that the run reads, is path or lies in it; ErrBusy if
 // another run holds the same `.part`.
 func Begin(path string, replace bool, inputs ...string) (*Dir, error) {
+	return begin(path, replace, false, inputs)
+}
+
+// Resume is Begin, but what an earlier run left in `<path>.part` stays there.
+func Resume(path string, replace bool, inputs ...string) (*Dir, error) {
+	return begin(path, replace, true, inputs)
+}
+
+func begin(path string, replace, resume bool, inputs []string) (*Dir, error) {
 	if path == "" {
 		return nil, errors.New("no output folder given; name one with -o")
 	}
@@ -58,7 +68,7 @@ func Begin(path string, replace bool, inputs ...string) (*Dir, error) {
 	if err := d.makeParents(); err != nil {
 		return nil, err
 	}
-	if err := d.claim(); err != nil {
+	if err := d.claim(resume); err != nil {
 		d.removeParents()
 		return nil, err
 	}
@@ -127,8 +137,9 @@ func refuseUnfit(final string, replace bool) error {
 	return nil
 }
 
-// claim makes the .part folder and locks it; what a killed run left is cleared.
-func (d *Dir) claim() error {
+// claim makes the .part folder and locks it; what a killed run left is cleared unless it
+// is to be gone on with.
+func (d *Dir) claim(resume bool) error {
 	err := os.Mkdir(d.part, 0o755)
 	stale := errors.Is(err, fs.ErrExist)
 	if err != nil && !stale {
@@ -146,7 +157,7 @@ func (d *Dir) claim() error {
 		return fmt.Errorf("lock %s: %w", d.part, err)
 	}
 	d.lock = f
-	if !stale {
+	if !stale || resume {
 		return nil
 	}
 	entries, err := os.ReadDir(d.part)
@@ -204,7 +215,17 @@ func (d *Dir) swap() error {
 	return os.RemoveAll(aside)
 }
 
-// Abort removes the unfinished folder. After Commit it does nothing.
+// Leave ends the work and leaves the unfinished folder for a later Resume.
+func (d *Dir) Leave() error {
+	if d.lock == nil {
+		return errors.New("internal error: output folder left twice")
+	}
+	err := d.lock.Close()
+	d.lock = nil
+	return err
+}
+
+// Abort removes the unfinished folder. After Commit and Leave it does nothing.
 func (d *Dir) Abort() error {
 	if d.lock == nil {
 		return nil

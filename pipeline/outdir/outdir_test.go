@@ -142,3 +142,29 @@ func TestInputsAreNotReplaced(t *testing.T) {
 		require.NoError(t, d.Abort())
 	}
 }
+
+// What an earlier run left is there for one that resumes, and cleared by one that does
+// not; a run that is left can be gone on with, again and again.
+func TestResumeFindsWhatWasLeft(t *testing.T) {
+	path := filepath.Join(t.TempDir(), "deep", "out")
+	d, err := Resume(path, false)
+	require.NoError(t, err)
+	require.Empty(t, names(t, d.Path()))
+	require.NoError(t, os.WriteFile(filepath.Join(d.Path(), "half"), nil, 0o644))
+	_, err = Resume(path, false)
+	require.ErrorIs(t, err, ErrBusy)
+	require.NoError(t, d.Leave())
+	require.NoError(t, d.Abort(), "nothing after Leave")
+	require.Error(t, d.Leave())
+	for range 2 {
+		d, err = Resume(path, false)
+		require.NoError(t, err)
+		require.Equal(t, []string{"half"}, names(t, d.Path()))
+		require.NoError(t, d.Leave())
+	}
+	d, err = Begin(path, false)
+	require.NoError(t, err)
+	require.Empty(t, names(t, d.Path()))
+	require.NoError(t, d.Commit())
+	require.NoDirExists(t, path+".part")
+}

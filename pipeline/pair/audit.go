@@ -59,6 +59,11 @@ type AuditFinding struct {
 
 // Warnings are sentences for a user: what was found, and what was done about it.
 func (a *Audit) Warnings() []string {
+	return a.warnings(func(*AuditFinding) bool { return true })
+}
+
+// warnings are Warnings, of the frames' findings those that are wanted.
+func (a *Audit) warnings(wanted func(*AuditFinding) bool) []string {
 	if a == nil {
 		return nil
 	}
@@ -73,12 +78,17 @@ func (a *Audit) Warnings() []string {
 		if c.Whole != "" {
 			all = append(all, fmt.Sprintf("cycle %d: its frames are %s (odds %s to 1)", c.Cycle, c.Whole, odds(c.WholeLog10Odds)))
 		}
-		for _, f := range c.Findings {
-			all = append(all, f.File+" "+f.Text)
+		for i := range c.Findings {
+			if f := &c.Findings[i]; wanted(f) {
+				all = append(all, f.sentence())
+			}
 		}
 	}
 	return all
 }
+
+// sentence is a finding with its file.
+func (f *AuditFinding) sentence() string { return "frame " + f.File + " " + f.Text }
 
 // Inverted tells whether a whole cycle's masks are inverted.
 func (a *Audit) Inverted() bool {
@@ -275,36 +285,35 @@ func (m *matcher) describe(c *audit.CycleReport, repairs bool) AuditCycle {
 	return out
 }
 
-// words describe a finding, without the file.
+// words describe a finding, without the file: what is wrong, what was done, how sure it is.
 func (f *AuditFinding) words(repairs bool) string {
 	var b strings.Builder
-	fmt.Fprintf(&b, "does not show the mask of step %d: ", f.Step)
 	switch audit.Kind(f.Kind) {
 	case audit.Exchanged, audit.Moved, audit.Stale:
-		fmt.Fprintf(&b, "it shows that of step %d", f.Shows)
+		fmt.Fprintf(&b, "is labelled step %d but shows the mask of step %d", f.Step, f.Shows)
 		if audit.Kind(f.Kind) == audit.Exchanged {
-			b.WriteString(", whose frame shows this one's")
+			b.WriteString(" (the two steps' frames are exchanged)")
 		}
 	case audit.Inverted:
-		b.WriteString("it shows it inverted")
+		fmt.Fprintf(&b, "shows the mask of its step %d inverted", f.Step)
 	case audit.Flipped:
-		b.WriteString("it shows it flipped along the dispersion")
+		fmt.Fprintf(&b, "shows the mask of its step %d flipped along the dispersion", f.Step)
 	case audit.Slipped:
-		fmt.Fprintf(&b, "it shows it shifted by %+d mirrors along u", f.Mirrors)
+		fmt.Fprintf(&b, "shows the mask of its step %d shifted by %+d mirrors along u", f.Step, f.Mirrors)
 	default:
-		b.WriteString("it shows none that is known")
+		fmt.Fprintf(&b, "shows neither the mask of its step %d nor another one of the sequence", f.Step)
 	}
-	fmt.Fprintf(&b, " (odds %s to 1, %.2g sigma a voxel)", odds(f.Log10Odds), f.Sigma)
 	switch {
 	case f.Harmless:
-		b.WriteString("; harmless, used as it is")
+		b.WriteString("; used as it is, since that changes no voxel noticeably")
 	case !repairs:
 		b.WriteString("; used as labelled")
 	case f.Repaired:
-		b.WriteString("; used for that step")
+		fmt.Fprintf(&b, "; used for step %d", f.Shows)
 	default:
 		b.WriteString("; not used")
 	}
+	fmt.Fprintf(&b, "; odds %s to 1, voxels change by %.2g of their errors", odds(f.Log10Odds), f.Sigma)
 	return b.String()
 }
 

@@ -1,7 +1,9 @@
 package pair
 
 import (
+	"fmt"
 	"slices"
+	"strconv"
 	"strings"
 	"unicode"
 
@@ -38,6 +40,43 @@ func (m *matcher) night() *Night {
 		n.Ledger = append(n.Ledger, l.entry(0))
 	}
 	return n
+}
+
+// Unserved says what steps have no frame that can be used, a sentence a reason: none where
+// every step has one.
+func (n *Night) Unserved() []string {
+	var science, others []string
+	for _, e := range n.Ledger {
+		switch {
+		case e.Step == 0 || e.Verdict.Used():
+		case sequence.Kind(e.Kind) == sequence.Science:
+			science = append(science, strconv.Itoa(e.Step))
+		default:
+			others = append(others, strconv.Itoa(e.Step))
+		}
+	}
+	var all []string
+	for _, part := range []struct {
+		steps      []string
+		of, advice string
+	}{{science, "science", "repeat them, or see how reduce restores them from the dark columns"}, {others, "calibration", "repeat them, or see what reduce does without"}} {
+		if len(part.steps) > 0 {
+			all = append(all, fmt.Sprintf("%s without a frame that can be used: %s; %s", count(len(part.steps), part.of+" step"), few(part.steps), part.advice))
+		}
+	}
+	if n.Audit.Inverted() {
+		all = append(all, "every mask of a cycle is inverted")
+	}
+	return all
+}
+
+// few lists steps, the first ones where they are many.
+func few(steps []string) string {
+	const most = 12
+	if len(steps) <= most {
+		return strings.Join(steps, ", ")
+	}
+	return fmt.Sprintf("%s and %d more", strings.Join(steps[:most], ", "), len(steps)-most)
 }
 
 func (l *label) frame(i int, kind sequence.Kind) Frame {

@@ -15,8 +15,8 @@ var suffixes = [...]string{".fits", ".fits.gz"}
 
 const otherCompression = ".fits.fz"
 
-// list gives the names of the frames in a folder, sorted.
-func list(dir string) ([]string, error) {
+// List gives the names of the frames in a folder, sorted. The error is an *Error.
+func List(dir string) ([]string, error) {
 	entries, err := os.ReadDir(dir)
 	if err != nil {
 		return nil, folderError(dir, err)

@@ -89,7 +89,7 @@ func (n *Night) Of(kind sequence.Kind) []Frame {
 // instrument or another size as a whole, or serves no science step; a
 // *fitsutil.Error when the scratch folder is full; ctx.Err when cancelled.
 func Run(ctx context.Context, seq *sequence.Sequence, opts Options, progress func(done, total int)) (*Night, error) {
-	names, err := list(opts.Night)
+	names, err := List(opts.Night)
 	if err != nil {
 		return nil, err
 	}

@@ -32,25 +32,30 @@ func Print(w io.Writer, l product.Ledger, verbose bool) error {
 	return nil
 }
 
-// Print writes what the audit found, a line for each cycle and for each finding; nothing
-// without an audit.
-func (a *Audit) Print(w io.Writer) error {
+// Print writes what the audit found behind the ledger l that Print wrote: a line a cycle, and a
+// line for each frame whose row, with the finding in its note, was not shown. Nothing without
+// an audit.
+func (a *Audit) Print(w io.Writer, l product.Ledger, verbose bool) error {
 	if a == nil {
 		return nil
 	}
 	var b strings.Builder
 	b.WriteString("\n")
 	for _, c := range a.Cycles {
-		fmt.Fprintf(&b, "audit of cycle %d: dark columns %.3f times their noise in %d samples of %d detector rows", c.Cycle, c.Chi2, c.Samples, c.Rows)
+		fmt.Fprintf(&b, "audit of cycle %d: squares of the dark columns' decodes are %.3f times what noise makes them, in %d samples of %d detector rows", c.Cycle, c.Chi2, c.Samples, c.Rows)
 		if len(c.Findings) == 0 && c.Whole == "" && !c.AllInverted {
-			b.WriteString("; every frame shows the mask of its step")
+			b.WriteString("; no frame was found to show another mask than that of its step")
 		}
 		if !c.Sure {
-			b.WriteString("; some exchanges of frames could not be told")
+			b.WriteString("; the light is too faint to exclude every exchange of two frames")
 		}
 		b.WriteString("\n")
 	}
-	for _, text := range a.Warnings() {
+	shown := map[string]bool{}
+	for _, e := range l {
+		shown[e.File] = verbose || e.Verdict != product.OK
+	}
+	for _, text := range a.warnings(func(f *AuditFinding) bool { return !shown[f.File] }) {
 		b.WriteString(text + "\n")
 	}
 	if _, err := io.WriteString(w, b.String()); err != nil {

@@ -19,19 +19,26 @@ const (
 	FlagBad = 127
 )
 
-// Flag is a bit of FLAGS with its name.
+// Flag is a bit of FLAGS with its name and what it says of a voxel.
 type Flag struct {
 	Bit  int16
 	Name string
+	Says string
 }
 
 // Flags lists the bits in the order of their values.
 func Flags() []Flag {
 	return []Flag{
-		{FlagNoData, "NODATA"}, {FlagSaturated, "SATURATED"}, {FlagBadPixel, "BADPIXEL"},
-		{FlagLowFlat, "LOWFLAT"}, {FlagLost, "LOST"}, {FlagPartial, "PARTIAL"},
-		{FlagNominalWave, "NOMINALWAVE"}, {FlagRestored, "RESTORED"}, {FlagSkyLine, "SKYLINE"},
-		{FlagSentinel, "SENTINEL"},
+		{FlagNoData, "NODATA", "no light of it was recorded: it lies off the detector, or in a closed, sentinel or unlit row"},
+		{FlagSaturated, "SATURATED", "a sample that reaches it was saturated and could not be restored"},
+		{FlagBadPixel, "BADPIXEL", "a pixel that reaches it is bad, or was struck by cosmic rays in samples that cannot be told"},
+		{FlagLowFlat, "LOWFLAT", "too little light comes there to divide by the response, or no flat was measured"},
+		{FlagLost, "LOST", "too many frames are missing to decode it"},
+		{FlagPartial, "PARTIAL", "less than 99 % of it is covered by data"},
+		{FlagNominalWave, "NOMINALWAVE", "its wavelength is the profile's: no arc told it"},
+		{FlagRestored, "RESTORED", "samples of it were lost or struck, and restored from the dark columns"},
+		{FlagSkyLine, "SKYLINE", "a bright line of the sky was subtracted there"},
+		{FlagSentinel, "SENTINEL", "it lies in a sentinel row"},
 	}
 }
 

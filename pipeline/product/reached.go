@@ -33,8 +33,9 @@ type Reached struct {
 	Name   string  `json:"name"`
 	FromNM float64 `json:"from_nm"`
 	ToNM   float64 `json:"to_nm"`
-	// Plan is the forecast for all that was planned, Taken that for the frames used and the
-	// voxels that are good, with their part of the weight.
+	// Plan is the forecast for all that was planned, Taken that for the frames used, the
+	// voxels that are good, with their part of the weight, and the error of the frames'
+	// throughput that the reduction found.
 	Plan  Expected `json:"plan"`
 	Taken Expected `json:"taken"`
 	Good  float64  `json:"good_fraction"`
@@ -44,11 +45,13 @@ type Reached struct {
 	SignalError *float64 `json:"signal_error_e"`
 	Error       *float64 `json:"error_e"`
 	SNR         *float64 `json:"snr"`
-	// Ratio is SNR over the plan's. It is the product of TimeRatio (by the S/N for the frames
-	// used over the plan's), LightRatio (Signal over Taken's) and 1/NoiseRatio (Error over
-	// Taken's Sigma).
+	// Ratio is SNR over the plan's. It is the product of TimeRatio (Taken's S/N over the
+	// plan's), LightRatio (Signal over Taken's) and 1/NoiseRatio (Error over Taken's Sigma).
+	// ThroughputRatio is the part of TimeRatio that the error of the frames' throughput has,
+	// where the plan expected another one; the rest is that of frames and voxels.
 	Ratio           *float64 `json:"ratio"`
 	TimeRatio       *float64 `json:"time_ratio"`
+	ThroughputRatio *float64 `json:"throughput_ratio"`
 	LightRatio      *float64 `json:"light_ratio"`
 	LightRatioError *float64 `json:"light_ratio_error"`
 	NoiseRatio      *float64 `json:"noise_ratio"`
@@ -61,8 +64,17 @@ type Reached struct {
 	ErrorScale float64 `json:"error_scale"`
 	Lamps      float64 `json:"lamps"`
 	Throughput float64 `json:"throughput"`
+	// Flags are the parts of the weight whose voxels are not good, by the flags that say so;
+	// a voxel may have several.
+	Flags []FlagPart `json:"flags,omitempty"`
 	// Why says in a sentence what explains Ratio.
 	Why string `json:"why"`
+}
+
+// FlagPart is the part of a measurement's weight whose voxels have a flag.
+type FlagPart struct {
+	Name string  `json:"name"`
+	Part float64 `json:"part"`
 }
 
 // Expected is a forecast of a measurement.

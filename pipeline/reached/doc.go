@@ -28,6 +28,9 @@
 // reduction took the sky off, u is without it.
 //
 // The forecast is made twice: for the plan, and for what was taken: the frames used, the
-// voxels that are good, the throughput's error, the place that stars gave the field. So the
-// ratio of S/N is a product of three: by the frames, by the light, by the noise.
+// voxels that are good, the throughput's error, the place that stars gave the field; once more
+// with the throughput's error that the plan expects. So the ratio of S/N is a product of four:
+// by frames and voxels, by the error of the throughput, by the light, by the noise. It is said
+// to be as forecast where none of them is off beyond its error, and all of it by no more than a
+// forecast is good to.
 package reached

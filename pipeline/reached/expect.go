@@ -43,8 +43,17 @@ func (n *Night) expect(ctx context.Context) ([]measurement, error) {
 	if err != nil {
 		return nil, err
 	}
+	expected := measures // with the plan's error of the throughput
+	if n.ThroughputErr != nil {
+		if expected, _, err = light.Taken(ctx, candidate, n.Cycles, nil); err != nil {
+			return nil, err
+		}
+	}
 	for i, m := range kept {
 		m.taken, m.a = measures[i], voxels[i]
+		if measures[i].Sigma > 0 {
+			m.throughput = expected[i].Sigma / measures[i].Sigma
+		}
 		if m.r, err = light.Beside(ctx, candidate, i); err != nil {
 			return nil, err
 		}

@@ -1,9 +1,12 @@
 package reached
 
 import (
+	"cmp"
 	"context"
 	"fmt"
 	"math"
+	"math/bits"
+	"slices"
 
 	"mirrorloom/pipeline/extract"
 	"mirrorloom/pipeline/forecast"
@@ -69,13 +72,17 @@ func Measure(ctx context.Context, cube string, n Night) (*product.Forecast, erro
 type measurement struct {
 	plan, taken forecast.Measure
 	// outside: the cube has none of its wavelengths.
-	outside      bool
-	a, r         []forecast.Voxel
-	in, beside   sums
-	pixels       extract.Deviation
-	sigma        float64 // of taken, for the voxels that are good
-	scale        float64
+	outside    bool
+	a, r       []forecast.Voxel
+	in, beside sums
+	pixels     extract.Deviation
+	sigma      float64 // of taken, for the voxels that are good
+	scale      float64
+	// throughput is what the error of the frames' throughput that was found makes of the S/N
+	// that the plan's would give; 0 if not known.
+	throughput   float64
 	good         float64
+	flags        []product.FlagPart
 	skyTaken     float64 // of the light in, that which the reduction took off
 	told         bool    // the light beside tells the unwanted light
 	signal, off  float64 // where told: the light, and its error with that of what was taken off
@@ -95,6 +102,7 @@ const leastBeside = 2
 // look sums up the cube's voxels.
 func (m *measurement) look(ctx context.Context, c *extract.Cube, skyTaken bool) error {
 	places, kept, in, err := gather(ctx, c, m.a, skyTaken)
+	m.flags = in.flagParts()
 	if err != nil || len(places) == 0 {
 		return err
 	}
@@ -137,6 +145,21 @@ func (m *measurement) goodPart(kept []forecast.Voxel) (part, sigma float64) {
 type gathered struct {
 	sums
 	scale, skyTaken float64
+	// flagged is the weight of voxels that are not good by the bits of their flags.
+	flagged [16]float64
+	all     float64 // weight
+}
+
+// flagParts are what makes voxels bad, the most frequent flag first.
+func (g *gathered) flagParts() []product.FlagPart {
+	var parts []product.FlagPart
+	for _, f := range product.Flags() {
+		if w := g.flagged[bits.TrailingZeros16(uint16(f.Bit))]; w > 0 && f.Bit&product.FlagBad != 0 {
+			parts = append(parts, product.FlagPart{Name: f.Name, Part: w / g.all})
+		}
+	}
+	slices.SortStableFunc(parts, func(a, b product.FlagPart) int { return cmp.Compare(b.Part, a.Part) })
+	return parts
 }
 
 // gather reads voxels and sums up those that are good.
@@ -151,7 +174,11 @@ func gather(ctx context.Context, c *extract.Cube, list []forecast.Voxel, skyTake
 	}
 	for i, v := range list {
 		s := samples[i]
+		g.all += v.Weight
 		if !s.Good {
+			for b := uint16(s.Flags); b != 0; b &= b - 1 {
+				g.flagged[bits.TrailingZeros16(b)] += v.Weight
+			}
 			continue
 		}
 		places, kept = append(places, all[i]), append(kept, v)
@@ -206,7 +233,7 @@ func (m *measurement) disturbed() bool {
 func (m *measurement) reached(field *product.Measured) product.Reached {
 	w := product.Reached{
 		Name: m.plan.Name, FromNM: m.plan.FromNM, ToNM: m.plan.ToNM, Plan: expected(m.plan.Signal, m.plan.Sigma),
-		Taken: expected(m.in.wanted, m.sigma), Good: m.good, Unwanted: product.UnwantedNone, ErrorScale: m.scale,
+		Taken: expected(m.in.wanted, m.sigma), Good: m.good, Flags: m.flags, Unwanted: product.UnwantedNone, ErrorScale: m.scale,
 	}
 	if m.outside {
 		w.Why = "its wavelengths are not all in this cube"
@@ -233,6 +260,9 @@ func (m *measurement) reached(field *product.Measured) product.Reached {
 	w.Signal, w.SignalError, w.Error, w.SNR, w.NoiseRatio = &signal, &off, &sigma, &snr, &noise
 	if w.Plan.SNR > 0 && w.Taken.Signal > 0 {
 		ratio, time, light, lightError := snr/w.Plan.SNR, w.Taken.SNR/w.Plan.SNR, signal/w.Taken.Signal, off/w.Taken.Signal
+		if m.throughput > 0 {
+			w.ThroughputRatio = &m.throughput
+		}
 		w.Ratio, w.TimeRatio, w.LightRatio, w.LightRatioError = &ratio, &time, &light, &lightError
 	}
 	return w

@@ -2,6 +2,7 @@ package reached_test
 
 import (
 	"context"
+	"fmt"
 	"math"
 	"os"
 	"path/filepath"
@@ -64,7 +65,9 @@ func TestReachedAsForecast(t *testing.T) {
 				lights[line].Add(*w.LightRatio)
 				noises[line].Add(*w.NoiseRatio)
 				pulls[line].Add((*w.LightRatio - 1) / *w.LightRatioError)
-				if w.Why != "as forecast, within the errors" {
+				if as := w.Why == "as forecast, within the errors"; as {
+					require.InDelta(t, 1, *w.Ratio, 0.05, w.Name)
+				} else if !strings.HasSuffix(w.Why, "which its own error explains (S/N × "+fmt.Sprintf("%.2f)", *w.LightRatio)) {
 					words++
 				}
 			}

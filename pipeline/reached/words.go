@@ -1,6 +1,7 @@
 package reached
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -10,7 +11,7 @@ import (
 )
 
 // What is worth a word: light that is off by more than lightWorth and so many of its errors;
-// noise by more than what a forecast is good to; what all measurements share by more than
+// noise, and the S/N, by more than what a forecast is good to; what all measurements share by more than
 // shareWorth; frames by more than factorWorth, causes of noise by more than causeWorth, parts
 // of it and of the voxels by more than those.
 const (
@@ -33,7 +34,7 @@ func (n *Night) explain(f *product.Forecast) {
 		}
 	}
 	if frames != "" {
-		f.Notes = append(f.Notes, sentence(fmt.Sprintf("%s; their noise is that of %.3g of %d cycles", frames, f.CyclesReached, f.Cycles)))
+		f.Notes = append(f.Notes, sentence(fmt.Sprintf("%s: the noise is that of %.3g whole cycles, of %d planned", frames, f.CyclesReached, f.Cycles)))
 	}
 	if note := alike(f.Wanted); note != "" {
 		f.Notes = append(f.Notes, note)
@@ -72,40 +73,109 @@ func were(n int) string {
 	return "were"
 }
 
-// why says what explains a measurement's ratio.
+// why says what explains a measurement's ratio, what changed the S/N most first.
 func why(f *product.Forecast, w *product.Reached, frames string) string {
 	switch {
 	case w.Plan.SNR == 0:
 		return "the plan does not see it"
 	case w.SNR == nil:
-		return "no voxel of it is good in this cube"
+		return "no voxel of it is good in this cube" + flagWords(w.Flags)
 	case w.Ratio == nil:
 		return "the forecast has no light in the voxels that are good"
 	}
+	causes := causesOf(f, w, frames)
+	said := slices.DeleteFunc(slices.Clone(causes), func(c cause) bool { return !c.said })
+	if len(said) == 0 && math.Abs(*w.Ratio-1) > noiseWorth {
+		// Each is too little to be named by itself.
+		said = []cause{slices.MaxFunc(causes, bySize)}
+	}
+	if len(said) == 0 {
+		return "as forecast, within the errors"
+	}
+	slices.SortStableFunc(said, func(a, b cause) int { return bySize(b, a) })
+	var parts []string
+	light := false
+	for _, c := range said {
+		parts = append(parts, c.text())
+		light = light || c.light
+	}
+	if !light {
+		parts = append(parts, fmt.Sprintf("its light is as forecast (%s)", figure(*w.LightRatio, *w.LightRatioError)))
+	}
+	return strings.Join(parts, "; ")
+}
+
+// cause is something that changed the S/N by a factor.
+type cause struct {
+	factor float64
+	words  string
+	// said: it is worth a word by itself. light: it is of the light wanted.
+	said, light bool
+}
+
+func bySize(a, b cause) int {
+	return cmp.Compare(math.Abs(math.Log(a.factor)), math.Abs(math.Log(b.factor)))
+}
+
+// text is the words with the factor, where it shows.
+func (c cause) text() string {
+	if math.Abs(c.factor-1) <= factorWorth {
+		return c.words
+	}
+	return fmt.Sprintf("%s (S/N × %.2f)", c.words, c.factor)
+}
+
+// causesOf are the four factors whose product is the ratio: of frames and voxels, of the error
+// of the frames' throughput, of light and of noise.
+func causesOf(f *product.Forecast, w *product.Reached, frames string) []cause {
+	through := 1.0
+	if w.ThroughputRatio != nil {
+		through = *w.ThroughputRatio
+	}
+	taken := framesCause(w, frames)
+	taken.factor = *w.TimeRatio / through
+	light := cause{factor: *w.LightRatio, light: true}
+	light.words, light.said = lightWords(w)
+	noise := cause{factor: 1 / *w.NoiseRatio, said: math.Abs(*w.NoiseRatio-1) >= noiseWorth, words: noiseWords(f, w)}
+	return []cause{taken, throughputCause(f, w, through), light, noise}
+}
+
+// framesCause is what there is less of.
+func framesCause(w *product.Reached, frames string) cause {
 	var parts []string
 	if frames != "" {
 		parts = append(parts, frames)
 	}
 	if lost := 1 - w.Good; lost > goodWorth {
-		parts = append(parts, fmt.Sprintf("%.0f %% of its voxels are not good", 100*lost))
-	}
-	if len(parts) > 0 && math.Abs(*w.TimeRatio-1) > factorWorth {
-		parts[len(parts)-1] += fmt.Sprintf(" (S/N × %.2f)", *w.TimeRatio)
-	}
-	light := lightWords(w)
-	if light != "" {
-		parts = append(parts, light)
-	}
-	if noise := noiseWords(f, w); noise != "" {
-		parts = append(parts, noise)
+		parts = append(parts, fmt.Sprintf("%.0f %% of its voxels are not good%s", 100*lost, flagWords(w.Flags)))
 	}
 	if len(parts) == 0 {
-		return "as forecast, within the errors"
+		return cause{words: "the frames used, and the place and grid of the cube, differ a little from the plan's"}
 	}
-	if light == "" {
-		parts = append(parts, fmt.Sprintf("its light is as forecast (%s)", figure(*w.LightRatio, *w.LightRatioError)))
+	return cause{words: strings.Join(parts, ", and "), said: true}
+}
+
+// flagWords are the flags that make voxels bad, in brackets; empty for none.
+func flagWords(parts []product.FlagPart) string {
+	var all []string
+	for _, p := range parts {
+		if p.Part > factorWorth {
+			all = append(all, fmt.Sprintf("%.0f %% %s", 100*p.Part, p.Name))
+		}
 	}
-	return strings.Join(parts, "; ")
+	if len(all) == 0 {
+		return ""
+	}
+	return " (" + strings.Join(all, ", ") + ")"
+}
+
+// throughputCause is the error of the frames' throughput, where the plan expected another one.
+func throughputCause(f *product.Forecast, w *product.Reached, factor float64) cause {
+	share := fmt.Sprintf("the error of the frames' throughput, %.2g %% a frame, is %.0f %% of the variance", 100*f.ThroughputErr, 100*w.Throughput)
+	if factor > 1 {
+		share = fmt.Sprintf("the frames' throughput is known to %.2g %%, better than planned", 100*f.ThroughputErr)
+	}
+	return cause{factor: factor, words: share, said: math.Abs(factor-1) > causeWorth}
 }
 
 // figure is a value with its error, to a figure of the error that is not 0.
@@ -117,24 +187,22 @@ func figure(value, err float64) string {
 	return fmt.Sprintf("%.*f ± %.*f", digits, value, digits, err)
 }
 
-func lightWords(w *product.Reached) string {
+// lightWords compare the light; said tells whether it differs by more than its error explains.
+func lightWords(w *product.Reached) (words string, said bool) {
 	ratio, err := *w.LightRatio, *w.LightRatioError
 	if math.Abs(ratio-1) < max(lightWorth, lightSigmas*err) {
-		return ""
+		return fmt.Sprintf("its light is %s of the forecast's, which its own error explains", figure(ratio, err)), false
 	}
 	what := "fainter than forecast, or less of its light came through"
 	if ratio > 1 {
 		what = "brighter than forecast, or more of its light came through"
 	}
-	return fmt.Sprintf("its light is %s of the forecast's: the source is %s", figure(ratio, err), what)
+	return fmt.Sprintf("its light is %s of the forecast's: the source is %s", figure(ratio, err), what), true
 }
 
 // noiseWords say how the noise differs, and what is known to make it so.
 func noiseWords(f *product.Forecast, w *product.Reached) string {
 	ratio := *w.NoiseRatio
-	if math.Abs(ratio-1) < noiseWorth {
-		return ""
-	}
 	var causes []string
 	cause := func(of float64, words string) {
 		if (of-1)*(ratio-1) > 0 && math.Abs(of-1) > causeWorth {
@@ -148,7 +216,7 @@ func noiseWords(f *product.Forecast, w *product.Reached) string {
 		cause(*f.ReadNoise, "the read noise is %.2f times the profile's")
 	}
 	if w.ErrorScale > 0 {
-		cause(w.ErrorScale, "the dark columns scatter %.2f times as much, squared, as the noise of detector and light makes them")
+		cause(w.ErrorScale, "the squares of what the dark columns show are %.2f times what detector and light make them")
 	}
 	if ratio > 1 {
 		for _, p := range []struct {

@@ -43,11 +43,11 @@ func TestExchangedFramesArePutRight(t *testing.T) {
 	require.Zero(t, put.Run.Exit)
 	require.Equal(t, 2, put.Ledger.Count(product.Relabelled))
 	require.Len(t, put.Run.Warnings, 2)
-	require.Contains(t, put.Run.Warnings[0], "does not show the mask of step")
+	require.Contains(t, put.Run.Warnings[0], "but shows the mask of step")
 	require.Equal(t, right.Run.Quality, put.Run.Quality, "the same cube")
 	report, err := os.ReadFile(filepath.Join(n.Run("wrong"), "report.html"))
 	require.NoError(t, err)
-	require.Contains(t, string(report), "used for that step")
+	require.Contains(t, string(report), "used for step")
 
 	require.NoError(t, os.RemoveAll(n.Run("wrong")))
 	opts.AsLabelled = true

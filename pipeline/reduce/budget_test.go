@@ -69,7 +69,7 @@ func buffers(s shape, h heights) int64 {
 	window := int64(h.strip)
 	if s.cube {
 		window += int64(s.margin + h.out)
-		total += int64(h.out) * int64(s.elements) * int64(s.voxels) * (4 + 4 + 2 + 4)
+		total += 2 * int64(h.out) * int64(s.elements) * int64(s.voxels) * (4 + 4 + 2 + 4)
 	}
 	return total + window*decoded
 }

@@ -3,9 +3,11 @@ package reduce
 import "mirrorloom/hadamard"
 
 // blockPixels is the number of pixels decoded together: a block of all slots
-// and its result stay in the second-level cache (2 x 127 x 256 floats are 260
-// kB; at v = 1023 still within 2 MB).
-const blockPixels = 256
+// and its result stay in the second-level cache (2 x 127 x 272 floats are 276
+// kB; at v = 1023 a little above 2 MB). 272 floats are 17 cache lines: an odd
+// number, so that the rows of a block do not all fall into the same few places of
+// the cache (hadamard.Decoder.Decode).
+const blockPixels = 272
 
 // decoder turns strips of science frames into decoded rows.
 type decoder struct {

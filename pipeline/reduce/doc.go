@@ -10,6 +10,11 @@
 // next being read: to electrons, decoding, a window of decoded rows, resampling
 // along the trace and in wavelength, and out to the cube.
 //
+// Between throughput and strips all that was found is written to a state (prepared.go),
+// and strips keeps a journal of what it wrote and added up (journal.go, keeper.go). A run
+// that resumes (resume.go) begins with them if all that the strips depend on is as it was
+// (dependence.go).
+//
 // # Words
 //
 //   - slot: the place of a code row among the v rows that decoding takes. With
@@ -27,4 +32,5 @@
 //     their sum over the steps is floored.
 //   - Nothing is held whole, neither a frame nor the cube, but what calibrate
 //     looks at: one sum of lamp frames at a time, and the pixels' response.
+//   - A run that was killed at any moment and resumed gives the same bytes.
 package reduce

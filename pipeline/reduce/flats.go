@@ -183,7 +183,7 @@ func (r *reduction) slitFlat(ctx context.Context, m *wholeMasters) error {
 		if err := terms.begin(&r.optics); err != nil {
 			return err
 		}
-		w.light = terms.addRow
+		w.light = terms.addRows
 		if err := w.run(ctx); err != nil {
 			return err
 		}

@@ -8,6 +8,7 @@ import (
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/exposure"
 	"mirrorloom/pipeline/instrument"
+	"mirrorloom/pipeline/parallel"
 )
 
 // lampTerms fits the neighbour term and the leak to lamp frames, row by row of the
@@ -122,11 +123,38 @@ func combine(sum, e *calib.Exposure, sign float32) {
 	}
 }
 
-// addRow adds a row of decoded lamp light.
-func (t *lampTerms) addRow(row *decodedRow) {
+// lampRow is what a row of decoded lamp light adds to the fits; nil for nothing.
+type lampRow struct {
+	neighbour *calib.ColourFit
+	leak      *calib.LeakSums
+}
+
+// addRows adds rows of decoded lamp light, in their order; so many workers gather them.
+func (t *lampTerms) addRows(ctx context.Context, rows []*decodedRow, workers int) error {
+	gathered := make([]lampRow, len(rows))
+	err := parallel.Do(ctx, workers, len(rows), func(_, i int) error {
+		gathered[i] = t.gather(rows[i])
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	for _, row := range gathered {
+		if row.neighbour != nil {
+			t.neighbourFit.Merge(row.neighbour)
+		}
+		if row.leak != nil {
+			t.leakFit.Add(row.leak)
+		}
+	}
+	return nil
+}
+
+func (t *lampTerms) gather(row *decodedRow) (sums lampRow) {
 	a, b := row.y*t.columns, (row.y+1)*t.columns
 	if e := t.neighbour; t.neighbourFit != nil {
-		t.neighbourFit.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
+		sums.neighbour = t.neighbourFit.Fork()
+		sums.neighbour.AddRow(row.y, e.Signal[a:b], e.Variance[a:b], e.Flags[a:b], row.signal)
 	}
 	if e, at := t.leak, t.leakRows; t.leakFit != nil && at[row.y].use {
 		own := calib.LeakRow{
@@ -138,8 +166,9 @@ func (t *lampTerms) addRow(row *decodedRow) {
 			own.Before, own.After = make([]float64, t.columns), make([]float64, t.columns)
 			t.beyond.row(own.Before, own.After, t.profile, &t.leakFrame.Geometry, row.y)
 		}
-		t.leakFit.AddRow(own)
+		sums.leak = t.leakFit.Row(own)
 	}
+	return sums
 }
 
 // solve puts the terms into o; a term that the lamp does not fix stays nil.

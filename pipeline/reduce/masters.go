@@ -43,6 +43,7 @@ type prepare struct {
 	recipe  DetectorRecipe
 	workers int
 	memory  int64 // for buffers
+	traffic *fitsutil.Traffic
 }
 
 // deadMargin are the rows beyond a strip that the search for dead pixels needs.
@@ -63,6 +64,7 @@ func (p *prepare) run(ctx context.Context, dir string, progress func(rows int)) 
 		return 0, err
 	}
 	defer out.Abort()
+	out.CountInto(p.traffic)
 	h := p.height()
 	for y0 := 0; y0 < p.camera.Rows; y0 += h {
 		y1 := min(y0+h, p.camera.Rows)
@@ -111,9 +113,18 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 	if p.recipe.Use == useOff {
 		return s, nil
 	}
-	bias, err := p.stack(ctx, p.frames.bias, y0, y1, s.bad, y0)
+	// The search for dead pixels needs the rows around.
+	first, last := y0, y1
+	if len(p.frames.lamps.on) > 0 {
+		first, last = max(0, y0-deadMargin), min(p.camera.Rows, y1+deadMargin)
+	}
+	around, err := p.stack(ctx, p.frames.bias, first, last, s.bad, y0)
 	if err != nil {
 		return nil, err
+	}
+	bias := around
+	if bias != nil {
+		bias = around[(y0-first)*p.camera.Columns:][:n]
 	}
 	faint := stacking{noise: math.Sqrt(p.camera.NoisiestVariance())}
 	dark, err := p.stackRows(ctx, p.frames.dark, y0, y1, s.bad, y0, faint)
@@ -132,10 +143,10 @@ func (p *prepare) strip(ctx context.Context, y0, y1 int) (*masterStrip, error) {
 		return nil, err
 	}
 	p.combine(s, y0, bias, dark, off, lampOff)
-	if err := p.findHot(s, dark != nil); err != nil {
+	if err := p.findHot(ctx, s, dark != nil); err != nil {
 		return nil, err
 	}
-	return s, p.findDead(ctx, s, y0, y1)
+	return s, p.findDead(ctx, s, y0, first, last, around)
 }
 
 // fewestCompared frames tell by comparison which of their samples are struck, if their
@@ -264,7 +275,7 @@ func meanVariance(c *exposure.Camera, quiet, charge float64, frames int, ratio, 
 // findHot marks pixels whose dark charge in a science exposure stands out of
 // its row by more than the noise it would be judged against: a smaller excess
 // is taken off with the dark and does no harm.
-func (p *prepare) findHot(s *masterStrip, known bool) error {
+func (p *prepare) findHot(ctx context.Context, s *masterStrip, known bool) error {
 	if !known {
 		return nil
 	}
@@ -275,8 +286,13 @@ func (p *prepare) findHot(s *masterStrip, known bool) error {
 	const readNoises = 10 // the excess, in read variances: as much noise again and more
 	rule := calib.DefaultHotRule(readNoises * p.camera.NoisiestVariance())
 	rule.Sigmas = p.recipe.HotSigma
-	_, err := rule.Flag(s.bad, charge, p.camera.Columns)
-	return err
+	// Each row is judged by itself.
+	columns := p.camera.Columns
+	return parallel.Do(ctx, p.workers, len(s.bad)/columns, func(_, row int) error {
+		from, to := row*columns, (row+1)*columns
+		_, err := rule.Flag(s.bad[from:to], charge[from:to], columns)
+		return err
+	})
 }
 
 // levelAbove is the light in electrons that is 30 times its own noise on top of a
@@ -287,18 +303,13 @@ func levelAbove(variance float64) float64 {
 	return noises*noises/2 + noises*math.Sqrt(noises*noises/4+variance)
 }
 
-// findDead marks pixels that do not answer the lamp, in rows y0..y1-1; the rows
-// around them serve as neighbours.
-func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, y1 int) error {
+// findDead marks pixels that do not answer the lamp, in the strip's rows from y0 on; the rows
+// around them, first..last-1, serve as neighbours. bias is theirs.
+func (p *prepare) findDead(ctx context.Context, s *masterStrip, y0, first, last int, bias []float32) error {
 	if len(p.frames.lamps.on) == 0 {
 		return nil
 	}
-	first, last := max(0, y0-deadMargin), min(p.camera.Rows, y1+deadMargin)
 	lamp, err := p.stack(ctx, p.frames.lamps.on, first, last, s.bad, y0)
-	if err != nil {
-		return err
-	}
-	bias, err := p.stack(ctx, p.frames.bias, first, last, s.bad, y0)
 	if err != nil {
 		return err
 	}

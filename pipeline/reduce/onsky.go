@@ -4,7 +4,6 @@ import (
 	"context"
 	"fmt"
 	"math"
-	"os"
 	"path/filepath"
 
 	"mirrorloom/calib"
@@ -74,6 +73,7 @@ func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	defer source.Close() // only read from
+	source.CountInto(&r.traffic)
 	o := skyflux.Options{
 		MemoryBytes: r.opts.MemoryBytes - runtimeBytes - r.heldBytes(), Workers: r.opts.Workers,
 		Progress: func(pass string, done, total int) { r.opts.Progress(pass, done, total) },
@@ -99,12 +99,14 @@ func (r *reduction) bringToSky(ctx context.Context) (int64, error) {
 	if r.cube, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.CubeFile), primary, images); err != nil {
 		return 0, err
 	}
+	r.cube.CountInto(&r.traffic)
 	voided, good, err := source.Write(ctx, r.cube, r.onSky.sky, r.onSky.flux.Factors(), o)
 	if err != nil {
 		return 0, err
 	}
 	r.lessGood(voided, good)
-	return 4 * r.shape.cubeBytes(), os.Remove(r.cubePath())
+	// What it was made of stays until the end: an interrupted run goes on from there.
+	return 4 * r.shape.cubeBytes(), nil
 }
 
 // measureSky finds the sky; where there is none the cube is not whole.

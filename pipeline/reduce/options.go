@@ -25,9 +25,16 @@ type Options struct {
 	Cycles []int
 	// AsLabelled keeps the pairing of the frames' labels, whatever the audit finds.
 	AsLabelled bool
-	// Out is a folder that exists and is empty. A folder in which Run failed is
-	// to be removed.
+	// Out is a folder that exists and is empty. A folder in which Run failed is to be
+	// removed, unless a later Run is to go on with it.
 	Out string
+	// Resume goes on with what an earlier Run, killed or interrupted, left in Out, and
+	// leaves there what a later one can go on with: see CanResume. What cannot be used is
+	// cleared. Note, which may be nil, is told in a clause what became of it.
+	Resume bool
+	Note   func(clause string)
+	// eachStrip is for tests: each strip is kept before the next one begins.
+	eachStrip bool
 	// Log receives what a user may want to know; nil for nothing.
 	Log *zap.Logger
 	// Progress, which may be nil, is called as a stage gets on, by one
@@ -53,6 +60,9 @@ func (o *Options) setDefaults() error {
 	}
 	if o.Progress == nil {
 		o.Progress = func(string, int, int) {}
+	}
+	if o.Note == nil {
+		o.Note = func(string) {}
 	}
 	if o.NightName == "" {
 		o.NightName = o.Night

@@ -23,15 +23,17 @@ func (r *reduction) create(s shape) error {
 		if r.cube, err = fitsutil.CreateCube(r.cubePath(), primary.Clone(), images); err != nil {
 			return err
 		}
+		r.cube.CountInto(&r.traffic)
 	}
 	if s.elementCube {
 		images, err := product.ElementImages(s.columns, s.rows, s.slots)
 		if err != nil {
 			return err
 		}
-		if r.element, err = fitsutil.CreateCube(filepath.Join(r.opts.Out, product.ElementsFile), primary.Clone(), images); err != nil {
+		if r.element, err = fitsutil.CreateCube(r.elementsPath(), primary.Clone(), images); err != nil {
 			return err
 		}
+		r.element.CountInto(&r.traffic)
 	}
 	return nil
 }

@@ -8,6 +8,7 @@ import (
 	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/parallel"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/report"
 )
 
 // rectifier takes decoded rows to voxels: along the trace by calib.RowShift,
@@ -45,10 +46,14 @@ type rectifier struct {
 const group = 16
 
 type rectifyWorker struct {
+	// y is the trace row whose flags, error scale and, where all elements have the same,
+	// variance are straightened; -1 for none.
+	y                int
 	signal, variance []float32 // a straightened row
-	scale, applied   []float32 // times variance, straightened
-	coherent         []float32 // the same, of errors that pixels share
+	scale, applied   []float32 // straightened
+	coherent         []float32 // times variance: of errors that pixels share
 	flags            calib.RowFlags
+	places           *calib.RowPlaces
 	edges            []float64
 	before           []float32
 	out              spectra // of the group's elements
@@ -69,7 +74,11 @@ type spectra struct {
 }
 
 func newSpectra(n int) spectra {
-	return spectra{make([]float32, n), make([]float32, n), make([]float32, n), make([]calib.Flag, n)}
+	s := spectra{make([]float32, n), make([]float32, n), make([]float32, n), make([]calib.Flag, n)}
+	for i := range s.scale {
+		s.scale[i] = 1
+	}
+	return s
 }
 
 // outStrip is some rows of the cube: [voxel][row][element].
@@ -101,6 +110,7 @@ func newRectifier(g calib.Geometry, axis product.SpectralAxis, s shape, u *usage
 	r.added = make([]float32, s.rows*s.elements)
 	for range workers {
 		r.workers = append(r.workers, rectifyWorker{
+			places: calib.NewRowPlaces(g, s.elements, r.edges),
 			signal: make([]float32, s.columns), variance: make([]float32, s.columns),
 			scale: make([]float32, s.columns), applied: make([]float32, s.columns), coherent: make([]float32, s.columns),
 			edges:  make([]float64, n+1),
@@ -159,6 +169,9 @@ func (r *rectifier) needs(y int) int {
 // run fills the strip from the window.
 func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
 	groups := (r.elements + r.group - 1) / r.group
+	for i := range r.workers {
+		r.workers[i].y = -1
+	}
 	return parallel.Do(ctx, len(r.workers), out.h*groups, func(worker, i int) error {
 		row, j0 := i/groups, i%groups*r.group
 		if r.field != nil {
@@ -174,27 +187,25 @@ func (r *rectifier) run(ctx context.Context, out *outStrip, w *window) error {
 func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 int) {
 	y := out.y0 + row
 	nl := r.voxels
-	j1 := min(j0+group, r.elements)
-	first := w.first()
-	k.bitRows = k.bitRows[:0]
-	for _, d := range w.rows {
-		k.bitRows = append(k.bitRows, d.flags)
+	j1 := min(j0+r.group, r.elements)
+	rows, first := r.spanned(w, y)
+	if k.y != y {
+		r.straightenCommon(k, rows, first, y)
 	}
-	r.shift.Flags(&k.flags, k.bitRows, first, y)
-	r.straightenScale(k, w, first, y)
 	for j := j0; j < j1; j++ {
-		k.collect(w, j)
-		r.shift.Signal(k.signal, k.signals, first, y)
-		if !r.uniform || j == j0 {
+		k.collect(rows, j)
+		if !r.uniform {
 			r.shift.Variance(k.variance, k.vars, first, y)
 		}
-		r.geometry.Places(k.edges, float64(j), float64(y), r.edges)
+		k.places.Places(k.edges, float64(j))
+		x0, x1 := r.columns.Columns(k.edges)
+		r.shift.SignalWithin(k.signal, k.signals, first, y, x0, x1)
 		at := (j - j0) * nl
 		r.columns.Resample(calib.Voxels{
 			Signal: k.out.signal[at:], Variance: k.out.variance[at:], Flags: k.out.flags[at:], Stride: 1,
 		}, k.signal, k.variance, &k.flags, k.edges)
 		r.scaleVoxels(k, &k.out, at, j)
-		if r.extraRows(k, w, j) {
+		if r.extraRows(k, rows, j) {
 			r.shift.Signal(k.extra, k.extras, first, y)
 			r.addExtra(k, &k.out, at)
 		}
@@ -202,6 +213,27 @@ func (r *rectifier) rectify(k *rectifyWorker, out *outStrip, w *window, row, j0 
 		r.flagLow(k.out.flags[at:at+nl], j, y)
 	}
 	r.store(k, out, row, j0, j1)
+}
+
+// spanned are the rows of the window that trace row y reads, and the first one's number.
+func (r *rectifier) spanned(w *window, y int) (rows []*decodedRow, first int) {
+	first, last := r.span(y)
+	return w.rows[first-w.first() : last+1-w.first()], first
+}
+
+// straightenCommon turns a worker to trace row y: what all elements share is straightened
+// once.
+func (r *rectifier) straightenCommon(k *rectifyWorker, rows []*decodedRow, first, y int) {
+	k.y = y
+	k.places.SetRow(float64(y))
+	k.bitRows = k.bitRows[:0]
+	for _, d := range rows {
+		k.bitRows = append(k.bitRows, d.flags)
+	}
+	r.shift.Flags(&k.flags, k.bitRows, first, y)
+	k.collect(rows, 0)
+	r.shift.Variance(k.variance, k.vars, first, y)
+	r.straightenScale(k, rows, first, y)
 }
 
 // flatten divides the voxels of an element and row by the response of slit and
@@ -273,26 +305,60 @@ func (r *rectifier) addedVariance() float64 {
 // feeds.
 func (r *rectifier) store(k *rectifyWorker, out *outStrip, row, j0, j1 int) {
 	nl, n := r.voxels, j1-j0
-	use := r.usage.row(out.y0 + row)[j0:j1]
-	for l := range nl {
-		at := (l*out.h+row)*r.elements + j0
-		signal, variance := out.signal[at:at+n], out.variance[at:at+n]
-		flags, scale := out.flags[at:at+n], out.scale[at:at+n]
-		for i := range n {
-			from := i*nl + l
-			signal[i], variance[i], flags[i], scale[i] = k.out.signal[from], k.out.variance[from], k.out.flags[from], k.out.scale[from]
-			if use[i] != 0 && r.field == nil {
-				signal[i], variance[i] = nan32, nan32
-				flags[i] |= use[i]
+	at, plane := row*r.elements+j0, out.h*r.elements
+	crosswise(out.signal, at, plane, k.out.signal, nl, n)
+	crosswise(out.variance, at, plane, k.out.variance, nl, n)
+	crosswise(out.flags, at, plane, k.out.flags, nl, n)
+	if r.scaled || r.field != nil {
+		crosswise(out.scale, at, plane, k.out.scale, nl, n)
+	}
+	if r.field != nil {
+		return
+	}
+	for i, use := range r.usage.row(out.y0 + row)[j0:j1] {
+		if use == 0 {
+			continue
+		}
+		for l := range nl {
+			p := at + l*plane + i
+			out.signal[p], out.variance[p] = nan32, nan32
+			out.flags[p] |= use
+		}
+	}
+}
+
+// crosswise writes the spectra [element][voxel] of n elements to dst, where voxels lie a
+// plane apart and begin at index at.
+func crosswise[T any](dst []T, at, plane int, spectra []T, voxels, n int) {
+	if n != group {
+		for l := range voxels {
+			for i := range n {
+				dst[at+l*plane+i] = spectra[i*voxels+l]
 			}
 		}
+		return
+	}
+	var s [group][]T
+	for i := range s {
+		s[i] = spectra[i*voxels:][:voxels]
+	}
+	for l := range s[0] {
+		d := (*[group]T)(dst[at+l*plane:])
+		d[0], d[1], d[2], d[3] = s[0][l], s[1][l], s[2][l], s[3][l]
+		d[4], d[5], d[6], d[7] = s[4][l], s[5][l], s[6][l], s[7][l]
+		d[8], d[9], d[10], d[11] = s[8][l], s[9][l], s[10][l], s[11][l]
+		d[12], d[13], d[14], d[15] = s[12][l], s[13][l], s[14][l], s[15][l]
 	}
 }
 
 // newOut makes the memory of a strip of the cube of h rows.
 func (s shape) newOut(h int) *outStrip {
 	n := h * s.elements * s.voxels
-	return &outStrip{signal: make([]float32, n), variance: make([]float32, n), flags: make([]calib.Flag, n), scale: make([]float32, n)}
+	o := &outStrip{signal: make([]float32, n), variance: make([]float32, n), flags: make([]calib.Flag, n), scale: make([]float32, n)}
+	for i := range o.scale {
+		o.scale[i] = 1 // and stays so where no error scale is measured
+	}
+	return o
 }
 
 // begin makes the strip one of h rows from y0 on.
@@ -300,6 +366,17 @@ func (o *outStrip) begin(s shape, y0, h int) {
 	o.y0, o.h = y0, h
 	n := h * s.elements * s.voxels
 	o.signal, o.variance, o.flags, o.scale = o.signal[:n], o.variance[:n], o.flags[:n], o.scale[:n]
+}
+
+// addLight has the report look at a row; nothing for no light.
+func (o *outStrip) addLight(light *report.Light, row int, s shape) {
+	if light == nil {
+		return
+	}
+	for l := range s.voxels {
+		at := (l*o.h + row) * s.elements
+		light.AddRow(o.y0+row, o.signal[at:at+s.elements], o.flags[at:at+s.elements])
+	}
 }
 
 // write hands the strip to the cube.

@@ -69,19 +69,18 @@ func (r *rectifier) sources(j0, j1 int) (first, last int) {
 func (r *rectifier) rectifyShifted(k *rectifyWorker, out *outStrip, w *window, row, j0 int) {
 	y, j1 := out.y0+row, min(j0+r.group, r.elements)
 	from, to := r.sources(j0, j1)
-	first := w.first()
-	k.bitRows = k.bitRows[:0]
-	for i := range k.scaleRows {
-		k.scaleRows[i] = k.scaleRows[i][:0]
-	}
-	for _, d := range w.rows {
-		k.bitRows = append(k.bitRows, d.flags)
-		for i, scale := range [][]float32{d.scale, d.applied, d.coherent} {
-			k.scaleRows[i] = append(k.scaleRows[i], scale)
+	rows, first := r.spanned(w, y)
+	if k.y != y {
+		k.y = y
+		k.places.SetRow(float64(y))
+		k.bitRows = k.bitRows[:0]
+		for _, d := range rows {
+			k.bitRows = append(k.bitRows, d.flags)
 		}
+		k.gatherScale(rows)
 	}
 	for s := from; s <= to; s++ {
-		r.source(k, w, first, y, s, (s-from)*r.voxels, s >= j0 && s < j1)
+		r.source(k, rows, first, y, s, (s-from)*r.voxels, s >= j0 && s < j1)
 	}
 	k.field.fill(r.voxels, to-from+1)
 	for j := j0; j < j1; j++ {
@@ -92,10 +91,10 @@ func (r *rectifier) rectifyShifted(k *rectifyWorker, out *outStrip, w *window, r
 
 // source makes the spectrum of element s where the light of trace row y lies, at index at
 // of the worker's sources. own tells that this group is the one to take note of it.
-func (r *rectifier) source(k *rectifyWorker, w *window, first, y, s, at int, own bool) {
+func (r *rectifier) source(k *rectifyWorker, rows []*decodedRow, first, y, s, at int, own bool) {
 	f := k.field
-	k.collect(w, s)
-	r.geometry.Places(k.edges, float64(s), float64(y), r.edges)
+	k.collect(rows, s)
+	k.places.Places(k.edges, float64(s))
 	r.field.Set(f.gather, y, k.edges)
 	f.gather.Signal(k.signal, k.signals, first)
 	f.gather.Variance(k.variance, k.vars, first)
@@ -104,12 +103,13 @@ func (r *rectifier) source(k *rectifyWorker, w *window, first, y, s, at int, own
 		f.gather.Variance(k.scale, k.scaleRows[0], first)
 		f.gather.Variance(k.applied, k.scaleRows[1], first)
 		f.gather.Signal(k.coherent, k.scaleRows[2], first)
+		k.scaleOf(f.gather.Columns())
 	}
 	r.columns.Resample(calib.Voxels{
 		Signal: f.source.signal[at:], Variance: f.source.variance[at:], Flags: f.source.flags[at:], Stride: 1,
 	}, k.signal, k.variance, &k.flags, k.edges)
 	r.scaleVoxels(k, &f.source, at, s)
-	if r.extraRows(k, w, s) {
+	if r.extraRows(k, rows, s) {
 		f.gather.Signal(k.extra, k.extras, first)
 		r.addExtra(k, &f.source, at)
 	}

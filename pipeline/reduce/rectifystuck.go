@@ -2,21 +2,21 @@ package reduce
 
 import "mirrorloom/calib"
 
-// collect takes the rows of element j from the window.
-func (k *rectifyWorker) collect(w *window, j int) {
+// collect takes element j from rows.
+func (k *rectifyWorker) collect(rows []*decodedRow, j int) {
 	k.signals, k.vars = k.signals[:0], k.vars[:0]
-	for _, d := range w.rows {
+	for _, d := range rows {
 		k.signals = append(k.signals, d.light(j))
 		k.vars = append(k.vars, d.variance[min(j, len(d.variance)-1)])
 	}
 }
 
-// extraRows takes the added variances of element j from the window; false where there
+// extraRows takes the added variances of element j from rows; false where there
 // are none.
-func (r *rectifier) extraRows(k *rectifyWorker, w *window, j int) bool {
+func (r *rectifier) extraRows(k *rectifyWorker, rows []*decodedRow, j int) bool {
 	k.extras = k.extras[:0]
 	some := false
-	for _, d := range w.rows {
+	for _, d := range rows {
 		extra := k.none
 		if whole := d.wholeOf(j); whole != nil {
 			extra, some = whole.extra, true
@@ -26,7 +26,7 @@ func (r *rectifier) extraRows(k *rectifyWorker, w *window, j int) bool {
 	if some && k.none == nil {
 		n := len(k.signal)
 		k.none, k.extra, k.added = make([]float32, n), make([]float32, n), newSpectra(r.voxels)
-		return r.extraRows(k, w, j)
+		return r.extraRows(k, rows, j)
 	}
 	return some
 }

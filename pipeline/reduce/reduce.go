@@ -8,22 +8,23 @@ import (
 	"runtime/debug"
 	"slices"
 	"sync/atomic"
-	"time"
 
 	"go.uber.org/zap"
 
 	"mirrorloom/fitsutil"
 	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/exposure"
+	"mirrorloom/pipeline/kept"
 	"mirrorloom/pipeline/pair"
 	"mirrorloom/pipeline/product"
+	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/sequence"
 )
 
 // Run reduces a night into opts.Out: cube.fits and elements.fits as asked,
 // ledger.csv, run.json and report.html. Errors are one sentence that names the file and the
 // cure.
-func Run(ctx context.Context, opts Options) (*Result, error) {
+func Run(ctx context.Context, opts Options) (result *Result, err error) {
 	if err := opts.setDefaults(); err != nil {
 		return nil, err
 	}
@@ -33,33 +34,45 @@ func Run(ctx context.Context, opts Options) (*Result, error) {
 	defer debug.SetMemoryLimit(previous)
 
 	r := &reduction{opts: opts, log: opts.Log}
-	defer r.close()
-	for _, step := range []struct {
-		name string
-		run  func(context.Context) (bytes int64, err error)
-	}{
-		{"pair", r.pair},
-		{"prepare", r.prepare},
-		{"calibrate", r.calibrate},
-		{"throughput", r.measureThroughput},
-		{"strips", r.strips},
-		{"sky", r.bringToSky},
-		{"finish", r.finish},
-		{"forecast", r.holdForecast},
-	} {
-		if step.name == "sky" && !r.toSky() || step.name == "forecast" && !r.hasForecast() {
-			continue
-		}
-		start := time.Now()
-		bytes, err := step.run(ctx)
-		if err != nil {
-			return nil, err
-		}
-		seconds := time.Since(start).Seconds()
-		r.stages = append(r.stages, product.Stage{Name: step.name, Seconds: seconds, Bytes: bytes})
-		r.log.Info("stage done", zap.String("stage", step.name), zap.Float64("seconds", seconds), zap.Int64("bytes", bytes))
+	defer func() { r.close(err != nil && opts.Resume) }()
+	if err := r.runStages(ctx, []stage{{"open", r.open}}); err != nil {
+		return nil, err
+	}
+	if err := r.resume(); err != nil {
+		return nil, err
+	}
+	var stages []stage
+	if !r.resumed {
+		stages = append(stages, stage{"pair", r.pair}, stage{"prepare", r.prepare}, stage{"calibrate", r.calibrate}, stage{"throughput", r.measureThroughput}, stage{"keep", r.savePrepared})
+	}
+	stages = append(stages, stage{"strips", r.strips})
+	if r.toSky() {
+		stages = append(stages, stage{"sky", r.bringToSky})
+	}
+	stages = append(stages, stage{"finish", r.finish})
+	if r.hasForecast() {
+		stages = append(stages, stage{"forecast", r.holdForecast})
+	}
+	if err := r.runStages(ctx, stages); err != nil {
+		return nil, err
 	}
 	return r.result(ctx)
+}
+
+// stage is a part of a reduction, which tells how many bytes it read and wrote.
+type stage struct {
+	name string
+	run  func(context.Context) (bytes int64, err error)
+}
+
+// runStages runs stages in turn and times them.
+func (r *reduction) runStages(ctx context.Context, stages []stage) error {
+	for _, step := range stages {
+		if err := r.timed(step.name, func() (int64, error) { return step.run(ctx) }); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // reduction is a run in the making.
@@ -95,14 +108,32 @@ type reduction struct {
 	reached   *product.Forecast
 	badPixels int
 	stages    []product.Stage
+	// traffic counts what is read of frames and masters and written of products.
+	traffic fitsutil.Traffic
+	// light is the cube's for the report; nil where that reads it from the file.
+	light *report.Light
+	// unsynced are the rows that were written since the system was last asked to bring the
+	// cube to the disk.
+	unsynced int
 	// looked counts the bytes that calibrate reads: see traffic.go.
 	looked atomic.Int64
+
+	// dependence is what the strips follow from, and state the digest of the file of
+	// what the stages before them found, which resumed did not run.
+	dependence *dependence
+	state      kept.Digest
+	resumed    bool
 }
 
-// close gives back everything; what was committed stays.
-func (r *reduction) close() {
+// close gives back everything; what was committed stays, and what a later run can go on
+// with if that is to be left.
+func (r *reduction) close(leave bool) {
 	for _, c := range []*fitsutil.Cube{r.cube, r.element} {
-		if c != nil {
+		switch {
+		case c == nil:
+		case leave:
+			c.Suspend()
+		default:
 			c.Abort()
 		}
 	}
@@ -112,14 +143,16 @@ func (r *reduction) close() {
 	if r.album != nil {
 		r.album.Close() // only read from
 	}
-	os.RemoveAll(r.scratch())
+	if !leave {
+		os.RemoveAll(r.scratch())
+	}
 }
 
 // scratch is the folder for unpacked frames and masters.
 func (r *reduction) scratch() string { return filepath.Join(r.opts.Out, "scratch") }
 
-// pair reads the sequence and pairs the night with it, and opens the frames.
-func (r *reduction) pair(ctx context.Context) (int64, error) {
+// open reads the sequence, and looks at all that the reduction depends on.
+func (r *reduction) open(ctx context.Context) (int64, error) {
 	var err error
 	if r.seq, err = sequence.Read(ctx, r.opts.Sequence); err != nil {
 		return 0, err
@@ -130,9 +163,20 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if err := r.readStars(); err != nil {
 		return 0, err
 	}
+	if r.camera, err = exposure.NewCamera(&r.seq.Profile.Detector); err != nil {
+		return 0, err
+	}
+	if r.dependence, err = r.dependsOn(ctx); err != nil {
+		return 0, err
+	}
 	if err := os.MkdirAll(r.scratch(), 0o755); err != nil {
 		return 0, fmt.Errorf("make a scratch folder: %w", err)
 	}
+	return 0, nil
+}
+
+// pair pairs the night with the sequence, and opens the frames.
+func (r *reduction) pair(ctx context.Context) (_ int64, err error) {
 	r.night, err = pair.Run(ctx, r.seq, pair.Options{
 		Night: r.opts.Night, ScratchDir: r.scratch(), Workers: r.opts.Workers,
 		Audit: r.opts.Recipe.Repair.Use != useOff, AsLabelled: r.opts.AsLabelled,
@@ -141,18 +185,24 @@ func (r *reduction) pair(ctx context.Context) (int64, error) {
 	if err != nil {
 		return 0, err
 	}
-	if r.camera, err = exposure.NewCamera(&r.seq.Profile.Detector); err != nil {
-		return 0, err
-	}
-	calibrates := r.opts.Recipe.Detector.Use != useOff
-	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe, r.opts.Cycles), r.scratch()); err != nil {
-		return 0, err
-	}
-	if r.roles, err = assign(r.seq, r.album.Frames, calibrates, r.opts.Cycles); err != nil {
+	if err := r.openFrames(); err != nil {
 		return 0, err
 	}
 	r.heedAudit()
-	return 0, r.checkFlux()
+	return 0, nil
+}
+
+// openFrames opens the frames of a paired night, and gives them their roles.
+func (r *reduction) openFrames() (err error) {
+	calibrates := r.opts.Recipe.Detector.Use != useOff
+	if r.album, err = exposure.OpenAlbum(sources(r.seq, r.night, r.opts.Recipe, r.opts.Cycles), r.scratch()); err != nil {
+		return err
+	}
+	r.album.CountInto(&r.traffic)
+	if r.roles, err = assign(r.seq, r.album.Frames, calibrates, r.opts.Cycles); err != nil {
+		return err
+	}
+	return r.checkFlux()
 }
 
 // heedAudit says what the audit found.
@@ -173,18 +223,19 @@ func (r *reduction) heedAudit() {
 func (r *reduction) prepare(ctx context.Context) (int64, error) {
 	p := &prepare{
 		camera: r.camera, album: r.album, frames: r.roles.calibration, recipe: r.opts.Recipe.Detector,
-		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes,
+		workers: r.opts.Workers, memory: r.opts.MemoryBytes - runtimeBytes, traffic: &r.traffic,
 	}
 	var err error
 	r.badPixels, err = p.run(ctx, r.scratch(), func(rows int) { r.opts.Progress("prepare", rows, r.camera.Rows) })
 	if err != nil {
 		return 0, err
 	}
-	c := r.roles.calibration
-	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamps.on) + len(c.lamps.off)
 	if r.masters, err = openMasters(r.scratch()); err != nil {
 		return 0, err
 	}
+	r.masters.file.CountInto(&r.traffic)
+	c := r.roles.calibration
+	frames := len(c.bias) + len(c.dark) + len(c.off) + len(c.lamps.on) + len(c.lamps.off)
 	return r.frameBytes()*int64(frames) + r.masterBytes(), nil
 }
 
@@ -206,6 +257,9 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	s.uniform = d.code.VarianceUniform()
 	s.voxels = r.schema.Grid.Count
 	r.shape = s
+	if s.cube && !r.toSky() && !r.resumed {
+		r.light = report.NewLight(s.elements, s.rows, s.voxels)
+	}
 	var stuck *stuckLight
 	if s.cube {
 		if r.rectifier, err = newRectifier(r.optics.geometry, r.schema.Axis(), s, r.usage, r.opts.Workers); err != nil {
@@ -226,17 +280,13 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	r.log.Debug("strips", zap.Int("rows", h.strip), zap.Int("cube_rows", h.out))
-	if err := r.create(s); err != nil {
-		return 0, err
-	}
 	w := &sweep{
-		shape: s, heights: h, decoder: d, rectify: r.rectifier, elements: r.element, workers: r.opts.Workers,
+		shape: s, heights: h, decoder: d, rectify: r.rectifier, workers: r.opts.Workers,
 		reader:   r.newReader(r.roles.slots, r.roles.calibration.scienceSeconds, masterOff, r.correction),
 		pixel:    r.optics.pixel,
 		stuck:    stuck,
 		progress: func(rows int) { r.opts.Progress("strips", rows, s.rows) },
 	}
-	w.sink = func(_ context.Context, out *outStrip) error { return r.write(w, out) }
 	if s.cube {
 		w.pixelVariance = r.writePixelVariance
 	}
@@ -245,7 +295,19 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 		return 0, err
 	}
 	w.reader.scale = &d.scale
-	if err := w.run(ctx); err != nil {
+	keeper, err := r.newKeeper(w)
+	if err != nil {
+		return 0, err
+	}
+	w.elements, w.boundary = r.element, keeper.boundary
+	w.sink = func(_ context.Context, out *outStrip) error {
+		err := r.write(w, out)
+		if err == nil {
+			keeper.wrote(out)
+		}
+		return err
+	}
+	if err := keeper.end(w.run(ctx)); err != nil {
 		return 0, err
 	}
 	var flags int16
@@ -258,7 +320,7 @@ func (r *reduction) strips(ctx context.Context) (int64, error) {
 	}
 	r.repairQuality(w)
 	r.judge(flags)
-	return r.stripBytes(s), nil
+	return r.stripBytes(s) * int64(s.rows-w.before.decoded) / int64(s.rows), nil
 }
 
 // code gives the sequence's code, and refuses one whose rows are not those that
@@ -288,7 +350,7 @@ func (r *reduction) gridSource() string {
 // heldBytes is the memory of what calibrate keeps for the strips, and of what the
 // rectifier needs more than usual.
 func (r *reduction) heldBytes() int64 {
-	held := int64(0)
+	held := int64(r.shape.elements) * int64(r.shape.rows) * report.LightBytes
 	if r.rectifier != nil {
 		held = r.rectifier.fieldBytes()
 	}
@@ -326,9 +388,22 @@ func (r *reduction) write(w *sweep, out *outStrip) error {
 	for row := range out.h {
 		y := out.y0 + row
 		w.quality[y].count(out, row, w.shape.elements, w.shape.voxels, r.usage.row(y))
+		out.addLight(r.light, row, w.shape)
 	}
-	return out.write(r.cube, w.shape.voxels)
+	if err := out.write(r.cube, w.shape.voxels); err != nil {
+		return err
+	}
+	if r.unsynced += out.h; !r.toSky() && r.unsynced*w.shape.elements*bytesFloat >= syncRun {
+		r.cube.BeginSync()
+		r.unsynced = 0
+	}
+	return nil
 }
+
+// syncRun is how many bytes of a plane are written before the system is asked to bring them
+// to the disk: fewer would make the disk seek, and more would leave much to wait for at the
+// end.
+const syncRun = 256 << 10
 
 // newReader reads the frames of slots, exposed so long, whose light without any
 // open mirror is in master dim, and corrects them so.
@@ -337,6 +412,6 @@ func (r *reduction) newReader(slots [][]*exposure.Frame, seconds float64, dim in
 		correction: c,
 		camera:     r.camera, album: r.album, slots: slots, masters: r.masters, seconds: seconds, dim: dim,
 		workers: r.opts.Workers, scratch: make([]exposure.Scratch, r.opts.Workers), sums: make([][]float32, r.opts.Workers),
-		struck: make([][]struckSample, r.opts.Workers),
+		struck: make([][]struckSample, r.opts.Workers), tally: newTally(slots),
 	}
 }

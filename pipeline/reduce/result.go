@@ -4,10 +4,10 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
-	"runtime"
 	"strings"
 
 	"mirrorloom/fitsutil"
+	"mirrorloom/hadamard"
 	"mirrorloom/pipeline/product"
 	"mirrorloom/pipeline/report"
 	"mirrorloom/pipeline/version"
@@ -35,10 +35,10 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	r.quality.Lost = len(r.roles.missing)
 	r.through.quality(&r.quality)
 	run := &product.Run{
-		Schema: product.RunSchema, Version: version.Version, CPULevel: runtime.GOARCH + " pure Go",
+		Schema: product.RunSchema, Version: version.Version, CPULevel: hadamard.CPULevel(),
 		Inputs: r.inputs(), Settings: r.settings(), Quality: r.quality, Calibration: r.calibration(), Throughput: r.through.section(), Sky: r.skySection(), Flux: r.fluxSection(),
 		FieldShift: r.shift.Section(), Forecast: r.reached,
-		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...), Stages: r.stages,
+		Warnings: append(append([]string{}, r.roles.degraded...), r.warnings()...),
 	}
 	run.Stars = r.stars.report
 	if r.night.Audit != nil {
@@ -47,14 +47,22 @@ func (r *reduction) result(ctx context.Context) (*Result, error) {
 	if len(r.roles.degraded) > 0 {
 		run.Exit = ExitDegraded
 	}
+	var page *report.Page
+	err := r.timed("report", func() (_ int64, err error) {
+		page, err = report.Draw(ctx, r.opts.Out, report.Input{
+			Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
+			Throughput: r.through.reportCurves(), Light: r.light,
+		})
+		return 0, err
+	})
+	if err != nil {
+		return nil, err
+	}
+	run.Stages = r.stages
 	if err := fitsutil.WriteAtomic(filepath.Join(r.opts.Out, product.RunFile), run.Write); err != nil {
 		return nil, err
 	}
-	err := report.Write(ctx, r.opts.Out, report.Input{
-		Run: run, Ledger: r.night.Ledger, Schema: r.schema, Profile: r.seq.ProfileName, Degraded: r.roles.degraded,
-		Throughput: r.through.reportCurves(),
-	})
-	if err != nil {
+	if err := page.Write(run.Stages); err != nil {
 		return nil, err
 	}
 	return &Result{Run: run, Ledger: r.night.Ledger, Schema: r.schema, Degraded: r.roles.degraded}, nil

@@ -71,7 +71,7 @@ func TestRepairsOfASparseCode(t *testing.T) {
 	require.Nil(t, q.ErrorScale)
 	warnings := strings.Join(result.Run.Warnings, "\n")
 	require.Contains(t, warnings, "no error scale is measured: the singer code is no S-matrix")
-	require.Equal(t, 4, strings.Count(warnings, "does not show the mask of step"), warnings)
+	require.Equal(t, 4, strings.Count(warnings, "but shows the mask of step"), warnings)
 	require.NotEqual(t, reduce.ExitDegraded, result.Run.Exit)
 	fmt.Fprintln(t.Output(), warnings)
 }

@@ -64,8 +64,16 @@ func (r *reduction) readStars() error {
 	if err := register.CheckField(recipe.Use, r.stars.list, s, margin); err != nil {
 		return err
 	}
-	r.stars.picture = register.NewPicture(s.Elements, s.Rows)
+	r.forgetPicture()
 	return nil
+}
+
+// forgetPicture begins the picture anew, where stars are listed.
+func (r *reduction) forgetPicture() {
+	if r.opts.Recipe.Stars.Use != useOff {
+		s := product.NewSchema(r.seq)
+		r.stars.picture = register.NewPicture(s.Elements, s.Rows)
+	}
 }
 
 // blind are the flags of voxels whose light says nothing. What all voxels share, unknown

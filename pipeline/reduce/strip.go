@@ -25,6 +25,7 @@ type strip struct {
 	levelVariance   []float32    // of base and off
 	quiet           [][]float64  // [row][column] variance without light
 	planes          *elementPlanes
+	saturated       []int // pixels of each frame, see frameTally
 }
 
 // slot is the pixels of a code row.
@@ -74,6 +75,7 @@ type stripReader struct {
 	// restore: struck samples are marked one by one, rather than their pixel flagged.
 	restore bool
 	struck  [][]struckSample // by worker
+	tally   frameTally
 	// edges are struck samples to be replaced, nil where they are not looked for in single
 	// frames; scale is how frames make samples.
 	edges edgeHits
@@ -86,6 +88,7 @@ func (r *stripReader) read(ctx context.Context, s *strip, y0, y1 int) error {
 	n := (y1 - y0) * s.columns
 	s.raw = s.raw[:len(r.slots)*n]
 	s.quiet = r.camera.Variance[y0:y1]
+	s.saturated = make([]int, len(r.tally.frames))
 	if err := r.readMasters(s, n); err != nil {
 		return err
 	}
@@ -127,7 +130,7 @@ func (r *stripReader) readFrame(s *strip, i, n int, f *exposure.Frame, worker in
 	if err != nil {
 		return err
 	}
-	f.Saturated += saturated
+	s.saturated[r.tally.at(i, n)] = saturated
 	if r.restore {
 		if err := r.nearby(s, f, worker, mark); err != nil {
 			return err

@@ -20,10 +20,10 @@ type sweep struct {
 	// sink takes each strip of the cube; the strip is used again afterwards.
 	sink     func(ctx context.Context, out *outStrip) error
 	elements *fitsutil.Cube // nil without an element cube
-	// pixel is the pixels' response, nil for 1. light, where not nil, sees each
-	// decoded row, in order, before bad pixels are filled.
+	// pixel is the pixels' response, nil for 1. light, where not nil, sees the
+	// decoded rows, in order, before bad pixels are filled.
 	pixel *calib.PixelResponse
-	light func(row *decodedRow)
+	light func(ctx context.Context, rows []*decodedRow, workers int) error
 	// stuck puts in the light of mirrors that do not move; nil where all move.
 	stuck *stuckLight
 	// pixelVariance, where not nil, takes each row's variances, in order, when they
@@ -31,13 +31,17 @@ type sweep struct {
 	pixelVariance func(row *decodedRow) error
 	workers       int
 	progress      func(rows int)
+	// before is how far an earlier sweep came, whose sums begin gives back to this one;
+	// nothing for a sweep from the start. boundary, where not nil, is called after each strip.
+	before   extent
+	boundary func(decoded int) error
 
 	window  *window
 	scratch []*decodeWorker
 	fills   []calib.Fill
 	planes  *elementPlanes // nil without an element cube
-	out     *outStrip
-	nextOut int // the next trace row to write
+	outs    *outQueue      // nil without a cube
+	nextOut int            // the next trace row to write
 	// finished is the first row that is not yet fit for rectifying.
 	finished int
 	quality  []rowQuality
@@ -51,19 +55,24 @@ type loaded struct {
 	err   error
 }
 
-// run goes through all strips: one is worked on while the next is read.
+// run goes through all strips: one is worked on while the next is read and what was made
+// of the last is written.
 func (w *sweep) run(ctx context.Context) error {
 	w.begin()
 	ctx, cancel := context.WithCancel(ctx)
 	var reader sync.WaitGroup
 	defer reader.Wait()
 	defer cancel()
+	if w.rectify != nil {
+		w.outs = newOutQueue(ctx, w.shape, w.heights.out, w.sink)
+		defer w.outs.close()
+	}
 	free, ready := make(chan *strip, 2), make(chan loaded)
 	for range cap(free) {
 		free <- w.shape.newStrip(w.heights.strip)
 	}
 	reader.Go(func() { w.read(ctx, free, ready) })
-	for y0 := 0; y0 < w.shape.rows; y0 += w.heights.strip {
+	for _, rows := range w.spans() {
 		var l loaded
 		select {
 		case l = <-ready:
@@ -77,38 +86,47 @@ func (w *sweep) run(ctx context.Context) error {
 			return err
 		}
 		free <- l.strip
-		w.progress(min(y0+w.heights.strip, w.shape.rows))
+		w.progress(rows[1])
+	}
+	if w.outs != nil {
+		return w.outs.close()
 	}
 	return nil
 }
 
 func (w *sweep) begin() {
-	w.steps = newStepChi2(w.shape.slots)
+	if w.quality == nil {
+		w.clear()
+	}
 	w.window = newWindow(w.shape)
-	w.quality = make([]rowQuality, w.shape.rows)
+	w.finished, w.nextOut = w.firstAgain(), w.before.nextOut
 	w.fills = make([]calib.Fill, w.workers)
 	for range w.workers {
 		w.scratch = append(w.scratch, w.decoder.newWorker())
 	}
 	if w.rectify != nil {
 		w.rectify.scaled, w.rectify.byElement = w.decoder.scales(), w.decoder.repair.elementRatios()
-		w.out = w.shape.newOut(w.heights.out)
 	}
 	if w.elements != nil {
 		w.planes = w.newPlanes()
 	}
 }
 
+// clear empties the sums.
+func (w *sweep) clear() {
+	w.quality, w.samples, w.steps = make([]rowQuality, w.shape.rows), restoredSamples{}, newStepChi2(w.shape.slots)
+}
+
 // read fills free strips in order and hands them on, until ctx ends.
 func (w *sweep) read(ctx context.Context, free <-chan *strip, ready chan<- loaded) {
-	for y0 := 0; y0 < w.shape.rows; y0 += w.heights.strip {
+	for _, rows := range w.spans() {
 		var s *strip
 		select {
 		case s = <-free:
 		case <-ctx.Done():
 			return
 		}
-		err := w.reader.read(ctx, s, y0, min(y0+w.heights.strip, w.shape.rows))
+		err := w.reader.read(ctx, s, rows[0], rows[1])
 		select {
 		case ready <- loaded{s, err}:
 		case <-ctx.Done():
@@ -128,7 +146,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 	if err := w.decode(ctx, s, rows); err != nil {
 		return err
 	}
-	if w.elements != nil {
+	if w.elements != nil && !w.isAgain(s.y0) {
 		if f := w.decoder.lostFlag(); f != 0 {
 			for i := range s.flags {
 				s.flags[i] |= f
@@ -140,7 +158,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 	}
 	if w.rectify == nil {
 		w.window.dropBefore(s.y1)
-		return nil
+		return w.bound(s)
 	}
 	for {
 		n := min(w.rectify.ready(w.nextOut, w.finished), w.heights.out)
@@ -153,7 +171,7 @@ func (w *sweep) work(ctx context.Context, s *strip) error {
 		}
 	}
 	w.window.dropBefore(min(w.rectify.needs(w.nextOut), w.finished-max(1, w.ahead())))
-	return nil
+	return w.bound(s)
 }
 
 func (w *sweep) newPlanes() *elementPlanes {
@@ -179,8 +197,8 @@ func (w *sweep) decode(ctx context.Context, s *strip, rows []*decodedRow) error 
 		return err
 	}
 	if w.light != nil {
-		for _, row := range rows {
-			w.light(row)
+		if err := w.light(ctx, rows, w.workers); err != nil {
+			return err
 		}
 	}
 	return w.finish(ctx, s.y1)
@@ -211,8 +229,10 @@ func (w *sweep) decodeBlocks(ctx context.Context, s *strip, rows []*decodedRow) 
 		q.restored += b.restored
 		q.hits += b.hits
 		q.doubtful += b.doubtful
-		w.samples.add(b.samples)
-		w.steps.add(b)
+		if !w.isAgain(rows[i/blocks].y) {
+			w.samples.add(b.samples)
+			w.steps.add(b)
+		}
 	}
 	return nil
 }
@@ -252,6 +272,9 @@ func (w *sweep) finish(ctx context.Context, next int) error {
 	}
 	if w.pixelVariance != nil {
 		for _, row := range w.window.rows[w.finished-first:][:n] {
+			if row.y < w.before.finished {
+				continue // an earlier sweep did it
+			}
 			if err := w.pixelVariance(row); err != nil {
 				return err
 			}
@@ -362,20 +385,22 @@ func (w *sweep) fill(f *calib.Fill, row *decodedRow) {
 
 // emit makes and writes the next n trace rows of the cube.
 func (w *sweep) emit(ctx context.Context, n int) error {
-	w.out.begin(w.shape, w.nextOut, n)
-	if err := w.rectify.run(ctx, w.out, w.window); err != nil {
+	out, err := w.outs.take(ctx)
+	if err != nil {
+		return err
+	}
+	out.begin(w.shape, w.nextOut, n)
+	if err := w.rectify.run(ctx, out, w.window); err != nil {
 		return err
 	}
 	if lost := w.decoder.lostFlag(); lost != 0 {
-		for i, f := range w.out.flags {
+		for i, f := range out.flags {
 			if f&product.FlagNoData == 0 {
-				w.out.flags[i] |= lost
+				out.flags[i] |= lost
 			}
 		}
 	}
-	if err := w.sink(ctx, w.out); err != nil {
-		return err
-	}
+	w.outs.give(out)
 	w.nextOut += n
 	return nil
 }

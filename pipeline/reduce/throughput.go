@@ -20,8 +20,10 @@ type throughput struct {
 	times  []float64 // of their middles, -0.5 to 0.5
 	// minutes are the same from the first frame on.
 	minutes []float64
-	// belief is what is known of them after all methods.
+	// belief is what is known of them after all methods; nil where an earlier run found
+	// it, of which only the throughputs and their errors, c and err, were kept.
 	belief *belief
+	c, err []float64
 	// corrected: something was measured that went into the correction.
 	corrected bool
 	outside   []outsideMethod
@@ -231,8 +233,17 @@ func (t *throughput) reportCurves() []report.Curve {
 	if len(t.curves) < 2 || !t.corrected {
 		return t.curves
 	}
-	all := report.Curve{Method: "together", Minutes: t.minutes, C: t.belief.c(), Err: t.belief.errors()}
+	all := report.Curve{Method: "together", Minutes: t.minutes}
+	all.C, all.Err = t.believed()
 	return append([]report.Curve{all}, t.curves...)
+}
+
+// believed are the throughputs after all methods and their errors.
+func (t *throughput) believed() (c, err []float64) {
+	if t.belief == nil {
+		return t.c, t.err
+	}
+	return t.belief.c(), t.belief.errors()
 }
 
 // scatter is the rms of c around 1 and that of its errors.
@@ -317,7 +328,7 @@ func (t *throughput) quality(q *product.Quality) {
 	if t == nil || !t.corrected {
 		return
 	}
-	rms, err := scatter(t.belief.c(), t.belief.errors())
+	rms, err := scatter(t.believed())
 	q.ThroughputRMS, q.ThroughputErr = &rms, &err
 }
 

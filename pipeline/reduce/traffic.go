@@ -3,9 +3,39 @@ package reduce
 import (
 	"os"
 	"path/filepath"
+	"time"
+
+	"go.uber.org/zap"
+	"golang.org/x/sys/unix"
 
 	"mirrorloom/pipeline/product"
 )
+
+// timed runs a stage, which gives the bytes that it read and wrote, and takes note of where
+// its time went.
+func (r *reduction) timed(name string, stage func() (bytes int64, err error)) error {
+	start, processor := time.Now(), processorSeconds()
+	read, written := r.traffic.Read(), r.traffic.Written()
+	bytes, err := stage()
+	if err != nil {
+		return err
+	}
+	s := product.NewStage(name, time.Since(start).Seconds(), bytes, (r.traffic.Read().Busy - read.Busy).Seconds(),
+		(r.traffic.Written().Busy - written.Busy).Seconds(), processorSeconds()-processor, r.opts.Workers)
+	r.stages = append(r.stages, s)
+	r.log.Info("stage done", zap.String("stage", name), zap.Float64("seconds", s.Seconds), zap.Int64("bytes", bytes))
+	return nil
+}
+
+// processorSeconds is the processor's time of this process, of its own and of the system
+// for it.
+func processorSeconds() float64 {
+	var u unix.Rusage
+	if err := unix.Getrusage(unix.RUSAGE_SELF, &u); err != nil {
+		return 0 // the table then shows no computing
+	}
+	return time.Duration(u.Utime.Nano() + u.Stime.Nano()).Seconds()
+}
 
 // frameBytes is the size of a raw frame's pixels on disk, taken from the first.
 func (r *reduction) frameBytes() int64 {

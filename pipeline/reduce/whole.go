@@ -2,7 +2,6 @@ package reduce
 
 import (
 	"context"
-	"sync"
 
 	"mirrorloom/calib"
 	"mirrorloom/pipeline/exposure"
@@ -38,38 +37,45 @@ func (m *masters) whole(rows, columns int) (*wholeMasters, error) {
 // lampExposure reads a frame whole, less bias and dark current, and less what the
 // lamp gives without any open mirror if dim is set.
 func (r *reduction) lampExposure(f *exposure.Frame, m *wholeMasters, dim bool, s *exposure.Scratch) (*calib.Exposure, error) {
-	columns, rows := r.camera.Columns, r.camera.Rows
-	e := &calib.Exposure{Columns: columns, Signal: make([]float32, rows*columns), Variance: make([]float32, rows*columns), Flags: make([]calib.Flag, rows*columns)}
-	copy(e.Flags, m.bad)
-	var mu sync.Mutex
-	mark := func(flags []calib.Flag, x, y, w int) {
-		mu.Lock()
-		defer mu.Unlock()
-		r.camera.Merge(e.Flags, 0, flags, x, y, w)
-	}
-	if _, err := r.camera.Read(e.Signal, f.Image, 0, rows, s, mark); err != nil {
-		return nil, err
-	}
-	if err := r.album.Done(f); err != nil {
+	e := newExposure(r.camera.Columns, r.camera.Rows)
+	if err := r.lampRows(e, f, m, dim, 0, r.camera.Rows, s); err != nil {
 		return nil, err
 	}
 	r.lookAt(1)
+	return e, nil
+}
+
+func newExposure(columns, rows int) *calib.Exposure {
+	n := columns * rows
+	return &calib.Exposure{Columns: columns, Signal: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
+}
+
+// lampRows fills e with rows y0..y1-1 of a frame, as lampExposure does.
+func (r *reduction) lampRows(e *calib.Exposure, f *exposure.Frame, m *wholeMasters, dim bool, y0, y1 int, s *exposure.Scratch) error {
+	columns := r.camera.Columns
+	from := y0 * columns
+	copy(e.Flags, m.bad[from:y1*columns])
+	mark := func(flags []calib.Flag, x, y, w int) { r.camera.Merge(e.Flags, y0, flags, x, y, w) }
+	if _, err := r.camera.Read(e.Signal, f.Image, y0, y1, s, mark); err != nil {
+		return err
+	}
 	seconds := float32(r.seq.Steps[f.Step].ExptimeSeconds)
 	photon := float32(1 + r.camera.PhotonExcess)
-	for y := range rows {
-		quiet := r.camera.Variance[y]
-		for x := range columns {
-			i := y*columns + x
-			v := e.Signal[i] - m.bias[i]
-			e.Variance[i] = float32(quiet[x]) + photon*max(0, v)
-			v -= seconds * m.dark[i]
+	for y := y0; y < y1; y++ {
+		at := y * columns
+		quiet, bias, dark, lampOff := r.camera.Variance[y], m.bias[at:][:columns], m.dark[at:][:columns], m.lampOff[at:][:columns]
+		signal, variance := e.Signal[at-from:][:columns], e.Variance[at-from:][:columns]
+		for x, v := range signal {
+			v -= bias[x]
+			variance[x] = float32(quiet[x]) + photon*max(0, v)
+			v -= seconds * dark[x]
 			if dim {
-				v -= seconds * m.lampOff[i]
+				v -= seconds * lampOff[x]
 			}
-			e.Signal[i] = v
+			signal[x] = v
 		}
 	}
-	return e, nil
+	return r.album.Done(f)
 }
 
 // wholeWorkers is how many whole exposures the memory holds at the same time,
@@ -93,26 +99,41 @@ func (r *reduction) eachExposure(ctx context.Context, frames []*exposure.Frame, 
 	})
 }
 
+// sumRows is how many rows of frames are added up at a time: they stay in the cache.
+const sumRows = 128
+
 // sumExposures adds frames up, in their order, whatever the number of workers:
 // each takes rows of its own. dim as in lampExposure.
 func (r *reduction) sumExposures(ctx context.Context, frames []*exposure.Frame, m *wholeMasters, dim bool) (*calib.Exposure, error) {
 	columns, rows := r.camera.Columns, r.camera.Rows
-	n := columns * rows
-	sum := &calib.Exposure{Columns: columns, Signal: make([]float32, n), Variance: make([]float32, n), Flags: make([]calib.Flag, n)}
+	sum := newExposure(columns, rows)
 	copy(sum.Flags, m.bad)
-	for _, f := range frames {
-		e, err := r.lampExposure(f, m, dim, new(exposure.Scratch))
-		if err != nil {
-			return nil, err
+	h := max(1, min(sumRows, (rows+r.opts.Workers-1)/r.opts.Workers))
+	scratch, part := make([]exposure.Scratch, r.opts.Workers), make([]*calib.Exposure, r.opts.Workers)
+	err := parallel.Do(ctx, r.opts.Workers, (rows+h-1)/h, func(worker, i int) error {
+		if part[worker] == nil {
+			part[worker] = newExposure(columns, h)
 		}
-		if err := ctx.Err(); err != nil {
-			return nil, err
+		e, y0, y1 := part[worker], i*h, min((i+1)*h, rows)
+		for _, f := range frames {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			if err := r.lampRows(e, f, m, dim, y0, y1, &scratch[worker]); err != nil {
+				return err
+			}
+			signal, variance, flags := sum.Signal[y0*columns:y1*columns], sum.Variance[y0*columns:y1*columns], sum.Flags[y0*columns:y1*columns]
+			for i := range signal {
+				signal[i] += e.Signal[i]
+				variance[i] += e.Variance[i]
+				flags[i] |= e.Flags[i]
+			}
 		}
-		for i, v := range e.Signal {
-			sum.Signal[i] += v
-			sum.Variance[i] += e.Variance[i]
-			sum.Flags[i] |= e.Flags[i]
-		}
+		return nil
+	})
+	if err != nil {
+		return nil, err
 	}
+	r.lookAt(len(frames))
 	return sum, nil
 }

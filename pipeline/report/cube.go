@@ -62,13 +62,14 @@ type flagShare struct {
 	Bit   int16
 	Share string
 	Bad   bool
+	Says  string
 }
 
 func (w *Light) flagShares() []flagShare {
 	var shares []flagShare
 	total := float64(w.elements*w.rows) * float64(w.planes)
 	for i, f := range product.Flags() {
-		shares = append(shares, flagShare{Name: f.Name, Bit: f.Bit, Bad: f.Bit&product.FlagBad != 0,
+		shares = append(shares, flagShare{Name: f.Name, Bit: f.Bit, Bad: f.Bit&product.FlagBad != 0, Says: sentence(f.Says),
 			Share: percent(float64(w.flagged[i]) / total)})
 	}
 	return shares

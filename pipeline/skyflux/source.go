@@ -39,6 +39,9 @@ func Open(path string) (*Source, error) {
 	return s, nil
 }
 
+// CountInto has what is read of the cube add to t.
+func (s *Source) CountInto(t *fitsutil.Traffic) { s.file.CountInto(t) }
+
 // Close ends the use of the cube.
 func (s *Source) Close() error { return s.file.Close() }
 

@@ -83,6 +83,20 @@ def rebin(lines, at):
     return np.stack([np.diff(BSpline.construct_fast(spline.t, c[j], 5)(at[j])) for j in range(len(at))])
 
 
+def world(profile, target, n):
+    """World coordinates of a cube of n elements."""
+    spec, grid = profile["spectrograph"], profile["grid"]
+    header = fits.Header()
+    arcsec = profile["dmd"]["arcsec_per_mirror"] / (2 ** 0.5 if profile["dmd"]["mounting"] == "diagonal" else 1)
+    c1, c2 = arcsec / 3600 * target["code"]["element_mirrors"], arcsec / 3600 / spec["w_step_px"]
+    t = np.radians(target["rotang_deg"])
+    header.update(CTYPE1="RA---TAN", CTYPE2="DEC--TAN", CTYPE3="WAVE", CUNIT1="deg", CUNIT2="deg", CUNIT3="nm",
+                  CRPIX1=(n + 1) / 2, CRPIX2=spec["y_center_px"] + 1, CRPIX3=1.0, CRVAL1=target["ra_deg"],
+                  CRVAL2=target["dec_deg"], CRVAL3=grid["first_nm"], CD1_1=-c1 * np.cos(t), CD1_2=c2 * np.sin(t),
+                  CD2_1=c1 * np.sin(t), CD2_2=c2 * np.cos(t), CD3_3=grid["step_nm"])
+    return header
+
+
 def main(night, sequence, out):
     start = time.time()
     with fits.open(os.path.join(sequence, "sequence.fits")) as hdus:
@@ -153,14 +167,7 @@ def main(night, sequence, out):
         reach = np.diff(np.interp(at, pixel_edges, hit), axis=1) > 0.1
         flags[:, y] = (np.where(reach, 4, 0) | np.where(np.diff(at, axis=1) <= 0, 1, 0)).T
 
-    header = fits.Header()
-    arcsec = profile["dmd"]["arcsec_per_mirror"] / (2 ** 0.5 if profile["dmd"]["mounting"] == "diagonal" else 1)
-    c1, c2 = arcsec / 3600 * target["code"]["element_mirrors"], arcsec / 3600 / spec["w_step_px"]
-    t = np.radians(target["rotang_deg"])
-    header.update(CTYPE1="RA---TAN", CTYPE2="DEC--TAN", CTYPE3="WAVE", CUNIT1="deg", CUNIT2="deg", CUNIT3="nm",
-                  CRPIX1=(n + 1) / 2, CRPIX2=spec["y_center_px"] + 1, CRPIX3=1.0, CRVAL1=target["ra_deg"],
-                  CRVAL2=target["dec_deg"], CRVAL3=grid["first_nm"], CD1_1=-c1 * np.cos(t), CD1_2=c2 * np.sin(t),
-                  CD2_1=c1 * np.sin(t), CD2_2=c2 * np.cos(t), CD3_3=grid["step_nm"])
+    header = world(profile, target, n)
     hdus = fits.HDUList([fits.PrimaryHDU()] + [fits.ImageHDU(d, header, name=name) for d, name in
                         ((signal, "SIGNAL"), (var, "VARIANCE"), (flags, "FLAGS"))])
     hdus.writeto(out, overwrite=True)
