@@ -91,10 +91,11 @@ func (p picture) draw(sky skyPlane, places []place) (template.HTML, error) {
 	f := frameOf(p.elements, p.rows, sky)
 	var s drawing.SVG
 	f.image(&s, p.id, data)
-	for _, l := range skyGrid(sky, p.elements, p.rows) {
+	grid := skyGrid(sky, p.elements, p.rows)
+	for _, l := range grid {
 		f.gridLine(&s, l)
 	}
-	f.gridWords(&s, skyGrid(sky, p.elements, p.rows))
+	f.gridWords(&s, grid)
 	f.axes(&s)
 	for _, at := range places {
 		f.mark(&s, at)
