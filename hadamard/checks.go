@@ -154,22 +154,49 @@ func (c *Checks) Reliable() bool {
 	return float64(len(c.columns)) >= 2*math.Log2(float64(c.code.v))
 }
 
-// Halves splits the dark set, alternate columns of the sorted set going to each half:
-// what is fitted on one is judged on the other. A set of one column leaves the second
-// half without checks (G of 0).
-func (c *Checks) Halves() (a, b *Checks) {
-	var sets [2][]int
-	for i, j := range c.columns {
-		sets[i%2] = append(sets[i%2], j)
+// split is a way to part the checks: what is fitted on one part is judged on the other.
+type split struct{ fit, judge *Checks }
+
+// A half of this many checks measures throughput about as well as all of them; with fewer,
+// three quarters of them are fitted at a time: half of a small dark set sees so few
+// patterns that its fit may be worse than none where that of all checks is good.
+const enoughChecks = 32
+
+// splits parts the checks in two or four, each of them judged once by what the others fit.
+// The parts are orthogonal sets of directions in the space of the checks, so that their
+// noise is independent. Of one check there is one part, judged by a fit that nothing backs.
+func (c *Checks) splits() []split {
+	n := 4
+	if c.G() >= 2*enoughChecks {
+		n = 2
 	}
-	half := func(columns []int) *Checks {
-		h := newChecks(c.code, columns)
-		if c.pedestal {
-			h = h.WithoutPedestal()
+	n = min(n, max(1, c.G()))
+	all := make([]split, n)
+	for i := range all {
+		var in, out []int
+		for d := range c.G() {
+			if d%n == i {
+				out = append(out, d)
+			} else {
+				in = append(in, d)
+			}
 		}
-		return h.withoutRows(c.lost)
+		all[i] = split{c.directions(in), c.directions(out)}
 	}
-	return half(sets[0]), half(sets[1])
+	return all
+}
+
+// directions leaves some of the rows of mix.
+func (c *Checks) directions(list []int) *Checks {
+	out := &Checks{code: c.code, columns: c.columns, pedestal: c.pedestal, lost: c.lost}
+	if len(list) == 0 {
+		return out.finish(nil)
+	}
+	mix := mat.NewDense(len(list), len(c.columns), nil)
+	for i, d := range list {
+		mix.SetRow(i, c.mix.RawRowView(d))
+	}
+	return out.finish(mix)
 }
 
 // WithoutPedestal leaves the checks that a reading constant over the steps (bias, dark

@@ -259,27 +259,38 @@ func TestChecksRefuse(t *testing.T) {
 	}
 }
 
-// TestHalves: alternate columns, and what was projected out stays out; a set of one
-// leaves an empty half that says nothing.
-func TestHalves(t *testing.T) {
-	c := mustCode(t, MSequence, 31)
-	checks := mustChecks(t, c, []int{20, 3, 7, 15, 11})
-	a, b := checks.Halves()
-	require.Equal(t, []int{3, 11, 20}, a.Columns())
-	require.Equal(t, []int{7, 15}, b.Columns())
-	require.False(t, checks.Reliable())
-	require.True(t, mustChecks(t, c, []int{0, 1, 2, 3, 4, 5, 6, 7, 8, 9}).Reliable(), "2 log2 31 = 9.9")
-
-	row := 0 // one whose marks on both halves are no pedestal
-	for c.Bit(row, 3) == c.Bit(row, 11) || c.Bit(row, 7) == c.Bit(row, 15) {
-		row++
-	}
-	less, err := checks.WithoutPedestal().WithoutRows([]int{row})
+// TestSplits: every check is judged once, by a fit that has seen none of it, and what was
+// projected out stays out; of one check nothing is left to fit.
+func TestSplits(t *testing.T) {
+	c := mustCode(t, MSequence, 63)
+	dark := []int{0, 3, 7, 8, 11, 15, 20, 31, 40, 44, 50, 52, 58, 60, 61, 62}
+	require.True(t, mustChecks(t, c, dark).Reliable())
+	require.False(t, mustChecks(t, c, dark[:11]).Reliable(), "2 log2 63 = 11.95")
+	checks, err := mustChecks(t, c, dark).WithoutPedestal().WithoutRows([]int{5, 17, 40})
 	require.NoError(t, err)
-	a, b = less.Halves()
-	require.Equal(t, []int{1, 0}, []int{a.G(), b.G()})
-	require.Equal(t, []int{row}, a.Lost())
-	chi2, expected, sd := b.Chi2(NewGram(31))
+	parts := checks.splits()
+	require.Len(t, parts, 4)
+	total := mat.NewDense(63, 63, nil)
+	for _, part := range parts {
+		require.Equal(t, 12, part.fit.G()+part.judge.G())
+		require.Equal(t, []int{5, 17, 40}, part.fit.Lost())
+		var overlap mat.Dense
+		overlap.Mul(part.fit.Projector(), part.judge.Projector())
+		require.Less(t, mat.Norm(&overlap, 2), 1e-12)
+		total.Add(total, part.judge.Projector())
+	}
+	require.True(t, mat.EqualApprox(total, checks.Projector(), 1e-12))
+
+	var many []int
+	for j := range 70 {
+		many = append(many, 3*j)
+	}
+	require.Len(t, mustChecks(t, mustCode(t, MSequence, 255), many).splits(), 2)
+
+	one := mustChecks(t, mustCode(t, MSequence, 31), []int{20}).splits()
+	require.Len(t, one, 1)
+	require.Equal(t, []int{0, 1}, []int{one[0].fit.G(), one[0].judge.G()})
+	chi2, expected, sd := one[0].fit.Chi2(NewGram(31))
 	require.Equal(t, []float64{0, 0, 0}, []float64{chi2, expected, sd})
-	require.Nil(t, b.Basis())
+	require.Nil(t, one[0].fit.Basis())
 }

@@ -22,7 +22,7 @@
 //     went wrong in the readings y. P projects on the checks (Checks).
 //   - Gram: the sum of y y'/s^2 over sampled pixels, all that is kept of the data to
 //     judge frames by (Gram).
-//   - hold-out: what is fitted on one half of the dark columns is judged on the other.
+//   - hold-out: what is fitted on some of the dark columns is judged on the others.
 //   - block: measurements as [row][pixel] of float32, row i at
 //     block[i*stride : i*stride+pixels]. Rows are code rows (steps in the
 //     order of the code, not of the night) or code columns, as said.

@@ -46,10 +46,11 @@ const minTermDirections = 0.5
 // factor again at the end, if it was not kept before); at last all that is kept, on all
 // checks, where it stands above its error. priors[0] is the prior covariance of the throughput's E, priors[m]
 // that of term m, v x v each; one of low rank ties rows together, as an extinction smooth
-// in time does.
+// in time does. Where found says so the factor is kept whatever this sample's hold-out
+// says, a larger sample having told: a term alone would else take its place.
 //
 // Errors: as Throughput; another number of priors than of terms and one.
-func (c *Checks) ThroughputTerms(g *TermGram, priors []*mat.SymDense) (*TermsFit, error) {
+func (c *Checks) ThroughputTerms(g *TermGram, priors []*mat.SymDense, found bool) (*TermsFit, error) {
 	if len(priors) != g.Terms()+1 {
 		return nil, fmt.Errorf("throughput: %d priors for %d terms; one is needed for the throughput and one for each term", len(priors), g.Terms())
 	}
@@ -63,7 +64,7 @@ func (c *Checks) ThroughputTerms(g *TermGram, priors []*mat.SymDense) (*TermsFit
 		return nil, err
 	}
 	s := termSearch{c, g, priors, make([]bool, len(priors)), &TermsFit{Throughput: first, Terms: make([]TermFit, g.Terms()), HeldOut: first.HeldOut}}
-	if s.kept[0] = first.Kept; !first.Kept { // terms must beat no correction, not a bad one
+	if s.kept[0] = first.Kept || found; !s.kept[0] { // terms must beat no correction, not a bad one
 		s.out.HeldOut.After, s.out.HeldOut.ExpectedAfter = first.HeldOut.Before, first.HeldOut.ExpectedBefore
 	}
 	for m := 1; m <= g.Terms(); m++ {
@@ -93,7 +94,7 @@ type termSearch struct {
 	out    *TermsFit
 }
 
-// try fits what is kept and more terms on each half, judges them on the other and keeps
+// try fits what is kept and more terms on all parts but one, judges them on that and keeps
 // them or not, by the last one's directions.
 func (s *termSearch) try(more ...int) (HeldOut, float64, error) {
 	m := more[len(more)-1]
@@ -103,9 +104,9 @@ func (s *termSearch) try(more ...int) (HeldOut, float64, error) {
 	terms := s.terms()
 	sums := s.gram.sums(terms)
 	held, directions := HeldOut{Before: s.out.HeldOut.After, ExpectedBefore: s.out.HeldOut.ExpectedAfter}, 0.0
-	a, b := s.checks.Halves()
-	for _, split := range [][2]*Checks{{a, b}, {b, a}} {
-		fit, found, err := split[0].fitTerms(sums, s.activePriors(), terms)
+	splits := s.checks.splits()
+	for _, part := range splits {
+		fit, found, err := part.fit.fitTerms(sums, s.activePriors(), terms)
 		if err != nil {
 			return held, 0, err
 		}
@@ -114,8 +115,8 @@ func (s *termSearch) try(more ...int) (HeldOut, float64, error) {
 			e = append(e, t.E)
 		}
 		found[0].Directions = fit.Directions
-		directions += found[slices.Index(terms, m)].Directions / 2
-		x, expected, sd := split[1].Chi2(sums.corrected(e))
+		directions += found[slices.Index(terms, m)].Directions / float64(len(splits))
+		x, expected, sd := part.judge.Chi2(sums.corrected(e))
 		held.After, held.ExpectedAfter, held.SD = held.After+x, held.ExpectedAfter+expected, math.Hypot(held.SD, sd)
 	}
 	kept := held.Falls() && directions >= minTermDirections

@@ -34,8 +34,8 @@ type ThroughputFit struct {
 	used int
 }
 
-// HeldOut is the chi-square of each half of the dark set under the correction fitted
-// on the other, both halves summed, before and after the correction, with what noise
+// HeldOut is the chi-square of each part of the dark set under the correction fitted
+// on the others, all parts summed, before and after the correction, with what noise
 // alone gives (the correction multiplies noise too) and its standard deviation. A
 // residual that took part in a fit proves nothing; this one does.
 type HeldOut struct {
@@ -103,20 +103,19 @@ func DefaultThroughputPrior(times []float64, independent, trendSpan float64) *ma
 // eigenvector of H, which needs no prior, is off by hundreds of percent where the
 // scene lights too few steps independently, as one star does.
 //
-// The fit is made three times: on each half of the dark set, judged on the other, and
-// on all. Errors: a prior of another size, or one that is no covariance; no pixels.
+// The fit is made on all but a part of the dark set, judged on that part, for each of two
+// parts, or of four where the checks are few; and on all. Errors: a prior of another size, or one that is no covariance; no pixels.
 func (c *Checks) Throughput(g *Gram, prior *mat.SymDense) (*ThroughputFit, error) {
 	if err := c.checkFit(g, prior); err != nil {
 		return nil, err
 	}
 	held := HeldOut{}
-	a, b := c.Halves()
-	for _, split := range [][2]*Checks{{a, b}, {b, a}} {
-		fit, err := split[0].fitThroughput(g, prior)
+	for _, part := range c.splits() {
+		fit, err := part.fit.fitThroughput(g, prior)
 		if err != nil {
 			return nil, err
 		}
-		held.add(split[1], g, g.Scaled(fit.factors()))
+		held.add(part.judge, g, g.Scaled(fit.factors()))
 	}
 	fit, err := c.fitThroughput(g, prior)
 	if err != nil {

@@ -112,7 +112,7 @@ func TestThroughputHoldsOut(t *testing.T) {
 	m.expose(truth)
 	prior := DefaultThroughputPrior(times, 0.05, 0.3)
 	g := m.gram()
-	a, b := m.checks.Halves()
+	a, b := m.checks.splits()[0].fit, m.checks.splits()[0].judge
 	fit, err := a.fitThroughput(g, prior)
 	require.NoError(t, err)
 	fitted, expected, _ := a.Chi2(g.Scaled(fit.factors()))

@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -184,10 +185,10 @@ func runExtract(ctx context.Context, a *app, run string, o extractOptions) error
 	if err != nil {
 		return err
 	}
-	return a.answer(answer, func(w io.Writer) error { return printExtract(w, o.output.dir, answer) })
+	return a.answer(answer, func(w io.Writer) error { return printExtract(w, o.output.dir, answer, o.line.MinSN) })
 }
 
-func printExtract(w io.Writer, dir string, a *extract.Answer) error {
+func printExtract(w io.Writer, dir string, a *extract.Answer, minSN float64) error {
 	var b strings.Builder
 	if s := a.Spectrum; s != nil {
 		fmt.Fprintf(&b, "%s: middle at RA %.6f, Dec %+.6f (element %.2f, row %.2f), %.2f voxels\n", s.Aperture, s.RADeg, s.DecDeg, s.Element, s.Row, s.AreaVoxels)
@@ -198,17 +199,31 @@ func printExtract(w io.Writer, dir string, a *extract.Answer) error {
 		printLines(&b, s.Lines)
 	}
 	if im := a.Image; im != nil {
-		fmt.Fprintf(&b, "image of %g to %g nm: %d pixels with a value, S/N %.3g in the median; the error is %.3f times the naive one\n", im.FromNM, im.ToNM, im.Pixels, im.MedianSN, im.ErrorOverNaive)
+		if im.Pixels == 0 {
+			fmt.Fprintf(&b, "image of %g to %g nm: nothing found: no place has good voxels at all these wavelengths, so there is no picture; choose a band that the cube covers\n", im.FromNM, im.ToNM)
+		} else {
+			fmt.Fprintf(&b, "image of %g to %g nm: %d pixels with a value, S/N %.3g in the median; the error is %.3f times the naive one\n", im.FromNM, im.ToNM, im.Pixels, im.MedianSN, im.ErrorOverNaive)
+		}
 	}
 	if l := a.Lines; l != nil {
-		fmt.Fprintf(&b, "lines: %d spectra fitted, %d of them below the S/N asked for; %d fits did not settle\nmedians of the others:\n", l.Pixels, l.Faint, l.Failed)
-		printLines(&b, l)
+		fmt.Fprintf(&b, "lines: of %d spectra %d show all lines at the S/N asked for, %d do not, and for %d no fit was found\n", l.Pixels+l.Failed, l.Pixels-l.Faint, l.Faint, l.Failed)
+		if foundLines(l) {
+			b.WriteString("medians where a line has the S/N asked for:\n")
+			printLines(&b, l)
+		} else {
+			fmt.Fprintf(&b, "nothing found: no single spectrum shows a line at a S/N of %g, so there are no velocities and no picture; add up an aperture (--circle with --lines), lower --min-sn, or search elsewhere with --velocity and --velocity-range\n", minSN)
+		}
 	}
 	for _, f := range a.Files {
 		fmt.Fprintln(&b, filepath.Join(dir, f))
 	}
 	_, err := io.WriteString(w, b.String())
 	return err
+}
+
+// foundLines tells whether any spectrum shows a line at the S/N asked for.
+func foundLines(l *extract.LinesAnswer) bool {
+	return slices.ContainsFunc(l.Lines, func(line extract.LineAnswer) bool { return line.Velocity != nil })
 }
 
 func printLines(b *strings.Builder, l *extract.LinesAnswer) {

@@ -133,6 +133,11 @@ func printReduction(w io.Writer, dir string, opts reduce.Options, r *reduce.Resu
 		fmt.Fprintf(&b, "dark columns: their squares are %.4f times what the errors say; 1 if errors can be believed\n", *q.DarkChi2Heldout)
 	}
 	printForecast(&b, r.Run.Forecast)
+	if c := r.Run.Calibration; c != nil {
+		for _, text := range c.Remarks {
+			fmt.Fprintf(&b, "note: %s\n", text)
+		}
+	}
 	for _, text := range r.Run.Warnings {
 		fmt.Fprintf(&b, "warning: %s\n", text)
 	}

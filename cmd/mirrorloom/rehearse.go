@@ -44,6 +44,13 @@ forward model that shares no mapping or decoding with reduce, and beside them th
 truth that a reduction should find. Lamps here are numbers: at the telescope mind
 the cautions that come with lamps and high voltage, and the local rules.
 
+Always drawn: light that is shifted, tilted and stretched against the profile, pixels and
+mirrors that answer unevenly (not with --perfect), photon, read and rounding noise (not
+with --noiseless), the profile's stuck mirrors, and the air if the scene has one. All else
+that can go wrong is a fault: without them closed mirrors leak nothing, whatever contrast
+the profile gives, neighbours lend each other nothing, each frame's throughput is 1, and
+no cosmic ray strikes.
+
 Faults, each off unless given as --fault NAME=SIZE:
   drift      throughput of each frame, rms          trend     throughput, linear, whole span
   colour     slope of the throughput over the band  sky       rms of sky lines against continuum

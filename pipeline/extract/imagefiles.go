@@ -95,6 +95,9 @@ func (c *Cube) writeImage(dir string, im *Image) error {
 	if err := fitsutil.WriteAtomic(filepath.Join(dir, ImageCSV), func(w io.Writer) error { return c.imageCSV(w, im) }); err != nil {
 		return err
 	}
+	if !hasValues(im.Signal) {
+		return nil
+	}
 	return fitsutil.WriteAtomic(filepath.Join(dir, ImagePlot), func(w io.Writer) error {
 		return c.drawMap(w, im.Signal, fmt.Sprintf("light of %g to %g nm (%s)", im.Band.FromNM, im.Band.ToNM, im.Unit))
 	})

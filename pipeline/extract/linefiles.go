@@ -6,6 +6,7 @@ import (
 	"io"
 	"math"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"mirrorloom/fitsutil"
@@ -137,7 +138,12 @@ func (o *LineOptions) cards() []card {
 	return cards
 }
 
-// writeLines writes maps, text and picture into dir. The maps have the axes
+// hasValues tells whether there is something to draw.
+func hasValues(values []float32) bool {
+	return slices.ContainsFunc(values, func(v float32) bool { return !isNaN(v) })
+}
+
+// writeLines writes maps and text into dir, and a picture if there is something to draw. The maps have the axes
 // (element, row, line).
 func (c *Cube) writeLines(dir string, m *LineMap) error {
 	primary, err := c.primary(m.Options.cards()...)
@@ -179,11 +185,14 @@ func (c *Cube) writeLines(dir string, m *LineMap) error {
 	if err := fitsutil.WriteAtomic(filepath.Join(dir, LinesCSV), func(w io.Writer) error { return c.linesCSV(w, m) }); err != nil {
 		return err
 	}
+	velocity := make([]float32, n)
+	for at := range velocity {
+		velocity[at] = float32(m.Lines[at][0].Velocity)
+	}
+	if !hasValues(velocity) {
+		return nil
+	}
 	return fitsutil.WriteAtomic(filepath.Join(dir, LinesPlot), func(w io.Writer) error {
-		velocity := make([]float32, n)
-		for at := range velocity {
-			velocity[at] = float32(m.Lines[at][0].Velocity)
-		}
 		return c.drawMap(w, velocity, fmt.Sprintf("velocity of the line at %g nm (km/s)", m.Options.RestNM[0]))
 	})
 }

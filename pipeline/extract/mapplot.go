@@ -21,13 +21,15 @@ const lowQuantile, highQuantile = 0.01, 0.99
 const mapWidth = 6 * vg.Inch
 
 // drawMap draws an image of elements and rows in shades of grey as PNG, arc seconds
-// along both axes from the field's centre. Pixels without a value are left out.
+// along both axes from the field's centre, with arrows to the north and to the east. Pixels
+// without a value have a colour that no shade has, which a key explains.
 func (c *Cube) drawMap(w io.Writer, values []float32, title string) (err error) {
 	defer draws("a map", &err)
 	low, high := shades(values)
 	picture := image.NewNRGBA(image.Rect(0, 0, c.Elements, c.Rows))
 	for i, v := range values {
 		if isNaN(v) {
+			picture.Set(i%c.Elements, c.Rows-1-i/c.Elements, noData)
 			continue
 		}
 		t := min(max((float64(v)-low)/(high-low), 0), 1)
@@ -43,8 +45,10 @@ func (c *Cube) drawMap(w io.Writer, values []float32, title string) (err error) 
 	p.X.Tick.Marker, p.Y.Tick.Marker = plot.DefaultTicks{}, plot.DefaultTicks{}
 	height := vg.Length(float64(mapWidth-vg.Inch)*(top-bottom)/(right-left)) + vg.Inch
 	height = min(max(height, 2*vg.Inch), 12*vg.Inch)
-	canvas := vgimg.New(mapWidth, height)
-	p.Draw(draw.New(canvas))
+	canvas := vgimg.New(mapWidth+margin, height)
+	whole := draw.New(canvas)
+	p.Draw(draw.Crop(whole, 0, -margin, 0, 0))
+	c.sky.drawMargin(draw.Crop(whole, mapWidth, 0, 0, 0))
 	_, err = vgimg.PngCanvas{Canvas: canvas}.WriteTo(w)
 	return err
 }

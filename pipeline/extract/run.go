@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"os"
 	"path/filepath"
 	"slices"
 )
@@ -90,18 +91,27 @@ func Run(ctx context.Context, opts Options) (*Answer, error) {
 		if a.Image, err = c.runImage(ctx, opts); err != nil {
 			return nil, err
 		}
-		a.Files = append(a.Files, ImageFITS, ImageCSV, ImagePlot)
+		a.Files = append(a.Files, ImageFITS, ImageCSV)
+		a.addPicture(opts.Out, ImagePlot)
 	}
 	if opts.Lines != nil {
 		if a.Lines, err = c.runLines(ctx, opts); err != nil {
 			return nil, err
 		}
-		a.Files = append(a.Files, LinesFITS, LinesCSV, LinesPlot)
+		a.Files = append(a.Files, LinesFITS, LinesCSV)
+		a.addPicture(opts.Out, LinesPlot)
 	}
 	if len(a.Files) == 0 {
 		return nil, fmt.Errorf("nothing to extract from %s; name an aperture, a band or lines", filepath.Base(c.Path()))
 	}
 	return a, nil
+}
+
+// addPicture lists a picture if there was something to draw.
+func (a *Answer) addPicture(dir, name string) {
+	if _, err := os.Stat(filepath.Join(dir, name)); err == nil {
+		a.Files = append(a.Files, name)
+	}
 }
 
 func (s *Spectrum) answer(o SpectrumOptions, unit string) *SpectrumAnswer {

@@ -43,7 +43,7 @@ func (c *Cube) writeSpectrum(dir string, o SpectrumOptions, s *Spectrum) error {
 	if err != nil {
 		return err
 	}
-	return fitsutil.WriteAtomic(filepath.Join(dir, SpectrumPlot), func(w io.Writer) error { return s.plot(w, c.Unit) })
+	return fitsutil.WriteAtomic(filepath.Join(dir, SpectrumPlot), func(w io.Writer) error { return s.plot(w, "spectrum of "+o.Aperture.Text, c.Unit) })
 }
 
 func (s *Spectrum) cards(o SpectrumOptions) []card {

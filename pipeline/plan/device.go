@@ -77,9 +77,7 @@ const (
 // deviceOf works the figures out over the grid's band.
 func deviceOf(s *sequence.Sequence) *Device {
 	p := s.Profile
-	o := deviceOptics{p, newStripArray(p, s.ElementMirrors()), physics.Beam{
-		FNumber: p.Spectrograph.FNumber, Oversize: p.Spectrograph.PupilOversize, ObscuredFraction: p.Telescope.ObscuredFraction,
-	}}
+	o := deviceOptics{p, p.StripArray(s.ElementMirrors()), p.Beam()}
 	first, last := p.Grid.WavelengthNM(-0.5), p.Grid.WavelengthNM(float64(p.Grid.Count)-0.5)
 	d := &Device{
 		HalfAngleDeg: physics.BeamHalfAngle(o.beam.FNumber),
@@ -104,16 +102,6 @@ func deviceOf(s *sequence.Sequence) *Device {
 	}
 	d.warn(o, s)
 	return d
-}
-
-// newStripArray is the device as a grating with strips. Mounted diagonally it is turned so
-// that the mirrors tilt along the dispersion.
-func newStripArray(p *instrument.Profile, mirrors int) physics.StripArray {
-	g := physics.MirrorGrating{PitchUM: p.DMD.PitchUM, TiltDeg: p.DMD.TiltDeg}
-	if p.DMD.IncidenceDeg != nil {
-		g.IncidenceDeg = *p.DMD.IncidenceDeg
-	}
-	return physics.StripArray{MirrorGrating: g, Diagonal: p.DMD.Mounting == instrument.Diagonal, Mirrors: mirrors}
 }
 
 // deviceOptics is the device in its beam.

@@ -11,6 +11,8 @@ type Calibration struct {
 	Neighbour   []AtNM      `json:"neighbour,omitempty"` // d, a fraction of the light
 	Contrast    []AtNM      `json:"contrast,omitempty"`  // on over off
 	FlatDepth   []DepthAtSN `json:"flat_depth,omitempty"`
+	// Remarks are sentences on what is far from the profile's word.
+	Remarks []string `json:"remarks,omitempty"`
 }
 
 // Measured is a value with its standard error.

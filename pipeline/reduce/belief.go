@@ -16,6 +16,8 @@ import (
 type belief struct {
 	mean       []float64
 	covariance *mat.SymDense
+	// scatter is the rms by which a frame that nothing was measured of is taken to differ.
+	scatter float64
 }
 
 var errSingularBelief = errors.New("internal error: a covariance of throughputs is not positive")
@@ -34,12 +36,15 @@ const (
 	priorTrend   = 0.30
 )
 
-func newBelief(times []float64) *belief {
-	return &belief{mean: make([]float64, len(times)), covariance: hadamard.DefaultThroughputPrior(times, priorScatter, priorTrend)}
+func newBelief(times []float64) *belief { return newBeliefOf(times, priorScatter, priorTrend) }
+
+// newBeliefOf is that of frames that scatter by so much around a trend of such a span.
+func newBeliefOf(times []float64, scatter, trend float64) *belief {
+	return &belief{mean: make([]float64, len(times)), covariance: hadamard.DefaultThroughputPrior(times, scatter, trend), scatter: scatter}
 }
 
 func (b *belief) clone() *belief {
-	c := &belief{mean: slices.Clone(b.mean), covariance: mat.NewSymDense(len(b.mean), nil)}
+	c := &belief{mean: slices.Clone(b.mean), covariance: mat.NewSymDense(len(b.mean), nil), scatter: b.scatter}
 	c.covariance.CopySym(b.covariance)
 	return c
 }
@@ -117,6 +122,13 @@ func newRelative(n int) *relative {
 		m.err[k] = math.Inf(1)
 	}
 	return m
+}
+
+// grow multiplies the errors.
+func (m *relative) grow(by float64) {
+	for k := range m.err {
+		m.err[k] *= by
+	}
 }
 
 // e gives 1/c - 1 of the frames that were measured, c scaled to mean 1, with errors.

@@ -29,6 +29,9 @@ func (r *reduction) calibration() *product.Calibration {
 	if e := r.optics.leak; e != nil && e.Significance(r.optics.geometry.L_c) > neighbourSigmas {
 		c.Contrast = r.sampled(e.Contrast)
 	}
+	if remarks := r.remarks(); len(remarks) > 0 {
+		c.Remarks = remarks
+	}
 	if reflect.DeepEqual(c, product.Calibration{}) {
 		return nil
 	}

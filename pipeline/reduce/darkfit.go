@@ -157,7 +157,7 @@ func (r *darkResult) uneasy() bool {
 // measured each by itself, and brought to one level by the light of the sample.
 func (d *darkFit) fit(before *belief) (*darkResult, error) {
 	n := len(before.mean)
-	r := &darkResult{belief: &belief{mean: make([]float64, n), covariance: mat.NewSymDense(n, nil)}}
+	r := &darkResult{belief: &belief{mean: make([]float64, n), covariance: mat.NewSymDense(n, nil), scatter: before.scatter}}
 	for i, c := range d.cycles {
 		factor, prior := before.ofCycle(c)
 		fit, err := d.sums[i].checks.Throughput(d.sums[i].gram.Scaled(factor), prior)
@@ -189,7 +189,7 @@ func (b *belief) ofCycle(c *cycle) (factor []float64, prior *mat.SymDense) {
 			case k >= 0 && m >= 0:
 				prior.SetSym(i, j, b.covariance.At(k, m)/(factor[i]*factor[j]))
 			case i == j:
-				prior.SetSym(i, j, priorScatter*priorScatter)
+				prior.SetSym(i, j, b.scatter*b.scatter)
 			}
 		}
 	}

@@ -255,7 +255,7 @@ func (f *termsFit) fitCycle(i int, light, decoded []float32) error {
 			}
 		}
 		g.Add(b.y, light, b.s2, weights, n, n, 0)
-		if fit, err = d.sums[i].checks.ThroughputTerms(g, priors); err != nil {
+		if fit, err = d.sums[i].checks.ThroughputTerms(g, priors, f.through.found.kept); err != nil {
 			return err
 		}
 		if pass < termPasses-1 {

@@ -60,8 +60,15 @@ func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
 		if err := s.each(ctx, func(chunk *sample) error { return t.dark.add(ctx, chunk) }); err != nil {
 			return 0, err
 		}
-		before := t.belief.clone()
-		if err := r.fitDark(t); err != nil {
+		typical, err := t.dark.typical(t.times)
+		if err != nil {
+			return 0, err
+		}
+		if len(t.outside) == 0 {
+			t.belief = typical
+		}
+		before, err := r.fitDark(t, typical)
+		if err != nil {
 			return 0, err
 		}
 		if t.found != nil {
@@ -132,15 +139,47 @@ func (r *reduction) measureOutside(ctx context.Context, t *throughput) error {
 			return err
 		}
 		if len(t.report.Methods) > 0 {
-			if err := r.agree(t.belief, o, t.report.Methods[0].Name); err != nil {
+			growth, err := r.agree(t.belief, o, t.report.Methods[0].Name)
+			if err != nil {
 				return err
 			}
+			o.measured.grow(growth)
 		}
 		if err := t.belief.learn(o.measured); err != nil {
 			return err
 		}
 		t.addMethod(o.name, alone, true)
 		t.corrected = true
+	}
+	return nil
+}
+
+// relearn holds the methods that need no code against what the dark columns say alone, and
+// believes again where their errors had to grow.
+func (r *reduction) relearn(t *throughput, dark *belief) error {
+	grown := false
+	for i, o := range t.outside {
+		growth, err := r.agree(dark, o, methodDark)
+		if err != nil {
+			return err
+		}
+		if growth > 1 {
+			o.measured.grow(growth)
+			for k := range t.curves[i].Err {
+				t.curves[i].Err[k] *= growth
+			}
+			t.report.Methods[i].Error *= growth
+			grown = true
+		}
+	}
+	if !grown {
+		return nil
+	}
+	t.belief = newBelief(t.times)
+	for _, o := range t.outside {
+		if err := t.belief.learn(o.measured); err != nil {
+			return err
+		}
 	}
 	return nil
 }
@@ -152,25 +191,28 @@ type outsideMethod struct {
 }
 
 // agree warns if a measurement and what is believed without it differ by more than
-// chance gives once in a million.
-func (r *reduction) agree(b *belief, o outsideMethod, others string) error {
+// chance gives once in a million, and gives by what the measurement's errors are to be
+// multiplied then, so that the difference is what is due (Birge 1932, Phys. Rev. 40, 207);
+// 1 where they agree.
+func (r *reduction) agree(b *belief, o outsideMethod, others string) (growth float64, err error) {
 	chi2, dof, err := b.compare(o.measured)
 	if err != nil {
-		return err
+		return 1, err
 	}
-	if limit := float64(dof) + 5*math.Sqrt(2*float64(dof)); dof > 0 && chi2 > limit {
-		r.warn("the throughput by %s and by %s disagree: chi-square %.0f where %d is due; look for clouds that one of them did not see, light lost at a sentinel's slit, or errors that are given too small", o.name, others, chi2, dof)
+	if limit := float64(dof) + 5*math.Sqrt(2*float64(dof)); dof == 0 || chi2 <= limit {
+		return 1, nil
 	}
-	return nil
+	growth = math.Sqrt(chi2 / float64(dof))
+	r.warn("the throughput by %s and by %s disagree: chi-square %.0f where %d is due, so that errors of the former count %.1f times; look for clouds that one of them did not see, light lost at a sentinel's slit, or errors that are given too small", o.name, others, chi2, dof, growth)
+	return growth, nil
 }
 
-// fitDark measures the throughput by the dark columns: alone, to compare, and with what
-// other methods told before.
-func (r *reduction) fitDark(t *throughput) error {
-	first := newBelief(t.times)
-	alone, err := t.dark.fit(first)
+// fitDark measures the throughput by the dark columns: alone, to compare, of frames that are
+// typical, and with what other methods told. before is what was believed without them.
+func (r *reduction) fitDark(t *throughput, typical *belief) (before *belief, err error) {
+	alone, err := t.dark.fit(typical)
 	if err != nil {
-		return err
+		return nil, err
 	}
 	if !(alone.heldOut.ExpectedBefore > 0) { // lost frames took as many checks as half of the dark columns give
 		t.dark = nil
@@ -178,14 +220,14 @@ func (r *reduction) fitDark(t *throughput) error {
 	}
 	t.found = alone
 	t.addHeldOut("throughput by dark columns", alone.heldOut, alone.kept)
+	before = t.belief.clone()
 	if len(t.outside) > 0 {
-		for _, o := range t.outside {
-			if err := r.agree(alone.belief, o, methodDark); err != nil {
-				return err
-			}
+		if err := r.relearn(t, alone.belief); err != nil {
+			return nil, err
 		}
+		before = t.belief.clone()
 		if t.found, err = t.dark.fit(t.belief); err != nil {
-			return err
+			return nil, err
 		}
 		all := t.found.heldOut
 		if !t.found.kept { // then the other methods' correction is left as it was
@@ -200,7 +242,7 @@ func (r *reduction) fitDark(t *throughput) error {
 	}
 	r.log.Info("throughput", zap.Float64("before", t.before()), zap.Float64("after", t.after()), zap.Bool("kept", t.found.kept),
 		zap.Float64("patterns", t.found.directions), zap.Int("pixels", t.found.pixels), zap.Int("struck", t.dark.struck))
-	return nil
+	return before, nil
 }
 
 // addHeldOut lists a step of the correction.

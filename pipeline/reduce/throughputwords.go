@@ -87,10 +87,10 @@ func (t *throughput) after() float64 {
 }
 
 // measured tells whether every frame's throughput is known to half of the scatter that
-// was assumed, or better: beyond a level and a trend in time, which most scenes measure
+// the night has, or better: beyond a level and a trend in time, which most scenes measure
 // however little they tell of single frames.
 func (t *throughput) measured() bool {
-	return t.belief.detrended(t.times) < priorScatter/2
+	return t.belief.detrended(t.times) < t.belief.scatter/2
 }
 
 // percent writes a part with two digits.

@@ -213,7 +213,7 @@ func (r *rehearsal) frameHeader(k int, start time.Time) (*fitsutil.Header, error
 		{Key: key.DateObs, Value: start.UTC().Format("2006-01-02T15:04:05.000"), Comment: "start of the exposure, UTC"},
 		{Key: key.RA, Value: ra, Comment: "right ascension of the " + place + ", deg"},
 		{Key: key.Dec, Value: dec, Comment: "declination of the " + place + ", deg"},
-		{Key: key.RotAng, Value: t.RotangDeg, Comment: "position angle of the detector's rows, deg"},
+		{Key: key.RotAng, Value: t.RotangDeg, Comment: "position angle of the slit, deg"},
 	}
 	if x := physics.TargetAirmass(ra, dec, middleOf(st, start), p.Site.LatitudeDeg, p.Site.LongitudeEastDeg); !math.IsNaN(x) {
 		cards = append(cards, fitsutil.Card{Key: key.Airmass, Value: x, Comment: "of the middle of the exposure"})
