@@ -216,7 +216,7 @@ func (r *reduction) fitDark(t *throughput, typical *belief) (before *belief, err
 	}
 	if !(alone.heldOut.ExpectedBefore > 0) { // lost frames took as many checks as half of the dark columns give
 		t.dark = nil
-		return nil
+		return t.belief.clone(), nil
 	}
 	t.found = alone
 	t.addHeldOut("throughput by dark columns", alone.heldOut, alone.kept)
