@@ -21,7 +21,7 @@ import (
 func chromium(t *testing.T, args ...string) string {
 	t.Helper()
 	return outside.Program(t, "chromium", append([]string{
-		"--headless", "--no-sandbox", "--disable-gpu", "--hide-scrollbars", "--no-first-run", "--user-data-dir=" + t.TempDir(), "--disable-background-networking",
+		"--headless", "--no-sandbox", "--disable-gpu", "--disable-dev-shm-usage", "--hide-scrollbars", "--no-first-run", "--user-data-dir=" + t.TempDir(), "--disable-background-networking",
 	}, args...)...)
 }
 
