@@ -100,6 +100,6 @@ not whole; 130 interrupted.`,
 	root.SetErr(a.stderr)
 	root.SetFlagErrorFunc(wrongFlag)
 	a.addFlags(root.PersistentFlags())
-	root.AddCommand(newPlanCommand(a), newRehearseCommand(a), newPairCommand(a), newReduceCommand(a), newCombineCommand(a), newExtractCommand(a), newDemoCommand(a), newVersionCommand(a))
+	root.AddCommand(newPlanCommand(a), newRehearseCommand(a), newPairCommand(a), newReduceCommand(a), newCombineCommand(a), newExtractCommand(a), newViewCommand(a), newDemoCommand(a), newVersionCommand(a))
 	return root, started
 }

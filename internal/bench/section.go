@@ -24,6 +24,7 @@ func sections() []section {
 		{"Floor", floor},
 		{"Memory", largeNight},
 		{"Workers", workers},
+		{"Viewing", viewing},
 		{"Growth", growth},
 		{"Decoding", decodingTable},
 		{"Kernels", kernelTable},

@@ -1,31 +1,42 @@
 package extract
 
+import "slices"
+
 // block adds what pixels x0..x0+n-1 of detector row y contribute.
-func (p *propagator) block(w *part, y int, traces []*traceRow, light [][]float32, pixels *pixelRow) {
+func (p *propagator) block(w *part, y int, traces []*traceRow, light *rowLight, pixels *pixelRow) {
 	if !p.gather(w, y, traces) {
 		return
 	}
-	p.c.samples(&w.b, light, pixels)
+	if p.even {
+		p.c.evenSamples(&w.b, light, pixels)
+		w.k.even = w.k.even.of(p.c, light)
+	} else {
+		p.c.samples(&w.b, light.of, pixels)
+	}
 	if !p.sumsOnly {
 		w.k.prepare(&w.b)
 		for x := range w.n {
 			if p.touched(w, x) {
-				p.pixel(w, x, light, pixels)
+				p.pixel(w, x, light.of, pixels)
 			}
 		}
+		if w.moments != nil {
+			p.addMoments(w, light.of)
+		}
 	}
-	p.addSums(w, light, pixels)
+	p.addSums(w, light.of, pixels)
 }
 
 // gather collects the weights of all channels on the block's pixels, by the slots
 // of the aperture's elements; false if there are none.
 func (p *propagator) gather(w *part, y int, traces []*traceRow) bool {
+	traces, rows := p.reaching(w, y, traces)
 	channels := p.c.Grid.Count
 	for i := range w.lo {
 		w.lo[i], w.hi[i] = int32(channels), 0
 	}
 	any := false
-	p.visit(w, traces, func(slot, l, from int, weights []float32) {
+	p.visit(w, traces, func(_, slot, l, from int, weights []float32) {
 		any = true
 		for k := range weights {
 			at := slot*w.n + from + k
@@ -45,25 +56,38 @@ func (p *propagator) gather(w *part, y int, traces []*traceRow) bool {
 	}
 	w.values = w.values[:size]
 	clear(w.values)
-	for _, t := range traces {
-		bySlot := map[int][]float64{}
-		p.visit(w, []*traceRow{t}, func(slot, l, from int, weights []float32) {
-			of := slot
-			if t.gathers == nil {
-				of = 0 // all slots alike
-			}
-			rows := bySlot[of]
-			if rows == nil {
-				rows = p.rowWeights(w, t, y, slot)
-				bySlot[of] = rows
-			}
-			for k, v := range weights {
-				at := slot*w.n + from + k
-				w.values[w.at[at]+int32(l)-w.lo[at]] += rows[from+k] * float64(v)
-			}
-		})
-	}
+	p.visit(w, traces, func(trace, slot, l, from int, weights []float32) {
+		row := rows[trace][slot]
+		for k, v := range weights {
+			at := slot*w.n + from + k
+			w.values[w.at[at]+int32(l)-w.lo[at]] += row[from+k] * float64(v)
+		}
+	})
 	return true
+}
+
+// reaching are the traces that read pixels of the block in detector row y, with the weights
+// of that row, [trace][slot][column of the block].
+func (p *propagator) reaching(w *part, y int, traces []*traceRow) (kept []*traceRow, rows [][][]float64) {
+	for _, t := range traces {
+		bySlot := make([][]float64, len(p.elements))
+		any := false
+		for slot := range bySlot {
+			switch {
+			case t.gathers == nil && slot > 0:
+				bySlot[slot] = bySlot[0] // all alike
+				continue
+			case t.gathers != nil && t.gathers[slot] == nil:
+				continue // no voxel of this trace is made of it
+			}
+			bySlot[slot] = p.rowWeights(w, t, y, slot)
+			any = any || slices.ContainsFunc(bySlot[slot], func(v float64) bool { return v != 0 })
+		}
+		if any {
+			kept, rows = append(kept, t), append(rows, bySlot)
+		}
+	}
+	return kept, rows
 }
 
 // rowWeights are the weights of detector row y in trace t of an element, by column of the
@@ -87,9 +111,9 @@ func (p *propagator) rowWeights(w *part, t *traceRow, y, slot int) []float64 {
 
 // visit calls f with the weights of every voxel that reaches the block, from column
 // from of the block on.
-func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int, weights []float32)) {
+func (p *propagator) visit(w *part, traces []*traceRow, f func(trace, slot, l, from int, weights []float32)) {
 	channels := p.c.Grid.Count
-	for _, t := range traces {
+	for trace, t := range traces {
 		for i := range t.sources {
 			reach := t.reach[i][w.x0/blockPixels]
 			for l := int(reach[0]); l < int(reach[1]); l++ {
@@ -101,7 +125,7 @@ func (p *propagator) visit(w *part, traces []*traceRow, f func(slot, l, from int
 				if from < 0 {
 					weights, from = weights[-from:], 0
 				}
-				f(t.sources[i].slot, l, from, weights[:min(len(weights), w.n-from)])
+				f(trace, t.sources[i].slot, l, from, weights[:min(len(weights), w.n-from)])
 			}
 		}
 	}

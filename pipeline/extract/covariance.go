@@ -5,9 +5,10 @@ import "mirrorloom/hadamard"
 // coupling gives the covariances of decoded elements in the pixels of a block.
 type coupling struct {
 	decoder *hadamard.Decoder
-	columns []int     // code columns of the elements in question
-	by      [][]int32 // m-sequences: the column whose covariance a pair has
-	spread  []float32 // [code column][pixel], m-sequences
+	columns []int         // code columns of the elements in question
+	by      [][]int32     // m-sequences: the column whose covariance a pair has
+	spread  []float32     // [code column][pixel], m-sequences
+	even    *evenCoupling // nil where it goes by the samples
 }
 
 func (c *Cube) newCoupling(elements []int) *coupling {
@@ -36,7 +37,7 @@ func (k *coupling) fork() *coupling {
 
 // prepare is called before at for each block.
 func (k *coupling) prepare(b *block) {
-	if k.by == nil {
+	if k.by == nil || k.even != nil {
 		return
 	}
 	if len(k.spread) != len(b.variances) {
@@ -52,7 +53,9 @@ func (k *coupling) at(dst [][]float64, b *block, x int, own func(slot int) float
 		dst[a][a] = own(a)
 		for e := range a {
 			var v float64
-			if k.by != nil {
+			if k.even != nil {
+				v = k.even.at(b, x, k.by[a][e])
+			} else if k.by != nil {
 				v = float64(k.spread[int(k.by[a][e])*b.n+x])
 			} else {
 				v = k.sum(b, x, k.columns[a], k.columns[e])

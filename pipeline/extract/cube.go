@@ -47,7 +47,8 @@ type Cube struct {
 	shift                      *calib.RowShift
 	field                      *calib.ShiftField // nil where light is taken from its own place
 	resampler                  *calib.Resampler
-	bandFactor, bandVariance   []float32 // [wavelength][element]; nil without a response
+	bandFactor, bandVariance   []float32   // [wavelength][element]; nil without a response
+	cached                     *cachedRows // nil where voxels come from the images
 }
 
 // Open opens the cube of a run: a folder that reduce or combine wrote, or its cube.fits.
@@ -82,7 +83,7 @@ func (c *Cube) WithLight(f *fitsutil.File) (*Cube, error) {
 		return nil, fmt.Errorf("%s has the axes %v, the cube %v", f.Path(), im.Axes, c.signal.Axes)
 	}
 	other := *c
-	other.signal = im
+	other.signal, other.cached = im, nil
 	return &other, nil
 }
 

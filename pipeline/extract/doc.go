@@ -35,6 +35,9 @@
 // throughput has errors it is a little more: reduce takes them for independent in the
 // pixels of a voxel as well.) Of samples that were restored see erasure.
 //
+// Voxels and the light behind them come from the cube's images or from a cache of them by
+// rows (MakeRows, WithRows), which gives the same bits in a part of the time.
+//
 // A combined cube is the mean of runs by shares o_iv. Its runs are opened, and the
 // variance of a sum is the sum over them of what the weights w_v o_iv give in run i: runs
 // are taken to be independent, as nights are. What cycles of one night share (lamp and

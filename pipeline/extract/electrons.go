@@ -10,12 +10,17 @@ import (
 // sampledCells of an aperture tell how a cube was scaled.
 const sampledCells = 9
 
+// knowsElectrons tells whether the cube says how its unit comes to detected electrons.
+func (c *Cube) knowsElectrons() bool {
+	return c.Unit == product.UnitSignal || c.onSky != nil && c.onSky.flux != nil
+}
+
 // electrons is what turns the cube's unit into detected electrons, by channel: the
 // root of the variance of an aperture's voxels in electrons over VARIANCE, the
 // median of some cells. nil for a cube in electrons.
 func (p *propagator) electrons() ([]float64, error) {
 	c := p.c
-	if c.Unit == product.UnitSignal || c.onSky != nil && c.onSky.flux != nil {
+	if c.knowsElectrons() {
 		return nil, nil // the light reader knows the factor
 	}
 	if !c.noise.Uniform {

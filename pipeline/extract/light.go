@@ -1,9 +1,12 @@
 package extract
 
 import (
+	"context"
 	"math"
+	"runtime"
 
 	"mirrorloom/calib"
+	"mirrorloom/pipeline/parallel"
 )
 
 // lightReader rebuilds from the cube the light of all elements at the detector's
@@ -73,6 +76,17 @@ func (r *lightReader) row(y int) ([][]float32, error) {
 	return light, nil
 }
 
+// some is all of it: the images give no less.
+func (r *lightReader) some(y int, _ []int) (*rowLight, error) {
+	all, err := r.row(y)
+	if err != nil {
+		return nil, err
+	}
+	l := &rowLight{of: all}
+	l.total, l.shared = r.c.addUp(all)
+	return l, nil
+}
+
 // trace fills in the light of a trace row.
 func (r *lightReader) trace(y0 int) error {
 	if r.traces[y0] != nil {
@@ -87,9 +101,12 @@ func (r *lightReader) trace(y0 int) error {
 		return err
 	}
 	light := table[float32](c.Elements, c.noise.Columns)
-	values, places := make([]float64, c.Grid.Count), make([]float64, c.Grid.Count)
+	workers := runtime.GOMAXPROCS(0)
+	memory := table[float64](2*workers, c.Grid.Count)
 	r.places.SetRow(float64(y0))
-	for j := range light {
+	r.traces[y0] = light
+	return parallel.Do(context.Background(), workers, c.Elements, func(worker, j int) error {
+		values, places := memory[2*worker], memory[2*worker+1]
 		for l := range values {
 			v := r.voxel(j, y0, l)
 			if r.electrons != nil {
@@ -102,9 +119,8 @@ func (r *lightReader) trace(y0 int) error {
 		}
 		r.places.Places(places, float64(j))
 		spread(light[j], values, places)
-	}
-	r.traces[y0] = light
-	return nil
+		return nil
+	})
 }
 
 // beyond the first and last voxel their light is taken to go on for so many columns:

@@ -46,7 +46,14 @@ type propagator struct {
 	sums [][]float64 // [sum][channel]
 	// sumsOnly leaves the covariances of channels out.
 	sumsOnly bool
-	light    *lightReader
+	light    lightRows
+	// perCount turns the cube's unit into electrons, see lightRows. even: see isEven; of
+	// are then the elements whose light is needed, nil for all.
+	perCount []float64
+	even     bool
+	of       []int
+	// stepwise forbids moments, see throughputmoves.go.
+	stepwise bool
 	// elements are those whose light the aperture's voxels are made of, slot the place of
 	// each among them.
 	elements []int
@@ -65,8 +72,10 @@ type part struct {
 	x0, n      int
 	channels   [][]float64 // [channel][lag]
 	sums       []float64
-	throughput [][]float64 // [sum][code row]: the weight of a relative error of the step
-	perChannel [][]float32 // [code row][channel]: the same of each channel
+	throughput [][]float64   // [sum][code row]: the weight of a relative error of the step
+	perChannel [][]float32   // [code row][channel]: the same of each channel, or
+	moments    [][][]float32 // [slot][channel][element]: see throughputmoves.go; nil in nil
+	across     []float32     // scratch, [pixel][element]
 	b          block
 	k          *coupling
 	pairs      [][]float64
@@ -126,11 +135,12 @@ func (c *Cube) carry(ctx context.Context, a *aperture, sums [][]float64, sumsOnl
 func (p *propagator) walk(ctx context.Context) error {
 	c, a := p.c, p.a
 	p.rowAt = rowStarts(a)
-	electrons, err := p.electrons()
-	if err != nil {
+	var err error
+	if p.perCount, err = p.electrons(); err != nil {
 		return err
 	}
-	p.light = c.newLightReader(electrons)
+	p.light = c.source().light(p.perCount)
+	p.chooseEven()
 	for x0 := 0; x0 < c.noise.Columns; x0 += blockPixels {
 		p.parts = append(p.parts, p.newPart(x0))
 	}
@@ -175,20 +185,15 @@ func (p *propagator) newPart(x0 int) *part {
 	m := len(p.elements) * w.n
 	w.lo, w.hi, w.at = make([]int32, m), make([]int32, m), make([]int32, m)
 	w.row, w.column = make([]float64, channels+Lags+1), make([]float64, c.noise.V)
-	if p.hasThroughput() {
+	if c.hasThroughput() {
 		w.throughput = table[float64](len(p.sums), c.noise.V)
-		w.perChannel = table[float32](c.noise.V, channels)
-	}
-	return w
-}
-
-func (p *propagator) hasThroughput() bool {
-	for _, e := range p.c.noise.ThroughputErr {
-		if e > 0 {
-			return true
+		if p.byMoments() {
+			w.moments = table[[]float32](len(p.elements), channels)
+		} else {
+			w.perChannel = table[float32](c.noise.V, channels)
 		}
 	}
-	return false
+	return w
 }
 
 // row adds what the pixels of detector row y contribute.
@@ -200,7 +205,7 @@ func (p *propagator) row(y int) error {
 	if len(traces) == 0 {
 		return nil
 	}
-	light, err := p.light.row(y)
+	light, err := p.lightOf(y)
 	if err != nil {
 		return err
 	}
@@ -307,7 +312,7 @@ func (p *propagator) pixelsOf(y int) (*pixelRow, error) {
 	}
 	if r.own == nil {
 		// A reader of its own: this one goes ahead of the rows that are added.
-		light, err := p.c.newLightReader(p.light.electrons).row(y)
+		light, err := p.c.source().light(p.perCount).row(y)
 		if err != nil {
 			return nil, err
 		}
@@ -330,17 +335,18 @@ func (p *propagator) result() (*covariances, error) {
 
 // addThroughput adds the errors of the steps' throughput, which all pixels share.
 func (p *propagator) addThroughput(out *covariances) {
+	if !p.c.hasThroughput() {
+		return
+	}
+	moves := table[float64](p.c.noise.V, p.c.Grid.Count)
+	for _, w := range p.parts {
+		p.moves(moves, w)
+	}
 	for k, e := range p.c.noise.ThroughputErr {
 		if !(e > 0) {
 			continue
 		}
-		row := make([]float64, p.c.Grid.Count)
-		for _, w := range p.parts {
-			for l, v := range w.perChannel[k] {
-				row[l] += float64(v)
-			}
-		}
-		addOuter(out.channels, row, e*e)
+		addOuter(out.channels, moves[k], e*e)
 		for i := range p.sums {
 			total := 0.0
 			for _, w := range p.parts {

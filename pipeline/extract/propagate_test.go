@@ -196,6 +196,7 @@ func compareWithDefinition(t *testing.T, c *Cube, elements, rows string) (ratio 
 	only, err := c.variancesOf(t.Context(), a, [][]float64{sum})
 	require.NoError(t, err)
 	require.InEpsilon(t, got.sums[0], only[0], 1e-12)
+	requireSameChannels(t, c, a, got)
 	want := naive(t, c, a, scalesOf(t, c, a))
 	for l := range channels {
 		for lag := range min(Lags+1, channels-l) {

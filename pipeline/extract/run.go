@@ -84,7 +84,7 @@ func Run(ctx context.Context, opts Options) (*Answer, error) {
 		if err := c.writeSpectrum(opts.Out, opts.Spectrum, s); err != nil {
 			return nil, err
 		}
-		a.Spectrum = s.answer(opts.Spectrum, c.Unit)
+		a.Spectrum = s.Answer(opts.Spectrum, c.Unit)
 		a.Files = append(a.Files, SpectrumFITS, SpectrumCSV, SpectrumPlot)
 	}
 	if opts.Image != nil {
@@ -114,7 +114,8 @@ func (a *Answer) addPicture(dir, name string) {
 	}
 }
 
-func (s *Spectrum) answer(o SpectrumOptions, unit string) *SpectrumAnswer {
+// Answer sums up the spectrum that o asked for of a cube in unit.
+func (s *Spectrum) Answer(o SpectrumOptions, unit string) *SpectrumAnswer {
 	a := &SpectrumAnswer{
 		Aperture: o.Aperture.Text, RADeg: s.Position.RADeg, DecDeg: s.Position.DecDeg, Element: s.Element, Row: s.Row, AreaVoxels: s.Area,
 	}

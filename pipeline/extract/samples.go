@@ -44,6 +44,7 @@ type block struct {
 	// of a sample there.
 	erased []*erasure
 	white  []float64
+	level  []float64 // see evenSamples
 }
 
 // blockPixels are worked on together.
@@ -61,16 +62,12 @@ const blockPixels = 256
 // all pixels share those errors, see addThroughput.
 func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 	v, n := c.noise.V, b.n
-	if len(b.light) != v*n {
-		b.light, b.predicted, b.variances = make([]float32, v*n), make([]float32, v*n), make([]float32, v*n)
+	if len(b.variances) != v*n {
+		b.variances = make([]float32, v*n)
 		b.own, b.white = make([]float64, n), make([]float64, n)
 	}
 	b.erased = c.erased.row(p.y, b.x0, n)
-	clear(b.light)
-	for j, column := range c.columns {
-		copy(b.light[column*n:(column+1)*n], light[j][b.x0:b.x0+n])
-	}
-	c.decoder.Predict(b.predicted, b.light, n, n)
+	c.predict(b, light)
 	unit := c.decoder.Code().Design().ReadNoiseVariance() / float64(v) // mean square of A's entries
 	for x := range n {
 		level := float64(p.plane[b.x0+x])
@@ -97,6 +94,19 @@ func (c *Cube) samples(b *block, light [][]float32, p *pixelRow) {
 			b.white[x] = c.mean(b.variances[x:], n)
 		}
 	}
+}
+
+// predict fills predicted.
+func (c *Cube) predict(b *block, light [][]float32) {
+	n := b.n
+	if len(b.light) != c.noise.V*n {
+		b.light, b.predicted = make([]float32, c.noise.V*n), make([]float32, c.noise.V*n)
+	}
+	clear(b.light)
+	for j, column := range c.columns {
+		copy(b.light[column*n:(column+1)*n], light[j][b.x0:b.x0+n])
+	}
+	c.decoder.Predict(b.predicted, b.light, n, n)
 }
 
 // ownVariances fills p.own for elements, for codes whose columns differ.

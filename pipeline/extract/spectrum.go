@@ -99,8 +99,30 @@ func (c *Cube) Spectrum(ctx context.Context, o SpectrumOptions) (*Spectrum, erro
 	return s, err
 }
 
+// Extent counts the elements and the cells, an element and row each, that o's shapes touch.
+// Errors are those of the shapes.
+func (c *Cube) Extent(o SpectrumOptions) (elements, cells int, err error) {
+	all, err := c.cellsOf(o)
+	if err != nil {
+		return 0, 0, err
+	}
+	seen := map[int]bool{}
+	for _, k := range all {
+		seen[k.element] = true
+	}
+	return len(seen), len(all), nil
+}
+
 // aperture loads the cells of both shapes.
 func (c *Cube) aperture(ctx context.Context, o SpectrumOptions) (*aperture, error) {
+	cells, err := c.cellsOf(o)
+	if err != nil {
+		return nil, err
+	}
+	return c.load(ctx, cells)
+}
+
+func (c *Cube) cellsOf(o SpectrumOptions) ([]cell, error) {
 	if o.Aperture == nil {
 		return nil, fmt.Errorf("no aperture; give a circle, an ellipse, a polygon or elements and rows")
 	}
@@ -115,7 +137,7 @@ func (c *Cube) aperture(ctx context.Context, o SpectrumOptions) (*aperture, erro
 		}
 		cells = withBackground(cells, around)
 	}
-	return c.load(ctx, cells)
+	return cells, nil
 }
 
 // withBackground joins the cells of aperture and background.

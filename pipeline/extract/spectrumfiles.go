@@ -39,7 +39,7 @@ func (c *Cube) writeSpectrum(dir string, o SpectrumOptions, s *Spectrum) error {
 	if err := fitsutil.WriteFile(filepath.Join(dir, SpectrumFITS), primary, append(hdus, covariance)...); err != nil {
 		return err
 	}
-	err = fitsutil.WriteAtomic(filepath.Join(dir, SpectrumCSV), func(w io.Writer) error { return s.writeCSV(w, c.Unit) })
+	err = fitsutil.WriteAtomic(filepath.Join(dir, SpectrumCSV), func(w io.Writer) error { return s.WriteCSV(w, c.Unit) })
 	if err != nil {
 		return err
 	}
@@ -134,8 +134,9 @@ func (s *Spectrum) covarianceImage(unit string) (*fitsutil.ImageData, error) {
 	return &fitsutil.ImageData{Name: "COVARIANCE", Header: h, Axes: []int{Lags + 1, len(s.Covariance)}, Data: data}, err
 }
 
-// writeCSV writes a line a channel; what is not a number is empty.
-func (s *Spectrum) writeCSV(w io.Writer, unit string) error {
+// WriteCSV writes spectrum.csv: a line a channel; what is not a number is empty. unit is the
+// cube's.
+func (s *Spectrum) WriteCSV(w io.Writer, unit string) error {
 	rows := [][]string{{"wavelength (nm)", "signal (" + unit + ")", "error (" + unit + ")", "naive error (" + unit + ")", "coverage", "flags"}}
 	for l, nm := range s.WavelengthNM {
 		rows = append(rows, []string{number(nm), number(s.Signal[l]), number(s.Error[l]), number(s.Naive[l]), number(s.Coverage[l]), strings.Join(FlagNames(s.Flags[l]), " ")})

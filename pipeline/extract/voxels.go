@@ -4,7 +4,6 @@ import (
 	"context"
 	"math"
 
-	"mirrorloom/fitsutil"
 	"mirrorloom/pipeline/product"
 )
 
@@ -39,26 +38,8 @@ func (c *Cube) loadChannels(ctx context.Context, cells []cell, from, to int) (*a
 	n := c.Grid.Count
 	a.signal, a.variance, a.flags = table[float32](len(cells), n), table[float32](len(cells), n), table[int16](len(cells), n)
 	a.weight = table[float64](len(cells), n)
-	plane := make([]float32, (a.endRow-a.firstRow)*c.Elements)
-	for _, im := range []struct {
-		image *fitsutil.Image
-		take  func(i, l int, v float32)
-	}{
-		{c.signal, func(i, l int, v float32) { a.signal[i][l] = v }},
-		{c.variance, func(i, l int, v float32) { a.variance[i][l] = v }},
-		{c.flags, func(i, l int, v float32) { a.flags[i][l] = int16(v) }},
-	} {
-		for l := from; l < to; l++ {
-			if err := ctx.Err(); err != nil {
-				return nil, err
-			}
-			if err := im.image.ReadPlaneRows(plane, l, a.firstRow, a.endRow); err != nil {
-				return nil, err
-			}
-			for i, k := range cells {
-				im.take(i, l, plane[(k.row-a.firstRow)*c.Elements+k.element])
-			}
-		}
+	if err := c.source().spectra(ctx, a, from, to); err != nil {
+		return nil, err
 	}
 	if err := c.onSky.places(a, c.Elements); err != nil {
 		return nil, err

@@ -22,7 +22,9 @@ func (r *reduction) remarks() []string {
 		leak, err := e.At(nm)
 		nominal := p.DMD.Contrast.At(nm)
 		if farLeak(leak, err, 1/nominal) {
-			found := fmt.Sprintf("more than %.0f", 1/(max(leak, 0)+remarkSigmas*err))
+			least := 1 / (max(leak, 0) + remarkSigmas*err)
+			unit := math.Pow(10, math.Floor(math.Log10(least))-1) // of two figures
+			found := fmt.Sprintf("more than %.0f", math.Floor(least/unit)*unit)
 			if e.Significance(nm) > neighbourSigmas {
 				c, cErr := e.Contrast(nm)
 				found = fmt.Sprintf("%.0f ± %.0f", c, cErr)
