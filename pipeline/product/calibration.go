@@ -50,6 +50,32 @@ type Arcs struct {
 	DispersionRatio float64 `json:"dispersion_ratio"`
 	// WidthPx is the FWHM of lines against wavelength.
 	WidthPx []AtNM `json:"width_px"`
+	// ByPlace and ByLine are the residuals of the centroids used, by element and row and by
+	// wavelength.
+	ByPlace []ArcPlace `json:"by_place,omitempty"`
+	ByLine  []ArcLine  `json:"by_line,omitempty"`
+}
+
+// ArcPlace sums up the residuals of arc lines, measured less fitted, seen through an element
+// in a stretch of detector rows, both inclusive and from 0.
+type ArcPlace struct {
+	Element  int `json:"element"`
+	FirstRow int `json:"first_row"`
+	LastRow  int `json:"last_row"`
+	Residual
+}
+
+// ArcLine sums up the residuals of a line.
+type ArcLine struct {
+	WavelengthNM float64 `json:"wavelength_nm"`
+	Residual
+}
+
+// Residual is the mean of some residuals, their rms about 0 and their number.
+type Residual struct {
+	MeanPx float64 `json:"mean_px"`
+	RMSPx  float64 `json:"rms_px"`
+	Number int     `json:"number"`
 }
 
 // Trace is the path of the spectra across the rows.

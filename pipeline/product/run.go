@@ -92,6 +92,8 @@ type Quality struct {
 	DarkChi2Steps []StepChi2 `json:"dark_chi2_steps"`
 	// Flags count voxels by their flags; empty without a cube.
 	Flags []FlagCount `json:"flags,omitempty"`
+	// DarkPulls is how the dark decodes scatter in units of their errors; nil without.
+	DarkPulls *DarkPulls `json:"dark_pulls,omitempty"`
 	// Saturated and BadPixels count detector pixels.
 	Saturated int `json:"saturated"`
 	BadPixels int `json:"bad_pixels"`

@@ -6,6 +6,8 @@ type Throughput struct {
 	// Verdict says in words what was measured, how well, and what to do where it was
 	// not.
 	Verdict string `json:"verdict"`
+	// State is the same for programs.
+	State ThroughputState `json:"state"`
 	// Methods are those that measured, in the order in which they were combined.
 	Methods []ThroughputMethod `json:"methods,omitempty"`
 	// HeldOut is what each step of the correction gained.
@@ -20,6 +22,19 @@ type Throughput struct {
 	// Image is what sentinel rows tell of the image's motion; absent without.
 	Image *ImageMotion `json:"image,omitempty"`
 }
+
+// ThroughputState is what is known of the frames' throughput.
+type ThroughputState string
+
+// The states.
+const (
+	ThroughputSteady      ThroughputState = "steady"      // the dark columns show no drift; nothing was corrected
+	ThroughputCorrected   ThroughputState = "corrected"   // it varied, was measured and corrected
+	ThroughputUncertain   ThroughputState = "uncertain"   // the scene cannot measure it frame by frame
+	ThroughputUnexplained ThroughputState = "unexplained" // the dark columns are uneasy, and no correction helps
+	ThroughputUnchecked   ThroughputState = "unchecked"   // corrected, by a monitor or sentinels, with nothing to check it
+	ThroughputUnmeasured  ThroughputState = "unmeasured"  // nothing measures it
+)
 
 // ThroughputMethod is one way of measuring throughput.
 type ThroughputMethod struct {

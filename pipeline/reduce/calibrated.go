@@ -60,7 +60,8 @@ func (r *reduction) arcSummary(a *calib.ArcSolution) *product.Arcs {
 		Lines: a.Used, Rejected: a.Rejected, RMSPx: a.RMSPx, WorstErrorPx: r.worstError(a),
 		ShiftPx:         g.X(j, y, g.L_c) - nominal.X(j, y, g.L_c),
 		DispersionRatio: g.D[0] / nominal.D[0],
-		WidthPx:         r.sampled(func(nm float64) (float64, float64) { return a.Width.FWHMPx(nm), 0 }),
+		ByPlace:         arcPlaces(a.Residuals), ByLine: arcLineResiduals(a.Residuals),
+		WidthPx: r.sampled(func(nm float64) (float64, float64) { return a.Width.FWHMPx(nm), 0 }),
 	}
 }
 

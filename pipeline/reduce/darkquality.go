@@ -1,5 +1,7 @@
 package reduce
 
+import "math"
+
 // darkChi2 sums, over dark columns and good pixels, squared decodes and their
 // variances, and counts them. The sums are kept apart because a variance that was
 // estimated from few electrons scatters: the mean of squares over such variances is
@@ -25,7 +27,8 @@ type restoredSample struct {
 // blockQuality is what a block of pixels adds to the figures of its row.
 type blockQuality struct {
 	dark     darkChi2
-	restored int // samples
+	pulls    darkPulls // of sampled pixels
+	restored int       // samples
 	// hits are those among them that cosmic rays struck, doubtful the pixels with hits
 	// that cannot be told; samples are the restored ones but those of lost rows.
 	hits, doubtful int
@@ -80,7 +83,14 @@ func (d *decoder) judge(w *decodeWorker, out *decodedRow, x0, n int, q *blockQua
 		q.dark.square += square
 		q.dark.variance += variance
 		q.dark.terms += g
-		if d.repair != nil && (x0+p)%stepEvery == out.y%stepEvery {
+		if (x0+p)%stepEvery != out.y%stepEvery {
+			continue
+		}
+		if !blind {
+			mean = 0
+		}
+		q.pulls.count(w, d.darkColumns, p, n, mean, math.Sqrt(variance/float64(g)))
+		if d.repair != nil {
 			d.judgeSteps(w, p, n, float64(expected[p]), q)
 		}
 	}

@@ -47,6 +47,7 @@ type rowRecord struct {
 	ScalePixels, ScaleApplied int
 	CoarseSum                 [scaleColumns]float64
 	CoarsePixels              [scaleColumns]int32
+	Pulls                     [pullBins]int32
 }
 
 // voxelRecord is what a trace row of the cube adds to rowQuality, to the rectifier's added
@@ -71,6 +72,7 @@ func (q *rowQuality) record() rowRecord {
 		Saturated: q.saturated, Restored: q.restored, Hits: q.hits, Doubtful: q.doubtful,
 		ScaleSum: q.scale.all.sum, ScaleMost: q.scale.most, ScalePixels: q.scale.all.n, ScaleApplied: q.scale.applied,
 	}
+	r.Pulls = q.pulls
 	for i, c := range q.scale.coarse {
 		r.CoarseSum[i], r.CoarsePixels[i] = c.sum, int32(c.n)
 	}
@@ -81,6 +83,7 @@ func (q *rowQuality) record() rowRecord {
 func (q *rowQuality) take(r *rowRecord) {
 	q.dark = darkChi2{r.DarkSquare, r.DarkVariance, r.DarkTerms}
 	q.saturated, q.restored, q.hits, q.doubtful = r.Saturated, r.Restored, r.Hits, r.Doubtful
+	q.pulls = r.Pulls
 	q.scale.all, q.scale.most, q.scale.applied = scaleSum{r.ScaleSum, r.ScalePixels}, r.ScaleMost, r.ScaleApplied
 	for i := range q.scale.coarse {
 		q.scale.coarse[i] = scaleSum{r.CoarseSum[i], int(r.CoarsePixels[i])}

@@ -43,7 +43,7 @@ func TestEveryFieldIsKeptOrMadeAnew(t *testing.T) {
 			}},
 		{reflect.TypeFor[rectifier](), []string{"added"},
 			[]string{"geometry", "edges", "voxels", "shift", "columns", "usage", "elements", "uniform", "response", "pixelVariance", "scaled", "low", "byElement", "workers", "field", "group"}},
-		{reflect.TypeFor[rowQuality](), []string{"dark", "good", "covered", "wanted", "flags", "flagged", "saturated", "restored", "hits", "doubtful", "scale"}, nil},
+		{reflect.TypeFor[rowQuality](), []string{"dark", "good", "covered", "wanted", "flags", "flagged", "pulls", "saturated", "restored", "hits", "doubtful", "scale"}, nil},
 		{reflect.TypeFor[darkChi2](), []string{"square", "variance", "terms"}, nil},
 		{reflect.TypeFor[rowScale](), []string{"all", "most", "applied", "coarse"}, nil},
 		{reflect.TypeFor[scaleSum](), []string{"sum", "n"}, nil},

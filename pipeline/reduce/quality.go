@@ -18,9 +18,10 @@ type rowQuality struct {
 	good, covered, wanted int // voxels: good; good and wanted; in coded rows and on the detector
 	flags                 int16
 	flagged               [flagBits]int // wanted voxels by the bits of their flags
-	saturated             int           // pixels
-	restored              int           // samples
-	hits, doubtful        int           // samples that cosmic rays struck; pixels where they cannot be told
+	pulls                 darkPulls
+	saturated             int // pixels
+	restored              int // samples
+	hits, doubtful        int // samples that cosmic rays struck; pixels where they cannot be told
 	scale                 rowScale
 }
 
@@ -67,6 +68,7 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 		for i, n := range r.flagged {
 			all.flagged[i] += n
 		}
+		all.pulls.add(r.pulls)
 		all.saturated += r.saturated
 		all.restored += r.restored
 		all.hits += r.hits
@@ -79,6 +81,7 @@ func sum(rows []rowQuality, total int, searched bool) (product.Quality, int16) {
 	if total > 0 {
 		q.GoodFraction = float64(all.good) / float64(total)
 	}
+	q.DarkPulls = all.pulls.summary()
 	if all.wanted > 0 {
 		for _, f := range product.Flags() {
 			n := all.flagged[bits.TrailingZeros16(uint16(f.Bit))]

@@ -225,6 +225,7 @@ func (w *sweep) decodeBlocks(ctx context.Context, s *strip, rows []*decodedRow) 
 	for i, b := range all {
 		q := &w.quality[rows[i/blocks].y]
 		q.dark.add(b.dark)
+		q.pulls.add(b.pulls)
 		q.restored += b.restored
 		q.hits += b.hits
 		q.doubtful += b.doubtful

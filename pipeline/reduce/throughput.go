@@ -71,15 +71,17 @@ func (r *reduction) measureThroughput(ctx context.Context) (int64, error) {
 		if err != nil {
 			return 0, err
 		}
-		if err := r.measureTerms(ctx, t, before); err != nil {
-			return 0, err
+		if t.found != nil {
+			if err := r.measureTerms(ctx, t, before); err != nil {
+				return 0, err
+			}
 		}
 	}
 	if t.corrected {
 		r.applyThroughput(t)
 	}
 	r.applyLeak(t)
-	t.report.Verdict = r.throughputVerdict(t)
+	t.report.Verdict, t.report.State = r.throughputVerdict(t)
 	return r.looked.Load(), ctx.Err()
 }
 
@@ -211,6 +213,10 @@ func (r *reduction) fitDark(t *throughput, typical *belief) (before *belief, err
 	alone, err := t.dark.fit(typical)
 	if err != nil {
 		return nil, err
+	}
+	if !(alone.heldOut.ExpectedBefore > 0) { // lost frames took as many checks as half of the dark columns give
+		t.dark = nil
+		return t.belief.clone(), nil
 	}
 	t.found = alone
 	t.addHeldOut("throughput by dark columns", alone.heldOut, alone.kept)

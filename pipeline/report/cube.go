@@ -1,12 +1,9 @@
 package report
 
 import (
-	"context"
-	"math"
 	"slices"
 
 	"mirrorloom/fitsutil"
-	"mirrorloom/pipeline/instrument"
 	"mirrorloom/pipeline/product"
 )
 
@@ -14,14 +11,20 @@ import (
 type cube struct {
 	file                    *fitsutil.File
 	signal, variance, flags *fitsutil.Image
+	// bad are the flags that keep a voxel from being looked at.
+	bad int16
 }
+
+// wholly are the flags that may lie on all voxels of a cube, in which there is light all the
+// same.
+const wholly = product.FlagLost | product.FlagNominalWave | product.FlagLowFlat
 
 func openCube(path string) (*cube, error) {
 	file, err := fitsutil.Open(path)
 	if err != nil {
 		return nil, err
 	}
-	c := &cube{file: file}
+	c := &cube{file: file, bad: product.FlagBad}
 	for _, im := range []struct {
 		name string
 		to   **fitsutil.Image
@@ -59,44 +62,24 @@ type flagShare struct {
 	Bit   int16
 	Share string
 	Bad   bool
+	Says  string
 }
 
 func (w *Light) flagShares() []flagShare {
 	var shares []flagShare
 	total := float64(w.elements*w.rows) * float64(w.planes)
 	for i, f := range product.Flags() {
-		shares = append(shares, flagShare{Name: f.Name, Bit: f.Bit, Bad: f.Bit&product.FlagBad != 0,
+		shares = append(shares, flagShare{Name: f.Name, Bit: f.Bit, Bad: f.Bit&product.FlagBad != 0, Says: sentence(f.Says),
 			Share: percent(float64(w.flagged[i]) / total)})
 	}
 	return shares
 }
 
-// spectrum is the voxels of a place.
-type spectrum struct {
-	signal, sigma []float64 // NaN where a voxel is not good
-	good          int
-}
-
-func (c *cube) spectrum(ctx context.Context, at place, grid instrument.Grid) (*spectrum, error) {
-	planes := min(c.signal.Planes(), grid.Count)
-	s := &spectrum{signal: make([]float64, planes), sigma: make([]float64, planes)}
-	row := make([]float32, 3*c.elements())
-	n := c.elements()
-	for l := range planes {
-		if err := ctx.Err(); err != nil {
-			return nil, err
-		}
-		for i, im := range []*fitsutil.Image{c.signal, c.variance, c.flags} {
-			if err := im.ReadPlaneRows(row[i*n:(i+1)*n], l, at.row, at.row+1); err != nil {
-				return nil, err
-			}
-		}
-		v, variance, bits := float64(row[at.element]), float64(row[n+at.element]), int16(row[2*n+at.element])
-		s.signal[l], s.sigma[l] = math.NaN(), math.NaN()
-		if sigma := math.Sqrt(variance); bits&product.FlagBad == 0 && !math.IsNaN(v) && !math.IsNaN(sigma) {
-			s.signal[l], s.sigma[l] = v, sigma
-			s.good++
-		}
+// detectorColumns is the width of the detector; 0 for a combined cube, which has none.
+func (c *cube) detectorColumns() int {
+	im, err := c.file.ImageNamed(product.PixelVariance)
+	if err != nil {
+		return 0
 	}
-	return s, nil
+	return im.Width()
 }

@@ -138,11 +138,26 @@ func (sc scene) input(s product.Schema) Input {
 			Inputs: []product.Input{{File: "sequence.fits", SHA256: "3b1c1c0e6a3f0d6dd1b0a7ad9b8a6f5d4c3b2a19087f6e5d4c3b2a1908f7e6d5"}},
 			Settings: map[string]any{"memory_bytes": 536870912, "workers": 2, "night": "night", "cube": true,
 				"recipe": map[string]any{"name": "default", "arc": map[string]any{"use": "off"}}},
-			Quality:  product.Quality{GoodFraction: 0.9412, CoveredGoodFraction: 0.99973, DarkChi2Heldout: &chi2, Lost: 1, BadPixels: 214},
-			Warnings: []string{why, "1 frame is a duplicate and was not used: see the ledger"},
+			Quality: product.Quality{
+				GoodFraction: 0.9412, CoveredGoodFraction: 0.99973, DarkChi2Heldout: &chi2, Lost: 1, RestoredGrowth: at(2.04), BadPixels: 214,
+				ErrorScale:    &product.ErrorScale{Mean: 1.1, Max: 7, Applied: 0.02, Map: [][]*float64{{at(1), nil}, {at(3), at(7)}}},
+				DarkChi2Steps: []product.StepChi2{{Step: 4, Chi2: at(1.02)}, {Step: 5}, {Step: 6, Chi2: at(31)}},
+				DarkPulls:     &product.DarkPulls{FirstSigma: -2, StepSigma: 1, Counts: []int{20, 330, 340, 19}},
+			},
+			Calibration: &product.Calibration{Arcs: &product.Arcs{
+				Lines: 300, RMSPx: 0.01, WorstErrorPx: 0.02,
+				ByPlace: []product.ArcPlace{{Element: 0, LastRow: 20, Residual: product.Residual{MeanPx: 0.01, RMSPx: 0.02, Number: 9}}, {Element: 39, FirstRow: 21, LastRow: 59, Residual: product.Residual{MeanPx: -0.02, RMSPx: 0.03, Number: 8}}},
+				ByLine:  []product.ArcLine{{WavelengthNM: 500, Residual: product.Residual{MeanPx: 0.002, RMSPx: 0.01, Number: 7}}, {WavelengthNM: 640, Residual: product.Residual{MeanPx: -0.004, RMSPx: 0.02, Number: 10}}},
+			}},
+			Throughput: &product.Throughput{State: product.ThroughputCorrected, Verdict: "it varied", HeldOut: []product.HeldOutStep{{Step: "throughput by dark columns", Before: 40, After: 1.02, Kept: true}}},
+			Warnings:   []string{why, "1 frame is a duplicate and was not used: see the ledger"},
 			Stages: []product.Stage{{Name: "pair", Seconds: 0.12}, {Name: "prepare", Seconds: 1.31, Bytes: 3.1e8},
 				{Name: "strips", Seconds: 3.92, Bytes: 4.24e9}},
 		},
 		Ledger: l, Schema: s, Profile: "optical", Degraded: []string{why},
+		Throughput: []Curve{
+			{Method: "together", Minutes: []float64{0, 1, 2}, C: []float64{1.01, 0.97, 1.02}, Err: []float64{0.01, 0.02, math.Inf(1)}},
+			{Method: "dark columns", Minutes: []float64{0, 1}, C: []float64{1.02, 0.96}, Err: []float64{0.02, 0.02}},
+		},
 	}
 }

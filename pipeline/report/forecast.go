@@ -87,14 +87,15 @@ func drawRatios(all []product.Reached) template.HTML {
 	}
 	bottom := 8 + ratioRow*float64(len(rows))
 	var s drawing.SVG
-	fmt.Fprintf(&s, `<svg class="ratios" role="img" aria-label="S/N reached over that forecast" viewBox="0 0 %d %s">`, chartWidth, drawing.Coord(bottom+40))
 	s.Line("axis", ratioLeft, bottom, chartWidth-ratioRight, bottom)
-	s.Line("one", x(1), 4, x(1), bottom)
-	for _, t := range roundTicks(low, high) {
-		s.Line("axis", x(t.Value), bottom, x(t.Value), bottom+4)
-		s.Text("middle", x(t.Value), bottom+17, t.Label)
+	s.Line("due", x(1), 4, x(1), bottom)
+	for _, t := range roundTicks(low, high, 5) {
+		s.Line("axis", x(t.at), bottom, x(t.at), bottom+5)
+		s.Text("middle", x(t.at), bottom+23, t.words)
 	}
-	s.Text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+34, "S/N reached over forecast")
+	s.WriteString(`<g class="name">`)
+	s.Text("middle", (ratioLeft+chartWidth-ratioRight)/2, bottom+47, "S/N reached / S/N forecast")
+	s.WriteString("</g>")
 	for i, w := range rows {
 		y := 8 + ratioRow*(float64(i)+0.5)
 		name := []rune(w.Name)
@@ -104,10 +105,9 @@ func drawRatios(all []product.Reached) template.HTML {
 		s.Text("end", ratioLeft-10, y+4, string(name))
 		e := ratioError(w)
 		s.Line("error", x(*w.Ratio-e), y, x(*w.Ratio+e), y)
-		fmt.Fprintf(&s, `<circle class="dot" cx="%s" cy="%s" r="4"/>`, drawing.Coord(x(*w.Ratio)), drawing.Coord(y))
+		mark(&s, "disc", x(*w.Ratio), y, 4)
 	}
-	s.WriteString("</svg>")
-	return template.HTML(s.String())
+	return wrapSVG("chart", "S/N reached over that forecast", chartWidth, bottom+chartBottom, s.String())
 }
 
 // ratioError is the standard error of a ratio of S/N: that of the light.

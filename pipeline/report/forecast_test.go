@@ -24,7 +24,7 @@ func TestForecastSection(t *testing.T) {
 	checkHTML(t, page)
 	for _, part := range []string{
 		"Forecast and what was reached", "rim &lt;b&gt;", `<td class="n">45.0</td>`, `<td class="n">41.9</td>`, `<td class="n">0.93</td>`, "0.95 ± 0.03",
-		"3 of 127 frames were lost.", "no voxel of it is good in this cube.", "The sky is 1.31 times as bright as forecast.", `class="ratios"`,
+		"3 of 127 frames were lost.", "no voxel of it is good in this cube.", "The sky is 1.31 times as bright as forecast.", `aria-label="S/N reached over that forecast"`,
 	} {
 		contains(t, page, part)
 	}

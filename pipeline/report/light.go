@@ -3,6 +3,7 @@ package report
 import (
 	"context"
 	"fmt"
+	"slices"
 
 	"mirrorloom/pipeline/product"
 )
@@ -26,6 +27,7 @@ type Light struct {
 	planes, all    int       // planes looked at, and all
 	flagged        []int64   // voxels that have the flag, in the order of product.Flags
 	finished       bool
+	bad            int16 // flags of voxels that do not count
 }
 
 // LightBytes is the memory of a Light, for each element and row.
@@ -35,7 +37,7 @@ const LightBytes = 8 + 4
 func NewLight(elements, rows, wavelengths int) *Light {
 	return &Light{
 		elements: elements, rows: rows, mean: make([]float64, elements*rows), good: make([]int32, elements*rows),
-		planes: wavelengths, all: wavelengths, flagged: make([]int64, len(product.Flags())),
+		planes: wavelengths, all: wavelengths, flagged: make([]int64, len(product.Flags())), bad: product.FlagBad,
 	}
 }
 
@@ -49,7 +51,7 @@ func (w *Light) AddRow(row int, signal []float32, flags []int16) {
 	same, run := int16(0), int64(0)
 	for i := range mean {
 		bits, v := flags[i], signal[i]
-		if bits&product.FlagBad == 0 && v == v {
+		if bits&w.bad == 0 && v == v {
 			mean[i] += float64(v)
 			good[i]++
 		}
@@ -76,6 +78,11 @@ func (w *Light) countFlags(bits int16, voxels int64) {
 // allFlags are those of a cube.
 var allFlags = product.Flags()
 
+// empty tells whether no voxel counts.
+func (w *Light) empty() bool {
+	return !slices.ContainsFunc(w.good, func(n int32) bool { return n > 0 })
+}
+
 // finish turns sums into means.
 func (w *Light) finish() {
 	if w.finished {
@@ -90,7 +97,7 @@ func (w *Light) finish() {
 // light reads the cube's.
 func (c *cube) light(ctx context.Context) (*Light, error) {
 	w := NewLight(c.elements(), c.rows(), c.signal.Planes())
-	w.planes = 0
+	w.planes, w.bad = 0, c.bad
 	stride := strideFor(w.elements*w.rows, w.all)
 	piece := min(max(1, pieceVoxels/w.elements), w.rows)
 	signal, flags := make([]float32, piece*w.elements), make([]float32, piece*w.elements)

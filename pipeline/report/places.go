@@ -27,19 +27,32 @@ const (
 	blankQuantile = 0.25
 )
 
-// choosePlaces picks the brightest place, the brightest one apart from it, and
-// one of blank sky, as far as the field has them.
+// mostSources are the bright places that are shown.
+const mostSources = 3
+
+// choosePlaces picks the brightest places that lie apart from each other, and one of blank
+// sky, as far as the field has them.
 func choosePlaces(w *Light, sky skyPlane) []place {
 	usable := w.usable()
 	if len(usable) == 0 {
 		return nil
 	}
-	first := w.brightest(usable, func(int) bool { return true })
-	chosen := []place{w.place(first, "the brightest place")}
+	var chosen []place
 	diagonal := math.Hypot(float64(w.elements)*sky.stepX, float64(w.rows)*sky.stepY)
-	second := w.brightest(usable, func(i int) bool { return w.distance(first, i, sky) > apartPart*diagonal })
-	if second >= 0 {
-		chosen = append(chosen, w.place(second, "the brightest place apart from A"))
+	apart := func(i int) bool {
+		for _, p := range chosen {
+			if w.distance(p.row*w.elements+p.element, i, sky) <= apartPart*diagonal {
+				return false
+			}
+		}
+		return true
+	}
+	for _, what := range []string{"the brightest place", "the brightest place apart from A", "the brightest place apart from A and B"}[:mostSources] {
+		i := w.brightest(usable, apart)
+		if i < 0 {
+			break
+		}
+		chosen = append(chosen, w.place(i, what))
 	}
 	blank := w.blank(usable)
 	if !slices.ContainsFunc(chosen, func(p place) bool { return p.row*w.elements+p.element == blank }) {
@@ -72,6 +85,17 @@ func (w *Light) usable() []int {
 		}
 	}
 	return usable
+}
+
+// usableRows are the rows that have such places, in order.
+func (w *Light) usableRows() []int {
+	var rows []int
+	for _, i := range w.usable() {
+		if y := i / w.elements; len(rows) == 0 || rows[len(rows)-1] != y {
+			rows = append(rows, y)
+		}
+	}
+	return rows
 }
 
 func (w *Light) place(i int, what string) place {

@@ -11,6 +11,7 @@ import (
 	"os"
 	"path/filepath"
 	"regexp"
+	"slices"
 	"strconv"
 	"strings"
 	"testing"
@@ -66,11 +67,11 @@ func checkHTML(t *testing.T, page string) {
 	require.Empty(t, open)
 }
 
-var drawings = regexp.MustCompile(`(?s)<svg.*?</svg>`)
+var drawings = regexp.MustCompile(`(?s)<svg class="(chart|picture)".*?</svg>`)
 
-var bitmaps = regexp.MustCompile(`href="[^"]*"`)
+var bitmaps = regexp.MustCompile(`href="data[^"]*"`)
 
-// checkSVG demands that every drawing is XML by itself.
+// checkSVG demands that every drawing is XML by itself, and so many charts and pictures.
 func checkSVG(t *testing.T, page string, number int) {
 	t.Helper()
 	all := drawings.FindAllString(page, -1)
@@ -88,16 +89,58 @@ func checkSVG(t *testing.T, page string, number int) {
 	}
 }
 
+// withoutUnit are names of axes that have no unit: counts and ratios.
+var withoutUnit = []string{
+	"element", "detector row", "science step", "chi-square", "chi-square of dark columns that the fit has not seen", "throughput", "part of all",
+	"decode of a dark column / its standard deviation", "S/N reached / S/N forecast", "electrons", "electrons a voxel",
+}
+
+var (
+	figures  = regexp.MustCompile(`(?s)<figure.*?</figure>`)
+	captions = regexp.MustCompile(`(?s)<figcaption[^>]*>(.*?)</figcaption>`)
+	names    = regexp.MustCompile(`(?s)<g class="name">(.*?)</g>`)
+	words    = regexp.MustCompile(`<text[^>]*>([^<]*)</text>`)
+)
+
+// checkFigures demands of every figure a caption, a name for those who cannot see it, and
+// names of its axes with their units.
+func checkFigures(t *testing.T, page string) {
+	t.Helper()
+	all := figures.FindAllString(page, -1)
+	require.NotEmpty(t, all)
+	for _, f := range all {
+		caption := captions.FindStringSubmatch(f)
+		require.NotNil(t, caption, f[:min(len(f), 200)])
+		require.Greater(t, len(strings.Fields(caption[1])), 3, caption[1])
+		if !drawings.MatchString(f) {
+			contains(t, f, "Too few good voxels to draw")
+			continue
+		}
+		require.Regexp(t, `aria-label="[^"]+"`, f)
+		named := 0
+		for _, g := range names.FindAllStringSubmatch(f, -1) {
+			for _, w := range words.FindAllStringSubmatch(g[1], -1) {
+				named++
+				name := html.UnescapeString(w[1])
+				require.True(t, slices.Contains(withoutUnit, name) || regexp.MustCompile(`, (nm|px|%|hours)$`).MatchString(name), "the axis %q has no unit", name)
+			}
+		}
+		require.Positive(t, named, caption[1])
+	}
+}
+
 func TestPage(t *testing.T) {
 	dir := t.TempDir()
 	in := smallScene().write(t, dir)
 	page := renderPage(t, dir, in)
 	checkHTML(t, page)
-	checkSVG(t, page, 4)
+	checkSVG(t, page, 15)
+	checkFigures(t, page)
+	require.Less(t, len(page), 3<<20)
 	for _, part := range []string{
-		"The cube was written, but it is not whole.", "lacking is step 19", "Exit code 3",
+		"Can this cube be trusted?", "Look at these places first.", "lacking is step 19", "Exit code 3",
 		"40 elements × 60 detector rows × 50 wavelengths", "all 50 wavelengths", "18 rows that are ok",
-		in.Run.Inputs[0].SHA256, "recipe.arc.use", "536870912", "1.08 GB/s", "step 7 is served by f00007.fits", "vacuum wavelength (nm)",
+		in.Run.Inputs[0].SHA256, "recipe.arc.use", "536870912", "1.08 GB/s", "step 7 is served by f00007.fits", "vacuum wavelength, nm",
 	} {
 		contains(t, page, part)
 	}
@@ -121,6 +164,10 @@ func TestPageIsSelfContained(t *testing.T) {
 		require.False(t, strings.Contains(page, forbidden), forbidden)
 	}
 	for _, m := range regexp.MustCompile(`(?:src|href)="([^"]*)"`).FindAllStringSubmatch(page, -1) {
+		if anchor, here := strings.CutPrefix(m[1], "#"); here {
+			contains(t, page, fmt.Sprintf(`id="%s"`, anchor))
+			continue
+		}
 		require.True(t, strings.HasPrefix(m[1], "data:image/png;base64,"), m[1])
 	}
 }
@@ -141,7 +188,7 @@ func TestPageEscapes(t *testing.T) {
 	in.Run.Stages[0].Name, in.Run.Version, in.Run.CPULevel = hostile+"13", hostile+"14", hostile+"15"
 	page := renderPage(t, dir, in)
 	checkHTML(t, page)
-	checkSVG(t, page, 4)
+	checkSVG(t, page, 15)
 	require.False(t, strings.Contains(page, "<script"))
 	require.False(t, strings.Contains(page, "<img"))
 	text := html.UnescapeString(page)
@@ -181,19 +228,28 @@ func TestNoCube(t *testing.T) {
 	page := renderPage(t, dir, in)
 	checkHTML(t, page)
 	contains(t, page, "This run made no cube.fits")
-	contains(t, page, "The element cube was written, but it is not whole.")
+	contains(t, page, "Can this element cube be trusted?")
 }
 
-// A cube without a single good voxel still gets its page.
+// A cube without a single good voxel still gets its page, and its pictures where there is
+// light.
 func TestNothingGood(t *testing.T) {
 	sc := scene{elements: 1, rows: 4, planes: 3, parity: 1, object: "nothing"}
 	dir := t.TempDir()
 	in := sc.write(t, dir)
-	rewriteFlags(t, dir, sc, product.FlagLost)
+	rewriteFlags(t, dir, sc, product.FlagNoData)
 	page := renderPage(t, dir, in)
 	checkHTML(t, page)
-	checkSVG(t, page, 0)
+	checkSVG(t, page, 8) // none of light
 	contains(t, page, "there is nothing to draw")
+	contains(t, page, "<td>NODATA</td><td class=\"n\">1</td><td class=\"n\">100 %</td>")
+
+	rewriteFlags(t, dir, sc, product.FlagLost)
+	page = renderPage(t, dir, in)
+	checkHTML(t, page)
+	checkFigures(t, page)
+	contains(t, page, "No voxel of this cube is good.")
+	contains(t, page, "White-light picture")
 	contains(t, page, "<td>LOST</td><td class=\"n\">16</td><td class=\"n\">100 %</td>")
 }
 

@@ -10,9 +10,10 @@ import (
 // skyPlane is the linear part of a cube's celestial coordinates: offsets in
 // pixels to offsets in the tangent plane.
 type skyPlane struct {
-	cd           [2][2]float64 // arc seconds to the east and to the north per pixel
-	refX, refY   float64       // CRPIX, counted from 0
-	stepX, stepY float64       // arc seconds per pixel along the axes, > 0
+	cd            [2][2]float64 // arc seconds to the east and to the north per pixel
+	refX, refY    float64       // CRPIX, counted from 0
+	stepX, stepY  float64       // arc seconds per pixel along the axes, > 0
+	raDeg, decDeg float64       // of the reference pixel
 }
 
 const arcsecPerDeg = 3600
@@ -35,6 +36,7 @@ func skyOf(h *fitsutil.Header) (skyPlane, error) {
 		}
 	}
 	s.refX, s.refY = get("CRPIX1", 1)-1, get("CRPIX2", 1)-1
+	s.raDeg, s.decDeg = get("CRVAL1", 1), get("CRVAL2", 1)
 	if err != nil {
 		return skyPlane{}, err
 	}

@@ -54,7 +54,7 @@ func (p *page) addSums(ctx context.Context, cubePath string, places []place) err
 				p.Sums[i].Ratios = append(p.Sums[i].Ratios, "too few good voxels")
 				continue
 			}
-			p.Sums[i].Ratios = append(p.Sums[i].Ratios, fmt.Sprintf("%+.1f %%", 100*(f.Ratio-1)))
+			p.Sums[i].Ratios = append(p.Sums[i].Ratios, fmt.Sprintf("%+.1f %%", math.Round(1000*(f.Ratio-1))/10+0))
 			least, most = min(least, f.Ratio), max(most, f.Ratio)
 		}
 	}

@@ -98,6 +98,9 @@ func (f *folder) end(state State, note string) {
 // old is how long what somebody else may be making is left alone.
 const old = time.Hour
 
+// headStart is what the first picture gets before anything else reads the cube.
+const headStart = 500 * time.Millisecond
+
 // keep makes what is kept of the run and begins to use it.
 func (v *Viewer) keep(ctx context.Context) {
 	f := v.folder
@@ -107,6 +110,10 @@ func (v *Viewer) keep(ctx context.Context) {
 	f.mu.Lock()
 	f.now.Bytes = v.CacheBytes()
 	f.mu.Unlock()
+	select {
+	case <-time.After(headStart):
+	case <-ctx.Done():
+	}
 	err := v.make(ctx)
 	switch {
 	case err == nil:

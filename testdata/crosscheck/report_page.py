@@ -3,8 +3,9 @@ wcslib and numpy see it.
 
 usage: report_page.py FOLDER
 
-Checked: the arrows of north and east against the WCS; the scale bar against the
-field's width; the picture's pixels against the mean over good voxels; the ring A
+Checked: the arrows of north and east against the WCS; every point of the grid of right
+ascension and declination against the coordinate written on it; the scale bar against the
+field's width; the wavelength of the line that is drawn; the picture's pixels against the mean over good voxels; the ring A
 against the brightest place; the line of spectrum A against its voxels.
 """
 
@@ -24,8 +25,11 @@ with open(folder + "/report.html", encoding="utf-8") as f:
     html = f.read()
 pictures = [ET.fromstring(s) for s in re.findall(r"<svg.*?</svg>", html, re.S)]
 SVG = "{http://www.w3.org/2000/svg}"
-picture, charts = pictures[0], pictures[1:]
-assert picture.get("class") == "picture" and len(charts) == 3, len(charts)
+drawn = [p for p in pictures if p.get("class") == "picture"]
+picture = drawn[0]
+assert picture.get("aria-label") == "White-light picture of the field", picture.attrib
+charts = [p for p in pictures if p.get("aria-label", "").startswith("Spectrum ")]
+assert len(charts) == 4, len(charts)
 with fits.open(folder + "/cube.fits") as hdus:
     signal, flags, header = hdus["SIGNAL"].data.astype(float), hdus["FLAGS"].data, hdus["SIGNAL"].header
     variance = hdus["VARIANCE"].data.astype(float)
@@ -63,12 +67,54 @@ for cls, target in (("north", (ra, dec + step)), ("east", (ra + step / np.cos(np
 # The scale: a round number of arc seconds is as long as the WCS says.
 bar = one("line", "bar")[0]
 x1, x2 = numbers(bar, "x1", "x2")
-label = [t.text for t in picture.iter(SVG + "text") if t.text.endswith("″")]
+label = [t.text for t in picture.iter(SVG + "text") if t.text and t.text.endswith("″")]
 assert len(label) == 1, label
 arcsec_x = 3600 * np.hypot(header["CD1_1"], header["CD2_1"])
 arcsec_y = 3600 * np.hypot(header["CD1_2"], header["CD2_2"])
 assert abs((x2 - x1) - float(label[0][:-1]) * unit_x / arcsec_x) < 0.05
 assert abs(unit_x / arcsec_x - unit_y / arcsec_y) < 1e-3, "arc seconds are not square"
+
+# The grid of the sky: each point of a line lies at the coordinate in its title, to the
+# rounding of the drawing, 0.01 units; the labels are among the titles.
+scale = unit_x / arcsec_x  # units an arc second
+
+
+def degrees(words):
+    parts = words.replace("−", "-").lstrip("+-").split(":")
+    value = sum(float(p) / 60**i for i, p in enumerate(parts))
+    return -value if words[0] in "−-" else value
+
+
+seen = {"meridian": 0, "parallel": 0}
+for drawing in drawn[:2]:
+    titles = set()
+    for path in drawing.iter(SVG + "path"):
+        cls = path.get("class")
+        if cls not in seen:
+            continue
+        seen[cls] += 1
+        words = path.find(SVG + "title").text
+        titles.add(words)
+        points = np.array(re.findall(r"(-?[\d.]+),(-?[\d.]+)", path.get("d")), float)
+        assert len(points) >= 2
+        pixels = np.column_stack([(points[:, 0] - left) / unit_x - 0.5, (top + height - points[:, 1]) / unit_y - 0.5])
+        assert (pixels > -0.52).all() and (pixels < [elements - 0.48, rows - 0.48]).all(), "the grid leaves the field"
+        a, d = w.wcs_pix2world(pixels, 0).T
+        if cls == "parallel":
+            off = (d - degrees(words)) * 3600
+        else:
+            off = ((a - 15 * degrees(words) + 180) % 360 - 180) * 3600 * np.cos(np.radians(d))
+        assert np.abs(off).max() < 0.02 / scale + 0.005, (cls, words, off)
+    for t in drawing.iter(SVG + "text"):
+        if t.text and t.text.count(":") == 2:
+            assert t.text in titles, (t.text, titles)
+assert min(seen.values()) >= 4, seen
+
+# The line that the nebula shines in is found, at 0.4 of the axis of wavelengths.
+assert len(drawn) >= 2 and "line" in drawn[1].get("aria-label"), [p.attrib for p in drawn]
+ranges = re.findall(r"Line at ([\d.]+) to ([\d.]+) nm", html)
+nm = header["CRVAL3"] + 0.4 * planes * header["CD3_3"]
+assert any(float(lo) <= nm <= float(hi) for lo, hi in ranges), (ranges, nm)
 
 # The bitmap: transparent without a good voxel, else darker where brighter.
 count = good.sum(axis=0)
@@ -93,21 +139,21 @@ assert abs(cx - (left + (x + 0.5) * unit_x)) < 0.02 and abs(cy - (top + height -
 # signal, and those of its bands one of signal + and - sigma.
 lines, bands = [], []
 for path in charts[0].iter(SVG + "path"):
-    style = path.get("style")
+    style = path.get("class")
     points = np.array(re.findall(r"(-?[\d.]+),(-?[\d.]+)", path.get("d")), float)
-    if "stroke:#202020" in style:
+    if style == "line":
         lines.append(points)
-    elif "fill:#C4C4C4" in style:
+    elif style == "band":
         bands.append(points)
 got = np.concatenate(lines)
 ok = good[:, y, x]
 wave, value, sigma = np.flatnonzero(ok), signal[ok, y, x], np.sqrt(variance[ok, y, x])
 assert len(got) == len(wave), (len(got), len(wave))
-for axis, want in ((0, wave), (1, value)):
+for axis, want in ((0, wave), (1, value)):  # y runs downwards
     a, b = np.polyfit(want, got[:, axis], 1)
-    assert a > 0 and np.abs(got[:, axis] - (a * want + b)).max() < 0.02, axis
-upper = np.concatenate([p[: len(l)] for p, l in zip(bands, lines)])
-lower = np.concatenate([p[len(l) : 2 * len(l)][::-1] for p, l in zip(bands, lines)])
+    assert a * (1 - 2 * axis) > 0 and np.abs(got[:, axis] - (a * want + b)).max() < 0.02, axis
+upper = np.concatenate([p[: len(p) // 2] for p in bands])
+lower = np.concatenate([p[len(p) // 2 :][::-1] for p in bands])
 assert np.abs(upper[:, 1] - (a * (value + sigma) + b)).max() < 0.05
 assert np.abs(lower[:, 1] - (a * (value - sigma) + b)).max() < 0.05
 print("ok")

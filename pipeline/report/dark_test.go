@@ -34,12 +34,13 @@ func TestDarkFacts(t *testing.T) {
 // The map is well-formed and has a cell for each stretch that was measured.
 func TestDrawScale(t *testing.T) {
 	at := func(x float64) *float64 { return &x }
-	require.Empty(t, drawScale(nil))
-	require.Empty(t, drawScale(&product.ErrorScale{}))
-	text := string(drawScale(&product.ErrorScale{Map: [][]*float64{{at(1), nil, at(40)}, {at(0.9), at(2), nil}}}))
+	require.Empty(t, drawScale(nil, 0, 0))
+	require.Empty(t, drawScale(&product.ErrorScale{}, 0, 0))
+	text := string(drawScale(&product.ErrorScale{Map: [][]*float64{{at(1), nil, at(40)}, {at(0.9), at(2), nil}}}, 300, 200))
 	require.Equal(t, 4, strings.Count(text, "<title>"))
-	require.Contains(t, text, `fill-opacity="1"><title>40`)
-	require.Contains(t, text, `fill-opacity="0"><title>0.9`)
+	require.Contains(t, text, `fill="#050505"><title>40`)
+	require.Contains(t, text, `fill="#fafafa"><title>0.9`)
+	require.Equal(t, 2, strings.Count(text, `class="hatch"`))
 	d := xml.NewDecoder(strings.NewReader(text))
 	for {
 		if _, err := d.Token(); err == io.EOF {

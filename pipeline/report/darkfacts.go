@@ -3,12 +3,9 @@ package report
 import (
 	"cmp"
 	"fmt"
-	"html/template"
-	"math"
 	"slices"
 	"strings"
 
-	"mirrorloom/pipeline/drawing"
 	"mirrorloom/pipeline/product"
 )
 
@@ -48,39 +45,37 @@ func worstSteps(steps []product.StepChi2) []string {
 	return names
 }
 
-// drawScale draws the map of the error scale over the detector, darker where it is
-// larger; empty without one.
-func drawScale(e *product.ErrorScale) template.HTML {
-	if e == nil || len(e.Map) == 0 || len(e.Map[0]) == 0 {
-		return ""
-	}
-	const width, height, left, top = 480.0, 200.0, 40.0, 10.0
-	most := 2.0
-	for _, row := range e.Map {
-		for _, q := range row {
-			if q != nil {
-				most = math.Max(most, *q)
-			}
+// throughputFacts tells what each method and step gained.
+func throughputFacts(t *product.Throughput) []fact {
+	var all []fact
+	add := func(name, format string, args ...any) { all = append(all, fact{name, fmt.Sprintf(format, args...)}) }
+	for _, m := range t.Methods {
+		use := fmt.Sprintf("%.0f %% of the information", 100*m.Share)
+		if !m.Used {
+			use = "not used"
 		}
+		add("By "+m.Name, "%s rms, error of a frame %s; %s", percent(m.RMS), percent(m.Error), use)
 	}
-	w, h := width/float64(len(e.Map[0])), height/float64(len(e.Map))
-	var s drawing.SVG
-	fmt.Fprintf(&s, `<svg class="picture" viewBox="0 0 560 250" role="img" aria-label="Error scale over the detector" xmlns="http://www.w3.org/2000/svg">`)
-	for y, row := range e.Map {
-		for x, q := range row {
-			if q == nil {
-				continue
-			}
-			// 1 is white, the largest black, in logarithms.
-			dark := math.Log(math.Max(1, *q)) / math.Log(most)
-			fmt.Fprintf(&s, `<rect x="%s" y="%s" width="%s" height="%s" fill="#111" fill-opacity="%s"><title>%s</title></rect>`,
-				drawing.Coord(left+float64(x)*w), drawing.Coord(top+height-float64(y+1)*h), drawing.Coord(w), drawing.Coord(h), drawing.Coord(dark), figure(*q))
+	for _, m := range t.Terms {
+		add("Corrected apart: "+m.Name, "%s rms, error of a frame %s", percent(m.RMS), percent(m.Error))
+	}
+	for _, h := range t.HeldOut {
+		kept := "kept"
+		if !h.Kept {
+			kept = "not kept"
 		}
+		add("Held-out chi-square of dark columns, "+h.Step, "from %.3f to %.3f; %s", h.Before, h.After, kept)
 	}
-	s.Rect("frame", left, top, width, height)
-	s.Text("middle", left+width/2, top+height+18, "detector column")
-	s.Turned(left-12, top+height/2, "detector row")
-	s.Text("start", left, top+height+36, fmt.Sprintf("white: 1 or less; black: %s", figure(most)))
-	s.WriteString("</svg>")
-	return template.HTML(s.String())
+	if o := t.Offset; o != nil {
+		add("Levels taken off the frames, rms", "%.3f e, error of one %.3f e", o.Value, o.Error)
+	}
+	if l := t.Leak; l != nil {
+		add("Light of closed mirrors, against the all-off frames", "%.4f ± %.4f", l.Value, l.Error)
+	}
+	if i := t.Image; i != nil {
+		add("Motion of the sentinel's image, rms", "%.4f px along the dispersion (error %.4f), %.4f px along the slit (%.4f); width %.2f %% (%.2f %%)",
+			i.XPx.Value, i.XPx.Error, i.YPx.Value, i.YPx.Error, 100*i.FWHMPart.Value, 100*i.FWHMPart.Error)
+		add("Slope of the sentinel's flux over the band, rms", "%.2f %% (error of a frame %.2f %%)", 100*i.Slope.Value, 100*i.Slope.Error)
+	}
+	return all
 }
