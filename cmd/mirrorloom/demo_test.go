@@ -33,7 +33,7 @@ func TestDemo(t *testing.T) {
 	require.Equal(t, []string{"show"}, listing(t, top))
 
 	require.Equal(t, []string{"night", "profile.yaml", "run", "scene.yaml", "sequence", "target.yaml"}, listing(t, show))
-	require.Equal(t, []string{"masks", "profile.yaml", "sequence.fits", "target.yaml"}, listing(t, filepath.Join(show, "sequence")))
+	require.Equal(t, []string{"masks", "plan.html", "plan.json", "profile.yaml", "sequence.fits", "steps.csv", "target.yaml"}, listing(t, filepath.Join(show, "sequence")))
 	require.Equal(t, []string{"cube.fits", "ledger.csv", "report.html", "run.json"}, listing(t, filepath.Join(show, "run")))
 	require.Equal(t, []string{"faults.json", "geometry.yaml", "scene.yaml", "truth.fits"}, listing(t, filepath.Join(show, "night", "truth")))
 	require.LessOrEqual(t, folderBytes(t, filepath.Join(show, "night")), int64(300e6))
