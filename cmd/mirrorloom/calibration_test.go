@@ -164,7 +164,7 @@ func TestBrokenCalibrations(t *testing.T) {
 			exitDegraded, `flagged NOMINALWAVE: .*lamp`, nominal, 0, low},
 		{"another lamp that glows", func(b *broken) { b.relight("HgKr") },
 			exitDegraded, `flagged NOMINALWAVE: .*lamp`, nominal, 0, low},
-		{"a lamp without a list", func(b *broken) { b.replan(func(f *trial.Field) { f.Target.Calibration.Arc.Lamp = "Zz" }) },
+		{"a lamp without a list", func(b *broken) { b.rename("Zz") },
 			exitDegraded, `flagged NOMINALWAVE: .*no list has the lines of lamp "Zz"`, nominal, 0, low},
 		{"arc lamp off", func(b *broken) { b.lightless(sequence.Arc, 0, 288) },
 			exitDegraded, `flagged NOMINALWAVE: .*no line was seen`, nominal, 0, low},
@@ -242,6 +242,19 @@ func (b *broken) replan(change func(f *trial.Field)) {
 	change(f)
 	b.Night, err = f.Plan(context.Background(), b.t.TempDir())
 	require.NoError(b.t, err)
+}
+
+// rename gives the arc lamp of the sequence a name that plan would refuse.
+func (b *broken) rename(lamp string) {
+	b.replan(func(*trial.Field) {})
+	s := b.Night.Seq
+	s.Target.Calibration.Arc.Lamp, s.TargetSHA = lamp, ""
+	for _, i := range s.StepsOf(sequence.Arc) {
+		s.Steps[i].Lamp = lamp
+	}
+	b.Night = &trial.Night{Dir: b.t.TempDir(), Field: b.Night.Field, Seq: s}
+	require.NoError(b.t, os.MkdirAll(b.SequencePath(), 0o755))
+	require.NoError(b.t, s.Write(context.Background(), b.SequencePath()))
 }
 
 // rehearse makes night and sequence others.

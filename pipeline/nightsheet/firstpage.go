@@ -28,20 +28,31 @@ func (l *layout) first(p *page) {
 		p.Advice = l.shorten(s.Trade.Recommendation, pageWidth, 2)
 		left -= l.paragraph(p.Advice, pageWidth) + blockGap
 	}
-	p.Where, p.Times, p.Data, p.Limits = s.where(), s.times(), s.data(), s.limits()
-	for _, list := range [][]fact{p.Where, p.Limits} {
-		for i := range list {
-			list[i].Value = l.shorten(list[i].Value, columnWidth-factName, 3)
-		}
-	}
+	p.Times, p.Data = s.times(), s.data()
 	p.Night = l.drawNight(columnWidth)
-	column := 3*headHeight + tableRules + l.factsHeight(p.Where, columnWidth) + l.factsHeight(p.Limits, columnWidth) +
-		timeRow*float64(len(p.Times)+1) + nightHeight + nightPad + l.paragraph(p.Data, columnWidth)
+	column := l.facts(p, 3)
+	if column > left-l.forecastLeast() {
+		column = l.facts(p, 2)
+	}
+	l.crowded = column > left-l.forecastLeast()
 	column = max(column, l.rightNeeds())
 	column = min(column, left-l.forecastLeast())
 	p.LeftHeight = coord(column)
 	l.right(p, column)
 	l.forecast(p, left-column-blockGap)
+}
+
+// facts fills in the facts of the left column, in so many lines each at most, and gives the
+// column's height.
+func (l *layout) facts(p *page, lines int) float64 {
+	p.Where, p.Limits = l.sheet.where(), l.sheet.limits()
+	for _, list := range [][]fact{p.Where, p.Limits} {
+		for i := range list {
+			list[i].Value = l.shorten(list[i].Value, columnWidth-factName, lines)
+		}
+	}
+	return 3*headHeight + tableRules + l.factsHeight(p.Where, columnWidth) + l.factsHeight(p.Limits, columnWidth) +
+		timeRow*float64(len(p.Times)+1) + nightHeight + nightPad + l.paragraph(p.Data, columnWidth)
 }
 
 // rightNeeds is the height of the right column with all warnings.
@@ -84,7 +95,7 @@ func (l *layout) forecastLeast() float64 {
 		return 0
 	}
 	height := headHeight + snrHeight(min(len(f.Wanted), leastWanted)) + 2*captionHeight + blockGap
-	if hasSpectra(f) {
+	if hasSpectra(f) && !l.crowded {
 		height += spectrumHeight + captionHeight + blockGap
 	}
 	return height
@@ -96,7 +107,7 @@ func (l *layout) forecast(p *page, height float64) {
 	if f == nil || len(f.Wanted) == 0 {
 		return
 	}
-	if hasSpectra(f) {
+	if hasSpectra(f) && !l.crowded {
 		p.Spectra = l.drawSpectra(pageWidth)
 		height -= spectrumHeight + captionHeight + blockGap
 	}

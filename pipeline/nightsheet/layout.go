@@ -24,6 +24,8 @@ const (
 type layout struct {
 	sheet         *Sheet
 	regular, bold *typeface.Face
+	// crowded: the first page has no room for spectra.
+	crowded bool
 }
 
 func newLayout(s *Sheet) (*layout, error) {
@@ -35,7 +37,7 @@ func newLayout(s *Sheet) (*layout, error) {
 	if err != nil {
 		return nil, err
 	}
-	return &layout{s, regular, bold}, nil
+	return &layout{sheet: s, regular: regular, bold: bold}, nil
 }
 
 // fact is a line of a table of two columns.
