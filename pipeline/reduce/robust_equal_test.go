@@ -101,7 +101,7 @@ func TestProductsDoNotDependOnWorkersOrMemory(t *testing.T) {
 }
 
 // robustBudgets are memories for buffers, besides that of the program itself. Their strips must differ.
-var robustBudgets = []int64{64 << 20, 760 << 10, 230 << 10}
+var robustBudgets = []int64{64 << 20, 760 << 10, 300 << 10}
 
 func compareRuns(t *testing.T, night, seq string) {
 	var first map[string][]byte

@@ -70,7 +70,7 @@ func TestSentinelNight(t *testing.T) {
 	require.Empty(t, run.Warnings)
 	page, err := os.ReadFile(filepath.Join(night.Run("a"), "report.html"))
 	require.NoError(t, err)
-	require.Contains(t, string(page), "Throughput of the frames with errors")
+	require.Contains(t, string(page), "Frames and throughput over the night")
 	require.Contains(t, string(page), "By sentinel rows")
 }
 
