@@ -35,7 +35,7 @@ lint:
 # Long statistical checks: writes VALIDATION.md.
 validate: build packages
 	$(GO) run ./internal/validate
-	MIRRORLOOM_VALIDATE=1 $(GO) test -count=1 -timeout 60m -run 'TestArcNights|TestSpeedOfLargestDevice' ./pipeline/reduce ./pipeline/sequence
+	MIRRORLOOM_VALIDATE=1 $(GO) test -count=1 -timeout 60m -run 'TestArcNights|TestSpeedOfLargestDevice|TestSheetsPrint' ./pipeline/reduce ./pipeline/sequence ./pipeline/nightsheet
 
 # Figures are compared as ratios within one run, as machines are noisy: writes
 # BENCHMARKS.md. One section alone: go run ./internal/bench -only memory.
